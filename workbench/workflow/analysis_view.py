@@ -1,0 +1,233 @@
+"""What an analysis works on: its blocks side by side, the samples that they share, and the design."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from itertools import combinations
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from workbench.engine import aliased
+from workbench.errors import InputError
+from workbench.intake import Groups, design_columns, group_codes
+from workbench.prepare import MeasuredTable
+from workbench.settings import AnalysisSettings, BlockSettings, Settings
+from workbench.store import check_file, read_block
+from workbench.workflow.state import ProjectState
+from workbench.workflow.tables import measured_table
+
+LEAST_FREEDOM = 3
+
+
+@dataclass(frozen=True)
+class BlockView:
+    """One block of an analysis: prepared values (samples x features), what was imputed, what was measured."""
+
+    name: str
+    layer: str
+    settings: BlockSettings
+    values: NDArray[np.float64]
+    imputed: NDArray[np.bool_]
+    samples: tuple[str, ...]
+    features: tuple[str, ...]
+    annotations: pd.DataFrame
+    measured: MeasuredTable
+
+    def rows(self, samples: Sequence[str]) -> NDArray[np.intp]:
+        """Return the prepared rows of some samples."""
+        place = {sample: row for row, sample in enumerate(self.samples)}
+        return np.array([place[sample] for sample in samples], dtype=np.intp)
+
+    def measured_rows(self, samples: Sequence[str]) -> MeasuredTable:
+        """Return the measured table of some samples, in their order."""
+        place = {sample: row for row, sample in enumerate(self.measured.samples)}
+        rows = [place[sample] for sample in samples]
+        return MeasuredTable(
+            values=self.measured.values[rows],
+            samples=tuple(samples),
+            features=self.measured.features,
+            levels=self.measured.levels,
+        )
+
+
+@dataclass(frozen=True)
+class Shared:
+    """Samples that some blocks share, with their design.
+
+    ``nuisance`` (n, c) holds the columns to be removed (no intercept), ``groups`` the cell of each sample
+    (None without a group), ``group_columns`` its indicators without the first level.
+    """
+
+    samples: tuple[str, ...]
+    nuisance: NDArray[np.float64]
+    nuisance_names: tuple[str, ...]
+    groups: Groups | None
+    group_columns: NDArray[np.float64]
+
+    @property
+    def n(self) -> int:
+        """Number of samples."""
+        return len(self.samples)
+
+    @property
+    def within(self) -> NDArray[np.float64]:
+        """Nuisance and group together: what is removed for a screen within groups."""
+        return np.hstack([self.nuisance, self.group_columns])
+
+
+@dataclass(frozen=True)
+class AnalysisView:
+    """An analysis with its blocks loaded; ``left_out`` maps a sample to the reason why no block uses it."""
+
+    name: str
+    settings: AnalysisSettings
+    study: Settings
+    sheet: pd.DataFrame
+    blocks: dict[str, BlockView]
+
+    @property
+    def layers(self) -> tuple[str, ...]:
+        """Layers in the order of their first block."""
+        return tuple(dict.fromkeys(block.layer for block in self.blocks.values()))
+
+    @property
+    def sides(self) -> dict[str, tuple[str, ...]]:
+        """Names of the blocks of each layer: blocks of one layer stand on one side."""
+        return {
+            layer: tuple(name for name, block in self.blocks.items() if block.layer == layer)
+            for layer in self.layers
+        }
+
+    @property
+    def pairs(self) -> tuple[tuple[str, str], ...]:
+        """Pairs of blocks of different layers, in the order of the blocks."""
+        return tuple(
+            (first, second)
+            for first, second in combinations(self.blocks, 2)
+            if self.blocks[first].layer != self.blocks[second].layer
+        )
+
+    def shared(self, names: Sequence[str]) -> Shared:
+        """Return the samples that the named blocks share and have a known design for.
+
+        Raises `InputError` when columns of the design say the same, or leave too few degrees of freedom.
+        """
+        lacking = self.lacking_design(names)
+        every = [set(self.blocks[name].samples) for name in names]
+        samples = [
+            sample for sample in self.sheet.index if sample not in lacking and all(sample in one for one in every)
+        ]
+        frame = self.sheet.loc[samples]
+        columns = self.adjust_columns(names)
+        design = design_columns(frame, columns, self.study.samples.kinds)
+        groups = group_codes(frame, self.factors, self.study.samples.order) if self.factors else None
+        shared = Shared(
+            tuple(samples), design.matrix, tuple(design.names), groups, _group_indicators(groups, len(samples))
+        )
+        self._require_usable(shared, names)
+        return shared
+
+    def adjust_columns(self, names: Sequence[str]) -> list[str]:
+        """Return the nuisance columns of the study and of the named blocks, each once."""
+        wanted = list(self.study.samples.adjust)
+        for name in names:
+            wanted += self.blocks[name].settings.adjust
+        return list(dict.fromkeys(wanted))
+
+    @property
+    def factors(self) -> list[str]:
+        """Columns of the sample sheet whose cells are the groups."""
+        return factors_of(self.study)
+
+    def lacking_design(self, names: Sequence[str]) -> dict[str, str]:
+        """Return the samples with an empty cell in a used design column, with the reason."""
+        reasons = {}
+        for column in [*self.factors, *self.adjust_columns(names)]:
+            for sample in self.sheet.index[self.sheet[column].isna()]:
+                reasons.setdefault(str(sample), f"no value in column '{column}' of the sample sheet")
+        return reasons
+
+    def _require_usable(self, shared: Shared, names: Sequence[str]) -> None:
+        what = " and ".join(f"'{name}'" for name in names)
+        where = f"analysis '{self.name}', blocks {what}"
+        _require_levels(shared, where, self.factors)
+        group_names = [f"{'+'.join(self.factors)} (group)"] * shared.group_columns.shape[1]
+        tangled = aliased(shared.within, [*shared.nuisance_names, *group_names])
+        if tangled:
+            raise InputError(
+                f"{where}: {', '.join(dict.fromkeys(tangled))} cannot be told apart from the columns before "
+                f"(order: {', '.join([*self.adjust_columns(names), *self.factors])}) on the {shared.n} shared "
+                "samples, so that its effect has no estimate; take one of them out of adjust or group in project.toml"
+            )
+        freedom = shared.n - shared.within.shape[1] - 2
+        if freedom < LEAST_FREEDOM:
+            raise InputError(
+                f"{where}: {shared.n} shared samples less {shared.within.shape[1]} design columns leave "
+                f"{freedom} degrees of freedom for a correlation; {LEAST_FREEDOM} are the least. Add samples, "
+                "or take nuisance columns out of adjust in project.toml"
+            )
+
+
+def factors_of(settings: Settings) -> list[str]:
+    """Return the group factors of the settings as a list, empty without a group."""
+    group = settings.samples.group
+    if group is None:
+        return []
+    return [group] if isinstance(group, str) else list(group)
+
+
+def blocks_of(settings: Settings, analysis: str) -> list[str]:
+    """Return the names of the blocks of an analysis, in the order of the project's blocks or of its list."""
+    chosen = settings.analyses[analysis].blocks
+    return list(settings.blocks) if chosen == "all" else list(chosen)
+
+
+def view_analysis(state: ProjectState, name: str) -> AnalysisView:
+    """Load what the analysis needs; every file is checked against its hash first."""
+    if state.settings.samples.subject is not None:
+        raise InputError(
+            f"{state.paths.settings}: samples.subject = '{state.settings.samples.subject}': several samples of one "
+            "subject are not supported yet, and pooling them would make chance look like evidence; take one sample "
+            "per subject (samples.exclude names the others with a reason) and remove samples.subject"
+        )
+    blocks = {block: _view_block(state, block) for block in blocks_of(state.settings, name)}
+    return AnalysisView(name, state.settings.analyses[name], state.settings, state.require_sheet(), blocks)
+
+
+def _view_block(state: ProjectState, name: str) -> BlockView:
+    relative = f"prepared/{name}.h5ad"
+    check_file(state.root, relative)
+    adata = read_block(state.root / relative)
+    settings = state.settings.blocks[name]
+    return BlockView(
+        name=name,
+        layer=settings.layer,
+        settings=settings,
+        values=np.asarray(adata.X, dtype=np.float64),
+        imputed=np.asarray(adata.layers["imputed"], dtype=bool),
+        samples=tuple(map(str, adata.obs_names)),
+        features=tuple(map(str, adata.var_names)),
+        annotations=adata.var,
+        measured=measured_table(state, name),
+    )
+
+
+def _group_indicators(groups: Groups | None, n: int) -> NDArray[np.float64]:
+    if groups is None:
+        return np.zeros((n, 0))
+    return np.column_stack([groups.codes == level for level in range(1, len(groups.levels))] or [np.zeros((n, 0))]).astype(
+        np.float64
+    )
+
+
+def _require_levels(shared: Shared, where: str, factors: list[str]) -> None:
+    if shared.n == 0:
+        raise InputError(f"{where}: no sample is in all of them; look at `workbench status` and the sample sheet")
+    if shared.groups is not None and len(shared.groups.levels) < 2:
+        raise InputError(
+            f"{where}: group '{'+'.join(factors)}' has one level ('{shared.groups.levels[0]}') among the "
+            f"{shared.n} shared samples; remove samples.group from project.toml, or add samples of another level"
+        )

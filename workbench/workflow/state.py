@@ -1,0 +1,80 @@
+"""A project as it stands on disk: settings, sample sheet and manifest, read once and checked together."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+
+import pandas as pd
+
+from workbench.errors import BusyError, InputError, SettingsError, WorkbenchError
+from workbench.intake import read_sample_sheet
+from workbench.settings import Settings, cross_check, load_settings
+from workbench.store import Manifest, ProjectPaths, project_lock, read_manifest
+
+
+@dataclass(frozen=True)
+class ProjectState:
+    """Settings, sample sheet (None before ``add-samples``) and manifest of the project at ``paths``."""
+
+    paths: ProjectPaths
+    settings: Settings
+    sheet: pd.DataFrame | None
+    manifest: Manifest
+
+    @property
+    def root(self) -> Path:
+        """Folder of the project."""
+        return self.paths.root
+
+    def require_sheet(self) -> pd.DataFrame:
+        """Return the sample sheet, or say how to import one."""
+        if self.sheet is None:
+            raise InputError(
+                f"{self.paths.samples}: the project has no sample sheet yet; import one with "
+                "`workbench add-samples FILE`"
+            )
+        return self.sheet
+
+    def require_block(self, name: str) -> None:
+        """Refuse a block that the settings do not declare, naming those that they do."""
+        if name not in self.settings.blocks:
+            raise InputError(f"no block '{name}' in {self.paths.settings}; {_known(self.settings.blocks)}")
+
+    def require_analysis(self, name: str) -> None:
+        """Refuse an analysis that the settings do not declare, naming those that they do."""
+        if name not in self.settings.analyses:
+            raise InputError(
+                f"no analysis '{name}' in {self.paths.settings}; {_known(self.settings.analyses)}"
+            )
+
+
+def load_state(paths: ProjectPaths) -> ProjectState:
+    """Return the project's state; raise `SettingsError` with every fault of settings against data."""
+    settings = load_settings(paths.settings)
+    sheet = None
+    if paths.samples.exists():
+        sheet = read_sample_sheet(paths.samples, id_column=settings.samples.id).frame
+        faults = cross_check(settings, sheet, paths.root)
+        if faults:
+            raise SettingsError(faults)
+    return ProjectState(paths, settings, sheet, read_manifest(paths.root))
+
+
+def mend(paths: ProjectPaths) -> None:
+    """Finish or drop what a killed command left behind, if nobody works in the project just now.
+
+    Taking the lock does it; a project in use, or one that cannot be written, is left to the next writer.
+    """
+    try:
+        with project_lock(paths.root, "mend"):
+            pass
+    except BusyError:
+        return
+    except WorkbenchError:
+        if (paths.hidden / "pending.json").exists():
+            raise
+
+
+def _known(names: dict[str, object]) -> str:
+    return "known: " + ", ".join(f"'{name}'" for name in names) if names else "it declares none yet"
