@@ -1,0 +1,209 @@
+"""Intensities of mass spectrometry and the like: zeros, seen features, dilution, logarithm, gaps.
+
+Quotient normalisation assumes that most features do not change between samples, so that the typical
+quotient of a sample's intensities to a reference is its dilution (Dieterle, Ross, Schlotterbeck & Senn
+2006, Analytical Chemistry 78:4281-4290).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from workbench.errors import InputError
+from workbench.prepare.gaps import FillGaps
+from workbench.prepare.steps import (
+    ENOUGH_REFERENCE,
+    FEWEST_FOR_SCALE,
+    DropFlat,
+    DropRarelySeen,
+    DropUnusable,
+    FitContext,
+    Step,
+    median_rows,
+    most_seen,
+)
+from workbench.prepare.tables import Mask, Matrix, MeasuredTable, StepAccount, StepTable, some
+
+DIETERLE = "Dieterle et al. 2006, Analytical Chemistry 78:4281"
+
+
+def intensity_steps() -> tuple[Step, ...]:
+    """Return the steps for intensities, in order."""
+    return (
+        ZerosAreMissing(),
+        DropUnusable(),
+        DropRarelySeen(),
+        Quotients(),
+        LogOfIntensities(),
+        FillGaps(censored=True),
+        DropFlat(),
+    )
+
+
+def check_intensities(table: MeasuredTable) -> None:
+    """Refuse negative intensities.
+
+    Raises
+    ------
+    InputError
+        Naming the first negative cell.
+    """
+    negative = table.values < 0
+    if negative.any():
+        raise InputError(
+            f"{int(negative.sum())} intensities are negative, the first at {table.first_cell(negative)}; "
+            "intensities are 0 or more: declare the values as `log` if they are logarithms already"
+        )
+
+
+@dataclass(frozen=True)
+class ZerosAreMissing:
+    """Turns zero into missing: the instrument saw nothing, which is not an amount of nothing."""
+
+    step: str = "zeros"
+    rule: str = "zero means missing"
+
+    def fit(self, table: StepTable, context: FitContext) -> ZerosAreMissing:  # noqa: ARG002
+        """Return the step itself: there is nothing to learn."""
+        return self
+
+    def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
+        """Return the table with NaN for zero."""
+        zero = table.values == 0
+        count, cells = int(zero.sum()), zero.size
+        sentence = f"zero means missing: {count:,} of {cells:,} values"
+        account = StepAccount(self.step, sentence, {"zeros": count, "values": cells})
+        return table.with_values(np.where(zero, np.nan, table.values)), account
+
+
+def reference_profile(intensities: Matrix) -> Matrix:
+    """Return the reference: the median over samples after each is brought to the same total.
+
+    Totals are sums over the features that the sample has; the profile is on the scale of the sample
+    with the median total.
+    """
+    totals = np.nansum(intensities, axis=1, keepdims=True)
+    usable = totals[:, 0] > 0
+    shares = intensities[usable] / totals[usable]
+    return median_rows(shares.T, ~np.isnan(shares.T)) * float(np.median(totals[usable]))
+
+
+def median_quotients(intensities: Matrix, reference: Matrix) -> Matrix:
+    """Return each sample's dilution: the median quotient to the reference over what the sample has.
+
+    Parameters
+    ----------
+    intensities : ndarray of shape (n_samples, n_features)
+        NaN takes no part.
+    reference : ndarray of shape (n_features,)
+        From :func:`reference_profile` of the training samples.
+
+    Returns
+    -------
+    ndarray of shape (n_samples,)
+        NaN for a sample that has none of the features.
+
+    References
+    ----------
+    Dieterle et al. 2006, Analytical Chemistry 78:4281-4290.
+
+    Examples
+    --------
+    One feature of the second sample is up tenfold; its dilution, a half, is found all the same:
+
+    >>> profile = np.array([4.0, 8.0, 2.0, 6.0, 1.0])
+    >>> median_quotients(np.vstack([profile, profile * [0.5, 0.5, 5.0, 0.5, 0.5]]), profile).tolist()
+    [1.0, 0.5]
+    """
+    quotients = intensities / reference
+    return median_rows(quotients, ~np.isnan(quotients))
+
+
+@dataclass(frozen=True)
+class Quotients:
+    """Divides each sample by its dilution, found by quotients to a reference.
+
+    The reference holds the features seen in the most training samples: those seen in all of them
+    when there are ``enough`` of these, else the ``enough`` most seen. Fewer than ``fewest`` features:
+    no normalisation, and the account says so.
+    """
+
+    enough: int = ENOUGH_REFERENCE
+    fewest: int = FEWEST_FOR_SCALE
+    step: str = "quotient normalisation"
+    rule: str = "values divided by the sample's median quotient to the reference profile"
+
+    def fit(self, table: StepTable, context: FitContext) -> FittedQuotients:  # noqa: ARG002
+        """Return the step with its reference."""
+        seen = (~np.isnan(table.values)).sum(axis=0)
+        used, cut = most_seen(seen, self.enough)
+        if used.sum() < self.fewest:
+            used = np.zeros_like(used)
+        return FittedQuotients(self, used, reference_profile(table.values[:, used]), cut, len(table.samples))
+
+
+@dataclass(frozen=True)
+class FittedQuotients:
+    """Dilutions against the training reference."""
+
+    settings: Quotients
+    used: Mask
+    reference: Matrix
+    cut: int
+    n_training: int
+
+    def factors(self, table: StepTable) -> Matrix:
+        """Return the dilution of each sample, 1 where there is no reference.
+
+        Raises
+        ------
+        InputError
+            When a sample has none of the features of the reference.
+        """
+        if not self.used.any():
+            return np.ones(len(table.samples))
+        factors = median_quotients(table.values[:, self.used], self.reference)
+        lost = [table.samples[i] for i in np.flatnonzero(np.isnan(factors))]
+        if lost:
+            raise InputError(
+                f"no dilution for {some(lost)}: no value in any of the {self.used.sum()} features of the "
+                "reference; exclude such samples, with the reason"
+            )
+        return factors
+
+    def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
+        """Return values divided by dilutions."""
+        factors = self.factors(table)
+        return table.with_values(table.values / factors[:, None]), self._account(factors)
+
+    def _account(self, factors: Matrix) -> StepAccount:
+        used = int(self.used.sum())
+        numbers: dict[str, float | int | str] = {"reference_features": used, "reference_seen_in": self.cut}
+        if factors.size:
+            numbers |= {"smallest_factor": float(factors.min()), "largest_factor": float(factors.max())}
+        if used:
+            sentence = (
+                f"values divided by the sample's median quotient to the reference profile of {used:,} "
+                f"features seen in at least {self.cut} of {self.n_training} samples"
+            )
+        else:
+            sentence = f"not normalised: fewer than {self.settings.fewest} features; values taken as they are"
+        return StepAccount(self.settings.step, sentence, numbers, reference=DIETERLE)
+
+
+@dataclass(frozen=True)
+class LogOfIntensities:
+    """Takes log2."""
+
+    step: str = "logarithm"
+    rule: str = "log2"
+
+    def fit(self, table: StepTable, context: FitContext) -> LogOfIntensities:  # noqa: ARG002
+        """Return the step itself: there is nothing to learn."""
+        return self
+
+    def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
+        """Return log2 of the values."""
+        return table.with_values(np.log2(table.values)), StepAccount(self.step, self.rule)

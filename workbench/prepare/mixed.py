@@ -1,0 +1,218 @@
+"""Mixed readings (clinical): numbers and text.
+
+Numbers are kept. Text with two levels becomes 0 / 1 in the order of its levels; text with more becomes
+one ``column=level`` indicator per level. Levels are those that the training samples have; any other
+level counts as missing. A gap says nothing: a number becomes the training median, a 0 / 1 column the
+share of ones in training.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from workbench.errors import InputError
+from workbench.prepare.steps import DropFlat, DropRarelySeen, DropUnusable, FitContext, Step
+from workbench.prepare.tables import Matrix, MeasuredTable, StepAccount, StepTable, some
+
+SMALLEST_LEVEL = 2
+
+
+def mixed_steps() -> tuple[Step, ...]:
+    """Return the steps for mixed values, in order."""
+    return (DropUnusable(), DropRarelySeen(), TextToNumbers(), TypicalValues(), DropFlat())
+
+
+def check_mixed(table: MeasuredTable) -> None:
+    """Refuse text cells whose code is not the position of a level.
+
+    Raises
+    ------
+    InputError
+        Naming the features.
+    """
+    faulty = []
+    for column, levels in enumerate(table.feature_levels):
+        if levels is None:
+            continue
+        codes = table.values[:, column]
+        codes = codes[~np.isnan(codes)]
+        if np.any((codes < 0) | (codes >= len(levels)) | (codes != np.floor(codes))):
+            faulty.append(table.features[column])
+    if faulty:
+        raise InputError(
+            f"text features with codes that are no position of a level: {some(faulty)}; "
+            "text is given as whole numbers from 0 to the number of levels less 1"
+        )
+
+
+@dataclass(frozen=True)
+class TextCode:
+    """How one measured feature becomes columns.
+
+    Attributes
+    ----------
+    feature : str
+        The measured feature.
+    levels : tuple of str
+        Levels seen in training, in order; empty for a number.
+    columns : tuple of (name, level)
+        Columns made, each 1 at its level; a number has one, of its own name.
+    """
+
+    feature: str
+    levels: tuple[str, ...]
+    columns: tuple[tuple[str, str], ...]
+
+    def encode(self, values: Matrix, levels: tuple[str, ...] | None) -> Matrix:
+        """Return the columns of these cells, (n_samples, n_columns); NaN for gaps and unknown levels."""
+        if not self.levels:
+            return values[:, None]
+        names = np.array([*(levels or ()), ""], dtype=object)
+        codes = np.where(np.isnan(values), len(names) - 1, values).astype(np.intp)
+        cells = names[codes]
+        known = np.isin(cells, np.array(self.levels, dtype=object)) & ~np.isnan(values)
+        hits = np.column_stack([cells == level for _, level in self.columns]).astype(np.float64)
+        hits[~known] = np.nan
+        return hits
+
+
+@dataclass(frozen=True)
+class TextToNumbers:
+    """Turns text into 0 / 1 columns; levels of fewer than two training samples make no column."""
+
+    smallest: int = SMALLEST_LEVEL
+    step: str = "text to numbers"
+    rule: str = "two-level text to 0 / 1, other text to one column=level indicator per level"
+
+    def fit(self, table: StepTable, context: FitContext) -> FittedText:  # noqa: ARG002
+        """Return the step with the levels that these samples have."""
+        codes, dropped = [], {}
+        for column, levels in enumerate(table.levels):
+            code, reasons = self._code(table.features[column], table.values[:, column], levels)
+            codes.append(code)
+            dropped.update(reasons)
+        names = [name for code in codes for name, _ in code.columns]
+        twice = sorted({name for name in names if names.count(name) > 1})
+        if twice:
+            raise InputError(f"a feature has the name of another's indicator: {some(twice)}; rename it")
+        return FittedText(self, tuple(codes), dropped)
+
+    def _code(
+        self, feature: str, values: Matrix, levels: tuple[str, ...] | None
+    ) -> tuple[TextCode, dict[str, str]]:
+        if levels is None:
+            return TextCode(feature, (), ((feature, ""),)), {}
+        counts = np.bincount(values[~np.isnan(values)].astype(np.intp), minlength=len(levels))
+        seen = tuple(level for level, count in zip(levels, counts, strict=True) if count)
+        rare = {f"{feature}={level}": int(count) for level, count in zip(levels, counts, strict=True)}
+        rare = {name: count for name, count in rare.items() if 0 < count < self.smallest}
+        if len(seen) <= 2:
+            columns: tuple[tuple[str, str], ...] = () if rare else ((feature, seen[-1]),)
+            reasons = {feature: f"a level in only {min(rare.values())} sample"} if rare else {}
+            return TextCode(feature, seen, columns), reasons
+        named = ((f"{feature}={level}", level) for level in seen)
+        columns = tuple((name, level) for name, level in named if name not in rare)
+        return TextCode(feature, seen, columns), {
+            name: f"the level in only {count} sample" for name, count in rare.items()
+        }
+
+
+@dataclass(frozen=True)
+class FittedText:
+    """The columns that text becomes."""
+
+    settings: TextToNumbers
+    codes: tuple[TextCode, ...]
+    dropped: dict[str, str]
+
+    def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
+        """Return the table with text as numbers."""
+        parts = [
+            code.encode(table.values[:, i], table.levels[i])
+            for i, code in enumerate(self.codes)
+            if code.columns
+        ]
+        n = len(table.samples)
+        values = np.column_stack(parts) if parts else np.empty((n, 0))
+        features = tuple(name for code in self.codes for name, _ in code.columns)
+        origins = tuple(code.feature for code in self.codes for _ in code.columns)
+        coded = replace(
+            table,
+            values=values,
+            imputed=np.zeros(values.shape, dtype=bool),
+            features=features,
+            origins=origins,
+            levels=(None,) * len(features),
+        )
+        return coded, self._account(table)
+
+    def _account(self, table: StepTable) -> StepAccount:
+        text = [code for code in self.codes if code.levels]
+        numbers: dict[str, float | int | str] = {
+            "numbers": len(self.codes) - len(text),
+            "text": len(text),
+            "indicators": sum(len(code.columns) for code in text),
+        }
+        for code in text:
+            if len(code.levels) == 2 and code.columns:
+                numbers[f"coding of {code.feature}"] = f"0 = {code.levels[0]}, 1 = {code.levels[1]}"
+        unknown = self._unknown(table)
+        numbers |= {
+            f"levels of {feature} not in training": ", ".join(names) for feature, names in unknown.items()
+        }
+        sentence = (
+            f"{numbers['numbers']} numeric features kept, {numbers['text']} text features turned into "
+            f"{numbers['indicators']} columns of 0 / 1"
+        )
+        if unknown:
+            sentence += f"; levels that training lacks count as missing ({some(list(unknown))})"
+        return StepAccount(self.settings.step, sentence, numbers, self.dropped)
+
+    def _unknown(self, table: StepTable) -> dict[str, list[str]]:
+        unknown = {}
+        for column, code in enumerate(self.codes):
+            levels = table.levels[column]
+            if not code.levels or levels is None:
+                continue
+            codes = table.values[:, column]
+            names = {levels[int(value)] for value in codes[~np.isnan(codes)]} - set(code.levels)
+            if names:
+                unknown[code.feature] = sorted(names)
+        return unknown
+
+
+@dataclass(frozen=True)
+class TypicalValues:
+    """Fills gaps so that they say nothing: the median of numbers, the share of ones of 0 / 1 columns."""
+
+    step: str = "gaps"
+    rule: str = "gaps filled by the training median of a number, the training share of a 0 / 1 column"
+
+    def fit(self, table: StepTable, context: FitContext) -> FittedTypical:  # noqa: ARG002
+        """Return the step with the typical value of each column."""
+        typical = np.array([_typical(column[~np.isnan(column)]) for column in table.values.T])
+        return FittedTypical(self, typical)
+
+
+def _typical(values: Matrix) -> float:
+    binary = np.isin(values, (0.0, 1.0)).all()
+    return float(np.mean(values) if binary else np.median(values))
+
+
+@dataclass(frozen=True)
+class FittedTypical:
+    """Typical values of the training samples."""
+
+    settings: TypicalValues
+    typical: Matrix
+
+    def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
+        """Return the table without gaps."""
+        gaps = np.isnan(table.values)
+        count = int(gaps.sum())
+        sentence = f"{count:,} {self.settings.rule}" if count else "no gaps"
+        account = StepAccount(self.settings.step, sentence, {"gaps": count, "values": gaps.size})
+        filled = np.where(gaps, self.typical, table.values)
+        return replace(table, values=filled, imputed=table.imputed | gaps), account

@@ -1,0 +1,176 @@
+"""What a step is, and the steps that every kind of measurement shares.
+
+A step is a small object: ``fit`` learns from the training samples alone and returns a fitted step,
+whose ``transform`` works on any samples, seen or unseen, one by one: what comes out for a sample
+never depends on the samples beside it.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+
+from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable
+
+SEEN_SHARE = 0.7
+FEWEST_SAMPLES = 2
+FLAT = 1e-9
+ENOUGH_REFERENCE = 100
+FEWEST_FOR_SCALE = 10
+
+
+@dataclass(frozen=True)
+class FitContext:
+    """What a fit may know beside the training table.
+
+    Attributes
+    ----------
+    smallest_group : int or None
+        Size of the smallest group among the training samples (its size alone, never who is in it).
+    seed : int
+        Key of all draws.
+    """
+
+    smallest_group: int | None
+    seed: int
+
+
+class FittedStep(Protocol):
+    """A step that has learnt what it needs."""
+
+    def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
+        """Return the table after the step, and the account of it."""
+        ...
+
+
+class Step(Protocol):
+    """A rule that is yet to learn from training samples."""
+
+    @property
+    def rule(self) -> str:
+        """What the step does, in one line."""
+        ...
+
+    def fit(self, table: StepTable, context: FitContext) -> FittedStep:
+        """Return the step as learnt from these samples."""
+        ...
+
+
+@dataclass(frozen=True)
+class KeepFeatures:
+    """A fitted step that keeps some features and lists the others with the reason."""
+
+    keep: Mask
+    account: StepAccount
+
+    def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
+        """Return the kept features of the table."""
+        return table.keep(self.keep), self.account
+
+
+def keep_features(
+    step: str, rule: str, table: StepTable, keep: Mask, reasons: dict[str, str]
+) -> KeepFeatures:
+    """Return the fitted step that keeps ``keep``, its account filled in."""
+    before, after = len(table.features), int(keep.sum())
+    sentence = f"{before - after:,} of {before:,} features dropped: {rule}"
+    return KeepFeatures(keep, StepAccount(step, sentence, {"before": before, "after": after}, reasons))
+
+
+def column_range(values: Matrix) -> tuple[Matrix, Matrix]:
+    """Return the smallest and the largest value of every column, missing ones aside (NaN when all are)."""
+    return np.fmin.reduce(values, axis=0), np.fmax.reduce(values, axis=0)
+
+
+def median_rows(values: Matrix, usable: Mask) -> Matrix:
+    """Return each row's median over its usable cells, NaN where it has none."""
+    if usable.all() and values.size:
+        return np.median(values, axis=1)
+    rows = (row[use] for row, use in zip(values, usable, strict=True))
+    return np.array([np.median(row) if row.size else np.nan for row in rows], dtype=np.float64)
+
+
+def most_seen(seen: NDArray[np.int_], enough: int = ENOUGH_REFERENCE) -> tuple[Mask, int]:
+    """Return the features that are seen in the most samples, and in how many at least.
+
+    The cut is the highest number of samples at which ``enough`` features are left (all features,
+    when there are fewer): with enough complete features it is the number of samples.
+
+    >>> most_seen(np.array([4, 4, 3, 1]), enough=2)
+    (array([ True,  True, False, False]), 4)
+    >>> most_seen(np.array([4, 4, 3, 1]), enough=3)
+    (array([ True,  True,  True, False]), 3)
+    """
+    ranked = np.sort(seen)[::-1]
+    cut = max(int(ranked[min(enough, ranked.size) - 1]), 1) if ranked.size else 1
+    return seen >= cut, cut
+
+
+@dataclass(frozen=True)
+class DropUnusable:
+    """Drops features without any value and features with one value only."""
+
+    step: str = "unusable features"
+    rule: str = "no value in any sample, or the same value in every sample that has one"
+
+    def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:  # noqa: ARG002
+        """Return the step; constant means that smallest and largest value are equal."""
+        low, high = column_range(table.values)
+        empty, constant = np.isnan(low), low == high
+        reasons = {table.features[i]: "no value in any sample" for i in np.flatnonzero(empty)}
+        for i in np.flatnonzero(constant):
+            reasons[table.features[i]] = f"constant: {low[i]:g} wherever it has a value"
+        return keep_features(self.step, self.rule, table, ~(empty | constant), reasons)
+
+
+@dataclass(frozen=True)
+class DropRarelySeen:
+    """Drops features with a value in too few samples.
+
+    Kept are features seen in at least ``share`` of the smallest group's size (of all samples when
+    there are no groups), and in no fewer than two samples. The size counts, never the labels: a
+    feature that one group has and the other lacks is kept.
+    """
+
+    share: float = SEEN_SHARE
+    step: str = "rarely seen features"
+
+    @property
+    def rule(self) -> str:
+        """What the step does, in one line."""
+        return f"seen in fewer samples than {self.share:.0%} of the smallest group"
+
+    def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:
+        """Return the step; numbers of samples are rounded up."""
+        n = len(table.samples)
+        size = n if context.smallest_group is None else context.smallest_group
+        needed = max(int(np.ceil(self.share * size - 1e-9)), min(FEWEST_SAMPLES, n))
+        seen = n - np.isnan(table.values).sum(axis=0)
+        keep = seen >= needed
+        reasons = {
+            table.features[i]: f"seen in {seen[i]} of {n} samples; {needed} needed"
+            for i in np.flatnonzero(~keep)
+        }
+        rule = f"seen in fewer than {needed} of {n} samples ({self.share:.0%} of {size})"
+        return keep_features(self.step, rule, table, keep, reasons)
+
+
+@dataclass(frozen=True)
+class DropFlat:
+    """Drops features that preparation has left without variation.
+
+    Flat means: the range over the training samples is at most 1e-9 times the largest absolute value.
+    """
+
+    step: str = "flat features"
+    rule: str = "no variation left after preparation"
+
+    def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:  # noqa: ARG002
+        """Return the step."""
+        low, high = column_range(table.values)
+        flat = high - low <= FLAT * np.maximum(np.abs(low), np.abs(high))
+        reasons = {table.features[i]: "no variation left after preparation" for i in np.flatnonzero(flat)}
+        return keep_features(self.step, self.rule, table, ~flat, reasons)
