@@ -1,0 +1,89 @@
+"""Feature annotations: a table of a feature id and identifier columns, kept as text."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from pathlib import Path
+
+import pandas as pd
+
+from workbench.errors import InputError
+
+from .faults import counted, listed
+from .ids import check_no_dates, check_present, check_unique
+from .raw import HEADER, Cell, RawTable, WrongCell
+from .readers import read_delivered
+
+_THREE = 3
+
+
+def read_annotations(path: str | Path, features: Sequence[str]) -> pd.DataFrame:
+    """Return the annotations of the given features, in their order; all cells are text, empty where there is none.
+
+    The first column of the file (TSV, CSV or XLSX) holds the feature ids. Rows of other features are left
+    out.
+
+    Raises
+    ------
+    InputError
+        When no feature is in the file, a feature of the table has several rows, or a column has no name or
+        that of another.
+    """
+    raw = _read(Path(path))
+    wanted = set(features)
+    found = [i for i, name in enumerate(raw.rows) if name in wanted]
+    if not found:
+        raise InputError(
+            f"{path}: no feature of the table is in the first column of the annotations: the table has "
+            f"{listed(list(features), _THREE)}, the annotations "
+            f"{listed(raw.rows, _THREE)}{_other_column(raw, wanted)}"
+        )
+    check_unique(raw.path, [raw.rows[i] for i in found], "feature", lambda k: raw.place(found[k], -1))
+    rows = {raw.rows[i]: [_text(cell) for cell in raw.body.row(i)] for i in found}
+    empty = [""] * len(raw.columns)
+    return pd.DataFrame(
+        [rows.get(name, empty) for name in features],
+        index=pd.Index(features, dtype=object),
+        columns=pd.Index(raw.columns, dtype=object),
+        dtype=object,
+    )
+
+
+def annotated_features(path: str | Path) -> tuple[str, ...]:
+    """Return the feature ids of an annotation table, in file order."""
+    return _read(Path(path)).rows
+
+
+def _read(path: Path) -> RawTable:
+    raw = read_delivered(path)
+    if raw.form not in ("tsv", "csv", "xlsx"):
+        raise InputError(
+            f"{path}: annotations are TSV, CSV or XLSX, not {raw.form}; save them as one of these"
+        )
+    if not raw.columns:
+        raise InputError(
+            f"{path}: the annotations have one column only; beside the feature ids there must be another"
+        )
+    check_present(path, raw.columns, "column", lambda j: raw.place(HEADER, j))
+    check_unique(path, raw.columns, "column", lambda j: raw.place(HEADER, j))
+    check_no_dates(path, raw.rows, lambda i: raw.place(i, -1))
+    return raw
+
+
+def _other_column(raw: RawTable, wanted: set[str]) -> str:
+    rows = [raw.body.row(i) for i in range(len(raw.rows))]
+    hits = {name: sum(_text(row[j]) in wanted for row in rows) for j, name in enumerate(raw.columns)}
+    best = max(hits, key=lambda name: hits[name])
+    if not hits[best]:
+        return "; use the same ids in both"
+    return f"; column '{best}' has {counted(hits[best], 'of them', 'of them')}: make it the first one"
+
+
+def _text(cell: Cell) -> str:
+    if cell is None:
+        return ""
+    if isinstance(cell, WrongCell):
+        return cell.text
+    if isinstance(cell, float) and cell.is_integer() and abs(cell) < 2**53:
+        return str(int(cell))
+    return str(cell).strip()

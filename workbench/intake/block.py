@@ -1,0 +1,147 @@
+"""From a block's settings to its measured values, aligned to the sample sheet: the content of ``blocks/NAME.h5ad``."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+from collections.abc import Sequence
+from dataclasses import dataclass
+from pathlib import Path
+
+import anndata
+import numpy as np
+import pandas as pd
+
+from workbench.settings.schema import BlockSettings
+
+from .annotations import annotated_features, read_annotations
+from .faults import counted, listed
+from .table import DeliveredTable, delivered_table
+
+_CHUNK = 2**20
+
+
+@dataclass(frozen=True)
+class BlockBuild:
+    """A block as built from its delivered table.
+
+    Attributes
+    ----------
+    adata
+        AnnData, samples x features: ``X`` measured values (float64, missing = NaN), ``obs`` the sheet's rows
+        of the block's samples in sheet order, ``var`` the annotations, ``uns["workbench"]`` one JSON string.
+    lines
+        What a person should read: orientation, samples matched and left out, what was accepted.
+    """
+
+    adata: anndata.AnnData
+    lines: tuple[str, ...]
+
+
+def build_block(settings: BlockSettings, name: str, root: str | Path, sheet: pd.DataFrame) -> BlockBuild:
+    """Return a block's measured values from its delivered table.
+
+    Samples that the study or the block excludes stay in: they are left out when the values are prepared.
+    Features that are constant or missing throughout stay in as well.
+
+    Parameters
+    ----------
+    settings
+        The block's entry in ``project.toml``.
+    name
+        Name of the block.
+    root
+        The project's folder; files in the settings are relative to it.
+    sheet
+        Sample sheet, indexed by sample id.
+
+    Raises
+    ------
+    InputError
+        When the table or its annotations cannot be used as they are.
+    """
+    path = Path(root) / settings.file
+    table = delivered_table(
+        path,
+        sample_ids=[str(sample) for sample in sheet.index],
+        values=settings.values,
+        samples_in=settings.samples_in,
+        sheet=settings.sheet,
+        array=settings.array,
+    )
+    features = tuple(table.values.columns)
+    var, lines = _annotations(settings, Path(root), features)
+    if settings.values == "mixed":
+        var["kind"] = ["text" if feature in table.levels else "number" for feature in features]
+        var["levels"] = [_levels(table, feature) for feature in features]
+    adata = anndata.AnnData(
+        X=table.values.to_numpy(dtype=np.float64), obs=sheet.loc[list(table.matched)].copy(), var=var
+    )
+    adata.uns["workbench"] = _account(settings, name, path, table)
+    return BlockBuild(adata, (_summary(name, table, len(sheet)), *table.notes, *lines))
+
+
+def content_hash(values: np.ndarray, samples: Sequence[str], features: Sequence[str]) -> str:
+    """Return the sha256 of a table's content: sample ids, feature ids and the float64 values in row order.
+
+    Every missing value counts as the same NaN, and -0.0 as 0.0, so that equal tables have equal hashes.
+    """
+    digest = hashlib.sha256(json.dumps([list(samples), list(features)]).encode())
+    plain = np.ascontiguousarray(values, dtype="<f8") + 0.0
+    plain[np.isnan(plain)] = np.nan
+    digest.update(plain.tobytes())
+    return digest.hexdigest()
+
+
+def _annotations(
+    settings: BlockSettings, root: Path, features: Sequence[str]
+) -> tuple[pd.DataFrame, list[str]]:
+    index = pd.Index(features, dtype=object)
+    if settings.annotations is None:
+        return pd.DataFrame(index=index), []
+    path = root / settings.annotations
+    var = read_annotations(path, features)
+    known = set(annotated_features(path))
+    without = [feature for feature in features if feature not in known]
+    extra = len(known.difference(features))
+    lines = [
+        f"{path.name}: {counted(len(features) - len(without), 'feature')} of {len(features):,} annotated"
+    ]
+    if without:
+        lines.append(f"{path.name}: without annotation: {listed(without)}")
+    if extra:
+        lines.append(
+            f"{path.name}: {counted(extra, 'row is', 'rows are')} of features that the table does not have; "
+            "left out"
+        )
+    return var, lines
+
+
+def _levels(table: DeliveredTable, feature: str) -> str:
+    return json.dumps(list(table.levels[feature]), ensure_ascii=False) if feature in table.levels else ""
+
+
+def _account(settings: BlockSettings, name: str, path: Path, table: DeliveredTable) -> str:
+    account = {
+        "kind": "measured",
+        "block": name,
+        "layer": settings.layer,
+        "values": settings.values,
+        "source_sha256": _sha256(path),
+        "content_sha256": content_hash(table.values.to_numpy(), table.matched, list(table.values.columns)),
+        "samples_in": table.samples_in,
+    }
+    return json.dumps(account, sort_keys=True, ensure_ascii=False)
+
+
+def _sha256(path: Path) -> str:
+    digest = hashlib.sha256()
+    with path.open("rb") as file:
+        while chunk := file.read(_CHUNK):
+            digest.update(chunk)
+    return digest.hexdigest()
+
+
+def _summary(name: str, table: DeliveredTable, n: int) -> str:
+    features = counted(table.values.shape[1], "feature")
+    return f"block '{name}': {features}, {counted(len(table.matched), 'sample')} of the sheet's {n}"

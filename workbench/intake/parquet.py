@@ -1,0 +1,120 @@
+"""Reading Parquet through the optional pyarrow: the first column (or the stored index) holds the ids."""
+
+from __future__ import annotations
+
+import json
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from workbench.errors import InputError
+
+from .faults import counted, listed, shown
+from .raw import ArrayBody, Body, Cell, CellBody, RawTable, WrongCell
+
+LARGEST_TABLE = 8 * 2**30
+
+
+def read_parquet(path: Path) -> RawTable:
+    """Return a Parquet table as a `RawTable`; nulls and NaN are missing cells.
+
+    The id column is the index that pandas stored, when it is one column, else the first column; it must hold
+    text or whole numbers.
+
+    Raises
+    ------
+    InputError
+        When pyarrow is not installed, the file is damaged or too large, or the ids are neither text nor whole
+        numbers.
+    """
+    table = _arrow_table(path)
+    name = _id_column(table)
+    rows = _ids(path, name, table.column(name))
+    names = [column for column in table.column_names if column != name]
+    if not names or not rows:
+        raise InputError(
+            f"{path}: the table has {counted(len(rows), 'row')} and {counted(len(names), 'column')} beside "
+            "the ids; it is empty"
+        )
+    return RawTable(
+        path=path,
+        form="parquet",
+        corner="" if name.startswith("__index_level_") else name,
+        columns=tuple(names),
+        rows=rows,
+        body=_body(table, names),
+        notes=(f"{path.name}: ids taken from column {shown(name)}",),
+    )
+
+
+def _arrow_table(path: Path) -> Any:
+    try:
+        from pyarrow import parquet
+    except ImportError:
+        raise InputError(
+            f"{path}: reading Parquet needs pyarrow, which is not installed; install the 'parquet' extra, or "
+            "deliver TSV"
+        ) from None
+    try:
+        with parquet.ParquetFile(path) as file:
+            cells = file.metadata.num_rows * file.metadata.num_columns
+            if cells * 8 > LARGEST_TABLE:
+                raise InputError(
+                    f"{path}: declares {cells:,} cells, more than {LARGEST_TABLE // 2**30} GB; deliver a "
+                    "smaller table"
+                )
+            table = file.read()
+    except InputError:
+        raise
+    except Exception:
+        raise InputError(f"{path}: the Parquet file is damaged or cut short; fetch it again") from None
+    if len(set(table.column_names)) < len(table.column_names):
+        twice = sorted({n for n in table.column_names if table.column_names.count(n) > 1})
+        raise InputError(
+            f"{path}: column names that occur twice: {listed(twice)}; give every column its own name"
+        )
+    return table
+
+
+def _id_column(table: Any) -> str:
+    stored = json.loads((table.schema.metadata or {}).get(b"pandas", b"{}")).get("index_columns", [])
+    named = [name for name in stored if isinstance(name, str) and name in table.column_names]
+    return named[0] if len(named) == 1 else table.column_names[0]
+
+
+def _ids(path: Path, name: str, column: Any) -> tuple[str, ...]:
+    cells = column.to_pylist()
+    wrong = next(
+        (i for i, c in enumerate(cells) if isinstance(c, bool) or not isinstance(c, str | int)), None
+    )
+    if wrong is not None:
+        raise InputError(
+            f"{path}: row {wrong + 1}, column {shown(name)}: the id is {shown(cells[wrong])}, neither text "
+            "nor a whole number; "
+            "put the ids as text into the first column"
+        )
+    return tuple(map(str, cells))
+
+
+def _body(table: Any, names: list[str]) -> Body:
+    from pyarrow import types
+
+    kinds = [table.schema.field(name).type for name in names]
+    if all(types.is_integer(kind) or types.is_floating(kind) for kind in kinds):
+        columns = [table.column(name).to_numpy().astype(np.float64) for name in names]
+        return ArrayBody(np.column_stack(columns))
+    cells = [[_cell(c) for c in table.column(name).to_pylist()] for name in names]
+    return CellBody(list(zip(*cells, strict=True)), len(names), _place)
+
+
+def _cell(value: Any) -> Cell:
+    if isinstance(value, bool):
+        return WrongCell("the boolean", str(value).upper())
+    if value is None or isinstance(value, str | int | float):
+        return value
+    return WrongCell(f"the {type(value).__name__}", str(value))
+
+
+def _place(i: int, j: int) -> str:
+    return f"row {i + 1}, column {j + 2}"

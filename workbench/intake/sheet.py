@@ -1,0 +1,191 @@
+"""Reading the sample sheet: one row per biological sample, ids and levels as text."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from pathlib import Path
+
+import pandas as pd
+
+from workbench.errors import InputError
+
+from .faults import counted, listed, shown
+from .ids import check_present, check_unique, id_notes
+from .kinds import column_kind, present
+from .raw import HEADER, Cell, RawTable, WrongCell
+from .readers import read_delivered
+from .suggest import Suggestions, suggest_columns
+
+__all__ = ["SampleSheet", "Suggestions", "column_kind", "read_sample_sheet", "suggest_columns"]
+
+_ID_NAMES = ("sample", "sample_id", "sampleid", "sample id", "sample_name", "samplename", "sample name")
+
+
+@dataclass(frozen=True)
+class SampleSheet:
+    """A sample sheet.
+
+    Attributes
+    ----------
+    frame
+        DataFrame indexed by sample id (text; the index has the name of the id column), a column of text for
+        each other column of the file, NaN where a cell is missing.
+    notes
+        What was accepted knowingly, one sentence each.
+    """
+
+    frame: pd.DataFrame
+    notes: tuple[str, ...]
+
+
+def read_sample_sheet(
+    path: str | Path, *, id_column: str | None = None, sheet: str | None = None
+) -> SampleSheet:
+    """Return the sample sheet of a TSV, CSV or XLSX file.
+
+    Ids stay as they are written. Other cells lose blanks at their ends (told); cells that are empty, ``NA``,
+    ``NaN``, ``nan``, ``N/A``, ``#N/A``, ``null`` or ``NULL`` are missing, ``-`` and ``.`` in columns of
+    numbers only.
+
+    Parameters
+    ----------
+    path
+        The file.
+    id_column
+        Column with the sample ids; by default the first that is called ``sample``, ``sample_id`` or alike,
+        else the first one.
+    sheet
+        Sheet of a workbook; needed when several hold cells.
+
+    Raises
+    ------
+    InputError
+        For ragged lines, columns without a name or with the same name, empty and repeated ids, with file,
+        line and column.
+    """
+    path = Path(path)
+    raw = read_delivered(path, sheet=sheet)
+    if raw.form not in ("tsv", "csv", "xlsx"):
+        raise InputError(
+            f"{path}: a sample sheet is TSV, CSV or XLSX, not {raw.form}; save it as one of these"
+        )
+    names = [raw.corner or "sample" if raw.corner_lacks else raw.corner, *raw.columns]
+    _check_names(raw, names)
+    columns = _columns(raw)
+    position = _id_position(path, names, id_column)
+    ids = list(raw.rows) if position == 0 else _ids(raw, columns[position], position, names[position])
+    check_present(path, ids, "row", lambda i: raw.place(i, position - 1))
+    _check_unique_ids(raw, ids, names, columns, position)
+    notes = [*raw.notes]
+    if id_column is None:
+        notes.append(f"{path.name}: sample ids taken from column {shown(names[position])}")
+    notes += [f"{path.name}: {note}" for note in id_notes(ids, "sample")]
+    frame = _frame(raw, names, columns, position, ids, notes)
+    return SampleSheet(frame, tuple(notes))
+
+
+def _check_names(raw: RawTable, names: Sequence[str]) -> None:
+    check_present(raw.path, names, "column", lambda j: raw.place(HEADER, j - 1))
+    check_unique(raw.path, names, "column", lambda j: raw.place(HEADER, j - 1))
+
+
+def _columns(raw: RawTable) -> list[list[Cell]]:
+    """Return the cells of each column, the first one included."""
+    rows = [[raw.rows[i], *raw.body.row(i)] for i in range(len(raw.rows))]
+    return [list(column) for column in zip(*rows, strict=True)]
+
+
+def _id_position(path: Path, names: Sequence[str], id_column: str | None) -> int:
+    if id_column is None:
+        return next((j for j, name in enumerate(names) if name.strip().casefold() in _ID_NAMES), 0)
+    if id_column not in names:
+        raise InputError(
+            f"{path}: there is no column {shown(id_column)} for the sample ids; the columns are "
+            f"{listed(names)}"
+        )
+    return list(names).index(id_column)
+
+
+def _ids(raw: RawTable, cells: Sequence[Cell], position: int, name: str) -> list[str]:
+    for i, cell in enumerate(cells):
+        if isinstance(cell, WrongCell):
+            raise InputError(
+                f"{raw.path}: {raw.place(i, position - 1)} (column {shown(name)}) holds {cell} in place of a "
+                "sample id; "
+                "set the column to the text format and type the ids again"
+            )
+    return ["" if cell is None else _text(cell) for cell in cells]
+
+
+def _check_unique_ids(
+    raw: RawTable, ids: Sequence[str], names: Sequence[str], columns: Sequence[Sequence[Cell]], position: int
+) -> None:
+    try:
+        check_unique(raw.path, ids, "sample", lambda i: raw.place(i, position - 1))
+    except InputError as error:
+        unique = [
+            n for n, cells in zip(names, columns, strict=True) if len(set(map(str, cells))) == len(cells)
+        ]
+        hint = f"; columns without repeated values: {listed(unique)}" if unique else ""
+        raise InputError(f"{error} (ids were taken from column {shown(names[position])}{hint})") from None
+
+
+def _text(cell: Cell) -> str:
+    if isinstance(cell, WrongCell):
+        return cell.text
+    if isinstance(cell, float) and cell.is_integer() and abs(cell) < 2**53:
+        return str(int(cell))
+    return str(cell)
+
+
+def _frame(
+    raw: RawTable,
+    names: Sequence[str],
+    columns: Sequence[Sequence[Cell]],
+    position: int,
+    ids: Sequence[str],
+    notes: list[str],
+) -> pd.DataFrame:
+    index = pd.Index(ids, dtype=object, name=names[position])
+    data = {}
+    for j, (name, cells) in enumerate(zip(names, columns, strict=True)):
+        if j == position:
+            continue
+        _refuse_broken(raw, cells, j, name)
+        written = pd.Series([None if c is None else _text(c) for c in cells], index=index, dtype=object)
+        data[name] = present(written).astype(object).reindex(index)
+        notes += _column_notes(raw.path.name, name, written, data[name])
+    return pd.DataFrame(data, index=index)
+
+
+def _refuse_broken(raw: RawTable, cells: Sequence[Cell], j: int, name: str) -> None:
+    for i, cell in enumerate(cells):
+        if isinstance(cell, WrongCell) and cell.kind in (
+            "the error value",
+            "a formula without a stored value",
+        ):
+            raise InputError(
+                f"{raw.path}: {raw.place(i, j - 1)} (column {shown(name)}, sample {shown(raw.rows[i])}) "
+                f"holds {cell}; "
+                "mend it in the spreadsheet and save again"
+            )
+
+
+def _column_notes(file: str, name: str, written: pd.Series, read: pd.Series) -> list[str]:
+    notes = []
+    trimmed = int((written.dropna() != written.dropna().str.strip()).sum())
+    if trimmed:
+        notes.append(
+            f"{file}: blanks at the ends of {counted(trimmed, 'cell')} of column {shown(name)} left out"
+        )
+    forms: dict[str, list[str]] = {}
+    for level in dict.fromkeys(read.dropna()):
+        forms.setdefault(level.casefold(), []).append(level)
+    for levels in forms.values():
+        if len(levels) > 1:
+            notes.append(
+                f"{file}: column {shown(name)} has levels that differ in case alone: {listed(levels)}; they "
+                "count as different"
+            )
+    return notes

@@ -1,0 +1,162 @@
+"""From a delivered file to a checked table, samples x features, aligned to the sample sheet by id."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, field
+from pathlib import Path
+
+import numpy as np
+import pandas as pd
+
+from workbench.errors import InputError
+
+from .faults import counted
+from .ids import check_no_dates, check_present, check_unique, id_notes
+from .mixed import read_mixed
+from .numbers import Part, check_range, read_numbers
+from .orientation import Matching, match_samples
+from .raw import HEADER, RawTable
+from .readers import read_delivered
+
+VALUES = ("counts", "intensities", "log", "continuous", "mixed")
+
+
+@dataclass(frozen=True)
+class DeliveredTable:
+    """A delivered table, checked and aligned.
+
+    Attributes
+    ----------
+    values
+        DataFrame, samples (sheet order) x features (file order), float64, missing = NaN. For ``mixed`` a
+        feature of text holds the positions of its levels.
+    samples_in
+        ``rows`` or ``columns``: where the samples stand in the file.
+    matched
+        Samples of the sheet that the table has, in sheet order: the rows of ``values``.
+    only_sheet, only_table
+        Ids that one side alone has.
+    levels
+        Levels of the text features of a ``mixed`` table, keyed by feature.
+    notes
+        What was found and accepted, one sentence each.
+    """
+
+    values: pd.DataFrame
+    samples_in: str
+    matched: tuple[str, ...]
+    only_sheet: tuple[str, ...]
+    only_table: tuple[str, ...]
+    notes: tuple[str, ...]
+    levels: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
+
+
+def delivered_table(
+    path: str | Path,
+    *,
+    sample_ids: Sequence[str],
+    values: str,
+    samples_in: str | None = None,
+    sheet: str | None = None,
+    array: str | None = None,
+) -> DeliveredTable:
+    """Return the table of a delivered file, checked, and aligned to the samples of the sheet by id.
+
+    Parameters
+    ----------
+    path
+        TSV, CSV (also .gz), XLSX, .h5ad or Parquet.
+    sample_ids
+        Ids of the sample sheet, in its order.
+    values
+        ``counts``, ``intensities``, ``log``, ``continuous`` or ``mixed``: what the numbers are.
+    samples_in
+        ``rows`` or ``columns``; found by matching the ids when left out.
+    sheet, array
+        Sheet of a workbook, array of an .h5ad file.
+
+    Raises
+    ------
+    InputError
+        For everything that would have to be guessed; the message names file, line and column (or cell),
+        feature and sample, up to five places with the total count, and the way out.
+    """
+    if values not in VALUES:
+        raise InputError(f"{path}: values is '{values}'; allowed: {', '.join(VALUES)}")
+    raw = read_delivered(path, sheet=sheet, array=array)
+    _check_ids_present(raw)
+    matching = match_samples(raw, sample_ids, samples_in)
+    part = _part(raw, matching)
+    features = raw.rows if matching.samples_in == "columns" else raw.columns
+    _check_features(raw, features, matching.samples_in)
+    numbers, levels, notes = _read(part, values)
+    return DeliveredTable(
+        values=pd.DataFrame(
+            numbers, index=pd.Index(matching.matched, dtype=object), columns=pd.Index(features, dtype=object)
+        ),
+        samples_in=matching.samples_in,
+        matched=matching.matched,
+        only_sheet=matching.only_sheet,
+        only_table=matching.only_table,
+        notes=(
+            *raw.notes,
+            *matching.notes,
+            *_feature_notes(raw, features),
+            *notes,
+            *_missing_note(raw, numbers),
+        ),
+        levels=levels,
+    )
+
+
+def _check_ids_present(raw: RawTable) -> None:
+    if not raw.columns or not raw.rows:
+        raise InputError(
+            f"{raw.path}: the table has one column only, its ids; a table needs a column for each sample (or "
+            "feature)"
+        )
+    check_present(raw.path, raw.columns, "column", lambda j: raw.place(HEADER, j))
+    check_present(raw.path, raw.rows, "row", lambda i: raw.place(i, -1))
+
+
+def _part(raw: RawTable, matching: Matching) -> Part:
+    rows, columns = range(raw.body.shape[0]), range(raw.body.shape[1])
+    if matching.samples_in == "columns":
+        return Part(raw, "columns", rows, matching.positions)
+    return Part(raw, "rows", matching.positions, columns)
+
+
+def _feature_place(raw: RawTable, samples_in: str) -> Callable[[int], str]:
+    if samples_in == "columns":
+        return lambda i: raw.place(i, -1)
+    return lambda j: raw.place(HEADER, j)
+
+
+def _check_features(raw: RawTable, features: Sequence[str], samples_in: str) -> None:
+    place = _feature_place(raw, samples_in)
+    check_no_dates(raw.path, features, place)
+    check_unique(raw.path, features, "feature", place)
+
+
+def _feature_notes(raw: RawTable, features: Sequence[str]) -> list[str]:
+    return [f"{raw.path.name}: {note}" for note in id_notes(features, "feature")]
+
+
+def _read(part: Part, values: str) -> tuple[np.ndarray, Mapping[str, tuple[str, ...]], Sequence[str]]:
+    if values == "mixed":
+        mixed = read_mixed(part)
+        stored = mixed.values if part.samples_in == "rows" else mixed.values.T
+        check_range(part, stored, values)
+        return mixed.values, mixed.levels, mixed.notes
+    numbers = read_numbers(part)
+    notes = check_range(part, numbers, values)
+    return np.ascontiguousarray(numbers.T if part.samples_in == "columns" else numbers), {}, notes
+
+
+def _missing_note(raw: RawTable, numbers: np.ndarray) -> list[str]:
+    missing = int(np.count_nonzero(np.isnan(numbers)))
+    if not missing:
+        return []
+    share = 100 * missing / numbers.size
+    return [f"{raw.path.name}: {counted(missing, 'cell')} of {numbers.size:,} ({share:.1f} %) missing"]

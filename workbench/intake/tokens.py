@@ -1,0 +1,86 @@
+"""What a cell's text stands for: a number, a missing value, or something that a spreadsheet made of one."""
+
+from __future__ import annotations
+
+import re
+
+MISSING = frozenset({"", "NA", "NaN", "nan", "N/A", "#N/A", "null", "NULL", "-", "."})
+MISSING_SHOWN = "an empty cell, NA, NaN, nan, N/A, #N/A, null, NULL, - or ."
+
+_DECIMAL_COMMA = re.compile(r"[+-]?(\d+,\d*|,\d+)([eE][+-]?\d+)?")
+_THOUSANDS = re.compile(r"[+-]?\d{1,3}(,\d{3})+(\.\d*)?")
+_CONTINENTAL = re.compile(r"[+-]?\d{1,3}([. '\u00a0\u202f\u2019]\d{3})+(,\d+)?")
+_LIMIT = re.compile(r"[<>\u2264\u2265]\s*=?\s*[\w.,]+", re.UNICODE)
+_BELOW = re.compile(
+    r"(b?\s*l\s*o\s*[dq]|n\.?d\.?|below.*|not detected|und(etermined|etected)?)", re.IGNORECASE
+)
+_UNIT = re.compile(r"[+-]?\d+(\.\d+)?\s*(%|[a-zA-Z\u00b5\u03bc]+(/\w+)?)")
+_SPREADSHEET_ERROR = re.compile(r"#(REF|DIV/0|VALUE|NAME|NUM|NULL|SPILL|CALC)[!?]?", re.IGNORECASE)
+
+
+def number_of(text: str) -> float | None:
+    """Return the number that a text is, exactly as Python's ``float`` reads it, or None.
+
+    Narrower than ``float``: no digits of other scripts and no ``1_000``. A missing token is not a number;
+    infinities are returned as such, and refused by those who ask.
+
+    >>> number_of("0.1") == 0.1, number_of("1_000"), number_of("NA"), number_of(" 2.5e3 ")
+    (True, None, None, 2500.0)
+    """
+    if text in MISSING or "_" in text or not text.isascii():
+        return None
+    try:
+        return float(text)
+    except ValueError:
+        return None
+
+
+def hint_for(text: str) -> str:
+    """Return what a text in place of a number probably is, or an empty text.
+
+    >>> hint_for("1,5"), hint_for("<LOD"), hint_for("abc")
+    ('a decimal comma', 'a value under or over a limit', '')
+    """
+    plain = text.strip()
+    hints = (
+        (_SPREADSHEET_ERROR, "a spreadsheet's error value"),
+        (_THOUSANDS, "a thousands separator, or a decimal comma"),
+        (_DECIMAL_COMMA, "a decimal comma"),
+        (_CONTINENTAL, "a thousands separator"),
+        (_LIMIT, "a value under or over a limit"),
+        (_BELOW, "a value under the limit of detection, or not detected"),
+        (_UNIT, "a number with a unit"),
+    )
+    return next((hint for pattern, hint in hints if pattern.fullmatch(plain)), "")
+
+
+def is_comma_number(text: str) -> bool:
+    """Return whether a text is a number written with a decimal comma or with thousands separators."""
+    plain = text.strip()
+    return any(p.fullmatch(plain) for p in (_DECIMAL_COMMA, _THOUSANDS, _CONTINENTAL))
+
+
+WAYS_OUT = {
+    "a decimal comma": "write numbers with a decimal point",
+    "a thousands separator, or a decimal comma": "write numbers with a decimal point and no thousands separator",
+    "a thousands separator": "write numbers without thousands separators",
+    "a value under or over a limit": "leave such cells empty (missing)",
+    "a value under the limit of detection, or not detected": "leave such cells empty (missing)",
+    "a number with a unit": "take the unit out of the cells",
+    "a spreadsheet's error value": "mend the formula in the spreadsheet and save again",
+}
+
+
+def way_out_for(texts: list[str]) -> str:
+    """Return the way out for a list of texts that are no numbers."""
+    ways = dict.fromkeys(WAYS_OUT[hint] for hint in map(hint_for, texts) if hint)
+    return "; ".join([*ways, f"a missing value is {MISSING_SHOWN}"])
+
+
+def missing_among(texts: frozenset[str] | set[str]) -> frozenset[str]:
+    """Return the missing tokens of a column of text: all, but ``-`` is a level where ``+`` is one too.
+
+    >>> "-" in missing_among({"+", "-"}), "-" in missing_among({"yes", "no", "-"})
+    (False, True)
+    """
+    return MISSING - {"-"} if any(text and not text.strip("+") for text in texts) else MISSING
