@@ -10,6 +10,7 @@ import pandas as pd
 from hypothesis import strategies as st
 
 from workbench.network import build_network
+from workbench.network.builder import EDGE_COLUMNS
 
 ATTRIBUTES = {"title": "an invented study", "analysis": "main", "fdr": 0.05}
 NUMBERS = [
@@ -93,3 +94,6 @@ names = st.text(st.characters(), min_size=1, max_size=12) | st.sampled_from(
 
 cells = st.none() | st.booleans() | st.integers() | st.floats() | names | st.just(pd.NA) | st.just(pd.NaT)
 """Cells of a table: anything, missing values and infinities among it."""
+
+columns = st.dictionaries(names.filter(lambda name: name not in {*EDGE_COLUMNS, "labels"}), cells, max_size=4)
+"""Further columns of an edge, under any names."""
