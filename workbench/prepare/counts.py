@@ -26,16 +26,18 @@ from workbench.prepare.steps import (
     FitContext,
     KeepFeatures,
     Step,
+    check_found,
+    extremes,
     keep_features,
     median_rows,
-    most_seen,
+    reference_features,
 )
 from workbench.prepare.tables import Mask, Matrix, MeasuredTable, StepAccount, StepTable, some
 
 ANDERS_HUBER = "Anders & Huber 2010, Genome Biology 11:R106"
 SMALLEST_COUNT = 10
 SHARE_WITHOUT_GROUPS = 0.2
-PRIOR_COUNT = 1.0
+PRIOR_COUNT = 3.0
 
 
 def count_steps() -> tuple[Step, ...]:
@@ -174,10 +176,8 @@ class SizeFactors:
     def fit(self, table: StepTable, context: FitContext) -> FittedSizeFactors:  # noqa: ARG002
         """Return the step with its reference."""
         positive = (table.values > 0).sum(axis=0)
-        used, cut = most_seen(positive, self.enough)
+        used, cut = reference_features(positive, self.enough, self.fewest)
         complete = int((positive == len(table.samples)).sum())
-        if used.sum() < self.fewest:
-            used = np.zeros_like(used)
         reference = log_geometric_means(table.values[:, used])
         return FittedSizeFactors(self, used, reference, complete, cut, len(table.samples))
 
@@ -211,26 +211,19 @@ class FittedSizeFactors:
         factors = median_of_ratios(
             table.values[:, self.used], self.log_reference, positive_only=self.positive_only
         )
-        lost = [table.samples[i] for i in np.flatnonzero(np.isnan(factors))]
-        if lost:
-            raise InputError(
-                f"no size factor for {some(lost)}: no positive count in any of the "
-                f"{self.used.sum()} features of the reference; exclude such samples, with the reason"
-            )
-        return factors
+        return check_found("size factor", factors, table, int(self.used.sum()))
 
     def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
         """Return counts divided by size factors."""
         factors = self.factors(table)
-        return table.with_values(table.values / factors[:, None]), self._account(factors)
+        return table.divided(factors), self._account(factors, table.samples)
 
-    def _account(self, factors: Matrix) -> StepAccount:
+    def _account(self, factors: Matrix, samples: tuple[str, ...]) -> StepAccount:
         numbers: dict[str, float | int | str] = {
             "reference_features": int(self.used.sum()),
             "features_without_zeros": self.complete,
         }
-        if factors.size:
-            numbers |= {"smallest_factor": float(factors.min()), "largest_factor": float(factors.max())}
+        numbers |= extremes("factor", factors, samples)
         return StepAccount(self.settings.step, self._sentence(), numbers, reference=ANDERS_HUBER)
 
     def _sentence(self) -> str:

@@ -55,13 +55,15 @@ def cell_uniforms(samples: Words, features: Words) -> NDArray[np.float64]:
     return ((words >> np.uint64(12)).astype(np.float64) + 0.5) * 2.0**-52
 
 
-def uniform_table(seed: int, samples: Sequence[str], features: Sequence[str]) -> NDArray[np.float64]:
-    """Return the uniform number of every cell of a table, (n_samples, n_features).
+def uniform_table(
+    seed: int, samples: Sequence[str], features: Sequence[str], purpose: str
+) -> NDArray[np.float64]:
+    """Return the uniform number of every cell of a table, (n_samples, n_features), for one purpose.
 
-    >>> whole = uniform_table(7, ["a", "b"], ["x", "y", "z"])
-    >>> bool(np.all(whole[1:, ::2] == uniform_table(7, ["b"], ["x", "z"])))
+    >>> whole = uniform_table(7, ["a", "b"], ["x", "y", "z"], "tail")
+    >>> bool(np.all(whole[1:, ::2] == uniform_table(7, ["b"], ["x", "z"], "tail")))
     True
     """
-    rows = name_keys(samples, seed, "sample")
-    columns = name_keys(features, seed, "feature")
+    rows = name_keys(samples, seed, f"{purpose}/sample")
+    columns = name_keys(features, seed, f"{purpose}/feature")
     return cell_uniforms(rows[:, None], columns[None, :])

@@ -6,13 +6,14 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from workbench.prepare.censoring import Censoring, LowTails, find_censoring, fit_low_tails
-from workbench.prepare.draws import cell_uniforms, name_keys
+from workbench.prepare.censoring import Censoring, find_censoring, no_censoring
+from workbench.prepare.draws import uniform_table
+from workbench.prepare.low_tails import LowTails, fit_low_tails
 from workbench.prepare.neighbours import Donors, neighbour_count
 from workbench.prepare.steps import FitContext
 from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable
 
-TROYANSKAYA = "Troyanskaya et al. 2001, Bioinformatics 17:520"
+REFERENCES = "Troyanskaya et al. 2001, Bioinformatics 17:520; Tobin 1958, Econometrica 26:24"
 
 
 @dataclass(frozen=True)
@@ -22,8 +23,8 @@ class FillGaps:
     Parameters
     ----------
     censored : bool
-        Look for left-censored gaps (see ``censoring``). Without, or without evidence, all gaps are
-        filled from neighbours.
+        Look for left-censored gaps (see ``censoring`` and ``low_tails``). Without, or without evidence, all
+        gaps are filled from neighbours.
     """
 
     censored: bool
@@ -41,10 +42,9 @@ class FillGaps:
 
     def fit(self, table: StepTable, context: FitContext) -> FittedGaps:
         """Return the step with donors, evidence and low tails learnt from these samples."""
-        p = len(table.features)
-        none = Censoring(False, np.zeros(p, dtype=bool), 0.0, 0.0, 0.0)
-        censoring = find_censoring(table.values) if self.censored else none
-        tails = fit_low_tails(table.values[:, censoring.censored])
+        censoring = find_censoring(table.values) if self.censored else no_censoring(len(table.features))
+        weak = table.values[:, censoring.censored]
+        tails = fit_low_tails(weak, table.scale, censoring.random_rate)
         donors = Donors(table.values, table.samples, neighbour_count(len(table.samples)))
         return FittedGaps(self, context.seed, donors, censoring, tails)
 
@@ -64,23 +64,30 @@ class FittedGaps:
         gaps = np.isnan(table.values)
         if not gaps.any():
             return table, StepAccount(self.settings.step, "no gaps", {"gaps": 0, "values": gaps.size})
-        low = gaps & self.censoring.censored
-        filled = self.donors.estimates(table.values, gaps & ~low, table.samples)
-        if low.any():
-            filled = np.where(low, self._draws(table), filled)
-        account = self._account(gaps, low)
+        drawn = self._draws(table, gaps)
+        filled = self.donors.estimates(table.values, gaps & np.isnan(drawn), table.samples)
+        filled = np.where(np.isnan(drawn), filled, drawn)
+        account = self._account(gaps, int((~np.isnan(drawn)).sum()))
         return replace(table, values=filled, imputed=table.imputed | gaps), account
 
-    def _draws(self, table: StepTable) -> Matrix:
+    def _draws(self, table: StepTable, gaps: Mask) -> Matrix:
+        """Return draws for the gaps that are left-censored, NaN for all other cells.
+
+        A gap of a censored feature is left-censored with the probability that its sample's limit gives it.
+        """
+        draws = np.full(gaps.shape, np.nan)
         columns = np.flatnonzero(self.censoring.censored)
-        rows = name_keys(table.samples, self.seed, "sample")
-        keys = name_keys([table.features[column] for column in columns], self.seed, "feature")
-        draws = np.full(table.values.shape, np.nan)
-        draws[:, columns] = self.tails.draw(cell_uniforms(rows[:, None], keys[None, :]))
+        if not columns.size:
+            return draws
+        names = [table.features[column] for column in columns]
+        lots = uniform_table(self.seed, table.samples, names, "censored or random")
+        low = gaps[:, columns] & (lots < self.tails.censored_chances(table.scale))
+        quantiles = uniform_table(self.seed, table.samples, names, "low tail")
+        draws[:, columns] = np.where(low, self.tails.draw(quantiles, table.scale), np.nan)
         return draws
 
-    def _account(self, gaps: Mask, low: Mask) -> StepAccount:
-        total, drawn = int(gaps.sum()), int(low.sum())
+    def _account(self, gaps: Mask, drawn: int) -> StepAccount:
+        total = int(gaps.sum())
         numbers: dict[str, float | int | str] = {
             "gaps": total,
             "values": gaps.size,
@@ -95,7 +102,7 @@ class FittedGaps:
                 "gap_rate_strongest_third": self.censoring.high_rate,
                 "rank_correlation": self.censoring.rank_correlation,
             }
-        return StepAccount(self.settings.step, self._sentence(gaps, drawn), numbers, reference=TROYANSKAYA)
+        return StepAccount(self.settings.step, self._sentence(gaps, drawn), numbers, reference=REFERENCES)
 
     def _sentence(self, gaps: Mask, drawn: int) -> str:
         total = int(gaps.sum())

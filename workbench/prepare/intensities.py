@@ -21,10 +21,12 @@ from workbench.prepare.steps import (
     DropUnusable,
     FitContext,
     Step,
+    check_found,
+    extremes,
     median_rows,
-    most_seen,
+    reference_features,
 )
-from workbench.prepare.tables import Mask, Matrix, MeasuredTable, StepAccount, StepTable, some
+from workbench.prepare.tables import Mask, Matrix, MeasuredTable, StepAccount, StepTable
 
 DIETERLE = "Dieterle et al. 2006, Analytical Chemistry 78:4281"
 
@@ -138,9 +140,7 @@ class Quotients:
     def fit(self, table: StepTable, context: FitContext) -> FittedQuotients:  # noqa: ARG002
         """Return the step with its reference."""
         seen = (~np.isnan(table.values)).sum(axis=0)
-        used, cut = most_seen(seen, self.enough)
-        if used.sum() < self.fewest:
-            used = np.zeros_like(used)
+        used, cut = reference_features(seen, self.enough, self.fewest)
         return FittedQuotients(self, used, reference_profile(table.values[:, used]), cut, len(table.samples))
 
 
@@ -165,24 +165,17 @@ class FittedQuotients:
         if not self.used.any():
             return np.ones(len(table.samples))
         factors = median_quotients(table.values[:, self.used], self.reference)
-        lost = [table.samples[i] for i in np.flatnonzero(np.isnan(factors))]
-        if lost:
-            raise InputError(
-                f"no dilution for {some(lost)}: no value in any of the {self.used.sum()} features of the "
-                "reference; exclude such samples, with the reason"
-            )
-        return factors
+        return check_found("dilution", factors, table, int(self.used.sum()))
 
     def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
         """Return values divided by dilutions."""
         factors = self.factors(table)
-        return table.with_values(table.values / factors[:, None]), self._account(factors)
+        return table.divided(factors), self._account(factors, table.samples)
 
-    def _account(self, factors: Matrix) -> StepAccount:
+    def _account(self, factors: Matrix, samples: tuple[str, ...]) -> StepAccount:
         used = int(self.used.sum())
         numbers: dict[str, float | int | str] = {"reference_features": used, "reference_seen_in": self.cut}
-        if factors.size:
-            numbers |= {"smallest_factor": float(factors.min()), "largest_factor": float(factors.max())}
+        numbers |= extremes("dilution", factors, samples)
         if used:
             sentence = (
                 f"values divided by the sample's median quotient to the reference profile of {used:,} "

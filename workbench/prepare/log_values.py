@@ -6,7 +6,6 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from workbench.errors import InputError
 from workbench.prepare.gaps import FillGaps
 from workbench.prepare.steps import (
     ENOUGH_REFERENCE,
@@ -16,11 +15,13 @@ from workbench.prepare.steps import (
     DropUnusable,
     FitContext,
     Step,
+    check_found,
     column_range,
+    extremes,
     median_rows,
-    most_seen,
+    reference_features,
 )
-from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable, some
+from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable
 
 LARGEST_LOG = 100.0
 
@@ -99,9 +100,7 @@ class MedianCentring:
     def fit(self, table: StepTable, context: FitContext) -> FittedCentring:  # noqa: ARG002
         """Return the step with its features and the typical median."""
         seen = (~np.isnan(table.values)).sum(axis=0)
-        used, cut = most_seen(seen, self.enough)
-        if used.sum() < self.fewest:
-            used = np.zeros_like(used)
+        used, cut = reference_features(seen, self.enough, self.fewest)
         medians = median_rows(table.values[:, used], ~np.isnan(table.values[:, used]))
         typical = float(np.median(medians[~np.isnan(medians)])) if used.any() else 0.0
         return FittedCentring(self, used, typical, cut, len(table.samples))
@@ -129,24 +128,17 @@ class FittedCentring:
             return np.zeros(len(table.samples))
         values = table.values[:, self.used]
         medians = median_rows(values, ~np.isnan(values))
-        lost = [table.samples[i] for i in np.flatnonzero(np.isnan(medians))]
-        if lost:
-            raise InputError(
-                f"no median for {some(lost)}: no value in any of the {self.used.sum()} features that "
-                "centring rests on; exclude such samples, with the reason"
-            )
-        return medians - self.typical
+        return check_found("median", medians, table, int(self.used.sum())) - self.typical
 
     def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
         """Return the shifted table."""
         shifts = self.shifts(table)
-        return table.with_values(table.values - shifts[:, None]), self._account(shifts)
+        return table.shifted(shifts), self._account(shifts, table.samples)
 
-    def _account(self, shifts: Matrix) -> StepAccount:
+    def _account(self, shifts: Matrix, samples: tuple[str, ...]) -> StepAccount:
         used = int(self.used.sum())
         numbers: dict[str, float | int | str] = {"features": used, "typical_median": self.typical}
-        if shifts.size:
-            numbers |= {"smallest_shift": float(shifts.min()), "largest_shift": float(shifts.max())}
+        numbers |= extremes("shift", shifts, samples)
         if not used:
             sentence = f"not centred: fewer than {self.settings.fewest} features; values taken as they are"
         else:

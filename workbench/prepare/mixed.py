@@ -8,6 +8,7 @@ share of ones in training.
 
 from __future__ import annotations
 
+from collections import Counter
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -93,8 +94,8 @@ class TextToNumbers:
             code, reasons = self._code(table.features[column], table.values[:, column], levels)
             codes.append(code)
             dropped.update(reasons)
-        names = [name for code in codes for name, _ in code.columns]
-        twice = sorted({name for name in names if names.count(name) > 1})
+        names = Counter(name for code in codes for name, _ in code.columns)
+        twice = sorted(name for name, count in names.items() if count > 1)
         if twice:
             raise InputError(f"a feature has the name of another's indicator: {some(twice)}; rename it")
         return FittedText(self, tuple(codes), dropped)

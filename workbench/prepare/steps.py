@@ -13,7 +13,8 @@ from typing import Protocol
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable
+from workbench.errors import InputError
+from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable, some
 
 SEEN_SHARE = 0.7
 FEWEST_SAMPLES = 2
@@ -85,6 +86,36 @@ def column_range(values: Matrix) -> tuple[Matrix, Matrix]:
     return np.fmin.reduce(values, axis=0), np.fmax.reduce(values, axis=0)
 
 
+def extremes(what: str, values: Matrix, samples: tuple[str, ...]) -> dict[str, float | int | str]:
+    """Return the smallest and the largest of a figure of the samples, with their names.
+
+    >>> extremes("shift", np.array([0.5, -2.0]), ("S1", "S2"))
+    {'smallest_shift': -2.0, 'smallest_shift_in': 'S2', 'largest_shift': 0.5, 'largest_shift_in': 'S1'}
+    """
+    numbers: dict[str, float | int | str] = {}
+    if values.size:
+        for side, place in (("smallest", int(np.argmin(values))), ("largest", int(np.argmax(values)))):
+            numbers |= {f"{side}_{what}": float(values[place]), f"{side}_{what}_in": samples[place]}
+    return numbers
+
+
+def check_found(what: str, values: Matrix, table: StepTable, n_features: int) -> Matrix:
+    """Return the figures of the samples.
+
+    Raises
+    ------
+    InputError
+        When one is NaN: the sample has nothing in any of the features that the figure rests on.
+    """
+    lost = [table.samples[row] for row in np.flatnonzero(np.isnan(values))]
+    if lost:
+        raise InputError(
+            f"no {what} for {some(lost)}: nothing measured in any of the {n_features:,} features that it "
+            "rests on; exclude such samples, with the reason"
+        )
+    return values
+
+
 def median_rows(values: Matrix, usable: Mask) -> Matrix:
     """Return each row's median over its usable cells, NaN where it has none."""
     if usable.all() and values.size:
@@ -109,6 +140,12 @@ def most_seen(seen: NDArray[np.int_], enough: int = ENOUGH_REFERENCE) -> tuple[M
     return seen >= cut, cut
 
 
+def reference_features(seen: NDArray[np.int_], enough: int, fewest: int) -> tuple[Mask, int]:
+    """Return the features of ``most_seen``; none of them when they are fewer than ``fewest``."""
+    used, cut = most_seen(seen, enough)
+    return (used, cut) if used.sum() >= fewest else (np.zeros_like(used), cut)
+
+
 @dataclass(frozen=True)
 class DropUnusable:
     """Drops features without any value and features with one value only."""
@@ -122,8 +159,14 @@ class DropUnusable:
         empty, constant = np.isnan(low), low == high
         reasons = {table.features[i]: "no value in any sample" for i in np.flatnonzero(empty)}
         for i in np.flatnonzero(constant):
-            reasons[table.features[i]] = f"constant: {low[i]:g} wherever it has a value"
+            reasons[table.features[i]] = (
+                f"constant: {_in_words(low[i], table.levels[i])} wherever it has a value"
+            )
         return keep_features(self.step, self.rule, table, ~(empty | constant), reasons)
+
+
+def _in_words(value: float, levels: tuple[str, ...] | None) -> str:
+    return f"{value:g}" if levels is None else f"'{levels[int(value)]}'"
 
 
 @dataclass(frozen=True)

@@ -27,7 +27,7 @@ def some(names: Sequence[str], limit: int = 3) -> str:
     return f"{shown} and {more} more" if more > 0 else shown
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class MeasuredTable:
     """Measured values of one block.
 
@@ -102,7 +102,7 @@ class StepAccount:
     reference: str = ""
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class PreparedTable:
     """Values fit for linear methods.
 
@@ -134,9 +134,13 @@ class PreparedTable:
         return {feature: why for step in self.account for feature, why in step.dropped.items()}
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class StepTable:
-    """The table on its way through the steps; steps return a new one and never write into it."""
+    """The table on its way through the steps; steps return a new one and never write into it.
+
+    ``scale`` is what the steps so far have taken from each sample's logarithms (log2 of its size factor or
+    dilution, the shift of its median), shape (n_samples,); zero where nothing was.
+    """
 
     values: Matrix
     imputed: Mask
@@ -144,17 +148,27 @@ class StepTable:
     features: tuple[str, ...]
     origins: tuple[str, ...]
     levels: Levels
+    scale: Matrix
 
     @classmethod
     def of(cls, table: MeasuredTable) -> StepTable:
         """Return the start: measured values, nothing imputed."""
         values = np.asarray(table.values, dtype=np.float64)
         imputed = np.zeros(values.shape, dtype=bool)
-        return cls(values, imputed, table.samples, table.features, table.features, table.feature_levels)
+        names, scale = table.features, np.zeros(len(table.samples))
+        return cls(values, imputed, table.samples, names, names, table.feature_levels, scale)
 
     def with_values(self, values: Matrix) -> StepTable:
         """Return the table with other values in the same cells."""
         return replace(self, values=values)
+
+    def divided(self, factors: Matrix) -> StepTable:
+        """Return the table with each sample's values divided by its factor."""
+        return replace(self, values=self.values / factors[:, None], scale=self.scale + np.log2(factors))
+
+    def shifted(self, shifts: Matrix) -> StepTable:
+        """Return the table with each sample's shift taken from its logarithms."""
+        return replace(self, values=self.values - shifts[:, None], scale=self.scale + shifts)
 
     def keep(self, mask: Mask) -> StepTable:
         """Return the table of the features where ``mask`` is true."""
