@@ -98,7 +98,7 @@ def sync_folders(root: Path, files: Iterable[str]) -> None:
             sync_folder(root / folder)
 
 
-def write_new(path: Path, data: bytes) -> None:
+def write_new(path: Path, data: bytes | memoryview) -> None:
     """Write a file that is not there yet, through to the disk."""
     handle = os.open(path, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o666)
     try:
@@ -110,7 +110,7 @@ def write_new(path: Path, data: bytes) -> None:
         os.close(handle)
 
 
-def write_whole(path: Path, data: bytes) -> None:
+def write_whole(path: Path, data: bytes | memoryview) -> None:
     """Write a file whole or not at all: a neighbour, through to the disk, then renamed."""
     part = part_of(path, new_token())
     try:
