@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from workbench.engine import aliased
 from workbench.errors import InputError
-from workbench.intake import Groups, design_columns, group_codes
+from workbench.intake import Groups, design_columns, group_codes, missing_samples
 from workbench.prepare import MeasuredTable
 from workbench.settings import AnalysisSettings, BlockSettings, Settings
 from workbench.store import check_file, read_block
@@ -44,13 +44,7 @@ class BlockView:
     def measured_rows(self, samples: Sequence[str]) -> MeasuredTable:
         """Return the measured table of some samples, in their order."""
         place = {sample: row for row, sample in enumerate(self.measured.samples)}
-        rows = [place[sample] for sample in samples]
-        return MeasuredTable(
-            values=self.measured.values[rows],
-            samples=tuple(samples),
-            features=self.measured.features,
-            levels=self.measured.levels,
-        )
+        return self.measured.take([place[sample] for sample in samples])
 
 
 @dataclass(frozen=True)
@@ -118,14 +112,20 @@ class AnalysisView:
         lacking = self.lacking_design(names)
         every = [set(self.blocks[name].samples) for name in names]
         samples = [
-            sample for sample in self.sheet.index if sample not in lacking and all(sample in one for one in every)
+            sample
+            for sample in self.sheet.index
+            if sample not in lacking and all(sample in one for one in every)
         ]
         frame = self.sheet.loc[samples]
         columns = self.adjust_columns(names)
         design = design_columns(frame, columns, self.study.samples.kinds)
         groups = group_codes(frame, self.factors, self.study.samples.order) if self.factors else None
         shared = Shared(
-            tuple(samples), design.matrix, tuple(design.names), groups, _group_indicators(groups, len(samples))
+            tuple(samples),
+            design.matrix,
+            tuple(design.names),
+            groups,
+            _group_indicators(groups, len(samples)),
         )
         self._require_usable(shared, names)
         return shared
@@ -144,11 +144,12 @@ class AnalysisView:
 
     def lacking_design(self, names: Sequence[str]) -> dict[str, str]:
         """Return the samples with an empty cell in a used design column, with the reason."""
-        reasons = {}
-        for column in [*self.factors, *self.adjust_columns(names)]:
-            for sample in self.sheet.index[self.sheet[column].isna()]:
-                reasons.setdefault(str(sample), f"no value in column '{column}' of the sample sheet")
-        return reasons
+        lacking = missing_samples(self.sheet, [*self.factors, *self.adjust_columns(names)])
+        return {
+            sample: f"no value in column '{column}' of the sample sheet"
+            for column, samples in lacking.items()
+            for sample in samples
+        }
 
     def _require_usable(self, shared: Shared, names: Sequence[str]) -> None:
         what = " and ".join(f"'{name}'" for name in names)
@@ -158,7 +159,7 @@ class AnalysisView:
         tangled = aliased(shared.within, [*shared.nuisance_names, *group_names])
         if tangled:
             raise InputError(
-                f"{where}: {', '.join(dict.fromkeys(tangled))} cannot be told apart from the columns before "
+                f"{where}: {', '.join(tangled)} cannot be told apart from the columns before "
                 f"(order: {', '.join([*self.adjust_columns(names), *self.factors])}) on the {shared.n} shared "
                 "samples, so that its effect has no estimate; take one of them out of adjust or group in project.toml"
             )
@@ -172,11 +173,8 @@ class AnalysisView:
 
 
 def factors_of(settings: Settings) -> list[str]:
-    """Return the group factors of the settings as a list, empty without a group."""
-    group = settings.samples.group
-    if group is None:
-        return []
-    return [group] if isinstance(group, str) else list(group)
+    """Return the columns whose cells are the groups, empty without a group."""
+    return list(settings.samples.group)
 
 
 def blocks_of(settings: Settings, analysis: str) -> list[str]:
@@ -218,14 +216,14 @@ def _view_block(state: ProjectState, name: str) -> BlockView:
 def _group_indicators(groups: Groups | None, n: int) -> NDArray[np.float64]:
     if groups is None:
         return np.zeros((n, 0))
-    return np.column_stack([groups.codes == level for level in range(1, len(groups.levels))] or [np.zeros((n, 0))]).astype(
-        np.float64
-    )
+    return (groups.codes[:, None] == np.arange(1, len(groups.levels))).astype(np.float64)
 
 
 def _require_levels(shared: Shared, where: str, factors: list[str]) -> None:
     if shared.n == 0:
-        raise InputError(f"{where}: no sample is in all of them; look at `workbench status` and the sample sheet")
+        raise InputError(
+            f"{where}: no sample is in all of them; look at `workbench status` and the sample sheet"
+        )
     if shared.groups is not None and len(shared.groups.levels) < 2:
         raise InputError(
             f"{where}: group '{'+'.join(factors)}' has one level ('{shared.groups.levels[0]}') among the "

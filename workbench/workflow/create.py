@@ -80,4 +80,6 @@ def _require_empty(folder: Path) -> None:
     if folder.exists() and not folder.is_dir():
         raise InputError(f"{folder}: a file, not a folder; name a new or an empty folder")
     if folder.is_dir() and any(folder.iterdir()):
-        raise InputError(f"{folder}: the folder is not empty; name a new or an empty one, nothing was changed")
+        raise InputError(
+            f"{folder}: the folder is not empty; name a new or an empty one, nothing was changed"
+        )

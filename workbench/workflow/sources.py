@@ -5,8 +5,8 @@ from __future__ import annotations
 import re
 from pathlib import Path
 
-from workbench.errors import DamageError, InputError
-from workbench.store import Change, ProjectPaths, check_file, read_journal, read_manifest, sha256_of
+from workbench.errors import InputError
+from workbench.store import Change, ProjectPaths, check_file, read_manifest, sha256_of
 
 
 def delivered_file(path: Path) -> Path:
@@ -43,27 +43,5 @@ def keep_source(change: Change, paths: ProjectPaths, delivered: Path) -> tuple[s
 
 def source_hash(paths: ProjectPaths, relative: str) -> str:
     """Return the sha256 of a kept source file; raise `DamageError` when it is not what was delivered."""
-    path = paths.root / relative
-    if not path.exists():
-        raise DamageError(
-            f"{path}: the delivered table is gone; put the file back (its sha256 is in {paths.journal.name})"
-        )
-    if relative in read_manifest(paths.root).files:
-        check_file(paths.root, relative)
-        return read_manifest(paths.root).files[relative]
-    digest = sha256_of(path)
-    known = _journalled_hash(paths, relative)
-    if known is not None and known != digest:
-        raise DamageError(
-            f"{path}: not the file that was delivered (sha256 {digest[:12]}..., journal {known[:12]}...); "
-            "restore it, or take the block out with `workbench remove-block` and add the new table"
-        )
-    return digest
-
-
-def _journalled_hash(paths: ProjectPaths, relative: str) -> str | None:
-    for line in reversed(read_journal(paths.root)):
-        for source in line.get("sources", []):
-            if source.get("file") == relative:
-                return str(source["sha256"])
-    return None
+    path = check_file(paths.root, relative)
+    return read_manifest(paths.root).files.get(relative) or sha256_of(path)

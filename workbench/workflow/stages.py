@@ -61,7 +61,9 @@ def stale_reason(state: ProjectState, stage: Stage) -> str | None:
         if not (state.root / output).exists():
             return f"{output} is missing"
     inputs = stage.inputs(state)
-    changed = sorted(key for key in inputs.keys() | record.inputs.keys() if inputs.get(key) != record.inputs.get(key))
+    changed = sorted(
+        key for key in inputs.keys() | record.inputs.keys() if inputs.get(key) != record.inputs.get(key)
+    )
     return "changed: " + ", ".join(changed) if changed else None
 
 

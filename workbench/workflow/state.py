@@ -7,10 +7,10 @@ from pathlib import Path
 
 import pandas as pd
 
-from workbench.errors import BusyError, InputError, SettingsError, WorkbenchError
+from workbench.errors import InputError, SettingsError
 from workbench.intake import read_sample_sheet
 from workbench.settings import Settings, cross_check, load_settings
-from workbench.store import Manifest, ProjectPaths, project_lock, read_manifest
+from workbench.store import Manifest, ProjectPaths, read_manifest
 
 
 @dataclass(frozen=True)
@@ -59,21 +59,6 @@ def load_state(paths: ProjectPaths) -> ProjectState:
         if faults:
             raise SettingsError(faults)
     return ProjectState(paths, settings, sheet, read_manifest(paths.root))
-
-
-def mend(paths: ProjectPaths) -> None:
-    """Finish or drop what a killed command left behind, if nobody works in the project just now.
-
-    Taking the lock does it; a project in use, or one that cannot be written, is left to the next writer.
-    """
-    try:
-        with project_lock(paths.root, "mend"):
-            pass
-    except BusyError:
-        return
-    except WorkbenchError:
-        if (paths.hidden / "pending.json").exists():
-            raise
 
 
 def _known(names: dict[str, object]) -> str:

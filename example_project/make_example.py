@@ -1,0 +1,170 @@
+"""Make the example project again: 48 barley plants, watered or in drought, two assays. All data are invented.
+
+Run from the repository's root: ``python example_project/make_example.py``.
+
+What is planted (``planted.tsv`` names every feature): four modules of 20 transcripts and 8 metabolites that
+follow one hidden factor each, independent of the drought; 120 transcripts and 20 metabolites that merely follow
+the drought, and nothing else of the other layer; two private factors in each layer (strong variation that the
+other layer does not share); three run days per assay, spread over both conditions, that shift every feature.
+The tables are delivered differently: counts with the features in rows, intensities with the samples in rows and
+in another order, with gaps where a metabolite is scarce.
+"""
+
+from __future__ import annotations
+
+import shutil
+import tempfile
+from pathlib import Path
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from workbench import Project
+
+HERE = Path(__file__).resolve().parent
+SEED = 48
+PLANTS, TRANSCRIPTS, METABOLITES = 48, 1500, 160
+MODULES, IN_MODULE = 4, {"transcripts": 20, "metabolites": 8}
+FOLLOW_DROUGHT = {"transcripts": 120, "metabolites": 20}
+SPREAD = {"transcripts": 0.45, "metabolites": 0.40}
+PRIVATE = 2
+KEPT = ("project.toml", "samples.tsv", "journal.jsonl", "source")
+
+
+def sample_sheet(rng: np.random.Generator) -> pd.DataFrame:
+    """Return the plants with their condition and the run day of each assay, balanced over the conditions."""
+    condition = np.repeat(["watered", "drought"], PLANTS // 2)
+    days = {}
+    for assay in ("rna_day", "ms_day"):
+        halves = [rng.permutation(np.tile(["d1", "d2", "d3"], PLANTS // 6)) for _ in range(2)]
+        days[assay] = np.concatenate(halves)
+    plants = [f"B{number:02d}" for number in range(1, PLANTS + 1)]
+    return pd.DataFrame({"plant": plants, "condition": condition, **days})
+
+
+def planted_parts(layer: str, names: list[str]) -> pd.DataFrame:
+    """Return which features are in a module, follow the drought, or neither."""
+    part = np.full(len(names), "background", dtype=object)
+    size = IN_MODULE[layer]
+    for module in range(MODULES):
+        part[module * size : (module + 1) * size] = f"module {module + 1}"
+    start = MODULES * size
+    part[start : start + FOLLOW_DROUGHT[layer]] = "follows the drought"
+    return pd.DataFrame({"layer": layer, "feature": names, "planted": part})
+
+
+def deviations(
+    rng: np.random.Generator,
+    layer: str,
+    sheet: pd.DataFrame,
+    planted: pd.Series,
+    factors: NDArray[np.float64],
+) -> NDArray[np.float64]:
+    """Return log2 deviations of every feature from its level (plants x features)."""
+    p = len(planted)
+    drought = (sheet["condition"] == "drought").to_numpy(float)
+    day = sheet["rna_day" if layer == "transcripts" else "ms_day"].str[1].astype(int).to_numpy() - 1
+    deviation = rng.normal(0, SPREAD[layer], (PLANTS, p))
+    deviation += rng.normal(0, 0.5, (3, p))[day]
+    deviation += rng.normal(size=(PLANTS, PRIVATE)) @ (
+        rng.normal(0, 0.35, (PRIVATE, p)) * (rng.random((PRIVATE, p)) < 0.5)
+    )
+    for module in range(MODULES):
+        inside = (planted == f"module {module + 1}").to_numpy()
+        signs = rng.choice([-1.0, 1.0], inside.sum(), p=[0.3, 0.7])
+        deviation[:, inside] += np.outer(factors[:, module], signs * rng.uniform(0.8, 1.2, inside.sum()))
+    follows = (planted == "follows the drought").to_numpy()
+    deviation[:, follows] += np.outer(
+        drought, rng.choice([-1, 1], follows.sum()) * rng.uniform(1.0, 2.0, follows.sum())
+    )
+    return deviation
+
+
+def counts_table(
+    rng: np.random.Generator, sheet: pd.DataFrame, names: list[str], log2: NDArray[np.float64]
+) -> pd.DataFrame:
+    """Return negative binomial counts, features in rows, at a different depth for each plant."""
+    level = rng.normal(7.5, 2.0, len(names))
+    share = 2.0 ** (level + log2)
+    depth = rng.lognormal(np.log(600_000), 0.25, PLANTS)
+    mean = share / share.sum(axis=1, keepdims=True) * depth[:, None]
+    counts = rng.poisson(mean * rng.gamma(1 / 0.02, 0.02, mean.shape))
+    return pd.DataFrame(counts.T, index=pd.Index(names, name="transcript"), columns=sheet["plant"])
+
+
+def intensities_table(
+    rng: np.random.Generator, sheet: pd.DataFrame, names: list[str], log2: NDArray[np.float64]
+) -> pd.DataFrame:
+    """Return peak areas, samples in rows and in run order, diluted differently, with censored gaps."""
+    level = rng.normal(16, 2.0, len(names))
+    log_area = level + log2 + rng.normal(0, 0.25, (PLANTS, 1))
+    limit = np.quantile(log_area, 0.06)
+    area = np.round(2.0**log_area, 1)
+    area[(log_area < limit) | (rng.random(area.shape) < 0.01)] = np.nan
+    table = pd.DataFrame(area, index=pd.Index(sheet["plant"], name="plant"), columns=names)
+    return table.loc[:, table.notna().sum() > 0].iloc[rng.permutation(PLANTS)]
+
+
+def make(folder: Path) -> None:
+    """Write the delivered tables into ``folder``, with what was planted."""
+    rng = np.random.default_rng(SEED)
+    sheet = sample_sheet(rng)
+    factors = rng.normal(size=(PLANTS, MODULES))
+    names = {
+        "transcripts": [f"bt{number:04d}" for number in range(1, TRANSCRIPTS + 1)],
+        "metabolites": [f"bm{number:03d}" for number in range(1, METABOLITES + 1)],
+    }
+    planted = {layer: planted_parts(layer, list(rng.permutation(ids))) for layer, ids in names.items()}
+    log2 = {}
+    for layer, ids in names.items():
+        parts = planted[layer]
+        values = pd.DataFrame(
+            deviations(rng, layer, sheet, parts["planted"], factors), columns=parts["feature"]
+        )
+        log2[layer] = values[ids].to_numpy()
+    sheet.to_csv(folder / "plants.tsv", sep="\t", index=False)
+    counts_table(rng, sheet, names["transcripts"], log2["transcripts"]).to_csv(
+        folder / "counts.tsv", sep="\t"
+    )
+    intensities_table(rng, sheet, names["metabolites"], log2["metabolites"]).to_csv(
+        folder / "metabolites.csv"
+    )
+    found = pd.concat(planted.values()).sort_values(["layer", "planted", "feature"])
+    found[found["planted"] != "background"].to_csv(folder / "planted.tsv", sep="\t", index=False)
+
+
+def build(delivered: Path, folder: Path) -> None:
+    """Make a project of the delivered tables, as a user would."""
+    project = Project.create(folder, title="Barley under drought (invented data)")
+    project.add_samples(delivered / "plants.tsv", group=["condition"])
+    project.add_block(
+        "transcripts", delivered / "counts.tsv", layer="transcripts", values="counts", adjust=["rna_day"]
+    )
+    project.add_block(
+        "metabolites",
+        delivered / "metabolites.csv",
+        layer="metabolites",
+        values="intensities",
+        adjust=["ms_day"],
+    )
+
+
+def main() -> None:
+    """Write the example beside this script."""
+    with tempfile.TemporaryDirectory() as place:
+        delivered, folder = Path(place) / "delivered", Path(place) / "project"
+        delivered.mkdir()
+        make(delivered)
+        build(delivered, folder)
+        for name in ("blocks", "prepared", "results", ".workbench", *KEPT):
+            old = HERE / name
+            shutil.rmtree(old) if old.is_dir() else old.unlink(missing_ok=True)
+        for name in KEPT:
+            new = folder / name
+            shutil.copytree(new, HERE / name) if new.is_dir() else shutil.copy(new, HERE / name)
+        shutil.copy(delivered / "planted.tsv", HERE / "planted.tsv")
+
+
+if __name__ == "__main__":
+    main()

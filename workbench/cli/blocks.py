@@ -1,0 +1,74 @@
+"""Commands about blocks: ``add-block`` and ``remove-block``."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+from workbench.cli.console import answer, tell_next
+from workbench.cli.options import AdjustOption, ProjectOption, QuietOption, open_project
+
+NameArgument = Annotated[
+    str, typer.Argument(metavar="NAME", help="Name of the block: letters, digits, _ and -.")
+]
+
+
+def register(app: typer.Typer) -> None:
+    """Add the commands to the program."""
+    app.command(
+        "add-block",
+        epilog="Example: workbench add-block rna counts.tsv --layer transcripts --values counts --adjust rna_day",
+    )(add_block)
+    app.command("remove-block", epilog="Example: workbench remove-block rna")(remove_block)
+
+
+def add_block(
+    name: NameArgument,
+    file: Annotated[Path, typer.Argument(metavar="FILE", help="TSV, CSV, XLSX, .h5ad or Parquet.")],
+    layer: Annotated[
+        str,
+        typer.Option(
+            metavar="LAYER", help="transcripts, metabolites, proteins, lipids, clinical, or your own."
+        ),
+    ],
+    values: Annotated[
+        str, typer.Option(metavar="VALUES", help="counts, intensities, log, continuous or mixed.")
+    ],
+    samples_in: Annotated[
+        str | None,
+        typer.Option(metavar="rows|columns", help="Where the samples stand; default: found by name."),
+    ] = None,
+    annotations: Annotated[
+        Path | None, typer.Option(metavar="FILE", help="Table of feature ids and identifier columns.")
+    ] = None,
+    sheet: Annotated[str | None, typer.Option(metavar="NAME", help="Sheet of an XLSX file.")] = None,
+    array: Annotated[str | None, typer.Option(metavar="NAME", help="X or a layer of an .h5ad file.")] = None,
+    adjust: AdjustOption = None,
+    project: ProjectOption = None,
+    quiet: QuietOption = False,
+) -> None:
+    """Bring a delivered table in: keep it, read it, align it to the sample sheet."""
+    opened = open_project(project)
+    lines = opened.add_block(
+        name,
+        file,
+        layer=layer,
+        values=values,
+        samples_in=samples_in,
+        annotations=annotations,
+        sheet=sheet,
+        array=array,
+        adjust=adjust or (),
+    )
+    answer(lines)
+    tell_next(opened.status().next_command, quiet=quiet)
+
+
+def remove_block(name: NameArgument, project: ProjectOption = None, quiet: QuietOption = False) -> None:
+    """Take a block out of the project; its source stays."""
+    opened = open_project(project)
+    opened.remove_block(name)
+    answer([f"block '{name}' is out of the project; its delivered table stays in {opened.paths.source}"])
+    tell_next(opened.status().next_command, quiet=quiet)

@@ -1,0 +1,73 @@
+"""What goes to the terminal: results on standard output, messages and progress on standard error."""
+
+from __future__ import annotations
+
+import sys
+from collections.abc import Iterable, Iterator
+from contextlib import contextmanager
+from typing import TYPE_CHECKING
+
+import typer
+
+if TYPE_CHECKING:
+    from workbench.workflow.reporting import Progress, Reporter
+
+
+def complain(text: str) -> None:
+    """Print an error on standard error, whole, markup untouched."""
+    typer.echo(f"error: {text}", err=True)
+
+
+def tell(text: str, *, quiet: bool = False) -> None:
+    """Print a message on standard error unless asked to be quiet."""
+    if not quiet:
+        typer.echo(text, err=True)
+
+
+def tell_next(command: str, *, quiet: bool = False) -> None:
+    """Print the next command to type."""
+    tell(f"next: {command}", quiet=quiet)
+
+
+def answer(lines: Iterable[str]) -> None:
+    """Print results on standard output."""
+    for line in lines:
+        typer.echo(line)
+
+
+def terminal_reporter(quiet: bool) -> Reporter:
+    """Return a listener that writes sentences, and draws progress where standard error is a terminal."""
+    from workbench.workflow.reporting import SILENT, Reporter
+
+    if quiet:
+        return SILENT
+
+    class TerminalReporter(Reporter):
+        def say(self, text: str) -> None:
+            tell(text)
+
+        @contextmanager
+        def progress(self, label: str) -> Iterator[Progress | None]:  # type: ignore[override]
+            if not sys.stderr.isatty():
+                yield None
+                return
+            with _bar(label) as update:
+                yield update
+
+    return TerminalReporter()
+
+
+@contextmanager
+def _bar(label: str) -> Iterator[Progress]:
+    from rich.console import Console
+    from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeRemainingColumn
+
+    columns = (
+        TextColumn("  {task.description}", markup=False),
+        BarColumn(),
+        MofNCompleteColumn(),
+        TimeRemainingColumn(),
+    )
+    with Progress(*columns, console=Console(stderr=True), transient=True) as drawn:
+        task = drawn.add_task(label, total=None)
+        yield lambda done, total: drawn.update(task, completed=done, total=total)

@@ -1,0 +1,88 @@
+"""Commands that run stages: ``prepare``, ``integrate``, ``network`` and ``run``."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Annotated
+
+import typer
+
+from workbench.cli.console import answer, tell, tell_next, terminal_reporter
+from workbench.cli.options import AnalysesArgument, ProjectOption, QuietOption, open_project
+
+if TYPE_CHECKING:
+    from workbench.project import Project
+    from workbench.workflow.stages import Outcome
+
+
+def register(app: typer.Typer) -> None:
+    """Add the commands to the program."""
+    app.command("prepare", epilog="Example: workbench prepare rna")(prepare)
+    app.command("integrate", epilog="Example: workbench integrate main")(integrate)
+    app.command("network", epilog="Example: workbench network main")(network)
+    app.command("run", epilog="Example: workbench run --dry-run")(run)
+
+
+def prepare(
+    blocks: Annotated[
+        list[str] | None, typer.Argument(metavar="[NAME]...", help="Blocks; default: all.")
+    ] = None,
+    project: ProjectOption = None,
+    quiet: QuietOption = False,
+) -> None:
+    """Run each block's recipe: from measured values to values fit for linear methods."""
+    opened = open_project(project)
+    _close(opened, opened.prepare(*(blocks or ()), reporter=terminal_reporter(quiet)), quiet)
+
+
+def integrate(
+    analyses: AnalysesArgument = None, project: ProjectOption = None, quiet: QuietOption = False
+) -> None:
+    """Run the engine: canonical pairs of the two layers, tested and cross-validated."""
+    opened = open_project(project)
+    _close(opened, opened.integrate(*(analyses or ()), reporter=terminal_reporter(quiet)), quiet)
+
+
+def network(
+    analyses: AnalysesArgument = None, project: ProjectOption = None, quiet: QuietOption = False
+) -> None:
+    """Build the network: tested edges, communities, GraphML."""
+    opened = open_project(project)
+    outcome = opened.network(*(analyses or ()), reporter=terminal_reporter(quiet))
+    _summarise(opened, analyses or list(opened.state().settings.analyses))
+    _close(opened, outcome, quiet)
+
+
+def run(
+    analyses: AnalysesArgument = None,
+    dry_run: Annotated[
+        bool, typer.Option("--dry-run", help="Say what would run, and why; change nothing.")
+    ] = False,
+    project: ProjectOption = None,
+    quiet: QuietOption = False,
+) -> None:
+    """Run every stage that is out of date, in order."""
+    opened = open_project(project)
+    if dry_run:
+        answer(f"{one.stage.name}: {one.reason or 'up to date'}" for one in opened.plan(*(analyses or ())))
+        return
+    outcome = opened.run(*(analyses or ()), reporter=terminal_reporter(quiet))
+    _summarise(opened, analyses or list(opened.state().settings.analyses))
+    _close(opened, outcome, quiet)
+
+
+def _summarise(project: Project, analyses: list[str]) -> None:
+    from workbench.network import network_summary
+
+    for analysis in analyses:
+        result = project.result(analysis)
+        folder = project.paths.analysis(analysis)
+        answer([f"{analysis}:", *(f"  {line}" for line in network_summary(result.graph))])
+        answer([f"  edges: {folder / 'edges.tsv'}", f"  network: {folder / 'network.graphml'}"])
+
+
+def _close(project: Project, outcome: Outcome, quiet: bool) -> None:
+    if not outcome.done:
+        answer([f"nothing to do: {len(outcome.fresh)} stages are up to date"])
+    else:
+        tell(f"done: {', '.join(outcome.done)}", quiet=quiet)
+    tell_next(project.status().next_command, quiet=quiet)

@@ -1,0 +1,223 @@
+"""The public face: a project directory as a Python object, with the same words as the commands."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import pandas as pd
+
+from workbench.errors import InputError
+from workbench.network import read_graphml
+from workbench.store import FileFault, ProjectPaths, check_all, check_file, find_project, read_table, settle
+from workbench.workflow import blocks as workflow_blocks
+from workbench.workflow import plan
+from workbench.workflow.create import DEFAULT_TEMPLATE, create_project
+from workbench.workflow.reporting import SILENT, Reporter
+from workbench.workflow.samples import SheetAccount, SheetDelivery, add_samples
+from workbench.workflow.stages import Outcome, Standing, run_stages, standings
+from workbench.workflow.state import ProjectState, load_state
+from workbench.workflow.status import Status, status_of
+from workbench.workflow.tables import measured_block
+
+if TYPE_CHECKING:
+    import networkx as nx
+    from anndata import AnnData
+
+
+class Blocks(Mapping[str, "AnnData"]):
+    """Measured blocks by name; each is read when it is asked for, its file checked against its hash."""
+
+    def __init__(self, project: Project) -> None:
+        self._project = project
+
+    def __getitem__(self, name: str) -> AnnData:
+        state = self._project.state()
+        state.require_block(name)
+        return measured_block(state, name)
+
+    def __iter__(self) -> Iterator[str]:
+        return iter(self._project.state().settings.blocks)
+
+    def __len__(self) -> int:
+        return len(self._project.state().settings.blocks)
+
+
+@dataclass(frozen=True)
+class Result:
+    """What an analysis wrote, read from its files; each is checked against its hash first."""
+
+    root: Path
+    analysis: str
+
+    @property
+    def edges(self) -> pd.DataFrame:
+        """Return edges.tsv."""
+        return self._table("edges.tsv")
+
+    @property
+    def group_pairs(self) -> pd.DataFrame:
+        """Return group_pairs.tsv."""
+        return self._table("group_pairs.tsv")
+
+    @property
+    def features(self) -> pd.DataFrame:
+        """Return features.tsv."""
+        return self._table("features.tsv")
+
+    @property
+    def components(self) -> pd.DataFrame:
+        """Return components.tsv (two layers)."""
+        return self._table("components.tsv")
+
+    @property
+    def explained(self) -> pd.DataFrame:
+        """Return explained.tsv (two layers)."""
+        return self._table("explained.tsv")
+
+    @property
+    def record(self) -> dict[str, Any]:
+        """Return record.json."""
+        loaded: dict[str, Any] = json.loads(self._path("record.json").read_text("utf-8"))
+        return loaded
+
+    @property
+    def graph(self) -> nx.Graph:
+        """Return the network."""
+        return read_graphml(self._path("network.graphml"))
+
+    def _table(self, file: str) -> pd.DataFrame:
+        return read_table(self._path(file))
+
+    def _path(self, file: str) -> Path:
+        relative = f"results/{self.analysis}/{file}"
+        path = self.root / relative
+        if not path.exists():
+            raise InputError(
+                f"{path}: not there (yet); run the analysis with `workbench run {self.analysis}`"
+            )
+        check_file(self.root, relative)
+        return path
+
+
+@dataclass(frozen=True)
+class Project:
+    """One study: a directory with ``project.toml`` at its root.
+
+    Examples
+    --------
+    >>> import tempfile
+    >>> with tempfile.TemporaryDirectory() as folder:
+    ...     project = Project.create(Path(folder) / "study", title="Barley under drought")
+    ...     project.status().next_command
+    'workbench add-samples FILE --group COLUMN --adjust COLUMN'
+    """
+
+    paths: ProjectPaths
+
+    @classmethod
+    def open(cls, path: str | Path) -> Project:
+        """Return the project in a folder or above it; what a killed command left is finished or dropped."""
+        paths = find_project(Path(path))
+        settle(paths.root)
+        return cls(paths)
+
+    @classmethod
+    def create(cls, path: str | Path, *, template: str = DEFAULT_TEMPLATE, title: str = "") -> Project:
+        """Make a project in a new or empty folder."""
+        return cls(create_project(Path(path), template=template, title=title))
+
+    def state(self) -> ProjectState:
+        """Return settings, sample sheet and manifest as they stand now."""
+        return load_state(self.paths)
+
+    @property
+    def blocks(self) -> Blocks:
+        """Return the measured blocks by name."""
+        return Blocks(self)
+
+    def add_samples(
+        self,
+        file: str | Path,
+        *,
+        id: str | None = None,
+        group: Sequence[str] = (),
+        adjust: Sequence[str] = (),
+    ) -> SheetAccount:
+        """Import the sample sheet."""
+        return add_samples(self.paths, SheetDelivery(Path(file), id, _names(group), _names(adjust)))
+
+    def add_block(
+        self,
+        name: str,
+        file: str | Path,
+        *,
+        layer: str,
+        values: str,
+        samples_in: str | None = None,
+        annotations: str | Path | None = None,
+        sheet: str | None = None,
+        array: str | None = None,
+        adjust: Sequence[str] = (),
+    ) -> tuple[str, ...]:
+        """Bring a delivered table in as a block; return what was understood of it."""
+        delivery = workflow_blocks.Delivery(
+            name=name,
+            file=Path(file),
+            layer=layer,
+            values=values,
+            samples_in=samples_in,
+            annotations=None if annotations is None else Path(annotations),
+            sheet=sheet,
+            array=array,
+            adjust=_names(adjust),
+        )
+        return workflow_blocks.add_block(self.paths, delivery)
+
+    def remove_block(self, name: str) -> None:
+        """Take a block out of the project; its source stays."""
+        workflow_blocks.remove_block(self.paths, name)
+
+    def prepare(self, *blocks: str, reporter: Reporter = SILENT) -> Outcome:
+        """Run the recipes of the named blocks, or of all."""
+        return run_stages(self.paths, "prepare", lambda state: plan.block_stages(state, blocks), reporter)
+
+    def integrate(self, *analyses: str, reporter: Reporter = SILENT) -> Outcome:
+        """Run the engine for the named analyses, or for all."""
+        return run_stages(
+            self.paths, "integrate", lambda state: plan.integrate_stages(state, analyses), reporter
+        )
+
+    def network(self, *analyses: str, reporter: Reporter = SILENT) -> Outcome:
+        """Build the networks of the named analyses, or of all."""
+        return run_stages(self.paths, "network", lambda state: plan.network_stages(state, analyses), reporter)
+
+    def run(self, *analyses: str, reporter: Reporter = SILENT) -> Outcome:
+        """Run every stage that is out of date, in order."""
+        return run_stages(self.paths, "run", lambda state: plan.network_stages(state, analyses), reporter)
+
+    def plan(self, *analyses: str) -> list[Standing]:
+        """Return the standing of the stages that ``run`` would look at."""
+        state = self.state()
+        return standings(state, plan.network_stages(state, analyses))
+
+    def status(self) -> Status:
+        """Return what is done, what is stale, and the next command."""
+        return status_of(self.state())
+
+    def check_files(self) -> list[FileFault]:
+        """Return the stored files that are not what the program wrote."""
+        return check_all(self.paths.root)
+
+    def result(self, analysis: str) -> Result:
+        """Return what an analysis wrote."""
+        self.state().require_analysis(analysis)
+        return Result(self.paths.root, analysis)
+
+
+def _names(value: Sequence[str]) -> tuple[str, ...]:
+    """Return one name or several as a tuple."""
+    return (value,) if isinstance(value, str) else tuple(value)

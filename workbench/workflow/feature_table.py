@@ -1,0 +1,108 @@
+"""features.tsv: every feature of an analysis with its place in the network, its group effect and its gaps."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import h5py
+import numpy as np
+import pandas as pd
+
+from workbench.engine import Nuisance, group_effects
+from workbench.store import check_file
+from workbench.workflow.analysis_view import AnalysisView, BlockView
+from workbench.workflow.state import ProjectState
+
+LABEL_COLUMNS = ("label", "symbol", "gene_symbol", "gene_name", "name", "compound", "metabolite")
+OWN_COLUMNS = ("kind", "levels", "origin")
+
+
+def features_table(view: AnalysisView) -> pd.DataFrame:
+    """Return one row per prepared feature of the analysis, blocks in their order."""
+    tables = [block_features(view, block) for block in view.blocks.values()]
+    identifiers = [column for table in tables for column in table.attrs["identifiers"]]
+    ordered = [column for column in tables[0] if column not in tables[0].attrs["identifiers"]]
+    joined = pd.concat([pd.DataFrame(table.to_dict("series")) for table in tables], ignore_index=True)
+    return joined[[*ordered, *dict.fromkeys(identifiers)]]
+
+
+def block_features(view: AnalysisView, block: BlockView) -> pd.DataFrame:
+    """Return the rows of one block: names, group effect with p and q, mean, gaps, identifier columns."""
+    shared = view.shared([block.name])
+    rows = block.rows(shared.samples)
+    values = block.values[rows]
+    measured = block.measured_rows(list(shared.samples))
+    missing = dict(zip(measured.features, np.isnan(measured.values).mean(axis=0), strict=True))
+    identifiers = [str(column) for column in block.annotations if column not in OWN_COLUMNS]
+    labels = _labels(block, identifiers)
+    table = pd.DataFrame(
+        {"feature": block.features, "block": block.name, "layer": block.layer, "label": labels}
+    )
+    effect = p = q = np.full(len(block.features), np.nan)
+    level: object = ""
+    if shared.groups is not None:
+        found = group_effects(values, shared.groups.codes, Nuisance.of(shared.nuisance, shared.n))
+        effect, p, q = found.effect, found.p, found.q
+        level = [shared.groups.levels[code] if code >= 0 else "" for code in found.level]
+    table["group_effect"], table["group_level"], table["group_p"], table["group_q"] = effect, level, p, q
+    table["mean"] = values.mean(axis=0)
+    table["missing_share"] = [missing[origin] for origin in block.annotations.get("origin", block.features)]
+    table["imputed_share"] = block.imputed[rows].mean(axis=0)
+    for column in identifiers:
+        table[column] = block.annotations[column].astype(str).to_numpy()
+    table.attrs["identifiers"] = identifiers
+    return table
+
+
+def _labels(block: BlockView, identifiers: list[str]) -> list[str]:
+    by_lower = {column.lower(): column for column in identifiers}
+    for wanted in LABEL_COLUMNS:
+        if wanted in by_lower:
+            named = block.annotations[by_lower[wanted]].astype(str)
+            return [label or feature for label, feature in zip(named, block.features, strict=True)]
+    return list(block.features)
+
+
+def canonical_correlations(state: ProjectState, analysis: str) -> pd.DataFrame:
+    """Return the correlations of each feature with both variates of each canonical pair.
+
+    Columns ``pair1_own``, ``pair1_other``, ...; the index is (block, feature).  Out-of-sample canonical
+    correlations stand in ``attrs["correlations_cv"]`` (None where they could not be had).
+    """
+    relative = f"results/{analysis}/model.h5"
+    check_file(state.root, relative)
+    with h5py.File(Path(state.root) / relative, "r") as file:
+        sides = [_one_side(file[letter]) for letter in ("x", "y")]
+        cv = file["correlations_cv"][()] if "correlations_cv" in file else None
+    table = pd.concat(sides)
+    table.attrs["correlations_cv"] = cv
+    return table
+
+
+def _one_side(part: h5py.Group) -> pd.DataFrame:
+    index = pd.MultiIndex.from_arrays([part["block"].asstr()[()], part["feature"].asstr()[()]])
+    own, other = part["own"][()], part["other"][()]
+    columns = {}
+    for k in range(own.shape[1]):
+        columns[f"pair{k + 1}_own"] = own[:, k]
+        columns[f"pair{k + 1}_other"] = other[:, k]
+    return pd.DataFrame(columns, index=index)
+
+
+def implied_correlations(edges: pd.DataFrame, canonical: pd.DataFrame) -> pd.DataFrame:
+    """Return ``model_r`` and ``component`` of each edge: what the fitted canonical pairs imply.
+
+    ``model_r = sum_k corr(x, u_k) rho_k corr(y, v_k)`` with the out-of-sample ``rho_k`` (negative ones count
+    as 0); ``component`` is the pair that carries most of it.  The group is left in, as in ``r_total``.
+    """
+    rho = canonical.attrs["correlations_cv"]
+    own = canonical[[column for column in canonical if column.endswith("_own")]]
+    ends = [
+        own.reindex(pd.MultiIndex.from_frame(edges[[f"{end}_block", end]])).to_numpy()
+        for end in ("source", "target")
+    ]
+    if rho is None:
+        return pd.DataFrame({"model_r": np.nan, "component": pd.NA}, index=edges.index)
+    terms = ends[0] * np.maximum(np.nan_to_num(rho), 0.0) * ends[1]
+    carried = np.abs(np.nan_to_num(terms)).argmax(axis=1) + 1 if len(edges) else np.zeros(0, dtype=int)
+    return pd.DataFrame({"model_r": terms.sum(axis=1), "component": carried}, index=edges.index)

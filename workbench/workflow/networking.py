@@ -1,0 +1,89 @@
+"""The fourth stage: tested pairs become edges, the edges a network, and both leave as open files."""
+
+from __future__ import annotations
+
+import pandas as pd
+
+from workbench import __version__
+from workbench.network import build_network, graphml_bytes, network_summary, with_communities, with_degrees
+from workbench.store import Change, json_bytes, table_bytes
+from workbench.workflow.analysis_view import AnalysisView, blocks_of, view_analysis
+from workbench.workflow.canonical import analysis_inputs, has_canonical_pairs
+from workbench.workflow.edges import edges_table, group_pairs_table, screen_analysis
+from workbench.workflow.feature_table import canonical_correlations, features_table, implied_correlations
+from workbench.workflow.fingerprints import fingerprint
+from workbench.workflow.record import analysis_record, screen_sentences
+from workbench.workflow.reporting import Reporter
+from workbench.workflow.stages import Stage
+from workbench.workflow.state import ProjectState
+
+VERSION = 1
+EDGE_COLUMNS = (
+    *("source", "source_block", "target", "target_block", "n", "r", "r_low", "r_high", "p", "q", "q_block"),
+    *("r_total", "q_total", "r_within", "q_within", "basis", "model_r", "component"),
+    *("r_spearman", "r_without_one", "r_observed", "imputed_share", "community"),
+)
+FILES = ("edges.tsv", "group_pairs.tsv", "features.tsv", "network.graphml", "record.json")
+
+
+def networking_stage(state: ProjectState, name: str) -> Stage:
+    """Return the stage that writes the tables of edges and features, the GraphML and the record."""
+    paired = has_canonical_pairs(state, name)
+    blocks = [f"prepare:{block}" for block in blocks_of(state.settings, name)]
+    return Stage(
+        kind="network",
+        subject=name,
+        needs=(*blocks, f"integrate:{name}") if paired else tuple(blocks),
+        outputs=tuple(f"results/{name}/{file}" for file in FILES),
+        inputs=lambda now: _inputs(now, name),
+        work=lambda now, change, reporter: _work(now, change, reporter, name),
+    )
+
+
+def _inputs(state: ProjectState, name: str) -> dict[str, str]:
+    hashes = analysis_inputs(state, name)
+    hashes["settings of the network"] = fingerprint(
+        [VERSION, state.settings.analyses[name].network.model_dump(mode="json")]
+    )
+    if has_canonical_pairs(state, name):
+        hashes["canonical pairs"] = state.manifest.files.get(f"results/{name}/model.h5", "")
+    return hashes
+
+
+def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) -> None:
+    view = view_analysis(state, name)
+    screens = screen_analysis(view, reporter)
+    edges, features = edges_table(view, screens), features_table(view)
+    if has_canonical_pairs(state, name):
+        canonical = canonical_correlations(state, name)
+        edges[["model_r", "component"]] = implied_correlations(edges, canonical)
+        places = pd.MultiIndex.from_frame(features[["block", "feature"]])
+        features[list(canonical)] = canonical.reindex(places).to_numpy()
+    graph = build_network(edges, features, attributes=graph_attributes(view), seed=view.settings.seed)
+    edges, features = _ordered(with_communities(edges, graph)), with_degrees(features, graph)
+    pairs = group_pairs_table(view, screens)
+    folder = f"results/{name}"
+    for file, table in (("edges.tsv", edges), ("group_pairs.tsv", pairs), ("features.tsv", features)):
+        change.write_bytes(f"{folder}/{file}", table_bytes(table))
+    change.write_bytes(f"{folder}/network.graphml", graphml_bytes(graph))
+    change.write_bytes(f"{folder}/record.json", json_bytes(analysis_record(state, view, screens, len(pairs))))
+    for line in (*screen_sentences(view, screens, len(pairs)), *network_summary(graph)):
+        reporter.say(f"  {line}")
+
+
+def graph_attributes(view: AnalysisView) -> dict[str, object]:
+    """Return what the network says of itself."""
+    network = view.settings.network
+    return {
+        "title": view.study.study.title,
+        "analysis": view.name,
+        "fdr": network.fdr,
+        "select": network.select if view.factors else "no group",
+        "correlation": network.correlation,
+        "version": __version__,
+    }
+
+
+def _ordered(edges: pd.DataFrame) -> pd.DataFrame:
+    """Return the edges with their columns in the documented order, those of this version alone."""
+    return edges[[column for column in EDGE_COLUMNS if column in edges]]

@@ -1,0 +1,118 @@
+"""The second stage: measured values become values fit for linear methods, by the recipe of their kind."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+
+import numpy as np
+import pandas as pd
+from anndata import AnnData
+
+from workbench.errors import InputError
+from workbench.intake import group_codes, missing_samples
+from workbench.prepare import PreparedTable, recipe_for
+from workbench.store import Change, write_block
+from workbench.workflow.analysis_view import factors_of
+from workbench.workflow.fingerprints import fingerprint
+from workbench.workflow.reading import block_file
+from workbench.workflow.reporting import Reporter
+from workbench.workflow.stages import Stage
+from workbench.workflow.state import ProjectState
+from workbench.workflow.tables import excluded, measured_block, table_of
+
+VERSION = 1
+SEED = 20260101
+
+
+def preparing_stage(name: str) -> Stage:
+    """Return the stage that writes ``prepared/NAME.h5ad``."""
+    return Stage(
+        kind="prepare",
+        subject=name,
+        needs=(f"read:{name}",),
+        outputs=(f"prepared/{name}.h5ad",),
+        inputs=lambda state: _inputs(state, name),
+        work=lambda state, change, reporter: _work(state, change, reporter, name),
+    )
+
+
+def smallest_group(state: ProjectState, samples: tuple[str, ...]) -> int | None:
+    """Return the size of the smallest group among some samples, None without a group."""
+    factors = factors_of(state.settings)
+    if not factors:
+        return None
+    frame = state.require_sheet().loc[list(samples)]
+    lacking = {sample for names in missing_samples(frame, factors).values() for sample in names}
+    frame = frame.loc[[sample for sample in samples if sample not in lacking]]
+    if frame.empty:
+        return None
+    codes = group_codes(frame, factors, state.settings.samples.order).codes
+    return int(np.unique(codes, return_counts=True)[1].min())
+
+
+def _inputs(state: ProjectState, name: str) -> dict[str, str]:
+    settings = state.settings.blocks[name]
+    without = sorted(excluded(state, name))
+    held = [str(sample) for sample in state.require_sheet().index if str(sample) not in without]
+    return {
+        "block": state.manifest.files.get(block_file(name), ""),
+        "recipe": fingerprint([VERSION, settings.layer, settings.values, SEED]),
+        "excluded samples": fingerprint(without),
+        "size of the smallest group": fingerprint(smallest_group(state, tuple(held))),
+    }
+
+
+def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) -> None:
+    settings = state.settings.blocks[name]
+    measured = measured_block(state, name)
+    table = table_of(measured, excluded(state, name))
+    if len(table.samples) < 2:
+        raise InputError(
+            f"block '{name}': {len(table.samples)} samples left after exclusions; two are the least"
+        )
+    recipe = recipe_for(settings.layer, settings.values)
+    prepared = recipe.fit_transform(table, smallest_group=smallest_group(state, table.samples), seed=SEED)
+    for step in prepared.account:
+        reporter.say(f"  {step.step}: {step.sentence}")
+    write_block(change.new_file(f"prepared/{name}.h5ad"), _as_anndata(name, measured, prepared))
+
+
+def _as_anndata(name: str, measured: AnnData, prepared: PreparedTable) -> AnnData:
+    var = measured.var.loc[list(prepared.origins)].set_axis(pd.Index(prepared.features, dtype=object))
+    if prepared.origins != prepared.features:
+        var = var.assign(origin=list(prepared.origins))
+    account = [
+        {
+            "step": step.step,
+            "sentence": step.sentence,
+            "numbers": step.numbers,
+            "dropped": step.dropped,
+            "reference": step.reference,
+        }
+        for step in prepared.account
+    ]
+    header = {
+        "kind": "prepared",
+        "block": name,
+        "content_sha256": content_hash(prepared),
+        "measured_sha256": json.loads(measured.uns["workbench"])["content_sha256"],
+        "account": account,
+    }
+    return AnnData(
+        X=prepared.values,
+        obs=measured.obs.loc[list(prepared.samples)],
+        var=var,
+        layers={"imputed": prepared.imputed},
+        uns={"workbench": json.dumps(header, sort_keys=True)},
+    )
+
+
+def content_hash(prepared: PreparedTable) -> str:
+    """Return the sha256 of values, mask, sample ids and feature ids."""
+    digest = hashlib.sha256()
+    for part in (prepared.values, prepared.imputed):
+        digest.update(np.ascontiguousarray(part).tobytes())
+    for names in (prepared.samples, prepared.features):
+        digest.update("\x00".join(names).encode("utf-8", "surrogatepass") + b"\x01")
+    return digest.hexdigest()

@@ -1,0 +1,131 @@
+"""record.json: everything that is needed to understand and repeat an analysis, and the same in sentences."""
+
+from __future__ import annotations
+
+import platform
+from importlib.metadata import version
+from typing import Any
+
+from workbench import __version__
+from workbench.workflow.analysis_view import AnalysisView
+from workbench.workflow.canonical import analysis_inputs
+from workbench.workflow.edges import GROUP_BOUND, Screens
+from workbench.workflow.state import ProjectState
+from workbench.workflow.tables import excluded
+
+FORMAT = 1
+LIBRARIES = ("numpy", "scipy", "pandas", "scikit-learn", "anndata", "h5py", "networkx")
+
+
+def analysis_record(
+    state: ProjectState, view: AnalysisView, screens: Screens, group_pairs: int
+) -> dict[str, Any]:
+    """Return the record of an analysis: settings, inputs, samples, pairs tested, versions; no date."""
+    return {
+        "format": FORMAT,
+        "analysis": view.name,
+        "study": state.settings.study.model_dump(mode="json"),
+        "samples_settings": state.settings.samples.model_dump(mode="json"),
+        "parameters": view.settings.model_dump(mode="json"),
+        "blocks": {name: _block_record(state, view, name) for name in view.blocks},
+        "block_pairs": _pair_records(view, screens),
+        "rules": {
+            "edge": "q over all cross-layer pairs of the analysis and q_block inside the two blocks, both at or "
+            "under fdr (Benjamini-Hochberg)",
+            "basis_group": f"95 % interval of the correlation within groups inside +-{GROUP_BOUND} of |r_total|",
+            "intervals": "r_low, r_high at the false-coverage rate of the selected edges",
+            "canonical_pairs": "two layers" if len(view.layers) == 2 else _not_paired(view),
+        },
+        "edges": int(screens.chosen.r.size),
+        "group_pairs": group_pairs,
+        "edges_cut": cut_sentence(screens.chosen, view) or None,
+        "inputs": analysis_inputs(state, view.name),
+        "versions": {
+            "workbench": __version__,
+            "python": platform.python_version(),
+            **{library: version(library) for library in LIBRARIES},
+        },
+        "cautions": "Research use; association is not causation; not for diagnosis or treatment; confirm by a "
+        "targeted assay.",
+    }
+
+
+def screen_sentences(view: AnalysisView, screens: Screens, group_pairs: int) -> list[str]:
+    """Return what the screens tested and found, in plain words, before the network is described."""
+    tested, found = int(sum(screens.chosen.tested)), int(screens.chosen.r.size)
+    how = (
+        "within groups"
+        if screens.chosen is screens.within
+        else "group left in"
+        if view.factors
+        else "no group"
+    )
+    fdr = view.settings.network.fdr
+    lines = [
+        f"{tested:,} cross-layer pairs tested ({how}), {found:,} edges at a false-discovery rate of {fdr:g}"
+    ]
+    untestable = int(sum(screens.chosen.untestable))
+    if untestable:
+        lines.append(
+            f"{untestable:,} pairs could not be tested: a feature without variation on the shared samples"
+        )
+    if view.factors and view.settings.network.select == "within":
+        lines.append(
+            f"{group_pairs:,} pairs correlate only with the group left in: group_pairs.tsv, not edges"
+        )
+    cut = cut_sentence(screens.chosen, view)
+    if cut:
+        lines.append(cut)
+    if len(view.layers) > 2:
+        lines.append(_not_paired(view))
+    return lines
+
+
+def cut_sentence(screen: Any, view: AnalysisView) -> str:
+    """Return the sentence that says how many edges the ``maximum_edges`` cut took, empty when it took none."""
+    if screen.passed <= screen.r.size:
+        return ""
+    return (
+        f"{screen.passed:,} pairs passed; the {screen.r.size:,} strongest are kept "
+        f"(network.maximum_edges = {view.settings.network.maximum_edges})"
+    )
+
+
+def _not_paired(view: AnalysisView) -> str:
+    return (
+        f"{len(view.layers)} layers ({', '.join(view.layers)}): canonical pairs are for two sides, so none were "
+        "fitted; the network screens the pairs of every two layers"
+    )
+
+
+def _block_record(state: ProjectState, view: AnalysisView, name: str) -> dict[str, Any]:
+    block = view.blocks[name]
+    held = set(block.samples)
+    lacking = [str(sample) for sample in state.require_sheet().index if sample not in held]
+    reasons = excluded(state, name)
+    return {
+        "settings": block.settings.model_dump(mode="json"),
+        "source_sha256": state.manifest.files.get(block.settings.file, ""),
+        "samples": list(block.samples),
+        "left_out": {sample: reasons.get(sample, "not in this block's table") for sample in lacking},
+        "features_measured": len(block.measured.features),
+        "features_prepared": len(block.features),
+        "imputed_share": float(block.imputed.mean()),
+    }
+
+
+def _pair_records(view: AnalysisView, screens: Screens) -> list[dict[str, Any]]:
+    return [
+        {
+            "source_block": first,
+            "target_block": second,
+            "samples": list(one.samples),
+            "left_out": view.lacking_design((first, second)),
+            "nuisance": list(one.nuisance_names),
+            "groups": list(one.groups.levels) if one.groups is not None else [],
+            "tested": int(screens.chosen.tested[k]),
+            "untestable": int(screens.chosen.untestable[k]),
+            "edges": int((screens.chosen.pair_index == k).sum()),
+        }
+        for k, ((first, second), one) in enumerate(zip(view.pairs, screens.shared, strict=True))
+    ]

@@ -1,0 +1,78 @@
+"""The sample sheet: imported once, kept as a plain table that a person may edit."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+
+import pandas as pd
+
+from workbench.errors import InputError
+from workbench.intake import Suggestions, column_kind, read_sample_sheet, suggest_columns
+from workbench.settings import parse_settings, set_samples_text
+from workbench.store import Change, ProjectPaths, project_lock, table_bytes
+from workbench.workflow.blocks import require_columns
+from workbench.workflow.sources import delivered_file, keep_source
+from workbench.workflow.state import load_state
+
+
+@dataclass(frozen=True)
+class SheetDelivery:
+    """A sample sheet as it was delivered, and the parts that its columns play."""
+
+    file: Path
+    id: str | None = None
+    group: tuple[str, ...] = ()
+    adjust: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True)
+class SheetAccount:
+    """What was understood of the sheet: how many samples, notes, and columns worth naming."""
+
+    samples: int
+    notes: tuple[str, ...]
+    kinds: dict[str, str]
+    suggestions: Suggestions | None
+
+
+def add_samples(paths: ProjectPaths, delivery: SheetDelivery) -> SheetAccount:
+    """Keep the delivered sheet, write ``samples.tsv`` and ``[samples]`` in one step.
+
+    Raises
+    ------
+    InputError
+        When there is a sheet already, the file is damaged, or a named column is not in it.
+    """
+    delivered_file(delivery.file)
+    with project_lock(paths.root, "add-samples"):
+        load_state(paths)
+        if paths.samples.exists():
+            raise InputError(
+                f"{paths.samples}: the project has a sample sheet; edit that file, the next command reads it again"
+            )
+        sheet = read_sample_sheet(delivery.file, id_column=delivery.id)
+        frame = sheet.frame
+        require_columns([*delivery.group, *delivery.adjust], list(frame.columns), delivery.file)
+        kinds = unclear_kinds(frame, delivery.adjust)
+        text = set_samples_text(
+            paths.settings.read_text("utf-8"),
+            id=str(frame.index.name),
+            group=list(delivery.group),
+            adjust=list(delivery.adjust),
+            kinds=kinds,
+        )
+        parse_settings(text, paths.settings)
+        with Change(paths.root) as change:
+            file, digest = keep_source(change, paths, delivery.file)
+            change.write_bytes("samples.tsv", table_bytes(frame.reset_index()))
+            change.write_text("project.toml", text)
+            sources = [{"file": file, "sha256": digest, "delivered_as": delivery.file.name}]
+            change.commit({"command": "add-samples", "sources": sources})
+    unnamed = not (delivery.group or delivery.adjust)
+    return SheetAccount(len(frame), sheet.notes, kinds, suggest_columns(frame) if unnamed else None)
+
+
+def unclear_kinds(frame: pd.DataFrame, columns: tuple[str, ...]) -> dict[str, str]:
+    """Return ``classes`` for each nuisance column of few whole numbers, to be written into the settings."""
+    return {column: "classes" for column in columns if column_kind(frame[column]) == "unclear"}
