@@ -1,4 +1,4 @@
-"""Delivered tables and sample sheets, read and checked: nothing is guessed, everything odd is told with its place."""
+"""Delivered tables and sample sheets, read and checked: nothing is guessed, all that is odd is told."""
 
 from .annotations import read_annotations
 from .block import BlockBuild, build_block

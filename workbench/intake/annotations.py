@@ -10,15 +10,15 @@ import pandas as pd
 from workbench.errors import InputError
 
 from .faults import counted, listed
-from .ids import check_no_dates, check_present, check_unique
-from .raw import HEADER, Cell, RawTable, WrongCell
+from .ids import check_no_dates, check_present, check_unique, refuse_broken
+from .raw import HEADER, RawTable, cell_text
 from .readers import read_delivered
 
 _THREE = 3
 
 
 def read_annotations(path: str | Path, features: Sequence[str]) -> pd.DataFrame:
-    """Return the annotations of the given features, in their order; all cells are text, empty where there is none.
+    """Return the annotations of the given features, in their order: text, empty where there is none.
 
     The first column of the file (TSV, CSV or XLSX) holds the feature ids. Rows of other features are left
     out.
@@ -39,12 +39,12 @@ def read_annotations(path: str | Path, features: Sequence[str]) -> pd.DataFrame:
             f"{listed(raw.rows, _THREE)}{_other_column(raw, wanted)}"
         )
     check_unique(raw.path, [raw.rows[i] for i in found], "feature", lambda k: raw.place(found[k], -1))
-    rows = {raw.rows[i]: [_text(cell) for cell in raw.body.row(i)] for i in found}
+    rows = {raw.rows[i]: [cell_text(cell).strip() for cell in raw.body.row(i)] for i in found}
     empty = [""] * len(raw.columns)
     return pd.DataFrame(
         [rows.get(name, empty) for name in features],
-        index=pd.Index(features, dtype=object),
-        columns=pd.Index(raw.columns, dtype=object),
+        index=pd.Index(list(features), dtype="object"),
+        columns=pd.Index(list(raw.columns), dtype="object"),
         dtype=object,
     )
 
@@ -64,6 +64,7 @@ def _read(path: Path) -> RawTable:
         raise InputError(
             f"{path}: the annotations have one column only; beside the feature ids there must be another"
         )
+    refuse_broken(raw, "feature")
     check_present(path, raw.columns, "column", lambda j: raw.place(HEADER, j))
     check_unique(path, raw.columns, "column", lambda j: raw.place(HEADER, j))
     check_no_dates(path, raw.rows, lambda i: raw.place(i, -1))
@@ -72,18 +73,8 @@ def _read(path: Path) -> RawTable:
 
 def _other_column(raw: RawTable, wanted: set[str]) -> str:
     rows = [raw.body.row(i) for i in range(len(raw.rows))]
-    hits = {name: sum(_text(row[j]) in wanted for row in rows) for j, name in enumerate(raw.columns)}
+    hits = {name: sum(cell_text(row[j]) in wanted for row in rows) for j, name in enumerate(raw.columns)}
     best = max(hits, key=lambda name: hits[name])
     if not hits[best]:
         return "; use the same ids in both"
     return f"; column '{best}' has {counted(hits[best], 'of them', 'of them')}: make it the first one"
-
-
-def _text(cell: Cell) -> str:
-    if cell is None:
-        return ""
-    if isinstance(cell, WrongCell):
-        return cell.text
-    if isinstance(cell, float) and cell.is_integer() and abs(cell) < 2**53:
-        return str(int(cell))
-    return str(cell).strip()

@@ -1,4 +1,4 @@
-"""From a block's settings to its measured values, aligned to the sample sheet: the content of ``blocks/NAME.h5ad``."""
+"""From a block's settings to its measured values, aligned to the sample sheet."""
 
 from __future__ import annotations
 
@@ -96,7 +96,7 @@ def content_hash(values: np.ndarray, samples: Sequence[str], features: Sequence[
 def _annotations(
     settings: BlockSettings, root: Path, features: Sequence[str]
 ) -> tuple[pd.DataFrame, list[str]]:
-    index = pd.Index(features, dtype=object)
+    index = pd.Index(list(features), dtype="object")
     if settings.annotations is None:
         return pd.DataFrame(index=index), []
     path = root / settings.annotations

@@ -70,7 +70,7 @@ def missing_samples(frame: pd.DataFrame, columns: Sequence[str]) -> dict[str, tu
 def design_columns(
     frame: pd.DataFrame, columns: Sequence[str], kinds: Mapping[str, str] | None = None
 ) -> Design:
-    """Return the nuisance columns as a matrix: numbers as they are, classes as indicators without their first level.
+    """Return nuisance columns as a matrix: numbers as they are, classes as indicators of all but one level.
 
     Levels are sorted (numbers by value). A column with one value in these samples adds nothing to the
     intercept, and is listed in ``constant``.
@@ -93,7 +93,8 @@ def design_columns(
 
     Examples
     --------
-    >>> frame = pd.DataFrame({"batch": ["b1", "b2", "b2"], "age": ["30", "41", "52"]}, index=["S1", "S2", "S3"])
+    >>> cells = {"batch": ["b1", "b2", "b2"], "age": ["30", "41", "52"]}
+    >>> frame = pd.DataFrame(cells, index=["S1", "S2", "S3"])
     >>> design = design_columns(frame, ["batch", "age"])
     >>> design.names
     ('batch=b2', 'age')
@@ -130,7 +131,8 @@ def group_codes(
 
     Examples
     --------
-    >>> frame = pd.DataFrame({"water": ["dry", "wet", "dry"], "day": ["10", "2", "2"]}, index=["S1", "S2", "S3"])
+    >>> cells = {"water": ["dry", "wet", "dry"], "day": ["10", "2", "2"]}
+    >>> frame = pd.DataFrame(cells, index=["S1", "S2", "S3"])
     >>> group_codes(frame, "water", {"water": ["wet", "dry"]}).codes.tolist()
     [1, 0, 1]
     >>> group_codes(frame, ["water", "day"]).levels

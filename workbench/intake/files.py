@@ -77,7 +77,7 @@ class TextLines:
 
 
 def read_lines(path: Path) -> TextLines:
-    """Return the lines of a UTF-8 text file (plain or .gz); blank lines at the end are left out.
+    r"""Return the lines of a UTF-8 text file (plain or .gz); blank lines at the end are left out.
 
     Line ends may be ``\\n``, ``\\r\\n`` or ``\\r``; no other character ends a line. A byte-order mark is
     accepted and told.
@@ -93,6 +93,11 @@ def read_lines(path: Path) -> TextLines:
         data = data[len(_UTF8_MARK) :]
         notes.append(f"{path.name}: starts with a byte-order mark, which was left out")
     text = _decoded(path, data)
+    if "\ufffd" in text:
+        line = text.count("\n", 0, text.index("\ufffd")) + 1
+        notes.append(
+            f"{path.name}: letters were lost in an earlier conversion (\ufffd), first in line {line}"
+        )
     if "\r" in text:
         if "\n" not in text:
             notes.append(

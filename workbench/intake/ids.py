@@ -9,6 +9,7 @@ from pathlib import Path
 
 from .dates import is_date, suspicious_numbers
 from .faults import Faults, counted, listed, shown
+from .raw import RawTable
 
 
 def check_present(path: Path, ids: Sequence[str], what: str, place: Callable[[int], str]) -> None:
@@ -28,6 +29,25 @@ def check_present(path: Path, ids: Sequence[str], what: str, place: Callable[[in
             f"{counted(faults.total, f'{what} without an id', f'{what}s without an id')}",
             "give each an id, or take the row or column out (a separator at the end of the header makes a "
             "column without a name)",
+        )
+
+
+def refuse_broken(raw: RawTable, what: str) -> None:
+    """Refuse ids that a spreadsheet has turned into dates, booleans or errors; every one is listed.
+
+    Raises
+    ------
+    InputError
+        With the cell of each such id.
+    """
+    if raw.broken_ids:
+        total = len(raw.broken_ids)
+        raise Faults(raw.path, total, list(raw.broken_ids)).error(
+            f"{counted(total, f'{what} id is no text', f'{what} ids are no text')}, since a spreadsheet has "
+            "changed them",
+            "set these cells to the text format, type the names again (SEPT2, not a date) and save; or "
+            "deliver the "
+            "table as TSV, straight from its source",
         )
 
 
@@ -94,7 +114,7 @@ def id_notes(ids: Sequence[str], what: str) -> list[str]:
 
 
 def loose_form(name: str) -> str:
-    """Return an id without what tables often differ in: case, blanks and marks, R's leading X, zeros before numbers.
+    """Return an id without what tables differ in: case, blanks, marks, R's leading X, zeros before numbers.
 
     >>> loose_form("X07.S-1 ") == loose_form("7_s1")
     True
@@ -105,7 +125,7 @@ def loose_form(name: str) -> str:
 
 
 def near_pairs(here: Iterable[str], there: Iterable[str]) -> list[tuple[str, str]]:
-    """Return pairs of ids, one of each side, that differ only in how they are written and are the only ones to do so."""
+    """Return pairs of ids, one of each side, that differ only in how they are written, when no third does."""
     left, right = _by_form(here), _by_form(there)
     return [
         (names[0], right[form][0])

@@ -2,19 +2,17 @@
 
 from __future__ import annotations
 
-import re
 from typing import Literal
 
 import numpy as np
 import pandas as pd
 
-from .tokens import missing_among, number_of
+from .tokens import is_padded, missing_among, number_of
 
 ColumnKind = Literal["classes", "number", "unclear"]
 
 FEW_VALUES = 10
 SAMPLES_EACH = 3
-_PADDED = re.compile(r"[+-]?0\d+")
 
 
 def present(series: pd.Series) -> pd.Series:
@@ -36,7 +34,7 @@ def column_numbers(series: pd.Series) -> pd.Series | None:
     Texts with zeros at the start (``007``) are codes, not numbers.
     """
     text = present(series)
-    if text.str.fullmatch(_PADDED).any():
+    if any(map(is_padded, set(text))):
         return None
     numbers = {cell: number_of(cell) for cell in set(text)}
     if any(number is None or not np.isfinite(number) for number in numbers.values()):

@@ -7,13 +7,13 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from .faults import Faults, counted, listed, shown
-from .numbers import Part, cell_number
+from .faults import counted, listed
+from .numbers import cell_number
+from .part import Part, WrongCells
 from .raw import Cell, WrongCell
-from .tokens import hint_for, is_comma_number, missing_among, way_out_for
+from .tokens import is_comma_number, is_padded, missing_among
 
 MOST_LEVELS = 10
-BOOLEAN = "the boolean"
 
 
 @dataclass(frozen=True)
@@ -48,72 +48,63 @@ def read_mixed(part: Part) -> MixedValues:
     InputError
         With place, feature and sample of five cells.
     """
-    rows = [part.raw.body.row(i) for i in part.rows]
-    cells = [[row[j] for j in part.columns] for row in rows]
-    by_feature = list(zip(*cells, strict=True)) if part.samples_in == "rows" else cells
-    names = (
-        [part.raw.columns[j] for j in part.columns]
-        if part.samples_in == "rows"
-        else [part.raw.rows[i] for i in part.rows]
-    )
-    columns, levels, wrong = [], {}, []
-    for position, (name, column) in enumerate(zip(names, by_feature, strict=True)):
-        numbers = [cell_number(_plain(cell)) for cell in column]
-        bad = _wrong_cells(column, numbers)
-        wrong += [(position, sample) for sample in bad]
-        if any(number is None for number in numbers) and not bad:
-            codes, levels[name] = _coded(column)
-            columns.append(codes)
+    names, features = part.feature_names(), _by_feature(part)
+    wrong, levels = WrongCells(part), {}
+    values = np.empty((len(features[0]), len(features)))
+    for position, cells in enumerate(features):
+        numbers = [_reading(cell) for cell in cells]
+        misfits = _misfits(cells, numbers)
+        for sample in misfits:
+            wrong.add(*_position(part, position, sample), cells[sample])
+        if not misfits and None in numbers:
+            values[:, position], levels[names[position]] = _coded(cells)
         else:
-            columns.append(np.array([np.nan if n is None else n for n in numbers], dtype=float))
-    if wrong:
-        raise _mixed_error(part, wrong)
-    values = np.column_stack(columns) if columns else np.empty((0, 0))
+            values[:, position] = [np.nan if number is None else number for number in numbers]
+    if wrong.faults.total:
+        raise wrong.error("no number, in a feature of numbers")
     return MixedValues(values, levels, _level_notes(part, levels, values.shape[0]))
 
 
-def _plain(cell: Cell) -> Cell:
-    return cell.text if isinstance(cell, WrongCell) and cell.kind == BOOLEAN else cell
+def _by_feature(part: Part) -> list[Sequence[Cell]]:
+    rows = [part.raw.body.row(i) for i in part.rows]
+    cells = [[_spoken(row[j]) for j in part.columns] for row in rows]
+    return list(zip(*cells, strict=True)) if part.samples_in == "rows" else list(cells)
 
 
-def _wrong_cells(column: Sequence[Cell], numbers: Sequence[float | None]) -> list[int]:
+def _position(part: Part, feature: int, sample: int) -> tuple[int, int]:
+    """Return the row and column of the table's body."""
+    k, m = (sample, feature) if part.samples_in == "rows" else (feature, sample)
+    return part.rows[k], part.columns[m]
+
+
+def _spoken(cell: Cell) -> Cell:
+    """Return a boolean cell as its text, other cells as they are."""
+    return cell.text if isinstance(cell, WrongCell) and cell.kind == "boolean" else cell
+
+
+def _reading(cell: Cell) -> float | None:
+    """Return a cell's number; codes such as ``007`` are text."""
+    if isinstance(cell, str) and is_padded(cell):
+        return None
+    return cell_number(cell)
+
+
+def _misfits(cells: Sequence[Cell], numbers: Sequence[float | None]) -> list[int]:
     """Return the positions of cells that fit neither reading of their feature."""
-    different = {n for n in numbers if n is not None and n == n}
+    different = {number for number in numbers if number is not None and number == number}
     readings = len(different) > MOST_LEVELS
     return [
         k
-        for k, (cell, number) in enumerate(zip(column, numbers, strict=True))
-        if number is None
-        and (readings or isinstance(_plain(cell), WrongCell) or is_comma_number(str(_plain(cell))))
+        for k, (cell, number) in enumerate(zip(cells, numbers, strict=True))
+        if number is None and (readings or isinstance(cell, WrongCell) or is_comma_number(str(cell)))
     ]
 
 
-def _coded(column: Sequence[Cell]) -> tuple[np.ndarray, tuple[str, ...]]:
-    texts = ["" if cell is None else str(_plain(cell)).strip() for cell in column]
-    missing = missing_among(set(texts))
-    levels = tuple(sorted(set(texts) - missing))
+def _coded(cells: Sequence[Cell]) -> tuple[list[float], tuple[str, ...]]:
+    texts = ["" if cell is None else str(cell).strip() for cell in cells]
+    levels = tuple(sorted(set(texts) - missing_among(set(texts))))
     code = {level: float(k) for k, level in enumerate(levels)}
-    return np.array([code.get(text, np.nan) for text in texts]), levels
-
-
-def _mixed_error(part: Part, wrong: list[tuple[int, int]]) -> Exception:
-    faults = Faults(part.raw.path)
-    texts = []
-    for feature, sample in wrong:
-        if faults.full:
-            faults.add("")
-            continue
-        k, m = (sample, feature) if part.samples_in == "rows" else (feature, sample)
-        i, j = part.rows[k], part.columns[m]
-        cell = part.raw.body.row(i)[j]
-        hint = "" if isinstance(cell, WrongCell) else hint_for(str(cell))
-        text = str(cell) if isinstance(cell, WrongCell) else shown(cell)
-        faults.add(f"{part.named_place(i, j)}: {text}{', ' + hint if hint else ''}")
-        texts.append(str(cell))
-    return faults.error(
-        f"{counted(faults.total, 'cell is', 'cells are')} no number in a feature of numbers",
-        way_out_for(texts),
-    )
+    return [code.get(text, np.nan) for text in texts], levels
 
 
 def _level_notes(part: Part, levels: dict[str, tuple[str, ...]], n: int) -> tuple[str, ...]:

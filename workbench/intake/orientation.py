@@ -1,4 +1,4 @@
-"""Which axis of a table holds the samples, found by the ids alone, and how its samples match the sample sheet."""
+"""Which axis of a table holds the samples, found by the ids alone, and how they match the sample sheet."""
 
 from __future__ import annotations
 
@@ -9,7 +9,7 @@ from pathlib import Path
 
 from workbench.errors import InputError
 
-from .faults import counted, listed
+from .faults import counted, listed, shown
 from .ids import check_unique, near_pairs
 from .raw import HEADER, RawTable
 
@@ -128,14 +128,13 @@ def _check_twice(raw: RawTable, samples_in: str, ids: Sequence[str], known: set[
 
 
 def _check_short_header(raw: RawTable, samples_in: str, known: set[str]) -> None:
-    """Refuse a header that is one field short when its first name is the only one that may be the id column's."""
-    if not raw.corner_lacks or samples_in != "columns" or raw.columns[0] in known:
-        return
-    if len(known.intersection(raw.columns)) == len(raw.columns) - 1:
+    """Refuse a header one field short whose first name is no sample: it may be the name of the id column."""
+    if raw.corner_lacks and samples_in == "columns" and raw.columns[0] not in known:
         raise InputError(
-            f"{raw.path}: the header is one field short, and its first name '{raw.columns[0]}' is no sample "
-            "of the sheet, so "
-            "the values may stand one column off; give every column its name, that of the ids included"
+            f"{raw.path}: {raw.place(HEADER, -1)}: the header is one field short, and its first name "
+            f"{shown(raw.columns[0])} is no sample of the sheet, so the values may stand one column off; "
+            "give every "
+            "column its name, that of the ids included"
         )
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import datetime
 import json
 from pathlib import Path
 from typing import Any
@@ -11,7 +12,7 @@ import numpy as np
 from workbench.errors import InputError
 
 from .faults import counted, listed, shown
-from .raw import ArrayBody, Body, Cell, CellBody, RawTable, WrongCell
+from .raw import HEADER, ArrayBody, Body, Cell, CellBody, RawTable, WrongCell
 
 LARGEST_TABLE = 8 * 2**30
 
@@ -50,7 +51,7 @@ def read_parquet(path: Path) -> RawTable:
 
 def _arrow_table(path: Path) -> Any:
     try:
-        from pyarrow import parquet
+        from pyarrow import parquet  # type: ignore[import-untyped]
     except ImportError:
         raise InputError(
             f"{path}: reading Parquet needs pyarrow, which is not installed; install the 'parquet' extra, or "
@@ -110,11 +111,14 @@ def _body(table: Any, names: list[str]) -> Body:
 
 def _cell(value: Any) -> Cell:
     if isinstance(value, bool):
-        return WrongCell("the boolean", str(value).upper())
+        return WrongCell("boolean", str(value).upper())
     if value is None or isinstance(value, str | int | float):
         return value
-    return WrongCell(f"the {type(value).__name__}", str(value))
+    dated = isinstance(value, datetime.date | datetime.time | datetime.timedelta)
+    return WrongCell("date" if dated else "other", str(value))
 
 
 def _place(i: int, j: int) -> str:
-    return f"row {i + 1}, column {j + 2}"
+    """Return the row and column, both counted from 1 with the ids as the first column."""
+    row, column = f"row {i + 1}", f"column {j + 2}"
+    return column if i == HEADER else row if j < 0 else f"{row}, {column}"

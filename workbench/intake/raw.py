@@ -6,23 +6,65 @@ import csv
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Protocol
+from typing import Literal, Protocol
 
 import numpy as np
 
 Cell = object
 HEADER = -1
+_WHOLE_FLOATS = 2**53
+_WRONG_CELLS = {
+    "date": (
+        "the date",
+        "set the cells to the number or text format and type them again",
+    ),
+    "boolean": ("the boolean", "write 0 and 1, or words, in place of booleans"),
+    "error": ("the error value", "mend the formulas that give an error, or leave such cells empty"),
+    "formula": (
+        "a formula without a stored value:",
+        "open the workbook in a spreadsheet program and save it, so that values are stored",
+    ),
+    "other": ("the value", "write numbers or text"),
+}
 
 
 @dataclass(frozen=True)
 class WrongCell:
-    """A spreadsheet cell that is neither text nor number: a date, a boolean, an error, a bare formula."""
+    """A cell that is neither text nor number: a date, a boolean, an error, a formula without a value.
 
-    kind: str
+    Attributes
+    ----------
+    kind
+        ``date``, ``boolean``, ``error``, ``formula`` or ``other``.
+    text
+        What the cell shows.
+    """
+
+    kind: Literal["date", "boolean", "error", "formula", "other"]
     text: str
 
     def __str__(self) -> str:
-        return f"{self.kind} {self.text}".strip()
+        return f"{_WRONG_CELLS[self.kind][0]} {self.text}"
+
+    @property
+    def way_out(self) -> str:
+        """How to mend the cell."""
+        return _WRONG_CELLS[self.kind][1]
+
+
+def cell_text(cell: Cell) -> str:
+    """Return the text of a native cell; whole numbers lose their decimal point.
+
+    >>> cell_text(12.0), cell_text("0012"), cell_text(None)
+    ('12', '0012', '')
+    """
+    if cell is None:
+        return ""
+    if isinstance(cell, WrongCell):
+        return cell.text
+    if isinstance(cell, float) and cell.is_integer() and abs(cell) < _WHOLE_FLOATS:
+        return str(int(cell))
+    return str(cell)
 
 
 class Body(Protocol):
@@ -36,7 +78,7 @@ class Body(Protocol):
         """Return the cells of row ``i``."""
 
     def place(self, i: int, j: int) -> str:
-        """Return where cell ``(i, j)`` stands in the file; ``i = -1`` is the header, ``j = -1`` the id column."""
+        """Return where a cell stands in the file; ``i = -1`` is the header, ``j = -1`` the id column."""
 
 
 def split_line(line: str, separator: str) -> list[str]:
@@ -71,7 +113,7 @@ class TextBody:
         return split_line(self.lines[i], self.separator)[1:]
 
     def is_plain(self, i: int) -> bool:
-        """Whether Python's ``float`` reads the cells of row ``i`` as `number_of` does: ASCII, no underscore."""
+        """Whether ``float`` reads the cells of row ``i`` as `number_of` does: ASCII, no underscore."""
         line = self.lines[i]
         return line.isascii() and line.find("_", line.find(self.separator)) < 0
 
@@ -115,11 +157,13 @@ class ArrayBody:
 
     def row(self, i: int) -> Sequence[Cell]:
         """Return the numbers of row ``i``."""
-        return self.array[i].tolist()
+        cells: list[Cell] = self.array[i].tolist()
+        return cells
 
     def place(self, i: int, j: int) -> str:
-        """Return the row and column of the array, both counted from 1."""
-        return f"row {i + 1}, column {j + 1}"
+        """Return the row and column of the array, both counted from 1, or the one of them that an id has."""
+        row, column = f"row {i + 1}", f"column {j + 1}"
+        return column if i == HEADER else row if j < 0 else f"{row}, {column}"
 
 
 @dataclass(frozen=True)
@@ -140,6 +184,9 @@ class RawTable:
         The cells.
     corner_lacks
         Whether the header is one field short, as R writes it.
+    broken_ids
+        Ids of the first column that are no text, each with its place: dates that a spreadsheet made, and so
+        on.
     notes
         What was accepted knowingly, one sentence each.
     """
@@ -151,6 +198,7 @@ class RawTable:
     rows: tuple[str, ...]
     body: Body
     corner_lacks: bool = False
+    broken_ids: tuple[str, ...] = ()
     notes: tuple[str, ...] = ()
 
     def place(self, i: int, j: int) -> str:

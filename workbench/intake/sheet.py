@@ -11,9 +11,9 @@ import pandas as pd
 from workbench.errors import InputError
 
 from .faults import counted, listed, shown
-from .ids import check_present, check_unique, id_notes
+from .ids import check_present, check_unique, id_notes, refuse_broken
 from .kinds import column_kind, present
-from .raw import HEADER, Cell, RawTable, WrongCell
+from .raw import HEADER, Cell, RawTable, WrongCell, cell_text
 from .readers import read_delivered
 from .suggest import Suggestions, suggest_columns
 
@@ -70,10 +70,12 @@ def read_sample_sheet(
         raise InputError(
             f"{path}: a sample sheet is TSV, CSV or XLSX, not {raw.form}; save it as one of these"
         )
-    names = [raw.corner or "sample" if raw.corner_lacks else raw.corner, *raw.columns]
+    names = [_first_name(raw), *raw.columns]
     _check_names(raw, names)
     columns = _columns(raw)
     position = _id_position(path, names, id_column)
+    if position == 0:
+        refuse_broken(raw, "sample")
     ids = list(raw.rows) if position == 0 else _ids(raw, columns[position], position, names[position])
     check_present(path, ids, "row", lambda i: raw.place(i, position - 1))
     _check_unique_ids(raw, ids, names, columns, position)
@@ -83,6 +85,13 @@ def read_sample_sheet(
     notes += [f"{path.name}: {note}" for note in id_notes(ids, "sample")]
     frame = _frame(raw, names, columns, position, ids, notes)
     return SampleSheet(frame, tuple(notes))
+
+
+def _first_name(raw: RawTable) -> str:
+    """Return the name of the first column, or one for it where the header has none (row names)."""
+    if raw.corner.strip():
+        return raw.corner
+    return next((name for name in ("sample", "row", "row_name") if name not in raw.columns), "")
 
 
 def _check_names(raw: RawTable, names: Sequence[str]) -> None:
@@ -98,7 +107,9 @@ def _columns(raw: RawTable) -> list[list[Cell]]:
 
 def _id_position(path: Path, names: Sequence[str], id_column: str | None) -> int:
     if id_column is None:
-        return next((j for j, name in enumerate(names) if name.strip().casefold() in _ID_NAMES), 0)
+        return next(
+            (j for j, name in enumerate(names) if name.lstrip("#").strip().casefold() in _ID_NAMES), 0
+        )
     if id_column not in names:
         raise InputError(
             f"{path}: there is no column {shown(id_column)} for the sample ids; the columns are "
@@ -115,7 +126,7 @@ def _ids(raw: RawTable, cells: Sequence[Cell], position: int, name: str) -> list
                 "sample id; "
                 "set the column to the text format and type the ids again"
             )
-    return ["" if cell is None else _text(cell) for cell in cells]
+    return [cell_text(cell) for cell in cells]
 
 
 def _check_unique_ids(
@@ -131,14 +142,6 @@ def _check_unique_ids(
         raise InputError(f"{error} (ids were taken from column {shown(names[position])}{hint})") from None
 
 
-def _text(cell: Cell) -> str:
-    if isinstance(cell, WrongCell):
-        return cell.text
-    if isinstance(cell, float) and cell.is_integer() and abs(cell) < 2**53:
-        return str(int(cell))
-    return str(cell)
-
-
 def _frame(
     raw: RawTable,
     names: Sequence[str],
@@ -147,13 +150,13 @@ def _frame(
     ids: Sequence[str],
     notes: list[str],
 ) -> pd.DataFrame:
-    index = pd.Index(ids, dtype=object, name=names[position])
+    index = pd.Index(list(ids), dtype="object", name=names[position])
     data = {}
     for j, (name, cells) in enumerate(zip(names, columns, strict=True)):
         if j == position:
             continue
         _refuse_broken(raw, cells, j, name)
-        written = pd.Series([None if c is None else _text(c) for c in cells], index=index, dtype=object)
+        written = pd.Series([None if c is None else cell_text(c) for c in cells], index=index, dtype=object)
         data[name] = present(written).astype(object).reindex(index)
         notes += _column_notes(raw.path.name, name, written, data[name])
     return pd.DataFrame(data, index=index)

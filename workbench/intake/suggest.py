@@ -1,4 +1,4 @@
-"""Which columns of a sample sheet look like the group, a batch, or the subject that several samples come from."""
+"""Which columns of a sample sheet look like the group, a nuisance, or the subject of several samples."""
 
 from __future__ import annotations
 
@@ -10,23 +10,23 @@ import pandas as pd
 
 from .faults import counted, listed
 from .kinds import column_numbers, present
+from .tokens import word_set
 
-_GROUP = frozenset(
-    "condition treatment group genotype status disease phenotype class diagnosis case control arm dose "
-    "strain diet "
-    "stage response responder outcome exposure tissue timepoint cohort line cultivar variety sex".split()
+_GROUP = word_set(
+    "condition treatment group genotype status disease phenotype class diagnosis case control "
+    "arm dose strain diet stage response responder outcome exposure tissue timepoint cohort line "
+    "cultivar variety sex"
 )
-_BATCH = frozenset(
-    "batch run day date plate lane site kit operator center centre instrument machine flowcell chip slide "
-    "array order "
-    "extraction library technician lot sequencing prep column centrifugation shipment laboratory lab hospital".split()
+_BATCH = word_set(
+    "batch run day date plate lane site kit operator center centre instrument machine flowcell "
+    "chip slide array order extraction library technician lot sequencing prep column "
+    "centrifugation shipment laboratory lab hospital"
 )
-_SUBJECT = frozenset(
-    "donor patient subject animal plant individual participant mouse rat person proband case_id pair block "
-    "family "
-    "litter clone host tree twin volunteer".split()
+_SUBJECT = word_set(
+    "donor patient subject animal plant individual participant mouse rat person proband case_id "
+    "pair block family litter clone host tree twin volunteer"
 )
-_NUISANCE = frozenset("age bmi weight rin ph purity dilution".split())
+_NUISANCE = word_set("age bmi weight rin ph purity dilution")
 
 MOST_GROUPS = 8
 SAMPLES_EACH = 2
@@ -51,7 +51,7 @@ class Suggestions:
 
 
 def suggest_columns(frame: pd.DataFrame) -> Suggestions:
-    """Return the columns of a sample sheet that look like a group, a nuisance or a subject, each with its reason.
+    """Return the columns that look like a group, a nuisance or a subject, each with its reason.
 
     A column is looked at when it has at least two levels and no sample of its own for each. By its name (a
     word of it):
@@ -62,7 +62,8 @@ def suggest_columns(frame: pd.DataFrame) -> Suggestions:
     - group: a word such as condition, treatment, genotype, status, with 2 to 8 levels of two samples or more;
     - group, after those with such a name: any text with 2 to 8 levels of two samples or more.
 
-    >>> frame = pd.DataFrame({"treatment": ["a", "a", "b", "b"], "plate": ["1", "2", "1", "2"], "note": list("wxyz")})
+    >>> cells = {"treatment": list("aabb"), "plate": list("1212"), "note": list("wxyz")}
+    >>> frame = pd.DataFrame(cells)
     >>> found = suggest_columns(frame)
     >>> found.group, found.adjust, found.subject
     (('treatment',), ('plate',), ())

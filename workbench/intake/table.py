@@ -11,11 +11,12 @@ import pandas as pd
 
 from workbench.errors import InputError
 
-from .faults import counted
-from .ids import check_no_dates, check_present, check_unique, id_notes
+from .faults import counted, shown
+from .ids import check_no_dates, check_present, check_unique, id_notes, refuse_broken
 from .mixed import read_mixed
-from .numbers import Part, check_range, read_numbers
+from .numbers import check_range, read_numbers
 from .orientation import Matching, match_samples
+from .part import Part
 from .raw import HEADER, RawTable
 from .readers import read_delivered
 
@@ -93,7 +94,9 @@ def delivered_table(
     numbers, levels, notes = _read(part, values)
     return DeliveredTable(
         values=pd.DataFrame(
-            numbers, index=pd.Index(matching.matched, dtype=object), columns=pd.Index(features, dtype=object)
+            numbers,
+            index=pd.Index(list(matching.matched), dtype="object"),
+            columns=pd.Index(list(features), dtype="object"),
         ),
         samples_in=matching.samples_in,
         matched=matching.matched,
@@ -113,9 +116,11 @@ def delivered_table(
 def _check_ids_present(raw: RawTable) -> None:
     if not raw.columns or not raw.rows:
         raise InputError(
-            f"{raw.path}: the table has one column only, its ids; a table needs a column for each sample (or "
-            "feature)"
+            f"{raw.path}: the table is one column wide, {shown(raw.corner)}; it needs one for each sample "
+            "(or feature) "
+            "beside the ids, parted by tabs, commas or semicolons"
         )
+    refuse_broken(raw, "row")
     check_present(raw.path, raw.columns, "column", lambda j: raw.place(HEADER, j))
     check_present(raw.path, raw.rows, "row", lambda i: raw.place(i, -1))
 

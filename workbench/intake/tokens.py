@@ -15,7 +15,13 @@ _BELOW = re.compile(
     r"(b?\s*l\s*o\s*[dq]|n\.?d\.?|below.*|not detected|und(etermined|etected)?)", re.IGNORECASE
 )
 _UNIT = re.compile(r"[+-]?\d+(\.\d+)?\s*(%|[a-zA-Z\u00b5\u03bc]+(/\w+)?)")
+_PADDED = re.compile(r"[+-]?0\d+")
 _SPREADSHEET_ERROR = re.compile(r"#(REF|DIV/0|VALUE|NAME|NUM|NULL|SPILL|CALC)[!?]?", re.IGNORECASE)
+
+
+def word_set(text: str) -> frozenset[str]:
+    """Return the words of a text as a set."""
+    return frozenset(text.split())
 
 
 def number_of(text: str) -> float | None:
@@ -54,15 +60,20 @@ def hint_for(text: str) -> str:
     return next((hint for pattern, hint in hints if pattern.fullmatch(plain)), "")
 
 
+def is_padded(text: str) -> bool:
+    """Return whether a text is a code with zeros at its start, such as ``007``: text, though digits alone."""
+    return _PADDED.fullmatch(text.strip()) is not None
+
+
 def is_comma_number(text: str) -> bool:
     """Return whether a text is a number written with a decimal comma or with thousands separators."""
     plain = text.strip()
     return any(p.fullmatch(plain) for p in (_DECIMAL_COMMA, _THOUSANDS, _CONTINENTAL))
 
 
-WAYS_OUT = {
+_WAYS_OUT = {
     "a decimal comma": "write numbers with a decimal point",
-    "a thousands separator, or a decimal comma": "write numbers with a decimal point and no thousands separator",
+    "a thousands separator, or a decimal comma": "write numbers with a decimal point and without separators",
     "a thousands separator": "write numbers without thousands separators",
     "a value under or over a limit": "leave such cells empty (missing)",
     "a value under the limit of detection, or not detected": "leave such cells empty (missing)",
@@ -71,10 +82,9 @@ WAYS_OUT = {
 }
 
 
-def way_out_for(texts: list[str]) -> str:
-    """Return the way out for a list of texts that are no numbers."""
-    ways = dict.fromkeys(WAYS_OUT[hint] for hint in map(hint_for, texts) if hint)
-    return "; ".join([*ways, f"a missing value is {MISSING_SHOWN}"])
+def way_out_for(text: str) -> str:
+    """Return the way out for a text that is no number."""
+    return _WAYS_OUT.get(hint_for(text), f"a missing value is {MISSING_SHOWN}")
 
 
 def missing_among(texts: frozenset[str] | set[str]) -> frozenset[str]:
