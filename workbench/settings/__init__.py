@@ -1,1 +1,37 @@
-"""To be filled."""
+"""``project.toml``: what it may hold, its faults in plain words, and edits that keep the rest."""
+
+from workbench.settings.cross_check import cross_check
+from workbench.settings.edit import add_block as add_block_text
+from workbench.settings.edit import new_project as new_project_text
+from workbench.settings.edit import remove_block as remove_block_text
+from workbench.settings.edit import set_samples as set_samples_text
+from workbench.settings.load import load_settings, parse_settings, read_settings_text
+from workbench.settings.names import check_name
+from workbench.settings.schema import (
+    LAYERS,
+    AnalysisSettings,
+    BlockSettings,
+    NetworkSettings,
+    SamplesSettings,
+    Settings,
+    StudySettings,
+)
+
+__all__ = [
+    "LAYERS",
+    "AnalysisSettings",
+    "BlockSettings",
+    "NetworkSettings",
+    "SamplesSettings",
+    "Settings",
+    "StudySettings",
+    "add_block_text",
+    "check_name",
+    "cross_check",
+    "load_settings",
+    "new_project_text",
+    "parse_settings",
+    "read_settings_text",
+    "remove_block_text",
+    "set_samples_text",
+]

@@ -14,8 +14,8 @@ from workbench.store.files import write_whole
 from workbench.store.paths import ProjectPaths
 from workbench.store.plain import plain
 
-SOURCE_KEY = "source"
-"""Key of a journal line that holds the sha256 of every delivered file that the command stored."""
+SOURCES_KEY = "sources"
+"""Key of a journal line that lists the delivered files that the command stored: ``file`` and ``sha256`` of each."""
 
 
 def journal_line(entry: Mapping[str, Any]) -> bytes:
@@ -80,10 +80,19 @@ def source_hashes(root: Path) -> dict[str, str]:
     """
     hashes: dict[str, str] = {}
     for line in _journal_bytes(root).splitlines():
-        stored = (_entry_of(line) or {}).get(SOURCE_KEY)
-        if isinstance(stored, dict):
-            hashes.update({name: digest for name, digest in stored.items() if isinstance(digest, str)})
+        hashes |= named_sources(_entry_of(line) or {})
     return hashes
+
+
+def named_sources(entry: Mapping[str, Any]) -> dict[str, str]:
+    """Return the delivered files that one entry of the journal names, with their sha256."""
+    listed = entry.get(SOURCES_KEY)
+    pairs = [(source.get("file"), source.get("sha256")) for source in _dicts(listed)]
+    return {name: digest for name, digest in pairs if isinstance(name, str) and isinstance(digest, str)}
+
+
+def _dicts(value: Any) -> list[Mapping[str, Any]]:
+    return [item for item in value if isinstance(item, Mapping)] if isinstance(value, list | tuple) else []
 
 
 def mended(data: bytes) -> bytes:

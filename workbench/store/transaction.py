@@ -35,7 +35,7 @@ from workbench.store.files import (
     write_new,
 )
 from workbench.store.hashes import sha256_of, sha256_of_bytes
-from workbench.store.journal import SOURCE_KEY, journal_with
+from workbench.store.journal import SOURCES_KEY, journal_with, named_sources
 from workbench.store.manifest import Manifest, StageRecord, manifest_bytes, read_manifest
 from workbench.store.paths import DERIVED_FOLDERS, JOURNAL_NAME, PERSONS_FILES, ProjectPaths, check_relative
 from workbench.store.pending import (
@@ -281,8 +281,14 @@ class Change:
 
 
 def _with_sources(journal: Mapping[str, Any], hashes: Mapping[str, str]) -> dict[str, Any]:
-    sources = {name: digest for name, digest in hashes.items() if name.startswith("source/")}
-    return dict(journal) | ({SOURCE_KEY: sources} if sources else {})
+    """Return a journal's entry that names every delivered file of the change with its sha256."""
+    named = named_sources(journal)
+    lacking = [
+        {"file": name, "sha256": digest}
+        for name, digest in hashes.items()
+        if name.startswith("source/") and named.get(name) != digest
+    ]
+    return dict(journal) | ({SOURCES_KEY: [*journal.get(SOURCES_KEY, ()), *lacking]} if lacking else {})
 
 
 def _opened(path: Path) -> BinaryIO:
