@@ -33,7 +33,7 @@ def main(edges: int = 20_000) -> None:
     tables = random_tables(edges, 5000, 600)
     graph = timed("build", lambda: build_network(*tables, attributes=ATTRIBUTES, seed=1))
     timed("communities", lambda: communities(graph, 1))
-    timed("summary", lambda: network_summary(graph).sentences())
+    timed("summary", lambda: network_summary(graph))
     data = timed("GraphML out", lambda: graphml_bytes(graph))
     print(f"{len(data) / 2**20:.1f} MiB, {graph.number_of_nodes()} nodes, {graph.number_of_edges()} edges")
     with tempfile.TemporaryDirectory() as folder:

@@ -64,13 +64,12 @@ def small_network(seed: int = 1) -> nx.Graph:
     return build_network(*random_tables(60, 30, 12, seed), attributes=ATTRIBUTES, seed=1)
 
 
-def one_edge(labels: tuple[str, str] = ("g", "m"), **columns: Any) -> nx.Graph:
-    """Return the network of one edge between features of these names; columns are of the edge."""
-    edges = pd.DataFrame(
-        {"source": [labels[0]], "source_block": "a", "target": [labels[1]], "target_block": "b"}
-    )
+def one_edge(labels: tuple[str, str] = ("g", "m"), **more: Any) -> nx.Graph:
+    """Return the network of one edge between features of these names; ``more`` are columns of the edge."""
+    ends = {"source": labels[0], "source_block": "a", "target": labels[1], "target_block": "b", "r": 0.5}
+    edges = pd.DataFrame({name: pd.Series([value], dtype=object) for name, value in (ends | more).items()})
     features = pd.DataFrame({"feature": list(labels), "block": ["a", "b"], "layer": ["one", "two"]})
-    return build_network(edges.assign(**({"r": 0.5} | columns)), features, attributes={}, seed=1)
+    return build_network(edges, features, attributes={}, seed=1)
 
 
 names = st.text(st.characters(), min_size=1, max_size=12) | st.sampled_from(

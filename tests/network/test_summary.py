@@ -7,12 +7,12 @@ import pandas as pd
 from hypothesis import given
 from network.networks import ATTRIBUTES, edges_table, features_table, names, one_edge, small_network
 
-from workbench.network import build_network, network_summary, shown_name
+from workbench.network import build_network, network_summary, shown_name, summarise
 
 
 def test_counts_agree_with_the_network() -> None:
     graph = small_network()
-    found = network_summary(graph)
+    found = summarise(graph)
     assert (found.features, found.edges) == (len(graph), graph.number_of_edges())
     assert sum(pair.edges for pair in found.pairs) == found.edges
     assert sum(community.features for community in found.communities) == found.features
@@ -26,7 +26,7 @@ def test_counts_agree_with_the_network() -> None:
 def test_star_in_words() -> None:
     edges = edges_table([(0, 0), (1, 0), (2, 0), (3, 1)]).assign(r=[0.9, -0.8, 0.7, 0.6])
     graph = build_network(edges, features_table(4, 2), attributes=ATTRIBUTES, seed=1)
-    assert network_summary(graph).sentences() == (
+    assert network_summary(graph) == (
         "4 edges join 6 features.",
         "rna - lcms: 4 edges, 3 with r above zero and 1 below.",
         "2 connected components; the largest holds 4 of 6 features.",
@@ -42,27 +42,27 @@ def test_hub_tells_its_own_layer_from_others() -> None:
         {"source": ["g0"], "source_block": "rna", "target": ["g1"], "target_block": "rna", "r": 0.5}
     )
     graph = build_network(pd.concat([edges, inside]), features_table(2, 2), attributes=ATTRIBUTES, seed=1)
-    hub = network_summary(graph).hubs[0]
+    hub = summarise(graph).hubs[0]
     assert (hub.key, hub.degree, hub.own_layer, hub.other_layers) == (("rna", "g0"), 3, 1, {"metabolites": 2})
-    assert network_summary(graph).sentences()[-1].endswith("3 edges, to 2 metabolites, 1 inside transcripts.")
+    assert network_summary(graph)[-1].endswith("3 edges, to 2 metabolites, 1 inside transcripts.")
 
 
 def test_long_lists_are_cut_and_the_rest_counted() -> None:
     edges = edges_table([(i, i) for i in range(8)])
     graph = build_network(edges, features_table(8, 8), attributes=ATTRIBUTES, seed=1)
-    said = network_summary(graph).sentences(shown=3)
+    said = summarise(graph).sentences(shown=3)
     assert said[-1] == "5 more communities of at most 2 features."
     assert len(said) == 7
 
 
 def test_no_edges_are_said_in_one_sentence() -> None:
     graph = build_network(edges_table([]), features_table(1, 1), attributes=ATTRIBUTES, seed=1)
-    assert network_summary(graph).sentences() == ("No edges: no pair of features passed the evidence rules.",)
+    assert network_summary(graph) == ("No edges: no pair of features passed the evidence rules.",)
 
 
 @given(names, names)
 def test_sentences_print_whatever_the_names(source: str, target: str) -> None:
     said = network_summary(one_edge((source, target)))
-    assert all(sentence.isprintable() for sentence in said.sentences())
+    assert all(sentence.isprintable() for sentence in said)
     assert shown_name(source).isprintable()
     assert len(shown_name("a" * 10_000)) == 60

@@ -75,7 +75,7 @@ class NetworkSummary:
         )
 
 
-def network_summary(graph: nx.Graph, *, hubs: int = 10) -> NetworkSummary:
+def summarise(graph: nx.Graph, *, hubs: int = 10) -> NetworkSummary:
     """Return what a network of :func:`~workbench.network.builder.build_network` holds.
 
     Parameters
@@ -88,7 +88,7 @@ def network_summary(graph: nx.Graph, *, hubs: int = 10) -> NetworkSummary:
     --------
     >>> graph = nx.Graph([(("rna", "g1"), ("lcms", "m1"), {"r": -0.8})])
     >>> nx.set_node_attributes(graph, 1, "community")
-    >>> network_summary(graph).sentences()[1]
+    >>> summarise(graph).sentences()[1]
     'lcms - rna: 1 edge, 0 with r above zero and 1 below.'
     """
     return NetworkSummary(
@@ -99,6 +99,11 @@ def network_summary(graph: nx.Graph, *, hubs: int = 10) -> NetworkSummary:
         hubs=_hubs(graph, hubs),
         components=tuple(sorted(map(len, nx.connected_components(graph)), reverse=True)),
     )
+
+
+def network_summary(graph: nx.Graph) -> tuple[str, ...]:
+    """Return what a network holds in plain words; :func:`summarise` returns the counts."""
+    return summarise(graph).sentences()
 
 
 def shown_name(text: str) -> str:
