@@ -106,20 +106,20 @@ class CountFilter:
         return keep_features(self.step, rule, table, keep, reasons)
 
 
-def log_geometric_means(counts: Matrix) -> Matrix:
-    """Return the log of each feature's geometric mean over its positive counts (NaN without any).
+def geometric_means(counts: Matrix) -> Matrix:
+    """Return each feature's geometric mean over its positive counts (NaN without any).
 
-    >>> np.exp(log_geometric_means(np.array([[2.0, 0.0], [8.0, 5.0]]))).round(6).tolist()
+    >>> geometric_means(np.array([[2.0, 0.0], [8.0, 5.0]])).round(6).tolist()
     [4.0, 5.0]
     """
     positive = counts > 0
     logs = np.log(counts, where=positive, out=np.zeros_like(counts))
     seen = positive.sum(axis=0)
     means: Matrix = np.divide(logs.sum(axis=0), seen, where=seen > 0, out=np.full(counts.shape[1], np.nan))
-    return means
+    return np.exp(means)
 
 
-def median_of_ratios(counts: Matrix, log_reference: Matrix, *, positive_only: bool = False) -> Matrix:
+def median_of_ratios(counts: Matrix, reference: Matrix, *, positive_only: bool = False) -> Matrix:
     """Return the size factor of each sample against a reference.
 
     A zero count is a ratio of zero and takes part in the median, unless ``positive_only``, or unless
@@ -129,8 +129,8 @@ def median_of_ratios(counts: Matrix, log_reference: Matrix, *, positive_only: bo
     ----------
     counts : ndarray of shape (n_samples, n_features)
         Counts; NaN takes no part.
-    log_reference : ndarray of shape (n_features,)
-        From :func:`log_geometric_means` of the training samples.
+    reference : ndarray of shape (n_features,)
+        From :func:`geometric_means` of the training samples.
     positive_only : bool, default False
         Leave zero counts out.
 
@@ -148,15 +148,15 @@ def median_of_ratios(counts: Matrix, log_reference: Matrix, *, positive_only: bo
     A sample sequenced four times as deeply as another, the reference half way between them:
 
     >>> counts = np.array([[1.0, 3.0, 5.0], [4.0, 12.0, 20.0]])
-    >>> median_of_ratios(counts, log_geometric_means(counts)).round(6).tolist()
+    >>> median_of_ratios(counts, geometric_means(counts)).round(6).tolist()
     [0.5, 2.0]
     """
     positive = counts > 0
-    ratios = np.log(counts, where=positive, out=np.full(counts.shape, -np.inf)) - log_reference
+    ratios = counts / reference
     medians = median_rows(ratios, positive if positive_only else ~np.isnan(counts))
-    emptied = np.isneginf(medians)
+    emptied = medians == 0
     medians[emptied] = median_rows(ratios[emptied], positive[emptied])
-    return np.exp(medians)
+    return medians
 
 
 @dataclass(frozen=True)
@@ -178,7 +178,7 @@ class SizeFactors:
         positive = (table.values > 0).sum(axis=0)
         used, cut = reference_features(positive, self.enough, self.fewest)
         complete = int((positive == len(table.samples)).sum())
-        reference = log_geometric_means(table.values[:, used])
+        reference = geometric_means(table.values[:, used])
         return FittedSizeFactors(self, used, reference, complete, cut, len(table.samples))
 
 
@@ -188,7 +188,7 @@ class FittedSizeFactors:
 
     settings: SizeFactors
     used: Mask
-    log_reference: Matrix
+    reference: Matrix
     complete: int
     cut: int
     n_training: int
@@ -209,7 +209,7 @@ class FittedSizeFactors:
         if not self.used.any():
             return np.ones(len(table.samples))
         factors = median_of_ratios(
-            table.values[:, self.used], self.log_reference, positive_only=self.positive_only
+            table.values[:, self.used], self.reference, positive_only=self.positive_only
         )
         return check_found("size factor", factors, table, int(self.used.sum()))
 

@@ -141,7 +141,8 @@ class Quotients:
         """Return the step with its reference."""
         seen = (~np.isnan(table.values)).sum(axis=0)
         used, cut = reference_features(seen, self.enough, self.fewest)
-        return FittedQuotients(self, used, reference_profile(table.values[:, used]), cut, len(table.samples))
+        reference = reference_profile(table.values[:, used]) if used.any() else np.empty(0)
+        return FittedQuotients(self, used, reference, cut, len(table.samples))
 
 
 @dataclass(frozen=True)
