@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import io
 import itertools
 import math
 import sys
@@ -11,12 +10,13 @@ from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
-from xml.etree.ElementTree import ParseError
+from xml.etree.ElementTree import Element, ParseError
 
 import defusedxml.ElementTree
 import networkx as nx
 from defusedxml import DefusedXmlException
 from lxml import etree
+from networkx.readwrite.graphml import GraphMLReader
 
 from workbench.errors import InputError
 from workbench.network.attributes import (
@@ -258,10 +258,7 @@ def read_graphml(path: Path | str, *, maximum_bytes: int = MAXIMUM_BYTES) -> nx.
     path = Path(path)
     data = _gated_bytes(path, maximum_bytes)
     try:
-        defusedxml.ElementTree.fromstring(data, forbid_dtd=True)
-        with warnings.catch_warnings():
-            warnings.simplefilter("ignore", UserWarning)
-            graph = nx.read_graphml(io.BytesIO(data))
+        graph = _parsed(defusedxml.ElementTree.fromstring(data, forbid_dtd=True))
     except DefusedXmlException as error:
         raise InputError(
             f"{path}: declares a document type, which a network does not need and which can swell or read "
@@ -270,6 +267,17 @@ def read_graphml(path: Path | str, *, maximum_bytes: int = MAXIMUM_BYTES) -> nx.
     except (ParseError, nx.NetworkXException, LookupError, ValueError, TypeError, AttributeError) as error:
         raise InputError(f"{path}: is not GraphML that can be read: {error}; export it again") from error
     return _as_built(graph)
+
+
+def _parsed(root: Element) -> nx.Graph:
+    """Return the first graph of a GraphML document that has been parsed already."""
+    body = root.find(_tag("graph"))
+    if root.tag != _tag("graphml") or body is None:
+        raise ValueError("it holds no graph")
+    reader = GraphMLReader()
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", UserWarning)
+        return reader.make_graph(body, *reader.find_graphml_keys(root))
 
 
 def _gated_bytes(path: Path, maximum_bytes: int) -> bytes:
