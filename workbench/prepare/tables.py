@@ -13,6 +13,8 @@ from workbench.errors import InputError
 
 Matrix = NDArray[np.float64]
 Mask = NDArray[np.bool_]
+LARGEST = 1e100
+
 Levels = tuple[tuple[str, ...] | None, ...]
 
 
@@ -44,7 +46,7 @@ class MeasuredTable:
     Raises
     ------
     InputError
-        When names and shape disagree, a name stands twice, or a value is infinite.
+        When names and shape disagree, a name stands twice, or a value is infinite or beyond 1e100.
     """
 
     values: Matrix
@@ -201,9 +203,9 @@ def _check_unique(names: tuple[str, ...], what: str) -> None:
 
 
 def _check_finite(table: MeasuredTable) -> None:
-    infinite = np.isinf(table.values)
-    if infinite.any():
+    beyond = (table.values > LARGEST) | (table.values < -LARGEST)
+    if beyond.any():
         raise InputError(
-            f"{int(infinite.sum())} values are infinite, the first at {table.first_cell(infinite)}; "
+            f"{int(beyond.sum())} values are infinite or beyond {LARGEST:g}, the first at {table.first_cell(beyond)}; "
             "leave the cell empty where nothing was measured"
         )
