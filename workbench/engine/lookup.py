@@ -1,0 +1,100 @@
+"""The screen's figures for any pairs, whether they passed or not."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from functools import cached_property
+from typing import NamedTuple
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from workbench.engine.crowded import Counts, Tails
+from workbench.engine.found import Discovery, focus
+from workbench.engine.multiple import Family
+from workbench.engine.tails import log_p_value, p_from_log
+from workbench.engine.tiles import PairTiles, refine
+from workbench.engine.unit_rows import FloatArray, IndexArray
+from workbench.errors import NumericsError
+
+
+class PairFigures(NamedTuple):
+    """Figures of given pairs, arrays of one shape; NaN for a pair that cannot be tested.
+
+    Attributes
+    ----------
+    r, p : ndarray
+        Correlation and its two-sided p.
+    q, q_block : ndarray
+        False-discovery rates over all pairs of the screen and over the pairs of these two blocks.
+    """
+
+    r: FloatArray
+    p: FloatArray
+    q: FloatArray
+    q_block: FloatArray
+
+
+class Lookup:
+    """Figures of any pairs of a finished screen.
+
+    The q of pairs that passed are exact. Those of weaker pairs come from a histogram of |r| in steps of
+    1 / 65,536, made in one more pass over all pairs when first needed: an upper bound of q, mostly within a
+    few per cent of it, and always above the rate at which the screen selected.
+    """
+
+    def __init__(self, pairs: Sequence[PairTiles], discovery: Discovery, fdr: float) -> None:
+        self._pairs = pairs
+        self._pooled = discovery.pooled
+        self._single = discovery.single
+        self._fdr = fdr
+
+    def figures(self, pair_index: ArrayLike, i: ArrayLike, j: ArrayLike) -> PairFigures:
+        """Figures of the pairs of feature ``i`` of the first block and ``j`` of the second.
+
+        Raises
+        ------
+        NumericsError
+            When there is no such pair of blocks or feature.
+        """
+        which, first, second = (np.asarray(a, dtype=np.int64) for a in np.broadcast_arrays(pair_index, i, j))
+        _check_index(which, len(self._pairs), "pair of blocks")
+        figures = [np.full(which.shape, np.nan) for _ in range(4)]
+        for k in np.unique(which):
+            here = which == k
+            values = self._of_pair(int(k), first[here], second[here])
+            for out, value in zip(figures, values, strict=True):
+                out[here] = value
+        for pair in self._pairs:
+            pair.release()
+        return PairFigures(*figures)
+
+    def _of_pair(self, k: int, i: IndexArray, j: IndexArray) -> tuple[FloatArray, ...]:
+        pair = self._pairs[k]
+        _check_index(i, pair.x.n_features, "feature of the first block")
+        _check_index(j, pair.y.n_features, "feature of the second block")
+        r = refine(pair, i * pair.y.n_features + j)
+        r[~(pair.x.testable[i] & pair.y.testable[j])] = np.nan
+        log_p = log_p_value(r, pair.df)
+        q = self._q(log_p, self._pooled, list(range(len(self._pairs))))
+        return r, p_from_log(log_p), q, self._q(log_p, self._single[k], [k])
+
+    def _q(self, log_p: FloatArray, family: Family, members: list[int]) -> FloatArray:
+        log_q = family.exact_log_q(log_p)
+        weaker = np.isnan(log_q) & ~np.isnan(log_p)
+        if weaker.any():
+            log_q[weaker] = Counts.of([self._tails[k] for k in members]).log_q_bound(log_p[weaker])
+        q = p_from_log(log_q)
+        passed = log_p <= family.threshold
+        q[passed] = np.minimum(q[passed], self._fdr)
+        return q
+
+    @cached_property
+    def _tails(self) -> list[Tails]:
+        return [Tails.of(focus(self._pairs, k)) for k in range(len(self._pairs))]
+
+
+def _check_index(index: IndexArray, size: int, what: str) -> None:
+    wrong = index[(index < 0) | (index >= size)]
+    if wrong.size:
+        raise NumericsError(f"there is no {what} number {wrong[0]}; they are numbered from 0 to {size - 1}")

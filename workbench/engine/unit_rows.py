@@ -1,0 +1,155 @@
+"""Features as rows of length one with the nuisance removed, prepared slice by slice.
+
+The product of two such rows is their (partial) correlation. Every row is made from its own feature alone by
+sums in a fixed order, so that its bits do not depend on the slice it came with, on the threads or on the
+matrix library.
+"""
+
+from __future__ import annotations
+
+from typing import Any, Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.stats import rankdata
+
+from workbench.engine.nuisance import CONSTANT_TOLERANCE, Nuisance
+from workbench.errors import NumericsError
+
+FloatArray = NDArray[np.float64]
+IndexArray = NDArray[np.int64]
+
+_SLICE = 1024
+_EXTREME = 1e100
+
+
+class Columns(Protocol):
+    """What a block must offer: a shape and slices, as arrays and HDF5 datasets do."""
+
+    @property
+    def shape(self) -> tuple[int, ...]:
+        """Samples and features."""
+
+    def __getitem__(self, key: Any) -> Any:
+        """Rows and columns of a slice."""
+
+
+class UnitRows:
+    """One side of a pair of blocks: its features as unit rows, all held or made anew when asked for.
+
+    Attributes
+    ----------
+    n_features : int
+    testable : ndarray of bool, shape (n_features,)
+        Features with variance left after the nuisance and without gaps; known once every row was made.
+    held : ndarray of shape (n_features, n_samples) or None
+        All rows, between ``hold`` and ``release``.
+    """
+
+    def __init__(self, source: Columns, nuisance: Nuisance, *, ranks: bool) -> None:
+        self._source = source
+        self._nuisance = nuisance
+        self._ranks = ranks
+        self.n_features = int(source.shape[1])
+        self.testable = np.zeros(self.n_features, dtype=np.bool_)
+        self.held: FloatArray | None = None
+
+    @property
+    def n_bytes(self) -> int:
+        """Memory that all rows take, in bytes."""
+        return 8 * self.n_features * self._nuisance.n_samples
+
+    def hold(self) -> None:
+        """Make all rows and keep them."""
+        if self.held is None:
+            held = np.empty((self.n_features, self._nuisance.n_samples))
+            for start in range(0, self.n_features, _SLICE):
+                stop = min(start + _SLICE, self.n_features)
+                held[start:stop] = self.rows(start, stop)
+            self.held = held
+
+    def release(self) -> None:
+        """Forget the rows that were kept."""
+        self.held = None
+
+    def rows(self, start: int, stop: int) -> FloatArray:
+        """Features from ``start`` to before ``stop`` as unit rows; zeros where nothing can be tested."""
+        if self.held is not None:
+            return self.held[start:stop]
+        rows, testable = unit_rows(np.asarray(self._source[:, start:stop]), self._nuisance, ranks=self._ranks)
+        self.testable[start:stop] = testable
+        return rows
+
+    def rows_at(self, index: IndexArray) -> FloatArray:
+        """Features at ``index``, repeats allowed, in any order, as unit rows."""
+        if self.held is not None:
+            return np.take(self.held, index, axis=0)
+        features, place = np.unique(index, return_inverse=True)
+        wanted = np.empty((features.size, self._nuisance.n_samples))
+        for start in range(0, self.n_features, _SLICE):
+            first, last = np.searchsorted(features, [start, start + _SLICE])
+            if first < last:
+                rows = self.rows(start, min(start + _SLICE, self.n_features))
+                wanted[first:last] = rows[features[first:last] - start]
+        return wanted[place]
+
+
+def unit_rows(
+    block: NDArray[Any], nuisance: Nuisance, *, ranks: bool
+) -> tuple[FloatArray, NDArray[np.bool_]]:
+    """Rows of length one of a block's features, and which of them can be tested.
+
+    Parameters
+    ----------
+    block : ndarray of shape (n_samples, n_features)
+        A feature with a gap or an infinite value cannot be tested.
+    nuisance : Nuisance
+        Removed from the features, or from their ranks.
+    ranks : bool
+        Whether values are replaced by their average ranks first (Spearman).
+
+    Returns
+    -------
+    rows : ndarray of shape (n_features, n_samples)
+        Zero where the feature cannot be tested.
+    testable : ndarray of bool, shape (n_features,)
+    """
+    rows = np.array(block.T, dtype=np.float64, order="C")
+    peak = np.abs(rows).max(axis=1)
+    testable = np.isfinite(peak)
+    rows[~testable] = 0.0
+    extreme = testable & (peak > 0.0) & ((peak > _EXTREME) | (peak < 1.0 / _EXTREME))
+    rows[extreme] /= peak[extreme, None]
+    if ranks:
+        rows = rankdata(rows, axis=1)
+    whole = _lengths(rows)
+    rows -= rows.mean(axis=1, keepdims=True)
+    for direction in nuisance.basis.T[1:]:
+        rows -= np.einsum("pn,n->p", rows, np.ascontiguousarray(direction))[:, None] * direction
+    left = _lengths(rows)
+    testable &= left > CONSTANT_TOLERANCE * whole
+    rows[~testable] = 0.0
+    rows /= np.where(testable, left, 1.0)[:, None]
+    return rows, testable
+
+
+def check_side(source: Columns, n: int | None, what: str) -> None:
+    """Check that a side is samples x features with ``n`` samples.
+
+    Raises
+    ------
+    NumericsError
+        When its shape is another one.
+    """
+    shape = tuple(source.shape)
+    if len(shape) != 2 or 0 in shape:
+        raise NumericsError(f"{what} has shape {shape}; it must be samples x features, at least one of each")
+    if n is not None and shape[0] != n:
+        raise NumericsError(
+            f"{what} has {shape[0]} samples and its partner {n}; give the same samples for both"
+        )
+
+
+def _lengths(rows: FloatArray) -> FloatArray:
+    lengths: FloatArray = np.sqrt(np.einsum("pn,pn->p", rows, rows))
+    return lengths
