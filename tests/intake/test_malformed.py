@@ -1,0 +1,352 @@
+"""Tables as they should not arrive: each is refused with file, place, names, what was found and the way out."""
+
+import re
+
+import pytest
+from intake.delivered import SHEET, tabbed, write
+
+from workbench.errors import InputError
+from workbench.intake import delivered_table
+
+HEAD = "id S1 S2 S3"
+GOOD = "g1 1 2 3"
+
+# name of the case: (file name, content, options, pieces of the message)
+MALFORMED = {
+    "an empty file": ("a.tsv", "", {}, ["a.tsv", "empty", "header line"]),
+    "blank lines alone": ("a.tsv", "\n\n  \n", {}, ["a.tsv", "holds no text"]),
+    "a header alone": ("a.tsv", tabbed(HEAD), {}, ["line 1", "no row follows"]),
+    "a header and separators": ("a.csv", "id,S1,S2\n,,\n,,\n", {}, ["line 1", "no row follows"]),
+    "one column": ("a.tsv", "id\ng1\n", {}, ["one column wide", "'id'", "tabs, commas or semicolons"]),
+    "fields parted by blanks": ("a.tsv", "id S1 S2\ng1 1 2\n", {}, ["one column wide", "'id S1 S2'"]),
+    "a blank first line": ("a.tsv", "\n" + tabbed(HEAD, GOOD), {}, ["line 1 is empty", "header"]),
+    "a blank line between": (
+        "a.tsv",
+        tabbed(HEAD, GOOD) + "\n" + tabbed("g2 1 2 3"),
+        {},
+        ["1 of 3 rows", "4 fields", "line 3 is empty"],
+    ),
+    "a short line": (
+        "a.tsv",
+        tabbed(HEAD, GOOD, "g2 1 2"),
+        {},
+        ["line 3 ('g2') has 3 fields", "column 3, is '2'"],
+    ),
+    "a long line": (
+        "a.tsv",
+        tabbed(HEAD, GOOD, "g2 1 2 3 4"),
+        {},
+        ["line 3 ('g2') has 5 fields", "column 5", "'4'"],
+    ),
+    "a tab at the end of one line": (
+        "a.tsv",
+        tabbed(HEAD, GOOD, "g2 1 2 3 _"),
+        {},
+        ["line 3 ('g2')", "a separator stands at the end", "column 5 has no name"],
+    ),
+    "a tab at the end of every row": (
+        "a.tsv",
+        tabbed(HEAD, "g1 1 2 3 _", "g2 1 2 3 _"),
+        {},
+        ["2 of 2 rows", "line 2 ('g1') has 5 fields", "separator"],
+    ),
+    "a tab at the end of every line": (
+        "a.tsv",
+        tabbed(HEAD + " _", "g1 1 2 3 _"),
+        {},
+        ["1 column without an id", "line 1, column 5", "separator at the end"],
+    ),
+    "seven ragged lines": (
+        "a.tsv",
+        tabbed(HEAD, GOOD, *(f"x{k} 1" for k in range(7))),
+        {},
+        ["7 of 8 rows", "line 3", "line 7", "and 2 more"],
+    ),
+    "decimal commas parted by commas": (
+        "a.csv",
+        "id,S1,S2\ng1,1,5,2,5\ng2,1,5,2,5\n",
+        {},
+        ["2 of 2 rows", "line 2 ('g1') has 5 fields", "decimal commas"],
+    ),
+    "a header short of the id column's name, or not": (
+        "a.tsv",
+        tabbed("feature S1 S2", "g1 1 2 3"),
+        {},
+        ["1 of 1 row", "line 2 ('g1') has 4 fields"],
+    ),
+    "a short header with a name that is no sample": (
+        "a.tsv",
+        tabbed("what S1 S2", "g1 1 2 3"),
+        {},
+        ["line 1, column 1", "one field short", "'what' is no sample", "one column off"],
+    ),
+    "a quote that stays open": (
+        "a.tsv",
+        tabbed(HEAD, '"g1 1 2 3', "g2 4 5 6"),
+        {},
+        ["1 line", "line 2, column 1", "'\"g1'", "close the quotes"],
+    ),
+    "a quote that stays open in the header": (
+        "a.csv",
+        'id,S1,"S2\ng1,1,2\n',
+        {},
+        ["line 1, column 3", "double quote"],
+    ),
+    "text after a closing quote": ("a.csv", 'id,S1,S2\n"g"1,1,2\n', {}, ["line 2, column 1", "double quote"]),
+    "a line break in a quoted cell": (
+        "a.csv",
+        'id,S1,S2\n"g\n1",1,2\n',
+        {},
+        ["line 2, column 1: '\"g'", "line breaks out of cells"],
+    ),
+    "a feature twice": (
+        "a.tsv",
+        tabbed(HEAD, GOOD, "g2 1 2 3", "g1 4 5 6"),
+        {},
+        ["1 feature id occurs more than once", "'g1': line 2, column 1, line 4, column 1"],
+    ),
+    "a sample twice": (
+        "a.tsv",
+        tabbed("id S1 S2 S1", GOOD),
+        {},
+        ["1 sample id occurs more than once", "'S1': line 1, column 2, line 1, column 4"],
+    ),
+    "a sample twice in rows": (
+        "a.tsv",
+        tabbed("id g1", "S1 1", "S2 2", "S1 3"),
+        {},
+        ["'S1': line 2", "line 4, column 1"],
+    ),
+    "a feature twice in the header": (
+        "a.tsv",
+        tabbed("id g1 g1", "S1 1 2"),
+        {},
+        ["1 feature id", "'g1': line 1, column 2"],
+    ),
+    "a row without an id": (
+        "a.tsv",
+        tabbed(HEAD, GOOD, "_ 4 5 6"),
+        {},
+        ["1 row without an id", "line 3, column 1"],
+    ),
+    "a column without a name": (
+        "a.tsv",
+        tabbed("id S1 _ S3", GOOD),
+        {},
+        ["1 column without an id", "line 1, column 3"],
+    ),
+    "decimal commas": (
+        "a.csv",
+        "id;S1;S2\ng1;1,5;2\n",
+        {},
+        [
+            "1 cell holds no number",
+            "line 2, column 2",
+            "feature 'g1'",
+            "sample 'S1'",
+            "'1,5', a decimal comma",
+            "decimal point",
+        ],
+    ),
+    "thousands separators": (
+        "a.tsv",
+        tabbed(HEAD, "g1 1,234 1,234,567 3"),
+        {},
+        ["2 cells", "line 2, column 3", "'1,234,567', a thousands separator", "separators"],
+    ),
+    "thousands apart by blanks": (
+        "a.tsv",
+        "id\tS1\tS2\ng1\t1 234\t5\n",
+        {},
+        ["'1 234', a thousands separator"],
+    ),
+    "points for thousands": (
+        "a.tsv",
+        tabbed("id S1 S2", "g1 1.234.567,8 1"),
+        {},
+        ["'1.234.567,8', a thousands separator"],
+    ),
+    "under a limit": (
+        "a.tsv",
+        tabbed(HEAD, "g1 <LOD <0.5 BLQ"),
+        {},
+        ["3 cells", "'<LOD', a value under or over a limit", "leave such cells empty"],
+    ),
+    "not detected": ("a.tsv", tabbed(HEAD, "g1 n.d. 2 3"), {}, ["'n.d.', a value under the limit", "empty"]),
+    "a unit": (
+        "a.tsv",
+        tabbed(HEAD, "g1 12mg/l 2 3"),
+        {},
+        ["'12mg/l', a number with a unit", "take the unit out"],
+    ),
+    "an underscore in a number": ("a.tsv", tabbed(HEAD, "g1 1_000 2 3"), {}, ["line 2, column 2", "'1_000'"]),
+    "digits of another script": (
+        "a.tsv",
+        tabbed(HEAD, "g1 ١٢ 2 3"),
+        {},
+        ["line 2, column 2", "'١٢'", "missing value is"],
+    ),
+    "a hexadecimal number": ("a.tsv", tabbed(HEAD, "g1 0x1F 2 3"), {}, ["line 2, column 2", "'0x1F'"]),
+    "a spreadsheet's error as text": (
+        "a.tsv",
+        tabbed(HEAD, "g1 #REF! #DIV/0! 3"),
+        {},
+        ["'#REF!', a spreadsheet's error value"],
+    ),
+    "seven texts": (
+        "a.tsv",
+        tabbed(HEAD, *(f"g{k} x{k} 1 2" for k in range(7))),
+        {},
+        ["7 cells hold no number", "'x4'", "and 2 more", "no cell of 'S1' is a number: take annotations out"],
+    ),
+    "a row of labels": (
+        "a.tsv",
+        tabbed(HEAD, "group a a b", GOOD),
+        {},
+        ["3 cells", "feature 'group', sample 'S3'", "no cell of 'group' is a number"],
+    ),
+    "infinity": (
+        "a.tsv",
+        tabbed(HEAD, "g1 1 inf -Infinity"),
+        {},
+        ["2 cells are infinite", "line 2, column 3 (feature 'g1', sample 'S2'): 'inf'", "'-Infinity'"],
+    ),
+    "a number too large": ("a.tsv", tabbed(HEAD, "g1 1 1e999 2"), {}, ["1 cell is infinite", "'1e999'"]),
+    "negative counts": (
+        "a.tsv",
+        tabbed(HEAD, "g1 1 -2 3", "g2 -1 0 0"),
+        {"values": "counts"},
+        [
+            "2 cells are negative",
+            "line 2, column 3 (feature 'g1', sample 'S2'): '-2'",
+            "line 3, column 2",
+            "other values",
+        ],
+    ),
+    "fractions in counts": (
+        "a.tsv",
+        tabbed(HEAD, "g1 1 2.5 3"),
+        {"values": "counts"},
+        ["1 cell is not whole", "line 2, column 3 (feature 'g1', sample 'S2'): '2.5'", "round"],
+    ),
+    "dates in features": (
+        "a.tsv",
+        tabbed(HEAD, "2-Sep 1 2 3", "g2 1 2 3", "1-Mar 1 2 3"),
+        {},
+        ["2 feature ids are dates", "'2-Sep' (line 2, column 1)", "'1-Mar' (line 4, column 1)", "SEPT2"],
+    ),
+    "dates in a header of features": (
+        "a.tsv",
+        tabbed("id g1 2024-09-02", "S1 1 2"),
+        {},
+        ["'2024-09-02' (line 1, column 3)"],
+    ),
+    "UTF-16": ("a.tsv", tabbed(HEAD, GOOD).encode("utf-16"), {}, ["line 1", "UTF-16", "CSV UTF-8"]),
+    "UTF-16 without a mark": ("a.tsv", tabbed(HEAD, GOOD).encode("utf-16-le"), {}, ["UTF-16", "CSV UTF-8"]),
+    "Windows-1252": (
+        "a.tsv",
+        tabbed(HEAD, GOOD, "µ-opioid 1 2 3").encode("cp1252"),
+        {},
+        ["1 line not in UTF-8", "Windows-1252", "line 3, character 1", "0xB5", "'µ-opioid"],
+    ),
+    "a NUL byte": (
+        "a.tsv",
+        tabbed(HEAD, *[f"g{k} 1 2 3" for k in range(500)]) + "g\0 1",
+        {},
+        ["line 502", "NUL"],
+    ),
+    "no sample matches": (
+        "a.tsv",
+        tabbed("id A B C D", "g1 1 2 3 4", "g2 1 2 3 4"),
+        {},
+        ["no sample of the sheet", "'S1', 'S2', 'S3'", "'A', 'B', 'C' and 1 more", "'g1', 'g2'", "same ids"],
+    ),
+    "samples written otherwise": (
+        "a.tsv",
+        tabbed("id s_1 s_2", "g1 1 2"),
+        {},
+        ["no sample", "'S1' is 's_1' of the table, 'S2' is 's_2'"],
+    ),
+    "both axes match": (
+        "a.tsv",
+        tabbed("id S1 S2", "S3 1 2", "S1 3 4"),
+        {},
+        ["rows and the columns match 2 samples", "samples_in = 'rows'"],
+    ),
+    "samples_in against the ids": (
+        "a.tsv",
+        tabbed(HEAD, GOOD),
+        {"samples_in": "rows"},
+        ["samples_in = 'rows'", "none of the rows", "3 of the columns are", "write samples_in = 'columns'"],
+    ),
+    "samples_in misspelt": (
+        "a.tsv",
+        tabbed(HEAD, GOOD),
+        {"samples_in": "row"},
+        ["'row'", "'rows', 'columns'"],
+    ),
+    "values misspelt": ("a.tsv", tabbed(HEAD, GOOD), {"values": "count"}, ["'count'", "counts, intensities"]),
+    "a sheet of a text table": ("a.tsv", tabbed(HEAD, GOOD), {"sheet": "x"}, ["sheet 'x'", "no .xlsx"]),
+    "an array of a text table": ("a.tsv", tabbed(HEAD, GOOD), {"array": "X"}, ["array 'X'", "no .h5ad"]),
+    "an unknown mark of parting": ("a.csv", "sep=|\nid|S1\ng1|1\n", {}, ["line 1", "'|'", "semicolon"]),
+    "an old Excel file": ("a.xls", b"\xd0\xcf\x11\xe0" + bytes(90), {}, ["old Excel file", ".xlsx"]),
+    "a web page": ("a.xls", "<html><table></table></html>", {}, ["a web page", "TSV, CSV or XLSX"]),
+    "a PDF": ("a.tsv", "%PDF-1.7", {}, ["a PDF file"]),
+    "a gzip file cut short": ("a.tsv.gz", b"\x1f\x8b\x08\x00" + bytes(9), {}, ["gzip", "damaged"]),
+    "a zip package": ("a.xlsx", b"PK\x03\x04" + bytes(60), {}, ["damaged or cut short"]),
+    "an HDF5 file cut short": ("a.h5ad", b"\x89HDF\r\n\x1a\n" + bytes(40), {}, ["HDF5 file is damaged"]),
+    "a Parquet file cut short": ("a.parquet", b"PAR1" + bytes(40), {}, ["Parquet file is damaged"]),
+}
+
+MALFORMED_MIXED = {
+    "readings with a limit": (
+        tabbed("id ldl", *(f"P{k} {k}.5" for k in range(12)), "P12 <5"),
+        [
+            "1 cell holds no number",
+            "line 14, column 2 (feature 'ldl', sample 'P12')",
+            "'<5', a value under or over a limit",
+        ],
+    ),
+    "decimal commas": (
+        tabbed("id ldl", "P1 1,5", "P2 2,5"),
+        ["2 cells", "'1,5', a decimal comma", "decimal point"],
+    ),
+    "infinity": (tabbed("id ldl", "P1 inf", "P2 2"), ["1 cell is infinite", "feature 'ldl', sample 'P1'"]),
+}
+
+
+@pytest.mark.parametrize("case", MALFORMED)
+def test_a_malformed_table_is_refused_with_place_and_way_out(case, tmp_path):
+    name, content, options, pieces = MALFORMED[case]
+    path = write(tmp_path, name, content)
+    with pytest.raises(InputError, match=re.escape(name)) as caught:
+        delivered_table(path, **{"sample_ids": SHEET, "values": "continuous", **options})
+    for piece in pieces:
+        assert piece in str(caught.value)
+
+
+@pytest.mark.parametrize("case", MALFORMED_MIXED)
+def test_mixed_tables_refuse_text_among_readings(case, tmp_path):
+    content, pieces = MALFORMED_MIXED[case]
+    path = write(tmp_path, "clinic.tsv", content)
+    with pytest.raises(InputError, match=r"clinic\.tsv") as caught:
+        delivered_table(path, sample_ids=[f"P{k}" for k in range(13)], values="mixed")
+    for piece in pieces:
+        assert piece in str(caught.value)
+
+
+def test_files_that_cannot_be_opened_are_told(tmp_path):
+    with pytest.raises(InputError, match=r"nowhere\.tsv: there is no such file"):
+        delivered_table(tmp_path / "nowhere.tsv", sample_ids=SHEET, values="log")
+    with pytest.raises(InputError, match="this is a folder"):
+        delivered_table(tmp_path, sample_ids=SHEET, values="log")
+
+
+def test_no_message_names_a_library_or_shows_a_traceback(tmp_path):
+    for name, content, options, _ in MALFORMED.values():
+        path = write(tmp_path, name, content)
+        with pytest.raises(InputError, match=re.escape(name)) as caught:
+            delivered_table(path, **{"sample_ids": SHEET, "values": "continuous", **options})
+        for word in ("pandas", "openpyxl", "Traceback", "codec", "DataFrame", "h5py", "arrow"):
+            assert word not in str(caught.value)
+        assert caught.value.__cause__ is None
