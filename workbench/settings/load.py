@@ -25,7 +25,7 @@ _PLAIN_WORDS = (
     (re.compile(r"Invalid value"), "this is no value; text needs quotes: \"...\""),
     (re.compile(r"Expected '=' after a key"), "a key needs '=' and a value"),
     (re.compile(r"Invalid statement"), "this is neither KEY = VALUE nor [TABLE]"),
-    (re.compile(r"Unterminated string|Illegal character '\\n'"), "a text lacks its closing quote"),
+    (re.compile(r"Unterminated string|Expected \"'\"|Illegal character '\\n'"), "a text lacks its closing quote"),
     (re.compile(r"Unclosed array"), "a list lacks its comma or its closing ']'"),
     (re.compile(r"Unclosed inline table"), "a table lacks its comma or its closing '}'"),
     (re.compile(r"Expected newline or end of document"), "something stands after the value; text needs quotes"),

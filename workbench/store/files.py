@@ -55,6 +55,19 @@ def is_part(name: str) -> bool:
     return _PART.fullmatch(name) is not None
 
 
+def file_of(path: Path) -> Path:
+    """Return the file that a path is a neighbour of, or the path itself (a long name may lack its end).
+
+    Examples
+    --------
+    >>> file_of(Path("results/.edges.tsv.0123456789abcdef.part")).as_posix()
+    'results/edges.tsv'
+    """
+    if not is_part(path.name):
+        return path
+    return path.with_name(path.name[1:].removesuffix(".part").removesuffix(".old").rpartition(".")[0])
+
+
 def sha256_of(path: Path) -> str:
     """Return the sha256 of a file's bytes, 64 hexadecimal digits.
 
@@ -147,7 +160,7 @@ def explained(error: OSError, path: Path | str | None = None) -> WorkbenchError:
         A `DamageError` when the disk itself fails, else an `InputError`.
     """
     where = error.filename if error.filename is not None else path
-    prefix = "" if where is None else f"{os.fsdecode(where)}: "
+    prefix = "" if where is None else f"{file_of(Path(os.fsdecode(where)))}: "
     number = error.errno
     if number in FULL:
         told = "the disk (or your share of it) is full; free some space and run the command again"

@@ -13,7 +13,7 @@ from contextlib import suppress
 from dataclasses import dataclass
 from pathlib import Path
 
-from workbench.errors import DamageError
+from workbench.errors import DamageError, InputError
 from workbench.store.files import is_part, sha256_of, sync_folder, sync_folders, unlink_if_there, write_whole
 from workbench.store.manifest import MANIFEST_NAME
 from workbench.store.paths import HIDDEN_NAME, PERSONS_FILES, ProjectPaths, check_relative
@@ -78,7 +78,7 @@ def read_steps(path: Path) -> tuple[Step, ...] | None:
                 f"{path}: a newer version of this program began a change; finish it with that one"
             )
         return tuple(_checked(Step(**step)) for step in content["steps"])
-    except (ValueError, KeyError, TypeError, RecursionError):
+    except (InputError, ValueError, KeyError, TypeError, RecursionError):
         return None
 
 

@@ -25,6 +25,7 @@ from typing import Any, BinaryIO, Self
 from workbench.errors import InputError
 from workbench.store.files import (
     STORAGE,
+    explained,
     make_folders,
     new_token,
     part_of,
@@ -125,7 +126,10 @@ class Change:
             raise InputError(f"{target}: a folder stands where a file should; rename it")
         self._removed.pop(relative, None)
         self._new[relative] = part_of(target, self._token)
-        make_folders(target.parent)
+        try:
+            make_folders(target.parent)
+        except (FileExistsError, NotADirectoryError) as error:
+            raise explained(error) from error
         return self._new[relative]
 
     def write_bytes(self, relative: str, data: bytes) -> None:
