@@ -3,6 +3,8 @@
 import io
 import os
 
+import pytest
+
 from workbench.store.manifest import StageRecord
 from workbench.store.transaction import Change
 
@@ -97,3 +99,22 @@ def files_of(found):
     return {
         name: data for name, data in found.items() if data is not None and not name.startswith(".workbench")
     }
+
+
+def committed(root, write):
+    """Make a change of what ``write`` does with it."""
+    with Change(root) as change:
+        write(change)
+        change.commit({"command": "made", "time": TIME})
+
+
+def decided(root, monkeypatch, write):
+    """Make a change and be killed as soon as it is decided."""
+
+    def stop(*_):
+        raise Dead("decided")
+
+    with monkeypatch.context() as patch:
+        patch.setattr("workbench.store.transaction.finish", stop)
+        with pytest.raises(Dead, match="decided"):
+            committed(root, write)

@@ -5,7 +5,7 @@ import os
 import stat
 
 import pytest
-from store.crashes import TIME, Dead, make_old, snapshot
+from store.crashes import TIME, committed, decided, make_old, snapshot
 
 from workbench.errors import DamageError, InputError, WorkbenchError
 from workbench.store.files import sha256_of
@@ -57,7 +57,7 @@ def test_a_failing_writer_of_the_caller_is_told_as_a_full_disk(root):
     with pytest.raises(
         InputError, match=r"/results/main/edges.tsv: the disk .* is full; .*nothing was changed"
     ):
-        make(root, write)
+        committed(root, write)
     assert snapshot(root) == before
 
 
@@ -88,7 +88,7 @@ def test_a_committed_change_takes_nothing_more(root):
 
 def test_a_file_that_was_asked_for_and_not_written_is_a_mistake_of_the_caller(root):
     with pytest.raises(ValueError, match=r"results/main/x.tsv: .* nothing was written"):
-        make(root, lambda change: change.new_file("results/main/x.tsv"))
+        committed(root, lambda change: change.new_file("results/main/x.tsv"))
 
 
 PLACES = ["/etc/passwd", "../x", "results/../../x", "results/.hidden", ".workbench/manifest.json", "a\\b"]
@@ -195,24 +195,6 @@ def test_long_and_foreign_names_have_neighbours(root):
         change.write_text(name, "x")
         change.commit()
     assert (root / name).read_text() == "x"
-
-
-def make(root, write):
-    with Change(root) as change:
-        write(change)
-        change.commit({"command": "made", "time": TIME})
-
-
-def decided(root, monkeypatch, write):
-    """Make a change and stop as soon as it is decided."""
-
-    def stop(*_):
-        raise Dead("decided")
-
-    with monkeypatch.context() as patch:
-        patch.setattr("workbench.store.transaction.finish", stop)
-        with pytest.raises(Dead, match="decided"):
-            make(root, write)
 
 
 def test_an_edit_made_between_kill_and_recovery_is_not_lost(root, monkeypatch):
