@@ -2,9 +2,9 @@
 
 Run from the repository's root: ``python example_project/make_example.py``.
 
-What is planted (``planted.tsv`` names every feature): four modules of 20 transcripts and 8 metabolites that
-follow one hidden factor each, independent of the drought; 120 transcripts and 20 metabolites that merely follow
-the drought, and nothing else of the other layer; two private factors in each layer (strong variation that the
+What is planted (``planted.tsv`` names every feature): four modules of 45 transcripts and 10 metabolites that
+follow one hidden factor each, independent of the drought; 180 transcripts and 30 metabolites that merely follow
+the drought, and nothing else of the other layer; a private factor in each layer (strong variation that the
 other layer does not share); three run days per assay, spread over both conditions, that shift every feature.
 The tables are delivered differently: counts with the features in rows, intensities with the samples in rows and
 in another order, with gaps where a metabolite is scarce.
@@ -25,10 +25,11 @@ from workbench import Project
 HERE = Path(__file__).resolve().parent
 SEED = 48
 PLANTS, TRANSCRIPTS, METABOLITES = 48, 1500, 160
-MODULES, IN_MODULE = 4, {"transcripts": 20, "metabolites": 8}
-FOLLOW_DROUGHT = {"transcripts": 120, "metabolites": 20}
+MODULES, IN_MODULE = 4, {"transcripts": 45, "metabolites": 10}
+FOLLOW_DROUGHT = {"transcripts": 180, "metabolites": 30}
 SPREAD = {"transcripts": 0.45, "metabolites": 0.40}
-PRIVATE = 2
+DAY_SHIFT = {"transcripts": 0.4, "metabolites": 0.3}
+PRIVATE_LOADING, PRIVATE_SHARE = 0.6, 0.6
 KEPT = ("project.toml", "samples.tsv", "journal.jsonl", "source")
 
 
@@ -66,10 +67,9 @@ def deviations(
     drought = (sheet["condition"] == "drought").to_numpy(float)
     day = sheet["rna_day" if layer == "transcripts" else "ms_day"].str[1].astype(int).to_numpy() - 1
     deviation = rng.normal(0, SPREAD[layer], (PLANTS, p))
-    deviation += rng.normal(0, 0.5, (3, p))[day]
-    deviation += rng.normal(size=(PLANTS, PRIVATE)) @ (
-        rng.normal(0, 0.35, (PRIVATE, p)) * (rng.random((PRIVATE, p)) < 0.5)
-    )
+    deviation += rng.normal(0, DAY_SHIFT[layer], (3, p))[day]
+    private = rng.normal(0, PRIVATE_LOADING, p) * (rng.random(p) < PRIVATE_SHARE)
+    deviation += np.outer(rng.normal(size=PLANTS), private)
     for module in range(MODULES):
         inside = (planted == f"module {module + 1}").to_numpy()
         signs = rng.choice([-1.0, 1.0], inside.sum(), p=[0.3, 0.7])
@@ -135,9 +135,12 @@ def make(folder: Path) -> None:
 
 
 def build(delivered: Path, folder: Path) -> None:
-    """Make a project of the delivered tables, as a user would."""
+    """Make a project of the delivered tables, as a user would: the watered plants are the reference."""
     project = Project.create(folder, title="Barley under drought (invented data)")
     project.add_samples(delivered / "plants.tsv", group=["condition"])
+    settings = folder / "project.toml"
+    order = 'group = "condition"\norder = { condition = ["watered", "drought"] }\n'
+    settings.write_text(settings.read_text("utf-8").replace('group = "condition"\n', order), "utf-8")
     project.add_block(
         "transcripts", delivered / "counts.tsv", layer="transcripts", values="counts", adjust=["rna_day"]
     )

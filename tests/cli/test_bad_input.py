@@ -26,7 +26,7 @@ def edit(folder, old, new):
 WRONG_SETTINGS = [
     ('blocks = "all"', 'blocks = ["rna", "lcsm"]', ["analyses.main.blocks", "lcsm", "did you mean 'lcms'"]),
     ("adjust", "ajust", ["samples.ajust", "did you mean 'adjust'"]),
-    ('group = ["group"]', 'group = ["grp"]', ["samples.group", "grp", "group"]),
+    ('group = "group"', 'group = ["grp"]', ["samples.group", "grp", "group"]),
     ('values = "counts"', 'values = "count"', ["blocks.rna.values", "count", "counts"]),
     ('blocks = "all"', 'blocks = "all"\nstability = 100', ["analyses.main.stability"]),
     ("format = 1", "format = 99", ["format", "99"]),
@@ -111,7 +111,7 @@ def test_an_unknown_template_is_named_with_the_nearest(command, tmp_path):
 
 def test_several_samples_of_a_subject_stop_rather_than_being_pooled(command, made):
     edit(made, "[samples]", '[samples]\nsubject = "group"')
-    edit(made, 'group = ["group"]', "")
+    edit(made, 'group = "group"', "")
     code, _, err = command("run", "--project", made)
     assert (code, "not supported yet" in err) == (2, True)
 

@@ -47,7 +47,7 @@ def terminal_reporter(quiet: bool) -> Reporter:
             tell(text)
 
         @contextmanager
-        def progress(self, label: str) -> Iterator[Progress | None]:  # type: ignore[override]
+        def progress(self, label: str) -> Iterator[Progress | None]:
             if not sys.stderr.isatty():
                 yield None
                 return

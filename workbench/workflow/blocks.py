@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -59,7 +60,7 @@ def _take_in(state: ProjectState, change: Change, delivery: Delivery) -> tuple[s
     if delivery.annotations is not None:
         declared = replace_block(declared, annotations=str(delivery.annotations.resolve()))
     build = build_block(declared, delivery.name, state.root, sheet)
-    entries["samples_in"] = build.samples_in
+    entries["samples_in"] = json.loads(build.adata.uns["workbench"])["samples_in"]
     text = add_block_text(text, delivery.name, entries)
     final = parse_settings(text, state.paths.settings)
     require_columns(final.blocks[delivery.name].adjust, list(sheet.columns), state.paths.samples)

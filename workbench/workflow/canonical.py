@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 
 from workbench.engine import (
     CrossValidation,
+    Nuisance,
     PairTest,
     RegularisedCCA,
     SplitSource,
@@ -116,8 +117,8 @@ def canonical_pairs(view: AnalysisView, reporter: Reporter) -> CanonicalResult:
     test = _test(view, first, second, shared.nuisance, reporter, "permutations")
     within = None
     if shared.groups is not None:
-        inside = [whole_side(view, layer, shared, shared.within) for layer in layers]
-        within = _test(view, *inside, shared.within, reporter, "permutations within groups")
+        x, y = (whole_side(view, layer, shared, shared.within) for layer in layers)
+        within = _test(view, x, y, shared.within, reporter, "permutations within groups")
     count = components_to_fit(view, shared, first, second)
     validation, without = _validate(
         view, shared, fold_source(view, layers, shared, shared.nuisance), count, reporter
@@ -125,7 +126,13 @@ def canonical_pairs(view: AnalysisView, reporter: Reporter) -> CanonicalResult:
     ridge = view.settings.ridge
     if ridge == "auto":
         ridge = FALLBACK_RIDGE if validation is None else validation.choice.multiples
-    model = RegularisedCCA(n_components=count, ridge=ridge).fit(first.values, second.values)
+    model = RegularisedCCA(
+        n_components=count,
+        ridge=ridge,
+        nuisance_rank=Nuisance.of(shared.nuisance, shared.n).rank,
+        x_block_sizes=first.sizes,
+        y_block_sizes=second.sizes,
+    ).fit(first.values, second.values)
     return CanonicalResult(shared, (first, second), model, test, within, validation, without)
 
 
@@ -176,6 +183,8 @@ def _test(
             nuisance=nuisance,
             random_state=view.settings.seed,
             progress=progress,
+            x_block_sizes=first.sizes,
+            y_block_sizes=second.sizes,
         )
 
 
@@ -196,38 +205,44 @@ def components_table(result: CanonicalResult) -> pd.DataFrame:
             "component": np.arange(1, count + 1),
             "correlation": model.correlations_,
             "correlation_cv": np.full(count, np.nan) if validation is None else validation.correlations,
-            "p": [result.test.p, *[np.nan] * (count - 1)],
+            "p": _first(result.test, count),
         }
     )
     if result.test_within is not None:
-        table["p_within"] = [result.test_within.p, *[np.nan] * (count - 1)]
+        table["p_within"] = _first(result.test_within, count)
     return table
+
+
+def _first(test: PairTest, count: int) -> list[float]:
+    """Return the p of the first pair; further pairs are not tested."""
+    return [np.nan if test.p is None else test.p, *[np.nan] * (count - 1)]
 
 
 def explained_table(result: CanonicalResult) -> pd.DataFrame:
     """Return explained.tsv: share of each block's adjusted variance that each own variate explains."""
     rows = []
-    for side, own in zip(
-        result.sides, (result.model.x_correlations_, result.model.y_correlations_), strict=True
+    for side, shares in zip(
+        result.sides, (result.model.x_explained_, result.model.y_explained_), strict=True
     ):
-        owners = np.array(side.feature_block)
-        for block in side.blocks:
-            shares = (own[owners == block] ** 2).mean(axis=0)
-            rows += [(k + 1, block, "component", share) for k, share in enumerate(shares)]
+        rows += [
+            (k + 1, block, "component", share)
+            for k, component in enumerate(shares)
+            for block, share in zip(side.blocks, component, strict=True)
+        ]
     table = pd.DataFrame(rows, columns=["component", "block", "part", "share"])
     return table.sort_values("component", kind="stable", ignore_index=True)
 
 
 def describe(result: CanonicalResult) -> list[str]:
     """Return the first canonical pair in a few plain sentences."""
-    if result.test.p is None or np.isnan(result.test.p):
+    if result.test.p is None:
         lines = [f"first canonical pair: p withheld, {result.test.withheld}"]
     else:
         lines = [
             f"first canonical pair: p = {result.test.p:.3g} for shared variation, {result.test.permutations} "
             f"permutations on {result.shared.n} samples"
         ]
-    if result.test_within is not None and result.test_within.withheld is None:
+    if result.test_within is not None and result.test_within.p is not None:
         lines.append(f"within groups: p = {result.test_within.p:.3g}")
     if result.validation is not None:
         lines.append(
@@ -255,7 +270,7 @@ def _write_model(path: object, result: CanonicalResult) -> None:
         for letter, side in letters:
             part = file.create_group(letter)
             part.attrs["layer"] = side.layer
-            part.create_dataset("block", data=list(side.feature_block), dtype=text)
+            part.create_dataset("block", data=side.feature_block, dtype=text)
             part.create_dataset("feature", data=list(side.features), dtype=text)
             part.create_dataset("scores", data=getattr(model, f"{letter}_scores_"))
             part.create_dataset("weights", data=getattr(model, f"{letter}_weights_"))

@@ -96,7 +96,7 @@ def implied_correlations(edges: pd.DataFrame, canonical: pd.DataFrame) -> pd.Dat
     as 0); ``component`` is the pair that carries most of it.  The group is left in, as in ``r_total``.
     """
     rho = canonical.attrs["correlations_cv"]
-    own = canonical[[column for column in canonical if column.endswith("_own")]]
+    own = canonical[[column for column in canonical.columns if str(column).endswith("_own")]]
     ends = [
         own.reindex(pd.MultiIndex.from_frame(edges[[f"{end}_block", end]])).to_numpy()
         for end in ("source", "target")

@@ -5,7 +5,7 @@ from __future__ import annotations
 import pandas as pd
 
 from workbench import __version__
-from workbench.network import build_network, graphml_bytes, network_summary, with_communities, with_degrees
+from workbench.network import build_network, graphml_bytes, with_communities, with_degrees
 from workbench.store import Change, json_bytes, table_bytes
 from workbench.workflow.analysis_view import AnalysisView, blocks_of, view_analysis
 from workbench.workflow.canonical import analysis_inputs, has_canonical_pairs
@@ -58,7 +58,7 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
         canonical = canonical_correlations(state, name)
         edges[["model_r", "component"]] = implied_correlations(edges, canonical)
         places = pd.MultiIndex.from_frame(features[["block", "feature"]])
-        features[list(canonical)] = canonical.reindex(places).to_numpy()
+        features[list(canonical.columns)] = canonical.reindex(places).to_numpy()
     graph = build_network(edges, features, attributes=graph_attributes(view), seed=view.settings.seed)
     edges, features = _ordered(with_communities(edges, graph)), with_degrees(features, graph)
     pairs = group_pairs_table(view, screens)
@@ -67,7 +67,7 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
         change.write_bytes(f"{folder}/{file}", table_bytes(table))
     change.write_bytes(f"{folder}/network.graphml", graphml_bytes(graph))
     change.write_bytes(f"{folder}/record.json", json_bytes(analysis_record(state, view, screens, len(pairs))))
-    for line in (*screen_sentences(view, screens, len(pairs)), *network_summary(graph)):
+    for line in screen_sentences(view, screens, len(pairs)):
         reporter.say(f"  {line}")
 
 

@@ -18,26 +18,35 @@ FloatArray = NDArray[np.float64]
 
 @dataclass(frozen=True, eq=False)
 class Side:
-    """One side over the shared samples: adjusted, scaled values and where each column comes from."""
+    """One side over the shared samples: adjusted values at unit variance and where each column comes from.
+
+    The columns of one block stand together, ``sizes`` tells how many each block has.
+    """
 
     layer: str
     blocks: tuple[str, ...]
+    sizes: tuple[int, ...]
     values: FloatArray
-    feature_block: tuple[str, ...]
     features: tuple[str, ...]
+
+    @property
+    def feature_block(self) -> list[str]:
+        """Return the block of every column."""
+        return [block for block, size in zip(self.blocks, self.sizes, strict=True) for _ in range(size)]
 
 
 def whole_side(view: AnalysisView, layer: str, shared: Shared, nuisance: FloatArray) -> Side:
-    """Return a side over all shared samples, the nuisance removed, each block at total variance one."""
+    """Return a side over all shared samples, the nuisance removed."""
     names = view.sides[layer]
-    parts, owners, features = [], [], []
+    removed = Nuisance.of(nuisance, shared.n)
+    parts, features = [], []
     for name in names:
         block = view.blocks[name]
-        scaled = standardise(block.values[block.rows(shared.samples)], Nuisance.of(nuisance, shared.n))
-        parts.append(scaled.values / np.sqrt(scaled.kept.size))
-        owners += [name] * scaled.kept.size
+        scaled = standardise(block.values[block.rows(shared.samples)], removed)
+        parts.append(scaled.values)
         features += [block.features[k] for k in scaled.kept]
-    return Side(layer, names, np.hstack(parts), tuple(owners), tuple(features))
+    sizes = tuple(part.shape[1] for part in parts)
+    return Side(layer, names, sizes, np.hstack(parts), tuple(features))
 
 
 def fold_source(
@@ -83,7 +92,8 @@ def _fold_block(
     taught = block.measured_rows(list(samples[train]))
     smallest = None
     if shared.groups is not None:
-        smallest = int(np.bincount(shared.groups.codes[train]).min())
+        counts = np.bincount(shared.groups.codes[train])
+        smallest = int(counts[counts > 0].min())
     recipe = recipe_for(block.layer, block.settings.values)
     fitted = recipe.fit(taught, smallest_group=smallest, seed=SEED)
     unseen = fitted.transform(block.measured_rows(list(samples[test])))
