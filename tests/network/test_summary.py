@@ -30,9 +30,9 @@ def test_star_in_words() -> None:
         "4 edges join 6 features.",
         "rna - lcms: 4 edges, 3 with r above zero and 1 below.",
         "2 connected components; the largest holds 4 of 6 features.",
-        "Community 1: 4 features (3 transcripts, 1 metabolites), 3 edges inside.",
-        "Community 2: 2 features (1 metabolites, 1 transcripts), 1 edge inside.",
-        "Hub label of m0 (metabolites): 3 edges, to 3 transcripts.",
+        "Community 1: 4 features (transcripts 3, metabolites 1), 3 edges inside.",
+        "Community 2: 2 features (metabolites 1, transcripts 1), 1 edge inside.",
+        "Hub label of m0 (metabolites): 3 edges, 3 to transcripts.",
     )
 
 
@@ -44,7 +44,7 @@ def test_hub_tells_its_own_layer_from_others() -> None:
     graph = build_network(pd.concat([edges, inside]), features_table(2, 2), attributes=ATTRIBUTES, seed=1)
     hub = summarise(graph).hubs[0]
     assert (hub.key, hub.degree, hub.own_layer, hub.other_layers) == (("rna", "g0"), 3, 1, {"metabolites": 2})
-    assert network_summary(graph)[-1].endswith("3 edges, to 2 metabolites, 1 inside transcripts.")
+    assert network_summary(graph)[-1].endswith("3 edges, 2 to metabolites, 1 to its own layer transcripts.")
 
 
 def test_long_lists_are_cut_and_the_rest_counted() -> None:

@@ -191,7 +191,7 @@ def _verb(number: int, verb: str) -> str:
 
 def _listed(counts: dict[str, int]) -> str:
     """Return counts by name as words."""
-    return ", ".join(f"{number} {shown_name(name)}" for name, number in counts.items())
+    return ", ".join(f"{shown_name(name)} {number}" for name, number in counts.items())
 
 
 def _pair_sentence(pair: PairCount) -> str:
@@ -221,8 +221,8 @@ def _community_sentences(communities: Iterable[Community], shown: int) -> list[s
 
 def _hub_sentence(hub: Hub) -> str:
     """Return one sentence about a feature with many edges."""
-    own = f", {hub.own_layer} inside {shown_name(hub.layer)}" if hub.own_layer else ""
+    reached = hub.other_layers | ({f"its own layer {hub.layer}": hub.own_layer} if hub.own_layer else {})
     return (
         f"Hub {shown_name(hub.label)} ({shown_name(hub.layer)}): {_count(hub.degree, 'edge')}, "
-        f"to {_listed(hub.other_layers) or 'no other layer'}{own}."
+        f"{', '.join(f'{number} to {shown_name(layer)}' for layer, number in reached.items())}."
     )
