@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+from workbench.engine.cca import RegularisedCCA
 from workbench.engine.effects import GroupEffects, group_effects
 from workbench.engine.evidence import EdgeEvidence, edge_evidence
+from workbench.engine.folds import balanced_folds
 from workbench.engine.intervals import fisher_interval
 from workbench.engine.lookup import PairFigures
 from workbench.engine.multiple import benjamini_hochberg
@@ -15,12 +17,17 @@ from workbench.engine.nuisance import (
     fit_residuals,
     standardise,
 )
+from workbench.engine.permutation import PairTest, canonical_pair_test
+from workbench.engine.ridge_choice import RidgeChoice, choose_ridge
 from workbench.engine.screen import BlockPair, BlockScreen, PairScreen, screen_blocks, screen_pairs
+from workbench.engine.splits import Split, SplitSource, array_source
 from workbench.engine.tiles import Limits
+from workbench.engine.validation import CrossValidation, cross_validated_correlations
 
 __all__ = [
     "BlockPair",
     "BlockScreen",
+    "CrossValidation",
     "EdgeEvidence",
     "FittedResiduals",
     "GroupEffects",
@@ -28,9 +35,19 @@ __all__ = [
     "Nuisance",
     "PairFigures",
     "PairScreen",
+    "PairTest",
+    "RegularisedCCA",
+    "RidgeChoice",
+    "Split",
+    "SplitSource",
     "Standardised",
     "aliased",
+    "array_source",
+    "balanced_folds",
     "benjamini_hochberg",
+    "canonical_pair_test",
+    "choose_ridge",
+    "cross_validated_correlations",
     "edge_evidence",
     "fisher_interval",
     "fit_residuals",
