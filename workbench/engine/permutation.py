@@ -133,7 +133,8 @@ def canonical_pair_test(
         raise NumericsError(f"permutations is {permutations}; allowed: at least 1")
     pair = _PermutedPair.of(x, y, nuisance, (x_block_sizes, y_block_sizes))
     observed = pair.statistics_of(np.arange(pair.size)[None])
-    available = count_arrangements(pair.size, max(permutations + 1, FEWEST_ARRANGEMENTS))
+    # The limit lies above what would make it exhaustive, so that "at least so many" is never taken for "all".
+    available = count_arrangements(pair.size, max(permutations + 2, FEWEST_ARRANGEMENTS))
     if available < FEWEST_ARRANGEMENTS:
         return _withheld(pair, observed, available)
     plan = _Plan.of(available, permutations, random_state, early_stop)
