@@ -91,6 +91,8 @@ def test_a_floor_between_neighbours_that_single_precision_cannot_tell_apart() ->
     steps = 0.5 + 1e-9 * np.array([100.5, 250.5])
     for floor, expected in zip(steps, (299, 149), strict=True):
         assert screen_pairs(x, y, minimum_r=floor).n_edges == expected
+        crowd = screen_pairs(x, y, minimum_r=floor, maximum_edges=3, limits=Limits(candidates=5, expected=1))
+        assert crowd.passed == expected
 
 
 def test_a_threshold_between_neighbours_that_single_precision_cannot_tell_apart() -> None:
@@ -108,6 +110,8 @@ def test_a_threshold_between_neighbours_that_single_precision_cannot_tell_apart(
     for tiles in (Limits(), Limits(expected=1, inner=7)):
         screen = screen_pairs(x, y, limits=tiles)
         assert {(0, 0, int(j)) for j in screen.j} == truth
+    crowd = screen_pairs(x, y, maximum_edges=3, limits=Limits(candidates=5, expected=1))
+    assert crowd.passed == m // 2
 
 
 def test_sides_scale_shift_sign_and_order_of_features_change_nothing_but_the_sign() -> None:
