@@ -110,7 +110,7 @@ def test_an_unknown_template_is_named_with_the_nearest(command, tmp_path):
 
 
 def test_several_samples_of_a_subject_stop_rather_than_being_pooled(command, made):
-    edit(made, "[samples]", '[samples]\nsubject = "group"')
+    edit(made, "[samples]\nid", '[samples]\nsubject = "group"\nid')
     edit(made, 'group = "group"', "")
     code, _, err = command("run", "--project", made)
     assert (code, "not supported yet" in err) == (2, True)

@@ -119,7 +119,7 @@ def test_help_and_version_load_no_scientific_library(flag):
 
 
 def test_every_command_has_help_with_an_example(command):
-    listed = command("--help")[1].split("Commands:")[1]
+    listed = command("--help")[1].split("Commands:")[1].split("\n\n")[0]
     names = [line.split()[0] for line in listed.splitlines() if line.startswith("  ") and line[2] != " "]
     assert {"init", "add-samples", "add-block", "remove-block", "check", "prepare", "run", "status"} <= set(
         names

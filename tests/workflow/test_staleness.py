@@ -19,8 +19,8 @@ def edit(folder, old, new):
 CHANGES = [
     ('title = "A small study"', 'title = "Another title"  # and a comment', []),
     ('blocks = "all"', 'blocks = "all"\nseed = 7', ["integrate:main", "network:main"]),
-    ("permutations = 200", "permutations = 200\n[analyses.main.network]\nfdr = 0.1", ["network:main"]),
-    ("[samples]", '[samples]\nexclude = { S03 = "haemolysed" }', STAGES[2:]),
+    ("repeats = 2", "repeats = 2\n[analyses.main.network]\nfdr = 0.1", ["network:main"]),
+    ("[samples]\nid", '[samples]\nexclude = { S03 = "haemolysed" }\nid', STAGES[2:]),
     ('adjust = ["run_day"]', "adjust = []", ["integrate:main", "network:main"]),
 ]
 

@@ -216,7 +216,7 @@ def _view_block(state: ProjectState, name: str) -> BlockView:
 def _group_indicators(groups: Groups | None, n: int) -> NDArray[np.float64]:
     if groups is None:
         return np.zeros((n, 0))
-    return (groups.codes[:, None] == np.arange(1, len(groups.levels))).astype(np.float64)
+    return np.asarray(groups.codes[:, None] == np.arange(1, len(groups.levels)), dtype=np.float64)
 
 
 def _require_levels(shared: Shared, where: str, factors: list[str]) -> None:

@@ -125,7 +125,8 @@ def canonical_pairs(view: AnalysisView, reporter: Reporter) -> CanonicalResult:
     )
     ridge = view.settings.ridge
     if ridge == "auto":
-        ridge = FALLBACK_RIDGE if validation is None else validation.choice.multiples
+        chosen = None if validation is None else validation.choice
+        ridge = FALLBACK_RIDGE if chosen is None else chosen.multiples
     model = RegularisedCCA(
         n_components=count,
         ridge=ridge,
@@ -164,7 +165,7 @@ def components_to_fit(view: AnalysisView, shared: Shared, first: Side, second: S
         return int(view.settings.components)
     room = shared.n - shared.nuisance.shape[1] - 1
     smallest = min(room, first.values.shape[1], second.values.shape[1])
-    return max(1, min(MOST_COMPONENTS, smallest, room // 10))
+    return int(max(1, min(MOST_COMPONENTS, smallest, room // 10)))
 
 
 def _test(

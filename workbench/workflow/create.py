@@ -53,7 +53,7 @@ def create_project(folder: Path, *, template: str = DEFAULT_TEMPLATE, title: str
         raise InputError(f"no template '{template}'; known: {', '.join(known)}{hint}")
     _require_empty(folder)
     text = tomlkit.parse((known[template].folder / "project.toml").read_text("utf-8"))
-    text["study"]["title"] = title or folder.resolve().name  # type: ignore[index]
+    text["study"]["title"] = title or folder.resolve().name
     made = not folder.exists()
     try:
         folder.mkdir(parents=True, exist_ok=True)

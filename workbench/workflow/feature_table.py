@@ -8,7 +8,7 @@ import h5py
 import numpy as np
 import pandas as pd
 
-from workbench.engine import Nuisance, group_effects
+from workbench.engine import group_effects
 from workbench.store import check_file
 from workbench.workflow.analysis_view import AnalysisView, BlockView
 from workbench.workflow.state import ProjectState
@@ -38,13 +38,10 @@ def block_features(view: AnalysisView, block: BlockView) -> pd.DataFrame:
     table = pd.DataFrame(
         {"feature": block.features, "block": block.name, "layer": block.layer, "label": labels}
     )
-    effect = p = q = np.full(len(block.features), np.nan)
-    level: object = ""
     if shared.groups is not None:
-        found = group_effects(values, shared.groups.codes, Nuisance.of(shared.nuisance, shared.n))
-        effect, p, q = found.effect, found.p, found.q
+        found = group_effects(values, shared.groups.codes, shared.nuisance)
         level = [shared.groups.levels[code] if code >= 0 else "" for code in found.level]
-    table["group_effect"], table["group_level"], table["group_p"], table["group_q"] = effect, level, p, q
+        table = table.assign(group_effect=found.effect, group_level=level, group_p=found.p, group_q=found.q)
     table["mean"] = values.mean(axis=0)
     table["missing_share"] = [missing[origin] for origin in block.annotations.get("origin", block.features)]
     table["imputed_share"] = block.imputed[rows].mean(axis=0)

@@ -23,6 +23,7 @@ EDGE_COLUMNS = (
     *("r_total", "q_total", "r_within", "q_within", "basis", "model_r", "component"),
     *("r_spearman", "r_without_one", "r_observed", "imputed_share", "community"),
 )
+FEATURE_COLUMNS = ("feature", "block", "layer", "label", "degree", "community")
 FILES = ("edges.tsv", "group_pairs.tsv", "features.tsv", "network.graphml", "record.json")
 
 
@@ -60,7 +61,8 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
         places = pd.MultiIndex.from_frame(features[["block", "feature"]])
         features[list(canonical.columns)] = canonical.reindex(places).to_numpy()
     graph = build_network(edges, features, attributes=graph_attributes(view), seed=view.settings.seed)
-    edges, features = _ordered(with_communities(edges, graph)), with_degrees(features, graph)
+    edges = in_order(with_communities(edges, graph), EDGE_COLUMNS)
+    features = in_order(with_degrees(features, graph), FEATURE_COLUMNS)
     pairs = group_pairs_table(view, screens)
     folder = f"results/{name}"
     for file, table in (("edges.tsv", edges), ("group_pairs.tsv", pairs), ("features.tsv", features)):
@@ -84,6 +86,7 @@ def graph_attributes(view: AnalysisView) -> dict[str, object]:
     }
 
 
-def _ordered(edges: pd.DataFrame) -> pd.DataFrame:
-    """Return the edges with their columns in the documented order, those of this version alone."""
-    return edges[[column for column in EDGE_COLUMNS if column in edges]]
+def in_order(table: pd.DataFrame, first: tuple[str, ...]) -> pd.DataFrame:
+    """Return a table with the documented columns first, as far as it has them, and the others behind."""
+    leading = [column for column in first if column in table]
+    return table[[*leading, *(column for column in table.columns if column not in leading)]]

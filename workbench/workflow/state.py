@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -61,5 +62,6 @@ def load_state(paths: ProjectPaths) -> ProjectState:
     return ProjectState(paths, settings, sheet, read_manifest(paths.root))
 
 
-def _known(names: dict[str, object]) -> str:
-    return "known: " + ", ".join(f"'{name}'" for name in names) if names else "it declares none yet"
+def _known(names: Iterable[str]) -> str:
+    listed = ", ".join(f"'{name}'" for name in names)
+    return f"known: {listed}" if listed else "it declares none yet"
