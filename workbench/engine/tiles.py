@@ -26,6 +26,7 @@ from workbench.engine.unit_rows import FloatArray, IndexArray, UnitRows
 SINGLE_PRECISION_SAMPLES = 4096
 #: Steps of the histogram of |r| between 0 and 1.
 STEPS = 65_536
+_CHUNK = 250_000
 
 
 @dataclass(frozen=True)
@@ -181,34 +182,21 @@ class Caught:
 
 def scan(pair: PairTiles, bands: Sequence[Band]) -> list[Caught]:
     """Collect and count the pairs of two blocks in bands of |r|, in one pass over the tiles."""
-    above = [0] * len(bands)
-    caught: list[list[tuple[IndexArray, NDArray[Any]]] | None] = [[] for _ in bands]
+    nets = [_Net(pair, band) for band in bands]
     for a, b, tile in pair.tiles():
-        flat = tile.reshape(-1)
-        for k, band in enumerate(bands):
-            beyond = None
-            if band.high < np.inf:
-                beyond = tile >= _as_entry(band.high, tile)
-                above[k] += int(np.count_nonzero(beyond))
-            parts = caught[k]
-            if band.low >= band.high or parts is None:
-                continue
-            inside = tile >= _as_entry(band.low, tile)
-            if beyond is not None:
-                inside ^= beyond
-            place = np.flatnonzero(inside)
-            parts.append((pair.keys(a, b, place, tile.shape[1]), flat[place]))
-            if sum(part[1].size for part in parts) > band.most:
-                caught[k] = None
-    return [_joined(parts, count) for parts, count in zip(caught, above, strict=True)]
+        for net in nets:
+            net.draw(a, b, tile)
+    return [net.caught() for net in nets]
 
 
 def tail_histogram(pair: PairTiles) -> IndexArray:
     """Numbers of testable pairs with a tile entry ``|r| >= k / STEPS``, for k from 0 to ``STEPS + 1``."""
     counts = np.zeros(STEPS + 2, dtype=np.int64)
     for _, _, tile in pair.tiles():
-        step = (tile.reshape(-1) * tile.dtype.type(STEPS)).astype(np.intp)
-        counts += np.bincount(np.minimum(step, STEPS + 1), minlength=STEPS + 2)
+        flat, kind = tile.reshape(-1), tile.dtype.type
+        for start in range(0, flat.size, _CHUNK):
+            sizes = np.minimum(flat[start : start + _CHUNK], kind(1.0 + 1.0 / STEPS))
+            counts += np.bincount((sizes * kind(STEPS)).astype(np.intp), minlength=STEPS + 2)
     counts[0] -= pair.pairs - pair.tests
     tails: IndexArray = np.cumsum(counts[::-1])[::-1]
     return tails
@@ -231,20 +219,45 @@ def refine(pair: PairTiles, keys: IndexArray) -> FloatArray:
     return r
 
 
-def _as_entry(bound: float, tile: NDArray[Any]) -> Any:
-    return tile.dtype.type(bound)
+class _Net:
+    """What one band holds so far."""
 
+    def __init__(self, pair: PairTiles, band: Band) -> None:
+        self._pair = pair
+        self._band = band
+        self._above = self._inside = 0
+        self._keys: list[IndexArray] = []
+        self._sizes: list[NDArray[Any]] = []
 
-def _joined(parts: list[tuple[IndexArray, NDArray[Any]]] | None, above: int) -> Caught:
-    if not parts:
-        return Caught(np.empty(0, dtype=np.int64), np.empty(0), above, overflow=parts is None)
-    return Caught(np.concatenate([k for k, _ in parts]), np.concatenate([s for _, s in parts]), above, False)
+    def draw(self, a: int, b: int, tile: NDArray[Any]) -> None:
+        """Add a tile that begins at the outer feature ``a`` and the inner feature ``b``."""
+        band = self._band
+        beyond = None
+        if band.high < np.inf:
+            beyond = tile >= tile.dtype.type(band.high)
+            self._above += int(np.count_nonzero(beyond))
+        if band.low >= band.high or self._inside > band.most:
+            return
+        inside = tile >= tile.dtype.type(band.low)
+        if beyond is not None:
+            inside ^= beyond
+        place = np.flatnonzero(inside)
+        self._inside += place.size
+        self._keys.append(self._pair.keys(a, b, place, tile.shape[1]))
+        self._sizes.append(tile.reshape(-1)[place])
+
+    def caught(self) -> Caught:
+        """Everything drawn, or the counts alone when it was too much."""
+        if not self._keys or self._inside > self._band.most:
+            too_many = self._inside > self._band.most
+            return Caught(np.empty(0, dtype=np.int64), np.empty(0), self._above, too_many)
+        return Caught(np.concatenate(self._keys), np.concatenate(self._sizes), self._above, False)
 
 
 def _batch_numbers(pair: PairTiles) -> int:
     """Numbers gathered at once on each side: few for rows that are held, many for rows made anew."""
     held = pair.x.held is not None and pair.y.held is not None
-    return 250_000 if held else pair.limits.held_bytes // 32
+    return _CHUNK if held else pair.limits.held_bytes // 32
 
 
 def _reading_order(pair: PairTiles, i: IndexArray, j: IndexArray) -> IndexArray | None:
