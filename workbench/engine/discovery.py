@@ -9,13 +9,14 @@ recomputed in double precision, and on them the procedure runs as it is written.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
-from workbench.engine.crowded import Tails, settle_crowd, upper_bounds
+from workbench.engine.crowded import settle_crowd
 from workbench.engine.found import Discovery, Found, Request, focus, found_from
 from workbench.engine.multiple import Family
+from workbench.engine.tail_counts import Tails, upper_bounds
 from workbench.engine.tails import critical_r
 from workbench.engine.tiles import Band, Caught, PairTiles, scan
 from workbench.engine.unit_rows import FloatArray, IndexArray
@@ -116,7 +117,7 @@ def _second_pass(pairs: Sequence[PairTiles], request: Request) -> Discovery:
         pair = focus(pairs, k)
         (caught,) = scan(pair, [Band(tail.weakest_r(need) - pair.margin)])
         found.append(found_from(pair, caught.keys))
-    return _judged(pairs, found, pooled, single, request.fdr)
+    return replace(_judged(pairs, found, pooled, single, request.fdr), tails=tails)
 
 
 def _judged(
@@ -126,6 +127,6 @@ def _judged(
     tests = [pair.tests for pair in pairs]
     own = [Family.of(f.log_p, level, m, fdr) for f, level, m in zip(found, single, tests, strict=True)]
     if len(pairs) == 1:
-        return Discovery(found, own[0], own, None)
+        return Discovery(found, own[0], own)
     everything = np.concatenate([f.log_p for f in found])
-    return Discovery(found, Family.of(everything, pooled, sum(tests), fdr), own, None)
+    return Discovery(found, Family.of(everything, pooled, sum(tests), fdr), own)

@@ -8,10 +8,10 @@ from dataclasses import dataclass
 import numpy as np
 
 from workbench.engine.multiple import Family
+from workbench.engine.tail_counts import Tails
 from workbench.engine.tails import log_p_value
 from workbench.engine.tiles import PairTiles, refine
 from workbench.engine.unit_rows import FloatArray, IndexArray
-
 
 #: Correlations that agree to so many decimals count as equally strong.
 TIE_DECIMALS = 12
@@ -61,12 +61,15 @@ class Discovery:
         The pairs of each pair of blocks.
     passed : int or None
         Number of edges where ``found`` holds only the strongest; None where it holds all.
+    tails : list of Tails or None
+        Histograms of |r| of each pair of blocks, where they were needed.
     """
 
     found: list[Found]
     pooled: Family
     single: list[Family]
-    passed: int | None
+    passed: int | None = None
+    tails: list[Tails] | None = None
 
 
 def focus(pairs: Sequence[PairTiles], k: int) -> PairTiles:
@@ -80,8 +83,7 @@ def focus(pairs: Sequence[PairTiles], k: int) -> PairTiles:
 
 def strengths(r: FloatArray) -> FloatArray:
     """|r| to ``TIE_DECIMALS``: what orders edges, so that rounding decides nothing between equal ones."""
-    rounded: FloatArray = np.round(np.abs(r), TIE_DECIMALS)
-    return rounded
+    return np.asarray(np.round(np.abs(r), TIE_DECIMALS), dtype=np.float64)
 
 
 def found_from(pair: PairTiles, keys: IndexArray) -> Found:

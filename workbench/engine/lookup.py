@@ -9,9 +9,9 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import ArrayLike
 
-from workbench.engine.crowded import Counts, Tails
 from workbench.engine.found import Discovery, focus
 from workbench.engine.multiple import Family
+from workbench.engine.tail_counts import Counts, Tails
 from workbench.engine.tails import log_p_value, p_from_log
 from workbench.engine.tiles import PairTiles, refine
 from workbench.engine.unit_rows import FloatArray, IndexArray
@@ -47,6 +47,7 @@ class Lookup:
         self._pairs = pairs
         self._pooled = discovery.pooled
         self._single = discovery.single
+        self._known_tails = discovery.tails
         self._fdr = fdr
 
     def figures(self, pair_index: ArrayLike, i: ArrayLike, j: ArrayLike) -> PairFigures:
@@ -91,6 +92,8 @@ class Lookup:
 
     @cached_property
     def _tails(self) -> list[Tails]:
+        if self._known_tails is not None:
+            return self._known_tails
         return [Tails.of(focus(self._pairs, k)) for k in range(len(self._pairs))]
 
 
