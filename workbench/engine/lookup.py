@@ -39,8 +39,8 @@ class Lookup:
     """Figures of any pairs of a finished screen.
 
     The q of pairs that passed are exact. Those of weaker pairs come from a histogram of |r| in steps of
-    1 / 65,536, made in one more pass over all pairs when first needed: an upper bound of q, mostly within a
-    few per cent of it, and always above the rate at which the screen selected.
+    1 / 65,536, made in one more pass over all pairs when first needed: an upper bound of q, mostly within
+    one per cent of it, and always above the rate at which the screen selected.
     """
 
     def __init__(self, pairs: Sequence[PairTiles], discovery: Discovery, fdr: float) -> None:
