@@ -10,13 +10,8 @@ import h5py
 
 from workbench.errors import DamageError, InputError, WorkbenchError
 from workbench.store.files import refused, write_whole
-from workbench.store.hdf5_look import (
-    RefusedError,
-    TooLargeError,
-    check_stored_whole,
-    has_signature,
-    look_inside,
-)
+from workbench.store.hdf5_look import TooLargeError, check_stored_whole, has_signature, look_inside
+from workbench.store.hdf5_texts import RefusedError
 from workbench.store.stored_form import restored, stored_form
 
 if TYPE_CHECKING:
@@ -92,8 +87,8 @@ def read_block(path: Path, budget: int = BUDGET) -> ad.AnnData:
         if not has_signature(path):
             raise DamageError(f"{path}: is not an HDF5 file, or its start is damaged; {_WAY_OUT}")
         with h5py.File(path, "r", locking=False) as file:
-            look_inside(file, budget)
-            check_stored_whole(file, path, budget)
+            addresses = look_inside(file, budget)
+            check_stored_whole(file, path, addresses, budget)
             _check_layout(file)
             return restored(_read_elem(file))
     except FileNotFoundError as error:

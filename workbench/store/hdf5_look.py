@@ -6,8 +6,8 @@ expensive or dangerous to load. `look_inside` visits the names, types and shapes
 
 from __future__ import annotations
 
-import os
-from collections.abc import Iterator
+import mmap
+from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
@@ -15,17 +15,13 @@ from typing import Any
 import h5py
 import numpy as np
 
+from workbench.store.hdf5_texts import POINTER, RefusedError, attribute_pointers, texts_of
+
 SIGNATURE = b"\x89HDF\r\n\x1a\n"
 """First eight bytes of an HDF5 file (HDF5 File Format Specification, section II.A)."""
 
 MOST_OBJECTS = 100_000
 DEEPEST = 16
-_REFERENCE = 16
-"""Bytes by which a stored text is pointed at: 4 of length, 8 of address, 4 of index."""
-
-
-class RefusedError(Exception):
-    """A file holds something that is not read; the message says what and where."""
 
 
 class TooLargeError(RefusedError):
@@ -37,7 +33,7 @@ class _Sum:
     """What a look has met so far."""
 
     budget: int
-    objects: set[Any] = field(default_factory=set)
+    objects: set[int] = field(default_factory=set)
     size: int = 0
 
     def add(self, where: str, size: int) -> None:
@@ -61,8 +57,8 @@ def has_signature(path: Path) -> bool:
         return stream.read(len(SIGNATURE)) == SIGNATURE
 
 
-def look_inside(file: h5py.File, budget: int) -> None:
-    """Return when everything in a file is plain and fits; nothing of the content is read.
+def look_inside(file: h5py.File, budget: int) -> list[int]:
+    """Return the addresses of all groups and arrays when all is plain and fits; no content is read.
 
     Parameters
     ----------
@@ -77,7 +73,9 @@ def look_inside(file: h5py.File, budget: int) -> None:
         On links to elsewhere, virtual or external arrays, loops, objects and references, too many or too
         deep groups; `TooLargeError` when the shapes do not fit into the budget.
     """
-    _look_at_group(file, "", _Sum(budget), 0)
+    met = _Sum(budget)
+    _look_at_group(file, "", met, 0)
+    return sorted(met.objects)
 
 
 def _look_at_group(group: h5py.Group, where: str, met: _Sum, depth: int) -> None:
@@ -139,46 +137,55 @@ def arrays(group: h5py.Group) -> Iterator[h5py.Dataset]:
             yield member
 
 
-def check_stored_whole(file: h5py.File, path: Path, budget: int) -> None:
+def check_stored_whole(file: h5py.File, path: Path, addresses: Iterable[int], budget: int) -> None:
     """Return when every array of a file stands there in one piece, as this program writes it.
 
     An array that is not chunked cannot unpack to more than the file holds. Texts are pointed at, and many
-    pointers may share one long text: their lengths are added up from the pointers.
+    pointers may share one long text: every pointer is followed, and the lengths are added up.
+
+    Parameters
+    ----------
+    file : h5py.File
+        Open for reading; no attribute of it has been read.
+    path : Path
+        Of the same file.
+    addresses : iterable of int
+        Of its groups and arrays, as `look_inside` returns them.
+    budget : int
+        Bytes that all texts together may take.
 
     Raises
     ------
     RefusedError
-        When an array is chunked, packed or not all there; `TooLargeError` when all texts are too long.
+        When an array is chunked, packed or not all there, or a pointer leads nowhere; `TooLargeError` when
+        the texts together are too long.
     """
-    texts = 0
+    with path.open("rb") as stream, mmap.mmap(stream.fileno(), 0, access=mmap.ACCESS_READ) as data:
+        texts, length = texts_of(data), 0
+        for pointers in _pointers(file, data, addresses):
+            length += texts.length_behind(pointers)
+            if length > budget:
+                limit = _readable(budget)
+                raise TooLargeError(
+                    f"its texts need {_readable(length)} of memory; at most {limit} are taken"
+                )
+
+
+def _pointers(file: h5py.File, data: mmap.mmap, addresses: Iterable[int]) -> Iterator[bytes]:
+    """Yield the pointers to texts of every attribute and every array."""
+    for address in addresses:
+        yield from attribute_pointers(data, address)
     for array in arrays(file):
         if array.shape is None or array.size == 0:
             continue
         is_text = array.dtype.kind == "O"
-        expected = array.size * (_REFERENCE if is_text else array.dtype.itemsize)
-        if (
-            array.chunks is not None
-            or array.id.get_storage_size() != expected
-            or array.id.get_offset() is None
-        ):
+        size, start = array.size * (POINTER if is_text else array.dtype.itemsize), array.id.get_offset()
+        if array.chunks is not None or array.id.get_storage_size() != size or start is None:
             raise RefusedError(f"{array.name!r} is not stored in one piece")
+        if start + size > len(data):
+            raise RefusedError(f"{array.name!r} leads out of the file")
         if is_text:
-            texts += _text_length(path, array)
-        if texts > budget:
-            raise TooLargeError(
-                f"its texts need {_readable(texts)} of memory; at most {_readable(budget)} are taken"
-            )
-
-
-def _text_length(path: Path, array: h5py.Dataset) -> int:
-    """Return the bytes that the texts of an array have together, from the lengths beside their addresses."""
-    with path.open("rb") as stream:
-        stream.seek(array.id.get_offset(), os.SEEK_SET)
-        pointers = np.frombuffer(stream.read(array.size * _REFERENCE), dtype=np.uint8)
-    if pointers.size != array.size * _REFERENCE:
-        raise RefusedError(f"{array.name!r} is cut off")
-    lengths = pointers.reshape(-1, _REFERENCE)[:, :4].copy().view("<u4")
-    return int(lengths.sum(dtype=np.uint64))
+            yield data[start : start + size]
 
 
 def _readable(size: float) -> str:
