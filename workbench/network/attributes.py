@@ -34,6 +34,8 @@ class Attribute:
 GRAPH_ATTRIBUTES: dict[str, Attribute] = {
     "title": Attribute("string", "title of the study"),
     "analysis": Attribute("string", "name of the analysis in project.toml"),
+    "correlation": Attribute("string", "kind of correlation that pairs were tested by"),
+    "select": Attribute("string", "whether pairs were selected within groups or with the group left in"),
     "fdr": Attribute("double", "false-discovery rate at or under which a pair is an edge"),
     "version": Attribute("string", "version of the program that wrote this file"),
     "cautions": Attribute("string", "what this network may not be used for"),
