@@ -21,6 +21,7 @@ from workbench.engine.permutation import PairTest, canonical_pair_test
 from workbench.engine.ridge_choice import RidgeChoice, choose_ridge
 from workbench.engine.screen import BlockPair, BlockScreen, PairScreen, screen_blocks, screen_pairs
 from workbench.engine.splits import Split, SplitSource, array_source
+from workbench.engine.tails import critical_r
 from workbench.engine.tiles import Limits
 from workbench.engine.validation import CrossValidation, cross_validated_correlations
 
@@ -47,6 +48,7 @@ __all__ = [
     "benjamini_hochberg",
     "canonical_pair_test",
     "choose_ridge",
+    "critical_r",
     "cross_validated_correlations",
     "edge_evidence",
     "fisher_interval",

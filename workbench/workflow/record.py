@@ -7,6 +7,7 @@ from importlib.metadata import version
 from typing import Any
 
 from workbench import __version__
+from workbench.engine import Nuisance, critical_r
 from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.canonical import analysis_inputs
 from workbench.workflow.edges import GROUP_BOUND, Screens
@@ -62,7 +63,8 @@ def screen_sentences(view: AnalysisView, screens: Screens, group_pairs: int) -> 
     )
     fdr = view.settings.network.fdr
     lines = [
-        f"{tested:,} cross-layer pairs tested ({how}), {found:,} edges at a false-discovery rate of {fdr:g}"
+        *reach_sentences(view, screens),
+        f"{tested:,} cross-layer pairs tested ({how}), {found:,} edges at a false-discovery rate of {fdr:g}",
     ]
     untestable = int(sum(screens.chosen.untestable))
     if untestable:
@@ -78,6 +80,23 @@ def screen_sentences(view: AnalysisView, screens: Screens, group_pairs: int) -> 
         lines.append(cut)
     if len(view.layers) > 2:
         lines.append(_not_paired(view))
+    return lines
+
+
+def reach_sentences(view: AnalysisView, screens: Screens) -> list[str]:
+    """Return what this design could find at all: the |r| that a single true pair needs to become an edge."""
+    lines = []
+    within = screens.chosen is screens.within
+    for (first, second), one, tested in zip(view.pairs, screens.shared, screens.chosen.tested, strict=True):
+        if tested:
+            removed = Nuisance.of(one.within if within else one.nuisance, one.n)
+            least = float(
+                critical_r(view.settings.network.fdr / sum(screens.chosen.tested), one.n - removed.rank - 1)
+            )
+            lines.append(
+                f"{first} x {second}: on {one.n} samples a pair that is alone becomes an edge at |r| of {least:.2f} "
+                "or more; the more pairs there are, the lower"
+            )
     return lines
 
 
