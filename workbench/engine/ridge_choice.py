@@ -125,24 +125,40 @@ def choose_ridge(
             f"none of the {n} samples can be scored out of fold: each has a nuisance level that its training "
             "part lacks; remove fewer nuisance columns, or give the ridge as a number"
         )
-    return _one_standard_error(*pooled_score(u, v), n_scored, n_components, folds)
+    return _as_choice(*pooled_score(u, v), n_scored, n_components, folds)
 
 
-def _one_standard_error(
+def pick_ridge(scores: FloatArray, errors: FloatArray) -> tuple[int, int]:
+    """Place of most ridge among the scores within one standard error of the best one.
+
+    Parameters
+    ----------
+    scores, errors : ndarray of shape (n_path, n_path)
+        Score and its standard error at each pair of ridges of a path that is even in log ridge, so that the
+        sum of two positions orders the sum of logs.
+
+    Examples
+    --------
+    >>> pick_ridge(np.array([[0.9, 0.85], [0.6, 0.7]]), np.full((2, 2), 0.1))
+    (0, 1)
+    """
+    best = int(scores.argmax())
+    near = np.argwhere(scores >= scores.flat[best] - errors.flat[best])
+    i, j = max(near.tolist(), key=lambda place: (sum(place), scores[tuple(place)]))
+    return i, j
+
+
+def _as_choice(
     scores: FloatArray, errors: FloatArray, n_scored: int, n_components: int, folds: int
 ) -> RidgeChoice:
-    best_i, best_j = np.unravel_index(int(scores.argmax()), scores.shape)
-    best, error = float(scores[best_i, best_j]), float(errors[best_i, best_j])
-    # The path is even in log ridge, so that the sum of positions orders the sum of logs.
-    near = [(int(i) + int(j), float(scores[i, j]), i, j) for i, j in np.argwhere(scores >= best - error)]
-    _, score, i, j = max(near, key=lambda entry: entry[:2])
+    chosen, best = pick_ridge(scores, errors), np.unravel_index(int(scores.argmax()), scores.shape)
     return RidgeChoice(
-        multiples=(float(RIDGE_PATH[i]), float(RIDGE_PATH[j])),
-        score=score,
-        standard_error=float(errors[i, j]),
-        best_multiples=(float(RIDGE_PATH[best_i]), float(RIDGE_PATH[best_j])),
-        best_score=best,
-        best_error=error,
+        multiples=(float(RIDGE_PATH[chosen[0]]), float(RIDGE_PATH[chosen[1]])),
+        score=float(scores[chosen]),
+        standard_error=float(errors[chosen]),
+        best_multiples=(float(RIDGE_PATH[best[0]]), float(RIDGE_PATH[best[1]])),
+        best_score=float(scores[best]),
+        best_error=float(errors[best]),
         path=RIDGE_PATH.copy(),
         scores=scores,
         n_scored=n_scored,
