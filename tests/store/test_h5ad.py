@@ -333,7 +333,10 @@ HOSTILE = {
         lambda f: change_x(f, data=np.ones((3, 2), dtype=int)),
         "'X' is not a table of numbers",
     ),
-    "other shape": (lambda f: change_x(f, data=np.ones((4, 2))), "layer 'imputed' is not a table of the shape"),
+    "other shape": (
+        lambda f: change_x(f, data=np.ones((4, 2))),
+        "layer 'imputed' is not a table of the shape",
+    ),
     "column": (
         lambda f: (f["obs"].__delitem__("age"), f["obs"].create_dataset("age", data=np.ones(4))),
         "column 'age' of 'obs' does not fit 'X' of 3",

@@ -57,7 +57,7 @@ class Texts:
             When a pointer leads to no text, or to a shorter one than it says.
         """
         table = np.frombuffer(pointers, dtype=[("length", "<u4"), ("address", "<u8"), ("number", "<u4")])
-        table = table[table["length"] > 0]
+        table = table[(table["length"] > 0) | (table["address"] > 0)]
         if (table["address"] >= 1 << 48).any() or (table["number"] >= 1 << 16).any():
             raise RefusedError("a pointer leads out of the file")
         keys = _key(table["address"], table["number"])
