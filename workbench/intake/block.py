@@ -7,16 +7,20 @@ import json
 from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
+from typing import TYPE_CHECKING
 
-import anndata
 import numpy as np
 import pandas as pd
 
+from workbench.errors import InputError
 from workbench.settings.schema import BlockSettings
 
 from .annotations import annotated_features, read_annotations
 from .faults import counted, listed
 from .table import DeliveredTable, delivered_table
+
+if TYPE_CHECKING:
+    import anndata
 
 _CHUNK = 2**20
 
@@ -60,6 +64,8 @@ def build_block(settings: BlockSettings, name: str, root: str | Path, sheet: pd.
     InputError
         When the table or its annotations cannot be used as they are.
     """
+    import anndata  # takes a second to load: not for commands that read no block
+
     path = Path(root) / settings.file
     table = delivered_table(
         path,
@@ -72,6 +78,7 @@ def build_block(settings: BlockSettings, name: str, root: str | Path, sheet: pd.
     features = tuple(table.values.columns)
     var, lines = _annotations(settings, Path(root), features)
     if settings.values == "mixed":
+        _check_free(Path(root), settings, var)
         var["kind"] = ["text" if feature in table.levels else "number" for feature in features]
         var["levels"] = [_levels(table, feature) for feature in features]
     adata = anndata.AnnData(
@@ -115,6 +122,15 @@ def _annotations(
             "left out"
         )
     return var, lines
+
+
+def _check_free(root: Path, settings: BlockSettings, var: pd.DataFrame) -> None:
+    taken = [column for column in ("kind", "levels") if column in var.columns]
+    if taken and settings.annotations is not None:
+        raise InputError(
+            f"{root / settings.annotations}: column {listed(taken)} has a name that a mixed block uses itself; "
+            "rename it in the annotations"
+        )
 
 
 def _levels(table: DeliveredTable, feature: str) -> str:

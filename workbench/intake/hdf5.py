@@ -32,7 +32,17 @@ def read_h5ad(path: Path, *, array: str | None = None) -> RawTable:
     try:
         with h5py.File(path, "r") as file:
             return _Reader(path, file).table(array or "X")
-    except (OSError, KeyError, ValueError, TypeError, IndexError, RuntimeError, MemoryError):
+    except (
+        OSError,
+        KeyError,
+        ValueError,
+        TypeError,
+        IndexError,
+        RuntimeError,
+        MemoryError,
+        AttributeError,
+        ArithmeticError,
+    ):
         raise InputError(
             f"{path}: the HDF5 file is damaged or cut short, or no .h5ad file; fetch it again"
         ) from None

@@ -10,7 +10,7 @@ import numpy as np
 
 from .faults import LISTED_FAULTS, Faults, counted, shown
 from .part import Part, WrongCells
-from .raw import ArrayBody, Cell, TextBody
+from .raw import ArrayBody, Cell, TextBody, cell_text
 from .tokens import MISSING, number_of
 
 _NAN = float("nan")
@@ -127,5 +127,5 @@ def _refuse(part: Part, where: np.ndarray, what: str, way_out: str) -> None:
     faults = Faults(part.raw.path, total=total)
     for k, m in np.argwhere(where)[:LISTED_FAULTS]:
         i, j = part.rows[k], part.columns[m]
-        faults.kept.append(f"{part.named_place(i, j)}: {shown(part.cell(i, j))}")
+        faults.kept.append(f"{part.named_place(i, j)}: {shown(cell_text(part.cell(i, j)))}")
     raise faults.error(f"{counted(total, 'cell is', 'cells are')} {what}", way_out)

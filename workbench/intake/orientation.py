@@ -131,7 +131,7 @@ def _check_short_header(raw: RawTable, samples_in: str, known: set[str]) -> None
     """Refuse a header one field short whose first name is no sample: it may be the name of the id column."""
     if raw.corner_lacks and samples_in == "columns" and raw.columns[0] not in known:
         raise InputError(
-            f"{raw.path}: {raw.place(HEADER, -1)}: the header is one field short, and its first name "
+            f"{raw.path}: {raw.place(HEADER, 0)}: the header is one field short, and its first name "
             f"{shown(raw.columns[0])} is no sample of the sheet, so the values may stand one column off; "
             "give every "
             "column its name, that of the ids included"

@@ -29,14 +29,42 @@ def read_parquet(path: Path) -> RawTable:
         When pyarrow is not installed, the file is damaged or too large, or the ids are neither text nor whole
         numbers.
     """
-    table = _arrow_table(path)
+    try:
+        from pyarrow import parquet  # type: ignore[import-untyped]
+    except ImportError:
+        raise InputError(
+            f"{path}: reading Parquet needs pyarrow, which is not installed; install the 'parquet' extra, or "
+            "deliver TSV"
+        ) from None
+    try:
+        with parquet.ParquetFile(path) as file:
+            _check_size(path, file.metadata)
+            return _raw_table(path, file.read())
+    except (OSError, ValueError, TypeError, LookupError, MemoryError, RuntimeError, ArithmeticError):
+        raise InputError(f"{path}: the Parquet file is damaged or cut short; fetch it again") from None
+
+
+def _check_size(path: Path, metadata: Any) -> None:
+    cells = metadata.num_rows * metadata.num_columns
+    if cells * 8 > LARGEST_TABLE:
+        raise InputError(
+            f"{path}: declares {cells:,} cells, more than {LARGEST_TABLE // 2**30} GB; deliver a smaller table"
+        )
+
+
+def _raw_table(path: Path, table: Any) -> RawTable:
+    repeated = sorted({name for name in table.column_names if table.column_names.count(name) > 1})
+    if repeated:
+        raise InputError(
+            f"{path}: column names that occur twice: {listed(repeated)}; give every column its own name"
+        )
     name = _id_column(table)
-    rows = _ids(path, name, table.column(name))
+    rows = _ids(path, name, table.column(name)) if name in table.column_names else ()
     names = [column for column in table.column_names if column != name]
     if not names or not rows:
         raise InputError(
-            f"{path}: the table has {counted(len(rows), 'row')} and {counted(len(names), 'column')} beside "
-            "the ids; it is empty"
+            f"{path}: the table is empty: {counted(len(rows), 'row')}, and {counted(len(names), 'column')} "
+            "beside the ids"
         )
     return RawTable(
         path=path,
@@ -49,39 +77,14 @@ def read_parquet(path: Path) -> RawTable:
     )
 
 
-def _arrow_table(path: Path) -> Any:
-    try:
-        from pyarrow import parquet  # type: ignore[import-untyped]
-    except ImportError:
-        raise InputError(
-            f"{path}: reading Parquet needs pyarrow, which is not installed; install the 'parquet' extra, or "
-            "deliver TSV"
-        ) from None
-    try:
-        with parquet.ParquetFile(path) as file:
-            cells = file.metadata.num_rows * file.metadata.num_columns
-            if cells * 8 > LARGEST_TABLE:
-                raise InputError(
-                    f"{path}: declares {cells:,} cells, more than {LARGEST_TABLE // 2**30} GB; deliver a "
-                    "smaller table"
-                )
-            table = file.read()
-    except InputError:
-        raise
-    except Exception:
-        raise InputError(f"{path}: the Parquet file is damaged or cut short; fetch it again") from None
-    if len(set(table.column_names)) < len(table.column_names):
-        twice = sorted({n for n in table.column_names if table.column_names.count(n) > 1})
-        raise InputError(
-            f"{path}: column names that occur twice: {listed(twice)}; give every column its own name"
-        )
-    return table
-
-
 def _id_column(table: Any) -> str:
-    stored = json.loads((table.schema.metadata or {}).get(b"pandas", b"{}")).get("index_columns", [])
-    named = [name for name in stored if isinstance(name, str) and name in table.column_names]
-    return named[0] if len(named) == 1 else table.column_names[0]
+    """Return the one column that pandas stored as the index, else the first one."""
+    try:
+        stored = json.loads((table.schema.metadata or {})[b"pandas"])["index_columns"]
+        named = [name for name in stored if name in table.column_names]
+    except (KeyError, TypeError, ValueError):
+        named = []
+    return str(named[0] if len(named) == 1 else next(iter(table.column_names), ""))
 
 
 def _ids(path: Path, name: str, column: Any) -> tuple[str, ...]:

@@ -102,6 +102,7 @@ class TextBody:
     separator: str
     first_line: int
     width: int
+    short_header: bool = False
 
     @property
     def shape(self) -> tuple[int, int]:
@@ -118,8 +119,9 @@ class TextBody:
         return line.isascii() and line.find("_", line.find(self.separator)) < 0
 
     def place(self, i: int, j: int) -> str:
-        """Return the line and column, both counted from 1."""
-        return f"line {self.first_line + i}, column {j + 2}"
+        """Return the line and column, both counted from 1; a short header has no field over the ids."""
+        column = j + 1 if i == HEADER and self.short_header else j + 2
+        return f"line {self.first_line + i}, column {column}"
 
 
 @dataclass(frozen=True)

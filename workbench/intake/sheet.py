@@ -10,7 +10,7 @@ import pandas as pd
 
 from workbench.errors import InputError
 
-from .faults import counted, listed, shown
+from .faults import Faults, counted, listed, shown
 from .ids import check_present, check_unique, id_notes, refuse_broken
 from .kinds import column_kind, present
 from .raw import HEADER, Cell, RawTable, WrongCell, cell_text
@@ -155,24 +155,22 @@ def _frame(
     for j, (name, cells) in enumerate(zip(names, columns, strict=True)):
         if j == position:
             continue
-        _refuse_broken(raw, cells, j, name)
+        _refuse_broken(raw, cells, j, name, ids)
         written = pd.Series([None if c is None else cell_text(c) for c in cells], index=index, dtype=object)
         data[name] = present(written).astype(object).reindex(index)
         notes += _column_notes(raw.path.name, name, written, data[name])
     return pd.DataFrame(data, index=index)
 
 
-def _refuse_broken(raw: RawTable, cells: Sequence[Cell], j: int, name: str) -> None:
+def _refuse_broken(raw: RawTable, cells: Sequence[Cell], j: int, name: str, ids: Sequence[str]) -> None:
+    faults = Faults(raw.path)
+    ways: dict[str, None] = {}
     for i, cell in enumerate(cells):
-        if isinstance(cell, WrongCell) and cell.kind in (
-            "the error value",
-            "a formula without a stored value",
-        ):
-            raise InputError(
-                f"{raw.path}: {raw.place(i, j - 1)} (column {shown(name)}, sample {shown(raw.rows[i])}) "
-                f"holds {cell}; "
-                "mend it in the spreadsheet and save again"
-            )
+        if isinstance(cell, WrongCell) and cell.kind in ("error", "formula"):
+            faults.add(f"{raw.place(i, j - 1)} (column {shown(name)}, sample {shown(ids[i])}) holds {cell}")
+            ways[cell.way_out] = None
+    if faults.total:
+        raise faults.error(f"{counted(faults.total, 'cell has', 'cells have')} no value", "; ".join(ways))
 
 
 def _column_notes(file: str, name: str, written: pd.Series, read: pd.Series) -> list[str]:

@@ -18,13 +18,13 @@ _GROUP = word_set(
     "cultivar variety sex"
 )
 _BATCH = word_set(
-    "batch run day date plate lane site kit operator center centre instrument machine flowcell "
+    "batch block run day date plate lane site kit operator center centre instrument machine flowcell "
     "chip slide array order extraction library technician lot sequencing prep column "
     "centrifugation shipment laboratory lab hospital"
 )
 _SUBJECT = word_set(
     "donor patient subject animal plant individual participant mouse rat person proband case_id "
-    "pair block family litter clone host tree twin volunteer"
+    "pair family litter clone host tree twin volunteer"
 )
 _NUISANCE = word_set("age bmi weight rin ph purity dilution")
 

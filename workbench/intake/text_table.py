@@ -60,7 +60,7 @@ def read_text_table(path: Path) -> RawTable:
         corner="" if lacks else layout.header[0],
         columns=tuple(layout.header if lacks else layout.header[1:]),
         rows=tuple(ids),
-        body=TextBody(lines, layout.separator, layout.header_line + 1, width),
+        body=TextBody(lines, layout.separator, layout.header_line + 1, width, lacks),
         corner_lacks=lacks,
         notes=tuple(notes),
     )

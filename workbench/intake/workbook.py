@@ -54,7 +54,7 @@ def _check_package(path: Path) -> None:
     try:
         with zipfile.ZipFile(path) as package:
             members = {info.filename: info.file_size for info in package.infolist()}
-    except (zipfile.BadZipFile, OSError):
+    except (zipfile.BadZipFile, OSError, ValueError, NotImplementedError, RuntimeError):
         raise InputError(
             f"{path}: the file is damaged or cut short (not a whole zip package); fetch it again"
         ) from None
@@ -135,7 +135,7 @@ def _typed(cell: Any) -> Cell:
     if isinstance(value, float):
         return value
     if isinstance(value, datetime.datetime | datetime.date | datetime.time | datetime.timedelta):
-        return WrongCell("date", str(value))
+        return WrongCell("date", str(value).removesuffix(" 00:00:00"))
     return str(value)
 
 
