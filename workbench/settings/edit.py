@@ -167,7 +167,8 @@ def remove_block(text: str, name: str) -> str:
     )
 
 
-def _changed(text: str, changes: Changes) -> str:
+def _changed(text: str, wanted: Changes) -> str:
+    changes = {place: list(value) if isinstance(value, tuple) else value for place, value in wanted.items()}
     expected = copy.deepcopy(parse_toml(text, _FILE))
     for (table, key), value in changes.items():
         here = expected

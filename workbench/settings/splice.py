@@ -125,7 +125,8 @@ def without_tables(text: str, table: Path) -> str:
         lonely = headers[0] == 0 or found[headers[0] - 1].kind == "empty"
         if lonely and end < len(found) and found[end].kind == "empty":
             end += 1
-        del found[headers[0] : end]
+        start = headers[0] - 1 if lonely and headers[0] > 0 and end == len(found) else headers[0]
+        del found[start:end]
 
 
 def toml_item(value: Any) -> Any:
