@@ -21,7 +21,7 @@ ORDER = [
         "network",
         "pathways",
     ),
-    *("figures", "report", "workflow", "project", "cli", "guide", "__main__"),
+    *("look", "figures", "report", "workflow", "project", "cli", "guide", "__main__"),
 ]
 TOP = {"README.md", "DEVELOPERS.md", "pyproject.toml", "workbench", "tests", "templates", "example_project"}
 

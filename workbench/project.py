@@ -185,6 +185,15 @@ class Project:
         """Run the recipes of the named blocks, or of all."""
         return run_stages(self.paths, "prepare", lambda state: plan.block_stages(state, blocks), reporter)
 
+    def look(self, *blocks: str, reporter: Reporter = SILENT) -> Outcome:
+        """Look at the named blocks, or at all of them and between them."""
+        return run_stages(self.paths, "look", lambda state: plan.look_stages(state, blocks), reporter)
+
+    def reading(self, block: str | None = None) -> tuple[str, ...]:
+        """Return what the look at a block says in words; without a block, how far the blocks agree."""
+        relative = "results/look/reading.txt" if block is None else f"results/look/{block}/reading.txt"
+        return tuple(check_file(self.paths.root, relative).read_text("utf-8").splitlines())
+
     def integrate(self, *analyses: str, reporter: Reporter = SILENT) -> Outcome:
         """Run the engine for the named analyses, or for all."""
         return run_stages(
@@ -197,12 +206,12 @@ class Project:
 
     def run(self, *analyses: str, reporter: Reporter = SILENT) -> Outcome:
         """Run every stage that is out of date, in order."""
-        return run_stages(self.paths, "run", lambda state: plan.network_stages(state, analyses), reporter)
+        return run_stages(self.paths, "run", lambda state: plan.all_stages(state, analyses), reporter)
 
     def plan(self, *analyses: str) -> list[Standing]:
         """Return the standing of the stages that ``run`` would look at."""
         state = self.state()
-        return standings(state, plan.network_stages(state, analyses))
+        return standings(state, plan.all_stages(state, analyses))
 
     def status(self) -> Status:
         """Return what is done, what is stale, and the next command."""

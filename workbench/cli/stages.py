@@ -1,4 +1,4 @@
-"""Commands that run stages: ``prepare``, ``integrate``, ``network`` and ``run``."""
+"""Commands that run stages: ``prepare``, ``look``, ``integrate``, ``network`` and ``run``."""
 
 from __future__ import annotations
 
@@ -17,6 +17,7 @@ if TYPE_CHECKING:
 def register(app: typer.Typer) -> None:
     """Add the commands to the program."""
     app.command("prepare", epilog="Example: workbench prepare rna")(prepare)
+    app.command("look", epilog="Example: workbench look rna")(look)
     app.command("integrate", epilog="Example: workbench integrate main")(integrate)
     app.command("network", epilog="Example: workbench network main")(network)
     app.command("run", epilog="Example: workbench run --dry-run")(run)
@@ -32,6 +33,24 @@ def prepare(
     """Run each block's recipe: from measured values to values fit for linear methods."""
     opened = open_project(project)
     _close(opened, opened.prepare(*(blocks or ()), reporter=terminal_reporter(quiet)), quiet)
+
+
+def look(
+    blocks: Annotated[
+        list[str] | None, typer.Argument(metavar="[NAME]...", help="Blocks; default: all.")
+    ] = None,
+    project: ProjectOption = None,
+    quiet: QuietOption = False,
+) -> None:
+    """Look at each block on its own: principal components, figures, tables, a reading in words."""
+    opened = open_project(project)
+    outcome = opened.look(*(blocks or ()), reporter=terminal_reporter(quiet))
+    known = list(opened.state().settings.blocks)
+    for name in blocks or known:
+        answer([*opened.reading(name), f"figures: {opened.paths.look(name)}", ""])
+    if not blocks and len(known) > 1:
+        answer(opened.reading())
+    _close(opened, outcome, quiet)
 
 
 def integrate(

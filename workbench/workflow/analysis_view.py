@@ -13,38 +13,11 @@ from numpy.typing import NDArray
 from workbench.engine import aliased
 from workbench.errors import InputError
 from workbench.intake import Groups, design_columns, group_codes, missing_samples
-from workbench.prepare import MeasuredTable
-from workbench.settings import AnalysisSettings, BlockSettings, Settings
-from workbench.store import check_file, read_block
+from workbench.settings import AnalysisSettings, Settings
+from workbench.workflow.loaded_block import LoadedBlock, load_block
 from workbench.workflow.state import ProjectState
-from workbench.workflow.tables import measured_table
 
 LEAST_FREEDOM = 3
-
-
-@dataclass(frozen=True)
-class BlockView:
-    """One block of an analysis: prepared values (samples x features), what was imputed, what was measured."""
-
-    name: str
-    layer: str
-    settings: BlockSettings
-    values: NDArray[np.float64]
-    imputed: NDArray[np.bool_]
-    samples: tuple[str, ...]
-    features: tuple[str, ...]
-    annotations: pd.DataFrame
-    measured: MeasuredTable
-
-    def rows(self, samples: Sequence[str]) -> NDArray[np.intp]:
-        """Return the prepared rows of some samples."""
-        place = {sample: row for row, sample in enumerate(self.samples)}
-        return np.array([place[sample] for sample in samples], dtype=np.intp)
-
-    def measured_rows(self, samples: Sequence[str]) -> MeasuredTable:
-        """Return the measured table of some samples, in their order."""
-        place = {sample: row for row, sample in enumerate(self.measured.samples)}
-        return self.measured.take([place[sample] for sample in samples])
 
 
 @dataclass(frozen=True)
@@ -80,7 +53,7 @@ class AnalysisView:
     settings: AnalysisSettings
     study: Settings
     sheet: pd.DataFrame
-    blocks: dict[str, BlockView]
+    blocks: dict[str, LoadedBlock]
 
     @property
     def layers(self) -> tuple[str, ...]:
@@ -191,26 +164,8 @@ def view_analysis(state: ProjectState, name: str) -> AnalysisView:
             "subject are not supported yet, and pooling them would make chance look like evidence; take one sample "
             "per subject (samples.exclude names the others with a reason) and remove samples.subject"
         )
-    blocks = {block: _view_block(state, block) for block in blocks_of(state.settings, name)}
+    blocks = {block: load_block(state, block) for block in blocks_of(state.settings, name)}
     return AnalysisView(name, state.settings.analyses[name], state.settings, state.require_sheet(), blocks)
-
-
-def _view_block(state: ProjectState, name: str) -> BlockView:
-    relative = f"prepared/{name}.h5ad"
-    check_file(state.root, relative)
-    adata = read_block(state.root / relative)
-    settings = state.settings.blocks[name]
-    return BlockView(
-        name=name,
-        layer=settings.layer,
-        settings=settings,
-        values=np.asarray(adata.X, dtype=np.float64),
-        imputed=np.asarray(adata.layers["imputed"], dtype=bool),
-        samples=tuple(map(str, adata.obs_names)),
-        features=tuple(map(str, adata.var_names)),
-        annotations=adata.var,
-        measured=measured_table(state, name),
-    )
 
 
 def _group_indicators(groups: Groups | None, n: int) -> NDArray[np.float64]:

@@ -10,7 +10,8 @@ import pandas as pd
 
 from workbench.engine import group_effects
 from workbench.store import check_file
-from workbench.workflow.analysis_view import AnalysisView, BlockView
+from workbench.workflow.analysis_view import AnalysisView
+from workbench.workflow.loaded_block import LoadedBlock
 from workbench.workflow.state import ProjectState
 
 LABEL_COLUMNS = ("label", "symbol", "gene_symbol", "gene_name", "name", "compound", "metabolite")
@@ -26,7 +27,7 @@ def features_table(view: AnalysisView) -> pd.DataFrame:
     return joined[[*ordered, *dict.fromkeys(identifiers)]]
 
 
-def block_features(view: AnalysisView, block: BlockView) -> pd.DataFrame:
+def block_features(view: AnalysisView, block: LoadedBlock) -> pd.DataFrame:
     """Return the rows of one block: names, group effect with p and q, mean, gaps, identifier columns."""
     shared = view.shared([block.name])
     rows = block.rows(shared.samples)
@@ -51,7 +52,7 @@ def block_features(view: AnalysisView, block: BlockView) -> pd.DataFrame:
     return table
 
 
-def _labels(block: BlockView, identifiers: list[str]) -> list[str]:
+def _labels(block: LoadedBlock, identifiers: list[str]) -> list[str]:
     by_lower = {column.lower(): column for column in identifiers}
     for wanted in LABEL_COLUMNS:
         if wanted in by_lower:

@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from workbench.errors import InputError
 from workbench.workflow.analysis_view import blocks_of
 from workbench.workflow.canonical import has_canonical_pairs, integrating_stage
+from workbench.workflow.looking import between_stage, looking_stage
 from workbench.workflow.networking import networking_stage
 from workbench.workflow.preparing import preparing_stage
 from workbench.workflow.reading import reading_stage
@@ -20,7 +21,7 @@ def all_stages(state: ProjectState, analyses: Sequence[str] = ()) -> list[Stage]
         blocks = _blocks_of_all(state, analyses)
     else:
         analyses, blocks = list(state.settings.analyses), list(state.settings.blocks)
-    return [*block_stages(state, blocks), *_of_analyses(state, analyses, "integrate", "network")]
+    return [*look_stages(state, blocks), *_of_analyses(state, analyses, "integrate", "network")]
 
 
 def block_stages(state: ProjectState, names: Sequence[str] = ()) -> list[Stage]:
@@ -38,6 +39,14 @@ def block_stages(state: ProjectState, names: Sequence[str] = ()) -> list[Stage]:
     return [*map(reading_stage, wanted), *map(preparing_stage, wanted)]
 
 
+def look_stages(state: ProjectState, names: Sequence[str] = ()) -> list[Stage]:
+    """Return the stages up to the first look at the named blocks, or at all of them and between them."""
+    stages = block_stages(state, names)
+    wanted = [stage.subject for stage in stages if stage.kind == "prepare"]
+    between = [between_stage(wanted)] if len(wanted) > 1 and len(wanted) == len(state.settings.blocks) else []
+    return [*stages, *map(looking_stage, wanted), *between]
+
+
 def integrate_stages(state: ProjectState, analyses: Sequence[str] = ()) -> list[Stage]:
     """Return the stages up to the canonical pairs of the named analyses, or of all."""
     chosen = list(analyses) or list(state.settings.analyses)
@@ -46,7 +55,9 @@ def integrate_stages(state: ProjectState, analyses: Sequence[str] = ()) -> list[
 
 def network_stages(state: ProjectState, analyses: Sequence[str] = ()) -> list[Stage]:
     """Return the stages up to the network of the named analyses, or of all."""
-    return all_stages(state, list(analyses) or list(state.settings.analyses))
+    chosen = list(analyses) or list(state.settings.analyses)
+    stages = _of_analyses(state, chosen, "integrate", "network")
+    return [*block_stages(state, _blocks_of_all(state, chosen)), *stages]
 
 
 def _blocks_of_all(state: ProjectState, analyses: Sequence[str]) -> list[str]:

@@ -10,7 +10,8 @@ from numpy.typing import NDArray
 
 from workbench.engine import Nuisance, Split, SplitSource, fit_residuals, standardise
 from workbench.prepare import recipe_for
-from workbench.workflow.analysis_view import AnalysisView, BlockView, Shared
+from workbench.workflow.analysis_view import AnalysisView, Shared
+from workbench.workflow.loaded_block import LoadedBlock
 from workbench.workflow.preparing import SEED
 
 FloatArray = NDArray[np.float64]
@@ -86,7 +87,7 @@ def _fold_side(
 
 
 def _fold_block(
-    block: BlockView, shared: Shared, train: NDArray[np.intp], test: NDArray[np.intp]
+    block: LoadedBlock, shared: Shared, train: NDArray[np.intp], test: NDArray[np.intp]
 ) -> tuple[FloatArray, FloatArray]:
     samples = np.array(shared.samples, dtype=object)
     taught = block.measured_rows(list(samples[train]))

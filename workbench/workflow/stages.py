@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Iterator
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass, field, replace
 from typing import Any
@@ -17,8 +17,9 @@ from workbench.workflow.state import ProjectState, load_state
 class Stage:
     """One step for one block or analysis.
 
-    ``inputs`` gives a hash for each thing that matters to the answer; ``work`` writes the files named
-    in ``outputs`` through the change that it is handed.  ``needs`` names the stages that come before.
+    ``inputs`` gives a hash for each thing that matters to the answer; ``work`` writes the files named in
+    ``outputs`` through the change that it is handed, and returns the names of those that it wrote besides
+    (figures that these data allow).  ``needs`` names the stages that come before.
     """
 
     kind: str
@@ -26,7 +27,7 @@ class Stage:
     needs: tuple[str, ...]
     outputs: tuple[str, ...]
     inputs: Callable[[ProjectState], dict[str, str]]
-    work: Callable[[ProjectState, Change, Reporter], None]
+    work: Callable[[ProjectState, Change, Reporter], Sequence[str] | None]
 
     @property
     def name(self) -> str:
@@ -55,9 +56,9 @@ def stale_reason(state: ProjectState, stage: Stage) -> str | None:
     record = state.manifest.stages.get(stage.name)
     if record is None:
         return "not done yet"
-    if set(record.outputs) != set(stage.outputs):
+    if not set(stage.outputs) <= set(record.outputs):
         return "it now writes other files"
-    for output in stage.outputs:
+    for output in record.outputs:
         if not (state.root / output).exists():
             return f"{output} is missing"
     inputs = stage.inputs(state)
@@ -108,10 +109,19 @@ def _run_one(state: ProjectState, stage: Stage, outcome: Outcome, reporter: Repo
     reporter.say(f"{stage.kind} {stage.subject} ({reason})")
     with Change(state.root) as change:
         inputs = stage.inputs(state)
-        stage.work(state, change, reporter)
-        change.record_stage(stage.name, StageRecord(inputs=inputs, outputs=stage.outputs))
+        outputs = (*stage.outputs, *(stage.work(state, change, reporter) or ()))
+        _remove_old(state, change, stage.name, outputs)
+        change.record_stage(stage.name, StageRecord(inputs=inputs, outputs=outputs))
         change.commit()
     outcome.done.append(stage.name)
+
+
+def _remove_old(state: ProjectState, change: Change, name: str, outputs: tuple[str, ...]) -> None:
+    """Take away what the stage wrote the last time and does not write any more."""
+    before = state.manifest.stages.get(name)
+    for old in set(before.outputs if before else ()) - set(outputs):
+        if (state.root / old).exists():
+            change.remove(old)
 
 
 @contextmanager

@@ -1,0 +1,167 @@
+"""The first look: each block on its own, and how far the blocks agree; tables, figures and a reading in words."""
+
+from __future__ import annotations
+
+import numpy as np
+import pandas as pd
+
+from workbench.figures import Drawing, draw_between, draw_look, figure_files
+from workbench.intake import design_columns, group_codes, missing_samples
+from workbench.look import (
+    BlockView,
+    Levels,
+    Restriction,
+    between_reading,
+    between_table,
+    block_reading,
+    levels_of,
+    look_at_block,
+    look_between,
+    look_tables,
+)
+from workbench.store import Change, table_bytes
+from workbench.workflow.analysis_view import factors_of
+from workbench.workflow.fingerprints import block_header, columns_fingerprint, fingerprint
+from workbench.workflow.loaded_block import load_block
+from workbench.workflow.reporting import Reporter
+from workbench.workflow.stages import Stage
+from workbench.workflow.state import ProjectState
+
+VERSION = 1
+SEED = 20260101
+BETWEEN = "between-blocks"
+
+
+def looking_stage(name: str) -> Stage:
+    """Return the stage that writes ``results/look/NAME/``."""
+    return Stage(
+        kind="look",
+        subject=name,
+        needs=(f"prepare:{name}",),
+        outputs=(f"results/look/{name}/reading.txt", f"results/look/{name}/captions.tsv"),
+        inputs=lambda state: _inputs(state, [name]),
+        work=lambda state, change, reporter: _look(state, change, reporter, name),
+    )
+
+
+def between_stage(names: list[str]) -> Stage:
+    """Return the stage that writes how far every two blocks agree, into ``results/look/``."""
+    return Stage(
+        kind="look",
+        subject=BETWEEN,
+        needs=tuple(f"prepare:{name}" for name in names),
+        outputs=("results/look/agreement.tsv", "results/look/reading.txt", "results/look/captions.tsv"),
+        inputs=lambda state: _inputs(state, names),
+        work=lambda state, change, reporter: _look_between(state, change, reporter, names),
+    )
+
+
+def _inputs(state: ProjectState, names: list[str]) -> dict[str, str]:
+    sheet, samples = state.require_sheet(), state.settings.samples
+    hashes = {
+        "sample sheet": columns_fingerprint(sheet, list(sheet.columns)),
+        "settings": fingerprint(
+            [VERSION, samples.model_dump(mode="json"), {name: _adjust(state, name) for name in names}]
+        ),
+    }
+    for name in names:
+        header = block_header(state.paths.prepared_block(name))
+        hashes[f"block {name}"] = fingerprint([header["content_sha256"], header["measured_sha256"]])
+    return hashes
+
+
+def _look(state: ProjectState, change: Change, reporter: Reporter, name: str) -> list[str]:
+    look = look_at_block(view_block(state, name), seed=SEED)
+    reading = block_reading(look)
+    folder = f"results/look/{name}"
+    written = []
+    for table, frame in look_tables(look).items():
+        written.append(f"{folder}/{table}.tsv")
+        change.write_bytes(written[-1], table_bytes(frame))
+    with reporter.progress(f"figures of {name}"):
+        written += _write_drawings(change, folder, draw_look(look))
+    change.write_text(f"{folder}/reading.txt", "\n".join(reading) + "\n")
+    reporter.say(f"  {reading[1] if len(reading) > 1 else reading[0]}")
+    return written
+
+
+def _look_between(state: ProjectState, change: Change, reporter: Reporter, names: list[str]) -> list[str]:
+    views = [view_block(state, name) for name in names]
+    with reporter.progress("agreement between blocks") as progress:
+        look = look_between(views, seed=SEED, restriction=_restriction(state, names), progress=progress)
+    reading = between_reading(look)
+    change.write_bytes("results/look/agreement.tsv", table_bytes(between_table(look)))
+    change.write_text("results/look/reading.txt", "\n".join(reading) + "\n")
+    for line in reading:
+        reporter.say(f"  {line}")
+    return _write_drawings(change, "results/look", draw_between(look))
+
+
+def _write_drawings(change: Change, folder: str, drawings: tuple[Drawing, ...]) -> list[str]:
+    """Write the figures and their captions; return the names of the figures' files."""
+    written = []
+    for file, content in figure_files(drawings):
+        written.append(f"{folder}/{file}")
+        change.write_bytes(written[-1], content)
+    captions = pd.DataFrame([(one.name, one.caption) for one in drawings], columns=["figure", "caption"])
+    change.write_bytes(f"{folder}/captions.tsv", table_bytes(captions))
+    return written
+
+
+def view_block(state: ProjectState, name: str) -> BlockView:
+    """Return a block as it is looked at: prepared and measured values, and what the sheet says of its samples."""
+    block = load_block(state, name)
+    frame = state.require_sheet().loc[list(block.samples)]
+    adjust = _adjust(state, name)
+    measured = block.measured_rows(block.samples).values
+    if block.settings.values == "intensities":
+        measured = np.where(measured == 0, np.nan, measured)
+    return BlockView(
+        name=name,
+        layer=block.layer,
+        values=block.settings.values,
+        samples=block.samples,
+        features=block.features,
+        prepared=block.values,
+        columns=frame,
+        imputed=block.imputed,
+        measured=measured,
+        measured_features=block.measured.features,
+        kinds=state.settings.samples.kinds,
+        groups=_groups(state, frame),
+        adjust=adjust,
+        shape_by=next((column for column in adjust if frame[column].nunique() <= len(frame) / 2), ""),
+    )
+
+
+def _adjust(state: ProjectState, name: str) -> tuple[str, ...]:
+    """Return the nuisance columns of the study and of one block, each once."""
+    own = state.settings.blocks[name].adjust
+    return tuple(dict.fromkeys([*state.settings.samples.adjust, *own]))
+
+
+def _groups(state: ProjectState, frame: pd.DataFrame) -> Levels | None:
+    """Return the groups of the samples; one with an empty cell in a factor belongs to none."""
+    factors = factors_of(state.settings)
+    if not factors:
+        return None
+    lacking = {sample for samples in missing_samples(frame, factors).values() for sample in samples}
+    held = frame.loc[[sample for sample in frame.index if sample not in lacking]]
+    if held.empty:
+        return None
+    groups = group_codes(held, factors, state.settings.samples.order)
+    label = {sample: groups.levels[code] for sample, code in zip(held.index, groups.codes, strict=True)}
+    return levels_of(" + ".join(factors), [label.get(sample, "") for sample in frame.index], groups.levels)
+
+
+def _restriction(state: ProjectState, names: list[str]) -> Restriction | None:
+    """Return the nuisance of all blocks, to be removed from both before samples are permuted."""
+    columns = list(dict.fromkeys(column for name in names for column in _adjust(state, name)))
+    sheet = state.require_sheet()
+    lacking = {sample for samples in missing_samples(sheet, columns).values() for sample in samples}
+    held = sheet.loc[[sample for sample in sheet.index if sample not in lacking]]
+    if not columns or held.empty:
+        return None
+    design = design_columns(held, columns, state.settings.samples.kinds)
+    samples = tuple(map(str, held.index))
+    return Restriction(samples, columns=design.matrix, words=f"{', '.join(columns)} removed from both")
