@@ -14,6 +14,9 @@ if TYPE_CHECKING:
     import pandas as pd
 
 _FILE = "project.toml"
+_MISSING = frozenset(["", "NA", "NaN", "nan", "N/A", "#N/A", "null", "NULL", "<NA>", "NaT"])
+"""Cells of a sample sheet that stand for a missing value."""
+
 _SHOWN = 12
 """Allowed names that a fault lists at most; a sheet may have hundreds of samples."""
 
@@ -141,11 +144,10 @@ def level_text(cell: object) -> str | None:
     >>> level_text(2.0), level_text("drought"), level_text(float("nan"))
     ('2', 'drought', None)
     """
-    if cell is None or cell != cell or str(cell) in ("", "<NA>"):
-        return None
-    if isinstance(cell, float) and cell.is_integer():
-        return str(int(cell))
-    return str(cell)
+    if isinstance(cell, float):
+        return None if cell != cell else str(int(cell)) if cell.is_integer() else str(cell)
+    text = str(cell).strip()
+    return None if cell is None or text in _MISSING else text
 
 
 def _excluded_faults(

@@ -1,0 +1,214 @@
+"""The settings are checked against the sample sheet, the files and each other; every fault in one go."""
+
+import pandas as pd
+import pytest
+
+from workbench.settings.cross_check import cross_check, file_fault, level_text
+from workbench.settings.load import parse_settings
+
+SHEET = pd.DataFrame(
+    {
+        "condition": ["dry", "wet", "dry", "wet"],
+        "age": [1.0, 2.0, 3.0, 4.0],
+        "batch": [1, 1, 2, 2],
+        "donor": ["a", "b", "c", "d"],
+    },
+    index=pd.Index(["S1", "S2", "S3", "S4"], name="sample"),
+)
+
+SAMPLES = """
+[samples]
+id = "sample"
+group = "condition"
+subject = "donor"
+adjust = ["age"]
+"""
+
+BLOCKS = """
+[blocks.rna]
+file = "source/rna.tsv"
+layer = "transcripts"
+values = "counts"
+[blocks.pos]
+file = "source/pos.tsv"
+layer = "metabolites"
+values = "log"
+[blocks.neg]
+file = "source/pos.tsv"
+layer = "metabolites"
+values = "log"
+"""
+
+
+@pytest.fixture
+def root(tmp_path):
+    """Return a project's directory with its files."""
+    (tmp_path / "source").mkdir()
+    for name in ("rna.tsv", "pos.tsv", "genes.tsv"):
+        (tmp_path / "source" / name).touch()
+    return tmp_path
+
+
+def faults_of(text, root, sheet=SHEET):
+    return cross_check(parse_settings(text), sheet, root)
+
+
+def test_settings_that_fit_have_no_fault(root):
+    text = SAMPLES + 'kinds = { age = "number", batch = "classes" }\norder = { condition = ["wet", "dry"] }\n'
+    text += (
+        'exclude = { S2 = "lost" }\n'
+        + BLOCKS
+        + 'adjust = ["batch"]\nexclude = { S1 = "x" }\nannotations = "source/genes.tsv"\n'
+    )
+    text += '[analyses.main]\nblocks = "all"\n[analyses.two]\nblocks = ["rna", "neg"]\n'
+    assert faults_of(text, root) == []
+
+
+COLUMNS = "; allowed: 'condition', 'age', 'batch', 'donor';"
+NAMES = "; allowed: 'S1', 'S2', 'S3', 'S4';"
+
+ONE = [
+    (
+        SAMPLES.replace('"condition"', '"Condition"'),
+        f"samples.group: there is no column of samples.tsv 'Condition'{COLUMNS} did you mean 'condition'?",
+    ),
+    (SAMPLES.replace('"condition"', '"sample"'), "samples.group: 'sample' is the column of the sample's name"),
+    (
+        SAMPLES.replace('"donor"', '"doner"'),
+        f"samples.subject: there is no column of samples.tsv 'doner'{COLUMNS} did you mean 'donor'?",
+    ),
+    (SAMPLES.replace('["age"]', '["ages"]'), "samples.adjust: there is no column of samples.tsv 'ages'"),
+    (
+        SAMPLES.replace('["age"]', '["condition"]'),
+        "samples.adjust: 'condition' is the group as well; take it out of one of them",
+    ),
+    (SAMPLES.replace('["age"]', '["donor"]'), "samples.adjust: 'donor' is the subject as well"),
+    (SAMPLES.replace('"donor"', '"condition"'), "samples.subject: 'condition' is the group as well"),
+    (
+        SAMPLES.replace('"sample"', '"tube"'),
+        "samples.id: there is no column of samples.tsv 'tube'; allowed: 'sample', 'condition'",
+    ),
+    (SAMPLES + "kinds = { agee = 'number' }", "samples.kinds.agee: there is no column of samples.tsv 'agee'"),
+    (SAMPLES + "kinds = { batch = 'number' }", "samples.kinds.batch: no adjust names this column; allowed: 'age'"),
+    (SAMPLES + "order = { batch = ['1', '2'] }", "samples.order.batch: is not the group; allowed: 'condition'"),
+    (
+        SAMPLES + "order = { condition = ['wet'] }",
+        "samples.order.condition: lacks 'dry'; name every level of 'condition' once",
+    ),
+    (
+        SAMPLES + "order = { condition = ['wet', 'dry', 'damp'] }",
+        "samples.order.condition: there is no level 'damp'; allowed: 'dry', 'wet'",
+    ),
+    (
+        SAMPLES + "exclude = { S5 = 'x' }",
+        "samples.exclude.S5: there is no sample of samples.tsv 'S5'; allowed: 'S1', 'S2', 'S3', 'S4'",
+    ),
+    (SAMPLES + "exclude = { S1 = 'x', S2 = 'x', S3 = 'x', S4 = 'x' }", "samples.exclude: leaves out every sample"),
+    (
+        BLOCKS + "adjust = ['bath']",
+        f"blocks.neg.adjust: there is no column of samples.tsv 'bath'{COLUMNS} did you mean 'batch'?",
+    ),
+    (
+        BLOCKS + "exclude = { s1 = 'x' }",
+        f"blocks.neg.exclude.s1: there is no sample of samples.tsv 's1'{NAMES} did you mean 'S1'?",
+    ),
+    (
+        BLOCKS + "annotations = 'source/gene.tsv'",
+        "blocks.neg.annotations: 'source/gene.tsv' is not there; put the file back, or name another; did you mean",
+    ),
+    (BLOCKS + "annotations = '../genes.tsv'", "blocks.neg.annotations: '../genes.tsv' leads out of the project"),
+    (
+        BLOCKS + "[analyses.a]\nblocks = ['rna', 'post']",
+        "analyses.a.blocks: there is no block 'post'; allowed: 'rna', 'pos', 'neg'; did you mean 'pos'?",
+    ),
+    (
+        BLOCKS + "[analyses.a]\nblocks = ['rna']",
+        "analyses.a.blocks: names 1 block; allowed: two or more, of two layers",
+    ),
+    (
+        BLOCKS + "[analyses.a]\nblocks = ['pos', 'neg']",
+        "analyses.a.blocks: all these blocks are of the layer 'metabolites'",
+    ),
+]  # fmt: skip
+
+
+@pytest.mark.parametrize(("text", "told"), ONE, ids=range(len(ONE)))
+def test_a_fault_is_one_line_with_key_and_way_out(root, text, told):
+    [fault] = faults_of(text, root)
+    assert fault.startswith(f"project.toml: {told}")
+
+
+def test_a_blocks_nuisance_is_not_the_group_either(root):
+    text = '[samples]\ngroup = ["condition"]\n' + BLOCKS + "adjust = ['condition']"
+    [fault] = faults_of(text, root)
+    assert fault.startswith("project.toml: blocks.neg.adjust: 'condition' is the group as well")
+
+
+def test_all_faults_come_in_one_go(root):
+    (root / "source/pos.tsv").unlink()
+    text = (
+        '[samples]\ngroup = "x"\nadjust = ["y"]\nexclude = { S9 = "z" }\n'
+        + BLOCKS
+        + "[analyses.a]\nblocks = ['rna', 'nag']"
+    )
+    keys = [fault.split(": ")[1] for fault in faults_of(text, root)]
+    expected = ["samples.group", "samples.adjust", "samples.exclude.S9", "blocks.pos.file", "blocks.neg.file"]
+    assert keys == [*expected, "analyses.a.blocks"]
+
+
+def test_levels_of_excluded_samples_may_be_left_out_of_the_order(root):
+    sheet = SHEET.assign(condition=["dry", "wet", "dry", "blank"])
+    order = "order = { condition = ['wet', 'dry'] }\n"
+    assert faults_of(SAMPLES + order + "exclude = { S4 = 'blank' }", root, sheet) == []
+    assert "lacks 'blank'" in faults_of(SAMPLES + order, root, sheet)[0]
+    everything = "order = { condition = ['wet', 'dry', 'blank'] }\nexclude = { S4 = 'blank' }"
+    assert faults_of(SAMPLES + everything, root, sheet) == []
+
+
+def test_numbers_are_levels_as_they_are_written(root):
+    sheet = SHEET.assign(day=[1.0, 2.0, 10.0, float("nan")])
+    assert faults_of("[samples]\ngroup = 'day'\norder = { day = ['1', '2', '10'] }", root, sheet) == []
+    assert (
+        "there is no level '10.0'"
+        in faults_of("[samples]\ngroup = 'day'\norder = { day = ['1', '2', '10.0'] }", root, sheet)[0]
+    )
+    missing = [None, float("nan"), "", pd.NA, pd.NaT, "NA", " n/a".upper()]
+    assert [level_text(cell) for cell in missing] == [None] * len(missing)
+    assert [level_text(cell) for cell in (0.5, 3, True, " wet ", "-")] == ["0.5", "3", "True", "wet", "-"]
+
+
+def test_a_sheet_whose_names_are_a_column_is_checked_too(root):
+    text = SAMPLES + "exclude = { S5 = 'x' }"
+    [fault] = faults_of(text, root, SHEET.reset_index())
+    assert fault.startswith("project.toml: samples.exclude.S5: there is no sample")
+
+
+def test_a_long_list_of_allowed_names_is_cut(root):
+    sheet = pd.DataFrame({"a": range(200)}, index=pd.Index([f"S{i}" for i in range(200)], name="sample"))
+    [fault] = faults_of("[samples]\nexclude = { T7 = 'x' }", root, sheet)
+    assert "'S11' and 188 more" in fault
+
+
+def test_an_analysis_of_all_blocks_waits_for_them(root):
+    one = BLOCKS[: BLOCKS.index("[blocks.pos]")]
+    assert faults_of(one + '[analyses.main]\nblocks = "all"', root) == []
+    assert faults_of('[analyses.main]\nblocks = "all"', root) == []
+
+
+@pytest.mark.parametrize("file", ["/etc/passwd", "../x", "source/../../x", "a\\b", "C:/x", "x\0"])
+def test_a_file_outside_the_project_is_refused(root, file):
+    assert "leads out of the project" in file_fault(root, file)
+
+
+def test_links_and_folders_are_no_files_of_the_project(root, tmp_path_factory):
+    outside = tmp_path_factory.mktemp("outside")
+    (outside / "x.tsv").touch()
+    (root / "source/link.tsv").symlink_to(outside / "x.tsv")
+    (root / "source/inner.tsv").symlink_to(root / "source/rna.tsv")
+    (root / "linked").symlink_to(outside)
+    assert "is a link that leads out of the project" in file_fault(root, "source/link.tsv")
+    assert "is a link that leads out of the project" in file_fault(root, "linked/x.tsv")
+    assert file_fault(root, "source/inner.tsv") is None
+    assert file_fault(root, "source/rna.tsv") is None
+    assert "is not a file" in file_fault(root, "source")
+    assert "is not there" in file_fault(root, "nowhere/x.tsv")
