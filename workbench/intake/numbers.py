@@ -111,7 +111,7 @@ def check_range(part: Part, values: np.ndarray, kind: str) -> list[str]:
     if kind == "counts":
         other = "choose other values for this block (intensities, log, continuous) when it holds no counts"
         _refuse(part, values < 0, "negative, though the values are counts", other)
-        fractions = np.isfinite(values) & (values != np.round(values))
+        fractions = np.isfinite(values) & (values != np.rint(values))
         round_first = f"round estimated counts first; {other}"
         _refuse(part, fractions, "not whole, though the values are counts", round_first)
     negative = int(np.count_nonzero(values < 0)) if kind == "intensities" else 0
