@@ -18,11 +18,14 @@ class Dead(BaseException):
 
 
 class Disk:
-    """The disk's steps, counted; from step ``at`` on (or at it alone) each raises what ``fail`` makes."""
+    """The disk's steps, counted; from step ``at`` on (or at it alone) each raises what ``fail`` makes.
 
-    def __init__(self, monkeypatch, at=None, fail=Dead, *, once=False, only=STEPS):
+    From step ``then`` on the process is dead.
+    """
+
+    def __init__(self, monkeypatch, at=None, fail=Dead, *, once=False, only=STEPS, then=None):
         self.steps = []
-        self.at, self.fail, self.once, self.only = at, fail, once, only
+        self.at, self.fail, self.once, self.only, self.then = at, fail, once, only, then
         for name in STEPS:
             monkeypatch.setattr(os, name, self._counted(name, getattr(os, name)))
         monkeypatch.setattr(io, "open", self._opened(io.open))
@@ -47,6 +50,8 @@ class Disk:
             return
         self.steps.append((name, arguments))
         number = len(self.steps)
+        if self.then is not None and number >= self.then:
+            raise Dead
         if self.at is None or number < self.at or (self.once and number > self.at):
             return
         if name == "write" and number == self.at:

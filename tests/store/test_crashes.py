@@ -32,7 +32,7 @@ def places(tmp_path):
 
 
 def interrupted(old, delivered, monkeypatch, **disk):
-    """Make the change on a disk that stops; return the project, what was raised, and how many steps there were."""
+    """Make the change on a disk that stops; return the project, what was raised, and the steps."""
     root = old.parent / "tried"
     shutil.rmtree(root, ignore_errors=True)
     shutil.copytree(old, root)
@@ -42,7 +42,7 @@ def interrupted(old, delivered, monkeypatch, **disk):
             make_new(root, delivered)
         except (Dead, WorkbenchError) as error:
             raised = error
-    return root, raised, len(failing.steps)
+    return root, raised, failing.steps
 
 
 def test_the_two_states_differ_and_leave_nothing_beside_them(places):
@@ -55,7 +55,7 @@ def test_the_two_states_differ_and_leave_nothing_beside_them(places):
 
 def test_killed_before_any_step_recovery_leads_to_the_old_or_the_new_state(places, monkeypatch):
     old, delivered, before, after = places
-    total = interrupted(old, delivered, monkeypatch)[2]
+    total = len(interrupted(old, delivered, monkeypatch)[2])
     assert total > 60
     outcomes = []
     for at in range(1, total + 1):
@@ -82,7 +82,7 @@ def recovery_killed_at(root, monkeypatch, at):
 
 def test_recovery_can_be_killed_before_any_of_its_steps(places, monkeypatch):
     old, delivered, before, after = places
-    total = interrupted(old, delivered, monkeypatch)[2]
+    total = len(interrupted(old, delivered, monkeypatch)[2])
     kills = 0
     for at in range(5, total + 1, 6):
         for step in range(1, 100):
@@ -99,7 +99,7 @@ def test_recovery_can_be_killed_before_any_of_its_steps(places, monkeypatch):
 
 def test_between_kill_and_recovery_no_file_is_taken_for_damaged(places, monkeypatch):
     old, delivered, _, _ = places
-    total = interrupted(old, delivered, monkeypatch)[2]
+    total = len(interrupted(old, delivered, monkeypatch)[2])
     busy = 0
     for at in range(1, total + 1):
         root = interrupted(old, delivered, monkeypatch, at=at)[0]
@@ -116,7 +116,7 @@ def test_between_kill_and_recovery_no_file_is_taken_for_damaged(places, monkeypa
 @pytest.mark.parametrize("number", [errno.ENOSPC, errno.EACCES, errno.EIO])
 def test_one_step_that_fails_leaves_every_file_as_it_was(places, monkeypatch, number):
     old, delivered, before, after = places
-    total = interrupted(old, delivered, monkeypatch)[2]
+    total = len(interrupted(old, delivered, monkeypatch)[2])
     refused = 0
     for at in range(1, total + 1):
         disk = {"at": at, "fail": lambda: OSError(number, "told by the disk"), "once": True}
@@ -129,9 +129,32 @@ def test_one_step_that_fails_leaves_every_file_as_it_was(places, monkeypatch, nu
     assert refused > total / 2
 
 
+def denied():
+    return OSError(errno.EPERM, "Operation not permitted")
+
+
+def test_killed_while_a_change_is_taken_back_recovery_goes_on_with_it(places, monkeypatch):
+    old, delivered, before, after = places
+    steps = interrupted(old, delivered, monkeypatch)[2]
+    targets = [(name, str(arguments[-1])) for name, arguments in steps]
+    at = targets.index(("replace", str(old.parent / "tried/results/main/edges.tsv"))) + 1
+    taken_back = 0
+    for then in range(at + 1, at + 100):
+        disk = {"at": at, "fail": denied, "once": True, "then": then}
+        root, raised, _ = interrupted(old, delivered, monkeypatch, **disk)
+        if not isinstance(raised, Dead):
+            break
+        begun = (root / ".workbench/undo.json").exists()
+        recover(root)
+        assert snapshot(root) in ((before,) if begun else (before, after))
+        taken_back += begun
+    assert "no permission" in str(raised)
+    assert taken_back > 5
+
+
 def test_a_disk_that_stays_full_is_told_once_and_leaves_no_trace(places, monkeypatch):
     old, delivered, before, after = places
-    total = interrupted(old, delivered, monkeypatch, only=CHANGING)[2]
+    total = len(interrupted(old, delivered, monkeypatch, only=CHANGING)[2])
     for at in range(1, total + 1):
         full = {
             "at": at,
@@ -149,7 +172,7 @@ def test_a_disk_that_stays_full_is_told_once_and_leaves_no_trace(places, monkeyp
 
 def test_a_disk_that_allows_nothing_any_more_is_mended_by_the_next_command(places, monkeypatch):
     old, delivered, before, after = places
-    total = interrupted(old, delivered, monkeypatch)[2]
+    total = len(interrupted(old, delivered, monkeypatch)[2])
     for at in range(1, total + 1, 3):
         root, raised, _ = interrupted(
             old, delivered, monkeypatch, at=at, fail=lambda: OSError(errno.EACCES, "denied")
