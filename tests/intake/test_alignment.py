@@ -178,3 +178,8 @@ def test_a_matching_sample_that_occurs_twice_is_refused_in_a_table_without_a_cor
     path = write(tmp_path, "t.tsv", tabbed("S1 S2 S1", "g1 1 2 3"))
     with pytest.raises(InputError, match=r"'S1': line 1, column 1, line 1, column 3"):
         read(path)
+
+
+def test_one_matching_sample_is_enough(tmp_path):
+    table = read(write(tmp_path, "t.tsv", tabbed("id X S2 Y", "g1 a 2 b", "g2 c 4 d")))
+    assert table.values.loc["S2"].tolist() == [2.0, 4.0]

@@ -120,6 +120,7 @@ def test_codes_name_each_samples_own_cell_in_any_order_of_samples(cells, random)
 
 @given(st.lists(st.sampled_from(["b1", "b2", "b3", "b4"]), min_size=2, max_size=15))
 def test_indicators_and_the_intercept_span_the_classes(labels):
+    labels = [*labels, labels[0]]
     design = design_columns(sheet_of(batch=labels), ["batch"])
     full = pd.get_dummies(pd.Series(labels)).to_numpy(dtype=float)
     ours = np.column_stack([np.ones(len(labels)), design.matrix])
@@ -132,3 +133,9 @@ def test_the_sheet_is_not_changed():
     design_columns(FRAME, ["batch", "run"], {"run": "classes"})
     group_codes(FRAME, ["sex", "run"])
     pd.testing.assert_frame_equal(FRAME, before)
+
+
+def test_a_nuisance_with_a_level_for_every_sample_is_refused():
+    frame = sheet_of(tube=["a", "b", "c", "d"], pair=["p", "q", "p", "q"])
+    with pytest.raises(InputError, match=r"column 'tube' .* a level of its own for each of 4 samples"):
+        design_columns(frame, ["pair", "tube"])

@@ -1,5 +1,7 @@
 """Tables as they should not arrive: each is refused with file, place, names, what was found and the way out."""
 
+import bz2
+import gzip
 import re
 
 import pytest
@@ -350,3 +352,27 @@ def test_no_message_names_a_library_or_shows_a_traceback(tmp_path):
         for word in ("pandas", "openpyxl", "Traceback", "codec", "DataFrame", "h5py", "arrow"):
             assert word not in str(caught.value)
         assert caught.value.__cause__ is None
+
+
+def test_files_too_large_are_refused_before_they_are_read(tmp_path, monkeypatch):
+    monkeypatch.setattr("workbench.intake.files.LARGEST_TEXT", 1000)
+    content = tabbed("id S1", *(f"g{k} 1" for k in range(300)))
+    for name, data in [("t.tsv", content.encode()), ("t.tsv.gz", gzip.compress(content.encode()))]:
+        with pytest.raises(InputError, match=r"more than 0 GB of text; cut the table into parts"):
+            delivered_table(write(tmp_path, name, data), sample_ids=SHEET, values="log")
+
+
+def test_every_date_is_listed_since_each_must_be_mended(tmp_path):
+    names = [f"{day}-Sep" for day in range(1, 13)]
+    path = write(tmp_path, "t.tsv", tabbed(HEAD, *(f"{name} 1 2 3" for name in names)))
+    with pytest.raises(InputError, match="12 feature ids are dates") as caught:
+        delivered_table(path, sample_ids=SHEET, values="log")
+    assert all(f"'{name}' (line" in str(caught.value) for name in names)
+
+
+def test_a_file_that_only_starts_like_another_format_is_a_table(tmp_path):
+    path = write(tmp_path, "t.tsv", tabbed("bzh12 S1 S2", "g1 1 2"))
+    assert delivered_table(path, sample_ids=SHEET, values="log").values.shape == (2, 1)
+    packed = write(tmp_path, "t.tsv.bz2", bz2.compress(tabbed(HEAD, GOOD).encode()))
+    with pytest.raises(InputError, match=r"compressed \(bzip2\).*unpack it first"):
+        delivered_table(packed, sample_ids=SHEET, values="log")

@@ -166,3 +166,24 @@ def test_columns_that_cannot_serve_are_not_suggested():
     found = suggest_columns(frame)
     assert (found.group, found.adjust, found.subject) == ((), (), ())
     assert suggest_columns(frame.iloc[:, :0]).group == ()
+
+
+def test_columns_that_are_nearly_numbers_are_told(tmp_path):
+    rows = [
+        "sample,age,weight,site,dose",
+        *(f'S{k},{40 + k},"{60 + k},5",Ulm,{k}' for k in range(5)),
+        "S5,unknown,,Ulm,6",
+    ]
+    sheet = read_sample_sheet(write(tmp_path, "s.csv", "\n".join(rows)))
+    told = [note for note in sheet.notes if "counts as classes" in note]
+    assert told == [
+        "s.csv: column 'age' has text among its numbers ('unknown'), so it counts as classes",
+        "s.csv: column 'weight' has decimal commas or thousands separators ('60,5', '61,5', '62,5' and 2 more), so it "
+        "counts as classes",
+    ]
+    assert [column_kind(sheet.frame[name]) for name in ("age", "weight", "site", "dose")] == [
+        "classes",
+        "classes",
+        "classes",
+        "number",
+    ]

@@ -9,6 +9,7 @@ from intake.delivered import SHEET, workbook
 
 from workbench.errors import InputError
 from workbench.intake import delivered_table, read_delivered, read_sample_sheet
+from workbench.intake.numbers import cell_number
 
 HEAD = ["id", "S1", "S2", "S3"]
 DAY = datetime.datetime(2024, 9, 2)
@@ -158,3 +159,20 @@ def test_a_first_column_of_dates_is_no_matter_when_another_holds_the_ids(tmp_pat
     assert list(read_sample_sheet(path, id_column="tube").frame.index) == ["T1", "T2"]
     with pytest.raises(InputError, match=r"2 sample ids are no text.*\n.*cell A2 holds the date"):
         read_sample_sheet(path)
+
+
+def test_a_number_beyond_float_is_no_number():
+    assert cell_number(10**400) is None
+    assert cell_number(2**53) == 2.0**53
+
+
+def test_numbers_stored_as_text_are_numbers(tmp_path):
+    table = read(workbook(tmp_path / "t.xlsx", [HEAD, ["g1", "1.5", " 2e3 ", "NA"]]))
+    assert table.values["g1"].tolist()[:2] == [1.5, 2000.0]
+
+
+def test_a_workbook_that_unpacks_to_too_much_is_refused_unread(tmp_path, monkeypatch):
+    path = workbook(tmp_path / "t.xlsx", [HEAD, ["g1", 1, 2, 3]])
+    monkeypatch.setattr("workbench.intake.workbook.LARGEST_UNPACKED", 1000)
+    with pytest.raises(InputError, match="unpacks to more than 0 GB"):
+        read(path)

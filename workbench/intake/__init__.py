@@ -1,4 +1,4 @@
-"""Delivered tables and sample sheets, read and checked: nothing is guessed, all that is odd is told."""
+"""Delivered tables and sample sheets, read and checked: refused with place and way out, or told what was taken."""
 
 from .annotations import read_annotations
 from .block import BlockBuild, build_block

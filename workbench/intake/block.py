@@ -118,8 +118,8 @@ def _annotations(
         lines.append(f"{path.name}: without annotation: {listed(without)}")
     if extra:
         lines.append(
-            f"{path.name}: {counted(extra, 'row is', 'rows are')} of features that the table does not have; "
-            "left out"
+            f"{path.name}: {counted(extra, 'row is', 'rows are')} of features that the table does not "
+            "have; left out"
         )
     return var, lines
 
@@ -128,8 +128,8 @@ def _check_free(root: Path, settings: BlockSettings, var: pd.DataFrame) -> None:
     taken = [column for column in ("kind", "levels") if column in var.columns]
     if taken and settings.annotations is not None:
         raise InputError(
-            f"{root / settings.annotations}: column {listed(taken)} has a name that a mixed block uses itself; "
-            "rename it in the annotations"
+            f"{root / settings.annotations}: column {listed(taken)} has a name that a mixed block uses "
+            "itself; rename it in the annotations"
         )
 
 

@@ -14,10 +14,10 @@ from .tokens import word_set
 # Month abbreviations as spreadsheets show them in English, German, French, Spanish, Italian, Portuguese,
 # Dutch and the Nordic languages (common practice; from memory).
 _MONTHS = word_set(
-    "jan janv januar january januari ene gen feb febr fev fevr févr february februar mar "
-    "mars march mär märz mrz mrt abr apr avr avril april mag mai maj may mei jun juin june juni "
-    "giu jul juil july juli lug aug août aout august ago sep sept set september oct okt out ott "
-    "october oktober nov november dec déc dez dic des december dezember"
+    "jan janv januar january januari ene gen feb febr fev fevr févr february februar mar mars march mär "
+    "märz mrz mrt abr apr avr avril april mag mai maj may mei jun juin june juni giu jul juil july juli "
+    "lug aug août aout august ago sep sept set september oct okt out ott october oktober nov november dec "
+    "déc dez dic des december dezember"
 )
 _MONTH = "(?:" + "|".join(sorted(_MONTHS, key=lambda m: (-len(m), m))) + r")\.?"
 _YEAR = r"(?:\d{2}|(?:19|20)\d{2})"

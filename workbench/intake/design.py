@@ -179,8 +179,8 @@ def _refuse_missing(frame: pd.DataFrame, columns: Sequence[str]) -> None:
             for column, names in lacking.items()
         ]
         raise InputError(
-            f"the sample sheet has no value in column {'; in column '.join(parts)}; "
-            "fill the cells, exclude the samples, or do without the column"
+            f"the sample sheet has no value in column {'; in column '.join(parts)}; fill the cells, "
+            "exclude the samples, or do without the column"
         )
 
 
@@ -195,8 +195,8 @@ def _kind(series: pd.Series, column: str, said: str | None) -> str:
     levels = sorted_levels(series)
     if len(levels) > 2:
         raise InputError(
-            f"column {shown(column)} of the sample sheet holds the whole numbers {listed(levels)}, which may "
-            "be classes or a number; "
+            f"column {shown(column)} of the sample sheet holds the whole numbers {listed(levels)}, which "
+            "may be classes or a number; "
             f'say which in project.toml: [samples] kinds = {{ {column} = "classes" }} or "number"'
         )
     return "number"
@@ -218,6 +218,12 @@ def _number(series: pd.Series, column: str) -> dict[str, np.ndarray]:
 def _indicators(series: pd.Series, column: str) -> dict[str, np.ndarray]:
     levels = sorted_levels(series)
     cells = present(series)
+    if 2 < len(levels) == len(cells):
+        raise InputError(
+            f"column {shown(column)} of the sample sheet has a level of its own for each of {len(levels)} "
+            "samples, so nothing would be left to analyse; take it out of adjust, or mend cells that "
+            "should be numbers"
+        )
     return {f"{column}={level}": (cells == level).to_numpy(dtype=np.float64) for level in levels[1:]}
 
 
@@ -229,7 +235,7 @@ def _ordered_levels(series: pd.Series, factor: str, order: Sequence[str] | None)
     if unknown:
         raise InputError(
             f"column {shown(factor)} of the sample sheet has the level{'s' if len(unknown) > 1 else ''} "
-            f"{listed(unknown)}, which order "
-            f"does not name; order has {listed(order)}: add the level, or mend the cells"
+            f"{listed(unknown)}, which order does not name; order has {listed(order)}: add the level, or "
+            "mend the cells"
         )
     return tuple(level for level in order if level in levels)

@@ -22,7 +22,7 @@ _FOREIGN = (
     ),
     (b"%PDF", "a PDF file", "ask for the table itself"),
     (b"{\\rtf", "a rich-text document", "save it as plain text"),
-    (b"BZh", "compressed (bzip2)", "unpack it first"),
+    *((b"BZh%d1AY&SY" % level, "compressed (bzip2)", "unpack it first") for level in range(1, 10)),
     (b"\xfd7zXZ", "compressed (xz)", "unpack it first"),
     (b"(\xb5/\xfd", "compressed (zstd)", "unpack it first"),
     (b"<!DOCTYPE", "a web page", "save the table as TSV, CSV or XLSX"),
@@ -114,6 +114,8 @@ def read_lines(path: Path) -> TextLines:
 
 def _plain_bytes(path: Path) -> tuple[bytes, list[str]]:
     try:
+        if path.stat().st_size > LARGEST_TEXT:
+            raise _too_large(path)
         data = path.read_bytes()
     except OSError as error:
         raise InputError(
@@ -127,10 +129,12 @@ def _plain_bytes(path: Path) -> tuple[bytes, list[str]]:
     except (OSError, EOFError, zlib.error):
         raise InputError(f"{path}: the gzip file is damaged or cut short; fetch it again") from None
     if len(data) > LARGEST_TEXT:
-        raise InputError(
-            f"{path}: unpacks to more than {LARGEST_TEXT // 2**30} GB of text; cut the table into parts"
-        )
+        raise _too_large(path)
     return data, [f"{path.name}: compressed with gzip; read as the text inside"]
+
+
+def _too_large(path: Path) -> InputError:
+    return InputError(f"{path}: more than {LARGEST_TEXT // 2**30} GB of text; cut the table into parts")
 
 
 def _decoded(path: Path, data: bytes) -> str:
@@ -151,8 +155,8 @@ def _refuse_wide(path: Path, data: bytes) -> None:
     half = data[:4000].count(b"\x00") * 3 > len(data[:4000])
     if data.startswith(_UTF16) or half:
         raise InputError(
-            f"{path}: line 1: the text is UTF-16 ('Unicode text' of a spreadsheet), not UTF-8; "
-            "save the table as 'CSV UTF-8' or .xlsx"
+            f"{path}: line 1: the text is UTF-16 ('Unicode text' of a spreadsheet), not UTF-8; save the "
+            "table as 'CSV UTF-8' or .xlsx"
         )
 
 

@@ -76,8 +76,7 @@ class _Reader:
         if not isinstance(group, h5py.Group) or name not in group:
             raise self._refuse(
                 f"there is no '{name}' in '{getattr(group, 'name', '/')}', so this is no .h5ad file as "
-                "anndata "
-                "0.7 or later writes it",
+                "anndata 0.7 or later writes it",
                 "write it again with a current version",
             )
         link = isinstance(group.get(name, getlink=True), h5py.SoftLink | h5py.ExternalLink)

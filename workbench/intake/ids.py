@@ -43,11 +43,10 @@ def refuse_broken(raw: RawTable, what: str) -> None:
     if raw.broken_ids:
         total = len(raw.broken_ids)
         raise Faults(raw.path, total, list(raw.broken_ids)).error(
-            f"{counted(total, f'{what} id is no text', f'{what} ids are no text')}, since a spreadsheet has "
-            "changed them",
+            f"{counted(total, f'{what} id is no text', f'{what} ids are no text')}, since a spreadsheet "
+            "has changed them",
             "set these cells to the text format, type the names again (SEPT2, not a date) and save; or "
-            "deliver the "
-            "table as TSV, straight from its source",
+            "deliver the table as TSV, straight from its source",
         )
 
 
@@ -89,10 +88,9 @@ def check_no_dates(path: Path, ids: Sequence[str], place: Callable[[int], str]) 
         faults = Faults(path, total=len(dates), kept=dates)
         raise faults.error(
             f"{counted(len(dates), 'feature id is a date', 'feature ids are dates')}; a spreadsheet has "
-            "changed "
-            "names such as SEPT2 or MARCH1",
-            "export the table again from its source without a spreadsheet between, or put the names back and "
-            "save as text",
+            "changed names such as SEPT2 or MARCH1",
+            "export the table again from its source without a spreadsheet between, or put the names back "
+            "and save as text",
         )
 
 

@@ -85,16 +85,15 @@ def _choose(raw: RawTable, sheet: Sequence[str], hits: dict[str, int], samples_i
             other = "rows" if samples_in == "columns" else "columns"
             raise InputError(
                 f"{raw.path}: samples_in = '{samples_in}', but none of the {samples_in} is a sample of the "
-                "sheet, while "
-                f"{counted(hits[other], f'of the {other} is', f'of the {other} are')}; write samples_in = "
-                f"'{other}', or leave it out"
+                f"sheet, while {counted(hits[other], f'of the {other} is', f'of the {other} are')}; write "
+                f"samples_in = '{other}', or leave it out"
             )
         return samples_in
     if hits["rows"] == hits["columns"]:
         raise InputError(
             f"{raw.path}: the rows and the columns match {counted(hits['rows'], 'sample')} of the sheet "
-            "each, so the ids "
-            "cannot tell which are the samples; say samples_in = 'rows' or samples_in = 'columns'"
+            "each, so the ids cannot tell which are the samples; say samples_in = 'rows' or samples_in = "
+            "'columns'"
         )
     return max(hits, key=lambda name: hits[name])
 
@@ -104,8 +103,7 @@ def _no_match(raw: RawTable, sheet: Sequence[str]) -> InputError:
     hint = f"; perhaps {_as_pairs(near)}" if near else ""
     return InputError(
         f"{raw.path}: no sample of the sheet is in the table: the sheet has {_some(sheet)}, the table's "
-        "columns are "
-        f"{_some(raw.columns)}, its rows {_some(raw.rows)}{hint}; use the same ids in both"
+        f"columns are {_some(raw.columns)}, its rows {_some(raw.rows)}{hint}; use the same ids in both"
     )
 
 
@@ -133,8 +131,7 @@ def _check_short_header(raw: RawTable, samples_in: str, known: set[str]) -> None
         raise InputError(
             f"{raw.path}: {raw.place(HEADER, 0)}: the header is one field short, and its first name "
             f"{shown(raw.columns[0])} is no sample of the sheet, so the values may stand one column off; "
-            "give every "
-            "column its name, that of the ids included"
+            "give every column its name, that of the ids included"
         )
 
 

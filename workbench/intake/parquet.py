@@ -33,8 +33,8 @@ def read_parquet(path: Path) -> RawTable:
         from pyarrow import parquet  # type: ignore[import-untyped]
     except ImportError:
         raise InputError(
-            f"{path}: reading Parquet needs pyarrow, which is not installed; install the 'parquet' extra, or "
-            "deliver TSV"
+            f"{path}: reading Parquet needs pyarrow, which is not installed; install the 'parquet' extra, "
+            "or deliver TSV"
         ) from None
     try:
         with parquet.ParquetFile(path) as file:
@@ -95,8 +95,7 @@ def _ids(path: Path, name: str, column: Any) -> tuple[str, ...]:
     if wrong is not None:
         raise InputError(
             f"{path}: row {wrong + 1}, column {shown(name)}: the id is {shown(cells[wrong])}, neither text "
-            "nor a whole number; "
-            "put the ids as text into the first column"
+            "nor a whole number; put the ids as text into the first column"
         )
     return tuple(map(str, cells))
 

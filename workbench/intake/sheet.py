@@ -16,6 +16,7 @@ from .kinds import column_kind, present
 from .raw import HEADER, Cell, RawTable, WrongCell, cell_text
 from .readers import read_delivered
 from .suggest import Suggestions, suggest_columns
+from .tokens import is_comma_number, number_of
 
 __all__ = ["SampleSheet", "Suggestions", "column_kind", "read_sample_sheet", "suggest_columns"]
 
@@ -122,9 +123,8 @@ def _ids(raw: RawTable, cells: Sequence[Cell], position: int, name: str) -> list
     for i, cell in enumerate(cells):
         if isinstance(cell, WrongCell):
             raise InputError(
-                f"{raw.path}: {raw.place(i, position - 1)} (column {shown(name)}) holds {cell} in place of a "
-                "sample id; "
-                "set the column to the text format and type the ids again"
+                f"{raw.path}: {raw.place(i, position - 1)} (column {shown(name)}) holds {cell} in place of "
+                "a sample id; set the column to the text format and type the ids again"
             )
     return [cell_text(cell) for cell in cells]
 
@@ -180,13 +180,25 @@ def _column_notes(file: str, name: str, written: pd.Series, read: pd.Series) -> 
         notes.append(
             f"{file}: blanks at the ends of {counted(trimmed, 'cell')} of column {shown(name)} left out"
         )
+    notes += [f"{file}: column {shown(name)} {fault}" for fault in _nearly_numbers(read)]
     forms: dict[str, list[str]] = {}
     for level in dict.fromkeys(read.dropna()):
         forms.setdefault(level.casefold(), []).append(level)
     for levels in forms.values():
         if len(levels) > 1:
             notes.append(
-                f"{file}: column {shown(name)} has levels that differ in case alone: {listed(levels)}; they "
-                "count as different"
+                f"{file}: column {shown(name)} has levels that differ in case alone: {listed(levels)}; "
+                "they count as different"
             )
     return notes
+
+
+def _nearly_numbers(column: pd.Series) -> list[str]:
+    """Return what keeps a column from being one of numbers, where most of its cells are numbers."""
+    cells = column.dropna()
+    words = [cell for cell in cells if number_of(cell) is None]
+    commas = [cell for cell in words if is_comma_number(cell)]
+    if not words or 2 * (len(words) - len(commas)) >= len(cells):
+        return []
+    what = "decimal commas or thousands separators" if commas else "text among its numbers"
+    return [f"has {what} ({listed(list(dict.fromkeys(commas or words)), 3)}), so it counts as classes"]

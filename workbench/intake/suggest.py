@@ -13,18 +13,18 @@ from .kinds import column_numbers, present
 from .tokens import word_set
 
 _GROUP = word_set(
-    "condition treatment group genotype status disease phenotype class diagnosis case control "
-    "arm dose strain diet stage response responder outcome exposure tissue timepoint cohort line "
-    "cultivar variety sex"
+    "condition treatment group genotype status disease phenotype class diagnosis case control arm dose "
+    "strain diet stage response responder outcome exposure tissue timepoint cohort line cultivar variety "
+    "sex"
 )
 _BATCH = word_set(
-    "batch block run day date plate lane site kit operator center centre instrument machine flowcell "
-    "chip slide array order extraction library technician lot sequencing prep column "
-    "centrifugation shipment laboratory lab hospital"
+    "batch block run day date plate lane site kit operator center centre instrument machine flowcell chip "
+    "slide array order extraction library technician lot sequencing prep column centrifugation shipment "
+    "laboratory lab hospital"
 )
 _SUBJECT = word_set(
-    "donor patient subject animal plant individual participant mouse rat person proband case_id "
-    "pair family litter clone host tree twin volunteer"
+    "donor patient subject animal plant individual participant mouse rat person proband case_id pair "
+    "family litter clone host tree twin volunteer"
 )
 _NUISANCE = word_set("age bmi weight rin ph purity dilution")
 

@@ -117,8 +117,7 @@ def _check_ids_present(raw: RawTable) -> None:
     if not raw.columns or not raw.rows:
         raise InputError(
             f"{raw.path}: the table is one column wide, {shown(raw.corner)}; it needs one for each sample "
-            "(or feature) "
-            "beside the ids, parted by tabs, commas or semicolons"
+            "(or feature) beside the ids, parted by tabs, commas or semicolons"
         )
     refuse_broken(raw, "row")
     check_present(raw.path, raw.columns, "column", lambda j: raw.place(HEADER, j))

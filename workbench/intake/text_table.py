@@ -18,9 +18,8 @@ from .tokens import word_set
 # Names over an id column; a header that starts with one does not lack a field, whatever its length.
 _ID_WORDS = word_set(
     "id ids name names sample samples sample_id sampleid feature features feature_id gene genes gene_id "
-    "geneid "
-    "gene_name symbol protein proteins metabolite metabolites compound compounds lipid lipids taxon otu asv "
-    "probe row.names"
+    "geneid gene_name symbol protein proteins metabolite metabolites compound compounds lipid lipids "
+    "taxon otu asv probe row.names"
 )
 _R_FORM = (
     "the header is one field short (as R writes tables); its names are those of the columns after the first"
@@ -123,9 +122,8 @@ def _width_error(
     return faults.error(
         f"{faults.total:,} of {counted(len(lines), 'row')} do not have {fields} {counted(n, 'field')} "
         f"(parted by {SEPARATORS[layout.separator]})",
-        f"{_width_way_out(widths, layout)}give every line as many fields as the header, empty where a value "
-        "is "
-        "missing, and no separator at its end",
+        f"{_width_way_out(widths, layout)}give every line as many fields as the header, empty where a "
+        "value is missing, and no separator at its end",
     )
 
 

@@ -95,6 +95,5 @@ def _number_notes(path: Path, table: list[list[Cell]]) -> list[str]:
         return []
     return [
         f"{path.name}: {counted(len(numbers), 'id is a number', 'ids are numbers')} in the spreadsheet and "
-        "became text "
-        f"({listed(numbers, 3)}); zeros at their start, if there were any, are lost"
+        f"became text ({listed(numbers, 3)}); zeros at their start, if there were any, are lost"
     ]
