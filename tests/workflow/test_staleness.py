@@ -6,7 +6,9 @@ import pytest
 
 from workbench import Project
 
-STAGES = ["read:rna", "read:lcms", "prepare:rna", "prepare:lcms", "integrate:main", "network:main"]
+LOOKS = ["look:rna", "look:lcms", "look:between-blocks"]
+ENGINE = ["integrate:main", "network:main"]
+STAGES = ["read:rna", "read:lcms", "prepare:rna", "prepare:lcms", *LOOKS, *ENGINE]
 
 
 def edit(folder, old, new):
@@ -18,10 +20,10 @@ def edit(folder, old, new):
 
 CHANGES = [
     ('title = "A small study"', 'title = "Another title"  # and a comment', []),
-    ('blocks = "all"', 'blocks = "all"\nseed = 7', ["integrate:main", "network:main"]),
+    ('blocks = "all"', 'blocks = "all"\nseed = 7', ENGINE),
     ("repeats = 2", "repeats = 2\n[analyses.main.network]\nfdr = 0.1", ["network:main"]),
     ("[samples]\nid", '[samples]\nexclude = { S03 = "haemolysed" }\nid', STAGES[2:]),
-    ('adjust = ["run_day"]', "adjust = []", ["integrate:main", "network:main"]),
+    ('adjust = ["run_day"]', "adjust = []", [*LOOKS, *ENGINE]),
 ]
 
 

@@ -9,7 +9,15 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from workbench.engine import BlockPair, BlockScreen, edge_evidence, screen_blocks
+from workbench.engine import (
+    BlockPair,
+    BlockScreen,
+    Nuisance,
+    PairFigures,
+    edge_evidence,
+    fisher_interval,
+    screen_blocks,
+)
 from workbench.workflow.analysis_view import AnalysisView, Shared
 from workbench.workflow.reporting import Reporter
 
@@ -131,7 +139,7 @@ def group_pairs_table(view: AnalysisView, screens: Screens) -> pd.DataFrame:
 
 
 def basis_of(
-    view: AnalysisView, within: object, r_total: FloatArray, pairs: Pairs, screens: Screens
+    view: AnalysisView, within: PairFigures, r_total: FloatArray, pairs: Pairs, screens: Screens
 ) -> NDArray[np.str_]:
     """Return what each pair rests on: ``within``, ``group`` or ``unclear``.
 
@@ -140,19 +148,22 @@ def basis_of(
     the one or the other.
     """
     fdr = view.settings.network.fdr
-    passes = (within.q <= fdr) & (within.q_block <= fdr)  # type: ignore[attr-defined]
-    low, high = _interval(within.r, pairs, screens)  # type: ignore[attr-defined]
+    passes = (within.q <= fdr) & (within.q_block <= fdr)
+    low, high = _interval(within.r, pairs, screens)
     bound = GROUP_BOUND * np.abs(r_total)
     by_group = (low > -bound) & (high < bound)
     return np.where(passes, "within", np.where(by_group, "group", "unclear"))
 
 
 def _interval(r: FloatArray, pairs: Pairs, screens: Screens) -> tuple[FloatArray, FloatArray]:
-    """Return the unadjusted 95 % Fisher interval of correlations within groups."""
-    freedom = np.array([one.n - one.within.shape[1] - 3 for one in screens.shared], dtype=np.float64)
-    half = 1.959963984540054 / np.sqrt(np.maximum(freedom[pairs.pair], 1.0))
-    z = np.arctanh(np.clip(r, -1 + 1e-15, 1 - 1e-15))
-    return np.tanh(z - half), np.tanh(z + half)
+    """Return the unadjusted 95 % intervals of correlations within groups."""
+    low, high = np.full((2, r.size), np.nan)
+    spearman = screens.total.correlation == "spearman"
+    for k, one in enumerate(screens.shared):
+        here = pairs.pair == k
+        rank = Nuisance.of(one.within, one.n).rank
+        low[here], high[here] = fisher_interval(r[here], one.n, rank, spearman=spearman)
+    return low, high
 
 
 def _ends(view: AnalysisView, pairs: Pairs) -> pd.DataFrame:

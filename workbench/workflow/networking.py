@@ -12,7 +12,7 @@ from workbench.workflow.canonical import analysis_inputs, has_canonical_pairs
 from workbench.workflow.edges import edges_table, group_pairs_table, screen_analysis
 from workbench.workflow.feature_table import canonical_correlations, features_table, implied_correlations
 from workbench.workflow.fingerprints import fingerprint
-from workbench.workflow.record import analysis_record, screen_sentences
+from workbench.workflow.record import analysis_record, fragile_sentence, screen_sentences
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
@@ -69,7 +69,7 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
         change.write_bytes(f"{folder}/{file}", table_bytes(table))
     change.write_bytes(f"{folder}/network.graphml", graphml_bytes(graph))
     change.write_bytes(f"{folder}/record.json", json_bytes(analysis_record(state, view, screens, len(pairs))))
-    for line in screen_sentences(view, screens, len(pairs)):
+    for line in filter(None, [*screen_sentences(view, screens, len(pairs)), fragile_sentence(edges)]):
         reporter.say(f"  {line}")
 
 

@@ -6,6 +6,8 @@ import platform
 from importlib.metadata import version
 from typing import Any
 
+import pandas as pd
+
 from workbench import __version__
 from workbench.engine import Nuisance, critical_r
 from workbench.workflow.analysis_view import AnalysisView
@@ -15,6 +17,7 @@ from workbench.workflow.state import ProjectState
 from workbench.workflow.tables import excluded
 
 FORMAT = 1
+FRAGILE_SHARE = 0.5
 LIBRARIES = ("numpy", "scipy", "pandas", "scikit-learn", "anndata", "h5py", "networkx")
 
 
@@ -98,6 +101,17 @@ def reach_sentences(view: AnalysisView, screens: Screens) -> list[str]:
                 "or more; the more pairs there are, the lower"
             )
     return lines
+
+
+def fragile_sentence(edges: pd.DataFrame) -> str:
+    """Return how many edges lose half of their correlation when one sample is left out, empty for none."""
+    fragile = int((edges["r_without_one"].abs() < edges["r"].abs() * FRAGILE_SHARE).sum())
+    if not fragile:
+        return ""
+    return (
+        f"{fragile:,} of {len(edges):,} edges lose half of r or more when a single sample is left out "
+        '(r_without_one): look for an odd sample, or set network.correlation = "spearman"'
+    )
 
 
 def cut_sentence(screen: Any, view: AnalysisView) -> str:
