@@ -3,6 +3,7 @@
 import json
 import subprocess
 import sys
+import time
 
 import pytest
 
@@ -135,3 +136,15 @@ def test_quiet_leaves_messages_out(command, made):
     code, out, err = command("run", "--quiet", "--project", made)
     assert (code, err) == (0, "")
     assert "edges.tsv" in out
+
+
+def test_help_answers_within_four_tenths_of_a_second():
+    """Or twenty times a bare interpreter, on a slow machine; the best of five counts."""
+
+    def seconds(*words):
+        started = time.perf_counter()
+        subprocess.run([sys.executable, *words], capture_output=True, check=True)
+        return time.perf_counter() - started
+
+    bare = min(seconds("-c", "pass") for _ in range(5))
+    assert min(seconds("-m", "workbench", "--help") for _ in range(5)) < max(0.4, 20 * bare)
