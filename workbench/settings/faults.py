@@ -130,6 +130,8 @@ def _model_at(key: tuple[str | int, ...]) -> type[BaseModel] | None:
             here = None if field is None else field.annotation
         elif get_origin(here) is dict:
             here = get_args(here)[1]
+        elif get_origin(here) is tuple:
+            here = get_args(here)[0]
         else:
             return None
     return here if isinstance(here, type) and issubclass(here, BaseModel) else None

@@ -170,6 +170,37 @@ class SamplesSettings(Section):
     exclude: dict[str, Text] = Field(default_factory=dict)
 
 
+def _checked_cycle(value: tuple[str, ...]) -> tuple[str, ...]:
+    if len(value) < 2:
+        raise _fault("swap", f"names {len(value)} sample{'s' * (len(value) != 1)}; allowed: two or more")
+    return value
+
+
+def _checked_swaps(value: Any) -> Any:
+    if not isinstance(value, list | tuple):
+        raise _fault(
+            "swap", f'must be a list, like [{{ samples = ["S03", "S31"], reason = "..." }}], got {value!r}'
+        )
+    return value
+
+
+class Swap(Section):
+    """One item of ``swap``: samples whose rows were exchanged, and how that is known.
+
+    Attributes
+    ----------
+    samples : tuple of str
+        Each name's row belongs to the next one, the last's to the first.
+    reason : str
+    """
+
+    samples: Annotated[Names, AfterValidator(_checked_cycle)]
+    reason: Text
+
+
+Swaps = Annotated[tuple[Swap, ...], Field(strict=False), BeforeValidator(_checked_swaps)]
+
+
 class BlockSettings(Section):
     """``[blocks.NAME]``: one table of one layer, and how it is read.
 
@@ -185,12 +216,18 @@ class BlockSettings(Section):
         Where the samples stand; None: found by their names.
     sheet, array : str or None
         Sheet of an .xlsx file; ``X`` or a layer of an .h5ad file.
+    names : str or None
+        Table of delivered names and the samples (or runs) that they stand for, relative to the project.
+    runs : str or None
+        Run sheet, relative to the project: the table's ids are then runs.
     annotations : str or None
         Table of feature identifiers, relative to the project.
     adjust : tuple of str
         Nuisance columns of this assay alone.
     exclude : dict of str to str
         Sample of this block and the reason why it is left out.
+    swap : tuple of Swap
+        Samples whose rows were exchanged in the laboratory; each sample in one item at most.
     """
 
     file: Text
@@ -199,9 +236,21 @@ class BlockSettings(Section):
     samples_in: Literal["rows", "columns"] | None = None
     sheet: Text | None = None
     array: Text | None = None
+    names: Text | None = None
+    runs: Text | None = None
     annotations: Text | None = None
     adjust: Names = ()
     exclude: dict[str, Text] = Field(default_factory=dict)
+    swap: Swaps = ()
+
+    @field_validator("runs")
+    @classmethod
+    def _runs_can_be_combined(cls, value: str | None, info: ValidationInfo) -> str | None:
+        if value is not None and info.data.get("values") == "mixed":
+            raise _fault(
+                "runs", 'is for tables of numbers, whose runs have a mean; allowed: no runs with "mixed"'
+            )
+        return value
 
     @field_validator("sheet", "array")
     @classmethod
@@ -266,6 +315,18 @@ class AnalysisSettings(Section):
     network: NetworkSettings = Field(default_factory=NetworkSettings)
 
 
+class CheckSettings(Section):
+    """``[check]``: what the analyst has settled.
+
+    Attributes
+    ----------
+    accept : dict of str to str
+        Id of a finding and the reason why it is accepted.
+    """
+
+    accept: dict[str, Text] = Field(default_factory=dict)
+
+
 def _checked_format(value: Any) -> Any:
     if _is_number(value) and value > FORMAT:
         raise _fault("format", f"is {value!r}: a newer version of this program wrote it; allowed: {FORMAT}")
@@ -297,6 +358,7 @@ class Settings(Section):
         In the order of the file.
     analyses : dict of str to AnalysisSettings
         In the order of the file.
+    check : CheckSettings
     """
 
     format: Annotated[Literal[1], BeforeValidator(_checked_format)] = 1
@@ -304,6 +366,7 @@ class Settings(Section):
     samples: SamplesSettings = Field(default_factory=SamplesSettings)
     blocks: Annotated[dict[Name, BlockSettings], AfterValidator(_one_case)] = Field(default_factory=dict)
     analyses: Annotated[dict[Name, AnalysisSettings], AfterValidator(_one_case)] = Field(default_factory=dict)
+    check: CheckSettings = Field(default_factory=CheckSettings)
 
     def blocks_of(self, analysis: str) -> tuple[str, ...]:
         """Return the names of the blocks that an analysis takes, in the order of the file's blocks."""

@@ -136,7 +136,11 @@ def toml_item(value: Any) -> Any:
         for key, inner in value.items():
             table[key] = toml_item(inner)
         return table
-    return tomlkit.item(list(value) if isinstance(value, tuple) else value)
+    if isinstance(value, list | tuple):
+        array = tomlkit.array()
+        array.extend(toml_item(inner) for inner in value)
+        return array
+    return tomlkit.item(value)
 
 
 def toml_value(value: Any) -> str:
