@@ -118,6 +118,19 @@ ONE = [
     ),
     (BLOCKS + "annotations = '../genes.tsv'", "blocks.neg.annotations: '../genes.tsv' leads out of the project"),
     (
+        BLOCKS + "names = 'source/neg_names.tsv'",
+        "blocks.neg.names: 'source/neg_names.tsv' is not there; put the file back, or name another",
+    ),
+    (BLOCKS + "runs = '/tmp/runs.tsv'", "blocks.neg.runs: '/tmp/runs.tsv' leads out of the project"),
+    (
+        BLOCKS + "swap = [{ samples = ['S1', 's2'], reason = 'x' }]",
+        f"blocks.neg.swap, item 1.samples: there is no sample of samples.tsv 's2'{NAMES} did you mean 'S2'?",
+    ),
+    (
+        BLOCKS + "swap = [{ samples = ['S1', 'S2'], reason = 'x' }, { samples = ['S3', 'S1'], reason = 'y' }]",
+        "blocks.neg.swap, item 2.samples: 'S1' is in item 1 too; name each sample once: join the two chains",
+    ),
+    (
         BLOCKS + "[analyses.a]\nblocks = ['rna', 'post']",
         "analyses.a.blocks: there is no block 'post'; allowed: 'rna', 'pos', 'neg'; did you mean 'pos'?",
     ),
@@ -142,6 +155,28 @@ def test_a_blocks_nuisance_is_not_the_group_either(root):
     text = '[samples]\ngroup = ["condition"]\n' + BLOCKS + "adjust = ['condition']"
     [fault] = faults_of(text, root)
     assert fault.startswith("project.toml: blocks.neg.adjust: 'condition' is the group as well")
+
+
+def run_faults(root, adjust, run_columns, kinds="{}"):
+    text = f"[samples]\nkinds = {kinds}\n" + BLOCKS + f"runs = 'source/genes.tsv'\nadjust = ['{adjust}']"
+    return cross_check(parse_settings(text), SHEET, root, run_columns)
+
+
+def test_a_blocks_nuisance_may_be_a_column_of_its_run_sheet(root):
+    own = {"neg": ["order", "batch", "column_age"]}
+    assert run_faults(root, "column_age", own, '{ column_age = "number" }') == []
+    [fault] = run_faults(root, "columnage", own)
+    assert fault.startswith(
+        "project.toml: blocks.neg.adjust: there is no column of samples.tsv or the run sheet 'columnage'; allowed: "
+        "'condition', 'age', 'batch', 'donor', 'order', 'column_age'; did you mean 'column_age'?"
+    )
+    other = run_faults(root, "age", {"pos": ["lane"]}, '{ lane = "classes" }')
+    assert other == ["project.toml: samples.kinds.lane: no adjust names this column; allowed: 'age'"]
+
+
+def test_columns_of_a_run_sheet_that_was_not_read_are_no_faults(root):
+    assert run_faults(root, "lane", None, '{ lane = "classes" }') == []
+    assert len(run_faults(root, "lane", None, '{ plate = "classes" }')) == 1
 
 
 def test_all_faults_come_in_one_go(root):

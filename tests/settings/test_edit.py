@@ -297,3 +297,10 @@ def test_any_block_is_removed_and_all_other_lines_stay(text):
         assert data.pop("blocks", {}) == expected
         assert data == {key: value for key, value in before.items() if key != "blocks"}
         assert lines_kept(after, text)
+
+
+def test_a_list_of_tables_is_written_on_one_line():
+    entries = {"file": "source/a.tsv", "swap": [{"samples": ["S1", "S2"], "reason": "labels"}]}
+    text = add_block(new_project("x"), "a", entries)
+    assert '\nswap = [{samples = ["S1", "S2"], reason = "labels"}]\n' in text
+    assert tomllib.loads(text)["blocks"]["a"] == entries

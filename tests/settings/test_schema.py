@@ -32,9 +32,12 @@ layer = "transcripts"
 values = "counts"
 samples_in = "columns"
 sheet = "Table S2"
+names = "source/transcripts_names.tsv"
+runs = "source/transcripts_runs.tsv"
 annotations = "source/genes.tsv"
 adjust = ["plate"]
 exclude = { S08 = "low yield" }
+swap = [{ samples = ["S03", "S31"], reason = "labels exchanged" }, { samples = ["a", "b", "c"], reason = "?" }]
 [blocks.lipids_pos]
 file = "source/lipids.h5ad"
 array = "X"
@@ -55,6 +58,8 @@ fdr = 0.1
 select = "total"
 minimum_r = 0.3
 maximum_edges = 10
+[check]
+accept = { "outlier-metabolites-S12" = "haemolysed, kept on purpose" }
 """
 
 
@@ -123,7 +128,7 @@ ANALYSIS = "[analyses.a]\nblocks = 'all'\n"
 FAULTS = [
     ("format = 2", "format: is 2: a newer version of this program wrote it; allowed: 1"),
     ("format = 0", "format: 0 is not allowed"),
-    ("formt = 1", "formt: unknown key; allowed: analyses, blocks, format, samples, study; did you mean 'format'?"),
+    ("formt = 1", "formt: unknown key; allowed: analyses, blocks, check, format, samples, study; did you mean"),
     ("[analysis.main]", "did you mean 'analyses'?"),
     ("[study]\ntitle = 3", "study.title: must be a text in quotes, got 3"),
     ("[study]\ntitle = 2026-01-02", "study.title: must be a text in quotes, got datetime.date(2026, 1, 2)"),
@@ -139,9 +144,18 @@ FAULTS = [
     ("[samples]\norder = { c = ['a', 'a'] }", "samples.order.c: names 'a' twice"),
     ("[samples]\ntime = 'day'", "samples.time: unknown key"),
     ("[samples]\nlevel = 'visits'", "samples.level: unknown key"),
-    (BLOCK + "runs = 'source/r.tsv'", "blocks.a.runs: unknown key"),
-    (BLOCK + "names = 'source/n.tsv'", "blocks.a.names: unknown key"),
-    (BLOCK + "swap = []", "blocks.a.swap: unknown key"),
+    (BLOCK + "runs = ''", "blocks.a.runs: is empty; allowed: some text"),
+    (BLOCK.replace("log", "mixed") + "runs = 'source/r.tsv'", "blocks.a.runs: is for tables of numbers"),
+    (BLOCK + "names = 1", "blocks.a.names: must be a text in quotes, got 1"),
+    (BLOCK + "swap = { samples = ['a', 'b'] }", "blocks.a.swap: must be a list, like [{ samples = ["),
+    (BLOCK + "swap = [['a', 'b']]", "blocks.a.swap, item 1: must be a table of keys"),
+    (BLOCK + "swap = [{ samples = ['a', 'b'] }]", "blocks.a.swap, item 1.reason: is missing; add a line"),
+    (BLOCK + "swap = [{ samples = ['a'], reason = 'r' }]", "blocks.a.swap, item 1.samples: names 1 sample; allowed"),
+    (BLOCK + "swap = [{ samples = ['a', 'a'], reason = 'r' }]", "blocks.a.swap, item 1.samples: names 'a' twice"),
+    (
+        BLOCK + "swap = [{ samples = ['a', 'b'], reason = 'r', why = 's' }]",
+        "blocks.a.swap, item 1.why: unknown key; allowed: reason, samples",
+    ),
     (BLOCK + "decimal = '.'", "blocks.a.decimal: unknown key"),
     (BLOCK + "[blocks.a.prepare]", "blocks.a.prepare: unknown key"),
     (BLOCK + "sample_in = 'rows'", "did you mean 'samples_in'?"),
@@ -180,7 +194,9 @@ FAULTS = [
     (ANALYSIS + "network = { stability = 100 }", "analyses.a.network.stability: unknown key"),
     (ANALYSIS + "network = { remove_private = true }", "analyses.a.network.remove_private: unknown key"),
     (ANALYSIS + "pathways = {}", "analyses.a.pathways: unknown key"),
-    ("[check]\naccept = {}", "check: unknown key"),
+    ("[check]\naccept = { outlier-S1 = '' }", "check.accept.outlier-S1: is empty; allowed: some text"),
+    ("[check]\naccept = ['outlier-S1']", "check.accept: must be a table, like { NAME = VALUE }"),
+    ("[check]\naccpt = {}", "check.accpt: unknown key; allowed: accept; did you mean 'accept'?"),
 ]  # fmt: skip
 
 

@@ -21,7 +21,13 @@ _SHOWN = 12
 """Allowed names that a fault lists at most; a sheet may have hundreds of samples."""
 
 
-def cross_check(settings: Settings, sheet: pd.DataFrame, root: Path) -> list[str]:
+RunColumns = Mapping[str, Sequence[str]]
+"""For a block with a run sheet, the run sheet's columns."""
+
+
+def cross_check(
+    settings: Settings, sheet: pd.DataFrame, root: Path, run_columns: RunColumns | None = None
+) -> list[str]:
     """Return every fault of the settings against what they name, a line each; an empty list is none.
 
     Parameters
@@ -31,17 +37,27 @@ def cross_check(settings: Settings, sheet: pd.DataFrame, root: Path) -> list[str
         The sample sheet: one row per sample, named by the index (whose name is the id column).
     root : Path
         The project's directory.
+    run_columns : mapping of str to sequence of str, optional
+        For blocks with a run sheet, its columns: a block's ``adjust`` may name them too. The columns of a run
+        sheet that is not given here are not known, and what may be one of them is no fault.
 
     Notes
     -----
     Looked at: columns of the sheet (``group``, ``subject``, ``adjust``, ``kinds``, ``order``, a block's
-    ``adjust``), levels in ``order``, excluded samples, blocks and layers of an analysis that lists its blocks,
-    and files. An analysis over ``"all"`` blocks is possible or not as blocks come and go: no fault of the settings.
+    ``adjust``), levels in ``order``, excluded and swapped samples, blocks and layers of an analysis that lists
+    its blocks, and files. An analysis over ``"all"`` blocks is possible or not as blocks come and go: no fault
+    of the settings.
     """
     samples, columns = _samples_of(settings, sheet), list(map(str, sheet.columns))
+    known = {} if run_columns is None else run_columns
     faults = list(_sample_faults(settings, sheet, samples, columns))
+    faults += _kind_faults(settings, columns, known)
     for name, block in settings.blocks.items():
-        faults += _block_faults(settings, name, block, samples, columns, root)
+        faults += _block_faults(settings, name, samples, root)
+        if block.runs is None or name in known:
+            faults += _block_adjust_faults(
+                settings, name, list(dict.fromkeys([*columns, *known.get(name, ())]))
+            )
     for name in settings.analyses:
         faults += _analysis_faults(settings, name)
     return faults
@@ -73,20 +89,23 @@ def _sample_faults(
         for name in names:
             yield from _column_faults(("samples", part), name, settings, columns)
     yield from _part_faults(settings)
-    yield from _kind_faults(settings, columns)
     yield from _order_faults(settings, sheet, samples, columns)
     yield from _excluded_faults(("samples", "exclude"), chosen.exclude, samples)
 
 
 def _column_faults(
-    key: tuple[str, ...], name: str, settings: Settings, columns: Sequence[str]
+    key: tuple[str, ...],
+    name: str,
+    settings: Settings,
+    columns: Sequence[str],
+    what: str = "column of samples.tsv",
 ) -> Iterator[str]:
     if name == settings.samples.id:
         yield _fault(
             key, f"{name!r} is the column of the sample's name; allowed: another column of samples.tsv"
         )
     elif name not in columns:
-        yield _fault(key, _unknown(name, columns, "column of samples.tsv"))
+        yield _fault(key, _unknown(name, columns, what))
 
 
 def _part_faults(settings: Settings) -> Iterator[str]:
@@ -105,10 +124,13 @@ def _part_faults(settings: Settings) -> Iterator[str]:
         )
 
 
-def _kind_faults(settings: Settings, columns: Sequence[str]) -> Iterator[str]:
+def _kind_faults(settings: Settings, columns: Sequence[str], run_columns: RunColumns) -> Iterator[str]:
     used = [*settings.samples.adjust, *(name for block in settings.blocks.values() for name in block.adjust)]
+    of_runs = {name for own in run_columns.values() for name in own}
+    unknown = [block for name, block in settings.blocks.items() if block.runs and name not in run_columns]
+    of_runs.update(name for block in unknown for name in block.adjust)
     for name in settings.samples.kinds:
-        if name not in columns:
+        if name not in columns and name not in of_runs:
             yield _fault(("samples", "kinds", name), _unknown(name, columns, "column of samples.tsv"))
         elif name not in used:
             told = f"no adjust names this column; allowed: {_listed(used)}{hint(name, used)}"
@@ -160,24 +182,36 @@ def _excluded_faults(
         yield _fault(key, "leaves out every sample; take some out of it")
 
 
-def _block_faults(
-    settings: Settings,
-    name: str,
-    block: BlockSettings,
-    samples: Sequence[str],
-    columns: Sequence[str],
-    root: Path,
-) -> Iterator[str]:
-    key = ("blocks", name)
-    for entry, file in (("file", block.file), ("annotations", block.annotations)):
+def _block_faults(settings: Settings, name: str, samples: Sequence[str], root: Path) -> Iterator[str]:
+    key, block = ("blocks", name), settings.blocks[name]
+    for entry in ("file", "annotations", "names", "runs"):
+        file = getattr(block, entry)
         told = None if file is None else file_fault(root, file)
         if told is not None:
             yield _fault((*key, entry), told)
-    for column in block.adjust:
-        yield from _column_faults((*key, "adjust"), column, settings, columns)
-        if column in settings.samples.group:
-            yield _fault((*key, "adjust"), f"{column!r} is the group as well; take it out of one of them")
     yield from _excluded_faults((*key, "exclude"), block.exclude, samples)
+    yield from _swap_faults((*key, "swap"), block, samples)
+
+
+def _block_adjust_faults(settings: Settings, name: str, columns: Sequence[str]) -> Iterator[str]:
+    key, block = ("blocks", name, "adjust"), settings.blocks[name]
+    what = "column of samples.tsv" if block.runs is None else "column of samples.tsv or the run sheet"
+    for column in block.adjust:
+        yield from _column_faults(key, column, settings, columns, what)
+        if column in settings.samples.group:
+            yield _fault(key, f"{column!r} is the group as well; take it out of one of them")
+
+
+def _swap_faults(key: tuple[str, ...], block: BlockSettings, samples: Sequence[str]) -> Iterator[str]:
+    named: dict[str, int] = {}
+    for place, swap in enumerate(block.swap):
+        for sample in swap.samples:
+            if sample not in samples:
+                yield _fault((*key, place, "samples"), _unknown(sample, samples, "sample of samples.tsv"))
+            elif sample in named:
+                told = f"{sample!r} is in item {named[sample] + 1} too; name each sample once: join the two chains"
+                yield _fault((*key, place, "samples"), told)
+            named.setdefault(sample, place)
 
 
 def file_fault(root: Path, file: str) -> str | None:
