@@ -1,0 +1,24 @@
+"""The first look: each block on its own and every two blocks beside each other, in numbers and in words."""
+
+from workbench.look.between import BetweenLook, PairLook, Restriction, between_reading, look_between
+from workbench.look.block import BlockLook, SampleFlag, look_at_block
+from workbench.look.reading import block_reading
+from workbench.look.tables import between_table, look_tables
+from workbench.look.view import BlockView, Levels, levels_of
+
+__all__ = [
+    "BetweenLook",
+    "BlockLook",
+    "BlockView",
+    "Levels",
+    "PairLook",
+    "Restriction",
+    "SampleFlag",
+    "between_reading",
+    "between_table",
+    "block_reading",
+    "levels_of",
+    "look_at_block",
+    "look_between",
+    "look_tables",
+]
