@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 
 import numpy as np
 
-from workbench.prepare import MeasuredTable
+from workbench.prepare import MeasuredTable, RunTable
 from workbench.prepare.tables import Levels, StepTable
 
 KINDS = ("counts", "intensities", "log", "continuous", "mixed")
@@ -97,3 +98,34 @@ BUILDERS: dict[str, Callable[..., MeasuredTable]] = {
     "continuous": continuous,
     "mixed": mixed,
 }
+
+
+def with_runs(
+    table: MeasuredTable,
+    values: np.ndarray | None = None,
+    copies: int = 1,
+    pools: int = 0,
+    blanks: int = 0,
+    controls: np.ndarray | None = None,
+) -> MeasuredTable:
+    """Return the table with a run sheet: each sample run ``copies`` times, then pools and blanks.
+
+    ``values`` are those of the sample runs (all samples once, then all again ...), ``controls`` those of pools and
+    blanks; the order is the place in this list.
+    """
+    n = len(table.samples)
+    rows = np.tile(table.values, (copies, 1)) if values is None else values
+    extra = np.ones((pools + blanks, table.values.shape[1])) if controls is None else controls
+    names = [f"{name}_{copy}" for copy in range(copies) for name in table.samples]
+    names += [f"pool{k}" for k in range(pools)] + [f"blank{k}" for k in range(blanks)]
+    role = ("sample",) * (n * copies) + ("pool",) * pools + ("blank",) * blanks
+    runs = RunTable(
+        runs=tuple(names),
+        sample=table.samples * copies + ("",) * (pools + blanks),
+        role=role,
+        order=np.arange(len(names), dtype=float),
+        batch=("",) * len(names),
+        replicate=("",) * len(names),
+        values=np.vstack([rows, extra]),
+    )
+    return replace(table, runs=runs)

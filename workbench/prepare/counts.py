@@ -16,6 +16,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from workbench.errors import InputError
+from workbench.prepare.combining import CombineRuns
 from workbench.prepare.gaps import FillGaps
 from workbench.prepare.steps import (
     ENOUGH_REFERENCE,
@@ -25,6 +26,7 @@ from workbench.prepare.steps import (
     DropUnusable,
     FitContext,
     KeepFeatures,
+    Settled,
     Step,
     check_found,
     extremes,
@@ -42,7 +44,15 @@ PRIOR_COUNT = 3.0
 
 def count_steps() -> tuple[Step, ...]:
     """Return the steps for counts, in order."""
-    return (DropUnusable(), CountFilter(), SizeFactors(), LogOfCounts(), FillGaps(censored=False), DropFlat())
+    return (
+        CombineRuns("sum"),
+        DropUnusable(),
+        CountFilter(),
+        SizeFactors(),
+        LogOfCounts(),
+        FillGaps(censored=False),
+        DropFlat(),
+    )
 
 
 def check_counts(table: MeasuredTable) -> None:
@@ -53,12 +63,7 @@ def check_counts(table: MeasuredTable) -> None:
     InputError
         Naming the first negative cell, or the empty samples.
     """
-    negative = table.values < 0
-    if negative.any():
-        raise InputError(
-            f"{int(negative.sum())} counts are negative, the first at {table.first_cell(negative)}; "
-            "counts are 0 or more: declare the values as `log` or `continuous` if that is what they are"
-        )
+    check_count_cells(table)
     empty = np.flatnonzero((table.values > 0).sum(axis=1) == 0)
     if empty.size and table.features:
         names = [table.samples[row] for row in empty]
@@ -68,8 +73,24 @@ def check_counts(table: MeasuredTable) -> None:
         )
 
 
+def check_count_cells(table: MeasuredTable) -> None:
+    """Refuse negative counts.
+
+    Raises
+    ------
+    InputError
+        Naming the first negative cell.
+    """
+    negative = table.values < 0
+    if negative.any():
+        raise InputError(
+            f"{int(negative.sum())} counts are negative, the first at {table.first_cell(negative)}; "
+            "counts are 0 or more: declare the values as `log` or `continuous` if that is what they are"
+        )
+
+
 @dataclass(frozen=True)
-class CountFilter:
+class CountFilter(Settled):
     """Drops features that too few samples show clearly.
 
     Kept are features with a count of ``smallest_count`` or more in at least as many samples as the
@@ -160,7 +181,7 @@ def median_of_ratios(counts: Matrix, reference: Matrix, *, positive_only: bool =
 
 
 @dataclass(frozen=True)
-class SizeFactors:
+class SizeFactors(Settled):
     """Divides each sample's counts by its size factor.
 
     The reference is made from the features without a zero in the training samples. Where fewer than
@@ -240,7 +261,7 @@ class FittedSizeFactors:
 
 
 @dataclass(frozen=True)
-class LogOfCounts:
+class LogOfCounts(Settled):
     """Takes log2 after adding a prior count in proportion to the library size.
 
     With size factor s_j the prior of sample j is c s_j, so that log2((k_ij + c s_j) / s_j)

@@ -10,14 +10,14 @@ from workbench.prepare.censoring import Censoring, find_censoring, no_censoring
 from workbench.prepare.draws import uniform_table
 from workbench.prepare.low_tails import LowTails, fit_low_tails
 from workbench.prepare.neighbours import Donors, neighbour_count
-from workbench.prepare.steps import FitContext
+from workbench.prepare.steps import FitContext, Settled
 from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable
 
 REFERENCES = "Troyanskaya et al. 2001, Bioinformatics 17:520; Tobin 1958, Econometrica 26:24"
 
 
 @dataclass(frozen=True)
-class FillGaps:
+class FillGaps(Settled):
     """Fills every gap and marks it in the mask.
 
     Parameters

@@ -12,6 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from workbench.errors import InputError
+from workbench.prepare.combining import CombineRuns
 from workbench.prepare.gaps import FillGaps
 from workbench.prepare.steps import (
     ENOUGH_REFERENCE,
@@ -20,6 +21,7 @@ from workbench.prepare.steps import (
     DropRarelySeen,
     DropUnusable,
     FitContext,
+    Settled,
     Step,
     check_found,
     extremes,
@@ -39,6 +41,7 @@ def intensity_steps() -> tuple[Step, ...]:
         DropRarelySeen(),
         Quotients(),
         LogOfIntensities(),
+        CombineRuns(),
         FillGaps(censored=True),
         DropFlat(),
     )
@@ -61,7 +64,7 @@ def check_intensities(table: MeasuredTable) -> None:
 
 
 @dataclass(frozen=True)
-class ZerosAreMissing:
+class ZerosAreMissing(Settled):
     """Turns zero into missing: the instrument saw nothing, which is not an amount of nothing."""
 
     step: str = "zeros"
@@ -124,7 +127,7 @@ def median_quotients(intensities: Matrix, reference: Matrix) -> Matrix:
 
 
 @dataclass(frozen=True)
-class Quotients:
+class Quotients(Settled):
     """Divides each sample by its dilution, found by quotients to a reference.
 
     The reference holds the features seen in the most training samples: those seen in all of them
@@ -142,7 +145,7 @@ class Quotients:
         seen = (~np.isnan(table.values)).sum(axis=0)
         used, cut = reference_features(seen, self.enough, self.fewest)
         reference = reference_profile(table.values[:, used]) if used.any() else np.empty(0)
-        return FittedQuotients(self, used, reference, cut, len(table.samples))
+        return FittedQuotients(self, used, reference, cut, len(table.samples), table.row_word)
 
 
 @dataclass(frozen=True)
@@ -154,6 +157,7 @@ class FittedQuotients:
     reference: Matrix
     cut: int
     n_training: int
+    row_word: str
 
     def factors(self, table: StepTable) -> Matrix:
         """Return the dilution of each sample, 1 where there is no reference.
@@ -180,7 +184,7 @@ class FittedQuotients:
         if used:
             sentence = (
                 f"values divided by the sample's median quotient to the reference profile of {used:,} "
-                f"features seen in at least {self.cut} of {self.n_training} samples"
+                f"features seen in at least {self.cut} of {self.n_training} {self.row_word}"
             )
         else:
             sentence = f"not normalised: fewer than {self.settings.fewest} features; values taken as they are"
@@ -188,7 +192,7 @@ class FittedQuotients:
 
 
 @dataclass(frozen=True)
-class LogOfIntensities:
+class LogOfIntensities(Settled):
     """Takes log2."""
 
     step: str = "logarithm"

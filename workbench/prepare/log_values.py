@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from workbench.prepare.combining import CombineRuns
 from workbench.prepare.gaps import FillGaps
 from workbench.prepare.steps import (
     ENOUGH_REFERENCE,
@@ -14,6 +15,7 @@ from workbench.prepare.steps import (
     DropRarelySeen,
     DropUnusable,
     FitContext,
+    Settled,
     Step,
     check_found,
     column_range,
@@ -33,13 +35,14 @@ def log_steps() -> tuple[Step, ...]:
         LookAtScale(),
         DropRarelySeen(),
         MedianCentring(),
+        CombineRuns(),
         FillGaps(censored=True),
         DropFlat(),
     )
 
 
 @dataclass(frozen=True)
-class LookAtScale:
+class LookAtScale(Settled):
     """Says so when the values do not look like logarithms; changes nothing.
 
     They do not when a value is beyond 100 in size (2^100 is more than any instrument counts), or when
@@ -84,7 +87,7 @@ class SeenScale:
 
 
 @dataclass(frozen=True)
-class MedianCentring:
+class MedianCentring(Settled):
     """Shifts each sample so that its median is the training samples' typical one.
 
     The median is taken over the features seen in the most training samples (see ``most_seen``), so
@@ -103,7 +106,7 @@ class MedianCentring:
         used, cut = reference_features(seen, self.enough, self.fewest)
         medians = median_rows(table.values[:, used], ~np.isnan(table.values[:, used]))
         typical = float(np.median(medians[~np.isnan(medians)])) if used.any() else 0.0
-        return FittedCentring(self, used, typical, cut, len(table.samples))
+        return FittedCentring(self, used, typical, cut, len(table.samples), table.row_word)
 
 
 @dataclass(frozen=True)
@@ -115,6 +118,7 @@ class FittedCentring:
     typical: float
     cut: int
     n_training: int
+    row_word: str
 
     def shifts(self, table: StepTable) -> Matrix:
         """Return what is taken from each sample, 0 where there are too few features.
@@ -144,6 +148,6 @@ class FittedCentring:
         else:
             sentence = (
                 f"each sample shifted to a median of {self.typical:.4g} over {used:,} features seen in "
-                f"at least {self.cut} of {self.n_training} samples"
+                f"at least {self.cut} of {self.n_training} {self.row_word}"
             )
         return StepAccount(self.settings.step, sentence, numbers)

@@ -14,7 +14,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from workbench.errors import InputError
-from workbench.prepare.steps import DropFlat, DropRarelySeen, DropUnusable, FitContext, Step
+from workbench.prepare.steps import DropFlat, DropRarelySeen, DropUnusable, FitContext, Settled, Step
 from workbench.prepare.tables import Matrix, MeasuredTable, StepAccount, StepTable, some
 
 SMALLEST_LEVEL = 2
@@ -80,7 +80,7 @@ class TextCode:
 
 
 @dataclass(frozen=True)
-class TextToNumbers:
+class TextToNumbers(Settled):
     """Turns text into 0 / 1 columns; levels of fewer than two training samples make no column."""
 
     smallest: int = SMALLEST_LEVEL
@@ -185,7 +185,7 @@ class FittedText:
 
 
 @dataclass(frozen=True)
-class TypicalValues:
+class TypicalValues(Settled):
     """Fills gaps so that they say nothing: the median of numbers, the share of ones of 0 / 1 columns."""
 
     step: str = "gaps"

@@ -20,7 +20,7 @@ import numpy as np
 
 from workbench.errors import InputError
 from workbench.prepare.continuous import continuous_steps
-from workbench.prepare.counts import check_counts, count_steps
+from workbench.prepare.counts import check_count_cells, check_counts, count_steps
 from workbench.prepare.intensities import check_intensities, intensity_steps
 from workbench.prepare.log_values import log_steps
 from workbench.prepare.mixed import check_mixed, mixed_steps
@@ -36,12 +36,17 @@ def _anything(table: MeasuredTable) -> None:
     """Accept any finite number."""
 
 
-_KINDS: dict[str, tuple[Callable[[], tuple[Step, ...]], Check]] = {
-    "counts": (count_steps, check_counts),
-    "intensities": (intensity_steps, check_intensities),
-    "log": (log_steps, _anything),
-    "continuous": (continuous_steps, _anything),
-    "mixed": (mixed_steps, check_mixed),
+def _no_runs(table: MeasuredTable) -> None:  # noqa: ARG001
+    """Refuse any run: text has no mean."""
+    raise InputError("a run sheet for `mixed` values: text of several runs cannot be averaged; leave it out")
+
+
+_KINDS: dict[str, tuple[Callable[[], tuple[Step, ...]], Check, Check]] = {
+    "counts": (count_steps, check_counts, check_count_cells),
+    "intensities": (intensity_steps, check_intensities, check_intensities),
+    "log": (log_steps, _anything, _anything),
+    "continuous": (continuous_steps, _anything, _anything),
+    "mixed": (mixed_steps, check_mixed, _no_runs),
 }
 
 
@@ -68,8 +73,8 @@ def recipe_for(layer: str, values: str) -> Recipe:
             "counts of microbes are shares of a whole and need log-ratios, which this version does not "
             "compute; deliver centred log-ratios and declare values = `continuous`"
         )
-    steps, check = _KINDS[values]
-    return Recipe(layer, values, steps(), check)
+    steps, check, check_runs = _KINDS[values]
+    return Recipe(layer, values, steps(), check, check_runs)
 
 
 @dataclass(frozen=True)
@@ -82,14 +87,15 @@ class Recipe:
         What the recipe is for.
     steps : tuple of Step
         In order.
-    check : callable
-        Refuses tables that cannot be of this kind.
+    check, check_runs : callable
+        Refuse tables, and runs as the rows of a table, that cannot be of this kind.
     """
 
     layer: str
     values: str
     steps: tuple[Step, ...]
     check: Check
+    check_runs: Check
 
     def explain(self) -> tuple[str, ...]:
         """Return one line per step: what it would do."""
@@ -116,14 +122,18 @@ class Recipe:
         self._check_fit(table, smallest_group)
         context = FitContext(smallest_group, seed)
         current, fitted, account = StepTable.of(table), list[FittedStep](), list[StepAccount]()
-        for step in self.steps:
+        for step in self.steps_for(table):
             learnt = step.fit(current, context)
             current, done = learnt.transform(current)
             fitted.append(learnt)
             account.append(done)
             _check_features_left(current, account, len(table.features))
         prepared = _prepared(current, tuple(account))
-        return FittedRecipe(self, table.features, tuple(fitted), prepared)
+        return FittedRecipe(self, table.features, tuple(fitted), prepared, table.runs is not None)
+
+    def steps_for(self, table: MeasuredTable) -> tuple[Step, ...]:
+        """Return the steps that apply to a table: those about runs, pools and blanks need a run sheet."""
+        return tuple(step for step in self.steps if table.runs is not None or not step.runs_only)
 
     def fit_transform(self, table: MeasuredTable, *, smallest_group: int | None, seed: int) -> PreparedTable:
         """Return the training samples prepared; the same as ``fit(...).prepared``."""
@@ -154,12 +164,15 @@ class FittedRecipe:
         In order.
     prepared : PreparedTable
         The training samples, prepared.
+    with_runs : bool
+        Whether it was learnt from runs.
     """
 
     recipe: Recipe
     features: tuple[str, ...]
     steps: tuple[FittedStep, ...]
     prepared: PreparedTable
+    with_runs: bool = False
 
     def transform(self, table: MeasuredTable) -> PreparedTable:
         """Return samples prepared by what was learnt; each as if it were alone.
@@ -170,8 +183,14 @@ class FittedRecipe:
         Raises
         ------
         InputError
-            When a feature of the training table is not there, or the table is not of this kind.
+            When a feature of the training table is not there, the table is not of this kind, or one of the two
+        tables has a run sheet and the other has none.
         """
+        if self.with_runs != (table.runs is not None):
+            has = ("no run sheet", "one") if self.with_runs else ("a run sheet", "none")
+            raise InputError(
+                f"this table has {has[0]}, the preparation was learnt from a table with {has[1]}; give both or none"
+            )
         table = _aligned(table, self.features)
         _check_kind(self.recipe, table)
         current, account = StepTable.of(table), list[StepAccount]()
@@ -201,6 +220,8 @@ def _check_kind(recipe: Recipe, table: MeasuredTable) -> None:
             f"text features in a block of `{recipe.values}`: {some(text)}; declare values = `mixed`"
         )
     recipe.check(table)
+    if table.runs is not None:
+        recipe.check_runs(table.run_rows())
 
 
 def _check_features_left(table: StepTable, account: list[StepAccount], measured: int) -> None:
@@ -230,4 +251,5 @@ def _aligned(table: MeasuredTable, features: tuple[str, ...]) -> MeasuredTable:
         )
     columns = [place[name] for name in features]
     levels = tuple(table.feature_levels[column] for column in columns)
-    return MeasuredTable(table.values[:, columns], table.samples, features, levels)
+    runs = None if table.runs is None else table.runs.with_columns(columns)
+    return MeasuredTable(table.values[:, columns], table.samples, features, levels, runs)

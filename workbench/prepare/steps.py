@@ -8,7 +8,7 @@ never depends on the samples beside it.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Protocol
+from typing import ClassVar, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -51,13 +51,41 @@ class Step(Protocol):
     """A rule that is yet to learn from training samples."""
 
     @property
+    def step(self) -> str:
+        """Name of the step."""
+        ...
+
+    @property
     def rule(self) -> str:
         """What the step does, in one line."""
+        ...
+
+    @property
+    def why(self) -> str:
+        """Why it is done, and done this way."""
+        ...
+
+    @property
+    def keys(self) -> tuple[str, ...]:
+        """Keys of ``[blocks.NAME.prepare]`` that change it."""
+        ...
+
+    @property
+    def runs_only(self) -> bool:
+        """Whether it needs runs, pools or blanks; left out without a run sheet."""
         ...
 
     def fit(self, table: StepTable, context: FitContext) -> FittedStep:
         """Return the step as learnt from these samples."""
         ...
+
+
+class Settled:
+    """What most steps have in common: no settings of their own, no need of a run sheet."""
+
+    why: ClassVar[str] = ""
+    keys: ClassVar[tuple[str, ...]] = ()
+    runs_only: ClassVar[bool] = False
 
 
 @dataclass(frozen=True)
@@ -147,7 +175,7 @@ def reference_features(seen: NDArray[np.int_], enough: int, fewest: int) -> tupl
 
 
 @dataclass(frozen=True)
-class DropUnusable:
+class DropUnusable(Settled):
     """Drops features without any value and features with one value only."""
 
     step: str = "unusable features"
@@ -170,7 +198,7 @@ def _in_words(value: float, levels: tuple[str, ...] | None) -> str:
 
 
 @dataclass(frozen=True)
-class DropRarelySeen:
+class DropRarelySeen(Settled):
     """Drops features with a value in too few samples.
 
     Kept are features seen in at least ``share`` of the smallest group's size (of all samples when
@@ -188,10 +216,9 @@ class DropRarelySeen:
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:
         """Return the step; numbers of samples are rounded up."""
-        n = len(table.samples)
+        seen, n = table.samples_with(~np.isnan(table.values))
         size = n if context.smallest_group is None else context.smallest_group
         needed = max(int(np.ceil(self.share * size - 1e-9)), min(FEWEST_SAMPLES, n))
-        seen = n - np.isnan(table.values).sum(axis=0)
         keep = seen >= needed
         reasons = {
             table.features[i]: f"seen in {seen[i]} of {n} samples; {needed} needed"
@@ -202,7 +229,7 @@ class DropRarelySeen:
 
 
 @dataclass(frozen=True)
-class DropFlat:
+class DropFlat(Settled):
     """Drops features that preparation has left without variation.
 
     Flat means: the range over the training samples is at most 1e-9 times the largest absolute value.

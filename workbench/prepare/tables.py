@@ -10,23 +10,28 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workbench.errors import InputError
+from workbench.prepare.runs import Runs, RunTable
+from workbench.prepare.words import some
+
+__all__ = [
+    "LARGEST",
+    "Levels",
+    "Mask",
+    "Matrix",
+    "MeasuredTable",
+    "PreparedTable",
+    "RunTable",
+    "Runs",
+    "StepAccount",
+    "StepTable",
+    "some",
+]
 
 Matrix = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 LARGEST = 1e100
 
 Levels = tuple[tuple[str, ...] | None, ...]
-
-
-def some(names: Sequence[str], limit: int = 3) -> str:
-    """Return the first few names, quoted, for a message.
-
-    >>> some(["S1", "S2", "S3", "S4"])
-    "'S1', 'S2', 'S3' and 1 more"
-    """
-    shown = ", ".join(f"'{name}'" for name in names[:limit])
-    more = len(names) - limit
-    return f"{shown} and {more} more" if more > 0 else shown
 
 
 @dataclass(frozen=True, eq=False)
@@ -42,6 +47,9 @@ class MeasuredTable:
         Names of the rows and of the columns, each name once.
     levels : tuple, optional
         For every feature None (a number) or the names of its levels. None: all are numbers.
+    runs : RunTable, optional
+        The assay's runs, where there is a run sheet: those of the samples (at least one each), pools and
+        blanks. A recipe then works on the runs, and ``values`` is what they were combined to at delivery.
 
     Raises
     ------
@@ -53,6 +61,7 @@ class MeasuredTable:
     samples: tuple[str, ...]
     features: tuple[str, ...]
     levels: Levels | None = None
+    runs: RunTable | None = None
 
     def __post_init__(self) -> None:
         _check_shape(self.values, self.samples, self.features)
@@ -61,6 +70,8 @@ class MeasuredTable:
         if self.levels is not None and len(self.levels) != len(self.features):
             raise InputError(f"levels are given for {len(self.levels)} of {len(self.features)} features")
         _check_finite(self)
+        if self.runs is not None:
+            _check_runs(self.runs, self)
 
     @property
     def feature_levels(self) -> Levels:
@@ -74,9 +85,16 @@ class MeasuredTable:
         return f"feature '{self.features[column]}', sample '{self.samples[row]}': {value:g}"
 
     def take(self, rows: Sequence[int] | NDArray[np.intp]) -> MeasuredTable:
-        """Return the table of some samples, in the order asked for."""
+        """Return the table of some samples, in the order asked for; all pools and blanks stay."""
         names = tuple(self.samples[row] for row in rows)
-        return replace(self, values=self.values[np.asarray(rows, dtype=np.intp)], samples=names)
+        runs = None if self.runs is None else self.runs.for_samples(names)
+        return replace(self, values=self.values[np.asarray(rows, dtype=np.intp)], samples=names, runs=runs)
+
+    def run_rows(self) -> MeasuredTable:
+        """Return the runs as rows of a table, pools and blanks among them; without a run sheet the table itself."""
+        if self.runs is None:
+            return self
+        return MeasuredTable(self.runs.values, self.runs.runs, self.features, self.levels)
 
 
 @dataclass(frozen=True)
@@ -140,8 +158,10 @@ class PreparedTable:
 class StepTable:
     """The table on its way through the steps; steps return a new one and never write into it.
 
-    ``scale`` is what the steps so far have taken from each sample's logarithms (log2 of its size factor or
-    dilution, the shift of its median), shape (n_samples,); zero where nothing was.
+    Before the runs of a sample are combined, the rows are runs of samples: ``samples`` holds the names of the
+    runs, ``runs`` what is known of them, ``controls`` the pools and blanks. ``scale`` is what the steps so far
+    have taken from each row's logarithms (log2 of its size factor or dilution, the shift of its median), shape
+    (n_samples,); zero where nothing was.
     """
 
     values: Matrix
@@ -151,14 +171,37 @@ class StepTable:
     origins: tuple[str, ...]
     levels: Levels
     scale: Matrix
+    runs: Runs | None = None
+    controls: RunTable | None = None
 
     @classmethod
     def of(cls, table: MeasuredTable) -> StepTable:
-        """Return the start: measured values, nothing imputed."""
-        values = np.asarray(table.values, dtype=np.float64)
-        imputed = np.zeros(values.shape, dtype=bool)
-        names, scale = table.features, np.zeros(len(table.samples))
-        return cls(values, imputed, table.samples, names, names, table.feature_levels, scale)
+        """Return the start: measured values, nothing imputed; runs as rows where there are any."""
+        rows: tuple[str, ...]
+        if table.runs is None:
+            runs, controls, rows, values = None, None, table.samples, table.values
+        else:
+            runs = table.runs.take(table.runs.rows_of(table.samples))
+            controls = table.runs.take(table.runs.rows_as("pool", "blank"))
+            rows, values = runs.runs, runs.values
+        values = np.asarray(values, dtype=np.float64)
+        imputed, scale = np.zeros(values.shape, dtype=bool), np.zeros(len(rows))
+        names, levels = table.features, table.feature_levels
+        return cls(values, imputed, rows, names, names, levels, scale, runs, controls)
+
+    @property
+    def row_word(self) -> str:
+        """What a row is, for sentences."""
+        return "samples" if self.runs is None else "runs"
+
+    def samples_with(self, cells: Mask) -> tuple[NDArray[np.int_], int]:
+        """Return in how many samples each feature has a true cell (in any of the sample's runs), of how many."""
+        if self.runs is None:
+            return cells.sum(axis=0), len(self.samples)
+        names = self.runs.sample
+        starts = [row for row, name in enumerate(names) if row == 0 or name != names[row - 1]]
+        by_sample = np.logical_or.reduceat(cells, starts, axis=0) if starts else cells
+        return by_sample.sum(axis=0), len(starts)
 
     def with_values(self, values: Matrix) -> StepTable:
         """Return the table with other values in the same cells."""
@@ -183,15 +226,18 @@ class StepTable:
             features=tuple(compress(self.features, mask)),
             origins=tuple(compress(self.origins, mask)),
             levels=tuple(compress(self.levels, mask)),
+            controls=None if self.controls is None else self.controls.with_columns(mask),
         )
 
 
-def _check_shape(values: Matrix, samples: tuple[str, ...], features: tuple[str, ...]) -> None:
+def _check_shape(
+    values: Matrix, samples: tuple[str, ...], features: tuple[str, ...], row: str = "sample"
+) -> None:
     expected = (len(samples), len(features))
     if np.shape(values) != expected:
         raise InputError(
-            f"the values have shape {np.shape(values)}, the names say {expected[0]} samples x "
-            f"{expected[1]} features; give one row per sample and one column per feature"
+            f"the values have shape {np.shape(values)}, the names say {expected[0]} {row}s x "
+            f"{expected[1]} features; give one row per {row} and one column per feature"
         )
 
 
@@ -209,3 +255,14 @@ def _check_finite(table: MeasuredTable) -> None:
             f"{int(beyond.sum())} values are infinite or beyond {LARGEST:g}, the first at {table.first_cell(beyond)}; "
             "leave the cell empty where nothing was measured"
         )
+
+
+def _check_runs(runs: RunTable, table: MeasuredTable) -> None:
+    _check_shape(runs.values, runs.runs, table.features, "run")
+    lacking = sorted(set(table.samples) - set(runs.sample))
+    if lacking:
+        raise InputError(
+            f"{len(lacking)} of {len(table.samples)} samples have no run: {some(lacking)}; add their runs to the "
+            "run sheet, or leave the samples out"
+        )
+    _check_finite(MeasuredTable(runs.values, runs.runs, table.features, table.levels))
