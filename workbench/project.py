@@ -15,6 +15,7 @@ from workbench.network import read_graphml
 from workbench.store import FileFault, ProjectPaths, check_all, check_file, find_project, read_table, settle
 from workbench.workflow import blocks as workflow_blocks
 from workbench.workflow import plan
+from workbench.workflow.checking import stored_findings
 from workbench.workflow.create import DEFAULT_TEMPLATE, create_project
 from workbench.workflow.reporting import SILENT, Reporter
 from workbench.workflow.samples import SheetAccount, SheetDelivery, add_samples
@@ -216,6 +217,11 @@ class Project:
     def status(self) -> Status:
         """Return what is done, what is stale, and the next command."""
         return status_of(self.state())
+
+    def check(self, *, reporter: Reporter = SILENT) -> list[dict[str, Any]]:
+        """Return the findings about the data, each with ``accepted`` (the reason, or None)."""
+        run_stages(self.paths, "check", plan.check_stages, reporter)
+        return stored_findings(self.state())
 
     def check_files(self) -> list[FileFault]:
         """Return the stored files that are not what the program wrote."""

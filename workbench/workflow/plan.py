@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from workbench.errors import InputError
 from workbench.workflow.analysis_view import blocks_of
 from workbench.workflow.canonical import has_canonical_pairs, integrating_stage
+from workbench.workflow.checking import checking_stage
 from workbench.workflow.looking import between_stage, looking_stage
 from workbench.workflow.networking import networking_stage
 from workbench.workflow.preparing import preparing_stage
@@ -16,12 +17,19 @@ from workbench.workflow.state import ProjectState
 
 
 def all_stages(state: ProjectState, analyses: Sequence[str] = ()) -> list[Stage]:
-    """Return every stage of the named analyses, or of the whole project when none is named."""
-    if analyses:
-        blocks = _blocks_of_all(state, analyses)
-    else:
-        analyses, blocks = list(state.settings.analyses), list(state.settings.blocks)
-    return [*look_stages(state, blocks), *_of_analyses(state, analyses, "integrate", "network")]
+    """Return every stage: of all blocks, the check, the look, and the named analyses or all of them."""
+    for name in analyses:
+        state.require_analysis(name)
+    chosen = list(analyses) or list(state.settings.analyses)
+    prepared, looked = block_stages(state), look_stages(state)
+    looks = [stage for stage in looked if stage.kind == "look"]
+    check = checking_stage(list(state.settings.blocks))
+    return [*prepared, check, *looks, *_of_analyses(state, chosen, "integrate", "network")]
+
+
+def check_stages(state: ProjectState) -> list[Stage]:
+    """Return the stages up to the findings about the data."""
+    return [*block_stages(state), checking_stage(list(state.settings.blocks))]
 
 
 def block_stages(state: ProjectState, names: Sequence[str] = ()) -> list[Stage]:

@@ -19,7 +19,8 @@ class Stage:
 
     ``inputs`` gives a hash for each thing that matters to the answer; ``work`` writes the files named in
     ``outputs`` through the change that it is handed, and returns the names of those that it wrote besides
-    (figures that these data allow).  ``needs`` names the stages that come before.
+    (figures that these data allow).  ``needs`` names the stages that come before; ``gate`` looks at the stage's
+    answer, fresh or not, and stops a command that has more stages to run.
     """
 
     kind: str
@@ -28,6 +29,7 @@ class Stage:
     outputs: tuple[str, ...]
     inputs: Callable[[ProjectState], dict[str, str]]
     work: Callable[[ProjectState, Change, Reporter], Sequence[str] | None]
+    gate: Callable[[ProjectState], None] | None = None
 
     @property
     def name(self) -> str:
@@ -95,9 +97,12 @@ def run_stages(
     with project_lock(paths.root, command):
         state = load_state(paths)
         with _journal(paths, command, outcome):
-            for stage in choose(state):
+            stages = choose(state)
+            for stage in stages:
                 _run_one(state, stage, outcome, reporter)
                 state = replace(state, manifest=read_manifest(paths.root))
+                if stage.gate is not None and stage is not stages[-1]:
+                    stage.gate(state)
     return outcome
 
 

@@ -8,6 +8,7 @@ import numpy as np
 from anndata import AnnData
 
 from workbench.prepare import MeasuredTable
+from workbench.prepare.runs import run_table
 from workbench.store import check_file, read_block
 from workbench.workflow.state import ProjectState
 
@@ -30,11 +31,16 @@ def table_of(adata: AnnData, without: dict[str, str]) -> MeasuredTable:
     levels = None
     if "levels" in adata.var:
         levels = tuple(tuple(json.loads(text)) if text else None for text in adata.var["levels"])
+    samples = tuple(str(adata.obs_names[row]) for row in keep)
+    runs = None
+    if "run_sheet" in adata.uns:
+        runs = run_table(adata.uns["run_sheet"], adata.uns["run_values"]).for_samples(samples)
     return MeasuredTable(
         values=np.asarray(adata.X, dtype=np.float64)[keep],
-        samples=tuple(str(adata.obs_names[row]) for row in keep),
+        samples=samples,
         features=tuple(map(str, adata.var_names)),
         levels=levels,
+        runs=runs,
     )
 
 

@@ -1,0 +1,118 @@
+"""The stage ``check``: findings about the data, and the gate that an unaccepted error closes."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Sequence
+from typing import Any
+
+import pandas as pd
+
+from workbench.checks import Finding, run_checks, study_data
+from workbench.errors import FindingsError
+from workbench.store import Change, check_file, json_bytes, read_block, table_bytes
+from workbench.workflow.fingerprints import block_header, columns_fingerprint, fingerprint
+from workbench.workflow.reporting import Reporter
+from workbench.workflow.stages import Stage
+from workbench.workflow.state import ProjectState
+from workbench.workflow.tables import measured_block
+
+VERSION = 1
+SEED = 20260101
+FOLDER = "results/check"
+RECORD = f"{FOLDER}/findings.json"
+SCHEMA_VERSION = 1
+
+
+def checking_stage(names: Sequence[str]) -> Stage:
+    """Return the stage that writes ``results/check/``, over all blocks of the project."""
+    return Stage(
+        kind="check",
+        subject="data",
+        needs=tuple(f"prepare:{name}" for name in names),
+        outputs=(f"{FOLDER}/findings.tsv", RECORD),
+        inputs=lambda state: _inputs(state, names),
+        work=lambda state, change, reporter: _work(state, change, reporter, names),
+        gate=refuse_errors,
+    )
+
+
+def _inputs(state: ProjectState, names: Sequence[str]) -> dict[str, str]:
+    sheet, settings = state.require_sheet(), state.settings
+    hashes = {
+        "sample sheet": columns_fingerprint(sheet, list(sheet.columns)),
+        "settings": fingerprint(
+            [
+                VERSION,
+                settings.samples.model_dump(mode="json"),
+                {name: settings.blocks[name].model_dump(mode="json") for name in names},
+            ]
+        ),
+    }
+    for name in names:
+        header = block_header(state.paths.prepared_block(name))
+        hashes[f"block {name}"] = fingerprint([header["content_sha256"], header["measured_sha256"]])
+    return hashes
+
+
+def _work(state: ProjectState, change: Change, reporter: Reporter, names: Sequence[str]) -> list[str]:
+    measured = {name: measured_block(state, name) for name in names}
+    prepared = {name: read_block(check_file(state.root, f"prepared/{name}.h5ad")) for name in names}
+    found = run_checks(study_data(state.settings, state.require_sheet(), measured, prepared), SEED)
+    rows = [finding_row(finding) for finding in found]
+    change.write_bytes(RECORD, json_bytes({"schema_version": SCHEMA_VERSION, "findings": rows}))
+    change.write_bytes(f"{FOLDER}/findings.tsv", table_bytes(_table(rows)))
+    for finding in found:
+        reporter.say(f"  {finding.severity} {finding.id}: {finding.what}")
+    return _write_figures(change, found)
+
+
+def _write_figures(change: Change, found: Sequence[Finding]) -> list[str]:
+    del change, found
+    return []
+
+
+def finding_row(finding: Finding) -> dict[str, Any]:
+    """Return a finding as plain values, under the keys of ``check --json``."""
+    return {
+        "id": finding.id,
+        "check": finding.check,
+        "severity": finding.severity,
+        "block": finding.block,
+        "what": finding.what,
+        "samples": list(finding.samples),
+        "features": list(finding.features),
+        "todo": finding.todo,
+    }
+
+
+def _table(rows: list[dict[str, Any]]) -> pd.DataFrame:
+    columns = ["severity", "check", "block", "what", "todo", "samples", "features", "id"]
+    joined = [
+        {**row, "samples": ", ".join(row["samples"]), "features": ", ".join(row["features"])} for row in rows
+    ]
+    return pd.DataFrame(joined, columns=columns)
+
+
+def stored_findings(state: ProjectState) -> list[dict[str, Any]]:
+    """Return the findings of the last check, each with ``accepted``: the reason, or None."""
+    path = check_file(state.root, RECORD)
+    rows: list[dict[str, Any]] = json.loads(path.read_text("utf-8"))["findings"]
+    return [{**row, "accepted": state.settings.check.accept.get(row["id"])} for row in rows]
+
+
+def open_errors(state: ProjectState) -> list[dict[str, Any]]:
+    """Return the error findings that nobody accepted."""
+    return [row for row in stored_findings(state) if row["severity"] == "error" and row["accepted"] is None]
+
+
+def refuse_errors(state: ProjectState) -> None:
+    """Stop with `FindingsError` when the data have an error finding that nobody accepted."""
+    errors = open_errors(state)
+    if errors:
+        lines = [f"{row['id']}: {row['what']}; {row['todo']}" for row in errors]
+        raise FindingsError(
+            f"the data have {len(errors)} error finding{'s' * (len(errors) > 1)} that nobody accepted:\n"
+            + "\n".join(f"  {line}" for line in lines)
+            + '\nmend the data, or accept a finding in project.toml: [check] accept = { "ID" = "reason" }'
+        )
