@@ -10,7 +10,6 @@ from simulated import Design, metabolites, simulate, transcripts
 
 from workbench.errors import InputError
 from workbench.intake import delivered_table
-from workbench.intake.ids import loose_form, near_pairs
 
 
 def read(path, ids=SHEET, **options):
@@ -72,22 +71,6 @@ def test_columns_that_are_no_samples_may_hold_anything(tmp_path):
     assert table.values.to_numpy().tolist() == [[1.0], [2.0]]
     assert table.only_table == ("chrom", "pool")
     assert "t.tsv: 2 names only in the table, left out: 'chrom', 'pool (2 times)'" in table.notes
-
-
-def test_near_misses_are_told_and_not_matched(tmp_path):
-    path = write(tmp_path, "t.tsv", "id\tS1\ts_02\tS3 \ng1\t1\t2\t3\n")
-    table = read(path)
-    assert table.matched == ("S1",)
-    assert (
-        "t.tsv: ids that differ only in how they are written: 'S2' is 's_02' of the table, 'S3' is 'S3 ' of the table"
-        in table.notes
-    )
-
-
-def test_a_form_that_two_ids_share_is_no_near_miss():
-    assert near_pairs(["S1", "s1"], ["S_1"]) == []
-    assert near_pairs(["7"], ["X007"]) == [("7", "X007")]
-    assert loose_form("X") == "x"
 
 
 def test_what_is_accepted_knowingly_is_told(tmp_path):

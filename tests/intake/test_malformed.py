@@ -267,7 +267,7 @@ MALFORMED = {
         "a.tsv",
         tabbed("id s_1 s_2", "g1 1 2"),
         {},
-        ["no sample", "'S1' is 's_1' of the table, 'S2' is 's_2'"],
+        ["2 samples of the sheet's 3 may be", "'s_1'         'S1'          case, spaces", "--accept-names"],
     ),
     "both axes match": (
         "a.tsv",

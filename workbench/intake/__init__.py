@@ -3,6 +3,7 @@
 from .annotations import read_annotations
 from .block import BlockBuild, build_block
 from .design import Design, Groups, design_columns, group_codes, missing_samples
+from .names import NameMatch, match_names, names_table
 from .raw import RawTable
 from .readers import read_delivered
 from .sheet import SampleSheet, Suggestions, column_kind, read_sample_sheet, suggest_columns
@@ -13,6 +14,7 @@ __all__ = [
     "DeliveredTable",
     "Design",
     "Groups",
+    "NameMatch",
     "RawTable",
     "SampleSheet",
     "Suggestions",
@@ -21,7 +23,9 @@ __all__ = [
     "delivered_table",
     "design_columns",
     "group_codes",
+    "match_names",
     "missing_samples",
+    "names_table",
     "read_annotations",
     "read_delivered",
     "read_sample_sheet",

@@ -1,10 +1,9 @@
-"""Checks of ids: present, unique, not made into dates; and ids that differ only in how they are written."""
+"""Checks of ids: present, unique, not made into dates."""
 
 from __future__ import annotations
 
-import re
 from collections import Counter
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Sequence
 from pathlib import Path
 
 from .dates import is_date, suspicious_numbers
@@ -109,31 +108,3 @@ def id_notes(ids: Sequence[str], what: str) -> list[str]:
             f"{listed(odd)}"
         )
     return notes
-
-
-def loose_form(name: str) -> str:
-    """Return an id without what tables differ in: case, blanks, marks, R's leading X, zeros before numbers.
-
-    >>> loose_form("X07.S-1 ") == loose_form("7_s1")
-    True
-    """
-    plain = re.sub(r"[\s._\-/]+", "", name.casefold())
-    plain = re.sub(r"^x(?=\d)", "", plain)
-    return re.sub(r"(?<!\d)0+(?=\d)", "", plain)
-
-
-def near_pairs(here: Iterable[str], there: Iterable[str]) -> list[tuple[str, str]]:
-    """Return pairs of ids, one of each side, that differ only in how they are written, when no third does."""
-    left, right = _by_form(here), _by_form(there)
-    return [
-        (names[0], right[form][0])
-        for form, names in left.items()
-        if len(names) == 1 and len(right.get(form, ())) == 1 and names[0] != right[form][0]
-    ]
-
-
-def _by_form(names: Iterable[str]) -> dict[str, list[str]]:
-    forms: dict[str, list[str]] = {}
-    for name in names:
-        forms.setdefault(loose_form(name), []).append(name)
-    return forms

@@ -3,14 +3,15 @@
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
 from workbench.errors import InputError
 
 from .faults import counted, listed, shown
-from .ids import check_unique, near_pairs
+from .ids import check_unique
+from .names import SAMPLES, NameMatch, Words, ambiguous_lines, candidates_refused, match_names
 from .raw import HEADER, RawTable
 
 _THREE = 3
@@ -42,68 +43,129 @@ class Matching:
     notes: tuple[str, ...]
 
 
-def match_samples(raw: RawTable, sample_ids: Sequence[str], samples_in: str | None = None) -> Matching:
+def match_samples(
+    raw: RawTable,
+    sample_ids: Sequence[str],
+    samples_in: str | None = None,
+    names: Mapping[str, str] | None = None,
+    words: Words = SAMPLES,
+) -> Matching:
     """Return the orientation of a table and its samples matched to the sheet, by exact id.
 
     The axis with more ids of the sheet holds the samples. ``samples_in`` overrules that, but its axis must
     hold at least one sample.
 
+    Parameters
+    ----------
+    raw
+        The table.
+    sample_ids
+        Ids of the sheet, in its order.
+    samples_in
+        ``rows`` or ``columns``.
+    names
+        Accepted names: delivered name to id of the sheet.
+    words
+        What the ids are called in messages.
+
     Raises
     ------
     InputError
-        When no id matches (three ids of each side are shown), both axes match equally, the axis named in
-        ``samples_in`` matches nothing, or a matched sample occurs twice.
+        When names of the table are nearly those of the sheet and no names are accepted (they are shown), no
+        id matches (three ids of each side are shown), both axes match equally, the axis named in
+        ``samples_in`` matches nothing, a matched sample occurs twice, or an accepted name is not there.
     """
     sheet = list(map(str, sample_ids))
     known = set(sheet)
-    axes = {"columns": raw.columns, "rows": raw.rows}
+    axes = _axes(raw, names)
     hits = {name: len(known.intersection(ids)) for name, ids in axes.items()}
-    found = _choose(raw, sheet, hits, samples_in)
+    found = _choose(raw, sheet, axes, samples_in, words)
     ids = axes[found]
+    _check_accepted(raw, found, names or {}, ids, words)
     _check_twice(raw, found, ids, known)
-    _check_short_header(raw, found, known)
+    _check_short_header(raw, found, known, words)
+    match = match_names(ids, sheet)
+    if names is None and match.candidates:
+        raise candidates_refused(raw.path, match, words)
     where = {name: position for position, name in enumerate(ids)}
     matched = tuple(name for name in sheet if name in where)
     only_sheet = tuple(name for name in sheet if name not in where)
     only_table = tuple(dict.fromkeys(name for name in ids if name not in known))
-    notes = [_orientation_note(raw, found, hits, len(sheet), samples_in)]
-    notes += _side_notes(raw, only_sheet, only_table, Counter(ids))
+    notes = [_orientation_note(raw, found, hits, len(sheet), samples_in, words)]
+    notes += _side_notes(raw, only_sheet, only_table, Counter(ids), words)
+    notes += _near_notes(raw, match, len(names or {}), words)
     return Matching(
         found, matched, tuple(where[name] for name in matched), only_sheet, only_table, tuple(notes)
     )
 
 
-def _choose(raw: RawTable, sheet: Sequence[str], hits: dict[str, int], samples_in: str | None) -> str:
-    if not any(hits.values()):
-        raise _no_match(raw, sheet)
+def offered_match(
+    raw: RawTable, sample_ids: Sequence[str], samples_in: str | None = None, words: Words = SAMPLES
+) -> NameMatch:
+    """Return how the names of a table's sample axis meet those of the sheet, candidates among them.
+
+    Raises
+    ------
+    InputError
+        When it cannot be told which axis holds the samples.
+    """
+    sheet = list(map(str, sample_ids))
+    axes = _axes(raw, None)
+    return match_names(axes[_choose(raw, sheet, axes, samples_in, words)], sheet)
+
+
+Axes = Mapping[str, Sequence[str]]
+
+
+def _axes(raw: RawTable, names: Mapping[str, str] | None) -> Axes:
+    axes = {"columns": raw.columns, "rows": raw.rows}
+    if not names:
+        return axes
+    return {axis: tuple(names.get(name, name) for name in ids) for axis, ids in axes.items()}
+
+
+def _choose(raw: RawTable, sheet: Sequence[str], axes: Axes, samples_in: str | None, words: Words) -> str:
+    hits = {name: len(set(sheet).intersection(ids)) for name, ids in axes.items()}
+    if samples_in is not None and samples_in not in hits:
+        raise InputError(f"{raw.path}: samples_in is '{samples_in}'; allowed: 'rows', 'columns', or left out")
+    if 2 * max(hits.values()) < len(sheet):
+        hits = _with_candidates(raw, sheet, axes, words)
     if samples_in is not None:
-        if samples_in not in hits:
-            raise InputError(
-                f"{raw.path}: samples_in is '{samples_in}'; allowed: 'rows', 'columns', or left out"
-            )
         if not hits[samples_in]:
-            other = "rows" if samples_in == "columns" else "columns"
-            raise InputError(
-                f"{raw.path}: samples_in = '{samples_in}', but none of the {samples_in} is a sample of the "
-                f"sheet, while {counted(hits[other], f'of the {other} is', f'of the {other} are')}; write "
-                f"samples_in = '{other}', or leave it out"
-            )
+            raise _other_axis(raw, samples_in, hits, words)
         return samples_in
-    if hits["rows"] == hits["columns"]:
+    exact = any(set(sheet).intersection(ids) for ids in axes.values())
+    weights = {name: (hits[name], 0 if exact else hits[name] / len(set(axes[name]))) for name in hits}
+    if weights["rows"] == weights["columns"]:
         raise InputError(
-            f"{raw.path}: the rows and the columns match {counted(hits['rows'], 'sample')} of the sheet "
-            "each, so the ids cannot tell which are the samples; say samples_in = 'rows' or samples_in = "
+            f"{raw.path}: the rows and the columns match {counted(hits['rows'], words.one)} of {words.sheet} "
+            f"each, so the ids cannot tell which are the {words.one}s; say samples_in = 'rows' or samples_in = "
             "'columns'"
         )
-    return max(hits, key=lambda name: hits[name])
+    return max(weights, key=lambda name: weights[name])
 
 
-def _no_match(raw: RawTable, sheet: Sequence[str]) -> InputError:
-    near = near_pairs(sheet, raw.columns) + near_pairs(sheet, raw.rows)
-    hint = f"; perhaps {_as_pairs(near)}" if near else ""
+def _with_candidates(raw: RawTable, sheet: Sequence[str], axes: Axes, words: Words) -> dict[str, int]:
+    """Return how many ids of the sheet each axis may have, candidates among them; refuse a table of none."""
+    matches = {name: match_names(ids, sheet) for name, ids in axes.items()}
+    hits = {name: len(match.exact) + len(match.candidates) for name, match in matches.items()}
+    if not any(hits.values()):
+        unclear = [line.strip() for match in matches.values() for line in ambiguous_lines(match)]
+        hint = f"; {unclear[0]}" if unclear else ""
+        raise InputError(
+            f"{raw.path}: no {words.one} of {words.sheet} is in the table: {words.sheet} has {_some(sheet)}, "
+            f"the table's columns are {_some(raw.columns)}, its rows {_some(raw.rows)}{hint}; use the same "
+            "ids in both"
+        )
+    return hits
+
+
+def _other_axis(raw: RawTable, samples_in: str, hits: Mapping[str, int], words: Words) -> InputError:
+    other = "rows" if samples_in == "columns" else "columns"
     return InputError(
-        f"{raw.path}: no sample of the sheet is in the table: the sheet has {_some(sheet)}, the table's "
-        f"columns are {_some(raw.columns)}, its rows {_some(raw.rows)}{hint}; use the same ids in both"
+        f"{raw.path}: samples_in = '{samples_in}', but none of the {samples_in} is a {words.one} of "
+        f"{words.sheet}, while {counted(hits[other], f'of the {other} is', f'of the {other} are')}; write "
+        f"samples_in = '{other}', or leave it out"
     )
 
 
@@ -111,9 +173,24 @@ def _some(ids: Sequence[str]) -> str:
     return listed(ids, _THREE) if ids else "none"
 
 
-def _as_pairs(pairs: Sequence[tuple[str, str]]) -> str:
-    text = ", ".join(f"'{here}' is '{there}' of the table" for here, there in pairs[:_THREE])
-    return text if len(pairs) <= _THREE else f"{text} and {len(pairs) - _THREE} more"
+def _check_accepted(
+    raw: RawTable, samples_in: str, names: Mapping[str, str], ids: Sequence[str], words: Words
+) -> None:
+    """Refuse accepted names that the table does not have, and such that give a sample a second time."""
+    delivered = raw.columns if samples_in == "columns" else raw.rows
+    unknown = [name for name in names if name not in set(delivered)]
+    if unknown:
+        raise InputError(
+            f"{raw.path}: the table of names speaks of {counted(len(unknown), 'name')} that the table does not "
+            f"have in its {samples_in}: {listed(unknown)}; take the rows out of the table of names, or mend them"
+        )
+    times = Counter(ids)
+    own = [f"{name} (from {given})" for given, name in names.items() if times[name] > 1 and given != name]
+    if own:
+        raise InputError(
+            f"{raw.path}: {counted(len(own), words.one)} would stand there twice, under the own name and by "
+            f"the table of names: {listed(own)}; take one of them out"
+        )
 
 
 def _check_twice(raw: RawTable, samples_in: str, ids: Sequence[str], known: set[str]) -> None:
@@ -125,40 +202,58 @@ def _check_twice(raw: RawTable, samples_in: str, ids: Sequence[str], known: set[
     check_unique(raw.path, [ids[i] for i in matched], "sample", place)
 
 
-def _check_short_header(raw: RawTable, samples_in: str, known: set[str]) -> None:
+def _check_short_header(raw: RawTable, samples_in: str, known: set[str], words: Words) -> None:
     """Refuse a header one field short whose first name is no sample: it may be the name of the id column."""
     if raw.corner_lacks and samples_in == "columns" and raw.columns[0] not in known:
         raise InputError(
             f"{raw.path}: {raw.place(HEADER, 0)}: the header is one field short, and its first name "
-            f"{shown(raw.columns[0])} is no sample of the sheet, so the values may stand one column off; "
+            f"{shown(raw.columns[0])} is no {words.one} of {words.sheet}, so the values may stand one column off; "
             "give every column its name, that of the ids included"
         )
 
 
-def _orientation_note(raw: RawTable, found: str, hits: dict[str, int], n: int, samples_in: str | None) -> str:
+def _orientation_note(
+    raw: RawTable, found: str, hits: Mapping[str, int], n: int, samples_in: str | None, words: Words
+) -> str:
     other = "rows" if found == "columns" else "columns"
     why = "as samples_in says" if samples_in else "found by their ids"
     also = (
-        f"; {counted(hits[other], 'of the ' + other + ' is', 'of the ' + other + ' are')} a sample id too"
+        f"; {counted(hits[other], 'of the ' + other + ' is', 'of the ' + other + ' are')} a {words.one} id too"
         if hits[other]
         else ""
     )
-    return f"{raw.path.name}: samples are in {found}, {why}: {hits[found]} of the sheet's {n} match{also}"
+    return (
+        f"{raw.path.name}: {words.one}s are in {found}, {why}: {hits[found]} of {words.owner} {n} match{also}"
+    )
 
 
 def _side_notes(
-    raw: RawTable, only_sheet: Sequence[str], only_table: Sequence[str], times: Counter[str]
+    raw: RawTable,
+    only_sheet: Sequence[str],
+    only_table: Sequence[str],
+    times: Mapping[str, int],
+    words: Words,
 ) -> list[str]:
     notes = []
     name = Path(raw.path).name
     if only_sheet:
-        notes.append(f"{name}: {counted(len(only_sheet), 'sample')} only in the sheet: {listed(only_sheet)}")
+        found = counted(len(only_sheet), words.one)
+        notes.append(f"{name}: {found} only in {words.sheet}: {listed(only_sheet)}")
     if only_table:
         again = [f"{n} ({times[n]} times)" if times[n] > 1 else n for n in only_table]
         notes.append(
             f"{name}: {counted(len(only_table), 'name')} only in the table, left out: {listed(again)}"
         )
-    near = near_pairs(only_sheet, only_table)
-    if near:
-        notes.append(f"{name}: ids that differ only in how they are written: {_as_pairs(near)}")
     return notes
+
+
+def _near_notes(raw: RawTable, match: NameMatch, accepted: int, words: Words) -> list[str]:
+    notes = []
+    if accepted:
+        notes.append(f"{raw.path.name}: {counted(accepted, words.one)} found by the table of names")
+    if match.candidates:
+        pairs = [f"{here} for {there}" for here, there, _ in match.candidates]
+        notes.append(
+            f"{raw.path.name}: left out, since the table of names does not name them: {listed(pairs, _THREE)}"
+        )
+    return [*notes, *(f"{raw.path.name}: {line.strip()}" for line in ambiguous_lines(match))]

@@ -14,6 +14,7 @@ from workbench.errors import InputError
 from .faults import counted, shown
 from .ids import check_no_dates, check_present, check_unique, id_notes, refuse_broken
 from .mixed import read_mixed
+from .names import SAMPLES, Words
 from .numbers import check_range, read_numbers
 from .orientation import Matching, match_samples
 from .part import Part
@@ -61,6 +62,8 @@ def delivered_table(
     samples_in: str | None = None,
     sheet: str | None = None,
     array: str | None = None,
+    names: Mapping[str, str] | None = None,
+    words: Words = SAMPLES,
 ) -> DeliveredTable:
     """Return the table of a delivered file, checked, and aligned to the samples of the sheet by id.
 
@@ -76,6 +79,11 @@ def delivered_table(
         ``rows`` or ``columns``; found by matching the ids when left out.
     sheet, array
         Sheet of a workbook, array of an .h5ad file.
+    names
+        Accepted names: delivered name to sample. None: none were accepted, and names that are nearly those of
+        the sheet are refused.
+    words
+        What the ids are called in messages: samples, or runs.
 
     Raises
     ------
@@ -87,7 +95,7 @@ def delivered_table(
         raise InputError(f"{path}: values is '{values}'; allowed: {', '.join(VALUES)}")
     raw = read_delivered(path, sheet=sheet, array=array)
     _check_ids_present(raw)
-    matching = match_samples(raw, sample_ids, samples_in)
+    matching = match_samples(raw, sample_ids, samples_in, names, words)
     part = _part(raw, matching)
     features = raw.rows if matching.samples_in == "columns" else raw.columns
     _check_features(raw, features, matching.samples_in)
