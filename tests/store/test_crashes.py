@@ -10,6 +10,7 @@ from store.crashes import CHANGING, Dead, Disk, files_of, make_new, make_old, sn
 from workbench.errors import BusyError, WorkbenchError
 from workbench.store.hashes import check_all, check_file
 from workbench.store.manifest import read_manifest
+from workbench.store.pending import change_under_way
 from workbench.store.recovery import recover
 
 
@@ -40,7 +41,7 @@ def interrupted(old, delivered, monkeypatch, **disk):
         failing, raised = Disk(patch, **disk), None
         try:
             make_new(root, delivered)
-        except (Dead, WorkbenchError) as error:
+        except (Dead, KeyboardInterrupt, WorkbenchError) as error:
             raised = error
     return root, raised, failing.steps
 
@@ -123,10 +124,26 @@ def test_one_step_that_fails_leaves_every_file_as_it_was(places, monkeypatch, nu
         root, raised, _ = interrupted(old, delivered, monkeypatch, **disk)
         expected = after if raised is None else before
         refused += raised is not None
+        assert not change_under_way(root), f"step {at}"
         assert files_of(snapshot(root, neighbours=False)) == files_of(expected), f"step {at}"
         recover(root)
         assert snapshot(root) == expected, f"step {at}"
     assert refused > total / 2
+
+
+def test_interrupted_by_the_user_at_any_step_the_state_is_whole_at_once(places, monkeypatch):
+    old, delivered, before, after = places
+    total = len(interrupted(old, delivered, monkeypatch)[2])
+    outcomes = set()
+    for at in range(1, total + 1):
+        disk = {"at": at, "fail": KeyboardInterrupt, "once": True}
+        root, raised, _ = interrupted(old, delivered, monkeypatch, **disk)
+        assert isinstance(raised, KeyboardInterrupt)
+        found = files_of(snapshot(root, neighbours=False))
+        assert found in (files_of(before), files_of(after)), f"step {at}"
+        assert not change_under_way(root), f"step {at}"
+        outcomes.add(found == files_of(after))
+    assert outcomes == {False, True}
 
 
 def denied():

@@ -12,6 +12,7 @@ from workbench.store.files import sha256_of
 from workbench.store.journal import read_journal
 from workbench.store.manifest import StageRecord, read_manifest
 from workbench.store.paths import check_relative
+from workbench.store.pending import read_steps, take_steps
 from workbench.store.recovery import recover
 from workbench.store.transaction import Change
 
@@ -197,17 +198,37 @@ def test_long_and_foreign_names_have_neighbours(root):
     assert (root / name).read_text() == "x"
 
 
-def test_an_edit_made_between_kill_and_recovery_is_not_lost(root, monkeypatch):
+@pytest.mark.parametrize("anew", [False, True], ids=["in place", "as a new file"])
+@pytest.mark.parametrize("name", ["project.toml", "samples.tsv"])
+def test_an_edit_made_between_kill_and_recovery_is_not_lost(root, monkeypatch, name, anew):
+    def write(change):
+        change.write_text("project.toml", "the program's\n")
+        change.write_text("samples.tsv", "the program's\n")
+        change.write_text("blocks/b.h5ad", "block b")
+
+    decided(root, monkeypatch, write)
+    if anew:
+        (root / name).unlink(missing_ok=True)
+    (root / name).write_text("a person's\n")
+    recover(root)
+    assert (root / name).read_text() == "a person's\n"
+    assert not (root / "blocks/b.h5ad").exists()
+    assert "blocks/b.h5ad" not in read_manifest(root).files
+
+
+def test_an_edit_made_after_all_was_done_but_the_last_step_does_not_undo_it(root, monkeypatch):
     def write(change):
         change.write_text("project.toml", "the program's\n")
         change.write_text("blocks/b.h5ad", "block b")
 
     decided(root, monkeypatch, write)
+    steps = read_steps(root / ".workbench/pending.json")
+    take_steps(root, steps)
     (root / "project.toml").write_text("a person's\n")
     recover(root)
     assert (root / "project.toml").read_text() == "a person's\n"
-    assert not (root / "blocks/b.h5ad").exists()
-    assert "blocks/b.h5ad" not in read_manifest(root).files
+    assert (root / "blocks/b.h5ad").read_text() == "block b"
+    assert not (root / ".workbench/pending.json").exists()
 
 
 def test_a_new_version_that_was_damaged_meanwhile_takes_the_change_back(root, monkeypatch):
