@@ -1,6 +1,7 @@
-"""What a sceptic asks of a chosen pair: its rank correlation, its weakest value when any one sample is left
-out, and its correlation without the cells that were filled in.
+"""What a sceptic asks of a chosen pair.
 
+Its rank correlation, its weakest value when any one sample is left out, and its correlation without the cells
+that were filled in.
 Only chosen pairs are looked at, a chunk at a time, so that nothing of size p x q is ever held.
 """
 
@@ -130,7 +131,7 @@ def _without_one(removed: Nuisance, e: FloatArray, f: FloatArray, i: IndexArray,
 
 
 def _left(e: FloatArray, weight: FloatArray) -> FloatArray:
-    """Sums of squares without each sample; rounding alone (under 1e-12 of the whole) counts as nothing."""
+    """Return the sums of squares without each sample; rounding alone (under 1e-12 of the whole) is nothing."""
     whole = (e**2).sum(axis=0)
     left = whole - weight * e**2
     return np.where(left > 1e-12 * whole, left, 0.0)
