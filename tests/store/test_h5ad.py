@@ -339,7 +339,7 @@ HOSTILE = {
     ),
     "column": (
         lambda f: (f["obs"].__delitem__("age"), f["obs"].create_dataset("age", data=np.ones(4))),
-        "column 'age' of 'obs' does not fit 'X' of 3",
+        "column 'age' of 'obs' does not fit its 3 rows",
     ),
     "no names": (lambda f: f["obs"].attrs.__delitem__("_index"), "'obs' is not a table of named columns"),
     "no table": (lambda f: f.__delitem__("var"), "'var' is missing"),

@@ -12,7 +12,7 @@ from workbench.errors import DamageError, InputError, WorkbenchError
 from workbench.store.files import refused, write_whole
 from workbench.store.hdf5_look import TooLargeError, check_stored_whole, has_signature, look_inside
 from workbench.store.hdf5_texts import RefusedError
-from workbench.store.stored_form import restored, stored_form
+from workbench.store.stored_form import RUN_SHEET, RUN_VALUES, restored, stored_form
 
 if TYPE_CHECKING:
     import anndata as ad
@@ -125,12 +125,26 @@ def _check_layout(file: h5py.File) -> None:
             raise RefusedError(f"layer {name!r} is not a table of the shape of 'X'")
     for axis, length in zip(("obs", "var"), matrix.shape, strict=True):
         _check_table(_group(file, axis), axis, length)
-    for name, value in _group(file, "uns").items():
-        if not isinstance(value, h5py.Dataset) or value.shape != () or value.dtype.kind != "O":
-            raise RefusedError(f"note {name!r} is not one text")
+    _check_notes(_group(file, "uns"), matrix.shape[1])
     if any(len(_group(file, part)) for part in _EMPTY_PARTS):
         raise RefusedError("it holds more than a block does")
     _check_no_raw(file)
+
+
+def _check_notes(uns: h5py.Group, features: int) -> None:
+    """Refuse notes that are not one text each; a table of runs with the runs' values beside it is one."""
+    if RUN_SHEET in uns or RUN_VALUES in uns:
+        values = uns.get(RUN_VALUES)
+        if not isinstance(values, h5py.Dataset) or values.dtype != "float64" or values.ndim != 2:
+            raise RefusedError("the values of its runs are not a table of numbers")
+        if values.shape[1] != features or not values.shape[0]:
+            raise RefusedError(f"the values of its runs do not fit 'X' of {features} features")
+        _check_table(_group(uns, RUN_SHEET), RUN_SHEET, values.shape[0])
+    for name, value in uns.items():
+        if name in (RUN_SHEET, RUN_VALUES):
+            continue
+        if not isinstance(value, h5py.Dataset) or value.shape != () or value.dtype.kind != "O":
+            raise RefusedError(f"note {name!r} is not one text")
 
 
 def _check_no_raw(file: h5py.File) -> None:
@@ -146,7 +160,7 @@ def _check_table(table: h5py.Group, axis: str, length: int) -> None:
         raise RefusedError(f"{axis!r} is not a table of named columns")
     for name, column in table.items():
         if not isinstance(column, h5py.Dataset) or column.shape != (length,):
-            raise RefusedError(f"column {name!r} of {axis!r} does not fit 'X' of {length} rows or columns")
+            raise RefusedError(f"column {name!r} of {axis!r} does not fit its {length} rows")
     if table[str(index)].dtype.kind != "O":
         raise RefusedError(f"names in {axis!r} are not texts")
 
@@ -155,7 +169,7 @@ def _encoding(member: Any) -> str:
     return str(member.attrs.get("encoding-type", ""))
 
 
-def _group(file: h5py.File, name: str) -> h5py.Group:
+def _group(file: h5py.Group, name: str) -> h5py.Group:
     group = file.get(name)
     if not isinstance(group, h5py.Group):
         raise RefusedError(f"{name!r} is missing")

@@ -23,6 +23,9 @@ if TYPE_CHECKING:
 NAMES_KEY = "workbench_columns"
 """Entry of ``uns`` with the column names as they were, where they had to be changed."""
 
+RUN_SHEET, RUN_VALUES = "run_sheet", "run_values"
+"""Entries of ``uns`` that are no texts: a table with a row for each assay run, and the runs' values."""
+
 _RESERVED = ("", ".", "..", "_index")
 
 
@@ -33,7 +36,8 @@ def stored_form(adata: ad.AnnData) -> ad.AnnData:
     ----------
     adata : AnnData
         ``X`` of shape (n_samples, n_features), numbers; ``layers`` of that shape, numbers or true/false;
-        ``uns`` of texts. Nothing else is stored.
+        ``uns`` of texts, and of ``run_sheet`` (a table of runs) with ``run_values`` (n_runs, n_features).
+        Nothing else is stored.
 
     Returns
     -------
@@ -53,7 +57,12 @@ def stored_form(adata: ad.AnnData) -> ad.AnnData:
     frames = {}
     for axis, frame, what in (("obs", adata.obs, "sample"), ("var", adata.var, "feature")):
         frames[axis], names[axis] = _stored_frame(frame, what)
-    uns = {str(key): _uns_text(key, value) for key, value in adata.uns.items() if key != NAMES_KEY}
+    own = (NAMES_KEY, RUN_SHEET, RUN_VALUES)
+    uns: dict[str, Any] = {
+        str(key): _uns_text(key, value) for key, value in adata.uns.items() if key not in own
+    }
+    if RUN_SHEET in adata.uns or RUN_VALUES in adata.uns:
+        uns[RUN_SHEET], names[RUN_SHEET], uns[RUN_VALUES] = _stored_runs(adata)
     changed = {axis: renamed for axis, renamed in names.items() if renamed}
     if changed:
         uns[NAMES_KEY] = json.dumps(changed, sort_keys=True)
@@ -71,13 +80,36 @@ def restored(adata: ad.AnnData) -> ad.AnnData:
     """
     kept = json.loads(adata.uns.pop(NAMES_KEY, "{}"))
     for axis in ("obs", "var"):
-        renamed: Mapping[str, str] = kept.get(axis, {})
-        if not all(isinstance(name, str) for name in renamed.values()):
-            raise ValueError("names of columns are not texts")
-        frame: pd.DataFrame = getattr(adata, axis).rename(columns=renamed)
-        frame.index.name = renamed.get(str(frame.index.name), frame.index.name)
-        setattr(adata, axis, frame)
+        setattr(adata, axis, _with_names(getattr(adata, axis), kept.get(axis, {})))
+    if RUN_SHEET in adata.uns:
+        adata.uns[RUN_SHEET] = _with_names(adata.uns[RUN_SHEET], kept.get(RUN_SHEET, {}))
     return adata
+
+
+def _with_names(frame: pd.DataFrame, renamed: Mapping[str, str]) -> pd.DataFrame:
+    if not all(isinstance(name, str) for name in renamed.values()):
+        raise ValueError("names of columns are not texts")
+    frame = frame.rename(columns=renamed)
+    frame.index.name = renamed.get(str(frame.index.name), frame.index.name)
+    return frame
+
+
+def _stored_runs(adata: ad.AnnData) -> tuple[pd.DataFrame, dict[str, str], np.ndarray[Any, Any]]:
+    """Return the runs' table as it is stored, the names that were changed in it, and the runs' values."""
+    sheet, values = adata.uns.get(RUN_SHEET), adata.uns.get(RUN_VALUES)
+    if not isinstance(sheet, pd.DataFrame) or values is None:
+        raise InputError(
+            f"uns[{RUN_SHEET!r}] of a block must be a table of runs, and uns[{RUN_VALUES!r}] stands beside it; "
+            f"got {type(sheet).__name__} and {type(values).__name__}"
+        )
+    matrix = _matrix(values, f"uns[{RUN_VALUES!r}]", np.float64)
+    if matrix.shape != (len(sheet), adata.n_vars) or not len(sheet):
+        raise InputError(
+            f"uns[{RUN_VALUES!r}] of a block must have a row for each of {len(sheet)} runs and a column for each "
+            f"of {adata.n_vars} features, got {matrix.shape[0]} x {matrix.shape[1]}"
+        )
+    stored, names = _stored_frame(sheet, "run")
+    return stored, names, matrix
 
 
 def _check_parts(adata: ad.AnnData) -> None:
