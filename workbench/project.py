@@ -12,7 +12,16 @@ import pandas as pd
 
 from workbench.errors import InputError
 from workbench.network import read_graphml
-from workbench.store import FileFault, ProjectPaths, check_all, check_file, find_project, read_table, settle
+from workbench.store import (
+    FileFault,
+    ProjectPaths,
+    check_all,
+    check_file,
+    find_project,
+    read_block,
+    read_table,
+    settle,
+)
 from workbench.workflow import blocks as workflow_blocks
 from workbench.workflow import plan
 from workbench.workflow.checking import stored_findings
@@ -22,7 +31,7 @@ from workbench.workflow.samples import SheetAccount, SheetDelivery, add_samples
 from workbench.workflow.stages import Outcome, Standing, run_stages, standings
 from workbench.workflow.state import ProjectState, load_state
 from workbench.workflow.status import Status, status_of
-from workbench.workflow.tables import measured_block
+from workbench.workflow.tables import measured_block, plain_table
 
 if TYPE_CHECKING:
     import networkx as nx
@@ -182,6 +191,17 @@ class Project:
         """Take a block out of the project; its source stays."""
         workflow_blocks.remove_block(self.paths, name)
 
+    def export(self, block: str, *, values: str = "prepared") -> pd.DataFrame:
+        """Return one block as a plain table, samples in rows: ``prepared`` or ``measured`` values."""
+        state = self.state()
+        state.require_block(block)
+        if values not in ("prepared", "measured"):
+            raise InputError(f"no values '{values}'; allowed: prepared, measured")
+        if values == "measured":
+            return plain_table(measured_block(state, block))
+        self.prepare(block)
+        return plain_table(read_block(check_file(self.paths.root, f"prepared/{block}.h5ad")))
+
     def prepare(self, *blocks: str, reporter: Reporter = SILENT) -> Outcome:
         """Run the recipes of the named blocks, or of all."""
         return run_stages(self.paths, "prepare", lambda state: plan.block_stages(state, blocks), reporter)
@@ -208,6 +228,10 @@ class Project:
     def run(self, *analyses: str, reporter: Reporter = SILENT) -> Outcome:
         """Run every stage that is out of date, in order."""
         return run_stages(self.paths, "run", lambda state: plan.all_stages(state, analyses), reporter)
+
+    def ready_analyses(self) -> list[str]:
+        """Return the analyses whose blocks are of two layers at least."""
+        return plan.analyses_that_can_run(self.state())
 
     def plan(self, *analyses: str) -> list[Standing]:
         """Return the standing of the stages that ``run`` would look at."""

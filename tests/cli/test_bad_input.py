@@ -71,7 +71,6 @@ WRONG_CALLS = [
     (["add-block", "new", "{foreign}", "--layer", "proteins", "--values", "log"], ["no sample"]),
     (["add-samples", "{samples}"], ["the project has a sample sheet"]),
     (["add-block", "new", "{counts}"], ["--layer"]),
-    (["check"], ["check --files"]),
     (["frobnicate"], ["frobnicate"]),
 ]
 
@@ -165,3 +164,22 @@ def test_a_sheet_edited_in_place_is_noticed_and_not_taken_for_damage(command, fi
     done = next(line for line in err.splitlines() if line.startswith("done: "))
     assert "prepare:lcms" in done
     assert "integrate" not in done
+
+
+def test_an_init_that_was_killed_can_be_done_again(command, tmp_path):
+    (tmp_path / "study" / ".workbench").mkdir(parents=True)
+    assert command("init", tmp_path / "study")[0] == 0
+
+
+def test_two_blocks_of_one_layer_are_prepared_and_looked_at_and_told_apart(command, made):
+    assert command("remove-block", "rna", "--project", made)[0] == 0
+    text = (made / "project.toml").read_text()
+    start = text.index("[blocks.lcms]")
+    block = text[start : text.index("[analyses.main]")]
+    (made / "project.toml").write_text(
+        text[:start] + block + block.replace("lcms", "lcms2") + text[start + len(block) :]
+    )
+    assert command("run", "--project", made)[0] == 0
+    code, _, err = command("network", "--project", made)
+    assert code == 2
+    assert "one layer (metabolites)" in err

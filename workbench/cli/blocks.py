@@ -1,7 +1,8 @@
-"""Commands about blocks: ``add-block`` and ``remove-block``."""
+"""Commands about blocks: ``add-block``, ``export`` and ``remove-block``."""
 
 from __future__ import annotations
 
+import sys
 from pathlib import Path
 from typing import Annotated
 
@@ -21,6 +22,7 @@ def register(app: typer.Typer) -> None:
         "add-block",
         epilog="Example: workbench add-block rna counts.tsv --layer transcripts --values counts --adjust rna_day",
     )(add_block)
+    app.command("export", epilog="Example: workbench export rna --values measured > rna.tsv")(export)
     app.command("remove-block", epilog="Example: workbench remove-block rna")(remove_block)
 
 
@@ -64,6 +66,18 @@ def add_block(
     )
     answer(lines)
     tell_next(opened.status().next_command, quiet=quiet)
+
+
+def export(
+    name: Annotated[str, typer.Argument(metavar="BLOCK", help="Name of the block.")],
+    values: Annotated[str, typer.Option(metavar="measured|prepared", help="Which values.")] = "prepared",
+    project: ProjectOption = None,
+) -> None:
+    """Print one block as a plain table (TSV), samples in rows."""
+    from workbench.store import table_bytes
+
+    table = open_project(project).export(name, values=values)
+    sys.stdout.write(table_bytes(table).decode())
 
 
 def remove_block(name: NameArgument, project: ProjectOption = None, quiet: QuietOption = False) -> None:

@@ -85,7 +85,7 @@ def run(
         answer(f"{one.stage.name}: {one.reason or 'up to date'}" for one in opened.plan(*(analyses or ())))
         return
     outcome = opened.run(*(analyses or ()), reporter=terminal_reporter(quiet))
-    _summarise(opened, analyses or list(opened.state().settings.analyses))
+    _summarise(opened, analyses or opened.ready_analyses())
     _close(opened, outcome, quiet)
 
 

@@ -9,7 +9,14 @@ from typing import Any
 
 from workbench.errors import InputError
 from workbench.intake import build_block
-from workbench.settings import BlockSettings, add_block_text, check_name, parse_settings, remove_block_text
+from workbench.settings import (
+    BlockSettings,
+    add_block_text,
+    check_name,
+    parse_settings,
+    read_settings_text,
+    remove_block_text,
+)
 from workbench.store import Change, ProjectPaths, StageRecord, project_lock
 from workbench.workflow.fingerprints import columns_fingerprint
 from workbench.workflow.reading import block_file, reading_settings, reading_stage, write_built
@@ -54,7 +61,7 @@ def add_block(paths: ProjectPaths, delivery: Delivery) -> tuple[str, ...]:
 def _take_in(state: ProjectState, change: Change, delivery: Delivery) -> tuple[str, ...]:
     sheet = state.require_sheet()
     entries, sources = _keep(change, state.paths, delivery)
-    text = state.paths.settings.read_text("utf-8")
+    text = read_settings_text(state.paths.settings)
     settings = parse_settings(add_block_text(text, delivery.name, entries), state.paths.settings)
     declared = replace_block(settings.blocks[delivery.name], file=str(delivery.file.resolve()))
     if delivery.annotations is not None:
@@ -127,7 +134,7 @@ def remove_block(paths: ProjectPaths, name: str) -> None:
         state = load_state(paths)
         state.require_block(name)
         with Change(paths.root) as change:
-            change.write_text("project.toml", remove_block_text(paths.settings.read_text("utf-8"), name))
+            change.write_text("project.toml", remove_block_text(read_settings_text(paths.settings), name))
             for relative in (block_file(name), f"prepared/{name}.h5ad"):
                 if (paths.root / relative).exists():
                     change.remove(relative)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import shutil
 import tomllib
 from dataclasses import dataclass
 from pathlib import Path
@@ -11,6 +12,7 @@ import tomlkit
 
 from workbench.errors import InputError
 from workbench.store import Change, ProjectPaths, project_lock
+from workbench.store.paths import HIDDEN_NAME
 
 DEFAULT_TEMPLATE = "two-layers"
 
@@ -63,8 +65,8 @@ def create_project(folder: Path, *, template: str = DEFAULT_TEMPLATE, title: str
     try:
         _fill(paths, tomlkit.dumps(text), template)
     except BaseException:
-        if made and not any(folder.iterdir()):
-            folder.rmdir()
+        if made:
+            shutil.rmtree(folder, ignore_errors=True)
         raise
     return paths
 
@@ -79,7 +81,7 @@ def _fill(paths: ProjectPaths, settings: str, template: str) -> None:
 def _require_empty(folder: Path) -> None:
     if folder.exists() and not folder.is_dir():
         raise InputError(f"{folder}: a file, not a folder; name a new or an empty folder")
-    if folder.is_dir() and any(folder.iterdir()):
+    if folder.is_dir() and any(path.name != HIDDEN_NAME for path in folder.iterdir()):
         raise InputError(
             f"{folder}: the folder is not empty; name a new or an empty one, nothing was changed"
         )

@@ -17,14 +17,40 @@ from workbench.workflow.state import ProjectState
 
 
 def all_stages(state: ProjectState, analyses: Sequence[str] = ()) -> list[Stage]:
-    """Return every stage: of all blocks, the check, the look, and the named analyses or all of them."""
-    for name in analyses:
-        state.require_analysis(name)
-    chosen = list(analyses) or list(state.settings.analyses)
+    """Return every stage: of all blocks, the check, the look, and the named analyses or all that can run."""
+    chosen = _checked(state, analyses) if analyses else analyses_that_can_run(state)
     prepared, looked = block_stages(state), look_stages(state)
     looks = [stage for stage in looked if stage.kind == "look"]
     check = checking_stage(list(state.settings.blocks))
     return [*prepared, check, *looks, *_of_analyses(state, chosen, "integrate", "network")]
+
+
+def analyses_that_can_run(state: ProjectState) -> list[str]:
+    """Return the analyses whose blocks are of two layers at least."""
+    return [name for name in state.settings.analyses if len(_layers(state, name)) > 1]
+
+
+def _layers(state: ProjectState, analysis: str) -> set[str]:
+    return {state.settings.blocks[block].layer for block in blocks_of(state.settings, analysis)}
+
+
+def _checked(state: ProjectState, analyses: Sequence[str]) -> list[str]:
+    """Return the named analyses, or all; refuse unknown ones and those without two layers."""
+    chosen = list(analyses) or list(state.settings.analyses)
+    if not chosen:
+        raise InputError(
+            f"{state.paths.settings}: the project has no analysis yet; the analysis 'main' is added with the "
+            "second block (`workbench add-block`)"
+        )
+    for name in chosen:
+        state.require_analysis(name)
+        layers = _layers(state, name)
+        if len(layers) < 2:
+            raise InputError(
+                f"{state.paths.settings}: analysis '{name}' has blocks of one layer ({', '.join(layers)}); a "
+                "cross-layer network needs two: add a block of another layer with `workbench add-block`"
+            )
+    return chosen
 
 
 def check_stages(state: ProjectState) -> list[Stage]:
@@ -57,25 +83,18 @@ def look_stages(state: ProjectState, names: Sequence[str] = ()) -> list[Stage]:
 
 def integrate_stages(state: ProjectState, analyses: Sequence[str] = ()) -> list[Stage]:
     """Return the stages up to the canonical pairs of the named analyses, or of all."""
-    chosen = list(analyses) or list(state.settings.analyses)
+    chosen = _checked(state, analyses)
     return [*block_stages(state, _blocks_of_all(state, chosen)), *_of_analyses(state, chosen, "integrate")]
 
 
 def network_stages(state: ProjectState, analyses: Sequence[str] = ()) -> list[Stage]:
     """Return the stages up to the network of the named analyses, or of all."""
-    chosen = list(analyses) or list(state.settings.analyses)
+    chosen = _checked(state, analyses)
     stages = _of_analyses(state, chosen, "integrate", "network")
     return [*block_stages(state, _blocks_of_all(state, chosen)), *stages]
 
 
 def _blocks_of_all(state: ProjectState, analyses: Sequence[str]) -> list[str]:
-    for name in analyses:
-        state.require_analysis(name)
-    if not analyses:
-        raise InputError(
-            f"{state.paths.settings}: the project has no analysis yet; the analysis 'main' is added with the "
-            "second block (`workbench add-block`)"
-        )
     return list(dict.fromkeys(block for name in analyses for block in blocks_of(state.settings, name)))
 
 

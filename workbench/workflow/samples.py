@@ -9,7 +9,7 @@ import pandas as pd
 
 from workbench.errors import InputError
 from workbench.intake import Suggestions, column_kind, read_sample_sheet, suggest_columns
-from workbench.settings import parse_settings, set_samples_text
+from workbench.settings import parse_settings, read_settings_text, set_samples_text
 from workbench.store import Change, ProjectPaths, project_lock, table_bytes
 from workbench.workflow.blocks import require_columns
 from workbench.workflow.sources import delivered_file, keep_source
@@ -56,7 +56,7 @@ def add_samples(paths: ProjectPaths, delivery: SheetDelivery) -> SheetAccount:
         require_columns([*delivery.group, *delivery.adjust], list(frame.columns), delivery.file)
         kinds = unclear_kinds(frame, delivery.adjust)
         text = set_samples_text(
-            paths.settings.read_text("utf-8"),
+            read_settings_text(paths.settings),
             id=str(frame.index.name),
             group=list(delivery.group),
             adjust=list(delivery.adjust),

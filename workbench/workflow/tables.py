@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 
 import numpy as np
+import pandas as pd
 from anndata import AnnData
 
 from workbench.prepare import MeasuredTable
@@ -42,6 +43,18 @@ def table_of(adata: AnnData, without: dict[str, str]) -> MeasuredTable:
         levels=levels,
         runs=runs,
     )
+
+
+def plain_table(adata: AnnData) -> pd.DataFrame:
+    """Return a block's values as a plain table, samples in rows; text features come back as text."""
+    frame = pd.DataFrame(np.asarray(adata.X), index=pd.Index(map(str, adata.obs_names), name="sample"))
+    frame.columns = pd.Index(map(str, adata.var_names), dtype=object)
+    levels = adata.var["levels"] if "levels" in adata.var and "origin" not in adata.var else ()
+    for column, text in zip(frame.columns, levels, strict=False):
+        if text:
+            names = json.loads(text)
+            frame[column] = ["" if np.isnan(code) else names[int(code)] for code in frame[column]]
+    return frame.reset_index()
 
 
 def excluded(state: ProjectState, name: str) -> dict[str, str]:
