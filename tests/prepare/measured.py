@@ -10,7 +10,7 @@ import numpy as np
 from workbench.prepare import MeasuredTable, RunTable
 from workbench.prepare.tables import Levels, StepTable
 
-KINDS = ("counts", "intensities", "log", "continuous", "mixed")
+KINDS = ("counts", "intensities", "log", "proportions", "beta", "continuous", "mixed")
 
 
 def table_of(values: np.ndarray, levels: Levels | None = None, prefix: str = "F") -> MeasuredTable:
@@ -77,6 +77,23 @@ def continuous(seed: int = 0, n: int = 14, p: int = 40) -> MeasuredTable:
     return table_of(np.where(rng.random((n, p)) < 0.1, np.nan, values))
 
 
+def proportions(seed: int = 0, n: int = 14, p: int = 60) -> MeasuredTable:
+    """Return shares of a whole with zeros and a few gaps."""
+    rng = np.random.default_rng(seed)
+    counts = rng.poisson(rng.lognormal(2.0, 2.0, p) * np.exp(0.8 * factor_logs(rng, n, p))).astype(float)
+    values = counts / counts.sum(axis=1, keepdims=True)
+    return table_of(np.where(rng.random((n, p)) < 0.02, np.nan, values))
+
+
+def beta(seed: int = 0, n: int = 14, p: int = 100) -> MeasuredTable:
+    """Return methylated shares with gaps, some of them exactly 0 or 1."""
+    rng = np.random.default_rng(seed)
+    values = 1.0 / (1.0 + np.exp(-rng.normal(0, 2, p) - 0.5 * factor_logs(rng, n, p)))
+    values[rng.random((n, p)) < 0.02] = 0.0
+    values[rng.random((n, p)) < 0.02] = 1.0
+    return table_of(np.where(rng.random((n, p)) < 0.05, np.nan, values))
+
+
 def mixed(seed: int = 0, n: int = 14, p: int = 8) -> MeasuredTable:
     """Return numbers and text of two and of three levels, in turn, with gaps."""
     rng = np.random.default_rng(seed)
@@ -95,6 +112,8 @@ BUILDERS: dict[str, Callable[..., MeasuredTable]] = {
     "counts": counts,
     "intensities": intensities,
     "log": log,
+    "proportions": proportions,
+    "beta": beta,
     "continuous": continuous,
     "mixed": mixed,
 }

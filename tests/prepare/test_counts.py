@@ -9,7 +9,8 @@ from prepare.measured import counts, step_table, table_of
 
 from workbench.errors import InputError
 from workbench.prepare import recipe_for
-from workbench.prepare.counts import CountFilter, LogOfCounts, SizeFactors
+from workbench.prepare.counts import CountFilter, LogOfCounts
+from workbench.prepare.size_factors import SizeFactors
 from workbench.prepare.steps import FitContext
 from workbench.prepare.tables import MeasuredTable
 

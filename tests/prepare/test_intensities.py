@@ -10,7 +10,8 @@ from scipy import stats
 
 from workbench.errors import InputError
 from workbench.prepare import recipe_for
-from workbench.prepare.intensities import Quotients, ZerosAreMissing
+from workbench.prepare.intensities import ZerosAreMissing
+from workbench.prepare.quotients import Quotients
 from workbench.prepare.steps import DropRarelySeen, FitContext
 
 NO_GROUPS = FitContext(None, 1)

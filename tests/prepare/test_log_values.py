@@ -1,4 +1,4 @@
-"""Logarithms: a look at the scale, and medians."""
+"""Logarithms: medians."""
 
 from __future__ import annotations
 
@@ -9,34 +9,10 @@ from prepare.measured import log, step_table, table_of
 
 from workbench.errors import InputError
 from workbench.prepare import recipe_for
-from workbench.prepare.log_values import LookAtScale, MedianCentring
+from workbench.prepare.log_values import MedianCentring
 from workbench.prepare.steps import FitContext
 
 NO_GROUPS = FitContext(None, 1)
-
-
-@pytest.mark.parametrize(
-    ("values", "words"),
-    [
-        (np.array([[1.5, 2.0], [12.0, np.nan]]), "values from 1.5 to 12, taken for logarithms"),
-        (
-            np.array([[1.5, 2.0], [12000.0, 8.0]]),
-            r"caution: values from 1.5 to 12000 do not look like logarithms",
-        ),
-        (
-            np.array([[-150.0, 2.5], [1.0, 8.0]]),
-            r"caution: values from -150 to 8 do not look like logarithms",
-        ),
-        (
-            np.array([[1.0, 0.0], [12.0, np.nan]]),
-            r"caution: values from 0 to 12, all whole numbers, look like counts",
-        ),
-    ],
-)
-def test_values_that_do_not_look_like_logarithms_raise_a_caution(values: np.ndarray, words: str) -> None:
-    table, account = LookAtScale().fit(step_table(values), NO_GROUPS).transform(step_table(values))
-    assert account.sentence.startswith(words)
-    assert_array_equal(table.values, values)
 
 
 def test_shifting_a_sample_changes_nothing_but_a_constant_of_the_table() -> None:

@@ -14,6 +14,7 @@ from prepare.measured import BUILDERS, KINDS, table_of
 from workbench.errors import InputError
 from workbench.prepare import MeasuredTable, PreparedTable, recipe_for
 from workbench.prepare.tables import StepTable
+from workbench.settings import prepare_settings
 
 every_kind = pytest.mark.parametrize("kind", KINDS)
 TRAINING, HELD_OUT = range(10), range(10, 14)
@@ -81,7 +82,7 @@ def test_held_out_values_change_nothing_that_a_step_has_learnt(kind: str) -> Non
     fitted = recipe_for("a layer", kind).fit(table.take(TRAINING), smallest_group=4, seed=1)
     for step in fitted.steps:
         before = pickle.dumps(step)
-        wild = held_out.with_values(held_out.values if kind == "mixed" else held_out.values * 7 + 1)
+        wild = held_out.with_values(held_out.values if kind in ("mixed", "beta") else held_out.values * 7 + 1)
         step.transform(wild)
         assert pickle.dumps(step) == before
         training, held_out = step.transform(training)[0], step.transform(held_out)[0]
@@ -182,9 +183,9 @@ def test_duplicated_samples_and_features_stay_duplicates(kind: str) -> None:
 
 @every_kind
 def test_a_table_without_variation_is_refused_with_the_reasons(kind: str) -> None:
-    flat = table_of(np.full((6, 3), 20.0))
+    flat = table_of(np.full((6, 3), 1.0))
     with pytest.raises(
-        InputError, match=r"no feature is left of 3: unusable features: 3 \(constant: 20 wherever"
+        InputError, match=r"no feature is left of 3: unusable features: 3 \(constant: 1 wherever"
     ):
         prepared(kind, flat)
 
@@ -200,13 +201,14 @@ def test_empty_features_are_dropped_and_listed(kind: str) -> None:
 
 def test_what_cannot_be_prepared_is_refused() -> None:
     with pytest.raises(
-        InputError, match="no preparation for values `beta` of layer 'methylation'; allowed: `counts`"
+        InputError, match="no preparation for values `ratios` of layer 'x'; allowed: `counts`"
     ):
-        recipe_for("methylation", "beta")
+        recipe_for("x", "ratios")
+    settings = prepare_settings("x", "log", {})
     with pytest.raises(
-        InputError, match=r"counts of microbes .* log-ratios, which this version does not compute"
+        InputError, match=r"settings are for another kind than values `counts` .* LogPreparation"
     ):
-        recipe_for("microbes", "counts")
+        recipe_for("x", "counts", settings)
     text = table_of(np.array([[0.0], [1.0]]), (("a", "b"),))
     with pytest.raises(InputError, match="text features in a block of `log`: 'F0'; declare values = `mixed`"):
         recipe_for("x", "log").fit(text, smallest_group=None, seed=1)

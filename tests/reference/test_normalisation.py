@@ -8,8 +8,8 @@ from numpy.testing import assert_allclose
 from prepare.measured import step_table
 from scipy.stats import gmean
 
-from workbench.prepare.counts import SizeFactors, geometric_means, median_of_ratios
-from workbench.prepare.intensities import Quotients
+from workbench.prepare.quotients import Quotients
+from workbench.prepare.size_factors import SizeFactors, geometric_means, median_of_ratios
 from workbench.prepare.steps import FitContext
 
 NO_GROUPS = FitContext(None, 1)

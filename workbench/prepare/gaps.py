@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from typing import ClassVar
 
 import numpy as np
 
@@ -11,8 +12,10 @@ from workbench.prepare.draws import uniform_table
 from workbench.prepare.low_tails import LowTails, fit_low_tails
 from workbench.prepare.neighbours import Donors, neighbour_count
 from workbench.prepare.steps import FitContext, Settled
-from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable
+from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable, some
 
+WARNED_SAMPLE = 0.3
+WARNED_FEATURE = 0.5
 REFERENCES = "Troyanskaya et al. 2001, Bioinformatics 17:520; Tobin 1958, Econometrica 26:24"
 
 
@@ -25,10 +28,20 @@ class FillGaps(Settled):
     censored : bool
         Look for left-censored gaps (see ``censoring`` and ``low_tails``). Without, or without evidence, all
         gaps are filled from neighbours.
+    settable : bool
+        Whether the settings of the block can choose.
     """
 
     censored: bool
+    settable: bool = False
     step: str = "gaps"
+    why: ClassVar[str] = "a gap that stands for too little to see is a low value; one by chance says nothing"
+    paper: ClassVar[str] = REFERENCES
+
+    @property
+    def keys(self) -> tuple[str, ...]:  # type: ignore[override]
+        """The key that chooses, where there is one."""
+        return ("gaps",) if self.settable else ()
 
     @property
     def rule(self) -> str:
@@ -67,7 +80,7 @@ class FittedGaps:
         drawn = self._draws(table, gaps)
         filled = self.donors.estimates(table.values, gaps & np.isnan(drawn), table.samples)
         filled = np.where(np.isnan(drawn), filled, drawn)
-        account = self._account(gaps, int((~np.isnan(drawn)).sum()))
+        account = self._account(gaps, int((~np.isnan(drawn)).sum()), table)
         return replace(table, values=filled, imputed=table.imputed | gaps), account
 
     def _draws(self, table: StepTable, gaps: Mask) -> Matrix:
@@ -86,14 +99,18 @@ class FittedGaps:
         draws[:, columns] = np.where(low, self.tails.draw(quantiles, table.scale), np.nan)
         return draws
 
-    def _account(self, gaps: Mask, drawn: int) -> StepAccount:
+    def _account(self, gaps: Mask, drawn: int, table: StepTable) -> StepAccount:
         total = int(gaps.sum())
+        rows, columns = gaps.mean(axis=1), gaps.mean(axis=0)
         numbers: dict[str, float | int | str] = {
             "gaps": total,
             "values": gaps.size,
             "from_low_tail": drawn,
             "from_neighbours": total - drawn,
             "neighbours": self.donors.k,
+            "largest_share_of_a_sample": float(rows.max()),
+            "largest_share_of_a_feature": float(columns.max()),
+            "features_mostly_filled": int((columns > WARNED_FEATURE).sum()),
         }
         if self.settings.censored:
             numbers |= {
@@ -102,7 +119,24 @@ class FittedGaps:
                 "gap_rate_strongest_third": self.censoring.high_rate,
                 "rank_correlation": self.censoring.rank_correlation,
             }
-        return StepAccount(self.settings.step, self._sentence(gaps, drawn), numbers, reference=REFERENCES)
+        cautions = self._cautions(rows, columns, table)
+        sentence = self._sentence(gaps, drawn)
+        return StepAccount(self.settings.step, sentence, numbers, reference=REFERENCES, cautions=cautions)
+
+    def _cautions(self, rows: Matrix, columns: Matrix, table: StepTable) -> tuple[str, ...]:
+        told = []
+        samples = [table.samples[row] for row in np.flatnonzero(rows > WARNED_SAMPLE)]
+        features = [table.features[column] for column in np.flatnonzero(columns > WARNED_FEATURE)]
+        if samples:
+            told.append(
+                f"more than {WARNED_SAMPLE:.0%} of the values filled in, not measured, in {some(samples)}"
+            )
+        if features:
+            told.append(
+                f"{len(features):,} features have more than {WARNED_FEATURE:.0%} of their values filled in: "
+                f"{some(features)}"
+            )
+        return tuple(told)
 
     def _sentence(self, gaps: Mask, drawn: int) -> str:
         total = int(gaps.sum())

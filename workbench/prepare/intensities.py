@@ -1,50 +1,62 @@
-"""Intensities of mass spectrometry and the like: zeros, seen features, dilution, logarithm, gaps.
-
-Quotient normalisation assumes that most features do not change between samples, so that the typical
-quotient of a sample's intensities to a reference is its dilution (Dieterle, Ross, Schlotterbeck & Senn
-2006, Analytical Chemistry 78:4281-4290).
-"""
+"""Intensities of mass spectrometry and the like: zeros, blanks, drift, dilution, logarithm, gaps."""
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from typing import ClassVar
 
 import numpy as np
 
 from workbench.errors import InputError
 from workbench.prepare.combining import CombineRuns
+from workbench.prepare.controls import BlankFilter, PoolScatter
+from workbench.prepare.drift import Drift
 from workbench.prepare.gaps import FillGaps
+from workbench.prepare.quotients import Quotients
 from workbench.prepare.steps import (
-    ENOUGH_REFERENCE,
-    FEWEST_FOR_SCALE,
     DropFlat,
     DropRarelySeen,
     DropUnusable,
     FitContext,
     Settled,
     Step,
-    check_found,
-    extremes,
-    median_rows,
-    reference_features,
+    SwitchedOff,
+    column_range,
 )
-from workbench.prepare.tables import Mask, Matrix, MeasuredTable, StepAccount, StepTable
+from workbench.prepare.tables import Matrix, MeasuredTable, StepAccount, StepTable
+from workbench.settings.prepare_schema import IntensitiesPreparation, LogPreparation
 
-DIETERLE = "Dieterle et al. 2006, Analytical Chemistry 78:4281"
 
-
-def intensity_steps() -> tuple[Step, ...]:
+def intensity_steps(settings: IntensitiesPreparation) -> tuple[Step, ...]:
     """Return the steps for intensities, in order."""
+    missing = settings.zeros == "missing"
+    quotient = settings.normalisation == "quotient"
+    blanks: Step = BlankFilter(settings.blank_ratio)
+    if settings.blanks == "none":
+        blanks = SwitchedOff("blanks", "blanks", needs_runs=True)
     return (
-        ZerosAreMissing(),
+        ZerosAreMissing() if missing else SwitchedOff("zeros", "zeros"),
         DropUnusable(),
-        DropRarelySeen(),
-        Quotients(),
-        LogOfIntensities(),
+        blanks,
+        *pool_steps(settings, logged=False),
+        DropRarelySeen(settings.seen_share),
+        Quotients() if quotient else SwitchedOff("quotient normalisation", "normalisation"),
+        LogOfIntensities() if missing else LogWithZeros(),
         CombineRuns(),
-        FillGaps(censored=True),
+        FillGaps(censored=settings.gaps == "evidence", settable=True),
         DropFlat(),
     )
+
+
+def pool_steps(settings: IntensitiesPreparation | LogPreparation, logged: bool) -> tuple[Step, ...]:
+    """Return the steps that rest on pools: drift, and features that scatter."""
+    drift: Step = Drift(logged, settings.fewest_pools, settings.span)
+    if settings.drift == "none":
+        drift = SwitchedOff("drift", "drift", needs_runs=True)
+    scatter: Step = PoolScatter(logged, settings.pool_scatter)
+    if settings.pool_filter == "none":
+        scatter = SwitchedOff("pool scatter", "pool_filter", needs_runs=True)
+    return (drift, scatter)
 
 
 def check_intensities(table: MeasuredTable) -> None:
@@ -68,6 +80,8 @@ class ZerosAreMissing(Settled):
     """Turns zero into missing: the instrument saw nothing, which is not an amount of nothing."""
 
     step: str = "zeros"
+    why: ClassVar[str] = "an instrument that sees nothing writes zero; that is not an amount of nothing"
+    keys: ClassVar[tuple[str, ...]] = ("zeros",)
     rule: str = "zero means missing"
 
     def fit(self, table: StepTable, context: FitContext) -> ZerosAreMissing:  # noqa: ARG002
@@ -80,115 +94,13 @@ class ZerosAreMissing(Settled):
         count, cells = int(zero.sum()), zero.size
         sentence = f"zero means missing: {count:,} of {cells:,} values"
         account = StepAccount(self.step, sentence, {"zeros": count, "values": cells})
-        return table.with_values(np.where(zero, np.nan, table.values)), account
+        return self._without(table), account
 
-
-def reference_profile(intensities: Matrix) -> Matrix:
-    """Return the reference: the median over samples after each is brought to the same total.
-
-    Totals are sums over the features that the sample has; the profile is on the scale of the sample
-    with the median total.
-    """
-    totals = np.nansum(intensities, axis=1, keepdims=True)
-    usable = totals[:, 0] > 0
-    shares = intensities[usable] / totals[usable]
-    return median_rows(shares.T, ~np.isnan(shares.T)) * float(np.median(totals[usable]))
-
-
-def median_quotients(intensities: Matrix, reference: Matrix) -> Matrix:
-    """Return each sample's dilution: the median quotient to the reference over what the sample has.
-
-    Parameters
-    ----------
-    intensities : ndarray of shape (n_samples, n_features)
-        NaN takes no part.
-    reference : ndarray of shape (n_features,)
-        From :func:`reference_profile` of the training samples.
-
-    Returns
-    -------
-    ndarray of shape (n_samples,)
-        NaN for a sample that has none of the features.
-
-    References
-    ----------
-    Dieterle et al. 2006, Analytical Chemistry 78:4281-4290.
-
-    Examples
-    --------
-    One feature of the second sample is up tenfold; its dilution, a half, is found all the same:
-
-    >>> profile = np.array([4.0, 8.0, 2.0, 6.0, 1.0])
-    >>> median_quotients(np.vstack([profile, profile * [0.5, 0.5, 5.0, 0.5, 0.5]]), profile).tolist()
-    [1.0, 0.5]
-    """
-    quotients = intensities / reference
-    return median_rows(quotients, ~np.isnan(quotients))
-
-
-@dataclass(frozen=True)
-class Quotients(Settled):
-    """Divides each sample by its dilution, found by quotients to a reference.
-
-    The reference holds the features seen in the most training samples: those seen in all of them
-    when there are ``enough`` of these, else the ``enough`` most seen. Fewer than ``fewest`` features:
-    no normalisation, and the account says so.
-    """
-
-    enough: int = ENOUGH_REFERENCE
-    fewest: int = FEWEST_FOR_SCALE
-    step: str = "quotient normalisation"
-    rule: str = "values divided by the sample's median quotient to the reference profile"
-
-    def fit(self, table: StepTable, context: FitContext) -> FittedQuotients:  # noqa: ARG002
-        """Return the step with its reference."""
-        seen = (~np.isnan(table.values)).sum(axis=0)
-        used, cut = reference_features(seen, self.enough, self.fewest)
-        reference = reference_profile(table.values[:, used]) if used.any() else np.empty(0)
-        return FittedQuotients(self, used, reference, cut, len(table.samples), table.row_word)
-
-
-@dataclass(frozen=True)
-class FittedQuotients:
-    """Dilutions against the training reference."""
-
-    settings: Quotients
-    used: Mask
-    reference: Matrix
-    cut: int
-    n_training: int
-    row_word: str
-
-    def factors(self, table: StepTable) -> Matrix:
-        """Return the dilution of each sample, 1 where there is no reference.
-
-        Raises
-        ------
-        InputError
-            When a sample has none of the features of the reference.
-        """
-        if not self.used.any():
-            return np.ones(len(table.samples))
-        factors = median_quotients(table.values[:, self.used], self.reference)
-        return check_found("dilution", factors, table, int(self.used.sum()))
-
-    def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
-        """Return values divided by dilutions."""
-        factors = self.factors(table)
-        return table.divided(factors), self._account(factors, table.samples)
-
-    def _account(self, factors: Matrix, samples: tuple[str, ...]) -> StepAccount:
-        used = int(self.used.sum())
-        numbers: dict[str, float | int | str] = {"reference_features": used, "reference_seen_in": self.cut}
-        numbers |= extremes("dilution", factors, samples)
-        if used:
-            sentence = (
-                f"values divided by the sample's median quotient to the reference profile of {used:,} "
-                f"features seen in at least {self.cut} of {self.n_training} {self.row_word}"
-            )
-        else:
-            sentence = f"not normalised: fewer than {self.settings.fewest} features; values taken as they are"
-        return StepAccount(self.settings.step, sentence, numbers, reference=DIETERLE)
+    def _without(self, table: StepTable) -> StepTable:
+        controls = table.controls
+        if controls is not None:
+            controls = replace(controls, values=np.where(controls.values == 0, np.nan, controls.values))
+        return replace(table, values=np.where(table.values == 0, np.nan, table.values), controls=controls)
 
 
 @dataclass(frozen=True)
@@ -197,6 +109,7 @@ class LogOfIntensities(Settled):
 
     step: str = "logarithm"
     rule: str = "log2"
+    why: ClassVar[str] = "effects on amounts multiply, and correlation is about what adds"
 
     def fit(self, table: StepTable, context: FitContext) -> LogOfIntensities:  # noqa: ARG002
         """Return the step itself: there is nothing to learn."""
@@ -205,3 +118,34 @@ class LogOfIntensities(Settled):
     def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
         """Return log2 of the values."""
         return table.with_values(np.log2(table.values)), StepAccount(self.step, self.rule)
+
+
+@dataclass(frozen=True)
+class LogWithZeros(Settled):
+    """Takes log2 after adding half of each feature's smallest positive training value."""
+
+    step: str = "logarithm"
+    rule: str = "log2 of the value and half of the feature's smallest value above zero"
+    why: ClassVar[str] = "zeros are amounts here, as the settings say, and zero has no logarithm"
+    keys: ClassVar[tuple[str, ...]] = ("zeros",)
+
+    def fit(self, table: StepTable, context: FitContext) -> FittedLogWithZeros:  # noqa: ARG002
+        """Return the step with what is added; nothing where a feature has no zero."""
+        values = table.values
+        smallest, _ = column_range(np.where(values > 0, values, np.nan))
+        return FittedLogWithZeros(self, smallest / 2.0)
+
+
+@dataclass(frozen=True)
+class FittedLogWithZeros:
+    """What is added to each feature."""
+
+    settings: LogWithZeros
+    added: Matrix
+
+    def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
+        """Return log2 of the values and what is added."""
+        zeros = int((table.values == 0).sum())
+        sentence = f"{self.settings.rule}; {zeros:,} of {table.values.size:,} values are zero"
+        account = StepAccount(self.settings.step, sentence, {"zeros": zeros})
+        return table.with_values(np.log2(table.values + self.added)), account

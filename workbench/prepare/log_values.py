@@ -1,13 +1,16 @@
-"""Values that are logarithms already: a look at the scale, median centring, gaps."""
+"""Values that are logarithms already: drift, median centring, gaps."""
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from typing import ClassVar
 
 import numpy as np
 
 from workbench.prepare.combining import CombineRuns
 from workbench.prepare.gaps import FillGaps
+from workbench.prepare.guards import Usual
+from workbench.prepare.intensities import pool_steps
 from workbench.prepare.steps import (
     ENOUGH_REFERENCE,
     FEWEST_FOR_SCALE,
@@ -17,73 +20,28 @@ from workbench.prepare.steps import (
     FitContext,
     Settled,
     Step,
+    SwitchedOff,
     check_found,
-    column_range,
     extremes,
     median_rows,
     reference_features,
 )
 from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable
+from workbench.settings.prepare_schema import LogPreparation
 
-LARGEST_LOG = 100.0
 
-
-def log_steps() -> tuple[Step, ...]:
+def log_steps(settings: LogPreparation) -> tuple[Step, ...]:
     """Return the steps for logarithms, in order."""
+    centred = settings.centring == "median"
     return (
         DropUnusable(),
-        LookAtScale(),
-        DropRarelySeen(),
-        MedianCentring(),
+        *pool_steps(settings, logged=True),
+        DropRarelySeen(settings.seen_share),
+        MedianCentring() if centred else SwitchedOff("median centring", "centring"),
         CombineRuns(),
-        FillGaps(censored=True),
+        FillGaps(censored=settings.gaps == "evidence", settable=True),
         DropFlat(),
     )
-
-
-@dataclass(frozen=True)
-class LookAtScale(Settled):
-    """Says so when the values do not look like logarithms; changes nothing.
-
-    They do not when a value is beyond 100 in size (2^100 is more than any instrument counts), or when
-    all values are whole numbers of 0 and above (counts).
-    """
-
-    largest: float = LARGEST_LOG
-    step: str = "scale"
-    rule: str = "a look at whether the values are logarithms"
-
-    def fit(self, table: StepTable, context: FitContext) -> SeenScale:  # noqa: ARG002
-        """Return the account of the training values."""
-        low, high = column_range(table.values)
-        smallest, largest = float(np.min(low, initial=np.inf)), float(np.max(high, initial=-np.inf))
-        numbers: dict[str, float | int | str] = {"smallest": smallest, "largest": largest}
-        return SeenScale(StepAccount(self.step, self._sentence(table.values, smallest, largest), numbers))
-
-    def _sentence(self, values: Matrix, smallest: float, largest: float) -> str:
-        span = f"values from {smallest:g} to {largest:g}"
-        if max(-smallest, largest) > self.largest:
-            return (
-                f"caution: {span} do not look like logarithms; if they are raw, declare the block's values "
-                "as `intensities` or `counts`"
-            )
-        if smallest >= 0 and not np.any(np.mod(values[~np.isnan(values)], 1)):
-            return (
-                f"caution: {span}, all whole numbers, look like counts; if so, declare the block's values "
-                "as `counts`"
-            )
-        return f"{span}, taken for logarithms"
-
-
-@dataclass(frozen=True)
-class SeenScale:
-    """The account of the training values' scale."""
-
-    account: StepAccount
-
-    def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
-        """Return the table as it is."""
-        return table, self.account
 
 
 @dataclass(frozen=True)
@@ -99,6 +57,8 @@ class MedianCentring(Settled):
     fewest: int = FEWEST_FOR_SCALE
     step: str = "median centring"
     rule: str = "each sample shifted to the same median"
+    why: ClassVar[str] = "how much of a sample was loaded shifts all of its logarithms alike"
+    keys: ClassVar[tuple[str, ...]] = ("centring",)
 
     def fit(self, table: StepTable, context: FitContext) -> FittedCentring:  # noqa: ARG002
         """Return the step with its features and the typical median."""
@@ -106,7 +66,9 @@ class MedianCentring(Settled):
         used, cut = reference_features(seen, self.enough, self.fewest)
         medians = median_rows(table.values[:, used], ~np.isnan(table.values[:, used]))
         typical = float(np.median(medians[~np.isnan(medians)])) if used.any() else 0.0
-        return FittedCentring(self, used, typical, cut, len(table.samples), table.row_word)
+        usual = Usual(0.0, np.inf)
+        fitted = FittedCentring(self, used, typical, cut, len(table.samples), table.row_word, usual)
+        return replace(fitted, usual=Usual.of(fitted.shifts(table)))
 
 
 @dataclass(frozen=True)
@@ -119,6 +81,7 @@ class FittedCentring:
     cut: int
     n_training: int
     row_word: str
+    usual: Usual
 
     def shifts(self, table: StepTable) -> Matrix:
         """Return what is taken from each sample, 0 where there are too few features.
@@ -150,4 +113,5 @@ class FittedCentring:
                 f"each sample shifted to a median of {self.typical:.4g} over {used:,} features seen in "
                 f"at least {self.cut} of {self.n_training} {self.row_word}"
             )
-        return StepAccount(self.settings.step, sentence, numbers)
+        cautions = self.usual.cautions("median", shifts, samples)
+        return StepAccount(self.settings.step, sentence, numbers, cautions=cautions)

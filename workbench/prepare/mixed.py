@@ -3,26 +3,37 @@
 Numbers are kept. Text with two levels becomes 0 / 1 in the order of its levels; text with more becomes
 one ``column=level`` indicator per level. Levels are those that the training samples have; any other
 level counts as missing. A gap says nothing: a number becomes the training median, a 0 / 1 column the
-share of ones in training.
+share of ones in training. Text whose levels have an order, which only the settings can tell, becomes 0, 1, 2 ...
+in that order.
 """
 
 from __future__ import annotations
 
 from collections import Counter
 from dataclasses import dataclass, replace
+from typing import ClassVar
 
 import numpy as np
 
 from workbench.errors import InputError
 from workbench.prepare.steps import DropFlat, DropRarelySeen, DropUnusable, FitContext, Settled, Step
 from workbench.prepare.tables import Matrix, MeasuredTable, StepAccount, StepTable, some
+from workbench.prepare.transforms import transform_steps
+from workbench.settings.prepare_schema import MixedPreparation
 
 SMALLEST_LEVEL = 2
 
 
-def mixed_steps() -> tuple[Step, ...]:
+def mixed_steps(settings: MixedPreparation) -> tuple[Step, ...]:
     """Return the steps for mixed values, in order."""
-    return (DropUnusable(), DropRarelySeen(), TextToNumbers(), TypicalValues(), DropFlat())
+    return (
+        DropUnusable(),
+        DropRarelySeen(settings.seen_share),
+        *transform_steps(settings),
+        TextToNumbers(tuple(settings.ordered.items())),
+        TypicalValues(),
+        DropFlat(),
+    )
 
 
 def check_mixed(table: MeasuredTable) -> None:
@@ -60,11 +71,14 @@ class TextCode:
         Levels seen in training, in order; empty for a number.
     columns : tuple of (name, level)
         Columns made, each 1 at its level; a number has one, of its own name.
+    ordered : bool
+        Whether the levels become 0, 1, 2 ... in one column.
     """
 
     feature: str
     levels: tuple[str, ...]
     columns: tuple[tuple[str, str], ...]
+    ordered: bool = False
 
     def encode(self, values: Matrix, levels: tuple[str, ...] | None) -> Matrix:
         """Return the columns of these cells, (n_samples, n_columns); NaN for gaps and unknown levels."""
@@ -74,6 +88,9 @@ class TextCode:
         codes = np.where(np.isnan(values), len(names) - 1, values).astype(np.intp)
         cells = names[codes]
         known = np.isin(cells, np.array(self.levels, dtype=object)) & ~np.isnan(values)
+        if self.ordered:
+            places = {level: float(place) for place, level in enumerate(self.levels)}
+            return np.array([places.get(cell, np.nan) for cell in cells])[:, None]
         hits = np.column_stack([cells == level for _, level in self.columns]).astype(np.float64)
         hits[~known] = np.nan
         return hits
@@ -81,11 +98,27 @@ class TextCode:
 
 @dataclass(frozen=True)
 class TextToNumbers(Settled):
-    """Turns text into 0 / 1 columns; levels of fewer than two training samples make no column."""
+    """Turns text into numbers; levels of fewer than two training samples make no 0 / 1 column.
 
+    Parameters
+    ----------
+    ordered : tuple of (feature, levels)
+        Text whose levels have an order, lowest first: it becomes one column of 0, 1, 2 ...
+    """
+
+    ordered: tuple[tuple[str, tuple[str, ...]], ...] = ()
     smallest: int = SMALLEST_LEVEL
     step: str = "text to numbers"
-    rule: str = "two-level text to 0 / 1, other text to one column=level indicator per level"
+    why: ClassVar[str] = "correlation needs numbers; an order of levels is known to their owner alone"
+    keys: ClassVar[tuple[str, ...]] = ("ordered",)
+
+    @property
+    def rule(self) -> str:
+        """What the step does, in one line."""
+        plain = "two-level text to 0 / 1, other text to one column=level indicator per level"
+        return (
+            f"{plain}; {some([name for name, _ in self.ordered])} to 0, 1, 2 ..." if self.ordered else plain
+        )
 
     def fit(self, table: StepTable, context: FitContext) -> FittedText:  # noqa: ARG002
         """Return the step with the levels that these samples have."""
@@ -105,6 +138,9 @@ class TextToNumbers(Settled):
     ) -> tuple[TextCode, dict[str, str]]:
         if levels is None:
             return TextCode(feature, (), ((feature, ""),)), {}
+        order = dict(self.ordered).get(feature)
+        if order is not None:
+            return TextCode(feature, order, ((feature, ""),), ordered=True), {}
         counts = np.bincount(values[~np.isnan(values)].astype(np.intp), minlength=len(levels))
         seen = tuple(level for level, count in zip(levels, counts, strict=True) if count)
         rare = {f"{feature}={level}": int(count) for level, count in zip(levels, counts, strict=True)}
@@ -157,7 +193,10 @@ class FittedText:
             "indicators": sum(len(code.columns) for code in text),
         }
         for code in text:
-            if len(code.levels) == 2 and code.columns:
+            if code.ordered:
+                listed = ", ".join(f"{place} = {level}" for place, level in enumerate(code.levels))
+                numbers[f"coding of {code.feature}"] = listed
+            elif len(code.levels) == 2 and code.columns:
                 numbers[f"coding of {code.feature}"] = f"0 = {code.levels[0]}, 1 = {code.levels[1]}"
         unknown = self._unknown(table)
         numbers |= {
@@ -165,7 +204,7 @@ class FittedText:
         }
         sentence = (
             f"{numbers['numbers']} numeric features kept, {numbers['text']} text features turned into "
-            f"{numbers['indicators']} columns of 0 / 1"
+            f"{numbers['indicators']} columns of numbers"
         )
         if unknown:
             sentence += f"; levels that training lacks count as missing ({some(list(unknown))})"
@@ -189,6 +228,7 @@ class TypicalValues(Settled):
     """Fills gaps so that they say nothing: the median of numbers, the share of ones of 0 / 1 columns."""
 
     step: str = "gaps"
+    why: ClassVar[str] = "a typical value says nothing of the sample"
     rule: str = "gaps filled by the training median of a number, the training share of a 0 / 1 column"
 
     def fit(self, table: StepTable, context: FitContext) -> FittedTypical:  # noqa: ARG002

@@ -12,69 +12,46 @@ one, against what it has learnt.
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass
 from itertools import chain
 
 import numpy as np
 
 from workbench.errors import InputError
-from workbench.prepare.continuous import continuous_steps
-from workbench.prepare.counts import check_count_cells, check_counts, count_steps
-from workbench.prepare.intensities import check_intensities, intensity_steps
-from workbench.prepare.log_values import log_steps
-from workbench.prepare.mixed import check_mixed, mixed_steps
+from workbench.prepare.account import Explanation, explain_step, explained
+from workbench.prepare.kinds import Kind, check_names, kind_of
 from workbench.prepare.steps import FitContext, FittedStep, Step
 from workbench.prepare.tables import MeasuredTable, PreparedTable, StepAccount, StepTable, some
-
-Check = Callable[[MeasuredTable], None]
+from workbench.settings.prepare_schema import PrepareSettings, preparation_model
 
 FEWEST_TRAINING_SAMPLES = 2
 
 
-def _anything(table: MeasuredTable) -> None:
-    """Accept any finite number."""
-
-
-def _no_runs(table: MeasuredTable) -> None:  # noqa: ARG001
-    """Refuse any run: text has no mean."""
-    raise InputError("a run sheet for `mixed` values: text of several runs cannot be averaged; leave it out")
-
-
-_KINDS: dict[str, tuple[Callable[[], tuple[Step, ...]], Check, Check]] = {
-    "counts": (count_steps, check_counts, check_count_cells),
-    "intensities": (intensity_steps, check_intensities, check_intensities),
-    "log": (log_steps, _anything, _anything),
-    "continuous": (continuous_steps, _anything, _anything),
-    "mixed": (mixed_steps, check_mixed, _no_runs),
-}
-
-
-def recipe_for(layer: str, values: str) -> Recipe:
-    """Return the default recipe of a layer and a kind of values.
+def recipe_for(layer: str, values: str, settings: PrepareSettings | None = None) -> Recipe:
+    """Return the recipe of a layer and a kind of values.
 
     Parameters
     ----------
     layer : str
         ``transcripts``, ``metabolites`` ... or a name of the user's.
-    values : {"counts", "intensities", "log", "continuous", "mixed"}
-        What the numbers are.
+    values : {"counts", "intensities", "log", "proportions", "beta", "continuous", "mixed"}
+        What the numbers are. Counts of the layer ``microbes`` are parts of a whole.
+    settings : PrepareSettings, optional
+        From :func:`workbench.settings.prepare_settings` of the same layer and values; None: the defaults.
 
     Raises
     ------
     InputError
-        For unknown values, and for counts of microbes.
+        For unknown values, and for settings of another kind of values.
     """
-    if values not in _KINDS:
-        allowed = ", ".join(f"`{kind}`" for kind in _KINDS)
-        raise InputError(f"no preparation for values `{values}` of layer '{layer}'; allowed: {allowed}")
-    if layer == "microbes" and values == "counts":
+    kind, model = kind_of(layer, values), preparation_model(layer, values)
+    chosen = model() if settings is None or type(settings) is PrepareSettings else settings
+    if not isinstance(chosen, model):
         raise InputError(
-            "counts of microbes are shares of a whole and need log-ratios, which this version does not "
-            "compute; deliver centred log-ratios and declare values = `continuous`"
+            f"the settings are for another kind than values `{values}` of layer '{layer}': "
+            f"{type(chosen).__name__}; make them by prepare_settings(layer, values, ...)"
         )
-    steps, check, check_runs = _KINDS[values]
-    return Recipe(layer, values, steps(), check, check_runs)
+    return Recipe(layer, values, kind.steps(chosen), kind, chosen)
 
 
 @dataclass(frozen=True)
@@ -87,19 +64,28 @@ class Recipe:
         What the recipe is for.
     steps : tuple of Step
         In order.
-    check, check_runs : callable
-        Refuse tables, and runs as the rows of a table, that cannot be of this kind.
+    kind : Kind
+        What it refuses.
+    settings : PrepareSettings
+        The choices that the steps follow.
     """
 
     layer: str
     values: str
     steps: tuple[Step, ...]
-    check: Check
-    check_runs: Check
+    kind: Kind
+    settings: PrepareSettings
 
-    def explain(self) -> tuple[str, ...]:
-        """Return one line per step: what it would do."""
-        return tuple(step.rule for step in self.steps)
+    def explain(self, *, with_runs: bool = True) -> tuple[Explanation, ...]:
+        """Return what each step would do, why, after which paper, and how to change it.
+
+        Parameters
+        ----------
+        with_runs : bool, default True
+            Also the steps that need a run sheet.
+        """
+        steps = [step for step in self.steps if with_runs or not step.runs_only]
+        return tuple(explain_step(step, self.layer, self.values, self.settings) for step in steps)
 
     def fit(self, table: MeasuredTable, *, smallest_group: int | None, seed: int) -> FittedRecipe:
         """Return the recipe as learnt from these samples.
@@ -126,7 +112,7 @@ class Recipe:
             learnt = step.fit(current, context)
             current, done = learnt.transform(current)
             fitted.append(learnt)
-            account.append(done)
+            account.append(explained(done, explain_step(step, self.layer, self.values, self.settings)))
             _check_features_left(current, account, len(table.features))
         prepared = _prepared(current, tuple(account))
         return FittedRecipe(self, table.features, tuple(fitted), prepared, table.runs is not None)
@@ -148,6 +134,12 @@ class Recipe:
                 f"a smallest group of {smallest_group} among {n} samples; allowed: 1 to {n}, or None"
             )
         _check_kind(self, table)
+        if getattr(self.settings, "check_values", True):
+            self.kind.fits(table)
+        for key in ("transform_features", "ordered"):
+            names = getattr(self.settings, key, ())
+            if not isinstance(names, str):
+                check_names(key, tuple(names), table.features)
 
 
 @dataclass(frozen=True)
@@ -194,9 +186,10 @@ class FittedRecipe:
         table = _aligned(table, self.features)
         _check_kind(self.recipe, table)
         current, account = StepTable.of(table), list[StepAccount]()
-        for step in self.steps:
+        explanations = self.recipe.explain(with_runs=self.with_runs)
+        for step, explanation in zip(self.steps, explanations, strict=True):
             current, done = step.transform(current)
-            account.append(done)
+            account.append(explained(done, explanation))
         return _prepared(current, tuple(account))
 
 
@@ -208,6 +201,7 @@ def _prepared(table: StepTable, account: tuple[StepAccount, ...]) -> PreparedTab
         table.features,
         account,
         table.origins,
+        table.scale,
     )
 
 
@@ -219,9 +213,9 @@ def _check_kind(recipe: Recipe, table: MeasuredTable) -> None:
         raise InputError(
             f"text features in a block of `{recipe.values}`: {some(text)}; declare values = `mixed`"
         )
-    recipe.check(table)
+    recipe.kind.check(table)
     if table.runs is not None:
-        recipe.check_runs(table.run_rows())
+        recipe.kind.check_runs(table.run_rows())
 
 
 def _check_features_left(table: StepTable, account: list[StepAccount], measured: int) -> None:

@@ -66,6 +66,11 @@ class Step(Protocol):
         ...
 
     @property
+    def paper(self) -> str:
+        """Where the method comes from; empty when there is no paper."""
+        ...
+
+    @property
     def keys(self) -> tuple[str, ...]:
         """Keys of ``[blocks.NAME.prepare]`` that change it."""
         ...
@@ -84,6 +89,7 @@ class Settled:
     """What most steps have in common: no settings of their own, no need of a run sheet."""
 
     why: ClassVar[str] = ""
+    paper: ClassVar[str] = ""
     keys: ClassVar[tuple[str, ...]] = ()
     runs_only: ClassVar[bool] = False
 
@@ -175,11 +181,54 @@ def reference_features(seen: NDArray[np.int_], enough: int, fewest: int) -> tupl
 
 
 @dataclass(frozen=True)
+class SwitchedOff:
+    """A step that the settings leave out: it changes nothing, and the account says so."""
+
+    step: str
+    key: str
+    needs_runs: bool = False
+
+    @property
+    def rule(self) -> str:
+        """What the step does, in one line."""
+        return f"switched off by `{self.key}` in the settings"
+
+    @property
+    def why(self) -> str:
+        """Why it is left out."""
+        return "the settings say so"
+
+    @property
+    def paper(self) -> str:
+        """Nothing to cite."""
+        return ""
+
+    @property
+    def keys(self) -> tuple[str, ...]:
+        """The key that switches it on again."""
+        return (self.key,)
+
+    @property
+    def runs_only(self) -> bool:
+        """Whether the step would need runs."""
+        return self.needs_runs
+
+    def fit(self, table: StepTable, context: FitContext) -> SwitchedOff:  # noqa: ARG002
+        """Return the step itself."""
+        return self
+
+    def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
+        """Return the table as it is."""
+        return table, StepAccount(self.step, self.rule)
+
+
+@dataclass(frozen=True)
 class DropUnusable(Settled):
     """Drops features without any value and features with one value only."""
 
     step: str = "unusable features"
     rule: str = "no value in any sample, or the same value in every sample that has one"
+    why: ClassVar[str] = "what does not vary correlates with nothing"
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:  # noqa: ARG002
         """Return the step; constant means that smallest and largest value are equal."""
@@ -208,6 +257,8 @@ class DropRarelySeen(Settled):
 
     share: float = SEEN_SHARE
     step: str = "rarely seen features"
+    why: ClassVar[str] = "a feature with more gaps than values would be mostly made up"
+    keys: ClassVar[tuple[str, ...]] = ("seen_share",)
 
     @property
     def rule(self) -> str:
@@ -237,6 +288,7 @@ class DropFlat(Settled):
 
     step: str = "flat features"
     rule: str = "no variation left after preparation"
+    why: ClassVar[str] = "what does not vary correlates with nothing"
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:  # noqa: ARG002
         """Return the step."""

@@ -113,6 +113,12 @@ class StepAccount:
         Feature -> reason, for features that end with this step.
     reference : str
         The paper that the method comes from; empty when there is none.
+    cautions : tuple of str
+        What a reader should know before trusting the result; empty when there is nothing.
+    rule, why : str
+        What the step does in general, and why.
+    change : str
+        The lines of ``[blocks.NAME.prepare]`` that change it, as they stand now; empty when none does.
     """
 
     step: str
@@ -120,6 +126,10 @@ class StepAccount:
     numbers: dict[str, float | int | str] = field(default_factory=dict)
     dropped: dict[str, str] = field(default_factory=dict)
     reference: str = ""
+    cautions: tuple[str, ...] = ()
+    rule: str = ""
+    why: str = ""
+    change: str = ""
 
 
 @dataclass(frozen=True, eq=False)
@@ -139,6 +149,8 @@ class PreparedTable:
     origins : tuple of str
         For every column the measured feature that it comes from (another name than the column's
         own for ``column=level`` indicators).
+    scale : ndarray of shape (n_samples,)
+        What was taken from each sample's logarithms: log2 of its size factor or dilution, the shift of its median.
     """
 
     values: Matrix
@@ -147,6 +159,12 @@ class PreparedTable:
     features: tuple[str, ...]
     account: tuple[StepAccount, ...]
     origins: tuple[str, ...]
+    scale: Matrix
+
+    @property
+    def cautions(self) -> tuple[str, ...]:
+        """What a reader should know before trusting the values, step by step."""
+        return tuple(caution for step in self.account for caution in step.cautions)
 
     @property
     def dropped(self) -> dict[str, str]:

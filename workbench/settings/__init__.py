@@ -7,6 +7,8 @@ from workbench.settings.edit import remove_block as remove_block_text
 from workbench.settings.edit import set_samples as set_samples_text
 from workbench.settings.load import load_settings, parse_settings, read_settings_text
 from workbench.settings.names import check_name
+from workbench.settings.prepare_keys import PrepareKey, prepare_keys, toml_text
+from workbench.settings.prepare_schema import PrepareSettings, prepare_settings
 from workbench.settings.schema import (
     LAYERS,
     AnalysisSettings,
@@ -25,6 +27,8 @@ __all__ = [
     "BlockSettings",
     "CheckSettings",
     "NetworkSettings",
+    "PrepareKey",
+    "PrepareSettings",
     "SamplesSettings",
     "Settings",
     "StudySettings",
@@ -35,7 +39,10 @@ __all__ = [
     "load_settings",
     "new_project_text",
     "parse_settings",
+    "prepare_keys",
+    "prepare_settings",
     "read_settings_text",
     "remove_block_text",
     "set_samples_text",
+    "toml_text",
 ]

@@ -15,12 +15,14 @@ from pydantic import (
     BeforeValidator,
     ConfigDict,
     Field,
+    SerializeAsAny,
     ValidationInfo,
     field_validator,
 )
 from pydantic_core import PydanticCustomError
 
 from workbench.settings.names import name_fault
+from workbench.settings.prepare_schema import PrepareSettings, validated
 
 FORMAT = 1
 """Version of ``project.toml`` that this program reads and writes."""
@@ -28,7 +30,7 @@ FORMAT = 1
 LAYERS = ("transcripts", "metabolites", "proteins", "lipids", "microbes", "methylation", "clinical")
 """Layers that have a name of their own here; a user may name others."""
 
-Values = Literal["counts", "intensities", "log", "continuous", "mixed"]
+Values = Literal["counts", "intensities", "log", "proportions", "beta", "continuous", "mixed"]
 Kind = Literal["classes", "number"]
 
 
@@ -210,7 +212,7 @@ class BlockSettings(Section):
         The delivered table, relative to the project.
     layer : str
         The biological kind, one of `LAYERS` or a name of the user's.
-    values : {"counts", "intensities", "log", "continuous", "mixed"}
+    values : {"counts", "intensities", "log", "proportions", "beta", "continuous", "mixed"}
         What the numbers are.
     samples_in : {"rows", "columns"} or None
         Where the samples stand; None: found by their names.
@@ -228,6 +230,8 @@ class BlockSettings(Section):
         Sample of this block and the reason why it is left out.
     swap : tuple of Swap
         Samples whose rows were exchanged in the laboratory; each sample in one item at most.
+    prepare : PrepareSettings
+        The choices of the preparation; which there are depends on layer and values.
     """
 
     file: Text
@@ -242,6 +246,15 @@ class BlockSettings(Section):
     adjust: Names = ()
     exclude: dict[str, Text] = Field(default_factory=dict)
     swap: Swaps = ()
+    prepare: SerializeAsAny[PrepareSettings] = Field(default_factory=PrepareSettings, validate_default=True)
+
+    @field_validator("prepare", mode="before")
+    @classmethod
+    def _prepared_by_kind(cls, value: Any, info: ValidationInfo) -> PrepareSettings:
+        layer, values = info.data.get("layer"), info.data.get("values")
+        if layer is None or values is None:
+            return PrepareSettings()
+        return validated(layer, values, value)
 
     @field_validator("runs")
     @classmethod

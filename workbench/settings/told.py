@@ -12,6 +12,7 @@ from workbench.settings.names import hint
 
 Key = tuple[str | int, ...]
 
+_BARE = re.compile(r"[A-Za-z0-9_-]+")
 _QUOTED = re.compile(r"'([^']*)'")
 
 _WORDS = {
@@ -25,7 +26,7 @@ _WORDS = {
     "finite_number": "a finite number",
 }  # fmt: skip
 
-_BOUNDS = {
+BOUNDS = {
     "greater_than": ("gt", "above"),
     "greater_than_equal": ("ge", "from"),
     "less_than": ("lt", "below"),
@@ -36,6 +37,28 @@ _BOUNDS = {
 def key_of(fault: ErrorDetails) -> Key:
     """Return the key of a fault without pydantic's own marks."""
     return tuple(part for part in fault["loc"] if part != "[key]")
+
+
+def key_text(key: tuple[str | int, ...]) -> str:
+    """Return a key as it is written in TOML, with the place in a list counted from 1.
+
+    Examples
+    --------
+    >>> key_text(("samples", "exclude", "S 07"))
+    'samples.exclude."S 07"'
+    >>> key_text(("samples", "adjust", 0))
+    'samples.adjust, item 1'
+    """
+    text = ""
+    for part in key:
+        if isinstance(part, int):
+            text += f", item {part + 1}"
+        else:
+            quoted = (
+                part if _BARE.fullmatch(part) else '"' + part.replace("\\", "\\\\").replace('"', '\\"') + '"'
+            )
+            text += f".{quoted}" if text else quoted
+    return text or "(the whole file)"
 
 
 def told(fault: ErrorDetails, root: type[BaseModel]) -> str:
@@ -58,7 +81,7 @@ def told(fault: ErrorDetails, root: type[BaseModel]) -> str:
         allowed = _literals(context)
         spelt = hint(given, allowed) if isinstance(given, str) else ""
         return f"{_shown(given)} is not allowed; allowed: {', '.join(map(repr, allowed))}{spelt}"
-    if kind in _BOUNDS:
+    if kind in BOUNDS:
         return f"{_shown(given)} is out of range; allowed: {_range(key, root)}"
     if kind in _WORDS:
         return f"must be {_WORDS[kind]}, got {_shown(given)}"
@@ -94,7 +117,7 @@ def _range(key: Key, root: type[BaseModel]) -> str:
     model = _model_at(key[:-1], root)
     limits = [] if model is None else model.model_fields[str(key[-1])].metadata
     told = []
-    for sign, words in _BOUNDS.values():
+    for sign, words in BOUNDS.values():
         told += [f"{words} {getattr(limit, sign)}" for limit in limits if hasattr(limit, sign)]
     return " and ".join(told)
 

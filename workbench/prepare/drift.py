@@ -1,0 +1,251 @@
+"""Drift over the run order, read off the pools: runs of one and the same mixture, spread over each batch.
+
+For every feature three courses compete: none (one level for all batches), a level per batch (the median of its
+pools), and a curve per batch (robust local regression of the pools' logarithms on run order; Dunn et al. 2011,
+Nature Protocols 6:1060). Each pool is predicted from the others, left out in turn, and the simplest course
+that predicts well is taken away from all runs. Where there are too few pools for a curve or a level, nothing is
+changed and the account says so; before the first and after the last pool the course is held, never drawn on.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from typing import ClassVar
+
+import numpy as np
+from numpy.typing import NDArray
+
+from workbench.errors import InputError
+from workbench.prepare.drift_courses import (
+    CURVE,
+    FEWEST_FOR_LEVEL,
+    LEVEL,
+    NONE,
+    BatchPools,
+    Courses,
+    choose_courses,
+)
+from workbench.prepare.local_lines import read_off
+from workbench.prepare.runs import Runs, RunTable
+from workbench.prepare.steps import FitContext, Settled
+from workbench.prepare.tables import Matrix, StepAccount, StepTable, some
+
+DUNN = "Dunn et al. 2011, Nature Protocols 6:1060; Cleveland 1979, JASA 74:829"
+FEWEST_POOLS = 6
+SPAN = 0.75
+
+
+@dataclass(frozen=True)
+class Drift(Settled):
+    """Takes away each feature's drift over the run order.
+
+    Parameters
+    ----------
+    logged : bool
+        Whether the values are logarithms already; drift is taken from the logarithms in any case.
+    fewest_pools : int
+        Of a batch, for a curve.
+    span : float
+        Share of the pools in a window of the local regression.
+    """
+
+    logged: bool = False
+    fewest_pools: int = FEWEST_POOLS
+    span: float = SPAN
+    step: str = "drift"
+    rule: str = "each feature's course over the run order, read off the pools, taken away where leaving pools out helps"
+    why: ClassVar[str] = (
+        "an instrument loses sensitivity while it runs, each feature in its own way; pools show how"
+    )
+    paper: ClassVar[str] = DUNN
+    keys: ClassVar[tuple[str, ...]] = ("drift", "fewest_pools", "span")
+    runs_only: ClassVar[bool] = True
+
+    def fit(self, table: StepTable, context: FitContext) -> FittedDrift:  # noqa: ARG002
+        """Return the step as learnt from the pools; sample runs teach it nothing."""
+        pools = _pools_of(table)
+        placed = pools.take(np.flatnonzero(~np.isnan(pools.order)))
+        batches = _batches(placed, _logs(placed.values, self.logged))
+        courses = choose_courses(batches, self.fewest_pools, self.span)
+        return FittedDrift(self, pools, placed, courses)
+
+
+@dataclass(frozen=True)
+class FittedDrift:
+    """The courses of all features, learnt from pools."""
+
+    settings: Drift
+    pools: RunTable
+    placed: RunTable
+    courses: Courses
+
+    def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
+        """Return sample runs and pools without drift.
+
+        A pool is corrected by a course that has not seen it, so that what its scatter shows holds for samples too.
+
+        Raises
+        ------
+        InputError
+            When a run of a corrected batch has no order.
+        """
+        if table.runs is None or table.controls is None:
+            return table, StepAccount(self.settings.step, "no run sheet: no drift removed")
+        removed = self._removed(table.runs)
+        values = self._without(table.values, removed)
+        controls = self._corrected(table.controls)
+        account = self._account(table, controls, removed)
+        return replace(table, values=values, controls=controls), account
+
+    def _without(self, values: Matrix, removed: Matrix) -> Matrix:
+        return values - removed if self.settings.logged else values * 2.0**-removed
+
+    def _removed(self, runs: Runs) -> Matrix:
+        """Return what is taken from the logarithms of each run, (n_runs, n_features)."""
+        removed = np.zeros((len(runs.runs), self.pools.values.shape[1]))
+        batch = np.array(runs.batch, dtype=object)
+        for place in self.courses.batches:
+            rows = np.flatnonzero(batch == place.batch)
+            placeless = [runs.runs[row] for row in rows if np.isnan(runs.order[row])]
+            if placeless:
+                raise InputError(
+                    f"{len(placeless)} runs have no order: {some(placeless)}; add it to the run sheet, or set "
+                    'drift = "none"'
+                )
+            removed[rows] = read_off(place.x, place.course, runs.order[rows])
+        return removed
+
+    def _corrected(self, controls: RunTable) -> RunTable:
+        """Return the controls with each pool corrected by a course fitted without it."""
+        values = controls.values.copy()
+        row_of = {name: row for row, name in enumerate(self.courses.pools)}
+        for row, name in enumerate(controls.runs):
+            if name in row_of:
+                removed = self.courses.left_out[row_of[name]]
+                values[row] = self._without(values[row], removed)
+        return replace(controls, values=values)
+
+    def _account(self, table: StepTable, controls: RunTable, removed: Matrix) -> StepAccount:
+        kinds, runs = self.courses.kinds, table.runs
+        assert runs is not None
+        before, after = (_relative_sd(part, self.settings.logged) for part in self._pool_values(controls))
+        corrected = kinds != NONE
+        numbers: dict[str, float | int | str] = {
+            "pools": len(self.pools.runs),
+            "batches_corrected": len(self.courses.batches),
+            "features_with_curve": int((kinds == CURVE).sum()),
+            "features_with_levels": int((kinds == LEVEL).sum()),
+            "features_left_alone": int((kinds == NONE).sum()),
+            "runs_outside_pools": self._outside(runs),
+            "runs_left_alone": self._alone(runs),
+            **_medians("pool_scatter_before", before[corrected]),
+            **_medians("pool_scatter_after", after[corrected]),
+            **_medians(
+                "drift_range_log2", np.ptp(removed[:, corrected], axis=0) if removed.size else np.empty(0)
+            ),
+        }
+        return StepAccount(
+            self.settings.step,
+            self._sentence(numbers),
+            numbers,
+            reference=DUNN,
+            cautions=self._cautions(numbers),
+        )
+
+    def _pool_values(self, controls: RunTable) -> tuple[Matrix, Matrix]:
+        rows = controls.rows_as("pool")
+        return self.pools.values, controls.values[rows]
+
+    def _outside(self, runs: Runs) -> int:
+        batch = np.array(runs.batch, dtype=object)
+        return sum(
+            int(((runs.order < place.x[0]) | (runs.order > place.x[-1]))[batch == place.batch].sum())
+            for place in self.courses.batches
+        )
+
+    def _alone(self, runs: Runs) -> int:
+        """Return how many runs are in batches that are not corrected."""
+        corrected = {place.batch for place in self.courses.batches}
+        return sum(batch not in corrected for batch in runs.batch)
+
+    def _sentence(self, numbers: dict[str, float | int | str]) -> str:
+        if not self.courses.batches:
+            return f"no drift removed: {numbers['pools']} pools, and {self.courses.reason}"
+        curve, level = numbers["features_with_curve"], numbers["features_with_levels"]
+        sentence = (
+            f"drift over the run order taken from {curve:,} features by a curve and from {level:,} by the level of "
+            f"each batch, read off {numbers['pools']} pools; {numbers['features_left_alone']:,} are left alone, as "
+            "left-out pools were predicted no better"
+        )
+        if "median_pool_scatter_before" in numbers:
+            sentence += (
+                f"; median scatter of left-out pools {numbers['median_pool_scatter_before']:.1%} before, "
+                f"{numbers['median_pool_scatter_after']:.1%} after"
+            )
+        return sentence
+
+    def _cautions(self, numbers: dict[str, float | int | str]) -> tuple[str, ...]:
+        told = list(self.courses.cautions)
+        outside = int(numbers["runs_outside_pools"])
+        if outside:
+            told.append(
+                f"{outside} runs lie before the first or after the last pool of their batch: they are corrected as at "
+                "that pool, as nothing is known beyond"
+            )
+        alone = int(numbers["runs_left_alone"])
+        if alone and self.courses.batches:
+            told.append(
+                f"{alone} runs are in batches with fewer than {FEWEST_FOR_LEVEL} pools: left as they are"
+            )
+        return tuple(told)
+
+
+def _pools_of(table: StepTable) -> RunTable:
+    if table.controls is None:
+        raise InputError("drift is read off the pools of a run sheet, and there is none")
+    return table.controls.take(table.controls.rows_as("pool"))
+
+
+def _batches(pools: RunTable, logs: Matrix) -> tuple[BatchPools, ...]:
+    """Return the pools batch by batch, in run order."""
+    batch = np.array(pools.batch, dtype=object)
+    parts = []
+    for name in sorted(set(pools.batch)):
+        rows = np.flatnonzero(batch == name)
+        rows = rows[np.argsort(pools.order[rows], kind="stable")]
+        parts.append(BatchPools(name, tuple(pools.runs[row] for row in rows), pools.order[rows], logs[rows]))
+    return tuple(parts)
+
+
+def _logs(values: Matrix, logged: bool) -> Matrix:
+    if logged:
+        return values
+    positive = values > 0
+    return np.where(positive, np.log2(values, where=positive, out=np.zeros_like(values)), np.nan)
+
+
+def _relative_sd(values: Matrix, logged: bool) -> Matrix:
+    """Return each feature's standard deviation over its mean, over the pools that have it; NaN for fewer than two."""
+    return relative_sd(2.0**values if logged else values)
+
+
+def relative_sd(values: Matrix) -> Matrix:
+    """Return standard deviation (ddof 1) over mean of each column, missing values aside; NaN for fewer than two.
+
+    >>> relative_sd(np.array([[1.0, 5.0], [3.0, np.nan]])).round(4).tolist()
+    [0.7071, nan]
+    """
+    seen = ~np.isnan(values)
+    count = seen.sum(axis=0)
+    mean = np.where(seen, values, 0.0).sum(axis=0) / np.maximum(count, 1)
+    squares = np.where(seen, (values - mean) ** 2, 0.0).sum(axis=0)
+    usable = (count >= 2) & (mean > 0)
+    ratio: Matrix = np.divide(
+        np.sqrt(squares / np.maximum(count - 1, 1)), mean, where=usable, out=np.full(mean.shape, np.nan)
+    )
+    return ratio
+
+
+def _medians(name: str, values: NDArray[np.float64]) -> dict[str, float]:
+    known = values[~np.isnan(values)]
+    return {f"median_{name}": float(np.median(known))} if known.size else {}
