@@ -112,9 +112,11 @@ def _rows_of(prepared: AnnData, samples: tuple[str, ...], values: object) -> Flo
 
 def _levels(measured: AnnData) -> Levels:
     if "levels" not in measured.var or "kind" not in measured.var:
-        return (None,) * measured.n_vars
-    texts = map(str, measured.var["levels"])
-    return tuple(tuple(map(str, json.loads(text))) if text else None for text in texts)
+        return (None,) * int(measured.n_vars)
+    every: list[tuple[str, ...] | None] = []
+    for text in measured.var["levels"]:
+        every.append(tuple(map(str, json.loads(str(text)))) if text else None)
+    return tuple(every)
 
 
 def _runs(measured: AnnData) -> tuple[pd.DataFrame | None, FloatArray | None]:

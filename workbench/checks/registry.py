@@ -5,12 +5,35 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import replace
 
+from workbench.checks.alignment import check_alignment
+from workbench.checks.batches import unnamed_batches
 from workbench.checks.data import StudyData
+from workbench.checks.depth import check_depth
+from workbench.checks.duplicates import check_duplicates
 from workbench.checks.finding import Finding, sorted_findings
+from workbench.checks.gap_patterns import gap_patterns
+from workbench.checks.identifiers import check_identifiers
+from workbench.checks.kinds import check_kinds
+from workbench.checks.outlying import outlying_samples
+from workbench.checks.personal import personal_data
+from workbench.checks.run_quality import check_runs
+from workbench.checks.tangled import check_design
 
 Check = Callable[[StudyData], list[Finding]]
 
-CHECKS: tuple[Check, ...] = ()
+CHECKS: tuple[Check, ...] = (
+    check_alignment,
+    check_design,
+    check_identifiers,
+    check_kinds,
+    check_duplicates,
+    check_depth,
+    gap_patterns,
+    outlying_samples,
+    unnamed_batches,
+    check_runs,
+    personal_data,
+)
 
 
 def run_checks(data: StudyData, seed: int | None = None) -> tuple[Finding, ...]:

@@ -1,0 +1,120 @@
+"""Which samples the blocks have, lack and share."""
+
+from __future__ import annotations
+
+import numpy as np
+from scipy.stats import fisher_exact
+
+from workbench.checks.data import CheckedBlock, StudyData, shared_rows
+from workbench.checks.finding import Finding, finding_id
+from workbench.checks.words import number_of, some
+from workbench.intake import missing_samples
+from workbench.intake.faults import counted
+
+CHECK = "alignment"
+FEWEST_SHARED = 4
+HALF = 0.5
+LACKING_LEVEL = 0.01
+
+
+def check_alignment(data: StudyData) -> list[Finding]:
+    """Find samples that no block has or that a block lacks, cells of the design without a value, and what is shared.
+
+    An error: two blocks of different layers share fewer than four samples. A warning: they share fewer than
+    half of the smaller block's samples; samples have no value in a column of the design; the samples that a
+    block lacks are mostly of one group.
+    """
+    found = _in_no_block(data)
+    for block in data.blocks.values():
+        found += _lacking(data, block) + _design_cells(block)
+    for one, other in data.pairs:
+        found += _shared(one, other)
+    return found
+
+
+def _in_no_block(data: StudyData) -> list[Finding]:
+    measured = {sample for block in data.blocks.values() for sample in block.samples}
+    left_out = {sample for block in data.blocks.values() for sample in block.settings.exclude}
+    nowhere = [name for name in map(str, data.kept_sheet.index) if name not in measured | left_out]
+    if not nowhere or not data.blocks:
+        return []
+    what = f"{number_of(nowhere, 'sample')} of the sample sheet {'is' if len(nowhere) == 1 else 'are'} in no block"
+    todo = "nothing, if they were not measured; else look at how the tables write these names"
+    return [Finding(finding_id(CHECK, "in_no_block"), CHECK, "note", "", what, tuple(nowhere), (), todo)]
+
+
+def _lacking(data: StudyData, block: CheckedBlock) -> list[Finding]:
+    others = {
+        sample for other in data.blocks.values() if other is not block for sample in other.samples
+    } - set(block.samples)
+    lacking = [name for name in map(str, data.kept_sheet.index) if name in others]
+    lacking = [name for name in lacking if name not in block.settings.exclude]
+    if not lacking:
+        return []
+    what = f"block '{block.name}' lacks {number_of(lacking, 'sample')} that another block has"
+    todo = "nothing, if they were not measured; else look at how the table writes these names"
+    uneven = _uneven(data, lacking)
+    severity = "warning" if uneven else "note"
+    if uneven:
+        what += f"; they are not spread evenly over the groups: {uneven}"
+        todo += "; ask why they are missing, as a comparison of groups rests on the samples that are left"
+    identity = finding_id(CHECK, block.name, "lacks")
+    return [Finding(identity, CHECK, severity, block.name, what, tuple(lacking), (), todo)]  # type: ignore[arg-type]
+
+
+def _uneven(data: StudyData, lacking: list[str]) -> str:
+    """Return in which group most samples lack, when that is more than chance (Fisher, Bonferroni over groups)."""
+    every: dict[str, str] = {}
+    for one in data.blocks.values():
+        for sample, code in zip(one.samples, one.group_codes.tolist(), strict=True):
+            if code >= 0:
+                every[sample] = one.group_levels[code]
+    levels = sorted(set(every.values()))
+    told = []
+    for level in levels:
+        members = [sample for sample in every if every[sample] == level]
+        others = [sample for sample in every if every[sample] != level]
+        gone, gone_others = len(set(members) & set(lacking)), len(set(others) & set(lacking))
+        table = np.array([[gone, len(members) - gone], [gone_others, len(others) - gone_others]])
+        if others and fisher_exact(table, alternative="greater")[1] * len(levels) <= LACKING_LEVEL:
+            told.append(f"{gone} of {len(members)} of '{level}' and {gone_others} of {len(others)} others")
+    return "; ".join(told)
+
+
+def _design_cells(block: CheckedBlock) -> list[Finding]:
+    wanted = [column for column in block.adjust if column in block.columns]
+    lacking = missing_samples(block.columns, wanted)
+    if block.group_levels:
+        rows = np.flatnonzero(block.group_codes < 0)
+        lacking |= {"the group": block.take(rows)} if rows.size else {}
+    return [
+        Finding(
+            finding_id(CHECK, block.name, "no_value", column),
+            CHECK,
+            "warning",
+            block.name,
+            f"{number_of(samples, 'sample')} of block '{block.name}' without a value in {_column(column)}: every "
+            "analysis of the block leaves them out",
+            tuple(samples),
+            todo="fill the cells of samples.tsv, or exclude the samples with a reason",
+        )
+        for column, samples in lacking.items()
+    ]
+
+
+def _column(column: str) -> str:
+    return column if column == "the group" else f"column '{column}'"
+
+
+def _shared(one: CheckedBlock, other: CheckedBlock) -> list[Finding]:
+    n = shared_rows(one, other)[0].size
+    smaller = min(len(one.samples), len(other.samples))
+    if n >= FEWEST_SHARED and n >= HALF * smaller:
+        return []
+    both = f"blocks '{one.name}' and '{other.name}'"
+    what = f"{both} share {counted(n, 'sample')} with a complete design, of {len(one.samples)} and {len(other.samples)}"
+    examples = f"'{one.name}' has {some(one.samples[:3])}, '{other.name}' has {some(other.samples[:3])}"
+    severity = "error" if n < FEWEST_SHARED else "warning"
+    todo = f"look at how the two tables name their samples ({examples})"
+    identity = finding_id(CHECK, "", "shared", one.name, other.name)
+    return [Finding(identity, CHECK, severity, "", what, (), (), todo)]  # type: ignore[arg-type]
