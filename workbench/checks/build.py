@@ -11,14 +11,13 @@ import pandas as pd
 
 from workbench.checks.data import CheckedBlock, FloatArray, IndexArray, Levels, StudyData
 from workbench.errors import InputError
-from workbench.intake import design_columns, group_codes, missing_samples
+from workbench.intake import block_design_columns, design_columns, group_codes, missing_samples
 from workbench.intake.faults import listed
 from workbench.settings import Settings
 
 if TYPE_CHECKING:
     from anndata import AnnData
 
-RUN_COLUMNS = ("order", "batch")
 TECHNICAL_COLUMNS = ("kind", "levels")
 
 
@@ -67,7 +66,7 @@ def checked_block(
     rows = [row for row, sample in enumerate(names) if sample not in left_out]
     samples = tuple(names[row] for row in rows)
     runs, run_values = _runs(measured)
-    columns = _columns(sheet, samples, runs)
+    columns = _columns(sheet, samples, measured)
     adjust = tuple(dict.fromkeys([*settings.samples.adjust, *own.adjust]))
     nuisance, nuisance_names, fault = _nuisance(columns, adjust, settings.samples.kinds)
     codes, levels = _groups(columns, settings)
@@ -125,27 +124,12 @@ def _runs(measured: AnnData) -> tuple[pd.DataFrame | None, FloatArray | None]:
     return measured.uns["run_sheet"], np.asarray(measured.uns["run_values"], dtype=np.float64)
 
 
-def _columns(sheet: pd.DataFrame, samples: tuple[str, ...], runs: pd.DataFrame | None) -> pd.DataFrame:
-    """Return the sheet's rows, with order and batch of the runs where the sheet has no such column."""
-    columns = sheet.loc[list(samples)]
-    if runs is None:
-        return columns
-    told = runs[runs["role"] == "sample"]
-    for name in RUN_COLUMNS:
-        if name in columns or name not in told:
-            continue
-        by_sample = told.groupby("sample")[name].agg(_one_value)
-        columns = columns.copy()
-        columns[name] = [by_sample.get(sample) for sample in samples]
-    return columns
-
-
-def _one_value(cells: pd.Series) -> object:
-    """Return the mean of numbers, or the text that all runs of a sample have; None where they differ."""
-    if pd.api.types.is_numeric_dtype(cells):
-        return float(cells.mean())
-    different = set(cells)
-    return different.pop() if len(different) == 1 else None
+def _columns(sheet: pd.DataFrame, samples: tuple[str, ...], measured: AnnData) -> pd.DataFrame:
+    """Return the sheet's rows with the columns of the block's run sheet, which go before those of one name."""
+    of_sheet = sheet.loc[list(samples)]
+    of_runs = block_design_columns(measured).reindex(list(samples))
+    twice = [name for name in of_runs if name in of_sheet]
+    return of_sheet.drop(columns=twice).join(of_runs) if len(of_runs.columns) else of_sheet
 
 
 def _nuisance(

@@ -20,6 +20,7 @@ LEAST_LOG_SPREAD = 0.1
 GAPPY_Z = 5.0
 GAPPY_MORE = 0.10
 LEAST_GAP_SPREAD = 0.01
+MOST_GAPPY, MOST_GAPPY_SHARE = 2, 0.1
 ON_A_SCALE = ("counts", "intensities")
 
 
@@ -28,8 +29,9 @@ def check_depth(data: StudyData) -> list[Finding]:
 
     Error: no value at all (for counts and intensities: nothing above 0). Warning: total count (or typical
     intensity) under a third of the median, or over three times it, and four robust spreads away on a log
-    scale; the missing share ten points over the median and five robust spreads above it. For counts a gap is
-    a feature without a read that most samples have.
+    scale; the missing share ten points over the median and five robust spreads above it, unless a tenth of
+    the samples (and more than two) are as far: gaps of many samples are a pattern, not an odd sample. For counts
+    a gap is a feature without a read that most samples have.
     """
     return [
         finding
@@ -116,7 +118,10 @@ def _gappy(block: CheckedBlock) -> list[Finding]:
     share = 1.0 - seen[:, common].mean(axis=1)
     least = max(LEAST_GAP_SPREAD, float(np.sqrt(np.median(share) * (1 - np.median(share)) / common.sum())))
     z = robust_z(share, least)
-    rows = np.flatnonzero((z > GAPPY_Z) & (share > np.median(share) + GAPPY_MORE) & (share < 1.0))
+    more = share > np.median(share) + GAPPY_MORE
+    if more.sum() > max(MOST_GAPPY, MOST_GAPPY_SHARE * share.size):
+        return []
+    rows = np.flatnonzero((z > GAPPY_Z) & more & (share < 1.0))
     return [_gap_finding(block, share, int(row)) for row in rows]
 
 

@@ -167,7 +167,8 @@ def _pair_finding(block: CheckedBlock, values: FloatArray, i: int, j: int, what:
         f"{exclude_line(block.name, [names[1]], f'copy of {names[0]}')}, or keep both with {accept_line(identity)}"
     )
     step = max(1, values.shape[1] // MOST_DRAWN)
-    evidence = TwoSamples(names, values[i, ::step], values[j, ::step], "values")
+    label = "measured value" if error else "prepared value, scaled"
+    evidence = TwoSamples(names, values[i, ::step], values[j, ::step], label)
     severity = "error" if error else "warning"
     return Finding(identity, SAMPLES_CHECK, severity, block.name, what, names, (), todo, evidence)  # type: ignore[arg-type]
 

@@ -18,12 +18,20 @@ CHECK = "kind"
 FEWEST_FEATURES = 20
 FEWEST_CELLS = 100
 NO_LOGARITHM = 100.0
-LOG_TOP, LOG_RANGE, LOG_SLOPE = 64.0, 20.0, 0.5
-SMALL_COUNT, SMALL_SHARE = 10.0, 0.05
+LOG_TOP, LOG_RANGE, LOG_VARIES = 64.0, 20.0, 0.2
+SMALL_COUNT, SMALL_SHARE = 10.0, 0.005
 LARGE_MEDIAN = 1e4
 TWICE_LOW, TWICE_HIGH, TWICE_RANGE, TWICE_SPREAD = 0.3, 6.0, 1.5, 0.12
 SAME_SUM = 1e-3
 MOST_DRAWN = 5_000
+SHARES = ("proportions", "beta")
+WANTED = {
+    "counts": "whole counts",
+    "intensities": "the intensities before any logarithm",
+    "log": "their logarithms",
+    "beta": "beta values",
+    "proportions": "proportions",
+}
 
 
 @dataclass(frozen=True)
@@ -38,9 +46,8 @@ class Figures:
         1 %, 50 % and 99 % point, and the largest value.
     positive_low : float
         1 % point of the values above 0.
-    slope : float
-        Of log(standard deviation) against log(mean) over features: 1 where the spread grows with the level, as
-        in raw readings, near 0 in logarithms; NaN where the means do not differ.
+    varies : float
+        Median over features of standard deviation over mean: a few percent in logarithms of large numbers.
     spread : float
         Median standard deviation of a feature.
     level_range : float
@@ -57,7 +64,7 @@ class Figures:
     high: float
     top: float
     positive_low: float
-    slope: float
+    varies: float
     spread: float
     level_range: float
     sums_vary: float
@@ -67,10 +74,10 @@ def check_kinds(data: StudyData) -> list[Finding]:
     """Find blocks whose values cannot be, or do not look like, what they are declared as.
 
     Errors, where the numbers are impossible for the kind: counts that are no whole numbers or negative,
-    negative intensities, logarithms over 100. Warnings, by the figures of :class:`Figures`: logarithms
-    declared as intensities, counts declared as intensities or as continuous, intensities declared as counts,
-    logarithms taken twice, samples that all add up to the same sum. Blocks of fewer than 20 features or 100
-    cells, and mixed ones, are looked at for impossible numbers alone.
+    negative intensities or shares, beta values over 1, logarithms over 100. Warnings, by the figures of
+    :class:`Figures`: logarithms declared as intensities, counts declared as intensities or as continuous,
+    intensities declared as counts, logarithms taken twice, samples that all add up to the same sum. Blocks of
+    fewer than 20 features or 100 cells are looked at for impossible numbers alone, mixed ones not at all.
     """
     return [finding for block in data.blocks.values() for finding in _of_block(block)]
 
@@ -104,7 +111,7 @@ def figures_of(measured: FloatArray) -> Figures:
         high=float(high),
         top=float(cells.max()),
         positive_low=float(np.quantile(positive, 0.01)) if positive.size else float("nan"),
-        slope=_slope(mean, spread),
+        varies=_relative(mean, spread),
         spread=float(np.median(spread)) if spread.size else float("nan"),
         level_range=float(np.ptp(np.quantile(middle, [0.01, 0.99]))) if middle.size else float("nan"),
         sums_vary=float(sums.std() / abs(sums.mean())) if sums.mean() != 0 else float("nan"),
@@ -117,12 +124,9 @@ def _by_feature(measured: FloatArray) -> tuple[FloatArray, FloatArray, FloatArra
     return np.nanmean(measured, axis=0), np.nanstd(measured, axis=0, ddof=1), np.nanmedian(measured, axis=0)
 
 
-def _slope(mean: FloatArray, spread: FloatArray) -> float:
-    usable = (mean > 0) & (spread > 0)
-    x, y = np.log(mean[usable]), np.log(spread[usable])
-    if x.size < FEWEST_FEATURES or x.std() < 1e-6:
-        return float("nan")
-    return float(np.mean((x - x.mean()) * (y - y.mean())) / x.var())
+def _relative(mean: FloatArray, spread: FloatArray) -> float:
+    usable = mean > 0
+    return float(np.median(spread[usable] / mean[usable])) if usable.any() else float("nan")
 
 
 def _impossible(block: CheckedBlock, figures: Figures) -> list[Finding]:
@@ -138,6 +142,11 @@ def _impossible(block: CheckedBlock, figures: Figures) -> list[Finding]:
             f"{name} is declared as intensities, but {percent(figures.negative)} of its values are negative"
         )
         return [_finding(block, "negative", "error", what, "log")]
+    if kind in SHARES and (figures.negative > 0.0 or (kind == "beta" and figures.top > 1.0)):
+        what = f"{name} is declared as {kind}, but its values run outside of 0 to 1"
+        return [
+            _finding(block, "no_shares", "error", what, "log" if figures.negative > 0.0 else "continuous")
+        ]
     if kind == "log" and figures.high > NO_LOGARITHM:
         what = (
             f"{name} is declared as log, but 1 % of its values are over {figures.high:,.0f}: no logarithm of a "
@@ -155,11 +164,10 @@ def _alternative(figures: Figures) -> str:
 
 
 def _like_logs(figures: Figures) -> bool:
-    """Return whether the values are as narrow as logarithms are, and their spread does not grow with the level."""
+    """Return whether features lie as close together, and each varies as little, as in logarithms."""
     if not (figures.positive_low > 0.0 and figures.top <= LOG_TOP):
         return False
-    narrow = figures.high / figures.positive_low <= LOG_RANGE
-    return narrow and not figures.slope > LOG_SLOPE
+    return figures.high <= LOG_RANGE * figures.positive_low and figures.varies <= LOG_VARIES
 
 
 def _like_counts(figures: Figures) -> bool:
@@ -181,7 +189,8 @@ def _unlikely(block: CheckedBlock, figures: Figures) -> list[Finding]:
     if kind == "intensities" and _like_logs(figures):
         what = (
             f"{name} is declared as intensities, but its values look like logarithms: {figures.low:.3g} to "
-            f"{figures.high:.3g} (1 % and 99 % point), and features of high level do not spread more"
+            f"{figures.high:.3g} (1 % and 99 % point), and a feature's standard deviation is "
+            f"{percent(figures.varies)} of its mean"
         )
         return [_finding(block, "logarithms", "warning", what, "log")]
     if kind in ("intensities", "continuous") and _like_counts(figures):
@@ -208,7 +217,8 @@ def _unlikely(block: CheckedBlock, figures: Figures) -> list[Finding]:
 
 def _same_sums(block: CheckedBlock, figures: Figures) -> list[Finding]:
     """Find samples that add up to the same sum: shares of a whole, or counts that were made equal."""
-    closed = block.values in ("counts", "intensities", "continuous") and figures.negative == 0.0
+    closed = block.values in ("counts", "intensities", "continuous") and block.layer != "microbes"
+    closed &= figures.negative == 0.0
     if not closed or not figures.sums_vary < SAME_SUM or np.isnan(block.measured).any():
         return []
     total = float(block.measured.sum(axis=1).mean())
@@ -218,8 +228,8 @@ def _same_sums(block: CheckedBlock, figures: Figures) -> list[Finding]:
     )
     identity = finding_id(CHECK, block.name, "same_sums")
     todo = (
-        "deliver the values before they were scaled, or log-ratios of the shares declared as continuous; or keep it "
-        f"with {accept_line(identity)}"
+        "deliver the values before they were scaled, or declare shares as what they are: "
+        f'[blocks.{block.name}] values = "proportions"; or keep it with {accept_line(identity)}'
     )
     return [Finding(identity, CHECK, "warning", block.name, what, (), (), todo, _spread(block))]
 
@@ -227,7 +237,7 @@ def _same_sums(block: CheckedBlock, figures: Figures) -> list[Finding]:
 def _finding(block: CheckedBlock, word: str, severity: Severity, what: str, instead: str) -> Finding:
     identity = finding_id(CHECK, block.name, word)
     line = f'[blocks.{block.name}] values = "{instead}"'
-    todo = f"declare what they are: {line}, or deliver the {block.values} themselves"
+    todo = f"declare what they are: {line}, or deliver {WANTED.get(block.values, 'other values')}"
     if word == "twice":
         todo = "ask how the table was made, and deliver values with one logarithm at most"
     if severity == "warning":

@@ -11,10 +11,11 @@ from scipy.stats import t as student
 
 from workbench.checks.data import CheckedBlock, StudyData
 from workbench.checks.evidence import FeatureShares, RunFigures
-from workbench.checks.finding import Finding, Severity, accept_line, finding_id
+from workbench.checks.finding import Finding, Severity, accept_line, adjust_line, finding_id
 from workbench.checks.words import number_of, percent, some
 from workbench.engine.multiple import benjamini_hochberg
 from workbench.intake.faults import counted
+from workbench.prepare.drift import FEWEST_POOLS as FEWEST_POOLS_TO_CORRECT
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
@@ -184,8 +185,14 @@ def _drift(block: CheckedBlock, runs: Runs) -> list[Finding]:
     evidence = RunFigures(
         runs.order[shown], level, ("pool",) * shown.size, "mean log2 of the drifting features"
     )
-    severity: Severity = "warning" if share > MUCH_DRIFT and "order" not in block.adjust else "note"
-    todo = "look at `workbench prepare --explain`: preparation corrects drift where pools allow it"
+    corrected = pools.size >= FEWEST_POOLS_TO_CORRECT or "order" in block.adjust
+    severity: Severity = "warning" if share > MUCH_DRIFT and not corrected else "note"
+    todo = "nothing, preparation corrects it by the pools; `workbench prepare --explain` tells how"
+    if not corrected:
+        todo = (
+            f"{pools.size} pools are too few to correct it by; adjust for the order: "
+            f"{adjust_line(block.name, [*block.settings.adjust, 'order'])}"
+        )
     return [_finding(block, "drift", severity, what, todo, evidence, names)]
 
 

@@ -70,7 +70,7 @@ def check_design(data: StudyData) -> list[Finding]:
     difference between groups is free of the nuisance; a batch column that is not named and tells the group;
     a group of fewer than three samples; several samples of one subject.
     """
-    found = [finding for unit in units(data) for finding in _of_unit(unit)]
+    found = [finding for unit in units(data) for finding in _of_unit(data, unit)]
     found += _unnamed(data) + _subjects(data) + _unread(data)
     return list({finding.id: finding for finding in reversed(found)}.values())
 
@@ -108,10 +108,10 @@ def _unit(data: StudyData, one: CheckedBlock, other: CheckedBlock, alone: bool) 
     )
 
 
-def _of_unit(unit: Unit) -> list[Finding]:
+def _of_unit(data: StudyData, unit: Unit) -> list[Finding]:
     if len(unit.samples) < 2:
         return []
-    found = _aliased(unit)
+    found = _aliased(data, unit)
     if unit.group_levels:
         found += _sizes(unit)
     if not found or all(finding.severity != "error" for finding in found):
@@ -119,7 +119,7 @@ def _of_unit(unit: Unit) -> list[Finding]:
     return found
 
 
-def _aliased(unit: Unit) -> list[Finding]:
+def _aliased(data: StudyData, unit: Unit) -> list[Finding]:
     """Find columns of the design that others tell already: the analysis cannot be made."""
     group = [f"{unit.factors} (group)"] * unit.group.shape[1]
     both = np.hstack([unit.nuisance, unit.group])
@@ -131,16 +131,26 @@ def _aliased(unit: Unit) -> list[Finding]:
             f"column '{column}' tells nothing that {some(culprits)} does not tell on the {len(unit.samples)} samples "
             f"of {unit.words}: their effects cannot be told apart, and the analysis stops"
         )
-        kept = [one for one in unit.adjust if one not in culprits[:1]]
-        line = adjust_line(unit.block, kept)
         todo = (
-            f"take '{culprits[0]}' out of adjust (what is left: {line}), which leaves its effect in that of "
+            f"take '{culprits[0]}' out of adjust ({_without(data, culprits[0])}), which leaves its effect in that of "
             f"'{column}'; no analysis can part the two"
         )
         table = _table(unit, culprits[0]) if column == unit.factors else None
         identity = finding_id(CHECK, unit.block, column, *culprits)
         found.append(Finding(identity, CHECK, "error", unit.block, what, (), (), todo, table))
     return found
+
+
+def _without(data: StudyData, column: str) -> str:
+    """Return the adjust lines of the study and of the blocks that name a column, without it."""
+    lines = []
+    named = {"": data.settings.samples.adjust} | {
+        name: block.settings.adjust for name, block in data.blocks.items()
+    }
+    for owner, columns in named.items():
+        if column in columns:
+            lines.append(adjust_line(owner, [one for one in columns if one != column]))
+    return "; ".join(lines)
 
 
 def _culprits(unit: Unit, column: str) -> list[str]:
@@ -249,8 +259,8 @@ def _without_room(unit: Unit) -> list[Finding]:
         return []
     names = tuple(unit.samples[row] for row in alone)
     what = (
-        f"{number_of(names, 'sample')} of {unit.words} tell nothing once the design is taken out, since each is the "
-        "only one of a level of it"
+        f"{number_of(names, 'sample')} of {unit.words}, each the only one of a level of the design: with the design "
+        "taken out nothing is left to tell"
     )
     todo = f"nothing, or say so: {exclude_line('', names, 'alone on its level')}"
     identity = finding_id("samples_alone", unit.block, *unit.adjust)
