@@ -121,7 +121,7 @@ def group_cautions(
 ) -> tuple[str, ...]:
     """Return a sentence for each way in which preparation and groups are tangled; none where they are not.
 
-    Told are a scale whose group means differ 1.25-fold or more with p under 0.01, or enough to change the group
+    Told are a scale whose group means differ with p under 0.01, and 1.25-fold or enough to change the group
     difference of most features by half a standard deviation; and shares of imputed values that differ by five
     points or more with p under 0.01.
 
@@ -131,8 +131,8 @@ def group_cautions(
     """
     scale, imputed = group_differences(prepared, groups)
     told = []
-    apart = scale.difference >= np.log2(APART_FOLD) and scale.p < GROUP_LEVEL
-    if apart or scale.changed_share > MOST:
+    apart = scale.difference >= np.log2(APART_FOLD) or scale.changed_share > MOST
+    if apart and scale.p < GROUP_LEVEL:
         told.append(
             f"depth or dilution differs between the groups ({_means(scale, levels, 2.0)} times the typical sample): "
             f"scaling changed the group difference of {scale.changed_share:.0%} of the features by more than half of "

@@ -140,6 +140,7 @@ class TextToNumbers(Settled):
             return TextCode(feature, (), ((feature, ""),)), {}
         order = dict(self.ordered).get(feature)
         if order is not None:
+            _check_listed(feature, values, levels, order)
             return TextCode(feature, order, ((feature, ""),), ordered=True), {}
         counts = np.bincount(values[~np.isnan(values)].astype(np.intp), minlength=len(levels))
         seen = tuple(level for level, count in zip(levels, counts, strict=True) if count)
@@ -154,6 +155,16 @@ class TextToNumbers(Settled):
         return TextCode(feature, seen, columns), {
             name: f"the level in only {count} sample" for name, count in rare.items()
         }
+
+
+def _check_listed(feature: str, values: Matrix, levels: tuple[str, ...], order: tuple[str, ...]) -> None:
+    seen = {levels[int(code)] for code in values[~np.isnan(values)]}
+    beyond = sorted(seen - set(order))
+    if beyond:
+        raise InputError(
+            f"`ordered` in [blocks.NAME.prepare]: levels of '{feature}' that are not listed: {some(beyond)}; list "
+            "every level, lowest first"
+        )
 
 
 @dataclass(frozen=True)
