@@ -2,10 +2,14 @@
 
 from .annotations import read_annotations
 from .block import BlockBuild, build_block
+from .combine import block_design_columns, with_run_columns
 from .design import Design, Groups, design_columns, group_codes, missing_samples
-from .names import NameMatch, match_names, names_table
+from .measured import offered_names
+from .names import NameMatch, OfferedNamesError, match_names, names_table
+from .names_file import read_names
 from .raw import RawTable
 from .readers import read_delivered
+from .runs import RunSheet, read_run_sheet, run_columns
 from .sheet import SampleSheet, Suggestions, column_kind, read_sample_sheet, suggest_columns
 from .table import DeliveredTable, delivered_table
 
@@ -15,9 +19,12 @@ __all__ = [
     "Design",
     "Groups",
     "NameMatch",
+    "OfferedNamesError",
     "RawTable",
+    "RunSheet",
     "SampleSheet",
     "Suggestions",
+    "block_design_columns",
     "build_block",
     "column_kind",
     "delivered_table",
@@ -26,8 +33,13 @@ __all__ = [
     "match_names",
     "missing_samples",
     "names_table",
+    "offered_names",
     "read_annotations",
     "read_delivered",
+    "read_names",
+    "read_run_sheet",
     "read_sample_sheet",
+    "run_columns",
     "suggest_columns",
+    "with_run_columns",
 ]

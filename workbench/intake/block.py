@@ -16,8 +16,10 @@ from workbench.errors import InputError
 from workbench.settings.schema import BlockSettings
 
 from .annotations import annotated_features, read_annotations
-from .faults import counted, listed
-from .table import DeliveredTable, delivered_table
+from .combine import mixed_columns
+from .faults import counted, listed, shown
+from .measured import Measured, measured
+from .table import DeliveredTable
 
 if TYPE_CHECKING:
     import anndata
@@ -34,6 +36,9 @@ class BlockBuild:
     adata
         AnnData, samples x features: ``X`` measured values (float64, missing = NaN), ``obs`` the sheet's rows
         of the block's samples in sheet order, ``var`` the annotations, ``uns["workbench"]`` one JSON string.
+        With a run sheet ``X`` is the mean over a sample's runs (the sum for counts), ``uns["run_sheet"]`` a
+        DataFrame of the runs that have values (samples of the sheet, pools, blanks), and ``uns["run_values"]``
+        their values (float64, runs x features).
     lines
         What a person should read: orientation, samples matched and left out, what was accepted.
     """
@@ -66,26 +71,34 @@ def build_block(settings: BlockSettings, name: str, root: str | Path, sheet: pd.
     """
     import anndata  # takes a second to load: not for commands that read no block
 
-    path = Path(root) / settings.file
-    table = delivered_table(
-        path,
-        sample_ids=[str(sample) for sample in sheet.index],
-        values=settings.values,
-        samples_in=settings.samples_in,
-        sheet=settings.sheet,
-        array=settings.array,
-    )
-    features = tuple(table.values.columns)
+    found = measured(settings, Path(root), [str(sample) for sample in sheet.index])
+    table = found.table
+    features = tuple(found.values.columns)
     var, lines = _annotations(settings, Path(root), features)
     if settings.values == "mixed":
         _check_free(Path(root), settings, var)
         var["kind"] = ["text" if feature in table.levels else "number" for feature in features]
         var["levels"] = [_levels(table, feature) for feature in features]
     adata = anndata.AnnData(
-        X=table.values.to_numpy(dtype=np.float64), obs=sheet.loc[list(table.matched)].copy(), var=var
+        X=found.values.to_numpy(dtype=np.float64), obs=sheet.loc[list(found.values.index)].copy(), var=var
     )
-    adata.uns["workbench"] = _account(settings, name, path, table)
-    return BlockBuild(adata, (_summary(name, table, len(sheet)), *table.notes, *lines))
+    adata.uns["workbench"] = _account(settings, name, Path(root), found)
+    lines += _add_runs(adata, found, settings)
+    return BlockBuild(adata, (_summary(name, found, len(sheet)), *table.notes, *found.lines, *lines))
+
+
+def _add_runs(adata: anndata.AnnData, found: Measured, settings: BlockSettings) -> list[str]:
+    """Put the runs beside the block's values; return what is odd about their columns."""
+    if found.runs is None or settings.runs is None:
+        return []
+    adata.uns["run_sheet"], adata.uns["run_values"] = found.runs, found.run_values
+    file = Path(settings.runs).name
+    both = [name for name in settings.adjust if name in found.runs and name in adata.obs]
+    told = [
+        f"column {shown(name)} stands in the sample sheet too; for this block it is the run sheet's"
+        for name in both
+    ]
+    return [f"{file}: {line}" for line in (*mixed_columns(adata), *told)]
 
 
 def content_hash(values: np.ndarray, samples: Sequence[str], features: Sequence[str]) -> str:
@@ -137,17 +150,28 @@ def _levels(table: DeliveredTable, feature: str) -> str:
     return json.dumps(list(table.levels[feature]), ensure_ascii=False) if feature in table.levels else ""
 
 
-def _account(settings: BlockSettings, name: str, path: Path, table: DeliveredTable) -> str:
-    account = {
+def _account(settings: BlockSettings, name: str, root: Path, found: Measured) -> str:
+    account: dict[str, object] = {
         "kind": "measured",
         "block": name,
         "layer": settings.layer,
         "values": settings.values,
-        "source_sha256": _sha256(path),
-        "content_sha256": content_hash(table.values.to_numpy(), table.matched, list(table.values.columns)),
-        "samples_in": table.samples_in,
+        "source_sha256": _sha256(root / settings.file),
+        "content_sha256": _content(found.values.to_numpy(), found.values.index, found.values.columns),
+        "samples_in": found.table.samples_in,
     }
+    if settings.names is not None:
+        account["names_sha256"] = _sha256(root / settings.names)
+    if found.runs is not None and found.run_values is not None and settings.runs is not None:
+        account["runs_sha256"] = _sha256(root / settings.runs)
+        account["run_values_sha256"] = _content(found.run_values, found.runs.index, found.values.columns)
+    if settings.swap:
+        account["swap"] = [swap.model_dump(mode="json") for swap in settings.swap]
     return json.dumps(account, sort_keys=True, ensure_ascii=False)
+
+
+def _content(values: np.ndarray, rows: pd.Index, columns: pd.Index) -> str:
+    return content_hash(values, list(rows), list(columns))
 
 
 def _sha256(path: Path) -> str:
@@ -158,6 +182,8 @@ def _sha256(path: Path) -> str:
     return digest.hexdigest()
 
 
-def _summary(name: str, table: DeliveredTable, n: int) -> str:
-    features = counted(table.values.shape[1], "feature")
-    return f"block '{name}': {features}, {counted(len(table.matched), 'sample')} of the sheet's {n}"
+def _summary(name: str, found: Measured, n: int) -> str:
+    samples, features = (
+        counted(k, what) for k, what in zip(found.values.shape, ("sample", "feature"), strict=True)
+    )
+    return f"block '{name}': {features}, {samples} of the sheet's {n}"

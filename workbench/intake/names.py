@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter, defaultdict
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -150,7 +150,7 @@ def _by_form(names: Iterable[WrittenName], level: str) -> dict[Form, list[str]]:
 
 def names_table(match: NameMatch) -> pd.DataFrame:
     """Return the accepted candidates as a table of names: columns ``delivered`` and ``sample``, text."""
-    pairs = [(delivered, sample) for delivered, sample, _ in match.candidates]
+    pairs = list(dict.fromkeys((delivered, sample) for delivered, sample, _ in match.candidates))
     return pd.DataFrame(pairs, columns=["delivered", "sample"], dtype=object)
 
 
@@ -173,8 +173,16 @@ def ambiguous_lines(match: NameMatch) -> list[str]:
     return [f"  not one to one, so not offered: {'; '.join(parts)}{f'; and {rest:,} more' if rest else ''}"]
 
 
-def candidates_refused(path: Path, match: NameMatch, words: Words = SAMPLES) -> InputError:
-    """Return the error that offers the candidates."""
+class OfferedNamesError(InputError):
+    """Names are nearly those of the sheet, and nobody has accepted them; ``match`` holds the candidates."""
+
+    def __init__(self, message: str, match: NameMatch) -> None:
+        self.match = match
+        super().__init__(message)
+
+
+def candidates_offered(path: Path, match: NameMatch, words: Words = SAMPLES) -> str:
+    """Return the message that offers the candidates."""
     total = len(match.exact) + len(match.candidates) + len(match.only_sheet)
     found = counted(len(match.candidates), words.one)
     summary = (
@@ -185,9 +193,4 @@ def candidates_refused(path: Path, match: NameMatch, words: Words = SAMPLES) -> 
         "if they are the same, say --accept-names: they are written to a table of names beside the kept file, "
         "where a wrong row can be taken out; or write the same names in both"
     )
-    return InputError("\n".join([summary, *candidate_lines(match, words), way_out]))
-
-
-def renamed(ids: Sequence[str], names: Mapping[str, str]) -> tuple[str, ...]:
-    """Return ids with delivered names replaced by those of the sheet."""
-    return tuple(names.get(name, name) for name in ids)
+    return "\n".join([summary, *candidate_lines(match, words), way_out])

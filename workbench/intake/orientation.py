@@ -11,7 +11,15 @@ from workbench.errors import InputError
 
 from .faults import counted, listed, shown
 from .ids import check_unique
-from .names import SAMPLES, NameMatch, Words, ambiguous_lines, candidates_refused, match_names
+from .names import (
+    SAMPLES,
+    NameMatch,
+    OfferedNamesError,
+    Words,
+    ambiguous_lines,
+    candidates_offered,
+    match_names,
+)
 from .raw import HEADER, RawTable
 
 _THREE = 3
@@ -71,9 +79,9 @@ def match_samples(
     Raises
     ------
     InputError
-        When names of the table are nearly those of the sheet and no names are accepted (they are shown), no
-        id matches (three ids of each side are shown), both axes match equally, the axis named in
-        ``samples_in`` matches nothing, a matched sample occurs twice, or an accepted name is not there.
+        When no id matches (three ids of each side are shown), both axes match equally, the axis named in
+        ``samples_in`` matches nothing, a matched sample occurs twice, or an accepted name is not there;
+        `OfferedNamesError` when names are nearly those of the sheet and no names are accepted.
     """
     sheet = list(map(str, sample_ids))
     known = set(sheet)
@@ -86,7 +94,7 @@ def match_samples(
     _check_short_header(raw, found, known, words)
     match = match_names(ids, sheet)
     if names is None and match.candidates:
-        raise candidates_refused(raw.path, match, words)
+        raise OfferedNamesError(candidates_offered(raw.path, match, words), match)
     where = {name: position for position, name in enumerate(ids)}
     matched = tuple(name for name in sheet if name in where)
     only_sheet = tuple(name for name in sheet if name not in where)
@@ -97,21 +105,6 @@ def match_samples(
     return Matching(
         found, matched, tuple(where[name] for name in matched), only_sheet, only_table, tuple(notes)
     )
-
-
-def offered_match(
-    raw: RawTable, sample_ids: Sequence[str], samples_in: str | None = None, words: Words = SAMPLES
-) -> NameMatch:
-    """Return how the names of a table's sample axis meet those of the sheet, candidates among them.
-
-    Raises
-    ------
-    InputError
-        When it cannot be told which axis holds the samples.
-    """
-    sheet = list(map(str, sample_ids))
-    axes = _axes(raw, None)
-    return match_names(axes[_choose(raw, sheet, axes, samples_in, words)], sheet)
 
 
 Axes = Mapping[str, Sequence[str]]
@@ -178,11 +171,11 @@ def _check_accepted(
 ) -> None:
     """Refuse accepted names that the table does not have, and such that give a sample a second time."""
     delivered = raw.columns if samples_in == "columns" else raw.rows
-    unknown = [name for name in names if name not in set(delivered)]
+    unknown = [name for name in set(names) - set(delivered) if names[name] not in set(ids)]
     if unknown:
         raise InputError(
             f"{raw.path}: the table of names speaks of {counted(len(unknown), 'name')} that the table does not "
-            f"have in its {samples_in}: {listed(unknown)}; take the rows out of the table of names, or mend them"
+            f"have in its {samples_in}: {listed(sorted(unknown))}; take these rows out of it, or mend them"
         )
     times = Counter(ids)
     own = [f"{name} (from {given})" for given, name in names.items() if times[name] > 1 and given != name]

@@ -10,11 +10,11 @@ import pandas as pd
 
 from workbench.errors import InputError
 
+from .columns import read_columns
 from .faults import Faults, counted, listed, shown
 from .ids import check_present, check_unique, id_notes, refuse_broken
 from .kinds import column_kind, present
-from .raw import HEADER, Cell, RawTable, WrongCell, cell_text
-from .readers import read_delivered
+from .raw import Cell, RawTable, WrongCell, cell_text
 from .suggest import Suggestions, suggest_columns
 from .tokens import is_comma_number, number_of
 
@@ -66,14 +66,8 @@ def read_sample_sheet(
         line and column.
     """
     path = Path(path)
-    raw = read_delivered(path, sheet=sheet)
-    if raw.form not in ("tsv", "csv", "xlsx"):
-        raise InputError(
-            f"{path}: a sample sheet is TSV, CSV or XLSX, not {raw.form}; save it as one of these"
-        )
-    names = [_first_name(raw), *raw.columns]
-    _check_names(raw, names)
-    columns = _columns(raw)
+    found = read_columns(path, "sample sheet", ("sample", "row", "row_name"), sheet)
+    raw, names, columns = found.raw, found.names, found.columns
     position = _id_position(path, names, id_column)
     if position == 0:
         refuse_broken(raw, "sample")
@@ -86,24 +80,6 @@ def read_sample_sheet(
     notes += [f"{path.name}: {note}" for note in id_notes(ids, "sample")]
     frame = _frame(raw, names, columns, position, ids, notes)
     return SampleSheet(frame, tuple(notes))
-
-
-def _first_name(raw: RawTable) -> str:
-    """Return the name of the first column, or one for it where the header has none (row names)."""
-    if raw.corner.strip():
-        return raw.corner
-    return next((name for name in ("sample", "row", "row_name") if name not in raw.columns), "")
-
-
-def _check_names(raw: RawTable, names: Sequence[str]) -> None:
-    check_present(raw.path, names, "column", lambda j: raw.place(HEADER, j - 1))
-    check_unique(raw.path, names, "column", lambda j: raw.place(HEADER, j - 1))
-
-
-def _columns(raw: RawTable) -> list[list[Cell]]:
-    """Return the cells of each column, the first one included."""
-    rows = [[raw.rows[i], *raw.body.row(i)] for i in range(len(raw.rows))]
-    return [list(column) for column in zip(*rows, strict=True)]
 
 
 def _id_position(path: Path, names: Sequence[str], id_column: str | None) -> int:
