@@ -65,12 +65,12 @@ def test_ten_names_are_listed_and_the_rest_counted(tmp_path):
 
 
 def test_columns_that_are_no_samples_may_hold_anything(tmp_path):
-    """Annotations between the id and the samples, and pools that all have one name, are left out unread."""
-    path = write(tmp_path, "t.tsv", tabbed("id chrom S1 pool pool S2", "g1 chrX 1 <LOD ? 2"))
+    """Pools that all have one name, and remarks behind the samples, are left out unread."""
+    path = write(tmp_path, "t.tsv", tabbed("id S1 pool pool S2 remark", "g1 1 <LOD ? 2 good"))
     table = read(path)
     assert table.values.to_numpy().tolist() == [[1.0], [2.0]]
-    assert table.only_table == ("chrom", "pool")
-    assert "t.tsv: 2 names only in the table, left out: 'chrom', 'pool (2 times)'" in table.notes
+    assert table.only_table == ("pool", "remark")
+    assert "t.tsv: 2 names only in the table, left out: 'pool (2 times)', 'remark'" in table.notes
 
 
 def test_what_is_accepted_knowingly_is_told(tmp_path):

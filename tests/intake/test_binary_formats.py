@@ -117,9 +117,9 @@ def test_sparse_arrays_with_damaged_indices_are_told(tmp_path):
 
 def test_parquet_cells_that_are_no_numbers_are_placed(tmp_path):
     path = tmp_path / "t.parquet"
-    frame = pd.DataFrame({"id": ["g1", "g2"], "S1": ["1", "<LOD"], "S2": [1.5, None], "S3": [1, 2]})
+    frame = pd.DataFrame({"id": ["g1", "g2"], "S1": ["1", ">LOD"], "S2": [1.5, None], "S3": [1, 2]})
     frame.to_parquet(path)
-    with pytest.raises(InputError, match=r"row 2, column 2 \(feature 'g2', sample 'S1'\): '<LOD'"):
+    with pytest.raises(InputError, match=r"row 2, column 2 \(feature 'g2', sample 'S1'\): '>LOD'"):
         read(path)
     frame["S1"] = [datetime.date(2024, 9, 2), None]
     frame.to_parquet(path)

@@ -24,7 +24,10 @@ MALFORMED = {
     "a column without a name": ("sample\t\tdose\nS1\t1\t2\n", ["1 column without an id", "line 1, column 2"]),
     "an open quote": ('sample,note\nS1,"fine\nS2,bad\n', ["line 2, column 2", "double quote"]),
     "no rows": ("sample\tcondition\n", ["no row follows"]),
-    "Windows-1252": ("sample\tsite\nS1\tK\xf6ln\n".encode("cp1252"), ["line 2, character 5", "'S1\\tKöln'"]),
+    "another code page": (
+        "sample\tsite\nS1\tPlzeň\n".encode("cp1250") + b"S2\t\x9aum\n",
+        ["line 2, character 8"],
+    ),
 }
 
 

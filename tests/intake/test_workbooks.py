@@ -29,7 +29,7 @@ MALFORMED = {
         [HEAD, ["g1", "=1+1", 2, 3]],
         ["cell B2", "a formula without a stored value: =1+1", "save it"],
     ),
-    "a decimal comma": ([HEAD, ["g1", "1,5", 2, 3]], ["cell B2", "'1,5', a decimal comma"]),
+    "a decimal comma": ([HEAD, ["g1", "1,5", "0.5", 3]], ["cell B2", "'1,5', a decimal comma"]),
     "features that became dates": (
         [HEAD, ["g1", 1, 2, 3], [DAY, 1, 2, 3], [datetime.date(2024, 3, 1), 1, 2, 3]],
         ["2 row ids are no text", "cell A3 holds the date 2024-09-02", "cell A4", "SEPT2"],
@@ -44,11 +44,7 @@ MALFORMED = {
         [HEAD, ["g1", 1, 2, 3], [None, 1, 2, 3], ["g3", 1, 2, 3]],
         ["1 row without an id", "cell A3"],
     ),
-    "a name missing": ([["id", "S1", None, "S3"], ["g1", 1, 2, 3]], ["1 column without a name", "cell C1"]),
-    "a title above the header": (
-        [["Table S2. Metabolites"], HEAD, ["g1", 1, 2, 3]],
-        ["cell B1", "title rows"],
-    ),
+    "a name missing": ([["id", "S1", None, "S3"], ["g1", 1, 2, 3]], ["1 column without an id", "cell C1"]),
     "a header alone": ([HEAD], ["row 1 is a header", "no row follows"]),
     "no cells": ([], ["no sheet of the workbook holds a cell"]),
 }

@@ -3,17 +3,18 @@
 from __future__ import annotations
 
 import gzip
+import io
 import zlib
+from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
 
 from workbench.errors import InputError
 
-from .faults import Faults, shown
+from .encodings import Encoding, decoder_for, encoding_error, first_encoding, western_encoding
 
 LARGEST_TEXT = 8 * 2**30
-_UTF16 = (b"\xff\xfe", b"\xfe\xff")
-_UTF8_MARK = b"\xef\xbb\xbf"
+_CHUNK = 2**24
 _FOREIGN = (
     (
         b"\xd0\xcf\x11\xe0",
@@ -77,34 +78,27 @@ class TextLines:
 
 
 def read_lines(path: Path) -> TextLines:
-    r"""Return the lines of a UTF-8 text file (plain or .gz); blank lines at the end are left out.
+    r"""Return the lines of a text file (plain or .gz); blank lines at the end are left out.
 
-    Line ends may be ``\\n``, ``\\r\\n`` or ``\\r``; no other character ends a line. A byte-order mark is
-    accepted and told.
+    The text is UTF-8, else UTF-16, else Windows-1252, the latter two only where the bytes leave no doubt, and
+    told. Line ends may be ``\\n``, ``\\r\\n`` or ``\\r``; no other character ends a line. A byte-order mark is
+    accepted and told. The file is decoded in pieces, so that it stands in memory once.
 
     Raises
     ------
     InputError
-        When the bytes are no UTF-8 (UTF-16, Windows-1252 ...; with line and character), hold NUL bytes, or
-        the file holds no line.
+        When the encoding is not certain (with line and character), the bytes hold NUL characters, or the file
+        holds no line.
     """
-    data, notes = _plain_bytes(path)
-    if data.startswith(_UTF8_MARK):
-        data = data[len(_UTF8_MARK) :]
-        notes.append(f"{path.name}: starts with a byte-order mark, which was left out")
-    text = _decoded(path, data)
-    if "\ufffd" in text:
-        line = text.count("\n", 0, text.index("\ufffd")) + 1
-        notes.append(
-            f"{path.name}: letters were lost in an earlier conversion (\ufffd), first in line {line}"
-        )
-    if "\r" in text:
-        if "\n" not in text:
-            notes.append(
-                f"{path.name}: lines end with a bare carriage return (old Macintosh form); read as lines"
-            )
-        text = text.replace("\r\n", "\n").replace("\r", "\n")
-    lines = text.split("\n")
+    notes = [f"{path.name}: compressed with gzip; read as the text inside"] if _is_packed(path) else []
+    encoding = first_encoding(_start(path))
+    try:
+        text = _split(path, encoding)
+    except UnicodeDecodeError:
+        encoding = _other_encoding(path, encoding)
+        text = _split(path, encoding)
+    notes += [f"{path.name}: {note}" for note in (*encoding.notes, *text.notes)]
+    lines = text.lines
     while lines and not lines[-1].strip(" "):
         lines.pop()
     if not lines:
@@ -112,67 +106,76 @@ def read_lines(path: Path) -> TextLines:
     return TextLines(lines, tuple(notes))
 
 
-def _plain_bytes(path: Path) -> tuple[bytes, list[str]]:
-    try:
-        if path.stat().st_size > LARGEST_TEXT:
-            raise _too_large(path)
-        data = path.read_bytes()
-    except OSError as error:
-        raise InputError(
-            f"{path}: the file cannot be read ({error.strerror}); check its permissions"
-        ) from None
-    if not data.startswith(b"\x1f\x8b"):
-        return data, []
-    try:
-        with gzip.open(path) as file:
-            data = file.read(LARGEST_TEXT + 1)
-    except (OSError, EOFError, zlib.error):
-        raise InputError(f"{path}: the gzip file is damaged or cut short; fetch it again") from None
-    if len(data) > LARGEST_TEXT:
-        raise _too_large(path)
-    return data, [f"{path.name}: compressed with gzip; read as the text inside"]
+def _split(path: Path, encoding: Encoding) -> TextLines:
+    decoder = io.IncrementalNewlineDecoder(decoder_for(encoding), translate=True)
+    lines: list[str] = []
+    rest, lost = "", 0
+    for chunk, last in _with_last(_pieces(path, encoding.skipped)):
+        parts = (rest + decoder.decode(chunk, final=last)).split("\n")
+        rest = parts.pop()
+        _refuse_nul(path, parts if rest.find("\0") < 0 else [*parts, rest], len(lines))
+        lost = lost or _first_with("\ufffd", parts, len(lines))
+        lines += parts
+    lost = lost or _first_with("\ufffd", [rest], len(lines))
+    notes = [f"letters were lost in an earlier conversion (\ufffd), first in line {lost}"] if lost else []
+    if decoder.newlines == "\r":
+        notes.append("lines end with a bare carriage return (old Macintosh form); read as lines")
+    return TextLines([*lines, rest] if rest else lines, tuple(notes))
 
 
-def _too_large(path: Path) -> InputError:
-    return InputError(f"{path}: more than {LARGEST_TEXT // 2**30} GB of text; cut the table into parts")
+def _first_with(mark: str, lines: list[str], before: int) -> int:
+    """Return the number of the first line with a character, counted from 1 after ``before`` lines, or 0."""
+    return next((before + k for k, line in enumerate(lines, start=1) if mark in line), 0)
 
 
-def _decoded(path: Path, data: bytes) -> str:
-    if data.startswith(_UTF16) or b"\x00" in data[:4000]:
-        _refuse_wide(path, data)
-    if b"\x00" in data:
-        line = data.count(b"\n", 0, data.index(b"\x00")) + 1
+def _refuse_nul(path: Path, lines: list[str], before: int) -> None:
+    line = _first_with("\0", lines, before)
+    if line:
         raise InputError(
             f"{path}: line {line}: a NUL byte, which no text has; the file is damaged: export the table again"
         )
+
+
+def _other_encoding(path: Path, encoding: Encoding) -> Encoding:
+    """Return the encoding of a file that is not in the one its start promised, when there is no doubt."""
+    data = b"".join(_pieces(path))
+    western = western_encoding(data) if encoding.name == "utf-8" else None
+    if western is None:
+        raise encoding_error(path, data, encoding)
+    return western
+
+
+def _with_last(pieces: Iterator[bytes]) -> Iterator[tuple[bytes, bool]]:
+    before = next(pieces, b"")
+    for piece in pieces:
+        yield before, False
+        before = piece
+    yield before, True
+
+
+def _is_packed(path: Path) -> bool:
+    return _first_bytes(path).startswith(b"\x1f\x8b")
+
+
+def _start(path: Path) -> bytes:
+    return next(_pieces(path), b"")[:4000]
+
+
+def _pieces(path: Path, skipped: int = 0) -> Iterator[bytes]:
+    """Yield the bytes of a file, unpacked, without the first ``skipped``."""
+    packed, total = _is_packed(path), 0
     try:
-        return data.decode("utf-8")
-    except UnicodeDecodeError:
-        raise _encoding_error(path, data) from None
-
-
-def _refuse_wide(path: Path, data: bytes) -> None:
-    half = data[:4000].count(b"\x00") * 3 > len(data[:4000])
-    if data.startswith(_UTF16) or half:
-        raise InputError(
-            f"{path}: line 1: the text is UTF-16 ('Unicode text' of a spreadsheet), not UTF-8; save the "
-            "table as 'CSV UTF-8' or .xlsx"
-        )
-
-
-def _encoding_error(path: Path, data: bytes) -> InputError:
-    faults = Faults(path)
-    for number, line in enumerate(data.replace(b"\r\n", b"\n").replace(b"\r", b"\n").split(b"\n"), start=1):
-        try:
-            line.decode("utf-8")
-        except UnicodeDecodeError as error:
-            word = line[max(0, error.start - 12) : error.start + 8].decode("cp1252", errors="replace")
-            faults.add(
-                f"line {number}, character {error.start + 1}: byte 0x{line[error.start]:02X}; near "
-                f"{shown(word)}"
-            )
-    lines = f"{faults.total} line{'s' if faults.total > 1 else ''}"
-    return faults.error(
-        f"{lines} not in UTF-8 (probably Windows-1252 or Latin-1, the words are shown as read so)",
-        "save the table as 'CSV UTF-8', or as .xlsx",
-    )
+        with gzip.open(path) if packed else path.open("rb") as file:
+            file.read(skipped)
+            while piece := file.read(_CHUNK):
+                total += len(piece)
+                if total > LARGEST_TEXT:
+                    raise InputError(
+                        f"{path}: more than {LARGEST_TEXT // 2**30} GB of text; cut the table into parts"
+                    )
+                yield piece
+    except (OSError, EOFError, zlib.error) as error:
+        if packed:
+            raise InputError(f"{path}: the gzip file is damaged or cut short; fetch it again") from None
+        why = getattr(error, "strerror", None) or error
+        raise InputError(f"{path}: the file cannot be read ({why}); check its permissions") from None

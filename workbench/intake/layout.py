@@ -10,8 +10,9 @@ from pathlib import Path
 
 from workbench.errors import InputError
 
-from .faults import Faults, counted, shown
+from .faults import Faults, counted, listed, shown
 from .raw import split_line
+from .titles import lines_above
 
 SEPARATORS = {"\t": "tabs", ";": "semicolons", ",": "commas"}
 _LOOKED_AT = 50
@@ -43,9 +44,9 @@ class Layout:
 def find_layout(path: Path, lines: Sequence[str]) -> Layout:
     """Return the layout of a text table.
 
-    Passed over and told: a first line ``sep=;`` as some spreadsheets write it, and lines that start with
-    ``#`` before the header. The last of those is itself the header when it has as many fields as the line
-    after it.
+    Passed over and told: a first line ``sep=;`` as some spreadsheets write it, lines that start with ``#``
+    before the header, and titles (see `rows_above`). The last of the lines with ``#`` is itself the header
+    when it has as many fields as the line after it.
 
     Raises
     ------
@@ -55,19 +56,27 @@ def find_layout(path: Path, lines: Sequence[str]) -> Layout:
     declared = _DECLARED.fullmatch(lines[0]) if len(lines) > 1 else None
     first = 1 if declared else 0
     start = next((i for i in range(first, len(lines)) if not lines[i].startswith("#")), first)
-    separator = declared.group(1) if declared else find_separator(lines[start:])
+    above, parting = lines_above(lines[start:])
+    start += above
+    separator = declared.group(1) if declared else parting if above else find_separator(lines[start:])
     if separator not in SEPARATORS:
         raise InputError(
             f"{path}: line 1 says that {shown(separator)} parts the fields; allowed: tab, semicolon, comma"
         )
-    if start > first and _same_width(lines[start - 1], lines[start], separator):
+    if start > first and not above and _same_width(lines[start - 1], lines[start], separator):
         start -= 1
     if not lines[start].strip():
         raise InputError(
             f"{path}: line {start + 1} is empty where the header should be; take empty lines out"
         )
-    notes = (f"{path.name}: {counted(start, 'line')} before the header left out",) if start else ()
+    notes = (_above_note(path, lines[:start], separator),) if start else ()
     return Layout(_header(path, lines[start], start + 1, separator), start + 1, separator, notes)
+
+
+def _above_note(path: Path, lines: Sequence[str], separator: str) -> str:
+    texts = [text for line in lines if (text := line.strip(f" {separator}"))]
+    said = f": {listed(texts, 3)}" if texts else ""
+    return f"{path.name}: {counted(len(lines), 'line')} before the header left out{said}"
 
 
 def find_separator(lines: Sequence[str]) -> str:

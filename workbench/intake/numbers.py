@@ -2,32 +2,62 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+import warnings
+from collections import Counter
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from dataclasses import dataclass, field
 from operator import itemgetter
 from typing import Any
 
 import numpy as np
 
-from .faults import LISTED_FAULTS, Faults, counted, shown
+from workbench.errors import InputError
+
+from .faults import LISTED_FAULTS, Faults, counted, listed, shown
+from .marks import PLAIN, MarkFinder, Marks
 from .part import Part, WrongCells
-from .raw import ArrayBody, Cell, TextBody, cell_text
-from .tokens import MISSING, number_of
+from .quick import quick_numbers
+from .raw import ArrayBody, Cell, TextBody, WrongCell, cell_text
+from .tokens import MISSING, is_comma_number, is_under_limit
 
 _NAN = float("nan")
+_BLOCK = 256
 _MOST_SEEN = 50_000
 
 
-def cell_number(cell: Cell) -> float | None:
+@dataclass(frozen=True)
+class Numbers:
+    """The numbers of a table and how they were written.
+
+    Attributes
+    ----------
+    values
+        float64 array, rows x columns as in the file; missing = NaN.
+    marks
+        Decimal mark and thousands separator.
+    under_limit
+        For each feature that has some, the number of cells such as ``<LOD``, which count as missing.
+    notes
+        What was accepted knowingly.
+    """
+
+    values: np.ndarray
+    marks: Marks = PLAIN
+    under_limit: Mapping[str, int] = field(default_factory=dict)
+    notes: tuple[str, ...] = ()
+
+
+def cell_number(cell: Cell, marks: Marks = PLAIN) -> float | None:
     """Return a cell's number, NaN when it is missing, or None when it is something else.
 
-    >>> cell_number("0.5"), cell_number(3), cell_number("1,5")
-    (0.5, 3.0, None)
+    >>> cell_number("0.5"), cell_number(3), cell_number("1,5"), cell_number("1,5", Marks(","))
+    (0.5, 3.0, None, 1.5)
     """
     if cell is None:
         return _NAN
     if isinstance(cell, str):
         text = cell.strip()
-        return _NAN if text in MISSING else number_of(text)
+        return _NAN if text in MISSING else marks.number(text)
     if isinstance(cell, int | float):
         try:
             return float(cell)
@@ -36,30 +66,127 @@ def cell_number(cell: Cell) -> float | None:
     return None
 
 
-def read_numbers(part: Part) -> np.ndarray:
+def read_numbers(part: Part, decimal: str | None = None, *, whole: bool = False) -> Numbers:
     """Return the chosen cells as a float64 array (rows x columns as in the file), missing cells as NaN.
+
+    Cells such as ``<LOD`` count as missing and are counted for each feature. Decimal commas and thousands
+    separators are read where all numbers of the table agree on one writing (see `MarkFinder`).
+
+    Parameters
+    ----------
+    decimal
+        ``.`` or ``,``; found when None.
+    whole
+        Whether the numbers must be whole (counts), which rules some writings out.
 
     Raises
     ------
     InputError
-        When cells hold something else than a number; five are shown with place, feature and sample.
+        When cells hold something else than a number, or the writing is not clear; five are shown with place,
+        feature and sample.
     """
     body = part.raw.body
     if isinstance(body, ArrayBody):
-        return body.array[np.ix_(part.rows, part.columns)]
-    pick, seen, wrong = _picker(part), _Seen(), WrongCells(part)
-    values = np.empty((len(part.rows), len(part.columns)))
-    for k, i in enumerate(part.rows):
-        cells = pick(body.row(i))
-        row = _quick_row(cells, seen) if isinstance(body, TextBody) and body.is_plain(i) else None
-        values[k] = _careful_row(cells, i, wrong) if row is None else row
-    if wrong.faults.total:
-        raise wrong.error("no number")
-    return values
+        return Numbers(body.array[np.ix_(part.rows, part.columns)])
+    return _Reader(part).read(decimal, whole)
+
+
+class _Reader:
+    """Reads rows quickly where they hold plain numbers, and cell by cell where they do not."""
+
+    def __init__(self, part: Part) -> None:
+        self.part = part
+        self.pick = _picker(part)
+        self.is_text = isinstance(part.raw.body, TextBody)
+        shape = (len(part.rows), len(part.columns))
+        # Stored samples x features, the way they are needed, so that no second array is made.
+        self.values = np.empty(shape) if part.samples_in == "rows" else np.empty(shape[::-1]).T
+
+    def read(self, decimal: str | None, whole: bool) -> Numbers:
+        marks = Marks(decimal or ".")
+        with _unread_as_errors():
+            left = self._fill(range(len(self.part.rows)), marks)
+            if decimal == "," or self._has_commas(left):
+                found = self._find_marks(decimal, whole)
+                if found is not None and found != marks:
+                    marks = found
+                    left = self._fill(range(len(self.part.rows)), marks)
+        careful = _Careful(self.part, marks)
+        for k in left:
+            self.values[k] = careful.row(self._cells(k), self.part.rows[k])
+        careful.check(decimal)
+        notes = writing_notes(self.part, marks, careful.under_limit, list(careful.tokens))
+        return Numbers(self.values, marks, dict(careful.under_limit), tuple(notes))
+
+    def _cells(self, k: int) -> Sequence[Cell]:
+        return self.pick(self.part.raw.body.row(self.part.rows[k]))
+
+    def _fill(self, rows: range, marks: Marks) -> list[int]:
+        """Fill in the rows that hold plain numbers and missing tokens; return the others."""
+        if not self.is_text or marks.thousands:
+            return list(rows)
+        left: list[int] = []
+        block = np.empty((_BLOCK, len(self.part.columns)))
+        for start in range(0, len(rows), _BLOCK):
+            several = rows[start : start + _BLOCK]
+            for m, k in enumerate(several):
+                found = self._quick(k, marks.decimal)
+                if found is None:
+                    left.append(k)
+                else:
+                    block[m] = found
+            self.values[several.start : several.stop] = block[: len(several)]
+        return left
+
+    def _quick(self, k: int, decimal: str) -> np.ndarray | None:
+        body = self.part.raw.body
+        assert isinstance(body, TextBody)
+        i = self.part.rows[k]
+        text, separator = body.written(i) if self.part.whole_rows else "", body.separator
+        if not text:
+            cells: Sequence[Any] = self._cells(k)
+            text, separator = ";".join(cells), ";"
+        if decimal == ",":
+            if "." in text or separator == ",":
+                return None
+            text = text.replace(",", ".")
+        return quick_numbers(text, separator, len(self.part.columns))
+
+    def _has_commas(self, left: Sequence[int]) -> bool:
+        return any(isinstance(cell, str) and is_comma_number(cell) for k in left for cell in self._cells(k))
+
+    def _find_marks(self, decimal: str | None, whole: bool) -> Marks | None:
+        finder = MarkFinder(decimal, whole)
+        for k in range(len(self.part.rows)):
+            mark = finder.only if self.is_text else None
+            found = None if mark is None else self._quick(k, mark)
+            if mark is None or found is None:
+                finder.look(cell.strip() for cell in self._cells(k) if isinstance(cell, str))
+            else:
+                finder.take(found, mark, decimals=bool((found != np.rint(found)).any()))
+        if finder.unclear:
+            raise self._unclear()
+        return finder.marks()
+
+    def _unclear(self) -> InputError:
+        faults = Faults(self.part.raw.path)
+        for place, cell in self._comma_cells():
+            faults.add(f"{place}: {shown(cell)}")
+        return faults.error(
+            f"{counted(faults.total, 'cell has', 'cells have')} a comma or a point that may be a decimal mark "
+            "or part thousands, and nothing in the table tells which",
+            "say decimal = ',' or decimal = '.' for this table",
+        )
+
+    def _comma_cells(self) -> Iterator[tuple[str, str]]:
+        for k in range(len(self.part.rows)):
+            for j, cell in zip(self.part.columns, self._cells(k), strict=True):
+                if isinstance(cell, str) and is_comma_number(cell):
+                    yield self.part.named_place(self.part.rows[k], j), cell
 
 
 def _picker(part: Part) -> Callable[[Sequence[Cell]], Sequence[Cell]]:
-    if part.whole_rows():
+    if part.whole_rows:
         return lambda cells: cells
     if len(part.columns) == 1:
         only = part.columns[0]
@@ -67,36 +194,65 @@ def _picker(part: Part) -> Callable[[Sequence[Cell]], Sequence[Cell]]:
     return itemgetter(*part.columns)
 
 
-class _Seen(dict[str, float]):
-    """Numbers of the texts that occurred before: counts and missing tokens come again and again."""
+class _Careful:
+    """Reads rows cell by cell, counts what is under a limit, and collects what is no number."""
 
-    def __missing__(self, text: str) -> float:
-        number = _NAN if text in MISSING else float(text)
-        self[text] = number
-        return number
+    def __init__(self, part: Part, marks: Marks) -> None:
+        self.part, self.marks = part, marks
+        self.wrong = WrongCells(part)
+        self.under_limit: Counter[str] = Counter()
+        self.tokens: dict[str, None] = {}
+        self.seen: dict[Cell, float | None] = {}
+
+    def row(self, cells: Sequence[Cell], i: int) -> list[float]:
+        row = []
+        for j, cell in zip(self.part.columns, cells, strict=True):
+            number = self._number(cell)
+            if number is None and isinstance(cell, str) and is_under_limit(cell):
+                self.under_limit[self.part.feature_name(i, j)] += 1
+                self.tokens[cell.strip()] = None
+            elif number is None:
+                self.wrong.add(i, j, cell)
+            row.append(_NAN if number is None else number)
+        return row
+
+    def _number(self, cell: Cell) -> float | None:
+        if not isinstance(cell, str):
+            return None if isinstance(cell, WrongCell) else cell_number(cell)
+        if cell not in self.seen:
+            if len(self.seen) >= _MOST_SEEN:
+                return cell_number(cell, self.marks)
+            self.seen[cell] = cell_number(cell, self.marks)
+        return self.seen[cell]
+
+    def check(self, decimal: str | None) -> None:
+        if self.wrong.faults.total:
+            with_commas = " with decimal commas, as decimal = ',' says" if decimal == "," else ""
+            raise self.wrong.error(f"no number{with_commas}")
 
 
-def _quick_row(cells: Sequence[Any], seen: _Seen) -> np.ndarray | None:
-    try:
-        return np.fromiter(map(float, cells), dtype=np.float64, count=len(cells))
-    except ValueError:
-        pass
-    try:
-        if len(seen) < _MOST_SEEN:
-            return np.fromiter(map(seen.__getitem__, cells), dtype=np.float64, count=len(cells))
-        return np.array([_NAN if cell in MISSING else float(cell) for cell in cells])
-    except ValueError:
-        return None
+class _unread_as_errors(warnings.catch_warnings):  # noqa: N801 - reads as a statement
+    """While it lasts, a text that numpy cannot read to its end raises `DeprecationWarning`."""
+
+    def __enter__(self) -> None:
+        super().__enter__()
+        warnings.simplefilter("error", DeprecationWarning)
 
 
-def _careful_row(cells: Sequence[Cell], i: int, wrong: WrongCells) -> list[float]:
-    row = []
-    for j, cell in zip(wrong.part.columns, cells, strict=True):
-        number = cell_number(cell)
-        if number is None:
-            wrong.add(i, j, cell)
-        row.append(_NAN if number is None else number)
-    return row
+def writing_notes(
+    part: Part, marks: Marks, under_limit: Mapping[str, int], tokens: Sequence[str]
+) -> list[str]:
+    """Return what is to be told of a writing other than the plain one, and of cells under a limit."""
+    name, notes = part.raw.path.name, []
+    if not marks.plain:
+        notes.append(f"{name}: numbers are written with {marks.told()}, as all of them agree; read as such")
+    if under_limit:
+        cells = counted(sum(under_limit.values()), "cell")
+        features = counted(len(under_limit), "feature")
+        notes.append(
+            f"{name}: {cells} of {features} under a limit or not detected ({listed(tokens, 3)}): counted as missing"
+        )
+    return notes
 
 
 def check_range(part: Part, values: np.ndarray, kind: str) -> list[str]:
@@ -107,25 +263,54 @@ def check_range(part: Part, values: np.ndarray, kind: str) -> list[str]:
     InputError
         With the place, feature and sample of five cells.
     """
-    _refuse(part, np.isinf(values), "infinite", "leave such cells empty (missing), or mend what made them")
+    _refuse(part, values, np.isinf, "infinite", "leave such cells empty (missing), or mend what made them")
     if kind == "counts":
         other = "choose other values for this block (intensities, log, continuous) when it holds no counts"
-        _refuse(part, values < 0, "negative, though the values are counts", other)
-        fractions = np.isfinite(values) & (values != np.rint(values))
+        _refuse(part, values, _negative, "negative, though the values are counts", other)
         round_first = f"round estimated counts first; {other}"
-        _refuse(part, fractions, "not whole, though the values are counts", round_first)
-    negative = int(np.count_nonzero(values < 0)) if kind == "intensities" else 0
+        _refuse(part, values, _fractions, "not whole, though the values are counts", round_first)
+    if kind == "proportions":
+        other = "parts of a whole are 0 or more; log-ratios are values `log` or `continuous`"
+        _refuse(part, values, _negative, "negative, though the values are proportions", other)
+    if kind == "beta":
+        other = "divide percentages by 100; M-values are values `log`"
+        _refuse(part, values, _no_share, "outside 0 to 1, though the values are beta", other)
+    negative = _count(values, _negative) if kind == "intensities" else 0
     if not negative:
         return []
     return [f"{part.raw.path.name}: {counted(negative, 'intensity is', 'intensities are')} negative"]
 
 
-def _refuse(part: Part, where: np.ndarray, what: str, way_out: str) -> None:
-    total = int(np.count_nonzero(where))
+def _negative(values: np.ndarray) -> np.ndarray:
+    found: np.ndarray = values < 0
+    return found
+
+
+def _no_share(values: np.ndarray) -> np.ndarray:
+    found: np.ndarray = (values < 0) | (values > 1)
+    return found
+
+
+def _fractions(values: np.ndarray) -> np.ndarray:
+    found: np.ndarray = (values != np.rint(values)) & (values == values)
+    return found
+
+
+def _count(values: np.ndarray, fault: Callable[[np.ndarray], np.ndarray]) -> int:
+    """Return how many values have a fault, looked at in pieces, so that no second table stands in memory."""
+    stored = values if values.flags.c_contiguous else values.T
+    pieces = range(0, len(stored), _BLOCK)
+    return sum(int(np.count_nonzero(fault(stored[start : start + _BLOCK]))) for start in pieces)
+
+
+def _refuse(
+    part: Part, values: np.ndarray, fault: Callable[[np.ndarray], np.ndarray], what: str, way_out: str
+) -> None:
+    total = _count(values, fault)
     if not total:
         return
     faults = Faults(part.raw.path, total=total)
-    for k, m in np.argwhere(where)[:LISTED_FAULTS]:
+    for k, m in np.argwhere(fault(values))[:LISTED_FAULTS]:
         i, j = part.rows[k], part.columns[m]
         faults.kept.append(f"{part.named_place(i, j)}: {shown(cell_text(part.cell(i, j)))}")
     raise faults.error(f"{counted(total, 'cell is', 'cells are')} {what}", way_out)

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections import Counter
 from collections.abc import Sequence
 from dataclasses import dataclass, field
+from functools import cached_property
 
 from workbench.errors import InputError
 
@@ -34,6 +35,7 @@ class Part:
     rows: Sequence[int]
     columns: Sequence[int]
 
+    @cached_property
     def whole_rows(self) -> bool:
         """Whether every column is read, in order."""
         return list(self.columns) == list(range(self.raw.body.shape[1]))
@@ -43,6 +45,10 @@ class Part:
         if self.samples_in == "rows":
             return [self.raw.columns[j] for j in self.columns]
         return [self.raw.rows[i] for i in self.rows]
+
+    def feature_name(self, i: int, j: int) -> str:
+        """Return the feature of a cell of the body."""
+        return self.raw.columns[j] if self.samples_in == "rows" else self.raw.rows[i]
 
     def cell(self, i: int, j: int) -> Cell:
         """Return one cell of the body."""

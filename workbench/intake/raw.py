@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import csv
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Literal, Protocol
 
@@ -80,6 +80,9 @@ class Body(Protocol):
     def place(self, i: int, j: int) -> str:
         """Return where a cell stands in the file; ``i = -1`` is the header, ``j = -1`` the id column."""
 
+    def core(self, header: int, rows: int, columns: int) -> Body:
+        """Return the body without its first rows and columns; row ``header`` (-1: the same) is its header."""
+
 
 def split_line(line: str, separator: str) -> list[str]:
     """Return the fields of one line; a field that starts with a double quote ends at the closing one.
@@ -103,25 +106,42 @@ class TextBody:
     first_line: int
     width: int
     short_header: bool = False
+    before: int = 1
+    header_line: int | None = None
 
     @property
     def shape(self) -> tuple[int, int]:
         """Number of rows and of columns."""
-        return len(self.lines), self.width - 1
+        return len(self.lines), self.width - self.before
 
     def row(self, i: int) -> list[str]:
         """Return the cells of row ``i`` as they are written."""
-        return split_line(self.lines[i], self.separator)[1:]
+        return split_line(self.lines[i], self.separator)[self.before :]
 
-    def is_plain(self, i: int) -> bool:
-        """Whether ``float`` reads the cells of row ``i`` as `number_of` does: ASCII, no underscore."""
+    def written(self, i: int) -> str:
+        """Return the cells of row ``i`` as one text, unsplit; empty when a quote stands in the line."""
         line = self.lines[i]
-        return line.isascii() and line.find("_", line.find(self.separator)) < 0
+        return "" if '"' in line else line.split(self.separator, self.before)[-1]
 
     def place(self, i: int, j: int) -> str:
         """Return the line and column, both counted from 1; a short header has no field over the ids."""
-        column = j + 1 if i == HEADER and self.short_header else j + 2
-        return f"line {self.first_line + i}, column {column}"
+        line, column = self.first_line + i, j + 1 + self.before if j >= 0 else 1
+        if i == HEADER:
+            line = self.header_line or line
+            column -= self.short_header
+        return f"line {line}, column {column}"
+
+    def core(self, header: int, rows: int, columns: int) -> TextBody:
+        """Return the body without its first rows and columns."""
+        header_line = self.header_line or self.first_line - 1
+        return replace(
+            self,
+            lines=self.lines[rows:],
+            first_line=self.first_line + rows,
+            before=self.before + columns,
+            header_line=header_line if header == HEADER else self.first_line + header,
+            short_header=self.short_header and header == HEADER,
+        )
 
 
 @dataclass(frozen=True)
@@ -145,12 +165,21 @@ class CellBody:
         """Return the place as the format names it."""
         return self.locate(i, j)
 
+    def core(self, header: int, rows: int, columns: int) -> CellBody:
+        """Return the body without its first rows and columns."""
+
+        def locate(i: int, j: int) -> str:
+            return self.locate(header if i == HEADER else i + rows, j if j < 0 else j + columns)
+
+        return CellBody([row[columns:] for row in self.rows[rows:]], self.width - columns, locate)
+
 
 @dataclass(frozen=True)
 class ArrayBody:
     """A numeric array, as .h5ad files and Parquet tables of numbers hold it."""
 
     array: np.ndarray
+    before: tuple[int, int] = (0, 0)
 
     @property
     def shape(self) -> tuple[int, int]:
@@ -164,8 +193,14 @@ class ArrayBody:
 
     def place(self, i: int, j: int) -> str:
         """Return the row and column of the array, both counted from 1, or the one of them that an id has."""
-        row, column = f"row {i + 1}", f"column {j + 1}"
+        row, column = f"row {i + 1 + self.before[0]}", f"column {j + 1 + self.before[1]}"
         return column if i == HEADER else row if j < 0 else f"{row}, {column}"
+
+    def core(self, header: int, rows: int, columns: int) -> ArrayBody:
+        """Return the body without its first rows and columns."""
+        if header != HEADER:
+            raise ValueError("the ids of an array are no row of it")
+        return ArrayBody(self.array[rows:, columns:], (self.before[0] + rows, self.before[1] + columns))
 
 
 @dataclass(frozen=True)
@@ -191,6 +226,8 @@ class RawTable:
         on.
     notes
         What was accepted knowingly, one sentence each.
+    sheet, array
+        Sheet of the workbook, array of the .h5ad file that was read; None for other formats.
     """
 
     path: Path
@@ -202,7 +239,25 @@ class RawTable:
     corner_lacks: bool = False
     broken_ids: tuple[str, ...] = ()
     notes: tuple[str, ...] = ()
+    sheet: str | None = None
+    array: str | None = None
 
     def place(self, i: int, j: int) -> str:
         """Return where a cell stands in the file; -1 is the header (row) or the id column (column)."""
         return self.body.place(i, j)
+
+    def core(self, *, header: int = HEADER, rows: int = 0, columns: int = 0) -> RawTable:
+        """Return the table without its first rows and columns, all places as in the file.
+
+        ``header`` is the row of the body whose cells name the columns; -1 leaves the names as they are.
+        """
+        named = header != HEADER
+        names = [cell_text(cell) for cell in self.body.row(header)] if named else self.columns
+        return replace(
+            self,
+            corner=self.rows[header] if named else self.corner,
+            columns=tuple(names[columns:]),
+            rows=self.rows[rows:],
+            body=self.body.core(header, rows, columns),
+            corner_lacks=self.corner_lacks and not named,
+        )

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 
 import numpy as np
@@ -11,17 +11,18 @@ import pandas as pd
 
 from workbench.errors import InputError
 
+from .apart import SetApart, set_apart
 from .faults import counted, shown
 from .ids import check_no_dates, check_present, check_unique, id_notes, refuse_broken
 from .mixed import read_mixed
 from .names import SAMPLES, Words
-from .numbers import check_range, read_numbers
+from .numbers import Numbers, check_range, read_numbers
 from .orientation import Matching, match_samples
 from .part import Part
 from .raw import HEADER, RawTable
 from .readers import read_delivered
 
-VALUES = ("counts", "intensities", "log", "continuous", "mixed")
+VALUES = ("counts", "intensities", "log", "proportions", "beta", "continuous", "mixed")
 
 
 @dataclass(frozen=True)
@@ -43,6 +44,15 @@ class DeliveredTable:
         Levels of the text features of a ``mixed`` table, keyed by feature.
     notes
         What was found and accepted, one sentence each.
+    annotations
+        DataFrame of text, indexed by feature: columns of the table that stood before the first sample.
+    under_limit
+        For each feature that has some, the number of cells such as ``<LOD``, which count as missing.
+    decimal, sheet, array
+        What a rebuild must be told to read the same: the decimal mark where numbers are not written as
+        ``1234.5``, the sheet of a workbook, the array of an .h5ad file; None where there is no choice.
+    decisions
+        The notes in at most five lines: file, samples, what was set apart, numbers, features.
     """
 
     values: pd.DataFrame
@@ -52,6 +62,12 @@ class DeliveredTable:
     only_table: tuple[str, ...]
     notes: tuple[str, ...]
     levels: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
+    annotations: pd.DataFrame = field(default_factory=pd.DataFrame)
+    under_limit: Mapping[str, int] = field(default_factory=dict)
+    decimal: str | None = None
+    sheet: str | None = None
+    array: str | None = None
+    decisions: tuple[str, ...] = ()
 
 
 def delivered_table(
@@ -64,6 +80,7 @@ def delivered_table(
     array: str | None = None,
     names: Mapping[str, str] | None = None,
     words: Words = SAMPLES,
+    decimal: str | None = None,
 ) -> DeliveredTable:
     """Return the table of a delivered file, checked, and aligned to the samples of the sheet by id.
 
@@ -74,7 +91,7 @@ def delivered_table(
     sample_ids
         Ids of the sample sheet, in its order.
     values
-        ``counts``, ``intensities``, ``log``, ``continuous`` or ``mixed``: what the numbers are.
+        One of ``VALUES``: what the numbers are.
     samples_in
         ``rows`` or ``columns``; found by matching the ids when left out.
     sheet, array
@@ -84,6 +101,8 @@ def delivered_table(
         the sheet are refused.
     words
         What the ids are called in messages: samples, or runs.
+    decimal
+        Decimal mark of text, ``.`` or ``,``; found when left out, where all numbers agree on one.
 
     Raises
     ------
@@ -93,31 +112,59 @@ def delivered_table(
     """
     if values not in VALUES:
         raise InputError(f"{path}: values is '{values}'; allowed: {', '.join(VALUES)}")
-    raw = read_delivered(path, sheet=sheet, array=array)
+    if decimal not in (None, ".", ","):
+        raise InputError(f"{path}: decimal is {decimal!r}; allowed: '.', ',', or left out")
+    delivered = read_delivered(path, sheet=sheet, array=array)
+    apart = set_apart(delivered, sample_ids, samples_in, names, mixed=values == "mixed")
+    raw = apart.raw
     _check_ids_present(raw)
     matching = match_samples(raw, sample_ids, samples_in, names, words)
     part = _part(raw, matching)
     features = raw.rows if matching.samples_in == "columns" else raw.columns
     _check_features(raw, features, matching.samples_in)
-    numbers, levels, notes = _read(part, values)
+    numbers, levels = _read(part, values, decimal)
+    told = _told(raw, apart, matching, numbers)
     return DeliveredTable(
         values=pd.DataFrame(
-            numbers,
+            numbers.values,
             index=pd.Index(list(matching.matched), dtype="object"),
             columns=pd.Index(list(features), dtype="object"),
+            copy=False,
         ),
         samples_in=matching.samples_in,
         matched=matching.matched,
         only_sheet=matching.only_sheet,
         only_table=matching.only_table,
-        notes=(
-            *raw.notes,
-            *matching.notes,
-            *_feature_notes(raw, features),
-            *notes,
-            *_missing_note(raw, numbers),
-        ),
+        notes=tuple(note for group in told.values() for note in group),
         levels=levels,
+        annotations=apart.annotations.reindex(pd.Index(list(features), dtype="object")),
+        under_limit=numbers.under_limit,
+        decimal=None if numbers.marks.plain else numbers.marks.decimal,
+        sheet=raw.sheet,
+        array=raw.array,
+        decisions=_decisions(raw, told),
+    )
+
+
+def _told(raw: RawTable, apart: SetApart, matching: Matching, numbers: Numbers) -> dict[str, Sequence[str]]:
+    """Return the notes by what they are about."""
+    features = raw.rows if matching.samples_in == "columns" else raw.columns
+    return {
+        "file": raw.notes,
+        "set apart": apart.notes,
+        "samples": matching.notes,
+        "features": _feature_notes(raw, features),
+        "numbers": [*numbers.notes, *_missing_note(raw, numbers.values)],
+    }
+
+
+def _decisions(raw: RawTable, told: Mapping[str, Sequence[str]]) -> tuple[str, ...]:
+    """Return the notes, those about one thing in one line, without the name of the file."""
+    start = f"{raw.path.name}: "
+    return tuple(
+        f"{about}: {'; '.join(note.removeprefix(start) for note in notes)}"
+        for about, notes in told.items()
+        if notes
     )
 
 
@@ -155,15 +202,17 @@ def _feature_notes(raw: RawTable, features: Sequence[str]) -> list[str]:
     return [f"{raw.path.name}: {note}" for note in id_notes(features, "feature")]
 
 
-def _read(part: Part, values: str) -> tuple[np.ndarray, Mapping[str, tuple[str, ...]], Sequence[str]]:
+def _read(part: Part, values: str, decimal: str | None) -> tuple[Numbers, Mapping[str, tuple[str, ...]]]:
+    """Return the values, samples x features, and the levels of features of text."""
     if values == "mixed":
-        mixed = read_mixed(part)
+        mixed = read_mixed(part, decimal)
         stored = mixed.values if part.samples_in == "rows" else mixed.values.T
         check_range(part, stored, values)
-        return mixed.values, mixed.levels, mixed.notes
-    numbers = read_numbers(part)
-    notes = check_range(part, numbers, values)
-    return np.ascontiguousarray(numbers.T if part.samples_in == "columns" else numbers), {}, notes
+        return Numbers(mixed.values, mixed.marks, mixed.under_limit, mixed.notes), mixed.levels
+    numbers = read_numbers(part, decimal, whole=values == "counts")
+    notes = (*numbers.notes, *check_range(part, numbers.values, values))
+    upright = numbers.values.T if part.samples_in == "columns" else numbers.values
+    return replace(numbers, values=np.ascontiguousarray(upright), notes=notes), {}
 
 
 def _missing_note(raw: RawTable, numbers: np.ndarray) -> list[str]:

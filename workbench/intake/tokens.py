@@ -9,10 +9,11 @@ MISSING_SHOWN = "an empty cell, NA, NaN, nan, N/A, #N/A, null, NULL, - or ."
 
 _DECIMAL_COMMA = re.compile(r"[+-]?(\d+,\d*|,\d+)([eE][+-]?\d+)?")
 _THOUSANDS = re.compile(r"[+-]?\d{1,3}(,\d{3})+(\.\d*)?")
-_CONTINENTAL = re.compile(r"[+-]?\d{1,3}([. '\u00a0\u202f\u2019]\d{3})+(,\d+)?")
+_CONTINENTAL = re.compile(r"[+-]?\d{1,3}([. '\u00a0\u202f\u2019]\d{3})+([.,]\d+)?")
 _LIMIT = re.compile(r"[<>\u2264\u2265]\s*=?\s*[\w.,]+", re.UNICODE)
+_UNDER = re.compile(r"[<\u2264]\s*=?\s*[\w.,]+", re.UNICODE)
 _BELOW = re.compile(
-    r"(b?\s*l\s*o\s*[dq]|n\.?d\.?|below.*|not detected|und(etermined|etected)?)", re.IGNORECASE
+    r"(b?\s*l\s*l?\s*o?\s*[dq]|n\.?\s?d\.?|below.*|not detected|und(etermined|etected)?)", re.IGNORECASE
 )
 _UNIT = re.compile(r"[+-]?\d+(\.\d+)?\s*(%|[a-zA-Z\u00b5\u03bc]+(/\w+)?)")
 _PADDED = re.compile(r"[+-]?0\d+")
@@ -60,6 +61,19 @@ def hint_for(text: str) -> str:
     return next((hint for pattern, hint in hints if pattern.fullmatch(plain)), "")
 
 
+def is_under_limit(text: str) -> bool:
+    """Return whether a text says that a value is under a limit of detection, or not detected.
+
+    Values over a limit (``>ULOQ``) are not among them: they are missing at the other end, and counting them as
+    missing would make high values look low.
+
+    >>> [is_under_limit(t) for t in ("<LOD", "< 0.5", "n.d.", "BLQ", ">100", "NA")]
+    [True, True, True, True, False, False]
+    """
+    plain = text.strip()
+    return _UNDER.fullmatch(plain) is not None or _BELOW.fullmatch(plain) is not None
+
+
 def is_padded(text: str) -> bool:
     """Return whether a text is a code with zeros at its start, such as ``007``: text, though digits alone."""
     return _PADDED.fullmatch(text.strip()) is not None
@@ -75,7 +89,7 @@ _WAYS_OUT = {
     "a decimal comma": "write numbers with a decimal point",
     "a thousands separator, or a decimal comma": "write numbers with a decimal point and without separators",
     "a thousands separator": "write numbers without thousands separators",
-    "a value under or over a limit": "leave such cells empty (missing)",
+    "a value under or over a limit": "leave such cells empty (missing), or put the limit in their place",
     "a value under the limit of detection, or not detected": "leave such cells empty (missing)",
     "a number with a unit": "take the unit out of the cells",
     "a spreadsheet's error value": "mend the formula in the spreadsheet and save again",

@@ -11,6 +11,7 @@ from workbench.errors import InputError
 
 from .faults import Faults, counted, listed
 from .raw import HEADER, Cell, CellBody, RawTable, WrongCell, cell_text
+from .titles import MOST_ABOVE, rows_above
 from .workbook import is_filled, read_cells
 
 _ID_WAY_OUT = "set these cells to the text format, type the names again and save; or deliver the table as TSV"
@@ -19,17 +20,22 @@ _ID_WAY_OUT = "set these cells to the text format, type the names again and save
 def read_xlsx(path: Path, *, sheet: str | None = None) -> RawTable:
     """Return one sheet of a workbook as a `RawTable` with native cells.
 
-    Without ``sheet`` the workbook must have one sheet with cells. Empty rows and columns around the table are
-    left out. Ids that are dates, booleans or errors are kept as ``broken_ids``.
+    Without ``sheet`` the workbook must have one sheet with cells, or one alone that can be a table. Empty rows
+    and columns around the table are left out, and titles above its header (see `rows_above`), which are told.
+    Ids that are dates, booleans or errors are kept as ``broken_ids``.
 
     Raises
     ------
     InputError
-        When the file is no workbook, the sheet is not there or not named though there are several, or the
-        header is not one row of names; with the cell's name.
+        When the file is no workbook, the sheet is not there or not named though there are several, or a name
+        in the header is no text; with the cell's name.
     """
     name, rows = read_cells(path, sheet)
     top, left, table = _cropped(path, name, rows)
+    above = rows_above([list(map(cell_text, row)) for row in table[: MOST_ABOVE + 1]], len(table[0]))
+    titles = [cell_text(cell) for row in table[:above] for cell in row if is_filled(cell)]
+    if above:
+        top, left, table = _cropped(path, name, [*[[]] * (top + above), *rows[top + above :]])
     width = len(table[0])
 
     def locate(i: int, j: int) -> str:
@@ -44,8 +50,18 @@ def read_xlsx(path: Path, *, sheet: str | None = None) -> RawTable:
         rows=tuple(cell_text(row[0]) for row in table[1:]),
         body=CellBody([row[1:] for row in table[1:]], width - 1, locate),
         broken_ids=tuple(_broken([row[0] for row in table[1:]], lambda i: locate(i, -1))),
-        notes=(f"{path.name}: read from sheet '{name}'", *_number_notes(path, table)),
+        notes=(
+            f"{path.name}: read from sheet '{name}'",
+            *_above_notes(path, above, titles),
+            *_number_notes(path, table),
+        ),
+        sheet=name,
     )
+
+
+def _above_notes(path: Path, above: int, titles: Sequence[str]) -> list[str]:
+    said = f": {listed(titles, 3)}" if titles else ""
+    return [f"{path.name}: {counted(above, 'row')} before the header left out{said}"] if above else []
 
 
 def _cropped(path: Path, name: str, rows: list[list[Cell]]) -> tuple[int, int, list[list[Cell]]]:
@@ -67,17 +83,7 @@ def _cropped(path: Path, name: str, rows: list[list[Cell]]) -> tuple[int, int, l
 
 
 def _check_header(path: Path, table: list[list[Cell]], locate: Callable[[int], str]) -> None:
-    bare = [j for j, cell in enumerate(table[0]) if j and not is_filled(cell)]
     broken = _broken(table[0], locate)
-    if bare:
-        faults = Faults(path)
-        for j in bare:
-            faults.add(f"{locate(j)} is empty")
-        title = "take title rows above the header out; " if 2 * len(bare) >= len(table[0]) - 1 else ""
-        raise faults.error(
-            f"{counted(faults.total, 'column')} without a name in the header row",
-            f"{title}give every column a name, in one row",
-        )
     if broken:
         raise Faults(path, len(broken), broken).error(
             f"{counted(len(broken), 'name is', 'names are')} no text in the header row", _ID_WAY_OUT
