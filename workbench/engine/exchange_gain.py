@@ -1,0 +1,122 @@
+"""What exchanging rows gains: likelihood ratios of a multivariate regression, for all pairs at once.
+
+Rows ``T`` (scores of a layer's samples) are regressed on known columns with hat matrix ``H``. With flat priors
+on the coefficients and on the covariance the likelihood of an arrangement of the rows is ``|E'E|^(-df/2)``,
+``E = (I - H) T``. The ratio of two arrangements has mean 1 over normal data when the delivered one is right, so
+that by Markov's inequality the log ratio of one wrong arrangement passes ``t`` with probability ``exp(-t)`` at most.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+FloatArray = NDArray[np.float64]
+IndexArray = NDArray[np.intp]
+
+LEAST_RATIO = 1e-300
+
+
+def hat_matrix(basis: FloatArray) -> FloatArray:
+    """Return the projection onto the columns of a basis that need not be orthonormal."""
+    q = np.linalg.qr(basis)[0]
+    projection: FloatArray = q @ q.T
+    return projection
+
+
+def exchange_gains(rows: FloatArray, hat: FloatArray, df: int, known: FloatArray | None = None) -> FloatArray:
+    """Log likelihood ratio of "rows i and j exchanged" to "as they are", for every pair.
+
+    With ``e = E_j - E_i``, ``t = T_j - T_i``, ``A = E'E``, ``a = e'A^-1 e``, ``b = e'A^-1 t``, ``g = t'A^-1 t``
+    and ``k = 2 - h_ii - h_jj + 2 h_ij`` the determinant changes by the factor ``(1 - b)^2 + g (k - a)``.
+
+    Parameters
+    ----------
+    rows : ndarray of shape (n_samples, m)
+        ``T``; its residuals must have rank ``m``.
+    hat : ndarray of shape (n_samples, n_samples)
+        ``H``, a projection.
+    df : int
+        ``n_samples`` less the rank of ``H``.
+    known : ndarray of shape (n_samples, m), optional
+        A part of ``T`` in the span of ``H`` that stays where it is when rows are exchanged (run days, when
+        tubes were exchanged before the runs).
+
+    Returns
+    -------
+    ndarray of shape (n_samples, n_samples)
+        Symmetric, zero on the diagonal.
+
+    Examples
+    --------
+    >>> t = np.array([[0.0], [1.0], [2.0], [8.0], [4.0], [5.0], [6.0], [7.0], [3.0], [9.0]])
+    >>> line = hat_matrix(np.column_stack([np.ones(10), np.arange(10.0)]))
+    >>> gains = exchange_gains(t, line, 8)
+    >>> np.unravel_index(gains.argmax(), gains.shape)
+    (np.int64(3), np.int64(8))
+    """
+    residual = rows - hat @ rows
+    moved = rows if known is None else rows - known
+    inverse = np.asarray(np.linalg.pinv(residual.T @ residual, hermitian=True), dtype=np.float64)
+    a = _squared_distances(residual, residual, inverse)
+    b = _squared_distances(residual, moved, inverse)
+    g = _squared_distances(moved, moved, inverse)
+    h = np.diag(hat)
+    k = 2.0 - h[:, None] - h + 2.0 * hat
+    ratio = (1.0 - b) ** 2 + g * (k - a)
+    gains: FloatArray = -0.5 * df * np.log(np.maximum(ratio, LEAST_RATIO))
+    np.fill_diagonal(gains, 0.0)
+    return gains
+
+
+def rearrangement_gains(
+    rows: FloatArray,
+    hat: FloatArray,
+    df: int,
+    places: IndexArray,
+    sources: IndexArray,
+    known: FloatArray | None = None,
+) -> FloatArray:
+    """Log likelihood ratio of each of several rearrangements to the rows as they are.
+
+    Parameters
+    ----------
+    rows, hat, df, known
+        As for :func:`exchange_gains`.
+    places, sources : ndarray of int, shape (n_rearrangements, s)
+        In each, row ``sources[k]`` comes to place ``places[k]``; all other rows stay.
+
+    Returns
+    -------
+    ndarray of shape (n_rearrangements,)
+
+    Examples
+    --------
+    >>> t = np.random.default_rng(0).normal(size=(12, 2))
+    >>> line = hat_matrix(np.column_stack([np.ones(12), np.arange(12.0)]))
+    >>> pair = np.array([[2, 7]])
+    >>> same = rearrangement_gains(t, line, 10, pair, pair[:, ::-1]) - exchange_gains(t, line, 10)[2, 7]
+    >>> bool(abs(same[0]) < 1e-9)
+    True
+    """
+    residual = rows - hat @ rows
+    moved = rows if known is None else rows - known
+    total = residual.T @ residual
+    step = moved[sources] - moved[places]
+    left = (
+        np.eye(len(hat))[places[:, :, None], places[:, None, :]] - hat[places[:, :, None], places[:, None, :]]
+    )
+    cross = np.einsum("rsm,rsl->rml", residual[places], step)
+    own = np.einsum("rsm,rst,rtl->rml", step, left, step)
+    after = total + cross + cross.transpose(0, 2, 1) + own
+    was, now = np.linalg.slogdet(total)[1], np.linalg.slogdet(after)[1]
+    gains: FloatArray = 0.5 * df * (was - now)
+    return gains
+
+
+def _squared_distances(x: FloatArray, y: FloatArray, metric: FloatArray) -> FloatArray:
+    """Return ``(x_j - x_i)' metric (y_j - y_i)`` for all pairs."""
+    cross = x @ metric @ y.T
+    own = np.diag(cross)
+    distances: FloatArray = own[:, None] + own - cross - cross.T
+    return distances

@@ -1,0 +1,176 @@
+"""How two layers agree about their samples, and what exchanging two of them would gain."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.stats import t as student
+
+from workbench.engine.cross_prediction import Features, count_private, predict_left_out
+from workbench.engine.exchange_gain import exchange_gains, hat_matrix, rearrangement_gains
+from workbench.engine.nuisance import Nuisance
+from workbench.engine.swap_layers import LayerState
+
+FloatArray = NDArray[np.float64]
+IndexArray = NDArray[np.intp]
+
+MATCH_LEVEL = 0.1
+DF_PER_FACTOR = 4
+FEWEST_DF = 10
+
+
+@dataclass(frozen=True, eq=False)
+class Prediction:
+    """Factors of one layer that the other layer's features predict.
+
+    Attributes
+    ----------
+    target, source : str
+        Layer of the factors, and the layer that predicts them.
+    scores, predicted : ndarray of shape (n_common, n_matched)
+        The factors, and what samples left out were predicted to have; the design removed from both.
+    hat : ndarray of shape (n_common, n_common)
+        Projection onto the design and ``predicted``.
+    df : int
+    information : float
+        Half the log ratio of the factors' generalised variance without and with the prediction: nats that
+        the other layer tells of a sample.
+    """
+
+    target: str
+    source: str
+    scores: FloatArray
+    predicted: FloatArray
+    hat: FloatArray
+    df: int
+    information: float
+
+    def gains(self) -> FloatArray:
+        """Return the log likelihood ratio of exchanging each two samples, shape (n_common, n_common)."""
+        return exchange_gains(self.scores, self.hat, self.df)
+
+    def rearranged(self, places: IndexArray, sources: IndexArray) -> FloatArray:
+        """Return the log likelihood ratio of rearrangements of the target's rows, shape (count,)."""
+        return rearrangement_gains(self.scores, self.hat, self.df, places, sources)
+
+
+@dataclass(frozen=True, eq=False)
+class LayerMatch:
+    """Two layers on the samples that both have.
+
+    Attributes
+    ----------
+    first, second : str
+    rows : pair of ndarray of int
+        Rows of the common samples in each layer.
+    samples : ndarray of int
+        The common samples.
+    predictions : tuple of Prediction
+        First layer's factors by the second and the other way, where any is matched.
+    private : dict
+        Layer that predicts -> components that it does not share.
+    untestable : str
+        Why no swap can be seen between the two, or "".
+    """
+
+    first: str
+    second: str
+    rows: tuple[IndexArray, IndexArray]
+    samples: IndexArray
+    predictions: tuple[Prediction, ...]
+    private: dict[str, int]
+    untestable: str
+
+    @property
+    def information(self) -> float:
+        """Nats that the better direction tells of a sample."""
+        return max((one.information for one in self.predictions), default=0.0)
+
+    def weights(self) -> list[float]:
+        """Return the share of each direction in the evidence, by what it tells.
+
+        A weighted mean of two log likelihood ratios that each have mean 1 before the logarithm has it too, at
+        most (Hölder), however dependent they are.
+        """
+        total = sum(one.information for one in self.predictions)
+        return [one.information / total for one in self.predictions]
+
+    def gains(self) -> FloatArray:
+        """Return the evidence for exchanging each two of the common samples, shape (n_common, n_common)."""
+        parts = zip(self.weights(), self.predictions, strict=True)
+        gains: FloatArray = sum(
+            (weight * one.gains() for weight, one in parts), np.zeros((self.samples.size,) * 2)
+        )
+        return gains
+
+    def rearranged(self, layer: str, places: IndexArray, sources: IndexArray) -> FloatArray:
+        """Return the evidence for rearrangements of one layer's rows, shape (count,).
+
+        Row ``sources[k]`` (among the common samples) comes to ``places[k]``.
+        """
+        total = np.zeros(len(places))
+        for weight, one in zip(self.weights(), self.predictions, strict=True):
+            ahead = (places, sources) if one.target == layer else (sources, places)
+            total += weight * one.rearranged(*ahead)
+        return total
+
+
+def match_layers(one: LayerState, other: LayerState, before: LayerMatch | None = None) -> LayerMatch:
+    """Match two layers by what each one's features tell of the other's factors.
+
+    Parameters
+    ----------
+    one, other : LayerState
+    before : LayerMatch, optional
+        Of the same layers in another arrangement: its counts of private components are used again.
+    """
+    names = one.layer.name, other.layer.name
+    samples, first, second = np.intersect1d(one.layer.samples, other.layer.samples, return_indices=True)
+    design = np.hstack([one.layer.design()[first], other.layer.design()[second]])
+    basis = Nuisance.of(design, samples.size).basis if samples.size else np.empty((0, 0))
+    private: dict[str, int] = {}
+    if samples.size - basis.shape[1] < FEWEST_DF:
+        reason = (
+            f"{samples.size} common samples and a design of {basis.shape[1]} dimensions leave fewer than "
+            f"{FEWEST_DF} to compare"
+        )
+        return LayerMatch(*names, (first, second), samples, (), private, reason)
+    features = {
+        state.layer.name: Features.of(state.values[rows], basis)
+        for state, rows in ((one, first), (other, second))
+    }
+    found = []
+    for target, rows, source in ((one, first, names[1]), (other, second, names[0])):
+        if target.factors.number == 0:
+            continue
+        scores = target.factors.scores[rows]
+        scores = scores - basis @ (basis.T @ scores)
+        known = before.private.get(source) if before else None
+        private[source] = count_private(features[source], scores) if known is None else known
+        predicted = predict_left_out(features[source], scores, private[source])
+        prediction = _matched(target.layer.name, source, scores, predicted, basis)
+        found += [prediction] if prediction else []
+    reason = "" if found else "no factor of one layer is told by the other beyond chance"
+    return LayerMatch(*names, (first, second), samples, tuple(found), private, reason)
+
+
+def _matched(
+    target: str, source: str, scores: FloatArray, predicted: FloatArray, basis: FloatArray
+) -> Prediction | None:
+    """Keep the factors whose prediction is better than chance (one-sided, Bonferroni)."""
+    n, c = basis.shape
+    lengths = np.linalg.norm(scores, axis=0) * np.linalg.norm(predicted, axis=0)
+    r = np.einsum("nk,nk->k", scores, predicted) / np.where(lengths > 0.0, lengths, 1.0)
+    r = np.clip(r, -1.0, 1.0 - 1e-12)
+    p = student.sf(r * np.sqrt((n - c - 1) / (1.0 - r**2)), n - c - 1)
+    most = max(1, (n - c) // DF_PER_FACTOR)
+    kept = [k for k in np.argsort(p, kind="stable")[:most] if p[k] * p.size <= MATCH_LEVEL]
+    if not kept:
+        return None
+    scores, predicted = scores[:, kept], predicted[:, kept]
+    hat = hat_matrix(np.hstack([basis, predicted]))
+    residual = scores - hat @ scores
+    was, now = (np.linalg.slogdet(part.T @ part)[1] for part in (scores, residual))
+    return Prediction(target, source, scores, predicted, hat, n - c - len(kept), float(0.5 * (was - now)))

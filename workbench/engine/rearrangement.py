@@ -1,0 +1,82 @@
+"""A rearrangement of some rows of one layer, and what it gains with the others and with the design."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from workbench.engine.exchange_gain import rearrangement_gains
+from workbench.engine.layer_match import LayerMatch
+from workbench.engine.swap_layers import LayerState
+
+IndexArray = NDArray[np.intp]
+States = Mapping[str, LayerState]
+
+
+@dataclass(frozen=True, eq=False)
+class Rearrangement:
+    """Rows of one layer put into other places.
+
+    Attributes
+    ----------
+    layer : str
+    places, sources : ndarray of int
+        Row ``sources[k]`` of the layer comes to place ``places[k]``; the same rows in another order.
+    tubes : bool
+        Whether the batch columns' part of the rows stays where it is: the tubes were exchanged before the runs.
+    """
+
+    layer: str
+    places: IndexArray
+    sources: IndexArray
+    tubes: bool
+
+    @property
+    def moves(self) -> frozenset[tuple[int, int]]:
+        """What comes where, whatever the order of writing."""
+        return frozenset(zip(self.places.tolist(), self.sources.tolist(), strict=True))
+
+    def back(self) -> Rearrangement:
+        """Return the rearrangement that undoes this one."""
+        return replace(self, places=self.sources, sources=self.places)
+
+    def done(self, states: States) -> LayerState:
+        """Return the layer with its rows rearranged."""
+        return states[self.layer].rearranged(self.places, self.sources, self.tubes)
+
+    def carried(self, layer: str, states: States) -> Rearrangement | None:
+        """Return what mends the same mismatch in another layer: the inverse there; None where samples lack."""
+        if layer == self.layer:
+            return self
+        names, there = states[self.layer].layer.samples, states[layer].layer.samples
+        row = {sample: place for place, sample in enumerate(there.tolist())}
+        wanted = [[row.get(names[k], -1) for k in rows] for rows in (self.sources, self.places)]
+        if min(min(rows) for rows in wanted) < 0:
+            return None
+        return Rearrangement(layer, np.array(wanted[0]), np.array(wanted[1]), self.tubes)
+
+
+def design_gain(one: Rearrangement, states: States) -> float:
+    """Return what a rearrangement gains in the layer's agreement with its own design."""
+    state = states[one.layer]
+    if not state.design_told:
+        return 0.0
+    known = state.batch_part(state.components) if one.tubes else None
+    moves = one.places[None], one.sources[None]
+    return float(rearrangement_gains(state.components, state.hat(), state.df, *moves, known)[0])
+
+
+def agreement_gain(one: Rearrangement, match: LayerMatch) -> float:
+    """Return what a rearrangement gains in the layer's agreement with another; 0 where it cannot tell."""
+    if match.untestable or one.layer not in (match.first, match.second):
+        return 0.0
+    rows = match.rows[0 if match.first == one.layer else 1]
+    inside = {row: place for place, row in enumerate(rows.tolist())}
+    if any(row not in inside for row in one.places.tolist()):
+        return 0.0
+    places = np.array([[inside[row] for row in one.places.tolist()]])
+    sources = np.array([[inside[row] for row in one.sources.tolist()]])
+    return float(match.rearranged(one.layer, places, sources)[0])

@@ -1,0 +1,81 @@
+"""Rows that match nobody: what one layer says of a sample is told by no other layer."""
+
+from __future__ import annotations
+
+from collections.abc import Collection, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.stats import beta
+
+from workbench.engine.layer_match import LayerMatch, Prediction
+
+FloatArray = NDArray[np.float64]
+
+STRANGER_LEVEL = 0.01
+
+
+@dataclass(frozen=True, eq=False)
+class Stranger:
+    """A sample whose rows in two layers do not belong together, without another that would fit.
+
+    Attributes
+    ----------
+    sample : int
+    layers : tuple of str
+        The layers whose row may be someone else's.
+    p : float
+        Chance of so large a mismatch anywhere in a study without one.
+    """
+
+    sample: int
+    layers: tuple[str, ...]
+    p: float
+
+
+def find_strangers(
+    matches: Sequence[LayerMatch], explained: Collection[int], level: float = STRANGER_LEVEL
+) -> tuple[Stranger, ...]:
+    """Return the samples that two layers disagree about more than chance allows, worst first.
+
+    The mismatch of a sample is the share of ``E_i' (E'E)^-1 E_i`` that its leverage leaves,
+    ``q / (1 - h_ii)``, which is Beta(m / 2, (df - m) / 2) under a normal law, for m factors; p by Bonferroni
+    over samples, directions and matches.
+
+    Parameters
+    ----------
+    matches : sequence of LayerMatch
+    explained : collection of int
+        Samples that are not looked at, as they were found exchanged.
+    level : float
+        Family-wise rate.
+    """
+    tested = [match for match in matches if match.predictions]
+    worst: dict[int, float] = {}
+    layers: dict[int, list[set[str]]] = {}
+    for match in tested:
+        p = np.min([_mismatch_p(one) for one in match.predictions], axis=0)
+        p = np.minimum(p * match.samples.size * len(match.predictions) * len(tested), 1.0)
+        for sample, chance in zip(match.samples.tolist(), p.tolist(), strict=True):
+            if chance <= level and sample not in explained:
+                worst[sample] = min(chance, worst.get(sample, 1.0))
+                layers.setdefault(sample, []).append({match.first, match.second})
+    found = [Stranger(sample, _to_blame(layers[sample]), p) for sample, p in worst.items()]
+    return tuple(sorted(found, key=lambda one: (one.p, one.sample)))
+
+
+def _mismatch_p(prediction: Prediction) -> FloatArray:
+    residual = prediction.scores - prediction.hat @ prediction.scores
+    inverse = np.linalg.pinv(residual.T @ residual, hermitian=True)
+    m = residual.shape[1]
+    room = np.maximum(1.0 - np.diag(prediction.hat), 1e-9)
+    share = np.clip(np.einsum("nm,ml,nl->n", residual, inverse, residual) / room, 0.0, 1.0)
+    # df counts what the hat matrix leaves: residuals of m factors fill m of these dimensions.
+    chance: FloatArray = beta.sf(share, 0.5 * m, 0.5 * max(prediction.df - m, 1))
+    return chance
+
+
+def _to_blame(pairs: list[set[str]]) -> tuple[str, ...]:
+    common = set.intersection(*pairs)
+    return tuple(sorted(common or set.union(*pairs)))

@@ -1,0 +1,174 @@
+"""Layers as the search for swapped samples sees them: design, factors, and what each row says of its design."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from workbench.engine.exchange_gain import exchange_gains
+from workbench.engine.linear import thin_basis
+from workbench.engine.nuisance import Nuisance, check_finite, standardise
+from workbench.engine.signal_components import signal_components
+from workbench.engine.sparse_factors import SparseFactors, refined, sparse_factors
+from workbench.errors import NumericsError
+
+FloatArray = NDArray[np.float64]
+IndexArray = NDArray[np.intp]
+
+COMPONENTS_PER_DF = 3
+REFIT_ROUNDS = 4
+
+
+@dataclass(frozen=True, eq=False)
+class SwapLayer:
+    """One layer's prepared values, with what is known about its samples.
+
+    Attributes
+    ----------
+    name : str
+    values : ndarray of shape (n_samples, n_features)
+        Prepared, without gaps.
+    samples : ndarray of int, shape (n_samples,)
+        Which sample of the study each row is; each once.
+    batch : ndarray of shape (n_samples, n_columns) or None
+        Columns of the assay (run days, run order) that may stay where they are when tubes are exchanged.
+    group : ndarray of shape (n_samples, n_columns) or None
+        Columns of the sample itself (group, age).
+    """
+
+    name: str
+    values: FloatArray
+    samples: IndexArray
+    batch: FloatArray | None = None
+    group: FloatArray | None = None
+
+    def design(self) -> FloatArray:
+        """Return all columns of the design, without intercept."""
+        empty = np.empty((self.values.shape[0], 0))
+        return np.hstack([empty, *(part for part in (self.batch, self.group) if part is not None)])
+
+
+@dataclass(frozen=True, eq=False)
+class LayerState:
+    """A layer in one arrangement of its rows.
+
+    Attributes
+    ----------
+    layer : SwapLayer
+    values : ndarray of shape (n_samples, n_features)
+        Centred, in units of the residual standard deviation, rows as now arranged.
+    nuisance : Nuisance
+        Of the layer's whole design.
+    factors : SparseFactors
+        Of the residuals.
+    components : ndarray of shape (n_samples, m)
+        Leading components of the values with the design left in.
+    order : ndarray of int, shape (n_samples,)
+        The delivered row that is now at each place.
+    """
+
+    layer: SwapLayer
+    values: FloatArray
+    nuisance: Nuisance
+    factors: SparseFactors
+    components: FloatArray
+    order: IndexArray
+
+    @property
+    def df(self) -> int:
+        """Samples less dimensions of the design."""
+        return self.nuisance.n_samples - self.nuisance.rank
+
+    @property
+    def residuals(self) -> FloatArray:
+        """Values without the design."""
+        return self.nuisance.residuals(self.values)
+
+    @property
+    def design_told(self) -> bool:
+        """Whether there is a design that rows could contradict."""
+        return self.nuisance.rank > 1 and self.components.shape[1] > 0
+
+    def hat(self) -> FloatArray:
+        """Return the projection onto the design."""
+        projection: FloatArray = self.nuisance.basis @ self.nuisance.basis.T
+        return projection
+
+    def design_gains(self, tubes: bool) -> FloatArray:
+        """Return what exchanging each two rows gains in agreement with the design, shape (n, n).
+
+        ``tubes``: the batch columns' part of the rows stays where it is.
+        """
+        if not self.design_told:
+            return np.zeros((self.nuisance.n_samples,) * 2)
+        known = self.batch_part(self.components) if tubes else None
+        return exchange_gains(self.components, self.hat(), self.df, known)
+
+    def batch_part(self, rows: FloatArray) -> FloatArray:
+        """Return what the batch columns explain of some rows, the whole design fitted."""
+        batch = self.layer.batch
+        if batch is None or batch.shape[1] == 0:
+            return np.zeros_like(rows)
+        columns = self.layer.design()
+        columns = columns - columns.mean(axis=0)
+        size = np.linalg.norm(columns, axis=0)
+        columns = columns / np.where(size > 0.0, size, 1.0)
+        coefficients = np.linalg.lstsq(columns, rows, rcond=None)[0]
+        part: FloatArray = columns[:, : batch.shape[1]] @ coefficients[: batch.shape[1]]
+        return part
+
+    def rearranged(self, places: IndexArray, sources: IndexArray, tubes: bool) -> LayerState:
+        """Return the layer with row ``sources[k]`` at place ``places[k]``, factors refitted from these."""
+        order = np.arange(self.order.size)
+        order[places] = sources
+        stays = self.batch_part(self.values) if tubes else 0.0
+        values = (self.values - stays)[order] + stays
+        moved = self.factors.scores[order]
+        factors = self.factors
+        if factors.number:
+            residuals = self.nuisance.residuals(values)
+            factors = refined(residuals, self.nuisance.rank, moved, factors.law, REFIT_ROUNDS)
+        return replace(
+            self,
+            values=values,
+            factors=factors,
+            components=_components(values, self.df),
+            order=self.order[order],
+        )
+
+    def settled(self) -> LayerState:
+        """Return the layer with its factors found anew."""
+        return replace(self, factors=sparse_factors(self.residuals, self.nuisance.rank))
+
+
+def layer_state(layer: SwapLayer) -> LayerState:
+    """Return a layer as it was delivered.
+
+    Raises
+    ------
+    NumericsError
+        When values are not finite, nothing varies, or the design leaves no degree of freedom.
+    """
+    values = check_finite(layer.values, f"layer '{layer.name}'")
+    n = values.shape[0]
+    if layer.samples.shape != (n,) or np.unique(layer.samples).size != n:
+        raise NumericsError(
+            f"layer '{layer.name}' has {n} rows for {np.unique(layer.samples).size} different samples; give "
+            "each row a sample of its own"
+        )
+    nuisance = Nuisance.of(layer.design(), n)
+    standard = standardise(values, nuisance)
+    centred = values[:, standard.kept] - values[:, standard.kept].mean(axis=0)
+    scaled = centred / standard.scale
+    factors = sparse_factors(standard.values, nuisance.rank)
+    return LayerState(layer, scaled, nuisance, factors, _components(scaled, n - nuisance.rank), np.arange(n))
+
+
+def _components(values: FloatArray, df: int) -> FloatArray:
+    """Return the leading components, as many as carry signal, no more than a third of ``df``."""
+    basis = thin_basis(values)
+    number = min(signal_components(basis).number, df // COMPONENTS_PER_DF)
+    components: FloatArray = basis.vectors[:, :number] * np.sqrt(values.shape[0])
+    return components

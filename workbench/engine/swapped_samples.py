@@ -1,0 +1,226 @@
+"""Samples whose tubes were exchanged in one layer: found by what layers tell of each other and of the design."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from itertools import combinations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from workbench.engine.layer_match import LayerMatch, match_layers
+from workbench.engine.rearrangement import Rearrangement, agreement_gain, design_gain
+from workbench.engine.strangers import Stranger, find_strangers
+from workbench.engine.swap_candidates import (
+    Candidate,
+    LayerGains,
+    cycle_candidates,
+    layer_gains,
+    pair_candidates,
+)
+from workbench.engine.swap_cycles import Accepted, Swap, swap_cycles
+from workbench.engine.swap_evidence import swap_evidence
+from workbench.engine.swap_layers import LayerState, SwapLayer, layer_state
+from workbench.errors import NumericsError
+
+FloatArray = NDArray[np.float64]
+IndexArray = NDArray[np.intp]
+States = dict[str, LayerState]
+Matches = dict[frozenset[str], LayerMatch]
+
+LEVEL = 0.05
+SLACK = 5.0
+MOST_EXCHANGES = 10
+TOLD = math.log(20.0)
+
+
+@dataclass(frozen=True, eq=False)
+class SwapSearch:
+    """What the search found.
+
+    Attributes
+    ----------
+    swaps : tuple of Swap
+        Strongest evidence first.
+    strangers : tuple of Stranger
+        Rows that match nobody.
+    matches : tuple of LayerMatch
+        How each two layers agree, the swaps undone; those that cannot tell say why.
+    level : float
+        Family-wise rate for which the bounds are set.
+    pair_bound, cycle_bound : float
+        ``log(arrangements compared / level)`` for exchanged pairs, and for cycles of three.
+    """
+
+    swaps: tuple[Swap, ...]
+    strangers: tuple[Stranger, ...]
+    matches: tuple[LayerMatch, ...]
+    level: float
+    pair_bound: float
+    cycle_bound: float
+
+    @property
+    def testable(self) -> bool:
+        """Whether any two layers share what is needed to see a swap."""
+        return any(not match.untestable for match in self.matches)
+
+
+def find_swapped_samples(layers: Sequence[SwapLayer], *, level: float = LEVEL) -> SwapSearch:
+    """Search for samples that were exchanged in one of several layers.
+
+    Every layer is reduced to factors of its own, found without a look at the others. For each two layers the
+    factors of one are predicted from the features of the other, every sample by a fit that has not seen it;
+    for each two samples the log likelihood ratio of "exchanged" to "as delivered" is taken
+    (:func:`~workbench.engine.exchange_gain.exchange_gains`), and added to it the same ratio for the layer's
+    components given its design, which catches exchanges across run days and groups and tells the layer.
+    The best few are exchanged, all is refitted, and the evidence is the mean of the gain before and the loss
+    after. It is accepted above ``log(arrangements compared / level)``: in a clean study the ratios have mean 1
+    at most, so that by Markov's inequality no more than ``level`` of such studies pass (under a normal law).
+    The search goes on from the accepted arrangement until none passes. Cycles of three have a bound of their
+    own.
+
+    Parameters
+    ----------
+    layers : sequence of SwapLayer
+        At least two, of different names.
+    level : float
+        Between 0 and 1.
+
+    Raises
+    ------
+    NumericsError
+        For fewer than two layers, equal names, or values that cannot be used.
+
+    References
+    ----------
+    Wilks 1932, Biometrika 24:471 (ratio of generalised variances as a likelihood ratio).
+
+    Examples
+    --------
+    >>> rng = np.random.default_rng(5)
+    >>> shared = rng.normal(size=(40, 3))
+    >>> x, y = (shared @ rng.normal(size=(3, p)) + rng.normal(size=(40, p)) for p in (300, 100))
+    >>> y[[4, 9]] = y[[9, 4]]
+    >>> everyone = np.arange(40)
+    >>> found = find_swapped_samples([SwapLayer("x", x, everyone), SwapLayer("y", y, everyone)])
+    >>> [(swap.samples, sorted(swap.layers)) for swap in found.swaps]
+    [((4, 9), ['x', 'y'])]
+    """
+    states = _check_layers(layers, level)
+    matches = {frozenset((a, b)): match_layers(states[a], states[b]) for a, b in combinations(states, 2)}
+    gains = layer_gains(states, matches)
+    bounds = _bounds(gains, level)
+    accepted: list[Accepted] = []
+    while len(accepted) < MOST_EXCHANGES:
+        one = _best_step(states, matches, gains, bounds, accepted)
+        if one is None:
+            break
+        accepted.append(one)
+        states[one.move.layer] = one.move.done(states).settled()
+        matches = _rematched(states, matches, one.move.layer)
+        gains = layer_gains(states, matches)
+    swaps = swap_cycles(accepted, {name: state.layer.samples for name, state in states.items()})
+    explained = {sample for swap in swaps for sample in swap.samples}
+    strangers = find_strangers(list(matches.values()), explained)
+    return SwapSearch(swaps, strangers, tuple(matches.values()), level, *bounds)
+
+
+def _check_layers(layers: Sequence[SwapLayer], level: float) -> States:
+    """Return the layers as delivered, by name."""
+    names = [layer.name for layer in layers]
+    if len(names) < 2 or len(set(names)) < len(names):
+        raise NumericsError(
+            f"layers {', '.join(map(repr, names)) or 'none'}; give at least two, each under a name of its own"
+        )
+    if not 0.0 < level < 1.0:
+        raise NumericsError(f"level {level}; allowed: between 0 and 1")
+    return {layer.name: layer_state(layer) for layer in layers}
+
+
+def _bounds(gains: list[LayerGains], level: float) -> tuple[float, float]:
+    """Return the bounds of pairs and of cycles of three: log of the arrangements compared over the level."""
+    pairs = sum(int(one.counted.sum()) for one in gains)
+    cycles = sum(2 * math.comb(len(one.counted), 3) for one in gains)
+    return math.log(max(pairs, 1) / level), math.log(max(cycles, 1) / level)
+
+
+def _best_step(
+    states: States,
+    matches: Matches,
+    gains: list[LayerGains],
+    bounds: tuple[float, float],
+    earlier: Sequence[Accepted],
+) -> Accepted | None:
+    """Return the rearrangement that passes its bound by most; None when none does."""
+    pairs = pair_candidates(gains, bounds[0] - SLACK)
+    cycles = cycle_candidates(pairs, states, matches, bounds[1] - SLACK)
+    best: tuple[Candidate, float, float] | None = None
+    for candidate in pairs + cycles:
+        bound = bounds[candidate.move.places.size - 2]
+        gain = 0.5 * (candidate.gain + _loss_after(candidate, states, matches))
+        if gain - bound >= (best[1] - best[2] if best else 0.0):
+            best = candidate, gain, bound
+    if best is None:
+        return None
+    candidate, gain, bound = best
+    layers = _likely_layers(candidate.move, states, matches)
+    move = _in_same_layer(candidate.move, layers, states, earlier)
+    samples = states[move.layer].layer.samples
+    return Accepted(
+        move,
+        tuple(samples[move.places].tolist()),
+        tuple(samples[move.sources].tolist()),
+        layers,
+        gain,
+        bound,
+        swap_evidence(candidate, states, matches),
+    )
+
+
+def _loss_after(candidate: Candidate, states: States, matches: Matches) -> float:
+    """Return what taking the rearrangement back would lose, all refitted with it done."""
+    move = candidate.move
+    after = {**states, move.layer: move.done(states)}
+    lost = -design_gain(move.back(), after)
+    if candidate.partner:
+        match = _again(matches[frozenset((move.layer, candidate.partner))], after)
+        lost -= agreement_gain(move.back(), match) + candidate.penalty
+    return lost
+
+
+def _again(match: LayerMatch, states: States) -> LayerMatch:
+    return match_layers(states[match.first], states[match.second], match)
+
+
+def _rematched(states: States, matches: Matches, layer: str) -> Matches:
+    """Return the matches, those of a rearranged layer made anew."""
+    return {key: _again(match, states) if layer in key else match for key, match in matches.items()}
+
+
+def _likely_layers(move: Rearrangement, states: States, matches: Matches) -> tuple[str, ...]:
+    """Return the layers in which it may have happened, likeliest first: evidence within a factor of 20."""
+    support = {}
+    for name in states:
+        there = move.carried(name, states)
+        if there is None:
+            continue
+        own = max(design_gain(replace(there, tubes=tubes), states) for tubes in (False, True))
+        support[name] = own + sum(agreement_gain(there, match) for match in matches.values())
+    most = max(support.values())
+    near = [name for name in support if support[name] > most - TOLD]
+    return tuple(sorted(near, key=lambda name: -support[name]))
+
+
+def _in_same_layer(
+    move: Rearrangement, layers: tuple[str, ...], states: States, earlier: Sequence[Accepted]
+) -> Rearrangement:
+    """Return an exchange that may be in several layers in the one where its samples were exchanged before."""
+    samples = set(states[move.layer].layer.samples[move.places].tolist())
+    for one in earlier:
+        if samples & set(one.places) and one.move.layer in layers:
+            return move.carried(one.move.layer, states) or move
+    if move.layer in layers:
+        return move
+    return move.carried(layers[0], states) or move
