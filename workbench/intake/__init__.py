@@ -4,6 +4,7 @@ from .annotations import read_annotations
 from .block import BlockBuild, build_block
 from .combine import block_design_columns, with_run_columns
 from .design import Design, Groups, design_columns, group_codes, missing_samples
+from .difference import BlockDifference, SheetDifference, difference, sheet_difference
 from .measured import offered_names
 from .names import NameMatch, OfferedNamesError, match_names, names_table
 from .names_file import read_names
@@ -15,6 +16,7 @@ from .table import DeliveredTable, delivered_table
 
 __all__ = [
     "BlockBuild",
+    "BlockDifference",
     "DeliveredTable",
     "Design",
     "Groups",
@@ -23,12 +25,14 @@ __all__ = [
     "RawTable",
     "RunSheet",
     "SampleSheet",
+    "SheetDifference",
     "Suggestions",
     "block_design_columns",
     "build_block",
     "column_kind",
     "delivered_table",
     "design_columns",
+    "difference",
     "group_codes",
     "match_names",
     "missing_samples",
@@ -40,6 +44,7 @@ __all__ = [
     "read_run_sheet",
     "read_sample_sheet",
     "run_columns",
+    "sheet_difference",
     "suggest_columns",
     "with_run_columns",
 ]
