@@ -32,6 +32,7 @@ layer = "transcripts"
 values = "counts"
 samples_in = "columns"
 sheet = "Table S2"
+decimal = ","
 names = "source/transcripts_names.tsv"
 runs = "source/transcripts_runs.tsv"
 annotations = "source/genes.tsv"
@@ -156,7 +157,7 @@ FAULTS = [
         BLOCK + "swap = [{ samples = ['a', 'b'], reason = 'r', why = 's' }]",
         "blocks.a.swap, item 1.why: unknown key; allowed: reason, samples",
     ),
-    (BLOCK + "decimal = '.'", "blocks.a.decimal: unknown key"),
+    (BLOCK + "decimal = ';'", "blocks.a.decimal: ';' is not allowed; allowed: '.', ','"),
     (BLOCK + "[blocks.a.prepare]\ndrfit = 'none'", "blocks.a.prepare.drfit: unknown key"),
     (BLOCK + "sample_in = 'rows'", "did you mean 'samples_in'?"),
     (BLOCK + "samples_in = 'row'", "'row' is not allowed; allowed: 'rows', 'columns'; did you mean 'rows'?"),

@@ -17,7 +17,7 @@ from .faults import counted, listed
 from .names import RUNS, SAMPLES, NameMatch, OfferedNamesError, Words, match_names
 from .names_file import read_names
 from .runs import read_run_sheet, run_names
-from .swaps import owners, swap_lines
+from .swaps import owners
 from .table import DeliveredTable, delivered_table
 
 
@@ -36,7 +36,7 @@ class Measured:
     run_values
         ndarray (runs, features); None without a run sheet.
     lines
-        What was understood beside the table itself, a sentence each.
+        What was understood of the run sheet, a sentence each.
     """
 
     values: pd.DataFrame
@@ -68,7 +68,7 @@ def measured(settings: BlockSettings, root: Path, sample_ids: Sequence[str]) -> 
         table = _table(settings, root, sample_ids, names.samples, SAMPLES)
         rows = table.values.rename(index=chain)
         values = rows.loc[[name for name in sample_ids if name in rows.index]]
-        return Measured(values, table, None, None, tuple(swap_lines(settings.swap)))
+        return Measured(values, table, None, None, ())
     path = root / settings.runs
     names = _accepted(settings, root, sample_ids, path)
     sheet = read_run_sheet(path, sample_ids, names.samples)
@@ -84,7 +84,7 @@ def measured(settings: BlockSettings, root: Path, sample_ids: Sequence[str]) -> 
         )
     total = settings.values == "counts"
     values = combined_runs(table.values.loc[own.index], own, samples, total=total)
-    lines = (*sheet.notes, *_several_runs(path.name, own, total), *swap_lines(settings.swap))
+    lines = (*sheet.notes, *_several_runs(path.name, own, total))
     return Measured(values, table, runs, table.values.to_numpy(dtype=np.float64), lines)
 
 
@@ -126,6 +126,7 @@ def _table(
         samples_in=settings.samples_in,
         sheet=settings.sheet,
         array=settings.array,
+        decimal=settings.decimal,
         names=names,
         words=words,
     )

@@ -218,6 +218,8 @@ class BlockSettings(Section):
         Where the samples stand; None: found by their names.
     sheet, array : str or None
         Sheet of an .xlsx file; ``X`` or a layer of an .h5ad file.
+    decimal : {".", ","} or None
+        Decimal mark of numbers that are text; None: found where all numbers agree on one.
     names : str or None
         Table of delivered names and the samples (or runs) that they stand for, relative to the project.
     runs : str or None
@@ -240,6 +242,7 @@ class BlockSettings(Section):
     samples_in: Literal["rows", "columns"] | None = None
     sheet: Text | None = None
     array: Text | None = None
+    decimal: Literal[".", ","] | None = None
     names: Text | None = None
     runs: Text | None = None
     annotations: Text | None = None
