@@ -6,6 +6,7 @@ from dataclasses import dataclass, replace
 from typing import ClassVar
 
 import numpy as np
+from numpy.typing import NDArray
 
 from workbench.prepare.censoring import Censoring, find_censoring, no_censoring
 from workbench.prepare.draws import uniform_table
@@ -77,27 +78,27 @@ class FittedGaps:
         gaps = np.isnan(table.values)
         if not gaps.any():
             return table, StepAccount(self.settings.step, "no gaps", {"gaps": 0, "values": gaps.size})
-        drawn = self._draws(table, gaps)
-        filled = self.donors.estimates(table.values, gaps & np.isnan(drawn), table.samples)
-        filled = np.where(np.isnan(drawn), filled, drawn)
-        account = self._account(gaps, int((~np.isnan(drawn)).sum()), table)
+        columns = np.flatnonzero(self.censoring.censored)
+        drawn = self._draws(table, gaps, columns)
+        low, rest = ~np.isnan(drawn), gaps.copy()
+        rest[:, columns] &= ~low
+        filled = self.donors.estimates(table.values, rest, table.samples)
+        filled[:, columns] = np.where(low, drawn, filled[:, columns])
+        account = self._account(gaps, int(low.sum()), table)
         return replace(table, values=filled, imputed=table.imputed | gaps), account
 
-    def _draws(self, table: StepTable, gaps: Mask) -> Matrix:
-        """Return draws for the gaps that are left-censored, NaN for all other cells.
+    def _draws(self, table: StepTable, gaps: Mask, columns: NDArray[np.intp]) -> Matrix:
+        """Return draws for the left-censored gaps of these columns, NaN for all their other cells.
 
         A gap of a censored feature is left-censored with the probability that its sample's limit gives it.
         """
-        draws = np.full(gaps.shape, np.nan)
-        columns = np.flatnonzero(self.censoring.censored)
         if not columns.size:
-            return draws
+            return np.empty((len(table.samples), 0))
         names = [table.features[column] for column in columns]
         lots = uniform_table(self.seed, table.samples, names, "censored or random")
         low = gaps[:, columns] & (lots < self.tails.censored_chances(table.scale))
         quantiles = uniform_table(self.seed, table.samples, names, "low tail")
-        draws[:, columns] = np.where(low, self.tails.draw(quantiles, table.scale), np.nan)
-        return draws
+        return np.where(low, self.tails.draw(quantiles, table.scale), np.nan)
 
     def _account(self, gaps: Mask, drawn: int, table: StepTable) -> StepAccount:
         total = int(gaps.sum())

@@ -18,6 +18,7 @@ from workbench.prepare.tables import Mask, Matrix, some
 FEWEST_NEIGHBOURS = 3
 MOST_NEIGHBOURS = 10
 TIE_DECIMALS = 9
+FEATURES_AT_A_TIME = 512
 
 
 def neighbour_count(n: int) -> int:
@@ -68,14 +69,13 @@ class Donors:
         rows = np.flatnonzero(wanted.any(axis=1))
         if not rows.size:
             return filled
-        by_name = np.argsort(np.array(self.samples, dtype=object), kind="stable")
-        donors = self.values[by_name]
-        distances = mean_squared_differences(values[rows], donors)
+        by_name = np.argsort(np.argsort(np.array(self.samples, dtype=object), kind="stable"))
+        distances = mean_squared_differences(values if len(rows) == len(values) else values[rows], self.values)
         self._check_rows(distances, [samples[row] for row in rows])
         for row, distance in zip(rows, distances, strict=True):
             columns = np.flatnonzero(wanted[row])
-            nearest = np.argsort(distance, kind="stable")
-            filled[row, columns] = _nearest_means(donors, nearest, columns, self.k)
+            nearest = np.lexsort((by_name, distance))
+            filled[row, columns] = _nearest_means(self.values, nearest, columns, self.k)
         return filled
 
     def _check_rows(self, distances: Matrix, names: list[str]) -> None:
@@ -94,6 +94,17 @@ def mean_squared_differences(values: Matrix, donors: Matrix) -> Matrix:
     Rounded to 9 decimals, so that equal distances are ties on every machine; infinite where two samples
     share no feature.
     """
+    squares, shared = np.zeros((len(values), len(donors))), np.zeros((len(values), len(donors)))
+    for start in range(0, donors.shape[1], FEATURES_AT_A_TIME):
+        part = slice(start, start + FEATURES_AT_A_TIME)
+        more = _squared_differences(values[:, part], donors[:, part])
+        squares, shared = squares + more[0], shared + more[1]
+    means: Matrix = np.divide(squares, shared, where=shared > 0, out=np.full(shared.shape, np.inf))
+    return np.maximum(np.round(means, TIE_DECIMALS), 0.0)
+
+
+def _squared_differences(values: Matrix, donors: Matrix) -> tuple[Matrix, Matrix]:
+    """Return the summed squared standardised differences over some features, and how many both have."""
     seen = ~np.isnan(donors)
     count = np.maximum(seen.sum(axis=0), 1)
     centre = np.where(seen, donors, 0.0).sum(axis=0) / count
@@ -103,8 +114,7 @@ def mean_squared_differences(values: Matrix, donors: Matrix) -> Matrix:
     right, right_seen = _standardised(donors, centre, scale)
     shared = left_seen @ right_seen.T
     squares = left**2 @ right_seen.T + left_seen @ (right**2).T - 2.0 * (left @ right.T)
-    means: Matrix = np.divide(squares, shared, where=shared > 0, out=np.full(shared.shape, np.inf))
-    return np.maximum(np.round(means, TIE_DECIMALS), 0.0)
+    return squares, shared
 
 
 def _standardised(values: Matrix, centre: Matrix, scale: Matrix) -> tuple[Matrix, Matrix]:
