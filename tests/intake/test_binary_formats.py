@@ -2,6 +2,7 @@
 
 import datetime
 import sys
+import time
 
 import anndata as ad
 import h5py
@@ -32,10 +33,17 @@ def h5ad(tmp_path):
     return path
 
 
-def test_the_array_is_x_unless_a_layer_is_named(h5ad):
-    assert read(h5ad).values["g1"].tolist() == [1.5, 3, 5]
+def test_the_array_must_be_named_when_there_are_several(h5ad, tmp_path):
+    assert read(h5ad, array="X").values["g1"].tolist() == [1.5, 3, 5]
     table = read(h5ad, array="raw")
     assert table.values["g1"].tolist() == [1, 3, -5]
+    assert table.array == "raw"
+    with pytest.raises(InputError, match=r"the file has 2 arrays: 'X', 'raw'; name the one"):
+        read(h5ad)
+    adata = ad.read_h5ad(h5ad)
+    del adata.layers["raw"]
+    adata.write_h5ad(tmp_path / "one.h5ad")
+    assert read(tmp_path / "one.h5ad").array == "X"
     assert "t.h5ad: read from array 'raw'" in table.notes
     with pytest.raises(InputError, match=r"no array 'counts'; the file has 'X', 'raw'; name one of them"):
         read(h5ad, array="counts")
@@ -45,7 +53,7 @@ def test_faulty_numbers_are_placed_by_row_column_feature_and_sample(h5ad):
     with pytest.raises(InputError, match=r"row 3, column 1 \(feature 'g1', sample 'S3'\): '-5'"):
         read(h5ad, array="raw", values="counts")
     with pytest.raises(InputError, match=r"not whole.*row 1, column 1 \(feature 'g1', sample 'S1'\): '1.5'"):
-        read(h5ad, values="counts")
+        read(h5ad, array="X", values="counts")
 
 
 def test_a_file_that_declares_too_much_is_refused_before_it_is_read(h5ad):
@@ -59,7 +67,7 @@ def test_a_file_that_declares_too_much_is_refused_before_it_is_read(h5ad):
             )
     assert h5ad.stat().st_size < 100_000
     with pytest.raises(InputError, match=r"declares 40,000,000,000 cells, more than 8 GB"):
-        read(h5ad)
+        read(h5ad, array="X")
 
 
 @pytest.mark.parametrize("link", [h5py.SoftLink("/layers/raw"), h5py.ExternalLink("other.h5", "/x")])
@@ -68,7 +76,7 @@ def test_links_are_refused(h5ad, link):
         del file["X"]
         file["X"] = link
     with pytest.raises(InputError, match=r"'X' in '/' is a link to another place"):
-        read(h5ad)
+        read(h5ad, array="X")
 
 
 def test_data_kept_in_another_file_are_refused(h5ad, tmp_path):
@@ -76,7 +84,7 @@ def test_data_kept_in_another_file_are_refused(h5ad, tmp_path):
         del file["X"]
         file.create_dataset("X", shape=(3, 2), dtype="f8", external=[(tmp_path / "x.bin", 0, 48)])
     with pytest.raises(InputError, match=r"'X' in '/' is a link to another place"):
-        read(h5ad)
+        read(h5ad, array="X")
 
 
 def test_hdf5_files_of_another_kind_are_told(tmp_path, h5ad):
@@ -89,7 +97,47 @@ def test_hdf5_files_of_another_kind_are_told(tmp_path, h5ad):
         del file["X"]
         file["X"] = np.eye(5)
     with pytest.raises(InputError, match=r"'/X' is float64 of shape \(5, 5\); .* shape \(3, 2\)"):
-        read(h5ad)
+        read(h5ad, array="X")
+
+
+def _unstored(file):
+    file.create_dataset("X", shape=(30_000, 20_000), dtype="f8", chunks=(1000, 1000), compression="gzip")
+    for part, n in (("obs", 30_000), ("var", 20_000)):
+        del file[f"{part}/_index"]
+        file[f"{part}/_index"] = np.array([f"{part}{k}" for k in range(n)], dtype=h5py.string_dtype())
+
+
+HOSTILE = {
+    "a link to another file": (
+        lambda f: f.__setitem__("X", h5py.ExternalLink("/etc/passwd", "/")),
+        "is a link",
+    ),
+    "a link to itself": (lambda f: f.__setitem__("X", h5py.SoftLink("/X")), "is a link"),
+    "numbers that are not there": (_unstored, "declares 600,000,000 cells, and the file stores 0 bytes"),
+    "references": (
+        lambda f: f.create_dataset("X", data=np.full((3, 2), f.ref), dtype=h5py.ref_dtype),
+        "is object of shape",
+    ),
+    "texts": (lambda f: f.create_dataset("X", data=[["a", "b"]] * 3), "is object of shape"),
+    "records": (lambda f: f.create_dataset("X", shape=(3, 2), dtype=[("a", "f8")]), "of shape"),
+    "a group of an unknown kind": (lambda f: f.create_group("X"), "is stored as 'unknown'"),
+    "other links to the ids": (
+        lambda f: (f.move("obs", "other"), f.__setitem__("obs", h5py.SoftLink("/other"))),
+        "'obs' in '/' is a link",
+    ),
+}
+
+
+@pytest.mark.parametrize("kind", HOSTILE)
+def test_a_hostile_file_is_refused_within_a_second(h5ad, kind):
+    change, told = HOSTILE[kind]
+    with h5py.File(h5ad, "r+") as file:
+        del file["X"]
+        change(file)
+    start = time.perf_counter()
+    with pytest.raises(InputError, match=told):
+        read(h5ad, array="X")
+    assert time.perf_counter() - start < 1
 
 
 @pytest.mark.parametrize("share", [0.2, 0.5, 0.95])
@@ -97,7 +145,7 @@ def test_an_hdf5_file_cut_short_is_told_as_damaged(h5ad, share):
     data = h5ad.read_bytes()
     h5ad.write_bytes(data[: int(share * len(data))])
     with pytest.raises(InputError, match=r"t\.h5ad: the HDF5 file is damaged or cut short"):
-        read(h5ad)
+        read(h5ad, array="X")
 
 
 def test_sparse_arrays_with_damaged_indices_are_told(tmp_path):

@@ -137,7 +137,7 @@ def test_annotations_of_a_mixed_block_may_not_take_the_names_of_its_own_columns(
     write(tmp_path, "items.tsv", "item\tkind\nsex\tquestionnaire\n")
     text = tabbed("id sex age", "S1 male 61", "S2 female 52")
     with pytest.raises(
-        InputError, match=r"items\.tsv: column 'kind' has a name that a mixed block uses itself; rename"
+        InputError, match=r"items\.tsv: column 'kind' has a name that blocks use themselves; rename"
     ):
         built(tmp_path, text, values="mixed", annotations="items.tsv")
 

@@ -5,6 +5,15 @@ from .block import BlockBuild, build_block
 from .combine import block_design_columns, with_run_columns
 from .design import Design, Groups, design_columns, group_codes, missing_samples
 from .difference import BlockDifference, SheetDifference, difference, sheet_difference
+from .identifiers import (
+    IdentifierColumn,
+    IdentifierFault,
+    date_like,
+    identifier_columns,
+    identifier_kind,
+    read_identifiers,
+    split_identifiers,
+)
 from .measured import offered_names
 from .names import NameMatch, OfferedNamesError, match_names, names_table
 from .names_file import read_names
@@ -20,6 +29,8 @@ __all__ = [
     "DeliveredTable",
     "Design",
     "Groups",
+    "IdentifierColumn",
+    "IdentifierFault",
     "NameMatch",
     "OfferedNamesError",
     "RawTable",
@@ -30,21 +41,26 @@ __all__ = [
     "block_design_columns",
     "build_block",
     "column_kind",
+    "date_like",
     "delivered_table",
     "design_columns",
     "difference",
     "group_codes",
+    "identifier_columns",
+    "identifier_kind",
     "match_names",
     "missing_samples",
     "names_table",
     "offered_names",
     "read_annotations",
     "read_delivered",
+    "read_identifiers",
     "read_names",
     "read_run_sheet",
     "read_sample_sheet",
     "run_columns",
     "sheet_difference",
+    "split_identifiers",
     "suggest_columns",
     "with_run_columns",
 ]

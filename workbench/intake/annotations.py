@@ -4,15 +4,22 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import pandas as pd
 
 from workbench.errors import InputError
 
-from .faults import counted, listed
+from .faults import counted, listed, shown
 from .ids import check_no_dates, check_present, check_unique, refuse_broken
 from .raw import HEADER, RawTable, cell_text
 from .readers import read_delivered
+
+if TYPE_CHECKING:
+    from .table import DeliveredTable
+
+OWN_COLUMNS = ("kind", "levels", "under_limit")
+"""Columns of ``var`` that a block makes itself."""
 
 _THREE = 3
 
@@ -47,6 +54,27 @@ def read_annotations(path: str | Path, features: Sequence[str]) -> pd.DataFrame:
         columns=pd.Index(list(raw.columns), dtype="object"),
         dtype=object,
     )
+
+
+def add_delivered(var: pd.DataFrame, table: DeliveredTable) -> list[str]:
+    """Add to the annotations in ``var`` what stood in the delivered table itself; return what is to be told.
+
+    Where both have a column of one name, that of the file of annotations stays. A column with a name that
+    blocks use themselves gets a ``_`` behind it. ``under_limit`` counts cells such as ``<LOD``, where there are
+    any.
+    """
+    name, lines = table.path.name, []
+    for column, cells in table.annotations.items():
+        own = f"{column}_" if column in OWN_COLUMNS else str(column)
+        if own in var.columns:
+            lines.append(
+                f"{name}: column {shown(column)} is left out, since the file of annotations has one too"
+            )
+        else:
+            var[own] = cells.to_numpy()
+    if table.under_limit:
+        var["under_limit"] = [table.under_limit.get(feature, 0) for feature in var.index]
+    return lines
 
 
 def annotated_features(path: str | Path) -> tuple[str, ...]:

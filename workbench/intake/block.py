@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import hashlib
 import json
-from collections.abc import Sequence
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -15,10 +15,11 @@ import pandas as pd
 from workbench.errors import InputError
 from workbench.settings.schema import BlockSettings
 
-from .annotations import annotated_features, read_annotations
+from .annotations import OWN_COLUMNS, add_delivered, annotated_features, read_annotations
 from .combine import mixed_columns
 from .faults import counted, listed, shown
 from .measured import Measured, measured
+from .swaps import swap_lines
 from .table import DeliveredTable
 
 if TYPE_CHECKING:
@@ -41,10 +42,18 @@ class BlockBuild:
         their values (float64, runs x features).
     lines
         What a person should read: orientation, samples matched and left out, what was accepted.
+    decisions
+        What was understood of the delivered table, in at most five lines; one more for its run sheet, and one
+        for its swaps.
+    chosen
+        Entries for ``project.toml`` that a rebuild needs to read the table the same, and the settings lack:
+        ``samples_in``, ``sheet``, ``array``, ``decimal``.
     """
 
     adata: anndata.AnnData
     lines: tuple[str, ...]
+    decisions: tuple[str, ...] = ()
+    chosen: Mapping[str, str] = field(default_factory=dict)
 
 
 def build_block(settings: BlockSettings, name: str, root: str | Path, sheet: pd.DataFrame) -> BlockBuild:
@@ -75,16 +84,33 @@ def build_block(settings: BlockSettings, name: str, root: str | Path, sheet: pd.
     table = found.table
     features = tuple(found.values.columns)
     var, lines = _annotations(settings, Path(root), features)
+    _check_free(Path(root), settings, var)
+    lines += add_delivered(var, table)
     if settings.values == "mixed":
-        _check_free(Path(root), settings, var)
         var["kind"] = ["text" if feature in table.levels else "number" for feature in features]
         var["levels"] = [_levels(table, feature) for feature in features]
     adata = anndata.AnnData(
         X=found.values.to_numpy(dtype=np.float64), obs=sheet.loc[list(found.values.index)].copy(), var=var
     )
     adata.uns["workbench"] = _account(settings, name, Path(root), found)
-    lines += _add_runs(adata, found, settings)
-    return BlockBuild(adata, (_summary(name, found, len(sheet)), *table.notes, *found.lines, *lines))
+    runs = [*found.lines, *_add_runs(adata, found, settings)]
+    swaps = swap_lines(settings.swap)
+    parts = (f"{part}: {'; '.join(told)}" for part, told in (("runs", runs), ("swap", swaps)) if told)
+    return BlockBuild(
+        adata,
+        (_summary(name, found, len(sheet)), *table.notes, *runs, *swaps, *lines),
+        (*table.decisions, *parts),
+        _chosen(settings, table),
+    )
+
+
+def _chosen(settings: BlockSettings, table: DeliveredTable) -> dict[str, str]:
+    found = {entry: getattr(table, entry) for entry in ("samples_in", "sheet", "array", "decimal")}
+    return {
+        entry: value
+        for entry, value in found.items()
+        if value is not None and getattr(settings, entry, None) is None
+    }
 
 
 def _add_runs(adata: anndata.AnnData, found: Measured, settings: BlockSettings) -> list[str]:
@@ -92,12 +118,12 @@ def _add_runs(adata: anndata.AnnData, found: Measured, settings: BlockSettings) 
     if found.runs is None or settings.runs is None:
         return []
     adata.uns["run_sheet"], adata.uns["run_values"] = found.runs, found.run_values
-    file = Path(settings.runs).name
     both = [name for name in settings.adjust if name in found.runs and name in adata.obs]
     told = [
         f"column {shown(name)} stands in the sample sheet too; for this block it is the run sheet's"
         for name in both
     ]
+    file = Path(settings.runs).name
     return [f"{file}: {line}" for line in (*mixed_columns(adata), *told)]
 
 
@@ -138,11 +164,11 @@ def _annotations(
 
 
 def _check_free(root: Path, settings: BlockSettings, var: pd.DataFrame) -> None:
-    taken = [column for column in ("kind", "levels") if column in var.columns]
+    taken = [column for column in OWN_COLUMNS if column in var.columns]
     if taken and settings.annotations is not None:
         raise InputError(
-            f"{root / settings.annotations}: column {listed(taken)} has a name that a mixed block uses "
-            "itself; rename it in the annotations"
+            f"{root / settings.annotations}: column {listed(taken)} has a name that blocks use themselves; "
+            "rename it in the annotations"
         )
 
 

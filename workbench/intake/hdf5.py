@@ -15,10 +15,12 @@ from .faults import listed
 from .raw import ArrayBody, RawTable
 
 LARGEST_ARRAY = 8 * 2**30
+_LARGE = 2**28
+_MOST_PACKED = 1100  # deflate, the packing that HDF5 files use, reaches 1,032 to 1
 
 
 def read_h5ad(path: Path, *, array: str | None = None) -> RawTable:
-    """Return one numeric array of an .h5ad file (``X``, or the layer named ``array``) as a `RawTable`.
+    """Return one numeric array of an .h5ad file (``X`` or a layer; to be named when there are several).
 
     Rows are the file's observations, columns its variables; which of them are samples is found as for every
     table.
@@ -31,7 +33,7 @@ def read_h5ad(path: Path, *, array: str | None = None) -> RawTable:
     """
     try:
         with h5py.File(path, "r") as file:
-            return _Reader(path, file).table(array or "X")
+            return _Reader(path, file).table(array)
     except (
         OSError,
         KeyError,
@@ -55,7 +57,8 @@ class _Reader:
         self.path = path
         self.file = file
 
-    def table(self, array: str) -> RawTable:
+    def table(self, array: str | None) -> RawTable:
+        array = array or self._only_array()
         rows, columns = (self._ids(self._child(self.file, part)) for part in ("obs", "var"))
         values = self._values(self._array(array), (len(rows), len(columns)))
         return RawTable(
@@ -66,6 +69,7 @@ class _Reader:
             rows=rows,
             body=ArrayBody(values),
             notes=(f"{self.path.name}: read from array '{array}'",),
+            array=array,
         )
 
     def _refuse(self, what: str, way_out: str) -> InputError:
@@ -87,9 +91,20 @@ class _Reader:
             )
         return item
 
-    def _array(self, name: str) -> Any:
+    def _array_names(self) -> list[str]:
         layers = list(self._child(self.file, "layers")) if "layers" in self.file else []
-        names = [*(["X"] if "X" in self.file else []), *layers]
+        return [*(["X"] if "X" in self.file else []), *layers]
+
+    def _only_array(self) -> str:
+        """Return the one array of the file; which of several is meant, a person must say."""
+        names = self._array_names()
+        if len(names) > 1:
+            what = f"the file has {len(names)} arrays: {listed(names)}"
+            raise self._refuse(what, "name the one with the values to read (array)")
+        return "X"
+
+    def _array(self, name: str) -> Any:
+        names = self._array_names()
         if name not in names:
             known = listed(names) if names else "none"
             raise self._refuse(f"there is no array '{name}'; the file has {known}", "name one of them")
@@ -109,6 +124,10 @@ class _Reader:
         if cells * 8 > LARGEST_ARRAY:
             what = f"'{node.name}' declares {cells:,} cells, more than {LARGEST_ARRAY // 2**30} GB"
             raise self._refuse(what, "deliver a smaller table")
+        stored = node.id.get_storage_size() if isinstance(node, h5py.Dataset) else cells
+        if cells * 8 > max(_LARGE, _MOST_PACKED * stored):
+            what = f"'{node.name}' declares {cells:,} cells, and the file stores {stored:,} bytes of them"
+            raise self._refuse(what, "write the file again, with all its numbers")
 
     def _values(self, node: Any, shape: tuple[int, int]) -> np.ndarray:
         self._check_size(node, shape)

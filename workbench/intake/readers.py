@@ -21,7 +21,7 @@ def read_delivered(path: str | Path, *, sheet: str | None = None, array: str | N
     sheet
         Sheet of an XLSX workbook; needed when several hold cells.
     array
-        ``X`` or a layer of an .h5ad file; ``X`` when not given.
+        ``X`` or a layer of an .h5ad file; needed when it has several arrays.
 
     Raises
     ------

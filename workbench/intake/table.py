@@ -17,7 +17,7 @@ from .ids import check_no_dates, check_present, check_unique, id_notes, refuse_b
 from .mixed import read_mixed
 from .names import SAMPLES, Words
 from .numbers import Numbers, check_range, read_numbers
-from .orientation import Matching, match_samples
+from .orientation import Matching, match_samples, near_names
 from .part import Part
 from .raw import HEADER, RawTable
 from .readers import read_delivered
@@ -48,6 +48,8 @@ class DeliveredTable:
         DataFrame of text, indexed by feature: columns of the table that stood before the first sample.
     under_limit
         For each feature that has some, the number of cells such as ``<LOD``, which count as missing.
+    path
+        The file.
     decimal, sheet, array
         What a rebuild must be told to read the same: the decimal mark where numbers are not written as
         ``1234.5``, the sheet of a workbook, the array of an .h5ad file; None where there is no choice.
@@ -64,6 +66,7 @@ class DeliveredTable:
     levels: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
     annotations: pd.DataFrame = field(default_factory=pd.DataFrame)
     under_limit: Mapping[str, int] = field(default_factory=dict)
+    path: Path = Path()
     decimal: str | None = None
     sheet: str | None = None
     array: str | None = None
@@ -115,7 +118,8 @@ def delivered_table(
     if decimal not in (None, ".", ","):
         raise InputError(f"{path}: decimal is {decimal!r}; allowed: '.', ',', or left out")
     delivered = read_delivered(path, sheet=sheet, array=array)
-    apart = set_apart(delivered, sample_ids, samples_in, names, mixed=values == "mixed")
+    likely = near_names(delivered, sample_ids) if names is None else names
+    apart = set_apart(delivered, sample_ids, samples_in, likely, mixed=values == "mixed")
     raw = apart.raw
     _check_ids_present(raw)
     matching = match_samples(raw, sample_ids, samples_in, names, words)
@@ -139,6 +143,7 @@ def delivered_table(
         levels=levels,
         annotations=apart.annotations.reindex(pd.Index(list(features), dtype="object")),
         under_limit=numbers.under_limit,
+        path=raw.path,
         decimal=None if numbers.marks.plain else numbers.marks.decimal,
         sheet=raw.sheet,
         array=raw.array,
