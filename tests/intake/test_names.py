@@ -196,6 +196,15 @@ def test_accepted_names_that_do_not_fit_the_table_are_refused(tmp_path):
         read(path, names={"s_02": "S1"})
 
 
+def test_names_that_nearly_match_are_found_under_titles_and_beside_annotations(tmp_path):
+    text = "Group\t\tctl\tctl\tdrug\nid\tformula\ts_1\ts_2\ts_3\ng1\tC6H12\t1.5\t2.5\t3.5\n"
+    path = write(tmp_path, "t.tsv", text)
+    with pytest.raises(InputError, match=r"3 samples of the sheet's 3 may be"):
+        read(path)
+    table = read(path, names={"s_1": "S1", "s_2": "S2", "s_3": "S3"})
+    assert table.values["g1"].tolist() == [1.5, 2.5, 3.5]
+
+
 def test_a_long_table_of_candidates_is_cut(tmp_path):
     ids = [f"S{k}" for k in range(100)]
     path = write(tmp_path, "t.tsv", "\t".join(["id", *map(str.lower, ids)]) + "\ng" + "\t1" * 100 + "\n")

@@ -146,8 +146,9 @@ def test_exchanged_rows_are_put_right_along_a_chain_and_told(tmp_path):
     build = build_block(block, "lipids", tmp_path, SHEET)
     assert build.adata.X[:, 0].tolist() == [3.0, 1.0, 2.0]
     assert list(build.adata.obs_names) == IDS
-    told = "swap undone: the rows of 'S1' -> 'S2' -> 'S3' -> 'S1' belong to the next (rack turned)"
+    told = "swap undone: each row of 'S1' -> 'S2' -> 'S3' -> 'S1' belongs to the next (rack turned)"
     assert told in build.lines
+    assert f"swap: {told}" in build.decisions
     assert json.loads(build.adata.uns["workbench"])["swap"] == swap
 
 

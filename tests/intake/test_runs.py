@@ -209,6 +209,8 @@ def test_a_block_has_samples_as_rows_and_keeps_every_run_beside_them(tmp_path):
     assert build.lines[0] == "block 'pos': 2 features, 2 samples of the sheet's 3"
     assert "runs.tsv: 3 runs of 2 samples, 1 pool, 1 blank" in build.lines
     assert "runs.tsv: 1 sample with several runs, whose values are averaged here" in build.lines
+    assert sum(line.startswith("runs: runs.tsv: 3 runs of 2 samples") for line in build.decisions) == 1
+    assert len(build.decisions) <= 6
 
 
 def test_counts_of_several_runs_are_added_up_and_missing_where_one_is(tmp_path):

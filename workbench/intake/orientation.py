@@ -20,9 +20,10 @@ from .names import (
     candidates_offered,
     match_names,
 )
-from .raw import HEADER, RawTable
+from .raw import HEADER, RawTable, cell_text
 
 _THREE = 3
+_TOP = 10
 
 
 @dataclass(frozen=True)
@@ -105,6 +106,20 @@ def match_samples(
     return Matching(
         found, matched, tuple(where[name] for name in matched), only_sheet, only_table, tuple(notes)
     )
+
+
+def near_names(raw: RawTable, sample_ids: Sequence[str]) -> dict[str, str]:
+    """Return the candidates of the line that looks most like the samples', where no line names one exactly.
+
+    Looked at are the header, the id column and the first ten rows: the header may stand under titles.
+    """
+    known = set(map(str, sample_ids))
+    top = [list(map(cell_text, raw.body.row(i))) for i in range(min(_TOP, raw.body.shape[0]))]
+    lines = [raw.columns, raw.rows, *top]
+    if any(known.intersection(line) for line in lines):
+        return {}
+    found = max((match_names(line, sample_ids).candidates for line in lines), key=len)
+    return {delivered: sample for delivered, sample, _ in found}
 
 
 Axes = Mapping[str, Sequence[str]]

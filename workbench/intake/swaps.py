@@ -43,8 +43,5 @@ def owners(swaps: Sequence[Swap], sample_ids: Sequence[str]) -> dict[str, str]:
 
 def swap_lines(swaps: Sequence[Swap]) -> list[str]:
     """Return a sentence for each chain: whose row belongs to whom, and why that is known."""
-    return [
-        f"swap undone: the rows of {' -> '.join(map(shown, (*swap.samples, swap.samples[0])))} belong to the next "
-        f"({swap.reason})"
-        for swap in swaps
-    ]
+    chains = [(" -> ".join(map(shown, (*swap.samples, swap.samples[0]))), swap.reason) for swap in swaps]
+    return [f"swap undone: each row of {chain} belongs to the next ({reason})" for chain, reason in chains]
