@@ -27,8 +27,8 @@ ON_A_SCALE = ("counts", "intensities")
 def check_depth(data: StudyData) -> list[Finding]:
     """Find samples of which nothing, much less, or with many more gaps than of the others was measured.
 
-    Error: no value at all (for counts and intensities: nothing above 0). Warning: total count (or typical
-    intensity) under a third of the median, or over three times it, and four robust spreads away on a log
+    Error: no value at all (for counts and intensities: nothing above 0). Warning: depth (typical ratio to
+    the other samples) under a third of the median, or over three times it, and four robust spreads away on a log
     scale; the missing share ten points over the median and five robust spreads above it, unless a tenth of
     the samples (and more than two) are as far: gaps of many samples are a pattern, not an odd sample. For counts
     a gap is a feature without a read that most samples have.
@@ -64,19 +64,22 @@ def _empty(block: CheckedBlock) -> list[Finding]:
 
 
 def sample_depth(block: CheckedBlock) -> tuple[FloatArray, str]:
-    """Return the total count of each sample, or the median ratio of its intensities to the features' medians."""
+    """Return how deep each sample is: the median ratio of its values to the features' medians.
+
+    Over the features that at least half of the samples have; for counts with fewer than ten such features the
+    total count. NaN for a sample without any of them. The second value says which it is.
+    """
     seen = _seen(block)
-    if block.values == "counts":
-        return np.where(seen, block.measured, 0.0).sum(axis=1), "total count"
-    logs = np.log(np.where(seen, block.measured, np.nan))
     common = seen.mean(axis=0) >= 0.5
-    if not common.any():
-        return np.full(len(block.samples), np.nan), "typical intensity"
-    centred = logs[:, common] - np.nanmedian(logs[:, common], axis=0)
-    held = ~np.isnan(centred).all(axis=1)
+    if block.values == "counts" and common.sum() < FEWEST_FEATURES:
+        return np.where(seen, block.measured, 0.0).sum(axis=1), "total count"
     depth = np.full(len(block.samples), np.nan)
-    depth[held] = np.exp(np.nanmedian(centred[held], axis=1))
-    return depth, "typical intensity against the other samples"
+    if common.any():
+        values = np.where(seen[:, common], block.measured[:, common], np.nan)
+        away = np.log(values) - np.log(np.nanmedian(values, axis=0))
+        held = ~np.isnan(away).all(axis=1)
+        depth[held] = np.exp(np.nanmedian(away[held], axis=1))
+    return depth, "depth" if block.values == "counts" else "level"
 
 
 def _unusual_depth(block: CheckedBlock) -> list[Finding]:
@@ -97,16 +100,17 @@ def _unusual_depth(block: CheckedBlock) -> list[Finding]:
 
 def _depth_finding(block: CheckedBlock, depth: FloatArray, label: str, row: int, ratio: float) -> Finding:
     sample = block.samples[row]
-    figure = f"{depth[row]:,.0f} reads, " if block.values == "counts" else ""
-    share = f"{ratio:.2g} times the median"
-    what = f"sample '{sample}' of block '{block.name}' has an unusual {label}: {figure}{share}"
+    total = f" ({np.nansum(block.measured[row]):,.0f} reads)" if block.values == "counts" else ""
+    what = f"sample '{sample}' of block '{block.name}' has {ratio:.2g} times the {label} of the median sample{total}"
     identity = finding_id("depth", block.name, sample)
     todo = (
         f"what was seen in it differs for that reason alone; measure it again, leave it out with "
         f"{exclude_line(block.name, [sample], 'too shallow' if ratio < 1 else 'too deep')}, or keep it with "
         f"{accept_line(identity)}"
     )
-    evidence = SampleValues(block.samples, depth, label, (row,), log_scale=True)
+    evidence = SampleValues(
+        block.samples, depth, f"{label} against the other samples", (row,), log_scale=True
+    )
     return Finding(identity, "depth", "warning", block.name, what, (sample,), (), todo, evidence)
 
 

@@ -13,6 +13,8 @@ from workbench.checks.data import CheckedBlock, StudyData
 from workbench.checks.evidence import TwoSamples
 from workbench.checks.finding import Finding, accept_line, exclude_line, finding_id
 from workbench.checks.words import percent, some
+from workbench.engine.linear import thin_basis
+from workbench.engine.signal_components import signal_components
 from workbench.intake.faults import counted
 from workbench.intake.suggest import suggest_columns
 
@@ -90,8 +92,9 @@ def near_pairs(values: FloatArray) -> list[tuple[int, int]]:
     """Return pairs of samples far closer to each other than samples are to their neighbours, closest first.
 
     A pair counts when its squared distance is at most a quarter of the median distance to the nearest
-    neighbour, or of that of each of the two to any third sample; and, under a chi-squared law with the
-    effective number of features, chance brings none of the pairs so close in 999 of 1000 blocks.
+    neighbour, or of that of each of the two to any third sample; and chance brings none of the pairs so close
+    in 999 of 1000 blocks: chi-squared laws with the effective number of features (sum of the eigenvalues
+    squared over the sum of their squares), of the whole block and of what its components with signal leave.
 
     Parameters
     ----------
@@ -106,8 +109,7 @@ def near_pairs(values: FloatArray) -> list[tuple[int, int]]:
     squared = np.maximum(lengths[:, None] + lengths - 2.0 * kernel, 0.0)
     rows, columns = np.triu_indices(n, 1)
     distances = squared[rows, columns]
-    effective = max(1.0, float(np.trace(kernel) ** 2 / np.sum(kernel**2)))
-    by_chance = chi2.cdf(distances / max(distances.mean(), 1e-300) * effective, effective) * distances.size
+    by_chance = _chance(values, distances) * distances.size
     np.fill_diagonal(squared, np.inf)
     nearest = float(np.median(squared.min(axis=1)))
     third = np.partition(squared, 1, axis=1)[:, 1]
@@ -115,6 +117,23 @@ def near_pairs(values: FloatArray) -> list[tuple[int, int]]:
     chosen = np.flatnonzero(near & (by_chance <= BY_CHANCE))
     chosen = chosen[np.argsort(distances[chosen], kind="stable")]
     return [(int(rows[k]), int(columns[k])) for k in chosen]
+
+
+def _chance(values: FloatArray, distances: FloatArray) -> FloatArray:
+    """Return the chance of a distance as small or smaller, by the law of the whole block or of its noise alone.
+
+    The distance in the noise is at most the whole distance, so that its law bounds the chance from above; the
+    law of the whole block covers blocks in which most samples have a copy and nothing is left as noise.
+    """
+    basis = thin_basis(values)
+    squares = basis.lengths**2
+    chances = []
+    for part in (squares, squares[signal_components(basis).number :]):
+        if part.size:
+            effective = float(part.sum() ** 2 / np.sum(part**2))
+            mean = 2.0 * float(part.sum()) / values.shape[0]
+            chances.append(chi2.cdf(distances / mean * effective, effective))
+    return np.asarray(np.minimum.reduce(chances), dtype=np.float64)
 
 
 def same_share(measured: FloatArray, i: int, j: int) -> float:

@@ -23,7 +23,7 @@ FloatArray = NDArray[np.float64]
 CHECK = "outlier"
 FEWEST_SAMPLES = 8
 FOLDS = 20
-LARGEST_SQUARE = 16.0
+LARGEST_VALUE, LARGEST_SQUARE = 6.0, 16.0
 PRIOR_FREEDOM = 4.0
 LEAST_RATIO = 3.0
 LEAST_Z = 3.0
@@ -53,8 +53,8 @@ def outlying_samples(data: StudyData) -> list[Finding]:
     """Find samples whose prepared values are unlike those of the others, block by block.
 
     Two rules. A sample is *unlike* when the components with signal that the other samples show leave three
-    times as much of it as of the median sample, squares of more than four standard deviations cut, so that no
-    single wild value decides. It is *far out* when it lies further from the median, on a component with
+    times as much of it as of the median sample, values cut at six standard deviations and errors at four, so
+    that no single wild value decides. It is *far out* when it lies further from the median, on a component with
     signal, than one normal sample among n would in 1 of 100 blocks, and at least six robust spreads.
 
     Nuisance and group are taken out first. At least eight samples are needed.
@@ -120,6 +120,7 @@ def _fold_errors(
     scale = np.sqrt((freedom * variance + PRIOR_FREEDOM * np.median(variance)) / (freedom + PRIOR_FREEDOM))
     known = fitted.transform(design[train], x[train])[:, fitted.varies] / scale
     asked = fitted.transform(design[test], x[test])[:, fitted.varies] / scale
+    asked = np.clip(asked, -LARGEST_VALUE, LARGEST_VALUE)
     basis = thin_basis(known)
     k = signal_components(basis).number
     loadings = (basis.vectors[:, :k] / basis.lengths[:k]).T @ known
@@ -174,7 +175,7 @@ def _unlike_finding(block: CheckedBlock, errors: HeldOutErrors, row: int) -> Fin
         f"{errors.ratio[row]:.1f} times as much of it as of the median sample"
     )
     names = block.take(block.usable)
-    label = "left over by what the others share (median sample = 1)"
+    label = "error from the others (median = 1)"
     evidence = SampleValues(names, errors.ratio, label, (row,), LEAST_RATIO, log_scale=True)
     return _finding(block, sample, what, evidence)
 
