@@ -157,11 +157,11 @@ def difference(old: anndata.AnnData, new: anndata.AnnData) -> BlockDifference:
     mixed blocks as texts and not by their codes.
     """
     samples, features = _sides(old.obs_names, new.obs_names), _sides(old.var_names, new.var_names)
-    rows = [name for name in new.obs_names if name in old.obs_names]
-    shared = [name for name in new.var_names if name in old.var_names]
-    retyped = tuple(name for name in shared if _is_text(old, name) != _is_text(new, name))
-    numbers = [name for name in shared if name not in retyped and not _is_text(new, name)]
-    texts = [name for name in shared if name not in retyped and _is_text(new, name)]
+    rows, shared = _shared(old.obs_names, new.obs_names), _shared(old.var_names, new.var_names)
+    text_before, text_now = _text_features(old), _text_features(new)
+    retyped = tuple(name for name in shared if (name in text_before) != (name in text_now))
+    numbers = [name for name in shared if name not in text_before | text_now]
+    texts = [name for name in shared if name in text_before & text_now]
     found = _numbers(_cells(old, rows, numbers), _cells(new, rows, numbers), rows, numbers)
     words = _texts(old, new, rows, texts)
     return BlockDifference(
@@ -206,8 +206,17 @@ def _numbers(old: np.ndarray, new: np.ndarray, rows: Sequence[str], columns: Seq
     )
 
 
-def _is_text(adata: anndata.AnnData, feature: str) -> bool:
-    return "levels" in adata.var and bool(adata.var.at[feature, "levels"])
+def _shared(old: pd.Index, new: pd.Index) -> list[str]:
+    """Return the names of both, in the new order."""
+    known = set(old)
+    return [name for name in new if name in known]
+
+
+def _text_features(adata: anndata.AnnData) -> set[str]:
+    """Return the features of a mixed block that are text."""
+    if "levels" not in adata.var:
+        return set()
+    return {name for name, levels in adata.var["levels"].items() if levels}
 
 
 def _texts(
