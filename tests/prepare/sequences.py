@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import pandas as pd
 
-from workbench.prepare import MeasuredTable, run_table
+from workbench.prepare import MeasuredTable, RunTable, run_table
 
 NOISE = 0.12
 
@@ -85,3 +85,29 @@ def _sequence(
     runs = run_table(sheet, values)
     table = MeasuredTable(values[role == "sample"], tuple(samples), features, None, runs)
     return Sequence(table, biology, base, drift)
+
+
+def with_controls(kind: str) -> MeasuredTable:
+    """Return runs with drift, a detection limit, dilution, features that scatter, and two blanks."""
+    made = sequence(seed=1, n=40, p=120, every=4, drift=0.4).table
+    rng, runs = np.random.default_rng(2), made.runs
+    assert runs is not None
+    sampled = np.array(runs.role)[:, None] == "sample"
+    scatter = np.where(np.arange(120) % 5, 0.1, 0.35)
+    logs = np.log2(runs.values) + rng.normal(0, scatter, runs.values.shape) * ~sampled
+    logs += sampled * rng.normal(0, 0.4, (len(logs), 1))
+    blanks = 2.0 ** np.median(logs, axis=0) / np.where(np.arange(120) % 6, 100.0, 2.0)
+    logs[(logs < np.quantile(logs, 0.12)) & sampled] = np.nan
+    values = np.nan_to_num(2.0**logs)
+    grown = RunTable(
+        runs=(*runs.runs, "blank0"),
+        sample=(*runs.sample, ""),
+        role=(*runs.role, "blank"),
+        order=np.append(runs.order, 0.0),
+        batch=(*runs.batch, "b0"),
+        replicate=(*runs.replicate, ""),
+        values=np.vstack([values, blanks]),
+    )
+    if kind == "log":
+        grown = replace(grown, values=np.vstack([logs, np.log2(blanks)]))
+    return replace(made, values=grown.values[grown.rows_as("sample")], runs=grown)

@@ -2,15 +2,17 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
+import json
+import pickle
+from dataclasses import asdict, replace
 
 import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 from prepare.measured import BUILDERS, table_of
-from prepare.sequences import sequence
+from prepare.sequences import with_controls
 
-from workbench.prepare import MeasuredTable, PreparedTable, RunTable, recipe_for
+from workbench.prepare import MeasuredTable, PreparedTable, recipe_for
 from workbench.settings import prepare_keys, prepare_settings
 
 CHANGES: dict[str, dict[str, object]] = {
@@ -56,32 +58,6 @@ def measured(kind: str) -> MeasuredTable:
     return replace(table, values=values if kind in ("beta", "continuous", "mixed") else table.values)
 
 
-def with_controls(kind: str) -> MeasuredTable:
-    """Return runs with drift, a detection limit, dilution, features that scatter, and two blanks."""
-    made = sequence(seed=1, n=40, p=120, every=4, drift=0.4).table
-    rng, runs = np.random.default_rng(2), made.runs
-    assert runs is not None
-    sampled = np.array(runs.role)[:, None] == "sample"
-    scatter = np.where(np.arange(120) % 5, 0.1, 0.35)
-    logs = np.log2(runs.values) + rng.normal(0, scatter, runs.values.shape) * ~sampled
-    logs += sampled * rng.normal(0, 0.4, (len(logs), 1))
-    blanks = 2.0 ** np.median(logs, axis=0) / np.where(np.arange(120) % 6, 100.0, 2.0)
-    logs[(logs < np.quantile(logs, 0.12)) & sampled] = np.nan
-    values = np.nan_to_num(2.0**logs)
-    grown = RunTable(
-        runs=(*runs.runs, "blank0"),
-        sample=(*runs.sample, ""),
-        role=(*runs.role, "blank"),
-        order=np.append(runs.order, 0.0),
-        batch=(*runs.batch, "b0"),
-        replicate=(*runs.replicate, ""),
-        values=np.vstack([values, blanks]),
-    )
-    if kind == "log":
-        grown = replace(grown, values=np.vstack([logs, np.log2(blanks)]))
-    return replace(made, values=grown.values[grown.rows_as("sample")], runs=grown)
-
-
 def prepared(kind: str, settings: dict[str, object]) -> PreparedTable:
     recipe = recipe_for("x", kind, prepare_settings("x", kind, settings))
     return recipe.fit_transform(measured(kind), smallest_group=10, seed=1)
@@ -99,6 +75,20 @@ def test_a_choice_changes_what_comes_out(kind: str, key: str, value: object) -> 
     assert np.isfinite(other.values).all()
     same = plain.features == other.features and np.array_equal(plain.values, other.values)
     assert not same
+
+
+@pytest.mark.parametrize(("kind", "key", "value"), CASES, ids=[f"{kind}-{key}" for kind, key, _ in CASES])
+def test_held_out_samples_change_nothing_that_was_learnt(kind: str, key: str, value: object) -> None:
+    table = measured(kind)
+    n = len(table.samples)
+    recipe = recipe_for("x", kind, prepare_settings("x", kind, {key: value}))
+    fitted = recipe.fit(table.take(range(n - 6)), smallest_group=7, seed=1)
+    before = pickle.dumps(fitted)
+    together = fitted.transform(table.take(range(n - 6, n)))
+    alone = [fitted.transform(table.take([row])).values[0] for row in range(n - 6, n)]
+    assert_allclose(np.array(alone), together.values, rtol=1e-12, atol=1e-12)
+    assert pickle.dumps(fitted) == before
+    assert json.loads(json.dumps([asdict(step) for step in together.account]))
 
 
 def test_the_share_without_groups_is_a_choice() -> None:

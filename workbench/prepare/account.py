@@ -90,6 +90,13 @@ def _labelled(step: StepAccount, block: str) -> list[tuple[str, str]]:
         told.append(("why", step.why))
     if step.sentence != step.rule:
         told.append(("here", step.sentence))
+    if step.numbers:
+        told.append(
+            (
+                "numbers",
+                "; ".join(f"{name.replace('_', ' ')} {_figure(x)}" for name, x in step.numbers.items()),
+            )
+        )
     if step.dropped:
         told.append(("dropped", _dropped(step.dropped)))
     told += [("caution", caution) for caution in step.cautions]
@@ -98,6 +105,13 @@ def _labelled(step: StepAccount, block: str) -> list[tuple[str, str]]:
     if step.change:
         told.append(("change", f"[blocks.{block}.prepare] {step.change}"))
     return told
+
+
+def _figure(value: float | int | str) -> str:
+    """Return a figure in four digits, a whole number in full, a name as it is."""
+    if isinstance(value, float):
+        return f"{value:.4g}"
+    return f"{value:,}" if isinstance(value, int) else value
 
 
 def _dropped(reasons: dict[str, str]) -> str:

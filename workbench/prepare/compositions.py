@@ -115,7 +115,7 @@ class Prevalence(Settled):
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
-        return f"above zero in fewer than {self.share:.0%} of the samples"
+        return f"drops features above zero in fewer than {self.share:.0%} of the samples"
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:  # noqa: ARG002
         """Return the step; the number of samples is rounded up."""

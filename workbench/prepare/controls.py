@@ -37,6 +37,10 @@ class PoolScatter(Settled):
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
+        return f"drops features: {self._condition}"
+
+    @property
+    def _condition(self) -> str:
         return f"relative standard deviation over the pools above {self.largest:.0%}"
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:  # noqa: ARG002
@@ -60,7 +64,7 @@ class PoolScatter(Settled):
         if judged.size:
             numbers["median_scatter"] = float(np.median(judged))
         return _with_numbers(
-            keep_features(self.step, self.rule, table, ~wide, reasons), numbers, self._caution(judged)
+            keep_features(self.step, self._condition, table, ~wide, reasons), numbers, self._caution(judged)
         )
 
     def _caution(self, judged: Matrix) -> tuple[str, ...]:
@@ -87,6 +91,10 @@ class BlankFilter(Settled):
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
+        return f"drops features: {self._condition}"
+
+    @property
+    def _condition(self) -> str:
         return f"less than {self.ratio:g} times as strong in samples as in blanks"
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:  # noqa: ARG002
@@ -104,7 +112,7 @@ class BlankFilter(Settled):
             f"{self.ratio:g} needed"
             for i in np.flatnonzero(explained)
         }
-        fitted = keep_features(self.step, self.rule, table, ~explained, reasons)
+        fitted = keep_features(self.step, self._condition, table, ~explained, reasons)
         return _with_numbers(fitted, {"blanks": len(blanks), "ratio": self.ratio}, ())
 
 

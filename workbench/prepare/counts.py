@@ -111,8 +111,8 @@ class CountFilter(Settled):
     def rule(self) -> str:
         """What the step does, in one line."""
         return (
-            f"count of {self.smallest_count} or more in fewer samples than the smallest group has "
-            f"({self.share:.0%} of the samples without groups)"
+            f"drops features with a count of {self.smallest_count} or more in fewer samples than the smallest group "
+            f"has ({self.share:.0%} of the samples without groups)"
         )
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:

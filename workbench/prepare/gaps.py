@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from typing import ClassVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,7 +16,8 @@ from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable, some
 
 WARNED_SAMPLE = 0.3
 WARNED_FEATURE = 0.5
-REFERENCES = "Troyanskaya et al. 2001, Bioinformatics 17:520; Tobin 1958, Econometrica 26:24"
+NEIGHBOURS = "Troyanskaya et al. 2001, Bioinformatics 17:520"
+LOW_TAIL = "Tobin 1958, Econometrica 26:24"
 
 
 @dataclass(frozen=True)
@@ -36,13 +36,24 @@ class FillGaps(Settled):
     censored: bool
     settable: bool = False
     step: str = "gaps"
-    why: ClassVar[str] = "a gap that stands for too little to see is a low value; one by chance says nothing"
-    paper: ClassVar[str] = REFERENCES
 
     @property
     def keys(self) -> tuple[str, ...]:  # type: ignore[override]
         """The key that chooses, where there is one."""
         return ("gaps",) if self.settable else ()
+
+    @property
+    def why(self) -> str:  # type: ignore[override]
+        """Why gaps are filled so."""
+        chance = "a gap by chance says nothing, and samples like this one show what to expect"
+        return (
+            f"a gap that stands for too little to see is a low value; {chance}" if self.censored else chance
+        )
+
+    @property
+    def paper(self) -> str:  # type: ignore[override]
+        """Where the methods come from."""
+        return f"{NEIGHBOURS}; {LOW_TAIL}" if self.censored else NEIGHBOURS
 
     @property
     def rule(self) -> str:
@@ -122,7 +133,9 @@ class FittedGaps:
             }
         cautions = self._cautions(rows, columns, table)
         sentence = self._sentence(gaps, drawn)
-        return StepAccount(self.settings.step, sentence, numbers, reference=REFERENCES, cautions=cautions)
+        return StepAccount(
+            self.settings.step, sentence, numbers, reference=self.settings.paper, cautions=cautions
+        )
 
     def _cautions(self, rows: Matrix, columns: Matrix, table: StepTable) -> tuple[str, ...]:
         told = []

@@ -70,7 +70,9 @@ class Donors:
         if not rows.size:
             return filled
         by_name = np.argsort(np.argsort(np.array(self.samples, dtype=object), kind="stable"))
-        distances = mean_squared_differences(values if len(rows) == len(values) else values[rows], self.values)
+        distances = mean_squared_differences(
+            values if len(rows) == len(values) else values[rows], self.values
+        )
         self._check_rows(distances, [samples[row] for row in rows])
         for row, distance in zip(rows, distances, strict=True):
             columns = np.flatnonzero(wanted[row])

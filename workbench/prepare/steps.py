@@ -227,8 +227,13 @@ class DropUnusable(Settled):
     """Drops features without any value and features with one value only."""
 
     step: str = "unusable features"
-    rule: str = "no value in any sample, or the same value in every sample that has one"
+    condition: str = "no value in any sample, or the same value in every sample that has one"
     why: ClassVar[str] = "what does not vary correlates with nothing"
+
+    @property
+    def rule(self) -> str:
+        """What the step does, in one line."""
+        return f"drops features: {self.condition}"
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:  # noqa: ARG002
         """Return the step; constant means that smallest and largest value are equal."""
@@ -239,7 +244,7 @@ class DropUnusable(Settled):
             reasons[table.features[i]] = (
                 f"constant: {_in_words(low[i], table.levels[i])} wherever it has a value"
             )
-        return keep_features(self.step, self.rule, table, ~(empty | constant), reasons)
+        return keep_features(self.step, self.condition, table, ~(empty | constant), reasons)
 
 
 def _in_words(value: float, levels: tuple[str, ...] | None) -> str:
@@ -263,7 +268,7 @@ class DropRarelySeen(Settled):
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
-        return f"seen in fewer samples than {self.share:.0%} of the smallest group"
+        return f"drops features seen in fewer samples than {self.share:.0%} of the smallest group has"
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:
         """Return the step; numbers of samples are rounded up."""
@@ -287,12 +292,17 @@ class DropFlat(Settled):
     """
 
     step: str = "flat features"
-    rule: str = "no variation left after preparation"
+    condition: str = "no variation left after preparation"
     why: ClassVar[str] = "what does not vary correlates with nothing"
+
+    @property
+    def rule(self) -> str:
+        """What the step does, in one line."""
+        return f"drops features: {self.condition}"
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:  # noqa: ARG002
         """Return the step."""
         low, high = column_range(table.values)
         flat = high - low <= FLAT * np.maximum(np.abs(low), np.abs(high))
         reasons = {table.features[i]: "no variation left after preparation" for i in np.flatnonzero(flat)}
-        return keep_features(self.step, self.rule, table, ~flat, reasons)
+        return keep_features(self.step, self.condition, table, ~flat, reasons)
