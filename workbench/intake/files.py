@@ -14,7 +14,7 @@ from workbench.errors import InputError
 from .encodings import Encoding, decoder_for, encoding_error, first_encoding, western_encoding
 
 LARGEST_TEXT = 8 * 2**30
-_CHUNK = 2**24
+_CHUNK = 2**20
 _FOREIGN = (
     (
         b"\xd0\xcf\x11\xe0",

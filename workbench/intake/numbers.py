@@ -22,6 +22,7 @@ from .tokens import MISSING, is_comma_number, is_under_limit
 
 _NAN = float("nan")
 _BLOCK = 256
+_CELLS_AT_ONCE = 2**18
 _MOST_SEEN = 50_000
 
 
@@ -299,8 +300,9 @@ def _fractions(values: np.ndarray) -> np.ndarray:
 def _count(values: np.ndarray, fault: Callable[[np.ndarray], np.ndarray]) -> int:
     """Return how many values have a fault, looked at in pieces, so that no second table stands in memory."""
     stored = values if values.flags.c_contiguous else values.T
-    pieces = range(0, len(stored), _BLOCK)
-    return sum(int(np.count_nonzero(fault(stored[start : start + _BLOCK]))) for start in pieces)
+    step = max(1, _CELLS_AT_ONCE // max(1, stored.shape[1]))
+    pieces = range(0, len(stored), step)
+    return sum(int(np.count_nonzero(fault(stored[start : start + step]))) for start in pieces)
 
 
 def _refuse(

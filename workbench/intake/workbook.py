@@ -7,6 +7,7 @@ import re
 import warnings
 import zipfile
 from collections.abc import Iterator
+from itertools import islice
 from pathlib import Path
 from typing import Any
 
@@ -22,7 +23,7 @@ _CHUNK = 2**20
 
 
 def read_cells(path: Path, sheet: str | None) -> tuple[str, list[list[Cell]]]:
-    """Return the name of a sheet and its rows of cells; without ``sheet`` the only one that holds cells.
+    """Return the name of a sheet and its rows of cells; without ``sheet`` the only one that can be a table.
 
     Cells are None, text, int, float, or `WrongCell`. A whole number in a format of zeros (``0000``) is text
     with them.
@@ -30,8 +31,8 @@ def read_cells(path: Path, sheet: str | None) -> tuple[str, list[list[Cell]]]:
     Raises
     ------
     InputError
-        When the file is no workbook or a damaged one, there is no such sheet, or several hold cells and none
-        was named.
+        When the file is no workbook or a damaged one, there is no such sheet, or several can be tables and
+        none was named.
     """
     _check_package(path)
     book = _open(path, values=True)
@@ -112,11 +113,19 @@ def _sheet_name(path: Path, book: Any, sheet: str | None) -> str:
         raise InputError(
             f"{path}: no sheet of the workbook holds a cell; a table needs a header row and rows"
         )
-    if len(filled) > 1:
+    tables = [name for name in filled if len(filled) > 1 and _can_be_table(path, book[name])]
+    if len(filled) > 1 and len(tables) != 1:
+        said = f", {len(tables)} of them tables: {listed(tables)}" if tables else f": {listed(filled)}"
         raise InputError(
-            f"{path}: {len(filled)} sheets hold cells: {listed(filled)}; name the one with the table (sheet)"
+            f"{path}: {len(filled)} sheets hold cells{said}; name the one with the table (sheet)"
         )
-    return filled[0]
+    return (tables or filled)[0]
+
+
+def _can_be_table(path: Path, worksheet: Any) -> bool:
+    """Whether two rows or more hold two cells or more: titles, remarks and lists of words do not."""
+    wide = (1 for row in _rows(path, worksheet) if sum(is_filled(cell.value) for cell in row) > 1)
+    return len(list(islice(wide, 2))) > 1
 
 
 def _holds_cells(path: Path, worksheet: Any) -> bool:
