@@ -12,8 +12,10 @@ from workbench.intake import (
     OfferedNamesError,
     block_design_columns,
     build_block,
+    read_names,
     read_run_sheet,
     run_columns,
+    run_columns_of,
     with_run_columns,
 )
 from workbench.settings.schema import BlockSettings
@@ -62,6 +64,19 @@ def test_columns_and_roles_are_known_in_any_case_and_any_order(tmp_path):
     assert run_columns(tmp_path / "runs.tsv") == ("order",)
 
 
+def test_other_words_of_laboratories_are_taken_and_told(tmp_path):
+    text = "Sample Type\tFile Name\tsample name\tInjection Order\tsample\n"
+    text += "Unknown\tr1\tx\t1\tS1\nPooled QC\tr2\t\t2\t\nBlank\tr3\t\t3\t\n"
+    found = sheet_of(tmp_path, text)
+    assert found.frame["role"].to_dict() == {"r1": "sample", "r2": "pool", "r3": "blank"}
+    assert found.frame["sample"]["r1"] == "S1"
+    assert found.notes[:2] == (
+        "runs.tsv: columns read: 'File Name' as run, 'Sample Type' as role, 'Injection Order' as order",
+        "runs.tsv: roles read: 'Unknown' as sample, 'Pooled QC' as pool",
+    )
+    assert run_columns(tmp_path / "runs.tsv") == ("sample name", "order")
+
+
 def test_without_a_sample_column_a_run_is_named_as_its_sample(tmp_path):
     found = sheet_of(tmp_path, tabbed("run role", "S2 sample", "qc pool"))
     assert found.frame["sample"].to_dict() == {"S2": "S2", "qc": ""}
@@ -106,18 +121,22 @@ FAULTS = {
         ["'run' and 'role'", "it lacks 'role'", "has 'run', 'sample'"],
     ),
     "no run column": (tabbed("id sample role", "a S1 sample"), ["it lacks 'run'"]),
-    "a column twice": (tabbed("run role Role", "a sample pool"), ["column 'role' stands there twice"]),
+    "a column twice": (
+        tabbed("run role Role", "a sample pool"),
+        ["columns 'role', 'Role' of the run sheet may both be the role"],
+    ),
     "a run twice": (
         tabbed(HEAD, "a S1 sample 1", "a S2 sample 2"),
         ["'a': line 2, column 1, line 3, column 1"],
     ),
     "a run without a name": (tabbed(HEAD, "a S1 sample 1") + "\tS2\tsample\t2\n", ["line 3, column 1"]),
     "a role that is none": (
-        tabbed(HEAD, "a S1 sample 1", "b - QC 2"),
-        [
-            "line 3, column 3 (run 'b'): the role is 'QC'; did you mean 'pool'?",
-            "roles are sample, pool and blank",
-        ],
+        tabbed(HEAD, "a S1 sample 1", "b - pol 2"),
+        ["line 3, column 3 (run 'b'): the role is 'pol'; roles are sample, pool and blank"],
+    ),
+    "two columns for one thing": (
+        "File Name\tRaw file\trole\na\tb\tsample\n",
+        ["columns 'File Name', 'Raw file' of the run sheet may both be the run; name one of them 'run'"],
     ),
     "a role that nobody knows": (tabbed(HEAD, "a S1 xyz 1"), ["the role is 'xyz'; roles are"]),
     "no role": (tabbed(HEAD, "a S1 - 1"), ["line 2, column 3 (run 'a'): the role is '-'"]),
@@ -131,7 +150,7 @@ FAULTS = {
         ["line 3, column 2 (run 'b'): a pool, and yet the sample 'S2' of the sample sheet"],
     ),
     "several at once": (
-        tabbed(HEAD, "a S1 smpl x", "b S2 blank 2", "c S3 QC 3"),
+        tabbed(HEAD, "a S1 smpl x", "b S2 blank 2", "c S3 Qpool 3"),
         [
             "4 cells of the run sheet",
             "line 2, column 3",
@@ -170,6 +189,31 @@ def test_a_workbook_is_a_run_sheet_too(tmp_path):
     found = read_run_sheet(workbook(tmp_path / "runs.xlsx", rows), IDS)
     assert found.frame["order"].tolist() == [1.0, 2.5]
     assert found.frame["sample"].tolist() == ["S1", ""]
+
+
+@settings(max_examples=150, deadline=None)
+@given(
+    text=st.text(alphabet='runolesampbkch,\t\n"S1-. ', max_size=60),
+    head=st.sampled_from(["", "run\tsample\trole\n"]),
+)
+def test_no_text_is_more_than_refused(tmp_path_factory, text, head):
+    path = tmp_path_factory.mktemp("any") / "runs.tsv"
+    path.write_text(head + text, encoding="utf-8", newline="")
+    told = []
+    for read in (lambda: read_run_sheet(path, IDS), lambda: read_names(path), lambda: run_columns(path)):
+        try:
+            read()
+        except InputError as error:
+            told.append(str(error))
+    assert all(str(path) in message for message in told)
+
+
+def test_the_columns_of_all_run_sheets_that_are_there(tmp_path):
+    write(tmp_path, "runs.tsv", RUNS)
+    base = {"file": "t.tsv", "layer": "lipids", "values": "log"}
+    runs = {"a": "runs.tsv", "b": None, "c": "gone.tsv"}
+    blocks = {name: BlockSettings(**base, runs=file) for name, file in runs.items()}
+    assert run_columns_of(blocks, tmp_path) == {"a": ("order", "batch", "column_age")}
 
 
 cells = st.text(alphabet="ab1 +_", min_size=1, max_size=4).map(str.strip).filter(lambda t: t not in ("", "-"))

@@ -19,7 +19,7 @@ from .names import NameMatch, OfferedNamesError, match_names, names_table
 from .names_file import read_names
 from .raw import RawTable
 from .readers import read_delivered
-from .runs import RunSheet, read_run_sheet, run_columns
+from .runs import RunSheet, read_run_sheet, run_columns, run_columns_of
 from .sheet import SampleSheet, Suggestions, column_kind, read_sample_sheet, suggest_columns
 from .table import DeliveredTable, delivered_table
 
@@ -59,6 +59,7 @@ __all__ = [
     "read_run_sheet",
     "read_sample_sheet",
     "run_columns",
+    "run_columns_of",
     "sheet_difference",
     "split_identifiers",
     "suggest_columns",

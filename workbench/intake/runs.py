@@ -10,23 +10,17 @@ import numpy as np
 import pandas as pd
 
 from workbench.errors import InputError
+from workbench.settings.schema import BlockSettings
 
 from .columns import NamedColumns, read_columns
 from .faults import Faults, counted, listed, shown
 from .ids import check_present, check_unique
 from .kinds import present
 from .names import OfferedNamesError, candidates_offered, match_names
+from .run_words import column_places, role_of, word_notes
 from .tokens import MISSING, number_of
 
-ROLES = ("sample", "pool", "blank")
-KNOWN = ("run", "sample", "role", "order", "batch", "replicate")
-_NEEDED = ("run", "role")
 _NAMES = ("run", "sample", "role")
-_HINTS = {
-    "pool": "qc pqc pooled pooled_qc qc_pool reference ref pools",
-    "blank": "blk solvent process_blank water blanks",
-    "sample": "study samples bio biological unknown",
-}
 
 
 @dataclass(frozen=True)
@@ -57,8 +51,8 @@ def read_run_sheet(
 
     Columns: ``run`` and ``role`` (``sample``, ``pool`` or ``blank``) are needed; ``sample`` (left out: a run
     has the name of its sample), ``order`` (of injection, a number), ``batch`` and ``replicate`` are known;
-    further ones are kept. Case does not matter in the names of columns and in roles; names of runs and samples
-    are taken as they are written.
+    further ones are kept. Other words of laboratories for columns and roles (``File Name``, ``QC``) are listed
+    in `workbench.intake.run_words`, taken, and told; names of runs and samples are taken as they are written.
 
     Parameters
     ----------
@@ -77,12 +71,12 @@ def read_run_sheet(
         `OfferedNamesError` when samples are written nearly as in the sample sheet.
     """
     found = read_columns(path, "run sheet", ("run",))
-    known = _known_columns(found)
+    known = column_places(found.path, found.names)
     cells = {name: found.texts(column, names=name in _NAMES) for name, column in known.items()}
     runs = cells["run"]
     check_present(found.path, runs, "run", lambda row: found.place(row, known["run"]))
     check_unique(found.path, runs, "run", lambda row: found.place(row, known["run"]))
-    roles = [cell.strip().casefold() for cell in cells["role"]]
+    roles = [role_of(cell) or "" for cell in cells["role"]]
     samples = _samples(cells.get("sample", runs), set(sample_ids), names or {})
     order = [number_of(cell) for cell in cells.get("order", [""] * len(runs))]
     read = _Read(roles, samples, order, set(sample_ids))
@@ -96,22 +90,32 @@ def read_run_sheet(
             f"{path}: no run is of a sample of the sample sheet: the runs' samples are {listed(samples, 3)}, the "
             f"sheet has {listed(list(sample_ids), 3)}; write the same ids in both"
         )
-    notes = [*found.raw.notes, *_notes(found.path.name, frame, kept)]
+    words = (f"{found.path.name}: {told}" for told in word_notes(found.names, known, cells["role"]))
+    notes = [*found.raw.notes, *words, *_notes(found.path.name, frame, kept)]
     return RunSheet(frame[kept], tuple(frame.index[~kept]), tuple(notes))
 
 
 def run_columns(path: str | Path) -> tuple[str, ...]:
     """Return the columns of a run sheet that a block's ``adjust`` may name: all but run, sample and role."""
     found = read_columns(path, "run sheet", ("run",))
-    known = {column: name for name, column in _known_columns(found).items()}
+    known = {column: name for name, column in column_places(found.path, found.names).items()}
     names = [known.get(place, name) for place, name in enumerate(found.names)]
     return tuple(name for name in names if name not in ("run", "sample", "role"))
+
+
+def run_columns_of(blocks: Mapping[str, BlockSettings], root: Path) -> dict[str, tuple[str, ...]]:
+    """Return, for each block with a run sheet that is there, the columns that its ``adjust`` may name.
+
+    This is what `workbench.settings.cross_check` takes; a run sheet that is not there is a fault that it tells.
+    """
+    sheets = {name: root / block.runs for name, block in blocks.items() if block.runs is not None}
+    return {name: run_columns(path) for name, path in sheets.items() if path.is_file()}
 
 
 def run_names(path: str | Path) -> tuple[str, ...]:
     """Return the names of the runs of a run sheet, as they are written."""
     found = read_columns(path, "run sheet", ("run",))
-    return tuple(found.texts(_known_columns(found)["run"]))
+    return tuple(found.texts(column_places(found.path, found.names)["run"]))
 
 
 @dataclass(frozen=True)
@@ -122,23 +126,6 @@ class _Read:
     samples: list[str]
     order: list[float | None]
     ids: Collection[str]
-
-
-def _known_columns(found: NamedColumns) -> dict[str, int]:
-    """Return where the columns with a meaning stand."""
-    places: dict[str, list[int]] = {}
-    for place, name in enumerate(found.names):
-        places.setdefault(name.strip().casefold(), []).append(place)
-    twice = [name for name in KNOWN if len(places.get(name, ())) > 1]
-    if twice:
-        raise InputError(f"{found.path}: column {listed(twice)} stands there twice; rename one of them")
-    lacking = [name for name in _NEEDED if name not in places]
-    if lacking:
-        raise InputError(
-            f"{found.path}: a run sheet has the columns 'run' and 'role' (and sample, order, batch, replicate where "
-            f"known); it lacks {listed(lacking)} and has {listed(found.names)}; name its columns so"
-        )
-    return {name: places[name][0] for name in KNOWN if name in places}
 
 
 def _samples(cells: Sequence[str], ids: Collection[str], names: Mapping[str, str]) -> list[str]:
@@ -164,12 +151,8 @@ def _cell_faults(cells: Mapping[str, Sequence[str]], read: _Read, row: int) -> d
     """Return what is wrong with the cells of a row, by column."""
     faults = {}
     role = read.roles[row]
-    if role not in ROLES:
-        meant = next(
-            (name for name, words in _HINTS.items() if role.replace(" ", "_") in words.split()), None
-        )
-        hint = f"; did you mean '{meant}'?" if meant else ""
-        faults["role"] = f"the role is {shown(cells['role'][row])}{hint}"
+    if not role:
+        faults["role"] = f"the role is {shown(cells['role'][row])}"
     if role in ("pool", "blank") and "sample" in cells and read.samples[row] in read.ids:
         faults["sample"] = f"a {role}, and yet the sample {shown(read.samples[row])} of the sample sheet"
     number, cell = read.order[row], cells["order"][row] if "order" in cells else ""
