@@ -7,10 +7,11 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from hypothesis.extra.numpy import array_shapes, arrays
-from prepare.measured import KINDS, table_of
+from prepare.measured import KINDS, table_of, with_runs
 
 from workbench.errors import InputError
-from workbench.prepare import recipe_for
+from workbench.prepare import MeasuredTable, Recipe, recipe_for
+from workbench.settings import prepare_settings
 
 CELLS = st.sampled_from([np.nan, np.nan, 0.0, 0.0, 1.0, 2.0, 12.0, 40.0, 5000.0, 1e-300, 1e100])
 TABLES = arrays(float, array_shapes(min_dims=2, max_dims=2, min_side=2, max_side=12), elements=CELLS)
@@ -29,6 +30,48 @@ def test_small_tables_are_prepared_whole_or_refused_in_words(
     except InputError as error:
         way_out = "exclude" in str(error) or "check the block's `values`" in str(error)
         assert way_out, error  # noqa: PT017
+        return
+    assert np.isfinite(fitted.prepared.values).all()
+    assert np.isfinite(fitted.transform(table.take([0])).values).all()
+
+
+CHOICES = [
+    ("counts", {"normalisation": "upper_quartile"}),
+    ("counts", {"normalisation": "trimmed_mean"}),
+    ("intensities", {"zeros": "amounts"}),
+    ("log", {"check_values": False, "centring": "none"}),
+    ("proportions", {"log_ratio": "none", "prevalence": 0.0}),
+    ("continuous", {"transform": "rank"}),
+    ("continuous", {"transform": "log", "transform_features": "skewed"}),
+]
+
+
+@pytest.mark.parametrize(("kind", "choice"), CHOICES, ids=[f"{kind}-{choice}" for kind, choice in CHOICES])
+@settings(max_examples=30, deadline=None)
+@given(TABLES)
+def test_small_tables_under_other_choices_too(
+    kind: str, choice: dict[str, object], values: np.ndarray
+) -> None:
+    recipe = recipe_for("x", kind, prepare_settings("x", kind, choice))
+    outcome_is_whole_or_told(recipe, table_of(values))
+
+
+@pytest.mark.parametrize("kind", ["intensities", "log"])
+@settings(max_examples=30, deadline=None)
+@given(TABLES, st.integers(0, 9), st.integers(0, 2), st.data())
+def test_small_tables_of_runs_too(kind: str, values: np.ndarray, pools: int, blanks: int, data) -> None:
+    shape = (pools + blanks, values.shape[1])
+    controls = data.draw(arrays(float, shape, elements=CELLS))
+    table = with_runs(table_of(values), pools=pools, blanks=blanks, controls=controls)
+    recipe = recipe_for("x", kind, prepare_settings("x", kind, {"check_values": False, "fewest_pools": 5}))
+    outcome_is_whole_or_told(recipe, table)
+
+
+def outcome_is_whole_or_told(recipe: Recipe, table: MeasuredTable) -> None:
+    try:
+        fitted = recipe.fit(table, smallest_group=None, seed=1)
+    except InputError as error:
+        assert "exclude" in str(error) or "check the block's `values`" in str(error), error  # noqa: PT017
         return
     assert np.isfinite(fitted.prepared.values).all()
     assert np.isfinite(fitted.transform(table.take([0])).values).all()

@@ -114,3 +114,11 @@ def test_negative_intensities_and_empty_samples_are_refused() -> None:
     values[1, 3] = -1.5
     with pytest.raises(InputError, match=r"1 intensities are negative, .* feature 'F3', sample 'S001': -1.5"):
         recipe.fit(table_of(values), smallest_group=5, seed=1)
+
+
+def test_zeros_that_are_amounts_take_no_part_in_the_dilution() -> None:
+    values, dilutions = diluted(7, 20, 300)
+    values[np.random.default_rng(8).random(values.shape) < 0.6] = 0.0
+    factors = Quotients().fit(step_table(values), NO_GROUPS).factors(step_table(values))
+    relative = factors / dilutions
+    assert_allclose(relative / np.median(relative), 1.0, atol=0.15)

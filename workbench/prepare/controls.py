@@ -7,7 +7,8 @@ from typing import ClassVar
 
 import numpy as np
 
-from workbench.prepare.drift import relative_sd
+from workbench.prepare.drift import relative_amounts, relative_sd
+from workbench.prepare.local_lines import medians
 from workbench.prepare.steps import FitContext, KeepFeatures, Settled, keep_features
 from workbench.prepare.tables import Matrix, StepAccount, StepTable
 
@@ -46,7 +47,7 @@ class PoolScatter(Settled):
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:  # noqa: ARG002
         """Return the step; pools alone decide."""
         values = _controls(table, "pool")
-        pools = 2.0**values if self.logged else values
+        pools = relative_amounts(values, self.logged)
         seen = (~np.isnan(pools)).sum(axis=0)
         scatter = np.where(seen >= FEWEST_FOR_SCATTER, relative_sd(pools), np.nan)
         wide = scatter > self.largest
@@ -105,7 +106,7 @@ class BlankFilter(Settled):
             account = StepAccount(self.step, "no blanks in the run sheet: nothing dropped", {"blanks": 0})
             return KeepFeatures(keep, account)
         empty = np.median(np.nan_to_num(blanks), axis=0)
-        strong = _medians(table.values)
+        strong = medians(table.values)
         explained = (empty > 0) & ~(strong >= self.ratio * empty)
         reasons = {
             table.features[i]: f"{strong[i] / empty[i]:.2g} times as strong in samples as in blanks; "
@@ -120,11 +121,6 @@ def _controls(table: StepTable, role: str) -> Matrix:
     if table.controls is None:
         return np.empty((0, len(table.features)))
     return table.controls.values[table.controls.rows_as(role)]
-
-
-def _medians(values: Matrix) -> Matrix:
-    """Return each column's median over what is not NaN (every column has a value)."""
-    return np.nanmedian(values, axis=0)
 
 
 def _with_numbers(

@@ -25,7 +25,7 @@ from workbench.prepare.drift_courses import (
     Courses,
     choose_courses,
 )
-from workbench.prepare.local_lines import read_off
+from workbench.prepare.local_lines import medians, read_off
 from workbench.prepare.runs import Runs, RunTable
 from workbench.prepare.steps import FitContext, Settled
 from workbench.prepare.tables import Matrix, StepAccount, StepTable, some
@@ -33,6 +33,7 @@ from workbench.prepare.tables import Matrix, StepAccount, StepTable, some
 DUNN = "Dunn et al. 2011, Nature Protocols 6:1060; Cleveland 1979, JASA 74:829"
 FEWEST_POOLS = 6
 SPAN = 0.75
+LARGEST_EXPONENT = 500.0
 
 
 @dataclass(frozen=True)
@@ -128,7 +129,9 @@ class FittedDrift:
     def _account(self, table: StepTable, controls: RunTable, removed: Matrix) -> StepAccount:
         kinds, runs = self.courses.kinds, table.runs
         assert runs is not None
-        before, after = (_relative_sd(part, self.settings.logged) for part in self._pool_values(controls))
+        before, after = (
+            relative_sd(relative_amounts(part, self.settings.logged)) for part in self._pool_values(controls)
+        )
         corrected = kinds != NONE
         numbers: dict[str, float | int | str] = {
             "pools": len(self.pools.runs),
@@ -138,9 +141,9 @@ class FittedDrift:
             "features_left_alone": int((kinds == NONE).sum()),
             "runs_outside_pools": self._outside(runs),
             "runs_left_alone": self._alone(runs),
-            **_medians("pool_scatter_before", before[corrected]),
-            **_medians("pool_scatter_after", after[corrected]),
-            **_medians(
+            **_typical("pool_scatter_before", before[corrected]),
+            **_typical("pool_scatter_after", after[corrected]),
+            **_typical(
                 "drift_range_log2", np.ptp(removed[:, corrected], axis=0) if removed.size else np.empty(0)
             ),
         }
@@ -224,9 +227,15 @@ def _logs(values: Matrix, logged: bool) -> Matrix:
     return np.where(positive, np.log2(values, where=positive, out=np.zeros_like(values)), np.nan)
 
 
-def _relative_sd(values: Matrix, logged: bool) -> Matrix:
-    """Return each feature's standard deviation over its mean, over the pools that have it; NaN for fewer than two."""
-    return relative_sd(2.0**values if logged else values)
+def relative_amounts(values: Matrix, logged: bool) -> Matrix:
+    """Return amounts up to a factor of each feature's own: from log2 values less their median (within 2^-+500).
+
+    >>> relative_amounts(np.array([[5000.0], [5001.0], [5002.0]]), logged=True).ravel().tolist()
+    [0.5, 1.0, 2.0]
+    """
+    if not logged:
+        return values
+    return np.exp2(np.clip(values - medians(values), -LARGEST_EXPONENT, LARGEST_EXPONENT))
 
 
 def relative_sd(values: Matrix) -> Matrix:
@@ -246,6 +255,6 @@ def relative_sd(values: Matrix) -> Matrix:
     return ratio
 
 
-def _medians(name: str, values: NDArray[np.float64]) -> dict[str, float]:
+def _typical(name: str, values: NDArray[np.float64]) -> dict[str, float]:
     known = values[~np.isnan(values)]
     return {f"median_{name}": float(np.median(known))} if known.size else {}

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.prepare.local_lines import local_lines, read_off
+from workbench.prepare.local_lines import local_lines, medians, read_off
 from workbench.prepare.tables import Mask, Matrix
 from workbench.prepare.words import some
 
@@ -84,7 +84,7 @@ def choose_courses(batches: tuple[BatchPools, ...], fewest: int, span: float) ->
     curved = tuple(batch for batch in usable if len(batch.names) >= fewest)
     if not (several or curved):
         return _nothing(batches, p, fewest)
-    centre = _medians(np.vstack([batch.logs for batch in usable]))
+    centre = medians(np.vstack([batch.logs for batch in usable]))
     candidates = [_candidates(batch, usable, fewest, span, several) for batch in usable]
     kinds = _choose(
         np.sum([c.errors for c in candidates], axis=0), np.any([c.may_curve for c in candidates], axis=0)
@@ -120,7 +120,7 @@ def _candidates(
     for fold in _folds(n):
         rest = np.setdiff1d(np.arange(n), fold)
         kept = BatchPools(batch.batch, (), batch.x[rest], batch.logs[rest])
-        centre = _medians(np.vstack([kept.logs, *others]))
+        centre = medians(np.vstack([kept.logs, *others]))
         courses = _courses(kept, centre, min(fewest, len(rest)), span, several, may_curve)
         for kind in (NONE, LEVEL, CURVE):
             taken = read_off(kept.x, courses[kind], batch.x[fold])
@@ -143,7 +143,7 @@ def _courses(
     courses = np.zeros((3, n, p))
     seen = (~np.isnan(batch.logs)).sum(axis=0)
     if several:
-        levels = np.where(seen >= min(FEWEST_FOR_LEVEL, n), _medians(batch.logs) - centre, 0.0)
+        levels = np.where(seen >= min(FEWEST_FOR_LEVEL, n), medians(batch.logs) - centre, 0.0)
         courses[LEVEL:] = np.nan_to_num(levels)
     curve = _may_curve(batch.logs, fewest) if may_curve is None else may_curve & (seen > 0)
     if n >= fewest and curve.any():
@@ -170,16 +170,6 @@ def _pick(kinds: NDArray[np.int_], courses: Matrix, may_curve: Mask) -> Matrix:
     here = np.where((kinds == CURVE) & ~may_curve, LEVEL, kinds)
     picked: Matrix = np.take_along_axis(courses, here[None, None, :], axis=0)[0]
     return picked
-
-
-def _medians(values: Matrix) -> Matrix:
-    """Return each column's median over what is not NaN; NaN without any."""
-    if not np.isnan(values).any():
-        return np.median(values, axis=0)
-    ordered, count = np.sort(values, axis=0), (~np.isnan(values)).sum(axis=0)
-    column, last = np.arange(values.shape[1]), np.maximum(count - 1, 0)
-    middle: Matrix = (ordered[last // 2, column] + ordered[np.minimum(count // 2, last), column]) / 2.0
-    return middle
 
 
 def _nothing(batches: tuple[BatchPools, ...], p: int, fewest: int) -> Courses:

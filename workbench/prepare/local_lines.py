@@ -93,24 +93,30 @@ def _weighted_lines(x: Matrix, y: Matrix, kernel: Matrix, trust: Matrix) -> Matr
     flat = spread <= (NO_SLOPE * max(float(np.ptp(x)), np.finfo(float).tiny)) ** 2
     slope = np.divide(joint, spread, out=np.zeros_like(joint), where=~flat)
     fitted: Matrix = mean_y + slope * (x[:, None] - mean_x)
-    return np.where(empty, _medians(np.where(trust > 0, y, np.nan)), fitted)
+    return np.where(empty, np.nan_to_num(medians(np.where(trust > 0, y, np.nan))), fitted)
 
 
 def _bisquare(residuals: Matrix) -> Matrix:
     """Return (1 - u^2)^2 with u the residual in units of six medians (of 1e-9 at least), 0 for NaN."""
-    relative = residuals / np.maximum(BISQUARE * _medians(residuals), SMALLEST_SCALE)
+    relative = residuals / np.maximum(BISQUARE * np.nan_to_num(medians(residuals)), SMALLEST_SCALE)
     weights: Matrix = np.where(relative < 1.0, (1.0 - np.minimum(relative, 1.0) ** 2) ** 2, 0.0)
     return np.where(np.isnan(residuals), 0.0, weights)
 
 
-def _medians(values: Matrix) -> Matrix:
-    """Return each column's median over what is not NaN, 0 without any."""
+def medians(values: Matrix) -> Matrix:
+    """Return each column's median over what is not NaN; NaN without any, and no warning.
+
+    >>> medians(np.array([[1.0, np.nan], [4.0, np.nan]])).tolist()
+    [2.5, nan]
+    """
+    if not len(values):
+        return np.full(values.shape[1], np.nan)
     if not np.isnan(values).any():
         return np.median(values, axis=0)
     ordered, count = np.sort(values, axis=0), (~np.isnan(values)).sum(axis=0)
     column, last = np.arange(values.shape[1]), np.maximum(count - 1, 0)
-    middle = (ordered[last // 2, column] + ordered[np.minimum(count // 2, last), column]) / 2.0
-    return np.where(count > 0, middle, 0.0)
+    middle: Matrix = (ordered[last // 2, column] + ordered[np.minimum(count // 2, last), column]) / 2.0
+    return middle
 
 
 def _held(fitted: Matrix, seen: np.ndarray) -> Matrix:

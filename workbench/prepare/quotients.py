@@ -31,13 +31,13 @@ DIETERLE = "Dieterle et al. 2006, Analytical Chemistry 78:4281"
 def reference_profile(intensities: Matrix) -> Matrix:
     """Return the reference: the median over samples after each is brought to the same total.
 
-    Totals are sums over the features that the sample has; the profile is on the scale of the sample
-    with the median total.
+    Totals are sums over the features that the sample has, medians over what is above zero; the profile is on the
+    scale of the sample with the median total.
     """
     totals = np.nansum(intensities, axis=1, keepdims=True)
     usable = totals[:, 0] > 0
     shares = intensities[usable] / totals[usable]
-    return median_rows(shares.T, ~np.isnan(shares.T)) * float(np.median(totals[usable]))
+    return median_rows(shares.T, shares.T > 0) * float(np.median(totals[usable]))
 
 
 def median_quotients(intensities: Matrix, reference: Matrix) -> Matrix:
@@ -46,7 +46,7 @@ def median_quotients(intensities: Matrix, reference: Matrix) -> Matrix:
     Parameters
     ----------
     intensities : ndarray of shape (n_samples, n_features)
-        NaN takes no part.
+        Zero and NaN take no part.
     reference : ndarray of shape (n_features,)
         From :func:`reference_profile` of the training samples.
 
@@ -68,7 +68,7 @@ def median_quotients(intensities: Matrix, reference: Matrix) -> Matrix:
     [1.0, 0.5]
     """
     quotients = intensities / reference
-    return median_rows(quotients, ~np.isnan(quotients))
+    return median_rows(quotients, quotients > 0)
 
 
 @dataclass(frozen=True)
@@ -92,7 +92,7 @@ class Quotients(Settled):
 
     def fit(self, table: StepTable, context: FitContext) -> FittedQuotients:  # noqa: ARG002
         """Return the step with its reference."""
-        seen = (~np.isnan(table.values)).sum(axis=0)
+        seen = (table.values > 0).sum(axis=0)
         used, cut = reference_features(seen, self.enough, self.fewest)
         reference = reference_profile(table.values[:, used]) if used.any() else np.empty(0)
         usual = Usual(0.0, np.inf)
