@@ -2,9 +2,9 @@
 
 from .annotations import read_annotations
 from .block import BlockBuild, build_block
+from .block_changes import BlockDifference, difference
 from .combine import block_design_columns, with_run_columns
 from .design import Design, Groups, design_columns, group_codes, missing_samples
-from .difference import BlockDifference, SheetDifference, difference, sheet_difference
 from .identifiers import (
     IdentifierColumn,
     IdentifierFault,
@@ -21,6 +21,7 @@ from .raw import RawTable
 from .readers import read_delivered
 from .runs import RunSheet, read_run_sheet, run_columns, run_columns_of
 from .sheet import SampleSheet, Suggestions, column_kind, read_sample_sheet, suggest_columns
+from .sheet_changes import SheetDifference, sheet_difference
 from .table import DeliveredTable, delivered_table
 
 __all__ = [

@@ -62,27 +62,32 @@ def measured(settings: BlockSettings, root: Path, sample_ids: Sequence[str]) -> 
     InputError
         When a file cannot be used as it is.
     """
-    chain = owners(settings.swap, sample_ids)
-    if settings.runs is None:
-        names = _accepted(settings, root, sample_ids, None)
-        table = _table(settings, root, sample_ids, names.samples, SAMPLES)
-        rows = table.values.rename(index=chain)
-        values = rows.loc[[name for name in sample_ids if name in rows.index]]
-        return Measured(values, table, None, None, ())
-    path = root / settings.runs
+    owner = owners(settings.swap, sample_ids)
+    if settings.runs is not None:
+        return _measured_runs(settings, root, root / settings.runs, sample_ids, owner)
+    names = _accepted(settings, root, sample_ids, None)
+    table = _table(settings, root, sample_ids, names.samples, SAMPLES)
+    rows = table.values.rename(index=owner)
+    return Measured(rows.loc[[name for name in sample_ids if name in rows.index]], table, None, None, ())
+
+
+def _measured_runs(
+    settings: BlockSettings, root: Path, path: Path, sample_ids: Sequence[str], owner: Mapping[str, str]
+) -> Measured:
+    """Return the values of a table of runs, combined by sample; ``path`` is that of the run sheet."""
     names = _accepted(settings, root, sample_ids, path)
     sheet = read_run_sheet(path, sample_ids, names.samples)
     table = _table(settings, root, list(sheet.frame.index), names.runs, RUNS)
     runs = sheet.frame.loc[list(table.matched)]
-    runs = runs.assign(sample=runs["sample"].replace(chain))
+    runs = runs.assign(sample=[owner.get(name, name) for name in runs["sample"]])
     own = runs.loc[runs["role"] == "sample", "sample"]
-    samples = [name for name in sample_ids if name in set(own)]
-    if not samples:
+    if own.empty:
         raise InputError(
             f"{table_path(settings, root)}: none of its runs is of a sample: {listed(list(runs.index), 3)} are pools "
             "and blanks; the runs of samples must have the same names in the table and in the run sheet"
         )
-    total = settings.values == "counts"
+    held, total = set(own), settings.values == "counts"
+    samples = [name for name in sample_ids if name in held]
     values = combined_runs(table.values.loc[own.index], own, samples, total=total)
     lines = (*sheet.notes, *_several_runs(path.name, own, total))
     return Measured(values, table, runs, table.values.to_numpy(dtype=np.float64), lines)

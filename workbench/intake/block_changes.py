@@ -1,61 +1,20 @@
-"""What would change if a delivered table or a sample sheet were replaced by another."""
+"""What would change if a delivered table were replaced by another."""
 
 from __future__ import annotations
 
 import json
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 import numpy as np
 import pandas as pd
 
 from .faults import counted, listed, shown
-from .kinds import present
+from .sides import Sides, sides
 
 if TYPE_CHECKING:
     import anndata
-
-
-@dataclass(frozen=True)
-class Sides:
-    """Names of one kind that one side alone has, and how many both have.
-
-    Attributes
-    ----------
-    gained, lost
-        Names that the new side alone has, and the old one alone, each in its own order.
-    kept
-        Number of names of both.
-    """
-
-    gained: tuple[str, ...]
-    lost: tuple[str, ...]
-    kept: int
-
-    def line(self, noun: str) -> str:
-        """Return a sentence: ``samples: 2 gained ('S7', 'S8'), 1 lost ('S1'), 40 kept``."""
-        parts = [
-            f"{len(names):,} {what} ({listed(names, 5)})"
-            for names, what in ((self.gained, "gained"), (self.lost, "lost"))
-            if names
-        ]
-        return f"{noun}s: {', '.join([*parts, f'{self.kept:,} kept'])}"
-
-    @property
-    def same(self) -> bool:
-        """Whether both sides have the same names."""
-        return not (self.gained or self.lost)
-
-
-def _sides(old: Sequence[Any], new: Sequence[Any]) -> Sides:
-    before, after = list(map(str, old)), list(map(str, new))
-    here, there = set(before), set(after)
-    return Sides(
-        tuple(name for name in after if name not in here),
-        tuple(name for name in before if name not in there),
-        len(here & there),
-    )
 
 
 @dataclass(frozen=True)
@@ -156,7 +115,7 @@ def difference(old: anndata.AnnData, new: anndata.AnnData) -> BlockDifference:
     Samples and features are matched by name, whatever their order; values are compared exactly, the texts of
     mixed blocks as texts and not by their codes.
     """
-    samples, features = _sides(old.obs_names, new.obs_names), _sides(old.var_names, new.var_names)
+    samples, features = sides(old.obs_names, new.obs_names), sides(old.var_names, new.var_names)
     rows, shared = _shared(old.obs_names, new.obs_names), _shared(old.var_names, new.var_names)
     text_before, text_now = _text_features(old), _text_features(new)
     retyped = tuple(name for name in shared if (name in text_before) != (name in text_now))
@@ -258,7 +217,7 @@ def _written(var: pd.DataFrame, features: Sequence[str], columns: Sequence[str])
 
 def _runs(old: anndata.AnnData, new: anndata.AnnData) -> Sides | None:
     names = [list(adata.uns["run_sheet"].index) if "run_sheet" in adata.uns else [] for adata in (old, new)]
-    return _sides(*names) if any(names) else None
+    return sides(*names) if any(names) else None
 
 
 def _declared(old: anndata.AnnData, new: anndata.AnnData) -> list[str]:
@@ -268,64 +227,3 @@ def _declared(old: anndata.AnnData, new: anndata.AnnData) -> list[str]:
         for key in ("layer", "values")
         if before.get(key) != after.get(key)
     ]
-
-
-@dataclass(frozen=True)
-class SheetDifference:
-    """What is different between two sample sheets.
-
-    Attributes
-    ----------
-    samples, columns
-        What each side has alone.
-    changed
-        For each column of both, the samples whose cells differ, where there are some.
-    examples
-        For these columns, the first such cell: before and now, empty where missing.
-    reordered
-        Whether samples of both stand in another order.
-    """
-
-    samples: Sides
-    columns: Sides
-    changed: dict[str, tuple[str, ...]]
-    examples: dict[str, tuple[str, str]]
-    reordered: bool
-
-    @property
-    def same(self) -> bool:
-        """Whether nothing is different."""
-        return self.samples.same and self.columns.same and not self.changed and not self.reordered
-
-    def lines(self) -> tuple[str, ...]:
-        """Return sentences for a person who is about to replace a sample sheet."""
-        if self.same:
-            return ("nothing changes: the sample sheet is the same",)
-        told = [self.samples.line("sample"), self.columns.line("column")]
-        for name, samples in self.changed.items():
-            before, now = (shown(cell) if cell else "missing" for cell in self.examples[name])
-            told.append(
-                f"column {shown(name)}: another value for {counted(len(samples), 'sample')}, "
-                f"{shown(samples[0])} first: {before} before, {now} now"
-            )
-        return (*told, *(["samples stand in another order"] if self.reordered else []))
-
-
-def sheet_difference(old: pd.DataFrame, new: pd.DataFrame) -> SheetDifference:
-    """Return what changes when one sample sheet is replaced by another; both are indexed by sample id.
-
-    Cells are compared as text without blanks at their ends; missing tokens are all the same.
-    """
-    samples = _sides(list(old.index), list(new.index))
-    before, after = (frame.set_axis([str(name) for name in frame.index], axis=0) for frame in (old, new))
-    rows = [name for name in after.index if name in set(before.index)]
-    changed: dict[str, tuple[str, ...]] = {}
-    examples: dict[str, tuple[str, str]] = {}
-    for name in [column for column in new if column in old]:
-        here, there = (present(frame[name]).reindex(rows).fillna("") for frame in (before, after))
-        other = [row for row in rows if here[row] != there[row]]
-        if other:
-            changed[str(name)] = tuple(other)
-            examples[str(name)] = (here[other[0]], there[other[0]])
-    reordered = rows != [name for name in before.index if name in set(rows)]
-    return SheetDifference(samples, _sides(list(old), list(new)), changed, examples, reordered)
