@@ -207,8 +207,7 @@ class _Careful:
 
     def row(self, cells: Sequence[Cell], i: int) -> list[float]:
         row = []
-        for j, cell in zip(self.part.columns, cells, strict=True):
-            number = self._number(cell)
+        for j, cell, number in zip(self.part.columns, cells, self._row_numbers(cells), strict=True):
             if number is None and isinstance(cell, str) and is_under_limit(cell):
                 self.under_limit[self.part.feature_name(i, j)] += 1
                 self.tokens[cell.strip()] = None
@@ -216,6 +215,21 @@ class _Careful:
                 self.wrong.add(i, j, cell)
             row.append(_NAN if number is None else number)
         return row
+
+    def _row_numbers(self, cells: Sequence[Cell]) -> list[float | None]:
+        if not self.marks.plain or not all(isinstance(cell, str) for cell in cells):
+            return [self._number(cell) for cell in cells]
+        line = "".join(map(str, cells))
+        if not line.isascii() or "_" in line:
+            return [self._number(cell) for cell in cells]
+        return [self._plain_number(str(cell)) for cell in cells]
+
+    def _plain_number(self, text: str) -> float | None:
+        """Return the number of an ASCII text without underscores, which ``float`` reads as `number_of` does."""
+        try:
+            return float(text)
+        except ValueError:
+            return self._number(text)
 
     def _number(self, cell: Cell) -> float | None:
         if not isinstance(cell, str):

@@ -80,9 +80,13 @@ def is_padded(text: str) -> bool:
 
 
 def is_comma_number(text: str) -> bool:
-    """Return whether a text is a number written with a decimal comma or with thousands separators."""
+    """Return whether a text is a number only if commas, points or blanks in it are no plain decimal point.
+
+    >>> is_comma_number("1,5"), is_comma_number("1.234.567"), is_comma_number("1.234")
+    (True, True, False)
+    """
     plain = text.strip()
-    return any(p.fullmatch(plain) for p in (_DECIMAL_COMMA, _THOUSANDS, _CONTINENTAL))
+    return number_of(plain) is None and any(p.fullmatch(plain) for p in (_DECIMAL_COMMA, _THOUSANDS, _CONTINENTAL))
 
 
 _WAYS_OUT = {
