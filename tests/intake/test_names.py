@@ -113,6 +113,36 @@ def test_a_disguise_is_seen_through_and_to_the_right_names(names, how, order):
     assert found == truth
 
 
+SHEETS = {
+    "one word": S,
+    "groups": [f"{group}{k}" for group in ("WT", "KO", "HET") for k in range(1, 9)],
+    "patients": [f"Patient_{k}" for k in range(7, 900, 37)],
+    "visits": [f"D{d}_V{v}" for d in range(1, 7) for v in range(1, 5)],
+    "codes": ["AFB-17", "AFC-17", "BBD-94", "CAB-30", "GHE-71", "HAD-55", "HDA-55"],
+    "numbers": [str(k) for k in range(5, 400, 17)],
+}
+WRITTEN = {
+    "one case": lambda name, _: name.lower(),
+    "no marks": lambda name, _: name.replace("_", "").replace("-", ""),
+    "as R does": lambda name, _: ("X" if name[0].isdigit() else "") + name.replace("-", "."),
+    "as a file": lambda name, _: f"20240103_{name.lower()} (1).mzML",
+    "with its lane": lambda name, k: f"{name}_S{k}_L001",
+    "with its injection": lambda name, k: f"{name}_{k:03}",
+}
+
+
+@pytest.mark.parametrize("written", WRITTEN)
+@pytest.mark.parametrize("kind", SHEETS)
+def test_a_table_that_lacks_three_samples_and_has_pools_is_matched_without_a_wrong_name(kind, written):
+    """Names that are numbers cannot be told from a running number behind them: nothing is offered then."""
+    sheet = SHEETS[kind]
+    truth = {WRITTEN[written](name, k): name for k, name in enumerate(sheet[:-3], start=1)}
+    match = match_names([*reversed(truth), "pool_1", "pool_2", "QC3", "blank 1"], sheet)
+    found = {d: s for d, s, _ in match.candidates} | {name: name for name in match.exact}
+    hopeless = kind == "numbers" and written in ("with its lane", "with its injection")
+    assert found == ({} if hopeless else truth)
+
+
 anything = st.lists(st.text(alphabet="aB1_ 0-x.", max_size=5), max_size=12)
 
 
