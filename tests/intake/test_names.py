@@ -189,7 +189,7 @@ def test_candidates_are_refused_and_shown_as_a_table(tmp_path):
         "  's_02'        'S2'          case, spaces or punctuation, zeros before numbers",
         "  'S3 '         'S3'          spaces or punctuation",
     ]
-    assert "say --accept-names: they are written to a table of names" in str(caught.value)
+    assert "say --accept-names to add-block" in str(caught.value)
 
 
 def test_accepted_names_are_used_and_told(tmp_path):

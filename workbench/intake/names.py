@@ -190,7 +190,8 @@ def candidates_offered(path: Path, match: NameMatch, words: Words = SAMPLES) -> 
         f"({len(match.exact):,} stand there under their own):"
     )
     way_out = (
-        "if they are the same, say --accept-names: they are written to a table of names beside the kept file, "
-        "where a wrong row can be taken out; or write the same names in both"
+        "if they are the same, say --accept-names to add-block (and --replace when the block is there already): "
+        "they are written to a table of names in source/, where a wrong row can be taken out; or write the same "
+        "names in both"
     )
     return "\n".join([summary, *candidate_lines(match, words), way_out])
