@@ -5,15 +5,17 @@ from __future__ import annotations
 import gzip
 import io
 import zlib
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
 from workbench.errors import InputError
 
 from .encodings import Encoding, decoder_for, encoding_error, first_encoding, western_encoding
+from .stored_lines import StoredLines, stored_lines
 
 LARGEST_TEXT = 8 * 2**30
+_LARGE = 2**26
 _CHUNK = 2**20
 _FOREIGN = (
     (
@@ -73,7 +75,7 @@ def _first_bytes(path: Path) -> bytes:
 class TextLines:
     """Lines of a text file without their ends, and what was accepted knowingly."""
 
-    lines: list[str]
+    lines: Sequence[str]
     notes: tuple[str, ...]
 
 
@@ -82,7 +84,8 @@ def read_lines(path: Path) -> TextLines:
 
     The text is UTF-8, else UTF-16, else Windows-1252, the latter two only where the bytes leave no doubt, and
     told. Line ends may be ``\\n``, ``\\r\\n`` or ``\\r``; no other character ends a line. A byte-order mark is
-    accepted and told. The file is decoded in pieces, so that it stands in memory once.
+    accepted and told. The lines of a large plain file stay in it until they are asked for; others stand in
+    memory once.
 
     Raises
     ------
@@ -92,6 +95,9 @@ def read_lines(path: Path) -> TextLines:
     """
     notes = [f"{path.name}: compressed with gzip; read as the text inside"] if _is_packed(path) else []
     encoding = first_encoding(_start(path))
+    stored = _stored(path, encoding)
+    if stored is not None:
+        return TextLines(stored, tuple(f"{path.name}: {note}" for note in encoding.notes))
     try:
         text = _split(path, encoding)
     except UnicodeDecodeError:
@@ -100,10 +106,17 @@ def read_lines(path: Path) -> TextLines:
     notes += [f"{path.name}: {note}" for note in (*encoding.notes, *text.notes)]
     lines = text.lines
     while lines and not lines[-1].strip(" "):
-        lines.pop()
+        lines = lines[:-1]
     if not lines:
         raise InputError(f"{path}: the file holds no text; a table needs a header line and rows")
     return TextLines(lines, tuple(notes))
+
+
+def _stored(path: Path, encoding: Encoding) -> StoredLines | None:
+    size = path.stat().st_size
+    if encoding.name != "utf-8" or not _LARGE <= size <= LARGEST_TEXT or _is_packed(path):
+        return None
+    return stored_lines(path, encoding.skipped)
 
 
 def _split(path: Path, encoding: Encoding) -> TextLines:

@@ -65,7 +65,7 @@ def read_text_table(path: Path) -> RawTable:
     )
 
 
-def _without_empty_end(lines: list[str], separator: str) -> tuple[list[str], int]:
+def _without_empty_end(lines: Sequence[str], separator: str) -> tuple[Sequence[str], int]:
     end = len(lines)
     while end and not lines[end - 1].replace(separator, "").strip():
         end -= 1
