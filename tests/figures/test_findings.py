@@ -26,7 +26,7 @@ EVIDENCE = [
     SampleValues(NAMES, np.append(RNG.lognormal(size=18), [np.nan, 0.0]), "depth", (3,), 3.0, log_scale=True),
     SampleValues(NAMES, RNG.random(20), "share", (0, 19), 0.5),
     SamplePlane(NAMES, RNG.normal(size=20), RNG.normal(size=20), ("component 1", "component 2"), (7,)),
-    ScoresByColumn("run $day$", RNG.normal(size=20), np.append(np.arange(19) % 3, np.nan), ("a", "b", "c"), "component"),
+    ScoresByColumn("$day$", RNG.normal(size=20), np.append(np.arange(19) % 3, np.nan), ("a", "b", "c"), "component"),
     ScoresByColumn("order", RNG.normal(size=20), np.arange(20.0), (), "component 1"),
     CrossTable("group", ("control", "treated"), "day", ("1", "2", "3"), np.array([[4, 0, 1], [0, 5, 0]])),
     TwoSamples(("S1", "S2"), RNG.lognormal(5, 2, 50), RNG.lognormal(5, 2, 50), "measured value"),

@@ -15,10 +15,10 @@ FloatArray = NDArray[np.float64]
 FEWEST_SAMPLES = 6
 FEWEST_FEATURES = 10
 SHALLOW_Z = 4.0
-SHALLOW_RATIO = 3.0
+SHALLOW_RATIO = 4.0
 LEAST_LOG_SPREAD = 0.1
 GAPPY_Z = 5.0
-GAPPY_MORE = 0.10
+GAPPY_MORE = 0.15
 LEAST_GAP_SPREAD = 0.01
 MOST_GAPPY, MOST_GAPPY_SHARE = 2, 0.1
 ON_A_SCALE = ("counts", "intensities")
@@ -28,8 +28,8 @@ def check_depth(data: StudyData) -> list[Finding]:
     """Find samples of which nothing, much less, or with many more gaps than of the others was measured.
 
     Error: no value at all (for counts and intensities: nothing above 0). Warning: depth (typical ratio to
-    the other samples) under a third of the median, or over three times it, and four robust spreads away on a log
-    scale; the missing share ten points over the median and five robust spreads above it, unless a tenth of
+    the other samples) under a quarter of the median, or over four times it, and four robust spreads away on a log
+    scale; the missing share 15 points over the median and five robust spreads above it, unless a tenth of
     the samples (and more than two) are as far: gaps of many samples are a pattern, not an odd sample. For counts
     a gap is a feature without a read that most samples have.
     """

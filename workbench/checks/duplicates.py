@@ -93,8 +93,8 @@ def near_pairs(values: FloatArray) -> list[tuple[int, int]]:
 
     A pair counts when its squared distance is at most a quarter of the median distance to the nearest
     neighbour, or of that of each of the two to any third sample; and chance brings none of the pairs so close
-    in 999 of 1000 blocks: chi-squared laws with the effective number of features (sum of the eigenvalues
-    squared over the sum of their squares), of the whole block and of what its components with signal leave.
+    in 999 of 1000 blocks: chi-squared laws with the effective number of features of the whole block, and of
+    what its components with signal leave.
 
     Parameters
     ----------
@@ -123,17 +123,30 @@ def _chance(values: FloatArray, distances: FloatArray) -> FloatArray:
     """Return the chance of a distance as small or smaller, by the law of the whole block or of its noise alone.
 
     The distance in the noise is at most the whole distance, so that its law bounds the chance from above; the
-    law of the whole block covers blocks in which most samples have a copy and nothing is left as noise.
+    law of the whole block covers blocks in which most samples have a copy and nothing is left as noise. With
+    fewer features than samples neither law is exact, and the larger chance counts.
     """
+    n, p = values.shape
     basis = thin_basis(values)
     squares = basis.lengths**2
-    chances = []
-    for part in (squares, squares[signal_components(basis).number :]):
-        if part.size:
-            effective = float(part.sum() ** 2 / np.sum(part**2))
-            mean = 2.0 * float(part.sum()) / values.shape[0]
-            chances.append(chi2.cdf(distances / mean * effective, effective))
-    return np.asarray(np.minimum.reduce(chances), dtype=np.float64)
+    signal = signal_components(basis)
+    rest = squares[signal.number :]
+    whole = _chance_under(distances, squares.sum() / (n - 1), _evenly_spread(squares))
+    if not rest.size:
+        return whole
+    if p < n:
+        return np.maximum(whole, _chance_under(distances, rest.sum() / (n - 1), _evenly_spread(rest)))
+    return np.minimum(whole, _chance_under(distances, rest.mean(), signal.effective_features))
+
+
+def _evenly_spread(eigenvalues: FloatArray) -> float:
+    """Return how many equal eigenvalues would be as unequal as these: their sum squared over the sum of squares."""
+    return float(eigenvalues.sum() ** 2 / np.sum(eigenvalues**2))
+
+
+def _chance_under(distances: FloatArray, variance: float, effective: float) -> FloatArray:
+    """Return the chance of squared distances whose mean is twice the variance of a sample, under chi-squared."""
+    return np.asarray(chi2.cdf(distances / (2.0 * variance) * effective, effective), dtype=np.float64)
 
 
 def same_share(measured: FloatArray, i: int, j: int) -> float:
