@@ -12,6 +12,7 @@ import pandas as pd
 
 from workbench.errors import InputError
 from workbench.network import read_graphml
+from workbench.prepare import explain_lines
 from workbench.store import (
     FileFault,
     ProjectPaths,
@@ -24,8 +25,10 @@ from workbench.store import (
 )
 from workbench.workflow import blocks as workflow_blocks
 from workbench.workflow import plan
+from workbench.workflow.blocks import Tell, no_words
 from workbench.workflow.checking import stored_findings
 from workbench.workflow.create import DEFAULT_TEMPLATE, create_project
+from workbench.workflow.preparing import account_of
 from workbench.workflow.reporting import SILENT, Reporter
 from workbench.workflow.samples import SheetAccount, SheetDelivery, add_samples
 from workbench.workflow.stages import Outcome, Standing, run_stages, standings
@@ -156,9 +159,12 @@ class Project:
         id: str | None = None,
         group: Sequence[str] = (),
         adjust: Sequence[str] = (),
+        replace: bool = False,
+        tell: Tell = no_words,
     ) -> SheetAccount:
-        """Import the sample sheet."""
-        return add_samples(self.paths, SheetDelivery(Path(file), id, _names(group), _names(adjust)))
+        """Import the sample sheet; ``tell`` hears what a replaced one changes."""
+        delivery = SheetDelivery(Path(file), id, _names(group), _names(adjust), replace)
+        return add_samples(self.paths, delivery, tell)
 
     def add_block(
         self,
@@ -169,9 +175,13 @@ class Project:
         values: str,
         samples_in: str | None = None,
         annotations: str | Path | None = None,
+        runs: str | Path | None = None,
         sheet: str | None = None,
         array: str | None = None,
         adjust: Sequence[str] = (),
+        accept_names: bool = False,
+        replace: bool = False,
+        tell: Tell = no_words,
     ) -> tuple[str, ...]:
         """Bring a delivered table in as a block; return what was understood of it."""
         delivery = workflow_blocks.Delivery(
@@ -181,11 +191,14 @@ class Project:
             values=values,
             samples_in=samples_in,
             annotations=None if annotations is None else Path(annotations),
+            runs=None if runs is None else Path(runs),
             sheet=sheet,
             array=array,
             adjust=_names(adjust),
+            accept_names=accept_names,
+            replace=replace,
         )
-        return workflow_blocks.add_block(self.paths, delivery)
+        return workflow_blocks.add_block(self.paths, delivery, tell)
 
     def remove_block(self, name: str) -> None:
         """Take a block out of the project; its source stays."""
@@ -205,6 +218,11 @@ class Project:
     def prepare(self, *blocks: str, reporter: Reporter = SILENT) -> Outcome:
         """Run the recipes of the named blocks, or of all."""
         return run_stages(self.paths, "prepare", lambda state: plan.block_stages(state, blocks), reporter)
+
+    def explain(self, block: str) -> tuple[str, ...]:
+        """Return a block's recipe step by step: what it did, why, its numbers, how to change it."""
+        self.prepare(block)
+        return explain_lines(account_of(self.state(), block), block)
 
     def look(self, *blocks: str, reporter: Reporter = SILENT) -> Outcome:
         """Look at the named blocks, or at all of them and between them."""

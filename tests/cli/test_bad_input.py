@@ -121,7 +121,8 @@ def test_group_and_nuisance_that_say_the_same_are_named(command, made):
     lines = [line + "\t" + ("day" if at == 0 else line.split("\t")[place]) for at, line in enumerate(sheet)]
     (made / "samples.tsv").write_text("\n".join(lines) + "\n")
     edit(made, 'adjust = ["run_day"]', 'adjust = ["day"]')
-    code, _, err = command("run", "--project", made)
+    assert command("run", "--project", made)[0] == 1
+    code, _, err = command("network", "--project", made)
     assert code == 2
     assert "group" in err
     assert "day" in err

@@ -6,7 +6,7 @@ import pytest
 
 from workbench import Project
 
-LOOKS = ["look:rna", "look:lcms", "look:between-blocks"]
+LOOKS = ["check:data", "look:rna", "look:lcms", "look:between-blocks"]
 ENGINE = ["integrate:main", "network:main"]
 STAGES = ["read:rna", "read:lcms", "prepare:rna", "prepare:lcms", *LOOKS, *ENGINE]
 

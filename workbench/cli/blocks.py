@@ -9,7 +9,7 @@ from typing import Annotated
 import typer
 
 from workbench.cli.console import answer, tell_next
-from workbench.cli.options import AdjustOption, ProjectOption, QuietOption, open_project
+from workbench.cli.options import AdjustOption, ProjectOption, QuietOption, ReplaceOption, open_project
 
 NameArgument = Annotated[
     str, typer.Argument(metavar="NAME", help="Name of the block: letters, digits, _ and -.")
@@ -36,7 +36,10 @@ def add_block(
         ),
     ],
     values: Annotated[
-        str, typer.Option(metavar="VALUES", help="counts, intensities, log, continuous or mixed.")
+        str,
+        typer.Option(
+            metavar="VALUES", help="counts, intensities, log, proportions, beta, continuous or mixed."
+        ),
     ],
     samples_in: Annotated[
         str | None,
@@ -45,9 +48,17 @@ def add_block(
     annotations: Annotated[
         Path | None, typer.Option(metavar="FILE", help="Table of feature ids and identifier columns.")
     ] = None,
+    runs: Annotated[
+        Path | None,
+        typer.Option(metavar="FILE", help="Run sheet: run, sample, role (sample|pool|blank), order, batch."),
+    ] = None,
     sheet: Annotated[str | None, typer.Option(metavar="NAME", help="Sheet of an XLSX file.")] = None,
     array: Annotated[str | None, typer.Option(metavar="NAME", help="X or a layer of an .h5ad file.")] = None,
     adjust: AdjustOption = None,
+    accept_names: Annotated[
+        bool, typer.Option("--accept-names", help="Use the names that nearly match, as they were offered.")
+    ] = False,
+    replace: ReplaceOption = False,
     project: ProjectOption = None,
     quiet: QuietOption = False,
 ) -> None:
@@ -63,6 +74,10 @@ def add_block(
         sheet=sheet,
         array=array,
         adjust=adjust or (),
+        runs=runs,
+        accept_names=accept_names,
+        replace=replace,
+        tell=answer,
     )
     answer(lines)
     tell_next(opened.status().next_command, quiet=quiet)

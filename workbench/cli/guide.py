@@ -9,6 +9,17 @@ import typer
 
 from workbench.cli.console import answer
 
+KINDS = (
+    ("transcripts", "counts"),
+    ("microbes", "counts"),
+    ("metabolites", "intensities"),
+    ("proteins", "log"),
+    ("microbes", "proportions"),
+    ("methylation", "beta"),
+    ("clinical", "continuous"),
+    ("clinical", "mixed"),
+)
+
 
 def register(app: typer.Typer) -> None:
     """Add the command to the program."""
@@ -19,7 +30,23 @@ def pages() -> dict[str, str]:
     """Return the handbook's pages by topic."""
     folder = files("workbench") / "guide"
     found = {page.name.removesuffix(".md"): page for page in folder.iterdir() if page.name.endswith(".md")}
-    return {topic: found[topic].read_text("utf-8") for topic in sorted(found)}
+    texts = {topic: found[topic].read_text("utf-8") for topic in sorted(found)}
+    texts["prepare"] += preparation_keys()
+    return texts
+
+
+def preparation_keys() -> str:
+    """Return the choices of the preparation by kind of values, from the schema that accepts them."""
+    from workbench.settings import prepare_keys
+
+    parts = []
+    for layer, values in KINDS:
+        rows = [
+            f"- `{one.key}` = {one.default} ({one.allowed}): {one.reason}"
+            for one in prepare_keys(layer, values)
+        ]
+        parts.append("\n".join([f"## values = {values}, layer {layer}", "", *rows, ""]))
+    return "\n".join(parts)
 
 
 def guide(

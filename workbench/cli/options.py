@@ -22,6 +22,9 @@ AdjustOption = Annotated[
         "--adjust", metavar="COLUMN", help="Nuisance column of the sample sheet (repeat for several)."
     ),
 ]
+ReplaceOption = Annotated[
+    bool, typer.Option("--replace", help="Put it in the place of what is there; what changes is shown first.")
+]
 AnalysesArgument = Annotated[
     list[str] | None, typer.Argument(metavar="[ANALYSIS]...", help="Analyses; default: all.")
 ]

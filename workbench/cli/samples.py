@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Annotated
 import typer
 
 from workbench.cli.console import answer, tell, tell_next
-from workbench.cli.options import AdjustOption, ProjectOption, QuietOption, open_project
+from workbench.cli.options import AdjustOption, ProjectOption, QuietOption, ReplaceOption, open_project
 
 if TYPE_CHECKING:
     from workbench.workflow.samples import SheetAccount
@@ -34,12 +34,15 @@ def add_samples(
         ),
     ] = None,
     adjust: AdjustOption = None,
+    replace: ReplaceOption = False,
     project: ProjectOption = None,
     quiet: QuietOption = False,
 ) -> None:
     """Import the sample sheet: one row per biological sample."""
     opened = open_project(project)
-    account = opened.add_samples(file, id=id_column, group=group or (), adjust=adjust or ())
+    account = opened.add_samples(
+        file, id=id_column, group=group or (), adjust=adjust or (), replace=replace, tell=answer
+    )
     answer([f"{account.samples} samples in {opened.paths.samples}"])
     for line in _told(account):
         tell(line, quiet=quiet)

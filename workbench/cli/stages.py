@@ -27,12 +27,19 @@ def prepare(
     blocks: Annotated[
         list[str] | None, typer.Argument(metavar="[NAME]...", help="Blocks; default: all.")
     ] = None,
+    explain: Annotated[
+        bool, typer.Option("--explain", help="Say step by step what was done, why, and how to change it.")
+    ] = False,
     project: ProjectOption = None,
     quiet: QuietOption = False,
 ) -> None:
     """Run each block's recipe: from measured values to values fit for linear methods."""
     opened = open_project(project)
-    _close(opened, opened.prepare(*(blocks or ()), reporter=terminal_reporter(quiet)), quiet)
+    outcome = opened.prepare(*(blocks or ()), reporter=terminal_reporter(quiet or explain))
+    if explain:
+        for name in blocks or list(opened.state().settings.blocks):
+            answer([f"block {name}", *opened.explain(name), ""])
+    _close(opened, outcome, quiet)
 
 
 def look(

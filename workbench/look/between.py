@@ -119,6 +119,8 @@ def _look_at_pair(
 ) -> PairLook:
     """Agreement of two blocks; what cannot be computed is said, not raised."""
     theirs = set(b.samples)
+    if restriction is not None:
+        theirs &= set(restriction.samples)
     shared = [sample for sample in a.samples if sample in theirs]
     if not shared:
         return PairLook(a.name, b.name, 0, None, "no sample in common")

@@ -11,7 +11,7 @@ from workbench.errors import BusyError, DamageError, InputError
 from workbench.store.files import sha256_of
 from workbench.store.journal import source_hashes
 from workbench.store.manifest import read_manifest
-from workbench.store.paths import DERIVED_FOLDERS, PERSONS_FILES, ProjectPaths
+from workbench.store.paths import DERIVED_FOLDERS, ProjectPaths, is_persons
 from workbench.store.pending import change_under_way
 
 __all__ = ["FileFault", "check_all", "check_file", "is_derived", "sha256_of", "sha256_of_bytes"]
@@ -82,7 +82,7 @@ def check_file(root: Path, relative: str) -> Path:
         When another command is just replacing the file, or was stopped while it did.
     """
     path = ProjectPaths(root).root / relative
-    if relative in PERSONS_FILES:
+    if is_persons(relative):
         return path
     expected = _recorded(root, relative)
     fault = _fault_of(root, relative, expected)
@@ -106,7 +106,7 @@ def check_all(root: Path) -> list[FileFault]:
     faults = []
     for relative, expected in sorted(recorded.items()):
         gone = not (root / relative).exists()
-        if relative in PERSONS_FILES or (gone and is_derived(relative)):
+        if is_persons(relative) or (gone and is_derived(relative)):
             continue
         fault = _fault_of(root, relative, expected)
         if fault is not None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from dataclasses import dataclass
 from pathlib import Path, PurePosixPath
 
@@ -13,13 +14,26 @@ JOURNAL_NAME = "journal.jsonl"
 HIDDEN_NAME = ".workbench"
 
 PERSONS_FILES = (SETTINGS_NAME, SAMPLES_NAME)
-"""Files that a person edits: a change in them is an edit, never damage."""
+"""Files at the top that a person edits."""
+
+_NAMES_FILE = re.compile(r"source/[A-Za-z0-9_-]+_names\.tsv")
 
 DERIVED_FOLDERS = ("blocks", "prepared", "results")
 """Folders whose files can be made again; one that is missing is stale, not damaged."""
 
 FOLDERS = ("source", *DERIVED_FOLDERS)
 """All folders that the program writes to, besides the project's root."""
+
+
+def is_persons(relative: str) -> bool:
+    """Return whether a person edits the file: a change in it is an edit, never damage.
+
+    Examples
+    --------
+    >>> is_persons("project.toml"), is_persons("source/lcms_names.tsv"), is_persons("source/counts.tsv")
+    (True, True, False)
+    """
+    return relative in PERSONS_FILES or _NAMES_FILE.fullmatch(relative) is not None
 
 
 @dataclass(frozen=True)

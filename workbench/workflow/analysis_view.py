@@ -12,8 +12,9 @@ from numpy.typing import NDArray
 
 from workbench.engine import aliased
 from workbench.errors import InputError
-from workbench.intake import Groups, design_columns, group_codes, missing_samples
+from workbench.intake import Groups, design_columns, group_codes
 from workbench.settings import AnalysisSettings, Settings
+from workbench.workflow.design_frame import DesignFrame, design_frame
 from workbench.workflow.loaded_block import LoadedBlock, load_block
 from workbench.workflow.state import ProjectState
 
@@ -82,16 +83,11 @@ class AnalysisView:
 
         Raises `InputError` when columns of the design say the same, or leave too few degrees of freedom.
         """
+        found = self.design(names)
         lacking = self.lacking_design(names)
-        every = [set(self.blocks[name].samples) for name in names]
-        samples = [
-            sample
-            for sample in self.sheet.index
-            if sample not in lacking and all(sample in one for one in every)
-        ]
-        frame = self.sheet.loc[samples]
-        columns = self.adjust_columns(names)
-        design = design_columns(frame, columns, self.study.samples.kinds)
+        samples = [sample for sample in self.held_by_all(names) if sample not in lacking]
+        frame = found.frame.loc[samples]
+        design = design_columns(frame, found.columns, found.kinds)
         groups = group_codes(frame, self.factors, self.study.samples.order) if self.factors else None
         shared = Shared(
             tuple(samples),
@@ -103,12 +99,14 @@ class AnalysisView:
         self._require_usable(shared, names)
         return shared
 
-    def adjust_columns(self, names: Sequence[str]) -> list[str]:
-        """Return the nuisance columns of the study and of the named blocks, each once."""
-        wanted = list(self.study.samples.adjust)
-        for name in names:
-            wanted += self.blocks[name].settings.adjust
-        return list(dict.fromkeys(wanted))
+    def design(self, names: Sequence[str]) -> DesignFrame:
+        """Return the nuisance columns of the study and of the named blocks."""
+        return design_frame(self.sheet, self.study, [self.blocks[name] for name in names])
+
+    def held_by_all(self, names: Sequence[str]) -> list[str]:
+        """Return the samples that all named blocks have, in sheet order."""
+        every = [set(self.blocks[name].samples) for name in names]
+        return [str(sample) for sample in self.sheet.index if all(sample in one for one in every)]
 
     @property
     def factors(self) -> list[str]:
@@ -117,12 +115,7 @@ class AnalysisView:
 
     def lacking_design(self, names: Sequence[str]) -> dict[str, str]:
         """Return the samples with an empty cell in a used design column, with the reason."""
-        lacking = missing_samples(self.sheet, [*self.factors, *self.adjust_columns(names)])
-        return {
-            sample: f"no value in column '{column}' of the sample sheet"
-            for column, samples in lacking.items()
-            for sample in samples
-        }
+        return self.design(names).lacking(self.factors, self.held_by_all(names))
 
     def _require_usable(self, shared: Shared, names: Sequence[str]) -> None:
         what = " and ".join(f"'{name}'" for name in names)
@@ -133,7 +126,7 @@ class AnalysisView:
         if tangled:
             raise InputError(
                 f"{where}: {', '.join(tangled)} cannot be told apart from the columns before "
-                f"(order: {', '.join([*self.adjust_columns(names), *self.factors])}) on the {shared.n} shared "
+                f"(order: {', '.join([*self.design(names).columns, *self.factors])}) on the {shared.n} shared "
                 "samples, so that its effect has no estimate; take one of them out of adjust or group in project.toml"
             )
         freedom = shared.n - shared.within.shape[1] - 2

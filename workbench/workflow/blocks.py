@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
-import json
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
+import tomlkit
+
 from workbench.errors import InputError
-from workbench.intake import build_block
+from workbench.intake import build_block, difference, names_table, offered_names, run_columns
 from workbench.settings import (
     BlockSettings,
     add_block_text,
@@ -17,11 +19,20 @@ from workbench.settings import (
     read_settings_text,
     remove_block_text,
 )
-from workbench.store import Change, ProjectPaths, StageRecord, project_lock
+from workbench.store import Change, ProjectPaths, StageRecord, project_lock, sha256_of, table_bytes
 from workbench.workflow.fingerprints import columns_fingerprint
-from workbench.workflow.reading import block_file, reading_settings, reading_stage, write_built
+from workbench.workflow.reading import BESIDE, block_file, reading_settings, reading_stage, write_built
 from workbench.workflow.sources import delivered_file, keep_source
 from workbench.workflow.state import ProjectState, load_state
+from workbench.workflow.tables import measured_block
+
+OF_THE_TABLE = ("samples_in", "sheet", "array", "decimal", "names", "annotations", "runs")
+Tell = Callable[[Sequence[str]], None]
+
+
+def no_words(sentences: Sequence[str]) -> None:
+    """Take sentences and say nothing."""
+    del sentences
 
 
 @dataclass(frozen=True)
@@ -34,13 +45,23 @@ class Delivery:
     values: str
     samples_in: str | None = None
     annotations: Path | None = None
+    runs: Path | None = None
     sheet: str | None = None
     array: str | None = None
     adjust: tuple[str, ...] = ()
+    accept_names: bool = False
+    replace: bool = False
+
+    @property
+    def beside(self) -> dict[str, Path]:
+        """Return the files that come with the table, by their key in the settings."""
+        return {key: path for key in ("annotations", "runs") if (path := getattr(self, key)) is not None}
 
 
-def add_block(paths: ProjectPaths, delivery: Delivery) -> tuple[str, ...]:
+def add_block(paths: ProjectPaths, delivery: Delivery, tell: Tell = no_words) -> tuple[str, ...]:
     """Keep the table, read and align it, write the block and its settings in one step.
+
+    ``tell`` is called with what a replaced block changes, before anything is written.
 
     Returns
     -------
@@ -48,47 +69,82 @@ def add_block(paths: ProjectPaths, delivery: Delivery) -> tuple[str, ...]:
         What was understood of the table, a sentence each.
     """
     check_name(delivery.name, "block")
-    delivered_file(delivery.file)
-    if delivery.annotations is not None:
-        delivered_file(delivery.annotations)
+    for file in (delivery.file, *delivery.beside.values()):
+        delivered_file(file)
     with project_lock(paths.root, f"add-block {delivery.name}"):
         state = load_state(paths)
-        _require_new(state, delivery.name)
+        _require_fitting(state, delivery)
         with Change(paths.root) as change:
-            return _take_in(state, change, delivery)
+            return _take_in(state, change, delivery, tell)
 
 
-def _take_in(state: ProjectState, change: Change, delivery: Delivery) -> tuple[str, ...]:
-    sheet = state.require_sheet()
+def _take_in(state: ProjectState, change: Change, delivery: Delivery, tell: Tell) -> tuple[str, ...]:
+    sheet, name = state.require_sheet(), delivery.name
     entries, sources = _keep(change, state.paths, delivery)
     text = read_settings_text(state.paths.settings)
-    settings = parse_settings(add_block_text(text, delivery.name, entries), state.paths.settings)
-    declared = replace_block(settings.blocks[delivery.name], file=str(delivery.file.resolve()))
-    if delivery.annotations is not None:
-        declared = replace_block(declared, annotations=str(delivery.annotations.resolve()))
-    build = build_block(declared, delivery.name, state.root, sheet)
-    entries["samples_in"] = json.loads(build.adata.uns["workbench"])["samples_in"]
-    text = add_block_text(text, delivery.name, entries)
-    final = parse_settings(text, state.paths.settings)
-    require_columns(final.blocks[delivery.name].adjust, list(sheet.columns), state.paths.samples)
-    write_built(change, delivery.name, build)
+    write = replaced_entries if delivery.replace else add_block_text
+    declared = parse_settings(write(text, name, entries), state.paths.settings).blocks[name]
+    there = {"file": delivery.file, **delivery.beside}
+    declared = declared.model_copy(update={key: str(path.resolve()) for key, path in there.items()})
+    if delivery.accept_names:
+        declared = _accept_names(state, change, declared, entries, sources, name)
+    build = build_block(declared, name, state.root, sheet)
+    entries.update(build.chosen)
+    text = write(text, name, entries)
+    final = parse_settings(text, state.paths.settings).blocks[name]
+    known = [*sheet.columns, *(run_columns(delivery.runs) if delivery.runs else ())]
+    require_columns(final.adjust, known, state.paths.samples)
+    if delivery.replace:
+        tell(difference(measured_block(state, name), build.adata).lines())
+    write_built(change, name, build)
     change.write_text("project.toml", text)
+    hashes = {source["file"]: source["sha256"] for source in sources}
     inputs = {
-        "table": sources[0]["sha256"],
+        "table": hashes[final.file],
         "sample sheet": columns_fingerprint(sheet, list(sheet.columns)),
-        "settings of the table": reading_settings(final.blocks[delivery.name]),
+        "settings of the table": reading_settings(final),
+        **{key: hashes[file] for key in BESIDE if (file := getattr(final, key)) is not None},
     }
-    if delivery.annotations is not None:
-        inputs["annotations"] = sources[1]["sha256"]
-    stage = reading_stage(delivery.name)
+    stage = reading_stage(name)
     change.record_stage(stage.name, StageRecord(inputs=inputs, outputs=stage.outputs))
-    change.commit({"command": "add-block", "block": delivery.name, "sources": sources})
-    return build.lines
+    change.commit({"command": "add-block", "block": name, "replaced": delivery.replace, "sources": sources})
+    return build.decisions
 
 
-def replace_block(settings: BlockSettings, **changes: Any) -> BlockSettings:
-    """Return a copy of a block's settings with some values exchanged, unchecked."""
-    return settings.model_copy(update=changes)
+def replaced_entries(text: str, name: str, entries: dict[str, Any]) -> str:
+    """Return the settings with a block's entries exchanged.
+
+    What says how the old table was read goes; ``exclude``, ``swap``, ``prepare`` and the like stay.
+    """
+    document = tomlkit.parse(text)
+    block: Any = document["blocks"][name]
+    for key in OF_THE_TABLE:
+        if key in block and key not in entries:
+            del block[key]
+    for key, value in entries.items():
+        block[key] = value
+    return tomlkit.dumps(document)
+
+
+def _accept_names(
+    state: ProjectState,
+    change: Change,
+    declared: BlockSettings,
+    entries: dict[str, Any],
+    sources: list[dict[str, str]],
+    name: str,
+) -> BlockSettings:
+    """Write the table of accepted names, and return the settings that use it; as they were without candidates."""
+    match = offered_names(declared, state.root, state.require_sheet())
+    if not match.candidates:
+        return declared
+    content = table_bytes(names_table(match))
+    file = f"source/{name}_names.tsv"
+    part = change.new_file(file)
+    part.write_bytes(content)
+    entries["names"] = file
+    sources.append({"file": file, "sha256": sha256_of(part)})
+    return declared.model_copy(update={"names": str(part)})
 
 
 def require_columns(wanted: list[str] | tuple[str, ...], known: list[str], where: Path) -> None:
@@ -104,26 +160,29 @@ def require_columns(wanted: list[str] | tuple[str, ...], known: list[str], where
 def _keep(
     change: Change, paths: ProjectPaths, delivery: Delivery
 ) -> tuple[dict[str, Any], list[dict[str, str]]]:
-    file, digest = keep_source(change, paths, delivery.file)
-    sources = [{"file": file, "sha256": digest, "delivered_as": delivery.file.name}]
-    entries: dict[str, Any] = {"file": file, "layer": delivery.layer, "values": delivery.values}
+    """Copy the table and what comes with it into ``source/``; return settings entries and journal entries."""
+    entries: dict[str, Any] = {}
+    sources = []
+    for key, path in {"file": delivery.file, **delivery.beside}.items():
+        entries[key], digest = keep_source(change, paths, path)
+        sources.append({"file": entries[key], "sha256": digest, "delivered_as": path.name})
+    entries |= {"layer": delivery.layer, "values": delivery.values}
     for key in ("samples_in", "sheet", "array"):
         if getattr(delivery, key) is not None:
             entries[key] = getattr(delivery, key)
-    if delivery.annotations is not None:
-        kept, digest = keep_source(change, paths, delivery.annotations)
-        entries["annotations"] = kept
-        sources.append({"file": kept, "sha256": digest, "delivered_as": delivery.annotations.name})
     if delivery.adjust:
         entries["adjust"] = list(delivery.adjust)
     return entries, sources
 
 
-def _require_new(state: ProjectState, name: str) -> None:
-    if name in state.settings.blocks:
+def _require_fitting(state: ProjectState, delivery: Delivery) -> None:
+    """Refuse a new block under a name that is taken, and a replaced one under a name that is not."""
+    if delivery.replace:
+        state.require_block(delivery.name)
+    elif delivery.name in state.settings.blocks:
         raise InputError(
-            f"{state.paths.settings}: block '{name}' is already there; take it out with "
-            f"`workbench remove-block {name}`, or choose another name"
+            f"{state.paths.settings}: block '{delivery.name}' is already there; say --replace to put this table in its "
+            f"place, take it out with `workbench remove-block {delivery.name}`, or choose another name"
         )
 
 

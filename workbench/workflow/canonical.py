@@ -82,6 +82,9 @@ def analysis_inputs(state: ProjectState, name: str) -> dict[str, str]:
                 state.settings.samples.subject,
             ]
         ),
+        "run sheets": fingerprint(
+            {block: state.manifest.files.get(state.settings.blocks[block].runs or "", "") for block in blocks}
+        ),
         "layers": fingerprint({block: state.settings.blocks[block].layer for block in blocks}),
     }
     for block in blocks:
@@ -91,11 +94,11 @@ def analysis_inputs(state: ProjectState, name: str) -> dict[str, str]:
 
 
 def design_columns_of(state: ProjectState, blocks: list[str]) -> list[str]:
-    """Return the sample-sheet columns that the design of some blocks uses."""
+    """Return the sample-sheet columns that the design of some blocks uses; others are of a run sheet."""
     columns = factors_of(state.settings) + list(state.settings.samples.adjust)
     for block in blocks:
         columns += state.settings.blocks[block].adjust
-    return list(dict.fromkeys(columns))
+    return [column for column in dict.fromkeys(columns) if column in state.require_sheet()]
 
 
 def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) -> None:

@@ -9,11 +9,12 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from workbench.intake import block_design_columns
 from workbench.prepare import MeasuredTable
 from workbench.settings import BlockSettings
 from workbench.store import check_file, read_block
 from workbench.workflow.state import ProjectState
-from workbench.workflow.tables import measured_table
+from workbench.workflow.tables import excluded, measured_block, table_of
 
 
 @dataclass(frozen=True)
@@ -29,6 +30,7 @@ class LoadedBlock:
     features: tuple[str, ...]
     annotations: pd.DataFrame
     measured: MeasuredTable
+    run_columns: pd.DataFrame
 
     def rows(self, samples: Sequence[str]) -> NDArray[np.intp]:
         """Return the prepared rows of some samples."""
@@ -47,6 +49,7 @@ def load_block(state: ProjectState, name: str) -> LoadedBlock:
     check_file(state.root, relative)
     adata = read_block(state.root / relative)
     settings = state.settings.blocks[name]
+    measured = measured_block(state, name)
     return LoadedBlock(
         name=name,
         layer=settings.layer,
@@ -56,5 +59,11 @@ def load_block(state: ProjectState, name: str) -> LoadedBlock:
         samples=tuple(map(str, adata.obs_names)),
         features=tuple(map(str, adata.var_names)),
         annotations=adata.var,
-        measured=measured_table(state, name),
+        measured=table_of(measured, excluded(state, name)),
+        run_columns=block_design_columns(measured).map(_cell),
     )
+
+
+def _cell(value: object) -> object:
+    """Return a number of a run sheet as the sample sheet has it: as text."""
+    return repr(value) if isinstance(value, float) and value == value else value

@@ -21,6 +21,7 @@ from workbench.look import (
 )
 from workbench.store import Change, table_bytes
 from workbench.workflow.analysis_view import factors_of
+from workbench.workflow.design_frame import design_frame
 from workbench.workflow.fingerprints import block_header, columns_fingerprint, fingerprint
 from workbench.workflow.loaded_block import load_block
 from workbench.workflow.reporting import Reporter
@@ -112,6 +113,8 @@ def view_block(state: ProjectState, name: str) -> BlockView:
     """Return a block as it is looked at: prepared and measured values, and what the sheet says of its samples."""
     block = load_block(state, name)
     frame = state.require_sheet().loc[list(block.samples)]
+    own = block.run_columns.reindex(frame.index)
+    frame = frame.drop(columns=[column for column in own if column in frame]).join(own)
     adjust = _adjust(state, name)
     measured = block.measured_rows(block.samples).values
     if block.settings.values == "intensities":
@@ -156,12 +159,12 @@ def _groups(state: ProjectState, frame: pd.DataFrame) -> Levels | None:
 
 def _restriction(state: ProjectState, names: list[str]) -> Restriction | None:
     """Return the nuisance of all blocks, to be removed from both before samples are permuted."""
-    columns = list(dict.fromkeys(column for name in names for column in _adjust(state, name)))
     sheet = state.require_sheet()
-    lacking = {sample for samples in missing_samples(sheet, columns).values() for sample in samples}
-    held = sheet.loc[[sample for sample in sheet.index if sample not in lacking]]
-    if not columns or held.empty:
+    design = design_frame(sheet, state.settings, [load_block(state, name) for name in names])
+    lacking = design.lacking((), list(sheet.index))
+    held = design.frame.loc[[sample for sample in sheet.index if sample not in lacking]]
+    if not design.columns or held.empty:
         return None
-    design = design_columns(held, columns, state.settings.samples.kinds)
+    matrix = design_columns(held, design.columns, design.kinds).matrix
     samples = tuple(map(str, held.index))
-    return Restriction(samples, columns=design.matrix, words=f"{', '.join(columns)} removed from both")
+    return Restriction(samples, columns=matrix, words=f"{', '.join(design.columns)} removed from both")

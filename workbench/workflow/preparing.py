@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import json
+from dataclasses import asdict
 
 import numpy as np
 import pandas as pd
@@ -11,17 +12,17 @@ from anndata import AnnData
 
 from workbench.errors import InputError
 from workbench.intake import group_codes, missing_samples
-from workbench.prepare import PreparedTable, recipe_for
-from workbench.store import Change, write_block
+from workbench.prepare import PreparedTable, StepAccount, group_cautions, recipe_for
+from workbench.store import Change, check_file, write_block
 from workbench.workflow.analysis_view import factors_of
-from workbench.workflow.fingerprints import fingerprint
+from workbench.workflow.fingerprints import block_header, fingerprint
 from workbench.workflow.reading import block_file
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
 from workbench.workflow.tables import excluded, measured_block, table_of
 
-VERSION = 1
+VERSION = 2
 SEED = 20260101
 
 
@@ -57,7 +58,9 @@ def _inputs(state: ProjectState, name: str) -> dict[str, str]:
     held = [str(sample) for sample in state.require_sheet().index if str(sample) not in without]
     return {
         "block": state.manifest.files.get(block_file(name), ""),
-        "recipe": fingerprint([VERSION, settings.layer, settings.values, SEED]),
+        "recipe": fingerprint(
+            [VERSION, settings.layer, settings.values, SEED, settings.prepare.model_dump(mode="json")]
+        ),
         "excluded samples": fingerprint(without),
         "size of the smallest group": fingerprint(smallest_group(state, tuple(held))),
     }
@@ -71,37 +74,54 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
         raise InputError(
             f"block '{name}': {len(table.samples)} samples left after exclusions; two are the least"
         )
-    recipe = recipe_for(settings.layer, settings.values)
+    recipe = recipe_for(settings.layer, settings.values, settings.prepare)
     prepared = recipe.fit_transform(table, smallest_group=smallest_group(state, table.samples), seed=SEED)
     for step in prepared.account:
         reporter.say(f"  {step.step}: {step.sentence}")
+    for caution in (*prepared.cautions, *_group_cautions(state, prepared)):
+        reporter.say(f"  caution: {caution}")
     write_block(change.new_file(f"prepared/{name}.h5ad"), _as_anndata(name, measured, prepared))
+
+
+def _group_cautions(state: ProjectState, prepared: PreparedTable) -> tuple[str, ...]:
+    """Return in what way preparation and groups are tangled; the recipe itself never knew the groups."""
+    factors = factors_of(state.settings)
+    frame = state.require_sheet().loc[list(prepared.samples)]
+    lacking = (
+        {sample for names in missing_samples(frame, factors).values() for sample in names}
+        if factors
+        else set()
+    )
+    held = [sample for sample in prepared.samples if sample not in lacking]
+    if not factors or not held:
+        return ()
+    groups = group_codes(frame.loc[held], factors, state.settings.samples.order)
+    code = dict(zip(held, groups.codes, strict=True))
+    return group_cautions(
+        prepared, np.array([code.get(sample, -1) for sample in prepared.samples]), groups.levels
+    )
+
+
+def account_of(state: ProjectState, name: str) -> tuple[StepAccount, ...]:
+    """Return what the recipe did to a block, step by step, from its prepared file."""
+    path = check_file(state.root, f"prepared/{name}.h5ad")
+    return tuple(StepAccount(**step) for step in block_header(path)["account"])
 
 
 def _as_anndata(name: str, measured: AnnData, prepared: PreparedTable) -> AnnData:
     var = measured.var.loc[list(prepared.origins)].set_axis(pd.Index(prepared.features, dtype=object))
     if prepared.origins != prepared.features:
         var = var.assign(origin=list(prepared.origins))
-    account = [
-        {
-            "step": step.step,
-            "sentence": step.sentence,
-            "numbers": step.numbers,
-            "dropped": step.dropped,
-            "reference": step.reference,
-        }
-        for step in prepared.account
-    ]
     header = {
         "kind": "prepared",
         "block": name,
         "content_sha256": content_hash(prepared),
         "measured_sha256": json.loads(measured.uns["workbench"])["content_sha256"],
-        "account": account,
+        "account": [asdict(step) for step in prepared.account],
     }
     return AnnData(
         X=prepared.values,
-        obs=measured.obs.loc[list(prepared.samples)],
+        obs=measured.obs.loc[list(prepared.samples)].assign(log2_scale=prepared.scale),
         var=var,
         layers={"imputed": prepared.imputed},
         uns={"workbench": json.dumps(header, sort_keys=True)},

@@ -12,7 +12,22 @@ from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
 
 VERSION = 1
-READING_KEYS = ("file", "layer", "values", "samples_in", "sheet", "array", "annotations")
+READING_KEYS = (
+    *(
+        "file",
+        "layer",
+        "values",
+        "samples_in",
+        "sheet",
+        "array",
+        "decimal",
+        "annotations",
+        "names",
+        "runs",
+        "swap",
+    ),
+)
+BESIDE = ("annotations", "names", "runs")
 
 
 def reading_stage(name: str) -> Stage:
@@ -41,14 +56,17 @@ def reading_inputs(state: ProjectState, name: str) -> dict[str, str]:
         "sample sheet": columns_fingerprint(sheet, list(sheet.columns)),
         "settings of the table": reading_settings(settings),
     }
-    if settings.annotations is not None:
-        hashes["annotations"] = source_hash(state.paths, settings.annotations)
+    for key in BESIDE:
+        file = getattr(settings, key)
+        if file is not None:
+            hashes[key] = source_hash(state.paths, file)
     return hashes
 
 
 def reading_settings(settings: BlockSettings) -> str:
     """Return the hash of the keys that say how the table is read."""
-    return fingerprint({"version": VERSION, **{key: getattr(settings, key) for key in READING_KEYS}})
+    kept = settings.model_dump(mode="json", include=set(READING_KEYS))
+    return fingerprint({"version": VERSION, **kept})
 
 
 def write_built(change: Change, name: str, build: BlockBuild) -> None:

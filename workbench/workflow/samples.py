@@ -7,11 +7,11 @@ from pathlib import Path
 
 import pandas as pd
 
-from workbench.errors import InputError
-from workbench.intake import Suggestions, column_kind, read_sample_sheet, suggest_columns
-from workbench.settings import parse_settings, read_settings_text, set_samples_text
+from workbench.errors import InputError, SettingsError
+from workbench.intake import Suggestions, column_kind, read_sample_sheet, sheet_difference, suggest_columns
+from workbench.settings import cross_check, parse_settings, read_settings_text, set_samples_text
 from workbench.store import Change, ProjectPaths, project_lock, table_bytes
-from workbench.workflow.blocks import require_columns
+from workbench.workflow.blocks import Tell, no_words, require_columns
 from workbench.workflow.sources import delivered_file, keep_source
 from workbench.workflow.state import load_state
 
@@ -24,6 +24,7 @@ class SheetDelivery:
     id: str | None = None
     group: tuple[str, ...] = ()
     adjust: tuple[str, ...] = ()
+    replace: bool = False
 
 
 @dataclass(frozen=True)
@@ -36,8 +37,10 @@ class SheetAccount:
     suggestions: Suggestions | None
 
 
-def add_samples(paths: ProjectPaths, delivery: SheetDelivery) -> SheetAccount:
+def add_samples(paths: ProjectPaths, delivery: SheetDelivery, tell: Tell = no_words) -> SheetAccount:
     """Keep the delivered sheet, write ``samples.tsv`` and ``[samples]`` in one step.
+
+    ``tell`` is called with what a replaced sheet changes, before anything is written.
 
     Raises
     ------
@@ -46,13 +49,12 @@ def add_samples(paths: ProjectPaths, delivery: SheetDelivery) -> SheetAccount:
     """
     delivered_file(delivery.file)
     with project_lock(paths.root, "add-samples"):
-        load_state(paths)
-        if paths.samples.exists():
-            raise InputError(
-                f"{paths.samples}: the project has a sample sheet; edit that file, the next command reads it again"
-            )
+        old = load_state(paths).sheet
+        _require_fitting(paths, old, delivery)
         sheet = read_sample_sheet(delivery.file, id_column=delivery.id)
         frame = sheet.frame
+        if old is not None:
+            tell(sheet_difference(old, frame).lines())
         require_columns([*delivery.group, *delivery.adjust], list(frame.columns), delivery.file)
         kinds = unclear_kinds(frame, delivery.adjust)
         text = set_samples_text(
@@ -62,7 +64,9 @@ def add_samples(paths: ProjectPaths, delivery: SheetDelivery) -> SheetAccount:
             adjust=list(delivery.adjust),
             kinds=kinds,
         )
-        parse_settings(text, paths.settings)
+        faults = cross_check(parse_settings(text, paths.settings), frame, paths.root)
+        if faults:
+            raise SettingsError(faults)
         with Change(paths.root) as change:
             file, digest = keep_source(change, paths, delivery.file)
             change.write_bytes("samples.tsv", table_bytes(frame.reset_index()))
@@ -71,6 +75,17 @@ def add_samples(paths: ProjectPaths, delivery: SheetDelivery) -> SheetAccount:
             change.commit({"command": "add-samples", "sources": sources})
     unnamed = not (delivery.group or delivery.adjust)
     return SheetAccount(len(frame), sheet.notes, kinds, suggest_columns(frame) if unnamed else None)
+
+
+def _require_fitting(paths: ProjectPaths, old: pd.DataFrame | None, delivery: SheetDelivery) -> None:
+    """Refuse a second sheet that nobody said replaces the first, and a replacement of nothing."""
+    if old is not None and not delivery.replace:
+        raise InputError(
+            f"{paths.samples}: the project has a sample sheet; edit that file, the next command reads it again, or say "
+            "--replace to put another one in its place"
+        )
+    if old is None and delivery.replace:
+        raise InputError(f"{paths.samples}: there is no sample sheet to replace; leave --replace out")
 
 
 def unclear_kinds(frame: pd.DataFrame, columns: tuple[str, ...]) -> dict[str, str]:

@@ -95,7 +95,7 @@ def _fold_block(
     if shared.groups is not None:
         counts = np.bincount(shared.groups.codes[train])
         smallest = int(counts[counts > 0].min())
-    recipe = recipe_for(block.layer, block.settings.values)
+    recipe = recipe_for(block.layer, block.settings.values, block.settings.prepare)
     fitted = recipe.fit(taught, smallest_group=smallest, seed=SEED)
     unseen = fitted.transform(block.measured_rows(list(samples[test])))
     return fitted.prepared.values, unseen.values

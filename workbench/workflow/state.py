@@ -9,7 +9,7 @@ from pathlib import Path
 import pandas as pd
 
 from workbench.errors import InputError, SettingsError
-from workbench.intake import read_sample_sheet
+from workbench.intake import read_sample_sheet, run_columns_of
 from workbench.settings import Settings, cross_check, load_settings
 from workbench.store import Manifest, ProjectPaths, read_manifest
 
@@ -56,7 +56,7 @@ def load_state(paths: ProjectPaths) -> ProjectState:
     sheet = None
     if paths.samples.exists():
         sheet = read_sample_sheet(paths.samples, id_column=settings.samples.id).frame
-        faults = cross_check(settings, sheet, paths.root)
+        faults = cross_check(settings, sheet, paths.root, run_columns_of(settings.blocks, paths.root))
         if faults:
             raise SettingsError(faults)
     return ProjectState(paths, settings, sheet, read_manifest(paths.root))
