@@ -160,6 +160,71 @@ def test_parquet_comes_back(tmp_path, table, indexed):
 
 
 @FILES
+@given(
+    table=tables(),
+    encoding=st.sampled_from(["utf-16", "utf-16-le", "utf-16-be", "utf-8-sig", "cp1252"]),
+    separator=st.sampled_from("\t,;"),
+)
+def test_encodings_come_back(tmp_path, table, encoding, separator):
+    """Names of ASCII letters, and one with letters that the encoding writes in its own way."""
+    table = table.set_axis([f"g{k}" for k in range(table.shape[1] - 1)] + ["µ-Größe °C"], axis=1)
+    table = table.set_axis([f"S{k}" for k in range(len(table))])
+    text = text_of(table, separator, samples_in="columns", missing="NA")
+    path = tmp_path / "table.txt"
+    path.write_bytes(text.encode(encoding))
+    found = read(path, table)
+    assert_same(found.values, table)
+    told = {"cp1252": "Windows-1252", "utf-8-sig": "byte-order mark"}.get(encoding, "UTF-16")
+    assert any(told in note for note in found.notes)
+
+
+words = st.text(st.characters(codec="ascii", categories=("L",)), min_size=1, max_size=6).filter(
+    lambda word: (
+        word.casefold()
+        not in ("na", "nan", "null", "inf", "nd", "lod", "loq", "blod", "bloq", "und", "infinity")
+    )
+)
+
+
+@FILES
+@given(
+    table=tables(most=4),
+    data=st.data(),
+    form=st.sampled_from(["tsv", "csv", "xlsx", "parquet"]),
+    titles=st.integers(0, 2),
+    groups=st.booleans(),
+)
+def test_titles_groups_and_annotations_come_apart(tmp_path, table, data, form, titles, groups):
+    """Parquet tables have no lines above their header, and one type in a column: there annotations alone."""
+    table = table.set_axis([f"S{k}" for k in range(len(table))])
+    table = table.map(lambda x: float(f"{x:.6g}")).replace([np.inf, -np.inf], 1.5) + 0.0
+    n, p = table.shape
+    notes = data.draw(st.lists(st.lists(words, min_size=p, max_size=p), max_size=3))
+    groups, titles = groups and form != "parquet", titles if form != "parquet" and n + len(notes) > 1 else 0
+    names = [f"about{k}" for k in range(len(notes))]
+    cells = [[None if np.isnan(x) else float(x) for x in row] for row in table.T.to_numpy()]
+    rows = [["id", *names, *table.index]]
+    rows += [["group", *[""] * len(notes), *(data.draw(words) for _ in range(n))]] if groups else []
+    rows += [[f, *(c[k] for c in notes), *cells[k]] for k, f in enumerate(table.columns)]
+    path = tmp_path / f"table.{form}"
+    if form == "parquet":
+        pytest.importorskip("pyarrow")
+        pd.DataFrame(rows[1:], columns=rows[0]).to_parquet(path, index=False)
+    elif form == "xlsx":
+        workbook(path, [["a title"]] * titles + rows)
+    else:
+        out = io.StringIO()
+        writer = csv.writer(out, delimiter={"tsv": "\t", "csv": ","}[form], lineterminator="\n")
+        writer.writerows([["a title"]] * titles + rows)
+        path.write_text(out.getvalue(), "utf-8", newline="")
+    found = read(path, table, samples_in="columns")
+    assert_same(found.values, table)
+    assert found.annotations.T.to_numpy().tolist() == notes
+    assert any("line of text about the samples" in note for note in found.notes) == groups
+    assert any("before the header" in note for note in found.notes) == bool(titles)
+
+
+@FILES
 @given(data=st.data(), separator=st.sampled_from("\t,;"))
 def test_sample_sheets_come_back(tmp_path, data, separator):
     ids = data.draw(st.lists(names, min_size=1, max_size=6, unique=True))

@@ -22,9 +22,12 @@ def quick_numbers(text: str, separator: str, n: int) -> np.ndarray | None:
     if not text.isascii() or " " in text or "_" in text or "(" in text or "\v" in text or "\f" in text:
         return None  # numpy reads these more widely: "1 2" as two numbers, "nan(1)" as one
     if "." not in text and "-" not in text:
-        gaps = "NA" in text or 2 * separator in text
-        whole = _read(_filled(text, separator, "-1") if gaps else text, separator, n, np.int64)
-        if whole is not None and whole.max() < _EXACT_WHOLE:
+        gaps = "NA" in text
+        whole = _read(text.replace("NA", "-1") if gaps else text, separator, n, np.int64)
+        if whole is None:
+            gaps, whole = True, _read(_filled(text, separator, "-1"), separator, n, np.int64)
+        # Only "NA" as a whole field becomes -1: "NA1" becomes -11.
+        if whole is not None and whole.min() >= -1 and whole.max() < _EXACT_WHOLE:
             return np.where(whole < 0, np.nan, whole) if gaps else whole
     numbers = _read(text, separator, n, np.float64)
     if numbers is None:
