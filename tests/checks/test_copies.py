@@ -13,7 +13,7 @@ def noise(n, p, seed=0):
     return np.random.default_rng(seed).normal(size=(n, p))
 
 
-@pytest.mark.parametrize("p", [5, 20, 200, 2000])
+@pytest.mark.parametrize("p", [5, 20, 40, 200, 2000])
 def test_no_two_samples_of_noise_are_near(p):
     assert [near_pairs(noise(40, p, seed)) for seed in range(20)] == [[]] * 20
 

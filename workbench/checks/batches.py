@@ -111,7 +111,7 @@ def carries(
     design : ndarray of shape (n_usable, n_columns)
     """
     held = column.held[usable]
-    k = space.signal.number
+    k = space.number
     nuisance = Nuisance.of(design[held], int(held.sum())) if held.sum() > 2 else None
     if k == 0 or nuisance is None:
         return None

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.stats import binom
 
 from workbench.checks.data import CheckedBlock, StudyData
 from workbench.checks.evidence import SampleValues
@@ -21,17 +22,19 @@ GAPPY_Z = 5.0
 GAPPY_MORE = 0.15
 LEAST_GAP_SPREAD = 0.01
 MOST_GAPPY, MOST_GAPPY_SHARE = 2, 0.1
+GAPPY_CHANCE = 1e-4
 ON_A_SCALE = ("counts", "intensities")
 
 
 def check_depth(data: StudyData) -> list[Finding]:
     """Find samples of which nothing, much less, or with many more gaps than of the others was measured.
 
-    Error: no value at all (for counts and intensities: nothing above 0). Warning: depth (typical ratio to
-    the other samples) under a quarter of the median, or over four times it, and four robust spreads away on a log
-    scale; the missing share 15 points over the median and five robust spreads above it, unless a tenth of
-    the samples (and more than two) are as far: gaps of many samples are a pattern, not an odd sample. For counts
-    a gap is a feature without a read that most samples have.
+    Error: no value at all (for counts and intensities: nothing above 0). Warning: depth (the typical ratio to
+    the other samples) under a quarter of the median, or over four times it, and four robust spreads away on a
+    log scale. Warning: the missing share 15 points over the median, five robust spreads above it, and more than
+    gaps that fall by chance bring about in one of 10,000 blocks; unless a tenth of the samples (and more than
+    two) are as far, since gaps of many samples are a pattern, not an odd sample. For counts a gap is a feature
+    without a read that most samples have.
     """
     return [
         finding
@@ -125,7 +128,9 @@ def _gappy(block: CheckedBlock) -> list[Finding]:
     more = share > np.median(share) + GAPPY_MORE
     if more.sum() > max(MOST_GAPPY, MOST_GAPPY_SHARE * share.size):
         return []
-    rows = np.flatnonzero((z > GAPPY_Z) & more & (share < 1.0))
+    number = int(common.sum())
+    by_chance = binom.sf(np.rint(share * number) - 1, number, share.mean()) * share.size
+    rows = np.flatnonzero((z > GAPPY_Z) & more & (share < 1.0) & (by_chance <= GAPPY_CHANCE))
     return [_gap_finding(block, share, int(row)) for row in rows]
 
 

@@ -23,7 +23,7 @@ FloatArray = NDArray[np.float64]
 SAMPLES_CHECK = "duplicated_samples"
 FEATURES_CHECK = "duplicated_features"
 CONSTANT_CHECK = "constant_features"
-FEWEST_SAMPLES = 5
+FEWEST_SAMPLES, FEWEST_FEATURES = 5, 20
 NEAR = 0.25
 BY_CHANCE = 1e-3
 SAME_SHARE = 0.95
@@ -99,10 +99,10 @@ def near_pairs(values: FloatArray) -> list[tuple[int, int]]:
     Parameters
     ----------
     values : ndarray of shape (n_samples, n_features)
-        Features at unit variance.
+        Features at unit variance; fewer than 20 of them tell samples apart too coarsely, and no pair is near.
     """
     n, p = values.shape
-    if n < FEWEST_SAMPLES or p == 0:
+    if n < FEWEST_SAMPLES or p < FEWEST_FEATURES:
         return []
     kernel = values @ values.T
     lengths = np.diag(kernel)

@@ -11,18 +11,17 @@ from numpy.typing import NDArray
 from workbench.checks.data import CheckedBlock, StudyData
 from workbench.checks.evidence import SamplePlane, SampleValues
 from workbench.checks.finding import Finding, accept_line, exclude_line, finding_id
-from workbench.checks.space import DesignFree, design_free
+from workbench.checks.space import DesignFree, design_free, signal_number
 from workbench.checks.words import robust_z
 from workbench.engine.linear import thin_basis
-from workbench.engine.nuisance import fit_residuals
-from workbench.engine.signal_components import signal_components
+from workbench.engine.nuisance import FittedResiduals, fit_residuals
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
 
 CHECK = "outlier"
 FEWEST_SAMPLES = 8
-FOLDS = 20
+FOLDS, FOLDS_FOR_NUMBER = 20, 5
 LARGEST_VALUE, LARGEST_SQUARE = 6.0, 16.0
 PRIOR_FREEDOM = 4.0
 LEAST_RATIO = 3.0
@@ -92,13 +91,12 @@ def held_out_errors(x: FloatArray, design: FloatArray) -> HeldOutErrors | None:
     design : ndarray of shape (n_samples, n_columns)
     """
     n = x.shape[0]
-    folds = min(n, FOLDS)
-    place = np.arange(n) % folds
+    place = np.arange(n) % min(n, FOLDS)
     errors = np.full(n, np.nan)
     try:
-        for fold in range(folds):
-            held_out = place == fold
-            errors[held_out] = _fold_errors(x, design, ~held_out, held_out)
+        k = _components(x, design, place)
+        for fold in range(place.max() + 1):
+            errors[place == fold] = _fold_errors(x, design, place == fold, k)
     except NumericsError:
         return None
     known = errors[np.isfinite(errors) & (errors > 0)]
@@ -111,21 +109,35 @@ def held_out_errors(x: FloatArray, design: FloatArray) -> HeldOutErrors | None:
     return HeldOutErrors(ratio, z)
 
 
-def _fold_errors(
-    x: FloatArray, design: FloatArray, train: NDArray[np.bool_], test: NDArray[np.bool_]
-) -> FloatArray:
-    fitted = fit_residuals(design[train], x[train])
-    freedom = int(train.sum()) - fitted.rank
+def _components(x: FloatArray, design: FloatArray, place: NDArray[np.intp]) -> int:
+    """Return the number of components with signal, the median over some folds' training samples."""
+    folds = np.unique(np.linspace(0, place.max(), FOLDS_FOR_NUMBER).round())
+    numbers = []
+    for fold in folds:
+        known, _, _ = _scaled(x, design, place == fold)
+        numbers.append(signal_number(known, thin_basis(known)))
+    return int(np.median(numbers))
+
+
+def _scaled(
+    x: FloatArray, design: FloatArray, test: NDArray[np.bool_]
+) -> tuple[FloatArray, FloatArray, FittedResiduals]:
+    """Return training and test samples without the design, at the training samples' spread."""
+    fitted = fit_residuals(design[~test], x[~test])
+    freedom = int(np.count_nonzero(~test)) - fitted.rank
     variance = fitted.scale[fitted.varies] ** 2
     scale = np.sqrt((freedom * variance + PRIOR_FREEDOM * np.median(variance)) / (freedom + PRIOR_FREEDOM))
-    known = fitted.transform(design[train], x[train])[:, fitted.varies] / scale
+    known = fitted.transform(design[~test], x[~test])[:, fitted.varies] / scale
     asked = fitted.transform(design[test], x[test])[:, fitted.varies] / scale
-    asked = np.clip(asked, -LARGEST_VALUE, LARGEST_VALUE)
+    return known, np.clip(asked, -LARGEST_VALUE, LARGEST_VALUE), fitted
+
+
+def _fold_errors(x: FloatArray, design: FloatArray, test: NDArray[np.bool_], k: int) -> FloatArray:
+    known, asked, fitted = _scaled(x, design, test)
     basis = thin_basis(known)
-    k = signal_components(basis).number
     loadings = (basis.vectors[:, :k] / basis.lengths[:k]).T @ known
     rest = asked - (asked @ loadings.T) @ loadings
-    errors = np.minimum(rest**2, LARGEST_SQUARE).mean(axis=1) / (1.0 + _leverage(design, train, test))
+    errors = np.minimum(rest**2, LARGEST_SQUARE).mean(axis=1) / (1.0 + _leverage(design, ~test, test))
     errors[~fitted.estimable(design[test], int(test.sum()))] = np.nan
     return np.asarray(errors)
 

@@ -9,10 +9,13 @@ from numpy.typing import NDArray
 
 from workbench.engine.linear import ThinBasis, thin_basis
 from workbench.engine.nuisance import Nuisance, standardise
-from workbench.engine.signal_components import SignalComponents, signal_components
+from workbench.engine.scree import parallel_analysis
+from workbench.engine.signal_components import signal_components
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
+
+DRAWS = 20
 
 
 @dataclass(frozen=True, eq=False)
@@ -25,8 +28,8 @@ class DesignFree:
         Residuals at unit variance; features without any left are gone.
     basis : ThinBasis
         Directions of ``values``.
-    signal : SignalComponents
-        Those that stand out of noise.
+    number : int
+        How many components stand out of noise.
     nuisance : Nuisance
         What was taken out.
     room : ndarray of shape (n_samples,)
@@ -35,15 +38,14 @@ class DesignFree:
 
     values: FloatArray
     basis: ThinBasis
-    signal: SignalComponents
+    number: int
     nuisance: Nuisance
     room: FloatArray
 
     @property
     def scores(self) -> FloatArray:
         """Scores of the components with signal, shape (n_samples, number), strongest first."""
-        k = self.signal.number
-        scores: FloatArray = self.basis.vectors[:, :k] * self.basis.lengths[:k]
+        scores: FloatArray = self.basis.vectors[:, : self.number] * self.basis.lengths[: self.number]
         return scores
 
 
@@ -66,4 +68,18 @@ def design_free(prepared: FloatArray, design: FloatArray) -> DesignFree | None:
     except NumericsError:
         return None
     room = 1.0 - np.sum(nuisance.basis**2, axis=1)
-    return DesignFree(block.values, basis, signal_components(basis), nuisance, room)
+    return DesignFree(block.values, basis, signal_number(block.values, basis), nuisance, room)
+
+
+def signal_number(values: FloatArray, basis: ThinBasis) -> int:
+    """Return how many components of a centred and scaled block stand out of noise.
+
+    By :func:`~workbench.engine.signal_components.signal_components`; with fewer features than samples at most
+    as many as parallel analysis finds (20 draws, a fixed seed), as few features of unequal noise pass for signal.
+    """
+    number = signal_components(basis).number
+    n, p = values.shape
+    if p < n and number > 0:
+        eigenvalues = basis.lengths**2 / (n - 1)
+        number = min(number, parallel_analysis(values, eigenvalues, draws=DRAWS, random_state=0).number)
+    return number
