@@ -322,3 +322,23 @@ def test_marks_read_only_their_own_writing():
     assert Marks(",", ".").number("1.234,5") == 1234.5
     for text in ("1.5", "12.34,5", "1,234.5", "0.123", "1.234.56"):
         assert Marks(",", ".").number(text) is None
+
+
+def test_an_unknown_row_of_numbers_is_a_sample_that_the_sheet_lacks(tmp_path):
+    path = write(tmp_path, "t.tsv", tabbed("id f1 f2", "rt 1.2 3.4", "control 5 6", "S1 1 2"))
+    table = delivered_table(path, sample_ids=SHEET, values="continuous")
+    assert list(table.annotations.columns) == ["rt"]
+    assert table.only_table == ("control",)
+
+
+def test_quoted_thousands_in_a_table_parted_by_commas(tmp_path):
+    path = write(tmp_path, "t.csv", 'id,symbol,S1,S2\n"g1","A, b","1,234.5","2,000,000"\n')
+    table = delivered_table(path, sample_ids=SHEET, values="continuous")
+    assert table.values["g1"].tolist() == [1234.5, 2e6]
+    assert table.annotations["symbol"].tolist() == ["A, b"]
+
+
+def test_a_header_of_one_name_is_no_title(tmp_path):
+    path = write(tmp_path, "t.csv", "sample,,\nS1,a,b\nS2,c,d\n")
+    with pytest.raises(InputError, match=r"2 columns without an id"):
+        delivered_table(path, sample_ids=SHEET, values="mixed")

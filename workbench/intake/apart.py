@@ -15,6 +15,12 @@ from .raw import HEADER, ArrayBody, Cell, RawTable, TextBody, WrongCell, cell_te
 from .tokens import MISSING, hint_for, is_comma_number, number_of
 from .units import unit_of
 
+# Names of numbers that tables give about features.
+_ABOUT_FEATURES = re.compile(
+    r"(m[/_ ]?z|rt|retention[ _]?time|(exact |mono\w* |molecular )?mass|length|start|end|pos(ition)?|charge|score|"
+    r"entrez(_?id)?|\w*_id)([ _(\[].*)?",
+    re.IGNORECASE,
+)
 LINES_LOOKED_AT = 10
 _LEAST_HITS = 2
 _ROLE = re.compile(
@@ -64,7 +70,8 @@ def set_apart(
        ``mixed`` tables, whose features may be text.
     3. Lines before the first sample that are no sample's are annotations of the features. They end at a line
        of numbers whose name is like the samples' (``X9`` beside ``S1``) or a pool's or blank's: that one is a
-       sample which the sheet lacks.
+       sample which the sheet lacks. A row of numbers among samples in rows must have a name such as ``mz`` or
+       ``length`` to be an annotation.
 
     Attributes of samples are left out and told, since the sample sheet is their place; annotations are kept.
 
@@ -227,6 +234,8 @@ class _Axis:
         first = self.positions[0]
         for k in range(first):
             like_a_sample = _shape(self.ids[k]) in shapes or _ROLE.match(self.ids[k])
+            if self.samples_in == "rows" and not _ABOUT_FEATURES.fullmatch(self.ids[k].strip()):
+                like_a_sample = True
             if like_a_sample and any(map(_is_number, self._cells(k, crossing))):
                 return k
         return first

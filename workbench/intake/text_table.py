@@ -13,14 +13,8 @@ from .faults import Faults, counted, shown
 from .files import read_lines
 from .layout import SEPARATORS, Layout, find_layout, quote_error
 from .raw import RawTable, TextBody, split_line
-from .tokens import word_set
+from .titles import ID_WORDS
 
-# Names over an id column; a header that starts with one does not lack a field, whatever its length.
-_ID_WORDS = word_set(
-    "id ids name names sample samples sample_id sampleid feature features feature_id gene genes gene_id "
-    "geneid gene_name symbol protein proteins metabolite metabolites compound compounds lipid lipids "
-    "taxon otu asv probe row.names"
-)
 _R_FORM = (
     "the header is one field short (as R writes tables); its names are those of the columns after the first"
 )
@@ -106,7 +100,7 @@ def _checked_width(path: Path, lines: Sequence[str], widths: Sequence[int], layo
 
 def _may_lack(lines: Sequence[str], layout: Layout) -> bool:
     trailing = all(line.endswith(layout.separator) for line in lines)
-    return not trailing and layout.header[0].strip().casefold() not in _ID_WORDS
+    return not trailing and layout.header[0].strip().casefold() not in ID_WORDS
 
 
 def _width_error(

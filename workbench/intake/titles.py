@@ -7,11 +7,17 @@ from collections import Counter
 from collections.abc import Sequence
 
 from .raw import split_line
-from .tokens import is_comma_number, number_of
+from .tokens import is_comma_number, number_of, word_set
 
 MOST_ABOVE = 10
 _LOOKED_AT = 50
 _LEAST_WIDTH = 3
+# Names over an id column; a header that starts with one does not lack a field, whatever its length.
+ID_WORDS = word_set(
+    "id ids name names sample samples sample_id sampleid feature features feature_id gene genes gene_id "
+    "geneid gene_name symbol protein proteins metabolite metabolites compound compounds lipid lipids "
+    "taxon otu asv probe row.names"
+)
 
 
 def rows_above(rows: Sequence[Sequence[str]], width: int) -> int:
@@ -20,7 +26,7 @@ def rows_above(rows: Sequence[Sequence[str]], width: int) -> int:
     None, when the first row has all its names (that over the ids may be empty). Else the header is the first
     of the next ten rows that has them, and is not made of numbers for the most part, if each row above it
 
-    - is empty, or holds one filled field (a title), or
+    - is empty, or holds one filled field (a title, not a word such as ``sample`` or ``id``), or
     - holds two, the first of which ends with a colon (``Operator:``), or
     - is as wide as the table, with an empty first field and at most half of the others filled (names over
       groups of columns).
@@ -95,7 +101,7 @@ def _mostly_numbers(row: Sequence[str]) -> bool:
 def _is_above(row: Sequence[str], width: int) -> bool:
     filled = [field.strip() for field in row if field.strip()]
     if len(filled) <= 1:
-        return len(row) in (0, 1, width)
+        return len(row) in (0, 1, width) and not ID_WORDS.intersection(map(str.casefold, filled))
     if len(filled) == 2 and filled[0].endswith(":"):
         return True
     over_groups = not row[0].strip() and 2 * len(filled) <= width - 1

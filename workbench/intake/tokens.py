@@ -86,7 +86,9 @@ def is_comma_number(text: str) -> bool:
     (True, True, False)
     """
     plain = text.strip()
-    return number_of(plain) is None and any(p.fullmatch(plain) for p in (_DECIMAL_COMMA, _THOUSANDS, _CONTINENTAL))
+    return number_of(plain) is None and any(
+        p.fullmatch(plain) for p in (_DECIMAL_COMMA, _THOUSANDS, _CONTINENTAL)
+    )
 
 
 _WAYS_OUT = {
