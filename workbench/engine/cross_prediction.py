@@ -12,7 +12,6 @@ from workbench.engine.signal_components import signal_components
 from workbench.engine.spike_slab import SpikeSlab
 
 FloatArray = NDArray[np.float64]
-BoolArray = NDArray[np.bool_]
 
 MOST_SINGLY = 60
 FOLDS = 30
@@ -33,42 +32,40 @@ class Features:
         Orthonormal basis of the design, intercept included.
     gram : ndarray of shape (n_samples, n_samples)
         ``values values'``.
-    squares : ndarray of shape (n_features,)
-        Sums of squares of the features.
     """
 
     values: FloatArray
     basis: FloatArray
     gram: FloatArray
-    squares: FloatArray
 
     @classmethod
     def of(cls, values: FloatArray, basis: FloatArray) -> Features:
         """Return the features of a block with the design removed from it."""
         left = values - basis @ (basis.T @ values)
-        return cls(left, basis, left @ left.T, np.einsum("np,np->p", left, left))
+        return cls(left, basis, left @ left.T)
 
 
 @dataclass(frozen=True, eq=False)
 class _Regression:
-    """Features regressed on the targets in some of the samples (``basis`` is zero in the others)."""
+    """Features regressed on the targets, samples weighted; ``basis`` spans the weighted design and targets."""
 
     coefficients: FloatArray
     error: FloatArray
     noise: FloatArray
     basis: FloatArray
-    df: int
+    df: float
 
 
 def count_private(features: Features, targets: FloatArray) -> int:
     """Return the number of components of the features that the targets do not explain."""
-    every = np.ones(features.values.shape[0], dtype=bool)
-    basis = _regress(features, targets, every).basis
+    basis = _regress(features, targets, np.ones(targets.shape[0])).basis
     left = features.values - basis @ (basis.T @ features.values)
     return signal_components(thin_basis(left)).number
 
 
-def predict_left_out(features: Features, targets: FloatArray, private: int) -> FloatArray:
+def predict_left_out(
+    features: Features, targets: FloatArray, private: int, weights: FloatArray | None = None
+) -> FloatArray:
     """Targets predicted from features, each sample from a fit that has not seen it.
 
     In the other samples the features are regressed on the targets, ``y = L u + e``, the coefficients drawn
@@ -86,6 +83,8 @@ def predict_left_out(features: Features, targets: FloatArray, private: int) -> F
         Residuals of the same design.
     private : int
         Components of the features that are none of the targets'.
+    weights : ndarray of shape (n_samples,), optional
+        How much each sample counts in the fits of the others, 0 to 1.
 
     Returns
     -------
@@ -103,69 +102,69 @@ def predict_left_out(features: Features, targets: FloatArray, private: int) -> F
     True
     """
     n = targets.shape[0]
-    every = _regress(features, targets, np.ones(n, dtype=bool))
+    root = np.ones(n) if weights is None else np.sqrt(weights)
+    every = _regress(features, targets, root)
     law = SpikeSlab.learn(every.coefficients / every.error)
     parts = n if n <= MOST_SINGLY else FOLDS
     predicted = np.zeros(targets.shape)
     for part in range(parts):
         left_out = np.arange(n) % parts == part
-        weights = _weights(features, targets, ~left_out, law, private)
-        predicted[left_out] = features.values[left_out] @ weights
+        told = _feature_weights(features, targets, np.where(left_out, 0.0, root), law, private)
+        predicted[left_out] = features.values[left_out] @ told
     predicted -= features.basis @ (features.basis.T @ predicted)
     return predicted
 
 
-def _regress(features: Features, targets: FloatArray, used: BoolArray) -> _Regression:
-    """Regress every feature on the targets and the design, in the samples that are used."""
-    design = _orthonormal(features.basis * used[:, None])
-    targets = targets * used[:, None]
+def _regress(features: Features, targets: FloatArray, root: FloatArray) -> _Regression:
+    """Regress every feature on the targets and the design, samples weighted by the squares of ``root``."""
+    design = _orthonormal(features.basis * root[:, None])
+    targets = targets * root[:, None]
     targets = targets - design @ (design.T @ targets)
     inverse = np.linalg.pinv(targets.T @ targets, hermitian=True)
     basis = np.hstack([design, _orthonormal(targets)])
-    unused = features.values[~used]
-    left = features.squares - np.einsum("np,np->p", unused, unused)
-    explained = basis.T @ features.values
-    left = left - np.einsum("kp,kp->p", explained, explained)
-    df = max(int(used.sum()) - basis.shape[1], 1)
+    squares = np.einsum("n,np,np->p", root**2, features.values, features.values)
+    explained = (basis * root[:, None]).T @ features.values
+    left = squares - np.einsum("kp,kp->p", explained, explained)
+    df = max(float(np.sum(root**2)) - basis.shape[1], 1.0)
     noise = np.maximum(left / df, LEAST_NOISE)
     error = np.sqrt(np.maximum(np.diag(inverse), 1e-300)[:, None] * noise)
-    return _Regression(inverse @ (targets.T @ features.values), error, noise, basis, df)
+    coefficients = inverse @ ((targets * root[:, None]).T @ features.values)
+    return _Regression(coefficients, error, noise, basis, df)
 
 
-def _weights(
-    features: Features, targets: FloatArray, used: BoolArray, law: SpikeSlab, private: int
+def _feature_weights(
+    features: Features, targets: FloatArray, root: FloatArray, law: SpikeSlab, private: int
 ) -> FloatArray:
-    """Weights of the features for predicting the targets, learnt from the samples that are used."""
-    fit = _regress(features, targets, used)
+    """Weights of the features for predicting the targets, learnt from the samples with a ``root`` above 0."""
+    fit = _regress(features, targets, root)
     z = fit.coefficients / fit.error
     loadings = law.renewed(z, 2).mean(z) * fit.error
-    own, unique = _private_covariance(features, fit, used, private)
+    own, unique = _private_covariance(features, fit, root, private)
     weighted = np.asarray(loadings / unique, dtype=np.float64)
     if own.shape[0]:
         scaled = own / unique
         inner = np.linalg.solve(np.eye(own.shape[0]) + scaled @ own.T, scaled @ loadings.T)
         weighted = np.asarray(weighted - inner.T @ scaled, dtype=np.float64)
     between = loadings @ weighted.T + np.eye(loadings.shape[0])
-    weights: FloatArray = np.linalg.solve(between, weighted).T
-    return weights
+    return np.asarray(np.linalg.solve(between, weighted).T, dtype=np.float64)
 
 
 def _private_covariance(
-    features: Features, fit: _Regression, used: BoolArray, private: int
+    features: Features, fit: _Regression, root: FloatArray, private: int
 ) -> tuple[FloatArray, FloatArray]:
     """Return loadings of the private components, shape (k, p), and the variances that they leave."""
-    k = min(private, fit.df // 2)
+    k = min(private, int(fit.df) // 2)
     if k < 1:
-        return np.empty((0, features.squares.size)), fit.noise
-    gram = features.gram * np.outer(used, used)
+        return np.empty((0, fit.noise.size)), fit.noise
+    gram = features.gram * np.outer(root, root)
     aside = fit.basis @ (fit.basis.T @ gram)
     gram = gram - aside - aside.T + fit.basis @ (fit.basis.T @ gram @ fit.basis) @ fit.basis.T
     values, vectors = np.linalg.eigh(gram)
     values, vectors = np.maximum(values[::-1][:k], LEAST_NOISE), vectors[:, ::-1][:, :k]
-    loadings = vectors.T @ features.values
+    loadings = (vectors * root[:, None]).T @ features.values
     total = float(fit.noise.sum()) * fit.df
-    rest = max(total - float(values.sum()), 0.0) / max(fit.df - k, 1)
-    unique = (fit.noise * fit.df - np.einsum("kp,kp->p", loadings, loadings)) / max(fit.df - k, 1)
+    rest = max(total - float(values.sum()), 0.0) / max(fit.df - k, 1.0)
+    unique = (fit.noise * fit.df - np.einsum("kp,kp->p", loadings, loadings)) / max(fit.df - k, 1.0)
     kept = np.sqrt(np.maximum(1.0 - rest / values, 0.0) / fit.df)
     return loadings * kept[:, None], np.maximum(unique, LEAST_SHARE * fit.noise)
 

@@ -24,7 +24,7 @@ def hat_matrix(basis: FloatArray) -> FloatArray:
     return projection
 
 
-def exchange_gains(rows: FloatArray, hat: FloatArray, df: int, known: FloatArray | None = None) -> FloatArray:
+def exchange_gains(rows: FloatArray, hat: FloatArray, df: int) -> FloatArray:
     """Log likelihood ratio of "rows i and j exchanged" to "as they are", for every pair.
 
     With ``e = E_j - E_i``, ``t = T_j - T_i``, ``A = E'E``, ``a = e'A^-1 e``, ``b = e'A^-1 t``, ``g = t'A^-1 t``
@@ -38,9 +38,6 @@ def exchange_gains(rows: FloatArray, hat: FloatArray, df: int, known: FloatArray
         ``H``, a projection.
     df : int
         ``n_samples`` less the rank of ``H``.
-    known : ndarray of shape (n_samples, m), optional
-        A part of ``T`` in the span of ``H`` that stays where it is when rows are exchanged (run days, when
-        tubes were exchanged before the runs).
 
     Returns
     -------
@@ -56,11 +53,10 @@ def exchange_gains(rows: FloatArray, hat: FloatArray, df: int, known: FloatArray
     (np.int64(3), np.int64(8))
     """
     residual = rows - hat @ rows
-    moved = rows if known is None else rows - known
     inverse = np.asarray(np.linalg.pinv(residual.T @ residual, hermitian=True), dtype=np.float64)
     a = _squared_distances(residual, residual, inverse)
-    b = _squared_distances(residual, moved, inverse)
-    g = _squared_distances(moved, moved, inverse)
+    b = _squared_distances(residual, rows, inverse)
+    g = _squared_distances(rows, rows, inverse)
     h = np.diag(hat)
     k = 2.0 - h[:, None] - h + 2.0 * hat
     ratio = (1.0 - b) ** 2 + g * (k - a)
@@ -75,13 +71,12 @@ def rearrangement_gains(
     df: int,
     places: IndexArray,
     sources: IndexArray,
-    known: FloatArray | None = None,
 ) -> FloatArray:
     """Log likelihood ratio of each of several rearrangements to the rows as they are.
 
     Parameters
     ----------
-    rows, hat, df, known
+    rows, hat, df
         As for :func:`exchange_gains`.
     places, sources : ndarray of int, shape (n_rearrangements, s)
         In each, row ``sources[k]`` comes to place ``places[k]``; all other rows stay.
@@ -100,9 +95,8 @@ def rearrangement_gains(
     True
     """
     residual = rows - hat @ rows
-    moved = rows if known is None else rows - known
     total = residual.T @ residual
-    step = moved[sources] - moved[places]
+    step = rows[sources] - rows[places]
     left = (
         np.eye(len(hat))[places[:, :, None], places[:, None, :]] - hat[places[:, :, None], places[:, None, :]]
     )
@@ -111,6 +105,73 @@ def rearrangement_gains(
     after = total + cross + cross.transpose(0, 2, 1) + own
     was, now = np.linalg.slogdet(total)[1], np.linalg.slogdet(after)[1]
     gains: FloatArray = 0.5 * df * (was - now)
+    return gains
+
+
+def relabelling_gains(
+    rows: FloatArray,
+    fixed: FloatArray,
+    columns: FloatArray,
+    df: int,
+    places: IndexArray,
+    sources: IndexArray,
+) -> FloatArray:
+    """Log likelihood ratio of rearranged columns of the design, all others and the rows staying as they are.
+
+    Tubes that were exchanged before the runs bear the marks of their own run and the group of each other. With
+    ``M`` the residuals of the fixed columns, ``A = T'MT``, ``G = C'MC`` and ``V = T'MC`` the determinant of the
+    residuals is ``|A| |G - V'A^-1 V| / |G|`` for any arrangement of the columns ``C``.
+
+    Parameters
+    ----------
+    rows : ndarray of shape (n_samples, m)
+    fixed : ndarray of shape (n_samples, n_fixed)
+        Orthonormal basis of the columns that stay, the intercept among them.
+    columns : ndarray of shape (n_samples, n_columns)
+        Columns that go with the tubes.
+    df : int
+        ``n_samples`` less the rank of the whole design.
+    places, sources : ndarray of int, shape (n_rearrangements, s)
+        What was delivered as ``sources[k]`` belongs to ``places[k]``, whose columns it takes.
+
+    Returns
+    -------
+    ndarray of shape (n_rearrangements,)
+        Zero throughout where the columns that go are in the span of those that stay.
+
+    Examples
+    --------
+    >>> rng = np.random.default_rng(0)
+    >>> group = np.repeat([0.0, 1.0], 6)
+    >>> rows = rng.normal(size=(12, 1)) + 5.0 * group[:, None]
+    >>> rows[[0, 11]] = rows[[11, 0]]
+    >>> pair = np.array([[0, 11], [0, 1]])
+    >>> gains = relabelling_gains(rows, np.full((12, 1), 12**-0.5), group[:, None], 10, pair, pair[:, ::-1])
+    >>> bool(gains[0] > 5.0), bool(abs(gains[1]) < 1e-9)
+    (True, True)
+    """
+    left = columns - fixed @ (fixed.T @ columns)
+    size = np.linalg.norm(columns - columns.mean(axis=0), axis=0)
+    if (
+        not columns.shape[1]
+        or np.linalg.matrix_rank(left / np.maximum(size, 1e-300), tol=1e-6) < left.shape[1]
+    ):
+        return np.zeros(len(places))
+    own = rows - fixed @ (fixed.T @ rows)
+    inverse = np.linalg.pinv(own.T @ own, hermitian=True)
+    step = columns[places] - columns[sources]
+    room = np.eye(len(rows))[sources[:, :, None], sources[:, None, :]]
+    room = room - np.einsum("rsk,rtk->rst", fixed[sources], fixed[sources])
+    cross = np.einsum("rsk,rsl->rkl", left[sources], step)
+    spread = (
+        left.T @ left + cross + cross.transpose(0, 2, 1) + np.einsum("rsk,rst,rtl->rkl", step, room, step)
+    )
+    product = own.T @ left + np.einsum("rsm,rsk->rmk", own[sources], step)
+    unexplained = spread - np.einsum("rmk,mn,rnl->rkl", product, inverse, product)
+    before = np.linalg.slogdet(left.T @ left - left.T @ own @ inverse @ own.T @ left)[1]
+    before -= np.linalg.slogdet(left.T @ left)[1]
+    after = np.linalg.slogdet(unexplained)[1] - np.linalg.slogdet(spread)[1]
+    gains: FloatArray = 0.5 * df * (before - after)
     return gains
 
 

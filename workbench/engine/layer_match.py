@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Collection
 from dataclasses import dataclass
 
 import numpy as np
@@ -67,6 +68,8 @@ class LayerMatch:
         Rows of the common samples in each layer.
     samples : ndarray of int
         The common samples.
+    basis : ndarray of shape (n_common, c)
+        Orthonormal basis of both layers' designs.
     predictions : tuple of Prediction
         First layer's factors by the second and the other way, where any is matched.
     private : dict
@@ -79,6 +82,7 @@ class LayerMatch:
     second: str
     rows: tuple[IndexArray, IndexArray]
     samples: IndexArray
+    basis: FloatArray
     predictions: tuple[Prediction, ...]
     private: dict[str, int]
     untestable: str
@@ -87,6 +91,10 @@ class LayerMatch:
     def information(self) -> float:
         """Nats that the better direction tells of a sample."""
         return max((one.information for one in self.predictions), default=0.0)
+
+    def rows_of(self, layer: str) -> IndexArray:
+        """Return the rows of the common samples in one of the two layers."""
+        return self.rows[0 if layer == self.first else 1]
 
     def weights(self) -> list[float]:
         """Return the share of each direction in the evidence, by what it tells.
@@ -117,7 +125,12 @@ class LayerMatch:
         return total
 
 
-def match_layers(one: LayerState, other: LayerState, before: LayerMatch | None = None) -> LayerMatch:
+def match_layers(
+    one: LayerState,
+    other: LayerState,
+    before: LayerMatch | None = None,
+    left_out: Collection[int] = (),
+) -> LayerMatch:
     """Match two layers by what each one's features tell of the other's factors.
 
     Parameters
@@ -125,18 +138,21 @@ def match_layers(one: LayerState, other: LayerState, before: LayerMatch | None =
     one, other : LayerState
     before : LayerMatch, optional
         Of the same layers in another arrangement: its counts of private components are used again.
+    left_out : collection of int
+        Samples that no fit may learn from; they are predicted all the same.
     """
     names = one.layer.name, other.layer.name
     samples, first, second = np.intersect1d(one.layer.samples, other.layer.samples, return_indices=True)
     design = np.hstack([one.layer.design()[first], other.layer.design()[second]])
     basis = Nuisance.of(design, samples.size).basis if samples.size else np.empty((0, 0))
     private: dict[str, int] = {}
+    weights = np.where(np.isin(samples, list(left_out)), 0.0, 1.0)
     if samples.size - basis.shape[1] < FEWEST_DF:
         reason = (
             f"{samples.size} common samples and a design of {basis.shape[1]} dimensions leave fewer than "
             f"{FEWEST_DF} to compare"
         )
-        return LayerMatch(*names, (first, second), samples, (), private, reason)
+        return LayerMatch(*names, (first, second), samples, basis, (), private, reason)
     features = {
         state.layer.name: Features.of(state.values[rows], basis)
         for state, rows in ((one, first), (other, second))
@@ -149,11 +165,11 @@ def match_layers(one: LayerState, other: LayerState, before: LayerMatch | None =
         scores = scores - basis @ (basis.T @ scores)
         known = before.private.get(source) if before else None
         private[source] = count_private(features[source], scores) if known is None else known
-        predicted = predict_left_out(features[source], scores, private[source])
+        predicted = predict_left_out(features[source], scores, private[source], weights)
         prediction = _matched(target.layer.name, source, scores, predicted, basis)
         found += [prediction] if prediction else []
     reason = "" if found else "no factor of one layer is told by the other beyond chance"
-    return LayerMatch(*names, (first, second), samples, tuple(found), private, reason)
+    return LayerMatch(*names, (first, second), samples, basis, tuple(found), private, reason)
 
 
 def _matched(

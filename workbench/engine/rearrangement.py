@@ -8,7 +8,6 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.engine.exchange_gain import rearrangement_gains
 from workbench.engine.layer_match import LayerMatch
 from workbench.engine.swap_layers import LayerState
 
@@ -61,19 +60,14 @@ class Rearrangement:
 
 def design_gain(one: Rearrangement, states: States) -> float:
     """Return what a rearrangement gains in the layer's agreement with its own design."""
-    state = states[one.layer]
-    if not state.design_told:
-        return 0.0
-    known = state.batch_part(state.components) if one.tubes else None
-    moves = one.places[None], one.sources[None]
-    return float(rearrangement_gains(state.components, state.hat(), state.df, *moves, known)[0])
+    return float(states[one.layer].moves_gain(one.places[None], one.sources[None], one.tubes)[0])
 
 
 def agreement_gain(one: Rearrangement, match: LayerMatch) -> float:
     """Return what a rearrangement gains in the layer's agreement with another; 0 where it cannot tell."""
     if match.untestable or one.layer not in (match.first, match.second):
         return 0.0
-    rows = match.rows[0 if match.first == one.layer else 1]
+    rows = match.rows_of(one.layer)
     inside = {row: place for place, row in enumerate(rows.tolist())}
     if any(row not in inside for row in one.places.tolist()):
         return 0.0

@@ -17,7 +17,6 @@ IndexArray = NDArray[np.intp]
 BoolArray = NDArray[np.bool_]
 Matches = Mapping[frozenset[str], LayerMatch]
 
-SAME_COLUMN = 1e-9
 MOST_PAIRS = 8
 MOST_CYCLES = 3
 TIE = 1e-6
@@ -97,7 +96,7 @@ def layer_gains(states: States, matches: Matches) -> list[LayerGains]:
     for name, state in states.items():
         shared, partners, names = _shared_gains(state, matches)
         for tubes in (False, True):
-            counted = _compared(state, tubes) & ((partners >= 0) | state.design_told)
+            counted = state.compared(tubes) & ((partners >= 0) | state.design_told)
             if counted.any():
                 design = state.design_gains(tubes)
                 found.append(LayerGains(name, tubes, shared, partners, names, design, counted))
@@ -112,7 +111,7 @@ def _shared_gains(state: LayerState, matches: Matches) -> tuple[FloatArray, Inde
     for key, match in matches.items():
         if name not in key or match.untestable:
             continue
-        rows = match.rows[0 if match.first == name else 1]
+        rows = match.rows_of(name)
         gains = np.full((n, n), -np.inf)
         gains[np.ix_(rows, rows)] = match.gains()
         partners[gains > best] = len(names)
@@ -121,20 +120,6 @@ def _shared_gains(state: LayerState, matches: Matches) -> tuple[FloatArray, Inde
     # Union bound over the layers among which the best was taken.
     shared = np.where(np.isfinite(best), best - np.log(max(len(names), 1)), 0.0)
     return shared, partners, tuple(names)
-
-
-def _compared(state: LayerState, tubes: bool) -> BoolArray:
-    """Return the pairs above the diagonal; for tubes those alone whose batch columns differ."""
-    n = state.order.size
-    above = np.triu(np.ones((n, n), dtype=bool), 1)
-    if not tubes:
-        return above
-    batch = state.layer.batch
-    if batch is None or batch.shape[1] == 0:
-        return np.zeros((n, n), dtype=bool)
-    size = np.maximum(np.abs(batch).max(axis=0), 1e-300)
-    differs = (np.abs(batch[:, None] - batch) / size > SAME_COLUMN).any(axis=2)
-    return np.asarray(above & differs)
 
 
 def pair_candidates(gains: list[LayerGains], least: float) -> list[Candidate]:

@@ -55,8 +55,8 @@ class Swap:
     before_runs : bool
         The marks of the run (batch columns) stayed where they are: the tubes were exchanged before the runs.
     gain : float
-        Evidence: log likelihood ratio of the arrangement found to the delivered one, mean of before and after
-        all is refitted; the sum over the exchanges that make up the cycle.
+        Evidence: log likelihood ratio of the arrangement found to the delivered one, as the search weighs it;
+        the sum over the exchanges that make up the cycle.
     bound : float
         The largest bound that one of them had to pass.
     evidence : tuple of SwapEvidence

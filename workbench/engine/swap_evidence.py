@@ -79,7 +79,7 @@ def _from_agreement(candidate: Candidate, match: LayerMatch) -> SwapEvidence:
     """Take the direction (who predicts whom) that tells more."""
     best = max(match.predictions, key=lambda one: one.information)
     move = candidate.move
-    rows = match.rows[0 if match.first == move.layer else 1]
+    rows = match.rows_of(move.layer)
     inside = {row: place for place, row in enumerate(rows.tolist())}
     places = np.array([inside[row] for row in move.places.tolist()])
     sources = np.array([inside[row] for row in move.sources.tolist()])

@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.engine.exchange_gain import exchange_gains
+from workbench.engine.exchange_gain import exchange_gains, rearrangement_gains, relabelling_gains
 from workbench.engine.linear import thin_basis
 from workbench.engine.nuisance import Nuisance, check_finite, standardise
 from workbench.engine.signal_components import signal_components
@@ -16,9 +16,11 @@ from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
+BoolArray = NDArray[np.bool_]
 
 COMPONENTS_PER_DF = 3
 REFIT_ROUNDS = 4
+SAME_COLUMN = 1e-9
 
 
 @dataclass(frozen=True, eq=False)
@@ -96,15 +98,55 @@ class LayerState:
         projection: FloatArray = self.nuisance.basis @ self.nuisance.basis.T
         return projection
 
-    def design_gains(self, tubes: bool) -> FloatArray:
+    def design_gains(self, tubes: bool, rows: FloatArray | None = None) -> FloatArray:
         """Return what exchanging each two rows gains in agreement with the design, shape (n, n).
 
-        ``tubes``: the batch columns' part of the rows stays where it is.
+        Parameters
+        ----------
+        tubes : bool
+            The batch columns stay where they are, the group's go with the tubes; for pairs that
+            :meth:`compared` leaves out it is 0.
+        rows : ndarray of shape (n_samples, m), optional
+            In place of the components.
         """
+        rows = self.components if rows is None else rows
+        n = self.order.size
         if not self.design_told:
-            return np.zeros((self.nuisance.n_samples,) * 2)
-        known = self.batch_part(self.components) if tubes else None
-        return exchange_gains(self.components, self.hat(), self.df, known)
+            return np.zeros((n, n))
+        if not tubes:
+            return exchange_gains(rows, self.hat(), self.df)
+        first, second = np.nonzero(self.compared(True))
+        places = np.column_stack([first, second])
+        gains = np.zeros((n, n))
+        gains[first, second] = self.moves_gain(places, places[:, ::-1], True, rows)
+        return gains + gains.T
+
+    def moves_gain(
+        self, places: IndexArray, sources: IndexArray, tubes: bool, rows: FloatArray | None = None
+    ) -> FloatArray:
+        """Return what each of several rearrangements gains in agreement with the design, shape (count,)."""
+        rows = self.components if rows is None else rows
+        if not self.design_told:
+            return np.zeros(len(places))
+        if not tubes:
+            return rearrangement_gains(rows, self.hat(), self.df, places, sources)
+        n, group = self.order.size, self.layer.group
+        fixed = Nuisance.of(self.layer.batch, n).basis
+        columns = np.empty((n, 0)) if group is None else group
+        return relabelling_gains(rows, fixed, columns, self.df, places, sources)
+
+    def compared(self, tubes: bool) -> BoolArray:
+        """Return the pairs above the diagonal; for tubes those alone whose batch columns differ."""
+        n = self.order.size
+        above = np.triu(np.ones((n, n), dtype=bool), 1)
+        if not tubes:
+            return above
+        batch = self.layer.batch
+        if batch is None or batch.shape[1] == 0:
+            return np.zeros((n, n), dtype=bool)
+        size = np.maximum(np.abs(batch).max(axis=0), 1e-300)
+        differs = (np.abs(batch[:, None] - batch) / size > SAME_COLUMN).any(axis=2)
+        return np.asarray(above & differs)
 
     def batch_part(self, rows: FloatArray) -> FloatArray:
         """Return what the batch columns explain of some rows, the whole design fitted."""

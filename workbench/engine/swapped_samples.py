@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from workbench.engine.layer_match import LayerMatch, match_layers
 from workbench.engine.rearrangement import Rearrangement, agreement_gain, design_gain
 from workbench.engine.strangers import Stranger, find_strangers
+from workbench.engine.swap_bound import clean_bound
 from workbench.engine.swap_candidates import (
     Candidate,
     LayerGains,
@@ -32,6 +33,7 @@ Matches = dict[frozenset[str], LayerMatch]
 
 LEVEL = 0.05
 SLACK = 5.0
+LEAST_BOUND = 5.5
 MOST_EXCHANGES = 10
 TOLD = math.log(20.0)
 
@@ -51,7 +53,7 @@ class SwapSearch:
     level : float
         Family-wise rate for which the bounds are set.
     pair_bound, cycle_bound : float
-        ``log(arrangements compared / level)`` for exchanged pairs, and for cycles of three.
+        Evidence that an exchanged pair, and a cycle of three, have to pass.
     """
 
     swaps: tuple[Swap, ...]
@@ -67,7 +69,9 @@ class SwapSearch:
         return any(not match.untestable for match in self.matches)
 
 
-def find_swapped_samples(layers: Sequence[SwapLayer], *, level: float = LEVEL) -> SwapSearch:
+def find_swapped_samples(
+    layers: Sequence[SwapLayer], *, level: float = LEVEL, random_state: int | np.random.Generator = 0
+) -> SwapSearch:
     """Search for samples that were exchanged in one of several layers.
 
     Every layer is reduced to factors of its own, found without a look at the others. For each two layers the
@@ -75,18 +79,20 @@ def find_swapped_samples(layers: Sequence[SwapLayer], *, level: float = LEVEL) -
     for each two samples the log likelihood ratio of "exchanged" to "as delivered" is taken
     (:func:`~workbench.engine.exchange_gain.exchange_gains`), and added to it the same ratio for the layer's
     components given its design, which catches exchanges across run days and groups and tells the layer.
-    The best few are exchanged, all is refitted, and the evidence is the mean of the gain before and the loss
-    after. It is accepted above ``log(arrangements compared / level)``: in a clean study the ratios have mean 1
-    at most, so that by Markov's inequality no more than ``level`` of such studies pass (under a normal law).
-    The search goes on from the accepted arrangement until none passes. Cycles of three have a bound of their
-    own.
+    The best few pairs are looked at again: with no fit learning from the two, and with the two exchanged and
+    all refitted. The evidence is the mean of the gain at first, the gain without learning from them, and the
+    loss after. It is accepted above a bound that clean studies like this one pass with probability ``level``
+    (:func:`~workbench.engine.swap_bound.clean_bound`), at least ``LEAST_BOUND``; a cycle of three has to pass
+    ``log(cycles / pairs)`` more. The search goes on from the accepted arrangement until none passes.
 
     Parameters
     ----------
     layers : sequence of SwapLayer
         At least two, of different names.
     level : float
-        Between 0 and 1.
+        Family-wise rate of accusing a clean study, between 0 and 1.
+    random_state : int or Generator
+        Of the draws for the bound.
 
     Raises
     ------
@@ -111,7 +117,7 @@ def find_swapped_samples(layers: Sequence[SwapLayer], *, level: float = LEVEL) -
     states = _check_layers(layers, level)
     matches = {frozenset((a, b)): match_layers(states[a], states[b]) for a, b in combinations(states, 2)}
     gains = layer_gains(states, matches)
-    bounds = _bounds(gains, level)
+    bounds = _bounds(gains, clean_bound(states, matches, level, random_state))
     accepted: list[Accepted] = []
     while len(accepted) < MOST_EXCHANGES:
         one = _best_step(states, matches, gains, bounds, accepted)
@@ -139,11 +145,12 @@ def _check_layers(layers: Sequence[SwapLayer], level: float) -> States:
     return {layer.name: layer_state(layer) for layer in layers}
 
 
-def _bounds(gains: list[LayerGains], level: float) -> tuple[float, float]:
-    """Return the bounds of pairs and of cycles of three: log of the arrangements compared over the level."""
+def _bounds(gains: list[LayerGains], pair: float) -> tuple[float, float]:
+    """Return the bounds of pairs and of cycles of three, which are more by the log of how many more there are."""
     pairs = sum(int(one.counted.sum()) for one in gains)
     cycles = sum(2 * math.comb(len(one.counted), 3) for one in gains)
-    return math.log(max(pairs, 1) / level), math.log(max(cycles, 1) / level)
+    pair = max(pair, LEAST_BOUND)
+    return pair, pair + math.log(max(cycles, 1) / max(pairs, 1))
 
 
 def _best_step(
@@ -159,7 +166,7 @@ def _best_step(
     best: tuple[Candidate, float, float] | None = None
     for candidate in pairs + cycles:
         bound = bounds[candidate.move.places.size - 2]
-        gain = 0.5 * (candidate.gain + _loss_after(candidate, states, matches))
+        gain = _evidence(candidate, states, matches)
         if gain - bound >= (best[1] - best[2] if best else 0.0):
             best = candidate, gain, bound
     if best is None:
@@ -179,15 +186,18 @@ def _best_step(
     )
 
 
-def _loss_after(candidate: Candidate, states: States, matches: Matches) -> float:
-    """Return what taking the rearrangement back would lose, all refitted with it done."""
+def _evidence(candidate: Candidate, states: States, matches: Matches) -> float:
+    """Return the mean of the gain at first, without learning from the samples, and of the loss after."""
     move = candidate.move
     after = {**states, move.layer: move.done(states)}
-    lost = -design_gain(move.back(), after)
+    unlearnt, lost = candidate.gain, -design_gain(move.back(), after)
     if candidate.partner:
-        match = _again(matches[frozenset((move.layer, candidate.partner))], after)
-        lost -= agreement_gain(move.back(), match) + candidate.penalty
-    return lost
+        match = matches[frozenset((move.layer, candidate.partner))]
+        samples = set(states[move.layer].layer.samples[move.places].tolist())
+        without = match_layers(states[match.first], states[match.second], match, samples)
+        unlearnt = agreement_gain(move, without) - candidate.penalty + candidate.design_gain
+        lost -= agreement_gain(move.back(), _again(match, after)) + candidate.penalty
+    return (candidate.gain + unlearnt + lost) / 3.0
 
 
 def _again(match: LayerMatch, states: States) -> LayerMatch:
