@@ -47,8 +47,9 @@ def check(
 
 def _lines(row: dict[str, Any]) -> list[str]:
     where = f" ({row['block']})" if row["block"] else ""
-    settled = f"   accepted: {row['accepted']}" if row["accepted"] is not None else f"   {row['todo']}"
-    return [f"{row['severity']} {row['id']}{where}: {row['what']}", settled]
+    settled = f"accepted: {row['accepted']}" if row["accepted"] is not None else row["todo"]
+    first = f"{row['severity']} {row['id']}{where}: {row['what']}"
+    return [first, f"   {settled}"] if settled else [first]
 
 
 def _count(found: list[dict[str, Any]]) -> str:
