@@ -54,6 +54,9 @@ def add_block(
     ] = None,
     sheet: Annotated[str | None, typer.Option(metavar="NAME", help="Sheet of an XLSX file.")] = None,
     array: Annotated[str | None, typer.Option(metavar="NAME", help="X or a layer of an .h5ad file.")] = None,
+    decimal: Annotated[
+        str | None, typer.Option(metavar=".|,", help="Decimal mark of numbers that are text; default: found.")
+    ] = None,
     adjust: AdjustOption = None,
     accept_names: Annotated[
         bool, typer.Option("--accept-names", help="Use the names that nearly match, as they were offered.")
@@ -73,6 +76,7 @@ def add_block(
         annotations=annotations,
         sheet=sheet,
         array=array,
+        decimal=decimal,
         adjust=adjust or (),
         runs=runs,
         accept_names=accept_names,

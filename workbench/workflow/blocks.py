@@ -48,6 +48,7 @@ class Delivery:
     runs: Path | None = None
     sheet: str | None = None
     array: str | None = None
+    decimal: str | None = None
     adjust: tuple[str, ...] = ()
     accept_names: bool = False
     replace: bool = False
@@ -167,7 +168,7 @@ def _keep(
         entries[key], digest = keep_source(change, paths, path)
         sources.append({"file": entries[key], "sha256": digest, "delivered_as": path.name})
     entries |= {"layer": delivery.layer, "values": delivery.values}
-    for key in ("samples_in", "sheet", "array"):
+    for key in ("samples_in", "sheet", "array", "decimal"):
         if getattr(delivery, key) is not None:
             entries[key] = getattr(delivery, key)
     if delivery.adjust:

@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import json
 from collections.abc import Sequence
+from pathlib import Path
 from typing import Any
 
 import pandas as pd
 
 from workbench.checks import Finding, run_checks, study_data
 from workbench.errors import FindingsError
-from workbench.store import Change, check_file, json_bytes, read_block, table_bytes
+from workbench.store import Change, check_file, json_bytes, read_block, sha256_of, table_bytes
 from workbench.workflow.fingerprints import block_header, columns_fingerprint, fingerprint
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.stages import Stage
@@ -22,6 +23,8 @@ SEED = 20260101
 FOLDER = "results/check"
 RECORD = f"{FOLDER}/findings.json"
 SCHEMA_VERSION = 1
+SPARE_ENDINGS = (".tsv", ".csv", ".txt")
+LARGEST_SPARE = 5_000_000
 
 
 def checking_stage(names: Sequence[str]) -> Stage:
@@ -49,6 +52,7 @@ def _inputs(state: ProjectState, names: Sequence[str]) -> dict[str, str]:
             ]
         ),
     }
+    hashes |= {f"spare table {path.name}": sha256_of(path) for path in spare_files(state)}
     for name in names:
         header = block_header(state.paths.prepared_block(name))
         hashes[f"block {name}"] = fingerprint([header["content_sha256"], header["measured_sha256"]])
@@ -58,13 +62,43 @@ def _inputs(state: ProjectState, names: Sequence[str]) -> dict[str, str]:
 def _work(state: ProjectState, change: Change, reporter: Reporter, names: Sequence[str]) -> list[str]:
     measured = {name: measured_block(state, name) for name in names}
     prepared = {name: read_block(check_file(state.root, f"prepared/{name}.h5ad")) for name in names}
-    found = run_checks(study_data(state.settings, state.require_sheet(), measured, prepared), SEED)
+    data = study_data(state.settings, state.require_sheet(), measured, prepared, spare_tables(state))
+    found = run_checks(data, SEED)
     rows = [finding_row(finding) for finding in found]
     change.write_bytes(RECORD, json_bytes({"schema_version": SCHEMA_VERSION, "findings": rows}))
     change.write_bytes(f"{FOLDER}/findings.tsv", table_bytes(_table(rows)))
     for finding in found:
         reporter.say(f"  {finding.severity} {finding.id}: {finding.what}")
     return _write_figures(change, found)
+
+
+def spare_files(state: ProjectState) -> list[Path]:
+    """Return the text tables below ``source/`` that no block uses: lists that may be used one day."""
+    used = {
+        file
+        for block in state.settings.blocks.values()
+        for file in (block.file, block.names, block.runs, block.annotations)
+    }
+    found = sorted(state.paths.source.glob("*")) if state.paths.source.is_dir() else []
+    return [
+        path
+        for path in found
+        if path.suffix in SPARE_ENDINGS
+        and state.paths.relative(path) not in used
+        and path.stat().st_size <= LARGEST_SPARE
+    ]
+
+
+def spare_tables(state: ProjectState) -> dict[str, pd.DataFrame]:
+    """Return the cells of the spare tables as text; one that is no table is left alone."""
+    tables = {}
+    for path in spare_files(state):
+        separator = "," if path.suffix == ".csv" else "\t"
+        try:
+            tables[path.name] = pd.read_csv(path, sep=separator, dtype=str, keep_default_na=False)
+        except (ValueError, OSError):
+            continue
+    return tables
 
 
 def _write_figures(change: Change, found: Sequence[Finding]) -> list[str]:
