@@ -81,7 +81,7 @@ def test_names_that_nearly_match_are_offered_and_used_only_when_accepted(command
     code, _, err = command(*words, *here)
     assert (code, "--accept-names" in err, "sample_1" in err) == (2, True, True)
     assert not (folder / "study" / "blocks" / "prot.h5ad").exists()
-    code, out, err = command(*words, "--accept-names", *here)
+    code, _, err = command(*words, "--accept-names", *here)
     assert code == 0, err
     names = folder / "study" / "source" / "prot_names.tsv"
     assert names.read_text().splitlines()[1] == "sample_1\tS01"
