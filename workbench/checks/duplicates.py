@@ -25,7 +25,8 @@ FEATURES_CHECK = "duplicated_features"
 CONSTANT_CHECK = "constant_features"
 FEWEST_SAMPLES, FEWEST_FEATURES = 5, 20
 NEAR = 0.25
-BY_CHANCE = 1e-3
+NARROW, WIDE = 2, 5
+NEAR_BY_CHANCE, EQUAL_BY_CHANCE = 1e-6, 1e-3
 SAME_SHARE = 0.95
 SAME_TOLERANCE = 1e-6
 FEWEST_SAME = 10
@@ -39,7 +40,7 @@ def check_duplicates(data: StudyData) -> list[Finding]:
 
     Samples: an error where 95 % of the cells that tell samples apart are equal, or equal but for one factor;
     a warning where two samples are four times as close as samples of the block are to their neighbours, closer
-    than chance would bring any pair in 1 of 1000 blocks, and not of one subject. Features: those with equal
+    than chance would bring any pair in one of a million blocks, and not of one subject. Features: those with equal
     values in all samples, where chance explains it in fewer than 1 of 1000 blocks.
     """
     subjects = _subjects(data)
@@ -92,8 +93,8 @@ def near_pairs(values: FloatArray) -> list[tuple[int, int]]:
     """Return pairs of samples far closer to each other than samples are to their neighbours, closest first.
 
     A pair counts when its squared distance is at most a quarter of the median distance to the nearest
-    neighbour, or of that of each of the two to any third sample; and chance brings none of the pairs so close
-    in 999 of 1000 blocks: chi-squared laws with the effective number of features of the whole block, and of
+    neighbour, or of that of each of the two to any third sample; and chance brings a pair so close in at most
+    one of a million blocks: chi-squared laws with the effective number of features of the whole block, and of
     what its components with signal leave.
 
     Parameters
@@ -114,7 +115,7 @@ def near_pairs(values: FloatArray) -> list[tuple[int, int]]:
     nearest = float(np.median(squared.min(axis=1)))
     third = np.partition(squared, 1, axis=1)[:, 1]
     near = (distances <= NEAR * nearest) | (distances <= NEAR * np.minimum(third[rows], third[columns]))
-    chosen = np.flatnonzero(near & (by_chance <= BY_CHANCE))
+    chosen = np.flatnonzero(near & (by_chance <= NEAR_BY_CHANCE))
     chosen = chosen[np.argsort(distances[chosen], kind="stable")]
     return [(int(rows[k]), int(columns[k])) for k in chosen]
 
@@ -124,7 +125,8 @@ def _chance(values: FloatArray, distances: FloatArray) -> FloatArray:
 
     The distance in the noise is at most the whole distance, so that its law bounds the chance from above; the
     law of the whole block covers blocks in which most samples have a copy and nothing is left as noise. With
-    fewer features than samples neither law is exact, and the larger chance counts.
+    fewer than two features a sample neither law is exact, and the larger chance counts; from five features a
+    sample on the effective number is that of the engine, below it the number that the eigenvalues show.
     """
     n, p = values.shape
     basis = thin_basis(values)
@@ -134,9 +136,10 @@ def _chance(values: FloatArray, distances: FloatArray) -> FloatArray:
     whole = _chance_under(distances, squares.sum() / (n - 1), _evenly_spread(squares))
     if not rest.size:
         return whole
-    if p < n:
+    if p < NARROW * n:
         return np.maximum(whole, _chance_under(distances, rest.sum() / (n - 1), _evenly_spread(rest)))
-    return np.minimum(whole, _chance_under(distances, rest.mean(), signal.effective_features))
+    effective = signal.effective_features if p >= WIDE * n else _evenly_spread(rest)
+    return np.minimum(whole, _chance_under(distances, rest.mean(), effective))
 
 
 def _evenly_spread(eigenvalues: FloatArray) -> float:
@@ -238,7 +241,7 @@ def equal_features(measured: FloatArray) -> list[tuple[int, ...]]:
     plain[np.isnan(plain)] = np.nan
     for j, column in enumerate(plain):
         families[column.tobytes()].append(j)
-    least = np.log(max(1.0, p * (p - 1) / 2) / BY_CHANCE)
+    least = np.log(max(1.0, p * (p - 1) / 2) / EQUAL_BY_CHANCE)
     told = [family for family in families.values() if len(family) > 1 and n > 1]
     return [tuple(family) for family in told if _orders(plain[family[0]]) > least]
 

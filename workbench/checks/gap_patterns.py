@@ -22,7 +22,7 @@ DRAWS = 999
 FEWEST_GAPS, FEWEST_SAMPLES = 3, 8
 FEWEST_PER_LEVEL = 3
 APART = 0.5
-LEAST_APART, LEAST_APART_SHARE = 3, 0.05
+LEAST_APART, LEAST_APART_SHARE = 3, 0.10
 MOST_LEVELS = 12
 MOST_DRAWN = 30
 
@@ -42,7 +42,7 @@ def gap_patterns(data: StudyData) -> list[Finding]:
 
     Features with at least three gaps and three values are looked at. The statistic is the sum of their
     chi-squared figures against the column; its p comes from permuted samples. Reported when p, over all
-    columns and blocks, is at most 0.01 and at least three features, and 5 % of those looked at, have missing
+    columns and blocks, is at most 0.01 and at least three features, and a tenth of those looked at, have missing
     shares that differ by half or more between two levels of at least three samples.
     """
     asked = [(block, column) for block in data.blocks.values() for column in _columns(data, block)]
