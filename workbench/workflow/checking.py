@@ -11,14 +11,16 @@ import pandas as pd
 
 from workbench.checks import Finding, run_checks, study_data
 from workbench.errors import FindingsError
+from workbench.figures.findings import draw_findings
 from workbench.store import Change, check_file, json_bytes, read_block, sha256_of, table_bytes
+from workbench.workflow.drawings import write_drawings
 from workbench.workflow.fingerprints import block_header, columns_fingerprint, fingerprint
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
 from workbench.workflow.tables import measured_block
 
-VERSION = 1
+VERSION = 2
 SEED = 20260101
 FOLDER = "results/check"
 RECORD = f"{FOLDER}/findings.json"
@@ -69,7 +71,7 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, names: Sequen
     change.write_bytes(f"{FOLDER}/findings.tsv", table_bytes(_table(rows)))
     for finding in found:
         reporter.say(f"  {finding.severity} {finding.id}: {finding.what}")
-    return _write_figures(change, found)
+    return write_drawings(change, FOLDER, draw_findings(found))
 
 
 def spare_files(state: ProjectState) -> list[Path]:
@@ -99,11 +101,6 @@ def spare_tables(state: ProjectState) -> dict[str, pd.DataFrame]:
         except (ValueError, OSError):
             continue
     return tables
-
-
-def _write_figures(change: Change, found: Sequence[Finding]) -> list[str]:
-    del change, found
-    return []
 
 
 def finding_row(finding: Finding) -> dict[str, Any]:

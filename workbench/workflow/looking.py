@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pandas as pd
 
-from workbench.figures import Drawing, draw_between, draw_look, figure_files
+from workbench.figures import draw_between, draw_look
 from workbench.intake import design_columns, group_codes, missing_samples
 from workbench.look import (
     BlockView,
@@ -22,6 +22,7 @@ from workbench.look import (
 from workbench.store import Change, table_bytes
 from workbench.workflow.analysis_view import factors_of
 from workbench.workflow.design_frame import design_frame
+from workbench.workflow.drawings import write_drawings
 from workbench.workflow.fingerprints import block_header, columns_fingerprint, fingerprint
 from workbench.workflow.loaded_block import load_block
 from workbench.workflow.reporting import Reporter
@@ -39,7 +40,7 @@ def looking_stage(name: str) -> Stage:
         kind="look",
         subject=name,
         needs=(f"prepare:{name}",),
-        outputs=(f"results/look/{name}/reading.txt", f"results/look/{name}/captions.tsv"),
+        outputs=(f"results/look/{name}/reading.txt",),
         inputs=lambda state: _inputs(state, [name]),
         work=lambda state, change, reporter: _look(state, change, reporter, name),
     )
@@ -51,7 +52,7 @@ def between_stage(names: list[str]) -> Stage:
         kind="look",
         subject=BETWEEN,
         needs=tuple(f"prepare:{name}" for name in names),
-        outputs=("results/look/agreement.tsv", "results/look/reading.txt", "results/look/captions.tsv"),
+        outputs=("results/look/agreement.tsv", "results/look/reading.txt"),
         inputs=lambda state: _inputs(state, names),
         work=lambda state, change, reporter: _look_between(state, change, reporter, names),
     )
@@ -80,7 +81,7 @@ def _look(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
         written.append(f"{folder}/{table}.tsv")
         change.write_bytes(written[-1], table_bytes(frame))
     with reporter.progress(f"figures of {name}"):
-        written += _write_drawings(change, folder, draw_look(look))
+        written += write_drawings(change, folder, draw_look(look))
     change.write_text(f"{folder}/reading.txt", "\n".join(reading) + "\n")
     reporter.say(f"  {reading[1] if len(reading) > 1 else reading[0]}")
     return written
@@ -95,18 +96,7 @@ def _look_between(state: ProjectState, change: Change, reporter: Reporter, names
     change.write_text("results/look/reading.txt", "\n".join(reading) + "\n")
     for line in reading:
         reporter.say(f"  {line}")
-    return _write_drawings(change, "results/look", draw_between(look))
-
-
-def _write_drawings(change: Change, folder: str, drawings: tuple[Drawing, ...]) -> list[str]:
-    """Write the figures and their captions; return the names of the figures' files."""
-    written = []
-    for file, content in figure_files(drawings):
-        written.append(f"{folder}/{file}")
-        change.write_bytes(written[-1], content)
-    captions = pd.DataFrame([(one.name, one.caption) for one in drawings], columns=["figure", "caption"])
-    change.write_bytes(f"{folder}/captions.tsv", table_bytes(captions))
-    return written
+    return write_drawings(change, "results/look", draw_between(look))
 
 
 def view_block(state: ProjectState, name: str) -> BlockView:

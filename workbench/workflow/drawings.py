@@ -1,0 +1,19 @@
+"""Figures and their captions as files of a stage."""
+
+from __future__ import annotations
+
+import pandas as pd
+
+from workbench.figures import Drawing, figure_files
+from workbench.store import Change, table_bytes
+
+
+def write_drawings(change: Change, folder: str, drawings: tuple[Drawing, ...]) -> list[str]:
+    """Write the figures and their captions below a folder of the project; return the names of all files."""
+    written = [f"{folder}/captions.tsv"]
+    captions = pd.DataFrame([(one.name, one.caption) for one in drawings], columns=["figure", "caption"])
+    change.write_bytes(written[0], table_bytes(captions))
+    for file, content in figure_files(drawings):
+        written.append(f"{folder}/{file}")
+        change.write_bytes(written[-1], content)
+    return written
