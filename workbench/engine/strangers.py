@@ -13,7 +13,7 @@ from workbench.engine.layer_match import LayerMatch, Prediction
 
 FloatArray = NDArray[np.float64]
 
-STRANGER_LEVEL = 0.01
+STRANGER_LEVEL = 0.001
 
 
 @dataclass(frozen=True, eq=False)

@@ -69,6 +69,13 @@ class SwapSearch:
         return any(not match.untestable for match in self.matches)
 
 
+@dataclass(frozen=True, eq=False)
+class _Passed:
+    candidate: Candidate
+    gain: float
+    bound: float
+
+
 def find_swapped_samples(
     layers: Sequence[SwapLayer], *, level: float = LEVEL, random_state: int | np.random.Generator = 0
 ) -> SwapSearch:
@@ -82,8 +89,9 @@ def find_swapped_samples(
     The best few pairs are looked at again: with no fit learning from the two, and with the two exchanged and
     all refitted. The evidence is the mean of the gain at first, the gain without learning from them, and the
     loss after. It is accepted above a bound that clean studies like this one pass with probability ``level``
-    (:func:`~workbench.engine.swap_bound.clean_bound`), at least ``LEAST_BOUND``; a cycle of three has to pass
-    ``log(cycles / pairs)`` more. The search goes on from the accepted arrangement until none passes.
+    (:func:`~workbench.engine.swap_bound.clean_bound`), at least ``LEAST_BOUND``. A cycle of three has to pass
+    ``log(cycles / pairs)`` more, and ``log(1 / level)`` on top of that to be preferred to a pair. The search
+    goes on from the accepted arrangement until none passes.
 
     Parameters
     ----------
@@ -120,7 +128,7 @@ def find_swapped_samples(
     bounds = _bounds(gains, clean_bound(states, matches, level, random_state))
     accepted: list[Accepted] = []
     while len(accepted) < MOST_EXCHANGES:
-        one = _best_step(states, matches, gains, bounds, accepted)
+        one = _best_step(states, matches, gains, bounds, level, accepted)
         if one is None:
             break
         accepted.append(one)
@@ -158,20 +166,20 @@ def _best_step(
     matches: Matches,
     gains: list[LayerGains],
     bounds: tuple[float, float],
+    level: float,
     earlier: Sequence[Accepted],
 ) -> Accepted | None:
     """Return the rearrangement that passes its bound by most; None when none does."""
     pairs = pair_candidates(gains, bounds[0] - SLACK)
     cycles = cycle_candidates(pairs, states, matches, bounds[1] - SLACK)
-    best: tuple[Candidate, float, float] | None = None
-    for candidate in pairs + cycles:
-        bound = bounds[candidate.move.places.size - 2]
-        gain = _evidence(candidate, states, matches)
-        if gain - bound >= (best[1] - best[2] if best else 0.0):
-            best = candidate, gain, bound
+    pair = _best(pairs, bounds[0], states, matches)
+    cycle = _best(cycles, bounds[1], states, matches)
+    # A cycle holds every pair of its three with one sample more: it has to be worth that one.
+    dearer = bounds[1] - bounds[0] - math.log(level)
+    best = cycle if cycle and (pair is None or cycle.gain >= pair.gain + dearer) else pair
     if best is None:
         return None
-    candidate, gain, bound = best
+    candidate = best.candidate
     layers = _likely_layers(candidate.move, states, matches)
     move = _in_same_layer(candidate.move, layers, states, earlier)
     samples = states[move.layer].layer.samples
@@ -180,10 +188,17 @@ def _best_step(
         tuple(samples[move.places].tolist()),
         tuple(samples[move.sources].tolist()),
         layers,
-        gain,
-        bound,
+        best.gain,
+        best.bound,
         swap_evidence(candidate, states, matches),
     )
+
+
+def _best(candidates: Sequence[Candidate], bound: float, states: States, matches: Matches) -> _Passed | None:
+    """Return the candidate with the most evidence if it passes the bound."""
+    weighed = [_Passed(one, _evidence(one, states, matches), bound) for one in candidates]
+    best = max(weighed, key=lambda one: one.gain, default=None)
+    return best if best is not None and best.gain >= bound else None
 
 
 def _evidence(candidate: Candidate, states: States, matches: Matches) -> float:
