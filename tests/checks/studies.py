@@ -11,10 +11,15 @@ from anndata import AnnData
 from simulated import Design, Study, clinical, metabolites, proteins, simulate, transcripts
 
 from workbench.checks import study_data
+from workbench.checks.registry import CHECKS
+from workbench.checks.swapped import swapped_samples
 from workbench.errors import InputError
 from workbench.prepare import MeasuredTable
 from workbench.prepare.recipe import recipe_for
 from workbench.settings import parse_settings
+
+ALONE = tuple(check for check in CHECKS if check is not swapped_samples)
+"""Checks that look at no more than one block at a time, or at the design: all but the search for swaps."""
 
 SMALL = (
     transcripts(features=600, module_size=40, group_effect=1.0),

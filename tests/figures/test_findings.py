@@ -17,6 +17,7 @@ from workbench.checks.evidence import (
     TwoSamples,
     ValueSpread,
 )
+from workbench.checks.swapped import SwapPicture
 from workbench.figures import figure_bytes
 from workbench.figures.findings import DRAWERS, draw_findings, figure_file
 
@@ -36,6 +37,9 @@ EVIDENCE = [
     GapShares("day", ("a", "b"), ("f1", "f2"), np.array([[0.0, 1.0], [0.5, np.nan]])),
     RunFigures(np.arange(6.0), RNG.normal(size=6), ("pool", "sample") * 3, "mean log2"),
     FeatureShares(RNG.random(100), 0.3, "relative standard deviation"),
+    SwapPicture(
+        NAMES, RNG.normal(size=20), RNG.normal(size=20), (2, 5), np.zeros(2), np.ones(2), ("expected", "score")
+    ),
 ]  # fmt: skip
 
 
@@ -53,7 +57,7 @@ def test_every_kind_of_evidence_is_drawn_the_same_twice(evidence):
 
 
 def test_every_drawer_is_tested_here():
-    assert {type(evidence) for evidence in EVIDENCE} <= set(DRAWERS)
+    assert {type(evidence) for evidence in EVIDENCE} == set(DRAWERS)
 
 
 def test_the_samples_of_the_finding_are_named_in_the_figure():

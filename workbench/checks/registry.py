@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import replace
 
 from workbench.checks.alignment import check_alignment
@@ -17,6 +17,7 @@ from workbench.checks.kinds import check_kinds
 from workbench.checks.outlying import outlying_samples
 from workbench.checks.personal import personal_data
 from workbench.checks.run_quality import check_runs
+from workbench.checks.swapped import swapped_samples
 from workbench.checks.tangled import check_design
 
 Check = Callable[[StudyData], list[Finding]]
@@ -30,13 +31,16 @@ CHECKS: tuple[Check, ...] = (
     check_depth,
     gap_patterns,
     outlying_samples,
+    swapped_samples,
     unnamed_batches,
     check_runs,
     personal_data,
 )
 
 
-def run_checks(data: StudyData, seed: int | None = None) -> tuple[Finding, ...]:
+def run_checks(
+    data: StudyData, seed: int | None = None, checks: Sequence[Check] = CHECKS
+) -> tuple[Finding, ...]:
     """Return what all checks find, errors first, then by check and id.
 
     Parameters
@@ -44,7 +48,9 @@ def run_checks(data: StudyData, seed: int | None = None) -> tuple[Finding, ...]:
     data : StudyData
     seed : int, optional
         Of all draws; that of ``data`` when left out. Equal seeds give equal findings.
+    checks : sequence of functions
+        All of them when left out.
     """
     if seed is not None:
         data = replace(data, seed=seed)
-    return sorted_findings(finding for check in CHECKS for finding in check(data))
+    return sorted_findings(finding for check in checks for finding in check(data))

@@ -26,6 +26,7 @@ from workbench.checks.evidence import (
     TwoSamples,
     ValueSpread,
 )
+from workbench.checks.swapped import SwapPicture
 from workbench.figures.drawing import Drawing
 from workbench.figures.labels import place_labels
 from workbench.figures.style import (
@@ -41,6 +42,7 @@ from workbench.figures.style import (
     plain_ticks,
     say,
 )
+from workbench.figures.swaps import swap_plot
 
 FloatArray = NDArray[np.float64]
 Drawer = Callable[[Any, Axes], Axes]
@@ -220,6 +222,7 @@ DRAWERS: dict[type, Drawer] = {
     GapShares: gap_shares,
     RunFigures: run_figures,
     FeatureShares: feature_shares,
+    SwapPicture: swap_plot,
 }
 
 
