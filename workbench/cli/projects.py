@@ -56,5 +56,5 @@ def status(project: ProjectOption = None, as_json: JsonOption = False, quiet: Qu
         [f"{found.title or 'untitled study'}: {samples}{group}, blocks: {', '.join(found.blocks) or 'none'}"]
     )
     answer(f"  {one.stage.name}: {one.reason or 'up to date'}" for one in found.stages)
-    answer(f"  left out: {what} ({reason})" for what, reason in found.excluded.items())
+    answer(f"  {choice}" for choice in found.choices)
     tell_next(found.next_command, quiet=quiet)

@@ -9,6 +9,7 @@ from workbench.network import build_network, graphml_bytes, with_communities, wi
 from workbench.store import Change, json_bytes, table_bytes
 from workbench.workflow.analysis_view import AnalysisView, blocks_of, view_analysis
 from workbench.workflow.canonical import analysis_inputs, has_canonical_pairs
+from workbench.workflow.choices import choices_of
 from workbench.workflow.edges import edges_table, group_pairs_table, screen_analysis
 from workbench.workflow.feature_table import canonical_correlations, features_table, implied_correlations
 from workbench.workflow.fingerprints import fingerprint
@@ -46,6 +47,7 @@ def _inputs(state: ProjectState, name: str) -> dict[str, str]:
     hashes["settings of the network"] = fingerprint(
         [VERSION, state.settings.analyses[name].network.model_dump(mode="json")]
     )
+    hashes["choices with a reason"] = fingerprint(list(choices_of(state.settings)))
     if has_canonical_pairs(state, name):
         hashes["canonical pairs"] = state.manifest.files.get(f"results/{name}/model.h5", "")
     return hashes

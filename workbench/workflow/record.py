@@ -12,6 +12,7 @@ from workbench import __version__
 from workbench.engine import Nuisance, critical_r
 from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.canonical import analysis_inputs
+from workbench.workflow.choices import choices_of
 from workbench.workflow.edges import GROUP_BOUND, Screens
 from workbench.workflow.state import ProjectState
 from workbench.workflow.tables import excluded
@@ -40,6 +41,7 @@ def analysis_record(
             "intervals": "r_low, r_high at the false-coverage rate of the selected edges",
             "canonical_pairs": "two layers" if len(view.layers) == 2 else _not_paired(view),
         },
+        "choices": list(choices_of(state.settings)),
         "edges": int(screens.chosen.r.size),
         "group_pairs": group_pairs,
         "edges_cut": cut_sentence(screens.chosen, view) or None,

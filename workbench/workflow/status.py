@@ -6,6 +6,7 @@ import shlex
 from dataclasses import dataclass
 from typing import Any
 
+from workbench.workflow.choices import choices_of
 from workbench.workflow.plan import all_stages
 from workbench.workflow.stages import Standing, standings
 from workbench.workflow.state import ProjectState
@@ -21,7 +22,7 @@ class Status:
     blocks: tuple[str, ...]
     analyses: tuple[str, ...]
     stages: tuple[Standing, ...]
-    excluded: dict[str, str]
+    choices: tuple[str, ...]
     next_command: str
 
     def as_json(self) -> dict[str, Any]:
@@ -37,7 +38,7 @@ class Status:
                 {"stage": one.stage.name, "fresh": one.reason is None, "reason": one.reason}
                 for one in self.stages
             ],
-            "excluded": self.excluded,
+            "choices": list(self.choices),
             "next_command": self.next_command,
         }
 
@@ -46,9 +47,6 @@ def status_of(state: ProjectState) -> Status:
     """Return the status of a project; nothing is written."""
     settings = state.settings
     stages = standings(state, all_stages(state)) if settings.blocks and state.sheet is not None else []
-    excluded = dict(settings.samples.exclude)
-    for name, block in settings.blocks.items():
-        excluded |= {f"{name}:{sample}": reason for sample, reason in block.exclude.items()}
     return Status(
         title=settings.study.title,
         samples=None if state.sheet is None else len(state.sheet),
@@ -56,7 +54,7 @@ def status_of(state: ProjectState) -> Status:
         blocks=tuple(settings.blocks),
         analyses=tuple(settings.analyses),
         stages=tuple(stages),
-        excluded=excluded,
+        choices=choices_of(settings),
         next_command=next_command(state, stages),
     )
 
