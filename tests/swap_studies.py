@@ -1,6 +1,9 @@
 """Simulated studies as the search for swapped samples takes them, and what was exchanged in them."""
 
+from dataclasses import replace
+
 import numpy as np
+import pandas as pd
 from simulated import Study
 from simulated.sheet import day_column, indicators
 
@@ -56,3 +59,33 @@ def crosses(study: Study, samples: frozenset[int]) -> str:
         if column in rows and rows[column].nunique() > 1
     ]
     return " ".join(words) or "nothing"
+
+
+def factor_layers(
+    n: int, seed: int, *, names: tuple[str, ...] = ("x", "y"), factors: int = 3, batches: int = 1
+) -> list[SwapLayer]:
+    """Return layers of 300, 120, 120 ... features that share factors, with run batches and two groups.
+
+    Every factor is in a fifth of a layer's features. With one batch there is no design at all.
+    """
+    rng = np.random.default_rng(seed)
+    shared = rng.normal(size=(n, factors))
+    layers = []
+    for place, name in enumerate(names):
+        p = 120 if place else 300
+        loadings = 1.2 * rng.normal(size=(factors, p)) * (rng.random((factors, p)) < 0.2)
+        values = shared @ loadings + rng.normal(size=(n, p))
+        batch = group = None
+        if batches > 1:
+            batch = indicators(pd.Series(rng.permutation(n) % batches))[:, 1:]
+            group = (np.arange(n) % 2).astype(float)[:, None]
+            values += batch @ rng.normal(0.0, 0.7, (batches - 1, p)) + group @ rng.normal(0.0, 0.7, (1, p))
+        layers.append(SwapLayer(name, values, np.arange(n), batch, group))
+    return layers
+
+
+def exchange(layer: SwapLayer, places: list[int], sources: list[int]) -> SwapLayer:
+    """Return a layer in which the rows of ``sources`` stand under the names of ``places``."""
+    values = layer.values.copy()
+    values[places] = layer.values[sources]
+    return replace(layer, values=values)

@@ -13,7 +13,7 @@ from workbench.engine.spike_slab import SpikeSlab
 
 FloatArray = NDArray[np.float64]
 
-MOST_SINGLY = 60
+MOST_SINGLY = 40
 FOLDS = 30
 LEAST_NOISE = 1e-6
 LEAST_SHARE = 0.02

@@ -10,7 +10,13 @@ from numpy.typing import NDArray
 from scipy.stats import t as student
 
 from workbench.engine.cross_prediction import Features, count_private, predict_left_out
-from workbench.engine.exchange_gain import exchange_gains, hat_matrix, rearrangement_gains
+from workbench.engine.exchange_gain import (
+    exchange_gains,
+    hat_matrix,
+    rearrangement_gains,
+    row_gains,
+    row_mismatch,
+)
 from workbench.engine.nuisance import Nuisance
 from workbench.engine.swap_layers import LayerState
 
@@ -56,6 +62,10 @@ class Prediction:
         """Return the log likelihood ratio of rearrangements of the target's rows, shape (count,)."""
         return rearrangement_gains(self.scores, self.hat, self.df, places, sources)
 
+    def mismatch(self, places: IndexArray, sources: IndexArray) -> FloatArray:
+        """Return the chance of a worse fit of each of the target's rows in its new place, shape (s,)."""
+        return row_mismatch(self.scores, self.hat, self.df, places, sources)
+
 
 @dataclass(frozen=True, eq=False)
 class LayerMatch:
@@ -99,8 +109,8 @@ class LayerMatch:
     def weights(self) -> list[float]:
         """Return the share of each direction in the evidence, by what it tells.
 
-        A weighted mean of two log likelihood ratios that each have mean 1 before the logarithm has it too, at
-        most (Hölder), however dependent they are.
+        Where two likelihood ratios have mean 1 at most, the exponential of a weighted mean of their logarithms
+        has it too, however dependent they are (Hölder's inequality).
         """
         total = sum(one.information for one in self.predictions)
         return [one.information / total for one in self.predictions]
@@ -112,6 +122,21 @@ class LayerMatch:
             (weight * one.gains() for weight, one in parts), np.zeros((self.samples.size,) * 2)
         )
         return gains
+
+    def row_gains(self, layer: str, places: IndexArray, sources: IndexArray) -> FloatArray:
+        """Return how much better each sample fits when rows of one layer are rearranged, shape (s,)."""
+        total = np.zeros(len(places))
+        for weight, one in zip(self.weights(), self.predictions, strict=True):
+            ahead = (places, sources) if one.target == layer else (sources, places)
+            total += weight * row_gains(one.scores, one.hat, one.df, *ahead)
+        return total
+
+    def mismatch(self, layer: str, places: IndexArray, sources: IndexArray) -> float:
+        """Return the smallest chance of a worse fit of a sample when rows of one layer are rearranged."""
+        moves = (
+            (one, (places, sources) if one.target == layer else (sources, places)) for one in self.predictions
+        )
+        return min(float(one.mismatch(*ahead).min()) for one, ahead in moves)
 
     def rearranged(self, layer: str, places: IndexArray, sources: IndexArray) -> FloatArray:
         """Return the evidence for rearrangements of one layer's rows, shape (count,).

@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from workbench.engine.exchange_gain import row_gains
 from workbench.engine.layer_match import LayerMatch
 from workbench.engine.swap_layers import LayerState
 
@@ -65,12 +66,42 @@ def design_gain(one: Rearrangement, states: States) -> float:
 
 def agreement_gain(one: Rearrangement, match: LayerMatch) -> float:
     """Return what a rearrangement gains in the layer's agreement with another; 0 where it cannot tell."""
+    inside = _inside(one, match)
+    if inside is None:
+        return 0.0
+    places, sources = inside
+    return float(match.rearranged(one.layer, places[None], sources[None])[0])
+
+
+def least_share(one: Rearrangement, match: LayerMatch | None, states: States) -> float:
+    """Return the smallest share that any of the samples has in what the rearrangement mends.
+
+    Of samples that were exchanged every one goes better with its new row. Where one row belongs to nobody, the
+    sample that it is exchanged with went well with its own: its share is negative.
+    """
+    state = states[one.layer]
+    gains = np.zeros(one.places.size)
+    inside = _inside(one, match) if match is not None else None
+    if match is not None and inside is not None:
+        gains += match.row_gains(one.layer, *inside)
+    if state.design_told and not one.tubes:
+        gains += row_gains(state.components, state.hat(), state.df, one.places, one.sources)
+    total = float(gains.sum())
+    return float(gains.min()) / total if total > 0.0 else 0.0
+
+
+def worst_fit(one: Rearrangement, match: LayerMatch | None) -> float:
+    """Return the smallest chance of a worse fit that any rearranged sample has; 1 where nothing can tell."""
+    inside = _inside(one, match) if match is not None else None
+    return 1.0 if match is None or inside is None else match.mismatch(one.layer, *inside)
+
+
+def _inside(one: Rearrangement, match: LayerMatch) -> tuple[IndexArray, IndexArray] | None:
+    """Return places and sources among the common samples of a match; None where it cannot tell."""
     if match.untestable or one.layer not in (match.first, match.second):
-        return 0.0
-    rows = match.rows_of(one.layer)
-    inside = {row: place for place, row in enumerate(rows.tolist())}
+        return None
+    inside = {row: place for place, row in enumerate(match.rows_of(one.layer).tolist())}
     if any(row not in inside for row in one.places.tolist()):
-        return 0.0
-    places = np.array([[inside[row] for row in one.places.tolist()]])
-    sources = np.array([[inside[row] for row in one.sources.tolist()]])
-    return float(match.rearranged(one.layer, places, sources)[0])
+        return None
+    places, sources = (np.array([inside[row] for row in rows.tolist()]) for rows in (one.places, one.sources))
+    return places, sources

@@ -7,9 +7,8 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.stats import beta
 
-from workbench.engine.layer_match import LayerMatch, Prediction
+from workbench.engine.layer_match import LayerMatch
 
 FloatArray = NDArray[np.float64]
 
@@ -39,9 +38,8 @@ def find_strangers(
 ) -> tuple[Stranger, ...]:
     """Return the samples that two layers disagree about more than chance allows, worst first.
 
-    The mismatch of a sample is the share of ``E_i' (E'E)^-1 E_i`` that its leverage leaves,
-    ``q / (1 - h_ii)``, which is Beta(m / 2, (df - m) / 2) under a normal law, for m factors; p by Bonferroni
-    over samples, directions and matches.
+    The mismatch of each sample is :func:`~workbench.engine.exchange_gain.row_mismatch`; p by Bonferroni over
+    samples, directions and matches.
 
     Parameters
     ----------
@@ -55,7 +53,8 @@ def find_strangers(
     worst: dict[int, float] = {}
     layers: dict[int, list[set[str]]] = {}
     for match in tested:
-        p = np.min([_mismatch_p(one) for one in match.predictions], axis=0)
+        every = np.arange(match.samples.size)
+        p = np.min([one.mismatch(every, every) for one in match.predictions], axis=0)
         p = np.minimum(p * match.samples.size * len(match.predictions) * len(tested), 1.0)
         for sample, chance in zip(match.samples.tolist(), p.tolist(), strict=True):
             if chance <= level and sample not in explained:
@@ -63,17 +62,6 @@ def find_strangers(
                 layers.setdefault(sample, []).append({match.first, match.second})
     found = [Stranger(sample, _to_blame(layers[sample]), p) for sample, p in worst.items()]
     return tuple(sorted(found, key=lambda one: (one.p, one.sample)))
-
-
-def _mismatch_p(prediction: Prediction) -> FloatArray:
-    residual = prediction.scores - prediction.hat @ prediction.scores
-    inverse = np.linalg.pinv(residual.T @ residual, hermitian=True)
-    m = residual.shape[1]
-    room = np.maximum(1.0 - np.diag(prediction.hat), 1e-9)
-    share = np.clip(np.einsum("nm,ml,nl->n", residual, inverse, residual) / room, 0.0, 1.0)
-    # df counts what the hat matrix leaves: residuals of m factors fill m of these dimensions.
-    chance: FloatArray = beta.sf(share, 0.5 * m, 0.5 * max(prediction.df - m, 1))
-    return chance
 
 
 def _to_blame(pairs: list[set[str]]) -> tuple[str, ...]:

@@ -11,7 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workbench.engine.layer_match import LayerMatch, match_layers
-from workbench.engine.rearrangement import Rearrangement, agreement_gain, design_gain
+from workbench.engine.rearrangement import Rearrangement, agreement_gain, design_gain, least_share, worst_fit
 from workbench.engine.strangers import Stranger, find_strangers
 from workbench.engine.swap_bound import clean_bound
 from workbench.engine.swap_candidates import (
@@ -32,8 +32,11 @@ States = dict[str, LayerState]
 Matches = dict[frozenset[str], LayerMatch]
 
 LEVEL = 0.05
-SLACK = 5.0
+SLACK = 4.0
+CLEAR = 15.0
 LEAST_BOUND = 5.5
+LEAST_SHARE = 0.1
+LEAST_FIT = 1e-4
 MOST_EXCHANGES = 10
 TOLD = math.log(20.0)
 
@@ -89,7 +92,9 @@ def find_swapped_samples(
     The best few pairs are looked at again: with no fit learning from the two, and with the two exchanged and
     all refitted. The evidence is the mean of the gain at first, the gain without learning from them, and the
     loss after. It is accepted above a bound that clean studies like this one pass with probability ``level``
-    (:func:`~workbench.engine.swap_bound.clean_bound`), at least ``LEAST_BOUND``. A cycle of three has to pass
+    (:func:`~workbench.engine.swap_bound.clean_bound`), at least ``LEAST_BOUND``, when every one of the samples
+    has at least ``LEAST_SHARE`` of what is mended and goes with its new row (a worse fit has a chance of
+    ``LEAST_FIT``): a row that belongs to nobody is no swap. A cycle of three has to pass
     ``log(cycles / pairs)`` more, and ``log(1 / level)`` on top of that to be preferred to a pair. The search
     goes on from the accepted arrangement until none passes.
 
@@ -195,23 +200,37 @@ def _best_step(
 
 
 def _best(candidates: Sequence[Candidate], bound: float, states: States, matches: Matches) -> _Passed | None:
-    """Return the candidate with the most evidence if it passes the bound."""
-    weighed = [_Passed(one, _evidence(one, states, matches), bound) for one in candidates]
-    best = max(weighed, key=lambda one: one.gain, default=None)
+    """Return the candidate with the most evidence if it passes the bound.
+
+    They come with the largest gain first; those that lie ``CLEAR`` behind one that was weighed are not weighed.
+    """
+    best: _Passed | None = None
+    for one in candidates:
+        if best is not None and best.gain > one.gain + CLEAR:
+            break
+        weighed = _Passed(one, _evidence(one, states, matches), bound)
+        if best is None or weighed.gain > best.gain:
+            best = weighed
     return best if best is not None and best.gain >= bound else None
 
 
 def _evidence(candidate: Candidate, states: States, matches: Matches) -> float:
-    """Return the mean of the gain at first, without learning from the samples, and of the loss after."""
+    """Return the mean of the gain at first, without learning from the samples, and of the loss after.
+
+    Minus infinity where one of the samples went as well with its own row, or does not go with the new one.
+    """
     move = candidate.move
     after = {**states, move.layer: move.done(states)}
-    unlearnt, lost = candidate.gain, -design_gain(move.back(), after)
+    unlearnt, lost, without = candidate.gain, -design_gain(move.back(), after), None
     if candidate.partner:
         match = matches[frozenset((move.layer, candidate.partner))]
         samples = set(states[move.layer].layer.samples[move.places].tolist())
         without = match_layers(states[match.first], states[match.second], match, samples)
         unlearnt = agreement_gain(move, without) - candidate.penalty + candidate.design_gain
         lost -= agreement_gain(move.back(), _again(match, after)) + candidate.penalty
+    one_sided = (not move.tubes or without is not None) and least_share(move, without, states) < LEAST_SHARE
+    if one_sided or worst_fit(move, without) < LEAST_FIT:
+        return -math.inf
     return (candidate.gain + unlearnt + lost) / 3.0
 
 
