@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from workbench.engine.exchange_gain import exchange_gains, hat_matrix
 from workbench.engine.layer_match import LayerMatch, Prediction
 from workbench.engine.swap_layers import LayerState
+from workbench.engine.swap_sheet import sheet_gains
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
@@ -96,9 +97,10 @@ class _Parts:
     def largest(self, mixing: FloatArray, scale: FloatArray) -> float:
         """Return the largest evidence in one drawn study."""
         shared = {key: self._shared(key, mixing, scale) for key in self.matches}
-        most = -np.inf
+        every = {name: rows.drawn(mixing, scale) for name, rows in self.components.items()}
+        most = float(sheet_gains(self.states, every).max())
         for name, state in self.states.items():
-            rows = self.components[name].drawn(mixing, scale)
+            rows = every[name]
             best = self._best_partner(name, shared)
             for tubes in (False, True):
                 compared = state.compared(tubes)

@@ -24,6 +24,7 @@ from workbench.engine.swap_candidates import (
 from workbench.engine.swap_cycles import Accepted, Swap, swap_cycles
 from workbench.engine.swap_evidence import swap_evidence
 from workbench.engine.swap_layers import LayerState, SwapLayer, layer_state
+from workbench.engine.swap_sheet import sheet_candidates
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
@@ -38,7 +39,7 @@ LEAST_BOUND = 5.5
 LEAST_SHARE = 0.1
 LEAST_FIT = 1e-4
 MOST_EXCHANGES = 10
-TOLD = math.log(20.0)
+TOLD = math.log(200.0)
 
 
 @dataclass(frozen=True, eq=False)
@@ -88,7 +89,8 @@ def find_swapped_samples(
     factors of one are predicted from the features of the other, every sample by a fit that has not seen it;
     for each two samples the log likelihood ratio of "exchanged" to "as delivered" is taken
     (:func:`~workbench.engine.exchange_gain.exchange_gains`), and added to it the same ratio for the layer's
-    components given its design, which catches exchanges across run days and groups and tells the layer.
+    components given its design, which catches exchanges across run days and groups and tells the layer. Where
+    every layer contradicts the design in the same two samples it is the sample sheet that has them exchanged.
     The best few pairs are looked at again: with no fit learning from the two, and with the two exchanged and
     all refitted. The evidence is the mean of the gain at first, the gain without learning from them, and the
     loss after. It is accepted above a bound that clean studies like this one pass with probability ``level``
@@ -131,7 +133,10 @@ def find_swapped_samples(
     matches = {frozenset((a, b)): match_layers(states[a], states[b]) for a, b in combinations(states, 2)}
     gains = layer_gains(states, matches)
     bounds = _bounds(gains, clean_bound(states, matches, level, random_state))
-    accepted: list[Accepted] = []
+    accepted = _sheet_steps(states, bounds[0])
+    if accepted:
+        matches = {key: _again(match, states) for key, match in matches.items()}
+        gains = layer_gains(states, matches)
     while len(accepted) < MOST_EXCHANGES:
         one = _best_step(states, matches, gains, bounds, level, accepted)
         if one is None:
@@ -199,6 +204,31 @@ def _best_step(
     )
 
 
+def _sheet_steps(states: States, bound: float) -> list[Accepted]:
+    """Exchange samples in all layers as long as all of them ask for it; ``states`` takes the arrangements."""
+    accepted: list[Accepted] = []
+    while len(accepted) < MOST_EXCHANGES * len(states):
+        every = sheet_candidates(states, bound)
+        if every is None:
+            break
+        for one in every:
+            name = one.move.layer
+            samples = states[name].layer.samples
+            accepted.append(
+                Accepted(
+                    one.move,
+                    tuple(samples[one.move.places].tolist()),
+                    tuple(samples[one.move.sources].tolist()),
+                    (name,),
+                    one.gain,
+                    bound,
+                    swap_evidence(one, states, {}),
+                )
+            )
+            states[name] = one.move.done(states).settled()
+    return accepted
+
+
 def _best(candidates: Sequence[Candidate], bound: float, states: States, matches: Matches) -> _Passed | None:
     """Return the candidate with the most evidence if it passes the bound.
 
@@ -244,7 +274,7 @@ def _rematched(states: States, matches: Matches, layer: str) -> Matches:
 
 
 def _likely_layers(move: Rearrangement, states: States, matches: Matches) -> tuple[str, ...]:
-    """Return the layers in which it may have happened, likeliest first: evidence within a factor of 20."""
+    """Return the layers in which it may have happened, likeliest first: evidence within a factor of 200."""
     support = {}
     for name in states:
         there = move.carried(name, states)

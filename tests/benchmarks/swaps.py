@@ -1,0 +1,150 @@
+"""How many exchanged pairs the search for swapped samples finds, and how many clean studies it accuses.
+
+Studies of 3,000 transcript counts and 250 metabolite intensities with private factors, prepared by their
+recipes. Families of studies with one exchanged pair in the metabolites: 3 to 5 shared factors; with two
+groups and three run days, or with neither. Families without: the same, and studies with much private
+variation, heavy tails, nothing shared, strong group effects, a third layer, an odd sample. One line for each
+family and n: pairs found, other pairs accused, in which layer; clean studies accused, rows told to match nobody.
+
+Run: python tests/benchmarks/swaps.py [--n 24 40 60 96] [--seeds 0 20] [--families NAME ...] [--jobs 2] [--speed]
+"""
+
+from __future__ import annotations
+
+import argparse
+import sys
+import time
+from collections import Counter
+from collections.abc import Iterator
+from concurrent.futures import ProcessPoolExecutor
+from pathlib import Path
+from typing import Any
+
+sys.path.insert(0, str(Path(__file__).resolve().parents[1]))
+
+from simulated import Design, metabolites, proteins, simulate, transcripts
+from swap_studies import crosses, exchanged, found_in, swap_layers
+
+from workbench.engine.swapped_samples import find_swapped_samples
+
+NO_DESIGN: dict[str, Any] = {"groups": (), "run_days": 1}
+PRIVATE = (
+    transcripts(private_factors=8, private_strength=1.8),
+    metabolites(private_factors=5, private_strength=1.8),
+)
+HEAVY = (transcripts(tails=4.0), metabolites(tails=4.0))
+EFFECTS = (transcripts(group_effect=1.5), metabolites(group_effect=1.5))
+ODD = (transcripts(), metabolites(odd=1))
+THREE = (transcripts(), metabolites(), proteins())
+
+SWAPPED: dict[str, dict[str, Any]] = {
+    f"{factors} factors, {place}, strength {strength}": {
+        "modules": factors,
+        "strength": strength,
+        **({} if place == "groups and days" else NO_DESIGN),
+    }
+    for strength in (1.0, 1.4, 2.0)
+    for factors in (3, 4, 5)
+    for place in ("groups and days", "no design")
+}
+CLEAN: dict[str, dict[str, Any]] = {
+    "much private variation": {"blocks": PRIVATE},
+    "heavy tails": {"blocks": HEAVY},
+    "heavy tails, no design": {"blocks": HEAVY, **NO_DESIGN},
+    "nothing shared": {"modules": 0},
+    "nothing shared, no design": {"modules": 0, **NO_DESIGN},
+    "group effects": {"blocks": EFFECTS},
+    "an odd sample": {"blocks": ODD},
+    "three layers": {"blocks": THREE},
+}
+
+Job = tuple[str, int, int, bool]
+
+
+def design_of(family: str, n: int, swapped: bool) -> Design:
+    """Return the design of a family's studies."""
+    design = Design(n=n, **{**SWAPPED, **CLEAN}[family])
+    return design.with_block("metabolites", swaps=(2,)) if swapped else design
+
+
+def search(job: Job) -> tuple[Job, Counter[str]]:
+    """Search one study; return what came of it, counted."""
+    family, n, seed, swapped = job
+    study = simulate(design_of(family, n, swapped), seed)
+    found = find_swapped_samples(swap_layers(study), random_state=seed)
+    counts: Counter[str] = Counter(strangers=len(found.strangers), untestable=not found.testable)
+    if not swapped:
+        return job, counts + Counter(clean=1, accused=bool(found.swaps))
+    (truth,) = exchanged(study)
+    counts += Counter(swapped=1, found=truth in found_in(found), other=len(found_in(found) - {truth}))
+    across = crosses(study, truth).replace(" ", "_")
+    counts += Counter({f"of_{across}": 1, f"in_{across}": truth in found_in(found)})
+    for swap in found.swaps:
+        if frozenset(swap.samples) == truth:
+            told = len(swap.layers) == 1
+            counts += Counter(right=told and swap.layers[0] == "metabolites")
+            counts += Counter(wrong=told and swap.layers[0] != "metabolites")
+    return job, counts
+
+
+def line(family: str, n: int, counts: Counter[str]) -> str:
+    """Return one line of the table."""
+    parts = [f"{family:<44} n {n:>3}"]
+    if counts["swapped"]:
+        parts.append(f"found {counts['found']:>3}/{counts['swapped']:<3} other pairs {counts['other']:>2}")
+        parts.append(f"layer told right {counts['right']:>2} wrong {counts['wrong']}")
+        across = sorted(key[3:] for key in counts if key.startswith("of_"))
+        parts.append(" ".join(f"{key}:{counts[f'in_{key}']}/{counts[f'of_{key}']}" for key in across))
+    if counts["clean"]:
+        parts.append(f"clean accused {counts['accused']:>2}/{counts['clean']}")
+    return "  ".join([*parts, f"match nobody {counts['strangers']}", f"untestable {counts['untestable']}"])
+
+
+def jobs_of(families: list[str], sizes: list[int], seeds: range) -> Iterator[tuple[str, int, list[Job]]]:
+    """Yield each family and n with its studies."""
+    for n in sizes:
+        for family in families:
+            kinds = (True, False) if family in SWAPPED else (False,)
+            yield family, n, [(family, n, seed, kind) for seed in seeds for kind in kinds]
+
+
+def speed() -> None:
+    """Print the seconds that one search takes."""
+    for n in (60, 300):
+        for swapped in (False, True):
+            layers = swap_layers(
+                simulate(design_of("4 factors, groups and days, strength 1.0", n, swapped), 1)
+            )
+            start, used = time.perf_counter(), time.process_time()
+            find_swapped_samples(layers)
+            print(
+                f"n {n:>3} x (3,000 + 250), {'one pair exchanged' if swapped else 'clean':<18} "
+                f"{time.perf_counter() - start:5.1f} s, processor {time.process_time() - used:5.1f} s"
+            )
+
+
+def main() -> None:
+    """Print the table."""
+    parser = argparse.ArgumentParser(
+        description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter
+    )
+    parser.add_argument("--n", type=int, nargs="+", default=[24, 40, 60, 96])
+    parser.add_argument("--seeds", type=int, nargs=2, default=[0, 20])
+    parser.add_argument("--families", nargs="+", default=[*SWAPPED, *CLEAN])
+    parser.add_argument("--jobs", type=int, default=1)
+    parser.add_argument("--speed", action="store_true")
+    chosen = parser.parse_args()
+    if chosen.speed:
+        return speed()
+    total: Counter[str] = Counter()
+    with ProcessPoolExecutor(chosen.jobs) as pool:
+        for family, n, jobs in jobs_of(chosen.families, chosen.n, range(*chosen.seeds)):
+            counts = sum((one for _, one in pool.map(search, jobs)), Counter[str]())
+            total += counts
+            print(line(family, n, counts), flush=True)
+    print(line("all", 0, total))
+    return None
+
+
+if __name__ == "__main__":
+    main()
