@@ -24,6 +24,7 @@ FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
 
 MATCH_LEVEL = 0.1
+TESTABLE_LEVEL = 0.005
 DF_PER_FACTOR = 4
 FEWEST_DF = 10
 
@@ -41,6 +42,8 @@ class Prediction:
     hat : ndarray of shape (n_common, n_common)
         Projection onto the design and ``predicted``.
     df : int
+    p : float
+        Chance of the best factor's prediction (one-sided, Bonferroni over the factors).
     information : float
         Half the log ratio of the factors' generalised variance without and with the prediction: nats that
         the other layer tells of a sample.
@@ -52,6 +55,7 @@ class Prediction:
     predicted: FloatArray
     hat: FloatArray
     df: int
+    p: float
     information: float
 
     def gains(self) -> FloatArray:
@@ -158,6 +162,8 @@ def match_layers(
 ) -> LayerMatch:
     """Match two layers by what each one's features tell of the other's factors.
 
+    Nothing counts unless the best factor of one layer is told with a p of ``TESTABLE_LEVEL`` at most.
+
     Parameters
     ----------
     one, other : LayerState
@@ -193,8 +199,10 @@ def match_layers(
         predicted = predict_left_out(features[source], scores, private[source], weights)
         prediction = _matched(target.layer.name, source, scores, predicted, basis)
         found += [prediction] if prediction else []
-    reason = "" if found else "no factor of one layer is told by the other beyond chance"
-    return LayerMatch(*names, (first, second), samples, basis, tuple(found), private, reason)
+    if min((one.p for one in found), default=1.0) > TESTABLE_LEVEL:
+        reason = "no factor of one layer is told by the other beyond chance"
+        return LayerMatch(*names, (first, second), samples, basis, (), private, reason)
+    return LayerMatch(*names, (first, second), samples, basis, tuple(found), private, "")
 
 
 def _matched(
@@ -214,4 +222,7 @@ def _matched(
     hat = hat_matrix(np.hstack([basis, predicted]))
     residual = scores - hat @ scores
     was, now = (np.linalg.slogdet(part.T @ part)[1] for part in (scores, residual))
-    return Prediction(target, source, scores, predicted, hat, n - c - len(kept), float(0.5 * (was - now)))
+    best = float(min(1.0, p.min() * p.size))
+    return Prediction(
+        target, source, scores, predicted, hat, n - c - len(kept), best, float(0.5 * (was - now))
+    )
