@@ -31,8 +31,16 @@ def test_every_planted_mishap_is_found(made):
     assert script.DATES_FINDING in by_id
     assert f"outlier-metabolites-{script.THAWED}" in by_id
     assert "unnamed_batch-metabolites-extraction" in by_id
-    suspect = {sample for row in found if row["severity"] != "note" for sample in row["samples"]}
-    assert set(script.SWAPPED) <= suspect
+    swapped = [row for row in found if row["severity"] == "error"]
+    assert [row["check"] for row in swapped] == ["swapped_samples"]
+    assert (set(swapped[0]["samples"]), swapped[0]["block"]) == (set(script.SWAPPED), "metabolites")
+
+
+def test_an_error_finding_stops_the_run_until_it_is_settled(made, command):
+    script, folder = made
+    code, _, err = command("run", "--project", folder / "study")
+    assert (code, "swapped_samples-metabolites" in err) == (1, True)
+    assert not (folder / "study" / "results" / "main").exists()
 
 
 def test_the_shipped_example_ends_up_clean(tmp_path):
