@@ -37,7 +37,7 @@ def test_every_planted_mishap_is_found(made):
 
 
 def test_an_error_finding_stops_the_run_until_it_is_settled(made, command):
-    script, folder = made
+    _, folder = made
     code, _, err = command("run", "--project", folder / "study")
     assert (code, "swapped_samples-metabolites" in err) == (1, True)
     assert not (folder / "study" / "results" / "main").exists()
