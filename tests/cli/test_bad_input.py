@@ -184,3 +184,13 @@ def test_two_blocks_of_one_layer_are_prepared_and_looked_at_and_told_apart(comma
     code, _, err = command("network", "--project", made)
     assert code == 2
     assert "one layer (metabolites)" in err
+
+
+def test_a_block_that_an_analysis_cannot_spare_is_not_taken_out(command, made):
+    text = (made / "project.toml").read_text().replace('blocks = "all"', 'blocks = ["rna", "lcms"]')
+    (made / "project.toml").write_text(text)
+    before = snapshot(made)
+    code, out, err = command("remove-block", "lcms", "--project", made)
+    assert (code, out) == (2, "")
+    assert "analyses.main" in err
+    assert snapshot(made) == before

@@ -148,3 +148,10 @@ def test_help_answers_within_four_tenths_of_a_second():
 
     bare = min(seconds("-c", "pass") for _ in range(5))
     assert min(seconds("-m", "workbench", "--help") for _ in range(5)) < max(0.4, 20 * bare)
+
+
+def test_check_files_tells_what_is_missing_and_can_be_made_again(command, made):
+    (made / "blocks" / "rna.h5ad").unlink()
+    code, out, _ = command("check", "--files", "--project", made)
+    assert code == 0
+    assert "1 that can be made again are missing" in out

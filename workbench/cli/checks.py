@@ -69,7 +69,10 @@ def _check_files(opened: Project, as_json: bool) -> None:
     elif faults:
         answer(map(str, faults))
     else:
-        count = len(opened.state().manifest.files)
-        answer([f"{count} stored files are as the program wrote them"])
+        stored = opened.state().manifest.files
+        there = sum((opened.paths.root / file).exists() for file in stored)
+        answer([f"{there} stored files are as the program wrote them"])
+        if there < len(stored):
+            answer([f"{len(stored) - there} that can be made again are missing; `workbench run` makes them"])
     if faults:
         raise typer.Exit(3)

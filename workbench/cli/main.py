@@ -16,6 +16,7 @@ from workbench.cli.console import complain
 from workbench.errors import WorkbenchError
 
 BUG_EXIT = 70
+INTERRUPTED = 130
 
 EPILOG = (
     "A study in five commands: workbench init DIR; workbench add-samples SHEET --group COLUMN; "
@@ -56,6 +57,10 @@ def run() -> None:
     """Run the command line; every error ends as a message and an exit code, never as a traceback."""
     try:
         app()
+    except SystemExit as stop:
+        if stop.code == INTERRUPTED:
+            complain("interrupted; what was finished stays, and the same command goes on from there")
+        raise
     except WorkbenchError as error:
         complain(str(error))
         sys.exit(error.exit_code)

@@ -15,6 +15,7 @@ from workbench.settings import (
     BlockSettings,
     add_block_text,
     check_name,
+    cross_check,
     parse_settings,
     read_settings_text,
     remove_block_text,
@@ -187,14 +188,27 @@ def _require_fitting(state: ProjectState, delivery: Delivery) -> None:
         )
 
 
+def _require_whole(state: ProjectState, text: str, name: str) -> None:
+    """Refuse to take a block out when the settings that are left would not hold, before anything is written."""
+    left = parse_settings(text, state.paths.settings)
+    faults = [] if state.sheet is None else cross_check(left, state.sheet, state.root)
+    if faults:
+        raise InputError(
+            f"{state.paths.settings}: block '{name}' cannot be taken out as the settings stand; change them "
+            "first, nothing was changed:\n  " + "\n  ".join(faults)
+        )
+
+
 def remove_block(paths: ProjectPaths, name: str) -> None:
     """Take a block, what was prepared from it and its settings out; its source stays."""
     check_name(name, "block")
     with project_lock(paths.root, f"remove-block {name}"):
         state = load_state(paths)
         state.require_block(name)
+        text = remove_block_text(read_settings_text(paths.settings), name)
+        _require_whole(state, text, name)
         with Change(paths.root) as change:
-            change.write_text("project.toml", remove_block_text(read_settings_text(paths.settings), name))
+            change.write_text("project.toml", text)
             for relative in (block_file(name), f"prepared/{name}.h5ad"):
                 if (paths.root / relative).exists():
                     change.remove(relative)

@@ -13,6 +13,7 @@ from workbench.checks import Finding, run_checks, study_data
 from workbench.errors import FindingsError
 from workbench.figures.findings import draw_findings
 from workbench.store import Change, check_file, json_bytes, read_block, sha256_of, table_bytes
+from workbench.store.journal import source_hashes
 from workbench.workflow.drawings import write_drawings
 from workbench.workflow.fingerprints import block_header, columns_fingerprint, fingerprint
 from workbench.workflow.reporting import Reporter
@@ -75,7 +76,11 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, names: Sequen
 
 
 def spare_files(state: ProjectState) -> list[Path]:
-    """Return the text tables below ``source/`` that no block uses: lists that may be used one day."""
+    """Return the text tables below ``source/`` that a person laid there: lists that may be used one day.
+
+    A table that a command brought in is no such list, also when another has taken its place.
+    """
+    brought = source_hashes(state.root)
     used = {
         file
         for block in state.settings.blocks.values()
@@ -87,6 +92,7 @@ def spare_files(state: ProjectState) -> list[Path]:
         for path in found
         if path.suffix in SPARE_ENDINGS
         and state.paths.relative(path) not in used
+        and state.paths.relative(path) not in brought
         and path.stat().st_size <= LARGEST_SPARE
     ]
 
