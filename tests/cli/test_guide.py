@@ -7,12 +7,13 @@ from workbench.settings import (
     AnalysisSettings,
     BlockSettings,
     NetworkSettings,
+    PathwaySettings,
     SamplesSettings,
     StudySettings,
 )
 from workbench.workflow.networking import EDGE_COLUMNS, FEATURE_COLUMNS
 
-SECTIONS = [StudySettings, SamplesSettings, BlockSettings, AnalysisSettings, NetworkSettings]
+SECTIONS = [StudySettings, SamplesSettings, BlockSettings, AnalysisSettings, NetworkSettings, PathwaySettings]
 
 
 @pytest.mark.parametrize("section", SECTIONS, ids=lambda section: section.__name__)

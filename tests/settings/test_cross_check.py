@@ -247,3 +247,43 @@ def test_links_and_folders_are_no_files_of_the_project(root, tmp_path_factory):
     assert file_fault(root, "source/rna.tsv") is None
     assert "is not a file" in file_fault(root, "source")
     assert "is not there" in file_fault(root, "nowhere/x.tsv")
+
+
+ANALYSIS = '[analyses.main]\nblocks = "all"\n'
+METHOD_FAULTS = [
+    ('method = "multiblock_pls"', "analyses.main.outcome: is not given"),
+    ('outcome = "condition"', 'analyses.main.outcome: is for method = "multiblock_pls"'),
+    ('outcome_kind = "classes"', "analyses.main.outcome_kind: is for an outcome"),
+    ('method = "multiblock_pls"\noutcome = "conditon"', "block 'conditon'"),
+    ('method = "multiblock_pls"\noutcome = "sample"', "'sample'"),
+    ('method = "multiblock_pls"\noutcome = "donor"', "'donor' names samples or subjects"),
+    ("ridge = [1, 2, 3]", "analyses.main.ridge: has 3 numbers; allowed: one, or one per layer (2)"),
+    (
+        'pathways = { sets = "source/none.gmt" }',
+        "analyses.main.pathways.sets: 'source/none.gmt' is not there",
+    ),
+    ('pathways = { links = "../links.tsv" }', "analyses.main.pathways.links: '../links.tsv' leads out"),
+]
+
+
+@pytest.mark.parametrize(("lines", "told"), METHOD_FAULTS, ids=range(len(METHOD_FAULTS)))
+def test_an_analysis_is_held_against_its_method_and_files(root, lines, told):
+    [fault] = faults_of(SAMPLES + BLOCKS + ANALYSIS + lines, root)
+    assert told in fault
+
+
+def test_level_and_time_need_a_subject(root):
+    text = SAMPLES.replace('subject = "donor"', 'time = "age"').replace('adjust = ["age"]', "")
+    faults = faults_of(text + BLOCKS + ANALYSIS + 'level = "visits"', root)
+    assert [fault.split(": ")[1] for fault in faults] == ["samples.time", "analyses.main.level"]
+
+
+def test_an_outcome_that_names_a_block_and_a_column_is_refused(root):
+    text = (
+        SAMPLES
+        + BLOCKS.replace("blocks.neg", "blocks.batch")
+        + ANALYSIS
+        + 'method = "multiblock_pls"\noutcome = "batch"'
+    )
+    [fault] = faults_of(text, root)
+    assert "is a column of samples.tsv and a block" in fault

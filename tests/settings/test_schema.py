@@ -116,7 +116,7 @@ def test_settings_are_read_only():
         parse_settings("").study.title = "other"
 
 
-@pytest.mark.parametrize("ridge", ["auto", 0, 0.5, [0, 1], [0.5, 0.5]])
+@pytest.mark.parametrize("ridge", ["auto", 0, 0.5, [0, 1], [0.5, 0.5], [1, 2, 3]])
 def test_ridges_that_are_allowed(ridge):
     text = f"[analyses.a]\nblocks = 'all'\nridge = {ridge!r}"
     found = parse_settings(text).analyses["a"].ridge
@@ -143,7 +143,7 @@ FAULTS = [
     ("[samples]\nexclude = { 'S 7' = '' }", 'samples.exclude."S 7": is empty; allowed: some text'),
     ("[samples]\nexclude = ['S7']", "samples.exclude: must be a table, like { NAME = VALUE }, got ['S7']"),
     ("[samples]\norder = { c = ['a', 'a'] }", "samples.order.c: names 'a' twice"),
-    ("[samples]\ntime = 'day'", "samples.time: unknown key"),
+    ("[samples]\ntime = 3", "samples.time: must be a text in quotes, got 3"),
     ("[samples]\nlevel = 'visits'", "samples.level: unknown key"),
     (BLOCK + "runs = ''", "blocks.a.runs: is empty; allowed: some text"),
     (BLOCK.replace("log", "mixed") + "runs = 'source/r.tsv'", "blocks.a.runs: is for tables of numbers"),
@@ -176,10 +176,11 @@ FAULTS = [
     ("[analyses.a]\nblocks = 'every'", """analyses.a.blocks: must be "all" or a list of blocks, got 'every'"""),
     ("[analyses.a]\nblocks = ['x', 'x']", "analyses.a.blocks: names 'x' twice"),
     (ANALYSIS + "method = 'auto_'", "did you mean 'auto'?"),
-    (ANALYSIS + "method = 'multiblock_pls'", "method: 'multiblock_pls' is not allowed; allowed: 'auto', 'ridge_cca'"),
+    (ANALYSIS + "method = 'pls'", "method: 'pls' is not allowed; allowed: 'auto', 'ridge_cca'"),
+    (ANALYSIS + "level = 'visit'", "analyses.a.level: 'visit' is not allowed; allowed: 'visits', 'subjects'"),
     (ANALYSIS + "ridge = -1", "ridge: must not be negative or infinite, got -1; allowed: \"auto\", one number"),
     (ANALYSIS + "ridge = nan", "analyses.a.ridge: must not be negative or infinite, got nan"),
-    (ANALYSIS + "ridge = [1, 2, 3]", "analyses.a.ridge: must be \"auto\" or numbers"),
+    (ANALYSIS + "ridge = []", "analyses.a.ridge: must be \"auto\" or numbers"),
     (ANALYSIS + "ridge = [1]", "got a list of one"),
     (ANALYSIS + "ridge = true", "analyses.a.ridge: must be \"auto\" or numbers, got True"),
     (ANALYSIS + "components = 0", "analyses.a.components: must be \"auto\" or a whole number, got 0"),
@@ -187,14 +188,15 @@ FAULTS = [
     (ANALYSIS + "folds = 1", "analyses.a.folds: 1 is out of range; allowed: from 2"),
     (ANALYSIS + "folds = true", "analyses.a.folds: must be a whole number, got true"),
     (ANALYSIS + "permutations = 10.5", "analyses.a.permutations: must be a whole number, got 10.5"),
-    (ANALYSIS + "outcome = 'x'", "analyses.a.outcome: unknown key"),
+    (ANALYSIS + "outcome = ''", "analyses.a.outcome: is empty"),
+    (ANALYSIS + "outcome_kind = 'text'", "analyses.a.outcome_kind: 'text' is not allowed"),
     (ANALYSIS + "network = { fdr = 1 }", "analyses.a.network.fdr: 1 is out of range; allowed: above 0 and below 1"),
     (ANALYSIS + "network = { fdr = nan }", "analyses.a.network.fdr: nan is out of range"),
     (ANALYSIS + "network = { minimum_r = 1 }", "minimum_r: 1 is out of range; allowed: from 0 and below 1"),
     (ANALYSIS + "network = { correlation = 'Pearson' }", "did you mean 'pearson'?"),
-    (ANALYSIS + "network = { stability = 100 }", "analyses.a.network.stability: unknown key"),
-    (ANALYSIS + "network = { remove_private = true }", "analyses.a.network.remove_private: unknown key"),
-    (ANALYSIS + "pathways = {}", "analyses.a.pathways: unknown key"),
+    (ANALYSIS + "network = { stability = -1 }", "analyses.a.network.stability: -1 is out of range; allowed: from 0"),
+    (ANALYSIS + "network = { remove_private = 1 }", "analyses.a.network.remove_private: must be"),
+    (ANALYSIS + "pathways = { set = 'x' }", "analyses.a.pathways.set: unknown key; allowed: links, sets"),
     ("[check]\naccept = { outlier-S1 = '' }", "check.accept.outlier-S1: is empty; allowed: some text"),
     ("[check]\naccept = ['outlier-S1']", "check.accept: must be a table, like { NAME = VALUE }"),
     ("[check]\naccpt = {}", "check.accpt: unknown key; allowed: accept; did you mean 'accept'?"),

@@ -60,6 +60,8 @@ def cross_check(
             )
     for name in settings.analyses:
         faults += _analysis_faults(settings, name)
+        faults += _method_faults(settings, name, columns)
+        faults += _pathway_faults(settings, name, root)
     return faults
 
 
@@ -83,6 +85,7 @@ def _sample_faults(
     parts: dict[str, Iterable[str]] = {
         "group": chosen.group,
         "subject": [] if chosen.subject is None else [chosen.subject],
+        "time": [] if chosen.time is None else [chosen.time],
         "adjust": chosen.adjust,
     }
     for part, names in parts.items():
@@ -111,6 +114,10 @@ def _column_faults(
 def _part_faults(settings: Settings) -> Iterator[str]:
     """One column plays one part: the factor of interest is no nuisance, nor is the subject."""
     chosen = settings.samples
+    if chosen.time is not None and chosen.subject is None:
+        yield _fault(
+            ("samples", "time"), "orders the samples of one subject, and no subject is named; add subject"
+        )
     for name in chosen.adjust:
         if name in chosen.group:
             yield _fault(("samples", "adjust"), f"{name!r} is the group as well; take it out of one of them")
@@ -265,6 +272,53 @@ def _analysis_faults(settings: Settings, name: str) -> Iterator[str]:
         yield _fault(
             key, f"all these blocks are of the layer {min(layers)!r}; allowed: blocks of two or more layers"
         )
+
+
+def _method_faults(settings: Settings, name: str, columns: Sequence[str]) -> Iterator[str]:
+    """Hold the method against the outcome, the level and the ridges that it takes."""
+    key, chosen = ("analyses", name), settings.analyses[name]
+    supervised = chosen.method == "multiblock_pls"
+    if supervised and chosen.outcome is None:
+        yield _fault(
+            (*key, "outcome"), "is not given; multiblock_pls needs a column of samples.tsv or a block"
+        )
+    if not supervised and chosen.outcome is not None:
+        yield _fault((*key, "outcome"), 'is for method = "multiblock_pls"; leave it out, or set the method')
+    if chosen.outcome_kind is not None and chosen.outcome is None:
+        yield _fault((*key, "outcome_kind"), "is for an outcome, and none is named; leave it out")
+    if chosen.outcome is not None:
+        yield from _outcome_faults((*key, "outcome"), settings, chosen.outcome, columns)
+    if chosen.level is not None and settings.samples.subject is None:
+        yield _fault(
+            (*key, "level"), "is for several samples of one subject; name samples.subject, or leave it out"
+        )
+    layers = {settings.blocks[block].layer for block in settings.blocks_of(name)}
+    if isinstance(chosen.ridge, tuple) and layers and len(chosen.ridge) != len(layers):
+        yield _fault(
+            (*key, "ridge"),
+            f"has {len(chosen.ridge)} numbers; allowed: one, or one per layer ({len(layers)})",
+        )
+
+
+def _outcome_faults(
+    key: tuple[str, ...], settings: Settings, outcome: str, columns: Sequence[str]
+) -> Iterator[str]:
+    if outcome in columns and outcome in settings.blocks:
+        yield _fault(key, f"{outcome!r} is a column of samples.tsv and a block; rename one of them")
+    elif outcome not in columns and outcome not in settings.blocks:
+        known = [*columns, *settings.blocks]
+        yield _fault(key, _unknown(outcome, known, "column of samples.tsv or block"))
+    elif outcome in (settings.samples.id, settings.samples.subject):
+        yield _fault(key, f"{outcome!r} names samples or subjects; allowed: another column of samples.tsv")
+
+
+def _pathway_faults(settings: Settings, name: str, root: Path) -> Iterator[str]:
+    chosen = settings.analyses[name].pathways
+    for entry in ("sets", "links"):
+        file = getattr(chosen, entry)
+        told = None if file is None else file_fault(root, file)
+        if told is not None:
+            yield _fault(("analyses", name, "pathways", entry), told)
 
 
 def _unknown(name: str, known: Iterable[str], what: str) -> str:

@@ -88,17 +88,17 @@ def _is_number(value: Any) -> bool:
 
 
 def _checked_ridge(value: Any) -> Any:
-    allowed = 'allowed: "auto", one number >= 0, or two of them (one per side)'
+    allowed = 'allowed: "auto", one number >= 0, or a list of them (one per layer)'
     if value == "auto":
         return value
     numbers = value if isinstance(value, list | tuple) else [value]
-    if not all(_is_number(number) for number in numbers) or len(numbers) not in (1, 2):
+    if not all(_is_number(number) for number in numbers) or not numbers:
         raise _fault("ridge", f'must be "auto" or numbers, got {value!r}; {allowed}')
     if not all(math.isfinite(number) and number >= 0 for number in numbers):
         raise _fault("ridge", f"must not be negative or infinite, got {value!r}; {allowed}")
     if isinstance(value, list | tuple):
         if len(numbers) == 1:
-            raise _fault("ridge", f"must be a number or two of them, got a list of one; {allowed}")
+            raise _fault("ridge", f"must be a number or several of them, got a list of one; {allowed}")
         return tuple(float(number) for number in numbers)
     return float(value)
 
@@ -123,7 +123,7 @@ def _checked_blocks(value: Any) -> Any:
     return _no_repeats(tuple(value))
 
 
-Ridge = Annotated[Literal["auto"] | float | tuple[float, float], BeforeValidator(_checked_ridge)]
+Ridge = Annotated[Literal["auto"] | float | tuple[float, ...], BeforeValidator(_checked_ridge)]
 Components = Annotated[Literal["auto"] | int, BeforeValidator(_checked_components)]
 Blocks = Annotated[Literal["all"] | tuple[str, ...], BeforeValidator(_checked_blocks)]
 
@@ -153,6 +153,8 @@ class SamplesSettings(Section):
         The factor of interest, or several (their cells are the groups); empty without one.
     subject : str or None
         Column that tells which samples are of one subject.
+    time : str or None
+        Column that orders the samples of one subject.
     order : dict of str to tuple of str
         For a factor, its levels in order; the first is the reference.
     adjust : tuple of str
@@ -166,6 +168,7 @@ class SamplesSettings(Section):
     id: Text = "sample"
     group: OneOrMore = ()
     subject: Text | None = None
+    time: Text | None = None
     order: dict[str, Names] = Field(default_factory=dict)
     adjust: Names = ()
     kinds: dict[str, Kind] = Field(default_factory=dict)
@@ -292,6 +295,10 @@ class NetworkSettings(Section):
         Smallest ``|r|`` of an edge, from 0 to below 1.
     maximum_edges : int
         Most edges that are kept, strongest first.
+    remove_private : bool
+        Remove from each block the strong variation that no other layer shares.
+    stability : int
+        Half-samples of the stability of edges; 0 leaves it out.
     """
 
     correlation: Literal["pearson", "spearman"] = "pearson"
@@ -299,6 +306,23 @@ class NetworkSettings(Section):
     select: Literal["within", "total"] = "within"
     minimum_r: float = Field(default=0.0, ge=0, lt=1)
     maximum_edges: int = Field(default=20000, ge=1)
+    remove_private: bool = True
+    stability: int = Field(default=100, ge=0)
+
+
+class PathwaySettings(Section):
+    """``[analyses.NAME.pathways]``: what is known beforehand, in tables of the user's.
+
+    Attributes
+    ----------
+    sets : str or None
+        Table of sets of features (TSV, or .gmt), relative to the project.
+    links : str or None
+        Table of known links between features, relative to the project.
+    """
+
+    sets: Text | None = None
+    links: Text | None = None
 
 
 class AnalysisSettings(Section):
@@ -307,9 +331,15 @@ class AnalysisSettings(Section):
     Attributes
     ----------
     blocks : "all" or tuple of str
-    method : {"auto", "ridge_cca"}
-    ridge : "auto", float or pair of float
-        In multiples of each side's noise level; 0 = none.
+    method : {"auto", "ridge_cca", "generalised_cca", "multiblock_pls"}
+    outcome : str or None
+        What multi-block PLS explains: a column of the sample sheet, or the name of a block.
+    outcome_kind : {"classes", "number"} or None
+        How an outcome column is to be read where it could be either.
+    level : {"visits", "subjects"} or None
+        With several samples of one subject: the changes between its visits, or differences between subjects.
+    ridge : "auto", float or tuple of float
+        In multiples of each layer's noise level; 0 = none.
     components : "auto" or int
     folds, repeats : int
         Of the outer cross-validation: at least 2 folds, at least 1 repeat.
@@ -318,10 +348,14 @@ class AnalysisSettings(Section):
     seed : int
         At least 0.
     network : NetworkSettings
+    pathways : PathwaySettings
     """
 
     blocks: Blocks
-    method: Literal["auto", "ridge_cca"] = "auto"
+    method: Literal["auto", "ridge_cca", "generalised_cca", "multiblock_pls"] = "auto"
+    outcome: Text | None = None
+    outcome_kind: Kind | None = None
+    level: Literal["visits", "subjects"] | None = None
     ridge: Ridge = "auto"
     components: Components = "auto"
     folds: int = Field(default=5, ge=2)
@@ -329,6 +363,7 @@ class AnalysisSettings(Section):
     permutations: int = Field(default=1000, ge=1)
     seed: int = Field(default=20260101, ge=0)
     network: NetworkSettings = Field(default_factory=NetworkSettings)
+    pathways: PathwaySettings = Field(default_factory=PathwaySettings)
 
 
 class CheckSettings(Section):
