@@ -21,6 +21,14 @@ from workbench.engine.permutation import PairTest, canonical_pair_test
 from workbench.engine.ridge_choice import RidgeChoice, choose_ridge
 from workbench.engine.screen import BlockPair, BlockScreen, PairScreen, screen_blocks, screen_pairs
 from workbench.engine.splits import Split, SplitSource, array_source
+from workbench.engine.subjects import (
+    SubjectDesign,
+    centred,
+    differences,
+    subject_labels,
+    subject_means,
+    whole_subject_folds,
+)
 from workbench.engine.tails import critical_r
 from workbench.engine.tiles import Limits
 from workbench.engine.validation import CrossValidation, cross_validated_correlations
@@ -42,14 +50,17 @@ __all__ = [
     "Split",
     "SplitSource",
     "Standardised",
+    "SubjectDesign",
     "aliased",
     "array_source",
     "balanced_folds",
     "benjamini_hochberg",
     "canonical_pair_test",
+    "centred",
     "choose_ridge",
     "critical_r",
     "cross_validated_correlations",
+    "differences",
     "edge_evidence",
     "fisher_interval",
     "fit_residuals",
@@ -57,4 +68,7 @@ __all__ = [
     "screen_blocks",
     "screen_pairs",
     "standardise",
+    "subject_labels",
+    "subject_means",
+    "whole_subject_folds",
 ]
