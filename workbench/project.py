@@ -159,11 +159,15 @@ class Project:
         id: str | None = None,
         group: Sequence[str] = (),
         adjust: Sequence[str] = (),
+        subject: str | None = None,
+        time: str | None = None,
         replace: bool = False,
         tell: Tell = no_words,
     ) -> SheetAccount:
         """Import the sample sheet; ``tell`` hears what a replaced one changes."""
-        delivery = SheetDelivery(Path(file), id, _names(group), _names(adjust), replace)
+        delivery = SheetDelivery(
+            Path(file), id, _names(group), _names(adjust), subject=subject, time=time, replace=replace
+        )
         return add_samples(self.paths, delivery, tell)
 
     def add_block(

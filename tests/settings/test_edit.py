@@ -304,3 +304,9 @@ def test_a_list_of_tables_is_written_on_one_line():
     text = add_block(new_project("x"), "a", entries)
     assert '\nswap = [{samples = ["S1", "S2"], reason = "labels"}]\n' in text
     assert tomllib.loads(text)["blocks"]["a"] == entries
+
+
+def test_subject_and_time_stand_beside_the_group():
+    text = set_samples(new_project("t"), group="dose", subject="donor", time="day")
+    samples = parse_settings(text).samples
+    assert (samples.group, samples.subject, samples.time) == (("dose",), "donor", "day")

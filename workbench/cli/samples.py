@@ -33,6 +33,16 @@ def add_samples(
             "--group", metavar="COLUMN", help="Factor of interest (repeat: the cells are the groups)."
         ),
     ] = None,
+    subject: Annotated[
+        str | None,
+        typer.Option(
+            "--subject", metavar="COLUMN", help="Column that tells which samples are of one subject."
+        ),
+    ] = None,
+    time: Annotated[
+        str | None,
+        typer.Option("--time", metavar="COLUMN", help="Column that orders the samples of one subject."),
+    ] = None,
     adjust: AdjustOption = None,
     replace: ReplaceOption = False,
     project: ProjectOption = None,
@@ -41,7 +51,14 @@ def add_samples(
     """Import the sample sheet: one row per biological sample."""
     opened = open_project(project)
     account = opened.add_samples(
-        file, id=id_column, group=group or (), adjust=adjust or (), replace=replace, tell=answer
+        file,
+        id=id_column,
+        group=group or (),
+        subject=subject,
+        time=time,
+        adjust=adjust or (),
+        replace=replace,
+        tell=answer,
     )
     answer([f"{account.samples} samples in {opened.paths.samples}"])
     for line in _told(account):
@@ -66,7 +83,8 @@ def _told(account: SheetAccount) -> list[str]:
             for column in columns
         ]
     lines += [
-        f"column '{column}': {found.reasons[column]}; several samples of one subject are not supported yet"
+        f"column '{column}' looks like the subject ({found.reasons[column]}); to use it, write "
+        f'subject = "{column}" under [samples] in project.toml'
         for column in found.subject
     ]
     return lines

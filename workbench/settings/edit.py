@@ -65,6 +65,7 @@ def set_samples(
     id: str | None = None,
     group: str | Sequence[str] | None = None,
     subject: str | None = None,
+    time: str | None = None,
     adjust: Sequence[str] | None = None,
     kinds: Mapping[str, str] | None = None,
 ) -> str:
@@ -74,7 +75,7 @@ def set_samples(
     ----------
     text : str
         Of a ``project.toml``.
-    id, group, subject, adjust
+    id, group, subject, time, adjust
         Columns of the sample sheet; a group of one column is written as a text, of several as a list.
     kinds : mapping of str to str
         How columns are read; joined with the kinds that are there.
@@ -89,6 +90,7 @@ def set_samples(
         "id": id,
         "group": factors[0] if len(factors) == 1 else factors,
         "subject": subject,
+        "time": time,
         "adjust": list(adjust or ()),
     }
     changes: dict[tuple[Path, str], Any] = {

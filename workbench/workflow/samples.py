@@ -24,7 +24,15 @@ class SheetDelivery:
     id: str | None = None
     group: tuple[str, ...] = ()
     adjust: tuple[str, ...] = ()
+    subject: str | None = None
+    time: str | None = None
     replace: bool = False
+
+    @property
+    def columns(self) -> list[str]:
+        """Columns that were named, whatever their part."""
+        ordering = [column for column in (self.subject, self.time) if column is not None]
+        return [*self.group, *self.adjust, *ordering]
 
 
 @dataclass(frozen=True)
@@ -55,12 +63,14 @@ def add_samples(paths: ProjectPaths, delivery: SheetDelivery, tell: Tell = no_wo
         frame = sheet.frame
         if old is not None:
             tell(sheet_difference(old, frame).lines())
-        require_columns([*delivery.group, *delivery.adjust], list(frame.columns), delivery.file)
+        require_columns(delivery.columns, list(frame.columns), delivery.file)
         kinds = unclear_kinds(frame, delivery.adjust)
         text = set_samples_text(
             read_settings_text(paths.settings),
             id=str(frame.index.name),
             group=list(delivery.group),
+            subject=delivery.subject,
+            time=delivery.time,
             adjust=list(delivery.adjust),
             kinds=kinds,
         )
@@ -73,7 +83,7 @@ def add_samples(paths: ProjectPaths, delivery: SheetDelivery, tell: Tell = no_wo
             change.write_text("project.toml", text)
             sources = [{"file": file, "sha256": digest, "delivered_as": delivery.file.name}]
             change.commit({"command": "add-samples", "sources": sources})
-    unnamed = not (delivery.group or delivery.adjust)
+    unnamed = not delivery.columns
     return SheetAccount(len(frame), sheet.notes, kinds, suggest_columns(frame) if unnamed else None)
 
 
