@@ -240,3 +240,52 @@ def test_a_long_table_of_candidates_is_cut(tmp_path):
     path = write(tmp_path, "t.tsv", "\t".join(["id", *map(str.lower, ids)]) + "\ng" + "\t1" * 100 + "\n")
     with pytest.raises(InputError, match=r"\n  and 60 more\n"):
         delivered_table(path, sample_ids=ids, values="continuous")
+
+
+def features_like_samples(columns, rows):
+    """Return a table of counts whose feature ids resemble sample ids."""
+    head = "\t".join(["gene", *columns])
+    lines = [f"tran{k:05d}" + f"\t{k}" * len(columns) for k in range(1, rows + 1)]
+    return "\n".join([head, *lines]) + "\n"
+
+
+SHEET_OF_24 = [f"T{k:03d}" for k in range(1, 25)]
+
+
+def test_features_that_resemble_samples_are_not_offered_where_the_columns_fit(tmp_path):
+    """Ten of 24 samples stand in the columns under their own names; ``tran00001`` is like ``T001`` all the same."""
+    path = write(tmp_path, "t.tsv", features_like_samples(SHEET_OF_24[:10], 60))
+    table = delivered_table(path, sample_ids=SHEET_OF_24, values="counts")
+    assert (table.samples_in, len(table.matched)) == ("columns", 10)
+
+
+def test_a_few_features_of_many_that_resemble_samples_are_told_and_not_offered(tmp_path):
+    path = write(tmp_path, "t.tsv", features_like_samples([f"P{k}_rna" for k in range(24)], 200))
+    with pytest.raises(
+        InputError, match=r"no sample of the sheet is in the table.*24 of the 200 rows resemble"
+    ):
+        delivered_table(path, sample_ids=SHEET_OF_24, values="counts")
+    with pytest.raises(
+        InputError, match=r"24 samples of the sheet's 24 may be in the table under another name"
+    ):
+        delivered_table(path, sample_ids=SHEET_OF_24, values="counts", samples_in="rows")
+
+
+def test_resembling_features_are_no_reason_to_read_samples_from_the_rows(tmp_path):
+    path = write(tmp_path, "t.tsv", features_like_samples([f"P{k}_rna" for k in range(24)], 30))
+    with pytest.raises(
+        InputError, match="none of the columns is a sample of the sheet: the sheet has 'T001'"
+    ):
+        delivered_table(path, sample_ids=SHEET_OF_24, values="counts", samples_in="columns")
+
+
+def test_numbers_of_rows_that_are_sample_ids_do_not_win_over_columns_that_fit_one_to_one(tmp_path):
+    ids = [str(k) for k in range(1, 7)]
+    lines = [f"{k} " + " ".join("123456") for k in range(1, 41)]
+    path = write(tmp_path, "t.tsv", tabbed("id S1 S2 S3 S4 S5 S6", *lines))
+    with pytest.raises(
+        InputError, match=r"6 of the columns resemble a sample one to one .*say samples_in = 'rows'"
+    ):
+        delivered_table(path, sample_ids=ids, values="counts")
+    with pytest.raises(InputError, match="may be in the table under another name"):
+        delivered_table(path, sample_ids=ids, values="counts", samples_in="columns")

@@ -10,7 +10,7 @@ import pandas as pd
 
 from .faults import counted, listed
 from .ids import check_unique
-from .names import match_names
+from .names import fit_score, match_names
 from .raw import HEADER, ArrayBody, Cell, RawTable, TextBody, WrongCell, cell_text, split_line
 from .tokens import MISSING, hint_for, is_comma_number, number_of
 from .units import unit_of
@@ -190,7 +190,7 @@ class _Axis:
     def of(
         cls, raw: RawTable, sample_ids: Sequence[str], known: set[str], samples_in: str | None
     ) -> _Axis | None:
-        """Return the axis with more ids of the sheet, candidates counting where there is none; None: unclear."""
+        """Return the axis that fits the sheet, candidates counting where no id of it is there; None: unclear."""
         axes = {"columns": raw.columns, "rows": raw.rows}
         found = {axis: known.intersection(ids) for axis, ids in axes.items()}
         if not any(found.values()):
@@ -198,7 +198,8 @@ class _Axis:
         if samples_in not in axes:
             if len(found["columns"]) == len(found["rows"]):
                 return None
-            samples_in = max(found, key=lambda axis: len(found[axis]))
+            fits = {axis: fit_score(len(names), 0, axes[axis], sample_ids) for axis, names in found.items()}
+            samples_in = max(fits, key=lambda axis: fits[axis])
         ids = axes[samples_in]
         taken = found[samples_in] | _candidates(ids, sample_ids)
         positions = tuple(i for i, name in enumerate(ids) if name in taken)

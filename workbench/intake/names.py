@@ -16,6 +16,7 @@ from .faults import LISTED_FAULTS, counted, listed, shown
 from .name_forms import Form, WrittenName, differences
 
 LISTED_CANDIDATES = 40
+LEAST_SHARE = 0.25
 _UNWRITABLE = "\t\r\n\v\f\x1c\x1d\x1e\x85\u2028\u2029\0"
 
 Candidate = tuple[str, str, str]
@@ -99,6 +100,21 @@ def match_names(table_ids: Iterable[str], sample_ids: Iterable[str]) -> NameMatc
             (name, tuple(sorted(several[name]))) for name in sheet if name in several and name not in offered
         ),
     )
+
+
+def fit_score(exact: int, candidates: int, ids: Sequence[str], sheet: Sequence[str]) -> float:
+    """Return how well a line of names fits the sheet: 1 when the two are the same, 0 when they share nothing.
+
+    Twice the number of names in common over the number of both, where a name that only resembles one of the
+    sheet counts half; 0 when less than a quarter of the line's names have anything to do with the sheet.
+
+    >>> fit_score(3, 0, ["S1", "S2", "S3"], ["S1", "S2", "S3"]), fit_score(0, 3, ["g"] * 3, ["S1", "S2", "S3"])
+    (1.0, 0.75)
+    """
+    different = len(set(ids))
+    if not exact and LEAST_SHARE * different > candidates:
+        return 0.0
+    return (2 * exact + candidates) / (len(sheet) + different) if different else 0.0
 
 
 def _is_writable(name: str) -> bool:

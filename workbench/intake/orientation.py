@@ -18,12 +18,14 @@ from .names import (
     Words,
     ambiguous_lines,
     candidates_offered,
+    fit_score,
     match_names,
 )
 from .raw import HEADER, RawTable, cell_text
 
 _THREE = 3
 _TOP = 10
+_SAY = "say samples_in = 'rows' or samples_in = 'columns' (--samples-in)"
 
 
 @dataclass(frozen=True)
@@ -61,8 +63,11 @@ def match_samples(
 ) -> Matching:
     """Return the orientation of a table and its samples matched to the sheet, by exact id.
 
-    The axis with more ids of the sheet holds the samples. ``samples_in`` overrules that, but its axis must
-    hold at least one sample.
+    The axis that fits the sheet better by its ids holds the samples, where it has at least half of them, or at
+    least half of its names are such ids. Else names that only resemble those of the sheet count as well, half
+    as much, and the axis that fits the sheet better as a whole holds the samples (see `fit_score`): a few of
+    many features may look like samples. ``samples_in`` overrules that, but its axis must hold at least one
+    sample.
 
     Parameters
     ----------
@@ -80,8 +85,9 @@ def match_samples(
     Raises
     ------
     InputError
-        When no id matches (three ids of each side are shown), both axes match equally, the axis named in
-        ``samples_in`` matches nothing, a matched sample occurs twice, or an accepted name is not there;
+        When no id matches (three ids of each side are shown), both axes match equally, or the one by its ids
+        and the other one to one by what resembles them, the axis named in ``samples_in`` matches nothing, a
+        matched sample occurs twice, or an accepted name is not there;
         `OfferedNamesError` when names are nearly those of the sheet and no names are accepted.
     """
     sheet = list(map(str, sample_ids))
@@ -111,15 +117,18 @@ def match_samples(
 def near_names(raw: RawTable, sample_ids: Sequence[str]) -> dict[str, str]:
     """Return the candidates of the line that looks most like the samples', where no line names one exactly.
 
-    Looked at are the header, the id column and the first ten rows: the header may stand under titles.
+    Looked at are the header, the id column and the first ten rows: the header may stand under titles. None are
+    returned when less than a quarter of that line resembles the sheet.
     """
     known = set(map(str, sample_ids))
     top = [list(map(cell_text, raw.body.row(i))) for i in range(min(_TOP, raw.body.shape[0]))]
     lines = [raw.columns, raw.rows, *top]
     if any(known.intersection(line) for line in lines):
         return {}
-    found = max((match_names(line, sample_ids).candidates for line in lines), key=len)
-    return {delivered: sample for delivered, sample, _ in found}
+    matches = [(line, match_names(line, sample_ids).candidates) for line in lines]
+    fits = [fit_score(0, len(found), line, sample_ids) for line, found in matches]
+    best = max(range(len(lines)), key=lambda k: fits[k])
+    return {delivered: sample for delivered, sample, _ in matches[best][1]} if fits[best] else {}
 
 
 Axes = Mapping[str, Sequence[str]]
@@ -133,47 +142,92 @@ def _axes(raw: RawTable, names: Mapping[str, str] | None) -> Axes:
 
 
 def _choose(raw: RawTable, sheet: Sequence[str], axes: Axes, samples_in: str | None, words: Words) -> str:
-    hits = {name: len(set(sheet).intersection(ids)) for name, ids in axes.items()}
-    if samples_in is not None and samples_in not in hits:
+    exact = {name: len(set(sheet).intersection(ids)) for name, ids in axes.items()}
+    if samples_in is not None and samples_in not in axes:
         raise InputError(f"{raw.path}: samples_in is '{samples_in}'; allowed: 'rows', 'columns', or left out")
-    if 2 * max(hits.values()) < len(sheet):
-        hits = _with_candidates(raw, sheet, axes, words)
     if samples_in is not None:
-        if not hits[samples_in]:
-            raise _other_axis(raw, samples_in, hits, words)
+        if not exact[samples_in]:
+            _check_resembling(raw, samples_in, exact, axes, sheet, words)
         return samples_in
-    exact = any(set(sheet).intersection(ids) for ids in axes.values())
-    weights = {name: (hits[name], 0 if exact else hits[name] / len(set(axes[name]))) for name in hits}
-    if weights["rows"] == weights["columns"]:
+    scores = {name: fit_score(count, 0, axes[name], sheet) for name, count in exact.items()}
+    if not any(_holds_most(count, axes[name], sheet) for name, count in exact.items()):
+        scores = _scores_with_candidates(raw, sheet, axes, words)
+    elif exact["rows"] == exact["columns"]:
+        scores = dict.fromkeys(axes, 0.0)
+    if scores["rows"] == scores["columns"]:
         raise InputError(
-            f"{raw.path}: the rows and the columns match {counted(hits['rows'], words.one)} of {words.sheet} "
-            f"each, so the ids cannot tell which are the {words.one}s; say samples_in = 'rows' or samples_in = "
-            "'columns'"
+            f"{raw.path}: the rows and the columns match {counted(exact['rows'], words.one)} of {words.sheet} "
+            f"each, so the ids cannot tell which are the {words.one}s; {_SAY}"
         )
-    return max(weights, key=lambda name: weights[name])
+    found = max(scores, key=lambda name: scores[name])
+    _check_other(raw, found, axes, sheet, words)
+    return found
 
 
-def _with_candidates(raw: RawTable, sheet: Sequence[str], axes: Axes, words: Words) -> dict[str, int]:
-    """Return how many ids of the sheet each axis may have, candidates among them; refuse a table of none."""
+def _holds_most(exact: int, ids: Sequence[str], sheet: Sequence[str]) -> bool:
+    """Whether an axis is beyond doubt the samples': half of the sheet, or half of its own names, are on it."""
+    return exact > 0 and (2 * exact >= len(sheet) or 2 * exact >= len(set(ids)))
+
+
+def _scores_with_candidates(
+    raw: RawTable, sheet: Sequence[str], axes: Axes, words: Words
+) -> dict[str, float]:
+    """Return how well each axis fits the sheet, candidates among its names; refuse a table of none."""
     matches = {name: match_names(ids, sheet) for name, ids in axes.items()}
-    hits = {name: len(match.exact) + len(match.candidates) for name, match in matches.items()}
-    if not any(hits.values()):
-        unclear = [line.strip() for match in matches.values() for line in ambiguous_lines(match)]
-        hint = f"; {unclear[0]}" if unclear else ""
+    scores = {
+        name: fit_score(len(match.exact), len(match.candidates), axes[name], sheet)
+        for name, match in matches.items()
+    }
+    if any(scores.values()):
+        return scores
+    hints = [line.strip() for match in matches.values() for line in ambiguous_lines(match)]
+    for name, match in matches.items():
+        if match.candidates:
+            delivered, sample, _ = match.candidates[0]
+            hints.append(
+                f"{len(match.candidates):,} of the {len(set(axes[name])):,} {name} resemble a {words.one}, as "
+                f"{shown(delivered)} does {shown(sample)}: if the {name} are the {words.one}s, say samples_in = "
+                f"'{name}'"
+            )
+    hint = f"; {hints[0]}" if hints else ""
+    raise InputError(
+        f"{raw.path}: no {words.one} of {words.sheet} is in the table: {words.sheet} has {_some(sheet)}, "
+        f"the table's columns are {_some(raw.columns)}, its rows {_some(raw.rows)}{hint}; use the same "
+        "ids in both"
+    )
+
+
+def _check_other(raw: RawTable, found: str, axes: Axes, sheet: Sequence[str], words: Words) -> None:
+    """Refuse to take a few of an axis's many names for the samples where the other axis fits them one to one."""
+    ids = axes[found]
+    other = "rows" if found == "columns" else "columns"
+    if 2 * len(set(sheet).intersection(ids)) >= len(set(ids)) or len(axes[other]) >= len(ids):
+        return
+    match = match_names(axes[other], sheet)
+    alike = len(match.exact) + len(match.candidates)
+    if 2 * alike >= len(sheet) and 2 * alike >= len(axes[other]) and match.candidates:
+        delivered, sample, _ = match.candidates[0]
         raise InputError(
-            f"{raw.path}: no {words.one} of {words.sheet} is in the table: {words.sheet} has {_some(sheet)}, "
-            f"the table's columns are {_some(raw.columns)}, its rows {_some(raw.rows)}{hint}; use the same "
-            "ids in both"
+            f"{raw.path}: {counted(alike, 'of the ' + other + ' resembles', 'of the ' + other + ' resemble')} a "
+            f"{words.one} one to one ({shown(delivered)}: {shown(sample)}), while some of the {len(ids):,} {found} "
+            f"have the very ids; {_SAY}"
         )
-    return hits
 
 
-def _other_axis(raw: RawTable, samples_in: str, hits: Mapping[str, int], words: Words) -> InputError:
+def _check_resembling(
+    raw: RawTable, samples_in: str, exact: Mapping[str, int], axes: Axes, sheet: Sequence[str], words: Words
+) -> None:
+    """Refuse the axis that the settings name when none of its names is, or resembles, one of the sheet."""
+    if match_names(axes[samples_in], sheet).candidates:
+        return
     other = "rows" if samples_in == "columns" else "columns"
-    return InputError(
-        f"{raw.path}: samples_in = '{samples_in}', but none of the {samples_in} is a {words.one} of "
-        f"{words.sheet}, while {counted(hits[other], f'of the {other} is', f'of the {other} are')}; write "
-        f"samples_in = '{other}', or leave it out"
+    start = f"{raw.path}: samples_in = '{samples_in}', but none of the {samples_in} is a {words.one} of {words.sheet}"
+    if exact[other]:
+        found = counted(exact[other], f"of the {other} is", f"of the {other} are")
+        raise InputError(f"{start}, while {found}; write samples_in = '{other}', or leave it out")
+    raise InputError(
+        f"{start}: {words.sheet} has {_some(sheet)}, the table's {samples_in} are {_some(axes[samples_in])}; use the "
+        "same ids in both"
     )
 
 
