@@ -112,7 +112,7 @@ def test_several_samples_of_a_subject_stop_rather_than_being_pooled(command, mad
     edit(made, "[samples]\nid", '[samples]\nsubject = "group"\nid')
     edit(made, 'group = "group"', "")
     code, _, err = command("run", "--project", made)
-    assert (code, "not supported yet" in err) == (2, True)
+    assert (code, 'level = "visits"' in err) == (2, True)
 
 
 def test_group_and_nuisance_that_say_the_same_are_named(command, made):

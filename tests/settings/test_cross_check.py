@@ -90,7 +90,7 @@ ONE = [
     ),
     (SAMPLES + "kinds = { agee = 'number' }", "samples.kinds.agee: there is no column of samples.tsv 'agee'"),
     (SAMPLES + "kinds = { batch = 'number' }", "samples.kinds.batch: no adjust names this column; allowed: 'age'"),
-    (SAMPLES + "order = { batch = ['1', '2'] }", "samples.order.batch: is not the group; allowed: 'condition'"),
+    (SAMPLES + "order = { batch = ['1', '2'] }", "samples.order.batch: is not the group or the time; allowed:"),
     (
         SAMPLES + "order = { condition = ['wet'] }",
         "samples.order.condition: lacks 'dry'; name every level of 'condition' once",

@@ -150,9 +150,10 @@ def _order_faults(
     chosen = settings.samples
     for factor, order in chosen.order.items():
         key = ("samples", "order", factor)
-        if factor not in chosen.group:
+        allowed = [*chosen.group, *([] if chosen.time is None else [chosen.time])]
+        if factor not in allowed:
             yield _fault(
-                key, f"is not the group; allowed: {_listed(chosen.group)}{hint(factor, chosen.group)}"
+                key, f"is not the group or the time; allowed: {_listed(allowed)}{hint(factor, allowed)}"
             )
         elif factor in columns:
             pairs = zip(samples, sheet[factor].tolist(), strict=True)

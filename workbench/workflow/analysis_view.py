@@ -10,13 +10,14 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from workbench.engine import aliased
+from workbench.engine import SubjectDesign, aliased
 from workbench.errors import InputError
 from workbench.intake import Groups, design_columns, group_codes
 from workbench.settings import AnalysisSettings, Settings
 from workbench.workflow.design_frame import DesignFrame, design_frame
 from workbench.workflow.loaded_block import LoadedBlock, load_block
 from workbench.workflow.state import ProjectState
+from workbench.workflow.subjects import require_level, subject_columns, subject_design
 
 LEAST_FREEDOM = 3
 
@@ -26,7 +27,8 @@ class Shared:
     """Samples that some blocks share, with their design.
 
     ``nuisance`` (n, c) holds the columns to be removed (no intercept), ``groups`` the cell of each sample
-    (None without a group), ``group_columns`` its indicators without the first level.
+    (None without a group), ``group_columns`` its indicators without the first level, ``subjects`` which samples
+    are of one subject (None without a subject column).
     """
 
     samples: tuple[str, ...]
@@ -34,6 +36,7 @@ class Shared:
     nuisance_names: tuple[str, ...]
     groups: Groups | None
     group_columns: NDArray[np.float64]
+    subjects: SubjectDesign | None = None
 
     @property
     def n(self) -> int:
@@ -89,12 +92,16 @@ class AnalysisView:
         frame = found.frame.loc[samples]
         design = design_columns(frame, found.columns, found.kinds)
         groups = group_codes(frame, self.factors, self.study.samples.order) if self.factors else None
+        where = self._where(names)
+        subjects = subject_design(frame, self.study, groups, where)
+        require_level(subjects, self.settings.level, self.study, where)
         shared = Shared(
             tuple(samples),
             design.matrix,
             tuple(design.names),
             groups,
             _group_indicators(groups, len(samples)),
+            subjects,
         )
         self._require_usable(shared, names)
         return shared
@@ -115,11 +122,15 @@ class AnalysisView:
 
     def lacking_design(self, names: Sequence[str]) -> dict[str, str]:
         """Return the samples with an empty cell in a used design column, with the reason."""
-        return self.design(names).lacking(self.factors, self.held_by_all(names))
+        used = [*self.factors, *subject_columns(self.study)]
+        return self.design(names).lacking(used, self.held_by_all(names))
+
+    def _where(self, names: Sequence[str]) -> str:
+        what = " and ".join(f"'{name}'" for name in names)
+        return f"analysis '{self.name}', blocks {what}"
 
     def _require_usable(self, shared: Shared, names: Sequence[str]) -> None:
-        what = " and ".join(f"'{name}'" for name in names)
-        where = f"analysis '{self.name}', blocks {what}"
+        where = self._where(names)
         _require_levels(shared, where, self.factors)
         group_names = [f"{'+'.join(self.factors)} (group)"] * shared.group_columns.shape[1]
         tangled = aliased(shared.within, [*shared.nuisance_names, *group_names])
@@ -151,12 +162,6 @@ def blocks_of(settings: Settings, analysis: str) -> list[str]:
 
 def view_analysis(state: ProjectState, name: str) -> AnalysisView:
     """Load what the analysis needs; every file is checked against its hash first."""
-    if state.settings.samples.subject is not None:
-        raise InputError(
-            f"{state.paths.settings}: samples.subject = '{state.settings.samples.subject}': several samples of one "
-            "subject are not supported yet, and pooling them would make chance look like evidence; take one sample "
-            "per subject (samples.exclude names the others with a reason) and remove samples.subject"
-        )
     blocks = {block: load_block(state, block) for block in blocks_of(state.settings, name)}
     return AnalysisView(name, state.settings.analyses[name], state.settings, state.require_sheet(), blocks)
 

@@ -18,6 +18,7 @@ from workbench.engine import (
     fisher_interval,
     screen_blocks,
 )
+from workbench.errors import InputError
 from workbench.workflow.analysis_view import AnalysisView, Shared
 from workbench.workflow.reporting import Reporter
 
@@ -53,6 +54,7 @@ class Pairs:
 def screen_analysis(view: AnalysisView, reporter: Reporter) -> Screens:
     """Screen every cross-layer pair of features, within groups and in total where there is a group."""
     shared = tuple(view.shared(pair) for pair in view.pairs)
+    _refuse_repeated(view, shared)
     grouped = bool(view.factors)
     total = _screen(
         view, shared, lambda one: one.nuisance, reporter, "pairs, group left in" if grouped else "pairs"
@@ -62,6 +64,12 @@ def screen_analysis(view: AnalysisView, reporter: Reporter) -> Screens:
     within = _screen(view, shared, lambda one: one.within, reporter, "pairs within groups")
     chosen = within if view.settings.network.select == "within" else total
     return Screens(shared, chosen, total, within)
+
+
+def _refuse_repeated(view: AnalysisView, shared: tuple[Shared, ...]) -> None:
+    for one in shared:
+        if one.subjects is not None and one.subjects.kind != "single":
+            raise InputError(f"analysis '{view.name}': the screen of pairs takes one sample of each subject")
 
 
 def _screen(
