@@ -112,7 +112,5 @@ def test_a_new_sample_with_nothing_that_is_left_is_named() -> None:
     assert "F0" in fitted.prepared.dropped
     new = np.zeros((1, values.shape[1]))
     new[0, 0] = 9.0
-    with pytest.raises(
-        InputError, match=r"samples with none of the \d+ features that are left: 'S000'; exclude"
-    ):
+    with pytest.raises(InputError, match=r"no value in the \d+ features that are left: 'S000'; set exclude"):
         fitted.transform(table_of(new))

@@ -109,7 +109,9 @@ def test_samples_without_reads_and_negative_counts_are_refused() -> None:
     table = counts()
     values = table.values.copy()
     values[3] = 0.0
-    with pytest.raises(InputError, match="1 of 14 samples have no count above 0: 'S003'; exclude them"):
+    with pytest.raises(
+        InputError, match=r"1 of 14 samples have no count above 0: 'S003'; set exclude = { S003"
+    ):
         recipe_for("transcripts", "counts").fit(
             MeasuredTable(values, table.samples, table.features), smallest_group=5, seed=1
         )
@@ -127,7 +129,9 @@ def test_a_new_sample_with_nothing_in_the_reference_is_named() -> None:
     fitted = recipe_for("transcripts", "counts").fit(table, smallest_group=5, seed=1)
     lost = [name in fitted.prepared.dropped for name in table.features]
     new = MeasuredTable(np.where(lost, 5.0, 0.0)[None, :], ("late",), table.features)
-    with pytest.raises(InputError, match=r"no size factor for 'late': .* in any of the \d+ features"):
+    with pytest.raises(
+        InputError, match=r"no value in any of the \d+ features that the size factor rests on: 'late'"
+    ):
         fitted.transform(new)
 
 

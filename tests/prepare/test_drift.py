@@ -156,7 +156,8 @@ def test_runs_without_order_are_named() -> None:
     order[runs.rows_as("sample")[3]] = np.nan
     step, table = fitted(with_runs_changed(made, order=order))
     with pytest.raises(
-        InputError, match=r"1 runs have no order: 'run4'; add it to the run sheet, or set drift"
+        InputError,
+        match=r"1 runs have no order: 'run4'; add the order to the run sheet, or set drift = \"none\" in",
     ):
         step.transform(table)
 

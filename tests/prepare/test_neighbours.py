@@ -77,5 +77,8 @@ def test_fewer_donors_than_wanted_are_enough() -> None:
 
 def test_a_sample_without_any_value_is_named() -> None:
     fitted = FillGaps(censored=False).fit(step_table(gappy(4, 10, 5, 0.0)[0]), FitContext(None, 1))
-    with pytest.raises(InputError, match="gaps of 'S001' cannot be filled: no value in any feature"):
+    with pytest.raises(
+        InputError,
+        match="no value in any feature that another sample has, so that their gaps cannot be filled: 'S001'",
+    ):
         fitted.transform(step_table(np.array([[1.0] * 5, [np.nan] * 5])))

@@ -65,7 +65,8 @@ def test_a_sample_without_a_figure_is_named() -> None:
     fitted = recipe_for("x", "counts", settings).fit(table_of(values), smallest_group=6, seed=1)
     new = np.where(np.arange(600) < 60, values[:1], 0.0)
     with pytest.raises(
-        InputError, match=r"no size factor for 'S000': nothing measured in any of the \d+ features"
+        InputError,
+        match=r"1 of 1 samples have no value in any of the \d+ features that the size factor rests on: 'S000'",
     ):
         fitted.transform(table_of(new))
 

@@ -210,7 +210,7 @@ def test_what_cannot_be_prepared_is_refused() -> None:
     ):
         recipe_for("x", "counts", settings)
     text = table_of(np.array([[0.0], [1.0]]), (("a", "b"),))
-    with pytest.raises(InputError, match="text features in a block of `log`: 'F0'; declare values = `mixed`"):
+    with pytest.raises(InputError, match=r"text features in a block of `log`: 'F0'; set values = .mixed. in"):
         recipe_for("x", "log").fit(text, smallest_group=None, seed=1)
 
 

@@ -92,12 +92,12 @@ def test_ordered_text_becomes_its_places() -> None:
 
 def test_names_that_the_block_lacks_are_refused_with_the_nearest() -> None:
     with pytest.raises(
-        InputError, match=r"`ordered` in .* names 1 features .* first 'F00'; did you mean 'F0'"
+        InputError, match=r"`ordered` names 1 features .* first 'F00'; did you mean 'F0'.*blocks.NAME.prepare"
     ):
         prepared("mixed", mixed(), ordered={"F00": ["a", "b"]})
-    with pytest.raises(InputError, match=r"`transform_features` in .* the first 'crp'"):
+    with pytest.raises(InputError, match=r"`transform_features` names .* the first 'crp'"):
         prepared("continuous", table_of(readings()), transform="log", transform_features=["crp"])
-    with pytest.raises(InputError, match=r"`ordered` .* levels of 'F1' that are not listed: 'yes'"):
+    with pytest.raises(InputError, match=r"levels of 'F1' that `ordered` does not list: 'yes'"):
         prepared("mixed", mixed(), ordered={"F1": ["no", "maybe"]})
     with pytest.raises(InputError, match=r"`transform_features` names features of text: 'F1'"):
         prepared("mixed", mixed(), transform="log", transform_features=["F1"])
@@ -112,8 +112,8 @@ def test_shares_of_nought_and_one_are_finite_and_opposite() -> None:
 
 def test_percentages_and_m_values_are_no_shares() -> None:
     with pytest.raises(
-        InputError, match=r"outside 0 to 1, .* 'F1', sample 'S000': 50; .* if these are percentages"
+        InputError, match=r"outside 0 to 1, .* 'F1', sample 'S000': 50; .* divide percentages by 100"
     ):
         prepared("beta", table_of([[0.5, 50.0], [0.1, 20.0]]))
-    with pytest.raises(InputError, match="if these are M-values"):
+    with pytest.raises(InputError, match='M-values are logarithms; set values = "log" in'):
         prepared("beta", table_of([[0.5, -2.0], [0.1, 0.2]]))

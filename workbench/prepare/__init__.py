@@ -3,6 +3,7 @@
 from workbench.prepare.account import Explanation, explain_lines
 from workbench.prepare.guards import GroupDifference, group_cautions, group_differences, imputed_shares
 from workbench.prepare.recipe import FittedRecipe, Recipe, recipe_for
+from workbench.prepare.refusal import PrepareRefusal
 from workbench.prepare.runs import Runs, RunTable, run_table
 from workbench.prepare.tables import MeasuredTable, PreparedTable, StepAccount
 
@@ -11,6 +12,7 @@ __all__ = [
     "FittedRecipe",
     "GroupDifference",
     "MeasuredTable",
+    "PrepareRefusal",
     "PreparedTable",
     "Recipe",
     "RunTable",

@@ -7,9 +7,9 @@ from typing import ClassVar
 
 import numpy as np
 
-from workbench.errors import InputError
 from workbench.prepare.combining import CombineRuns
 from workbench.prepare.gaps import FillGaps
+from workbench.prepare.refusal import VALUES, PrepareRefusal
 from workbench.prepare.steps import DropFlat, DropRarelySeen, DropUnusable, FitContext, Settled, Step
 from workbench.prepare.tables import Matrix, MeasuredTable, StepAccount, StepTable
 from workbench.settings.prepare_schema import BetaPreparation
@@ -35,16 +35,18 @@ def check_beta(table: MeasuredTable) -> None:
 
     Raises
     ------
-    InputError
+    PrepareRefusal
         Naming the first such cell.
     """
     outside = (table.values < 0) | (table.values > 1)
     if outside.any():
-        looks = "percentages" if not (table.values < 0).any() else "M-values"
-        raise InputError(
+        percentages = not (table.values < 0).any()
+        raise PrepareRefusal(
             f"{int(outside.sum())} values are outside 0 to 1, the first at {table.first_cell(outside)}; methylated "
-            f"shares are 0 to 1: if these are {looks}, check the block's `values` (M-values are `log`; percentages "
-            "are divided by 100)"
+            f"shares are 0 to 1, {'percentages are not' if percentages else 'M-values are logarithms'}",
+            key=VALUES,
+            fitting=("continuous",) if percentages else ("log",),
+            advice="divide percentages by 100" if percentages else "",
         )
 
 

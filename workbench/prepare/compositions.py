@@ -11,10 +11,10 @@ from typing import ClassVar
 
 import numpy as np
 
-from workbench.errors import InputError
 from workbench.prepare.combining import CombineRuns
 from workbench.prepare.counts import check_count_cells
 from workbench.prepare.gaps import FillGaps
+from workbench.prepare.refusal import VALUES, PrepareRefusal, without_value
 from workbench.prepare.steps import (
     FEWEST_SAMPLES,
     DropFlat,
@@ -25,7 +25,7 @@ from workbench.prepare.steps import (
     Step,
     keep_features,
 )
-from workbench.prepare.tables import Matrix, MeasuredTable, StepAccount, StepTable, some
+from workbench.prepare.tables import Matrix, MeasuredTable, StepAccount, StepTable
 from workbench.settings.prepare_schema import CompositionPreparation
 
 PREVALENCE = 0.1
@@ -86,9 +86,11 @@ def check_proportion_cells(table: MeasuredTable) -> None:
     """
     negative = table.values < 0
     if negative.any():
-        raise InputError(
+        raise PrepareRefusal(
             f"{int(negative.sum())} proportions are negative, the first at {table.first_cell(negative)}; parts of a "
-            "whole are 0 or more: check the block's `values` (log-ratios are `log` or `continuous`)"
+            "whole are 0 or more, log-ratios may be less",
+            key=VALUES,
+            fitting=("log", "continuous"),
         )
 
 
@@ -96,10 +98,7 @@ def _check_not_empty(table: MeasuredTable) -> None:
     empty = np.flatnonzero((table.values > 0).sum(axis=1) == 0)
     if empty.size and table.features:
         names = [table.samples[row] for row in empty]
-        raise InputError(
-            f"{len(names)} of {len(table.samples)} samples have no part above 0: {some(names)}; exclude them, with "
-            "the reason"
-        )
+        raise without_value("part above 0", names, len(table.samples))
 
 
 @dataclass(frozen=True)
@@ -247,9 +246,8 @@ class FittedZeros:
         parts = closed(table.values)
         lost = [table.samples[row] for row in np.flatnonzero(~(parts > 0).any(axis=1))]
         if lost:
-            raise InputError(
-                f"samples with none of the {len(table.features):,} features that are left: {some(lost)}; exclude "
-                "them, with the reason"
+            raise without_value(
+                f"value in the {len(table.features):,} features that are left", lost, len(table.samples)
             )
         zeros = int((parts == 0).sum())
         replaced = replace_zeros(parts, self.settings.share * self.limit)

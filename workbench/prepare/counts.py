@@ -7,10 +7,10 @@ from typing import ClassVar
 
 import numpy as np
 
-from workbench.errors import InputError
 from workbench.prepare.combining import CombineRuns
 from workbench.prepare.gaps import FillGaps
 from workbench.prepare.read_scales import TrimmedMeans, UpperQuartile
+from workbench.prepare.refusal import VALUES, PrepareRefusal, without_value
 from workbench.prepare.size_factors import SizeFactors
 from workbench.prepare.steps import (
     FEWEST_SAMPLES,
@@ -23,7 +23,7 @@ from workbench.prepare.steps import (
     SwitchedOff,
     keep_features,
 )
-from workbench.prepare.tables import MeasuredTable, StepAccount, StepTable, some
+from workbench.prepare.tables import MeasuredTable, StepAccount, StepTable
 from workbench.settings.prepare_schema import CountsPreparation
 
 SMALLEST_COUNT = 10
@@ -62,10 +62,7 @@ def check_counts(table: MeasuredTable) -> None:
     empty = np.flatnonzero((table.values > 0).sum(axis=1) == 0)
     if empty.size and table.features:
         names = [table.samples[row] for row in empty]
-        raise InputError(
-            f"{len(names)} of {len(table.samples)} samples have no count above 0: {some(names)}; "
-            "exclude them, with the reason"
-        )
+        raise without_value("count above 0", names, len(table.samples))
 
 
 def check_count_cells(table: MeasuredTable) -> None:
@@ -78,16 +75,20 @@ def check_count_cells(table: MeasuredTable) -> None:
     """
     negative = table.values < 0
     if negative.any():
-        raise InputError(
+        raise PrepareRefusal(
             f"{int(negative.sum())} counts are negative, the first at {table.first_cell(negative)}; "
-            "counts are 0 or more: declare the values as `log` or `continuous` if that is what they are"
+            "counts are 0 or more, logarithms and readings may be less",
+            key=VALUES,
+            fitting=("log", "continuous"),
         )
     part = table.values != np.rint(table.values)
     part &= ~np.isnan(table.values)
     if part.any():
-        raise InputError(
-            f"{int(part.sum())} counts are not whole, the first at {table.first_cell(part)}; round estimated counts; "
-            "if they are logarithms or scaled, check the block's `values` (`log`, `intensities`, `proportions`)"
+        raise PrepareRefusal(
+            f"{int(part.sum())} counts are not whole, the first at {table.first_cell(part)}",
+            key=VALUES,
+            fitting=("log", "intensities", "proportions"),
+            advice="round estimated counts to whole numbers",
         )
 
 

@@ -26,6 +26,7 @@ from workbench.prepare.drift_courses import (
     choose_courses,
 )
 from workbench.prepare.local_lines import medians, read_off
+from workbench.prepare.refusal import PrepareRefusal
 from workbench.prepare.runs import Runs, RunTable
 from workbench.prepare.steps import FitContext, Settled
 from workbench.prepare.tables import Matrix, StepAccount, StepTable, some
@@ -109,9 +110,11 @@ class FittedDrift:
             rows = np.flatnonzero(batch == place.batch)
             placeless = [runs.runs[row] for row in rows if np.isnan(runs.order[row])]
             if placeless:
-                raise InputError(
-                    f"{len(placeless)} runs have no order: {some(placeless)}; add it to the run sheet, or set "
-                    'drift = "none"'
+                raise PrepareRefusal(
+                    f"{len(placeless)} runs have no order: {some(placeless)}",
+                    key="prepare.drift",
+                    fitting=("none",),
+                    advice="add the order to the run sheet",
                 )
             removed[rows] = read_off(place.x, place.course, runs.order[rows])
         return removed

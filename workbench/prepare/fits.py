@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from workbench.errors import InputError
+from workbench.prepare.refusal import TRUST, VALUES, PrepareRefusal
 from workbench.prepare.steps import column_range
 from workbench.prepare.tables import MeasuredTable
 
@@ -13,10 +13,6 @@ LARGEST_AS_LOG = 64.0
 NARROWEST_SPAN = 10.0
 FEWEST_TO_JUDGE = 20
 SPAN_ENDS = (0.01, 0.99)
-
-_WAY_OUT = (
-    "check the block's `values`, or set check_values = false in [blocks.NAME.prepare] if they are right"
-)
 
 
 def check_no_logs(table: MeasuredTable) -> None:
@@ -28,7 +24,7 @@ def check_no_logs(table: MeasuredTable) -> None:
 
     Raises
     ------
-    InputError
+    PrepareRefusal
         Saying so.
     """
     if len(table.features) < FEWEST_TO_JUDGE:
@@ -38,9 +34,12 @@ def check_no_logs(table: MeasuredTable) -> None:
         return
     low, high = np.quantile(positive, SPAN_ENDS)
     if high / low < NARROWEST_SPAN:
-        raise InputError(
+        raise PrepareRefusal(
             f"intensities from {positive.min():.4g} to {positive.max():.4g}, nearly all within a factor of "
-            f"{high / low:.2g}, look like logarithms already (`log`); {_WAY_OUT}"
+            f"{high / low:.2g}, look like logarithms already",
+            key=VALUES,
+            fitting=("log",),
+            trusted_by=TRUST,
         )
 
 
@@ -52,7 +51,7 @@ def check_logs(table: MeasuredTable) -> None:
 
     Raises
     ------
-    InputError
+    PrepareRefusal
         Saying so.
     """
     if not table.features:
@@ -63,9 +62,11 @@ def check_logs(table: MeasuredTable) -> None:
         float(np.fmax.reduce(high, initial=-np.inf)),
     )
     if max(-smallest, largest) > LARGEST_LOG and largest >= smallest:
-        raise InputError(
-            f"values from {smallest:g} to {largest:g} do not look like logarithms (more likely `intensities` or "
-            f"`counts`); {_WAY_OUT}"
+        raise PrepareRefusal(
+            f"values from {smallest:g} to {largest:g} do not look like logarithms",
+            key=VALUES,
+            fitting=("intensities", "counts"),
+            trusted_by=TRUST,
         )
     known = table.values[~np.isnan(table.values)]
     if (
@@ -74,6 +75,9 @@ def check_logs(table: MeasuredTable) -> None:
         and known.size
         and not np.any(np.mod(known, 1))
     ):
-        raise InputError(
-            f"values from {smallest:g} to {largest:g}, all whole numbers, look like counts (`counts`); {_WAY_OUT}"
+        raise PrepareRefusal(
+            f"values from {smallest:g} to {largest:g}, all whole numbers, look like counts",
+            key=VALUES,
+            fitting=("counts",),
+            trusted_by=TRUST,
         )

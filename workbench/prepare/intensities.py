@@ -7,12 +7,12 @@ from typing import ClassVar
 
 import numpy as np
 
-from workbench.errors import InputError
 from workbench.prepare.combining import CombineRuns
 from workbench.prepare.controls import BlankFilter, PoolScatter
 from workbench.prepare.drift import Drift
 from workbench.prepare.gaps import FillGaps
 from workbench.prepare.quotients import Quotients
+from workbench.prepare.refusal import VALUES, PrepareRefusal
 from workbench.prepare.steps import (
     DropFlat,
     DropRarelySeen,
@@ -64,14 +64,16 @@ def check_intensities(table: MeasuredTable) -> None:
 
     Raises
     ------
-    InputError
+    PrepareRefusal
         Naming the first negative cell.
     """
     negative = table.values < 0
     if negative.any():
-        raise InputError(
+        raise PrepareRefusal(
             f"{int(negative.sum())} intensities are negative, the first at {table.first_cell(negative)}; "
-            "intensities are 0 or more: declare the values as `log` if they are logarithms already"
+            "intensities are 0 or more, logarithms and readings may be less",
+            key=VALUES,
+            fitting=("log", "continuous"),
         )
 
 

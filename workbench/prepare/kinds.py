@@ -21,6 +21,7 @@ from workbench.prepare.fits import check_logs, check_no_logs
 from workbench.prepare.intensities import check_intensities, intensity_steps
 from workbench.prepare.log_values import log_steps
 from workbench.prepare.mixed import check_mixed, mixed_steps
+from workbench.prepare.refusal import PrepareRefusal
 from workbench.prepare.steps import Step
 from workbench.prepare.tables import MeasuredTable
 from workbench.settings.names import hint
@@ -40,7 +41,11 @@ def no_runs(table: MeasuredTable) -> None:  # noqa: ARG001
     InputError
         Always.
     """
-    raise InputError("a run sheet for `mixed` values: text of several runs cannot be averaged; leave it out")
+    raise PrepareRefusal(
+        "a run sheet for `mixed` values: text of several runs cannot be averaged",
+        key="runs",
+        advice="leave the run sheet out",
+    )
 
 
 @dataclass(frozen=True)
@@ -103,7 +108,7 @@ def check_names(key: str, names: Sequence[str], features: Sequence[str]) -> None
     absent = [name for name in names if name not in known]
     if absent:
         near = hint(absent[0], list(features))
-        raise InputError(
-            f"`{key}` in [blocks.NAME.prepare] names {len(absent)} features that the block lacks, the first "
-            f"'{absent[0]}'{near}; mend the name, or take it out"
+        raise PrepareRefusal(
+            f"`{key}` names {len(absent)} features that the block lacks, the first '{absent[0]}'{near}",
+            key=f"prepare.{key}",
         )

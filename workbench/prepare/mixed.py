@@ -16,6 +16,7 @@ from typing import ClassVar
 import numpy as np
 
 from workbench.errors import InputError
+from workbench.prepare.refusal import PrepareRefusal
 from workbench.prepare.steps import DropFlat, DropRarelySeen, DropUnusable, FitContext, Settled, Step
 from workbench.prepare.tables import Matrix, MeasuredTable, StepAccount, StepTable, some
 from workbench.prepare.transforms import transform_steps
@@ -161,9 +162,9 @@ def _check_listed(feature: str, values: Matrix, levels: tuple[str, ...], order: 
     seen = {levels[int(code)] for code in values[~np.isnan(values)]}
     beyond = sorted(seen - set(order))
     if beyond:
-        raise InputError(
-            f"`ordered` in [blocks.NAME.prepare]: levels of '{feature}' that are not listed: {some(beyond)}; list "
-            "every level, lowest first"
+        raise PrepareRefusal(
+            f"levels of '{feature}' that `ordered` does not list: {some(beyond)}; it names every level, lowest first",
+            key="prepare.ordered",
         )
 
 

@@ -12,8 +12,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.errors import InputError
-from workbench.prepare.tables import Mask, Matrix, some
+from workbench.prepare.refusal import without_value
+from workbench.prepare.tables import Mask, Matrix
 
 FEWEST_NEIGHBOURS = 3
 MOST_NEIGHBOURS = 10
@@ -83,9 +83,10 @@ class Donors:
     def _check_rows(self, distances: Matrix, names: list[str]) -> None:
         lost = [name for name, distance in zip(names, distances, strict=True) if np.isinf(distance).all()]
         if lost:
-            raise InputError(
-                f"gaps of {some(lost)} cannot be filled: no value in any feature that a training sample has "
-                "as well; exclude such samples, with the reason"
+            raise without_value(
+                "value in any feature that another sample has, so that their gaps cannot be filled",
+                lost,
+                len(distances),
             )
 
 

@@ -20,6 +20,7 @@ import numpy as np
 from workbench.errors import InputError
 from workbench.prepare.account import Explanation, explain_step, explained
 from workbench.prepare.kinds import Kind, check_names, kind_of
+from workbench.prepare.refusal import VALUES, PrepareRefusal
 from workbench.prepare.steps import FitContext, FittedStep, Step
 from workbench.prepare.tables import MeasuredTable, PreparedTable, StepAccount, StepTable, some
 from workbench.settings.prepare_schema import PrepareSettings, preparation_model
@@ -117,6 +118,17 @@ class Recipe:
         prepared = _prepared(current, tuple(account))
         return FittedRecipe(self, table.features, tuple(fitted), prepared, table.runs is not None)
 
+    def refusal(self, table: MeasuredTable) -> PrepareRefusal | None:
+        """Return why these samples cannot be what they are declared to be, None where nothing speaks against it.
+
+        Looks at the table alone and learns nothing; ``fit`` refuses for the same reasons.
+        """
+        try:
+            self._check_values(table)
+        except PrepareRefusal as refusal:
+            return refusal
+        return None
+
     def steps_for(self, table: MeasuredTable) -> tuple[Step, ...]:
         """Return the steps that apply to a table: those about runs, pools and blanks need a run sheet."""
         return tuple(step for step in self.steps if table.runs is not None or not step.runs_only)
@@ -133,6 +145,9 @@ class Recipe:
             raise InputError(
                 f"a smallest group of {smallest_group} among {n} samples; allowed: 1 to {n}, or None"
             )
+        self._check_values(table)
+
+    def _check_values(self, table: MeasuredTable) -> None:
         _check_kind(self, table)
         if getattr(self.settings, "check_values", True):
             self.kind.fits(table)
@@ -210,8 +225,8 @@ def _check_kind(recipe: Recipe, table: MeasuredTable) -> None:
         name for name, levels in zip(table.features, table.feature_levels, strict=True) if levels is not None
     ]
     if text and recipe.values != "mixed":
-        raise InputError(
-            f"text features in a block of `{recipe.values}`: {some(text)}; declare values = `mixed`"
+        raise PrepareRefusal(
+            f"text features in a block of `{recipe.values}`: {some(text)}", key=VALUES, fitting=("mixed",)
         )
     recipe.kind.check(table)
     if table.runs is not None:
@@ -224,9 +239,7 @@ def _check_features_left(table: StepTable, account: list[StepAccount], measured:
     lines = "; ".join(
         f"{step.step}: {len(step.dropped)} ({_first(step)})" for step in account if step.dropped
     )
-    raise InputError(
-        f"no feature is left of {measured}: {lines or 'the table has none'}; check the block's `values`"
-    )
+    raise PrepareRefusal(f"no feature is left of {measured}: {lines or 'the table has none'}", key=VALUES)
 
 
 def _first(step: StepAccount) -> str:

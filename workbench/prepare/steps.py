@@ -13,8 +13,8 @@ from typing import ClassVar, Protocol
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.errors import InputError
-from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable, some
+from workbench.prepare.refusal import without_value
+from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable
 
 SEEN_SHARE = 0.7
 FEWEST_SAMPLES = 2
@@ -138,15 +138,13 @@ def check_found(what: str, values: Matrix, table: StepTable, n_features: int) ->
 
     Raises
     ------
-    InputError
+    PrepareRefusal
         When one is NaN: the sample has nothing in any of the features that the figure rests on.
     """
     lost = [table.samples[row] for row in np.flatnonzero(np.isnan(values))]
     if lost:
-        raise InputError(
-            f"no {what} for {some(lost)}: nothing measured in any of the {n_features:,} features that it "
-            "rests on; exclude such samples, with the reason"
-        )
+        lacking = f"value in any of the {n_features:,} features that the {what} rests on"
+        raise without_value(lacking, lost, len(table.samples))
     return values
 
 

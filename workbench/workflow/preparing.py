@@ -12,7 +12,14 @@ from anndata import AnnData
 
 from workbench.errors import InputError
 from workbench.intake import group_codes, missing_samples
-from workbench.prepare import PreparedTable, StepAccount, group_cautions, recipe_for
+from workbench.prepare import (
+    MeasuredTable,
+    PreparedTable,
+    PrepareRefusal,
+    StepAccount,
+    group_cautions,
+    recipe_for,
+)
 from workbench.store import Change, check_file, write_block
 from workbench.workflow.analysis_view import factors_of
 from workbench.workflow.fingerprints import block_header, fingerprint
@@ -20,7 +27,7 @@ from workbench.workflow.reading import block_file
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
-from workbench.workflow.tables import excluded, measured_block, table_of
+from workbench.workflow.tables import excluded, measured_block, measured_table, table_of
 
 VERSION = 2
 SEED = 20260101
@@ -67,20 +74,38 @@ def _inputs(state: ProjectState, name: str) -> dict[str, str]:
 
 
 def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) -> None:
-    settings = state.settings.blocks[name]
     measured = measured_block(state, name)
     table = table_of(measured, excluded(state, name))
     if len(table.samples) < 2:
         raise InputError(
             f"block '{name}': {len(table.samples)} samples left after exclusions; two are the least"
         )
-    recipe = recipe_for(settings.layer, settings.values, settings.prepare)
-    prepared = recipe.fit_transform(table, smallest_group=smallest_group(state, table.samples), seed=SEED)
+    prepared = _prepared(state, name, table)
     for step in prepared.account:
         reporter.say(f"  {step.step}: {step.sentence}")
     for caution in (*prepared.cautions, *_group_cautions(state, prepared)):
         reporter.say(f"  caution: {caution}")
     write_block(change.new_file(f"prepared/{name}.h5ad"), _as_anndata(name, measured, prepared))
+
+
+def _prepared(state: ProjectState, name: str, table: MeasuredTable) -> PreparedTable:
+    """Return the block prepared; a refusal carries its name, its file and the setting to change."""
+    settings = state.settings.blocks[name]
+    recipe = recipe_for(settings.layer, settings.values, settings.prepare)
+    try:
+        return recipe.fit_transform(table, smallest_group=smallest_group(state, table.samples), seed=SEED)
+    except PrepareRefusal as refusal:
+        raise refusal.at(name, settings.file) from refusal
+    except InputError as error:
+        raise InputError(f"block '{name}' ({settings.file}): {error}") from error
+
+
+def refusal_of(state: ProjectState, name: str) -> PrepareRefusal | None:
+    """Return why a block's table cannot be what it is declared to be, with the setting to change; None: it can."""
+    settings = state.settings.blocks[name]
+    recipe = recipe_for(settings.layer, settings.values, settings.prepare)
+    refusal = recipe.refusal(measured_table(state, name))
+    return None if refusal is None else refusal.at(name, settings.file)
 
 
 def _group_cautions(state: ProjectState, prepared: PreparedTable) -> tuple[str, ...]:
