@@ -44,12 +44,17 @@ class BlockPair:
         Rows are the same samples in the same order. Datasets are read in slices of columns.
     nuisance : ndarray of shape (n_samples, n_columns), Nuisance or None
         What is removed from both besides the intercept.
+    x_private, y_private : Nuisance or None
+        What is removed from one side alone, ``nuisance`` and intercept among it. Costs no degrees of freedom:
+        right when it was found without a look at the other side.
     """
 
     name: str
     x: Columns
     y: Columns
     nuisance: FloatArray | Nuisance | None = None
+    x_private: Nuisance | None = None
+    y_private: Nuisance | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -309,7 +314,8 @@ def _pair_tiles(pair: BlockPair, correlation: str, limits: Limits) -> PairTiles:
             "no degree of freedom is left for a correlation; remove fewer columns, or add samples"
         )
     ranks = correlation == "spearman"
-    x, y = (UnitRows(side, nuisance, ranks=ranks) for side in (pair.x, pair.y))
+    sides = ((pair.x, pair.x_private), (pair.y, pair.y_private))
+    x, y = (UnitRows(side, own or nuisance, ranks=ranks) for side, own in sides)
     return PairTiles(x, y, n, nuisance.rank, limits)
 
 

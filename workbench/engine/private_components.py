@@ -1,0 +1,101 @@
+"""The real components of one block, on its own: what may be private is found without a look at other blocks."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.stats import rankdata
+
+from workbench.engine.far_values import pull_in
+from workbench.engine.linear import thin_basis
+from workbench.engine.nuisance import CONSTANT_TOLERANCE, Nuisance
+from workbench.engine.scree import parallel_analysis
+from workbench.engine.signal_components import signal_components
+
+FloatArray = NDArray[np.float64]
+IndexArray = NDArray[np.intp]
+
+#: Fewer dimensions left by the nuisance than this cannot tell components from noise.
+FEWEST_DIMENSIONS = 20
+
+
+@dataclass(frozen=True, eq=False)
+class BlockComponents:
+    """A block at unit variance and its real components.
+
+    Attributes
+    ----------
+    z : ndarray of shape (n_samples, n_kept)
+        Residuals of the nuisance, far values pulled in, every column of unit length.
+    kept : ndarray of int, shape (n_kept,)
+        Features that vary and have no gap.
+    scores : ndarray of shape (n_samples, n_components)
+        Orthonormal scores of the real components, strongest first.
+    shares : ndarray of shape (n_components,)
+        Share of the block's variance, after the nuisance, of each.
+    """
+
+    z: FloatArray
+    kept: IndexArray
+    scores: FloatArray
+    shares: FloatArray
+
+    @property
+    def loadings(self) -> FloatArray:
+        """Correlation of every kept feature with every component, shape (n_kept, n_components)."""
+        found: FloatArray = self.z.T @ self.scores
+        return found
+
+
+def block_components(values: FloatArray, nuisance: Nuisance, *, ranks: bool, seed: int) -> BlockComponents:
+    """Real components of a block after its nuisance, by the rule of ``signal_components``.
+
+    With fewer features than samples the number is held to parallel analysis. No component is real where the
+    nuisance leaves fewer than ``FEWEST_DIMENSIONS`` dimensions.
+
+    Parameters
+    ----------
+    values : ndarray of shape (n_samples, n_features)
+    nuisance : Nuisance
+    ranks : bool
+        Whether values are replaced by their ranks first (Spearman).
+    seed : int
+        For the parallel analysis of narrow blocks.
+    """
+    z, kept = unit_residuals(values, nuisance, ranks=ranks)
+    n, p = z.shape
+    nothing = BlockComponents(z, kept, np.empty((n, 0)), np.empty(0))
+    if n - nuisance.rank < FEWEST_DIMENSIONS or p < 2:
+        return nothing
+    basis = thin_basis(z)
+    scores = signal_components(basis).directions
+    if p < n:
+        eigenvalues = basis.lengths**2 / (n - 1)
+        scores = scores[:, : parallel_analysis(z, eigenvalues, random_state=seed).number]
+    scores = np.linalg.qr(nuisance.residuals(scores))[0] if scores.shape[1] else scores
+    return BlockComponents(z, kept, scores, np.sum((z.T @ scores) ** 2, axis=0) / p)
+
+
+def unit_residuals(
+    values: FloatArray, nuisance: Nuisance, *, ranks: bool = False
+) -> tuple[FloatArray, IndexArray]:
+    """Residuals of the nuisance with far values pulled in, columns of unit length; and which features they are.
+
+    Features with a gap, and those without variance left, are left out.
+    """
+    values = np.asarray(values, dtype=np.float64)
+    finite = np.flatnonzero(np.isfinite(values).all(axis=0))
+    values = values if finite.size == values.shape[1] else values[:, finite]
+    if ranks:
+        values = rankdata(values, axis=0).astype(np.float64)
+    whole = np.linalg.norm(values, axis=0)
+    rest = nuisance.residuals(values)
+    varies = np.linalg.norm(rest, axis=0) > CONSTANT_TOLERANCE * whole
+    if not varies.all():
+        rest, finite = rest[:, varies], finite[varies]
+    if not ranks:
+        rest = nuisance.residuals(pull_in(rest, nuisance.n_samples - nuisance.rank))
+    length = np.linalg.norm(rest, axis=0)
+    return rest / np.where(length > 0.0, length, 1.0), finite

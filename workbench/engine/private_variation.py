@@ -1,0 +1,280 @@
+"""Pair screening with each block's private variation removed: what one layer has alone buries what layers share.
+
+Each block's real components are found from that block alone. A component that goes with a block of another
+layer is shared and stays; the others are regressed out of their own block. Removal that never looked at the
+other block costs no degrees of freedom: with the samples' rows independent and normal, the other block's
+feature has no preferred direction among the samples, so its correlation with any fixed vector follows the t law
+of ``n - c - 1``. The test that keeps shared components does look; over a whole analysis it keeps a private one
+with a chance of at most ``RETENTION_LEVEL``, which is what the look can add to the false-discovery rate.
+
+References
+----------
+Lock et al. 2013, Annals of Applied Statistics 7:523; Feng et al. 2018, Journal of Multivariate Analysis 166:241
+(joint and individual variation).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from workbench.engine.far_values import pull_in
+from workbench.engine.nuisance import CONSTANT_TOLERANCE, Nuisance
+from workbench.engine.private_components import (
+    FEWEST_DIMENSIONS,
+    BlockComponents,
+    block_components,
+)
+from workbench.engine.private_retention import RETENTION_LEVEL, retention_p
+from workbench.engine.screen import BlockPair, BlockScreen, Correlation, Progress, screen_blocks
+from workbench.errors import NumericsError
+
+FloatArray = NDArray[np.float64]
+IndexArray = NDArray[np.intp]
+
+LEADING = 10
+
+
+@dataclass(frozen=True, eq=False)
+class LayerBlock:
+    """A prepared block as the screen takes it.
+
+    Attributes
+    ----------
+    name, layer : str
+    values : ndarray of shape (n_samples, n_features)
+    rows : ndarray of int, shape (n_samples,)
+        Which of the study's samples the rows are; each at most once.
+    nuisance : ndarray of shape (n_samples, n_columns)
+        Columns to be removed, without the intercept.
+    """
+
+    name: str
+    layer: str
+    values: FloatArray
+    rows: IndexArray
+    nuisance: FloatArray
+
+
+@dataclass(frozen=True, eq=False)
+class RealComponent:
+    """One real component of a block, and whether another layer shares it.
+
+    Attributes
+    ----------
+    number : int
+        From 1, strongest first.
+    share : float
+        Share of the block's variance after the nuisance.
+    shared_with : str
+        The block that it goes with best when it is shared (and stays); empty when it is private.
+    p : float
+        Smallest p of the tests against the blocks of other layers, times the number of tests.
+    scores : ndarray of shape (n_samples,)
+        Unit length; rows are those of the block.
+    leading : ndarray of int
+        Positions of the features that go with it most, strongest first.
+    loadings : ndarray of float
+        Their correlations with the scores.
+    """
+
+    number: int
+    share: float
+    shared_with: str
+    p: float
+    scores: FloatArray
+    leading: IndexArray
+    loadings: FloatArray
+
+    @property
+    def removed(self) -> bool:
+        """Whether it is private and was regressed out."""
+        return not self.shared_with
+
+
+@dataclass(frozen=True, eq=False)
+class PrivateScreen:
+    """A screen with private variation removed.
+
+    Attributes
+    ----------
+    screen : BlockScreen
+    support : ndarray of str, shape (n_edges,)
+        What carries each edge: ``pair``, its own test.
+    components : tuple of tuple of RealComponent
+        For each block its real components, shared and private.
+    off : tuple of str
+        For each pair of blocks the reason why nothing was removed; empty where removal was on.
+    cleaned : tuple of (ndarray, ndarray)
+        For each pair of blocks both blocks' values on the samples that they share, as they were tested:
+        nuisance and private variation removed and far values pulled in (Spearman: the values as they came).
+    """
+
+    screen: BlockScreen
+    support: NDArray[np.str_]
+    components: tuple[tuple[RealComponent, ...], ...]
+    off: tuple[str, ...]
+    cleaned: tuple[tuple[FloatArray, FloatArray], ...] = field(repr=False)
+
+    @property
+    def removed(self) -> tuple[tuple[RealComponent, ...], ...]:
+        """For each block the components that were removed."""
+        return tuple(tuple(one for one in block if one.removed) for block in self.components)
+
+
+def screen_without_private(
+    blocks: Sequence[LayerBlock],
+    pairs: Sequence[tuple[int, int]],
+    *,
+    fdr: float = 0.05,
+    correlation: Correlation = "pearson",
+    minimum_r: float = 0.0,
+    maximum_edges: int | None = None,
+    seed: int = 0,
+    progress: Progress | None = None,
+) -> PrivateScreen:
+    """Edges between blocks of different layers, each block's private variation removed from it.
+
+    Parameters
+    ----------
+    blocks : sequence of LayerBlock
+    pairs : sequence of (int, int)
+        Positions of the blocks to be screened against each other, of two different layers.
+    fdr, correlation, minimum_r, maximum_edges, progress
+        As for :func:`~workbench.engine.screen.screen_blocks`.
+    seed : int
+        For the number of components of narrow blocks.
+
+    Raises
+    ------
+    NumericsError
+        When shapes, values or places do not allow the screen.
+    """
+    ranks = correlation == "spearman"
+    found = tuple(_own_components(block, ranks, seed) for block in blocks)
+    views = tuple(_shared_rows(blocks[a], blocks[b]) for a, b in pairs)
+    components = _judge(blocks, found, views, pairs)
+    off = tuple(_reason(view, blocks[a], blocks[b]) for view, (a, b) in zip(views, pairs, strict=True))
+    tested = tuple(
+        _pair(blocks, components, view, pair, bool(reason), ranks)
+        for view, pair, reason in zip(views, pairs, off, strict=True)
+    )
+    screen = screen_blocks(
+        tested,
+        fdr=fdr,
+        correlation=correlation,
+        minimum_r=minimum_r,
+        maximum_edges=maximum_edges,
+        progress=progress,
+    )
+    cleaned = tuple((np.asarray(pair.x), np.asarray(pair.y)) for pair in tested)
+    return PrivateScreen(screen, np.full(screen.n_edges, "pair"), components, off, cleaned)
+
+
+@dataclass(frozen=True, eq=False)
+class _View:
+    """Rows that two blocks share, in each block, and the union of their nuisance on them."""
+
+    x_rows: IndexArray
+    y_rows: IndexArray
+    nuisance: Nuisance
+    columns: FloatArray
+
+
+def _own_components(block: LayerBlock, ranks: bool, seed: int) -> BlockComponents:
+    nuisance = Nuisance.of(block.nuisance, block.values.shape[0])
+    return block_components(block.values, nuisance, ranks=ranks, seed=seed)
+
+
+def _shared_rows(x: LayerBlock, y: LayerBlock) -> _View:
+    common, x_rows, y_rows = np.intersect1d(x.rows, y.rows, assume_unique=True, return_indices=True)
+    if x.layer == y.layer:
+        raise NumericsError(f"{x.name!r} and {y.name!r} are of one layer, {x.layer!r}; give two layers")
+    if common.size < 3:
+        raise NumericsError(f"{x.name!r} and {y.name!r} share {common.size} samples; at least 3 are needed")
+    columns = np.hstack([x.nuisance[x_rows], y.nuisance[y_rows]])
+    return _View(x_rows, y_rows, Nuisance.of(columns, common.size), columns)
+
+
+def _reason(view: _View, x: LayerBlock, y: LayerBlock) -> str:
+    left = view.nuisance.n_samples - view.nuisance.rank
+    if left >= FEWEST_DIMENSIONS:
+        return ""
+    return (
+        f"{x.name} and {y.name} share {view.nuisance.n_samples} samples, and intercept and nuisance take "
+        f"{view.nuisance.rank} dimensions of them: with fewer than {FEWEST_DIMENSIONS} left, private "
+        "variation cannot be told from noise"
+    )
+
+
+def _judge(
+    blocks: Sequence[LayerBlock],
+    found: Sequence[BlockComponents],
+    views: Sequence[_View],
+    pairs: Sequence[tuple[int, int]],
+) -> tuple[tuple[RealComponent, ...], ...]:
+    """Tell each block's shared components from its private ones."""
+    tests: list[dict[int, FloatArray]] = [{} for _ in blocks]
+    for view, (a, b) in zip(views, pairs, strict=True):
+        for own, other, rows, others in ((a, b, view.x_rows, view.y_rows), (b, a, view.y_rows, view.x_rows)):
+            tests[own][other] = retention_p(
+                found[own].scores[rows], found[other].z[others], found[other].scores[others], view.nuisance
+            )
+    count = sum(p.size for by_block in tests for p in by_block.values())
+    return tuple(_described(blocks, own, by, count) for own, by in zip(found, tests, strict=True))
+
+
+def _described(
+    blocks: Sequence[LayerBlock], own: BlockComponents, tests: dict[int, FloatArray], count: int
+) -> tuple[RealComponent, ...]:
+    others = list(tests)
+    loadings = own.loadings
+    described = []
+    for k in range(own.shares.size):
+        p = np.array([tests[other][k] for other in others])
+        best = int(p.argmin()) if p.size else -1
+        adjusted = min(1.0, float(p[best]) * count) if p.size else 1.0
+        leading = np.argsort(-np.abs(loadings[:, k]), kind="stable")[:LEADING]
+        described.append(
+            RealComponent(
+                k + 1,
+                float(own.shares[k]),
+                blocks[others[best]].name if adjusted <= RETENTION_LEVEL else "",
+                adjusted,
+                own.scores[:, k],
+                own.kept[leading],
+                loadings[leading, k],
+            )
+        )
+    return tuple(described)
+
+
+def _pair(
+    blocks: Sequence[LayerBlock],
+    components: Sequence[Sequence[RealComponent]],
+    view: _View,
+    pair: tuple[int, int],
+    off: bool,
+    ranks: bool,
+) -> BlockPair:
+    """Return the two blocks on the samples that they share, with what is removed from each."""
+    sides = []
+    for place, rows in zip(pair, (view.x_rows, view.y_rows), strict=True):
+        scores = [one.scores[rows] for one in components[place] if one.removed and not off]
+        own = Nuisance.of(np.column_stack([view.columns, *scores]), rows.size)
+        values = blocks[place].values[rows]
+        sides.append((values if ranks else _cleaned(values, own), own))
+    (x, x_own), (y, y_own) = sides
+    name = f"{blocks[pair[0]].name} x {blocks[pair[1]].name}"
+    return BlockPair(name, x, y, view.nuisance, x_own, y_own)
+
+
+def _cleaned(values: FloatArray, own: Nuisance) -> FloatArray:
+    """Return what is left of the features, exactly zero for those that have no variance left."""
+    rest = own.residuals(values)
+    constant = np.linalg.norm(rest, axis=0) <= CONSTANT_TOLERANCE * np.linalg.norm(values, axis=0)
+    rest[:, constant] = 0.0
+    return pull_in(rest, own.n_samples - own.rank)
