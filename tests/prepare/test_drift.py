@@ -14,6 +14,7 @@ from statsmodels.nonparametric.smoothers_lowess import lowess
 from workbench.errors import InputError
 from workbench.prepare import MeasuredTable, RunTable, recipe_for
 from workbench.prepare.drift import Drift, FittedDrift
+from workbench.prepare.drift_courses import BatchPools, Courses, answered, choose_courses
 from workbench.prepare.local_lines import local_lines, read_off
 from workbench.prepare.steps import FitContext
 from workbench.prepare.tables import StepTable
@@ -185,3 +186,53 @@ def test_a_whole_recipe_with_pools_prepares_samples_without_drift() -> None:
     drift = made.drift[:, place] - made.drift[:, place].mean(axis=0)
     left = (result.values * drift).sum(axis=0) / (drift**2).sum(axis=0)
     assert abs(np.median(left)) < 0.05
+
+
+def plain_courses(table: StepTable) -> Courses:
+    """Return the courses of the features that are left, fitted to them alone and kept nowhere."""
+    pools = table.controls.take(table.controls.rows_as("pool"))
+    logs = np.log2(np.where(pools.values > 0, pools.values, np.nan))
+    return choose_courses((BatchPools("", pools.runs, pools.order, logs),), 6, 0.75)
+
+
+def test_courses_kept_from_the_whole_table_are_those_of_the_features_alone() -> None:
+    """Whatever the training samples leave: features dropped before drift change no other feature's course."""
+    table = StepTable.of(sequence(seed=5).table)
+    left = np.random.default_rng(1).random(len(table.features)) < 0.6
+    step = Drift().fit(table.keep(left), NO_GROUPS)
+    alone = plain_courses(table.keep(left))
+    assert_array_equal(step.courses.kinds, alone.kinds)
+    assert_allclose(step.courses.batches[0].course, alone.batches[0].course, rtol=0, atol=1e-12)
+    assert_allclose(step.courses.left_out, alone.left_out, rtol=0, atol=1e-12)
+
+
+def test_folds_fit_the_courses_once_and_prepare_the_same_values() -> None:
+    """Every prepared value of a fold is bit by bit what a fit without anything kept gives."""
+    table, recipe = sequence(seed=6).table, recipe_for("x", "intensities")
+    parts = [np.arange(len(table.samples))[k::5] for k in range(5)]
+    answered.cache_clear()
+    kept = [recipe.fit(table.take(part), smallest_group=None, seed=1) for part in parts]
+    assert answered.cache_info().misses == 1
+    for part, fold in zip(parts, kept, strict=True):
+        answered.cache_clear()
+        afresh = recipe.fit(table.take(part), smallest_group=None, seed=1)
+        assert_array_equal(fold.prepared.values, afresh.prepared.values)
+        assert_array_equal(fold.transform(table).values, afresh.transform(table).values)
+
+
+def test_kept_courses_notice_any_change_and_cannot_be_written_into() -> None:
+    made = sequence(seed=7)
+    table = StepTable.of(made.table)
+    answered.cache_clear()
+    first = Drift().fit(table, NO_GROUPS)
+    with pytest.raises(ValueError, match="read-only"):
+        answered(Drift().question(table.controls)).left_out[0, 0] = 1.0
+    runs = made.table.runs
+    moved, other_values, pool = runs.order.copy(), runs.values.copy(), runs.rows_as("pool")[2]
+    moved[pool] += 0.5
+    other_values[pool, 0] *= 1.1
+    for change in ({"order": moved}, {"values": other_values}):
+        other = Drift().fit(StepTable.of(with_runs_changed(made, **change)), NO_GROUPS)
+        assert not np.array_equal(other.courses.left_out, first.courses.left_out)
+    Drift(span=0.5).fit(table, NO_GROUPS)
+    assert (answered.cache_info().misses, answered.cache_info().hits) == (4, 1)

@@ -48,6 +48,7 @@ class CombineRuns(Settled):
             scale=_combined(table.scale[:, None], starts, "mean")[:, 0],
             runs=None,
             controls=None,
+            delivered=None,
         )
         return combined, self._account(table, sizes)
 

@@ -22,8 +22,9 @@ from workbench.prepare.drift_courses import (
     LEVEL,
     NONE,
     BatchPools,
+    CourseQuestion,
     Courses,
-    choose_courses,
+    answered,
 )
 from workbench.prepare.local_lines import medians, read_off
 from workbench.prepare.refusal import PrepareRefusal
@@ -64,12 +65,23 @@ class Drift(Settled):
     runs_only: ClassVar[bool] = True
 
     def fit(self, table: StepTable, context: FitContext) -> FittedDrift:  # noqa: ARG002
-        """Return the step as learnt from the pools; sample runs teach it nothing."""
-        pools = _pools_of(table)
+        """Return the step as learnt from the pools; sample runs teach it nothing.
+
+        Courses are fitted to all features as delivered, before samples have decided which of them are left: so the
+        answer is one and the same for every set of training samples, and is worked out once.
+        """
+        if table.delivered is None or table.controls is None:
+            raise InputError("drift is read off the pools of a run sheet, and there is none")
+        courses = answered(self.question(table.delivered.controls))
+        return FittedDrift(self, _pools_of(table.controls), courses.of_features(table.delivered.places))
+
+    def question(self, controls: RunTable) -> CourseQuestion:
+        """Return what is asked of the pools among some controls; those without an order say nothing."""
+        pools = _pools_of(controls)
         placed = pools.take(np.flatnonzero(~np.isnan(pools.order)))
-        batches = _batches(placed, _logs(placed.values, self.logged))
-        courses = choose_courses(batches, self.fewest_pools, self.span)
-        return FittedDrift(self, pools, placed, courses)
+        return CourseQuestion(
+            _batches(placed, _logs(placed.values, self.logged)), self.fewest_pools, self.span
+        )
 
 
 @dataclass(frozen=True)
@@ -78,7 +90,6 @@ class FittedDrift:
 
     settings: Drift
     pools: RunTable
-    placed: RunTable
     courses: Courses
 
     def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
@@ -206,10 +217,8 @@ class FittedDrift:
         return tuple(told)
 
 
-def _pools_of(table: StepTable) -> RunTable:
-    if table.controls is None:
-        raise InputError("drift is read off the pools of a run sheet, and there is none")
-    return table.controls.take(table.controls.rows_as("pool"))
+def _pools_of(controls: RunTable) -> RunTable:
+    return controls.take(controls.rows_as("pool"))
 
 
 def _batches(pools: RunTable, logs: Matrix) -> tuple[BatchPools, ...]:

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from functools import cached_property, lru_cache
+from hashlib import blake2b
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,6 +18,7 @@ FEWEST_FOR_LEVEL = 3
 SEEN_IN_POOLS = 0.7
 BETTER = 0.9
 MOST_FOLDS = 20
+QUESTIONS_KEPT = 8
 
 
 @dataclass(frozen=True, eq=False)
@@ -61,6 +64,53 @@ class Courses:
     left_out: Matrix
     reason: str
     cautions: tuple[str, ...]
+
+    def of_features(self, places: NDArray[np.intp]) -> Courses:
+        """Return the courses of some of the features; with no pool at all, that they have none."""
+        if not self.batches:
+            return replace(
+                self, kinds=np.zeros(len(places), dtype=np.int_), left_out=np.empty((0, len(places)))
+            )
+        batches = tuple(replace(batch, course=batch.course[:, places]) for batch in self.batches)
+        return replace(self, kinds=self.kinds[places], batches=batches, left_out=self.left_out[:, places])
+
+
+@dataclass(frozen=True, eq=False)
+class CourseQuestion:
+    """Pools, and how their courses are to be fitted; equal when every number and name is.
+
+    Every feature's course depends on its own readings in the pools alone, and no sample teaches it anything: the
+    question is the same in every fold of a validation, and is answered once.
+    """
+
+    batches: tuple[BatchPools, ...]
+    fewest: int
+    span: float
+
+    @cached_property
+    def digest(self) -> bytes:
+        """Hash of all that the answer depends on."""
+        found = blake2b(repr((self.fewest, self.span)).encode())
+        for batch in self.batches:
+            found.update(repr((batch.batch, batch.names, batch.logs.shape)).encode())
+            for part in (batch.x, batch.logs):
+                found.update(np.ascontiguousarray(part).tobytes())
+        return found.digest()
+
+    def __hash__(self) -> int:
+        return hash(self.digest)
+
+    def __eq__(self, other: object) -> bool:
+        return isinstance(other, CourseQuestion) and self.digest == other.digest
+
+
+@lru_cache(maxsize=QUESTIONS_KEPT)
+def answered(question: CourseQuestion) -> Courses:
+    """Return :func:`choose_courses` of a question; the last few answers are kept, and nobody can write into them."""
+    courses = choose_courses(question.batches, question.fewest, question.span)
+    for array in (courses.kinds, courses.left_out, *(batch.course for batch in courses.batches)):
+        array.flags.writeable = False
+    return courses
 
 
 def choose_courses(batches: tuple[BatchPools, ...], fewest: int, span: float) -> Courses:

@@ -173,13 +173,21 @@ class PreparedTable:
 
 
 @dataclass(frozen=True, eq=False)
+class Delivered:
+    """Pools and blanks as they came, with all features, and the places of those features that are left."""
+
+    controls: RunTable
+    places: NDArray[np.intp]
+
+
+@dataclass(frozen=True, eq=False)
 class StepTable:
     """The table on its way through the steps; steps return a new one and never write into it.
 
     Before the runs of a sample are combined, the rows are runs of samples: ``samples`` holds the names of the
-    runs, ``runs`` what is known of them, ``controls`` the pools and blanks. ``scale`` is what the steps so far
-    have taken from each row's logarithms (log2 of its size factor or dilution, the shift of its median), shape
-    (n_samples,); zero where nothing was.
+    runs, ``runs`` what is known of them, ``controls`` the pools and blanks, ``delivered`` these as they came.
+    ``scale`` is what the steps so far have taken from each row's logarithms (log2 of its size factor or dilution,
+    the shift of its median), shape (n_samples,); zero where nothing was.
     """
 
     values: Matrix
@@ -191,6 +199,7 @@ class StepTable:
     scale: Matrix
     runs: Runs | None = None
     controls: RunTable | None = None
+    delivered: Delivered | None = None
 
     @classmethod
     def of(cls, table: MeasuredTable) -> StepTable:
@@ -205,7 +214,8 @@ class StepTable:
         values = np.asarray(values, dtype=np.float64)
         imputed, scale = np.zeros(values.shape, dtype=bool), np.zeros(len(rows))
         names, levels = table.features, table.feature_levels
-        return cls(values, imputed, rows, names, names, levels, scale, runs, controls)
+        came = None if controls is None else Delivered(controls, np.arange(len(names)))
+        return cls(values, imputed, rows, names, names, levels, scale, runs, controls, came)
 
     @property
     def row_word(self) -> str:
@@ -245,6 +255,9 @@ class StepTable:
             origins=tuple(compress(self.origins, mask)),
             levels=tuple(compress(self.levels, mask)),
             controls=None if self.controls is None else self.controls.with_columns(mask),
+            delivered=None
+            if self.delivered is None
+            else replace(self.delivered, places=self.delivered.places[mask]),
         )
 
 
