@@ -1,20 +1,19 @@
-"""Whether two sides share anything: a permutation test of the first canonical pair."""
+"""Whether two sides share anything, and how many independent axes of it: a permutation test pair by pair."""
 
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
-import scipy.linalg
 from numpy.typing import NDArray
 
-from workbench.engine.arrangements import arrangement_batches, count_arrangements
 from workbench.engine.canonical import RIDGE_PATH
-from workbench.engine.linear import ThinBasis, thin_basis
-from workbench.engine.nuisance import Nuisance, standardise
-from workbench.engine.sides import block_slices, block_weights
+from workbench.engine.pair_levels import PairLevel
+from workbench.engine.pair_rows import Level, design_of, exchangeable_rows
 from workbench.engine.smallest_p import SmallestP, smallest_p
+from workbench.engine.subjects import SubjectDesign
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
@@ -24,17 +23,17 @@ STATISTICS = ("wilks", "largest_root")
 FEWEST_ARRANGEMENTS = 120
 FEWEST_EXCEEDANCES = 50
 CLEARLY_LARGE = 0.1
-BATCH_NUMBERS = 2**19
+LEVEL = 0.05
 
 
 @dataclass(frozen=True, eq=False)
 class PairTest:
-    """Permutation test of the first canonical pair.
+    """Permutation test of one canonical pair, the pairs before it removed.
 
     Attributes
     ----------
     p : float or None
-        ``(1 + exceedances) / (1 + permutations)``; None when withheld.
+        ``(1 + exceedances) / (1 + permutations)``, of this pair alone; None when withheld.
     smallest_p : float
         The smallest p that the test as asked for could have reached.
     permutations, exceedances : int
@@ -54,7 +53,11 @@ class PairTest:
     p_by_ridge : ndarray of shape (2, 9)
         Permutation p of each alone, NaN when withheld; ``p`` accounts for there being 18 of them.
     freedom : int
-        Degrees of freedom ``n - c``.
+        Degrees of freedom ``n - c``, less two for each earlier pair.
+    exchanged : str
+        What takes each other's places.
+    further : tuple of PairTest
+        Tests of the second, third, ... pair, as far as they were asked for and came.
     """
 
     p: float | None
@@ -69,6 +72,18 @@ class PairTest:
     observed: FloatArray
     p_by_ridge: FloatArray
     freedom: int
+    exchanged: str
+    further: tuple[PairTest, ...] = ()
+
+    @property
+    def p_by_pair(self) -> FloatArray:
+        """P of the first, second, ... pair, cumulated: no pair's is smaller than an earlier one's."""
+        alone = [np.nan if one.p is None else one.p for one in (self, *self.further)]
+        return np.maximum.accumulate(alone)
+
+    def axes(self, level: float = LEVEL) -> int:
+        """How many pairs, one after the other, have a cumulated p of at most ``level``."""
+        return int(np.cumprod(self.p_by_pair <= level).sum())
 
 
 def canonical_pair_test(
@@ -77,22 +92,33 @@ def canonical_pair_test(
     *,
     permutations: int = 1000,
     nuisance: FloatArray | None = None,
+    subjects: NDArray[Any] | SubjectDesign | None = None,
+    times: NDArray[Any] | None = None,
+    level: Level = "visits",
+    pairs: int = 1,
+    stop_above: float | None = LEVEL,
     random_state: int | None = None,
     early_stop: bool = True,
     progress: Callable[[int, int], None] | None = None,
     x_block_sizes: Sequence[int] | None = None,
     y_block_sizes: Sequence[int] | None = None,
 ) -> PairTest:
-    """Test that the two sides share nothing, against a first canonical pair; any number of features.
+    """Test that the two sides share nothing, against a first canonical pair, then a second, and so on.
 
-    The samples of one side are permuted, and two statistics of the ridge problem's ``M`` recomputed in sample
+    The rows of one side are rearranged, and two statistics of the ridge problem's ``M`` recomputed in sample
     space at each of 9 ridges over four decades (the same multiple of the noise level on both sides); p is the
     permutation p of the smallest of the 18 p (:func:`smallest_p`). With a nuisance, the rows of an orthonormal
     basis of the ``n - c`` dimensions that it leaves are permuted in place of the samples: exact for normal
     errors, close otherwise. Without, exact for samples that are exchangeable.
 
-    Not for several samples of one subject, or a common trend: such rows are not exchangeable, and p is far
-    too small.
+    For pair ``k`` the variates ``u_j`` and ``v_j`` of the pairs before it, at each ridge its own, are nuisance
+    for both sides, and the rows of ``n - c - 2(k - 1)`` dimensions are permuted; ridges stay as fixed at the
+    first pair. Dropping the earlier singular vectors alone would find a second pair in every study with more
+    features than samples. Read p cumulated over the pairs (``p_by_pair``).
+
+    Several samples of one subject are never taken for independent, and what is exchanged follows the design
+    (:func:`workbench.engine.pair_rows.exchangeable_rows`): differences of pairs, whole subjects of ordered
+    visits, samples inside subjects for replicates without an order, or the subjects' means.
 
     Parameters
     ----------
@@ -102,12 +128,22 @@ def canonical_pair_test(
         At least 1; where there are no more arrangements than this, all of them are looked at.
     nuisance : ndarray of shape (n_samples, c), optional
         Columns to be removed from both sides, the intercept not among them.
+    subjects : ndarray of shape (n_samples,) or SubjectDesign, optional
+        Subject of each sample.
+    times : ndarray of shape (n_samples,), optional
+        What orders a subject's samples; without it they are taken for replicates.
+    level : {"visits", "subjects"}
+        With subjects: whether changes are tested, or the subjects' means.
+    pairs : int
+        Pairs to be tested, at least 1; fewer come back where the data have fewer.
+    stop_above : float or None
+        Test no further pair once the cumulated p exceeds this; None tests all.
     random_state : int, optional
         Seed; None draws one.
     early_stop : bool
         Stop once 50 or more exceedances put p above 0.1 by three standard errors.
     progress : callable, optional
-        Called with permutations done and permutations in all.
+        Called with permutations done and permutations in all, pair by pair.
     x_block_sizes, y_block_sizes : sequence of int, optional
         Features of each block of the side; blocks are brought to equal total variance.
 
@@ -119,35 +155,64 @@ def canonical_pair_test(
     References
     ----------
     Westfall & Young 1993, Resampling-Based Multiple Testing. Huh & Jhun 2001, Communications in Statistics -
-    Theory and Methods 30:2023 (permuting in the residual basis).
+    Theory and Methods 30:2023 (permuting in the residual basis). Winkler et al. 2020, NeuroImage 220:117065
+    (further pairs).
 
     Examples
     --------
     >>> rng = np.random.default_rng(0)
     >>> shared = rng.normal(size=(30, 1))
     >>> x, y = shared + rng.normal(size=(30, 100)), shared + rng.normal(size=(30, 50))
-    >>> canonical_pair_test(x, y, permutations=199, random_state=0).p
-    0.005
+    >>> test = canonical_pair_test(x, y, permutations=199, pairs=2, random_state=0)
+    >>> test.p, test.axes()
+    (0.005, 1)
     """
-    if permutations < 1:
-        raise NumericsError(f"permutations is {permutations}; allowed: at least 1")
-    pair = _PermutedPair.of(x, y, nuisance, (x_block_sizes, y_block_sizes))
-    observed = pair.statistics_of(np.arange(pair.size)[None])
+    for name, value in (("permutations", permutations), ("pairs", pairs)):
+        if value < 1:
+            raise NumericsError(f"{name} is {value}; allowed: at least 1")
+    design = design_of(subjects, times)
+    rows = exchangeable_rows((x, y), nuisance, design, level, (x_block_sizes, y_block_sizes))
+    first = PairLevel.first(rows)
+    entropy = np.random.SeedSequence(random_state).entropy
+    tests: list[PairTest] = []
+    here: PairLevel | None = first
+    for k in range(min(pairs, first.rank)):
+        here = first if k == 0 else first.without(k)
+        if here is None or here.freedom < 1:
+            break
+        seed = np.random.SeedSequence(entropy, spawn_key=(k,) if k else ())
+        tests.append(level_test(here, rows.words, permutations, seed, early_stop, progress))
+        alone = tests[-1].p
+        if alone is None or (stop_above is not None and alone > stop_above):
+            break
+    return replace(tests[0], further=tuple(tests[1:]))
+
+
+def level_test(
+    here: PairLevel,
+    exchanged: str,
+    permutations: int,
+    seed: np.random.SeedSequence,
+    early_stop: bool,
+    progress: Callable[[int, int], None] | None = None,
+) -> PairTest:
+    """Test one level by its statistics: any object with ``statistics_of``, ``exchange``, ``batch``, ``freedom``."""
+    observed = here.statistics_of(np.arange(here.exchange.size)[None])
     # The limit lies above what would make it exhaustive, so that "at least so many" is never taken for "all".
-    available = count_arrangements(pair.size, max(permutations + 2, FEWEST_ARRANGEMENTS))
+    available = here.exchange.count(max(permutations + 2, FEWEST_ARRANGEMENTS))
     if available < FEWEST_ARRANGEMENTS:
-        return _withheld(pair, observed, available)
-    plan = _Plan.of(available, permutations, random_state, early_stop)
+        return _withheld(here, exchanged, observed, available)
+    plan = _Plan.of(available, permutations, early_stop)
     rows = [observed]
-    for batch in arrangement_batches(pair.size, plan.wanted, plan.exhaustive, plan.seed, pair.batch):
-        rows.append(pair.statistics_of(batch))
+    for batch in here.exchange.batches(plan.wanted, plan.exhaustive, seed, here.batch):
+        rows.append(here.statistics_of(batch))
         done = sum(map(len, rows)) - 1
         if progress is not None:
             progress(done, plan.wanted)
         if plan.early_stop and done < plan.wanted and clearly_large(smallest_p(np.vstack(rows)), done):
             break
     statistics = np.vstack(rows)
-    return _finished(pair, statistics, smallest_p(statistics), plan)
+    return _finished(here, exchanged, statistics, smallest_p(statistics), plan)
 
 
 def clearly_large(result: SmallestP, permutations: int) -> bool:
@@ -161,91 +226,14 @@ class _Plan:
     wanted: int
     exhaustive: bool
     early_stop: bool
-    seed: np.random.SeedSequence
 
     @classmethod
-    def of(cls, available: int, permutations: int, random_state: int | None, early_stop: bool) -> _Plan:
+    def of(cls, available: int, permutations: int, early_stop: bool) -> _Plan:
         exhaustive = available <= permutations + 1
-        wanted = available - 1 if exhaustive else permutations
-        return cls(wanted, exhaustive, early_stop and not exhaustive, np.random.SeedSequence(random_state))
+        return cls(available - 1 if exhaustive else permutations, exhaustive, early_stop and not exhaustive)
 
 
-@dataclass(frozen=True, eq=False)
-class _PermutedPair:
-    """Two sides in sample space; the one of higher rank is permuted.
-
-    ``U_x' U_y`` of permuted rows is all that an arrangement needs: nothing of the features' size.
-    """
-
-    moved: FloatArray
-    still: FloatArray
-    moved_shrinkage: FloatArray
-    still_shrinkage: FloatArray
-    freedom: int
-
-    @classmethod
-    def of(
-        cls,
-        x: FloatArray,
-        y: FloatArray,
-        nuisance: FloatArray | None,
-        block_sizes: tuple[Sequence[int] | None, Sequence[int] | None],
-    ) -> _PermutedPair:
-        n = np.shape(x)[0]
-        if np.shape(y)[:1] != (n,):
-            raise NumericsError(
-                f"side X has {n} rows and side Y {np.shape(y)[0]}; give the same samples in the same order"
-            )
-        removed = Nuisance.of(nuisance, n)
-        bases = [
-            thin_basis(_residual_rows(values, removed, sizes, side))
-            for values, sizes, side in zip((x, y), block_sizes, "XY", strict=True)
-        ]
-        still, moved = sorted(bases, key=lambda basis: basis.rank)
-        return cls(moved.vectors, still.vectors, _shrinkages(moved), _shrinkages(still), n - removed.rank)
-
-    @property
-    def size(self) -> int:
-        """Rows that are permuted: samples, or dimensions that the nuisance leaves."""
-        return int(self.moved.shape[0])
-
-    @property
-    def batch(self) -> int:
-        """Arrangements whose matrices fit a processor's cache, from 1 to 100."""
-        return int(np.clip(BATCH_NUMBERS // self.moved.shape[1] ** 2, 1, 100))
-
-    def statistics_of(self, arrangements: IndexArray) -> FloatArray:
-        """Both statistics at every ridge, shape (n_arrangements, 18): Wilks-type ones first."""
-        meetings = self.moved[arrangements].transpose(0, 2, 1) @ self.still
-        wilks, roots = np.empty((2, len(arrangements), RIDGE_PATH.size))
-        for k, (g_moved, g_still) in enumerate(zip(self.moved_shrinkage, self.still_shrinkage, strict=True)):
-            m = g_moved[:, None] * meetings * g_still
-            squares = np.linalg.eigvalsh(m.transpose(0, 2, 1) @ m).clip(0.0, 1.0 - np.finfo(float).eps)
-            wilks[:, k] = -np.log1p(-squares).sum(axis=1)
-            roots[:, k] = squares[:, -1]
-        return np.hstack([wilks, roots])
-
-
-def _residual_rows(
-    values: FloatArray, removed: Nuisance, block_sizes: Sequence[int] | None, side: str
-) -> FloatArray:
-    """Standardised residuals as samples, or in a basis of the dimensions that a nuisance leaves."""
-    block = standardise(values, removed)
-    n_features = block.kept.size + block.dropped.size
-    varies = np.isin(np.arange(n_features), block.kept)
-    rows: FloatArray = block.values * block_weights(varies, block_slices(block_sizes, n_features, side))
-    if removed.rank == 1:
-        return rows
-    left = scipy.linalg.qr(removed.basis)[0][:, removed.rank :]
-    in_left: FloatArray = left.T @ rows
-    return in_left
-
-
-def _shrinkages(basis: ThinBasis) -> FloatArray:
-    return np.array([basis.shrinkage(multiple * basis.noise_level) for multiple in RIDGE_PATH])
-
-
-def _withheld(pair: _PermutedPair, observed: FloatArray, available: int) -> PairTest:
+def _withheld(here: PairLevel, exchanged: str, observed: FloatArray, available: int) -> PairTest:
     shape = (len(STATISTICS), RIDGE_PATH.size)
     return PairTest(
         p=None,
@@ -255,18 +243,21 @@ def _withheld(pair: _PermutedPair, observed: FloatArray, available: int) -> Pair
         exhaustive=False,
         stopped_early=False,
         withheld=(
-            f"only {available} arrangements of {pair.size} exchangeable rows exist, fewer than "
-            f"{FEWEST_ARRANGEMENTS}: no p could be small enough to mean anything"
+            f"only {available} arrangements of {here.exchange.size} exchangeable rows ({exchanged}) exist, fewer "
+            f"than {FEWEST_ARRANGEMENTS}: no p could be small enough to mean anything"
         ),
         statistics=STATISTICS,
         ridge_multiples=RIDGE_PATH.copy(),
         observed=observed.reshape(shape),
         p_by_ridge=np.full(shape, np.nan),
-        freedom=pair.freedom,
+        freedom=here.freedom,
+        exchanged=exchanged,
     )
 
 
-def _finished(pair: _PermutedPair, statistics: FloatArray, result: SmallestP, plan: _Plan) -> PairTest:
+def _finished(
+    here: PairLevel, exchanged: str, statistics: FloatArray, result: SmallestP, plan: _Plan
+) -> PairTest:
     shape = (len(STATISTICS), RIDGE_PATH.size)
     done = len(statistics) - 1
     return PairTest(
@@ -281,5 +272,6 @@ def _finished(pair: _PermutedPair, statistics: FloatArray, result: SmallestP, pl
         ridge_multiples=RIDGE_PATH.copy(),
         observed=statistics[0].reshape(shape),
         p_by_ridge=result.by_statistic.reshape(shape),
-        freedom=pair.freedom,
+        freedom=here.freedom,
+        exchanged=exchanged,
     )
