@@ -59,7 +59,7 @@ def fisher_interval(
 
 
 def selected_interval(
-    r: ArrayLike, n: int, rank: int, error: float, *, spearman: bool = False
+    r: ArrayLike, n: int, rank: int, error: float, *, spearman: bool = False, damping: ArrayLike = 1.0
 ) -> tuple[FloatArray, FloatArray]:
     """Lower and upper end of intervals at a small ``error``: ``tanh(atanh(r) -+ atanh(r_0))``.
 
@@ -76,6 +76,8 @@ def selected_interval(
         One minus the coverage, as :func:`selected_error` gives it.
     spearman : bool
         Whether the correlations are Spearman's.
+    damping : array_like
+        Factors in (0, 1]: the test is that of ``r`` times these, which widens the interval.
 
     Examples
     --------
@@ -84,14 +86,15 @@ def selected_interval(
     (0.0911, 0.9279)
     """
     r = np.asarray(r, dtype=np.float64)
+    bound = np.minimum(critical_r(error, n - rank - 1) / np.asarray(damping, dtype=np.float64), 1.0)
     with np.errstate(divide="ignore"):
-        half = np.arctanh(critical_r(error, n - rank - 1))
+        half = np.arctanh(bound)
         z = np.arctanh(r)
-    if np.isinf(half):
-        unknown = np.where(np.isnan(r), np.nan, 1.0)
-        return -unknown, unknown
     width = half * np.sqrt(1.0 + r**2 / 2.0) if spearman else half
-    return np.tanh(z - width), np.tanh(z + width)
+    unknown = np.isinf(half) & ~np.isnan(r)
+    with np.errstate(invalid="ignore"):
+        low, high = np.tanh(z - width), np.tanh(z + width)
+    return np.where(unknown, -1.0, low), np.where(unknown, 1.0, high)
 
 
 def selected_error(selected: int, tests: int, error: float = 0.05) -> float:

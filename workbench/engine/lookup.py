@@ -78,6 +78,7 @@ class Lookup:
         r[~(pair.x.testable[i] & pair.y.testable[j])] = np.nan
         log_p = log_p_value(r, pair.df)
         q = self._q(log_p, self._pooled, list(range(len(self._pairs))))
+        r = np.clip(r / pair.damping(i, j), -1.0, 1.0)
         return r, p_from_log(log_p), q, self._q(log_p, self._single[k], [k])
 
     def _q(self, log_p: FloatArray, family: Family, members: list[int]) -> FloatArray:

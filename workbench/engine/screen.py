@@ -47,6 +47,10 @@ class BlockPair:
     x_private, y_private : Nuisance or None
         What is removed from one side alone, ``nuisance`` and intercept among it. Costs no degrees of freedom:
         right when it was found without a look at the other side.
+    damping : pair of ndarray, or None
+        A factor in (0, 1] for each feature of ``x`` and of ``y``: p is that of the correlation times both,
+        for features whose samples tell less than their number. ``r`` is given undamped; ``minimum_r`` is
+        asked of the damped one.
     """
 
     name: str
@@ -55,6 +59,7 @@ class BlockPair:
     nuisance: FloatArray | Nuisance | None = None
     x_private: Nuisance | None = None
     y_private: Nuisance | None = None
+    damping: tuple[FloatArray, FloatArray] | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -314,8 +319,9 @@ def _pair_tiles(pair: BlockPair, correlation: str, limits: Limits) -> PairTiles:
             "no degree of freedom is left for a correlation; remove fewer columns, or add samples"
         )
     ranks = correlation == "spearman"
-    sides = ((pair.x, pair.x_private), (pair.y, pair.y_private))
-    x, y = (UnitRows(side, own or nuisance, ranks=ranks) for side, own in sides)
+    damping = pair.damping or (None, None)
+    sides = ((pair.x, pair.x_private, damping[0]), (pair.y, pair.y_private, damping[1]))
+    x, y = (UnitRows(side, own or nuisance, ranks=ranks, damping=factor) for side, own, factor in sides)
     return PairTiles(x, y, n, nuisance.rank, limits)
 
 
@@ -355,8 +361,8 @@ def _screen(
     widths, n, ranks = (np.array([value(pair) for pair in tiles]) for value in _SIZES)
     tested = tuple(pair.tests for pair in tiles)
     error = selected_error(which.size, max(sum(tested), 1), FALSE_COVERAGE)
-    low, high = _intervals(r, which, tiles, error, correlation == "spearman")
     i, j = np.divmod(keys, widths[which])
+    r, low, high = _given(r, which, (i, j), tiles, error, correlation == "spearman")
     return BlockScreen(
         names=names,
         pair_index=which,
@@ -410,11 +416,21 @@ def _own_q(discovery: Discovery, which: IndexArray, log_p: FloatArray) -> FloatA
     return q
 
 
-def _intervals(
-    r: FloatArray, which: IndexArray, tiles: Sequence[PairTiles], error: float, spearman: bool
-) -> tuple[FloatArray, FloatArray]:
-    low, high = np.empty(r.size), np.empty(r.size)
+def _given(
+    r: FloatArray,
+    which: IndexArray,
+    ends: tuple[IndexArray, IndexArray],
+    tiles: Sequence[PairTiles],
+    error: float,
+    spearman: bool,
+) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Correlations without their damping, and both ends of their intervals."""
+    given, low, high = np.empty((3, r.size))
     for k, pair in enumerate(tiles):
         here = which == k
-        low[here], high[here] = selected_interval(r[here], pair.n, pair.rank, error, spearman=spearman)
-    return low, high
+        damping = pair.damping(ends[0][here], ends[1][here])
+        given[here] = np.clip(r[here] / damping, -1.0, 1.0)
+        low[here], high[here] = selected_interval(
+            given[here], pair.n, pair.rank, error, spearman=spearman, damping=damping
+        )
+    return given, low, high

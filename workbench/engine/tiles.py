@@ -105,6 +105,14 @@ class PairTiles:
         outer, inner = self._sides()
         return -(-outer.n_features // self.limits.outer) * -(-inner.n_features // self.limits.inner)
 
+    def damping(self, i: IndexArray, j: IndexArray) -> FloatArray:
+        """Factor by which the correlations of pairs are damped in tiles; 1 where nothing is."""
+        factor = np.ones(i.size)
+        for side, place in ((self.x, i), (self.y, j)):
+            if side.damping is not None:
+                factor *= side.damping[place]
+        return factor
+
     def hold(self) -> None:
         """Prepare and keep the sides that fit into memory."""
         room = self.limits.held_bytes

@@ -44,10 +44,20 @@ class UnitRows:
         Features with variance left after the nuisance and without gaps; known once every row was made.
     held : ndarray of shape (n_features, n_samples) or None
         All rows, between ``hold`` and ``release``.
+    damping : ndarray of shape (n_features,) or None
+        Lengths of the rows in (0, 1]; None stands for 1.
+
+    Raises
+    ------
+    NumericsError
+        When ``damping`` has another size, or values outside (0, 1].
     """
 
-    def __init__(self, source: Columns, nuisance: Nuisance, *, ranks: bool) -> None:
+    def __init__(
+        self, source: Columns, nuisance: Nuisance, *, ranks: bool, damping: FloatArray | None = None
+    ) -> None:
         self._source = source
+        self.damping = _check_damping(damping, int(source.shape[1]))
         self._nuisance = nuisance
         self._ranks = ranks
         self.n_features = int(source.shape[1])
@@ -78,7 +88,7 @@ class UnitRows:
             return self.held[start:stop]
         rows, testable = unit_rows(np.asarray(self._source[:, start:stop]), self._nuisance, ranks=self._ranks)
         self.testable[start:stop] = testable
-        return rows
+        return rows if self.damping is None else rows * self.damping[start:stop, None]
 
     def rows_at(self, index: IndexArray) -> FloatArray:
         """Features at ``index``, repeats allowed, in any order, as unit rows."""
@@ -148,6 +158,18 @@ def check_side(source: Columns, n: int | None, what: str) -> None:
         raise NumericsError(
             f"{what} has {shape[0]} samples and its partner {n}; give the same samples for both"
         )
+
+
+def _check_damping(damping: FloatArray | None, n_features: int) -> FloatArray | None:
+    if damping is None:
+        return None
+    damping = np.asarray(damping, dtype=np.float64)
+    if damping.shape != (n_features,) or not ((damping > 0.0) & (damping <= 1.0)).all():
+        raise NumericsError(
+            f"the damping has shape {damping.shape} for {n_features} features and must hold numbers above 0 "
+            "and at most 1; give one for each feature"
+        )
+    return damping
 
 
 def _lengths(rows: FloatArray) -> FloatArray:
