@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import networkx as nx
 import numpy as np
 import pandas as pd
 import pytest
@@ -12,7 +13,9 @@ from network.networks import ATTRIBUTES, NUMBERS, cells, edges_table, features_t
 import workbench
 from workbench.errors import InputError
 from workbench.network import CAUTIONS, build_network, with_communities, with_degrees
+from workbench.network.builder import FOUND_OF_NODES
 
+FOUND = set(FOUND_OF_NODES)
 ENDS = ["source", "source_block", "target", "target_block", "r"]
 
 
@@ -29,7 +32,10 @@ def test_nodes_are_the_features_with_an_edge_and_carry_their_columns() -> None:
         "block": "rna",
         "feature": "g3",
         "degree": 1,
+        "strength": abs(edges["r"][2]),
+        "layers_reached": 1,
         "community": graph.nodes["lcms", "m1"]["community"],
+        "connected_component": 1,
     }
     assert graph.nodes["lcms", "m1"]["HMDB ID"] == "HMDB0000001"
     assert dict(graph.nodes(data="degree")) == dict(graph.degree)
@@ -64,7 +70,7 @@ def test_the_least_tables_are_enough() -> None:
         edges_table([(0, 0)])[ENDS], features_table(1, 1)[["feature", "block"]], attributes={}, seed=1
     )
     assert graph.nodes["rna", "g0"]["label"] == "g0"
-    assert set(graph.nodes["rna", "g0"]) == {"label", "block", "feature", "degree", "community"}
+    assert set(graph.nodes["rna", "g0"]) == {"label", "block", "feature", *FOUND} - {"community_stability"}
 
 
 def test_no_edges_give_an_empty_network() -> None:
@@ -80,11 +86,35 @@ def test_tables_get_the_communities_and_degrees_back() -> None:
     for row in told.itertuples():
         same = community[row.source] == community[row.target]
         assert row.community == community[row.source] if same else row.community is pd.NA
+        kept = graph.edges[("rna", row.source), ("lcms", row.target)].get("backbone_p", np.nan)
+        assert row.backbone_p == pytest.approx(kept, nan_ok=True)
     assert placed["degree"].sum() == 2 * len(edges)
     assert placed["community"].isna().tolist() == (placed["degree"] == 0).tolist()
     assert "community" not in edges.columns
     again = build_network(told, placed, attributes=ATTRIBUTES, seed=1)
     assert dict(again.nodes(data=True)) == dict(graph.nodes(data=True))
+
+
+def test_degree_strength_and_components_are_those_of_networkx() -> None:
+    """Outside check: networkx's own ``degree``, weighted ``degree`` and ``connected_components``."""
+    graph = build_network(*random_tables(80, 60, 25), attributes=ATTRIBUTES, seed=1)
+    assert dict(graph.nodes(data="degree")) == dict(nx.degree(graph))
+    strength = dict(nx.degree(graph, weight="weight"))
+    for node, found in graph.nodes(data="strength"):
+        assert found == pytest.approx(strength[node], rel=1e-12)
+    numbers = nx.get_node_attributes(graph, "connected_component")
+    pieces = [{node for node in graph if numbers[node] == k} for k in range(1, max(numbers.values()) + 1)]
+    assert sorted(map(sorted, pieces)) == sorted(map(sorted, nx.connected_components(graph)))
+    assert [len(piece) for piece in pieces] == sorted(map(len, pieces), reverse=True)
+
+
+def test_layers_reached_are_counted() -> None:
+    edges = edges_table([(0, 0), (0, 1)])
+    features = features_table(1, 2)
+    features.loc[2, "layer"] = "lipids"
+    graph = build_network(edges, features, attributes={}, seed=1)
+    reached = {node[1]: found for node, found in graph.nodes(data="layers_reached")}
+    assert reached == {"g0": 2, "m0": 1, "m1": 1}
 
 
 def test_tables_are_not_changed() -> None:

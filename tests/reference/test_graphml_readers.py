@@ -76,7 +76,7 @@ def test_extreme_numbers_and_booleans_are_equal_in_both(tmp_path: Path) -> None:
     edges = edges_table([(0, 0), (1, 1)]).assign(
         p=[5e-324, 1e-300],
         q=[np.inf, 0.1 + 0.2],
-        known=[True, False],
+        checked=[True, False],
         doubted=[True, None],
         big=[2**53, -(2**53)],
     )
@@ -85,9 +85,9 @@ def test_extreme_numbers_and_booleans_are_equal_in_both(tmp_path: Path) -> None:
     pairs = [(data, other.es[int(data["id"][1:])]) for _, _, data in read.edges(data=True)]
     assert sorted(data["p"] for data, _ in pairs) == [2.2250738585072014e-308, 1e-300]
     assert [data.get("q") for data, _ in pairs if "q" in data] == [0.1 + 0.2]
-    assert {data["known"] for data, _ in pairs} == {True, False}
+    assert {data["checked"] for data, _ in pairs} == {True, False}
     assert [data.get("doubted", "") for data, _ in pairs] == [edge["doubted"] for _, edge in pairs]
-    for name in ("p", "r", "known", "big", "weight"):
+    for name in ("p", "r", "checked", "big", "weight"):
         assert [data[name] for data, _ in pairs] == [edge[name] for _, edge in pairs]
 
 

@@ -40,6 +40,7 @@ GRAPH_ATTRIBUTES: dict[str, Attribute] = {
     "version": Attribute("string", "version of the program that wrote this file"),
     "cautions": Attribute("string", "what this network may not be used for"),
     "community_method": Attribute("string", "how the communities were found"),
+    "community_stability_method": Attribute("string", "how the stability of communities was measured"),
     "text_escapes": Attribute("string", "how characters that XML forbids are written in this file"),
     "export_notes": Attribute("string", "what could not be written as it was"),
 }
@@ -50,7 +51,18 @@ NODE_ATTRIBUTES: dict[str, Attribute] = {
     "block": Attribute("string", "table that the feature comes from"),
     "layer": Attribute("string", "biological kind of the block"),
     "community": Attribute("int", "community of the feature; 1 is the largest"),
+    "community_stability": Attribute(
+        "double", "share of resamples in which the feature stays in its community"
+    ),
+    "cluster": Attribute(
+        "string", "near-duplicates inside the layer: features of one cluster measure the same"
+    ),
     "degree": Attribute("int", "edges of the feature"),
+    "strength": Attribute("double", "sum of the weights of the feature's edges"),
+    "layers_reached": Attribute("int", "layers that the feature's edges reach"),
+    "connected_component": Attribute("int", "connected component of the network; 1 is the largest"),
+    "x": Attribute("double", "place in a drawing, across"),
+    "y": Attribute("double", "place in a drawing, up"),
     "group_effect": Attribute("double", "difference between the groups, fitted jointly with the nuisance"),
     "group_level": Attribute("string", "level whose difference from the first one group_effect is"),
     "group_p": Attribute("double", "p of the difference between the groups"),
@@ -76,13 +88,20 @@ EDGE_ATTRIBUTES: dict[str, Attribute] = {
     "q_within": Attribute("double", "false-discovery rate of r_within"),
     "n": Attribute("int", "samples that the pair was tested on"),
     "basis": Attribute("string", "what the correlation rests on: within groups, the group alone, or unclear"),
+    "support": Attribute("string", "what carries the edge: the pair's own test, its module, or both"),
     "model_r": Attribute("double", "correlation that the fitted model implies"),
     "component": Attribute("int", "canonical pair that carries most of model_r"),
+    "stability": Attribute("double", "share of half-samples in which the pair is among the strongest"),
     "r_spearman": Attribute("double", "rank correlation of the two features"),
     "r_without_one": Attribute("double", "weakest r when any one sample is left out"),
     "r_observed": Attribute("double", "correlation without imputed values"),
     "imputed_share": Attribute("double", "share of the pair's values that were imputed"),
     "community": Attribute("int", "community of both ends; missing where they differ"),
+    "backbone_p": Attribute(
+        "double", "p of the disparity filter: how well chance splits the ends' weights like this"
+    ),
+    "known": Attribute("string", "evidence for the link in the user's table of known links"),
+    "shared_sets": Attribute("string", "sets of the user's table that hold both ends"),
 }
 
 ATTRIBUTES: dict[Domain, dict[str, Attribute]] = {

@@ -12,10 +12,10 @@ import pandas as pd
 from workbench import __version__
 from workbench.errors import InputError
 from workbench.network.attributes import Plain, plain_value, uniform
+from workbench.network.backbone import backbone_p
 from workbench.network.communities import RESOLUTION, communities
-
-Key = tuple[str, str]
-"""A node: (block, feature)."""
+from workbench.network.keys import Key
+from workbench.network.stability import CommunityStability
 
 CAUTIONS = (
     "Research use. Association is not causation. Not for diagnosis or treatment. "
@@ -24,6 +24,16 @@ CAUTIONS = (
 
 EDGE_COLUMNS = ("source", "source_block", "target", "target_block", "r")
 FEATURE_COLUMNS = ("feature", "block")
+STABILITY_METHOD = "community_stability_method"
+FOUND_OF_NODES = (
+    "degree",
+    "strength",
+    "layers_reached",
+    "community",
+    "community_stability",
+    "connected_component",
+)
+FOUND_OF_EDGES = ("community", "weight", "backbone_p")
 _SHOWN = 3
 
 
@@ -39,10 +49,11 @@ def build_network(
     edges : pandas.DataFrame
         One row per edge: ``source source_block target target_block r`` and any other columns. All but
         ``source`` and ``target`` become attributes of the edge; ``weight`` is ``|r|``, ``community`` the one
-        that holds both ends.
+        that holds both ends, ``backbone_p`` the p of the disparity filter.
     features : pandas.DataFrame
         One row per feature: ``feature block`` and any other columns, which become attributes of the node.
-        ``label`` is the feature where it is missing; ``degree`` and ``community`` are those found here.
+        ``label`` is the feature where it is missing; ``degree``, ``strength``, ``layers_reached``, ``community`` and
+        ``connected_component`` are those found here.
     attributes : mapping
         Attributes of the network: title, analysis, fdr ... ``cautions`` and ``community_method`` are added,
         ``version`` where it is not given.
@@ -78,24 +89,43 @@ def build_network(
     graph.add_nodes_from(sorted(nodes.items()))
     joined = ((*pair, found) for pair, found in zip(ends, _edge_attributes(edges, ends), strict=True))
     graph.add_edges_from(sorted(joined, key=lambda edge: edge[:2]))
-    _set_communities(graph, seed)
+    _set_structure(graph, seed)
     graph.graph.update(_graph_attributes(attributes, seed))
     return graph
 
 
 def with_communities(edges: pd.DataFrame, graph: nx.Graph) -> pd.DataFrame:
-    """Return the edges table with the column ``community`` of ``graph``; missing where the ends differ."""
-    found = [graph.edges[pair].get("community") for pair in _ends(edges)]
-    return edges.assign(community=pd.array(found, dtype="Int64"))
+    """Return the edges table with ``community`` (missing where the ends differ) and ``backbone_p`` of ``graph``."""
+    found = [graph.edges[pair] for pair in _ends(edges)]
+    return edges.assign(
+        community=pd.array([edge.get("community") for edge in found], dtype="Int64"),
+        backbone_p=pd.array([edge.get("backbone_p", math.nan) for edge in found], dtype="float64"),
+    )
 
 
 def with_degrees(features: pd.DataFrame, graph: nx.Graph) -> pd.DataFrame:
-    """Return the features table with ``degree`` (0 outside the network) and ``community`` of ``graph``."""
+    """Return the features table with ``degree`` (0 outside the network) and ``community`` of ``graph``.
+
+    ``community_stability`` stands there where :func:`with_stability` has set it.
+    """
     nodes = [graph.nodes.get(key, {}) for key in _keys(features, "block", "feature")]
-    return features.assign(
+    table = features.assign(
         degree=pd.array([node.get("degree", 0) for node in nodes], dtype="Int64"),
         community=pd.array([node.get("community") for node in nodes], dtype="Int64"),
     )
+    if STABILITY_METHOD in graph.graph:
+        told = [node.get("community_stability", math.nan) for node in nodes]
+        table["community_stability"] = pd.array(told, dtype="float64")
+    return table
+
+
+def with_stability(graph: nx.Graph, found: CommunityStability) -> nx.Graph:
+    """Return a copy of the network whose nodes carry ``community_stability``, and which says how it was had."""
+    rated = graph.copy()
+    for key, share in found.of_feature.items():
+        rated.nodes[key]["community_stability"] = share
+    rated.graph[STABILITY_METHOD] = f"{found.resamples} resamples: {found.how}"
+    return rated
 
 
 def _check_columns(table: str, frame: pd.DataFrame, needed: tuple[str, ...]) -> None:
@@ -147,7 +177,7 @@ def _node_attributes(features: pd.DataFrame, wanted: set[Key]) -> dict[Key, dict
     if len(set(kept)) < len(kept):
         twice = next(key for place, key in enumerate(kept) if key in kept[:place])
         raise InputError(f"features table: {_named(twice)} has more than one row; keep one")
-    found = _records("node", features.iloc[rows], skip=("block", "feature", "degree", "community"))
+    found = _records("node", features.iloc[rows], skip=("block", "feature", *FOUND_OF_NODES))
     return {
         key: {"label": key[1], **record, "block": key[0], "feature": key[1]}
         for key, record in zip(kept, found, strict=True)
@@ -156,7 +186,7 @@ def _node_attributes(features: pd.DataFrame, wanted: set[Key]) -> dict[Key, dict
 
 def _edge_attributes(edges: pd.DataFrame, ends: list[tuple[Key, Key]]) -> list[dict[str, Plain]]:
     """Return the attributes of each edge, ``weight`` among them."""
-    found = _records("edge", edges, skip=("source", "target", "community", "weight"))
+    found = _records("edge", edges, skip=("source", "target", *FOUND_OF_EDGES))
     for row, (record, (source, target)) in enumerate(zip(found, ends, strict=True), start=1):
         r = record.get("r", math.nan)
         if isinstance(r, str) or not abs(r) <= 1:
@@ -192,11 +222,20 @@ def _check_known(ends: list[tuple[Key, Key]], nodes: Mapping[Key, Any]) -> None:
         )
 
 
-def _set_communities(graph: nx.Graph, seed: int) -> None:
-    """Set ``degree`` and ``community`` of nodes, and ``community`` of edges that lie inside one."""
+def _set_structure(graph: nx.Graph, seed: int) -> None:
+    """Set what the edges as a whole say of each node and each edge."""
     found: dict[Key, int] = communities(graph, seed)
-    nx.set_node_attributes(graph, dict(graph.degree), "degree")
-    nx.set_node_attributes(graph, found, "community")
+    pieces = sorted(nx.connected_components(graph), key=lambda piece: (-len(piece), min(piece)))
+    for number, piece in enumerate(pieces, start=1):
+        for node in piece:
+            graph.nodes[node]["connected_component"] = number
+    for node, attributes in graph.nodes(data=True):
+        attributes["degree"], attributes["community"] = graph.degree[node], found[node]
+        attributes["strength"] = math.fsum(graph.edges[node, other]["weight"] for other in graph[node])
+        reached = {graph.nodes[other].get("layer", other[0]) for other in graph[node]}
+        attributes["layers_reached"] = len(reached)
+    for pair, p in backbone_p(graph).items():
+        graph.edges[pair]["backbone_p"] = p
     for source, target, attributes in graph.edges(data=True):
         if found[source] == found[target]:
             attributes["community"] = found[source]

@@ -3,13 +3,10 @@
 from __future__ import annotations
 
 import itertools
-import math
-import sys
 import warnings
-from collections.abc import Iterable, Iterator, Mapping, Sequence
-from dataclasses import dataclass, field
+from collections.abc import Iterable
+from dataclasses import dataclass
 from pathlib import Path
-from typing import Any
 from xml.etree.ElementTree import Element, ParseError
 
 import defusedxml.ElementTree
@@ -19,17 +16,9 @@ from lxml import etree
 from networkx.readwrite.graphml import GraphMLReader
 
 from workbench.errors import InputError
-from workbench.network.attributes import (
-    ATTRIBUTES,
-    Domain,
-    Kind,
-    Plain,
-    as_kind,
-    kind_of,
-    meaning_of,
-    plain_value,
-)
-from workbench.network.xml_text import legal_names, legal_text, restore_text
+from workbench.network.attributes import meaning_of
+from workbench.network.encoding import ESCAPES, NOTES, Account, Column, checked_edges, encode
+from workbench.network.xml_text import legal_text, restore_text
 
 NAMESPACE = "http://graphml.graphdrawing.org/xmlns"
 SCHEMA_PLACE = "http://graphml.graphdrawing.org/xmlns/1.0/graphml.xsd"
@@ -37,12 +26,7 @@ SCHEMA_PLACE = "http://graphml.graphdrawing.org/xmlns/1.0/graphml.xsd"
 MAXIMUM_BYTES = 256 * 2**20
 """Largest file that is read."""
 
-SMALLEST = sys.float_info.min
-"""Smallest number in size that every reader takes, 2.2e-308; igraph refuses a file with a smaller one."""
-
 _INSTANCE = "http://www.w3.org/2001/XMLSchema-instance"
-_ESCAPES = "a backslash, u and four hexadecimal digits stand for the character of that code"
-_NOTES = ("text_escapes", "export_notes")
 
 
 @dataclass(frozen=True)
@@ -51,50 +35,6 @@ class GraphmlExport:
 
     data: bytes
     notes: tuple[str, ...]
-
-
-@dataclass
-class _Account:
-    """Counts of what could not be written as it was."""
-
-    escaped: int = 0
-    infinite: int = 0
-    tiny: int = 0
-    renamed: dict[str, str] = field(default_factory=dict)
-
-    def notes(self) -> tuple[str, ...]:
-        """Return one sentence for each kind of change that was needed."""
-        counted = (
-            (self.escaped, f"texts with characters that XML forbids: {self.escaped}; {_ESCAPES}"),
-            (self.infinite, f"infinite numbers left out: {self.infinite}"),
-            (self.tiny, f"numbers nearer to zero than {SMALLEST:.3g}, written as that: {self.tiny}"),
-        )
-        renamed = (f"attribute {old!r} is named {new!r}" for old, new in self.renamed.items())
-        return (*(sentence for count, sentence in counted if count), *renamed)
-
-    def attributes(self) -> dict[str, str]:
-        """Return the notes as attributes of the network."""
-        escapes = {"text_escapes": _ESCAPES} if self.escaped else {}
-        return escapes | ({"export_notes": "; ".join(self.notes())} if self.notes() else {})
-
-
-@dataclass(frozen=True)
-class _Column:
-    """One attribute of one domain: its key in the file, its legal name, its type, and what it means."""
-
-    domain: Domain
-    identifier: str
-    name: str
-    kind: Kind
-    meaning: str
-
-
-@dataclass(frozen=True)
-class _Encoded:
-    """The attributes of one domain as text: columns, and for each row its (key, text) pairs."""
-
-    columns: tuple[_Column, ...]
-    rows: tuple[list[tuple[str, str]], ...]
 
 
 def graphml_bytes(graph: nx.Graph) -> bytes:
@@ -136,16 +76,14 @@ def export_graphml(graph: nx.Graph) -> GraphmlExport:
     >>> print(graphml_bytes(graph).decode().splitlines()[-4].strip())
     <data key="d0">-0.8</data>
     """
-    if graph.is_directed() or graph.is_multigraph():
-        raise InputError("a network has edges without direction, one for each pair; this graph has others")
     nodes = sorted(graph.nodes)
-    edges = _oriented_edges(graph, nodes)
-    account, keys = _Account(), itertools.count()
-    own = {name: value for name, value in graph.graph.items() if name not in _NOTES}
-    of_graph = _encode("graph", [own], account, keys)
-    of_nodes = _encode("node", [graph.nodes[node] for node in nodes], account, keys)
-    of_edges = _encode("edge", [attributes for _, _, attributes in edges], account, keys)
-    told = _encode("graph", [account.attributes()], _Account(), keys)
+    edges = checked_edges(graph, nodes)
+    account, keys = Account(), itertools.count()
+    own = {name: value for name, value in graph.graph.items() if name not in NOTES}
+    of_graph = encode("graph", [own], account, keys)
+    of_nodes = encode("node", [graph.nodes[node] for node in nodes], account, keys)
+    of_edges = encode("edge", [attributes for _, _, attributes in edges], account, keys)
+    told = encode("graph", [account.attributes()], Account(), keys)
     root, body = _document(itertools.chain(*(part.columns for part in (of_graph, of_nodes, of_edges, told))))
     _add_data(body, of_graph.rows[0] + told.rows[0])
     for index, row in enumerate(of_nodes.rows):
@@ -157,69 +95,7 @@ def export_graphml(graph: nx.Graph) -> GraphmlExport:
     return GraphmlExport(data, account.notes())
 
 
-def _oriented_edges(graph: nx.Graph, nodes: Sequence[Any]) -> list[tuple[int, int, Mapping[str, Any]]]:
-    """Return sorted edges by number of node, each from its source block to its target block."""
-    place = {node: index for index, node in enumerate(nodes)}
-    edges = []
-    for first, second, attributes in graph.edges(data=True):
-        source, target = sorted((place[first], place[second]))
-        start = attributes.get("source_block")
-        if start is not None and start != graph.nodes[nodes[source]].get("block"):
-            source, target = target, source
-        edges.append((source, target, attributes))
-    return sorted(edges, key=lambda edge: edge[:2])
-
-
-def _encode(
-    domain: Domain, records: Sequence[Mapping[Any, Any]], account: _Account, keys: Iterator[int]
-) -> _Encoded:
-    """Return the attributes of one domain as text, each under a type that all its values allow."""
-    plain = [{str(name): plain_value(value) for name, value in record.items()} for record in records]
-    rows: tuple[list[tuple[str, str]], ...] = tuple([] for _ in records)
-    names = _ordered(
-        domain, {name for record in plain for name, value in record.items() if value is not None}
-    )
-    legal = legal_names(names)
-    account.renamed |= {old: new for old, new in legal.items() if old != new}
-    columns = []
-    for name in names:
-        values = [record.get(name) for record in plain]
-        column = _Column(domain, f"d{next(keys)}", legal[name], kind_of(domain, name, values), name)
-        columns.append(column)
-        for row, value in zip(rows, values, strict=True):
-            text = None if value is None else _written(column.kind, value, account)
-            if text is not None:
-                row.append((column.identifier, text))
-    return _Encoded(tuple(columns), rows)
-
-
-def _ordered(domain: Domain, names: Iterable[str]) -> list[str]:
-    """Return known attributes in their usual order, then the others by name."""
-    known = {name: index for index, name in enumerate(ATTRIBUTES[domain])}
-    return sorted(names, key=lambda name: (known.get(name, len(known)), name))
-
-
-def _written(kind: Kind, value: Plain, account: _Account) -> str | None:
-    """Return one value as text; ``None`` for one that cannot be written."""
-    value = as_kind(kind, value)
-    if isinstance(value, bool):
-        return "true" if value else "false"
-    if isinstance(value, str):
-        text = legal_text(value)
-        account.escaped += text != value
-        return text
-    if isinstance(value, int):
-        return str(value)
-    if math.isinf(value):
-        account.infinite += 1
-        return None
-    if 0 < abs(value) < SMALLEST:
-        account.tiny += 1
-        value = math.copysign(SMALLEST, value)
-    return repr(value)
-
-
-def _document(columns: Iterable[_Column]) -> tuple[etree._Element, etree._Element]:
+def _document(columns: Iterable[Column]) -> tuple[etree._Element, etree._Element]:
     """Return the root of the file with its keys declared, and the graph inside it, still empty."""
     place = {f"{{{_INSTANCE}}}schemaLocation": f"{NAMESPACE} {SCHEMA_PLACE}"}
     root = etree.Element(_tag("graphml"), place, nsmap={None: NAMESPACE, "xsi": _INSTANCE})
@@ -297,8 +173,8 @@ def _gated_bytes(path: Path, maximum_bytes: int) -> bytes:
 
 def _as_built(graph: nx.Graph) -> nx.Graph:
     """Return the graph without what the reader added, texts restored, nodes keyed by block and feature."""
-    escaped = graph.graph.get("text_escapes") == _ESCAPES
-    for name in ("node_default", "edge_default", *_NOTES):
+    escaped = graph.graph.get("text_escapes") == ESCAPES
+    for name in ("node_default", "edge_default", *NOTES):
         graph.graph.pop(name, None)
     records = [graph.graph, *(found for _, found in graph.nodes(data=True))]
     for _, _, attributes in graph.edges(data=True):

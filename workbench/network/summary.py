@@ -8,7 +8,13 @@ from dataclasses import dataclass
 
 import networkx as nx
 
-from workbench.network.builder import Key
+from workbench.network.backbone import BACKBONE_LEVEL
+from workbench.network.builder import STABILITY_METHOD
+from workbench.network.keys import Key
+from workbench.network.stability import STABLE, UNSTABLE
+
+DENSE = 4.0
+"""Edges a feature from which on a network is hard to read whole, and its backbone is told."""
 
 LONGEST_NAME = 60
 """Characters of a name that are shown; the rest is cut."""
@@ -16,21 +22,28 @@ LONGEST_NAME = 60
 
 @dataclass(frozen=True)
 class PairCount:
-    """Edges between two blocks, and how many of them have ``r`` above and below zero."""
+    """Edges between two blocks: with ``r`` above and below zero, by what they rest on, carried by a module alone."""
 
     blocks: tuple[str, str]
     edges: int
     positive: int
     negative: int
+    basis: dict[str, int]
+    by_module: int
 
 
 @dataclass(frozen=True)
 class Community:
-    """One community: its number, its features in each layer, and the edges that lie inside it."""
+    """One community: its number, its features in each layer, the edges that lie inside it, how stable it is.
+
+    ``stability`` is the mean over its features of the share of resamples in which they stay together; None where
+    nobody measured it.
+    """
 
     number: int
     layers: dict[str, int]
     edges: int
+    stability: float | None = None
 
     @property
     def features(self) -> int:
@@ -52,7 +65,12 @@ class Hub:
 
 @dataclass(frozen=True)
 class NetworkSummary:
-    """Counts of a network; ``components`` are the sizes of its connected components, largest first."""
+    """Counts of a network.
+
+    ``components`` are the sizes of its connected components, largest first; ``density`` is the share of all pairs of
+    its features that are edges; ``backbone`` counts the edges that the disparity filter keeps; ``clustered`` the
+    features that have near-duplicates in the network, ``clusters`` their clusters.
+    """
 
     features: int
     edges: int
@@ -60,19 +78,43 @@ class NetworkSummary:
     communities: tuple[Community, ...]
     hubs: tuple[Hub, ...]
     components: tuple[int, ...]
+    density: float
+    backbone: int
+    clustered: int
+    clusters: int
+
+    @property
+    def mean_degree(self) -> float:
+        """Return the edges of a feature on average."""
+        return 2.0 * self.edges / self.features if self.features else 0.0
 
     def sentences(self, *, shown: int = 5) -> tuple[str, ...]:
         """Return the summary in plain words, at most ``shown`` communities and hubs of it."""
         if not self.edges:
             return ("No edges: no pair of features passed the evidence rules.",)
         return (
-            f"{_count(self.edges, 'edge')} {_verb(self.edges, 'join')} {self.features} features.",
+            f"{_count(self.edges, 'edge')} {_verb(self.edges, 'join')} {self.features} features, "
+            f"{self.mean_degree:.1f} edges a feature on average.",
             *map(_pair_sentence, self.pairs),
             f"{_count(len(self.components), 'connected component')}; the largest holds "
             f"{self.components[0]} of {self.features} features.",
             *_community_sentences(self.communities, shown),
             *(_hub_sentence(hub) for hub in self.hubs[:shown]),
+            *self._dense_sentences(),
         )
+
+    def _dense_sentences(self) -> Iterable[str]:
+        """Yield what helps to read a network of many edges."""
+        if self.clusters:
+            yield (
+                f"{_count(self.clustered, 'feature')} {_verb(self.clustered, 'fall')} into "
+                f"{_count(self.clusters, 'cluster')} of near-duplicates; one of each says what the others say."
+            )
+        if self.mean_degree >= DENSE:
+            yield (
+                f"Backbone: {_count(self.backbone, 'edge')} with backbone_p at most {BACKBONE_LEVEL:g} "
+                f"{_verb(self.backbone, 'carry')} more of their features' weight than chance would."
+            )
 
 
 def summarise(graph: nx.Graph, *, hubs: int = 10) -> NetworkSummary:
@@ -91,6 +133,7 @@ def summarise(graph: nx.Graph, *, hubs: int = 10) -> NetworkSummary:
     >>> summarise(graph).sentences()[1]
     'lcms - rna: 1 edge, 0 with r above zero and 1 below.'
     """
+    clusters = {name: count for name, count in _clusters(graph).items() if count > 1}
     return NetworkSummary(
         features=graph.number_of_nodes(),
         edges=graph.number_of_edges(),
@@ -98,6 +141,10 @@ def summarise(graph: nx.Graph, *, hubs: int = 10) -> NetworkSummary:
         communities=_communities(graph),
         hubs=_hubs(graph, hubs),
         components=tuple(sorted(map(len, nx.connected_components(graph)), reverse=True)),
+        density=float(nx.density(graph)),
+        backbone=sum(p <= BACKBONE_LEVEL for _, _, p in graph.edges(data="backbone_p", default=1.0)),
+        clustered=sum(clusters.values()),
+        clusters=len(clusters),
     )
 
 
@@ -118,34 +165,64 @@ def shown_name(text: str) -> str:
     return "".join(letter if letter.isprintable() else f"\\u{ord(letter):04x}" for letter in cut)
 
 
+def _clusters(graph: nx.Graph) -> Counter[tuple[str, str]]:
+    """Return the features of each cluster of near-duplicates, a cluster known by its layer and name."""
+    return Counter(
+        (_layer(graph, node), str(found["cluster"]))
+        for node, found in graph.nodes(data=True)
+        if "cluster" in found
+    )
+
+
 def _pair_counts(graph: nx.Graph) -> tuple[PairCount, ...]:
     """Return the edges between each two blocks, most edges first."""
-    edges: Counter[tuple[str, str]] = Counter()
-    positive: Counter[tuple[str, str]] = Counter()
-    negative: Counter[tuple[str, str]] = Counter()
+    counts: dict[tuple[str, str], Counter[str]] = {}
     for first, second, found in graph.edges(data=True):
         start, end = sorted((first[0], second[0]))
         if found.get("source_block") == end:
             start, end = end, start
-        edges[start, end] += 1
-        positive[start, end] += found["r"] > 0
-        negative[start, end] += found["r"] < 0
-    ordered = sorted(edges, key=lambda pair: (-edges[pair], pair))
-    return tuple(PairCount(pair, edges[pair], positive[pair], negative[pair]) for pair in ordered)
+        told = counts.setdefault((start, end), Counter())
+        told.update(edges=1, positive=int(found["r"] > 0), negative=int(found["r"] < 0))
+        told.update(by_module=int(found.get("support") == "module"))
+        told[f"basis {found.get('basis', '')}"] += 1
+    ordered = sorted(counts, key=lambda pair: (-counts[pair]["edges"], pair))
+    return tuple(_pair_count(pair, counts[pair]) for pair in ordered)
+
+
+def _pair_count(pair: tuple[str, str], told: Counter[str]) -> PairCount:
+    """Return the counts of two blocks by name."""
+    basis = {name.partition(" ")[2]: number for name, number in told.items() if name.startswith("basis ")}
+    return PairCount(
+        blocks=pair,
+        edges=told["edges"],
+        positive=told["positive"],
+        negative=told["negative"],
+        basis=_sorted_counts(Counter({name: number for name, number in basis.items() if name})),
+        by_module=told["by_module"],
+    )
 
 
 def _communities(graph: nx.Graph) -> tuple[Community, ...]:
     """Return the communities by number."""
     layers: dict[int, Counter[str]] = {}
+    shares: dict[int, list[float]] = {}
     for node, found in graph.nodes(data=True):
         layers.setdefault(found["community"], Counter())[_layer(graph, node)] += 1
+        if STABILITY_METHOD in graph.graph and "community_stability" in found:
+            shares.setdefault(found["community"], []).append(found["community_stability"])
     inside = Counter(
         graph.nodes[first]["community"]
         for first, second in graph.edges
         if graph.nodes[first]["community"] == graph.nodes[second]["community"]
     )
     return tuple(
-        Community(number, _sorted_counts(layers[number]), inside[number]) for number in sorted(layers)
+        Community(
+            number,
+            _sorted_counts(layers[number]),
+            inside[number],
+            sum(shares[number]) / len(shares[number]) if number in shares else None,
+        )
+        for number in sorted(layers)
     )
 
 
@@ -199,8 +276,17 @@ def _pair_sentence(pair: PairCount) -> str:
     first, second = map(shown_name, pair.blocks)
     return (
         f"{first} - {second}: {_count(pair.edges, 'edge')}, {pair.positive} with r above zero "
-        f"and {pair.negative} below."
+        f"and {pair.negative} below{''.join(_rests(pair))}."
     )
+
+
+def _rests(pair: PairCount) -> Iterable[str]:
+    """Yield what the edges of two blocks rest on, where that is more than their own test within groups."""
+    if pair.by_module:
+        yield f"; {pair.by_module} carried by their module, not by their own test"
+    if pair.basis and set(pair.basis) != {"within"}:
+        words = {"within": "hold within groups", "group": "rest on the group alone", "unclear": "are unclear"}
+        yield "; " + ", ".join(f"{number} {words.get(name, name)}" for name, number in pair.basis.items())
 
 
 def _community_sentences(communities: Iterable[Community], shown: int) -> list[str]:
@@ -208,7 +294,7 @@ def _community_sentences(communities: Iterable[Community], shown: int) -> list[s
     found = list(communities)
     said = [
         f"Community {one.number}: {_count(one.features, 'feature')} ({_listed(one.layers)}), "
-        f"{_count(one.edges, 'edge')} inside."
+        f"{_count(one.edges, 'edge')} inside{_stability(one)}."
         for one in found[:shown]
     ]
     if len(found) > shown:
@@ -217,6 +303,14 @@ def _community_sentences(communities: Iterable[Community], shown: int) -> list[s
             f"{_count(len(found) - shown, 'more community')} of at most {_count(largest, 'feature')}."
         )
     return said
+
+
+def _stability(one: Community) -> str:
+    """Return how stable a community is, in words."""
+    if one.stability is None:
+        return ""
+    word = "stable" if one.stability >= STABLE else "doubtful" if one.stability >= UNSTABLE else "unstable"
+    return f"; {word} ({one.stability:.2f} of resamples)"
 
 
 def _hub_sentence(hub: Hub) -> str:
