@@ -77,6 +77,8 @@ def block_signal(design: Design, place: int, sheet: pd.DataFrame, shared: np.nda
     latent += mixing @ _noise(block, design, rng())
     odd = _odd_rows(block, design, seed, rng())
     latent[odd] += ODD_SIZE * rng().standard_normal((len(odd), p))
+    if block.clusters:
+        latent += mixing @ _clusters(block, n, rng())
     return Signal(latent, loadings, private, effects, copies, odd)
 
 
@@ -108,6 +110,13 @@ def _private(
     share = 0.8 ** np.arange(k)
     weights = block.private_strength * np.sqrt(share / max(share.sum(), 1.0))
     return scores, scores @ (rng.standard_normal((block.features, k)) * weights).T
+
+
+def _clusters(block: Block, n: int, rng: np.random.Generator) -> np.ndarray:
+    """Return what the factors of small groups of features add."""
+    group = rng.permutation(block.features) // block.clusters
+    factors = rng.standard_normal((n, int(group.max()) + 1))
+    return factors[:, group] * block.cluster_strength * rng.choice([-1.0, 1.0], block.features)
 
 
 def _group(

@@ -38,6 +38,9 @@ class Block:
         Degrees of freedom of Student-t noise; infinity is Gaussian noise (gamma noise for counts).
     duplicates
         Features that are near copies of another one, such as adducts or isoforms.
+    clusters, cluster_strength
+        Size of the groups into which all features are dealt at random, and the loading (random sign) of each
+        feature on the factor that its group alone has; 0: no such groups. The oracle does not know them.
     lacking, odd
         Number of samples that the block lacks, and of samples whose row has gone wrong.
     swaps
@@ -66,6 +69,8 @@ class Block:
     gaps: float = 0.0
     tails: float = math.inf
     duplicates: int = 0
+    clusters: int = 0
+    cluster_strength: float = 1.0
     lacking: int = 0
     odd: int = 0
     swaps: tuple[int, ...] = ()

@@ -31,7 +31,7 @@ def pull_in(residuals: FloatArray, freedom: int, far: float = FAR) -> FloatArray
     --------
     >>> x = np.append(np.tile([-1.0, 1.0], 20), 40.0)[:, None]
     >>> pull_in(x, 40)[-1].round(1), pull_in(x[:-1], 39).max()
-    (array([3.8]), 1.0)
+    (array([3.4]), np.float64(1.0))
     """
     result = np.array(residuals, dtype=np.float64)
     columns = np.arange(result.shape[1])
