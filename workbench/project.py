@@ -31,6 +31,7 @@ from workbench.workflow.create import DEFAULT_TEMPLATE, create_project
 from workbench.workflow.preparing import account_of
 from workbench.workflow.reporting import SILENT, Reporter
 from workbench.workflow.samples import SheetAccount, SheetDelivery, add_samples
+from workbench.workflow.showing import Story, keep_figures, show
 from workbench.workflow.stages import Outcome, Standing, run_stages, standings
 from workbench.workflow.state import ProjectState, load_state
 from workbench.workflow.status import Status, status_of
@@ -177,6 +178,7 @@ class Project:
         *,
         layer: str,
         values: str,
+        own_layer: bool = False,
         samples_in: str | None = None,
         annotations: str | Path | None = None,
         runs: str | Path | None = None,
@@ -194,6 +196,7 @@ class Project:
             file=Path(file),
             layer=layer,
             values=values,
+            own_layer=own_layer,
             samples_in=samples_in,
             annotations=None if annotations is None else Path(annotations),
             runs=None if runs is None else Path(runs),
@@ -274,6 +277,20 @@ class Project:
     def check_files(self) -> list[FileFault]:
         """Return the stored files that are not what the program wrote."""
         return check_all(self.paths.root)
+
+    def show(self, *features: str, analysis: str | None = None) -> list[Story]:
+        """Return the evidence for one feature, or for the cross-layer pairs among several."""
+        state = self.state()
+        return show(state, state.one_analysis(analysis), features)
+
+    def keep_figures(
+        self, stories: Sequence[Story], *, analysis: str | None = None, file: str | Path | None = None
+    ) -> tuple[Path, ...]:
+        """Write the scatters of pairs, by default below the analysis' results; return their files."""
+        state = self.state()
+        return keep_figures(
+            state.root, state.one_analysis(analysis), stories, None if file is None else Path(file)
+        )
 
     def result(self, analysis: str) -> Result:
         """Return what an analysis wrote."""

@@ -15,6 +15,7 @@ from workbench.workflow.feature_table import canonical_correlations, features_ta
 from workbench.workflow.fingerprints import fingerprint
 from workbench.workflow.record import analysis_record, fragile_sentence, screen_sentences
 from workbench.workflow.reporting import Reporter
+from workbench.workflow.showing import SHOWN
 from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
 
@@ -69,10 +70,18 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
     folder = f"results/{name}"
     for file, table in (("edges.tsv", edges), ("group_pairs.tsv", pairs), ("features.tsv", features)):
         change.write_bytes(f"{folder}/{file}", table_bytes(table))
+    _clear_shown(state, change, name)
     change.write_bytes(f"{folder}/network.graphml", graphml_bytes(graph))
     change.write_bytes(f"{folder}/record.json", json_bytes(analysis_record(state, view, screens, len(pairs))))
     for line in filter(None, [*screen_sentences(view, screens, len(pairs)), fragile_sentence(edges)]):
         reporter.say(f"  {line}")
+
+
+def _clear_shown(state: ProjectState, change: Change, name: str) -> None:
+    """Take away the figures of single pairs: they show what an earlier network rested on."""
+    folder = state.paths.analysis(name) / SHOWN
+    for path in sorted(folder.glob("*")) if folder.is_dir() else ():
+        change.remove(path.relative_to(state.root).as_posix())
 
 
 def graph_attributes(view: AnalysisView) -> dict[str, object]:

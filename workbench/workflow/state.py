@@ -8,9 +8,9 @@ from pathlib import Path
 
 import pandas as pd
 
-from workbench.errors import InputError, SettingsError
+from workbench.errors import InputError, SettingsError, WorkbenchError
 from workbench.intake import read_sample_sheet, run_columns_of
-from workbench.settings import Settings, cross_check, load_settings
+from workbench.settings import Settings, cross_check, independent_faults, load_settings, salvaged_settings
 from workbench.store import Manifest, ProjectPaths, read_manifest
 
 
@@ -49,10 +49,23 @@ class ProjectState:
                 f"no analysis '{name}' in {self.paths.settings}; {_known(self.settings.analyses)}"
             )
 
+    def one_analysis(self, name: str | None) -> str:
+        """Return the named analysis; without a name `main`, or the only one there is."""
+        known = list(self.settings.analyses)
+        if name is None:
+            if len(known) != 1 and "main" not in known:
+                raise InputError(f"say which analysis with --analysis NAME; {_known(known)}")
+            name = "main" if "main" in known else known[0]
+        self.require_analysis(name)
+        return name
+
 
 def load_state(paths: ProjectPaths) -> ProjectState:
     """Return the project's state; raise `SettingsError` with every fault of settings against data."""
-    settings = load_settings(paths.settings)
+    try:
+        settings = load_settings(paths.settings)
+    except SettingsError as error:
+        raise SettingsError([*error.faults, *_further_faults(paths)]) from error
     sheet = None
     if paths.samples.exists():
         sheet = read_sample_sheet(paths.samples, id_column=settings.samples.id).frame
@@ -60,6 +73,19 @@ def load_state(paths: ProjectPaths) -> ProjectState:
         if faults:
             raise SettingsError(faults)
     return ProjectState(paths, settings, sheet, read_manifest(paths.root))
+
+
+def _further_faults(paths: ProjectPaths) -> list[str]:
+    """Return what else is wrong with settings that have faults: columns, samples and files that are not there."""
+    settings = salvaged_settings(paths.settings)
+    if settings is None or not paths.samples.exists():
+        return []
+    try:
+        sheet = read_sample_sheet(paths.samples, id_column=settings.samples.id).frame
+        columns = run_columns_of(settings.blocks, paths.root)
+    except WorkbenchError:
+        return []
+    return independent_faults(cross_check(settings, sheet, paths.root, columns))
 
 
 def _known(names: Iterable[str]) -> str:
