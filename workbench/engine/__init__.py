@@ -8,6 +8,7 @@ from workbench.engine.evidence import EdgeEvidence, edge_evidence
 from workbench.engine.folds import balanced_folds
 from workbench.engine.intervals import fisher_interval
 from workbench.engine.lookup import PairFigures
+from workbench.engine.multiblock_pls import MultiblockDiscriminant, MultiblockPLS
 from workbench.engine.multiple import benjamini_hochberg
 from workbench.engine.nuisance import (
     FittedResiduals,
@@ -41,6 +42,8 @@ __all__ = [
     "FittedResiduals",
     "GroupEffects",
     "Limits",
+    "MultiblockDiscriminant",
+    "MultiblockPLS",
     "Nuisance",
     "PairFigures",
     "PairScreen",
