@@ -32,7 +32,8 @@ def add_block(
     layer: Annotated[
         str,
         typer.Option(
-            metavar="LAYER", help="transcripts, metabolites, proteins, lipids, clinical, or your own."
+            metavar="LAYER",
+            help="transcripts, metabolites, proteins, lipids, microbes, methylation, clinical, or your own.",
         ),
     ],
     values: Annotated[
@@ -41,6 +42,9 @@ def add_block(
             metavar="VALUES", help="counts, intensities, log, proportions, beta, continuous or mixed."
         ),
     ],
+    own_layer: Annotated[
+        bool, typer.Option("--own-layer", help="LAYER is a name of your own, though it is like a known one.")
+    ] = False,
     samples_in: Annotated[
         str | None,
         typer.Option(metavar="rows|columns", help="Where the samples stand; default: found by name."),
@@ -72,6 +76,7 @@ def add_block(
         file,
         layer=layer,
         values=values,
+        own_layer=own_layer,
         samples_in=samples_in,
         annotations=annotations,
         sheet=sheet,

@@ -5,12 +5,15 @@ from workbench.settings.edit import add_block as add_block_text
 from workbench.settings.edit import new_project as new_project_text
 from workbench.settings.edit import remove_block as remove_block_text
 from workbench.settings.edit import set_samples as set_samples_text
+from workbench.settings.layers import LAYERS, layer_fault
 from workbench.settings.load import load_settings, parse_settings, read_settings_text
-from workbench.settings.names import check_name
+from workbench.settings.names import check_name, hint, name_fault
 from workbench.settings.prepare_keys import PrepareKey, prepare_keys, toml_text
 from workbench.settings.prepare_schema import PrepareSettings, prepare_settings
+from workbench.settings.salvage import independent as independent_faults
+from workbench.settings.salvage import salvaged_settings
 from workbench.settings.schema import (
-    LAYERS,
+    VALUES,
     AnalysisSettings,
     BlockSettings,
     CheckSettings,
@@ -24,6 +27,7 @@ from workbench.settings.schema import (
 
 __all__ = [
     "LAYERS",
+    "VALUES",
     "AnalysisSettings",
     "BlockSettings",
     "CheckSettings",
@@ -38,13 +42,18 @@ __all__ = [
     "add_block_text",
     "check_name",
     "cross_check",
+    "hint",
+    "independent_faults",
+    "layer_fault",
     "load_settings",
+    "name_fault",
     "new_project_text",
     "parse_settings",
     "prepare_keys",
     "prepare_settings",
     "read_settings_text",
     "remove_block_text",
+    "salvaged_settings",
     "set_samples_text",
     "toml_text",
 ]

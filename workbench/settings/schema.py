@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import math
 from pathlib import PurePosixPath
-from typing import Annotated, Any, Literal
+from typing import Annotated, Any, Literal, get_args
 
 from pydantic import (
     AfterValidator,
@@ -21,16 +21,15 @@ from pydantic import (
 )
 from pydantic_core import PydanticCustomError
 
+from workbench.settings.layers import layer_fault
 from workbench.settings.names import name_fault
 from workbench.settings.prepare_schema import PrepareSettings, validated
 
 FORMAT = 1
 """Version of ``project.toml`` that this program reads and writes."""
 
-LAYERS = ("transcripts", "metabolites", "proteins", "lipids", "microbes", "methylation", "clinical")
-"""Layers that have a name of their own here; a user may name others."""
-
 Values = Literal["counts", "intensities", "log", "proportions", "beta", "continuous", "mixed"]
+VALUES: tuple[str, ...] = get_args(Values)
 Kind = Literal["classes", "number"]
 
 
@@ -70,17 +69,6 @@ def _checked_name(value: str) -> str:
 
 
 Name = Annotated[str, AfterValidator(_checked_name)]
-
-
-def _checked_layer(value: str) -> str:
-    """Refuse what is a known layer but for its case or its plural: the layer chooses the recipe."""
-    fault = name_fault(value)
-    if fault is not None:
-        raise _fault("name", fault)
-    for layer in LAYERS:
-        if value != layer and value.lower().rstrip("s") == layer.rstrip("s"):
-            raise _fault("layer", f"{value!r} is no layer; did you mean {layer!r}?")
-    return value
 
 
 def _is_number(value: Any) -> bool:
@@ -215,6 +203,8 @@ class BlockSettings(Section):
         The delivered table, relative to the project.
     layer : str
         The biological kind, one of `LAYERS` or a name of the user's.
+    own_layer : bool
+        Whether ``layer`` is a name of the user's though it is much like a known one.
     values : {"counts", "intensities", "log", "proportions", "beta", "continuous", "mixed"}
         What the numbers are.
     samples_in : {"rows", "columns"} or None
@@ -240,7 +230,8 @@ class BlockSettings(Section):
     """
 
     file: Text
-    layer: Annotated[str, AfterValidator(_checked_layer)]
+    own_layer: bool = False
+    layer: str
     values: Values
     samples_in: Literal["rows", "columns"] | None = None
     sheet: Text | None = None
@@ -253,6 +244,14 @@ class BlockSettings(Section):
     exclude: dict[str, Text] = Field(default_factory=dict)
     swap: Swaps = ()
     prepare: SerializeAsAny[PrepareSettings] = Field(default_factory=PrepareSettings, validate_default=True)
+
+    @field_validator("layer")
+    @classmethod
+    def _known_or_own(cls, value: str, info: ValidationInfo) -> str:
+        fault = layer_fault(value, bool(info.data.get("own_layer")))
+        if fault is not None:
+            raise _fault("layer", fault)
+        return value
 
     @field_validator("prepare", mode="before")
     @classmethod

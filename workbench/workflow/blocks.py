@@ -12,10 +12,15 @@ import tomlkit
 from workbench.errors import InputError
 from workbench.intake import build_block, difference, names_table, offered_names, run_columns
 from workbench.settings import (
+    LAYERS,
+    VALUES,
     BlockSettings,
     add_block_text,
     check_name,
     cross_check,
+    hint,
+    layer_fault,
+    name_fault,
     parse_settings,
     read_settings_text,
     remove_block_text,
@@ -27,7 +32,7 @@ from workbench.workflow.sources import delivered_file, keep_source
 from workbench.workflow.state import ProjectState, load_state
 from workbench.workflow.tables import measured_block
 
-OF_THE_TABLE = ("samples_in", "sheet", "array", "decimal", "names", "annotations", "runs")
+OF_THE_TABLE = ("own_layer", "samples_in", "sheet", "array", "decimal", "names", "annotations", "runs")
 Tell = Callable[[Sequence[str]], None]
 
 
@@ -44,6 +49,7 @@ class Delivery:
     file: Path
     layer: str
     values: str
+    own_layer: bool = False
     samples_in: str | None = None
     annotations: Path | None = None
     runs: Path | None = None
@@ -70,7 +76,7 @@ def add_block(paths: ProjectPaths, delivery: Delivery, tell: Tell = no_words) ->
     tuple of str
         What was understood of the table, a sentence each.
     """
-    check_name(delivery.name, "block")
+    _check_words(delivery)
     for file in (delivery.file, *delivery.beside.values()):
         delivered_file(file)
     with project_lock(paths.root, f"add-block {delivery.name}"):
@@ -78,6 +84,25 @@ def add_block(paths: ProjectPaths, delivery: Delivery, tell: Tell = no_words) ->
         _require_fitting(state, delivery)
         with Change(paths.root) as change:
             return _take_in(state, change, delivery, tell)
+
+
+def _check_words(delivery: Delivery) -> None:
+    """Refuse a name, a layer and a kind of values that cannot be, all at once, by their options."""
+    told = {"NAME": name_fault(delivery.name), "--layer": layer_fault(delivery.layer, delivery.own_layer)}
+    allowed = {
+        "values": (delivery.values, VALUES),
+        "samples_in": (delivery.samples_in, ("rows", "columns")),
+        "decimal": (delivery.decimal, (".", ",")),
+    }
+    for key, (given, choices) in allowed.items():
+        if given is not None and given not in choices:
+            listed = ", ".join(map(repr, choices))
+            told[f"--{key.replace('_', '-')}"] = (
+                f"{given!r} is not allowed; allowed: {listed}{hint(given, choices)}"
+            )
+    faults = [f"{option}: {fault}" for option, fault in told.items() if fault is not None]
+    if faults:
+        raise InputError("\n".join(faults))
 
 
 def _take_in(state: ProjectState, change: Change, delivery: Delivery, tell: Tell) -> tuple[str, ...]:
@@ -110,7 +135,17 @@ def _take_in(state: ProjectState, change: Change, delivery: Delivery, tell: Tell
     stage = reading_stage(name)
     change.record_stage(stage.name, StageRecord(inputs=inputs, outputs=stage.outputs))
     change.commit({"command": "add-block", "block": name, "replaced": delivery.replace, "sources": sources})
-    return build.decisions
+    return (*build.decisions, *_own_layer_line(final))
+
+
+def _own_layer_line(block: BlockSettings) -> tuple[str, ...]:
+    """Return a sentence on a layer of the user's own; none for a known one."""
+    if block.layer in LAYERS:
+        return ()
+    return (
+        f"layer: '{block.layer}' is one of your own (known are {', '.join(LAYERS)}); its values are prepared "
+        f"as any {block.values} are",
+    )
 
 
 def replaced_entries(text: str, name: str, entries: dict[str, Any]) -> str:
@@ -169,6 +204,8 @@ def _keep(
         entries[key], digest = keep_source(change, paths, path)
         sources.append({"file": entries[key], "sha256": digest, "delivered_as": path.name})
     entries |= {"layer": delivery.layer, "values": delivery.values}
+    if delivery.own_layer:
+        entries["own_layer"] = True
     for key in ("samples_in", "sheet", "array", "decimal"):
         if getattr(delivery, key) is not None:
             entries[key] = getattr(delivery, key)
