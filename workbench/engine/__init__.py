@@ -19,6 +19,13 @@ from workbench.engine.nuisance import (
     standardise,
 )
 from workbench.engine.permutation import PairTest, canonical_pair_test
+from workbench.engine.repeated import (
+    SubjectSpace,
+    by_visit,
+    screen_repeated,
+    subject_space,
+    without_subject,
+)
 from workbench.engine.ridge_choice import RidgeChoice, choose_ridge
 from workbench.engine.screen import BlockPair, BlockScreen, PairScreen, screen_blocks, screen_pairs
 from workbench.engine.splits import Split, SplitSource, array_source
@@ -54,10 +61,12 @@ __all__ = [
     "SplitSource",
     "Standardised",
     "SubjectDesign",
+    "SubjectSpace",
     "aliased",
     "array_source",
     "balanced_folds",
     "benjamini_hochberg",
+    "by_visit",
     "canonical_pair_test",
     "centred",
     "choose_ridge",
@@ -70,8 +79,11 @@ __all__ = [
     "group_effects",
     "screen_blocks",
     "screen_pairs",
+    "screen_repeated",
     "standardise",
     "subject_labels",
     "subject_means",
+    "subject_space",
     "whole_subject_folds",
+    "without_subject",
 ]

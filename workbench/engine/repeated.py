@@ -56,7 +56,7 @@ class SubjectSpace:
         Rows of each subject's contrasts in ``whitened``; for means one row each.
     whitened : ndarray of shape (n_contrasts, n_samples)
         The same map without the rotation that makes room for an intercept.
-    visits : ndarray of int
+    used : ndarray of int
         Samples that were used.
     """
 
@@ -125,7 +125,8 @@ def screen_repeated(
     if len(pairs) != len(designs):
         raise NumericsError(f"{len(pairs)} pairs of blocks and {len(designs)} designs; give one for each")
     spaces = [
-        subject_space(pair, design, level, correlation) for pair, design in zip(pairs, designs, strict=True)
+        subject_space((pair.x, pair.y), design, _columns(pair), level, correlation)
+        for pair, design in zip(pairs, designs, strict=True)
     ]
     moved = [
         _moved(pair, design, space, level, correlation)
@@ -145,35 +146,41 @@ def screen_repeated(
 
 
 def subject_space(
-    pair: BlockPair, design: SubjectDesign, level: Level, correlation: Correlation = "pearson"
+    blocks: Sequence[Columns],
+    design: SubjectDesign,
+    nuisance: FloatArray | None,
+    level: Level,
+    correlation: Correlation = "pearson",
 ) -> SubjectSpace:
-    """Map of a pair of blocks' samples to independent rows.
+    """Map of the blocks' samples to independent rows.
+
+    Parameters
+    ----------
+    blocks : sequence of array or dataset of shape (n_samples, n_features)
+        Together they tell the covariance between visits.
+    nuisance : ndarray of shape (n_samples, n_columns) or None
 
     Raises
     ------
     NumericsError
         When the design is of other samples, or has no subject with two samples (level "visits").
     """
-    for side in (pair.x, pair.y):
+    for side in blocks:
         if side.shape[0] != design.n_samples:
             raise NumericsError(
-                f"{pair.name!r} has {side.shape[0]} samples and its design {design.n_samples}; give the same"
+                f"a block has {side.shape[0]} samples and the design {design.n_samples}; give the same"
             )
-    if isinstance(pair.nuisance, Nuisance):
-        raise NumericsError(f"the nuisance of {pair.name!r} is a basis; give its columns")
-    columns = np.empty((design.n_samples, 0)) if pair.nuisance is None else np.asarray(pair.nuisance, float)
+    columns = np.empty((design.n_samples, 0)) if nuisance is None else np.asarray(nuisance, dtype=np.float64)
     if level == "subjects":
         matrix = _means_matrix(design)
-        nuisance = Nuisance.of(_moved_columns(matrix, columns), design.n_subjects)
+        basis = Nuisance.of(_moved_columns(matrix, columns), design.n_subjects)
         rows = tuple(np.array([row]) for row in range(design.n_subjects))
-        return SubjectSpace(matrix, nuisance, rows, matrix, np.arange(design.n_samples))
+        return SubjectSpace(matrix, basis, rows, matrix, np.arange(design.n_samples))
     if level != "visits":
         raise NumericsError(f"level is {level!r}; allowed: 'visits', 'subjects'")
     if not design.repeated.any():
-        raise NumericsError(
-            f"{pair.name!r}: {design.reason}; changes between visits need subjects with two samples or more"
-        )
-    return _visits_space(pair, design, np.hstack([_course(design), columns]), correlation)
+        raise NumericsError(f"{design.reason}; changes between visits need subjects with two samples or more")
+    return _visits_space(blocks, design, np.hstack([_course(design), columns]), correlation)
 
 
 def by_visit(design: SubjectDesign, columns: FloatArray) -> FloatArray:
@@ -278,6 +285,12 @@ class _Mapped:
         return np.asarray(rankdata(rows, axis=0)) if self.ranks == "after" else rows
 
 
+def _columns(pair: BlockPair) -> FloatArray | None:
+    if isinstance(pair.nuisance, Nuisance):
+        raise NumericsError(f"the nuisance of {pair.name!r} is a basis; give its columns")
+    return pair.nuisance
+
+
 def _moved(
     pair: BlockPair, design: SubjectDesign, space: SubjectSpace, level: Level, correlation: Correlation
 ) -> BlockPair:
@@ -322,7 +335,7 @@ def _moved_columns(matrix: FloatArray, columns: FloatArray) -> FloatArray:
 
 
 def _visits_space(
-    pair: BlockPair, design: SubjectDesign, columns: FloatArray, correlation: Correlation
+    sides: Sequence[Columns], design: SubjectDesign, columns: FloatArray, correlation: Correlation
 ) -> SubjectSpace:
     used = np.flatnonzero(design.repeated)
     order = used[np.lexsort((design.visit[used], design.subject[used]))]
@@ -336,7 +349,7 @@ def _visits_space(
         start += rows.size - 1
     whitened = contrasts
     if design.kind in ("pairs", "visits"):
-        variogram = _variogram(pair, design, contrasts, columns, correlation)
+        variogram = _variogram(sides, design, contrasts, columns, correlation)
         whitened = _whitened(contrasts, members, blocks, design.visit, variogram)
     room = helmert(start + 1).T
     nuisance = Nuisance.of(room @ _moved_columns(whitened, columns), start + 1)
@@ -352,20 +365,20 @@ def _basis(space: SubjectSpace) -> FloatArray:
 
 
 def _variogram(
-    pair: BlockPair,
+    sides: Sequence[Columns],
     design: SubjectDesign,
     contrasts: FloatArray,
     columns: FloatArray,
     correlation: Correlation,
 ) -> FloatArray:
-    """Half the mean squared difference between two visits, mean over both blocks of features of unit size.
+    """Half the mean squared difference between two visits, mean over the blocks of features of unit size.
 
     Visits that no subject has both of are NaN.
     """
     n_visits = int(design.visit.max()) + 1
     nuisance = _orthonormal(_moved_columns(contrasts, columns))
     total = np.zeros((n_visits, n_visits))
-    for side in (pair.x, pair.y):
+    for side in sides:
         step = -(-int(side.shape[1]) // TELLING)
         moments = np.zeros((design.n_samples, design.n_samples))
         for start in range(0, int(side.shape[1]), _SLICE * step):
@@ -373,16 +386,19 @@ def _variogram(
             values = values[:, np.isfinite(values).all(axis=0)]
             if correlation == "spearman":
                 values = rankdata(centred(design, values), axis=0)
-            rows = contrasts @ values
-            size = np.linalg.norm(rows, axis=0)
-            rows -= nuisance @ (nuisance.T @ rows)
-            length = np.linalg.norm(rows, axis=0)
-            rows = rows[:, length > CONSTANT_TOLERANCE * np.maximum(size, np.abs(values).max(axis=0))]
-            rows /= np.linalg.norm(rows, axis=0)
-            deviations = contrasts.T @ rows
+            deviations = contrasts.T @ _unit_columns(contrasts @ values, nuisance)
             moments += deviations @ deviations.T
         total += _pair_differences(moments, design, n_visits)
     return total
+
+
+def _unit_columns(rows: FloatArray, nuisance: FloatArray) -> FloatArray:
+    """Residuals of unit length; columns without variance left are taken out."""
+    rest = rows - nuisance @ (nuisance.T @ rows)
+    length = np.linalg.norm(rest, axis=0)
+    varies = length > 1e-8 * np.linalg.norm(rows, axis=0)
+    unit: FloatArray = rest[:, varies] / length[varies]
+    return unit
 
 
 def _pair_differences(moments: FloatArray, design: SubjectDesign, n_visits: int) -> FloatArray:
