@@ -35,12 +35,15 @@ class BlockComponents:
         Orthonormal scores of the real components, strongest first.
     shares : ndarray of shape (n_components,)
         Share of the block's variance, after the nuisance, of each.
+    dimensions : int
+        What the nuisance leaves of the samples' dimensions.
     """
 
     z: FloatArray
     kept: IndexArray
     scores: FloatArray
     shares: FloatArray
+    dimensions: int
 
     @property
     def loadings(self) -> FloatArray:
@@ -66,7 +69,7 @@ def block_components(values: FloatArray, nuisance: Nuisance, *, ranks: bool, see
     """
     z, kept = unit_residuals(values, nuisance, ranks=ranks)
     n, p = z.shape
-    nothing = BlockComponents(z, kept, np.empty((n, 0)), np.empty(0))
+    nothing = BlockComponents(z, kept, np.empty((n, 0)), np.empty(0), n - nuisance.rank)
     if n - nuisance.rank < FEWEST_DIMENSIONS or p < 2:
         return nothing
     basis = thin_basis(z)
@@ -75,7 +78,8 @@ def block_components(values: FloatArray, nuisance: Nuisance, *, ranks: bool, see
         eigenvalues = basis.lengths**2 / (n - 1)
         scores = scores[:, : parallel_analysis(z, eigenvalues, random_state=seed).number]
     scores = np.linalg.qr(nuisance.residuals(scores))[0] if scores.shape[1] else scores
-    return BlockComponents(z, kept, scores, np.sum((z.T @ scores) ** 2, axis=0) / p)
+    shares = np.sum((z.T @ scores) ** 2, axis=0) / p
+    return BlockComponents(z, kept, scores, shares, n - nuisance.rank)
 
 
 def unit_residuals(

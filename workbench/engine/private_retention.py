@@ -10,8 +10,25 @@ from workbench.engine.nuisance import Nuisance
 
 FloatArray = NDArray[np.float64]
 
-#: Chance, for a whole analysis, with which some private component passes for a shared one.
-RETENTION_LEVEL = 0.01
+#: Chance with which a private component of ``TYPICAL_SHARE`` of its block's variance passes for a shared one.
+RETENTION_LEVEL = 0.001
+TYPICAL_SHARE = 0.1
+#: The same chance at most, for a weak component.
+MOST_LENIENT = 0.1
+
+
+def retention_levels(shares: FloatArray) -> FloatArray:
+    """Level at which each component counts as shared: stricter for strong ones, as ``1 / share^2``.
+
+    Keeping a weak private component buries little, losing a shared one costs all its edges.
+
+    Examples
+    --------
+    >>> retention_levels(np.array([0.2, 0.1, 0.02, 0.001])).round(5)
+    array([0.00025, 0.001  , 0.025  , 0.1    ])
+    """
+    levels: FloatArray = np.minimum(RETENTION_LEVEL * (TYPICAL_SHARE / shares) ** 2, MOST_LENIENT)
+    return levels
 
 
 def retention_p(scores: FloatArray, z: FloatArray, components: FloatArray, nuisance: Nuisance) -> FloatArray:
@@ -43,11 +60,36 @@ def retention_p(scores: FloatArray, z: FloatArray, components: FloatArray, nuisa
     freedom = nuisance.n_samples - nuisance.rank
     tested = _unit(nuisance.residuals(scores))
     basis = np.linalg.qr(nuisance.residuals(components))[0] if components.shape[1] else components
-    by_components = _f_test(np.sum((basis.T @ tested) ** 2, axis=0), basis.shape[1], freedom)
+    products = basis.T @ tested
+    by_components = _f_test(np.sum(products**2, axis=0), basis.shape[1], freedom)
+    by_one = simes(correlation_p(products, freedom - 1))
     rest = nuisance.residuals(z)
     rest = _unit(rest - basis @ (basis.T @ rest))
     by_features = simes(correlation_p(rest.T @ tested, freedom - 1))
-    return np.minimum(1.0, 2.0 * np.minimum(by_components, by_features))
+    return together(np.stack([by_components, by_one, by_features]))
+
+
+def together(p: FloatArray) -> FloatArray:
+    """Cauchy combination of the rows of ``p``: good for small p whatever their dependence.
+
+    References
+    ----------
+    Liu & Xie 2020, Journal of the American Statistical Association 115:393.
+
+    Examples
+    --------
+    >>> together(np.array([[0.001], [0.5]])).round(4)
+    array([0.002])
+    """
+    inside = np.clip(p, 1e-300, 1.0 - 1e-3)
+    # tan((1/2 - p) pi) loses its digits at small p, where it is 1 / (p pi).
+    terms = np.where(inside < 1e-8, 1.0 / (inside * np.pi), np.tan((0.5 - inside) * np.pi))
+    mean = terms.mean(axis=0)
+    far = mean > 1e8
+    combined: FloatArray = np.where(
+        far, 1.0 / (np.where(far, mean, 1.0) * np.pi), 0.5 - np.arctan(mean) / np.pi
+    )
+    return combined
 
 
 def _f_test(explained: FloatArray, terms: int, freedom: int) -> FloatArray:

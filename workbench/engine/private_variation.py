@@ -4,8 +4,9 @@ Each block's real components are found from that block alone. A component that g
 layer is shared and stays; the others are regressed out of their own block. Removal that never looked at the
 other block costs no degrees of freedom: with the samples' rows independent and normal, the other block's
 feature has no preferred direction among the samples, so its correlation with any fixed vector follows the t law
-of ``n - c - 1``. The test that keeps shared components does look; over a whole analysis it keeps a private one
-with a chance of at most ``RETENTION_LEVEL``, which is what the look can add to the false-discovery rate.
+of ``n - c - 1``. The test that keeps shared components does look: it keeps a strong private one with a chance of
+about 1 in 1,000, which is what the look can add to the false-discovery rate. Weak components stay as they bury
+little.
 
 References
 ----------
@@ -28,7 +29,7 @@ from workbench.engine.private_components import (
     BlockComponents,
     block_components,
 )
-from workbench.engine.private_retention import RETENTION_LEVEL, retention_p
+from workbench.engine.private_retention import retention_levels, retention_p
 from workbench.engine.screen import BlockPair, BlockScreen, Correlation, Progress, screen_blocks
 from workbench.errors import NumericsError
 
@@ -36,6 +37,8 @@ FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
 
 LEADING = 10
+#: A component is removed when it takes at least so many times the share of a direction of pure noise.
+WORTH = 2.0
 
 
 @dataclass(frozen=True, eq=False)
@@ -73,6 +76,8 @@ class RealComponent:
         The block that it goes with best when it is shared (and stays); empty when it is private.
     p : float
         Smallest p of the tests against the blocks of other layers, times the number of tests.
+    weak : bool
+        Whether it takes less than ``WORTH`` times the share of a direction of pure noise: it stays.
     scores : ndarray of shape (n_samples,)
         Unit length; rows are those of the block.
     leading : ndarray of int
@@ -85,6 +90,7 @@ class RealComponent:
     share: float
     shared_with: str
     p: float
+    weak: bool
     scores: FloatArray
     leading: IndexArray
     loadings: FloatArray
@@ -92,7 +98,7 @@ class RealComponent:
     @property
     def removed(self) -> bool:
         """Whether it is private and was regressed out."""
-        return not self.shared_with
+        return not self.shared_with and not self.weak
 
 
 @dataclass(frozen=True, eq=False)
@@ -223,27 +229,28 @@ def _judge(
             tests[own][other] = retention_p(
                 found[own].scores[rows], found[other].z[others], found[other].scores[others], view.nuisance
             )
-    count = sum(p.size for by_block in tests for p in by_block.values())
-    return tuple(_described(blocks, own, by, count) for own, by in zip(found, tests, strict=True))
+    return tuple(_described(blocks, own, by) for own, by in zip(found, tests, strict=True))
 
 
 def _described(
-    blocks: Sequence[LayerBlock], own: BlockComponents, tests: dict[int, FloatArray], count: int
+    blocks: Sequence[LayerBlock], own: BlockComponents, tests: dict[int, FloatArray]
 ) -> tuple[RealComponent, ...]:
     others = list(tests)
     loadings = own.loadings
+    levels = retention_levels(own.shares)
     described = []
     for k in range(own.shares.size):
         p = np.array([tests[other][k] for other in others])
         best = int(p.argmin()) if p.size else -1
-        adjusted = min(1.0, float(p[best]) * count) if p.size else 1.0
+        adjusted = min(1.0, float(p[best]) * p.size) if p.size else 1.0
         leading = np.argsort(-np.abs(loadings[:, k]), kind="stable")[:LEADING]
         described.append(
             RealComponent(
                 k + 1,
                 float(own.shares[k]),
-                blocks[others[best]].name if adjusted <= RETENTION_LEVEL else "",
+                blocks[others[best]].name if adjusted <= levels[k] else "",
                 adjusted,
+                bool(own.shares[k] * own.dimensions < WORTH),
                 own.scores[:, k],
                 own.kept[leading],
                 loadings[leading, k],
