@@ -175,7 +175,7 @@ def test_columns_that_are_nearly_numbers_are_told(tmp_path):
     rows = [
         "sample,age,weight,site,dose",
         *(f'S{k},{40 + k},"{60 + k},5",Ulm,{k}' for k in range(5)),
-        "S5,unknown,,Ulm,6",
+        "S5,unknown,60.5,Ulm,6",
     ]
     sheet = read_sample_sheet(write(tmp_path, "s.csv", "\n".join(rows)))
     told = [note for note in sheet.notes if "counts as classes" in note]
@@ -190,3 +190,24 @@ def test_columns_that_are_nearly_numbers_are_told(tmp_path):
         "classes",
         "number",
     ]
+
+
+def test_decimal_commas_are_read_where_a_whole_column_agrees(tmp_path):
+    rows = [
+        "sample;bmi;dose;area;code;lot",
+        "S1;23,5;1,5;1.234,5;007;1,234",
+        "S2;NA;2;;1,5;2,345",
+        "S3;19,25;;9,0;2;3",
+    ]
+    sheet = read_sample_sheet(write(tmp_path, "s.csv", "\n".join(rows) + "\n"))
+    assert sheet.frame["bmi"].tolist()[::2] == ["23.5", "19.25"]
+    assert sheet.frame["dose"].tolist()[:2] == ["1.5", "2"]
+    assert sheet.frame["area"].tolist()[::2] == ["1234.5", "9"]
+    assert [column_kind(sheet.frame[name]) for name in ("bmi", "dose", "area")] == ["number"] * 3
+    assert (
+        "s.csv: column 'bmi' has decimal commas, as all its numbers agree: '23,5' is read as 23.5"
+        in sheet.notes
+    )
+    assert sheet.frame["code"].tolist() == ["007", "1,5", "2"]
+    assert sheet.frame["lot"].tolist() == ["1,234", "2,345", "3"]
+    assert any("'lot' has decimal commas or thousands separators" in note for note in sheet.notes)

@@ -14,9 +14,10 @@ from .columns import read_columns
 from .faults import Faults, counted, listed, shown
 from .ids import check_present, check_unique, id_notes, refuse_broken
 from .kinds import column_kind, present
+from .marks import PLAIN, MarkFinder, Marks
 from .raw import Cell, RawTable, WrongCell, cell_text
 from .suggest import Suggestions, suggest_columns
-from .tokens import is_comma_number, number_of
+from .tokens import is_comma_number, is_padded, number_of
 
 __all__ = ["SampleSheet", "Suggestions", "column_kind", "read_sample_sheet", "suggest_columns"]
 
@@ -47,7 +48,8 @@ def read_sample_sheet(
 
     Ids stay as they are written. Other cells lose blanks at their ends (told); cells that are empty, ``NA``,
     ``NaN``, ``nan``, ``N/A``, ``#N/A``, ``null`` or ``NULL`` are missing, ``-`` and ``.`` in columns of
-    numbers only.
+    numbers only. Numbers with decimal commas or thousands separators are written plainly (told) where all cells
+    of the column agree on one reading; else the column stays text (told).
 
     Parameters
     ----------
@@ -134,8 +136,40 @@ def _frame(
         _refuse_broken(raw, cells, j, name, ids)
         written = pd.Series([None if c is None else cell_text(c) for c in cells], index=index, dtype=object)
         data[name] = present(written).astype(object).reindex(index)
+        plain = _plainly_written(data[name])
+        if plain is not None:
+            notes.append(f"{raw.path.name}: column {shown(name)} {_rewritten(data[name], plain)}")
+            data[name] = plain
         notes += _column_notes(raw.path.name, name, written, data[name])
     return pd.DataFrame(data, index=index)
+
+
+def _marks_of(column: pd.Series) -> Marks:
+    """Return how the numbers of a column are written; plainly, where they are not all numbers or disagree."""
+    cells = list(dict.fromkeys(column.dropna()))
+    if not any(map(is_comma_number, cells)):
+        return PLAIN
+    if any(is_padded(cell) or not (is_comma_number(cell) or number_of(cell) is not None) for cell in cells):
+        return PLAIN
+    finder = MarkFinder()
+    finder.look(cells)
+    return finder.marks() or PLAIN
+
+
+def _plainly_written(column: pd.Series) -> pd.Series | None:
+    """Return a column with its numbers as ``1234.5``; None when they are so already, or cannot be read for sure."""
+    marks = _marks_of(column)
+    if marks.plain:
+        return None
+    numbers = {cell: marks.number(cell) for cell in column.dropna()}
+    plain = {cell: f"{number:.15g}" for cell, number in numbers.items() if number is not None}
+    return column.map(plain).astype(object) if len(plain) == len(numbers) else None
+
+
+def _rewritten(written: pd.Series, plain: pd.Series) -> str:
+    first = next(sample for sample in written.index if is_comma_number(str(written[sample])))
+    told = _marks_of(written).told()
+    return f"has {told}, as all its numbers agree: {shown(written[first])} is read as {plain[first]}"
 
 
 def _refuse_broken(raw: RawTable, cells: Sequence[Cell], j: int, name: str, ids: Sequence[str]) -> None:

@@ -7,7 +7,7 @@ from workbench.settings.edit import remove_block as remove_block_text
 from workbench.settings.edit import set_samples as set_samples_text
 from workbench.settings.layers import LAYERS, layer_fault
 from workbench.settings.load import load_settings, parse_settings, read_settings_text
-from workbench.settings.names import check_name, hint, name_fault
+from workbench.settings.names import check_name, hint, name_fault, nearest
 from workbench.settings.prepare_keys import PrepareKey, prepare_keys, toml_text
 from workbench.settings.prepare_schema import PrepareSettings, prepare_settings
 from workbench.settings.salvage import independent as independent_faults
@@ -47,6 +47,7 @@ __all__ = [
     "layer_fault",
     "load_settings",
     "name_fault",
+    "nearest",
     "new_project_text",
     "parse_settings",
     "prepare_keys",

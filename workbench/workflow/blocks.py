@@ -8,9 +8,18 @@ from pathlib import Path
 from typing import Any
 
 import tomlkit
+from anndata import AnnData
 
 from workbench.errors import InputError
-from workbench.intake import build_block, difference, names_table, offered_names, run_columns
+from workbench.intake import (
+    build_block,
+    difference,
+    missing_samples,
+    names_table,
+    offered_names,
+    run_columns,
+    with_run_columns,
+)
 from workbench.settings import (
     LAYERS,
     VALUES,
@@ -21,6 +30,7 @@ from workbench.settings import (
     hint,
     layer_fault,
     name_fault,
+    nearest,
     parse_settings,
     read_settings_text,
     remove_block_text,
@@ -33,6 +43,7 @@ from workbench.workflow.state import ProjectState, load_state
 from workbench.workflow.tables import measured_block
 
 OF_THE_TABLE = ("own_layer", "samples_in", "sheet", "array", "decimal", "names", "annotations", "runs")
+NAMED = 6
 Tell = Callable[[Sequence[str]], None]
 
 
@@ -135,7 +146,16 @@ def _take_in(state: ProjectState, change: Change, delivery: Delivery, tell: Tell
     stage = reading_stage(name)
     change.record_stage(stage.name, StageRecord(inputs=inputs, outputs=stage.outputs))
     change.commit({"command": "add-block", "block": name, "replaced": delivery.replace, "sources": sources})
-    return (*build.decisions, *_own_layer_line(final))
+    return (*build.decisions, *_own_layer_line(final), *_empty_adjust(state, build.adata, final))
+
+
+def _empty_adjust(state: ProjectState, adata: AnnData, block: BlockSettings) -> list[str]:
+    """Return a sentence for each nuisance column of the block that is empty for a sample which is not left out."""
+    known = with_run_columns(adata)
+    lacking = missing_samples(known, [column for column in block.adjust if column in known])
+    without = {*state.settings.samples.exclude, *block.exclude}
+    kept = {column: [name for name in names if name not in without] for column, names in lacking.items()}
+    return [empty_cells_line(column, "adjust", names) for column, names in kept.items() if names]
 
 
 def _own_layer_line(block: BlockSettings) -> tuple[str, ...]:
@@ -189,9 +209,26 @@ def require_columns(wanted: list[str] | tuple[str, ...], known: list[str], where
     lacking = [column for column in wanted if column not in known]
     if lacking:
         raise InputError(
-            f"{where}: no column {', '.join(map(repr, lacking))} in the sample sheet; it has "
-            f"{', '.join(map(repr, known))}"
+            f"{where}: no column {', '.join(repr(column) + _meant(column, known) for column in lacking)} in the "
+            f"sample sheet; it has {', '.join(map(repr, known))}"
         )
+
+
+def _meant(column: str, known: list[str]) -> str:
+    guess = nearest(column, known)
+    return "" if guess is None else f" (did you mean {guess!r}?)"
+
+
+def empty_cells_line(column: str, part: str, samples: list[str]) -> str:
+    """Return the sentence on a column of the design whose cells are empty for some samples."""
+    names = ", ".join(map(repr, samples[:NAMED])) + (
+        f" and {len(samples) - NAMED} more" * (len(samples) > NAMED)
+    )
+    return (
+        f"column '{column}' ({part}) is empty for {len(samples)} sample{'s' * (len(samples) > 1)}: {names}; such a "
+        "sample takes no part in an analysis: fill the cell in samples.tsv, or leave the sample out with the reason "
+        "(exclude)"
+    )
 
 
 def _keep(

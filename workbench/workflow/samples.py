@@ -8,10 +8,24 @@ from pathlib import Path
 import pandas as pd
 
 from workbench.errors import InputError, SettingsError
-from workbench.intake import Suggestions, column_kind, read_sample_sheet, sheet_difference, suggest_columns
-from workbench.settings import cross_check, parse_settings, read_settings_text, set_samples_text
+from workbench.intake import (
+    Suggestions,
+    column_kind,
+    missing_samples,
+    read_sample_sheet,
+    sheet_difference,
+    suggest_columns,
+)
+from workbench.settings import (
+    SamplesSettings,
+    cross_check,
+    load_settings,
+    parse_settings,
+    read_settings_text,
+    set_samples_text,
+)
 from workbench.store import Change, ProjectPaths, project_lock, table_bytes
-from workbench.workflow.blocks import Tell, no_words, require_columns
+from workbench.workflow.blocks import Tell, empty_cells_line, no_words, require_columns
 from workbench.workflow.sources import delivered_file, keep_source
 from workbench.workflow.state import load_state
 
@@ -57,12 +71,10 @@ def add_samples(paths: ProjectPaths, delivery: SheetDelivery, tell: Tell = no_wo
     """
     delivered_file(delivery.file)
     with project_lock(paths.root, "add-samples"):
-        old = load_state(paths).sheet
+        old = _old_sheet(paths, delivery.replace)
         _require_fitting(paths, old, delivery)
         sheet = read_sample_sheet(delivery.file, id_column=delivery.id)
         frame = sheet.frame
-        if old is not None:
-            tell(sheet_difference(old, frame).lines())
         require_columns(delivery.columns, list(frame.columns), delivery.file)
         kinds = unclear_kinds(frame, delivery.adjust)
         text = set_samples_text(
@@ -74,9 +86,12 @@ def add_samples(paths: ProjectPaths, delivery: SheetDelivery, tell: Tell = no_wo
             adjust=list(delivery.adjust),
             kinds=kinds,
         )
-        faults = cross_check(parse_settings(text, paths.settings), frame, paths.root)
+        settings = parse_settings(text, paths.settings)
+        faults = cross_check(settings, frame, paths.root)
         if faults:
             raise SettingsError(faults)
+        if old is not None:
+            tell(sheet_difference(old, frame).lines())
         with Change(paths.root) as change:
             file, digest = keep_source(change, paths, delivery.file)
             change.write_bytes("samples.tsv", table_bytes(frame.reset_index()))
@@ -84,7 +99,36 @@ def add_samples(paths: ProjectPaths, delivery: SheetDelivery, tell: Tell = no_wo
             sources = [{"file": file, "sha256": digest, "delivered_as": delivery.file.name}]
             change.commit({"command": "add-samples", "sources": sources})
     unnamed = not delivery.columns
-    return SheetAccount(len(frame), sheet.notes, kinds, suggest_columns(frame) if unnamed else None)
+    notes = (*sheet.notes, *empty_cells(frame, settings.samples))
+    return SheetAccount(len(frame), notes, kinds, suggest_columns(frame) if unnamed else None)
+
+
+def _old_sheet(paths: ProjectPaths, replace: bool) -> pd.DataFrame | None:
+    """Return the sheet that is there; one that does not fit the settings may be replaced all the same."""
+    try:
+        return load_state(paths).sheet
+    except SettingsError:
+        if not replace or not paths.samples.exists():
+            raise
+        load_settings(paths.settings)
+        return read_sample_sheet(paths.samples).frame
+
+
+def empty_cells(frame: pd.DataFrame, samples: SamplesSettings) -> tuple[str, ...]:
+    """Return a sentence for each column of the design that says nothing of a sample which is not left out."""
+    parts = {
+        "group": samples.group,
+        "adjust": samples.adjust,
+        "subject": [samples.subject] if samples.subject else [],
+        "time": [samples.time] if samples.time else [],
+    }
+    told = []
+    for part, columns in parts.items():
+        for column, names in missing_samples(frame, list(columns)).items():
+            lacking = [name for name in names if name not in samples.exclude]
+            if lacking:
+                told.append(empty_cells_line(column, part, lacking))
+    return tuple(told)
 
 
 def _require_fitting(paths: ProjectPaths, old: pd.DataFrame | None, delivery: SheetDelivery) -> None:
