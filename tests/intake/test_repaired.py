@@ -27,6 +27,18 @@ REPAIRED = {
         [[1.5, -0.25], [2, 1500]],
         ["written with decimal commas"],
     ),
+    "a title that holds what parts the fields": (
+        "Table S2, raw areas, peak picking of May\nid,S1,S2,S3,note 1,note 2\ng1,1,2,3,4,5\ng2,4,5,6,7,8\n",
+        {},
+        [[1, 4], [2, 5], [3, 6]],
+        ["1 line before the header left out: 'Table S2, raw areas, peak picking of May'"],
+    ),
+    "a title longer than the table": (
+        "Areas of run 3, by mode, by day, by plate, raw\nid,S1,S2\ng1,1,2\ng2,4,5\n",
+        {},
+        [[1, 4], [2, 5]],
+        ["1 line before the header left out"],
+    ),
     "decimal commas parted by tabs": (tabbed(HEAD, "g1 1,5 2,25 3"), {}, [[1.5], [2.25], [3]], ["commas"]),
     "decimal commas with points for thousands": (
         tabbed(HEAD, "g1 1.234.567,8 1,5 3"),

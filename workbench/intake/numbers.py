@@ -13,16 +13,15 @@ import numpy as np
 
 from workbench.errors import InputError
 
-from .faults import LISTED_FAULTS, Faults, counted, listed, shown
+from .faults import Faults, counted, listed, shown
 from .marks import PLAIN, MarkFinder, Marks
 from .part import Part, WrongCells
 from .quick import quick_numbers
-from .raw import ArrayBody, Cell, TextBody, WrongCell, cell_text
+from .raw import ArrayBody, Cell, TextBody, WrongCell
 from .tokens import MISSING, is_comma_number, is_under_limit
 
 _NAN = float("nan")
 _BLOCK = 256
-_CELLS_AT_ONCE = 2**18
 _MOST_SEEN = 50_000
 
 
@@ -268,65 +267,3 @@ def writing_notes(
             f"{name}: {cells} of {features} under a limit or not detected ({listed(tokens, 3)}): counted as missing"
         )
     return notes
-
-
-def check_range(part: Part, values: np.ndarray, kind: str) -> list[str]:
-    """Refuse infinities, and negative or fractional counts; return notes about what is odd but allowed.
-
-    Raises
-    ------
-    InputError
-        With the place, feature and sample of five cells.
-    """
-    _refuse(part, values, np.isinf, "infinite", "leave such cells empty (missing), or mend what made them")
-    if kind == "counts":
-        other = "choose other values for this block (intensities, log, continuous) when it holds no counts"
-        _refuse(part, values, _negative, "negative, though the values are counts", other)
-        round_first = f"round estimated counts first; {other}"
-        _refuse(part, values, _fractions, "not whole, though the values are counts", round_first)
-    if kind == "proportions":
-        other = "parts of a whole are 0 or more; log-ratios are values `log` or `continuous`"
-        _refuse(part, values, _negative, "negative, though the values are proportions", other)
-    if kind == "beta":
-        other = "divide percentages by 100; M-values are values `log`"
-        _refuse(part, values, _no_share, "outside 0 to 1, though the values are beta", other)
-    negative = _count(values, _negative) if kind == "intensities" else 0
-    if not negative:
-        return []
-    return [f"{part.raw.path.name}: {counted(negative, 'intensity is', 'intensities are')} negative"]
-
-
-def _negative(values: np.ndarray) -> np.ndarray:
-    found: np.ndarray = values < 0
-    return found
-
-
-def _no_share(values: np.ndarray) -> np.ndarray:
-    found: np.ndarray = (values < 0) | (values > 1)
-    return found
-
-
-def _fractions(values: np.ndarray) -> np.ndarray:
-    found: np.ndarray = (values != np.rint(values)) & (values == values)
-    return found
-
-
-def _count(values: np.ndarray, fault: Callable[[np.ndarray], np.ndarray]) -> int:
-    """Return how many values have a fault, looked at in pieces, so that no second table stands in memory."""
-    stored = values if values.flags.c_contiguous else values.T
-    step = max(1, _CELLS_AT_ONCE // max(1, stored.shape[1]))
-    pieces = range(0, len(stored), step)
-    return sum(int(np.count_nonzero(fault(stored[start : start + step]))) for start in pieces)
-
-
-def _refuse(
-    part: Part, values: np.ndarray, fault: Callable[[np.ndarray], np.ndarray], what: str, way_out: str
-) -> None:
-    total = _count(values, fault)
-    if not total:
-        return
-    faults = Faults(part.raw.path, total=total)
-    for k, m in np.argwhere(fault(values))[:LISTED_FAULTS]:
-        i, j = part.rows[k], part.columns[m]
-        faults.kept.append(f"{part.named_place(i, j)}: {shown(cell_text(part.cell(i, j)))}")
-    raise faults.error(f"{counted(total, 'cell is', 'cells are')} {what}", way_out)

@@ -50,6 +50,12 @@ class Part:
         """Return the feature of a cell of the body."""
         return self.raw.columns[j] if self.samples_in == "rows" else self.raw.rows[i]
 
+    def sample_names(self) -> list[str]:
+        """Return the ids of the samples that are read, in file order."""
+        if self.samples_in == "rows":
+            return [self.raw.rows[i] for i in self.rows]
+        return [self.raw.columns[j] for j in self.columns]
+
     def cell(self, i: int, j: int) -> Cell:
         """Return one cell of the body."""
         return self.raw.body.row(i)[j]

@@ -16,12 +16,14 @@ from .faults import counted, shown
 from .ids import check_no_dates, check_present, check_unique, id_notes, refuse_broken
 from .mixed import read_mixed
 from .names import SAMPLES, Words
-from .numbers import Numbers, check_range, read_numbers
+from .numbers import Numbers, read_numbers
 from .orientation import Matching, match_samples, near_names
 from .part import Part
+from .ranges import check_range
 from .raw import HEADER, RawTable
 from .readers import read_delivered
 
+_ONE_DIGIT = 0.95
 VALUES = ("counts", "intensities", "log", "proportions", "beta", "continuous", "mixed")
 
 
@@ -225,4 +227,5 @@ def _missing_note(raw: RawTable, numbers: np.ndarray) -> list[str]:
     if not missing:
         return []
     share = 100 * missing / numbers.size
-    return [f"{raw.path.name}: {counted(missing, 'cell')} of {numbers.size:,} ({share:.1f} %) missing"]
+    told = f"{share:.1f}" if share >= _ONE_DIGIT else f"{share:.1g}"
+    return [f"{raw.path.name}: {counted(missing, 'cell')} of {numbers.size:,} ({told} %) missing"]

@@ -29,7 +29,10 @@ def rows_above(rows: Sequence[Sequence[str]], width: int) -> int:
     - is empty, or holds one filled field (a title, not a word such as ``sample`` or ``id``), or
     - holds two, the first of which ends with a colon (``Operator:``), or
     - is as wide as the table, with an empty first field and at most half of the others filled (names over
-      groups of columns).
+      groups of columns), or
+    - is a text that happens to hold what parts the fields: narrower than the table by two fields or more, or
+      wider, with blanks within or before its fields (``Table S2, raw areas``), and no word such as ``sample``
+      or ``id`` alone in the first of them.
 
     A row that is none of these, and as wide as the table, is judged as the header that it should be; where
     nothing fits, the first row is.
@@ -38,6 +41,8 @@ def rows_above(rows: Sequence[Sequence[str]], width: int) -> int:
     1
     >>> rows_above([["id", "", ""], ["g1", "1", "2"]], 3)
     0
+    >>> rows_above([["Table S2", " raw areas"], ["id", "S1", "S2", "S3"], ["g1", "1", "2", "3"]], 4)
+    1
     """
     if width < _LEAST_WIDTH:
         return 0
@@ -98,11 +103,21 @@ def _mostly_numbers(row: Sequence[str]) -> bool:
     return 2 * numbers > len(row) - 1
 
 
+def _is_prose(row: Sequence[str]) -> bool:
+    """Whether a row reads like a sentence that was cut at its commas."""
+    first = row[0].strip()
+    if not first or first.casefold() in ID_WORDS or _mostly_numbers(row):
+        return False
+    return " " in first or any(field.startswith(" ") and field.strip() for field in row[1:])
+
+
 def _is_above(row: Sequence[str], width: int) -> bool:
     filled = [field.strip() for field in row if field.strip()]
     if len(filled) <= 1:
         return len(row) in (0, 1, width) and not ID_WORDS.intersection(map(str.casefold, filled))
     if len(filled) == 2 and filled[0].endswith(":"):
+        return True
+    if len(row) not in (width - 1, width) and _is_prose(row):
         return True
     over_groups = not row[0].strip() and 2 * len(filled) <= width - 1
     return over_groups and len(row) == width
