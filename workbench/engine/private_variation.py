@@ -30,6 +30,7 @@ from workbench.engine.private_components import (
     block_components,
 )
 from workbench.engine.private_retention import retention_levels, retention_p
+from workbench.engine.private_untangling import untangled
 from workbench.engine.screen import BlockPair, BlockScreen, Correlation, Progress, screen_blocks
 from workbench.errors import NumericsError
 
@@ -163,9 +164,10 @@ def screen_without_private(
     found = tuple(_own_components(block, ranks, seed) for block in blocks)
     views = tuple(_shared_rows(blocks[a], blocks[b]) for a, b in pairs)
     components = _judge(blocks, found, views, pairs)
+    directions = [_directions(own, told) for own, told in zip(found, components, strict=True)]
     off = tuple(_reason(view, blocks[a], blocks[b]) for view, (a, b) in zip(views, pairs, strict=True))
     tested = tuple(
-        _pair(blocks, components, view, pair, bool(reason), ranks)
+        _pair(blocks, directions, view, pair, bool(reason), ranks)
         for view, pair, reason in zip(views, pairs, off, strict=True)
     )
     screen = screen_blocks(
@@ -259,9 +261,15 @@ def _described(
     return tuple(described)
 
 
+def _directions(own: BlockComponents, told: Sequence[RealComponent]) -> FloatArray:
+    """Return what is regressed out of a block."""
+    removed = np.array([one.removed for one in told], dtype=bool)
+    return untangled(own.z, own.scores[:, removed], own.scores[:, ~removed], own.dimensions)
+
+
 def _pair(
     blocks: Sequence[LayerBlock],
-    components: Sequence[Sequence[RealComponent]],
+    directions: Sequence[FloatArray],
     view: _View,
     pair: tuple[int, int],
     off: bool,
@@ -270,8 +278,8 @@ def _pair(
     """Return the two blocks on the samples that they share, with what is removed from each."""
     sides = []
     for place, rows in zip(pair, (view.x_rows, view.y_rows), strict=True):
-        scores = [one.scores[rows] for one in components[place] if one.removed and not off]
-        own = Nuisance.of(np.column_stack([view.columns, *scores]), rows.size)
+        taken = directions[place][rows] if not off else np.empty((rows.size, 0))
+        own = Nuisance.of(np.column_stack([view.columns, taken]), rows.size)
         values = blocks[place].values[rows]
         sides.append((values if ranks else _cleaned(values, own), own))
     (x, x_own), (y, y_own) = sides
