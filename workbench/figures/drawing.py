@@ -40,7 +40,7 @@ class Drawing:
 def draw_look(look: BlockLook) -> tuple[Drawing, ...]:
     """Draw all figures of one block; those that the block has too few components for are left out."""
     with figure_style():
-        return tuple(map(_settled, _drawings(look)))
+        return tuple(map(settled, _drawings(look)))
 
 
 def draw_between(look: BetweenLook) -> tuple[Drawing, ...]:
@@ -49,9 +49,9 @@ def draw_between(look: BetweenLook) -> tuple[Drawing, ...]:
         return ()
     with figure_style():
         side = min(TWO_COLUMNS, max(ONE_COLUMN, 1.6 + 0.45 * len(look.blocks)))
-        figure = _figure(side, side)
+        figure = sized_figure(side, side)
         agreement_map(look, figure.add_subplot())
-        return (_settled(Drawing("agreement", figure, captions.agreement_caption(look))),)
+        return (settled(Drawing("agreement", figure, captions.agreement_caption(look))),)
 
 
 def figure_files(drawings: tuple[Drawing, ...]) -> Iterator[tuple[str, bytes]]:
@@ -79,7 +79,7 @@ def figure_bytes(drawing: Drawing, ending: Literal["svg", "png"]) -> bytes:
     return file.getvalue()
 
 
-def _settled(drawing: Drawing) -> Drawing:
+def settled(drawing: Drawing) -> Drawing:
     """Lay the figure out once, so that every format gets the same places."""
     if drawing.figure.get_layout_engine() is not None:
         drawing.figure.draw_without_rendering()
@@ -87,7 +87,8 @@ def _settled(drawing: Drawing) -> Drawing:
     return drawing
 
 
-def _figure(width: float, height: float, constrained: bool = True) -> Figure:
+def sized_figure(width: float, height: float, constrained: bool = True) -> Figure:
+    """Return an empty figure of a size in inches."""
     figure = Figure(figsize=(width, height), layout="constrained" if constrained else None)
     FigureCanvasAgg(figure)
     return figure
@@ -117,7 +118,7 @@ def _drawings(look: BlockLook) -> Iterator[Drawing]:
 
 
 def _explained(look: BlockLook) -> Figure:
-    figure = _figure(TWO_COLUMNS, 2.5)
+    figure = sized_figure(TWO_COLUMNS, 2.5)
     left, right = figure.subplots(1, 2)
     explained_variance(look, left)
     cumulative_variance(look, right)
@@ -132,7 +133,7 @@ def _square(look: BlockLook, draw: Callable[[Axes], Axes], legend: bool) -> Figu
     rows = -(-entries // 3)
     under = 0.5 + (0.2 + 0.16 * rows if rows else 0.0)
     height = ONE_COLUMN - 0.62 + under + 0.1
-    figure = _figure(ONE_COLUMN, height, constrained=False)
+    figure = sized_figure(ONE_COLUMN, height, constrained=False)
     side = ONE_COLUMN - 0.62
     axes = figure.add_axes((0.54 / ONE_COLUMN, under / height, side / ONE_COLUMN, side / height))
     draw(axes)
@@ -151,7 +152,7 @@ def _square(look: BlockLook, draw: Callable[[Axes], Axes], legend: bool) -> Figu
 
 def _loadings(look: BlockLook) -> Figure:
     count = min(LOADINGS_DRAWN, look.scores.shape[1])
-    figure = _figure(TWO_COLUMNS, 2.2 * -(-count // 2))
+    figure = sized_figure(TWO_COLUMNS, 2.2 * -(-count // 2))
     grid = figure.subplots(-(-count // 2), 2, squeeze=False)
     for k, axes in enumerate(grid.flat, start=1):
         if k <= count:
@@ -163,7 +164,7 @@ def _loadings(look: BlockLook) -> Figure:
 
 def _association(look: BlockLook) -> Figure:
     rows = max(3, min(24, sum(not why for why in look.association.untestable)))
-    figure = _figure(TWO_COLUMNS, 0.75 + 0.22 * rows)
+    figure = sized_figure(TWO_COLUMNS, 0.75 + 0.22 * rows)
     axes = association_map(look, figure.add_subplot())
     if axes.images:
         figure.colorbar(axes.images[0], ax=axes, label="R2", aspect=12, pad=0.01).outline.set_visible(False)
@@ -171,13 +172,13 @@ def _association(look: BlockLook) -> Figure:
 
 
 def _outliers(look: BlockLook) -> Figure:
-    figure = _figure(ONE_COLUMN, 3.2, constrained=False)
+    figure = sized_figure(ONE_COLUMN, 3.2, constrained=False)
     outlier_map(look, figure.add_axes((0.15, 0.14, 0.82, 0.78)))
     return figure
 
 
 def _gaps(look: BlockLook) -> Figure:
-    figure = _figure(TWO_COLUMNS, 3.4)
+    figure = sized_figure(TWO_COLUMNS, 3.4)
     left, right = figure.subplots(1, 2, width_ratios=(3, 2))
     gap_figure(look, left)
     gaps_by_abundance(look, right)
@@ -186,7 +187,7 @@ def _gaps(look: BlockLook) -> Figure:
 
 def _spread(look: BlockLook) -> Figure:
     measured = look.distributions.measured is not None
-    figure = _figure(TWO_COLUMNS, 4.2 if measured else 2.3)
+    figure = sized_figure(TWO_COLUMNS, 4.2 if measured else 2.3)
     panels = ("measured", "prepared") if measured else ("prepared",)
     for axes, which in zip(figure.subplots(len(panels), 1, squeeze=False)[:, 0], panels, strict=True):
         spread_plot(look, axes, which)

@@ -7,6 +7,7 @@ from matplotlib.axes import Axes
 from matplotlib.colors import LinearSegmentedColormap
 from numpy.typing import NDArray
 
+from workbench.figures.marks import Marked
 from workbench.figures.style import COLOURS, INK, figure_name, note, plain_ticks
 from workbench.look.block import BlockLook
 
@@ -16,7 +17,7 @@ ALL_NAMED = 40
 GAPS = LinearSegmentedColormap.from_list("white to black", ["#FFFFFF", "#B5B5B5", "#000000"])
 
 
-def sample_order(look: BlockLook) -> NDArray[np.intp]:
+def sample_order(look: Marked) -> NDArray[np.intp]:
     """Order of the samples in figures: by group, within a group as they come."""
     codes = np.zeros(len(look.samples)) if look.groups is None else np.array(look.groups.codes)
     return np.argsort(codes, kind="stable")
@@ -50,7 +51,7 @@ def _sample_axis(look: BlockLook) -> str:
     return "samples: " + ", then ".join(figure_name(level, 12) for level in look.groups.levels[:3])
 
 
-def _sample_ticks(look: BlockLook, axes: Axes, order: NDArray[np.intp], which: str) -> None:
+def _sample_ticks(look: Marked, axes: Axes, order: NDArray[np.intp], which: str) -> None:
     """Name the samples where they are few, else the groups; lines part the groups."""
     codes = np.zeros(order.size, dtype=int) if look.groups is None else np.array(look.groups.codes)[order]
     starts = np.flatnonzero(np.diff(codes, prepend=codes[0] - 1))
@@ -95,6 +96,14 @@ def spread_plot(look: BlockLook, axes: Axes, which: str) -> Axes:
     quantiles = found.measured if which == "measured" else found.prepared
     if quantiles is None:
         return note(axes, "no measured values were given")
+    draw_spread(look, axes, quantiles)
+    axes.set_title(f"{which} values")
+    axes.set_ylabel(found.scale if which == "measured" else "prepared value")
+    return axes
+
+
+def draw_spread(look: Marked, axes: Axes, quantiles: FloatArray) -> None:
+    """Draw every sample's quantiles (5, 25, 50, 75, 95 %), samples by group."""
     order = sample_order(look)
     low, first, middle, third, high = quantiles[order].T
     at = np.arange(order.size)
@@ -104,6 +113,3 @@ def spread_plot(look: BlockLook, axes: Axes, which: str) -> Axes:
     axes.plot(at, middle, linestyle="none", marker="_", markersize=max(1.5, wide), color=INK, zorder=3)
     axes.set_xlim(-1.0, order.size)
     _sample_ticks(look, axes, order, "x")
-    axes.set_title(f"{which} values")
-    axes.set_ylabel(found.scale if which == "measured" else "prepared value")
-    return axes

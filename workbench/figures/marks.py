@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Any
+from typing import Any, Protocol
 
 import numpy as np
 from matplotlib.axes import Axes
@@ -11,7 +11,7 @@ from matplotlib.lines import Line2D
 from numpy.typing import NDArray
 
 from workbench.figures.style import COLOURS, GUIDE, INK, LINES, MARKS, figure_name
-from workbench.look.block import BlockLook
+from workbench.look.view import Levels
 
 FloatArray = NDArray[np.float64]
 
@@ -20,12 +20,32 @@ NO_GROUPS = NO_SHAPES = -2
 PALENESS = 0.6
 
 
-def draw_samples(look: BlockLook, axes: Axes, points: FloatArray, size: float, **style: Any) -> None:
+class Marked(Protocol):
+    """Samples that are told apart by group, and by a second column."""
+
+    @property
+    def samples(self) -> tuple[str, ...]:
+        """Their names."""
+        ...
+
+    @property
+    def groups(self) -> Levels | None:
+        """What colours them."""
+        ...
+
+    @property
+    def shapes(self) -> Levels | None:
+        """What shapes their marks."""
+        ...
+
+
+def draw_samples(look: Marked, axes: Axes, points: FloatArray, size: float, **style: Any) -> None:
     """Draw one mark per sample; half the size where there are more than 120.
 
     Parameters
     ----------
-    look : BlockLook
+    look : Marked
+        Such as a look at a block.
     axes : Axes
     points : ndarray of shape (n_samples, 2)
     size : float
@@ -47,7 +67,7 @@ def draw_samples(look: BlockLook, axes: Axes, points: FloatArray, size: float, *
         )
 
 
-def _marks(look: BlockLook) -> list[tuple[NDArray[np.intp], str, str, str]]:
+def _marks(look: Marked) -> list[tuple[NDArray[np.intp], str, str, str]]:
     """Return the samples of each group and shape, with their colour, mark and filling.
 
     Without a shaping column each group has a mark of its own; with one, groups are filled, hollow or pale in
@@ -97,7 +117,7 @@ def _filling(group: int) -> str:
     return to_hex((red, green, blue))
 
 
-def sample_legend(look: BlockLook, axes: Axes, **where: Any) -> Axes:
+def sample_legend(look: Marked, axes: Axes, **where: Any) -> Axes:
     """Add the legend of the score plots: colours and lines of groups, marks of the shaping column."""
     handles = _group_handles(look) + _shape_handles(look)
     if handles:
@@ -108,12 +128,12 @@ def sample_legend(look: BlockLook, axes: Axes, **where: Any) -> Axes:
     return axes
 
 
-def _legend_title(look: BlockLook) -> str:
+def _legend_title(look: Marked) -> str:
     parts = [("colour", look.groups), ("mark", look.shapes)]
     return ", ".join(f"{what}: {figure_name(levels.name)}" for what, levels in parts if levels is not None)
 
 
-def _group_handles(look: BlockLook) -> list[Line2D]:
+def _group_handles(look: Marked) -> list[Line2D]:
     if look.groups is None:
         return []
     handles = [_group_handle(look, i, level) for i, level in enumerate(look.groups.levels)]
@@ -122,13 +142,13 @@ def _group_handles(look: BlockLook) -> list[Line2D]:
     return handles
 
 
-def _group_handle(look: BlockLook, group: int, level: str) -> Line2D:
+def _group_handle(look: Marked, group: int, level: str) -> Line2D:
     shaped = look.shapes is not None
     face = _filling(group) if shaped else colour_of(group)
     return _handle(level, colour_of(group), "o" if shaped else _mark(group), face, line_of(group))
 
 
-def _shape_handles(look: BlockLook) -> list[Line2D]:
+def _shape_handles(look: Marked) -> list[Line2D]:
     if look.shapes is None:
         return []
     handles = [_handle(level, INK, _shape(i), INK, "none") for i, level in enumerate(look.shapes.levels)]

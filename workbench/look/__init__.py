@@ -2,6 +2,7 @@
 
 from workbench.look.between import BetweenLook, PairLook, Restriction, between_reading, look_between
 from workbench.look.block import BlockLook, SampleFlag, look_at_block
+from workbench.look.preparation import PreparationLook, look_at_preparation, preparation_tables
 from workbench.look.reading import block_reading
 from workbench.look.tables import between_table, look_tables
 from workbench.look.view import BlockView, Levels, levels_of
@@ -12,6 +13,7 @@ __all__ = [
     "BlockView",
     "Levels",
     "PairLook",
+    "PreparationLook",
     "Restriction",
     "SampleFlag",
     "between_reading",
@@ -19,6 +21,8 @@ __all__ = [
     "block_reading",
     "levels_of",
     "look_at_block",
+    "look_at_preparation",
     "look_between",
     "look_tables",
+    "preparation_tables",
 ]

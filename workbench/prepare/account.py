@@ -91,12 +91,7 @@ def _labelled(step: StepAccount, block: str) -> list[tuple[str, str]]:
     if step.sentence != step.rule:
         told.append(("here", step.sentence))
     if step.numbers:
-        told.append(
-            (
-                "numbers",
-                "; ".join(f"{name.replace('_', ' ')} {_figure(x)}" for name, x in step.numbers.items()),
-            )
-        )
+        told.append(("numbers", figures_of(step)))
     if step.dropped:
         told.append(("dropped", _dropped(step.dropped)))
     told += [("caution", caution) for caution in step.cautions]
@@ -105,6 +100,11 @@ def _labelled(step: StepAccount, block: str) -> list[tuple[str, str]]:
     if step.change:
         told.append(("change", f"[blocks.{block}.prepare] {step.change}"))
     return told
+
+
+def figures_of(step: StepAccount) -> str:
+    """Return the numbers of a step in words."""
+    return "; ".join(f"{name.replace('_', ' ')} {_figure(value)}" for name, value in step.numbers.items())
 
 
 def _figure(value: float | int | str) -> str:

@@ -15,6 +15,7 @@ from workbench.prepare.tables import Matrix, StepAccount, StepTable
 LARGEST_SCATTER = 0.3
 FEWEST_FOR_SCATTER = 4
 BLANK_RATIO = 3.0
+MOST_DROPPED = 0.5
 
 
 @dataclass(frozen=True)
@@ -65,13 +66,20 @@ class PoolScatter(Settled):
         if judged.size:
             numbers["median_scatter"] = float(np.median(judged))
         return _with_numbers(
-            keep_features(self.step, self._condition, table, ~wide, reasons), numbers, self._caution(judged)
+            keep_features(self.step, self._condition, table, ~wide, reasons), numbers, self._cautions(judged)
         )
 
-    def _caution(self, judged: Matrix) -> tuple[str, ...]:
-        if judged.size:
+    def _cautions(self, judged: Matrix) -> tuple[str, ...]:
+        if not judged.size:
+            return (f"pool scatter not judged: no feature is in {FEWEST_FOR_SCATTER} pools",)
+        share = float(np.mean(judged > self.largest))
+        if share <= MOST_DROPPED:
             return ()
-        return (f"pool scatter not judged: no feature is in {FEWEST_FOR_SCATTER} pools",)
+        return (
+            f"{share:.0%} of the features are dropped, as they scatter over the pools (by {np.median(judged):.0%} in "
+            "the middle): drift that too few pools could show, pools that are not one mixture, or an assay that does "
+            "not repeat",
+        )
 
 
 @dataclass(frozen=True)

@@ -80,7 +80,7 @@ class Drift(Settled):
         pools = _pools_of(controls)
         placed = pools.take(np.flatnonzero(~np.isnan(pools.order)))
         return CourseQuestion(
-            _batches(placed, _logs(placed.values, self.logged)), self.fewest_pools, self.span
+            _batches(placed, as_logs(placed.values, self.logged)), self.fewest_pools, self.span
         )
 
 
@@ -104,16 +104,16 @@ class FittedDrift:
         """
         if table.runs is None or table.controls is None:
             return table, StepAccount(self.settings.step, "no run sheet: no drift removed")
-        removed = self._removed(table.runs)
+        removed = self.removed(table.runs)
         values = self._without(table.values, removed)
-        controls = self._corrected(table.controls)
+        controls = self.corrected(table.controls)
         account = self._account(table, controls, removed)
         return replace(table, values=values, controls=controls), account
 
     def _without(self, values: Matrix, removed: Matrix) -> Matrix:
         return values - removed if self.settings.logged else values * 2.0**-removed
 
-    def _removed(self, runs: Runs) -> Matrix:
+    def removed(self, runs: Runs) -> Matrix:
         """Return what is taken from the logarithms of each run, (n_runs, n_features)."""
         removed = np.zeros((len(runs.runs), self.pools.values.shape[1]))
         batch = np.array(runs.batch, dtype=object)
@@ -130,7 +130,7 @@ class FittedDrift:
             removed[rows] = read_off(place.x, place.course, runs.order[rows])
         return removed
 
-    def _corrected(self, controls: RunTable) -> RunTable:
+    def corrected(self, controls: RunTable) -> RunTable:
         """Return the controls with each pool corrected by a course fitted without it."""
         values = controls.values.copy()
         row_of = {name: row for row, name in enumerate(self.courses.pools)}
@@ -232,11 +232,13 @@ def _batches(pools: RunTable, logs: Matrix) -> tuple[BatchPools, ...]:
     return tuple(parts)
 
 
-def _logs(values: Matrix, logged: bool) -> Matrix:
+def as_logs(values: Matrix, logged: bool) -> Matrix:
+    """Return log2 of what is above zero, NaN for the rest; logarithms as they are."""
     if logged:
         return values
     positive = values > 0
-    return np.where(positive, np.log2(values, where=positive, out=np.zeros_like(values)), np.nan)
+    logs: Matrix = np.where(positive, np.log2(values, where=positive, out=np.zeros_like(values)), np.nan)
+    return logs
 
 
 def relative_amounts(values: Matrix, logged: bool) -> Matrix:

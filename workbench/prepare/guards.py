@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from scipy import stats
 
 from workbench.errors import InputError
-from workbench.prepare.tables import Matrix, PreparedTable
+from workbench.prepare.tables import Matrix, PreparedTable, StepAccount
 from workbench.prepare.words import some
 
 FAR_FOLD = 3.0
@@ -144,6 +144,40 @@ def group_cautions(
             "features with gaps between these groups may come from the gaps"
         )
     return tuple(told)
+
+
+def group_account(prepared: PreparedTable, groups: NDArray[np.int_], levels: Sequence[str]) -> StepAccount:
+    """Return how preparation and groups meet, as the last entry of an account.
+
+    Parameters
+    ----------
+    prepared : PreparedTable
+    groups : int ndarray of shape (n_samples,)
+        The group of each sample; negative: none.
+    levels : sequence of str
+        Names of the groups.
+    """
+    scale, imputed = group_differences(prepared, groups)
+    scaled = "samples were not scaled"
+    if np.ptp(prepared.scale) > 0:
+        scaled = (
+            f"scale of a sample, in times the typical one: {_means(scale, levels, 2.0)}{_p_words(scale.p)}"
+        )
+    filled = "nothing was filled in"
+    if prepared.imputed.any():
+        filled = f"share filled in: {_means(imputed, levels)}{_p_words(imputed.p)}"
+    return StepAccount(
+        "groups",
+        f"{scaled}; {filled}",
+        cautions=group_cautions(prepared, groups, levels),
+        rule="changes nothing: compares the groups in how far their samples were scaled and how much was filled in",
+        why="no step knows the groups; but where they were read to unequal depth, diluted unequally or have unequal "
+        "gaps, scaling and filling in can make a difference between them, or hide one",
+    )
+
+
+def _p_words(p: float) -> str:
+    return f" (p of no difference {p:.2g})" if np.isfinite(p) else ""
 
 
 def imputed_shares(prepared: PreparedTable) -> tuple[dict[str, float], dict[str, float]]:

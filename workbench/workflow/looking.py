@@ -5,31 +5,38 @@ from __future__ import annotations
 import numpy as np
 import pandas as pd
 
-from workbench.figures import draw_between, draw_look
+from workbench.figures import draw_between, draw_look, draw_preparation
 from workbench.intake import design_columns, group_codes, missing_samples
 from workbench.look import (
     BlockView,
     Levels,
+    PreparationLook,
     Restriction,
     between_reading,
     between_table,
     block_reading,
     levels_of,
     look_at_block,
+    look_at_preparation,
     look_between,
     look_tables,
+    preparation_tables,
 )
-from workbench.store import Change, table_bytes
+from workbench.prepare import PreparedSize, account_page, account_table, drift_effect, recipe_for
+from workbench.store import Change, check_file, read_block, table_bytes
 from workbench.workflow.analysis_view import factors_of
 from workbench.workflow.design_frame import design_frame
 from workbench.workflow.drawings import write_drawings
 from workbench.workflow.fingerprints import block_header, columns_fingerprint, fingerprint
 from workbench.workflow.loaded_block import load_block
+from workbench.workflow.preparing import SEED as PREPARE_SEED
+from workbench.workflow.preparing import account_of, smallest_group
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
+from workbench.workflow.tables import measured_table
 
-VERSION = 1
+VERSION = 2
 SEED = 20260101
 BETWEEN = "between-blocks"
 
@@ -40,7 +47,9 @@ def looking_stage(name: str) -> Stage:
         kind="look",
         subject=name,
         needs=(f"prepare:{name}",),
-        outputs=(f"results/look/{name}/reading.txt",),
+        outputs=tuple(
+            f"results/look/{name}/{file}" for file in ("reading.txt", "recipe.tsv", "preparation.md")
+        ),
         inputs=lambda state: _inputs(state, [name]),
         work=lambda state, change, reporter: _look(state, change, reporter, name),
     )
@@ -69,19 +78,29 @@ def _inputs(state: ProjectState, names: list[str]) -> dict[str, str]:
     for name in names:
         header = block_header(state.paths.prepared_block(name))
         hashes[f"block {name}"] = fingerprint([header["content_sha256"], header["measured_sha256"]])
+        hashes[f"account of {name}"] = fingerprint(header["account"])
     return hashes
 
 
 def _look(state: ProjectState, change: Change, reporter: Reporter, name: str) -> list[str]:
-    look = look_at_block(view_block(state, name), seed=SEED)
+    view = view_block(state, name)
+    look = look_at_block(view, seed=SEED)
+    preparation = view_preparation(state, view, look.shapes)
     reading = block_reading(look)
     folder = f"results/look/{name}"
     written = []
-    for table, frame in look_tables(look).items():
+    tables = {
+        **look_tables(look),
+        **preparation_tables(preparation),
+        "recipe": account_table(preparation.account),
+    }
+    for table, frame in tables.items():
         written.append(f"{folder}/{table}.tsv")
         change.write_bytes(written[-1], table_bytes(frame))
+    size = PreparedSize(len(view.samples), len(view.names_measured), len(view.features), look.imputed_share)
+    change.write_text(f"{folder}/preparation.md", account_page(preparation.account, name, size))
     with reporter.progress(f"figures of {name}"):
-        written += write_drawings(change, folder, draw_look(look))
+        written += write_drawings(change, folder, (*draw_look(look), *draw_preparation(preparation)))
     change.write_text(f"{folder}/reading.txt", "\n".join(reading) + "\n")
     reporter.say(f"  {reading[1] if len(reading) > 1 else reading[0]}")
     return written
@@ -125,6 +144,23 @@ def view_block(state: ProjectState, name: str) -> BlockView:
         adjust=adjust,
         shape_by=next((column for column in adjust if frame[column].nunique() <= len(frame) / 2), ""),
     )
+
+
+def view_preparation(state: ProjectState, view: BlockView, shapes: Levels | None) -> PreparationLook:
+    """Return what preparation did to a block; drift is taken away once more, to be seen run by run."""
+    settings, measured = state.settings.blocks[view.name], measured_table(state, view.name)
+    drift = None
+    if measured.runs is not None:
+        drift = drift_effect(
+            recipe_for(settings.layer, settings.values, settings.prepare),
+            measured,
+            smallest_group=smallest_group(state, measured.samples),
+            seed=PREPARE_SEED,
+            among=set(view.features),
+        )
+    prepared = read_block(check_file(state.root, f"prepared/{view.name}.h5ad"))
+    scale = prepared.obs["log2_scale"].to_numpy(dtype=np.float64)
+    return look_at_preparation(view, scale, account_of(state, view.name), drift, shapes)
 
 
 def _adjust(state: ProjectState, name: str) -> tuple[str, ...]:

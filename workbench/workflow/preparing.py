@@ -9,6 +9,7 @@ from dataclasses import asdict
 import numpy as np
 import pandas as pd
 from anndata import AnnData
+from numpy.typing import NDArray
 
 from workbench.errors import InputError
 from workbench.intake import group_codes, missing_samples
@@ -17,10 +18,11 @@ from workbench.prepare import (
     PreparedTable,
     PrepareRefusal,
     StepAccount,
+    group_account,
     group_cautions,
     recipe_for,
 )
-from workbench.store import Change, check_file, write_block
+from workbench.store import Change, check_file, read_block, write_block
 from workbench.workflow.analysis_view import factors_of
 from workbench.workflow.fingerprints import block_header, fingerprint
 from workbench.workflow.reading import block_file
@@ -110,27 +112,45 @@ def refusal_of(state: ProjectState, name: str) -> PrepareRefusal | None:
 
 def _group_cautions(state: ProjectState, prepared: PreparedTable) -> tuple[str, ...]:
     """Return in what way preparation and groups are tangled; the recipe itself never knew the groups."""
+    levels, codes = _groups(state, prepared.samples)
+    return group_cautions(prepared, codes, levels) if levels else ()
+
+
+def _groups(state: ProjectState, samples: tuple[str, ...]) -> tuple[tuple[str, ...], NDArray[np.int_]]:
+    """Return the groups' names (none without a group) and the group of each sample, -1 for one without."""
     factors = factors_of(state.settings)
-    frame = state.require_sheet().loc[list(prepared.samples)]
+    frame = state.require_sheet().loc[list(samples)]
     lacking = (
         {sample for names in missing_samples(frame, factors).values() for sample in names}
         if factors
         else set()
     )
-    held = [sample for sample in prepared.samples if sample not in lacking]
+    held = [sample for sample in samples if sample not in lacking]
     if not factors or not held:
-        return ()
+        return (), np.full(len(samples), -1)
     groups = group_codes(frame.loc[held], factors, state.settings.samples.order)
     code = dict(zip(held, groups.codes, strict=True))
-    return group_cautions(
-        prepared, np.array([code.get(sample, -1) for sample in prepared.samples]), groups.levels
-    )
+    return tuple(groups.levels), np.array([code.get(sample, -1) for sample in samples])
 
 
 def account_of(state: ProjectState, name: str) -> tuple[StepAccount, ...]:
-    """Return what the recipe did to a block, step by step, from its prepared file."""
+    """Return what the recipe did to a block, step by step, from its prepared file, and how that meets the groups."""
     path = check_file(state.root, f"prepared/{name}.h5ad")
-    return tuple(StepAccount(**step) for step in block_header(path)["account"])
+    steps = tuple(StepAccount(**step) for step in block_header(path)["account"])
+    block = read_block(path)
+    levels, codes = _groups(state, tuple(map(str, block.obs_names)))
+    if not levels:
+        return steps
+    prepared = PreparedTable(
+        values=np.asarray(block.X, dtype=np.float64),
+        imputed=np.asarray(block.layers["imputed"], dtype=bool),
+        samples=tuple(map(str, block.obs_names)),
+        features=tuple(map(str, block.var_names)),
+        account=steps,
+        origins=(),
+        scale=block.obs["log2_scale"].to_numpy(dtype=np.float64),
+    )
+    return (*steps, group_account(prepared, codes, levels))
 
 
 def _as_anndata(name: str, measured: AnnData, prepared: PreparedTable) -> AnnData:
@@ -149,7 +169,7 @@ def _as_anndata(name: str, measured: AnnData, prepared: PreparedTable) -> AnnDat
         obs=measured.obs.loc[list(prepared.samples)].assign(log2_scale=prepared.scale),
         var=var,
         layers={"imputed": prepared.imputed},
-        uns={"workbench": json.dumps(header, sort_keys=True)},
+        uns={"workbench": json.dumps(header)},
     )
 
 
