@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -10,10 +12,28 @@ FloatArray = NDArray[np.float64]
 ROUNDS = 30
 NORMAL_MAD = 1.4826
 CUT = 2.0
+DENSE = 2.5
+COMPARABLE = 0.3
 
 
-def untangled(z: FloatArray, removed: FloatArray, staying: FloatArray, dimensions: int) -> FloatArray:
-    """Directions to be removed, ``P + T K``: components ``P`` without their admixture of the staying ones ``T``.
+@dataclass(frozen=True, eq=False)
+class Admixture:
+    """How much of the staying components each removed one has taken in.
+
+    Attributes
+    ----------
+    coefficients : ndarray of shape (n_staying, n_removed)
+    spread : ndarray of shape (n_staying,)
+        Typical size, in units of noise, of what features have of a staying component beyond the admixture:
+        about 1 where it reaches few features, well above 1 where it reaches most of them.
+    """
+
+    coefficients: FloatArray
+    spread: FloatArray
+
+
+def admixture(z: FloatArray, removed: FloatArray, staying: FloatArray, dimensions: int) -> Admixture:
+    """Admixture ``K`` of the staying components ``T`` in the removed ones ``P``: the factors are ``P + T K``.
 
     Principal components are uncorrelated in the samples at hand, the factors behind them are not: by chance
     they correlate by some ``1 / sqrt(n)``, and a component takes in part of its neighbours. Taking out such a
@@ -30,23 +50,32 @@ def untangled(z: FloatArray, removed: FloatArray, staying: FloatArray, dimension
         Orthonormal scores, together and each.
     dimensions : int
         Dimensions that the nuisance leaves.
-
-    Returns
-    -------
-    ndarray of shape (n_samples, k)
     """
-    if removed.shape[1] == 0 or staying.shape[1] == 0:
-        return removed
     own, others = z.T @ removed, z.T @ staying
     rest = np.maximum(1.0 - np.sum(own**2, axis=1) - np.sum(others**2, axis=1), 1e-6)
     noise = np.sqrt(rest / dimensions)
-    admixture = np.column_stack([_robust(own / noise[:, None], column / noise) for column in others.T])
-    directions: FloatArray = removed + staying @ admixture.T
-    return directions
+    coefficients = np.zeros((staying.shape[1], removed.shape[1]))
+    spread = np.zeros(staying.shape[1])
+    for k, loadings in enumerate(others.T):
+        coefficients[k], spread[k] = _robust(own / noise[:, None], loadings / noise)
+    return Admixture(coefficients, spread)
 
 
-def _robust(x: FloatArray, y: FloatArray) -> FloatArray:
-    """Coefficients of ``y`` on ``x``: least absolute deviations first, then far points lose all weight.
+def entangled(found: Admixture, removed_shares: FloatArray, staying_shares: FloatArray) -> NDArray[np.bool_]:
+    """Which removed components cannot be told from a staying one that reaches most features.
+
+    Such a one has a ``spread`` above ``DENSE``, and, noise aside, more than ``COMPARABLE`` times the share of
+    the removed one. The reference is what removal without this rule does: with two shared factors on two
+    thirds of the features and twice as strong as the private ones, 30 % of the edges were false.
+    """
+    wide = staying_shares[found.spread > DENSE]
+    return np.asarray(wide.max(initial=0.0) > COMPARABLE * removed_shares)
+
+
+def _robust(x: FloatArray, y: FloatArray) -> tuple[FloatArray, float]:
+    """Coefficients of ``y`` on ``x``, and the spread of what is left.
+
+    Least absolute deviations first, then far points lose all weight.
 
     Residuals are in units of noise; where most are larger than noise their own spread is the unit.
     """
@@ -61,4 +90,4 @@ def _robust(x: FloatArray, y: FloatArray) -> FloatArray:
         else:
             unit = max(1.0, NORMAL_MAD * float(np.median(size)))
             weight = np.exp(-((size / (CUT * unit)) ** 2))
-    return coefficients
+    return coefficients, NORMAL_MAD * float(np.median(size))

@@ -17,7 +17,8 @@ Lock et al. 2013, Annals of Applied Statistics 7:523; Feng et al. 2018, Journal 
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -30,12 +31,14 @@ from workbench.engine.private_components import (
     block_components,
 )
 from workbench.engine.private_retention import retention_levels, retention_p
-from workbench.engine.private_untangling import untangled
+from workbench.engine.private_untangling import admixture, entangled
 from workbench.engine.screen import BlockPair, BlockScreen, Correlation, Progress, screen_blocks
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
+
+Stays = Literal["shared", "weak", "entangled", ""]
 
 LEADING = 10
 #: A component is removed when it takes at least so many times the share of a direction of pure noise.
@@ -77,10 +80,12 @@ class RealComponent:
         The block that it goes with best when it is shared (and stays); empty when it is private.
     p : float
         Smallest p of the tests against the blocks of other layers, times the number of tests.
-    weak : bool
-        Whether it takes less than ``WORTH`` times the share of a direction of pure noise: it stays.
+    stays : {"shared", "weak", "entangled", ""}
+        Why it stays: it is shared; or it takes less than ``WORTH`` times the share of a direction of pure noise;
+        or it cannot be told from a shared one that reaches most features. Empty when it was removed.
     scores : ndarray of shape (n_samples,)
-        Unit length; rows are those of the block.
+        Unit length; rows are those of the block. Of a removed one what was regressed out, freed of the
+        admixture of those that stay.
     leading : ndarray of int
         Positions of the features that go with it most, strongest first.
     loadings : ndarray of float
@@ -91,7 +96,7 @@ class RealComponent:
     share: float
     shared_with: str
     p: float
-    weak: bool
+    stays: Stays
     scores: FloatArray
     leading: IndexArray
     loadings: FloatArray
@@ -99,7 +104,7 @@ class RealComponent:
     @property
     def removed(self) -> bool:
         """Whether it is private and was regressed out."""
-        return not self.shared_with and not self.weak
+        return not self.stays
 
 
 @dataclass(frozen=True, eq=False)
@@ -164,10 +169,9 @@ def screen_without_private(
     found = tuple(_own_components(block, ranks, seed) for block in blocks)
     views = tuple(_shared_rows(blocks[a], blocks[b]) for a, b in pairs)
     components = _judge(blocks, found, views, pairs)
-    directions = [_directions(own, told) for own, told in zip(found, components, strict=True)]
     off = tuple(_reason(view, blocks[a], blocks[b]) for view, (a, b) in zip(views, pairs, strict=True))
     tested = tuple(
-        _pair(blocks, directions, view, pair, bool(reason), ranks)
+        _pair(blocks, components, view, pair, bool(reason), ranks)
         for view, pair, reason in zip(views, pairs, off, strict=True)
     )
     screen = screen_blocks(
@@ -231,7 +235,7 @@ def _judge(
             tests[own][other] = retention_p(
                 found[own].scores[rows], found[other].z[others], found[other].scores[others], view.nuisance
             )
-    return tuple(_described(blocks, own, by) for own, by in zip(found, tests, strict=True))
+    return tuple(_freed(own, _described(blocks, own, by)) for own, by in zip(found, tests, strict=True))
 
 
 def _described(
@@ -252,7 +256,7 @@ def _described(
                 float(own.shares[k]),
                 blocks[others[best]].name if adjusted <= levels[k] else "",
                 adjusted,
-                bool(own.shares[k] * own.dimensions < WORTH),
+                _stays(adjusted <= levels[k], own.shares[k] * own.dimensions < WORTH),
                 own.scores[:, k],
                 own.kept[leading],
                 loadings[leading, k],
@@ -261,15 +265,34 @@ def _described(
     return tuple(described)
 
 
-def _directions(own: BlockComponents, told: Sequence[RealComponent]) -> FloatArray:
-    """Return what is regressed out of a block."""
+def _stays(shared: bool, weak: bool) -> Stays:
+    return "shared" if shared else "weak" if weak else ""
+
+
+def _freed(own: BlockComponents, told: tuple[RealComponent, ...]) -> tuple[RealComponent, ...]:
+    """Keep what cannot be told from a shared component; free what is removed of what stays."""
     removed = np.array([one.removed for one in told], dtype=bool)
-    return untangled(own.z, own.scores[:, removed], own.scores[:, ~removed], own.dimensions)
+    shared = np.array([bool(one.shared_with) for one in told], dtype=bool)
+    if removed.any() and shared.any():
+        net = own.shares - 1.0 / own.dimensions
+        mixed = admixture(own.z, own.scores[:, removed], own.scores[:, shared], own.dimensions)
+        keep = np.flatnonzero(removed)[entangled(mixed, net[removed], net[shared])]
+        told = tuple(replace(one, stays="entangled") if k in keep else one for k, one in enumerate(told))
+        removed[keep] = False
+    if not removed.any() or removed.all():
+        return told
+    mixed = admixture(own.z, own.scores[:, removed], own.scores[:, ~removed], own.dimensions)
+    factors = own.scores[:, removed] + own.scores[:, ~removed] @ mixed.coefficients
+    factors /= np.linalg.norm(factors, axis=0)
+    place = np.cumsum(removed) - 1
+    return tuple(
+        replace(one, scores=factors[:, place[k]]) if removed[k] else one for k, one in enumerate(told)
+    )
 
 
 def _pair(
     blocks: Sequence[LayerBlock],
-    directions: Sequence[FloatArray],
+    components: Sequence[Sequence[RealComponent]],
     view: _View,
     pair: tuple[int, int],
     off: bool,
@@ -278,8 +301,8 @@ def _pair(
     """Return the two blocks on the samples that they share, with what is removed from each."""
     sides = []
     for place, rows in zip(pair, (view.x_rows, view.y_rows), strict=True):
-        taken = directions[place][rows] if not off else np.empty((rows.size, 0))
-        own = Nuisance.of(np.column_stack([view.columns, taken]), rows.size)
+        taken = [one.scores[rows] for one in components[place] if one.removed and not off]
+        own = Nuisance.of(np.column_stack([view.columns, *taken]), rows.size)
         values = blocks[place].values[rows]
         sides.append((values if ranks else _cleaned(values, own), own))
     (x, x_own), (y, y_own) = sides
