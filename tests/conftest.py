@@ -18,6 +18,9 @@ SMALL = Design(
 )
 
 
+QUICK = "permutations = 200\nrepeats = 2\n\n[analyses.main.network]\nremove_private = false\n"
+
+
 @pytest.fixture(scope="session")
 def delivered(tmp_path_factory):
     """Return the files of a small study by name, as they were delivered."""
@@ -52,7 +55,7 @@ def make_project(folder, delivered):
     project.add_block("rna", delivered["transcripts"], layer="transcripts", values="counts")
     project.add_block("lcms", delivered["metabolites"], layer="metabolites", values="intensities")
     settings = (folder / "project.toml").read_text()
-    (folder / "project.toml").write_text(settings + "permutations = 200\nrepeats = 2\n")
+    (folder / "project.toml").write_text(settings + QUICK)
     return project
 
 

@@ -40,7 +40,7 @@ def test_what_is_left_after_adjustment_has_the_correlation_of_the_edge(run_once,
         np.testing.assert_allclose(story.numbers["r_adjusted"], row.r, atol=1e-8)
 
 
-def test_a_pair_without_an_edge_is_no_evidence_of_none(command, run_once, edges):
+def test_a_pair_without_an_edge_is_no_evidence_of_none(command, finished, edges):
     joined = set(zip(edges["source"], edges["target"], strict=True))
     source, target = next(
         (s, t)
@@ -48,7 +48,7 @@ def test_a_pair_without_an_edge_is_no_evidence_of_none(command, run_once, edges)
         for t in sorted(set(edges["target"]))
         if (s, t) not in joined
     )
-    code, out, _ = command("show", source, target, "--json", "--project", run_once)
+    code, out, _ = command("show", source, target, "--json", "--project", finished)
     [story] = json.loads(out)["stories"]
     assert code == 0
     assert any(line.startswith(("no edge: r = ", "an edge")) for line in story["reading"])
@@ -56,9 +56,9 @@ def test_a_pair_without_an_edge_is_no_evidence_of_none(command, run_once, edges)
 
 def test_names_that_are_not_there_are_answered_with_the_nearest(command, run_once, edges):
     name = str(edges["source"].iloc[0])
-    code, _, err = command("show", name + "x", "--project", run_once)
+    code, _, err = command("show", name + "x", "--project", finished)
     assert (code, f"did you mean '{name}'" in err or "did you mean" in err) == (2, True)
-    code, _, err = command("show", *sorted(set(edges["source"]))[:2], "--project", run_once)
+    code, _, err = command("show", *sorted(set(edges["source"]))[:2], "--project", finished)
     assert (code, "are of one layer (transcripts)" in err) == (2, True)
 
 
@@ -66,7 +66,7 @@ def test_a_figure_goes_where_it_is_asked_for(command, run_once, edges, tmp_path)
     pair = (edges["source"].iloc[0], edges["target"].iloc[0])
     assert command("show", *pair, "--figure", tmp_path / "a.png", "--project", run_once)[0] == 0
     assert (tmp_path / "a.png").read_bytes()[:4] == b"\x89PNG"
-    code, _, err = command("show", *pair, "--figure", tmp_path / "a.gif", "--project", run_once)
+    code, _, err = command("show", *pair, "--figure", tmp_path / "a.gif", "--project", finished)
     assert (code, "allowed: .svg, .png" in err) == (2, True)
 
 

@@ -21,7 +21,7 @@ def edit(folder, old, new):
 CHANGES = [
     ('title = "A small study"', 'title = "Another title"  # and a comment', []),
     ('blocks = "all"', 'blocks = "all"\nseed = 7', ENGINE),
-    ("repeats = 2", "repeats = 2\n[analyses.main.network]\nfdr = 0.1", ["network:main"]),
+    ("remove_private = false", "remove_private = false\nfdr = 0.1", ["network:main"]),
     ("[samples]\nid", '[samples]\nexclude = { S03 = "haemolysed" }\nid', STAGES[2:]),
     ('adjust = ["run_day"]', "adjust = []", [*LOOKS, *ENGINE]),
 ]

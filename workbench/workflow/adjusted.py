@@ -2,14 +2,18 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
+import pandas as pd
 from numpy.typing import NDArray
 
 from workbench.engine import Nuisance
+from workbench.engine.far_values import pull_in
 from workbench.intake import Groups
-from workbench.workflow.analysis_view import AnalysisView
+from workbench.workflow.analysis_view import AnalysisView, Shared
+from workbench.workflow.screening import design_columns_of
 
 FloatArray = NDArray[np.float64]
 
@@ -66,18 +70,30 @@ def correlation(x: FloatArray, y: FloatArray) -> float:
 
 
 def pair_values(
-    view: AnalysisView, ends: tuple[tuple[str, str], tuple[str, str]], within: bool
+    view: AnalysisView,
+    ends: tuple[tuple[str, str], tuple[str, str]],
+    within: bool,
+    private: Mapping[str, pd.DataFrame | None],
 ) -> PairValues:
-    """Return two features, each given as (block, feature), as the screen of the analysis saw them."""
+    """Return two features, each given as (block, feature), as the screen of the analysis saw them.
+
+    ``private`` holds, for each block that had some removed, the scores of its private variation by sample.
+    """
     (first, x_name), (second, y_name) = ends
     shared = view.shared((first, second))
-    nuisance = Nuisance.of(shared.within if within else shared.nuisance, shared.n)
-    columns = [_column(view, first, x_name, shared.samples), _column(view, second, y_name, shared.samples)]
-    (x, x_imputed), (y, y_imputed) = columns
-    left = nuisance.residuals(np.column_stack([x, y]))
+    columns = design_columns_of(view, shared, within)
+    nuisance = Nuisance.of(columns, shared.n)
+    x, x_imputed = _column(view, first, x_name, shared.samples)
+    y, y_imputed = _column(view, second, y_name, shared.samples)
+    left = np.column_stack(
+        [_left(x, columns, private.get(first), shared), _left(y, columns, private.get(second), shared)]
+    )
     removed = list(shared.nuisance_names)
     if within and view.factors:
         removed.append(f"{'+'.join(view.factors)} (group)")
+    removed += [
+        f"private variation of {block}" for block in (first, second) if private.get(block) is not None
+    ]
     return PairValues(
         samples=shared.samples,
         groups=shared.groups,
@@ -90,6 +106,14 @@ def pair_values(
         removed=tuple(removed),
         freedom=shared.n - nuisance.rank - 1,
     )
+
+
+def _left(x: FloatArray, columns: FloatArray, private: pd.DataFrame | None, shared: Shared) -> FloatArray:
+    """Return what the screen tested of one feature: residuals, far values pulled in where private variation went."""
+    if private is None:
+        return Nuisance.of(columns, shared.n).residuals(x[:, None])[:, 0]
+    own = Nuisance.of(np.column_stack([columns, private.loc[list(shared.samples)]]), shared.n)
+    return pull_in(own.residuals(x[:, None]), own.n_samples - own.rank)[:, 0]
 
 
 def _column(

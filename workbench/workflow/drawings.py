@@ -8,9 +8,14 @@ from workbench.figures import Drawing, figure_files
 from workbench.store import Change, table_bytes
 
 
-def write_drawings(change: Change, folder: str, drawings: tuple[Drawing, ...]) -> list[str]:
-    """Write the figures and their captions below a folder of the project; return the names of all files."""
-    written = [f"{folder}/captions.tsv"]
+def write_drawings(
+    change: Change, folder: str, drawings: tuple[Drawing, ...], captions_file: str = "captions.tsv"
+) -> list[str]:
+    """Write the figures and their captions below a folder of the project; return the names of all files.
+
+    Stages that share a folder each name a captions file of their own.
+    """
+    written = [f"{folder}/{captions_file}"]
     captions = pd.DataFrame([(one.name, one.caption) for one in drawings], columns=["figure", "caption"])
     change.write_bytes(written[0], table_bytes(captions))
     for file, content in figure_files(drawings):

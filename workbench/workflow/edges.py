@@ -1,45 +1,22 @@
-"""The cross-layer pairs of an analysis: both screens, the rules of selection, and the tables of pairs."""
+"""The tables of pairs of an analysis: edges with what speaks for and against each, and pairs that rest on the group."""
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from workbench.engine import (
-    BlockPair,
-    BlockScreen,
-    Nuisance,
-    PairFigures,
-    edge_evidence,
-    fisher_interval,
-    screen_blocks,
-)
-from workbench.errors import InputError
+from workbench.engine import PairFigures, edge_evidence, fisher_interval
+from workbench.engine.repeated import without_subject
 from workbench.workflow.analysis_view import AnalysisView, Shared
-from workbench.workflow.reporting import Reporter
+from workbench.workflow.screening import Screen, Screens, space_of
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
 ENDS = ["source", "source_block", "target", "target_block"]
 GROUP_BOUND = 0.5
-
-
-@dataclass(frozen=True, eq=False)
-class Screens:
-    """The screens of an analysis over its block pairs.
-
-    ``chosen`` is the one whose pairs are edges, ``total`` leaves the group in, ``within`` removes it
-    (None, as ``total`` and ``chosen`` are the same, without a group).
-    """
-
-    shared: tuple[Shared, ...]
-    chosen: BlockScreen
-    total: BlockScreen
-    within: BlockScreen | None
 
 
 @dataclass(frozen=True, eq=False)
@@ -51,69 +28,21 @@ class Pairs:
     j: IndexArray
 
 
-def screen_analysis(view: AnalysisView, reporter: Reporter) -> Screens:
-    """Screen every cross-layer pair of features, within groups and in total where there is a group."""
-    shared = tuple(view.shared(pair) for pair in view.pairs)
-    _refuse_repeated(view, shared)
-    grouped = bool(view.factors)
-    total = _screen(
-        view, shared, lambda one: one.nuisance, reporter, "pairs, group left in" if grouped else "pairs"
-    )
-    if not grouped:
-        return Screens(shared, total, total, None)
-    within = _screen(view, shared, lambda one: one.within, reporter, "pairs within groups")
-    chosen = within if view.settings.network.select == "within" else total
-    return Screens(shared, chosen, total, within)
-
-
-def _refuse_repeated(view: AnalysisView, shared: tuple[Shared, ...]) -> None:
-    for one in shared:
-        if one.subjects is not None and one.subjects.kind != "single":
-            raise InputError(f"analysis '{view.name}': the screen of pairs takes one sample of each subject")
-
-
-def _screen(
-    view: AnalysisView,
-    shared: tuple[Shared, ...],
-    nuisance: Callable[[Shared], FloatArray],
-    reporter: Reporter,
-    label: str,
-) -> BlockScreen:
-    settings = view.settings.network
-    pairs = [
-        BlockPair(
-            f"{first} x {second}",
-            view.blocks[first].values[view.blocks[first].rows(one.samples)],
-            view.blocks[second].values[view.blocks[second].rows(one.samples)],
-            nuisance(one),
-        )
-        for (first, second), one in zip(view.pairs, shared, strict=True)
-    ]
-    with reporter.progress(label) as progress:
-        return screen_blocks(
-            pairs,
-            fdr=settings.fdr,
-            correlation=settings.correlation,
-            minimum_r=settings.minimum_r,
-            maximum_edges=settings.maximum_edges,
-            progress=progress,
-        )
-
-
 def edges_table(view: AnalysisView, screens: Screens) -> pd.DataFrame:
     """Return the edges, strongest evidence first, with all that speaks for and against each."""
-    screen = screens.chosen
+    screen = screens.chosen.found
     pairs = Pairs(screen.pair_index, screen.i, screen.j)
     table = _ends(view, pairs)
     for column in ("n", "r", "r_low", "r_high", "p", "q", "q_block"):
         table[column] = getattr(screen, column)
-    total = screens.total.lookup(pairs.pair, pairs.i, pairs.j)
+    table["support"] = screens.chosen.support
+    total = screens.total.found.lookup(pairs.pair, pairs.i, pairs.j)
     grouped = screens.within is not None
     table["r_total"] = total.r if grouped else np.nan
     table["q_total"] = total.q if grouped else np.nan
     table["basis"] = ""
     if screens.within is not None:
-        found = screens.within.lookup(pairs.pair, pairs.i, pairs.j)
+        found = screens.within.found.lookup(pairs.pair, pairs.i, pairs.j)
         table["basis"] = basis_of(view, found, table["r_total"].to_numpy(), pairs, screens)
         if view.settings.network.select == "total":
             table["r_within"], table["q_within"] = found.r, found.q
@@ -129,13 +58,13 @@ def group_pairs_table(view: AnalysisView, screens: Screens) -> pd.DataFrame:
         return _ends(view, empty).assign(
             n=[], r_total=[], p_total=[], q_total=[], r_within=[], q_within=[], basis=[]
         )
-    total = screens.total
+    total = screens.total.found
     every = Pairs(total.pair_index, total.i, total.j)
-    inside = screens.within.lookup(every.pair, every.i, every.j)
+    inside = screens.within.found.lookup(every.pair, every.i, every.j)
     fdr = view.settings.network.fdr
     keep = ~((inside.q <= fdr) & (inside.q_block <= fdr))
     alone = Pairs(every.pair[keep], every.i[keep], every.j[keep])
-    found = screens.within.lookup(alone.pair, alone.i, alone.j)
+    found = screens.within.found.lookup(alone.pair, alone.i, alone.j)
     table = _ends(view, alone)
     table["n"] = total.n[keep]
     table["r_total"], table["p_total"], table["q_total"] = total.r[keep], total.p[keep], total.q[keep]
@@ -166,11 +95,13 @@ def basis_of(
 def _interval(r: FloatArray, pairs: Pairs, screens: Screens) -> tuple[FloatArray, FloatArray]:
     """Return the unadjusted 95 % intervals of correlations within groups."""
     low, high = np.full((2, r.size), np.nan)
-    spearman = screens.total.correlation == "spearman"
-    for k, one in enumerate(screens.shared):
+    if screens.within is None:
+        return low, high
+    found = screens.within.found
+    for k, freedom in enumerate(screens.within.freedom):
         here = pairs.pair == k
-        rank = Nuisance.of(one.within, one.n).rank
-        low[here], high[here] = fisher_interval(r[here], one.n, rank, spearman=spearman)
+        spearman = found.correlation == "spearman"
+        low[here], high[here] = fisher_interval(r[here], freedom + 2, 1, spearman=spearman)
     return low, high
 
 
@@ -193,20 +124,42 @@ def _evidence(view: AnalysisView, screens: Screens, pairs: Pairs) -> dict[str, F
         "imputed_share": "imputed_share",
     }
     found = {name: np.full(pairs.pair.size, np.nan) for name in columns}
-    within = screens.chosen is screens.within
+    chosen = screens.chosen
     for k, ((first, second), one) in enumerate(zip(view.pairs, screens.shared, strict=True)):
         rows = np.flatnonzero(pairs.pair == k)
         a, b = view.blocks[first], view.blocks[second]
-        rows_a, rows_b = a.rows(one.samples), b.rows(one.samples)
-        evidence = edge_evidence(
-            a.values[rows_a],
-            b.values[rows_b],
-            pairs.i[rows],
-            pairs.j[rows],
-            nuisance=one.within if within else one.nuisance,
-            x_imputed=a.imputed[rows_a],
-            y_imputed=b.imputed[rows_b],
-        )
-        for name, field in columns.items():
-            found[name][rows] = getattr(evidence, field)
+        imputed = a.imputed[a.rows(one.samples)], b.imputed[b.rows(one.samples)]
+        i, j = pairs.i[rows], pairs.j[rows]
+        if chosen.repeated:
+            figures = _repeated_evidence(view, chosen, k, one, (i, j), imputed)
+        else:
+            pair = chosen.pairs[k]
+            nuisance = None if pair.nuisance is None else np.asarray(pair.nuisance)
+            x, y = np.asarray(pair.x), np.asarray(pair.y)
+            evidence = edge_evidence(
+                x, y, i, j, nuisance=nuisance, x_imputed=imputed[0], y_imputed=imputed[1]
+            )
+            figures = {name: getattr(evidence, field) for name, field in columns.items()}
+        for name, values in figures.items():
+            found[name][rows] = values
     return found
+
+
+def _repeated_evidence(
+    view: AnalysisView,
+    chosen: Screen,
+    k: int,
+    one: Shared,
+    places: tuple[IndexArray, IndexArray],
+    imputed: tuple[NDArray[np.bool_], NDArray[np.bool_]],
+) -> dict[str, FloatArray]:
+    """Return what can be said of pairs tested on several samples a subject: a whole subject is left out at a time."""
+    pair = chosen.pairs[k]
+    assert one.subjects is not None
+    space = space_of(pair, one.subjects, view.settings.level or "visits", chosen.found.correlation)
+    i, j = places
+    filled = imputed[0][:, i] | imputed[1][:, j]
+    return {
+        "r_without_one": without_subject(space, np.asarray(pair.x), np.asarray(pair.y), i, j),
+        "imputed_share": filled.mean(axis=0) if filled.size else np.zeros(i.size),
+    }

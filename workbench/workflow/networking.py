@@ -10,23 +10,35 @@ from workbench.store import Change, json_bytes, table_bytes
 from workbench.workflow.analysis_view import AnalysisView, blocks_of, view_analysis
 from workbench.workflow.canonical import analysis_inputs, has_canonical_pairs
 from workbench.workflow.choices import choices_of
-from workbench.workflow.edges import edges_table, group_pairs_table, screen_analysis
+from workbench.workflow.drawings import write_drawings
+from workbench.workflow.edges import edges_table, group_pairs_table
 from workbench.workflow.feature_table import canonical_correlations, features_table, implied_correlations
 from workbench.workflow.fingerprints import fingerprint
+from workbench.workflow.private import FILE as PRIVATE_FILE
+from workbench.workflow.private import draw_removed, private_table, write_scores
 from workbench.workflow.record import analysis_record, fragile_sentence, screen_sentences
 from workbench.workflow.reporting import Reporter
+from workbench.workflow.screening import screen_analysis
 from workbench.workflow.showing import SHOWN
 from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
 
-VERSION = 1
+VERSION = 2
 EDGE_COLUMNS = (
     *("source", "source_block", "target", "target_block", "n", "r", "r_low", "r_high", "p", "q", "q_block"),
-    *("r_total", "q_total", "r_within", "q_within", "basis", "model_r", "component"),
+    *("r_total", "q_total", "r_within", "q_within", "basis", "support", "model_r", "component"),
     *("r_spearman", "r_without_one", "r_observed", "imputed_share", "community"),
 )
 FEATURE_COLUMNS = ("feature", "block", "layer", "label", "degree", "community")
-FILES = ("edges.tsv", "group_pairs.tsv", "features.tsv", "network.graphml", "record.json")
+FILES = (
+    "edges.tsv",
+    "group_pairs.tsv",
+    "features.tsv",
+    "network.graphml",
+    "record.json",
+    "private.tsv",
+    PRIVATE_FILE,
+)
 
 
 def networking_stage(state: ProjectState, name: str) -> Stage:
@@ -54,7 +66,7 @@ def _inputs(state: ProjectState, name: str) -> dict[str, str]:
     return hashes
 
 
-def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) -> None:
+def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) -> list[str]:
     view = view_analysis(state, name)
     screens = screen_analysis(view, reporter)
     edges, features = edges_table(view, screens), features_table(view)
@@ -73,8 +85,15 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
     _clear_shown(state, change, name)
     change.write_bytes(f"{folder}/network.graphml", graphml_bytes(graph))
     change.write_bytes(f"{folder}/record.json", json_bytes(analysis_record(state, view, screens, len(pairs))))
+    change.write_bytes(f"{folder}/private.tsv", table_bytes(private_table(state, view, screens.chosen)))
+    write_scores(change.new_file(f"{folder}/{PRIVATE_FILE}"), view, screens.chosen)
+    drawings = draw_removed(screens.chosen)
+    written = (
+        write_drawings(change, f"{folder}/figures", drawings, "captions_network.tsv") if drawings else []
+    )
     for line in filter(None, [*screen_sentences(view, screens, len(pairs)), fragile_sentence(edges)]):
         reporter.say(f"  {line}")
+    return written
 
 
 def _clear_shown(state: ProjectState, change: Change, name: str) -> None:

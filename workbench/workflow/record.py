@@ -9,11 +9,13 @@ from typing import Any
 import pandas as pd
 
 from workbench import __version__
-from workbench.engine import Nuisance, critical_r
+from workbench.engine import critical_r
 from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.canonical import analysis_inputs
 from workbench.workflow.choices import choices_of
-from workbench.workflow.edges import GROUP_BOUND, Screens
+from workbench.workflow.edges import GROUP_BOUND
+from workbench.workflow.private import private_lines, private_record
+from workbench.workflow.screening import Screens
 from workbench.workflow.state import ProjectState
 from workbench.workflow.tables import excluded
 
@@ -26,6 +28,7 @@ def analysis_record(
     state: ProjectState, view: AnalysisView, screens: Screens, group_pairs: int
 ) -> dict[str, Any]:
     """Return the record of an analysis: settings, inputs, samples, pairs tested, versions; no date."""
+    removes = view.settings.network.remove_private
     return {
         "format": FORMAT,
         "analysis": view.name,
@@ -41,10 +44,11 @@ def analysis_record(
             "intervals": "r_low, r_high at the false-coverage rate of the selected edges",
             "canonical_pairs": "two layers" if len(view.layers) == 2 else _not_paired(view),
         },
+        "private_variation": private_record(view, screens.chosen) if removes else "not removed",
         "choices": list(choices_of(state.settings)),
-        "edges": int(screens.chosen.r.size),
+        "edges": int(screens.chosen.found.r.size),
         "group_pairs": group_pairs,
-        "edges_cut": cut_sentence(screens.chosen, view) or None,
+        "edges_cut": cut_sentence(screens.chosen.found, view) or None,
         "inputs": analysis_inputs(state, view.name),
         "versions": {
             "workbench": __version__,
@@ -58,7 +62,7 @@ def analysis_record(
 
 def screen_sentences(view: AnalysisView, screens: Screens, group_pairs: int) -> list[str]:
     """Return what the screens tested and found, in plain words, before the network is described."""
-    tested, found = int(sum(screens.chosen.tested)), int(screens.chosen.r.size)
+    tested, found = int(sum(screens.chosen.found.tested)), int(screens.chosen.found.r.size)
     how = (
         "within groups"
         if screens.chosen is screens.within
@@ -69,9 +73,10 @@ def screen_sentences(view: AnalysisView, screens: Screens, group_pairs: int) -> 
     fdr = view.settings.network.fdr
     lines = [
         *reach_sentences(view, screens),
+        *(private_lines(view, screens.chosen) if view.settings.network.remove_private else []),
         f"{tested:,} cross-layer pairs tested ({how}), {found:,} edges at a false-discovery rate of {fdr:g}",
     ]
-    untestable = int(sum(screens.chosen.untestable))
+    untestable = int(sum(screens.chosen.found.untestable))
     if untestable:
         lines.append(
             f"{untestable:,} pairs could not be tested: a feature without variation on the shared samples"
@@ -80,7 +85,7 @@ def screen_sentences(view: AnalysisView, screens: Screens, group_pairs: int) -> 
         lines.append(
             f"{group_pairs:,} pairs correlate only with the group left in: group_pairs.tsv, not edges"
         )
-    cut = cut_sentence(screens.chosen, view)
+    cut = cut_sentence(screens.chosen.found, view)
     if cut:
         lines.append(cut)
     if len(view.layers) > 2:
@@ -91,13 +96,11 @@ def screen_sentences(view: AnalysisView, screens: Screens, group_pairs: int) -> 
 def reach_sentences(view: AnalysisView, screens: Screens) -> list[str]:
     """Return what this design could find at all: the |r| that a single true pair needs to become an edge."""
     lines = []
-    within = screens.chosen is screens.within
-    for (first, second), one, tested in zip(view.pairs, screens.shared, screens.chosen.tested, strict=True):
-        if tested:
-            removed = Nuisance.of(one.within if within else one.nuisance, one.n)
-            least = float(
-                critical_r(view.settings.network.fdr / sum(screens.chosen.tested), one.n - removed.rank - 1)
-            )
+    counts = screens.chosen.found.tested
+    for k, ((first, second), one) in enumerate(zip(view.pairs, screens.shared, strict=True)):
+        if counts[k]:
+            level = view.settings.network.fdr / sum(counts)
+            least = float(critical_r(level, screens.chosen.freedom[k]))
             lines.append(
                 f"{first} x {second}: on {one.n} samples a pair that is alone becomes an edge at |r| of {least:.2f} "
                 "or more; the more pairs there are, the lower"
@@ -158,9 +161,9 @@ def _pair_records(view: AnalysisView, screens: Screens) -> list[dict[str, Any]]:
             "left_out": view.lacking_design((first, second)),
             "nuisance": list(one.nuisance_names),
             "groups": list(one.groups.levels) if one.groups is not None else [],
-            "tested": int(screens.chosen.tested[k]),
-            "untestable": int(screens.chosen.untestable[k]),
-            "edges": int((screens.chosen.pair_index == k).sum()),
+            "tested": int(screens.chosen.found.tested[k]),
+            "untestable": int(screens.chosen.found.untestable[k]),
+            "edges": int((screens.chosen.found.pair_index == k).sum()),
         }
         for k, ((first, second), one) in enumerate(zip(view.pairs, screens.shared, strict=True))
     ]

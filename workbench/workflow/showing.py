@@ -22,6 +22,7 @@ from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.doubts import doubts_of
 from workbench.workflow.loaded_block import load_block
 from workbench.workflow.naming import find_feature
+from workbench.workflow.private import read_scores
 from workbench.workflow.state import ProjectState
 
 ENDS = ["source_block", "source", "target_block", "target"]
@@ -94,8 +95,8 @@ def _feature_story(state: ProjectState, analysis: str, tables: Tables, row: pd.S
     if len(partners):
         strongest = partners.iloc[0]
         lines.append(
-            f"{len(partners)} edge{'s' * (len(partners) != 1)}; the strongest is with {strongest['partner']} ({strongest['block']}), "
-            f"r = {strongest['r']:.2f}"
+            f"{len(partners)} edge{'s' * (len(partners) != 1)}; the strongest is with {strongest['partner']} "
+            f"({strongest['block']}), r = {strongest['r']:.2f}"
         )
     else:
         lines.append(
@@ -157,7 +158,8 @@ def _pair_story(state: ProjectState, analysis: str, tables: Tables, a: pd.Series
     blocks = {block: load_block(state, block) for block, _ in ends}
     view = AnalysisView(analysis, settings, state.settings, state.require_sheet(), blocks)
     within = bool(view.factors) and settings.network.select == "within"
-    values = pair_values(view, ends, within)
+    private = {block: read_scores(state, analysis, block) for block, _ in ends}
+    values = pair_values(view, ends, within, private)
     edge, beside = _row(tables.edges, ends), _row(tables.group_pairs, ends)
     lines, doubts = [*_standing(edge, beside, values, settings.network.fdr)], []
     if edge is not None:

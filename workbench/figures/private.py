@@ -1,0 +1,91 @@
+"""Real components of each block: which ones other layers share, and which were removed as private."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+from matplotlib.axes import Axes
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.figure import Figure
+
+from workbench.figures.drawing import Drawing
+from workbench.figures.style import (
+    COLOURS,
+    INK,
+    PALE,
+    TWO_COLUMNS,
+    figure_name,
+    figure_style,
+    note,
+    plain_legend,
+)
+
+MOST_BARS = 25
+
+
+@dataclass(frozen=True)
+class ComponentBar:
+    """One component: its number, its share of the block's variance, the block it is shared with (empty: private)."""
+
+    number: int
+    share: float
+    shared_with: str
+
+
+def draw_private(bars: Mapping[str, Sequence[ComponentBar]]) -> tuple[Drawing, ...]:
+    """Return the figure: a panel for each block, a bar for each of its real components."""
+    with figure_style():
+        rows = -(-len(bars) // 2)
+        figure = Figure(figsize=(TWO_COLUMNS, 0.5 + 2.1 * rows), layout="constrained")
+        FigureCanvasAgg(figure)
+        grid = figure.subplots(rows, 2, squeeze=False)
+        for axes, (name, components) in zip(grid.flat, bars.items(), strict=False):
+            component_bars(axes, name, components)
+        for axes in grid.flat[len(bars) :]:
+            axes.set_axis_off()
+        figure.draw_without_rendering()
+        figure.set_layout_engine("none")
+        return (Drawing("private_variation", figure, _caption(bars)),)
+
+
+def component_bars(axes: Axes, name: str, components: Sequence[ComponentBar]) -> Axes:
+    """Draw the share of variance of each real component, private ones pale and hatched, shared ones dark."""
+    if not components:
+        note(axes, f"{figure_name(name)}: no component told from noise")
+        return axes
+    shown = components[:MOST_BARS]
+    for private, colour, hatch, label in (
+        (False, COLOURS[0], "", "shared, stays"),
+        (True, PALE, "////", "private, removed"),
+    ):
+        mine = [one for one in shown if (not one.shared_with) == private]
+        if mine:
+            axes.bar(
+                [one.number for one in mine],
+                [100.0 * one.share for one in mine],
+                color=colour,
+                edgecolor=INK,
+                hatch=hatch,
+                linewidth=0.4,
+                width=0.8,
+                label=label,
+            )
+    axes.set_xticks(range(1, len(shown) + 1) if len(shown) <= 10 else [1, *range(5, len(shown) + 1, 5)])
+    axes.set_xlabel("component")
+    axes.set_ylabel("share of variance (%)")
+    axes.set_title(figure_name(name, 32), parse_math=False)
+    plain_legend(axes, loc="upper right")
+    return axes
+
+
+def _caption(bars: Mapping[str, Sequence[ComponentBar]]) -> str:
+    parts = []
+    for name, components in bars.items():
+        private = sum(not one.shared_with for one in components)
+        parts.append(f"{name}: {len(components)} real components, {private} private")
+    return (
+        "Share of each block's variance (nuisance, and within groups the group, removed) on its real components. Pale, "
+        "hatched: private to the block and removed before pairs were tested. Dark: shared with another layer; they "
+        f"stay. {'; '.join(parts)}."
+    )
