@@ -56,9 +56,9 @@ def test_a_pair_without_an_edge_is_no_evidence_of_none(command, finished, edges)
 
 def test_names_that_are_not_there_are_answered_with_the_nearest(command, run_once, edges):
     name = str(edges["source"].iloc[0])
-    code, _, err = command("show", name + "x", "--project", finished)
+    code, _, err = command("show", name + "x", "--project", run_once)
     assert (code, f"did you mean '{name}'" in err or "did you mean" in err) == (2, True)
-    code, _, err = command("show", *sorted(set(edges["source"]))[:2], "--project", finished)
+    code, _, err = command("show", *sorted(set(edges["source"]))[:2], "--project", run_once)
     assert (code, "are of one layer (transcripts)" in err) == (2, True)
 
 
@@ -66,7 +66,7 @@ def test_a_figure_goes_where_it_is_asked_for(command, run_once, edges, tmp_path)
     pair = (edges["source"].iloc[0], edges["target"].iloc[0])
     assert command("show", *pair, "--figure", tmp_path / "a.png", "--project", run_once)[0] == 0
     assert (tmp_path / "a.png").read_bytes()[:4] == b"\x89PNG"
-    code, _, err = command("show", *pair, "--figure", tmp_path / "a.gif", "--project", finished)
+    code, _, err = command("show", *pair, "--figure", tmp_path / "a.gif", "--project", run_once)
     assert (code, "allowed: .svg, .png" in err) == (2, True)
 
 
