@@ -3,6 +3,9 @@
 from __future__ import annotations
 
 from workbench.engine.cca import RegularisedCCA
+from workbench.engine.double_outcome import ClassOutcome, NumberOutcome
+from workbench.engine.double_splits import BlockSource, BlockSplit, block_source, standard_split
+from workbench.engine.double_validation import DoubleValidation, HeldOutModel, double_validation
 from workbench.engine.effects import GroupEffects, group_effects
 from workbench.engine.evidence import EdgeEvidence, edge_evidence
 from workbench.engine.folds import balanced_folds
@@ -18,6 +21,12 @@ from workbench.engine.nuisance import (
     fit_residuals,
     standardise,
 )
+from workbench.engine.panel_selection import PANEL_CAUTION, Panel, select_panel
+from workbench.engine.performance_measures import (
+    ClassPerformance,
+    NumberPerformance,
+    roc_curve,
+)
 from workbench.engine.permutation import PairTest, canonical_pair_test
 from workbench.engine.repeated import (
     SubjectSpace,
@@ -29,6 +38,8 @@ from workbench.engine.repeated import (
 from workbench.engine.ridge_choice import RidgeChoice, choose_ridge
 from workbench.engine.screen import BlockPair, BlockScreen, PairScreen, screen_blocks, screen_pairs
 from workbench.engine.splits import Split, SplitSource, array_source
+from workbench.engine.stability import HalfScreen, PairStability, half_samples, pair_stability
+from workbench.engine.strongest import Strongest, strongest_pairs
 from workbench.engine.subjects import (
     SubjectDesign,
     centred,
@@ -42,30 +53,44 @@ from workbench.engine.tiles import Limits
 from workbench.engine.validation import CrossValidation, cross_validated_correlations
 
 __all__ = [
+    "PANEL_CAUTION",
     "BlockPair",
     "BlockScreen",
+    "BlockSource",
+    "BlockSplit",
+    "ClassOutcome",
+    "ClassPerformance",
     "CrossValidation",
+    "DoubleValidation",
     "EdgeEvidence",
     "FittedResiduals",
     "GroupEffects",
+    "HalfScreen",
+    "HeldOutModel",
     "Limits",
     "MultiblockDiscriminant",
     "MultiblockPLS",
     "Nuisance",
+    "NumberOutcome",
+    "NumberPerformance",
     "PairFigures",
     "PairScreen",
+    "PairStability",
     "PairTest",
+    "Panel",
     "RegularisedCCA",
     "RidgeChoice",
     "Split",
     "SplitSource",
     "Standardised",
+    "Strongest",
     "SubjectDesign",
     "SubjectSpace",
     "aliased",
     "array_source",
     "balanced_folds",
     "benjamini_hochberg",
+    "block_source",
     "by_visit",
     "canonical_pair_test",
     "centred",
@@ -73,14 +98,21 @@ __all__ = [
     "critical_r",
     "cross_validated_correlations",
     "differences",
+    "double_validation",
     "edge_evidence",
     "fisher_interval",
     "fit_residuals",
     "group_effects",
+    "half_samples",
+    "pair_stability",
+    "roc_curve",
     "screen_blocks",
     "screen_pairs",
     "screen_repeated",
+    "select_panel",
+    "standard_split",
     "standardise",
+    "strongest_pairs",
     "subject_labels",
     "subject_means",
     "subject_space",

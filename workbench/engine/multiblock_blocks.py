@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.engine.nuisance import residual_scale
+from workbench.engine.nuisance import CONSTANT_TOLERANCE
 from workbench.engine.sides import block_slices, block_weights
 from workbench.errors import NumericsError
 
@@ -39,8 +39,10 @@ class BlockScaling:
 
     def standardised(self, x: FloatArray) -> FloatArray:
         """Return all features centred and scaled; constant ones and lacking blocks are 0, the training mean."""
-        values: FloatArray = np.where(np.isnan(x), 0.0, (x - self.mean) / self.scale)
-        values[:, ~self.varies] = 0.0
+        values: FloatArray = x - self.mean
+        values *= np.where(self.varies, 1.0 / self.scale, 0.0)
+        if np.isnan(values.sum()):
+            values[np.isnan(values)] = 0.0
         return values
 
 
@@ -72,14 +74,17 @@ def fit_scaling(x: FloatArray, block_sizes: Sequence[int] | None) -> BlockScalin
     mean, deviation = np.zeros(x.shape[1]), np.ones(x.shape[1])
     varies = np.zeros(x.shape[1], dtype=bool)
     for b, block in enumerate(blocks):
-        rows = x[present[:, b], block]
+        rows = x[:, block] if present[:, b].all() else x[present[:, b], block]
         if rows.shape[0] < 2:
             raise NumericsError(
                 f"block {b} (from 0) has n_samples={rows.shape[0]}; a minimum of 2 is required: add samples, or "
                 "leave the block out"
             )
         mean[block] = rows.mean(axis=0)
-        deviation[block], varies[block] = residual_scale(rows, rows - mean[block], 1)
+        centred = rows - mean[block]
+        squares = np.einsum("ij,ij->j", centred, centred)
+        deviation[block] = np.sqrt(squares / (rows.shape[0] - 1))
+        varies[block] = squares > CONSTANT_TOLERANCE**2 * (squares + rows.shape[0] * mean[block] ** 2)
     if not varies.any():
         raise NumericsError(f"none of the {x.shape[1]} features varies; leave the blocks out")
     scale = np.ones(x.shape[1])

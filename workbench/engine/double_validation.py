@@ -1,0 +1,426 @@
+"""Repeated double cross-validation of multi-block PLS, and a permutation test that repeats the whole of it."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from workbench.engine.double_arrangements import Arrangements, outcome_arrangements
+from workbench.engine.double_loop import FoldKernels, nested_fold
+from workbench.engine.double_outcome import ClassOutcome, HeldOut, NumberOutcome, Outcome
+from workbench.engine.double_splits import BlockSource, SplitKernels, split_kernels
+from workbench.engine.folds import Fold
+from workbench.engine.nuisance import fit_residuals
+from workbench.engine.outcome_rule import learn_rule
+from workbench.engine.performance_measures import (
+    ClassPerformance,
+    NumberPerformance,
+    class_performance,
+    number_performance,
+)
+from workbench.engine.smallest_p import TIE_TOLERANCE
+from workbench.engine.subjects import SubjectDesign, whole_subject_folds
+from workbench.errors import NumericsError
+
+FloatArray = NDArray[np.float64]
+IndexArray = NDArray[np.intp]
+Performance = ClassPerformance | NumberPerformance
+
+
+@dataclass(frozen=True, eq=False)
+class HeldOutModel:
+    """Predictions of one choice of blocks for samples held out, and their figures.
+
+    Attributes
+    ----------
+    predicted : ndarray of shape (repeats, n_samples, columns)
+        Numbers: outcomes in standard deviations, the nuisance's part included. Classes: predicted codes less
+        the cut that the inner loop learnt. NaN where a sample was not scored.
+    probabilities : ndarray of shape (repeats, n_samples, n_classes) or None
+        If all classes were equally frequent; slope learnt in the inner loop.
+    classes : ndarray of int, shape (repeats, n_samples), or None
+        -1 where not scored.
+    components : ndarray of int, shape (repeats, folds)
+        Chosen in the inner loop.
+    performance : ClassPerformance or NumberPerformance
+    """
+
+    predicted: FloatArray
+    probabilities: FloatArray | None
+    classes: IndexArray | None
+    components: IndexArray
+    performance: Performance
+
+
+@dataclass(frozen=True, eq=False)
+class PermutationNull:
+    """Permutation test of the whole procedure.
+
+    Attributes
+    ----------
+    p : float or None
+        ``(1 + exceedances) / (1 + permutations)``; None where withheld.
+    observed : float
+        AUC, or the Q2 that the blocks add to the nuisance; mean over the repeats.
+    null : ndarray of shape (permutations,)
+    how : str
+        What was exchanged.
+    withheld : str or None
+    """
+
+    p: float | None
+    observed: float
+    null: FloatArray
+    how: str
+    withheld: str | None
+
+
+@dataclass(frozen=True, eq=False)
+class DoubleValidation:
+    """Out-of-sample figures of multi-block PLS.
+
+    Attributes
+    ----------
+    model : HeldOutModel
+        All blocks together.
+    singles : tuple of HeldOutModel
+        Each block alone, by the same folds and the same choice inside; empty with one block.
+    nuisance : HeldOutModel or None
+        The outcome from the nuisance columns alone; None without.
+    test : PermutationNull
+    by_components : ndarray of shape (repeats, n_candidates)
+        The test's statistic at each number of components, none of them chosen.
+    candidates : tuple of int
+    components : int
+        Chosen on all samples, for the final fit.
+    folds, repeats : int
+    n_scored : ndarray of int, shape (repeats,)
+    """
+
+    model: HeldOutModel
+    singles: tuple[HeldOutModel, ...]
+    nuisance: HeldOutModel | None
+    test: PermutationNull
+    by_components: FloatArray
+    candidates: tuple[int, ...]
+    components: int
+    folds: int
+    repeats: int
+    n_scored: IndexArray
+
+
+def double_validation(
+    source: BlockSource,
+    outcome: ClassOutcome | NumberOutcome,
+    *,
+    nuisance: FloatArray | None = None,
+    subjects: SubjectDesign | None = None,
+    strata: NDArray[Any] | None = None,
+    exchange: NDArray[Any] | None = None,
+    candidates: Sequence[int] = (1, 2, 3, 4, 5),
+    folds: int = 5,
+    repeats: int = 5,
+    permutations: int = 0,
+    seed: int = 0,
+    progress: Callable[[int, int], None] | None = None,
+) -> DoubleValidation:
+    """Out-of-sample figures from repeated double cross-validation, and the p of the whole procedure.
+
+    In each outer fold an inner loop over the training part alone chooses the number of components (the fewest
+    whose loss is within one standard error of the best) and, for classes, learns cut and slope from the
+    samples that it holds out; the model is fitted to the training part and the test samples are predicted
+    once. Loss: squared error, or the share of pairs of samples of two classes that are ranked wrongly. The
+    test repeats all of this for every arrangement of the outcome, in the same folds; their kernels are
+    computed once.
+
+    Parameters
+    ----------
+    source : callable
+        Split of given training and test positions, for example :func:`block_source`.
+    outcome : ClassOutcome or NumberOutcome
+        As delivered, one arrangement.
+    nuisance : ndarray of shape (n_samples, n_columns), optional
+        Columns whose own prediction of the outcome is reported beside; remove them from the blocks in
+        ``source``.
+    subjects : SubjectDesign, optional
+        Folds are whole per subject.
+    strata : ndarray of shape (n_samples,) or (n_samples, n_factors), optional
+        Levels to be spread over the folds beside the classes.
+    exchange : ndarray of shape (n_samples,), optional
+        See :func:`outcome_arrangements`.
+    candidates : sequence of int
+        Numbers of components to choose from, fewest first; one number is no choice.
+    folds, repeats : int
+        Folds of the outer and of the inner loop; repeats of the outer one.
+    permutations : int
+        0: no test.
+    seed : int
+    progress : callable, optional
+        Called with outer folds done and outer folds in all.
+
+    Raises
+    ------
+    NumericsError
+        When folds cannot be formed, or no sample can be scored.
+
+    References
+    ----------
+    Filzmoser, Liebmann & Varmuza 2009, J Chemometrics 23:160. Westerhuis et al. 2008, Metabolomics 4:81.
+
+    Examples
+    --------
+    >>> from workbench.engine.double_splits import block_source
+    >>> rng = np.random.default_rng(0)
+    >>> ill = np.repeat([0, 1], 20)
+    >>> blocks = [rng.normal(size=(40, 60)) + np.outer(ill, np.arange(60) < 12), rng.normal(size=(40, 30))]
+    >>> found = double_validation(block_source(blocks), ClassOutcome.of(ill), repeats=2, permutations=19)
+    >>> bool(found.model.performance.balanced_accuracy.mean() > 0.8), found.test.p
+    (True, 0.05)
+    """
+    if outcome.size != 1:
+        raise NumericsError(
+            f"the outcome comes in {outcome.size} arrangements; give it as delivered, arranged here"
+        )
+    run = _Run.of(
+        source, outcome, nuisance, subjects, strata, exchange, candidates, folds, permutations, seed
+    )
+    repeated = [run.repeat(r, repeats, progress) for r in range(repeats)]
+    return run.summary(repeated)
+
+
+@dataclass(eq=False)
+class _Model:
+    """Predictions of one choice of blocks, filled fold by fold."""
+
+    blocks: Sequence[int] | slice
+    outcome: Outcome
+    n: int
+    parts: list[HeldOut]
+    every: list[HeldOut]
+    components: list[int]
+    probabilities: FloatArray | None
+    classes: IndexArray | None
+
+    @classmethod
+    def of(cls, blocks: Sequence[int] | slice, outcome: Outcome, n: int) -> _Model:
+        classes = isinstance(outcome, ClassOutcome)
+        return cls(
+            blocks,
+            outcome,
+            n,
+            [],
+            [],
+            [],
+            np.full((n, outcome.n_classes), np.nan) if isinstance(outcome, ClassOutcome) else None,
+            np.full(n, -1, dtype=np.intp) if classes else None,
+        )
+
+    def add(self, kernels: FoldKernels, candidates: Sequence[int]) -> None:
+        """Predict the test samples of an outer fold."""
+        found = nested_fold(kernels, self.blocks, self.outcome, candidates)
+        self.parts.append(found.test)
+        self.every.append(_first(found.every))
+        self.components.append(int(found.chosen[0]))
+        if (
+            isinstance(self.outcome, ClassOutcome)
+            and self.classes is not None
+            and self.probabilities is not None
+        ):
+            labels = self.outcome.labels[found.inner.rows, 0]
+            rule = learn_rule(found.inner.predicted[0, :, :, 0], labels, self.outcome.n_classes)
+            values = found.test.predicted[0, :, :, 0]
+            self.classes[found.test.rows] = rule.classes(values)
+            self.probabilities[found.test.rows] = rule.probabilities(values)
+
+    def predicted(self) -> FloatArray:
+        """Predictions of the outcome as delivered, shape (n_samples, columns)."""
+        values = np.full((self.n, self.outcome.columns), np.nan)
+        for part in self.parts:
+            values[part.rows] = part.predicted[0, :, :, 0]
+        return values
+
+
+@dataclass(frozen=True, eq=False)
+class _Repeat:
+    models: tuple[_Model, ...]
+    statistic: FloatArray
+    by_components: FloatArray
+    mean: FloatArray
+    nuisance: FloatArray
+
+
+@dataclass(frozen=True, eq=False)
+class _Run:
+    """Everything that stays the same over the repeats."""
+
+    source: BlockSource
+    outcome: Outcome
+    arranged: Outcome
+    arrangements: Arrangements
+    nuisance: FloatArray | None
+    subjects: SubjectDesign
+    levels: NDArray[Any] | None
+    candidates: tuple[int, ...]
+    folds: int
+    seed: int
+    n: int
+
+    @classmethod
+    def of(
+        cls,
+        source: BlockSource,
+        outcome: ClassOutcome | NumberOutcome,
+        nuisance: FloatArray | None,
+        subjects: SubjectDesign | None,
+        strata: NDArray[Any] | None,
+        exchange: NDArray[Any] | None,
+        candidates: Sequence[int],
+        folds: int,
+        permutations: int,
+        seed: int,
+    ) -> _Run:
+        classes = isinstance(outcome, ClassOutcome)
+        delivered = outcome.labels[:, 0] if isinstance(outcome, ClassOutcome) else outcome.values[:, :, 0]
+        n = len(delivered)
+        drawn = outcome_arrangements(delivered, permutations, seed, subjects=subjects, exchange=exchange)
+        columns = [delivered[:, None]] if classes else []
+        if strata is not None:
+            columns.append(np.asarray(strata).reshape(n, -1))
+        return cls(
+            source,
+            outcome,
+            outcome.arranged(drawn.rows),
+            drawn,
+            nuisance if nuisance is not None and nuisance.shape[1] else None,
+            SubjectDesign.of(np.arange(n)) if subjects is None else subjects,
+            np.column_stack(columns) if columns else None,
+            tuple(candidates),
+            folds,
+            seed,
+            n,
+        )
+
+    def repeat(self, r: int, repeats: int, progress: Callable[[int, int], None] | None) -> _Repeat:
+        """One repeat: every sample is held out once."""
+        models: list[_Model] = []
+        mean, nuisance = np.full((2, self.n, self.outcome.columns), np.nan)
+        for k, (train, test) in enumerate(self._folds(np.arange(self.n), (r,))):
+            kernels = FoldKernels(
+                self._kernels(train, test),
+                tuple(
+                    self._kernels(train[inner_train], train[inner_test])
+                    for inner_train, inner_test in self._folds(train, (r, k))
+                ),
+            )
+            models = models or self._models(len(kernels.outer.train))
+            for model in models:
+                model.add(kernels, self.candidates)
+            self._baselines(train, test, mean, nuisance)
+            if progress is not None:
+                progress(r * self.folds + k + 1, repeats * self.folds)
+        statistic = self.arranged.statistic(models[0].parts)
+        every = models[0].every
+        by_components = [
+            float(self.outcome.statistic([HeldOut(e.train, e.rows, e.predicted[[a]]) for e in every])[0])
+            for a in range(len(self.candidates))
+        ]
+        return _Repeat(tuple(models), statistic, np.array(by_components), mean, nuisance)
+
+    def summary(self, repeated: list[_Repeat]) -> DoubleValidation:
+        """Gather the repeats."""
+        statistics = np.mean([one.statistic for one in repeated], axis=0)
+        count = len(repeated[0].models)
+        described = [self._described(repeated, m) for m in range(count)]
+        last = 1 if self.nuisance is not None else 0
+        nuisance = described[-1] if last else None
+        return DoubleValidation(
+            model=described[0],
+            singles=tuple(described[1 : count - last]),
+            nuisance=nuisance,
+            test=self._test(statistics),
+            by_components=np.array([one.by_components for one in repeated]),
+            candidates=self.candidates,
+            components=self._final(repeated),
+            folds=self.folds,
+            repeats=len(repeated),
+            n_scored=np.isfinite(described[0].predicted[:, :, 0]).sum(axis=1),
+        )
+
+    def _models(self, blocks: int) -> list[_Model]:
+        """All blocks (in every arrangement), each alone, and the nuisance, whose kernel is the last."""
+        last = 1 if self.nuisance is not None else 0
+        models = [_Model.of(slice(0, blocks - last), self.arranged, self.n)]
+        if blocks - last > 1:
+            models += [_Model.of([b], self.outcome, self.n) for b in range(blocks - last)]
+        if last:
+            models.append(_Model.of([blocks - 1], self.outcome, self.n))
+        return models
+
+    def _folds(self, rows: IndexArray, key: tuple[int, ...]) -> list[Fold]:
+        labels = None if self.levels is None else self.levels[rows]
+        design = self.subjects.take(rows)
+        seed = np.random.SeedSequence(self.seed, spawn_key=key)
+        return whole_subject_folds(design, labels, self.folds, seed)
+
+    def _kernels(self, train: IndexArray, test: IndexArray) -> SplitKernels:
+        found = split_kernels(self.source(train, test), train, test)
+        if self.nuisance is None:
+            return found
+        fitted = fit_residuals(None, self.nuisance[train])
+        x, z = fitted.standardised(None, self.nuisance[train]), fitted.standardised(None, self.nuisance[test])
+        return SplitKernels(
+            train,
+            test,
+            np.concatenate([found.train, (x @ x.T)[None]]),
+            np.concatenate([found.test, (z @ x.T)[None]]),
+        )
+
+    def _baselines(self, train: IndexArray, test: IndexArray, mean: FloatArray, nuisance: FloatArray) -> None:
+        """Predictions of numbers by the training mean and by the nuisance."""
+        if isinstance(self.outcome, NumberOutcome):
+            values = self.outcome.values[:, :, 0]
+            mean[test] = values[train].mean(axis=0)
+            nuisance[test] = values[test] - self.outcome.targets(train, test)[:, :, 0]
+
+    def _described(self, repeated: list[_Repeat], m: int) -> HeldOutModel:
+        models = [one.models[m] for one in repeated]
+        predicted = np.array([model.predicted() for model in models])
+        components = np.array([model.components for model in models])
+        if not np.isfinite(predicted).any():
+            raise NumericsError(
+                "no sample can be scored out of fold: each has a nuisance level that its training part lacks; "
+                "remove fewer nuisance columns"
+            )
+        if isinstance(self.outcome, ClassOutcome):
+            classes = np.array([model.classes for model in models])
+            probabilities = np.array([model.probabilities for model in models])
+            labels = self.outcome.labels[:, 0]
+            figures: Performance = class_performance(labels, predicted, classes, probabilities)
+            return HeldOutModel(predicted, probabilities, classes, components, figures)
+        assert isinstance(self.outcome, NumberOutcome)
+        mean = np.array([one.mean for one in repeated])
+        nuisance = np.array([one.nuisance for one in repeated])
+        of_nuisance = self.nuisance is not None and m == len(repeated[0].models) - 1
+        total = np.where(np.isfinite(predicted), nuisance, np.nan) if of_nuisance else predicted + nuisance
+        figures = number_performance(self.outcome.values[:, :, 0], total, mean, nuisance)
+        return HeldOutModel(total, None, None, components, figures)
+
+    def _test(self, statistics: FloatArray) -> PermutationNull:
+        observed, null = float(statistics[0]), statistics[1:]
+        bar = observed - TIE_TOLERANCE * abs(observed)
+        p = float((1 + np.count_nonzero(null >= bar)) / (1 + null.size)) if null.size else None
+        return PermutationNull(p, observed, null, self.arrangements.how, self.arrangements.withheld)
+
+    def _final(self, repeated: list[_Repeat]) -> int:
+        """Components for the fit on all samples: the middle of what the repeats choose."""
+        places = [int(self.outcome.choose(one.models[0].every)[0]) for one in repeated]
+        return self.candidates[int(np.median(places))]
+
+
+def _first(part: HeldOut) -> HeldOut:
+    """Keep the outcome as delivered alone."""
+    return HeldOut(part.train, part.rows, part.predicted[:, :, :, :1])

@@ -1,0 +1,302 @@
+"""Marker panel: the smallest set of features, across blocks, that predicts as well as larger ones."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from workbench.engine.double_choice import fewest_as_good
+from workbench.engine.double_outcome import ClassOutcome, HeldOut, NumberOutcome
+from workbench.engine.double_splits import BlockSource, BlockSplit
+from workbench.engine.folds import Fold
+from workbench.engine.linear import column_correlations
+from workbench.engine.multiblock_kernel import kernel_components, kernel_products
+from workbench.engine.outcome_rule import learn_rule
+from workbench.engine.panel_candidates import (
+    Candidate,
+    columns_of,
+    panel_candidates,
+    rank_features,
+    try_candidates,
+)
+from workbench.engine.performance_measures import (
+    ClassPerformance,
+    NumberPerformance,
+    class_performance,
+    number_performance,
+)
+from workbench.engine.subjects import SubjectDesign, whole_subject_folds
+
+FloatArray = NDArray[np.float64]
+IndexArray = NDArray[np.intp]
+
+LARGEST = 200
+ALIKE = 0.7
+MOST_ALTERNATIVES = 5
+
+PANEL_CAUTION = (
+    "A panel is a short list to confirm by a targeted assay in samples that nobody has looked at yet. It is not a "
+    "diagnostic test, other features may do as well (alternatives), and its figure is that of the whole procedure of "
+    "choosing, not of these features."
+)
+
+
+@dataclass(frozen=True, eq=False)
+class Panel:
+    """A chosen panel, and how the procedure that chose it does on samples held out.
+
+    Attributes
+    ----------
+    block, feature : ndarray of int, shape (size,)
+        Block, and position in the block; the most important first.
+    coefficient : ndarray of shape (size, columns)
+        Of the refitted model, for standardised features: predicted outcome, or codes of the classes.
+    frequency : ndarray of shape (size,)
+        Share of the outer folds' training parts whose panel has the feature.
+    alternatives : tuple of tuple of (int, int, float)
+        For each feature, others that correlate with it at ``ALIKE`` or more: block, position, correlation.
+    components : int
+        Of the refitted model.
+    performance : ClassPerformance or NumberPerformance
+        Of the procedure, ranking and size chosen anew in every training part.
+    sizes : ndarray of int, shape (repeats, folds)
+        Sizes chosen there.
+    candidates : tuple of Candidate
+    loss : ndarray of shape (n_candidates,)
+        Mean loss of each candidate on samples held out, none of them chosen.
+    every_frequency : tuple of ndarray
+        For each block the share of the training parts whose panel has each feature.
+    """
+
+    block: IndexArray
+    feature: IndexArray
+    coefficient: FloatArray
+    frequency: FloatArray
+    alternatives: tuple[tuple[tuple[int, int, float], ...], ...]
+    components: int
+    performance: ClassPerformance | NumberPerformance
+    sizes: IndexArray
+    candidates: tuple[Candidate, ...]
+    loss: FloatArray
+    every_frequency: tuple[FloatArray, ...]
+
+
+def select_panel(
+    source: BlockSource,
+    outcome: ClassOutcome | NumberOutcome,
+    block_sizes: Sequence[int],
+    *,
+    subjects: SubjectDesign | None = None,
+    strata: NDArray[Any] | None = None,
+    components: Sequence[int] = (1, 2, 3),
+    largest: int = LARGEST,
+    folds: int = 5,
+    repeats: int = 5,
+    seed: int = 0,
+    progress: Callable[[int, int], None] | None = None,
+) -> Panel:
+    """Choose a panel, and measure the choosing by double cross-validation.
+
+    In every training part the features are ranked by a fit (:func:`rank_features`), the most important
+    ones refitted as one block, and the smallest size taken whose loss on the inner loop's samples is within one
+    standard error (of the difference on the same samples) of the best; the outer test samples are predicted once.
+    The panel itself comes from all samples, its size from the outer folds' samples.
+
+    Parameters
+    ----------
+    source : callable
+    outcome : ClassOutcome or NumberOutcome
+    block_sizes : sequence of int
+        Features of each block.
+    subjects, strata, folds, repeats, seed, progress
+        See :func:`double_validation`.
+    components : sequence of int
+        Numbers of components to try.
+    largest : int
+        Most features of a panel.
+
+    Examples
+    --------
+    >>> from workbench.engine.double_splits import block_source
+    >>> rng = np.random.default_rng(0)
+    >>> markers = rng.normal(size=(80, 4))
+    >>> first = np.hstack([markers[:, :2], rng.normal(size=(80, 40))])
+    >>> second = np.hstack([markers[:, 2:], rng.normal(size=(80, 9))])
+    >>> outcome = NumberOutcome.of(markers.sum(axis=1))
+    >>> found = select_panel(block_source([first, second]), outcome, [42, 11], repeats=1)
+    >>> sorted(zip(found.block.tolist(), found.feature.tolist()))
+    [(0, 0), (0, 1), (1, 0), (1, 1)]
+    """
+    n = _n_samples(outcome)
+    tried = panel_candidates(sum(block_sizes), largest, components)
+    run = _PanelRun(
+        source, outcome, _design(subjects, n), _levels(outcome, strata), tried, folds, seed, block_sizes
+    )
+    repeated = []
+    for r in range(repeats):
+        repeated.append(run.repeat(r))
+        if progress is not None:
+            progress(r + 1, repeats)
+    return run.panel(repeated)
+
+
+@dataclass(frozen=True, eq=False)
+class _Repeat:
+    predicted: FloatArray
+    mean: FloatArray
+    nuisance: FloatArray
+    classes: IndexArray
+    probabilities: FloatArray
+    every: list[HeldOut]
+    chosen: list[IndexArray]
+
+
+@dataclass(frozen=True, eq=False)
+class _PanelRun:
+    source: BlockSource
+    outcome: ClassOutcome | NumberOutcome
+    subjects: SubjectDesign
+    levels: NDArray[Any] | None
+    candidates: tuple[Candidate, ...]
+    folds: int
+    seed: int
+    block_sizes: Sequence[int]
+
+    @property
+    def n(self) -> int:
+        return self.subjects.n_samples
+
+    def repeat(self, r: int) -> _Repeat:
+        n_classes = self.outcome.n_classes if isinstance(self.outcome, ClassOutcome) else 1
+        predicted, mean, nuisance = np.full((3, self.n, self.outcome.columns), np.nan)
+        found = _Repeat(
+            predicted, mean, nuisance, np.full(self.n, -1), np.full((self.n, n_classes), np.nan), [], []
+        )
+        for k, (train, test) in enumerate(self._folds(np.arange(self.n), (r,))):
+            inner = [self._try(train[taught], train[held])[0] for taught, held in self._folds(train, (r, k))]
+            place = int(self.outcome.choose(inner)[0])
+            outer, chosen = self._try(train, test)
+            found.every.append(outer)
+            found.chosen.append(chosen[place])
+            self._score(found, inner, outer, place)
+        return found
+
+    def panel(self, repeated: list[_Repeat]) -> Panel:
+        every = np.arange(self.n)
+        whole = self.source(every, every)
+        losses = [self.outcome.losses(one.every) for one in repeated]
+        weights = [self.outcome.weights(np.concatenate([e.rows for e in one.every])) for one in repeated]
+        place = int(np.median([fewest_as_good(a, w)[0] for a, w in zip(losses, weights, strict=True)]))
+        chosen = self.candidates[place]
+        codes = self.outcome.codes(every)[:, :, 0]
+        columns = rank_features(whole.train, codes, [chosen.components], chosen.size)[0]
+        block, feature = self._named(whole, columns)
+        values = columns_of(whole.train, columns)
+        frequency = self._frequency(repeated)
+        fitted = kernel_components(kernel_products(values), codes, chosen.components)
+        return Panel(
+            block=block,
+            feature=feature,
+            coefficient=values.T @ fitted.coefficients,
+            frequency=np.array([frequency[b][j] for b, j in zip(block, feature, strict=True)]),
+            alternatives=self._alternatives(whole, columns, values),
+            components=chosen.components,
+            performance=self._performance(repeated),
+            sizes=np.array([[one.size for one in r.chosen] for r in repeated]),
+            candidates=self.candidates,
+            loss=np.mean(
+                [np.einsum("knp,np->k", a, w) for a, w in zip(losses, weights, strict=True)], axis=0
+            ),
+            every_frequency=frequency,
+        )
+
+    def _folds(self, rows: IndexArray, key: tuple[int, ...]) -> list[Fold]:
+        labels = None if self.levels is None else self.levels[rows]
+        seed = np.random.SeedSequence(self.seed, spawn_key=key)
+        return whole_subject_folds(self.subjects.take(rows), labels, self.folds, seed)
+
+    def _try(self, train: IndexArray, test: IndexArray) -> tuple[HeldOut, list[IndexArray]]:
+        split = self.source(train, test)
+        predicted, chosen = try_candidates(split, self.outcome.codes(train)[:, :, 0], self.candidates)
+        scored = np.isfinite(predicted).all(axis=(0, 2, 3))
+        named = [np.column_stack(self._named(split, columns)) for columns in chosen]
+        return HeldOut(train, test[scored], predicted[:, scored]), named
+
+    def _score(self, found: _Repeat, inner: Sequence[HeldOut], outer: HeldOut, place: int) -> None:
+        values = outer.predicted[place, :, :, 0]
+        if isinstance(self.outcome, NumberOutcome):
+            truth = self.outcome.values[:, :, 0]
+            found.mean[outer.rows] = truth[outer.train].mean(axis=0)
+            found.nuisance[outer.rows] = (
+                truth[outer.rows] - self.outcome.targets(outer.train, outer.rows)[:, :, 0]
+            )
+            found.predicted[outer.rows] = values + found.nuisance[outer.rows]
+            return
+        rows = np.concatenate([part.rows for part in inner])
+        held = np.concatenate([part.predicted[place] for part in inner])
+        level = self.outcome.level(rows, held)[:, 0]
+        rule = learn_rule(held[:, :, 0] - level, self.outcome.labels[rows, 0], self.outcome.n_classes)
+        found.predicted[outer.rows] = values - level
+        found.classes[outer.rows] = rule.classes(values - level)
+        found.probabilities[outer.rows] = rule.probabilities(values - level)
+
+    def _performance(self, repeated: list[_Repeat]) -> ClassPerformance | NumberPerformance:
+        predicted = np.array([one.predicted for one in repeated])
+        if isinstance(self.outcome, NumberOutcome):
+            mean, nuisance = (
+                np.array([getattr(one, name) for one in repeated]) for name in ("mean", "nuisance")
+            )
+            return number_performance(self.outcome.values[:, :, 0], predicted, mean, nuisance)
+        classes = np.array([one.classes for one in repeated])
+        probabilities = np.array([one.probabilities for one in repeated])
+        return class_performance(self.outcome.labels[:, 0], predicted, classes, probabilities)
+
+    def _named(self, split: BlockSplit, columns: IndexArray) -> tuple[IndexArray, IndexArray]:
+        """Block, and position among all of the block's features, of columns side by side."""
+        starts = np.cumsum([0, *(kept.size for kept in split.kept)])
+        block = np.searchsorted(starts, columns, side="right") - 1
+        feature = np.array(
+            [split.kept[b][c - starts[b]] for b, c in zip(block, columns, strict=True)], dtype=np.intp
+        )
+        return block.astype(np.intp), feature
+
+    def _frequency(self, repeated: list[_Repeat]) -> tuple[FloatArray, ...]:
+        counts = [np.zeros(size) for size in self.block_sizes]
+        for panel in (one for r in repeated for one in r.chosen):
+            for b, j in panel:
+                counts[b][j] += 1.0
+        return tuple(count / (len(repeated) * self.folds) for count in counts)
+
+    def _alternatives(
+        self, whole: BlockSplit, columns: IndexArray, values: FloatArray
+    ) -> tuple[tuple[tuple[int, int, float], ...], ...]:
+        r = np.concatenate([column_correlations(x, values) for x in whole.train])
+        found = []
+        for k, column in enumerate(columns):
+            alike = np.flatnonzero(np.abs(np.nan_to_num(r[:, k])) >= ALIKE)
+            alike = alike[alike != column]
+            alike = alike[np.argsort(-np.abs(r[alike, k]), kind="stable")][:MOST_ALTERNATIVES]
+            block, feature = self._named(whole, alike)
+            found.append(
+                tuple((int(b), int(j), float(r[c, k])) for b, j, c in zip(block, feature, alike, strict=True))
+            )
+        return tuple(found)
+
+
+def _n_samples(outcome: ClassOutcome | NumberOutcome) -> int:
+    return len(outcome.labels if isinstance(outcome, ClassOutcome) else outcome.values)
+
+
+def _design(subjects: SubjectDesign | None, n: int) -> SubjectDesign:
+    return SubjectDesign.of(np.arange(n)) if subjects is None else subjects
+
+
+def _levels(outcome: ClassOutcome | NumberOutcome, strata: NDArray[Any] | None) -> NDArray[Any] | None:
+    columns = [outcome.labels] if isinstance(outcome, ClassOutcome) else []
+    if strata is not None:
+        columns.append(np.asarray(strata).reshape(_n_samples(outcome), -1))
+    return np.column_stack(columns) if columns else None
