@@ -10,6 +10,9 @@ conditions, that shift every feature.
 The tables are delivered differently: counts with the features in rows, intensities with the samples in rows and
 in another order, with gaps where a metabolite is scarce.
 
+A table of pathways and one of known links are invented beside the data (``knowledge``): the pathways of the four
+modules hold most of their features, others hold features at random; most known links lie inside modules.
+
 Four mishaps are planted too, as they happen: two tubes exchanged in the metabolite assay, one extract that thawed, an
 extraction batch that nobody names, and a spare table of gene symbols that went through a spreadsheet.  ``deliver``
 writes the tables, ``build`` makes the project as a first user would, ``settle`` edits ``project.toml`` as that user
@@ -41,6 +44,15 @@ PRIVATE_LOADING, PRIVATE_SHARE = 0.6, 0.6
 SWAPPED, THAWED = ("B05", "B31"), "B17"
 SYMBOLS_SPOILT = {"SEPT2": "2-Sep", "MARCH1": "1-Mar", "DEC1": "1-Dec"}
 DATES_FINDING = "damaged_identifiers-symbols_old.tsv-symbol"
+PATHWAYS = {
+    "module 1": ("HP01", "raffinose family synthesis (invented)"),
+    "module 2": ("HP02", "proline and polyamine turnover (invented)"),
+    "module 3": ("HP03", "cuticular wax assembly (invented)"),
+    "module 4": ("HP04", "starch mobilisation (invented)"),
+    "follows the drought": ("HP05", "stomatal closure signalling (invented)"),
+}
+IN_PATHWAY, OTHERS_IN_PATHWAY, RANDOM_PATHWAYS = 0.7, 6, 20
+LINKS_INSIDE, LINKS_ANYWHERE = 12, 6
 KEPT = ("project.toml", "samples.tsv", "journal.jsonl", "source")
 
 
@@ -133,6 +145,34 @@ def symbols_table(names: list[str]) -> pd.DataFrame:
     return pd.DataFrame({"transcript": names[: len(symbols)], "symbol": symbols})
 
 
+def knowledge(planted: pd.DataFrame, folder: Path) -> None:
+    """Write ``pathways.tsv`` and ``known_links.tsv``, from what was planted and from chance."""
+    rng = np.random.default_rng(SEED + 1)
+    every = planted["feature"].to_numpy()
+    rows: list[tuple[str, str, str]] = []
+    for part, (identifier, name) in PATHWAYS.items():
+        inside = planted.loc[planted["planted"] == part, "feature"].to_numpy()
+        held = inside[rng.random(inside.size) < IN_PATHWAY]
+        others = rng.choice(np.setdiff1d(every, inside), OTHERS_IN_PATHWAY, replace=False)
+        rows += [(identifier, name, feature) for feature in [*held, *others]]
+    for number in range(RANDOM_PATHWAYS):
+        held = rng.choice(every, int(rng.integers(15, 45)), replace=False)
+        identifier = f"HP{number + len(PATHWAYS) + 1:02d}"
+        rows += [(identifier, f"pathway {identifier} (invented, at random)", feature) for feature in held]
+    sets = pd.DataFrame(rows, columns=["set", "name", "feature"])
+    sets.to_csv(folder / "pathways.tsv", sep="\t", index=False)
+    links = []
+    modules = [f"module {module + 1}" for module in range(MODULES)]
+    for number in range(LINKS_INSIDE + LINKS_ANYWHERE):
+        linked = planted
+        if number < LINKS_INSIDE:
+            linked = planted[planted["planted"] == modules[number % MODULES]]
+        ends = [rng.choice(linked.loc[linked["layer"] == layer, "feature"]) for layer in IN_MODULE]
+        links.append((*ends, "enzyme and product, by an invented data base"))
+    known = pd.DataFrame(links, columns=["source", "target", "evidence"])
+    known.to_csv(folder / "known_links.tsv", sep="\t", index=False)
+
+
 def deliver(folder: Path) -> None:
     """Write the delivered tables into ``folder``, with what was planted."""
     rng = np.random.default_rng(SEED)
@@ -161,6 +201,7 @@ def deliver(folder: Path) -> None:
     )
     symbols_table(names["transcripts"]).to_csv(folder / "symbols_old.tsv", sep="\t", index=False)
     found = pd.concat(planted.values()).sort_values(["layer", "planted", "feature"])
+    knowledge(found, folder)
     found[found["planted"] != "background"].to_csv(folder / "planted.tsv", sep="\t", index=False)
 
 
@@ -181,7 +222,11 @@ def build(delivered: Path, folder: Path) -> None:
         values="intensities",
         adjust=["ms_day"],
     )
-    shutil.copy(delivered / "symbols_old.tsv", folder / "source" / "symbols_old.tsv")
+    for name in ("symbols_old.tsv", "pathways.tsv", "known_links.tsv"):
+        shutil.copy(delivered / name, folder / "source" / name)
+    text = settings.read_text("utf-8")
+    paths = 'sets = "source/pathways.tsv"\nlinks = "source/known_links.tsv"\n'
+    settings.write_text(f"{text.rstrip()}\n\n[analyses.main.pathways]\n{paths}", "utf-8")
 
 
 def settle(folder: Path) -> None:

@@ -3,7 +3,14 @@
 from workbench.pathways.coherence import Coherence, permutation_p, permutations_allowed, rewiring_p
 from workbench.pathways.edge_columns import edge_columns, edge_ends, known_evidence
 from workbench.pathways.links import KnownLinks, read_links
-from workbench.pathways.matching import ColumnChoice, SetMembers, alternatives, match_column, match_sets
+from workbench.pathways.matching import (
+    ColumnChoice,
+    SetMembers,
+    alternatives,
+    identifier_columns,
+    match_column,
+    match_sets,
+)
 from workbench.pathways.over_representation import LayerTest, hypergeometric_p, layer_tests, stouffer
 from workbench.pathways.rewiring import rewired
 from workbench.pathways.sample_permutation import (
@@ -32,6 +39,7 @@ __all__ = [
     "edge_columns",
     "edge_ends",
     "hypergeometric_p",
+    "identifier_columns",
     "known_evidence",
     "layer_tests",
     "match_column",
