@@ -3,14 +3,17 @@
 from __future__ import annotations
 
 from pathlib import Path
+from typing import Any
 
 import h5py
 import numpy as np
 import pandas as pd
 
-from workbench.engine import group_effects
+from workbench.engine import GroupEffects
+from workbench.intake import Groups
 from workbench.store import check_file
 from workbench.workflow.analysis_view import AnalysisView
+from workbench.workflow.group_differences import group_differences
 from workbench.workflow.loaded_block import LoadedBlock
 from workbench.workflow.state import ProjectState
 
@@ -40,9 +43,8 @@ def block_features(view: AnalysisView, block: LoadedBlock) -> pd.DataFrame:
         {"feature": block.features, "block": block.name, "layer": block.layer, "label": labels}
     )
     if shared.groups is not None:
-        found = group_effects(values, shared.groups.codes, shared.nuisance)
-        level = [shared.groups.levels[code] if code >= 0 else "" for code in found.level]
-        table = table.assign(group_effect=found.effect, group_level=level, group_p=found.p, group_q=found.q)
+        for column, cells in _group_columns(group_differences(values, shared), shared.groups).items():
+            table[column] = cells
     table["mean"] = values.mean(axis=0)
     table["missing_share"] = [missing[origin] for origin in block.annotations.get("origin", block.features)]
     table["imputed_share"] = block.imputed[rows].mean(axis=0)
@@ -50,6 +52,13 @@ def block_features(view: AnalysisView, block: LoadedBlock) -> pd.DataFrame:
         table[column] = block.annotations[column].astype(str).to_numpy()
     table.attrs["identifiers"] = identifiers
     return table
+
+
+def _group_columns(found: GroupEffects | None, groups: Groups) -> dict[str, Any]:
+    if found is None:
+        return {"group_effect": np.nan, "group_level": "", "group_p": np.nan, "group_q": np.nan}
+    level = [groups.levels[code] if code >= 0 else "" for code in found.level]
+    return {"group_effect": found.effect, "group_level": level, "group_p": found.p, "group_q": found.q}
 
 
 def _labels(block: LoadedBlock, identifiers: list[str]) -> list[str]:

@@ -10,7 +10,7 @@ import pandas as pd
 
 from workbench import __version__
 from workbench.engine import critical_r
-from workbench.workflow.analysis_view import AnalysisView
+from workbench.workflow.analysis_view import AnalysisView, Shared
 from workbench.workflow.canonical import analysis_inputs
 from workbench.workflow.choices import choices_of
 from workbench.workflow.edges import GROUP_BOUND
@@ -102,10 +102,22 @@ def reach_sentences(view: AnalysisView, screens: Screens) -> list[str]:
             level = view.settings.network.fdr / sum(counts)
             least = float(critical_r(level, screens.chosen.freedom[k]))
             lines.append(
-                f"{first} x {second}: on {one.n} samples a pair that is alone becomes an edge at |r| of {least:.2f} "
-                "or more; the more pairs there are, the lower"
+                f"{first} x {second}: on {counted_rows(one, view)} a pair that is alone becomes an edge at |r| of "
+                f"{least:.2f} or more; the more pairs there are, the lower"
             )
     return lines
+
+
+def counted_rows(shared: Shared, view: AnalysisView) -> str:
+    """Return what the test of a pair counts, in words: samples, subjects, or changes within subjects."""
+    design = shared.subjects
+    if design is None or design.kind == "single":
+        return f"{shared.n} samples"
+    if view.settings.level == "subjects":
+        return f"the means of {design.n_subjects} subjects ({shared.n} samples)"
+    used = int(design.repeated.sum())
+    subjects = len(set(design.subject[design.repeated].tolist()))
+    return f"{used - subjects} changes within {subjects} subjects"
 
 
 def fragile_sentence(edges: pd.DataFrame) -> str:
