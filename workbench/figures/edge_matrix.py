@@ -35,8 +35,9 @@ NAME = 14
 SMALLEST_TEXT = 6.0
 
 #: Dark below zero, light above it, so that the sign shows in grey as well.
-SIGNED = LinearSegmentedColormap.from_list("signed", ["#08234F", "#4F79AE", "#BDBDBD", "#F4CE6A", "#FFFDE8"])
-SIGNED.set_bad("#FFFFFF")
+SIGNED = LinearSegmentedColormap.from_list(
+    "signed", ["#08234F", "#4F79AE", "#BDBDBD", "#F4CE6A", "#FFFDE8"]
+).with_extremes(bad="#FFFFFF")
 
 
 @dataclass(frozen=True, eq=False)

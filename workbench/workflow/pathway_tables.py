@@ -163,7 +163,10 @@ def _named(labels: list[str]) -> str:
 
 
 def _joined_rows(tested: Sequence[Tested], members: SetMembers) -> Iterator[tuple[object, ...]]:
-    """Yield the sets that two layers and more test in one community, their p's joined by Stouffer (hypergeometric ones as mid-p's)."""
+    """Yield the sets that two layers and more test in one community, their p's joined by Stouffer.
+
+    Hypergeometric p's go in as mid-p's; permutation p's as they are, just under 1 where nothing was found.
+    """
     for community in dict.fromkeys(one.test.community for one in tested):
         mine = [one for one in tested if one.test.community == community]
         if len(mine) < 2:
