@@ -124,16 +124,12 @@ def screen_repeated(
     """
     if len(pairs) != len(designs):
         raise NumericsError(f"{len(pairs)} pairs of blocks and {len(designs)} designs; give one for each")
-    spaces = [
-        subject_space((pair.x, pair.y), design, _columns(pair), level, correlation)
+    moved = [
+        independent_pair(pair, design, level, correlation)
         for pair, design in zip(pairs, designs, strict=True)
     ]
-    moved = [
-        _moved(pair, design, space, level, correlation)
-        for pair, design, space in zip(pairs, designs, spaces, strict=True)
-    ]
     screen = screen_blocks(
-        moved,
+        [pair for pair, _ in moved],
         fdr=fdr,
         correlation="pearson",
         minimum_r=minimum_r,
@@ -141,8 +137,36 @@ def screen_repeated(
         progress=progress,
         limits=limits,
     )
-    n = np.array([space.used.size for space in spaces], dtype=np.int64)
+    n = np.array([space.used.size for _, space in moved], dtype=np.int64)
     return replace(screen, n=n[screen.pair_index], correlation=correlation)
+
+
+def independent_pair(
+    pair: BlockPair, design: SubjectDesign, level: Level, correlation: Correlation = "pearson"
+) -> tuple[BlockPair, SubjectSpace]:
+    """Both blocks on independent rows, to be screened by Pearson's correlation, and the map that led there.
+
+    Parameters
+    ----------
+    pair, design, level, correlation
+        As for :func:`screen_repeated`; ranks are taken here.
+
+    Raises
+    ------
+    NumericsError
+        As :func:`screen_repeated`.
+    """
+    space = subject_space((pair.x, pair.y), design, _columns(pair), level, correlation)
+    ranks: Literal["no", "before", "after"] = "no"
+    if correlation == "spearman":
+        ranks = "before" if level == "visits" else "after"
+    x, y = (_Mapped(side, space.matrix, design, ranks) for side in (pair.x, pair.y))
+    damping = None
+    if level == "visits":
+        sides = (_Mapped(side, np.eye(design.n_samples), design, ranks) for side in (pair.x, pair.y))
+        first, second = (course_damping(space, design, side) for side in sides)
+        damping = (first, second)
+    return BlockPair(pair.name, x, y, space.nuisance, damping=damping), space
 
 
 def subject_space(
@@ -289,21 +313,6 @@ def _columns(pair: BlockPair) -> FloatArray | None:
     if isinstance(pair.nuisance, Nuisance):
         raise NumericsError(f"the nuisance of {pair.name!r} is a basis; give its columns")
     return pair.nuisance
-
-
-def _moved(
-    pair: BlockPair, design: SubjectDesign, space: SubjectSpace, level: Level, correlation: Correlation
-) -> BlockPair:
-    ranks: Literal["no", "before", "after"] = "no"
-    if correlation == "spearman":
-        ranks = "before" if level == "visits" else "after"
-    x, y = (_Mapped(side, space.matrix, design, ranks) for side in (pair.x, pair.y))
-    damping = None
-    if level == "visits":
-        sides = (_Mapped(side, np.eye(design.n_samples), design, ranks) for side in (pair.x, pair.y))
-        first, second = (course_damping(space, design, side) for side in sides)
-        damping = (first, second)
-    return BlockPair(pair.name, x, y, space.nuisance, damping=damping)
 
 
 def _course(design: SubjectDesign) -> FloatArray:

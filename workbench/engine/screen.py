@@ -277,7 +277,7 @@ def screen_blocks(
     ([1], (64, 64))
     """
     request = _check_request(fdr, correlation, minimum_r, maximum_edges)
-    tiles = [_pair_tiles(pair, correlation, limits or Limits()) for pair in pairs]
+    tiles = [pair_tiles(pair, correlation, limits or Limits()) for pair in pairs]
     if not tiles:
         raise NumericsError("no pair of blocks to screen; give at least one")
     if progress is not None:
@@ -304,7 +304,14 @@ def _nuisance_of(nuisance: FloatArray | Nuisance | None, n: int) -> Nuisance:
     return nuisance if isinstance(nuisance, Nuisance) else Nuisance.of(nuisance, n)
 
 
-def _pair_tiles(pair: BlockPair, correlation: str, limits: Limits) -> PairTiles:
+def pair_tiles(pair: BlockPair, correlation: str, limits: Limits) -> PairTiles:
+    """Tiles of a pair of blocks.
+
+    Raises
+    ------
+    NumericsError
+        When shapes differ or no degree of freedom is left.
+    """
     check_side(pair.x, None, f"the first block of {pair.name!r}")
     n = int(pair.x.shape[0])
     check_side(pair.y, n, f"the second block of {pair.name!r}")
