@@ -78,7 +78,7 @@ def test_groups_stand_side_by_side_with_their_means() -> None:
     heights = [float(bar.get_paths()[0].vertices[0, 1]) for bar in bars]
     assert_allclose(sorted(heights), sorted(look.scale[look.groups.members(k)].mean() for k in (0, 1)))
     assert [label.get_text() for label in right.get_xticklabels()] == ["control", "drought"]
-    assert "dilution" in left.get_ylabel()
+    assert "concentration" in left.get_ylabel()
 
 
 def test_a_second_drawing_gives_the_same_bytes() -> None:

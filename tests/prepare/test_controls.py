@@ -29,7 +29,7 @@ def test_features_that_pools_do_not_repeat_are_dropped_with_their_scatter() -> N
     pools = np.column_stack([[10.0, 11, 9, 10], [2.0, 20, 9, 10], [5.0, 50, np.nan, np.nan]])
     fitted = PoolScatter().fit(with_controls(np.full((5, 3), 10.0), pools, np.empty((0, 3))), NO_GROUPS)
     assert_array_equal(fitted.keep, [True, False, True])
-    assert fitted.account.dropped == {"F1": "relative standard deviation of 72% over 4 pools; 30% allowed"}
+    assert fitted.account.dropped == {"F1": "relative standard deviation of 72 % over 4 pools; 30 % allowed"}
     assert (fitted.account.numbers["not_judged"], fitted.account.numbers["pools"]) == (1, 4)
 
 

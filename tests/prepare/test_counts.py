@@ -70,7 +70,7 @@ def test_few_features_without_zeros_mean_positive_counts_only_and_the_account_sa
     sentence = fitted.transform(table)[1].sentence
     assert fitted.positive_only
     assert sentence.startswith(
-        f"only {fitted.complete} features lack zeros (at least 100 wanted): size factors by"
+        f"only {fitted.complete} features have a count above 0 in every sample (100 wanted): size"
     )
     assert "positive counts only" in sentence
     assert_allclose(fitted.factors(table), 1.0, atol=0.15)

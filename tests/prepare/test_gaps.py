@@ -151,13 +151,13 @@ def test_account_tells_how_many_gaps_were_drawn_and_why() -> None:
     account = FillGaps(censored=True).fit(table, NO_GROUPS).transform(table)[1]
     numbers = account.numbers
     assert (
-        numbers["from_low_tail"] + numbers["from_neighbours"]
+        numbers["from_under_the_limit"] + numbers["from_similar_samples"]
         == numbers["gaps"]
         == np.isnan(table.values).sum()
     )
-    assert "drawn from the low tail, as missingness falls with abundance" in account.sentence
+    assert "drawn from under the detection limit, as gaps grow rarer with abundance" in account.sentence
     plain = FillGaps(censored=False).fit(table, NO_GROUPS).transform(table)[1]
-    assert plain.numbers["from_neighbours"] == numbers["gaps"]
+    assert plain.numbers["from_similar_samples"] == numbers["gaps"]
 
 
 def test_a_table_without_gaps_passes_as_it_is() -> None:

@@ -47,7 +47,7 @@ def test_a_dilution_and_a_median_far_from_the_rest_are_told() -> None:
     values = intensities(n=30).values.copy()
     values[4] *= 40
     result = recipe_for("x", "intensities").fit_transform(table_of(values), smallest_group=15, seed=1)
-    assert result.cautions[0].startswith("dilution far from the rest in 'S004'")
+    assert result.cautions[0].startswith("concentration far from the rest in 'S004'")
     logs = BUILDERS["log"](n=30).values.copy()
     logs[9] += 6
     result = recipe_for("x", "log").fit_transform(table_of(logs), smallest_group=15, seed=1)
@@ -109,5 +109,5 @@ def test_samples_and_features_that_are_mostly_filled_in_are_told() -> None:
     rows, columns = imputed_shares(result)
     assert rows["S003"] > 0.3
     assert_allclose(rows["S003"], result.imputed[3].mean())
-    assert "more than 30% of the values filled in, not measured, in 'S003'" in result.cautions
+    assert "more than 30 % of the values filled in, not measured, in 'S003'" in result.cautions
     assert (columns["F5"] > 0.5) == any("'F5'" in caution for caution in result.cautions)

@@ -35,7 +35,7 @@ def test_kept_is_what_seven_tenths_of_the_smallest_group_would_fill(smallest_gro
     values = np.where(np.arange(20)[:, None] < np.arange(21), 5.0, np.nan)
     fitted = DropRarelySeen().fit(step_table(values), FitContext(smallest_group, 1))
     assert_array_equal(fitted.keep, np.arange(21) >= needed)
-    assert fitted.account.dropped["F1"] == f"seen in 1 of 20 samples; {needed} needed"
+    assert fitted.account.dropped["F1"] == f"measured in 1 of 20 samples; {needed} needed"
 
 
 def test_who_is_in_the_smallest_group_makes_no_difference() -> None:
@@ -95,14 +95,14 @@ def test_fewer_than_ten_features_are_not_normalised() -> None:
     values = np.arange(1.0, 19.0).reshape(2, 9)
     table, account = Quotients().fit(step_table(values), NO_GROUPS).transform(step_table(values))
     assert_array_equal(table.values, values)
-    assert account.sentence == "not normalised: fewer than 10 features; values taken as they are"
+    assert account.sentence == "not scaled: fewer than 10 features; values taken as they are"
 
 
 def test_account_names_the_most_and_the_least_diluted_sample() -> None:
     values = np.outer([1.0, 4.0, 0.5, 1.0], np.arange(1.0, 21.0))
     numbers = Quotients().fit(step_table(values), NO_GROUPS).transform(step_table(values))[1].numbers
-    assert (numbers["smallest_dilution_in"], numbers["largest_dilution_in"]) == ("S002", "S001")
-    assert_allclose(float(numbers["largest_dilution"]) / float(numbers["smallest_dilution"]), 8.0)
+    assert (numbers["smallest_concentration_in"], numbers["largest_concentration_in"]) == ("S002", "S001")
+    assert_allclose(float(numbers["largest_concentration"]) / float(numbers["smallest_concentration"]), 8.0)
 
 
 def test_negative_intensities_and_empty_samples_are_refused() -> None:

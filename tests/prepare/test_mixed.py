@@ -72,7 +72,7 @@ def test_text_with_one_level_is_constant_and_says_which() -> None:
 
 def test_rarely_measured_columns_are_dropped() -> None:
     result = fit_transform(clinic([1.0, 2.0, NAN, NAN, NAN, 3.0], SEX, STAGE))
-    assert result.dropped == {"age": "seen in 3 of 6 samples; 5 needed"}
+    assert result.dropped == {"age": "measured in 3 of 6 samples; 5 needed"}
 
 
 def test_a_name_that_is_also_an_indicator_is_refused() -> None:

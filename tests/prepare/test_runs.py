@@ -57,7 +57,7 @@ def test_runs_of_one_sample_count_as_one_sample() -> None:
     values[[0, 6]] = 1.0
     start = StepTable.of(with_runs(table, values, copies=2))
     fitted = DropRarelySeen().fit(start, FitContext(None, 1))
-    assert fitted.account.dropped == {"F0": "seen in 1 of 6 samples; 5 needed"}
+    assert fitted.account.dropped == {"F0": "measured in 1 of 6 samples; 5 needed"}
 
 
 def test_taken_samples_keep_their_runs_and_all_controls() -> None:

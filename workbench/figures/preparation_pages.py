@@ -25,7 +25,7 @@ ROW = 1.35
 LEGEND_COLUMNS = 5
 SCALE_MEANS = {
     "size factor": "how deeply the sample was read, against the typical one",
-    "dilution": "how concentrated the sample was, against the typical one",
+    "concentration": "how concentrated the sample was, against the typical one",
     "shift": "how far the sample's median lay from the typical one",
     "scale": "what was taken from the sample",
 }

@@ -16,7 +16,7 @@ from workbench.prepare import DriftEffect, StepAccount
 
 FloatArray = NDArray[np.float64]
 
-SCALE_WORDS = {"counts": "size factor", "intensities": "dilution", "log": "shift"}
+SCALE_WORDS = {"counts": "size factor", "intensities": "concentration", "log": "shift"}
 ON_LOGARITHMS = ("counts", "intensities", "proportions", "log")
 UNCHANGED = 1e-9
 

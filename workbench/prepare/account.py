@@ -104,7 +104,15 @@ def _labelled(step: StepAccount, block: str) -> list[tuple[str, str]]:
 
 def figures_of(step: StepAccount) -> str:
     """Return the numbers of a step in words."""
-    return "; ".join(f"{name.replace('_', ' ')} {_figure(value)}" for name, value in step.numbers.items())
+    held = {f"{name}_in" for name in step.numbers}
+    told = []
+    for name, value in step.numbers.items():
+        where = step.numbers.get(f"{name}_in")
+        if name not in held:
+            told.append(
+                f"{name.replace('_', ' ')} {_figure(value)}" + (f" in {where}" if where is not None else "")
+            )
+    return "; ".join(told)
 
 
 def _figure(value: float | int | str) -> str:

@@ -9,6 +9,7 @@ import pandas as pd
 
 from workbench.prepare.account import figures_of
 from workbench.prepare.tables import StepAccount
+from workbench.prepare.words import percent
 
 
 @dataclass(frozen=True)
@@ -67,8 +68,8 @@ def _summary(size: PreparedSize) -> str:
     if not size.imputed_share:
         return f"{told}Every value was measured; none had to be filled in."
     return (
-        f"{told}{size.imputed_share:.1%} of the values were not measured and had to be filled in; they are marked in "
-        "layer `imputed` of the prepared file."
+        f"{told}{percent(size.imputed_share)} of the values were not measured and had to be filled in; layer `imputed` "
+        "of the prepared file marks them."
     )
 
 

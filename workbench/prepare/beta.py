@@ -90,7 +90,7 @@ class MValues(Settled):
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
-        return f"log2((beta + {self.offset:g}) / (1 - beta + {self.offset:g}))"
+        return f"takes M-values, log2((beta + {self.offset:g}) / (1 - beta + {self.offset:g}))"
 
     def fit(self, table: StepTable, context: FitContext) -> MValues:  # noqa: ARG002
         """Return the step itself: there is nothing to learn."""

@@ -27,7 +27,7 @@ class CombineRuns(Settled):
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
-        return f"the runs of a sample become their {self.how}; pools and blanks are left out from here"
+        return f"joins the runs of a sample into their {self.how}; pools and blanks have served, and end here"
 
     def fit(self, table: StepTable, context: FitContext) -> CombineRuns:  # noqa: ARG002
         """Return the step itself: there is nothing to learn."""

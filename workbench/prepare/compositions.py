@@ -26,6 +26,7 @@ from workbench.prepare.steps import (
     keep_features,
 )
 from workbench.prepare.tables import Matrix, MeasuredTable, StepAccount, StepTable
+from workbench.prepare.words import percent
 from workbench.settings.prepare_schema import CompositionPreparation
 
 PREVALENCE = 0.1
@@ -107,14 +108,14 @@ class Prevalence(Settled):
 
     share: float = PREVALENCE
     step: str = "prevalence"
-    why: ClassVar[str] = "where nearly every value is a replaced zero, ratios are made up"
+    why: ClassVar[str] = "where nearly every value is a zero that has to be replaced, ratios would be made up"
     paper: ClassVar[str] = "common practice"
     keys: ClassVar[tuple[str, ...]] = ("prevalence",)
 
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
-        return f"drops features above zero in fewer than {self.share:.0%} of the samples"
+        return f"keeps features that at least {percent(self.share)} of the samples have"
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:  # noqa: ARG002
         """Return the step; the number of samples is rounded up."""
@@ -217,7 +218,7 @@ class ReplaceZeros(Settled):
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
-        return f"each sample to a sum of 1, each zero to {self.share:.0%} of the detection limit"
+        return f"brings each sample to a sum of 1 and sets each zero to {percent(self.share)} of the detection limit"
 
     def fit(self, table: StepTable, context: FitContext) -> FittedZeros:  # noqa: ARG002
         """Return the step with the detection limit of the training samples."""
@@ -252,8 +253,8 @@ class FittedZeros:
         zeros = int((parts == 0).sum())
         replaced = replace_zeros(parts, self.settings.share * self.limit)
         sentence = (
-            f"samples closed to a sum of 1; {zeros:,} zeros ({zeros / max(parts.size, 1):.1%} of the values) replaced "
-            f"by {self.settings.share:.0%} of the detection limit, {self.limit:.3g}"
+            f"samples brought to a sum of 1; {zeros:,} zeros ({percent(zeros / max(parts.size, 1))} of the values) "
+            f"replaced by {percent(self.settings.share)} of the detection limit, {self.limit:.3g}"
         )
         numbers: dict[str, float | int | str] = {
             "zeros": zeros,
@@ -270,7 +271,7 @@ class CentredLogRatios(Settled):
     """Takes logarithms less their mean over the sample."""
 
     step: str = "log-ratios"
-    rule: str = "centred log-ratios: natural logarithms less their mean over the sample"
+    rule: str = "takes centred log-ratios: natural logarithms less their mean over the sample"
     why: ClassVar[str] = (
         "when one part grows, all others shrink: shares correlate without any biology, ratios do not"
     )
@@ -293,7 +294,7 @@ class LogOfShares(Settled):
     """Takes logarithms of the shares, not centred."""
 
     step: str = "logarithm"
-    rule: str = "natural logarithms of the shares, not centred"
+    rule: str = "takes natural logarithms of the shares, not centred"
     why: ClassVar[str] = "the settings ask for shares; mind that they correlate by adding up to a whole"
     keys: ClassVar[tuple[str, ...]] = ("log_ratio",)
 

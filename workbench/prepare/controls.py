@@ -11,6 +11,7 @@ from workbench.prepare.drift import relative_amounts, relative_sd
 from workbench.prepare.local_lines import medians
 from workbench.prepare.steps import FitContext, KeepFeatures, Settled, keep_features
 from workbench.prepare.tables import Matrix, StepAccount, StepTable
+from workbench.prepare.words import percent
 
 LARGEST_SCATTER = 0.3
 FEWEST_FOR_SCATTER = 4
@@ -30,7 +31,7 @@ class PoolScatter(Settled):
     largest: float = LARGEST_SCATTER
     step: str = "pool scatter"
     why: ClassVar[str] = (
-        "what the assay cannot repeat on one and the same mixture says nothing of the samples"
+        "pools are one mixture measured again and again; what the assay cannot repeat there says nothing of the samples"
     )
     paper: ClassVar[str] = "Dunn et al. 2011, Nature Protocols 6:1060; limit: common practice"
     keys: ClassVar[tuple[str, ...]] = ("pool_filter", "pool_scatter")
@@ -39,11 +40,11 @@ class PoolScatter(Settled):
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
-        return f"drops features: {self._condition}"
+        return f"drops features whose {self._condition}"
 
     @property
     def _condition(self) -> str:
-        return f"relative standard deviation over the pools above {self.largest:.0%}"
+        return f"relative standard deviation over the pools is above {percent(self.largest)}"
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:  # noqa: ARG002
         """Return the step; pools alone decide."""
@@ -53,8 +54,8 @@ class PoolScatter(Settled):
         scatter = np.where(seen >= FEWEST_FOR_SCATTER, relative_sd(pools), np.nan)
         wide = scatter > self.largest
         reasons = {
-            table.features[i]: f"relative standard deviation of {scatter[i]:.0%} over {seen[i]} pools; "
-            f"{self.largest:.0%} allowed"
+            table.features[i]: f"relative standard deviation of {percent(scatter[i])} over {seen[i]} pools; "
+            f"{percent(self.largest)} allowed"
             for i in np.flatnonzero(wide)
         }
         judged = scatter[~np.isnan(scatter)]
@@ -76,9 +77,9 @@ class PoolScatter(Settled):
         if share <= MOST_DROPPED:
             return ()
         return (
-            f"{share:.0%} of the features are dropped, as they scatter over the pools (by {np.median(judged):.0%} in "
-            "the middle): drift that too few pools could show, pools that are not one mixture, or an assay that does "
-            "not repeat",
+            f"{percent(share)} of the features are dropped, as they scatter over the pools (by "
+            f"{percent(float(np.median(judged)))} in the middle): drift that too few pools could show, pools that are "
+            "not one mixture, or an assay that does not repeat",
         )
 
 
@@ -92,7 +93,7 @@ class BlankFilter(Settled):
 
     ratio: float = BLANK_RATIO
     step: str = "blanks"
-    why: ClassVar[str] = "what is there without a sample comes from solvent, tube or column"
+    why: ClassVar[str] = "what is there without a sample comes from solvent, tube or column, not from biology"
     paper: ClassVar[str] = "common practice"
     keys: ClassVar[tuple[str, ...]] = ("blanks", "blank_ratio")
     runs_only: ClassVar[bool] = True
@@ -100,7 +101,7 @@ class BlankFilter(Settled):
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
-        return f"drops features: {self._condition}"
+        return f"drops features that are {self._condition}"
 
     @property
     def _condition(self) -> str:

@@ -24,6 +24,7 @@ from workbench.prepare.steps import (
     keep_features,
 )
 from workbench.prepare.tables import MeasuredTable, StepAccount, StepTable
+from workbench.prepare.words import percent
 from workbench.settings.prepare_schema import CountsPreparation
 
 SMALLEST_COUNT = 10
@@ -104,7 +105,7 @@ class CountFilter(Settled):
     share: float = SHARE_WITHOUT_GROUPS
     step: str = "count filter"
     why: ClassVar[str] = (
-        "features with few reads are noise, and each costs the others in the test over all pairs"
+        "a few reads are mostly counting noise, and each feature makes the test over all pairs stricter for the rest"
     )
     keys: ClassVar[tuple[str, ...]] = ("smallest_count", "smallest_share")
 
@@ -112,8 +113,8 @@ class CountFilter(Settled):
     def rule(self) -> str:
         """What the step does, in one line."""
         return (
-            f"drops features with a count of {self.smallest_count} or more in fewer samples than the smallest group "
-            f"has ({self.share:.0%} of the samples without groups)"
+            f"keeps features with a count of {self.smallest_count} or more in as many samples as the smallest group "
+            f"has (in {percent(self.share)} of the samples where there are no groups)"
         )
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:
@@ -145,13 +146,15 @@ class LogOfCounts(Settled):
 
     prior: float = PRIOR_COUNT
     step: str = "logarithm"
-    why: ClassVar[str] = "effects on counts multiply, and correlation is about what adds"
+    why: ClassVar[str] = (
+        "counts differ by factors: on logarithms a doubling is one and the same step, and correlation is about steps"
+    )
     keys: ClassVar[tuple[str, ...]] = ("prior_count",)
 
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
-        return f"log2 with a prior count of {self.prior:g} in proportion to library size"
+        return f"takes log2 of the scaled count plus {self.prior:g}, which keeps small counts from being spread out"
 
     def fit(self, table: StepTable, context: FitContext) -> LogOfCounts:  # noqa: ARG002
         """Return the step itself: there is nothing to learn."""

@@ -31,6 +31,7 @@ from workbench.prepare.refusal import PrepareRefusal
 from workbench.prepare.runs import Runs, RunTable
 from workbench.prepare.steps import FitContext, Settled
 from workbench.prepare.tables import Matrix, StepAccount, StepTable, some
+from workbench.prepare.words import percent
 
 DUNN = "Dunn et al. 2011, Nature Protocols 6:1060; Cleveland 1979, JASA 74:829"
 FEWEST_POOLS = 6
@@ -56,9 +57,12 @@ class Drift(Settled):
     fewest_pools: int = FEWEST_POOLS
     span: float = SPAN
     step: str = "drift"
-    rule: str = "each feature's course over the run order, read off the pools, taken away where leaving pools out helps"
+    rule: str = (
+        "reads each feature's course over the run order off the pools and takes it away, where that predicts pools "
+        "that were left out better than doing nothing"
+    )
     why: ClassVar[str] = (
-        "an instrument loses sensitivity while it runs, each feature in its own way; pools show how"
+        "an instrument changes while it runs, for each feature in its own way; pools are one mixture and show how"
     )
     paper: ClassVar[str] = DUNN
     keys: ClassVar[tuple[str, ...]] = ("drift", "fewest_pools", "span")
@@ -196,8 +200,8 @@ class FittedDrift:
         )
         if "median_pool_scatter_before" in numbers:
             sentence += (
-                f"; median scatter of left-out pools {numbers['median_pool_scatter_before']:.1%} before, "
-                f"{numbers['median_pool_scatter_after']:.1%} after"
+                f"; median scatter of left-out pools {percent(float(numbers['median_pool_scatter_before']))} before, "
+                f"{percent(float(numbers['median_pool_scatter_after']))} after"
             )
         return sentence
 

@@ -13,6 +13,7 @@ from workbench.prepare.low_tails import LowTails, fit_low_tails
 from workbench.prepare.neighbours import Donors, neighbour_count
 from workbench.prepare.steps import FitContext, Settled
 from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable, some
+from workbench.prepare.words import percent
 
 WARNED_SAMPLE = 0.3
 WARNED_FEATURE = 0.5
@@ -45,9 +46,11 @@ class FillGaps(Settled):
     @property
     def why(self) -> str:  # type: ignore[override]
         """Why gaps are filled so."""
-        chance = "a gap by chance says nothing, and samples like this one show what to expect"
+        chance = "a gap by chance says nothing of its value, and samples that are alike otherwise are the best guess"
         return (
-            f"a gap that stands for too little to see is a low value; {chance}" if self.censored else chance
+            f"a gap that stands for too little to be seen is a low value; {chance}"
+            if self.censored
+            else chance
         )
 
     @property
@@ -58,11 +61,12 @@ class FillGaps(Settled):
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
-        neighbours = "gaps filled by the mean of the nearest training samples that have the feature"
+        neighbours = "gap is filled with the mean of the feature over the samples most like this one"
         if not self.censored:
-            return neighbours
+            return f"every {neighbours}"
         return (
-            f"left-censored gaps drawn from the low tail where the table shows censoring, other {neighbours}"
+            "where weak features have more gaps than strong ones, a gap of a weak feature is taken for a value under "
+            f"the detection limit and drawn from there; every other {neighbours}"
         )
 
     def fit(self, table: StepTable, context: FitContext) -> FittedGaps:
@@ -117,19 +121,19 @@ class FittedGaps:
         numbers: dict[str, float | int | str] = {
             "gaps": total,
             "values": gaps.size,
-            "from_low_tail": drawn,
-            "from_neighbours": total - drawn,
-            "neighbours": self.donors.k,
+            "from_under_the_limit": drawn,
+            "from_similar_samples": total - drawn,
+            "similar_samples_each": self.donors.k,
             "largest_share_of_a_sample": float(rows.max()),
             "largest_share_of_a_feature": float(columns.max()),
-            "features_mostly_filled": int((columns > WARNED_FEATURE).sum()),
+            "features_filled_by_more_than_half": int((columns > WARNED_FEATURE).sum()),
         }
         if self.settings.censored:
             numbers |= {
-                "censored_features": int(self.censoring.censored.sum()),
-                "gap_rate_weakest_third": self.censoring.low_rate,
-                "gap_rate_strongest_third": self.censoring.high_rate,
-                "rank_correlation": self.censoring.rank_correlation,
+                "features_with_low_gaps": int(self.censoring.censored.sum()),
+                "gap_share_of_weakest_third": self.censoring.low_rate,
+                "gap_share_of_strongest_third": self.censoring.high_rate,
+                "rank_correlation_of_gaps_and_abundance": self.censoring.rank_correlation,
             }
         cautions = self._cautions(rows, columns, table)
         sentence = self._sentence(gaps, drawn)
@@ -143,27 +147,29 @@ class FittedGaps:
         features = [table.features[column] for column in np.flatnonzero(columns > WARNED_FEATURE)]
         if samples:
             told.append(
-                f"more than {WARNED_SAMPLE:.0%} of the values filled in, not measured, in {some(samples)}"
+                f"more than {percent(WARNED_SAMPLE)} of the values filled in, not measured, in {some(samples)}"
             )
         if features:
             told.append(
-                f"{len(features):,} features have more than {WARNED_FEATURE:.0%} of their values filled in: "
+                f"{len(features):,} features have more than {percent(WARNED_FEATURE)} of their values filled in: "
                 f"{some(features)}"
             )
         return tuple(told)
 
     def _sentence(self, gaps: Mask, drawn: int) -> str:
         total = int(gaps.sum())
-        start = f"{total:,} gaps ({total / gaps.size:.1%} of the values) filled: "
-        rest = f"{total - drawn:,} by the mean of the {self.donors.k} nearest training samples with a value"
+        start = f"{total:,} gaps ({percent(total / gaps.size)} of the values) filled: "
+        rest = f"{total - drawn:,} with the mean of the {self.donors.k} most similar samples that have the feature"
         if not self.settings.censored:
             return start + rest
         low, high = self.censoring.low_rate, self.censoring.high_rate
-        rates = f"gaps in {low:.1%} of the weakest third, {high:.1%} of the strongest"
+        rates = (
+            f"missing: {percent(low)} in the weakest third of the features, {percent(high)} in the strongest"
+        )
         if not self.censoring.evident:
-            return f"{start}{rest}; no evidence that gaps stand for small amounts ({rates})"
+            return f"{start}{rest}; nothing shows that gaps stand for small amounts ({rates})"
         features = int(self.censoring.censored.sum())
         return (
-            f"{start}{drawn:,} in {features:,} features drawn from the low tail, as missingness falls with "
-            f"abundance ({rates}); {rest}"
+            f"{start}{drawn:,} in {features:,} weak features drawn from under the detection limit, as gaps grow rarer "
+            f"with abundance ({rates}); {rest}"
         )

@@ -11,7 +11,7 @@ from scipy import stats
 
 from workbench.errors import InputError
 from workbench.prepare.tables import Matrix, PreparedTable, StepAccount
-from workbench.prepare.words import some
+from workbench.prepare.words import percent, some
 
 FAR_FOLD = 3.0
 FAR_SPREADS = 4.0
@@ -19,6 +19,9 @@ NORMAL_MAD = 1.4826
 GROUP_LEVEL = 0.01
 APART_FOLD = 1.25
 APART_SHARE = 0.05
+FAR_LEVEL = 0.05
+FAR_APART_FOLD = 1.5
+FAR_APART_SHARE = 0.1
 MOST = 0.5
 CHANGED_SDS = 0.5
 
@@ -123,7 +126,8 @@ def group_cautions(
 
     Told are a scale whose group means differ with p under 0.01, and 1.25-fold or enough to change the group
     difference of most features by half a standard deviation; and shares of imputed values that differ by five
-    points or more with p under 0.01.
+    points or more with p under 0.01. Of differences of 1.5-fold and of ten points p under 0.05 is enough: with six
+    samples a group, 0.01 would let every fourth study with twice the depth in one group pass unsaid.
 
     References
     ----------
@@ -132,13 +136,15 @@ def group_cautions(
     scale, imputed = group_differences(prepared, groups)
     told = []
     apart = scale.difference >= np.log2(APART_FOLD) or scale.changed_share > MOST
-    if apart and scale.p < GROUP_LEVEL:
+    far = scale.difference >= np.log2(FAR_APART_FOLD)
+    if (apart and scale.p < GROUP_LEVEL) or (far and scale.p < FAR_LEVEL):
         told.append(
             f"depth or dilution differs between the groups ({_means(scale, levels, 2.0)} times the typical sample): "
-            f"scaling changed the group difference of {scale.changed_share:.0%} of the features by more than half of "
-            "their standard deviation; differences of weak features between these groups rest on it"
+            f"scaling changed the group difference of {percent(scale.changed_share)} of the features by more than half "
+            "of their standard deviation; differences of weak features between these groups rest on it"
         )
-    if imputed.difference >= APART_SHARE and imputed.p < GROUP_LEVEL:
+    apart, far = imputed.difference >= APART_SHARE, imputed.difference >= FAR_APART_SHARE
+    if (apart and imputed.p < GROUP_LEVEL) or (far and imputed.p < FAR_LEVEL):
         told.append(
             f"the share of filled-in values differs between the groups ({_means(imputed, levels)}): differences of "
             "features with gaps between these groups may come from the gaps"
@@ -224,7 +230,7 @@ def _changed_share(values: Matrix, scale: Matrix, codes: NDArray[np.int_]) -> fl
 def _means(difference: GroupDifference, levels: Sequence[str], base: float | None = None) -> str:
     means = difference.means
     if base is None:
-        return ", ".join(f"{level}: {mean:.1%}" for level, mean in zip(levels, means, strict=True))
+        return ", ".join(f"{level}: {percent(mean)}" for level, mean in zip(levels, means, strict=True))
     middle = float(np.mean(means))
     return ", ".join(
         f"{level}: {base ** (mean - middle):.2f}" for level, mean in zip(levels, means, strict=True)

@@ -84,7 +84,7 @@ class ZerosAreMissing(Settled):
     step: str = "zeros"
     why: ClassVar[str] = "an instrument that sees nothing writes zero; that is not an amount of nothing"
     keys: ClassVar[tuple[str, ...]] = ("zeros",)
-    rule: str = "zero means missing"
+    rule: str = "takes a zero for a missing value"
 
     def fit(self, table: StepTable, context: FitContext) -> ZerosAreMissing:  # noqa: ARG002
         """Return the step itself: there is nothing to learn."""
@@ -94,7 +94,7 @@ class ZerosAreMissing(Settled):
         """Return the table with NaN for zero."""
         zero = table.values == 0
         count, cells = int(zero.sum()), zero.size
-        sentence = f"zero means missing: {count:,} of {cells:,} values"
+        sentence = f"{count:,} of {cells:,} values are zero, and missing from here on"
         account = StepAccount(self.step, sentence, {"zeros": count, "values": cells})
         return self._without(table), account
 
@@ -110,8 +110,10 @@ class LogOfIntensities(Settled):
     """Takes log2."""
 
     step: str = "logarithm"
-    rule: str = "log2"
-    why: ClassVar[str] = "effects on amounts multiply, and correlation is about what adds"
+    rule: str = "takes log2"
+    why: ClassVar[str] = (
+        "amounts differ by factors: on logarithms a doubling is one and the same step, and correlation is about steps"
+    )
 
     def fit(self, table: StepTable, context: FitContext) -> LogOfIntensities:  # noqa: ARG002
         """Return the step itself: there is nothing to learn."""
@@ -127,7 +129,7 @@ class LogWithZeros(Settled):
     """Takes log2 after adding half of each feature's smallest positive training value."""
 
     step: str = "logarithm"
-    rule: str = "log2 of the value and half of the feature's smallest value above zero"
+    rule: str = "takes log2 of the value plus half of the feature's smallest value above zero"
     why: ClassVar[str] = "zeros are amounts here, as the settings say, and zero has no logarithm"
     keys: ClassVar[tuple[str, ...]] = ("zeros",)
 

@@ -56,8 +56,10 @@ class MedianCentring(Settled):
     enough: int = ENOUGH_REFERENCE
     fewest: int = FEWEST_FOR_SCALE
     step: str = "median centring"
-    rule: str = "each sample shifted to the same median"
-    why: ClassVar[str] = "how much of a sample was loaded shifts all of its logarithms alike"
+    rule: str = "shifts each sample so that all have the same median"
+    why: ClassVar[str] = (
+        "how much of a sample was loaded moves all of its logarithms by the same amount, which is no biology"
+    )
     keys: ClassVar[tuple[str, ...]] = ("centring",)
 
     def fit(self, table: StepTable, context: FitContext) -> FittedCentring:  # noqa: ARG002

@@ -240,8 +240,8 @@ class TypicalValues(Settled):
     """Fills gaps so that they say nothing: the median of numbers, the share of ones of 0 / 1 columns."""
 
     step: str = "gaps"
-    why: ClassVar[str] = "a typical value says nothing of the sample"
-    rule: str = "gaps filled by the training median of a number, the training share of a 0 / 1 column"
+    why: ClassVar[str] = "a typical value claims nothing of the sample that has the gap"
+    rule: str = "fills a gap with the median of a number, with the share of ones of a 0 / 1 column"
 
     def fit(self, table: StepTable, context: FitContext) -> FittedTypical:  # noqa: ARG002
         """Return the step with the typical value of each column."""

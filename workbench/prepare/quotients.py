@@ -83,9 +83,12 @@ class Quotients(Settled):
     enough: int = ENOUGH_REFERENCE
     fewest: int = FEWEST_FOR_SCALE
     step: str = "quotient normalisation"
-    rule: str = "values divided by the sample's median quotient to the reference profile"
+    rule: str = (
+        "divides each sample by how concentrated it is: the median over features of its value against the typical "
+        "sample's (the quotient to a reference profile)"
+    )
     why: ClassVar[str] = (
-        "samples are diluted unequally; the typical quotient is not moved by the features that change"
+        "samples are diluted unequally; a median over features is not moved by the few that truly change"
     )
     paper: ClassVar[str] = DIETERLE
     keys: ClassVar[tuple[str, ...]] = ("normalisation",)
@@ -133,13 +136,13 @@ class FittedQuotients:
     def _account(self, factors: Matrix, samples: tuple[str, ...]) -> StepAccount:
         used = int(self.used.sum())
         numbers: dict[str, float | int | str] = {"reference_features": used, "reference_seen_in": self.cut}
-        numbers |= extremes("dilution", factors, samples)
+        numbers |= extremes("concentration", factors, samples)
         if used:
             sentence = (
-                f"values divided by the sample's median quotient to the reference profile of {used:,} "
-                f"features seen in at least {self.cut} of {self.n_training} {self.row_word}"
+                f"concentrations read off {used:,} features that at least {self.cut} of {self.n_training} "
+                f"{self.row_word} have"
             )
         else:
-            sentence = f"not normalised: fewer than {self.settings.fewest} features; values taken as they are"
-        cautions = self.usual.cautions("dilution", np.log2(factors), samples)
+            sentence = f"not scaled: fewer than {self.settings.fewest} features; values taken as they are"
+        cautions = self.usual.cautions("concentration", np.log2(factors), samples)
         return StepAccount(self.settings.step, sentence, numbers, reference=DIETERLE, cautions=cautions)

@@ -109,7 +109,9 @@ class UpperQuartile(Settled):
 
     fewest: int = FEWEST_FOR_SCALE
     step: str = "size factors"
-    rule: str = "counts divided by the sample's upper quartile"
+    rule: str = (
+        "divides the counts of each sample by its upper quartile, which a quarter of its features exceed"
+    )
     why: ClassVar[str] = (
         "samples are sequenced to unequal depth; the upper quartile is not moved by the few largest"
     )
@@ -160,7 +162,10 @@ class TrimmedMeans(Settled):
 
     fewest: int = FEWEST_FOR_SCALE
     step: str = "size factors"
-    rule: str = "counts divided by the library size times the trimmed mean of M"
+    rule: str = (
+        "divides the counts of each sample by its total, corrected by the trimmed mean of M: the typical log ratio to "
+        "a reference sample, the most extreme features left out"
+    )
     why: ClassVar[str] = (
         "a few features that take many reads push all others down; their ratios are trimmed away"
     )

@@ -97,9 +97,12 @@ class SizeFactors(Settled):
     enough: int = ENOUGH_REFERENCE
     fewest: int = FEWEST_FOR_SCALE
     step: str = "size factors"
-    rule: str = "counts divided by the sample's median ratio to the features' geometric means"
+    rule: str = (
+        "divides the counts of each sample by its size factor: how deeply it was read, as the median over features of "
+        "its count against the feature's usual one (the geometric mean over samples)"
+    )
     why: ClassVar[str] = (
-        "samples are sequenced to unequal depth; the typical ratio is not moved by the few that change"
+        "samples are sequenced to unequal depth; a median over features is not moved by the few that truly change"
     )
     keys: ClassVar[tuple[str, ...]] = ("normalisation",)
 
@@ -168,9 +171,9 @@ class FittedSizeFactors:
         if not used:
             return f"no size factors: fewer than {self.settings.fewest} features; counts taken as they are"
         if not self.positive_only:
-            return f"counts divided by size factors: median of ratios over {used:,} features without zeros"
+            return f"size factors read off {used:,} features that have a count above 0 in every sample"
         return (
-            f"only {self.complete} features lack zeros (at least {self.settings.enough} wanted): "
-            f"size factors by median of ratios from positive counts only, over the {used:,} features "
-            f"positive in at least {self.cut} of {self.n_training} samples"
+            f"only {self.complete} features have a count above 0 in every sample ({self.settings.enough} wanted): "
+            f"size factors read off positive counts only, of the {used:,} features that at least {self.cut} of "
+            f"{self.n_training} samples have"
         )

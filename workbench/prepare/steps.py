@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from workbench.prepare.refusal import without_value
 from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable
+from workbench.prepare.words import percent
 
 SEEN_SHARE = 0.7
 FEWEST_SAMPLES = 2
@@ -111,7 +112,8 @@ def keep_features(
 ) -> KeepFeatures:
     """Return the fitted step that keeps ``keep``, its account filled in."""
     before, after = len(table.features), int(keep.sum())
-    sentence = f"{before - after:,} of {before:,} features dropped: {rule}"
+    gone = f"{before - after:,} of {before:,} features dropped: {rule}"
+    sentence = gone if after < before else f"none of {before:,} features dropped"
     return KeepFeatures(keep, StepAccount(step, sentence, {"before": before, "after": after}, reasons))
 
 
@@ -225,8 +227,8 @@ class DropUnusable(Settled):
     """Drops features without any value and features with one value only."""
 
     step: str = "unusable features"
-    condition: str = "no value in any sample, or the same value in every sample that has one"
-    why: ClassVar[str] = "what does not vary correlates with nothing"
+    condition: str = "no value in any sample, or one and the same value wherever there is one"
+    why: ClassVar[str] = "a feature that does not vary cannot go with another"
 
     @property
     def rule(self) -> str:
@@ -266,7 +268,10 @@ class DropRarelySeen(Settled):
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
-        return f"drops features seen in fewer samples than {self.share:.0%} of the smallest group has"
+        return (
+            f"keeps features measured in enough samples: {percent(self.share)} of the size of the smallest group "
+            "(of all samples where there are no groups)"
+        )
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:
         """Return the step; numbers of samples are rounded up."""
@@ -275,10 +280,10 @@ class DropRarelySeen(Settled):
         needed = max(int(np.ceil(self.share * size - 1e-9)), min(FEWEST_SAMPLES, n))
         keep = seen >= needed
         reasons = {
-            table.features[i]: f"seen in {seen[i]} of {n} samples; {needed} needed"
+            table.features[i]: f"measured in {seen[i]} of {n} samples; {needed} needed"
             for i in np.flatnonzero(~keep)
         }
-        rule = f"seen in fewer than {needed} of {n} samples ({self.share:.0%} of {size})"
+        rule = f"measured in fewer than {needed} of {n} samples ({percent(self.share)} of {size})"
         return keep_features(self.step, rule, table, keep, reasons)
 
 
@@ -290,8 +295,8 @@ class DropFlat(Settled):
     """
 
     step: str = "flat features"
-    condition: str = "no variation left after preparation"
-    why: ClassVar[str] = "what does not vary correlates with nothing"
+    condition: str = "no variation left after the steps before"
+    why: ClassVar[str] = "a feature that does not vary cannot go with another"
 
     @property
     def rule(self) -> str:
@@ -302,5 +307,5 @@ class DropFlat(Settled):
         """Return the step."""
         low, high = column_range(table.values)
         flat = high - low <= FLAT * np.maximum(np.abs(low), np.abs(high))
-        reasons = {table.features[i]: "no variation left after preparation" for i in np.flatnonzero(flat)}
+        reasons = {table.features[i]: self.condition for i in np.flatnonzero(flat)}
         return keep_features(self.step, self.condition, table, ~flat, reasons)

@@ -70,7 +70,7 @@ class Transform(Settled):
     def rule(self) -> str:
         """What the step does, in one line."""
         which = self.features if isinstance(self.features, str) else f"{len(self.features)} named"
-        return f"{'log2' if self.how == 'log' else 'normal scores of the ranks'} of {which} numeric features"
+        return f"takes {'log2' if self.how == 'log' else 'normal scores of the ranks'} of {which} numeric features"
 
     def fit(self, table: StepTable, context: FitContext) -> FittedTransform:  # noqa: ARG002
         """Return the step with the features and, for ranks, the values of the training samples.
