@@ -21,7 +21,7 @@ from workbench.engine.nuisance import (
     fit_residuals,
     standardise,
 )
-from workbench.engine.panel_selection import PANEL_CAUTION, Panel, select_panel
+from workbench.engine.panel_selection import PANEL_CAUTION, Panel, PanelSearch, select_panel
 from workbench.engine.performance_measures import (
     ClassPerformance,
     NumberPerformance,
@@ -78,6 +78,7 @@ __all__ = [
     "PairStability",
     "PairTest",
     "Panel",
+    "PanelSearch",
     "RegularisedCCA",
     "RidgeChoice",
     "Split",

@@ -124,6 +124,29 @@ def standard_split(
 
 
 @dataclass(frozen=True, eq=False)
+class FoldSplits:
+    """An outer fold with the inner folds of its training part.
+
+    Attributes
+    ----------
+    repeat, fold : int
+    rows : tuple of pair of ndarray of int
+        Training and test positions: of the outer fold, then of each inner one.
+    splits : tuple of BlockSplit
+        In the same order.
+    """
+
+    repeat: int
+    fold: int
+    rows: tuple[tuple[IndexArray, IndexArray], ...]
+    splits: tuple[BlockSplit, ...]
+
+
+Observer = Callable[[FoldSplits], None]
+"""Takes part in a double cross-validation: sees every outer fold's splits, which are prepared once for all."""
+
+
+@dataclass(frozen=True, eq=False)
 class SplitKernels:
     """A split in sample space, block by block.
 

@@ -10,10 +10,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workbench.engine.double_arrangements import Arrangements, outcome_arrangements
+from workbench.engine.double_folds import fold_splits, strata_of
 from workbench.engine.double_loop import FoldKernels, nested_fold
 from workbench.engine.double_outcome import ClassOutcome, HeldOut, NumberOutcome, Outcome
-from workbench.engine.double_splits import BlockSource, SplitKernels, split_kernels
-from workbench.engine.folds import Fold
+from workbench.engine.double_splits import BlockSource, BlockSplit, Observer, SplitKernels, split_kernels
 from workbench.engine.nuisance import fit_residuals
 from workbench.engine.outcome_rule import learn_rule
 from workbench.engine.performance_measures import (
@@ -23,7 +23,7 @@ from workbench.engine.performance_measures import (
     number_performance,
 )
 from workbench.engine.smallest_p import TIE_TOLERANCE
-from workbench.engine.subjects import SubjectDesign, whole_subject_folds
+from workbench.engine.subjects import SubjectDesign
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
@@ -126,6 +126,7 @@ def double_validation(
     repeats: int = 5,
     permutations: int = 0,
     seed: int = 0,
+    observe: Observer | None = None,
     progress: Callable[[int, int], None] | None = None,
 ) -> DoubleValidation:
     """Out-of-sample figures from repeated double cross-validation, and the p of the whole procedure.
@@ -159,6 +160,8 @@ def double_validation(
     permutations : int
         0: no test.
     seed : int
+    observe : callable, optional
+        Gets every outer fold's :class:`FoldSplits`, for example a :class:`PanelSearch`.
     progress : callable, optional
         Called with outer folds done and outer folds in all.
 
@@ -188,7 +191,7 @@ def double_validation(
     run = _Run.of(
         source, outcome, nuisance, subjects, strata, exchange, candidates, folds, permutations, seed
     )
-    repeated = [run.repeat(r, repeats, progress) for r in range(repeats)]
+    repeated = [run.repeat(r, repeats, observe, progress) for r in range(repeats)]
     return run.summary(repeated)
 
 
@@ -283,13 +286,9 @@ class _Run:
         permutations: int,
         seed: int,
     ) -> _Run:
-        classes = isinstance(outcome, ClassOutcome)
         delivered = outcome.labels[:, 0] if isinstance(outcome, ClassOutcome) else outcome.values[:, :, 0]
         n = len(delivered)
         drawn = outcome_arrangements(delivered, permutations, seed, subjects=subjects, exchange=exchange)
-        columns = [delivered[:, None]] if classes else []
-        if strata is not None:
-            columns.append(np.asarray(strata).reshape(n, -1))
         return cls(
             source,
             outcome,
@@ -297,31 +296,33 @@ class _Run:
             drawn,
             nuisance if nuisance is not None and nuisance.shape[1] else None,
             SubjectDesign.of(np.arange(n)) if subjects is None else subjects,
-            np.column_stack(columns) if columns else None,
+            strata_of(outcome, strata),
             tuple(candidates),
             folds,
             seed,
             n,
         )
 
-    def repeat(self, r: int, repeats: int, progress: Callable[[int, int], None] | None) -> _Repeat:
+    def repeat(
+        self, r: int, repeats: int, observe: Observer | None, progress: Callable[[int, int], None] | None
+    ) -> _Repeat:
         """One repeat: every sample is held out once."""
         models: list[_Model] = []
         mean, nuisance = np.full((2, self.n, self.outcome.columns), np.nan)
-        for k, (train, test) in enumerate(self._folds(np.arange(self.n), (r,))):
-            kernels = FoldKernels(
-                self._kernels(train, test),
-                tuple(
-                    self._kernels(train[inner_train], train[inner_test])
-                    for inner_train, inner_test in self._folds(train, (r, k))
-                ),
-            )
+        for splits in fold_splits(self.source, self.subjects, self.levels, self.folds, self.seed, r):
+            if observe is not None:
+                observe(splits)
+            train, test = splits.rows[0]
+            every = [
+                self._kernels(split, *rows) for rows, split in zip(splits.rows, splits.splits, strict=True)
+            ]
+            kernels = FoldKernels(found[0], tuple(found[1:]))
             models = models or self._models(len(kernels.outer.train))
             for model in models:
                 model.add(kernels, self.candidates)
             self._baselines(train, test, mean, nuisance)
             if progress is not None:
-                progress(r * self.folds + k + 1, repeats * self.folds)
+                progress(r * self.folds + splits.fold + 1, repeats * self.folds)
         statistic = self.arranged.statistic(models[0].parts)
         every = models[0].every
         by_components = [
@@ -360,14 +361,8 @@ class _Run:
             models.append(_Model.of([blocks - 1], self.outcome, self.n))
         return models
 
-    def _folds(self, rows: IndexArray, key: tuple[int, ...]) -> list[Fold]:
-        labels = None if self.levels is None else self.levels[rows]
-        design = self.subjects.take(rows)
-        seed = np.random.SeedSequence(self.seed, spawn_key=key)
-        return whole_subject_folds(design, labels, self.folds, seed)
-
-    def _kernels(self, train: IndexArray, test: IndexArray) -> SplitKernels:
-        found = split_kernels(self.source(train, test), train, test)
+    def _kernels(self, split: BlockSplit, train: IndexArray, test: IndexArray) -> SplitKernels:
+        found = split_kernels(split, train, test)
         if self.nuisance is None:
             return found
         fitted = fit_residuals(None, self.nuisance[train])

@@ -10,9 +10,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workbench.engine.double_choice import fewest_as_good
+from workbench.engine.double_folds import fold_splits, strata_of
 from workbench.engine.double_outcome import ClassOutcome, HeldOut, NumberOutcome
-from workbench.engine.double_splits import BlockSource, BlockSplit
-from workbench.engine.folds import Fold
+from workbench.engine.double_splits import BlockSource, BlockSplit, FoldSplits
 from workbench.engine.linear import column_correlations
 from workbench.engine.multiblock_kernel import kernel_components, kernel_products
 from workbench.engine.outcome_rule import learn_rule
@@ -29,7 +29,7 @@ from workbench.engine.performance_measures import (
     class_performance,
     number_performance,
 )
-from workbench.engine.subjects import SubjectDesign, whole_subject_folds
+from workbench.engine.subjects import SubjectDesign
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
@@ -112,12 +112,14 @@ def select_panel(
     outcome : ClassOutcome or NumberOutcome
     block_sizes : sequence of int
         Features of each block.
-    subjects, strata, folds, repeats, seed, progress
+    subjects, strata, folds, repeats, seed
         See :func:`double_validation`.
     components : sequence of int
         Numbers of components to try.
     largest : int
         Most features of a panel.
+    progress : callable, optional
+        Called with outer folds done and outer folds in all.
 
     Examples
     --------
@@ -131,21 +133,23 @@ def select_panel(
     >>> sorted(zip(found.block.tolist(), found.feature.tolist()))
     [(0, 0), (0, 1), (1, 0), (1, 1)]
     """
-    n = _n_samples(outcome)
-    tried = panel_candidates(sum(block_sizes), largest, components)
-    run = _PanelRun(
-        source, outcome, _design(subjects, n), _levels(outcome, strata), tried, folds, seed, block_sizes
-    )
-    repeated = []
+    n = len(outcome.labels if isinstance(outcome, ClassOutcome) else outcome.values)
+    design = SubjectDesign.of(np.arange(n)) if subjects is None else subjects
+    search = PanelSearch(outcome, block_sizes, components=components, largest=largest)
+    levels = strata_of(outcome, strata)
     for r in range(repeats):
-        repeated.append(run.repeat(r))
-        if progress is not None:
-            progress(r + 1, repeats)
-    return run.panel(repeated)
+        for splits in fold_splits(source, design, levels, folds, seed, r):
+            search(splits)
+            if progress is not None:
+                progress(r * folds + splits.fold + 1, repeats * folds)
+    every = np.arange(n)
+    return search.panel(source(every, every))
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(eq=False)
 class _Repeat:
+    """One repeat, filled fold by fold."""
+
     predicted: FloatArray
     mean: FloatArray
     nuisance: FloatArray
@@ -154,45 +158,67 @@ class _Repeat:
     every: list[HeldOut]
     chosen: list[IndexArray]
 
+    @classmethod
+    def empty(cls, outcome: ClassOutcome | NumberOutcome, n: int) -> _Repeat:
+        n_classes = outcome.n_classes if isinstance(outcome, ClassOutcome) else 1
+        predicted, mean, nuisance = np.full((3, n, outcome.columns), np.nan)
+        return cls(predicted, mean, nuisance, np.full(n, -1), np.full((n, n_classes), np.nan), [], [])
 
-@dataclass(frozen=True, eq=False)
-class _PanelRun:
-    source: BlockSource
-    outcome: ClassOutcome | NumberOutcome
-    subjects: SubjectDesign
-    levels: NDArray[Any] | None
-    candidates: tuple[Candidate, ...]
-    folds: int
-    seed: int
-    block_sizes: Sequence[int]
 
-    @property
-    def n(self) -> int:
-        return self.subjects.n_samples
+class PanelSearch:
+    """Observer of a double cross-validation that chooses a panel in every training part.
 
-    def repeat(self, r: int) -> _Repeat:
-        n_classes = self.outcome.n_classes if isinstance(self.outcome, ClassOutcome) else 1
-        predicted, mean, nuisance = np.full((3, self.n, self.outcome.columns), np.nan)
-        found = _Repeat(
-            predicted, mean, nuisance, np.full(self.n, -1), np.full((self.n, n_classes), np.nan), [], []
-        )
-        for k, (train, test) in enumerate(self._folds(np.arange(self.n), (r,))):
-            inner = [self._try(train[taught], train[held])[0] for taught, held in self._folds(train, (r, k))]
-            place = int(self.outcome.choose(inner)[0])
-            outer, chosen = self._try(train, test)
-            found.every.append(outer)
-            found.chosen.append(chosen[place])
-            self._score(found, inner, outer, place)
-        return found
+    Parameters
+    ----------
+    outcome : ClassOutcome or NumberOutcome
+    block_sizes : sequence of int
+        Features of each block.
+    components : sequence of int
+        Numbers of components to try.
+    largest : int
+        Most features of a panel.
+    """
 
-    def panel(self, repeated: list[_Repeat]) -> Panel:
-        every = np.arange(self.n)
-        whole = self.source(every, every)
+    def __init__(
+        self,
+        outcome: ClassOutcome | NumberOutcome,
+        block_sizes: Sequence[int],
+        *,
+        components: Sequence[int] = (1, 2, 3),
+        largest: int = LARGEST,
+    ) -> None:
+        self.outcome = outcome
+        self.block_sizes = tuple(block_sizes)
+        self.candidates = panel_candidates(sum(block_sizes), largest, components)
+        self.n = len(outcome.labels if isinstance(outcome, ClassOutcome) else outcome.values)
+        self._repeated: list[_Repeat] = []
+
+    def __call__(self, splits: FoldSplits) -> None:
+        """Choose a panel in the training part of an outer fold, and predict its test samples."""
+        if len(self._repeated) == splits.repeat:
+            self._repeated.append(_Repeat.empty(self.outcome, self.n))
+        found = self._repeated[splits.repeat]
+        tried = [self._try(*rows, split) for rows, split in zip(splits.rows, splits.splits, strict=True)]
+        (outer, chosen), inner = tried[0], [one[0] for one in tried[1:]]
+        place = int(self.outcome.choose(inner)[0])
+        found.every.append(outer)
+        found.chosen.append(chosen[place])
+        self._score(found, inner, outer, place)
+
+    def panel(self, whole: BlockSplit) -> Panel:
+        """Return the panel of all samples, with the figures of the folds that were seen.
+
+        Parameters
+        ----------
+        whole : BlockSplit
+            All samples as the training part.
+        """
+        repeated = self._repeated
         losses = [self.outcome.losses(one.every) for one in repeated]
         weights = [self.outcome.weights(np.concatenate([e.rows for e in one.every])) for one in repeated]
         place = int(np.median([fewest_as_good(a, w)[0] for a, w in zip(losses, weights, strict=True)]))
         chosen = self.candidates[place]
-        codes = self.outcome.codes(every)[:, :, 0]
+        codes = self.outcome.codes(np.arange(self.n))[:, :, 0]
         columns = rank_features(whole.train, codes, [chosen.components], chosen.size)[0]
         block, feature = self._named(whole, columns)
         values = columns_of(whole.train, columns)
@@ -206,7 +232,7 @@ class _PanelRun:
             alternatives=self._alternatives(whole, columns, values),
             components=chosen.components,
             performance=self._performance(repeated),
-            sizes=np.array([[one.size for one in r.chosen] for r in repeated]),
+            sizes=np.array([[one[:, 0].size for one in r.chosen] for r in repeated]),
             candidates=self.candidates,
             loss=np.mean(
                 [np.einsum("knp,np->k", a, w) for a, w in zip(losses, weights, strict=True)], axis=0
@@ -214,13 +240,9 @@ class _PanelRun:
             every_frequency=frequency,
         )
 
-    def _folds(self, rows: IndexArray, key: tuple[int, ...]) -> list[Fold]:
-        labels = None if self.levels is None else self.levels[rows]
-        seed = np.random.SeedSequence(self.seed, spawn_key=key)
-        return whole_subject_folds(self.subjects.take(rows), labels, self.folds, seed)
-
-    def _try(self, train: IndexArray, test: IndexArray) -> tuple[HeldOut, list[IndexArray]]:
-        split = self.source(train, test)
+    def _try(
+        self, train: IndexArray, test: IndexArray, split: BlockSplit
+    ) -> tuple[HeldOut, list[IndexArray]]:
         predicted, chosen = try_candidates(split, self.outcome.codes(train)[:, :, 0], self.candidates)
         scored = np.isfinite(predicted).all(axis=(0, 2, 3))
         named = [np.column_stack(self._named(split, columns)) for columns in chosen]
@@ -269,7 +291,8 @@ class _PanelRun:
         for panel in (one for r in repeated for one in r.chosen):
             for b, j in panel:
                 counts[b][j] += 1.0
-        return tuple(count / (len(repeated) * self.folds) for count in counts)
+        total = sum(len(one.chosen) for one in repeated)
+        return tuple(count / total for count in counts)
 
     def _alternatives(
         self, whole: BlockSplit, columns: IndexArray, values: FloatArray
@@ -285,18 +308,3 @@ class _PanelRun:
                 tuple((int(b), int(j), float(r[c, k])) for b, j, c in zip(block, feature, alike, strict=True))
             )
         return tuple(found)
-
-
-def _n_samples(outcome: ClassOutcome | NumberOutcome) -> int:
-    return len(outcome.labels if isinstance(outcome, ClassOutcome) else outcome.values)
-
-
-def _design(subjects: SubjectDesign | None, n: int) -> SubjectDesign:
-    return SubjectDesign.of(np.arange(n)) if subjects is None else subjects
-
-
-def _levels(outcome: ClassOutcome | NumberOutcome, strata: NDArray[Any] | None) -> NDArray[Any] | None:
-    columns = [outcome.labels] if isinstance(outcome, ClassOutcome) else []
-    if strata is not None:
-        columns.append(np.asarray(strata).reshape(_n_samples(outcome), -1))
-    return np.column_stack(columns) if columns else None
