@@ -313,7 +313,7 @@ class _Run:
             if observe is not None:
                 observe(splits)
             train, test = splits.rows[0]
-            every = [
+            found = [
                 self._kernels(split, *rows) for rows, split in zip(splits.rows, splits.splits, strict=True)
             ]
             kernels = FoldKernels(found[0], tuple(found[1:]))
