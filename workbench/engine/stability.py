@@ -30,6 +30,8 @@ StrongestOf = Callable[[IndexArray, int], IndexArray]
 SMALLEST_HALF = 10
 #: Degrees of freedom that a half must leave a correlation.
 LEAST_FREEDOM = 3
+#: Log p by which the next half begins looser than the weakest cut so far.
+HINT_ROOM = 0.5
 
 
 @dataclass(frozen=True, eq=False)
@@ -183,7 +185,8 @@ class HalfScreen:
             return np.empty((0, 3), dtype=np.intp)
         ranks: Correlation = self._correlation if self._level is None else "pearson"
         found = strongest_pairs([part for _, part in parts], count, correlation=ranks, hint=self._hint)
-        self._hint = found.level
+        # The weakest cut so far, with room: halves differ, and a second pass costs more than some more pairs.
+        self._hint = max(found.level + HINT_ROOM, self._hint or -np.inf)
         numbers = np.array([k for k, _ in parts])
         return np.column_stack([numbers[found.pair_index], found.i, found.j])
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -15,8 +15,10 @@ from workbench.engine.tiles import Band, Limits, PairTiles, refine, scan
 from workbench.engine.unit_rows import FloatArray, IndexArray
 from workbench.errors import NumericsError
 
-#: So many times the pairs asked for should lie above the level that the next half-sample begins with.
-ROOM = 1.3
+#: Pairs beyond which a part of the features tells where to begin.
+MANY = 4_000_000
+#: Log p by which a guess from a part of the features, or a hint that was too strict, is loosened.
+LOOSER = 0.7
 _LEAST_LOG_P = -690.0
 
 
@@ -29,7 +31,7 @@ class Strongest:
     pair_index, i, j : ndarray of int, shape (n,)
         Pair of blocks, feature of its first and of its second block.
     level : float
-        Log p at about ``ROOM`` times as many pairs: a ``hint`` for a screen of similar samples.
+        Log p of the weakest of them: with some room, a ``hint`` for a screen of similar samples.
     """
 
     pair_index: IndexArray
@@ -77,7 +79,11 @@ def strongest_pairs(
     if count < 1:
         raise NumericsError(f"{count} strongest pairs asked for; give at least 1")
     tiles = [pair_tiles(pair, correlation, limits or Limits()) for pair in pairs]
+    if hint is None and sum(pair.pairs for pair in tiles) > MANY:
+        hint = _guess(pairs, count, correlation)
     caught = None if hint is None else _caught(tiles, hint)
+    if hint is not None and caught is not None and caught.keys.size < count:
+        caught = _caught(tiles, hint + LOOSER)
     if caught is None or caught.keys.size < count:
         caught = _caught(tiles, _level(tiles, count))
     chosen = _chosen(tiles, caught, count)
@@ -86,7 +92,7 @@ def strongest_pairs(
     i, j = np.divmod(caught.keys[chosen], widths[which])
     for pair in tiles:
         pair.release()
-    return Strongest(which, i, j, caught.level_of(min(int(ROOM * count), caught.keys.size)))
+    return Strongest(which, i, j, caught.level_of(min(count, caught.keys.size)))
 
 
 @dataclass(frozen=True, eq=False)
@@ -133,6 +139,22 @@ def _level(tiles: Sequence[PairTiles], count: int) -> float:
     counts = Counts.of([Tails.of(focus(tiles, k)) for k in range(len(tiles))])
     enough = np.flatnonzero(counts.at_least >= count)
     return float(counts.levels[enough[0]]) if enough.size else 0.0
+
+
+def _guess(pairs: Sequence[BlockPair], count: int, correlation: Correlation) -> float:
+    """Log p that about ``count`` pairs reach, judged by every so many-th feature of the first blocks."""
+    total = sum(pair.x.shape[1] * pair.y.shape[1] for pair in pairs)
+    step = min(-(-total // MANY), *(pair.x.shape[1] for pair in pairs), 64)
+    thin = [_every(pair, step) for pair in pairs]
+    tiles = [pair_tiles(pair, correlation, Limits()) for pair in thin]
+    return _level(tiles, -(-count // step)) + LOOSER
+
+
+def _every(pair: BlockPair, step: int) -> BlockPair:
+    """Take every ``step``-th feature of the first block."""
+    x = np.asarray(pair.x[:, ::step])
+    damping = None if pair.damping is None else (pair.damping[0][::step], pair.damping[1])
+    return replace(pair, x=x, damping=damping)
 
 
 def _chosen(tiles: Sequence[PairTiles], caught: _Caught, count: int) -> IndexArray:
