@@ -11,6 +11,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from workbench.engine import SubjectDesign, aliased
+from workbench.engine.alias_equations import alias_equations
 from workbench.errors import InputError
 from workbench.intake import Groups, design_columns, group_codes
 from workbench.settings import AnalysisSettings, Settings
@@ -135,10 +136,13 @@ class AnalysisView:
         group_names = [f"{'+'.join(self.factors)} (group)"] * shared.group_columns.shape[1]
         tangled = aliased(shared.within, [*shared.nuisance_names, *group_names])
         if tangled:
+            levels = () if shared.groups is None else shared.groups.levels[1:]
+            parts = [*shared.nuisance_names, *(f"{'+'.join(self.factors)}={level}" for level in levels)]
             raise InputError(
-                f"{where}: {', '.join(tangled)} cannot be told apart from the columns before "
-                f"(order: {', '.join([*self.design(names).columns, *self.factors])}) on the {shared.n} shared "
-                "samples, so that its effect has no estimate; take one of them out of adjust or group in project.toml"
+                f"{where}: {', '.join(tangled)} cannot be told apart from the columns before, as on the {shared.n} "
+                f"shared samples {' and '.join(alias_equations(shared.within, parts))} (a class counts 1 in its "
+                "samples and 0 elsewhere), so that its effect has no estimate; take one of them out of adjust or group "
+                "in project.toml"
             )
         freedom = shared.n - shared.within.shape[1] - 2
         if freedom < LEAST_FREEDOM:
