@@ -25,8 +25,8 @@ def edge_correlations(
 ) -> tuple[pd.DataFrame, EdgeMatrix]:
     """Return edge_correlations.tsv and what its figure draws: communities, in them layers, in them alike features.
 
-    Each correlation is on the samples that the two blocks share, with the design removed as in the screen. Private
-    variation, where the analysis removes it, is left in.
+    Each correlation is on the samples that the two blocks share, with the design and private variation removed as in
+    the screen.
     """
     strength = _strength(edges)
     keys = list(zip(features["block"], features["feature"], strict=True))

@@ -27,7 +27,7 @@ from workbench.pathways import (
     short_list,
 )
 from workbench.store import Change, check_file, read_table, sha256_of, table_bytes
-from workbench.workflow.analysis_view import AnalysisView, blocks_of, view_analysis
+from workbench.workflow.analysis_view import AnalysisView, blocks_of
 from workbench.workflow.canonical import analysis_inputs
 from workbench.workflow.doubts import doubts_of
 from workbench.workflow.drawings import write_drawings
@@ -41,6 +41,7 @@ from workbench.workflow.pathway_tables import (
     pathways_table,
     tested_sets,
 )
+from workbench.workflow.private import FILE as PRIVATE_FILE
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.residual_blocks import ResidualViews
 from workbench.workflow.stages import Stage
@@ -94,7 +95,7 @@ def _inputs(state: ProjectState, name: str) -> dict[str, str]:
     hashes["settings of the follow-up"] = fingerprint(
         [VERSION, state.settings.analyses[name].model_dump(mode="json", exclude={"pathways"})]
     )
-    for file in READ:
+    for file in (*READ, PRIVATE_FILE):
         hashes[file] = state.manifest.files.get(f"results/{name}/{file}", "")
     return hashes
 
@@ -104,8 +105,8 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
     features = read_features(check_file(state.root, f"{folder}/features.tsv"))
     edges = read_table(check_file(state.root, f"{folder}/edges.tsv"))
     graph = read_graphml(check_file(state.root, f"{folder}/network.graphml"))
-    view = view_analysis(state, name)
-    views = ResidualViews(view)
+    views = ResidualViews.of_analysis(state, name)
+    view = views.view
     sets, links = read_knowledge(state, name)
     drawings: list[Drawing] = [*draw_network(graph)]
     table, matrix = edge_correlations(views, features, edges)
