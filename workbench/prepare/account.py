@@ -75,7 +75,7 @@ def explain_lines(account: Sequence[StepAccount], block: str) -> tuple[str, ...]
     1. logarithm
        what     log2
        why      effects multiply
-       change   [blocks.lipids.prepare] zeros = "missing"
+       change   in project.toml under [blocks.lipids.prepare]: zeros = "missing"
     """
     lines: list[str] = []
     for place, step in enumerate(account, start=1):
@@ -98,7 +98,7 @@ def _labelled(step: StepAccount, block: str) -> list[tuple[str, str]]:
     if step.reference:
         told.append(("paper", step.reference))
     if step.change:
-        told.append(("change", f"[blocks.{block}.prepare] {step.change}"))
+        told.append(("change", f"in project.toml under [blocks.{block}.prepare]: {step.change}"))
     return told
 
 

@@ -88,7 +88,7 @@ def _paragraphs(step: StepAccount, block: str) -> list[str]:
     if step.reference:
         told.append(f"Paper: {step.reference}.")
     if step.change:
-        told.append(f"To change it, in `project.toml`: `[blocks.{block}.prepare]` {step.change}.")
+        told.append(f"To change it, in `project.toml` under `[blocks.{block}.prepare]`: {step.change}.")
     return [line for paragraph in told for line in (paragraph, "")]
 
 
