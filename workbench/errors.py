@@ -42,6 +42,12 @@ class BusyError(WorkbenchError):
     exit_code = 3
 
 
+class StorageError(WorkbenchError):
+    """A file of the project cannot be written: no permission, no room, a read-only disk."""
+
+    exit_code = 3
+
+
 class DamageError(WorkbenchError):
     """A stored file is not what the program wrote, or cannot be read."""
 

@@ -29,6 +29,7 @@ from workbench.workflow.blocks import Tell, no_words
 from workbench.workflow.checking import stored_findings
 from workbench.workflow.create import DEFAULT_TEMPLATE, create_project
 from workbench.workflow.preparing import account_of
+from workbench.workflow.removing import remove_block
 from workbench.workflow.reporting import SILENT, Reporter
 from workbench.workflow.samples import SheetAccount, SheetDelivery, add_samples
 from workbench.workflow.showing import Story, keep_figures, show
@@ -209,9 +210,9 @@ class Project:
         )
         return workflow_blocks.add_block(self.paths, delivery, tell)
 
-    def remove_block(self, name: str) -> None:
-        """Take a block out of the project; its source stays."""
-        workflow_blocks.remove_block(self.paths, name)
+    def remove_block(self, name: str) -> tuple[str, ...]:
+        """Take a block out of the project; its source stays. Return the folders of results that rested on it."""
+        return remove_block(self.paths, name)
 
     def export(self, block: str, *, values: str = "prepared") -> pd.DataFrame:
         """Return one block as a plain table, samples in rows: ``prepared`` or ``measured`` values."""
@@ -265,9 +266,9 @@ class Project:
         state = self.state()
         return standings(state, plan.all_stages(state, analyses))
 
-    def status(self) -> Status:
-        """Return what is done, what is stale, and the next command."""
-        return status_of(self.state())
+    def status(self, *analyses: str) -> Status:
+        """Return what is done, what is stale, and the next command (about some analyses, where they are named)."""
+        return status_of(self.state(), analyses)
 
     def check(self, *, reporter: Reporter = SILENT) -> list[dict[str, Any]]:
         """Return the findings about the data, each with ``accepted`` (the reason, or None)."""

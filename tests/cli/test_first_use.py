@@ -1,5 +1,8 @@
 """What a first user of the program meets: each message is true, says where, and its way out works."""
 
+import subprocess
+import sys
+
 
 def edit(folder, old, new):
     path = folder / "project.toml"
@@ -66,3 +69,116 @@ def test_empty_cells_of_the_design_are_told_when_they_come_in(command, tmp_path)
     code, out, err = command("add-block", "lip", tmp_path / "t.csv", *words, *here)
     assert code == 0, err
     assert "column 'day' (adjust) is empty for 1 sample: 'S4'" in out
+
+
+def test_without_a_sheet_the_sheet_is_asked_for_first(command, tmp_path):
+    assert command("init", tmp_path / "study")[0] == 0
+    for words in (["run"], ["check"], ["look"], ["network"]):
+        code, _, err = command(*words, "--project", tmp_path / "study")
+        assert (code, "no sample sheet yet" in err) == (2, True), words
+
+
+def test_a_lost_source_is_damage_for_every_command_until_it_is_delivered_again(command, made, delivered):
+    (made / "source" / "counts.tsv").unlink()
+    for words in (["status"], ["run"], ["prepare", "rna"], ["check", "--files"]):
+        code, out, err = command(*words, "--project", made)
+        assert code == 3, words
+        assert "source/counts.tsv: is missing; restore the delivered file" in out + err
+    words = ("--layer", "transcripts", "--values", "counts", "--replace", "--project", made)
+    code, out, err = command("add-block", "rna", delivered["transcripts"], *words)
+    assert code == 0, err
+    assert command("status", "--project", made)[0] == 0
+
+
+def test_a_result_changed_by_hand_is_told_and_made_again(command, finished):
+    table = finished / "results" / "main" / "edges.tsv"
+    was = table.read_bytes()
+    table.write_bytes(was + b"my note\n")
+    out = command("status", "--project", finished)[1]
+    assert "network:main: results/main/edges.tsv was changed by hand" in out
+    code, _, err = command("run", "--project", finished)
+    assert code == 0
+    assert "running network main again, since results/main/edges.tsv was changed by hand" in err
+    assert table.read_bytes() == was
+
+
+def test_what_rested_on_a_block_goes_with_it_and_other_things_stay(command, finished):
+    note = finished / "results" / "main" / "my_notes.txt"
+    note.write_text("mine")
+    code, out, _ = command("remove-block", "lcms", "--project", finished)
+    assert code == 0
+    assert "results that rested on it are out as well: results/check, results/look, results/main" in out
+    left = {str(path.relative_to(finished / "results")) for path in (finished / "results").rglob("*.*")}
+    assert "main/my_notes.txt" in left
+    assert not any(name.startswith(("look/lcms", "main/edges", "check")) for name in left)
+    assert "look/rna/captions.tsv" in left
+    assert command("check", "--files", "--project", finished)[0] == 0
+    assert "read:lcms" not in command("status", "--project", finished)[1]
+
+
+def test_a_fresh_project_is_read_where_it_cannot_be_written(command, finished, monkeypatch):
+    from workbench.errors import StorageError
+    from workbench.workflow import stages
+
+    def shut(root, _):
+        raise StorageError(f"{root}: no permission")
+
+    monkeypatch.setattr(stages, "project_lock", shut)
+    for words in (["check"], ["export", "rna"], ["look", "rna"], ["prepare", "rna", "--explain"], ["run"]):
+        assert command(*words, "--project", finished)[0] == 0, words
+    (finished / "results" / "main" / "edges.tsv").unlink()
+    assert command("run", "--project", finished)[0] == 3
+
+
+def test_the_next_command_is_about_the_analysis_that_was_run(command, finished):
+    with (finished / "project.toml").open("a") as file:
+        file.write('[analyses.rp]\nblocks = "all"\npermutations = 50\nrepeats = 1\n')
+    code, _, err = command("run", "rp", "--project", finished)
+    assert code == 0
+    assert "next: open results/rp/network.graphml" in err
+    assert "next: open results/main/network.graphml" in command("run", "main", "--project", finished)[2]
+
+
+def test_a_reader_that_has_seen_enough_ends_nothing(finished):
+    """The command's own exit code holds, whatever happens to the pipe; nothing is said of it."""
+    words = [sys.executable, "-m", "workbench", "export", "rna", "--project", str(finished)]
+    with subprocess.Popen(words, stdout=subprocess.PIPE, stderr=subprocess.PIPE) as process:
+        process.stdout.close()
+        assert process.wait(60) == 0
+        assert process.stderr.read() == b""
+
+
+SWAPPED_KIND = 'layer = "metabolites"\nvalues = "intensities"'
+
+
+def test_a_block_that_cannot_be_prepared_is_a_finding_and_the_others_are_checked(command, made):
+    edit(made, SWAPPED_KIND, SWAPPED_KIND.replace("intensities", "log"))
+    code, out, err = command("check", "--project", made)
+    assert code == 1, err
+    assert "error not_prepared-lcms (lcms): block 'lcms' cannot be prepared: " in out
+    assert 'set values = "intensities" in [blocks.lcms] of project.toml (or "counts")' in out
+    assert "1 error, " in out
+    assert "degrees_of_freedom" in out
+    assert "next: settle not_prepared-lcms as `workbench check` says, then workbench run" in err
+    out = command("status", "--project", made)[1]
+    assert "prepare:lcms: cannot be done as things stand; `workbench check` says why" in out
+    assert "check:data: up to date" in out
+    assert "open error: not_prepared-lcms" in out
+    edit(made, "[study]", '[check]\naccept = { not_prepared-lcms = "never mind" }\n[study]')
+    code, _, err = command("run", "--project", made)
+    assert code == 1
+    assert "with such data no analysis can be made" in err
+    assert not (made / "results" / "main").exists()
+    assert command("prepare", "lcms", "--project", made)[0] == 2
+    edit(made, SWAPPED_KIND.replace("intensities", "log"), SWAPPED_KIND)
+    assert command("check", "--project", made)[0] == 0
+
+
+def test_a_block_that_cannot_be_read_any_more_is_a_finding_as_well(command, made):
+    sheet = made / "samples.tsv"
+    lines = sheet.read_text().splitlines()
+    sheet.write_text("\n".join([lines[0], *("renamed" + line for line in lines[1:])]) + "\n")
+    code, out, _ = command("check", "--project", made)
+    assert code == 1
+    assert "error not_read-rna (rna): block 'rna' cannot be read: " in out
+    assert "error not_read-lcms (lcms)" in out

@@ -6,7 +6,7 @@ from pathlib import Path
 
 import pytest
 
-from workbench.errors import DamageError, InputError
+from workbench.errors import DamageError, StorageError
 from workbench.store import files
 from workbench.store.files import (
     explained,
@@ -35,15 +35,15 @@ def test_a_neighbour_is_known_by_its_name_and_fits_into_a_folder(tmp_path, name,
 @pytest.mark.parametrize(
     ("number", "kind", "told"),
     [
-        (errno.ENOSPC, InputError, "the disk (or your share of it) is full"),
-        (errno.EDQUOT, InputError, "the disk (or your share of it) is full"),
-        (errno.EFBIG, InputError, "the disk (or your share of it) is full"),
-        (errno.EACCES, InputError, "no permission"),
-        (errno.EPERM, InputError, "no permission"),
-        (errno.EROFS, InputError, "the file system is read-only; copy the project"),
+        (errno.ENOSPC, StorageError, "the disk (or your share of it) is full"),
+        (errno.EDQUOT, StorageError, "the disk (or your share of it) is full"),
+        (errno.EFBIG, StorageError, "the disk (or your share of it) is full"),
+        (errno.EACCES, StorageError, "no permission"),
+        (errno.EPERM, StorageError, "no permission"),
+        (errno.EROFS, StorageError, "the file system is read-only; copy the project"),
         (errno.EIO, DamageError, "the disk reports a failure"),
-        (errno.ENOTDIR, InputError, "a folder stands where a file should, or a file where a folder should"),
-        (errno.EMFILE, InputError, "Too many open files; mend this and run the command again"),
+        (errno.ENOTDIR, StorageError, "a folder stands where a file should, or a file where a folder should"),
+        (errno.EMFILE, StorageError, "Too many open files; mend this and run the command again"),
     ],
 )
 def test_a_failure_of_the_disk_is_told_with_file_and_way_out(number, kind, told):

@@ -16,7 +16,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy import sparse
 
-from workbench.errors import DamageError, InputError, WorkbenchError
+from workbench.errors import DamageError, InputError, StorageError, WorkbenchError
 from workbench.store.h5ad import block_bytes, read_block, write_block
 
 
@@ -218,7 +218,7 @@ def test_a_refused_or_failing_write_leaves_the_file_before(tmp_path, monkeypatch
     write_block(path, block())
     before = path.read_bytes()
     monkeypatch.setattr("os.write", lambda *_: (_ for _ in ()).throw(OSError(28, "No space left on device")))
-    with pytest.raises(InputError, match=r"a.h5ad: the disk .* is full; .*nothing was changed"):
+    with pytest.raises(StorageError, match=r"a.h5ad: the disk .* is full; .*nothing was changed"):
         write_block(path, block())
     assert path.read_bytes() == before
     assert [file.name for file in tmp_path.iterdir()] == ["a.h5ad"]

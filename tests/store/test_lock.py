@@ -9,7 +9,7 @@ from pathlib import Path
 import pytest
 from store.crashes import committed, decided, make_old, snapshot
 
-from workbench.errors import BusyError, InputError, WorkbenchError
+from workbench.errors import BusyError, StorageError, WorkbenchError
 from workbench.store.hashes import check_all, check_file
 from workbench.store.journal import read_journal
 from workbench.store.lock import project_lock, read_holder, settle
@@ -117,8 +117,8 @@ def test_a_project_that_cannot_be_written_is_read_all_the_same(shut):
 
 
 def test_a_project_that_cannot_be_written_tells_a_writer_so(shut):
-    told = r"no permission; .* commands that only read the project work"
-    with pytest.raises(InputError, match=told), project_lock(shut, "workbench run"):
+    told = r"no permission; .* any command whose stages are all up to date work"
+    with pytest.raises(StorageError, match=told), project_lock(shut, "workbench run"):
         pytest.fail("the lock was given")
     with pytest.raises(WorkbenchError, match=r"results/main/edges.tsv: no permission; .*nothing was changed"):
         committed(shut, lambda change: change.write_text("results/main/edges.tsv", "x"))

@@ -7,7 +7,7 @@ import stat
 import pytest
 from store.crashes import TIME, committed, decided, make_old, snapshot
 
-from workbench.errors import DamageError, InputError, WorkbenchError
+from workbench.errors import DamageError, InputError, StorageError, WorkbenchError
 from workbench.store.files import sha256_of
 from workbench.store.journal import read_journal
 from workbench.store.manifest import StageRecord, read_manifest
@@ -56,7 +56,7 @@ def test_a_failing_writer_of_the_caller_is_told_as_a_full_disk(root):
 
     before = snapshot(root)
     with pytest.raises(
-        InputError, match=r"/results/main/edges.tsv: the disk .* is full; .*nothing was changed"
+        StorageError, match=r"/results/main/edges.tsv: the disk .* is full; .*nothing was changed"
     ):
         committed(root, write)
     assert snapshot(root) == before

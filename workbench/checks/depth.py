@@ -61,6 +61,7 @@ def _empty(block: CheckedBlock) -> list[Finding]:
             f"sample '{block.samples[row]}' has no value in block '{block.name}'",
             (block.samples[row],),
             todo=f"leave it out with {exclude_line(block.name, [block.samples[row]], 'not measured')}",
+            acceptable=block.prepared is not None,
         )
         for row in rows
     ]

@@ -35,6 +35,8 @@ class Finding:
         What to do, with the line for ``project.toml`` where there is one.
     evidence : object or None
         A small frozen dataclass that a figure can be drawn from.
+    acceptable : bool
+        False for an error with which no analysis can be made, whatever a person says of it.
     """
 
     id: str
@@ -46,6 +48,7 @@ class Finding:
     features: tuple[str, ...] = ()
     todo: str = ""
     evidence: Any = None
+    acceptable: bool = True
 
     @property
     def rank(self) -> tuple[int, str, str]:

@@ -242,7 +242,8 @@ def _finding(block: CheckedBlock, word: str, severity: Severity, what: str, inst
         todo = "ask how the table was made, and deliver values with one logarithm at most"
     if severity == "warning":
         todo += f"; or keep it with {accept_line(identity)}"
-    return Finding(identity, CHECK, severity, block.name, what, (), (), todo, _spread(block))
+    usable = severity != "error" or block.prepared is not None
+    return Finding(identity, CHECK, severity, block.name, what, (), (), todo, _spread(block), usable)
 
 
 def _spread(block: CheckedBlock) -> ValueSpread:

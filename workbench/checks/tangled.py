@@ -137,7 +137,9 @@ def _aliased(data: StudyData, unit: Unit) -> list[Finding]:
         )
         table = _table(unit, culprits[0]) if column == unit.factors else None
         identity = finding_id(CHECK, unit.block, column, *culprits)
-        found.append(Finding(identity, CHECK, "error", unit.block, what, (), (), todo, table))
+        found.append(
+            Finding(identity, CHECK, "error", unit.block, what, (), (), todo, table, acceptable=False)
+        )
     return found
 
 
@@ -191,7 +193,7 @@ def _sizes(unit: Unit) -> list[Finding]:
         what = f"the {len(unit.samples)} samples of {unit.words} are of one group: {told}"
         todo = "take group out of [samples], or add samples of another group"
         identity = finding_id("one_group", unit.block, unit.factors)
-        return [Finding(identity, "one_group", "error", unit.block, what, (), (), todo)]
+        return [Finding(identity, "one_group", "error", unit.block, what, (), (), todo, acceptable=False)]
     smallest, largest = int(sizes.min()), int(sizes.max())
     if smallest >= SMALLEST_GROUP and largest < UNEQUAL * smallest:
         return []
@@ -338,6 +340,7 @@ def _unread(data: StudyData) -> list[Finding]:
             block.name,
             f"the columns that block '{block.name}' is adjusted for cannot be used: {block.design_fault}",
             todo="mend the sample sheet or the settings as the message says",
+            acceptable=False,
         )
         for block in data.blocks.values()
         if block.design_fault

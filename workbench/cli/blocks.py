@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-import sys
 from pathlib import Path
 from typing import Annotated
 
 import typer
 
-from workbench.cli.console import answer, tell_next
+from workbench.cli.console import answer, answer_whole, tell_next
 from workbench.cli.options import AdjustOption, ProjectOption, QuietOption, ReplaceOption, open_project
 
 NameArgument = Annotated[
@@ -101,12 +100,14 @@ def export(
     from workbench.store import table_bytes
 
     table = open_project(project).export(name, values=values)
-    sys.stdout.write(table_bytes(table).decode())
+    answer_whole(table_bytes(table).decode())
 
 
 def remove_block(name: NameArgument, project: ProjectOption = None, quiet: QuietOption = False) -> None:
     """Take a block out of the project; its source stays."""
     opened = open_project(project)
-    opened.remove_block(name)
+    gone = opened.remove_block(name)
     answer([f"block '{name}' is out of the project; its delivered table stays in {opened.paths.source}"])
+    if gone:
+        answer([f"results that rested on it are out as well: {', '.join(gone)}"])
     tell_next(opened.status().next_command, quiet=quiet)

@@ -14,6 +14,8 @@ from workbench.cli.options import JsonOption, ProjectOption, QuietOption, open_p
 if TYPE_CHECKING:
     from workbench.project import Project
 
+OWN_KEYS = ("accepted", "acceptable")
+
 
 def register(app: typer.Typer) -> None:
     """Add the command to the program."""
@@ -35,14 +37,14 @@ def check(
         return
     found = opened.check(reporter=terminal_reporter(True))
     if as_json:
-        rows = [{key: value for key, value in row.items() if key != "accepted"} for row in found]
+        rows = [{key: value for key, value in row.items() if key not in OWN_KEYS} for row in found]
         answer([json.dumps({"schema_version": 1, "findings": rows}, indent=1, ensure_ascii=False)])
     else:
         answer(line for row in found for line in _lines(row))
         answer([_count(found)])
+    tell_next(opened.status().next_command, quiet=quiet or as_json)
     if any(row["severity"] == "error" and row["accepted"] is None for row in found):
         raise typer.Exit(1)
-    tell_next(opened.status().next_command, quiet=quiet or as_json)
 
 
 def _lines(row: dict[str, Any]) -> list[str]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import sys
 from collections.abc import Iterable, Iterator
 from contextlib import contextmanager
@@ -15,13 +16,13 @@ if TYPE_CHECKING:
 
 def complain(text: str) -> None:
     """Print an error on standard error, whole, markup untouched."""
-    typer.echo(f"error: {text}", err=True)
+    _echo(f"error: {text}", err=True)
 
 
 def tell(text: str, *, quiet: bool = False) -> None:
     """Print a message on standard error unless asked to be quiet."""
     if not quiet:
-        typer.echo(text, err=True)
+        _echo(text, err=True)
 
 
 def tell_next(command: str, *, quiet: bool = False) -> None:
@@ -32,7 +33,23 @@ def tell_next(command: str, *, quiet: bool = False) -> None:
 def answer(lines: Iterable[str]) -> None:
     """Print results on standard output."""
     for line in lines:
-        typer.echo(line)
+        _echo(line)
+
+
+def answer_whole(text: str) -> None:
+    """Print a text on standard output as it is."""
+    _echo(text, newline=False)
+
+
+def _echo(text: str, *, err: bool = False, newline: bool = True) -> None:
+    """Print a text; a reader that has seen enough (``| head -1``) ends the printing, not the command."""
+    try:
+        typer.echo(text, err=err, nl=newline)
+    except BrokenPipeError:
+        stream = sys.stderr if err else sys.stdout
+        nowhere = os.open(os.devnull, os.O_WRONLY)
+        os.dup2(nowhere, stream.fileno())
+        os.close(nowhere)
 
 
 def terminal_reporter(quiet: bool) -> Reporter:

@@ -56,5 +56,6 @@ def status(project: ProjectOption = None, as_json: JsonOption = False, quiet: Qu
         [f"{found.title or 'untitled study'}: {samples}{group}, blocks: {', '.join(found.blocks) or 'none'}"]
     )
     answer(f"  {one.stage.name}: {one.reason or 'up to date'}" for one in found.stages)
+    answer(f"  open error: {one} (`workbench check` says what to do)" for one in found.open_errors)
     answer(f"  {choice}" for choice in found.choices)
     tell_next(found.next_command, quiet=quiet)

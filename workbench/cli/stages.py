@@ -65,7 +65,7 @@ def integrate(
 ) -> None:
     """Run the engine: canonical pairs of the two layers, tested and cross-validated."""
     opened = open_project(project)
-    _close(opened, opened.integrate(*(analyses or ()), reporter=terminal_reporter(quiet)), quiet)
+    _close(opened, opened.integrate(*(analyses or ()), reporter=terminal_reporter(quiet)), quiet, analyses)
 
 
 def network(
@@ -75,7 +75,7 @@ def network(
     opened = open_project(project)
     outcome = opened.network(*(analyses or ()), reporter=terminal_reporter(quiet))
     _summarise(opened, analyses or list(opened.state().settings.analyses))
-    _close(opened, outcome, quiet)
+    _close(opened, outcome, quiet, analyses)
 
 
 def run(
@@ -93,7 +93,7 @@ def run(
         return
     outcome = opened.run(*(analyses or ()), reporter=terminal_reporter(quiet))
     _summarise(opened, analyses or opened.ready_analyses())
-    _close(opened, outcome, quiet)
+    _close(opened, outcome, quiet, analyses)
 
 
 def _summarise(project: Project, analyses: list[str]) -> None:
@@ -106,9 +106,9 @@ def _summarise(project: Project, analyses: list[str]) -> None:
         answer([f"  edges: {folder / 'edges.tsv'}", f"  network: {folder / 'network.graphml'}"])
 
 
-def _close(project: Project, outcome: Outcome, quiet: bool) -> None:
+def _close(project: Project, outcome: Outcome, quiet: bool, analyses: list[str] | None = None) -> None:
     if not outcome.done:
         answer([f"nothing to do: {len(outcome.fresh)} stages are up to date"])
     else:
         tell(f"done: {', '.join(outcome.done)}", quiet=quiet)
-    tell_next(project.status().next_command, quiet=quiet)
+    tell_next(project.status(*(analyses or ())).next_command, quiet=quiet)

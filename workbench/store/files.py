@@ -15,7 +15,7 @@ import secrets
 from collections.abc import Iterable
 from pathlib import Path
 
-from workbench.errors import DamageError, InputError, WorkbenchError
+from workbench.errors import DamageError, StorageError, WorkbenchError
 
 _PART = re.compile(r"\..+\.[0-9a-f]{16}(\.old)?\.part")
 _LONGEST = 255 - len("..0123456789abcdef.old.part")
@@ -157,7 +157,7 @@ def explained(error: OSError, path: Path | str | None = None) -> WorkbenchError:
     Returns
     -------
     WorkbenchError
-        A `DamageError` when the disk itself fails, else an `InputError`.
+        A `DamageError` when the disk itself fails, else a `StorageError`.
     """
     where = error.filename if error.filename is not None else path
     prefix = "" if where is None else f"{file_of(Path(os.fsdecode(where)))}: "
@@ -176,7 +176,7 @@ def explained(error: OSError, path: Path | str | None = None) -> WorkbenchError:
         told = "a folder stands where a file should, or a file where a folder should; rename it"
     else:
         told = f"{error.strerror or error}; mend this and run the command again"
-    return InputError(f"{prefix}{told}")
+    return StorageError(f"{prefix}{told}")
 
 
 def refused(error: OSError, path: Path) -> WorkbenchError:

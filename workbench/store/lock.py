@@ -99,7 +99,9 @@ def settle(root: Path) -> None:
 def _not_writable(error: OSError | NotImplementedError, hidden: Path) -> WorkbenchError:
     if isinstance(error, OSError):
         told = explained(error, hidden)
-        return type(told)(f"{told}; commands that only read the project work all the same")
+        return type(told)(
+            f"{told}; status, guide, and any command whose stages are all up to date work all the same"
+        )
     return WorkbenchError(
         f"{hidden}: this file system knows no locks ({error}); copy the project to another disk"
     )

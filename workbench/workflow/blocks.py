@@ -10,7 +10,7 @@ from typing import Any
 import tomlkit
 from anndata import AnnData
 
-from workbench.errors import InputError
+from workbench.errors import InputError, WorkbenchError
 from workbench.intake import (
     build_block,
     difference,
@@ -25,19 +25,16 @@ from workbench.settings import (
     VALUES,
     BlockSettings,
     add_block_text,
-    check_name,
-    cross_check,
     hint,
     layer_fault,
     name_fault,
     nearest,
     parse_settings,
     read_settings_text,
-    remove_block_text,
 )
 from workbench.store import Change, ProjectPaths, StageRecord, project_lock, sha256_of, table_bytes
 from workbench.workflow.fingerprints import columns_fingerprint
-from workbench.workflow.reading import BESIDE, block_file, reading_settings, reading_stage, write_built
+from workbench.workflow.reading import BESIDE, reading_settings, reading_stage, write_built
 from workbench.workflow.sources import delivered_file, keep_source
 from workbench.workflow.state import ProjectState, load_state
 from workbench.workflow.tables import measured_block
@@ -91,7 +88,7 @@ def add_block(paths: ProjectPaths, delivery: Delivery, tell: Tell = no_words) ->
     for file in (delivery.file, *delivery.beside.values()):
         delivered_file(file)
     with project_lock(paths.root, f"add-block {delivery.name}"):
-        state = load_state(paths)
+        state = load_state(paths, replaced=delivery.name if delivery.replace else None)
         _require_fitting(state, delivery)
         with Change(paths.root) as change:
             return _take_in(state, change, delivery, tell)
@@ -133,7 +130,7 @@ def _take_in(state: ProjectState, change: Change, delivery: Delivery, tell: Tell
     known = [*sheet.columns, *(run_columns(delivery.runs) if delivery.runs else ())]
     require_columns(final.adjust, known, state.paths.samples)
     if delivery.replace:
-        tell(difference(measured_block(state, name), build.adata).lines())
+        tell(_changes(state, name, build.adata))
     write_built(change, name, build)
     change.write_text("project.toml", text)
     hashes = {source["file"]: source["sha256"] for source in sources}
@@ -166,6 +163,15 @@ def _own_layer_line(block: BlockSettings) -> tuple[str, ...]:
         f"layer: '{block.layer}' is one of your own (known are {', '.join(LAYERS)}); its values are prepared "
         f"as any {block.values} are",
     )
+
+
+def _changes(state: ProjectState, name: str, new: AnnData) -> Sequence[str]:
+    """Return what a replaced block changes, where the old one is still there to be read."""
+    try:
+        old = measured_block(state, name)
+    except WorkbenchError as error:
+        return (f"what changes is not known, since the old block cannot be read ({error})",)
+    return difference(old, new).lines()
 
 
 def replaced_entries(text: str, name: str, entries: dict[str, Any]) -> str:
@@ -260,33 +266,3 @@ def _require_fitting(state: ProjectState, delivery: Delivery) -> None:
             f"{state.paths.settings}: block '{delivery.name}' is already there; say --replace to put this table in its "
             f"place, take it out with `workbench remove-block {delivery.name}`, or choose another name"
         )
-
-
-def _require_whole(state: ProjectState, text: str, name: str) -> None:
-    """Refuse to take a block out when the settings that are left would not hold, before anything is written."""
-    left = parse_settings(text, state.paths.settings)
-    faults = [] if state.sheet is None else cross_check(left, state.sheet, state.root)
-    if faults:
-        raise InputError(
-            f"{state.paths.settings}: block '{name}' cannot be taken out as the settings stand; change them "
-            "first, nothing was changed:\n  " + "\n  ".join(faults)
-        )
-
-
-def remove_block(paths: ProjectPaths, name: str) -> None:
-    """Take a block, what was prepared from it and its settings out; its source stays."""
-    check_name(name, "block")
-    with project_lock(paths.root, f"remove-block {name}"):
-        state = load_state(paths)
-        state.require_block(name)
-        text = remove_block_text(read_settings_text(paths.settings), name)
-        _require_whole(state, text, name)
-        with Change(paths.root) as change:
-            change.write_text("project.toml", text)
-            for relative in (block_file(name), f"prepared/{name}.h5ad"):
-                if (paths.root / relative).exists():
-                    change.remove(relative)
-            for kind in ("read", "prepare"):
-                if f"{kind}:{name}" in state.manifest.stages:
-                    change.forget_stage(f"{kind}:{name}")
-            change.commit({"command": "remove-block", "block": name})

@@ -16,12 +16,13 @@ from workbench.store import Change, check_file, json_bytes, read_block, sha256_o
 from workbench.store.journal import source_hashes
 from workbench.workflow.drawings import write_drawings
 from workbench.workflow.fingerprints import block_header, columns_fingerprint, fingerprint
+from workbench.workflow.refusals import is_refused, refused_inputs, with_refusals
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
 from workbench.workflow.tables import measured_block
 
-VERSION = 2
+VERSION = 3
 SEED = 20260101
 FOLDER = "results/check"
 RECORD = f"{FOLDER}/findings.json"
@@ -40,6 +41,7 @@ def checking_stage(names: Sequence[str]) -> Stage:
         inputs=lambda state: _inputs(state, names),
         work=lambda state, change, reporter: _work(state, change, reporter, names),
         gate=refuse_errors,
+        tolerant=True,
     )
 
 
@@ -57,22 +59,32 @@ def _inputs(state: ProjectState, names: Sequence[str]) -> dict[str, str]:
     }
     hashes |= {f"spare table {path.name}": sha256_of(path) for path in spare_files(state)}
     for name in names:
+        refused = refused_inputs(state, name)
+        if refused:
+            hashes |= refused
+            continue
         header = block_header(state.paths.prepared_block(name))
         hashes[f"block {name}"] = fingerprint([header["content_sha256"], header["measured_sha256"]])
     return hashes
 
 
 def _work(state: ProjectState, change: Change, reporter: Reporter, names: Sequence[str]) -> list[str]:
-    measured = {name: measured_block(state, name) for name in names}
-    prepared = {name: read_block(check_file(state.root, f"prepared/{name}.h5ad")) for name in names}
+    measured = {name: measured_block(state, name) for name in names if not is_refused(state, name, "read")}
+    prepared = {
+        name: read_block(check_file(state.root, f"prepared/{name}.h5ad"))
+        for name in names
+        if not is_refused(state, name, "prepare")
+    }
     data = study_data(state.settings, state.require_sheet(), measured, prepared, spare_tables(state))
-    found = run_checks(data, SEED)
+    found = with_refusals(state, run_checks(data, SEED))
     rows = [finding_row(finding) for finding in found]
-    change.write_bytes(RECORD, json_bytes({"schema_version": SCHEMA_VERSION, "findings": rows}))
+    kept = [{**row, "acceptable": finding.acceptable} for row, finding in zip(rows, found, strict=True)]
+    change.write_bytes(RECORD, json_bytes({"schema_version": SCHEMA_VERSION, "findings": kept}))
     change.write_bytes(f"{FOLDER}/findings.tsv", table_bytes(_table(rows)))
     for finding in found:
         reporter.say(f"  {finding.severity} {finding.id}: {finding.what}")
-    return write_drawings(change, FOLDER, draw_findings(found))
+    drawings = draw_findings(found)
+    return write_drawings(change, FOLDER, drawings) if drawings else []
 
 
 def spare_files(state: ProjectState) -> list[Path]:
@@ -132,10 +144,14 @@ def _table(rows: list[dict[str, Any]]) -> pd.DataFrame:
 
 
 def stored_findings(state: ProjectState) -> list[dict[str, Any]]:
-    """Return the findings of the last check, each with ``accepted``: the reason, or None."""
+    """Return the findings of the last check, each with ``accepted``: the reason, or None.
+
+    An error with which no analysis can be made stays, whoever accepts it.
+    """
     path = check_file(state.root, RECORD)
     rows: list[dict[str, Any]] = json.loads(path.read_text("utf-8"))["findings"]
-    return [{**row, "accepted": state.settings.check.accept.get(row["id"])} for row in rows]
+    accept = state.settings.check.accept
+    return [{**row, "accepted": accept.get(row["id"]) if row["acceptable"] else None} for row in rows]
 
 
 def open_errors(state: ProjectState) -> list[dict[str, Any]]:
@@ -149,7 +165,18 @@ def refuse_errors(state: ProjectState) -> None:
     if errors:
         lines = [f"{row['id']}: {row['what']}; {row['todo']}" for row in errors]
         raise FindingsError(
-            f"the data have {len(errors)} error finding{'s' * (len(errors) > 1)} that nobody accepted:\n"
+            f"the data have {len(errors)} error finding{'s' * (len(errors) > 1)}:\n"
             + "\n".join(f"  {line}" for line in lines)
-            + '\nmend the data, or accept a finding in project.toml: [check] accept = { "ID" = "reason" }'
+            + f"\n{way_out_of(errors)}"
         )
+
+
+def way_out_of(errors: Sequence[dict[str, Any]]) -> str:
+    """Return what to do about error findings; acceptance is offered for those that an analysis can live with."""
+    may = [row["id"] for row in errors if row["acceptable"]]
+    if not may:
+        return "do what each finding says: with such data no analysis can be made"
+    only = "a finding" if len(may) == len(errors) else " or ".join(may)
+    return (
+        f'do what each finding says, or accept {only} in project.toml: [check] accept = {{ "ID" = "reason" }}'
+    )

@@ -8,6 +8,7 @@ from workbench.errors import InputError
 from workbench.workflow.analysis_view import blocks_of
 from workbench.workflow.canonical import has_canonical_pairs, integrating_stage
 from workbench.workflow.checking import checking_stage
+from workbench.workflow.following import following_stage
 from workbench.workflow.looking import between_stage, looking_stage
 from workbench.workflow.networking import networking_stage
 from workbench.workflow.preparing import preparing_stage
@@ -22,7 +23,7 @@ def all_stages(state: ProjectState, analyses: Sequence[str] = ()) -> list[Stage]
     prepared, looked = block_stages(state), look_stages(state)
     looks = [stage for stage in looked if stage.kind == "look"]
     check = checking_stage(list(state.settings.blocks))
-    return [*prepared, check, *looks, *_of_analyses(state, chosen, "integrate", "network")]
+    return [*prepared, check, *looks, *_of_analyses(state, chosen, "integrate", "network", "pathways")]
 
 
 def analyses_that_can_run(state: ProjectState) -> list[str]:
@@ -36,6 +37,7 @@ def _layers(state: ProjectState, analysis: str) -> set[str]:
 
 def _checked(state: ProjectState, analyses: Sequence[str]) -> list[str]:
     """Return the named analyses, or all; refuse unknown ones and those without two layers."""
+    state.require_sheet()
     chosen = list(analyses) or list(state.settings.analyses)
     if not chosen:
         raise InputError(
@@ -60,6 +62,7 @@ def check_stages(state: ProjectState) -> list[Stage]:
 
 def block_stages(state: ProjectState, names: Sequence[str] = ()) -> list[Stage]:
     """Return reading and preparing of the named blocks, or of all."""
+    state.require_sheet()
     for name in names:
         state.require_block(name)
     wanted = (
@@ -105,4 +108,6 @@ def _of_analyses(state: ProjectState, analyses: Sequence[str], *kinds: str) -> l
             stages.append(integrating_stage(state, name))
         if "network" in kinds:
             stages.append(networking_stage(state, name))
+        if "pathways" in kinds:
+            stages.append(following_stage(state, name))
     return stages

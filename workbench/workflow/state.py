@@ -2,26 +2,33 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
-from dataclasses import dataclass
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field
 from pathlib import Path
 
 import pandas as pd
 
-from workbench.errors import InputError, SettingsError, WorkbenchError
+from workbench.errors import DamageError, InputError, SettingsError, WorkbenchError
 from workbench.intake import read_sample_sheet, run_columns_of
 from workbench.settings import Settings, cross_check, independent_faults, load_settings, salvaged_settings
-from workbench.store import Manifest, ProjectPaths, read_manifest
+from workbench.store import Manifest, ProjectPaths, check_file, read_manifest
+from workbench.store.journal import source_hashes
+
+FILES = ("file", "annotations", "runs")
 
 
 @dataclass(frozen=True)
 class ProjectState:
-    """Settings, sample sheet (None before ``add-samples``) and manifest of the project at ``paths``."""
+    """Settings, sample sheet (None before ``add-samples``) and manifest of the project at ``paths``.
+
+    ``refused`` holds, while a command runs, why a stage could not be done, by the stage's name.
+    """
 
     paths: ProjectPaths
     settings: Settings
     sheet: pd.DataFrame | None
     manifest: Manifest
+    refused: Mapping[str, InputError] = field(default_factory=dict)
 
     @property
     def root(self) -> Path:
@@ -60,8 +67,12 @@ class ProjectState:
         return name
 
 
-def load_state(paths: ProjectPaths) -> ProjectState:
-    """Return the project's state; raise `SettingsError` with every fault of settings against data."""
+def load_state(paths: ProjectPaths, replaced: str | None = None) -> ProjectState:
+    """Return the project's state; raise `SettingsError` with every fault of settings against data.
+
+    A source that the program has kept and that is gone is damage (`DamageError`). Faults of the block ``replaced``,
+    which a command is about to replace or take out, are none.
+    """
     try:
         settings = load_settings(paths.settings)
     except SettingsError as error:
@@ -70,9 +81,29 @@ def load_state(paths: ProjectPaths) -> ProjectState:
     if paths.samples.exists():
         sheet = read_sample_sheet(paths.samples, id_column=settings.samples.id).frame
         faults = cross_check(settings, sheet, paths.root, run_columns_of(settings.blocks, paths.root))
+        if replaced is not None:
+            faults = [fault for fault in faults if not fault.startswith(f"project.toml: blocks.{replaced}.")]
+        lost = _lost_sources(settings, paths) if faults else {}
+        if lost and all(fault.split(": ", 2)[1] in lost for fault in faults):
+            raise DamageError("\n".join(dict.fromkeys(lost.values())))
         if faults:
             raise SettingsError(faults)
     return ProjectState(paths, settings, sheet, read_manifest(paths.root))
+
+
+def _lost_sources(settings: Settings, paths: ProjectPaths) -> dict[str, str]:
+    """Return, by key, what to do about the files of blocks that the program has kept and that are not there."""
+    kept = source_hashes(paths.root)
+    lost = {}
+    for name, block in settings.blocks.items():
+        for entry in FILES:
+            file = getattr(block, entry)
+            if file in kept and not (paths.root / file).exists():
+                try:
+                    check_file(paths.root, file)
+                except DamageError as error:
+                    lost[f"blocks.{name}.{entry}"] = str(error)
+    return lost
 
 
 def _further_faults(paths: ProjectPaths) -> list[str]:
