@@ -93,6 +93,10 @@ def test_scores_are_orthogonal_and_shares_add_up() -> None:
     assert_allclose(gram - np.diag(np.diag(gram)), 0.0, atol=1e-8 * gram[0, 0])
     assert_allclose(pls.block_importance_.sum(axis=1), 1.0)
     assert_allclose((pls.vip_**2).mean(), 1.0)
+    assert pls.vip_[100:].mean() < 1.2 * pls.vip_[:100].mean()
+    one = MultiblockPLS(3).fit(x, y)
+    by_hand = np.sqrt(150 * one.x_weights_**2 @ one.y_explained_ / one.y_explained_.sum())
+    assert_allclose(one.vip_, by_hand)
     parts = np.sqrt(pls.block_importance_.T)[:, None, :] * pls.train_block_scores_
     assert_allclose(parts.sum(axis=0), pls.x_scores_, atol=1e-8)
     assert_allclose(pls.block_scores(x).sum(axis=0), pls.x_scores_, atol=1e-8)

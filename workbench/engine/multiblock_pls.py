@@ -29,6 +29,7 @@ from workbench.engine.multiblock_kernel import (
 )
 from workbench.engine.outcome_coding import balanced_codes
 from workbench.engine.outcome_rule import learn_rule
+from workbench.engine.sides import block_weights
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
@@ -101,9 +102,9 @@ class _MultiblockModel(ClassNamePrefixFeaturesOutMixin, TransformerMixin, BaseEs
         self.y_explained_ = of_outcomes / (self._outcomes**2).sum()
         self.vip_ = np.full(x.shape[1], np.nan)
         varies = self._scaling.varies
-        self.vip_[varies] = np.sqrt(
-            np.count_nonzero(varies) * (weights[varies] ** 2 @ of_outcomes) / of_outcomes.sum()
-        )
+        parts = (weights[varies] / block_weights(varies, blocks)[:, None]) ** 2
+        shares_of_features = (parts / parts.sum(axis=0)) @ (of_outcomes / of_outcomes.sum())
+        self.vip_[varies] = np.sqrt(np.count_nonzero(varies) * shares_of_features)
         self.block_weights_, self.train_block_scores_ = self._block_parts(found)
         self.x_mean_, self.x_scale_, self.x_kept_ = self._scaling.mean, self._scaling.scale, varies
         self.lacking_ = self._scaling.lacking
@@ -195,6 +196,8 @@ class MultiblockPLS(RegressorMixin, _MultiblockModel):  # type: ignore[misc]
         Share of the outcomes' variance, in sample; several outcomes weigh alike.
     vip_ : ndarray of shape (n_features,)
         Variable importance in projection: its mean square over the features is 1; NaN for a constant one.
+        Features count by their own covariance, at unit variance: one in a block of few is not important for
+        its block's weight alone. With one block it is the usual figure.
     coef_ : ndarray of shape (n_outcomes, n_features)
     intercept_ : ndarray of shape (n_outcomes,)
         ``y = X coef' + intercept`` for features as given.

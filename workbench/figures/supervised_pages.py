@@ -1,0 +1,97 @@
+"""The whole figures of a supervised analysis, with their captions."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from workbench.figures.drawing import Drawing, settled, sized_figure
+from workbench.figures.style import ONE_COLUMN, TWO_COLUMNS, figure_style
+from workbench.figures.supervised import (
+    MEASURES,
+    block_importance,
+    by_components,
+    class_scores,
+    importance_of_features,
+    permutation_null,
+    predicted_numbers,
+    roc_curves,
+)
+from workbench.figures.supervised_view import SupervisedView
+
+MOST_CLASSES = 4
+
+
+def draw_supervised(view: SupervisedView) -> tuple[Drawing, ...]:
+    """Draw all figures of a supervised analysis that its outcome allows."""
+    with figure_style():
+        return tuple(map(settled, _drawings(view)))
+
+
+def _drawings(view: SupervisedView) -> Iterator[Drawing]:
+    repeats = len(view.by_components)
+    measure = MEASURES.get(view.measure, view.measure)
+    if view.truth.size:
+        yield _scores(view)
+    figure = sized_figure(ONE_COLUMN, 1.3 + 0.26 * len(view.importance))
+    block_importance(view, figure.add_subplot())
+    yield Drawing(
+        "block_importance",
+        figure,
+        f"Share of each block in each component of the fit on all samples that explains {view.outcome} (squared "
+        "super weights; blocks weigh alike beforehand). Says what the fit uses, not what each block can do alone: for "
+        "that see performance.tsv.",
+    )
+    figure = sized_figure(ONE_COLUMN, 2.9)
+    by_components(view, figure.add_subplot())
+    yield Drawing(
+        "components",
+        figure,
+        f"{measure} of samples held out by number of components, mean of {repeats} repeats and each of them, beside "
+        "the share of the outcome explained in sample, which grows whatever the data. The line tells how many were "
+        "chosen.",
+    )
+    if view.levels:
+        figure = sized_figure(ONE_COLUMN, ONE_COLUMN)
+        roc_curves(view, figure.add_subplot())
+        yield Drawing(
+            "roc",
+            figure,
+            f"ROC curve of samples held out: mean of {repeats} repeats of double cross-validation, band from the "
+            "lowest to the highest repeat. Repeats share the samples: the band is not a confidence band over patients.",
+        )
+    if view.names:
+        figure = sized_figure(ONE_COLUMN, 1.0 + 0.17 * len(view.names))
+        importance_of_features(view, figure.add_subplot())
+        yield Drawing(
+            "features",
+            figure,
+            "Features of greatest variable importance in the fit on all samples. Beside each the share of training "
+            "parts whose panel had it; a dot marks the features of the final panel. Not a diagnostic test.",
+        )
+    figure = sized_figure(ONE_COLUMN, 2.5)
+    permutation_null(view, figure.add_subplot())
+    yield Drawing(
+        "permutations",
+        figure,
+        f"{measure} of samples held out, for the outcome as it is and for {view.null.size} arrangements of it, each "
+        "with the whole procedure repeated." + ("" if view.p is None else f" p = {view.p:.3g}."),
+    )
+
+
+def _scores(view: SupervisedView) -> Drawing:
+    caption = (
+        "Hollow: scores of the fit, which has seen the sample and looks good whatever the data. Full: mean score over "
+        "the repeats by models that had not seen it; only these count."
+    )
+    if not view.levels:
+        figure = sized_figure(ONE_COLUMN, ONE_COLUMN)
+        predicted_numbers(view, figure.add_subplot())
+        return Drawing("scores", figure, f"Predicted and true {view.outcome}. {caption}")
+    count = min(view.columns, MOST_CLASSES)
+    figure = sized_figure(ONE_COLUMN if count == 1 else TWO_COLUMNS, 2.9 * -(-count // 2))
+    for k, axes in enumerate(figure.subplots(-(-count // 2), min(count, 2), squeeze=False).flat):
+        if k < count:
+            class_scores(view, axes, k)
+        else:
+            axes.set_axis_off()
+    return Drawing("scores", figure, f"Scores by class of {view.outcome}. {caption}")
