@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+import numpy as np
 import pandas as pd
 
 from workbench import __version__
+from workbench.errors import InputError
 from workbench.network import build_network, graphml_bytes, with_communities, with_degrees
+from workbench.pathways import edge_columns
 from workbench.store import Change, json_bytes, table_bytes
 from workbench.workflow.analysis_view import AnalysisView, blocks_of, view_analysis
 from workbench.workflow.canonical import analysis_inputs, has_canonical_pairs
@@ -14,6 +17,7 @@ from workbench.workflow.drawings import write_drawings
 from workbench.workflow.edges import edges_table, group_pairs_table
 from workbench.workflow.feature_table import canonical_correlations, features_table, implied_correlations
 from workbench.workflow.fingerprints import fingerprint
+from workbench.workflow.following import knowledge_inputs, read_knowledge
 from workbench.workflow.private import FILE as PRIVATE_FILE
 from workbench.workflow.private import draw_removed, private_table, write_scores
 from workbench.workflow.record import analysis_record, fragile_sentence, screen_sentences
@@ -22,12 +26,14 @@ from workbench.workflow.screening import screen_analysis
 from workbench.workflow.showing import SHOWN
 from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
+from workbench.workflow.steadiness import edge_stability, stability_lines
 
 VERSION = 2
 EDGE_COLUMNS = (
     *("source", "source_block", "target", "target_block", "n", "r", "r_low", "r_high", "p", "q", "q_block"),
-    *("r_total", "q_total", "r_within", "q_within", "basis", "support", "model_r", "component"),
+    *("r_total", "q_total", "r_within", "q_within", "basis", "support", "model_r", "component", "stability"),
     *("r_spearman", "r_without_one", "r_observed", "imputed_share", "community"),
+    *("known", "shared_sets"),
 )
 FEATURE_COLUMNS = ("feature", "block", "layer", "label", "degree", "community")
 FILES = (
@@ -61,6 +67,7 @@ def _inputs(state: ProjectState, name: str) -> dict[str, str]:
         [VERSION, state.settings.analyses[name].network.model_dump(mode="json")]
     )
     hashes["choices with a reason"] = fingerprint(list(choices_of(state.settings)))
+    hashes |= knowledge_inputs(state, name)
     if has_canonical_pairs(state, name):
         hashes["canonical pairs"] = state.manifest.files.get(f"results/{name}/model.h5", "")
     return hashes
@@ -70,11 +77,14 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
     view = view_analysis(state, name)
     screens = screen_analysis(view, reporter)
     edges, features = edges_table(view, screens), features_table(view)
+    steady = edge_stability(view, screens, reporter)
+    edges["stability"] = np.nan if steady is None else steady.share
     if has_canonical_pairs(state, name):
         canonical = canonical_correlations(state, name)
         edges[["model_r", "component"]] = implied_correlations(edges, canonical)
         places = pd.MultiIndex.from_frame(features[["block", "feature"]])
         features[list(canonical.columns)] = canonical.reindex(places).to_numpy()
+    edges = edges.assign(**_known(state, reporter, name, edges, features))
     graph = build_network(edges, features, attributes=graph_attributes(view), seed=view.settings.seed)
     edges = in_order(with_communities(edges, graph), EDGE_COLUMNS)
     features = in_order(with_degrees(features, graph), FEATURE_COLUMNS)
@@ -91,9 +101,27 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
     written = (
         write_drawings(change, f"{folder}/figures", drawings, "captions_network.tsv") if drawings else []
     )
-    for line in filter(None, [*screen_sentences(view, screens, len(pairs)), fragile_sentence(edges)]):
+    for line in filter(
+        None,
+        [*screen_sentences(view, screens, len(pairs)), fragile_sentence(edges), *stability_lines(steady)],
+    ):
         reporter.say(f"  {line}")
     return written
+
+
+def _known(
+    state: ProjectState, reporter: Reporter, name: str, edges: pd.DataFrame, features: pd.DataFrame
+) -> dict[str, pd.Series]:
+    """Return the columns of what is known beforehand; none where no table is named or none of it fits."""
+    sets, links = read_knowledge(state, name)
+    if sets is None and links is None:
+        return {}
+    try:
+        found = edge_columns(edges, features, sets, links)
+    except InputError as error:
+        reporter.say(f"  nothing known is marked on the edges: {error}")
+        return {}
+    return {str(column): found[column] for column in found}
 
 
 def _clear_shown(state: ProjectState, change: Change, name: str) -> None:
