@@ -24,7 +24,7 @@ def test_what_became_of_a_pair() -> None:
 
 
 def test_difference_worked_by_hand() -> None:
-    """r = 0.62 on 60 samples and 0.47 on 143: z = (0.7250 - 0.5101) / sqrt(1/57 + 1/140) = 1.37, p = 0.171."""
+    """On 60 samples 0.62 and on 143 samples 0.47: z = (0.7250 - 0.5101) / sqrt(1/57 + 1/140) = 1.37, p = 0.171."""
     first, second = side([True], [0.62], 59.0), side([True], [0.47], 142.0)
     z = (np.arctanh(0.62) - np.arctanh(0.47)) / np.sqrt(1 / 57 + 1 / 140)
     assert z == pytest.approx(1.37, abs=0.01)
