@@ -182,3 +182,14 @@ def test_a_block_that_cannot_be_read_any_more_is_a_finding_as_well(command, made
     assert code == 1
     assert "error not_read-rna (rna): block 'rna' cannot be read: " in out
     assert "error not_read-lcms (lcms)" in out
+
+
+def test_a_block_with_which_an_analysis_does_not_hold_any_more_is_refused(command, made, delivered):
+    edit(made, 'blocks = "all"', 'blocks = "all"\nmethod = "ridge_cca"')
+    before = (made / "project.toml").read_text()
+    words = ("--layer", "proteins", "--values", "intensities", "--project", made)
+    code, _, err = command("add-block", "prot", delivered["metabolites"], *words)
+    assert code == 2
+    assert "with block 'prot' other settings do not hold any more" in err
+    assert "analyses.main.method: 'ridge_cca' has two sides" in err
+    assert (made / "project.toml").read_text() == before

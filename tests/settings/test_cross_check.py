@@ -272,6 +272,20 @@ def test_an_analysis_is_held_against_its_method_and_files(root, lines, told):
     assert told in fault
 
 
+def test_ridge_cca_has_two_sides(root):
+    blocks = "".join(
+        f'[blocks.b{k}]\nfile = "source/rna.tsv"\nlayer = "{layer}"\nvalues = "log"\n'
+        for k, layer in enumerate(("transcripts", "lipids", "proteins"))
+    )
+    text = f'{blocks}[analyses.main]\nmethod = "ridge_cca"\nblocks = '
+    assert faults_of(text + '["b0", "b2"]\n', root) == []
+    (told,) = faults_of(text + '"all"\n', root)
+    assert told.startswith(
+        "project.toml: analyses.main.method: 'ridge_cca' has two sides, and the blocks of this"
+    )
+    assert "3 layers ('lipids', 'proteins', 'transcripts'); write method = \"auto\", or list" in told
+
+
 def test_level_and_time_need_a_subject(root):
     text = SAMPLES.replace('subject = "donor"', 'time = "age"').replace('adjust = ["age"]', "")
     faults = faults_of(text + BLOCKS + ANALYSIS + 'level = "visits"', root)

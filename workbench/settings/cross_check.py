@@ -294,6 +294,12 @@ def _method_faults(settings: Settings, name: str, columns: Sequence[str]) -> Ite
             (*key, "level"), "is for several samples of one subject; name samples.subject, or leave it out"
         )
     layers = {settings.blocks[block].layer for block in settings.blocks_of(name)}
+    if chosen.method == "ridge_cca" and len(layers) > 2:
+        yield _fault(
+            (*key, "method"),
+            f"'ridge_cca' has two sides, and the blocks of this analysis are of {len(layers)} layers "
+            f'({_listed(sorted(layers))}); write method = "auto", or list the blocks of two layers in blocks',
+        )
     if isinstance(chosen.ridge, tuple) and layers and len(chosen.ridge) != len(layers):
         yield _fault(
             (*key, "ridge"),

@@ -18,6 +18,7 @@ from workbench.intake import (
     names_table,
     offered_names,
     run_columns,
+    run_columns_of,
     with_run_columns,
 )
 from workbench.settings import (
@@ -25,6 +26,7 @@ from workbench.settings import (
     VALUES,
     BlockSettings,
     add_block_text,
+    cross_check,
     hint,
     layer_fault,
     name_fault,
@@ -129,6 +131,7 @@ def _take_in(state: ProjectState, change: Change, delivery: Delivery, tell: Tell
     final = parse_settings(text, state.paths.settings).blocks[name]
     known = [*sheet.columns, *(run_columns(delivery.runs) if delivery.runs else ())]
     require_columns(final.adjust, known, state.paths.samples)
+    _require_whole(state, text, name)
     if delivery.replace:
         tell(_changes(state, name, build.adata))
     write_built(change, name, build)
@@ -163,6 +166,25 @@ def _own_layer_line(block: BlockSettings) -> tuple[str, ...]:
         f"layer: '{block.layer}' is one of your own (known are {', '.join(LAYERS)}); its values are prepared "
         f"as any {block.values} are",
     )
+
+
+def _require_whole(state: ProjectState, text: str, name: str) -> None:
+    """Refuse a block with which the other settings would not hold any more, before anything is written."""
+    sheet = state.require_sheet()
+    columns = run_columns_of(state.settings.blocks, state.root)
+    before, after = state.settings, parse_settings(text, state.paths.settings)
+    known = set(cross_check(before, sheet, state.root, columns))
+    own = f"project.toml: blocks.{name}."
+    faults = [
+        fault
+        for fault in cross_check(after, sheet, state.root, columns)
+        if fault not in known and not fault.startswith(own)
+    ]
+    if faults:
+        raise InputError(
+            f"{state.paths.settings}: with block '{name}' other settings do not hold any more; change them first, "
+            "nothing was changed:\n  " + "\n  ".join(faults)
+        )
 
 
 def _changes(state: ProjectState, name: str, new: AnnData) -> Sequence[str]:

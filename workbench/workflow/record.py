@@ -83,7 +83,7 @@ def screen_sentences(view: AnalysisView, screens: Screens, group_pairs: int) -> 
         )
     if view.factors and view.settings.network.select == "within":
         lines.append(
-            f"{group_pairs:,} pairs correlate only with the group left in: group_pairs.tsv, not edges"
+            f"{group_pairs:,} pairs pass only with the group left in: group_pairs.tsv, not edges"
         )
     cut = cut_sentence(screens.chosen.found, view)
     if cut:
