@@ -193,3 +193,13 @@ def test_a_block_with_which_an_analysis_does_not_hold_any_more_is_refused(comman
     assert "with block 'prot' other settings do not hold any more" in err
     assert "analyses.main.method: 'ridge_cca' has two sides" in err
     assert (made / "project.toml").read_text() == before
+
+
+def test_values_that_look_like_another_kind_are_told_when_they_come_in(command, made, delivered):
+    words = ("--layer", "lipids", "--values", "log", "--project", made)
+    code, out, err = command("add-block", "lip", delivered["metabolites"], *words)
+    assert code == 0, err
+    assert "caution: block 'lip' (source/metabolites.csv): values from " in out
+    assert 'do not look like logarithms; set values = "intensities" in [blocks.lip] of project.toml' in out
+    edit(made, 'layer = "lipids"\nvalues = "log"', 'layer = "lipids"\nvalues = "intensities"')
+    assert command("prepare", "lip", "--project", made)[0] == 0

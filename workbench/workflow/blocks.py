@@ -21,6 +21,7 @@ from workbench.intake import (
     run_columns_of,
     with_run_columns,
 )
+from workbench.prepare import recipe_for
 from workbench.settings import (
     LAYERS,
     VALUES,
@@ -39,7 +40,7 @@ from workbench.workflow.fingerprints import columns_fingerprint
 from workbench.workflow.reading import BESIDE, reading_settings, reading_stage, write_built
 from workbench.workflow.sources import delivered_file, keep_source
 from workbench.workflow.state import ProjectState, load_state
-from workbench.workflow.tables import measured_block
+from workbench.workflow.tables import measured_block, table_of
 
 OF_THE_TABLE = ("own_layer", "samples_in", "sheet", "array", "decimal", "names", "annotations", "runs")
 NAMED = 6
@@ -146,7 +147,19 @@ def _take_in(state: ProjectState, change: Change, delivery: Delivery, tell: Tell
     stage = reading_stage(name)
     change.record_stage(stage.name, StageRecord(inputs=inputs, outputs=stage.outputs))
     change.commit({"command": "add-block", "block": name, "replaced": delivery.replace, "sources": sources})
-    return (*build.decisions, *_own_layer_line(final), *_empty_adjust(state, build.adata, final))
+    return (
+        *build.decisions,
+        *_own_layer_line(final),
+        *_empty_adjust(state, build.adata, final),
+        *_cautions(state, name, build.adata, final),
+    )
+
+
+def _cautions(state: ProjectState, name: str, adata: AnnData, block: BlockSettings) -> list[str]:
+    """Return why the table cannot be what it is declared to be, with the setting that mends it; nothing when it can."""
+    table = table_of(adata, {**state.settings.samples.exclude, **block.exclude})
+    refusal = recipe_for(block.layer, block.values, block.prepare).refusal(table)
+    return [] if refusal is None else [f"caution: {refusal.at(name, block.file)}"]
 
 
 def _empty_adjust(state: ProjectState, adata: AnnData, block: BlockSettings) -> list[str]:
