@@ -36,6 +36,11 @@ class Exchange:
     size: int
     classes: tuple[IndexArray, ...]
 
+    @property
+    def free(self) -> bool:
+        """Whether any row may take any place."""
+        return len(self.classes) == 1 and self.classes[0].shape[1] == 1
+
     @classmethod
     def of_rows(cls, size: int) -> Exchange:
         """Any row may take any place."""

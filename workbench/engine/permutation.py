@@ -111,9 +111,9 @@ def canonical_pair_test(
     basis of the ``n - c`` dimensions that it leaves are permuted in place of the samples: exact for normal
     errors, close otherwise. Without, exact for samples that are exchangeable.
 
-    For pair ``k`` the variates ``u_j`` and ``v_j`` of the pairs before it, at each ridge its own, are nuisance
-    for both sides, and the rows of ``n - c - 2(k - 1)`` dimensions are permuted; ridges stay as fixed at the
-    first pair. Dropping the earlier singular vectors alone would find a second pair in every study with more
+    For pair ``k`` the variates ``u_j`` and ``v_j`` of the pairs before it, those at a tenth of the noise level, are
+    nuisance for both sides, and the rows of ``n - c - 2(k - 1)`` dimensions are permuted; ridges stay as fixed at
+    the first pair. Dropping the earlier singular vectors alone would find a second pair in every study with more
     features than samples. Read p cumulated over the pairs (``p_by_pair``).
 
     Several samples of one subject are never taken for independent, and what is exchanged follows the design
