@@ -6,6 +6,12 @@ from workbench.engine.cca import RegularisedCCA
 from workbench.engine.double_outcome import ClassOutcome, NumberOutcome
 from workbench.engine.double_splits import BlockSource, BlockSplit, block_source, standard_split
 from workbench.engine.double_validation import DoubleValidation, HeldOutModel, double_validation
+from workbench.engine.differential import (
+    DifferenceFigures,
+    DifferentialScreen,
+    differences_of,
+    screen_differences,
+)
 from workbench.engine.effects import GroupEffects, group_effects
 from workbench.engine.evidence import EdgeEvidence, edge_evidence
 from workbench.engine.folds import balanced_folds
@@ -62,6 +68,8 @@ __all__ = [
     "ClassPerformance",
     "CrossValidation",
     "DoubleValidation",
+    "DifferenceFigures",
+    "DifferentialScreen",
     "EdgeEvidence",
     "FittedResiduals",
     "GroupEffects",
@@ -99,6 +107,7 @@ __all__ = [
     "critical_r",
     "cross_validated_correlations",
     "differences",
+    "differences_of",
     "double_validation",
     "edge_evidence",
     "fisher_interval",
@@ -108,6 +117,7 @@ __all__ = [
     "pair_stability",
     "roc_curve",
     "screen_blocks",
+    "screen_differences",
     "screen_pairs",
     "screen_repeated",
     "select_panel",

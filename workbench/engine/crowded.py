@@ -14,7 +14,6 @@ import numpy as np
 from workbench.engine.found import Discovery, Found, Request, focus, found_from
 from workbench.engine.multiple import Family, log_adjusted
 from workbench.engine.tail_counts import Counts, Tails
-from workbench.engine.tails import log_p_value
 from workbench.engine.tiles import Band, PairTiles, scan
 from workbench.errors import NumericsError
 
@@ -79,9 +78,7 @@ def _level_of_strongest(
     pairs: Sequence[PairTiles], tails: Sequence[Tails], cuts: Sequence[float], request: Request, passed: int
 ) -> float:
     """Lowest log p level that certainly holds the edges wanted; the weakest cut when all are wanted."""
-    floors = [
-        min(cut, float(log_p_value(request.floor_r, pair.df))) for cut, pair in zip(cuts, pairs, strict=True)
-    ]
+    floors = [min(cut, float(pair.log_p(request.floor_r))) for cut, pair in zip(cuts, pairs, strict=True)]
     # A little above: rounding must not lose a pair that lies on the smallest |r| allowed.
     highest = min(max(cuts), max(floors) + 1e-6)
     wanted = passed if request.maximum_edges is None else request.maximum_edges

@@ -17,7 +17,6 @@ from workbench.engine.crowded import settle_crowd
 from workbench.engine.found import Discovery, Found, Request, focus, found_from
 from workbench.engine.multiple import Family
 from workbench.engine.tail_counts import Tails, upper_bounds
-from workbench.engine.tails import critical_r
 from workbench.engine.tiles import Band, Caught, PairTiles, scan
 from workbench.engine.unit_rows import FloatArray, IndexArray
 
@@ -73,7 +72,7 @@ def discover(pairs: Sequence[PairTiles], request: Request) -> Discovery:
 
 
 def _first_look(pair: PairTiles, levels: Levels) -> FirstLook:
-    bounds = critical_r(levels.p, pair.df) - pair.margin
+    bounds = pair.critical(levels.p) - pair.margin
     first = levels.collected
     coarse = [Band(bound, bound) for bound in bounds[first + 1 :]]
     caught, *beyond = scan(pair, [Band(bounds[first], most=pair.limits.candidates), *coarse])

@@ -9,7 +9,6 @@ import numpy as np
 
 from workbench.engine.multiple import Family
 from workbench.engine.tail_counts import Tails
-from workbench.engine.tails import log_p_value
 from workbench.engine.tiles import PairTiles, refine
 from workbench.engine.unit_rows import FloatArray, IndexArray
 
@@ -94,4 +93,4 @@ def found_from(pair: PairTiles, keys: IndexArray) -> Found:
     if (np.diff(strength[order]) == 0.0).any():
         order = np.lexsort((keys, strength))
     r = r[order]
-    return Found(keys[order], r, log_p_value(r, pair.df))
+    return Found(keys[order], r, pair.log_p(r))

@@ -12,7 +12,7 @@ from numpy.typing import ArrayLike
 from workbench.engine.found import Discovery, focus
 from workbench.engine.multiple import Family
 from workbench.engine.tail_counts import Counts, Tails
-from workbench.engine.tails import log_p_value, p_from_log
+from workbench.engine.tails import p_from_log
 from workbench.engine.tiles import PairTiles, refine
 from workbench.engine.unit_rows import FloatArray, IndexArray
 from workbench.errors import NumericsError
@@ -75,8 +75,8 @@ class Lookup:
         _check_index(i, pair.x.n_features, "feature of the first block")
         _check_index(j, pair.y.n_features, "feature of the second block")
         r = refine(pair, i * pair.y.n_features + j)
-        r[~(pair.x.testable[i] & pair.y.testable[j])] = np.nan
-        log_p = log_p_value(r, pair.df)
+        r[~pair.able(i, j)] = np.nan
+        log_p = pair.log_p(r)
         q = self._q(log_p, self._pooled, list(range(len(self._pairs))))
         r = np.clip(r / pair.damping(i, j), -1.0, 1.0)
         return r, p_from_log(log_p), q, self._q(log_p, self._single[k], [k])

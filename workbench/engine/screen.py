@@ -20,7 +20,7 @@ from workbench.engine.found import Discovery, Request, strengths
 from workbench.engine.intervals import selected_error, selected_interval
 from workbench.engine.lookup import Lookup, PairFigures
 from workbench.engine.nuisance import Nuisance
-from workbench.engine.tails import log_p_value, p_from_log
+from workbench.engine.tails import p_from_log
 from workbench.engine.tiles import Limits, PairTiles
 from workbench.engine.unit_rows import Columns, FloatArray, IndexArray, UnitRows, check_side
 from workbench.errors import NumericsError
@@ -278,6 +278,35 @@ def screen_blocks(
     """
     request = _check_request(fdr, correlation, minimum_r, maximum_edges)
     tiles = [pair_tiles(pair, correlation, limits or Limits()) for pair in pairs]
+    return screen_tiles(
+        tuple(pair.name for pair in pairs),
+        tiles,
+        fdr=request.fdr,
+        correlation=correlation,
+        minimum_r=request.minimum_r,
+        maximum_edges=request.maximum_edges,
+        progress=progress,
+    )
+
+
+def screen_tiles(
+    names: tuple[str, ...],
+    tiles: Sequence[PairTiles],
+    *,
+    fdr: float,
+    correlation: Correlation,
+    minimum_r: float,
+    maximum_edges: int | None,
+    progress: Progress | None,
+) -> BlockScreen:
+    """Edges among the entries of tiles, whatever these are; arguments as for :func:`screen_blocks`.
+
+    Raises
+    ------
+    NumericsError
+        When there are no tiles, or more edges pass than can be returned at once.
+    """
+    request = _check_request(fdr, correlation, minimum_r, maximum_edges)
     if not tiles:
         raise NumericsError("no pair of blocks to screen; give at least one")
     if progress is not None:
@@ -285,7 +314,7 @@ def screen_blocks(
     discovery = discover(tiles, request)
     for pair in tiles:
         pair.release()
-    return _screen(tuple(pair.name for pair in pairs), tiles, discovery, request, correlation)
+    return _screen(names, tiles, discovery, request, correlation)
 
 
 def _check_request(fdr: float, correlation: str, minimum_r: float, maximum_edges: int | None) -> Request:
@@ -411,7 +440,7 @@ def _order(which: IndexArray, keys: IndexArray, r: FloatArray, tiles: Sequence[P
     """Bring edges of several pairs of blocks into one order; within one pair they are ordered already."""
     if which.size == 0 or which[0] == which[-1]:
         return np.arange(which.size)
-    log_p = np.concatenate([log_p_value(strengths(r[which == k]), pair.df) for k, pair in enumerate(tiles)])
+    log_p = np.concatenate([pair.log_p(strengths(r[which == k])) for k, pair in enumerate(tiles)])
     return np.lexsort((keys, which, log_p))
 
 

@@ -10,7 +10,7 @@ import numpy as np
 from workbench.engine.found import focus, strengths
 from workbench.engine.screen import BlockPair, Correlation, pair_tiles
 from workbench.engine.tail_counts import Counts, Tails
-from workbench.engine.tails import critical_r, log_p_value
+from workbench.engine.tails import log_p_value
 from workbench.engine.tiles import Band, Limits, PairTiles, refine, scan
 from workbench.engine.unit_rows import FloatArray, IndexArray
 from workbench.errors import NumericsError
@@ -119,16 +119,15 @@ def _caught(tiles: Sequence[PairTiles], level: float) -> _Caught:
     which, keys, weakness = [], [], []
     for k in range(len(tiles)):
         pair = focus(tiles, k)
-        bound = float(critical_r(np.exp(max(level, _LEAST_LOG_P)), pair.df)) - pair.margin
+        bound = float(pair.critical(np.exp(max(level, _LEAST_LOG_P)))) - pair.margin
         (part,) = scan(pair, [Band(bound)])
         own, sizes = part.keys, part.sizes.astype(np.float64)
         if bound <= pair.margin:
-            i, j = np.divmod(own, pair.y.n_features)
-            able = pair.x.testable[i] & pair.y.testable[j]
+            able = pair.able(*np.divmod(own, pair.y.n_features))
             own, sizes = own[able], sizes[able]
         which.append(np.full(own.size, k))
         keys.append(own)
-        weakness.append(-sizes if same else log_p_value(sizes, pair.df))
+        weakness.append(-sizes if same else pair.log_p(sizes))
     tolerance = 2.0 * max(pair.margin for pair in tiles) if same else np.inf
     df = tiles[0].df if same else None
     return _Caught(np.concatenate(which), np.concatenate(keys), np.concatenate(weakness), tolerance, df)
@@ -169,7 +168,7 @@ def _chosen(tiles: Sequence[PairTiles], caught: _Caught, count: int) -> IndexArr
         here = caught.which[near] == k
         if here.any():
             r = strengths(refine(focus(tiles, k), caught.keys[near[here]]))
-            exact[here] = -r if caught.df is not None else log_p_value(r, tiles[k].df)
+            exact[here] = -r if caught.df is not None else tiles[k].log_p(r)
     order = np.lexsort((caught.keys[near], caught.which[near], exact))
     chosen: IndexArray = np.concatenate([sure, near[order[: count - sure.size]]])
     return chosen

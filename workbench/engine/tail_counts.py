@@ -8,7 +8,6 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
-from workbench.engine.tails import log_p_value
 from workbench.engine.tiles import STEPS, PairTiles, tail_histogram
 from workbench.engine.unit_rows import FloatArray, IndexArray
 
@@ -38,7 +37,7 @@ class Tails:
     def of(cls, pair: PairTiles) -> Tails:
         """Tails of a pair of blocks, by one pass over its tiles."""
         counts = tail_histogram(pair)
-        log_p = np.minimum.accumulate(log_p_value(np.arange(STEPS + 1) / STEPS, pair.df))
+        log_p = np.minimum.accumulate(pair.log_p(np.arange(STEPS + 1) / STEPS))
         return cls(counts, log_p, int(np.ceil(pair.margin * STEPS)), pair.tests)
 
     def at_least(self, level: ArrayLike) -> IndexArray:

@@ -18,8 +18,9 @@ from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
 
+from workbench.engine.tails import critical_r, log_p_value
 from workbench.engine.unit_rows import FloatArray, IndexArray, UnitRows
 
 #: Above this many samples the margin of single precision is too wide and tiles are double precision.
@@ -104,6 +105,23 @@ class PairTiles:
         """Tiles of one pass."""
         outer, inner = self._sides()
         return -(-outer.n_features // self.limits.outer) * -(-inner.n_features // self.limits.inner)
+
+    def log_p(self, r: ArrayLike) -> FloatArray:
+        """Log of the two-sided p of tile entries; smaller for a larger size."""
+        return log_p_value(r, self.df)
+
+    def critical(self, p: ArrayLike) -> FloatArray:
+        """Size of the tile entry whose two-sided p is ``p``."""
+        return critical_r(p, self.df)
+
+    def able(self, i: IndexArray, j: IndexArray) -> NDArray[np.bool_]:
+        """Which pairs can be tested; known once every row was made."""
+        return np.asarray(self.x.testable[i] & self.y.testable[j])
+
+    def exact(self, i: IndexArray, j: IndexArray) -> FloatArray:
+        """Tile entries of some pairs with their sign, in double precision."""
+        r: FloatArray = np.einsum("kn,kn->k", self.x.rows_at(i), self.y.rows_at(j))
+        return r
 
     def damping(self, i: IndexArray, j: IndexArray) -> FloatArray:
         """Factor by which the correlations of pairs are damped in tiles; 1 where nothing is."""
@@ -221,7 +239,7 @@ def refine(pair: PairTiles, keys: IndexArray) -> FloatArray:
     batch = max(1, _batch_numbers(pair) // pair.n)
     for start in range(0, keys.size, batch):
         part = slice(start, start + batch) if order is None else order[start : start + batch]
-        r[part] = np.einsum("kn,kn->k", pair.x.rows_at(i[part]), pair.y.rows_at(j[part]))
+        r[part] = pair.exact(i[part], j[part])
     sure = np.abs(r) >= 1.0 - pair.n * 2.0**-53
     r[sure] = np.sign(r[sure])
     return r
