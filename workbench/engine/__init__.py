@@ -3,15 +3,15 @@
 from __future__ import annotations
 
 from workbench.engine.cca import RegularisedCCA
-from workbench.engine.double_outcome import ClassOutcome, NumberOutcome
-from workbench.engine.double_splits import BlockSource, BlockSplit, block_source, standard_split
-from workbench.engine.double_validation import DoubleValidation, HeldOutModel, double_validation
 from workbench.engine.differential import (
     DifferenceFigures,
     DifferentialScreen,
     differences_of,
     screen_differences,
 )
+from workbench.engine.double_outcome import ClassOutcome, NumberOutcome
+from workbench.engine.double_splits import BlockSource, BlockSplit, block_source, standard_split
+from workbench.engine.double_validation import DoubleValidation, HeldOutModel, double_validation
 from workbench.engine.effects import GroupEffects, group_effects
 from workbench.engine.evidence import EdgeEvidence, edge_evidence
 from workbench.engine.folds import balanced_folds
@@ -67,9 +67,9 @@ __all__ = [
     "ClassOutcome",
     "ClassPerformance",
     "CrossValidation",
-    "DoubleValidation",
     "DifferenceFigures",
     "DifferentialScreen",
+    "DoubleValidation",
     "EdgeEvidence",
     "FittedResiduals",
     "GroupEffects",
