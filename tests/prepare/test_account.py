@@ -46,7 +46,10 @@ def test_lines_are_plain_and_name_the_block() -> None:
     assert lines[1].startswith("   what     drops features: no value in any sample")
     assert "   numbers  before 150; after 148" in lines
     assert "   paper    Anders & Huber 2010, Genome Biology 11:R106" in lines
-    assert 'under [blocks.rna.prepare]: normalisation = "median_of_ratios" (allowed: "median_of_ratios", ' in text
+    assert (
+        'under [blocks.rna.prepare]: normalisation = "median_of_ratios" (allowed: "median_of_ratios", '
+        in text
+    )
     assert "   dropped  'F0' (constant: 0 wherever it has a value); 'F1' (constant: 25" in text
 
 

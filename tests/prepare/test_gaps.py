@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 from numpy.testing import assert_allclose, assert_array_equal
 from prepare.measured import limited_logs, step_table
@@ -28,8 +30,8 @@ def limited(seed: int, n: int = 60, p: int = 400, **how: float) -> tuple[np.ndar
     return logs[:, keep], dilutions, step_table(values[:, keep], dilutions)
 
 
-def filled(table: StepTable, seed: int = 1) -> StepTable:
-    return FillGaps(censored=True).fit(table, FitContext(None, seed)).transform(table)[0]
+def filled(table: StepTable, seed: int = 1, drawn: bool = False) -> StepTable:
+    return FillGaps(censored=True, drawn=drawn).fit(table, FitContext(None, seed)).transform(table)[0]
 
 
 def test_a_detection_limit_is_found_and_chance_gaps_are_not_taken_for_one() -> None:
@@ -138,15 +140,55 @@ def test_filled_weak_features_keep_their_order_of_samples() -> None:
 
 def test_seed_changes_the_draws_and_nothing_else() -> None:
     _, _, table = limited(8)
-    one, other = filled(table, seed=1), filled(table, seed=2)
+    one, other = filled(table, seed=1, drawn=True), filled(table, seed=2, drawn=True)
     gaps = np.isnan(table.values)
     assert_array_equal(one.values[~gaps], other.values[~gaps])
-    assert_array_equal(filled(table, seed=1).values, one.values)
+    assert_array_equal(filled(table, seed=1, drawn=True).values, one.values)
     assert (one.values != other.values)[gaps].mean() > 0.5
     assert_array_equal(one.imputed, gaps)
+    assert_array_equal(filled(table, seed=1).values, filled(table, seed=2).values)
 
 
-def test_account_tells_how_many_gaps_were_drawn_and_why() -> None:
+def test_a_value_to_be_expected_is_the_mean_of_many_draws() -> None:
+    """Over 100 seeds, to five standard errors of the mean; chance, low tail and neighbours weighed as by lot."""
+    _, _, table = limited(10, p=150)
+    step = FillGaps(censored=True).fit(table, NO_GROUPS)
+    expected = step.transform(table)[0].values
+    drawn = np.stack(
+        [
+            replace(step, settings=FillGaps(censored=True, drawn=True), seed=seed).transform(table)[0].values
+            for seed in range(100)
+        ]
+    )
+    error = drawn.std(axis=0) / 10.0
+    assert (np.abs(drawn.mean(axis=0) - expected) <= 5.0 * error + 1e-9).mean() > 0.999
+
+
+def test_expected_values_are_those_of_the_truncated_normal_even_far_out() -> None:
+    tails = LowTails(np.array([10.0, 3.0]), np.array([2.0, 0.1]), np.array([9.5, 1.0]), 0.0)
+    by_scipy = [
+        stats.truncnorm(-np.inf, -0.25).mean() * 2.0 + 10.0,
+        stats.truncnorm(-np.inf, -20.0).mean() * 0.1 + 3.0,
+    ]
+    assert_allclose(tails.expected(np.zeros(1))[0], by_scipy, rtol=1e-6)
+
+
+def test_filled_values_follow_the_true_ones_better_than_draws() -> None:
+    logs, _, table = limited(11)
+    weak = np.isnan(table.values).mean(axis=0) > 0.1
+    follow = [
+        np.mean(
+            [
+                np.corrcoef(column, truth)[0, 1]
+                for column, truth in zip(values.T, logs[:, weak].T, strict=True)
+            ]
+        )
+        for values in (filled(table, drawn=drawn).values[:, weak] for drawn in (False, True))
+    ]
+    assert follow[0] > follow[1] + 0.02
+
+
+def test_account_tells_how_many_gaps_were_low_and_why() -> None:
     _, _, table = limited(9)
     account = FillGaps(censored=True).fit(table, NO_GROUPS).transform(table)[1]
     numbers = account.numbers
@@ -155,7 +197,10 @@ def test_account_tells_how_many_gaps_were_drawn_and_why() -> None:
         == numbers["gaps"]
         == np.isnan(table.values).sum()
     )
-    assert "drawn from under the detection limit, as gaps grow rarer with abundance" in account.sentence
+    assert "taken for values under the detection limit, as gaps grow rarer with abundance" in account.sentence
+    drawn = FillGaps(censored=True, drawn=True).fit(table, NO_GROUPS).transform(table)[1]
+    low = numbers["from_under_the_limit"]
+    assert abs(drawn.numbers["from_under_the_limit"] - low) < 5 * np.sqrt(low)
     plain = FillGaps(censored=False).fit(table, NO_GROUPS).transform(table)[1]
     assert plain.numbers["from_similar_samples"] == numbers["gaps"]
 

@@ -1,8 +1,9 @@
-"""Gaps: left-censored ones drawn from the low tail, the rest filled from similar training samples."""
+"""Gaps: left-censored ones filled from the low tail, the rest from similar training samples."""
 
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,6 +22,11 @@ NEIGHBOURS = "Troyanskaya et al. 2001, Bioinformatics 17:520"
 LOW_TAIL = "Tobin 1958, Econometrica 26:24"
 
 
+def low_gaps(choice: Literal["evidence", "draws", "neighbours"]) -> FillGaps:
+    """Return the step for values that may lie under a detection limit, as the settings choose."""
+    return FillGaps(censored=choice != "neighbours", settable=True, drawn=choice == "draws")
+
+
 @dataclass(frozen=True)
 class FillGaps(Settled):
     """Fills every gap and marks it in the mask.
@@ -32,10 +38,15 @@ class FillGaps(Settled):
         gaps are filled from neighbours.
     settable : bool
         Whether the settings of the block can choose.
+    drawn : bool
+        Draw left-censored values at random. Otherwise a gap of a censored feature becomes the value to be expected
+        there: with the chance c that it is censored, c E[x | x < limit] + (1 - c) (mean of its neighbours). A draw
+        keeps the spread of the feature; its noise weakens every correlation of the feature.
     """
 
     censored: bool
     settable: bool = False
+    drawn: bool = False
     step: str = "gaps"
 
     @property
@@ -66,8 +77,15 @@ class FillGaps(Settled):
             return f"every {neighbours}"
         return (
             "where weak features have more gaps than strong ones, a gap of a weak feature is taken for a value under "
-            f"the detection limit and drawn from there; every other {neighbours}"
+            f"the detection limit{self.how}; every other {neighbours}"
         )
+
+    @property
+    def how(self) -> str:
+        """What a gap of a censored feature becomes, after the words that say which gaps these are."""
+        if self.drawn:
+            return " and drawn at random from there"
+        return " as far as the limit explains it: it becomes the value to be expected"
 
     def fit(self, table: StepTable, context: FitContext) -> FittedGaps:
         """Return the step with donors, evidence and low tails learnt from these samples."""
@@ -94,35 +112,34 @@ class FittedGaps:
         if not gaps.any():
             return table, StepAccount(self.settings.step, "no gaps", {"gaps": 0, "values": gaps.size})
         columns = np.flatnonzero(self.censoring.censored)
-        drawn = self._draws(table, gaps, columns)
-        low, rest = ~np.isnan(drawn), gaps.copy()
-        rest[:, columns] &= ~low
-        filled = self.donors.estimates(table.values, rest, table.samples)
-        filled[:, columns] = np.where(low, drawn, filled[:, columns])
-        account = self._account(gaps, int(low.sum()), table)
+        filled = self.donors.estimates(table.values, gaps, table.samples)
+        here, chances = gaps[:, columns], self.tails.censored_chances(table.scale)
+        low, share = self._low_values(table, columns, chances)
+        filled[:, columns] = np.where(
+            here, share * low + (1.0 - share) * filled[:, columns], filled[:, columns]
+        )
+        account = self._account(gaps, float(share[here].sum()), table)
         return replace(table, values=filled, imputed=table.imputed | gaps), account
 
-    def _draws(self, table: StepTable, gaps: Mask, columns: NDArray[np.intp]) -> Matrix:
-        """Return draws for the left-censored gaps of these columns, NaN for all their other cells.
-
-        A gap of a censored feature is left-censored with the probability that its sample's limit gives it.
-        """
-        if not columns.size:
-            return np.empty((len(table.samples), 0))
+    def _low_values(
+        self, table: StepTable, columns: NDArray[np.intp], chances: Matrix
+    ) -> tuple[Matrix, Matrix]:
+        """Return the cells' values under the limit, and how far a gap there is one: its chance, or 0 or 1 by lot."""
+        if not self.settings.drawn or not columns.size:
+            return self.tails.expected(table.scale), chances
         names = [table.features[column] for column in columns]
         lots = uniform_table(self.seed, table.samples, names, "censored or random")
-        low = gaps[:, columns] & (lots < self.tails.censored_chances(table.scale))
         quantiles = uniform_table(self.seed, table.samples, names, "low tail")
-        return np.where(low, self.tails.draw(quantiles, table.scale), np.nan)
+        return self.tails.draw(quantiles, table.scale), (lots < chances).astype(np.float64)
 
-    def _account(self, gaps: Mask, drawn: int, table: StepTable) -> StepAccount:
+    def _account(self, gaps: Mask, below: float, table: StepTable) -> StepAccount:
         total = int(gaps.sum())
         rows, columns = gaps.mean(axis=1), gaps.mean(axis=0)
         numbers: dict[str, float | int | str] = {
             "gaps": total,
             "values": gaps.size,
-            "from_under_the_limit": drawn,
-            "from_similar_samples": total - drawn,
+            "from_under_the_limit": round(below),
+            "from_similar_samples": total - round(below),
             "similar_samples_each": self.donors.k,
             "largest_share_of_a_sample": float(rows.max()),
             "largest_share_of_a_feature": float(columns.max()),
@@ -136,7 +153,7 @@ class FittedGaps:
                 "rank_correlation_of_gaps_and_abundance": self.censoring.rank_correlation,
             }
         cautions = self._cautions(rows, columns, table)
-        sentence = self._sentence(gaps, drawn)
+        sentence = self._sentence(gaps, below)
         return StepAccount(
             self.settings.step, sentence, numbers, reference=self.settings.paper, cautions=cautions
         )
@@ -156,10 +173,11 @@ class FittedGaps:
             )
         return tuple(told)
 
-    def _sentence(self, gaps: Mask, drawn: int) -> str:
+    def _sentence(self, gaps: Mask, below: float) -> str:
         total = int(gaps.sum())
         start = f"{total:,} gaps ({percent(total / gaps.size)} of the values) filled: "
-        rest = f"{total - drawn:,} with the mean of the {self.donors.k} most similar samples that have the feature"
+        low_gaps = round(below)
+        rest = f"{total - low_gaps:,} with the mean of the {self.donors.k} most similar samples that have the feature"
         if not self.settings.censored:
             return start + rest
         low, high = self.censoring.low_rate, self.censoring.high_rate
@@ -170,6 +188,6 @@ class FittedGaps:
             return f"{start}{rest}; nothing shows that gaps stand for small amounts ({rates})"
         features = int(self.censoring.censored.sum())
         return (
-            f"{start}{drawn:,} in {features:,} weak features drawn from under the detection limit, as gaps grow rarer "
-            f"with abundance ({rates}); {rest}"
+            f"{start}{low_gaps:,} in {features:,} weak features taken for values under the detection limit, as gaps "
+            f"grow rarer with abundance ({rates}); {rest}"
         )

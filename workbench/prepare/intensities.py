@@ -10,7 +10,7 @@ import numpy as np
 from workbench.prepare.combining import CombineRuns
 from workbench.prepare.controls import BlankFilter, PoolScatter
 from workbench.prepare.drift import Drift
-from workbench.prepare.gaps import FillGaps
+from workbench.prepare.gaps import low_gaps
 from workbench.prepare.quotients import Quotients
 from workbench.prepare.refusal import VALUES, PrepareRefusal
 from workbench.prepare.steps import (
@@ -43,7 +43,7 @@ def intensity_steps(settings: IntensitiesPreparation) -> tuple[Step, ...]:
         Quotients() if quotient else SwitchedOff("quotient normalisation", "normalisation"),
         LogOfIntensities() if missing else LogWithZeros(),
         CombineRuns(),
-        FillGaps(censored=settings.gaps == "evidence", settable=True),
+        low_gaps(settings.gaps),
         DropFlat(),
     )
 

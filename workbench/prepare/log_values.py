@@ -8,7 +8,7 @@ from typing import ClassVar
 import numpy as np
 
 from workbench.prepare.combining import CombineRuns
-from workbench.prepare.gaps import FillGaps
+from workbench.prepare.gaps import low_gaps
 from workbench.prepare.guards import Usual
 from workbench.prepare.intensities import pool_steps
 from workbench.prepare.steps import (
@@ -39,7 +39,7 @@ def log_steps(settings: LogPreparation) -> tuple[Step, ...]:
         DropRarelySeen(settings.seen_share),
         MedianCentring() if centred else SwitchedOff("median centring", "centring"),
         CombineRuns(),
-        FillGaps(censored=settings.gaps == "evidence", settable=True),
+        low_gaps(settings.gaps),
         DropFlat(),
     )
 

@@ -1,4 +1,4 @@
-"""Draws from the low tail of features whose gaps are left-censored.
+"""The low tail of features whose gaps are left-censored: what lies there, expected or drawn.
 
 On the log scale a feature's values are normal; a value is lost when it lies under the feature's detection
 limit, or, whatever its size, by chance. The limit belongs to the instrument's scale: a sample that was
@@ -85,6 +85,28 @@ class LowTails:
         drawn: Matrix = self.mean + self.sd * ndtri_exp(np.log(uniforms) + log_ndtr(self.heights(scale)))
         return drawn
 
+    def expected(self, scale: Matrix) -> Matrix:
+        """Return the values to be expected under the cells' limits, (n_samples, n_features).
+
+        With h the height of the limit, phi and Phi density and distribution of a standard normal variable:
+
+            E[x | x < limit] = mean - sd phi(h) / Phi(h)
+
+        Examples
+        --------
+        >>> tails = LowTails(np.array([10.0]), np.array([1.0]), np.array([10.0]), 0.0)
+        >>> tails.expected(np.array([0.0])).round(4).tolist()  # 10 less the square root of 2 / pi
+        [[9.2021]]
+        """
+        expected: Matrix = self.mean - self.sd * hazard(self.heights(scale))
+        return expected
+
+
+def hazard(height: Matrix) -> Matrix:
+    """Return phi(h) / Phi(h) of a standard normal variable, also far out."""
+    ratio: Matrix = np.exp(-0.5 * height**2 - log_ndtr(height)) / np.sqrt(2.0 * np.pi)
+    return ratio
+
 
 def fit_low_tails(values: Matrix, scale: Matrix, random_rate: float) -> LowTails:
     """Return the low tails of censored features.
@@ -154,11 +176,10 @@ def _with_moments(tails: LowTails, seen: _Seen, scale: Matrix) -> LowTails:
     """Return mean and sd after one round; moments of a normal variable that is known to be under a limit."""
     here = seen.columns
     height = (tails.limit[here] - scale[seen.rows] - tails.mean[here]) / tails.sd[here]
-    log_below = log_ndtr(height)
-    hazard = np.exp(-0.5 * height**2 - log_below) / np.sqrt(2.0 * np.pi)
-    expected = tails.mean[here] - tails.sd[here] * hazard
-    variance = tails.sd[here] ** 2 * np.clip(1.0 - height * hazard - hazard**2, 0.0, 1.0)
-    weight = tails.chance(np.exp(log_below))
+    ratio = hazard(height)
+    expected = tails.mean[here] - tails.sd[here] * ratio
+    variance = tails.sd[here] ** 2 * np.clip(1.0 - height * ratio - ratio**2, 0.0, 1.0)
+    weight = tails.chance(ndtr(height))
     total = seen.count + seen.sums(weight)
     mean = (seen.count * seen.mean + seen.sums(weight * expected)) / total
     within = seen.squares + seen.count * (seen.mean - mean) ** 2

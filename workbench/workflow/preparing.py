@@ -31,7 +31,7 @@ from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
 from workbench.workflow.tables import excluded, measured_block, measured_table, table_of
 
-VERSION = 2
+VERSION = 3
 SEED = 20260101
 
 
