@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from workbench.engine.cca import RegularisedCCA
+from workbench.engine.clusters import FeatureClusters, near_duplicates
 from workbench.engine.differential import (
     DifferenceFigures,
     DifferentialScreen,
@@ -71,6 +72,7 @@ __all__ = [
     "DifferentialScreen",
     "DoubleValidation",
     "EdgeEvidence",
+    "FeatureClusters",
     "FittedResiduals",
     "GroupEffects",
     "HalfScreen",
@@ -114,6 +116,7 @@ __all__ = [
     "fit_residuals",
     "group_effects",
     "half_samples",
+    "near_duplicates",
     "pair_stability",
     "roc_curve",
     "screen_blocks",
