@@ -118,7 +118,7 @@ def judgements(fdr: float, informed: bool) -> dict[str, Callable[[Candidate], bo
 
     return {
         f"q at most {STRONG * fdr:g}": strong,
-        f"among the strongest in {STABLE:.0%} of half-samples": stable,
+        f"among the strongest in {100 * STABLE:.0f} % of half-samples": stable,
         "holds without any one sample": lambda one: one.remains("r_without_one"),
         "holds on ranks": lambda one: one.remains("r_spearman"),
         "measured, not filled in": measured,
