@@ -45,7 +45,7 @@ def test_a_second_run_does_nothing_and_says_so(command, finished):
     before = {path: path.stat().st_mtime_ns for path in finished.rglob("*") if path.is_file()}
     code, out, _ = command("run", "--project", finished)
     assert code == 0
-    assert "nothing to do: 10 stages are up to date" in out
+    assert "nothing to do: 11 stages are up to date" in out
     after = {path: path.stat().st_mtime_ns for path in finished.rglob("*") if path.is_file()}
     changed = {path.name for path in before.keys() | after.keys() if before.get(path) != after.get(path)}
     assert changed <= {"lock", "holder.json"}
@@ -56,7 +56,8 @@ def test_dry_run_names_every_stage_and_writes_nothing(command, made):
     assert code == 0
     assert [line.split(": ")[0] for line in out.splitlines()] == [
         *("read:rna", "read:lcms", "prepare:rna", "prepare:lcms"),
-        *("check:data", "look:rna", "look:lcms", "look:between-blocks", "integrate:main", "network:main"),
+        *("check:data", "look:rna", "look:lcms", "look:between-blocks"),
+        *("integrate:main", "network:main", "pathways:main"),
     ]
     assert "read:rna: up to date" in out
     assert not (made / "results").exists()
@@ -76,7 +77,7 @@ def test_status_as_json_is_json(command, finished):
     assert code == 0
     assert found["schema_version"] == 1
     assert all(stage["fresh"] for stage in found["stages"])
-    assert len(found["stages"]) == 10
+    assert len(found["stages"]) == 11
 
 
 def test_check_files_finds_a_changed_byte_and_exits_with_3(command, finished):

@@ -7,7 +7,7 @@ import pytest
 from workbench import Project
 
 LOOKS = ["check:data", "look:rna", "look:lcms", "look:between-blocks"]
-ENGINE = ["integrate:main", "network:main"]
+ENGINE = ["integrate:main", "network:main", "pathways:main"]
 STAGES = ["read:rna", "read:lcms", "prepare:rna", "prepare:lcms", *LOOKS, *ENGINE]
 
 
@@ -21,7 +21,7 @@ def edit(folder, old, new):
 CHANGES = [
     ('title = "A small study"', 'title = "Another title"  # and a comment', []),
     ('blocks = "all"', 'blocks = "all"\nseed = 7', ENGINE),
-    ("remove_private = false", "remove_private = false\nfdr = 0.1", ["network:main"]),
+    ("remove_private = false", "remove_private = false\nfdr = 0.1", ENGINE[1:]),
     ("[samples]\nid", '[samples]\nexclude = { S03 = "haemolysed" }\nid', STAGES[2:]),
     ('adjust = ["run_day"]', "adjust = []", [*LOOKS, *ENGINE]),
 ]
