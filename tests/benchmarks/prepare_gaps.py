@@ -1,10 +1,9 @@
 """What each choice for gaps does to recall, and to studies in which two layers share nothing.
 
 Run ``python tests/benchmarks/prepare_gaps.py [STUDIES] [FAMILY ...]``. Studies and recall as in
-``prepare_recall.py``; the second layer's gaps are filled by each choice of ``gaps`` in turn. Given, per family and choice: mean recall and its
-difference to ``draws`` with the standard error over studies; the share of false pairs among those with q <= 0.05; the
-share of studies with any such pair that is false (all of them where nothing is shared); the share of p under 0.001, in
-thousandths.
+``prepare_recall.py``; the second layer's gaps are filled by each choice of ``gaps`` in turn. Given, per family and
+choice: mean recall and its difference to ``draws`` with the standard error over studies; the share of false pairs
+among those with q <= 0.05; the share of studies with such a false pair; the share of p under 0.001, in thousandths.
 """
 
 from __future__ import annotations
