@@ -12,6 +12,7 @@ from sklearn.metrics import roc_curve as reference_curve
 from workbench.engine import SubjectDesign
 from workbench.engine.double_arrangements import outcome_arrangements
 from workbench.engine.double_choice import fewest_as_good, ranking_losses
+from workbench.engine.double_folds import fold_splits
 from workbench.engine.double_outcome import ClassOutcome, NumberOutcome
 from workbench.engine.double_splits import block_source, split_kernels
 from workbench.engine.double_validation import double_validation
@@ -167,6 +168,18 @@ def test_samples_of_a_subject_stay_together_and_exchange_as_a_whole() -> None:
     pooled = double_validation(block_source(blocks), ClassOutcome.of(ill), repeats=2)
     assert pooled.model.performance.auc.mean() > 0.95  # type: ignore[union-attr]
     assert found.model.performance.auc.mean() < 0.8  # type: ignore[union-attr]
+
+
+def test_folds_spread_every_factor_and_keep_subjects_whole() -> None:
+    """Two factors and subjects of two samples: both factors are even over the folds."""
+    subject = np.repeat(np.arange(20), 2)
+    levels = np.column_stack([np.arange(20) % 2, np.arange(20) // 10])[subject]
+    source = block_source([np.random.default_rng(0).normal(size=(40, 3))])
+    for splits in fold_splits(source, SubjectDesign.of(subject), levels, 5, 0, 0):
+        train, test = splits.rows[0]
+        assert not set(subject[train]) & set(subject[test])
+        assert_array_equal(levels[test].mean(axis=0), [0.5, 0.5])
+        assert all(set(held) <= set(train) for _, held in splits.rows[1:])
 
 
 def test_arrangements_keep_whole_what_belongs_together() -> None:

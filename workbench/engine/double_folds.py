@@ -10,7 +10,9 @@ from numpy.typing import NDArray
 
 from workbench.engine.double_outcome import ClassOutcome, NumberOutcome
 from workbench.engine.double_splits import BlockSource, FoldSplits
-from workbench.engine.subjects import SubjectDesign, whole_subject_folds
+from workbench.engine.folds import Fold, Seed, balanced_folds
+from workbench.engine.subjects import SubjectDesign, subject_labels
+from workbench.errors import NumericsError
 
 
 def fold_splits(
@@ -43,10 +45,10 @@ def fold_splits(
     """
     every = np.arange(subjects.n_samples)
     drawn = np.random.SeedSequence(seed, spawn_key=(repeat,))
-    for k, (train, test) in enumerate(whole_subject_folds(subjects, levels, folds, drawn)):
+    for k, (train, test) in enumerate(_folds(subjects, levels, folds, drawn)):
         inside = np.random.SeedSequence(seed, spawn_key=(repeat, k))
         labels = None if levels is None else levels[train]
-        inner = whole_subject_folds(subjects.take(train), labels, folds, inside)
+        inner = _folds(subjects.take(train), labels, folds, inside)
         rows = [(every[train], every[test]), *((train[taught], train[held]) for taught, held in inner)]
         yield FoldSplits(repeat, k, tuple(rows), tuple(source(*pair) for pair in rows))
 
@@ -63,3 +65,18 @@ def strata_of(outcome: ClassOutcome | NumberOutcome, strata: NDArray[Any] | None
     if strata is not None:
         columns.append(np.asarray(strata).reshape(len(strata), -1))
     return np.column_stack(columns) if columns else None
+
+
+def _folds(design: SubjectDesign, levels: NDArray[Any] | None, folds: int, seed: Seed) -> list[Fold]:
+    """Deal whole subjects out, each factor's levels spread over the folds."""
+    if folds > design.n_subjects:
+        raise NumericsError(
+            f"{folds} folds for {design.n_subjects} subjects; a subject's samples stay together, so that "
+            "there can be no more folds than subjects"
+        )
+    labels = None
+    if levels is not None:
+        labels = np.column_stack([subject_labels(design, column) for column in levels.T])
+    dealt = balanced_folds(labels, design.n_subjects, folds, seed)
+    rows = [[np.flatnonzero(np.isin(design.subject, part)) for part in fold] for fold in dealt]
+    return [(train, test) for train, test in rows]
