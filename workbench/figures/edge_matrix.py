@@ -100,7 +100,7 @@ def edge_matrix(matrix: EdgeMatrix, axes: Axes) -> Axes:
     for number, start, length in _runs(matrix.communities):
         _outline(axes, start - 0.5, length)
         if length >= max(1, size // 40):
-            say(axes, size + 0.02 * size, start + (length - 1) / 2, f"{number}", va="center", ha="left")
+            say(axes, size - 0.5 + 0.02 * size, start + (length - 1) / 2, f"{number}", va="center", ha="left")
     for layer, start, length in _runs(matrix.layers):
         colour = COLOURS[_layers(matrix).index(layer) % len(COLOURS)]
         line: dict[str, Any] = {"color": colour, "linewidth": 3.0, "solid_capstyle": "butt", "clip_on": False}
@@ -110,16 +110,8 @@ def edge_matrix(matrix: EdgeMatrix, axes: Axes) -> Axes:
     _names(axes, matrix)
     axes.set_xlim(-0.5, size - 0.5)
     axes.set_ylim(size - 0.5, -0.5)
-    say(
-        axes,
-        size + 0.02 * size,
-        -0.5,
-        "community",
-        va="bottom",
-        ha="left",
-        fontsize=SMALLEST_TEXT,
-        color=GUIDE,
-    )
+    beside = size - 0.5 + 0.02 * size
+    say(axes, beside, -0.5, "community", va="bottom", ha="left", fontsize=SMALLEST_TEXT, color=GUIDE)
     return axes
 
 

@@ -165,15 +165,9 @@ def _draw_panel(axes: Axes, graph: nx.Graph, panel: Panel, corner: Place) -> Non
         step = min(height / len(side), 2.5 * ROW) if side else 0.0
         start = top + (height - step * len(side)) / 2.0
         place |= {node: (across, start + step * (k + 0.5)) for k, node in enumerate(side)}
-    say(
-        axes,
-        x + LABEL + LINKS / 2,
-        y + 5.0,
-        f"community {panel.number}",
-        ha="center",
-        va="center",
-        weight="bold",
-    )
+    if panel.head:
+        title = f"community {panel.number}"
+        say(axes, x + LABEL + LINKS / 2, y + 5.0, title, ha="center", va="center", weight="bold")
     _edges(axes, graph, place, x + LABEL)
     styles = layer_styles(graph)
     for node, (across, down) in place.items():
