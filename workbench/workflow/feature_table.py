@@ -10,6 +10,7 @@ import numpy as np
 import pandas as pd
 
 from workbench.engine import GroupEffects
+from workbench.engine.clusters import near_duplicates
 from workbench.intake import Groups
 from workbench.store import check_file
 from workbench.workflow.analysis_view import AnalysisView
@@ -42,6 +43,7 @@ def block_features(view: AnalysisView, block: LoadedBlock) -> pd.DataFrame:
     table = pd.DataFrame(
         {"feature": block.features, "block": block.name, "layer": block.layer, "label": labels}
     )
+    table["cluster"] = _clusters(block.features, values, shared.within)
     if shared.groups is not None:
         for column, cells in _group_columns(group_differences(values, shared), shared.groups).items():
             table[column] = cells
@@ -52,6 +54,15 @@ def block_features(view: AnalysisView, block: LoadedBlock) -> pd.DataFrame:
         table[column] = block.annotations[column].astype(str).to_numpy()
     table.attrs["identifiers"] = identifiers
     return table
+
+
+def _clusters(features: tuple[str, ...], values: np.ndarray, design: np.ndarray) -> list[str]:
+    """Return for each feature the one that leads its cluster of near-duplicates; empty for a feature alone."""
+    order = np.argsort(np.argsort(np.array(features)))
+    found = near_duplicates(values, design, order=order)
+    return [
+        features[leader] if size > 1 else "" for leader, size in zip(found.leader, found.size, strict=True)
+    ]
 
 
 def _group_columns(found: GroupEffects | None, groups: Groups) -> dict[str, Any]:

@@ -7,12 +7,20 @@ import pandas as pd
 
 from workbench import __version__
 from workbench.errors import InputError
-from workbench.network import build_network, graphml_bytes, with_communities, with_degrees
+from workbench.network import (
+    build_network,
+    gexf_bytes,
+    graphml_bytes,
+    rated_network,
+    with_communities,
+    with_degrees,
+)
 from workbench.pathways import edge_columns
 from workbench.store import Change, json_bytes, table_bytes
 from workbench.workflow.analysis_view import AnalysisView, blocks_of, view_analysis
 from workbench.workflow.canonical import analysis_inputs, has_canonical_pairs
 from workbench.workflow.choices import choices_of
+from workbench.workflow.differences import group_contrasts
 from workbench.workflow.drawings import write_drawings
 from workbench.workflow.edges import edges_table, group_pairs_table
 from workbench.workflow.feature_table import canonical_correlations, features_table, implied_correlations
@@ -35,14 +43,16 @@ EDGE_COLUMNS = (
     *("r_spearman", "r_without_one", "r_observed", "imputed_share", "community"),
     *("known", "shared_sets"),
 )
-FEATURE_COLUMNS = ("feature", "block", "layer", "label", "degree", "community")
+FEATURE_COLUMNS = ("feature", "block", "layer", "label", "degree", "community", "cluster")
 FILES = (
     "edges.tsv",
     "group_pairs.tsv",
     "features.tsv",
     "network.graphml",
+    "network.gexf",
     "record.json",
     "private.tsv",
+    "differential.tsv",
     PRIVATE_FILE,
 )
 
@@ -86,14 +96,18 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
         features[list(canonical.columns)] = canonical.reindex(places).to_numpy()
     edges = edges.assign(**_known(state, reporter, name, edges, features))
     graph = build_network(edges, features, attributes=graph_attributes(view), seed=view.settings.seed)
+    graph = rated_network(graph, resamples=view.settings.network.stability, seed=view.settings.seed)
     edges = in_order(with_communities(edges, graph), EDGE_COLUMNS)
     features = in_order(with_degrees(features, graph), FEATURE_COLUMNS)
     pairs = group_pairs_table(view, screens)
+    contrasts = group_contrasts(view, screens, reporter)
     folder = f"results/{name}"
-    for file, table in (("edges.tsv", edges), ("group_pairs.tsv", pairs), ("features.tsv", features)):
-        change.write_bytes(f"{folder}/{file}", table_bytes(table))
+    tables = {"edges": edges, "group_pairs": pairs, "features": features, "differential": contrasts.table}
+    for file, table in tables.items():
+        change.write_bytes(f"{folder}/{file}.tsv", table_bytes(table))
     _clear_shown(state, change, name)
     change.write_bytes(f"{folder}/network.graphml", graphml_bytes(graph))
+    change.write_bytes(f"{folder}/network.gexf", gexf_bytes(graph))
     change.write_bytes(f"{folder}/record.json", json_bytes(analysis_record(state, view, screens, len(pairs))))
     change.write_bytes(f"{folder}/private.tsv", table_bytes(private_table(state, view, screens.chosen)))
     write_scores(change.new_file(f"{folder}/{PRIVATE_FILE}"), view, screens.chosen)
@@ -103,7 +117,12 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
     )
     for line in filter(
         None,
-        [*screen_sentences(view, screens, len(pairs)), fragile_sentence(edges), *stability_lines(steady)],
+        [
+            *screen_sentences(view, screens, len(pairs)),
+            fragile_sentence(edges),
+            *stability_lines(steady),
+            *contrasts.lines,
+        ],
     ):
         reporter.say(f"  {line}")
     return written
