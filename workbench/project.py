@@ -94,6 +94,26 @@ class Result:
         return self._table("explained.tsv")
 
     @property
+    def private(self) -> pd.DataFrame:
+        """Return private.tsv: what was removed from each block before its pairs were tested."""
+        return self._table("private.tsv")
+
+    @property
+    def differential(self) -> pd.DataFrame:
+        """Return differential.tsv: pairs whose correlation differs between groups."""
+        return self._table("differential.tsv")
+
+    @property
+    def followup(self) -> pd.DataFrame:
+        """Return followup.tsv: the short list, best evidence first."""
+        return self._table("followup.tsv")
+
+    @property
+    def pathways(self) -> pd.DataFrame:
+        """Return pathways.tsv (where the settings name a table of sets)."""
+        return self._table("pathways.tsv")
+
+    @property
     def record(self) -> dict[str, Any]:
         """Return record.json."""
         loaded: dict[str, Any] = json.loads(self._path("record.json").read_text("utf-8"))
