@@ -8,7 +8,13 @@ import pytest
 from network.networks import ATTRIBUTES, edges_table, features_table, random_tables
 from network.test_communities import MODULES, planted_pairs
 
-from workbench.network import build_network, community_stability, with_degrees, with_stability
+from workbench.network import (
+    build_network,
+    community_stability,
+    rated_network,
+    with_degrees,
+    with_stability,
+)
 from workbench.network.stability import STABLE, UNSTABLE
 
 
@@ -68,3 +74,13 @@ def test_an_empty_network_and_a_large_one(monkeypatch: pytest.MonkeyPatch) -> No
     monkeypatch.setattr("workbench.network.stability.MOST_EDGES", 50 * 12)
     assert community_stability(graph, resamples=30, seed=1).resamples == 12
     assert community_stability(graph, resamples=5, seed=1).resamples == 5
+
+
+def test_the_network_that_leaves_is_rated_and_placed() -> None:
+    graph = build_network(*random_tables(60, 30, 12), attributes=ATTRIBUTES, seed=1)
+    rated = rated_network(graph, resamples=5, seed=1)
+    assert all({"x", "y", "community_stability"} <= set(found) for _, found in rated.nodes(data=True))
+    plain = rated_network(graph, resamples=0, seed=1)
+    assert "community_stability" not in next(iter(plain.nodes.values()))
+    empty = build_network(edges_table([]), features_table(1, 1), attributes=ATTRIBUTES, seed=1)
+    assert len(rated_network(empty, resamples=5, seed=1)) == 0

@@ -4,6 +4,7 @@ from workbench.network.backbone import BACKBONE_LEVEL, backbone_p
 from workbench.network.builder import (
     CAUTIONS,
     build_network,
+    rated_network,
     with_communities,
     with_degrees,
     with_stability,
@@ -34,6 +35,7 @@ __all__ = [
     "layout",
     "legal_text",
     "network_summary",
+    "rated_network",
     "read_graphml",
     "restore_text",
     "shown_name",

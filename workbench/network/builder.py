@@ -15,7 +15,8 @@ from workbench.network.attributes import Plain, plain_value, uniform
 from workbench.network.backbone import backbone_p
 from workbench.network.communities import RESOLUTION, communities
 from workbench.network.keys import Key
-from workbench.network.stability import CommunityStability
+from workbench.network.layout import with_layout
+from workbench.network.stability import CommunityStability, community_stability
 
 CAUTIONS = (
     "Research use. Association is not causation. Not for diagnosis or treatment. "
@@ -117,6 +118,13 @@ def with_degrees(features: pd.DataFrame, graph: nx.Graph) -> pd.DataFrame:
         told = [node.get("community_stability", math.nan) for node in nodes]
         table["community_stability"] = pd.array(told, dtype="float64")
     return table
+
+
+def rated_network(graph: nx.Graph, *, resamples: int, seed: int) -> nx.Graph:
+    """Return the network as it leaves: nodes with the stability of their community (0 resamples: none) and a place."""
+    if resamples and graph.number_of_edges():
+        graph = with_stability(graph, community_stability(graph, resamples=resamples, seed=seed))
+    return with_layout(graph)
 
 
 def with_stability(graph: nx.Graph, found: CommunityStability) -> nx.Graph:

@@ -58,8 +58,8 @@ def gexf_bytes(graph: nx.Graph) -> bytes:
     weight = next((column.identifier for column in of_edges.columns if column.name == "weight"), "")
     for index, ((source, target, _), row) in enumerate(zip(edges, of_edges.rows, strict=True)):
         ends = {"id": f"e{index}", "source": f"n{source}", "target": f"n{target}"}
-        told = {"weight": text for identifier, text in row if identifier == weight}
-        _add_values(etree.SubElement(holder, _tag("edge"), ends | told), row)
+        told = dict(row).get(weight)
+        _add_values(etree.SubElement(holder, _tag("edge"), ends | ({"weight": told} if told else {})), row)
     data: bytes = etree.tostring(root, xml_declaration=True, encoding="UTF-8", pretty_print=True)
     return data
 

@@ -166,11 +166,9 @@ def shown_name(text: str) -> str:
 
 
 def _clusters(graph: nx.Graph) -> Counter[tuple[str, str]]:
-    """Return the features of each cluster of near-duplicates, a cluster known by its layer and name."""
+    """Return the features of each cluster of near-duplicates, a cluster known by its block and name."""
     return Counter(
-        (_layer(graph, node), str(found["cluster"]))
-        for node, found in graph.nodes(data=True)
-        if "cluster" in found
+        (node[0], str(found["cluster"])) for node, found in graph.nodes(data=True) if "cluster" in found
     )
 
 

@@ -217,7 +217,7 @@ def _cluster(feature: Mapping[str, Any], key: tuple[str, str]) -> tuple[str, str
     cluster = feature.get("cluster")
     if cluster is None or cluster == "" or pd.isna(cluster):
         return key
-    return f"cluster in {feature.get('layer', key[0])}", str(cluster)
+    return f"cluster in {key[0]}", str(cluster)
 
 
 def _row(rank: int, one: Candidate, verdict: Verdict, copies: int) -> dict[str, Any]:
