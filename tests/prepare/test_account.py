@@ -43,7 +43,7 @@ def test_lines_are_plain_and_name_the_block() -> None:
     lines = explain_lines(result.account, "rna")
     text = "\n".join(lines)
     assert lines[0] == "1. unusable features"
-    assert lines[1].startswith("   what     drops features: no value in any sample")
+    assert lines[1].startswith("   what     drops features with no value in any sample")
     assert "   numbers  before 150; after 148" in lines
     assert "   paper    Anders & Huber 2010, Genome Biology 11:R106" in lines
     assert (

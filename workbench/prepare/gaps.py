@@ -141,8 +141,8 @@ class FittedGaps:
             "from_under_the_limit": round(below),
             "from_similar_samples": total - round(below),
             "similar_samples_each": self.donors.k,
-            "largest_share_of_a_sample": float(rows.max()),
-            "largest_share_of_a_feature": float(columns.max()),
+            "largest_share_filled_of_a_sample": float(rows.max()),
+            "largest_share_filled_of_a_feature": float(columns.max()),
             "features_filled_by_more_than_half": int((columns > WARNED_FEATURE).sum()),
         }
         if self.settings.censored:

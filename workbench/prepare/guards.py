@@ -141,13 +141,14 @@ def group_cautions(
         told.append(
             f"depth or dilution differs between the groups ({_means(scale, levels, 2.0)} times the typical sample): "
             f"scaling changed the group difference of {percent(scale.changed_share)} of the features by more than half "
-            "of their standard deviation; differences of weak features between these groups rest on it"
+            "of their standard deviation; differences of weak features between these groups rest on it (pairs within "
+            "groups do not)"
         )
     apart, far = imputed.difference >= APART_SHARE, imputed.difference >= FAR_APART_SHARE
     if (apart and imputed.p < GROUP_LEVEL) or (far and imputed.p < FAR_LEVEL):
         told.append(
             f"the share of filled-in values differs between the groups ({_means(imputed, levels)}): differences of "
-            "features with gaps between these groups may come from the gaps"
+            "features with gaps between these groups may come from the gaps, and no filling in can part the two"
         )
     return tuple(told)
 
@@ -183,7 +184,7 @@ def group_account(prepared: PreparedTable, groups: NDArray[np.int_], levels: Seq
 
 
 def _p_words(p: float) -> str:
-    return f" (p of no difference {p:.2g})" if np.isfinite(p) else ""
+    return f" (p {p:.2g} of such a difference by chance)" if np.isfinite(p) else ""
 
 
 def imputed_shares(prepared: PreparedTable) -> tuple[dict[str, float], dict[str, float]]:

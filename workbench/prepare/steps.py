@@ -233,7 +233,7 @@ class DropUnusable(Settled):
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
-        return f"drops features: {self.condition}"
+        return f"drops features with {self.condition}"
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:  # noqa: ARG002
         """Return the step; constant means that smallest and largest value are equal."""
@@ -269,8 +269,8 @@ class DropRarelySeen(Settled):
     def rule(self) -> str:
         """What the step does, in one line."""
         return (
-            f"keeps features measured in enough samples: {percent(self.share)} of the size of the smallest group "
-            "(of all samples where there are no groups)"
+            f"keeps features measured in enough samples: at least {percent(self.share)} of the size of the smallest "
+            "group (of all samples where there are no groups)"
         )
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:
@@ -301,7 +301,7 @@ class DropFlat(Settled):
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
-        return f"drops features: {self.condition}"
+        return f"drops features with {self.condition}"
 
     def fit(self, table: StepTable, context: FitContext) -> KeepFeatures:  # noqa: ARG002
         """Return the step."""
