@@ -11,7 +11,19 @@ from typing import Annotated
 import typer
 
 from workbench import __version__
-from workbench.cli import blocks, checks, compare, guide, pathways, projects, samples, show, stages
+from workbench.cli import (
+    apply,
+    blocks,
+    checks,
+    compare,
+    guide,
+    pathways,
+    plan,
+    projects,
+    samples,
+    show,
+    stages,
+)
 from workbench.cli.console import complain
 from workbench.errors import WorkbenchError
 
@@ -33,7 +45,7 @@ app = typer.Typer(
     pretty_exceptions_enable=False,
     context_settings={"help_option_names": ["--help", "-h"], "max_content_width": 100},
 )
-for noun in (projects, samples, blocks, checks, stages, pathways, show, compare, guide):
+for noun in (projects, samples, blocks, checks, stages, pathways, show, compare, plan, apply, guide):
     noun.register(app)
 
 

@@ -10,6 +10,7 @@ import pandas as pd
 
 from workbench import __version__
 from workbench.engine import critical_r
+from workbench.engine.planning import SHARE, significance_level, smallest_correlation
 from workbench.workflow.analysis_view import AnalysisView, Shared
 from workbench.workflow.canonical import analysis_inputs
 from workbench.workflow.choices import choices_of
@@ -21,6 +22,8 @@ from workbench.workflow.tables import excluded
 
 FORMAT = 1
 FRAGILE_SHARE = 0.5
+SMALL_FREEDOM = 30
+POWER = 0.8
 LIBRARIES = ("numpy", "scipy", "pandas", "scikit-learn", "anndata", "h5py", "networkx")
 
 
@@ -82,9 +85,7 @@ def screen_sentences(view: AnalysisView, screens: Screens, group_pairs: int) -> 
             f"{untestable:,} pairs could not be tested: a feature without variation on the shared samples"
         )
     if view.factors and view.settings.network.select == "within":
-        lines.append(
-            f"{group_pairs:,} pairs pass only with the group left in: group_pairs.tsv, not edges"
-        )
+        lines.append(f"{group_pairs:,} pairs pass only with the group left in: group_pairs.tsv, not edges")
     cut = cut_sentence(screens.chosen.found, view)
     if cut:
         lines.append(cut)
@@ -105,7 +106,20 @@ def reach_sentences(view: AnalysisView, screens: Screens) -> list[str]:
                 f"{first} x {second}: on {counted_rows(one, view)} a pair that is alone becomes an edge at |r| of "
                 f"{least:.2f} or more; the more pairs there are, the lower"
             )
+            lines += _small_design(view, screens.chosen.freedom[k])
     return lines
+
+
+def _small_design(view: AnalysisView, freedom: int) -> list[str]:
+    """Return what a small design is likely to find at all; nothing for a larger one."""
+    if freedom >= SMALL_FREEDOM:
+        return []
+    alpha = significance_level(view.settings.network.fdr, SHARE, POWER)
+    smallest = smallest_correlation(freedom + 2, alpha, POWER) if freedom >= 2 else 1.0
+    return [
+        f"few samples: if one pair in {1 / SHARE:,.0f} is true, only true correlations of {smallest:.2f} or more are "
+        f"likely to be found (chance {POWER:.0%}); `workbench plan` says how many samples weaker ones need"
+    ]
 
 
 def counted_rows(shared: Shared, view: AnalysisView) -> str:

@@ -98,7 +98,8 @@ def design_columns_of(view: AnalysisView, shared: Shared, within: bool) -> Float
     return np.hstack([shared.nuisance, columns])
 
 
-def _pairs(view: AnalysisView, shared: Sequence[Shared], within: bool) -> tuple[BlockPair, ...]:
+def design_pairs(view: AnalysisView, shared: Sequence[Shared], within: bool) -> tuple[BlockPair, ...]:
+    """Return each pair of blocks on the samples that it shares, with the columns that a screen removes."""
     return tuple(
         BlockPair(
             f"{first} x {second}",
@@ -113,7 +114,7 @@ def _pairs(view: AnalysisView, shared: Sequence[Shared], within: bool) -> tuple[
 def _plain(
     view: AnalysisView, shared: Sequence[Shared], within: bool, reporter: Reporter, label: str
 ) -> Screen:
-    settings, pairs = view.settings.network, _pairs(view, shared, within)
+    settings, pairs = view.settings.network, design_pairs(view, shared, within)
     with reporter.progress(label) as progress:
         found = screen_blocks(
             pairs,
@@ -130,7 +131,7 @@ def _plain(
 def _repeated(
     view: AnalysisView, shared: Sequence[Shared], within: bool, reporter: Reporter, label: str
 ) -> Screen:
-    settings, pairs = view.settings.network, _pairs(view, shared, within)
+    settings, pairs = view.settings.network, design_pairs(view, shared, within)
     designs = [one.subjects for one in shared if one.subjects is not None]
     level = view.settings.level or "visits"
     with reporter.progress(label) as progress:
@@ -174,7 +175,7 @@ def _without_private(
             seed=view.settings.seed,
             progress=progress,
         )
-    plain = _pairs(view, shared, within)
+    plain = design_pairs(view, shared, within)
     pairs = tuple(
         pair if settings.correlation == "spearman" else BlockPair(pair.name, x, y, None)
         for pair, (x, y) in zip(plain, result.cleaned, strict=True)
