@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+from pathlib import Path
+
 import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 from scipy import stats
 from statsmodels.stats.power import normal_sample_size_one_tail
 
+from workbench.engine import planning
 from workbench.engine.planning import (
     independent_samples,
     plan_pairs,
@@ -81,6 +84,19 @@ def test_repeated_samples_count_as_changes_or_as_subjects() -> None:
     assert n - rank - 1 == 15 * 3 - 3 - 1
     assert plan_pairs(3, [10, 10, 10]).pairs == 300
     assert "no correlation can be found" in plan_sentences(plan_pairs(3, [10, 10]))[1]
+
+
+def test_the_table_of_the_handbook_is_that_of_the_formula() -> None:
+    page = Path(planning.__file__).parents[1] / "guide" / "plan.md"
+    rows = [
+        line.strip("|").split("|")
+        for line in page.read_text("utf-8").splitlines()
+        if line[:1] == "|" and line[:4].strip("| ").isdigit()
+    ]
+    assert len(rows) == 9
+    for n, alone, grouped in rows:
+        for rank, told in ((1, alone), (2, grouped)):
+            assert f"{plan_pairs(int(n), [20_000, 500], rank=rank).smallest:.2f}" == told.strip()
 
 
 @pytest.mark.parametrize(
