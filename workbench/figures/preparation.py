@@ -53,7 +53,7 @@ def _amount_ticks(axes: Axes, total: FloatArray) -> None:
     """Label a log10 axis of totals in thousands, millions or billions."""
     low, high = float(total.min()), float(total.max())
     divisor, words = next((unit for unit in UNITS if high >= unit[0]), UNITS[-1])
-    steps = [m * 10.0**k for k in range(-3, 13) for m in (1, 1.5, 2, 3, 5, 7)]
+    steps = [m * 10.0**k for k in range(-9, 16) for m in (1, 1.5, 2, 3, 5, 7)]
     inside = [step for step in steps if low * 0.97 <= step <= high * 1.03]
     wide = [step for step in inside if str(step).lstrip("0.")[0] in "125" and step * 2 % 3]
     ticks = inside if len(inside) <= MOST_TICKS else wide[:: -(-len(wide) // MOST_TICKS)]
