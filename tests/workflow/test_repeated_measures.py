@@ -1,0 +1,69 @@
+"""Several samples of one subject, from delivered tables to edges: what is found, and what is not made up."""
+
+import numpy as np
+import pandas as pd
+import pytest
+
+from workbench import Project
+from workbench.errors import InputError
+
+QUICK = "permutations = 20\nrepeats = 1\nnetwork.stability = 0\n"
+
+
+def study(folder, x, y, sheet):
+    names = [f"S{k:03d}" for k in range(len(sheet))]
+    sheet.assign(sample=names)[["sample", *sheet]].to_csv(folder / "samples.csv", index=False)
+    for name, values in (("a", x), ("b", y)):
+        columns = [f"{name}{k:02d}" for k in range(values.shape[1])]
+        frame = pd.DataFrame(values, index=pd.Index(names, name="sample"), columns=columns)
+        frame.to_csv(folder / f"{name}.csv")
+    project = Project.create(folder / "study")
+    project.add_samples(folder / "samples.csv", subject="donor", time="day")
+    project.add_block("one", folder / "a.csv", layer="proteins", values="continuous")
+    project.add_block("two", folder / "b.csv", layer="lipids", values="continuous")
+    return project
+
+
+def ask(project, level):
+    text = project.paths.settings.read_text()
+    project.paths.settings.write_text(text + f'level = "{level}"\n' + QUICK)
+    project.network("main")
+    edges = project.result("main").edges
+    return list(zip(edges["source"], edges["target"], strict=True))
+
+
+def visits(subjects, times):
+    donors = np.repeat([f"D{k:02d}" for k in range(subjects)], times)
+    return pd.DataFrame({"donor": donors, "day": np.tile(np.arange(times), subjects)})
+
+
+@pytest.fixture
+def blocks():
+    """Return two blocks of 24 donors with 3 visits: one pair changes together, another differs between donors."""
+    rng = np.random.default_rng(8)
+    sheet = visits(24, 3)
+    person = np.repeat(np.arange(24), 3)
+    x = rng.normal(size=(72, 10)) + 3.0 * rng.normal(size=(24, 10))[person]
+    y = rng.normal(size=(72, 8)) + 3.0 * rng.normal(size=(24, 8))[person]
+    change, trait = rng.normal(size=72), 3.0 * rng.normal(size=24)[person]
+    x[:, 2] += 3.0 * change
+    y[:, 5] += 3.0 * change
+    x[:, 7], y[:, 1] = trait + 0.3 * rng.normal(size=72), trait + 0.3 * rng.normal(size=72)
+    trend = 4.0 * sheet["day"].to_numpy()[:, None]
+    return x + trend, y + trend, sheet
+
+
+def test_between_visits_changes_are_found_and_a_common_trend_is_not(tmp_path, blocks):
+    assert ask(study(tmp_path, *blocks), "visits") == [("a02", "b05")]
+
+
+def test_between_subjects_traits_are_found(tmp_path, blocks):
+    found = ask(study(tmp_path, *blocks), "subjects")
+    assert found[0] == ("a07", "b01")
+    assert ("a02", "b05") not in found
+
+
+def test_without_a_level_nothing_is_pooled(tmp_path, blocks):
+    project = study(tmp_path, *blocks)
+    with pytest.raises(InputError, match="column 'donor' has several samples of one subject"):
+        project.network("main")
