@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from itertools import islice, permutations, product
 
@@ -24,7 +24,7 @@ class Exchange:
     size : int
         Number of rows.
     classes : tuple of ndarray of int, each of shape (n_units, rows_of_a_unit)
-        Units of a class may take each other's places, a unit's rows keeping their order.
+        Units of a class may take each other's places, a unit's rows keeping their order; rows of no class stay.
 
     Examples
     --------
@@ -59,6 +59,19 @@ class Exchange:
         """Rows of one subject take each other's places: for replicates without an order."""
         codes = range(design.n_subjects)
         return cls(design.n_samples, tuple(np.flatnonzero(design.subject == code)[:, None] for code in codes))
+
+    @classmethod
+    def side_by_side(cls, several: Sequence[Exchange]) -> Exchange:
+        """Rows of several exchanges one after the other, each rearranged on its own."""
+        classes, start = [], 0
+        for one in several:
+            classes += [units + start for units in one.classes]
+            start += one.size
+        return cls(start, tuple(classes))
+
+    def staying(self) -> Exchange:
+        """Return the same rows with none that moves."""
+        return Exchange(self.size, ())
 
     def count(self, limit: int) -> int:
         """How many arrangements there are, or ``limit`` when that is fewer.
@@ -113,7 +126,7 @@ class Exchange:
             i += 1
 
     def _arranged(self, orders: list[IndexArray]) -> IndexArray:
-        arrangement = np.empty(self.size, dtype=np.intp)
+        arrangement = np.arange(self.size)
         for units, order in zip(self.classes, orders, strict=True):
             arrangement[units] = units[order]
         return arrangement

@@ -57,6 +57,11 @@ class PairLevel:
         return cls(moved, still, levels, rows.carried, rows.exchange, rows.freedom)
 
     @property
+    def path(self) -> FloatArray:
+        """Ridges of the test, in multiples of each side's noise level."""
+        return RIDGE_PATH
+
+    @property
     def rank(self) -> int:
         """Canonical pairs that can be told apart at all."""
         return min(self.moved.rank, self.still.rank)

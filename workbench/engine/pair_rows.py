@@ -65,6 +65,8 @@ def exchangeable_rows(
     design: SubjectDesign | None,
     level: Level,
     block_sizes: Sequence[BlockSizes],
+    *,
+    turned: bool = True,
 ) -> ExchangeableRows:
     """Rows for a permutation test of what sides share, by the design of the samples.
 
@@ -76,7 +78,8 @@ def exchangeable_rows(
       the same visits are exchanged;
     - replicates without an order: deviations from the subjects' means; rows of one subject are exchanged.
 
-    Subjects with one sample say nothing about changes and are left out there.
+    Subjects with one sample say nothing about changes and are left out there. Without ``turned`` samples are not
+    turned into a basis of what the nuisance leaves; they carry it.
 
     Raises
     ------
@@ -92,9 +95,9 @@ def exchangeable_rows(
             )
     if level not in ("visits", "subjects"):
         raise NumericsError(f"level is {level!r}; allowed: 'visits' (changes), 'subjects' (their means)")
-    values = [check_finite(side, "the block") for side in sides]
+    values: list[FloatArray] = [check_finite(side, "the block") for side in sides]
     if design is None:
-        return _free(values, nuisance, block_sizes, "samples")
+        return _free(values, nuisance, block_sizes, "samples", turned)
     if level == "subjects":
         means = [subject_means(design, side) for side in values]
         return _free(means, _through(subject_means, design, nuisance), block_sizes, "subjects' means")
@@ -110,25 +113,31 @@ def exchangeable_rows(
 
 def residual_basis(basis: FloatArray) -> FloatArray:
     """Orthonormal basis, shape (n, n - c), of the dimensions that ``c`` orthonormal columns leave."""
-    left: FloatArray = scipy.linalg.qr(basis)[0][:, basis.shape[1] :]
+    left: FloatArray = np.asarray(scipy.linalg.qr(basis)[0][:, basis.shape[1] :], dtype=np.float64)
     return left
 
 
 def _through(how: Any, design: SubjectDesign, columns: FloatArray | None) -> FloatArray | None:
-    return None if columns is None else np.asarray(how(design, columns))
+    return None if columns is None else np.asarray(how(design, columns), dtype=np.float64)
 
 
 def _free(
-    values: Sequence[FloatArray], nuisance: FloatArray | None, block_sizes: Sequence[BlockSizes], words: str
+    values: Sequence[FloatArray],
+    nuisance: FloatArray | None,
+    block_sizes: Sequence[BlockSizes],
+    words: str,
+    turned: bool = True,
 ) -> ExchangeableRows:
     removed = Nuisance.of(nuisance, len(values[0]))
     rows = tuple(_standard(side, removed, sizes) for side, sizes in zip(values, block_sizes, strict=True))
-    if removed.rank > 1:
+    carried = removed.basis[:, 1:]
+    if removed.rank > 1 and turned:
         left = residual_basis(removed.basis)
         rows, words = tuple(left.T @ side for side in rows), f"dimensions that the nuisance leaves of {words}"
+        carried = np.empty((left.shape[1], 0))
     size = len(rows[0])
     freedom = len(values[0]) - removed.rank
-    return ExchangeableRows(rows, Exchange.of_rows(size), np.empty((size, 0)), freedom, words)
+    return ExchangeableRows(rows, Exchange.of_rows(size), carried, freedom, words)
 
 
 def _structured(

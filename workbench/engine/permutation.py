@@ -4,12 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
-from typing import Any
+from typing import Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.engine.canonical import RIDGE_PATH
+from workbench.engine.arrangements import Exchange
 from workbench.engine.pair_levels import PairLevel
 from workbench.engine.pair_rows import Level, design_of, exchangeable_rows
 from workbench.engine.smallest_p import SmallestP, smallest_p
@@ -188,15 +188,38 @@ def canonical_pair_test(
     return replace(tests[0], further=tuple(tests[1:]))
 
 
+class LevelOfTest(Protocol):
+    """What a level of a test is asked for."""
+
+    @property
+    def exchange(self) -> Exchange:
+        """Arrangements of the rows."""
+
+    @property
+    def path(self) -> FloatArray:
+        """Ridges, in multiples of the noise levels."""
+
+    @property
+    def freedom(self) -> int:
+        """Dimensions that nuisance and earlier components leave."""
+
+    @property
+    def batch(self) -> int:
+        """Arrangements at a time."""
+
+    def statistics_of(self, arrangements: IndexArray) -> FloatArray:
+        """Both statistics at every ridge, shape (n_arrangements, 2 x n_ridges)."""
+
+
 def level_test(
-    here: PairLevel,
+    here: LevelOfTest,
     exchanged: str,
     permutations: int,
     seed: np.random.SeedSequence,
     early_stop: bool,
     progress: Callable[[int, int], None] | None = None,
 ) -> PairTest:
-    """Test one level by its statistics: any object with ``statistics_of``, ``exchange``, ``batch``, ``freedom``."""
+    """Test one level by its statistics, of which large values count."""
     observed = here.statistics_of(np.arange(here.exchange.size)[None])
     # The limit lies above what would make it exhaustive, so that "at least so many" is never taken for "all".
     available = here.exchange.count(max(permutations + 2, FEWEST_ARRANGEMENTS))
@@ -233,8 +256,8 @@ class _Plan:
         return cls(available - 1 if exhaustive else permutations, exhaustive, early_stop and not exhaustive)
 
 
-def _withheld(here: PairLevel, exchanged: str, observed: FloatArray, available: int) -> PairTest:
-    shape = (len(STATISTICS), RIDGE_PATH.size)
+def _withheld(here: LevelOfTest, exchanged: str, observed: FloatArray, available: int) -> PairTest:
+    shape = (len(STATISTICS), here.path.size)
     return PairTest(
         p=None,
         smallest_p=1.0 / available,
@@ -247,7 +270,7 @@ def _withheld(here: PairLevel, exchanged: str, observed: FloatArray, available: 
             f"than {FEWEST_ARRANGEMENTS}: no p could be small enough to mean anything"
         ),
         statistics=STATISTICS,
-        ridge_multiples=RIDGE_PATH.copy(),
+        ridge_multiples=here.path.copy(),
         observed=observed.reshape(shape),
         p_by_ridge=np.full(shape, np.nan),
         freedom=here.freedom,
@@ -256,9 +279,9 @@ def _withheld(here: PairLevel, exchanged: str, observed: FloatArray, available: 
 
 
 def _finished(
-    here: PairLevel, exchanged: str, statistics: FloatArray, result: SmallestP, plan: _Plan
+    here: LevelOfTest, exchanged: str, statistics: FloatArray, result: SmallestP, plan: _Plan
 ) -> PairTest:
-    shape = (len(STATISTICS), RIDGE_PATH.size)
+    shape = (len(STATISTICS), here.path.size)
     done = len(statistics) - 1
     return PairTest(
         p=result.p,
@@ -269,7 +292,7 @@ def _finished(
         stopped_early=done < plan.wanted,
         withheld=None,
         statistics=STATISTICS,
-        ridge_multiples=RIDGE_PATH.copy(),
+        ridge_multiples=here.path.copy(),
         observed=statistics[0].reshape(shape),
         p_by_ridge=result.by_statistic.reshape(shape),
         freedom=here.freedom,

@@ -1,0 +1,227 @@
+"""Whether several blocks share anything, and how many components of it: a permutation test component by component."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
+from typing import Any
+
+import numpy as np
+import scipy.linalg
+from numpy.typing import NDArray
+
+from workbench.engine.arrangements import Exchange
+from workbench.engine.canonical import RIDGE_PATH
+from workbench.engine.generalised_blocks import held_rows
+from workbench.engine.generalised_components import PlacedBasis, generalised_components, mean_over
+from workbench.engine.linear import RANK_TOLERANCE, ThinBasis, thin_basis
+from workbench.engine.pair_levels import REMOVAL_RIDGE, carried_back, orthonormal
+from workbench.engine.pair_rows import Level, design_of, exchangeable_rows
+from workbench.engine.permutation import LEVEL, PairTest, level_test
+from workbench.engine.subjects import SubjectDesign, differences, subject_means
+from workbench.errors import NumericsError
+
+FloatArray = NDArray[np.float64]
+IndexArray = NDArray[np.intp]
+
+PATH: FloatArray = RIDGE_PATH[::2]
+BATCH_NUMBERS = 2**19
+
+
+@dataclass(frozen=True, eq=False)
+class MovedBlock:
+    """A block in sample space as a test rearranges it: ``carried`` is taken out of rearranged rows again."""
+
+    placed: PlacedBasis
+    noise_level: float
+    carried: FloatArray
+    exchange: Exchange
+
+    def arranged(self, arrangements: IndexArray) -> FloatArray:
+        """Rearranged rows of ``U``, placed among all samples, (n_arrangements, n_samples, rank)."""
+        vectors = self.placed.basis.vectors
+        moved: FloatArray = vectors[arrangements]
+        if self.carried.shape[1]:
+            a, f = carried_back(vectors, self.carried, arrangements)
+            left, _, right = np.linalg.svd(a.transpose(0, 2, 1) @ self.carried)
+            turned = self.carried @ (left @ right).transpose(0, 2, 1)
+            moved = moved - (a + turned) @ f
+        every = np.zeros((len(arrangements), self.placed.n, vectors.shape[1]))
+        every[:, self.placed.rows] = moved
+        return every
+
+    def without(self, columns: FloatArray, moves: bool) -> MovedBlock | None:
+        """Return the block with further columns removed; None where nothing is left."""
+        removed = orthonormal([self.carried, columns])
+        basis = self.placed.basis
+        left = basis.vectors * basis.lengths
+        left = left - removed @ (removed.T @ left)
+        vectors, lengths, _ = scipy.linalg.svd(left, full_matrices=False, check_finite=False)
+        rank = int(np.count_nonzero(lengths**2 > RANK_TOLERANCE * basis.lengths[0] ** 2))
+        if rank == 0:
+            return None
+        thin = ThinBasis(vectors[:, :rank], lengths[:rank], basis.n_features)
+        exchange = self.exchange if moves else self.exchange.staying()
+        return MovedBlock(replace(self.placed, basis=thin), self.noise_level, removed, exchange)
+
+
+@dataclass(frozen=True, eq=False)
+class GeneralisedLevel:
+    """Blocks as they stand before the next component; the first stays, each other one is rearranged on its own."""
+
+    blocks: tuple[MovedBlock, ...]
+    freedom: int
+
+    @property
+    def exchange(self) -> Exchange:
+        """Arrangements of all blocks' rows, one block after the other."""
+        return Exchange.side_by_side([block.exchange for block in self.blocks])
+
+    @property
+    def path(self) -> FloatArray:
+        """Ridges of the test, in multiples of each block's noise level."""
+        return PATH
+
+    @property
+    def batch(self) -> int:
+        """Arrangements whose matrices fit a processor's cache, from 1 to 100."""
+        rank = sum(block.placed.basis.rank for block in self.blocks)
+        return int(np.clip(BATCH_NUMBERS // rank**2, 1, 100))
+
+    def statistics_of(self, arrangements: IndexArray) -> FloatArray:
+        """``-log det R`` and the largest root of ``R`` at every ridge, shape (n_arrangements, 10)."""
+        moved, start = [], 0
+        for block in self.blocks:
+            size = block.placed.rows.size
+            moved.append(block.arranged(arrangements[:, start : start + size] - start))
+            start += size
+        together = np.concatenate(moved, axis=2)
+        products = together.transpose(0, 2, 1) @ together
+        ranks = [block.placed.basis.rank for block in self.blocks]
+        owner = np.repeat(np.arange(len(ranks)), ranks)
+        products[:, owner[:, None] == owner] = 0.0
+        wilks, roots = np.empty((2, len(arrangements), PATH.size))
+        for k, multiple in enumerate(PATH):
+            g = np.concatenate([b.placed.basis.shrinkage(multiple * b.noise_level) for b in self.blocks])
+            values = np.linalg.eigvalsh(g[:, None] * products * g)
+            wilks[:, k] = -np.log(np.maximum(1.0 + values, np.finfo(float).eps)).sum(axis=1)
+            roots[:, k] = 1.0 + values[:, -1]
+        return np.hstack([wilks, roots])
+
+    def without(self, components: int) -> GeneralisedLevel | None:
+        """Return the level behind the first components: all blocks' variates removed from every block."""
+        ridges = [REMOVAL_RIDGE * block.noise_level for block in self.blocks]
+        try:
+            found = generalised_components([block.placed for block in self.blocks], ridges, components)
+        except NumericsError:
+            return None
+        columns = np.hstack(_filled(found.variates))
+        left = [block.without(columns[block.placed.rows], moves=k > 0) for k, block in enumerate(self.blocks)]
+        kept = tuple(block for block in left if block is not None)
+        return GeneralisedLevel(kept, self.freedom - columns.shape[1]) if len(kept) == len(left) else None
+
+
+def generalised_pair_test(
+    blocks: Sequence[FloatArray],
+    *,
+    permutations: int = 1000,
+    nuisance: FloatArray | None = None,
+    subjects: NDArray[Any] | SubjectDesign | None = None,
+    times: NDArray[Any] | None = None,
+    level: Level = "visits",
+    components: int = 1,
+    stop_above: float | None = LEVEL,
+    random_state: int | None = None,
+    early_stop: bool = True,
+    part_sizes: Sequence[Sequence[int] | None] | None = None,
+    progress: Callable[[int, int], None] | None = None,
+) -> PairTest:
+    """Test that no two of several blocks share anything, against a first component, then a second, and so on.
+
+    Each block but the first is rearranged on its own, within the samples that it has; ``-log det R`` and the largest
+    root of ``R`` are recomputed at 5 ridges over four decades, and p is the permutation p of the smallest of the 10
+    p. A nuisance, and for component ``k`` the variates of all blocks of the components before it (at a tenth of the
+    noise level; for a sample that a block lacks, as the other blocks' variates predict it), are removed from every
+    block; rearranged rows are turned out of them again by the smallest rotation. Subjects as in
+    :func:`workbench.engine.permutation.canonical_pair_test`.
+
+    Parameters
+    ----------
+    blocks : sequence of ndarray of shape (n_samples, p_b)
+        Rows of NaN for a sample that the block lacks; at least two blocks.
+    part_sizes : sequence of (sequence of int or None), optional
+        Features of each part of each block.
+
+    Raises
+    ------
+    NumericsError
+        When there are fewer than two blocks, values are not finite, or a block has no variation left.
+
+    Examples
+    --------
+    >>> rng = np.random.default_rng(0)
+    >>> shared = rng.normal(size=(30, 1))
+    >>> blocks = [shared + rng.normal(size=(30, p)) for p in (50, 40, 30)]
+    >>> generalised_pair_test(blocks, permutations=199, random_state=0).p
+    0.005
+    """
+    if len(blocks) < 2:
+        raise NumericsError(f"{len(blocks)} block(s); a test of what blocks share needs two")
+    design = design_of(subjects, times)
+    sizes = list(part_sizes) if part_sizes is not None else [None] * len(blocks)
+    first = _first_level(blocks, nuisance, design, level, sizes)
+    entropy = np.random.SeedSequence(random_state).entropy
+    tests: list[PairTest] = []
+    for k in range(components):
+        here = first if k == 0 else first.without(k)
+        if here is None or here.freedom < 1:
+            break
+        seed = np.random.SeedSequence(entropy, spawn_key=(k,) if k else ())
+        tests.append(level_test(here, "rows of each block", permutations, seed, early_stop, progress))
+        alone = tests[-1].p
+        if alone is None or (stop_above is not None and alone > stop_above):
+            break
+    return replace(tests[0], further=tuple(tests[1:]))
+
+
+def _first_level(
+    blocks: Sequence[FloatArray],
+    nuisance: FloatArray | None,
+    design: SubjectDesign | None,
+    level: Level,
+    sizes: Sequence[Sequence[int] | None],
+) -> GeneralisedLevel:
+    """Level of the first component; changes and means of subjects are formed first, where both samples are there."""
+    if design is not None and (level == "subjects" or design.kind == "pairs"):
+        how = subject_means if level == "subjects" else differences
+        blocks = [how(design, np.asarray(block, dtype=np.float64)) for block in blocks]
+        nuisance = None if nuisance is None else how(design, nuisance)
+        design = None
+    moved, freedom = [], 0
+    for k, (block, parts) in enumerate(zip(blocks, sizes, strict=True)):
+        rows = held_rows(block, str(k + 1))
+        inside = None if design is None else design.take(rows)
+        if inside is not None:
+            rows = rows[inside.repeated]
+            inside = inside.take(np.flatnonzero(inside.repeated))
+        columns = None if nuisance is None else nuisance[rows]
+        one = exchangeable_rows([block[rows]], columns, inside, level, [parts], turned=False)
+        basis = thin_basis(one.sides[0])
+        exchange = one.exchange if k else one.exchange.staying()
+        placed = PlacedBasis(basis, rows, len(block))
+        moved.append(MovedBlock(placed, basis.noise_level, one.carried, exchange))
+        freedom = max(freedom, one.freedom)
+    return GeneralisedLevel(tuple(moved), freedom)
+
+
+def _filled(variates: Sequence[FloatArray]) -> list[FloatArray]:
+    """Variates of all samples: where a block lacks one, as the mean of the others' predicts it."""
+    filled = []
+    for one in variates:
+        known = np.isfinite(one[:, 0])
+        others = np.nan_to_num(mean_over([v for v in variates if v is not one]))
+        slope = np.sum(others[known] * one[known], axis=0) / np.maximum(
+            np.sum(others[known] ** 2, axis=0), np.finfo(float).tiny
+        )
+        filled.append(np.where(known[:, None], one, others * slope))
+    return filled
