@@ -9,26 +9,37 @@ from simulated.sheet import day_column, indicators
 
 from workbench.engine.swap_layers import SwapLayer
 from workbench.engine.swapped_samples import SwapSearch
-from workbench.prepare import MeasuredTable, recipe_for
+from workbench.prepare import MeasuredTable, PreparedTable, recipe_for
 
 
-def swap_layers(study: Study) -> list[SwapLayer]:
-    """Return a study's blocks prepared by their recipes, with run days and order apart from the group."""
-    return [_layer(study, place) for place in range(len(study.design.blocks))]
+def swap_layers(study: Study, *, named: bool = True) -> list[SwapLayer]:
+    """Return a study's blocks prepared by their recipes, with run days and order apart from the group.
+
+    With ``named=False`` the settings name neither run days nor order.
+    """
+    return [_layer(study, place, named) for place in range(len(study.design.blocks))]
 
 
-def _layer(study: Study, place: int) -> SwapLayer:
+def prepared_block(study: Study, place: int) -> PreparedTable:
+    """Return a study's block prepared by its recipe."""
     block = study.design.blocks[place]
     table = study.aligned(block.name)
     sheet = study.samples.loc[table.index]
     smallest = int(sheet["group"].value_counts().min()) if "group" in sheet else None
     measured = MeasuredTable(table.to_numpy(dtype=float), tuple(table.index), tuple(table.columns))
-    prepared = recipe_for(block.layer, block.values).fit_transform(measured, smallest_group=smallest, seed=1)
+    return recipe_for(block.layer, block.values).fit_transform(measured, smallest_group=smallest, seed=1)
+
+
+def _layer(study: Study, place: int, named: bool) -> SwapLayer:
+    block = study.design.blocks[place]
+    table = study.aligned(block.name)
+    sheet = study.samples.loc[table.index]
+    prepared = prepared_block(study, place)
     batch = []
     day = day_column(sheet, block.name)
-    if day is not None:
+    if named and day is not None:
         batch.append(indicators(sheet[day])[:, 1:])
-    if block.drift:
+    if named and block.drift:
         batch.append(sheet[[f"{block.name}_order"]].to_numpy(dtype=float))
     return SwapLayer(
         block.name,

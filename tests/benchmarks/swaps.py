@@ -22,9 +22,10 @@ from typing import Any
 
 sys.path.insert(0, str(Path(__file__).resolve().parents[1]))
 
-from simulated import Design, metabolites, proteins, simulate, transcripts
+from simulated import Design, Study, metabolites, proteins, simulate, transcripts
 from swap_studies import crosses, exchanged, found_in, swap_layers
 
+from workbench.engine.swap_layers import SwapLayer
 from workbench.engine.swapped_samples import find_swapped_samples
 
 NO_DESIGN: dict[str, Any] = {"groups": (), "run_days": 1}
@@ -36,6 +37,7 @@ HEAVY = (transcripts(tails=4.0), metabolites(tails=4.0))
 EFFECTS = (transcripts(group_effect=1.5), metabolites(group_effect=1.5))
 ODD = (transcripts(), metabolites(odd=1))
 THREE = (transcripts(), metabolites(), proteins())
+TANGLED = {"blocks": EFFECTS, "tangle": 1.0, "run_days": 2}
 
 SWAPPED: dict[str, dict[str, Any]] = {
     f"{factors} factors, {place}, strength {strength}": {
@@ -55,7 +57,10 @@ CLEAN: dict[str, dict[str, Any]] = {
     "nothing shared, no design": {"modules": 0, **NO_DESIGN},
     "group effects": {"blocks": EFFECTS},
     "an odd sample": {"blocks": ODD},
+    "three odd samples in both": {"odd": 3},
     "three layers": {"blocks": THREE},
+    "tangled days, not named": TANGLED,
+    "run days, not named": {},
 }
 
 Job = tuple[str, int, int, bool]
@@ -67,11 +72,16 @@ def design_of(family: str, n: int, swapped: bool) -> Design:
     return design.with_block("metabolites", swaps=(2,)) if swapped else design
 
 
+def layers_of(family: str, study: Study) -> list[SwapLayer]:
+    """Return a study's layers, with the run days in the settings or without."""
+    return swap_layers(study, named="not named" not in family)
+
+
 def search(job: Job) -> tuple[Job, Counter[str]]:
     """Search one study; return what came of it, counted."""
     family, n, seed, swapped = job
     study = simulate(design_of(family, n, swapped), seed)
-    found = find_swapped_samples(swap_layers(study), random_state=seed)
+    found = find_swapped_samples(layers_of(family, study), random_state=seed)
     counts: Counter[str] = Counter(strangers=len(found.strangers), untestable=not found.testable)
     if not swapped:
         return job, counts + Counter(clean=1, accused=bool(found.swaps))

@@ -123,20 +123,22 @@ def test_equal_seeds_give_equal_bounds_and_inputs_stay_as_they_are():
     layers = factor_layers(30, 14)
     kept = [layer.values.copy() for layer in layers]
     one, other = (find_swapped_samples(layers, random_state=3) for _ in range(2))
-    assert (one.pair_bound, one.cycle_bound) == (other.pair_bound, other.cycle_bound)
+    assert one.bounds == other.bounds
     for layer, values in zip(layers, kept, strict=True):
         np.testing.assert_array_equal(layer.values, values)
 
 
 def test_a_stricter_level_needs_more_evidence():
     layers = factor_layers(40, 15)
-    loose, strict = (find_swapped_samples(layers, level=level).pair_bound for level in (0.2, 0.001))
+    loose, strict = (
+        find_swapped_samples(layers, level=level).bounds.of("alike", 2) for level in (0.2, 0.001)
+    )
     assert strict > loose
 
 
 def test_a_cycle_needs_more_evidence_than_a_pair():
-    found = find_swapped_samples(factor_layers(40, 16))
-    assert found.cycle_bound > found.pair_bound + 1.0
+    bounds = find_swapped_samples(factor_layers(40, 16)).bounds
+    assert bounds.of("alike", 3) > bounds.of("alike", 2) + 1.0
 
 
 def test_constant_and_duplicated_features_change_nothing():

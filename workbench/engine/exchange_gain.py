@@ -234,6 +234,15 @@ def row_mismatch(
     return chance
 
 
+def pair_distances(rows: FloatArray, metric: FloatArray) -> FloatArray:
+    """Return squared distances of rows in a metric, shape (n_samples, n_samples).
+
+    >>> pair_distances(np.array([[0.0, 0.0], [3.0, 4.0]]), np.eye(2))[0, 1]
+    np.float64(25.0)
+    """
+    return _squared_distances(rows, rows, metric)
+
+
 def _squared_distances(x: FloatArray, y: FloatArray, metric: FloatArray) -> FloatArray:
     """Return ``(x_j - x_i)' metric (y_j - y_i)`` for all pairs."""
     cross = x @ metric @ y.T

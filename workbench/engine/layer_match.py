@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Collection
+from collections.abc import Collection, Iterator
 from dataclasses import dataclass
 
 import numpy as np
@@ -39,32 +39,69 @@ class Prediction:
         Layer of the factors, and the layer that predicts them.
     scores, predicted : ndarray of shape (n_common, n_matched)
         The factors, and what samples left out were predicted to have; the design removed from both.
-    hat : ndarray of shape (n_common, n_common)
-        Projection onto the design and ``predicted``.
-    df : int
+    basis : ndarray of shape (n_common, c)
+        Orthonormal basis of the design.
     p : float
         Chance of the best factor's prediction (one-sided, Bonferroni over the factors).
     information : float
-        Half the log ratio of the factors' generalised variance without and with the prediction: nats that
-        the other layer tells of a sample.
+        Nats that the other layer tells of a sample: ``-log(1 - r^2) / 2``, summed over the factors.
     """
 
     target: str
     source: str
     scores: FloatArray
     predicted: FloatArray
-    hat: FloatArray
-    df: int
+    basis: FloatArray
     p: float
     information: float
 
+    @property
+    def hat(self) -> FloatArray:
+        """Projection onto the design and all of ``predicted``."""
+        return hat_matrix(np.hstack([self.basis, self.predicted]))
+
+    @property
+    def df(self) -> int:
+        """Degrees of freedom beside :attr:`hat`."""
+        return int(self.basis.shape[0] - self.basis.shape[1] - self.predicted.shape[1])
+
+    @property
+    def fitted(self) -> FloatArray:
+        """Each factor by its own prediction, the design's part included, shape (n_common, n_matched)."""
+        columns = [(hat @ score)[:, 0] for score, hat, _ in self._singly()]
+        return np.column_stack(columns)
+
+    def _singly(self) -> Iterator[tuple[FloatArray, FloatArray, int]]:
+        """Yield each factor, the projection onto the design and its own prediction, and what df that leaves.
+
+        A joint regression of all factors would have to learn all their covariances from few samples.
+        """
+        design = self.basis @ self.basis.T
+        df = self.basis.shape[0] - self.basis.shape[1] - 1
+        for score, predicted in zip(self.scores.T, self.predicted.T, strict=True):
+            unit = predicted / np.linalg.norm(predicted)
+            yield score[:, None], design + np.outer(unit, unit), df
+
     def gains(self) -> FloatArray:
         """Return the log likelihood ratio of exchanging each two samples, shape (n_common, n_common)."""
-        return exchange_gains(self.scores, self.hat, self.df)
+        total = np.zeros((self.scores.shape[0],) * 2)
+        for one in self._singly():
+            total += exchange_gains(*one)
+        return total
 
     def rearranged(self, places: IndexArray, sources: IndexArray) -> FloatArray:
         """Return the log likelihood ratio of rearrangements of the target's rows, shape (count,)."""
-        return rearrangement_gains(self.scores, self.hat, self.df, places, sources)
+        total = np.zeros(len(places))
+        for one in self._singly():
+            total += rearrangement_gains(*one, places, sources)
+        return total
+
+    def row_gains(self, places: IndexArray, sources: IndexArray) -> FloatArray:
+        """Return how much better each of the target's rows fits in its new place, shape (s,)."""
+        total = np.zeros(len(places))
+        for one in self._singly():
+            total += row_gains(*one, places, sources)
+        return total
 
     def mismatch(self, places: IndexArray, sources: IndexArray) -> FloatArray:
         """Return the chance of a worse fit of each of the target's rows in its new place, shape (s,)."""
@@ -132,7 +169,7 @@ class LayerMatch:
         total = np.zeros(len(places))
         for weight, one in zip(self.weights(), self.predictions, strict=True):
             ahead = (places, sources) if one.target == layer else (sources, places)
-            total += weight * row_gains(one.scores, one.hat, one.df, *ahead)
+            total += weight * one.row_gains(*ahead)
         return total
 
     def mismatch(self, layer: str, places: IndexArray, sources: IndexArray) -> float:
@@ -218,11 +255,6 @@ def _matched(
     kept = [k for k in np.argsort(p, kind="stable")[:most] if p[k] * p.size <= MATCH_LEVEL]
     if not kept:
         return None
-    scores, predicted = scores[:, kept], predicted[:, kept]
-    hat = hat_matrix(np.hstack([basis, predicted]))
-    residual = scores - hat @ scores
-    was, now = (np.linalg.slogdet(part.T @ part)[1] for part in (scores, residual))
     best = float(min(1.0, p.min() * p.size))
-    return Prediction(
-        target, source, scores, predicted, hat, n - c - len(kept), best, float(0.5 * (was - now))
-    )
+    information = -0.5 * float(np.log1p(-(r[kept] ** 2)).sum())
+    return Prediction(target, source, scores[:, kept], predicted[:, kept], basis, best, information)

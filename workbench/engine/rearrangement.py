@@ -12,6 +12,7 @@ from workbench.engine.exchange_gain import row_gains
 from workbench.engine.layer_match import LayerMatch
 from workbench.engine.swap_layers import LayerState
 
+FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
 States = Mapping[str, LayerState]
 
@@ -66,25 +67,41 @@ def design_gain(one: Rearrangement, states: States) -> float:
 
 def agreement_gain(one: Rearrangement, match: LayerMatch) -> float:
     """Return what a rearrangement gains in the layer's agreement with another; 0 where it cannot tell."""
-    inside = _inside(one, match)
-    if inside is None:
-        return 0.0
-    places, sources = inside
-    return float(match.rearranged(one.layer, places[None], sources[None])[0])
+    return float(agreement_gains(one.layer, one.places[None], one.sources[None], match)[0])
 
 
-def least_share(one: Rearrangement, match: LayerMatch | None, states: States) -> float:
+def agreement_gains(
+    layer: str, places: IndexArray, sources: IndexArray, match: LayerMatch | None
+) -> FloatArray:
+    """Return what several rearrangements of a layer's rows gain in agreement with another, shape (count,).
+
+    ``places`` and ``sources`` have the shape (count, s); 0 where the match cannot tell.
+    """
+    gains = np.zeros(len(places))
+    if match is None or match.untestable or layer not in (match.first, match.second):
+        return gains
+    inside = np.full(int(max(places.max(), match.rows_of(layer).max())) + 1, -1)
+    inside[match.rows_of(layer)] = np.arange(match.samples.size)
+    places, sources = inside[places], inside[sources]
+    known = (places >= 0).all(axis=1)
+    if known.any():
+        gains[known] = match.rearranged(layer, places[known], sources[known])
+    return gains
+
+
+def least_share(one: Rearrangement, match: LayerMatch | None, states: States | None) -> float:
     """Return the smallest share that any of the samples has in what the rearrangement mends.
 
     Of samples that were exchanged every one goes better with its new row. Where one row belongs to nobody, the
-    sample that it is exchanged with went well with its own: its share is negative.
+    sample that it is exchanged with went well with its own: its share is negative. Without ``states`` the design
+    is not asked.
     """
-    state = states[one.layer]
+    state = None if states is None else states[one.layer]
     gains = np.zeros(one.places.size)
     inside = _inside(one, match) if match is not None else None
     if match is not None and inside is not None:
         gains += match.row_gains(one.layer, *inside)
-    if state.design_told and not one.tubes:
+    if state is not None and state.design_told and not one.tubes:
         gains += row_gains(state.components, state.hat(), state.df, one.places, one.sources)
     total = float(gains.sum())
     return float(gains.min()) / total if total > 0.0 else 0.0

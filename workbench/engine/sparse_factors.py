@@ -123,7 +123,8 @@ def _rotated_scores(x: FloatArray, basis: ThinBasis, number: int) -> FloatArray:
     loadings = (x.T @ vectors) / lengths * np.sqrt(x.shape[1])
     rotation = np.eye(number)
     for _ in range(TURNS):
-        left, _, right = np.linalg.svd(loadings.T @ (loadings @ rotation) ** 3)
+        now = loadings @ rotation
+        left, _, right = np.linalg.svd(loadings.T @ (now * now * now))
         turned = left @ right
         done = np.abs(np.abs(np.einsum("ij,ij->j", rotation, turned)) - 1.0).max() < TURNED
         rotation = turned

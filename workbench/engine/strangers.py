@@ -2,17 +2,19 @@
 
 from __future__ import annotations
 
-from collections.abc import Collection, Sequence
+from collections.abc import Collection, Iterable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from workbench.engine.layer_match import LayerMatch
+from workbench.engine.swap_layers import LayerState
 
 FloatArray = NDArray[np.float64]
 
 STRANGER_LEVEL = 0.001
+SPOILT = 3.0
 
 
 @dataclass(frozen=True, eq=False)
@@ -45,7 +47,7 @@ def find_strangers(
     ----------
     matches : sequence of LayerMatch
     explained : collection of int
-        Samples that are not looked at, as they were found exchanged.
+        Samples that are not looked at: they were found exchanged, or went wrong as a whole.
     level : float
         Family-wise rate.
     """
@@ -62,6 +64,18 @@ def find_strangers(
                 layers.setdefault(sample, []).append({match.first, match.second})
     found = [Stranger(sample, _to_blame(layers[sample]), p) for sample, p in worst.items()]
     return tuple(sorted(found, key=lambda one: (one.p, one.sample)))
+
+
+def spoilt_samples(states: Iterable[LayerState]) -> set[int]:
+    """Return samples whose row went wrong as a whole in a layer, which belongs to nobody for that reason.
+
+    Around the design it scatters ``SPOILT`` times as much (variance) as the median row.
+    """
+    found: set[int] = set()
+    for state in states:
+        scatter = np.mean(state.residuals**2, axis=1)
+        found |= set(state.layer.samples[scatter > SPOILT * np.median(scatter)].tolist())
+    return found
 
 
 def _to_blame(pairs: list[set[str]]) -> tuple[str, ...]:

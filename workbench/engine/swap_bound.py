@@ -2,53 +2,45 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass
+import math
+from collections.abc import Collection, Mapping
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.engine.exchange_gain import exchange_gains, hat_matrix
-from workbench.engine.layer_match import LayerMatch, Prediction
+from workbench.engine.layer_match import LayerMatch
+from workbench.engine.swap_candidates import SHEET, TUBES, Bounds, layer_gains
 from workbench.engine.swap_layers import LayerState
 from workbench.engine.swap_sheet import sheet_gains
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
+BoolArray = NDArray[np.bool_]
 
 DRAWS = 60
 TAILS = 8.0
 EULER = 0.5772156649015329
+LEAST_BOUND = 3.5
+SMALLEST_SPREAD = 0.1
+RARER = {TUBES: 1.0, SHEET: 1.0}
 
 
-@dataclass(frozen=True, eq=False)
-class _Rows:
-    """Rows of scores at their places in the study: what is fitted, and residuals over the root of df."""
-
-    places: IndexArray
-    fitted: FloatArray
-    residual: FloatArray
-
-    def drawn(self, mixing: FloatArray, scale: FloatArray) -> FloatArray:
-        """Return rows of the same covariance that have nothing to do with the samples they stand for."""
-        noise = mixing[np.ix_(self.places, self.places)] @ self.residual
-        rows: FloatArray = self.fitted + scale[self.places, None] * noise
-        return rows
-
-
-def clean_bound(
+def clean_bounds(
     states: Mapping[str, LayerState],
     matches: Mapping[frozenset[str], LayerMatch],
     level: float,
     random_state: int | np.random.Generator,
-) -> float:
-    """Evidence for an exchanged pair that a clean study passes with probability ``level``.
+    left_out: Collection[int] = (),
+) -> Bounds:
+    """Evidence for an exchange that a clean study passes with probability ``level``.
 
     Studies are drawn in which every layer's components scatter around what its design explains, and matched
     factors and predictions go together, with the covariances that the study itself shows; the scatter of a
-    sample is Student-t with ``TAILS`` degrees of freedom. The largest evidence over all pairs, layers and ways
-    of exchanging is taken in each, and the quantile from Gumbel's law with their mean and spread. The bound
-    thereby grows with the log of the number of pairs, and the less the layers tell of each other.
+    sample is Student-t with ``TAILS`` degrees of freedom. In each the largest evidence of every kind of exchange
+    is taken, over all pairs and layers. Bounds lie equally many spreads above each kind's mean (``RARER`` more
+    for some), so that any is passed with probability ``level`` by Gumbel's law. They thereby grow with the log of
+    the number of pairs, and are small where the layers tell much of each other; none is under ``LEAST_BOUND``.
 
     Parameters
     ----------
@@ -56,6 +48,8 @@ def clean_bound(
         As delivered.
     level : float
     random_state : int or Generator
+    left_out : collection of int
+        Samples whose rows do not count in how far the layers agree.
 
     References
     ----------
@@ -63,73 +57,77 @@ def clean_bound(
     """
     rng = np.random.default_rng(random_state)
     n = 1 + max(int(state.layer.samples.max()) for state in states.values())
-    parts = _Parts.of(states, matches)
-    largest = np.empty(DRAWS)
-    for draw in range(DRAWS):
-        mixing = rng.standard_normal((n, n))
-        scale = np.sqrt(TAILS / rng.chisquare(TAILS, n)) * np.sqrt((TAILS - 2.0) / TAILS)
-        largest[draw] = parts.largest(mixing, scale)
-    spread = float(largest.std(ddof=1)) * np.sqrt(6.0) / np.pi
-    return float(largest.mean() + spread * (-np.log(-np.log1p(-level)) - EULER))
+    draws = []
+    for _ in range(DRAWS):
+        drawn = _Drawn.of(n, rng)
+        of_layers = {name: drawn.state(state) for name, state in states.items()}
+        of_pairs = {key: drawn.match(match, left_out) for key, match in matches.items()}
+        draws.append(_largest(of_layers, of_pairs))
+    kinds = sorted(set().union(*draws))
+    largest = {kind: np.array([draw.get(kind, 0.0) for draw in draws]) for kind in kinds}
+    pairs = _common_bounds(largest, level)
+    return Bounds(pairs, math.log(max((n - 2) * 2.0 / 3.0, 1.0)))
+
+
+def _common_bounds(largest: Mapping[str, FloatArray], level: float) -> dict[str, float]:
+    """Return bounds, equally many spreads above each kind's mean (and ``RARER``), that any passes at ``level``."""
+    centre = {kind: float(most.mean()) for kind, most in largest.items()}
+    spread = {kind: max(float(most.std(ddof=1)), SMALLEST_SPREAD) for kind, most in largest.items()}
+    excess = [(most - centre[kind]) / spread[kind] - RARER.get(kind, 0.0) for kind, most in largest.items()]
+    passed = _quantile(np.max(excess, axis=0), level) if excess else 0.0
+    return {
+        kind: max(centre[kind] + spread[kind] * (passed + RARER.get(kind, 0.0)), LEAST_BOUND)
+        for kind in largest
+    }
+
+
+def _quantile(largest: FloatArray, level: float) -> float:
+    scale = float(largest.std(ddof=1)) * math.sqrt(6.0) / math.pi
+    return float(largest.mean()) + scale * (-math.log(-math.log1p(-level)) - EULER)
 
 
 @dataclass(frozen=True, eq=False)
-class _Parts:
-    states: Mapping[str, LayerState]
-    matches: Mapping[frozenset[str], LayerMatch]
-    components: dict[str, _Rows]
-    predictions: dict[frozenset[str], list[tuple[Prediction, _Rows, _Rows]]]
+class _Drawn:
+    """Layers and matches of a drawn study; ``mixing`` makes its rows of those of the study at hand."""
+
+    mixing: FloatArray
+    scale: FloatArray
 
     @classmethod
-    def of(cls, states: Mapping[str, LayerState], matches: Mapping[frozenset[str], LayerMatch]) -> _Parts:
-        components, predictions = {}, {}
-        for name, state in states.items():
-            fitted = state.hat() @ state.components
-            residual = (state.components - fitted) / np.sqrt(state.df)
-            components[name] = _Rows(state.layer.samples, fitted, residual)
-        for key, match in matches.items():
-            predictions[key] = [
-                (one, _residual_rows(match, one.scores), _residual_rows(match, one.predicted))
-                for one in match.predictions
-            ]
-        return cls(states, matches, components, predictions)
+    def of(cls, n: int, rng: np.random.Generator) -> _Drawn:
+        scale = np.sqrt(TAILS / rng.chisquare(TAILS, n)) * np.sqrt((TAILS - 2.0) / TAILS)
+        return cls(rng.standard_normal((n, n)), scale)
 
-    def largest(self, mixing: FloatArray, scale: FloatArray) -> float:
-        """Return the largest evidence in one drawn study."""
-        shared = {key: self._shared(key, mixing, scale) for key in self.matches}
-        every = {name: rows.drawn(mixing, scale) for name, rows in self.components.items()}
-        most = float(sheet_gains(self.states, every).max())
-        for name, state in self.states.items():
-            rows = every[name]
-            best = self._best_partner(name, shared)
-            for tubes in (False, True):
-                compared = state.compared(tubes)
-                if not compared.any():
-                    continue
-                design = state.design_gains(tubes, rows)
-                most = max(most, float(np.max((best + design)[compared])))
-        return most
+    def rows(self, samples: IndexArray, residual: FloatArray, counts: BoolArray, df: int) -> FloatArray:
+        """Return rows of the covariance of those residuals that count, none of them its own sample's."""
+        mixing = self.mixing[np.ix_(samples, samples[counts])] / np.sqrt(max(df, 1))
+        drawn: FloatArray = self.scale[samples, None] * (mixing @ residual[counts])
+        return drawn
 
-    def _shared(self, key: frozenset[str], mixing: FloatArray, scale: FloatArray) -> FloatArray:
-        match = self.matches[key]
-        gains = np.zeros((match.samples.size,) * 2)
-        for weight, (one, scores, predicted) in zip(match.weights(), self.predictions[key], strict=True):
-            u, p = scores.drawn(mixing, scale), predicted.drawn(mixing, scale)
-            hat = hat_matrix(np.hstack([match.basis, p]))
-            gains += weight * exchange_gains(u - match.basis @ (match.basis.T @ u), hat, one.df)
-        return gains
+    def state(self, state: LayerState) -> LayerState:
+        fitted = state.hat() @ state.components
+        every = np.ones(state.order.size, dtype=bool)
+        noise = self.rows(state.layer.samples, state.components - fitted, every, state.df)
+        return replace(state, components=fitted + noise)
 
-    def _best_partner(self, name: str, shared: Mapping[frozenset[str], FloatArray]) -> FloatArray:
-        n = self.states[name].order.size
-        asked = [key for key in self.matches if name in key and not self.matches[key].untestable]
-        best = np.full((n, n), -np.inf)
-        for key in asked:
-            rows = self.matches[key].rows_of(name)
-            block = np.ix_(rows, rows)
-            best[block] = np.maximum(best[block], shared[key])
-        return np.where(np.isfinite(best), best - np.log(max(len(asked), 1)), 0.0)
+    def match(self, match: LayerMatch, left_out: Collection[int]) -> LayerMatch:
+        counts = ~np.isin(match.samples, list(left_out))
+        df = int(counts.sum()) - match.basis.shape[1]
+        predictions = []
+        for one in match.predictions:
+            rows = self.rows(match.samples, np.hstack([one.scores, one.predicted]), counts, df)
+            scores, predicted = np.hsplit(rows - match.basis @ (match.basis.T @ rows), 2)
+            predictions.append(replace(one, scores=scores, predicted=predicted))
+        return replace(match, predictions=tuple(predictions))
 
 
-def _residual_rows(match: LayerMatch, rows: FloatArray) -> _Rows:
-    df = match.samples.size - match.basis.shape[1]
-    return _Rows(match.samples, np.zeros_like(rows), rows / np.sqrt(df))
+def _largest(
+    states: Mapping[str, LayerState], matches: Mapping[frozenset[str], LayerMatch]
+) -> dict[str, float]:
+    """Return the largest evidence of every kind of exchange that anything can tell of."""
+    most: dict[str, float] = {}
+    for gains in layer_gains(states, matches):
+        most[gains.kind] = max(most.get(gains.kind, -np.inf), float(gains.total().max()))
+    if all(state.design_told for state in states.values()):
+        most[SHEET] = max(float(sheet_gains(states).max()), 0.0)
+    return most

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workbench.engine.layer_match import LayerMatch
-from workbench.engine.rearrangement import Rearrangement, States, agreement_gain, design_gain
+from workbench.engine.rearrangement import Rearrangement, States, agreement_gains
 from workbench.engine.swap_layers import LayerState
 
 FloatArray = NDArray[np.float64]
@@ -17,9 +17,33 @@ IndexArray = NDArray[np.intp]
 BoolArray = NDArray[np.bool_]
 Matches = Mapping[frozenset[str], LayerMatch]
 
-MOST_PAIRS = 6
+MOST_PAIRS = 8
 MOST_CYCLES = 3
 TIE = 1e-6
+
+ALIKE, APART, TUBES, SHEET = "alike", "apart", "tubes", "sheet"
+
+
+@dataclass(frozen=True)
+class Bounds:
+    """Evidence that an exchange has to pass.
+
+    Attributes
+    ----------
+    pairs : mapping of str to float
+        By kind: ``alike``, where the design expects the same of both, so that the layers' agreement alone can
+        tell; ``apart``, rows of which it expects different things; ``tubes`` of different groups, exchanged
+        before the runs; ``sheet``, entries of the sample sheet. Kinds that nothing can tell of are missing.
+    cycle : float
+        How much more a cycle of three has to pass: the log of how many more of them there are.
+    """
+
+    pairs: Mapping[str, float]
+    cycle: float
+
+    def of(self, kind: str, size: int) -> float:
+        """Return the bound of an exchange of ``size`` samples."""
+        return self.pairs.get(kind, np.inf) + (self.cycle if size > 2 else 0.0)
 
 
 @dataclass(frozen=True, eq=False)
@@ -36,6 +60,8 @@ class Candidate:
     shared_gain, design_gain : float
         Log likelihood ratios from the agreement with ``partner`` (less the penalty), and from the layer's
         own design.
+    kind : str
+        See :class:`Bounds`.
     """
 
     move: Rearrangement
@@ -43,20 +69,37 @@ class Candidate:
     penalty: float
     shared_gain: float
     design_gain: float
+    kind: str
 
     @property
     def gain(self) -> float:
         """Whole evidence."""
         return self.shared_gain + self.design_gain
 
+    @property
+    def size(self) -> int:
+        """Number of samples."""
+        return int(self.move.places.size)
+
+    def samples(self, states: States) -> frozenset[int]:
+        """Return the samples that change places."""
+        return frozenset(states[self.move.layer].layer.samples[self.move.places].tolist())
+
+    @property
+    def asks_design(self) -> bool:
+        """Whether the design counts: of rows that it takes to be alike it says nothing but noise."""
+        return self.kind != ALIKE
+
 
 @dataclass(frozen=True, eq=False)
 class LayerGains:
-    """Evidence for exchanging each two rows of one layer, in one of the two ways.
+    """Evidence for exchanging each two rows of one layer, all of one kind.
 
     Attributes
     ----------
     layer : str
+    kind : str
+        See :class:`Bounds`.
     tubes : bool
         See :class:`~workbench.engine.rearrangement.Rearrangement`.
     shared : ndarray of shape (n_samples, n_samples)
@@ -65,11 +108,13 @@ class LayerGains:
         Position of that layer in ``names``, -1 for none.
     names : tuple of str
     design : ndarray of shape (n_samples, n_samples)
+        Gain in agreement with the design; 0 where it is not asked.
     counted : ndarray of bool, shape (n_samples, n_samples)
-        The pairs (above the diagonal) that are compared.
+        The pairs (above the diagonal) of this kind.
     """
 
     layer: str
+    kind: str
     tubes: bool
     shared: FloatArray
     partners: IndexArray
@@ -82,12 +127,18 @@ class LayerGains:
         """Log of the number of layers that were asked."""
         return float(np.log(max(len(self.names), 1)))
 
+    def total(self) -> FloatArray:
+        """Return the whole evidence, minus infinity for pairs of another kind."""
+        total: FloatArray = np.where(self.counted, self.shared + self.design, -np.inf)
+        return total
+
     def candidate(self, i: int, j: int) -> Candidate:
         """Return the exchange of rows i and j."""
         partner = self.partners[i, j]
         move = Rearrangement(self.layer, np.array([i, j]), np.array([j, i]), self.tubes)
         name = self.names[partner] if partner >= 0 else ""
-        return Candidate(move, name, self.penalty, float(self.shared[i, j]), float(self.design[i, j]))
+        gains = float(self.shared[i, j]), float(self.design[i, j])
+        return Candidate(move, name, self.penalty, *gains, self.kind)
 
 
 def layer_gains(states: States, matches: Matches) -> list[LayerGains]:
@@ -95,12 +146,21 @@ def layer_gains(states: States, matches: Matches) -> list[LayerGains]:
     found = []
     for name, state in states.items():
         shared, partners, names = _shared_gains(state, matches)
-        for tubes in (False, True):
-            counted = state.compared(tubes) & ((partners >= 0) | state.design_told)
+        for kind, tubes, counted in _kinds(state, partners >= 0):
             if counted.any():
-                design = state.design_gains(tubes)
-                found.append(LayerGains(name, tubes, shared, partners, names, design, counted))
+                design = np.zeros_like(shared) if kind == ALIKE else state.design_gains(tubes)
+                found.append(LayerGains(name, kind, tubes, shared, partners, names, design, counted))
     return found
+
+
+def _kinds(state: LayerState, shared: BoolArray) -> Iterator[tuple[str, bool, BoolArray]]:
+    """Yield the pairs of each kind, as rows and as tubes; tubes of one group carry nothing that it knows."""
+    apart, told = state.apart(), shared | state.design_told
+    rows, tubes, grouped = state.compared(False), state.compared(True) & apart, state.differ_in_group()
+    yield ALIKE, False, rows & ~apart & shared
+    yield ALIKE, True, tubes & ~grouped & shared
+    yield APART, False, rows & apart & told
+    yield TUBES, True, tubes & grouped & told
 
 
 def _shared_gains(state: LayerState, matches: Matches) -> tuple[FloatArray, IndexArray, tuple[str, ...]]:
@@ -122,15 +182,15 @@ def _shared_gains(state: LayerState, matches: Matches) -> tuple[FloatArray, Inde
     return shared, partners, tuple(names)
 
 
-def pair_candidates(gains: list[LayerGains], least: float) -> list[Candidate]:
-    """Return the pairs with the most evidence, no less than ``least``, strongest first.
+def pair_candidates(gains: list[LayerGains], bounds: Bounds, slack: float) -> list[Candidate]:
+    """Return the pairs that pass their bound by most, or miss it by ``slack`` at most, in that order.
 
     Exchanges of the same samples that no design tells apart (equal evidence) give one candidate.
     """
     flat = []
     for place, one in enumerate(gains):
-        total = np.where(one.counted, one.shared + one.design, -np.inf)
-        rows, columns = np.nonzero(total >= least)
+        total = one.total() - bounds.of(one.kind, 2)
+        rows, columns = np.nonzero(total >= -slack)
         flat += [(-total[i, j], place, int(i), int(j)) for i, j in zip(rows, columns, strict=True)]
     found: list[Candidate] = []
     taken: list[float] = []
@@ -145,25 +205,30 @@ def pair_candidates(gains: list[LayerGains], least: float) -> list[Candidate]:
 
 
 def cycle_candidates(
-    pairs: list[Candidate], states: States, matches: Matches, least: float
+    pairs: list[Candidate], states: States, matches: Matches, bounds: Bounds, slack: float
 ) -> list[Candidate]:
-    """Return the cycles of three with the most evidence among those that hold one of the given pairs."""
+    """Return the cycles of three that pass their bound by most among those that hold one of the given pairs."""
     every = [cycle for pair in pairs for cycle in _cycles_with(pair, states, matches)]
     found: dict[tuple[str, frozenset[tuple[int, int]]], Candidate] = {}
-    for one in sorted(every, key=lambda one: -one.gain):
-        if one.gain >= least:
+    for one in sorted(every, key=lambda one: bounds.of(one.kind, 3) - one.gain):
+        if one.gain >= bounds.of(one.kind, 3) - slack:
             found.setdefault((one.move.layer, one.move.moves), one)
     return list(found.values())[:MOST_CYCLES]
 
 
 def _cycles_with(pair: Candidate, states: States, matches: Matches) -> Iterator[Candidate]:
     """Yield the cycles of three, both ways round, that hold a pair's two rows."""
-    layer, (i, j) = pair.move.layer, pair.move.places.tolist()
-    match = matches.get(frozenset((layer, pair.partner)))
-    for k in range(states[layer].order.size):
-        if k in (i, j):
-            continue
-        for sources in ((j, k, i), (k, i, j)):
-            move = Rearrangement(layer, np.array([i, j, k]), np.array(sources), pair.move.tubes)
-            shared = agreement_gain(move, match) - pair.penalty if match else 0.0
-            yield Candidate(move, pair.partner, pair.penalty, shared, design_gain(move, states))
+    state, (i, j) = states[pair.move.layer], pair.move.places.tolist()
+    third = [k for k in range(state.order.size) if k not in (i, j)]
+    places = np.repeat([[i, j, k] for k in third], 2, axis=0)
+    sources = np.array([row for k in third for row in ((j, k, i), (k, i, j))])
+    match = matches.get(frozenset((pair.move.layer, pair.partner)))
+    tubes = pair.move.tubes
+    shared = agreement_gains(pair.move.layer, places, sources, match) - pair.penalty * (match is not None)
+    design = state.moves_gain(places, sources, tubes)
+    apart = state.apart()[places, sources].any(axis=1)
+    for k in range(len(places)):
+        move = Rearrangement(pair.move.layer, places[k], sources[k], tubes)
+        kind = APART if pair.kind == ALIKE and apart[k] else pair.kind
+        gains = float(shared[k]), 0.0 if kind == ALIKE else float(design[k])
+        yield Candidate(move, pair.partner, pair.penalty, *gains, kind)

@@ -7,9 +7,9 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.engine.layer_match import LayerMatch
-from workbench.engine.rearrangement import States
-from workbench.engine.swap_candidates import Candidate, Matches
+from workbench.engine.layer_match import LayerMatch, Prediction
+from workbench.engine.rearrangement import States, agreement_gain
+from workbench.engine.swap_candidates import Candidate
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
@@ -49,18 +49,27 @@ class SwapEvidence:
     design_gain: float
 
 
-def swap_evidence(candidate: Candidate, states: States, matches: Matches) -> SwapEvidence:
-    """Return what to draw: from the agreement of the layers or from the design, whichever says more."""
-    match = matches.get(frozenset((candidate.move.layer, candidate.partner)))
-    if match is not None and candidate.shared_gain >= candidate.design_gain:
+def swap_evidence(candidate: Candidate, states: States, match: LayerMatch | None) -> SwapEvidence:
+    """Return what to draw: from the agreement of the layers or from the design, whichever says more.
+
+    Parameters
+    ----------
+    candidate : Candidate
+    states : mapping of str to LayerState
+    match : LayerMatch or None
+        Of its layer and the partner, best with no fit learning from the samples.
+    """
+    agrees = 0.0 if match is None else agreement_gain(candidate.move, match) - candidate.penalty
+    if match is not None and match.predictions and agrees >= candidate.design_gain:
         return _from_agreement(candidate, match)
     state = states[candidate.move.layer]
     known = state.batch_part(state.components) if candidate.move.tubes else 0.0
     moved = state.components - known
-    rows, hat = state.components, state.hat()
-    weights = _telling_weights(rows, hat, candidate.move.places)
+    rows, fitted = state.components, state.hat() @ state.components
+    residual = rows - fitted
+    weights = _telling_weights(fitted, residual, residual.T @ residual, candidate.move.places)
     after = (moved[candidate.move.sources] + (rows - moved)[candidate.move.places]) @ weights
-    expected = hat @ rows @ weights
+    expected = fitted @ weights
     return SwapEvidence(
         candidate.move.layer,
         "",
@@ -76,15 +85,17 @@ def swap_evidence(candidate: Candidate, states: States, matches: Matches) -> Swa
 
 
 def _from_agreement(candidate: Candidate, match: LayerMatch) -> SwapEvidence:
-    """Take the direction (who predicts whom) that tells more."""
-    best = max(match.predictions, key=lambda one: one.information)
+    """Take the direction (who predicts whom) that says more of these samples."""
     move = candidate.move
     rows = match.rows_of(move.layer)
     inside = {row: place for place, row in enumerate(rows.tolist())}
     places = np.array([inside[row] for row in move.places.tolist()])
     sources = np.array([inside[row] for row in move.sources.tolist()])
-    weights = _telling_weights(best.scores, best.hat, places)
-    score, expected = best.scores @ weights, best.hat @ best.scores @ weights
+    best = max(match.predictions, key=lambda one: _gain(one, move.layer, places, sources))
+    fitted = best.fitted
+    residual = best.scores - fitted
+    weights = _telling_weights(fitted, residual, np.diag((residual**2).sum(axis=0)), places)
+    score, expected = best.scores @ weights, fitted @ weights
     mine = best.target == move.layer
     return SwapEvidence(
         best.target,
@@ -100,11 +111,16 @@ def _from_agreement(candidate: Candidate, match: LayerMatch) -> SwapEvidence:
     )
 
 
-def _telling_weights(rows: FloatArray, hat: FloatArray, places: IndexArray) -> FloatArray:
-    """Weights ``(E'E)^-1 (f_a - f_b)`` of the two exchanged rows whose fits f lie farthest apart."""
-    fitted = hat @ rows
-    residual = rows - fitted
-    inverse = np.linalg.pinv(residual.T @ residual, hermitian=True)
+def _gain(one: Prediction, layer: str, places: IndexArray, sources: IndexArray) -> float:
+    ahead = (places, sources) if one.target == layer else (sources, places)
+    return float(one.rearranged(ahead[0][None], ahead[1][None])[0])
+
+
+def _telling_weights(
+    fitted: FloatArray, residual: FloatArray, squares: FloatArray, places: IndexArray
+) -> FloatArray:
+    """Weights ``S^-1 (f_a - f_b)`` of the two exchanged rows whose fits f lie farthest apart, S the squares."""
+    inverse = np.linalg.pinv(squares, hermitian=True)
     steps = [fitted[a] - fitted[b] for a in places for b in places]
     step = max(steps, key=lambda one: float(one @ inverse @ one))
     weights = inverse @ step

@@ -7,7 +7,12 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.engine.exchange_gain import exchange_gains, rearrangement_gains, relabelling_gains
+from workbench.engine.exchange_gain import (
+    exchange_gains,
+    pair_distances,
+    rearrangement_gains,
+    relabelling_gains,
+)
 from workbench.engine.linear import thin_basis
 from workbench.engine.nuisance import Nuisance, check_finite, standardise
 from workbench.engine.signal_components import signal_components
@@ -21,6 +26,7 @@ BoolArray = NDArray[np.bool_]
 COMPONENTS_PER_DF = 3
 REFIT_ROUNDS = 4
 SAME_COLUMN = 1e-9
+APART = 2.0
 
 
 @dataclass(frozen=True, eq=False)
@@ -98,7 +104,7 @@ class LayerState:
         projection: FloatArray = self.nuisance.basis @ self.nuisance.basis.T
         return projection
 
-    def design_gains(self, tubes: bool, rows: FloatArray | None = None) -> FloatArray:
+    def design_gains(self, tubes: bool) -> FloatArray:
         """Return what exchanging each two rows gains in agreement with the design, shape (n, n).
 
         Parameters
@@ -106,34 +112,28 @@ class LayerState:
         tubes : bool
             The batch columns stay where they are, the group's go with the tubes; for pairs that
             :meth:`compared` leaves out it is 0.
-        rows : ndarray of shape (n_samples, m), optional
-            In place of the components.
         """
-        rows = self.components if rows is None else rows
         n = self.order.size
         if not self.design_told:
             return np.zeros((n, n))
         if not tubes:
-            return exchange_gains(rows, self.hat(), self.df)
+            return exchange_gains(self.components, self.hat(), self.df)
         first, second = np.nonzero(self.compared(True))
         places = np.column_stack([first, second])
         gains = np.zeros((n, n))
-        gains[first, second] = self.moves_gain(places, places[:, ::-1], True, rows)
+        gains[first, second] = self.moves_gain(places, places[:, ::-1], True)
         return gains + gains.T
 
-    def moves_gain(
-        self, places: IndexArray, sources: IndexArray, tubes: bool, rows: FloatArray | None = None
-    ) -> FloatArray:
+    def moves_gain(self, places: IndexArray, sources: IndexArray, tubes: bool) -> FloatArray:
         """Return what each of several rearrangements gains in agreement with the design, shape (count,)."""
-        rows = self.components if rows is None else rows
         if not self.design_told:
             return np.zeros(len(places))
         if not tubes:
-            return rearrangement_gains(rows, self.hat(), self.df, places, sources)
+            return rearrangement_gains(self.components, self.hat(), self.df, places, sources)
         n, group = self.order.size, self.layer.group
         fixed = Nuisance.of(self.layer.batch, n).basis
         columns = np.empty((n, 0)) if group is None else group
-        return relabelling_gains(rows, fixed, columns, self.df, places, sources)
+        return relabelling_gains(self.components, fixed, columns, self.df, places, sources)
 
     def compared(self, tubes: bool) -> BoolArray:
         """Return the pairs above the diagonal; for tubes those alone whose batch columns differ."""
@@ -141,12 +141,23 @@ class LayerState:
         above = np.triu(np.ones((n, n), dtype=bool), 1)
         if not tubes:
             return above
-        batch = self.layer.batch
-        if batch is None or batch.shape[1] == 0:
-            return np.zeros((n, n), dtype=bool)
-        size = np.maximum(np.abs(batch).max(axis=0), 1e-300)
-        differs = (np.abs(batch[:, None] - batch) / size > SAME_COLUMN).any(axis=2)
-        return np.asarray(above & differs)
+        return above & _differ(self.layer.batch, n)
+
+    def differ_in_group(self) -> BoolArray:
+        """Return the pairs whose group columns differ."""
+        return _differ(self.layer.group, self.order.size)
+
+    def apart(self) -> BoolArray:
+        """Return the pairs of rows that the design expects to differ in the components.
+
+        Their fitted rows lie farther apart than two residual standard deviations (Mahalanobis).
+        """
+        fitted = self.hat() @ self.components
+        residual = self.components - fitted
+        inverse = np.asarray(
+            np.linalg.pinv(residual.T @ residual / self.df, hermitian=True), dtype=np.float64
+        )
+        return np.asarray(pair_distances(fitted, inverse) > APART**2)
 
     def batch_part(self, rows: FloatArray) -> FloatArray:
         """Return what the batch columns explain of some rows, the whole design fitted."""
@@ -206,6 +217,14 @@ def layer_state(layer: SwapLayer) -> LayerState:
     scaled = centred / standard.scale
     factors = sparse_factors(standard.values, nuisance.rank)
     return LayerState(layer, scaled, nuisance, factors, _components(scaled, n - nuisance.rank), np.arange(n))
+
+
+def _differ(columns: FloatArray | None, n: int) -> BoolArray:
+    """Return the pairs of rows that differ in any of some columns."""
+    if columns is None or columns.shape[1] == 0:
+        return np.zeros((n, n), dtype=bool)
+    size = np.maximum(np.abs(columns).max(axis=0), 1e-300)
+    return np.asarray((np.abs(columns[:, None] - columns) / size > SAME_COLUMN).any(axis=2))
 
 
 def _components(values: FloatArray, df: int) -> FloatArray:

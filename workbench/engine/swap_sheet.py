@@ -8,16 +8,16 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workbench.engine.rearrangement import Rearrangement, design_gain, least_share
-from workbench.engine.swap_candidates import Candidate
+from workbench.engine.swap_candidates import SHEET, Candidate
 from workbench.engine.swap_layers import LayerState
+from workbench.engine.swap_weighing import LEAST_SHARE
 
 FloatArray = NDArray[np.float64]
 
 LEAST_EACH = 2.0
-LEAST_SHARE = 0.1
 
 
-def sheet_gains(states: Mapping[str, LayerState], rows: Mapping[str, FloatArray] | None = None) -> FloatArray:
+def sheet_gains(states: Mapping[str, LayerState]) -> FloatArray:
     """Evidence that the entries of two samples were exchanged in the sample sheet, for each two samples.
 
     The sum of what exchanging them gains in every layer's agreement with its design; minus infinity for samples
@@ -26,8 +26,6 @@ def sheet_gains(states: Mapping[str, LayerState], rows: Mapping[str, FloatArray]
     Parameters
     ----------
     states : mapping of str to LayerState
-    rows : mapping of str to ndarray, optional
-        In place of each layer's components.
 
     Returns
     -------
@@ -35,9 +33,9 @@ def sheet_gains(states: Mapping[str, LayerState], rows: Mapping[str, FloatArray]
     """
     n = 1 + max(int(state.layer.samples.max()) for state in states.values())
     total = np.zeros((n, n))
-    for name, state in states.items():
+    for state in states.values():
         own = np.full((n, n), -np.inf)
-        gains = state.design_gains(False, None if rows is None else rows[name])
+        gains = state.design_gains(False)
         gains = np.where(gains >= LEAST_EACH, gains, -np.inf)
         own[np.ix_(state.layer.samples, state.layer.samples)] = gains
         total += own
@@ -59,5 +57,5 @@ def sheet_candidates(states: Mapping[str, LayerState], bound: float) -> list[Can
         move = Rearrangement(name, np.array([a, b]), np.array([b, a]), False)
         if least_share(move, None, states) < LEAST_SHARE:
             return None
-        found.append(Candidate(move, "", 0.0, 0.0, design_gain(move, states)))
+        found.append(Candidate(move, "", 0.0, 0.0, design_gain(move, states), SHEET))
     return found

@@ -5,17 +5,19 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from functools import partial
 from itertools import combinations
 
 import numpy as np
 from numpy.typing import NDArray
 
 from workbench.engine.layer_match import LayerMatch, match_layers
-from workbench.engine.rearrangement import Rearrangement, agreement_gain, design_gain, least_share, worst_fit
-from workbench.engine.strangers import Stranger, find_strangers
-from workbench.engine.swap_bound import clean_bound
+from workbench.engine.rearrangement import Rearrangement, agreement_gain, design_gain
+from workbench.engine.strangers import Stranger, find_strangers, spoilt_samples
+from workbench.engine.swap_bound import clean_bounds
 from workbench.engine.swap_candidates import (
-    Candidate,
+    SHEET,
+    Bounds,
     LayerGains,
     cycle_candidates,
     layer_gains,
@@ -25,6 +27,7 @@ from workbench.engine.swap_cycles import Accepted, Swap, swap_cycles
 from workbench.engine.swap_evidence import swap_evidence
 from workbench.engine.swap_layers import LayerState, SwapLayer, layer_state
 from workbench.engine.swap_sheet import sheet_candidates
+from workbench.engine.swap_weighing import best_weighed, held_to_its_own
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
@@ -33,11 +36,8 @@ States = dict[str, LayerState]
 Matches = dict[frozenset[str], LayerMatch]
 
 LEVEL = 0.05
-SLACK = 4.0
-CLEAR = 15.0
-LEAST_BOUND = 5.5
-LEAST_SHARE = 0.1
-LEAST_FIT = 1e-4
+SLACK = 5.0
+CYCLE_SLACK = 3.0
 MOST_EXCHANGES = 10
 TOLD = math.log(200.0)
 
@@ -56,28 +56,20 @@ class SwapSearch:
         How each two layers agree, the swaps undone; those that cannot tell say why.
     level : float
         Family-wise rate for which the bounds are set.
-    pair_bound, cycle_bound : float
-        Evidence that an exchanged pair, and a cycle of three, have to pass.
+    bounds : Bounds
+        Evidence that an exchange has to pass.
     """
 
     swaps: tuple[Swap, ...]
     strangers: tuple[Stranger, ...]
     matches: tuple[LayerMatch, ...]
     level: float
-    pair_bound: float
-    cycle_bound: float
+    bounds: Bounds
 
     @property
     def testable(self) -> bool:
         """Whether any two layers share what is needed to see a swap."""
         return any(not match.untestable for match in self.matches)
-
-
-@dataclass(frozen=True, eq=False)
-class _Passed:
-    candidate: Candidate
-    gain: float
-    bound: float
 
 
 def find_swapped_samples(
@@ -87,18 +79,19 @@ def find_swapped_samples(
 
     Every layer is reduced to factors of its own, found without a look at the others. For each two layers the
     factors of one are predicted from the features of the other, every sample by a fit that has not seen it;
-    for each two samples the log likelihood ratio of "exchanged" to "as delivered" is taken
-    (:func:`~workbench.engine.exchange_gain.exchange_gains`), and added to it the same ratio for the layer's
-    components given its design, which catches exchanges across run days and groups and tells the layer. Where
-    every layer contradicts the design in the same two samples it is the sample sheet that has them exchanged.
+    for each two samples the log likelihood ratio of "exchanged" to "as delivered" is taken, summed over the
+    factors (:func:`~workbench.engine.exchange_gain.exchange_gains`). Of samples that the layer's design expects
+    to differ the same ratio counts for the layer's components given its design, which catches exchanges across
+    run days and groups and tells the layer. Where every layer contradicts the design in the same two samples it
+    is the sample sheet that has them exchanged.
+
     The best few pairs are looked at again: with no fit learning from the two, and with the two exchanged and
-    all refitted. The evidence is the mean of the gain at first, the gain without learning from them, and the
-    loss after. It is accepted above a bound that clean studies like this one pass with probability ``level``
-    (:func:`~workbench.engine.swap_bound.clean_bound`), at least ``LEAST_BOUND``, when every one of the samples
-    has at least ``LEAST_SHARE`` of what is mended and goes with its new row (a worse fit has a chance of
-    ``LEAST_FIT``): a row that belongs to nobody is no swap. A cycle of three has to pass
-    ``log(cycles / pairs)`` more, and ``log(1 / level)`` on top of that to be preferred to a pair. The search
-    goes on from the accepted arrangement until none passes.
+    all refitted (:mod:`~workbench.engine.swap_weighing`). The evidence is the mean of the gain at first, the gain
+    without learning from them, and the loss after. It is accepted above a bound that any exchange in clean
+    studies like this one passes with probability ``level`` (:func:`~workbench.engine.swap_bound.clean_bounds`),
+    when every one of the samples has a share of what is mended and goes with its new row: a row that belongs to
+    nobody is no swap. A cycle of three has to pass ``log(cycles / pairs)`` more, and ``log(1 / level)`` on top of
+    that to be preferred to a pair. The search goes on from the accepted arrangement until none passes.
 
     Parameters
     ----------
@@ -132,13 +125,14 @@ def find_swapped_samples(
     states = _check_layers(layers, level)
     matches = {frozenset((a, b)): match_layers(states[a], states[b]) for a, b in combinations(states, 2)}
     gains = layer_gains(states, matches)
-    bounds = _bounds(gains, clean_bound(states, matches, level, random_state))
-    accepted = _sheet_steps(states, bounds[0])
+    seed = int(np.random.default_rng(random_state).integers(2**63))
+    bounds = clean_bounds(states, matches, level, seed)
+    accepted = _sheet_steps(states, bounds.of(SHEET, 2))
     if accepted:
         matches = {key: _again(match, states) for key, match in matches.items()}
         gains = layer_gains(states, matches)
     while len(accepted) < MOST_EXCHANGES:
-        one = _best_step(states, matches, gains, bounds, level, accepted)
+        one = _best_step(states, matches, gains, bounds, level, seed, accepted)
         if one is None:
             break
         accepted.append(one)
@@ -146,9 +140,9 @@ def find_swapped_samples(
         matches = _rematched(states, matches, one.move.layer)
         gains = layer_gains(states, matches)
     swaps = swap_cycles(accepted, {name: state.layer.samples for name, state in states.items()})
-    explained = {sample for swap in swaps for sample in swap.samples}
+    explained = {sample for swap in swaps for sample in swap.samples} | spoilt_samples(states.values())
     strangers = find_strangers(list(matches.values()), explained)
-    return SwapSearch(swaps, strangers, tuple(matches.values()), level, *bounds)
+    return SwapSearch(swaps, strangers, tuple(matches.values()), level, bounds)
 
 
 def _check_layers(layers: Sequence[SwapLayer], level: float) -> States:
@@ -163,31 +157,27 @@ def _check_layers(layers: Sequence[SwapLayer], level: float) -> States:
     return {layer.name: layer_state(layer) for layer in layers}
 
 
-def _bounds(gains: list[LayerGains], pair: float) -> tuple[float, float]:
-    """Return the bounds of pairs and of cycles of three, which are more by the log of how many more there are."""
-    pairs = sum(int(one.counted.sum()) for one in gains)
-    cycles = sum(2 * math.comb(len(one.counted), 3) for one in gains)
-    pair = max(pair, LEAST_BOUND)
-    return pair, pair + math.log(max(cycles, 1) / max(pairs, 1))
-
-
 def _best_step(
     states: States,
     matches: Matches,
     gains: list[LayerGains],
-    bounds: tuple[float, float],
+    bounds: Bounds,
     level: float,
+    seed: int,
     earlier: Sequence[Accepted],
 ) -> Accepted | None:
     """Return the rearrangement that passes its bound by most; None when none does."""
-    pairs = pair_candidates(gains, bounds[0] - SLACK)
-    cycles = cycle_candidates(pairs, states, matches, bounds[1] - SLACK)
-    pair = _best(pairs, bounds[0], states, matches)
-    cycle = _best(cycles, bounds[1], states, matches)
+    pairs = pair_candidates(gains, bounds, SLACK)
+    cycles = cycle_candidates(pairs, states, matches, bounds, CYCLE_SLACK)
+    pair, cycle = (best_weighed(found, bounds, states, matches) for found in (pairs, cycles))
     # A cycle holds every pair of its three with one sample more: it has to be worth that one.
-    dearer = bounds[1] - bounds[0] - math.log(level)
+    dearer = bounds.cycle - math.log(level)
     best = cycle if cycle and (pair is None or cycle.gain >= pair.gain + dearer) else pair
-    if best is None:
+    if best is not None:
+        best = held_to_its_own(
+            best, partial(clean_bounds, states, level=level, random_state=seed), states, matches
+        )
+    if best is None or best.margin < 0.0:
         return None
     candidate = best.candidate
     layers = _likely_layers(candidate.move, states, matches)
@@ -200,7 +190,7 @@ def _best_step(
         layers,
         best.gain,
         best.bound,
-        swap_evidence(candidate, states, matches),
+        swap_evidence(candidate, states, best.without),
     )
 
 
@@ -222,46 +212,11 @@ def _sheet_steps(states: States, bound: float) -> list[Accepted]:
                     (name,),
                     one.gain,
                     bound,
-                    swap_evidence(one, states, {}),
+                    swap_evidence(one, states, None),
                 )
             )
             states[name] = one.move.done(states).settled()
     return accepted
-
-
-def _best(candidates: Sequence[Candidate], bound: float, states: States, matches: Matches) -> _Passed | None:
-    """Return the candidate with the most evidence if it passes the bound.
-
-    They come with the largest gain first; those that lie ``CLEAR`` behind one that was weighed are not weighed.
-    """
-    best: _Passed | None = None
-    for one in candidates:
-        if best is not None and best.gain > one.gain + CLEAR:
-            break
-        weighed = _Passed(one, _evidence(one, states, matches), bound)
-        if best is None or weighed.gain > best.gain:
-            best = weighed
-    return best if best is not None and best.gain >= bound else None
-
-
-def _evidence(candidate: Candidate, states: States, matches: Matches) -> float:
-    """Return the mean of the gain at first, without learning from the samples, and of the loss after.
-
-    Minus infinity where one of the samples went as well with its own row, or does not go with the new one.
-    """
-    move = candidate.move
-    after = {**states, move.layer: move.done(states)}
-    unlearnt, lost, without = candidate.gain, -design_gain(move.back(), after), None
-    if candidate.partner:
-        match = matches[frozenset((move.layer, candidate.partner))]
-        samples = set(states[move.layer].layer.samples[move.places].tolist())
-        without = match_layers(states[match.first], states[match.second], match, samples)
-        unlearnt = agreement_gain(move, without) - candidate.penalty + candidate.design_gain
-        lost -= agreement_gain(move.back(), _again(match, after)) + candidate.penalty
-    one_sided = (not move.tubes or without is not None) and least_share(move, without, states) < LEAST_SHARE
-    if one_sided or worst_fit(move, without) < LEAST_FIT:
-        return -math.inf
-    return (candidate.gain + unlearnt + lost) / 3.0
 
 
 def _again(match: LayerMatch, states: States) -> LayerMatch:
