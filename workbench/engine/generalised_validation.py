@@ -10,16 +10,16 @@ from numpy.typing import NDArray
 
 from workbench.engine.canonical import RIDGE_PATH
 from workbench.engine.fold_scores import pooled_score
-from workbench.engine.folds import Fold, Seed, balanced_folds
+from workbench.engine.folds import Seed
 from workbench.engine.generalised_components import PlacedBasis, generalised_components
 from workbench.engine.linear import thin_basis
 from workbench.engine.nuisance import fit_residuals
 from workbench.engine.sides import block_slices, block_weights
+from workbench.engine.subject_folds import make_folds
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
-Folds = Callable[[IndexArray, Seed], Sequence[Fold]]
 
 
 @dataclass(frozen=True, eq=False)
@@ -124,7 +124,7 @@ def choose_common_ridge(
     folds: int = 5,
     seed: Seed = 0,
     n_components: int = 2,
-    make_folds: Folds | None = None,
+    subjects: IndexArray | None = None,
 ) -> GeneralisedRidge:
     """Choose one multiple of the noise levels for all blocks by k-fold cross-validation.
 
@@ -133,8 +133,8 @@ def choose_common_ridge(
 
     Parameters
     ----------
-    make_folds : callable, optional
-        Folds of given samples and seed, where not :func:`balanced_folds` of the labels.
+    subjects : ndarray of int, shape (n,), optional
+        Subject of each row; all rows of one are on the same side of a split.
 
     Raises
     ------
@@ -142,7 +142,7 @@ def choose_common_ridge(
         When the folds cannot be formed or a training part of a block has no variation.
     """
     path = RIDGE_PATH.size
-    parts = _folds(np.arange(n), labels, folds, seed, make_folds)
+    parts = make_folds(labels, subjects, n, folds, seed)
     scored: list[list[FloatArray]] = []
     for train, test in parts:
         fold = _Fold.of(source(train, test), train.size, test.size)
@@ -166,7 +166,7 @@ def cross_validated_components(
     folds: int = 5,
     repeats: int = 5,
     seed: int = 0,
-    make_folds: Folds | None = None,
+    subjects: IndexArray | None = None,
     progress: Callable[[int, int], None] | None = None,
 ) -> GeneralisedValidation:
     """Out-of-sample correlations of the blocks' variates from repeated double cross-validation.
@@ -185,15 +185,15 @@ def cross_validated_components(
     choice = None
     if auto:
         choice = choose_common_ridge(
-            source, n, labels, folds=folds, seed=seed, n_components=n_components, make_folds=make_folds
+            source, n, labels, folds=folds, seed=seed, n_components=n_components, subjects=subjects
         )
     every = []
     for repeat in range(repeats):
         drawn = np.random.SeedSequence(seed, spawn_key=(repeat,))
         variates = None
-        for k, (train, test) in enumerate(_folds(np.arange(n), labels, folds, drawn, make_folds)):
+        for k, (train, test) in enumerate(make_folds(labels, subjects, n, folds, drawn)):
             inner = np.random.SeedSequence(seed, spawn_key=(repeat, k))
-            used = _inner(source, train, labels, folds, inner, n_components, make_folds) if auto else ridge
+            used = _inner(source, train, labels, folds, inner, n_components, subjects) if auto else ridge
             scores = _Fold.of(source(train, test), train.size, test.size).score(used, n_components)
             if variates is None:
                 variates = np.full((scores.shape[0], n, n_components), np.nan)
@@ -211,16 +211,10 @@ def _inner(
     folds: int,
     seed: Seed,
     n_components: int,
-    make_folds: Folds | None,
+    subjects: IndexArray | None,
 ) -> float:
     def inside(inner_train: IndexArray, inner_test: IndexArray) -> Sequence[BlockSplit]:
         return source(train[inner_train], train[inner_test])
-
-    def inner_folds(rows: IndexArray, drawn: Seed) -> Sequence[Fold]:
-        assert make_folds is not None
-        place = {row: k for k, row in enumerate(train.tolist())}
-        parts = make_folds(train[rows], drawn)
-        return [tuple(np.array([place[row] for row in part.tolist()]) for part in fold) for fold in parts]  # type: ignore[misc]
 
     return choose_common_ridge(
         inside,
@@ -229,14 +223,8 @@ def _inner(
         folds=folds,
         seed=seed,
         n_components=n_components,
-        make_folds=None if make_folds is None else inner_folds,
+        subjects=None if subjects is None else subjects[train],
     ).multiple
-
-
-def _folds(
-    rows: IndexArray, labels: NDArray[np.generic] | None, folds: int, seed: Seed, make_folds: Folds | None
-) -> Sequence[Fold]:
-    return balanced_folds(labels, rows.size, folds, seed) if make_folds is None else make_folds(rows, seed)
 
 
 @dataclass(frozen=True, eq=False)

@@ -10,8 +10,9 @@ from numpy.typing import NDArray
 
 from workbench.engine.canonical import RIDGE_PATH, RidgePair
 from workbench.engine.fold_scores import decompose_split, pooled_score, score_fold
-from workbench.engine.folds import Seed, balanced_folds
+from workbench.engine.folds import Seed
 from workbench.engine.splits import SplitSource
+from workbench.engine.subject_folds import make_folds
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
@@ -66,6 +67,7 @@ def choose_ridge(
     folds: int = 5,
     seed: Seed = 0,
     n_components: int = 2,
+    subjects: NDArray[np.intp] | None = None,
     progress: Progress | None = None,
 ) -> RidgeChoice:
     """Ridges of both sides by k-fold cross-validation and the one-standard-error rule towards more ridge.
@@ -87,6 +89,8 @@ def choose_ridge(
         Draws the folds.
     n_components : int
         Pairs that the score covers, at least 1; folds of lower rank give what they have.
+    subjects : ndarray of int, shape (n,), optional
+        Subject of each row; all rows of one are on the same side of a split.
     progress : callable, optional
         Called with folds done and folds in all.
 
@@ -110,7 +114,7 @@ def choose_ridge(
     """
     grid = RIDGE_PATH.size
     u, v = np.full((2, grid, grid, n, n_components), np.nan)
-    for done, (train, test) in enumerate(balanced_folds(labels, n, folds, seed), start=1):
+    for done, (train, test) in enumerate(make_folds(labels, subjects, n, folds, seed), start=1):
         fold = decompose_split(source(train, test))
         for i, j in np.ndindex(grid, grid):
             scores = score_fold(fold, (float(RIDGE_PATH[i]), float(RIDGE_PATH[j])), n_components)

@@ -10,9 +10,10 @@ from numpy.typing import NDArray
 
 from workbench.engine.canonical import RidgePair, check_ridge, is_auto
 from workbench.engine.fold_scores import decompose_split, pooled_score, score_fold
-from workbench.engine.folds import Seed, balanced_folds
+from workbench.engine.folds import Seed
 from workbench.engine.ridge_choice import RidgeChoice, choose_ridge
 from workbench.engine.splits import Split, SplitSource
+from workbench.engine.subject_folds import make_folds
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
@@ -63,6 +64,7 @@ def cross_validated_correlations(
     folds: int = 5,
     repeats: int = 5,
     seed: int = 0,
+    subjects: IndexArray | None = None,
     progress: Callable[[int, int], None] | None = None,
 ) -> CrossValidation:
     """Out-of-sample correlation of each canonical pair, from repeated double cross-validation.
@@ -95,6 +97,8 @@ def cross_validated_correlations(
         Of the outer loop, at least 1.
     seed : int
         Repeat ``r`` draws its folds from the seed and ``r``, so that repeats do not depend on each other.
+    subjects : ndarray of int, shape (n,), optional
+        Subject of each row; all rows of one are on the same side of every split.
     progress : callable, optional
         Called with outer folds done and outer folds in all.
 
@@ -122,13 +126,15 @@ def cross_validated_correlations(
     given = None if is_auto(ridge) else check_ridge(ridge)
     choice = None
     if given is None:
-        choice = choose_ridge(source, n, labels, folds=folds, seed=seed, n_components=n_components)
-    outer = _OuterLoop(source, labels, n_components, given, folds)
+        choice = choose_ridge(
+            source, n, labels, folds=folds, seed=seed, n_components=n_components, subjects=subjects
+        )
+    outer = _OuterLoop(source, labels, n_components, given, folds, subjects)
     u, v = np.full((2, repeats, n, n_components), np.nan)
     ridges = np.empty((repeats, folds, 2))
     for repeat in range(repeats):
         drawn = np.random.SeedSequence(seed, spawn_key=(repeat,))
-        for k, (train, test) in enumerate(balanced_folds(labels, n, folds, drawn)):
+        for k, (train, test) in enumerate(make_folds(labels, subjects, n, folds, drawn)):
             inner = np.random.SeedSequence(seed, spawn_key=(repeat, k))
             ridges[repeat, k] = outer.score(train, test, inner, u[repeat], v[repeat])
             if progress is not None:
@@ -144,6 +150,7 @@ class _OuterLoop:
     n_components: int
     given: RidgePair | None
     folds: int
+    subjects: IndexArray | None = None
 
     def score(
         self, train: IndexArray, test: IndexArray, seed: Seed, u: FloatArray, v: FloatArray
@@ -162,7 +169,13 @@ class _OuterLoop:
 
         labels = None if self.labels is None else self.labels[train]
         choice = choose_ridge(
-            inside, train.size, labels, folds=self.folds, seed=seed, n_components=self.n_components
+            inside,
+            train.size,
+            labels,
+            folds=self.folds,
+            seed=seed,
+            n_components=self.n_components,
+            subjects=None if self.subjects is None else self.subjects[train],
         )
         return choice.multiples
 
