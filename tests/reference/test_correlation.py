@@ -108,3 +108,23 @@ def test_group_effects_equal_the_joint_fit_of_statsmodels(groups: int) -> None:
         if groups == 2:
             assert_allclose(effects.p[feature], fit.pvalues[-1], rtol=1e-9)
     assert effects.df == 24 - 2 - groups
+
+
+@pytest.mark.parametrize("correlation", ["pearson", "spearman"])
+def test_every_p_and_q_of_a_whole_screen_equals_statsmodels_whatever_the_tile(correlation) -> None:
+    x, y = _blocks(24, 300, 200, 40, seed=3)
+    nuisance = np.random.default_rng(4).normal(size=(24, 2))
+    e, f = (stats.rankdata(side, axis=0) if correlation == "spearman" else side for side in (x, y))
+    # Frisch & Waugh 1933: the regression on residuals has the coefficient and residual of the whole one.
+    design = np.column_stack([np.ones(24), nuisance])
+    e, f = (side - design @ np.linalg.lstsq(design, side, rcond=None)[0] for side in (e, f))
+    r = (e.T @ f) / np.sqrt((e**2).sum(axis=0)[:, None] * (f**2).sum(axis=0))
+    p = 2 * stats.t.sf(np.abs(r) * np.sqrt(20 / (1 - r**2)), 24 - 3 - 1)
+    q = multipletests(p.ravel(), method="fdr_bh")[1].reshape(p.shape)
+    for limits in (Limits(), Limits(outer=37, inner=11, expected=100)):
+        screen = screen_pairs(x, y, nuisance=nuisance, correlation=correlation, limits=limits)
+        found = screen.lookup(*np.indices(p.shape))
+        assert_allclose(found.p, p, rtol=1e-10)
+        edges = np.argwhere(q <= 0.05)
+        assert set(zip(screen.i.tolist(), screen.j.tolist(), strict=True)) == set(map(tuple, edges.tolist()))
+        assert_allclose(screen.q, q[screen.i, screen.j], rtol=1e-10)

@@ -281,12 +281,12 @@ class DifferenceTiles(PairTiles):
         super().release()
         self.other.release()
 
-    def tiles(self) -> Iterator[tuple[int, int, NDArray[Any]]]:
+    def tiles(self, part: int = 0, parts: int = 1) -> Iterator[tuple[int, int, NDArray[Any]]]:
         """First outer and inner feature of each tile, with the sizes of its entries."""
         outer, inner = self._sides()
         across = (self.other.x, self.other.y) if outer is self.x else (self.other.y, self.other.x)
         high, wide = self.limits.outer, self.limits.inner
-        for a in range(0, outer.n_features, high):
+        for a in range(part * high, outer.n_features, parts * high):
             top = min(a + high, outer.n_features)
             for b in range(0, inner.n_features, wide):
                 stop = min(b + wide, inner.n_features)

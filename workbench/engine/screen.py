@@ -10,6 +10,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
+from threading import Lock
 from typing import Literal
 
 import numpy as np
@@ -364,12 +365,13 @@ def pair_tiles(pair: BlockPair, correlation: str, limits: Limits) -> PairTiles:
 def _count_progress(tiles: Sequence[PairTiles], progress: Progress) -> None:
     """Report every tile; passes beyond the first raise the number planned by another pass."""
     once = sum(pair.n_tiles for pair in tiles)
-    done = 0
+    done, turn = 0, Lock()
 
     def tick() -> None:
         nonlocal done
-        done += 1
-        progress(done, once * -(-done // once))
+        with turn:
+            done += 1
+            progress(done, once * -(-done // once))
 
     for pair in tiles:
         pair.tick = tick

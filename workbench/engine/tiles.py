@@ -22,6 +22,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from workbench.engine.tails import critical_r, log_p_value
 from workbench.engine.unit_rows import FloatArray, IndexArray, UnitRows
+from workbench.engine.workers import share_out
 
 #: Above this many samples the margin of single precision is too wide and tiles are double precision.
 SINGLE_PRECISION_SAMPLES = 4096
@@ -123,6 +124,11 @@ class PairTiles:
         r: FloatArray = np.einsum("kn,kn->k", self.x.rows_at(i), self.y.rows_at(j))
         return r
 
+    @property
+    def n_shares(self) -> int:
+        """Shares into which the tiles of one pass can be divided."""
+        return -(-self._sides()[0].n_features // self.limits.outer)
+
     def damping(self, i: IndexArray, j: IndexArray) -> FloatArray:
         """Factor by which the correlations of pairs are damped in tiles; 1 where nothing is."""
         factor = np.ones(i.size)
@@ -148,14 +154,17 @@ class PairTiles:
         """Outer and inner side: the larger one is outer, so that what is not held is made once a pass."""
         return (self.x, self.y) if self.x.n_bytes >= self.y.n_bytes else (self.y, self.x)
 
-    def tiles(self) -> Iterator[tuple[int, int, NDArray[Any]]]:
-        """First outer and inner feature of each tile, with its |r|; the array is overwritten by the next."""
+    def tiles(self, part: int = 0, parts: int = 1) -> Iterator[tuple[int, int, NDArray[Any]]]:
+        """First outer and inner feature of each tile, with its |r|; the array is overwritten by the next.
+
+        Of ``parts`` shares of the tiles, which several threads may walk at once, the one numbered ``part``.
+        """
         outer, inner = self._sides()
         kind = np.float32 if self.single else np.float64
         wide, high = self.limits.inner, self.limits.outer
         room = np.empty(min(high, outer.n_features) * min(wide, inner.n_features), dtype=kind)
         kept = inner.held.astype(kind) if inner.held is not None else None
-        for a in range(0, outer.n_features, high):
+        for a in range(part * high, outer.n_features, parts * high):
             left = outer.rows(a, min(a + high, outer.n_features)).astype(kind)
             for b in range(0, inner.n_features, wide):
                 stop = min(b + wide, inner.n_features)
@@ -208,21 +217,31 @@ class Caught:
 
 def scan(pair: PairTiles, bands: Sequence[Band]) -> list[Caught]:
     """Collect and count the pairs of two blocks in bands of |r|, in one pass over the tiles."""
-    nets = [_Net(pair, band) for band in bands]
-    for a, b, tile in pair.tiles():
-        for net in nets:
-            net.draw(a, b, tile)
-    return [net.caught() for net in nets]
+
+    def draw(part: int, parts: int) -> list[_Net]:
+        nets = [_Net(pair, band) for band in bands]
+        for a, b, tile in pair.tiles(part, parts):
+            for net in nets:
+                net.draw(a, b, tile)
+        return nets
+
+    shares = share_out(draw, pair.n_shares)
+    return [_Net.caught([nets[k] for nets in shares]) for k in range(len(bands))]
 
 
 def tail_histogram(pair: PairTiles) -> IndexArray:
     """Numbers of testable pairs with a tile entry ``|r| >= k / STEPS``, for k from 0 to ``STEPS + 1``."""
-    counts = np.zeros(STEPS + 2, dtype=np.int64)
-    for _, _, tile in pair.tiles():
-        flat, kind = tile.reshape(-1), tile.dtype.type
-        for start in range(0, flat.size, _CHUNK):
-            sizes = np.minimum(flat[start : start + _CHUNK], kind(1.0 + 1.0 / STEPS))
-            counts += np.bincount((sizes * kind(STEPS)).astype(np.intp), minlength=STEPS + 2)
+
+    def count(part: int, parts: int) -> IndexArray:
+        counts = np.zeros(STEPS + 2, dtype=np.int64)
+        for _, _, tile in pair.tiles(part, parts):
+            flat, kind = tile.reshape(-1), tile.dtype.type
+            for start in range(0, flat.size, _CHUNK):
+                sizes = np.minimum(flat[start : start + _CHUNK], kind(1.0 + 1.0 / STEPS))
+                counts += np.bincount((sizes * kind(STEPS)).astype(np.intp), minlength=STEPS + 2)
+        return counts
+
+    counts = np.sum(share_out(count, pair.n_shares), axis=0)
     counts[0] -= pair.pairs - pair.tests
     tails: IndexArray = np.cumsum(counts[::-1])[::-1]
     return tails
@@ -272,12 +291,16 @@ class _Net:
         self._keys.append(self._pair.keys(a, b, place, tile.shape[1]))
         self._sizes.append(tile.reshape(-1)[place])
 
-    def caught(self) -> Caught:
-        """Everything drawn, or the counts alone when it was too much."""
-        if not self._keys or self._inside > self._band.most:
-            too_many = self._inside > self._band.most
-            return Caught(np.empty(0, dtype=np.int64), np.empty(0), self._above, too_many)
-        return Caught(np.concatenate(self._keys), np.concatenate(self._sizes), self._above, False)
+    @staticmethod
+    def caught(nets: Sequence[_Net]) -> Caught:
+        """Everything drawn by the nets of one band, or the counts alone when it was too much."""
+        above, inside = sum(net._above for net in nets), sum(net._inside for net in nets)
+        keys = [part for net in nets for part in net._keys]
+        sizes = [part for net in nets for part in net._sizes]
+        if not keys or inside > nets[0]._band.most:
+            too_many = inside > nets[0]._band.most
+            return Caught(np.empty(0, dtype=np.int64), np.empty(0), above, too_many)
+        return Caught(np.concatenate(keys), np.concatenate(sizes), above, False)
 
 
 def _batch_numbers(pair: PairTiles) -> int:
