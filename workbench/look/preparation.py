@@ -13,6 +13,7 @@ from workbench.errors import InputError
 from workbench.look.gaps import QUANTILES
 from workbench.look.view import BlockView, Levels
 from workbench.prepare import DriftEffect, StepAccount
+from workbench.prepare.local_lines import medians
 
 FloatArray = NDArray[np.float64]
 
@@ -159,7 +160,7 @@ def _deviations(logs: FloatArray) -> FloatArray:
     """Return quantiles, over the features that a sample has, of its deviations from the features' medians."""
     held = ~np.isnan(logs).all(axis=0)
     logs = logs[:, held]
-    deviations = logs - np.nanmedian(logs, axis=0) if logs.size else logs
+    deviations = logs - medians(logs) if logs.size else logs
     rows = [row[~np.isnan(row)] for row in deviations]
     return np.array(
         [np.quantile(row, QUANTILES) if row.size else np.full(len(QUANTILES), np.nan) for row in rows]
