@@ -68,7 +68,11 @@ def test_clusters_and_the_backbone_are_counted() -> None:
     found = summarise(build_network(edges, features, attributes=ATTRIBUTES, seed=1))
     assert (found.clustered, found.clusters) == (5, 2)
     assert "5 features fall into 2 clusters of near-duplicates" in " ".join(found.sentences())
-    assert found.sentences()[-1].startswith(f"Backbone: {found.backbone} edge")
+    assert found.sentences()[-1].startswith("Backbone: no edge stands out")
+    heavy = edges.assign(r=[0.95 if i == j else 0.05 for i in range(8) for j in range(8)])
+    sparse = summarise(build_network(heavy, features, attributes=ATTRIBUTES, seed=1))
+    assert sparse.backbone == 8
+    assert sparse.sentences()[-1].startswith("Backbone: 8 edges with backbone_p at most 0.05 carry")
 
 
 def test_stability_of_communities_is_told() -> None:

@@ -93,7 +93,7 @@ def test_each_question_is_answered_by_its_figure() -> None:
         "among the strongest in 80 % of half-samples": {"stability": 0.5},
         "holds without any one sample": {"r_without_one": 0.5},
         "holds on ranks": {"r_spearman": -0.8},
-        "measured, not filled in": {"imputed_share": 0.3, "r_observed": 0.2},
+        "holds without filled-in values": {"imputed_share": 0.3, "r_observed": 0.2},
         "holds within groups": {"basis": "group"},
         "passes by its own test": {"support": "module"},
         "known link or shared set": {"known": ""},
@@ -147,7 +147,7 @@ def test_one_community_does_not_fill_the_list() -> None:
 def test_what_to_check_first_names_the_weak_group_and_the_identity() -> None:
     told = check_first(candidate(groups=groups(0.8, 0.1)))
     assert told[0].startswith("it is weaker or reversed in drought (0.10 on 20 samples)")
-    assert "label m1: its identity against a standard" in told
+    assert "what label m1 is, against a standard" in told
     assert told[-1] == "the scatter (workbench show), then a targeted assay on new samples"
 
 

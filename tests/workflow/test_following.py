@@ -6,6 +6,7 @@ import shutil
 import socket
 from pathlib import Path
 
+import numpy as np
 import pandas as pd
 import pytest
 from simulated import simulate
@@ -201,3 +202,30 @@ def test_settings_keep_their_comments() -> None:
     again = with_knowledge(changed, ["main"], {"sets": "source/b.tsv", "links": "source/c.tsv"})
     assert again.count("[analyses.main.pathways]") == 1
     assert "source/a.tsv" not in again
+
+
+def test_a_network_without_edges_is_followed_to_empty_tables(tmp_path: Path) -> None:
+    """Noise of 12 samples: every file is there, with its header, and the message says so."""
+    from workflow.test_comparing import project_of
+
+    random = np.random.default_rng(3)
+    made = {
+        name: pd.DataFrame(
+            random.normal(size=(12, 8)),
+            index=pd.Index([f"S{k}" for k in range(12)], name="sample"),
+            columns=[f"{name[0]}{k}" for k in range(8)],
+        )
+        for name in ("rna", "lcms")
+    }
+    project = project_of(tmp_path / "noise", made)
+    sets, links = tmp_path / "sets.gmt", tmp_path / "links.tsv"
+    sets.write_text("P1\tone\tr0\tr1\tr2\tl0\tl1\tl2\nP2\ttwo\tr3\tr4\tr5\n")
+    links.write_text("source\ttarget\nr0\tl0\n")
+    add_knowledge(project.paths, (), sets, links)
+    heard = Heard()
+    folder = follow(project, heard)
+    for file in ("followup", "pathways", "edge_correlations"):
+        assert len(read_table(folder / f"{file}.tsv")) == 0
+    assert read_table(folder / "known_links.tsv")["edge"].tolist() == [False]
+    assert read_table(folder / "coherence.tsv")["edges"].tolist() == [0]
+    assert any("no edges, so that there is nothing to follow" in line for line in heard.lines)

@@ -26,6 +26,8 @@ MOST_SHOWN = 24
 NAME = 34
 SMALLEST_TEXT = 6.0
 LIMIT = 0.05
+SMALLEST_P = 1e-12
+"""Smaller p's are drawn as this, so that those of permuted samples keep their room."""
 
 
 def draw_pathways(table: pd.DataFrame) -> tuple[Drawing, ...]:
@@ -55,7 +57,7 @@ def leading_sets(table: pd.DataFrame, axes: Axes) -> Axes:
     shown = table.head(MOST_SHOWN).reset_index(drop=True)
     places = np.arange(len(shown))[::-1]
     for column, mark, colour in (("p", "o", COLOURS[0]), ("p_permutation", "s", COLOURS[1])):
-        x = -np.log10(np.maximum(shown[column].to_numpy(dtype=float), 1e-30))
+        x = -np.log10(np.maximum(shown[column].to_numpy(dtype=float), SMALLEST_P))
         for holds in (True, False):
             mine = shown["holds"].to_numpy(dtype=bool) == holds
             face = colour if holds else "none"
@@ -77,7 +79,7 @@ def leading_sets(table: pd.DataFrame, axes: Axes) -> Axes:
     axes.set_xlim(0.0, right)
     axes.set_ylim(-0.7, max(len(shown), 3) - 0.3)
     axes.tick_params(axis="y", length=0.0)
-    axes.set_xlabel("-log10 p")
+    axes.set_xlabel("-log10 p (12: 12 or more)")
     _legend(axes)
     return axes
 

@@ -14,7 +14,7 @@ from workbench.network.keys import Key
 SHARE_KEPT = 0.5
 """Share of the edges that a resample keeps: as much is taken away as half of the samples would be."""
 
-MOST_EDGES = 400_000
+MOST_EDGES = 200_000
 """Edges that all resamples may hold together; large networks are resampled fewer times, and 10 at least."""
 
 FEWEST = 10
@@ -58,7 +58,7 @@ def community_stability(
     graph : networkx.Graph
         With ``community`` of its nodes.
     resamples : int
-        Number of draws that keep half of the edges; fewer where they would hold more than 400,000 edges together.
+        Number of draws that keep half of the edges; fewer where they would hold more than 200,000 edges together.
     seed : int
         Of the draws, and of the communities.
     halves : sequence of edge lists, optional

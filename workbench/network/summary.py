@@ -16,6 +16,9 @@ from workbench.network.stability import STABLE, UNSTABLE
 DENSE = 4.0
 """Edges a feature from which on a network is hard to read whole, and its backbone is told."""
 
+FEWEST_RATED = 6
+"""Features under which the stability of a community says little: a star of four stays together whatever is drawn."""
+
 LONGEST_NAME = 60
 """Characters of a name that are shown; the rest is cut."""
 
@@ -110,7 +113,9 @@ class NetworkSummary:
                 f"{_count(self.clustered, 'feature')} {_verb(self.clustered, 'fall')} into "
                 f"{_count(self.clusters, 'cluster')} of near-duplicates; one of each says what the others say."
             )
-        if self.mean_degree >= DENSE:
+        if self.mean_degree >= DENSE and not self.backbone:
+            yield f"Backbone: no edge stands out among its features' edges (backbone_p over {BACKBONE_LEVEL:g})."
+        elif self.mean_degree >= DENSE:
             yield (
                 f"Backbone: {_count(self.backbone, 'edge')} with backbone_p at most {BACKBONE_LEVEL:g} "
                 f"{_verb(self.backbone, 'carry')} more of their features' weight than chance would."
@@ -305,7 +310,7 @@ def _community_sentences(communities: Iterable[Community], shown: int) -> list[s
 
 def _stability(one: Community) -> str:
     """Return how stable a community is, in words."""
-    if one.stability is None:
+    if one.stability is None or one.features < FEWEST_RATED:
         return ""
     word = "stable" if one.stability >= STABLE else "doubtful" if one.stability >= UNSTABLE else "unstable"
     return f"; {word} ({one.stability:.2f} of resamples)"

@@ -15,7 +15,7 @@ IndexArray = NDArray[np.intp]
 Progress = Callable[[int, int], None]
 
 PERMUTATIONS = 999
-PAIR_BUDGET = 400_000_000
+PAIR_BUDGET = 1_200_000_000
 """Correlations that all permutations of two blocks may take together; fewer permutations for larger blocks."""
 
 FEWEST_PERMUTATIONS = 39

@@ -29,10 +29,10 @@ FOLLOWUP_COLUMNS = (
 )
 
 _CLOSER_LOOK = {
-    "metabolites": "its identity against a standard",
-    "lipids": "its identity against a standard",
-    "microbes": "its species",
-    "proteins": "that its peptides belong to it alone",
+    "metabolites": "what {} is, against a standard",
+    "lipids": "what {} is, against a standard",
+    "microbes": "the species of {}",
+    "proteins": "that the peptides of {} belong to it alone",
 }
 
 
@@ -121,7 +121,7 @@ def judgements(fdr: float, informed: bool) -> dict[str, Callable[[Candidate], bo
         f"among the strongest in {100 * STABLE:.0f} % of half-samples": stable,
         "holds without any one sample": lambda one: one.remains("r_without_one"),
         "holds on ranks": lambda one: one.remains("r_spearman"),
-        "measured, not filled in": measured,
+        "holds without filled-in values": measured,
         "holds within groups": within,
         "holds in every group": everywhere,
         "passes by its own test": own_test,
@@ -308,7 +308,7 @@ def check_first(one: Candidate) -> list[str]:
     for feature in (one.source, one.target):
         told = _CLOSER_LOOK.get(str(feature.get("layer")))
         if told:
-            found.append(f"{feature.get('label') or feature['feature']}: {told}")
+            found.append(told.format(feature.get("label") or feature["feature"]))
         if str(feature.get("cluster") or "") not in ("", "nan"):
             found.append(
                 f"which of its near-duplicates is meant by {feature.get('label') or feature['feature']}"
