@@ -39,6 +39,10 @@ def test_a_group_of_two_samples_is_a_warning_and_one_group_alone_an_error():
     sheet = sheet_of(study)
     sheet["group"] = ["treated"] * 2 + ["control"] * 22
     assert "unbalanced_groups-group" in ids(check_design(checked(study, sheet=sheet, adjust=())), "warning")
+    four = checked(study, sheet=sheet.iloc[[0, 1, 2, 3]], adjust=(), own={})
+    told = next(finding for finding in check_design(four) if finding.check == "small_groups")
+    assert (told.severity, "control 2, treated 2" in told.what) == ("warning", True)
+    assert "unequal" not in told.what
     sheet["group"] = "control"
     assert "one_group-group" in ids(check_design(checked(study, sheet=sheet, adjust=())), "error")
 
@@ -68,7 +72,40 @@ def test_too_few_degrees_of_freedom_are_an_error():
     )
     (error,) = [finding for finding in found if finding.severity == "error"]
     assert error.check == "degrees_of_freedom"
-    assert "leave 1 degrees of freedom" in error.what
+    assert (
+        "less 6 for mean, nuisance and group leave 1 degree of freedom for a correlation, and 3 are"
+        in error.what
+    )
+    assert (
+        error.todo
+        == "take columns out of adjust that matter little, or add samples: with this design 10 at least"
+    )
+    assert not error.acceptable
+
+
+def test_a_design_without_nuisance_is_not_told_to_take_columns_out():
+    study = small_study(n=6)
+    sheet = sheet_of(study).iloc[:4]
+    sheet["group"] = ["a", "b", "a", "b"]
+    own = {"transcripts": [], "metabolites": []}
+    found = check_design(checked(study, sheet=sheet, own=own, adjust=()))
+    (error,) = [finding for finding in found if finding.severity == "error"]
+    assert (
+        "4 samples of blocks 'transcripts' and 'metabolites' less 2 for mean and group leave 1 degree"
+        in error.what
+    )
+    assert error.todo == "add samples: with this design 6 at least"
+
+
+def test_samples_that_the_design_fits_are_not_to_be_left_out_where_none_would_stay():
+    study = small_study(n=6)
+    sheet = sheet_of(study)
+    sheet["group"], sheet["run_day"] = ["a", "b"] * 3, ["p", "p", "q", "q", "r", "r"]
+    own = {"transcripts": [], "metabolites": []}
+    found = check_design(checked(study, sheet=sheet, own=own, adjust=(), group=("group", "run_day")))
+    (error,) = [finding for finding in found if finding.severity == "error"]
+    assert "less 6 for mean and group leave no degree of freedom" in error.what
+    assert not any("exclude" in finding.todo for finding in found)
 
 
 def test_a_column_of_subjects_that_is_not_named_is_a_warning():
@@ -135,3 +172,6 @@ def test_nuisance_columns_that_cannot_be_read_are_told_as_the_reader_tells_them(
     (error,) = [finding for finding in found if finding.severity == "error"]
     assert error.id == "unread_design-metabolites"
     assert "a level of its own for each of 24 samples" in error.what
+    sheet["run_day"] = sheet["barcode"]
+    found = check_design(checked(study, sheet=sheet, own={"transcripts": [], "metabolites": []}))
+    assert [(finding.id, finding.block) for finding in found] == [("unread_design", "")]

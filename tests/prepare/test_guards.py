@@ -111,3 +111,21 @@ def test_samples_and_features_that_are_mostly_filled_in_are_told() -> None:
     assert_allclose(rows["S003"], result.imputed[3].mean())
     assert "more than 30 % of the values filled in, not measured, in 'S003'" in result.cautions
     assert (columns["F5"] > 0.5) == any("'F5'" in caution for caution in result.cautions)
+
+
+def test_a_group_without_spread_is_compared_without_a_warning() -> None:
+    """Four samples, two of a group: shares of filled-in values that are equal but for rounding."""
+    values = np.arange(20.0).reshape(4, 5)
+    scale = np.array([0.1 + 0.2, 0.3, 0.8, 0.9])
+    prepared = PreparedTable(
+        values=values,
+        imputed=np.zeros((4, 5), dtype=bool),
+        samples=("a", "b", "c", "d"),
+        features=tuple("vwxyz"),
+        account=(),
+        origins=tuple("vwxyz"),
+        scale=scale,
+    )
+    found, imputed = group_differences(prepared, np.array([0, 0, 1, 1]))
+    assert 0.0 < found.p < 0.1
+    assert imputed.p == 1.0

@@ -16,6 +16,7 @@ from workbench.checks.identifiers import check_identifiers
 from workbench.checks.kinds import check_kinds
 from workbench.checks.outlying import outlying_samples
 from workbench.checks.personal import personal_data
+from workbench.checks.rare_levels import rare_levels
 from workbench.checks.run_quality import check_runs
 from workbench.checks.swapped import swapped_samples
 from workbench.checks.tangled import check_design
@@ -34,6 +35,7 @@ CHECKS: tuple[Check, ...] = (
     swapped_samples,
     unnamed_batches,
     check_runs,
+    rare_levels,
     personal_data,
 )
 

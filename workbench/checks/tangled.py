@@ -12,7 +12,7 @@ from scipy.stats import t as student
 
 from workbench.checks.data import CheckedBlock, StudyData, shared_rows
 from workbench.checks.evidence import CrossTable
-from workbench.checks.finding import Finding, accept_line, adjust_line, exclude_line, finding_id
+from workbench.checks.finding import Finding, Severity, accept_line, adjust_line, exclude_line, finding_id
 from workbench.checks.sheet_columns import SheetColumn, read_column, unused_columns
 from workbench.checks.words import number_of, percent, some
 from workbench.engine.nuisance import Nuisance, aliased
@@ -35,7 +35,8 @@ ONE_PAIR, MANY_PAIRS = 0.05, 1e-6
 class Unit:
     """Samples that are analysed together, with the design that is taken from them.
 
-    ``block`` is "" for the study, else the block that the design belongs to; ``words`` names the blocks.
+    ``block`` is "" for the study, else the block that the design belongs to; ``words`` names the blocks;
+    ``unread`` says that the design could not be read, which is a finding of its own.
     """
 
     block: str
@@ -48,6 +49,7 @@ class Unit:
     group_codes: NDArray[np.intp]
     group_levels: tuple[str, ...]
     factors: str
+    unread: bool = False
 
     @property
     def group(self) -> FloatArray:
@@ -105,17 +107,20 @@ def _unit(data: StudyData, one: CheckedBlock, other: CheckedBlock, alone: bool) 
         group_codes=one.group_codes[rows],
         group_levels=one.group_levels,
         factors="+".join(data.settings.samples.group),
+        unread=bool(one.design_fault or other.design_fault),
     )
 
 
 def _of_unit(data: StudyData, unit: Unit) -> list[Finding]:
-    if len(unit.samples) < 2:
+    if len(unit.samples) < 2 or unit.unread:
         return []
     found = _aliased(data, unit)
     if unit.group_levels:
         found += _sizes(unit)
-    if not found or all(finding.severity != "error" for finding in found):
-        found += (_nearly(unit) if unit.group_levels else []) + _freedom(unit) + _without_room(unit)
+    if all(finding.severity != "error" for finding in found):
+        freedom = _freedom(unit)
+        found += (_nearly(unit) if unit.group_levels else []) + freedom
+        found += _without_room(unit) if freedom[0].severity != "error" else []
     return found
 
 
@@ -127,12 +132,14 @@ def _aliased(data: StudyData, unit: Unit) -> list[Finding]:
     for name in aliased(both, [*unit.nuisance_names, *group]):
         column = unit.factors if name.endswith(" (group)") else name.split("=")[0]
         culprits = _culprits(unit, column)
+        do = "does not tell" if len(culprits) == 1 else "do not tell together"
         what = (
-            f"column '{column}' tells nothing that {some(culprits)} does not tell on the {len(unit.samples)} samples "
+            f"column '{column}' tells nothing that {some(culprits)} {do} on the {len(unit.samples)} samples "
             f"of {unit.words}: their effects cannot be told apart, and the analysis stops"
         )
+        which = f"'{culprits[0]}'" if len(culprits) == 1 else f"one of them, such as '{culprits[0]}',"
         todo = (
-            f"take '{culprits[0]}' out of adjust ({_without(data, culprits[0])}), which leaves its effect in that of "
+            f"take {which} out of adjust ({_without(data, culprits[0])}), which leaves its effect in that of "
             f"'{column}'; no analysis can part the two"
         )
         table = _table(unit, culprits[0]) if column == unit.factors else None
@@ -197,13 +204,17 @@ def _sizes(unit: Unit) -> list[Finding]:
     smallest, largest = int(sizes.min()), int(sizes.max())
     if smallest >= SMALLEST_GROUP and largest < UNEQUAL * smallest:
         return []
-    severity = "warning" if smallest < SMALLEST_GROUP else "note"
-    what = f"groups of unequal size among the {len(unit.samples)} samples of {unit.words}: {told}"
+    severity: Severity = "warning" if smallest < SMALLEST_GROUP else "note"
+    check = "unbalanced_groups" if largest >= UNEQUAL * smallest else "small_groups"
+    which = "groups of very unequal size" if check == "unbalanced_groups" else "groups of few samples"
+    what = f"{which} among the {len(unit.samples)} samples of {unit.words}: {told}"
     todo = (
-        "what is told of the smallest group rests on these samples alone; join groups where that makes sense"
+        "what is told of a small group rests on its few samples alone; add samples, or join groups where that makes "
+        "sense"
     )
-    identity = finding_id("unbalanced_groups", unit.block, unit.factors)
-    return [Finding(identity, "unbalanced_groups", severity, unit.block, what, (), (), todo)]  # type: ignore[arg-type]
+    return [
+        Finding(finding_id(check, unit.block, unit.factors), check, severity, unit.block, what, (), (), todo)
+    ]
 
 
 def _nearly(unit: Unit) -> list[Finding]:
@@ -230,17 +241,38 @@ def _freedom(unit: Unit) -> list[Finding]:
     n = len(unit.samples)
     rank = Nuisance.of(np.hstack([unit.nuisance, unit.group]), n).rank
     freedom = n - rank - 1
-    what = f"{n} samples of {unit.words} less {rank} for mean, nuisance and group leave {freedom} degrees of freedom"
+    parts = ["mean", *(["nuisance"] if unit.adjust else []), *(["group"] if unit.group_levels else [])]
+    left = counted(freedom, "degree") + " of freedom" if freedom > 0 else "no degree of freedom"
+    what = f"{n} samples of {unit.words} less {rank} for {_joined(parts)} leave {left} for a correlation"
     if freedom >= LEAST_FREEDOM:
         one, many = smallest_r(freedom, ONE_PAIR), smallest_r(freedom, MANY_PAIRS)
         what += (
-            f" for a correlation: one pair alone passes from |r| {one:.2f} on (p {ONE_PAIR}), one among a million "
-            f"from |r| {many:.2f} on (p {MANY_PAIRS:.0e})"
+            f": one pair alone passes from |r| {_as_r(one)} on (p {ONE_PAIR}), one among a million "
+            f"from |r| {_as_r(many)} on (p {MANY_PAIRS:.0e})"
         )
-    severity = "error" if freedom < LEAST_FREEDOM else "warning" if freedom < LITTLE_FREEDOM else "note"
-    todo = "" if severity == "note" else "take columns out of adjust that matter little, or add samples"
+    else:
+        what += f", and {LEAST_FREEDOM} are the least"
+    severity: Severity = (
+        "error" if freedom < LEAST_FREEDOM else "warning" if freedom < LITTLE_FREEDOM else "note"
+    )
+    less = "take columns out of adjust that matter little, or " if unit.adjust else ""
+    wanted = rank + 1 + (LEAST_FREEDOM if severity == "error" else LITTLE_FREEDOM)
+    todo = "" if severity == "note" else f"{less}add samples: with this design {wanted} at least"
     identity = finding_id("degrees_of_freedom", unit.block, *unit.adjust)
-    return [Finding(identity, "degrees_of_freedom", severity, unit.block, what, (), (), todo)]  # type: ignore[arg-type]
+    usable = severity != "error"
+    return [
+        Finding(identity, "degrees_of_freedom", severity, unit.block, what, (), (), todo, acceptable=usable)
+    ]
+
+
+def _joined(words: list[str]) -> str:
+    return words[0] if len(words) == 1 else f"{', '.join(words[:-1])} and {words[-1]}"
+
+
+def _as_r(value: float) -> str:
+    """Return a correlation with two digits, with as many nines as it takes near 1."""
+    digits = next(digits for digits in range(2, 16) if digits == 15 or round(value, digits) < 1.0)
+    return f"{value:.{digits}f}"
 
 
 def smallest_r(freedom: int, p: float) -> float:
@@ -331,17 +363,24 @@ def _subjects(data: StudyData) -> list[Finding]:
 
 
 def _unread(data: StudyData) -> list[Finding]:
-    """Pass on why the nuisance columns of a block could not be read."""
+    """Pass on why the nuisance columns of a block could not be read; once, where it is the same for all blocks."""
+    faults = {block.design_fault for block in data.blocks.values()}
+    if len(faults) == 1 and len(data.blocks) > 1:
+        named = [("", "the samples are", fault) for fault in faults if fault]
+    else:
+        named = [
+            (block.name, f"block '{block.name}' is", block.design_fault) for block in data.blocks.values()
+        ]
     return [
         Finding(
-            finding_id("unread_design", block.name),
+            finding_id("unread_design", name),
             "unread_design",
             "error",
-            block.name,
-            f"the columns that block '{block.name}' is adjusted for cannot be used: {block.design_fault}",
+            name,
+            f"the columns that {words} adjusted for cannot be used: {fault}",
             todo="mend the sample sheet or the settings as the message says",
             acceptable=False,
         )
-        for block in data.blocks.values()
-        if block.design_fault
+        for name, words, fault in named
+        if fault
     ]

@@ -24,6 +24,7 @@ FAR_APART_FOLD = 1.5
 FAR_APART_SHARE = 0.1
 MOST = 0.5
 CHANGED_SDS = 0.5
+ROUNDING = 1e-12
 
 
 @dataclass(frozen=True)
@@ -207,10 +208,13 @@ def _difference(figure: str, values: Matrix, codes: NDArray[np.int_], changed: f
 def _p_of(parts: list[Matrix], difference: float) -> float:
     if len(parts) < 2 or min(len(part) for part in parts) < 2:
         return float("nan")
-    if max(float(np.ptp(part)) for part in parts) == 0.0:
-        return 0.0 if difference else 1.0
+    noise = ROUNDING * max(1.0, *(float(np.abs(part).max()) for part in parts))
+    if max(float(np.ptp(part)) for part in parts) <= noise:
+        return 0.0 if difference > noise else 1.0
     if len(parts) == 2:
-        return float(stats.ttest_ind(*parts, equal_var=False).pvalue)
+        # From means and deviations: on a group without spread the test of the values warns of lost precision.
+        one, two = ((float(part.mean()), float(part.std(ddof=1)), len(part)) for part in parts)
+        return float(stats.ttest_ind_from_stats(*one, *two, equal_var=False).pvalue)
     return float(stats.f_oneway(*parts).pvalue)
 
 
