@@ -63,6 +63,14 @@ def known(**changes: object) -> tuple[Block, Block]:
     return readings("first", 1500, 40, 5, **changes), readings("second", 250, 12, 3, **changes)
 
 
+def small() -> tuple[Block, Block]:
+    """Return narrow blocks whose modules are about as strong as the one private factor of each."""
+    return (
+        transcripts(features=120, module_size=15, private_factors=1),
+        metabolites(features=40, module_size=6, private_factors=1),
+    )
+
+
 def dense(one: int, other: int, first: float, second: float) -> tuple[Block, Block]:
     """Return two blocks with modules of ``one`` and ``other`` features under private factors of those strengths."""
     return (
@@ -83,6 +91,7 @@ NOTHING = {
         (24, 48, 96, 200),
         lambda n: Family(Design(n=n, modules=0, blocks=two(private_strength=2.0))),
     ),
+    "nothing-small-30": Family(Design(n=30, modules=0, blocks=small(), run_days=2)),
     "nothing-private-30": Family(
         Design(n=30, modules=0, run_days=1, blocks=two(private_strength=2.0, drift=0.0))
     ),
@@ -120,6 +129,7 @@ NOTHING = {
     ),
 }
 
+MIDDLE = (28, 30, 36)
 POOR = replace(proteins(), module_size=0)
 SOMETHING = {
     "modules-1.0-96": Family(Design(n=96, strength=1.0)),
@@ -129,6 +139,7 @@ SOMETHING = {
     "modules-3.0-12": Family(Design(n=12, strength=3.0)),
     "modules-0.7-200": Family(Design(n=200, strength=0.7)),
     "modules-1.0-200": Family(Design(n=200, strength=1.0)),
+    **_sizes("modules-1.8", MIDDLE, lambda n: Family(Design(n=n, strength=1.8))),
     "quiet-1.2-48": Family(Design(n=48, strength=1.2, blocks=quiet())),
     "private-1.4-96": Family(Design(n=96, strength=1.4, blocks=two(private_strength=2.0))),
     "group-1.2-60": Family(Design(n=60, strength=1.2, blocks=two(group_effect=2.0, group_share=0.5))),
@@ -158,6 +169,13 @@ SOMETHING = {
     "dense-equal-200": Family(Design(n=200, strength=0.5, modules=2, blocks=dense(500, 80, 0.6, 0.6))),
     "dense-mixed-200": Family(Design(n=200, strength=0.6, modules=2, blocks=dense(300, 12, 0.6, 1.0))),
     "dense-strong-96": Family(Design(n=96, strength=1.5, modules=2, blocks=dense(500, 80, 1.0, 1.0))),
+    **_sizes(
+        "small-2.5",
+        (24, 30, 40, 60),
+        lambda n: Family(Design(n=n, blocks=small(), modules=2, strength=2.5, run_days=2)),
+    ),
+    "small-1.5-40": Family(Design(n=40, blocks=small(), modules=2, strength=1.5, run_days=2)),
+    "small-1.0-96": Family(Design(n=96, blocks=small(), modules=2, strength=1.0, run_days=2)),
     "intervals-1.2-48": Family(Design(n=48, strength=1.2, blocks=known())),
     "intervals-0.9-96": Family(Design(n=96, strength=0.9, blocks=known())),
 }

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.stats import rankdata
 
-from workbench.engine.far_values import pull_in
+from workbench.engine.far_values import withstand
 from workbench.engine.linear import thin_basis
 from workbench.engine.nuisance import CONSTANT_TOLERANCE, Nuisance
 from workbench.engine.scree import parallel_analysis
@@ -19,6 +19,8 @@ IndexArray = NDArray[np.intp]
 
 #: Fewer dimensions left by the nuisance than this cannot tell components from noise.
 FEWEST_DIMENSIONS = 20
+MOST_TURNS = 200
+TURN_TOLERANCE = 1e-7
 
 
 @dataclass(frozen=True, eq=False)
@@ -28,11 +30,11 @@ class BlockComponents:
     Attributes
     ----------
     z : ndarray of shape (n_samples, n_kept)
-        Residuals of the nuisance, far values pulled in, every column of unit length.
+        Residuals of the nuisance, heavy tails withstood, every column of unit length.
     kept : ndarray of int, shape (n_kept,)
         Features that vary and have no gap.
     scores : ndarray of shape (n_samples, n_components)
-        Orthonormal scores of the real components, strongest first.
+        Orthonormal scores of the real components, turned to be simple, strongest first.
     shares : ndarray of shape (n_components,)
         Share of the block's variance, after the nuisance, of each.
     dimensions : int
@@ -53,10 +55,13 @@ class BlockComponents:
 
 
 def block_components(values: FloatArray, nuisance: Nuisance, *, ranks: bool, seed: int) -> BlockComponents:
-    """Real components of a block after its nuisance, by the rule of ``signal_components``.
+    """Real components of a block after its nuisance, by the rule of ``signal_components``, turned to be simple.
 
-    With fewer features than samples the number is held to parallel analysis. No component is real where the
-    nuisance leaves fewer than ``FEWEST_DIMENSIONS`` dimensions.
+    Principal components of about equal strength are arbitrary mixtures of the factors behind them, and a
+    mixture of a shared and a private one can neither be removed nor tested. Turned by varimax each goes with
+    as few features as can be, which only looks at the block itself. With fewer features than samples the
+    number is held to parallel analysis. No component is real where the nuisance leaves fewer than
+    ``FEWEST_DIMENSIONS`` dimensions.
 
     Parameters
     ----------
@@ -77,15 +82,46 @@ def block_components(values: FloatArray, nuisance: Nuisance, *, ranks: bool, see
     if p < n:
         eigenvalues = basis.lengths**2 / (n - 1)
         scores = scores[:, : parallel_analysis(z, eigenvalues, random_state=seed).number]
-    scores = np.linalg.qr(nuisance.residuals(scores))[0] if scores.shape[1] else scores
+    if not scores.shape[1]:
+        return nothing
+    scores = np.linalg.qr(nuisance.residuals(scores))[0]
+    scores = scores @ varimax(z.T @ scores)
     shares = np.sum((z.T @ scores) ** 2, axis=0) / p
-    return BlockComponents(z, kept, scores, shares, n - nuisance.rank)
+    order = np.argsort(-shares, kind="stable")
+    return BlockComponents(z, kept, scores[:, order], shares[order], n - nuisance.rank)
+
+
+def varimax(loadings: FloatArray) -> FloatArray:
+    """Rotation that makes the squared loadings as unequal as can be, shape (k, k).
+
+    References
+    ----------
+    Kaiser 1958, Psychometrika 23:187.
+
+    Examples
+    --------
+    >>> simple = np.repeat(np.eye(2), 5, axis=0)
+    >>> mixed = simple @ np.array([[0.6, -0.8], [0.8, 0.6]])
+    >>> turned = np.abs(mixed @ varimax(mixed))
+    >>> np.allclose(np.sort(turned, axis=1), np.sort(simple, axis=1), atol=1e-3)
+    True
+    """
+    rotation, reached = np.eye(loadings.shape[1]), 0.0
+    for _ in range(MOST_TURNS):
+        turned = loadings @ rotation
+        slope = loadings.T @ (turned**3 - turned * np.mean(turned**2, axis=0))
+        left, size, right = np.linalg.svd(slope)
+        rotation = left @ right
+        if size.sum() <= reached * (1.0 + TURN_TOLERANCE):
+            break
+        reached = float(size.sum())
+    return rotation
 
 
 def unit_residuals(
     values: FloatArray, nuisance: Nuisance, *, ranks: bool = False
 ) -> tuple[FloatArray, IndexArray]:
-    """Residuals of the nuisance with far values pulled in, columns of unit length; and which features they are.
+    """Residuals of the nuisance with heavy tails withstood, columns of unit length; and which features they are.
 
     Features with a gap, and those without variance left, are left out.
     """
@@ -100,6 +136,6 @@ def unit_residuals(
     if not varies.all():
         rest, finite = rest[:, varies], finite[varies]
     if not ranks:
-        rest = nuisance.residuals(pull_in(rest, nuisance.n_samples - nuisance.rank))
+        rest = nuisance.residuals(withstand(rest, nuisance.n_samples - nuisance.rank))
     length = np.linalg.norm(rest, axis=0)
     return rest / np.where(length > 0.0, length, 1.0), finite

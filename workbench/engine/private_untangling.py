@@ -12,6 +12,7 @@ FloatArray = NDArray[np.float64]
 ROUNDS = 30
 NORMAL_MAD = 1.4826
 CUT = 2.0
+EFFICIENCY = 1.25
 DENSE = 2.5
 COMPARABLE = 0.3
 
@@ -26,10 +27,13 @@ class Admixture:
     spread : ndarray of shape (n_staying,)
         Typical size, in units of noise, of what features have of a staying component beyond the admixture:
         about 1 where it reaches few features, well above 1 where it reaches most of them.
+    variance : ndarray of shape (n_staying, n_removed)
+        Sampling variance of the coefficients.
     """
 
     coefficients: FloatArray
     spread: FloatArray
+    variance: FloatArray
 
 
 def admixture(z: FloatArray, removed: FloatArray, staying: FloatArray, dimensions: int) -> Admixture:
@@ -56,9 +60,11 @@ def admixture(z: FloatArray, removed: FloatArray, staying: FloatArray, dimension
     noise = np.sqrt(rest / dimensions)
     coefficients = np.zeros((staying.shape[1], removed.shape[1]))
     spread = np.zeros(staying.shape[1])
+    own = own / noise[:, None]
     for k, loadings in enumerate(others.T):
-        coefficients[k], spread[k] = _robust(own / noise[:, None], loadings / noise)
-    return Admixture(coefficients, spread)
+        coefficients[k], spread[k] = _robust(own, loadings / noise)
+    each = EFFICIENCY * np.diag(np.linalg.pinv(own.T @ own))
+    return Admixture(coefficients, spread, np.outer(np.maximum(spread, 1.0) ** 2, each))
 
 
 def entangled(found: Admixture, removed_shares: FloatArray, staying_shares: FloatArray) -> NDArray[np.bool_]:

@@ -23,7 +23,7 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.engine.far_values import pull_in
+from workbench.engine.far_values import withstand
 from workbench.engine.nuisance import CONSTANT_TOLERANCE, Nuisance
 from workbench.engine.private_components import (
     FEWEST_DIMENSIONS,
@@ -122,7 +122,7 @@ class PrivateScreen:
         For each pair of blocks the reason why nothing was removed; empty where removal was on.
     cleaned : tuple of (ndarray, ndarray)
         For each pair of blocks both blocks' values on the samples that they share, as they were tested:
-        nuisance and private variation removed and far values pulled in (Spearman: the values as they came).
+        nuisance and private variation removed and heavy tails withstood (Spearman: the values as they came).
     """
 
     screen: BlockScreen
@@ -135,6 +135,46 @@ class PrivateScreen:
     def removed(self) -> tuple[tuple[RealComponent, ...], ...]:
         """For each block the components that were removed."""
         return tuple(tuple(one for one in block if one.removed) for block in self.components)
+
+
+@dataclass(frozen=True, eq=False)
+class CleanedPairs:
+    """Pairs of blocks as they are tested once private variation is removed; fields as in ``PrivateScreen``."""
+
+    pairs: tuple[BlockPair, ...]
+    components: tuple[tuple[RealComponent, ...], ...]
+    off: tuple[str, ...]
+
+
+def pairs_without_private(
+    blocks: Sequence[LayerBlock],
+    pairs: Sequence[tuple[int, int]],
+    *,
+    correlation: Correlation = "pearson",
+    seed: int = 0,
+) -> CleanedPairs:
+    """Pairs of blocks ready for a screen, each block's private variation removed from it.
+
+    Parameters
+    ----------
+    blocks, pairs, correlation, seed
+        As for :func:`screen_without_private`.
+
+    Raises
+    ------
+    NumericsError
+        When shapes, values or places do not allow it.
+    """
+    ranks = correlation == "spearman"
+    found = tuple(_own_components(block, ranks, seed) for block in blocks)
+    views = tuple(_shared_rows(blocks[a], blocks[b]) for a, b in pairs)
+    judged = _judge(blocks, found, views, pairs)
+    off = tuple(_reason(view, blocks[a], blocks[b]) for view, (a, b) in zip(views, pairs, strict=True))
+    tested = tuple(
+        _pair(blocks, judged, view, pair, bool(reason), ranks)
+        for view, pair, reason in zip(views, pairs, off, strict=True)
+    )
+    return CleanedPairs(tested, tuple(one.components for one in judged), off)
 
 
 def screen_without_private(
@@ -165,25 +205,17 @@ def screen_without_private(
     NumericsError
         When shapes, values or places do not allow the screen.
     """
-    ranks = correlation == "spearman"
-    found = tuple(_own_components(block, ranks, seed) for block in blocks)
-    views = tuple(_shared_rows(blocks[a], blocks[b]) for a, b in pairs)
-    components = _judge(blocks, found, views, pairs)
-    off = tuple(_reason(view, blocks[a], blocks[b]) for view, (a, b) in zip(views, pairs, strict=True))
-    tested = tuple(
-        _pair(blocks, components, view, pair, bool(reason), ranks)
-        for view, pair, reason in zip(views, pairs, off, strict=True)
-    )
+    made = pairs_without_private(blocks, pairs, correlation=correlation, seed=seed)
     screen = screen_blocks(
-        tested,
+        made.pairs,
         fdr=fdr,
         correlation=correlation,
         minimum_r=minimum_r,
         maximum_edges=maximum_edges,
         progress=progress,
     )
-    cleaned = tuple((np.asarray(pair.x), np.asarray(pair.y)) for pair in tested)
-    return PrivateScreen(screen, np.full(screen.n_edges, "pair"), components, off, cleaned)
+    cleaned = tuple((np.asarray(pair.x), np.asarray(pair.y)) for pair in made.pairs)
+    return PrivateScreen(screen, np.full(screen.n_edges, "pair"), made.components, made.off, cleaned)
 
 
 @dataclass(frozen=True, eq=False)
@@ -227,7 +259,7 @@ def _judge(
     found: Sequence[BlockComponents],
     views: Sequence[_View],
     pairs: Sequence[tuple[int, int]],
-) -> tuple[tuple[RealComponent, ...], ...]:
+) -> tuple[_Judged, ...]:
     """Tell each block's shared components from its private ones."""
     tests: list[dict[int, FloatArray]] = [{} for _ in blocks]
     for view, (a, b) in zip(views, pairs, strict=True):
@@ -235,7 +267,10 @@ def _judge(
             tests[own][other] = retention_p(
                 found[own].scores[rows], found[other].z[others], found[other].scores[others], view.nuisance
             )
-    return tuple(_freed(own, _described(blocks, own, by)) for own, by in zip(found, tests, strict=True))
+    return tuple(
+        _freed(own, _described(blocks, own, by), block.values.shape[1])
+        for block, own, by in zip(blocks, found, tests, strict=True)
+    )
 
 
 def _described(
@@ -269,30 +304,53 @@ def _stays(shared: bool, weak: bool) -> Stays:
     return "shared" if shared else "weak" if weak else ""
 
 
-def _freed(own: BlockComponents, told: tuple[RealComponent, ...]) -> tuple[RealComponent, ...]:
+@dataclass(frozen=True, eq=False)
+class _Judged:
+    """A block's components, and the variance that removal leaves each feature along a shared component."""
+
+    components: tuple[RealComponent, ...]
+    trace: FloatArray
+
+
+def _freed(own: BlockComponents, told: tuple[RealComponent, ...], n_features: int) -> _Judged:
     """Keep what cannot be told from a shared component; free what is removed of what stays."""
+    trace = np.zeros(n_features)
     removed = np.array([one.removed for one in told], dtype=bool)
     shared = np.array([bool(one.shared_with) for one in told], dtype=bool)
     if removed.any() and shared.any():
         net = own.shares - 1.0 / own.dimensions
         mixed = admixture(own.z, own.scores[:, removed], own.scores[:, shared], own.dimensions)
-        keep = np.flatnonzero(removed)[entangled(mixed, net[removed], net[shared])]
+        places = np.flatnonzero(removed)
+        keep = places[entangled(mixed, net[removed], net[shared])]
         told = tuple(replace(one, stays="entangled") if k in keep else one for k, one in enumerate(told))
         removed[keep] = False
+        trace[own.kept] = _trace(own, removed, mixed.variance[:, ~np.isin(places, keep)])
     if not removed.any() or removed.all():
-        return told
+        return _Judged(told, trace)
     mixed = admixture(own.z, own.scores[:, removed], own.scores[:, ~removed], own.dimensions)
     factors = own.scores[:, removed] + own.scores[:, ~removed] @ mixed.coefficients
     factors /= np.linalg.norm(factors, axis=0)
     place = np.cumsum(removed) - 1
-    return tuple(
+    told = tuple(
         replace(one, scores=factors[:, place[k]]) if removed[k] else one for k, one in enumerate(told)
     )
+    return _Judged(told, trace)
+
+
+def _trace(own: BlockComponents, removed: NDArray[np.bool_], variance: FloatArray) -> FloatArray:
+    """Return the variance that the error of the admixture leaves in each feature along a shared component.
+
+    A feature with loading b on what is removed keeps b times the error, in units of its residual length.
+    """
+    squares = own.loadings**2
+    left = np.maximum(1.0 - squares[:, removed].sum(axis=1), 1e-2)
+    trace: FloatArray = np.max(squares[:, removed] @ variance.T, axis=1, initial=0.0) / left
+    return trace
 
 
 def _pair(
     blocks: Sequence[LayerBlock],
-    components: Sequence[Sequence[RealComponent]],
+    judged: Sequence[_Judged],
     view: _View,
     pair: tuple[int, int],
     off: bool,
@@ -301,13 +359,15 @@ def _pair(
     """Return the two blocks on the samples that they share, with what is removed from each."""
     sides = []
     for place, rows in zip(pair, (view.x_rows, view.y_rows), strict=True):
-        taken = [one.scores[rows] for one in components[place] if one.removed and not off]
+        taken = [one.scores[rows] for one in judged[place].components if one.removed and not off]
         own = Nuisance.of(np.column_stack([view.columns, *taken]), rows.size)
         values = blocks[place].values[rows]
-        sides.append((values if ranks else _cleaned(values, own), own))
-    (x, x_own), (y, y_own) = sides
+        freedom = rows.size - view.nuisance.rank
+        damping = 1.0 / np.sqrt(1.0 + freedom * judged[place].trace * (not off))
+        sides.append((values if ranks else _cleaned(values, own), own, damping))
+    (x, x_own, x_damping), (y, y_own, y_damping) = sides
     name = f"{blocks[pair[0]].name} x {blocks[pair[1]].name}"
-    return BlockPair(name, x, y, view.nuisance, x_own, y_own)
+    return BlockPair(name, x, y, view.nuisance, x_own, y_own, (x_damping, y_damping))
 
 
 def _cleaned(values: FloatArray, own: Nuisance) -> FloatArray:
@@ -315,4 +375,4 @@ def _cleaned(values: FloatArray, own: Nuisance) -> FloatArray:
     rest = own.residuals(values)
     constant = np.linalg.norm(rest, axis=0) <= CONSTANT_TOLERANCE * np.linalg.norm(values, axis=0)
     rest[:, constant] = 0.0
-    return pull_in(rest, own.n_samples - own.rank)
+    return withstand(rest, own.n_samples - own.rank)
