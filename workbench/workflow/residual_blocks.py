@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from scipy.stats import rankdata
 
 from workbench.engine import Nuisance
-from workbench.engine.far_values import pull_in
+from workbench.engine.far_values import withstand
 from workbench.engine.repeated import subject_space
 from workbench.pathways import residual_space, unit_columns
 from workbench.workflow.analysis_view import AnalysisView, Shared, view_analysis
@@ -92,7 +92,7 @@ class ResidualViews:
         scores = self.private.get(name)
         if scores is not None:
             own = Nuisance.of(np.column_stack([columns, scores.loc[list(shared.samples)]]), shared.n)
-            x = pull_in(own.residuals(x), own.n_samples - own.rank)
+            x = withstand(own.residuals(x), own.n_samples - own.rank)
         if self.view.settings.network.correlation == "spearman":
             x = np.asarray(rankdata(x, axis=0), dtype=np.float64)
         return x
