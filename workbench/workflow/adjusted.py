@@ -10,7 +10,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from workbench.engine import Nuisance
-from workbench.engine.far_values import pull_in
+from workbench.engine.far_values import withstand
 from workbench.intake import Groups
 from workbench.workflow.analysis_view import AnalysisView, Shared
 from workbench.workflow.screening import design_columns_of
@@ -109,11 +109,11 @@ def pair_values(
 
 
 def _left(x: FloatArray, columns: FloatArray, private: pd.DataFrame | None, shared: Shared) -> FloatArray:
-    """Return what the screen tested of one feature: residuals, far values pulled in where private variation went."""
+    """Return what the screen tested of one feature: residuals, heavy tails taken off where private variation went."""
     if private is None:
         return Nuisance.of(columns, shared.n).residuals(x[:, None])[:, 0]
     own = Nuisance.of(np.column_stack([columns, private.loc[list(shared.samples)]]), shared.n)
-    return pull_in(own.residuals(x[:, None]), own.n_samples - own.rank)[:, 0]
+    return withstand(own.residuals(x[:, None]), own.n_samples - own.rank)[:, 0]
 
 
 def _column(
