@@ -28,6 +28,7 @@ from workbench.engine.nuisance import (
     fit_residuals,
     standardise,
 )
+from workbench.engine.odd_rows import SteadyRows, steady_rows
 from workbench.engine.panel_selection import PANEL_CAUTION, Panel, PanelSearch, select_panel
 from workbench.engine.performance_measures import (
     ClassPerformance,
@@ -104,6 +105,7 @@ __all__ = [
     "Split",
     "SplitSource",
     "Standardised",
+    "SteadyRows",
     "Strongest",
     "SubjectDesign",
     "SubjectSpace",
@@ -142,6 +144,7 @@ __all__ = [
     "smallest_correlation",
     "standard_split",
     "standardise",
+    "steady_rows",
     "strongest_pairs",
     "subject_labels",
     "subject_means",
