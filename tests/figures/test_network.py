@@ -190,3 +190,11 @@ def test_equal_networks_give_equal_bytes() -> None:
     for ending in ("svg", "png"):
         first, second = (figure_bytes(draw_network(network(30, 14, 6))[0], ending) for _ in range(2))
         assert first == second
+
+
+def test_a_part_of_a_network_is_drawn_by_name() -> None:
+    graph = NETWORKS["2000"]
+    part = graph.edge_subgraph(sorted(graph.edges)[:30])
+    (drawing,) = draw_network(part, name="followup", what="The short list")
+    assert drawing.name == "followup"
+    assert drawing.caption.startswith("The short list by community and layer: ")

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import shutil
 from pathlib import Path
 
 import numpy as np
@@ -137,15 +138,15 @@ def test_a_study_against_itself_shows_no_change(halves: dict[str, Project]) -> N
 
 
 def test_a_copied_project_is_known_by_its_values(halves: dict[str, Project], tmp_path: Path) -> None:
-    """The same samples under the same names in another folder: nothing is tested; with other values it is."""
-    copy = project_of(tmp_path / "copy", tables(1, prefix="A"))
+    """The same samples under the same names in another folder: the correlations are not independent."""
+    copy = Project.open(shutil.copytree(halves["first"].paths.root, tmp_path / "copy"))
     found, _ = run_compare(None, (str(halves["first"].paths.root), str(copy.paths.root)), None)
     assert set(found.pairs["changed"]) == {"not tested"}
     assert set(found.pairs["why"]) == {"samples in both"}
 
 
 def test_settings_that_differ_are_listed(halves: dict[str, Project], tmp_path: Path) -> None:
-    other = project_of(tmp_path / "other", tables(2, prefix="B"))
+    other = Project.open(shutil.copytree(halves["second"].paths.root, tmp_path / "other"))
     settings = tmp_path / "other" / "project.toml"
     settings.write_text(settings.read_text().replace("stability = 0", "stability = 0\nfdr = 0.01"))
     other.network()

@@ -72,7 +72,7 @@ class Panel:
         return self.head + ROW * (self.rows + (1 if self.left_out else 0)) + GAP
 
 
-def draw_network(graph: nx.Graph) -> tuple[Drawing, ...]:
+def draw_network(graph: nx.Graph, *, name: str = "network", what: str = "The network") -> tuple[Drawing, ...]:
     """Return the picture of a network: by name up to 150 features, as communities beyond; nothing without edges.
 
     Sign and strength of an edge show without colour: dashed below zero, wider the stronger.
@@ -80,13 +80,17 @@ def draw_network(graph: nx.Graph) -> tuple[Drawing, ...]:
     Parameters
     ----------
     graph : networkx.Graph
-        As :func:`~workbench.network.builder.build_network` makes it.
+        As :func:`~workbench.network.builder.build_network` makes it, or a part of such a network.
+    name : str
+        Of the drawing.
+    what : str
+        What is drawn, as the first words of the caption.
     """
     if not graph.number_of_edges():
         return ()
     with figure_style():
         if len(graph) > MOST_DRAWN:
-            return (Drawing("network", draw_bubbles(graph), bubble_caption(graph)),)
+            return (Drawing(name, draw_bubbles(graph), bubble_caption(graph)),)
         panels = [
             _panel(graph, number)
             for number in sorted(set(nx.get_node_attributes(graph, "community").values()))
@@ -96,7 +100,7 @@ def draw_network(graph: nx.Graph) -> tuple[Drawing, ...]:
         for panel, corner in placed:
             _draw_panel(axes, graph, panel, corner)
         _legend(axes, graph, height)
-        return (Drawing("network", figure, _caption(graph, placed, unplaced)),)
+        return (Drawing(name, figure, _caption(what, graph, placed, unplaced)),)
 
 
 def _panel(graph: nx.Graph, number: int) -> Panel:
@@ -222,14 +226,16 @@ def _legend(axes: Axes, graph: nx.Graph, height: float) -> None:
         text.set_color(INK)
 
 
-def _caption(graph: nx.Graph, placed: Sequence[tuple[Panel, Place]], unplaced: Sequence[Panel]) -> str:
+def _caption(
+    what: str, graph: nx.Graph, placed: Sequence[tuple[Panel, Place]], unplaced: Sequence[Panel]
+) -> str:
     shown = {node for panel, _ in placed for node in (*panel.left, *panel.right)}
     drawn = sum(
         graph.nodes[first]["community"] == graph.nodes[second]["community"]
         for first, second in graph.subgraph(shown).edges
     )
     text = (
-        f"The network by community and layer: {len(shown)} of {len(graph)} features and {drawn} of "
+        f"{what} by community and layer: {len(shown)} of {len(graph)} features and {drawn} of "
         f"{graph.number_of_edges()} edges. Marks: layers. Lines: edges, wider and darker the larger |r|, dashed where "
         "r is below zero. Features are ordered so that few lines cross; their height means nothing else."
     )

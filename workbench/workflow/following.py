@@ -6,11 +6,12 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
+import networkx as nx
 import pandas as pd
 
 from workbench.figures import Drawing
 from workbench.figures.edge_matrix import draw_edge_matrix
-from workbench.figures.network import draw_network
+from workbench.figures.network import MOST_DRAWN, draw_network
 from workbench.figures.pathways import draw_pathways
 from workbench.network import read_graphml
 from workbench.pathways import (
@@ -123,8 +124,21 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
         )
     listed = follow_up(view, features, edges, informed=sets is not None or links is not None)
     change.write_bytes(f"{folder}/followup.tsv", table_bytes(listed))
+    drawings += _draw_listed(graph, listed)
     reporter.say(f"  {followed_sentence(len(listed), len(edges))}")
     return write_drawings(change, f"{folder}/figures", tuple(drawings), CAPTIONS)
+
+
+def _draw_listed(graph: nx.Graph, listed: pd.DataFrame) -> tuple[Drawing, ...]:
+    """Return the picture of the short list by name, where the network is too large to be drawn so."""
+    if len(graph) <= MOST_DRAWN:
+        return ()
+    ends = zip(
+        zip(listed["source_block"], listed["source"], strict=True),
+        zip(listed["target_block"], listed["target"], strict=True),
+        strict=True,
+    )
+    return draw_network(graph.edge_subgraph(ends), name="followup", what="The short list (followup.tsv)")
 
 
 def read_features(path: Path) -> pd.DataFrame:
