@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+from contextlib import nullcontext
 from pathlib import Path
+from unittest import mock
 
 import numpy as np
 import pandas as pd
@@ -85,15 +87,16 @@ def set_analysis(project: Project, lines: str) -> None:
     project.paths.settings.write_text(f"{before}{mark}{lines}\n{quick}# end\n{rest}")
 
 
-def integrate(project: Project) -> list[str]:
-    """Run the supervised stage with what it needs; return the sentences it says."""
-    told = Told()
-    run_stages(
-        project.paths,
-        "integrate",
-        lambda state: [*plan.block_stages(state), supervised_stage(state, "main")],
-        told,
-    )
+def integrate(project: Project, *, figures: bool = False) -> list[str]:
+    """Run the supervised stage with what it needs, without drawing unless asked; return the sentences it says."""
+    told, pages = Told(), "workbench.figures.supervised_pages.draw_supervised"
+    with nullcontext() if figures else mock.patch(pages, return_value=()):
+        run_stages(
+            project.paths,
+            "integrate",
+            lambda state: [*plan.block_stages(state), supervised_stage(state, "main")],
+            told,
+        )
     return told.lines
 
 

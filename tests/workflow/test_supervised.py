@@ -15,7 +15,7 @@ from workbench.workflow.supervised import implied_by_super_scores, super_score_c
 def classes(tmp_path_factory):
     """Return a project with two classes, integrated once, and what it said; only read."""
     project = cohort(tmp_path_factory.mktemp("classes") / "A", 1)
-    return project, integrate(project)
+    return project, integrate(project, figures=True)
 
 
 def value(project, model, measure):
