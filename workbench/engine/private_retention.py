@@ -10,24 +10,30 @@ from workbench.engine.nuisance import Nuisance
 
 FloatArray = NDArray[np.float64]
 
-#: Chance with which a private component of ``TYPICAL_SHARE`` of its block's variance passes for a shared one.
-RETENTION_LEVEL = 0.001
-TYPICAL_SHARE = 0.1
-#: The same chance at most, for a weak component.
-MOST_LENIENT = 0.1
+#: Level at which a component counts as shared that takes no more than a direction of pure noise.
+RETENTION_LEVEL = 0.1
 
 
-def retention_levels(shares: FloatArray) -> FloatArray:
-    """Level at which each component counts as shared: stricter for strong ones, as ``1 / share^2``.
+def retention_levels(shares: FloatArray, dimensions: int) -> FloatArray:
+    """Level at which each component counts as shared: ``0.1 / w^2``, at most 0.1.
 
-    Keeping a weak private component buries little, losing a shared one costs all its edges.
+    ``w`` is the component's share in units of a direction's share of pure noise, ``1 / dimensions``. Keeping
+    a weak private component buries little, and losing a shared one costs all its edges; a strong component in
+    many samples shows clearly what it goes with.
+
+    Parameters
+    ----------
+    shares : ndarray
+        Of the block's variance.
+    dimensions : int
+        What the nuisance leaves of the samples' dimensions.
 
     Examples
     --------
-    >>> retention_levels(np.array([0.2, 0.1, 0.02, 0.001])).round(5)
-    array([0.00025, 0.001  , 0.025  , 0.1    ])
+    >>> retention_levels(np.array([0.2, 0.1, 0.05, 0.01]), 100)
+    array([0.00025, 0.001  , 0.004  , 0.1    ])
     """
-    levels: FloatArray = np.minimum(RETENTION_LEVEL * (TYPICAL_SHARE / shares) ** 2, MOST_LENIENT)
+    levels: FloatArray = RETENTION_LEVEL / np.maximum(shares * dimensions, 1.0) ** 2
     return levels
 
 

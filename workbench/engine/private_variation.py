@@ -278,7 +278,7 @@ def _described(
 ) -> tuple[RealComponent, ...]:
     others = list(tests)
     loadings = own.loadings
-    levels = retention_levels(own.shares)
+    levels = retention_levels(own.shares, own.dimensions)
     described = []
     for k in range(own.shares.size):
         p = np.array([tests[other][k] for other in others])
