@@ -2,6 +2,21 @@
 
 ``python tests/benchmarks/odd_samples.py [--studies 100] [--samples 48]``. ``pearson`` as it is, ``scores`` normal
 scores for features of heavy tails, ``rows`` odd samples shrunk, ``both``; all on 400 x 100 features.
+
+Measured, 50 studies each, seeds 0 to 49, nominal 5 %; studies with any edge where nothing is shared:
+
+| n | family | pearson | scores | rows | both |
+|---|---|---|---|---|---|
+| 24 | one odd sample | 1.00 | 0.22 | 0.12 (150 studies: 0.05) | 0.12 |
+| 24 | two odd samples | 1.00 | 0.46 | 0.16 (150 studies: 0.10) | 0.16 |
+| 48 | one, two odd samples | 1.00, 1.00 | 0.22, 0.28 | 0.08, 0.06 | 0.08, 0.08 |
+| 96 | one, two odd samples | 1.00, 1.00 | 0.22, 0.24 | 0.08, 0.04 | 0.08, 0.04 |
+| 48 | t3 tails | 1.00 | 0.04 | 1.00 | 0.04 |
+
+Modules, realised rate and recall, n = 48: one odd sample 0.50, 0.87 (pearson), 0.09, 0.85 (scores), 0.05, 0.92 (rows
+and both); no odd sample 0.05, 0.92 whatever is done; t3 tails 0.12, 0.91 (pearson, rows), 0.05, 0.96 (scores, both).
+An edge that must hold without its most influential sample (12 studies, n = 48): still 1.00 of null studies with one
+odd sample, and recall 0.82 instead of 0.92 where no sample is odd.
 """
 
 from __future__ import annotations
