@@ -162,7 +162,7 @@ def _without_private(
     view: AnalysisView, shared: Sequence[Shared], within: bool, reporter: Reporter, label: str
 ) -> Screen:
     settings, names = view.settings.network, list(view.blocks)
-    blocks = [_layer_block(view, name, within) for name in names]
+    blocks = [layer_block(view, name, within) for name in names]
     places = [(names.index(first), names.index(second)) for first, second in view.pairs]
     with reporter.progress(label) as progress:
         result = screen_without_private(
@@ -192,7 +192,7 @@ def _freedom(pairs: Sequence[BlockPair]) -> tuple[int, ...]:
     )
 
 
-def _layer_block(view: AnalysisView, name: str, within: bool) -> LayerBlock:
+def layer_block(view: AnalysisView, name: str, within: bool) -> LayerBlock:
     """Return a block on the samples with a known design, with its own nuisance (and the group)."""
     block, own = view.blocks[name], view.shared((name,))
     place = {str(sample): row for row, sample in enumerate(view.sheet.index)}

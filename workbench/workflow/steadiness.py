@@ -2,16 +2,27 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
+from workbench.engine import Nuisance
+from workbench.engine.private_variation import LayerBlock, pairs_without_private
 from workbench.engine.repeated import Level
-from workbench.engine.stability import HalfScreen, StrongestOf, pair_stability
+from workbench.engine.screen import BlockPair, Correlation
+from workbench.engine.stability import (
+    LEAST_FREEDOM,
+    SMALLEST_HALF,
+    HalfScreen,
+    StrongestOf,
+    pair_stability,
+)
+from workbench.engine.strongest import strongest_pairs
 from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.reporting import Reporter
-from workbench.workflow.screening import Screens
+from workbench.workflow.screening import Screens, layer_block
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
@@ -49,7 +60,7 @@ def edge_stability(view: AnalysisView, screens: Screens, reporter: Reporter) -> 
             _labels(view, samples, view.factors),
             _labels(view, samples, list(filter(None, [view.study.samples.subject]))),
             halves,
-            _strongest(screens, rows, level),
+            _strongest(view, screens, samples, rows, level),
             edges,
             held=held,
             level=level,
@@ -67,8 +78,12 @@ def _labels(view: AnalysisView, samples: list[str], columns: list[str]) -> NDArr
     return np.array(["\x1f".join(row) for row in cells.itertuples(index=False)])
 
 
-def _strongest(screens: Screens, rows: list[IndexArray], level: Level | None) -> StrongestOf:
+def _strongest(
+    view: AnalysisView, screens: Screens, samples: list[str], rows: list[IndexArray], level: Level | None
+) -> StrongestOf:
     chosen = screens.chosen
+    if view.settings.network.remove_private and not chosen.repeated:
+        return HalfCleaned.of(view, samples, within=screens.within is chosen)
     designs = [one.subjects for one in screens.shared if one.subjects is not None]
     return HalfScreen(
         chosen.pairs,
@@ -77,6 +92,67 @@ def _strongest(screens: Screens, rows: list[IndexArray], level: Level | None) ->
         designs=designs if chosen.repeated else None,
         level=level,
     )
+
+
+@dataclass
+class HalfCleaned:
+    """The strongest pairs of some samples, private variation told and removed again on them.
+
+    ``places`` are the positions of each pair's blocks, ``positions`` the study's samples among the sheet's rows.
+    """
+
+    blocks: Sequence[LayerBlock]
+    places: Sequence[tuple[int, int]]
+    positions: IndexArray
+    correlation: Correlation
+    seed: int
+    hint: float | None = None
+
+    @classmethod
+    def of(cls, view: AnalysisView, samples: Sequence[str], *, within: bool) -> HalfCleaned:
+        """Prepare the half-samples of an analysis over the named samples."""
+        names = list(view.blocks)
+        place = {str(sample): row for row, sample in enumerate(view.sheet.index)}
+        return cls(
+            [layer_block(view, name, within) for name in names],
+            [(names.index(first), names.index(second)) for first, second in view.pairs],
+            np.array([place[sample] for sample in samples], dtype=np.intp),
+            view.settings.network.correlation,
+            view.settings.seed,
+        )
+
+    def __call__(self, rows: IndexArray, count: int) -> IndexArray:
+        """Return (pair of blocks, i, j) of the strongest pairs of the study's samples ``rows``."""
+        half = [_taken(block, self.positions[rows]) for block in self.blocks]
+        able = [
+            k
+            for k, (a, b) in enumerate(self.places)
+            if np.intersect1d(half[a].rows, half[b].rows).size >= SMALLEST_HALF
+        ]
+        made = pairs_without_private(
+            half, [self.places[k] for k in able], correlation=self.correlation, seed=self.seed
+        )
+        kept = [
+            (k, pair) for k, pair in zip(able, made.pairs, strict=True) if _freedom(pair) >= LEAST_FREEDOM
+        ]
+        if not kept:
+            return np.empty((0, 3), dtype=np.intp)
+        found = strongest_pairs(
+            [pair for _, pair in kept], count, correlation=self.correlation, hint=self.hint
+        )
+        self.hint = found.level
+        numbers = np.array([k for k, _ in kept])
+        return np.column_stack([numbers[found.pair_index], found.i, found.j])
+
+
+def _taken(block: LayerBlock, positions: IndexArray) -> LayerBlock:
+    held = np.flatnonzero(np.isin(block.rows, positions))
+    return replace(block, values=block.values[held], rows=block.rows[held], nuisance=block.nuisance[held])
+
+
+def _freedom(pair: BlockPair) -> int:
+    rank = pair.nuisance.rank if isinstance(pair.nuisance, Nuisance) else 1
+    return int(pair.x.shape[0]) - rank - 1
 
 
 def stability_lines(steady: Steadiness | None) -> list[str]:
