@@ -8,7 +8,7 @@ from numpy.testing import assert_allclose
 from supervised_projects import cohort, integrate, set_analysis, table
 
 from workbench.errors import InputError
-from workbench.workflow.supervised import implied_by_super_scores, super_score_correlations
+from workbench.workflow.feature_table import canonical_correlations, implied_correlations
 
 
 @pytest.fixture(scope="module")
@@ -66,14 +66,13 @@ def test_shares_and_figures_are_written(classes):
 def test_the_model_file_implies_correlations_between_layers(classes):
     """Features raised in the same class correlate by the model; its sum over orthogonal scores is at most 1."""
     project, _ = classes
-    features = super_score_correlations(project.paths.root, "main")
+    features = canonical_correlations(project.state(), "main")
     ends = [("rna", "g1", "lcms", "m1"), ("rna", "g100", "lcms", "m30"), ("rna", "lost", "lcms", "m30")]
     edges = pd.DataFrame(ends, columns=["source_block", "source", "target_block", "target"])
-    found = implied_by_super_scores(edges, features)
+    found = implied_correlations(edges, features)
     assert found["model_r"].iloc[0] > 0.2
     assert abs(found["model_r"].iloc[1]) < found["model_r"].iloc[0]
     assert np.isnan(found["model_r"].iloc[2])
-    assert found["component"].isna().tolist() == [False, False, True]
     with h5py.File(project.paths.analysis("main") / "model.h5") as file:
         assert file.attrs["method"] == "multiblock_pls"
         assert set(file["blocks"]) == {"rna", "lcms"}

@@ -7,7 +7,6 @@ from pathlib import Path
 
 import h5py
 import numpy as np
-import pandas as pd
 
 from workbench.engine.linear import column_correlations
 from workbench.store import Change, table_bytes
@@ -15,6 +14,7 @@ from workbench.workflow.analysis_view import blocks_of, view_analysis
 from workbench.workflow.canonical import analysis_inputs
 from workbench.workflow.drawings import write_drawings
 from workbench.workflow.fingerprints import columns_fingerprint, fingerprint
+from workbench.workflow.model_file import FORMAT
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
@@ -30,7 +30,6 @@ from workbench.workflow.supervised_tables import (
 )
 
 VERSION = 1
-FORMAT = 1
 TABLES = ("components.tsv", "performance.tsv", "panel.tsv", "explained.tsv", "predictions.tsv")
 FILES = (*TABLES, "model.h5", "supervised.txt")
 
@@ -83,12 +82,17 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
 
 
 def write_supervised_model(path: Path, result: SupervisedResult) -> None:
-    """Write model.h5: weights and correlations of every feature with the super scores, VIP, and the regression."""
+    """Write model.h5 in the layout of all methods, with the super scores, VIP and the outcome beside.
+
+    ``own`` is a feature's correlation with each super score, ``other`` with the fitted outcome. Features of different
+    layers load on one and the same super score, so that the correlation of the "two sides" is 1: the correlation that
+    the model implies for two features is ``sum_a corr(x, t_a) corr(y, t_a)``.
+    """
     model, study = result.model, result.study
-    scores = model.x_scores_
-    predicted = result.values @ model.coef_.T
-    correlations = column_correlations(result.values, scores)
-    others = column_correlations(result.values, predicted - predicted.mean(axis=0))
+    count = model.n_components_
+    fitted = result.values @ model.coef_.T
+    own = column_correlations(result.values, model.x_scores_)
+    other = np.repeat(column_correlations(result.values, fitted - fitted.mean(axis=0))[:, -1:], count, axis=1)
     text = h5py.string_dtype("utf-8")
     with h5py.File(path, "w") as file:
         file.attrs["format"] = FORMAT
@@ -96,57 +100,20 @@ def write_supervised_model(path: Path, result: SupervisedResult) -> None:
         file.attrs["outcome"] = study.name
         file.attrs["kind"] = study.kind
         file.create_dataset("units", data=list(study.units.names), dtype=text)
-        file.create_dataset("scores", data=scores)
         file.create_dataset("levels", data=list(study.levels), dtype=text)
+        file.create_dataset("scores", data=model.x_scores_)
+        components = file.create_group("components")
+        components.create_dataset("correlation", data=np.ones(count))
+        components.create_dataset("correlation_cv", data=np.ones(count))
+        components.create_dataset("explained", data=model.y_explained_)
         start = 0
         for block, part in zip(study.predictors, result.split.train, strict=True):
             inside = slice(start, start + part.shape[1])
             start += part.shape[1]
             group = file.create_group(f"blocks/{block}")
+            group.attrs["layer"] = study.view.blocks[block].layer
             names = [feature for _, feature in result.features[inside]]
             group.create_dataset("feature", data=names, dtype=text)
-            group.create_dataset("own", data=correlations[inside])
-            group.create_dataset("other", data=np.repeat(others[inside, -1:], scores.shape[1], axis=1))
-            group.create_dataset("weights", data=model.x_weights_[inside])
-            group.create_dataset("vip", data=model.vip_[inside])
-        components = file.create_group("components")
-        components.create_dataset("explained", data=model.y_explained_)
-
-
-def super_score_correlations(root: Path, analysis: str) -> pd.DataFrame:
-    """Return the features of a multi-block PLS by (block, feature): ``component1_own`` ..., and ``vip``."""
-    parts = []
-    with h5py.File(root / f"results/{analysis}/model.h5", "r") as file:
-        for block in file["blocks"]:
-            group = file[f"blocks/{block}"]
-            index = pd.MultiIndex.from_product([[block], group["feature"].asstr()[()]])
-            own = group["own"][()]
-            columns = {f"component{k + 1}_own": own[:, k] for k in range(own.shape[1])}
-            parts.append(pd.DataFrame({**columns, "vip": group["vip"][()]}, index=index))
-    return pd.concat(parts)
-
-
-def implied_by_super_scores(edges: pd.DataFrame, features: pd.DataFrame) -> pd.DataFrame:
-    """Return ``model_r`` and ``component`` of each edge: the correlation that the super scores imply.
-
-    ``model_r = sum_a corr(x, t_a) corr(y, t_a)``: super scores do not correlate with each other. ``component`` carries
-    most of it. Features that the model does not have (the outcome's own) have none.
-
-    Parameters
-    ----------
-    edges : DataFrame
-        With ``source``, ``source_block``, ``target``, ``target_block``.
-    features : DataFrame
-        Of :func:`super_score_correlations`.
-    """
-    own = features[[column for column in features if str(column).endswith("_own")]]
-    first, second = (
-        own.reindex(pd.MultiIndex.from_frame(edges[[f"{end}_block", end]])).to_numpy()
-        for end in ("source", "target")
-    )
-    terms = first * second
-    known = np.isfinite(terms).all(axis=1)
-    carried = np.abs(np.nan_to_num(terms)).argmax(axis=1) + 1 if len(edges) else np.zeros(0, dtype=int)
-    component = pd.array(np.where(known, carried, 0), dtype="Int64")
-    component[~known] = pd.NA
-    return pd.DataFrame({"model_r": terms.sum(axis=1), "component": component}, index=edges.index)
+            columns = {"own": own, "other": other, "weights": model.x_weights_, "vip": model.vip_}
+            for name, values in columns.items():
+                group.create_dataset(name, data=values[inside])
