@@ -113,10 +113,21 @@ def _shared(one: CheckedBlock, other: CheckedBlock) -> list[Finding]:
         return []
     both = f"blocks '{one.name}' and '{other.name}'"
     what = f"{both} share {counted(n, 'sample')} with a complete design, of {len(one.samples)} and {len(other.samples)}"
-    examples = f"'{one.name}' has {some(one.samples[:3])}, '{other.name}' has {some(other.samples[:3])}"
     severity = "error" if n < FEWEST_SHARED else "warning"
-    todo = f"look at how the two tables name their samples ({examples})"
+    todo = _how_to_share(one, other)
     identity = finding_id(CHECK, "", "shared", one.name, other.name)
     return [
         Finding(identity, CHECK, severity, "", what, (), (), todo, acceptable=severity != "error")  # type: ignore[arg-type]
     ]
+
+
+def _how_to_share(one: CheckedBlock, other: CheckedBlock) -> str:
+    """Return what to do about few shared samples: look at names that one side alone has, or measure more."""
+    mine = [sample for sample in one.samples if sample not in other.samples]
+    theirs = [sample for sample in other.samples if sample not in one.samples]
+    if mine and theirs:
+        return (
+            f"if the two tables name the same samples differently, write one name ('{one.name}' alone has "
+            f"{some(mine[:3])}, '{other.name}' alone {some(theirs[:3])}); else measure more samples in both"
+        )
+    return "measure more samples in both, or fill the cells of the design that are empty"

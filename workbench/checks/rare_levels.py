@@ -29,12 +29,13 @@ def rare_levels(data: StudyData) -> list[Finding]:
     A warning for a level of at most two samples (5 % in large studies) that is written nearly like a more frequent
     one, or like a word for "unknown": most likely a slip, which makes a class, and edges, of its own. A note for
     the other levels of two samples at most (2 %), which rest on these samples alone. Looked at are the texts of
-    ``mixed`` blocks, and the columns of the sample sheet that play a part in the design.
+    ``mixed`` blocks, and for slips the columns of the sample sheet that play a part in the design.
     """
     found = []
     for block in data.blocks.values():
         found += _findings(block.name, "feature", dict(_of_block(block)), len(block.samples))
-    return found + _findings("", "column", dict(_of_sheet(data)), len(data.kept_sheet))
+    of_sheet = _findings("", "column", dict(_of_sheet(data)), len(data.kept_sheet))
+    return found + [one for one in of_sheet if one.severity == "warning"]
 
 
 def _of_block(block: CheckedBlock) -> Iterator[tuple[str, Counts]]:
@@ -72,7 +73,7 @@ def _findings(block: str, noun: str, texts: Mapping[str, Counts], n: int) -> lis
         slips = {level: word for level in held if (word := _meant(level, held, n)) is not None}
         found += [_slip(block, noun, name, level, held[level], word) for level, word in slips.items()]
         few = [level for level, size in held.items() if size <= _most(n, RARE_SHARE) and level not in slips]
-        if few and len(held) > 1:
+        if few and len(few) < len(held):
             rare[name] = [f"{shown(level)} {held[level]}" for level in few]
     return [*found, *([_rare(block, noun, rare)] if rare else [])]
 

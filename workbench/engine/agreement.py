@@ -231,7 +231,8 @@ def _why_withheld(groups: tuple[IndexArray, ...]) -> str:
     count = math.prod(math.factorial(rows.size) for rows in groups)
     if count >= FEWEST_ARRANGEMENTS:
         return ""
-    return f"only {count} arrangements of the samples are allowed; a p needs at least {FEWEST_ARRANGEMENTS}"
+    allowed = "1 arrangement of the samples is" if count == 1 else f"{count} arrangements of the samples are"
+    return f"only {allowed} allowed; a p needs at least {FEWEST_ARRANGEMENTS}"
 
 
 def _permuted(

@@ -178,6 +178,8 @@ def _pair_line(pair: PairLook) -> str:
     if pair.found is None:
         return f"{who}: not compared: {pair.reason}."
     found = pair.found
+    if np.isnan(found.rv_adjusted):
+        return f"{who}: not compared: with the design taken out no arrangement of the samples but their own is left."
     figures = f"adjusted RV {found.rv_adjusted:.2f}, Procrustes correlation {found.procrustes:.2f}"
     if found.withheld:
         return f"{who}: {figures}; no p: {found.withheld}."
