@@ -6,7 +6,8 @@ groups and three run days, or with neither. Families without: the same, and stud
 variation, heavy tails, nothing shared, strong group effects, a third layer, an odd sample. One line for each
 family and n: pairs found, other pairs accused, in which layer; clean studies accused, rows told to match nobody.
 
-Run: python tests/benchmarks/swaps.py [--n 24 40 60 96] [--seeds 0 20] [--families NAME ...] [--jobs 2] [--speed]
+Run: python tests/benchmarks/swaps.py [--n 24 40 60 96] [--seeds 0 20] [--families NAME ...] [--kinds clean]
+[--jobs 2]; --speed instead prints seconds, --oracle what a yardstick finds that knows which features share what.
 """
 
 from __future__ import annotations
@@ -23,6 +24,7 @@ from typing import Any
 sys.path.insert(0, str(Path(__file__).resolve().parents[1]))
 
 from simulated import Design, Study, metabolites, proteins, simulate, transcripts
+from swap_oracle import oracle_finds
 from swap_studies import crosses, exchanged, found_in, swap_layers
 
 from workbench.engine.swap_layers import SwapLayer
@@ -97,6 +99,17 @@ def search(job: Job) -> tuple[Job, Counter[str]]:
     return job, counts
 
 
+def ask_oracle(job: Job) -> tuple[Job, Counter[str]]:
+    """Return whether the oracle finds the pair, counted as :func:`search` does."""
+    family, n, seed, _ = job
+    study = simulate(design_of(family, n, True), seed)
+    (truth,) = exchanged(study)
+    found = oracle_finds(study, layers_of(family, study), seed)
+    across = crosses(study, truth).replace(" ", "_")
+    counts = Counter(swapped=1, found=int(found == truth), other=int(found not in (None, truth)))
+    return job, counts + Counter({f"of_{across}": 1, f"in_{across}": int(found == truth)})
+
+
 def line(family: str, n: int, counts: Counter[str]) -> str:
     """Return one line of the table."""
     parts = [f"{family:<44} n {n:>3}"]
@@ -110,12 +123,15 @@ def line(family: str, n: int, counts: Counter[str]) -> str:
     return "  ".join([*parts, f"match nobody {counts['strangers']}", f"untestable {counts['untestable']}"])
 
 
-def jobs_of(families: list[str], sizes: list[int], seeds: range) -> Iterator[tuple[str, int, list[Job]]]:
+def jobs_of(
+    families: list[str], sizes: list[int], seeds: range, kinds: str
+) -> Iterator[tuple[str, int, list[Job]]]:
     """Yield each family and n with its studies."""
     for n in sizes:
         for family in families:
-            kinds = (True, False) if family in SWAPPED else (False,)
-            yield family, n, [(family, n, seed, kind) for seed in seeds for kind in kinds]
+            wanted = [kind for kind in (True, False) if kinds in ("both", "swapped" if kind else "clean")]
+            own = [kind for kind in wanted if not kind or family in SWAPPED]
+            yield family, n, [(family, n, seed, kind) for seed in seeds for kind in own]
 
 
 def speed() -> None:
@@ -142,14 +158,20 @@ def main() -> None:
     parser.add_argument("--seeds", type=int, nargs=2, default=[0, 20])
     parser.add_argument("--families", nargs="+", default=[*SWAPPED, *CLEAN])
     parser.add_argument("--jobs", type=int, default=1)
+    parser.add_argument("--kinds", choices=("both", "swapped", "clean"), default="both")
+    parser.add_argument("--oracle", action="store_true")
     parser.add_argument("--speed", action="store_true")
     chosen = parser.parse_args()
     if chosen.speed:
         return speed()
     total: Counter[str] = Counter()
+    work = ask_oracle if chosen.oracle else search
     with ProcessPoolExecutor(chosen.jobs) as pool:
-        for family, n, jobs in jobs_of(chosen.families, chosen.n, range(*chosen.seeds)):
-            counts = sum((one for _, one in pool.map(search, jobs)), Counter[str]())
+        kinds = "swapped" if chosen.oracle else chosen.kinds
+        for family, n, jobs in jobs_of(chosen.families, chosen.n, range(*chosen.seeds), kinds):
+            counts = sum((one for _, one in pool.map(work, jobs)), Counter[str]())
+            if not counts:
+                continue
             total += counts
             print(line(family, n, counts), flush=True)
     print(line("all", 0, total))

@@ -17,7 +17,7 @@ IndexArray = NDArray[np.intp]
 BoolArray = NDArray[np.bool_]
 Matches = Mapping[frozenset[str], LayerMatch]
 
-MOST_PAIRS = 8
+MOST_PAIRS = 6
 MOST_CYCLES = 3
 TIE = 1e-6
 

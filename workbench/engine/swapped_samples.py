@@ -36,7 +36,7 @@ States = dict[str, LayerState]
 Matches = dict[frozenset[str], LayerMatch]
 
 LEVEL = 0.05
-SLACK = 5.0
+SLACK = 8.0
 CYCLE_SLACK = 3.0
 MOST_EXCHANGES = 10
 TOLD = math.log(200.0)
