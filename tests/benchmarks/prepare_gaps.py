@@ -4,6 +4,24 @@ Run ``python tests/benchmarks/prepare_gaps.py [STUDIES] [FAMILY ...]``. Studies 
 ``prepare_recall.py``; the second layer's gaps are filled by each choice of ``gaps`` in turn. Given, per family and
 choice: mean recall and its difference to ``draws`` with the standard error over studies; the share of false pairs
 among those with q <= 0.05; the share of studies with such a false pair; the share of p under 0.001, in thousandths.
+
+Measured (40 studies each, seeds 0 to 39; recall, share of false pairs at q <= 0.05):
+
+========================================  =============  =============  =============
+family                                    draws          evidence       neighbours
+========================================  =============  =============  =============
+gaps in 25 %                              0.374, 0.061   0.432, 0.057   0.323, 0.058
+gaps in 40 %                              0.255, 0.058   0.327, 0.055   0.211, 0.060
+24 samples, gaps in 25 %                  0.312, 0.053   0.389, 0.053   0.220, 0.059
+120 samples, gaps in 25 %                 0.248, 0.048   0.288, 0.050   0.225, 0.050
+proteins, gaps in 15 % (no limit seen)    0.500, 0.055   0.500, 0.055   0.500, 0.055
+nothing shared, gaps in 40 %              -, 0.050       -, 0.050       -, 0.050
+nothing shared, 24 samples                -, 0.100       -, 0.100       -, 0.100
+========================================  =============  =============  =============
+
+Standard errors of the gains are 0.004 to 0.007. Tried and left: draws conditional on four components of the block
+(+0.014, +0.008 and -0.000 over marginal draws in the first, third and fourth family), and expected values conditional
+on them (+0.007 over the ones used, within their error): neither pays for a second model of the block.
 """
 
 from __future__ import annotations

@@ -5,7 +5,26 @@ plus 1, log2 of shares plus half the smallest for microbes, half of the feature'
 pools; intensities and log values once as they are ("plain") and once with each sample's median taken away
 ("levelled"). All routes take the same features, lose the design (group, run days) by regression and are ranked by
 |r|; recall is the share of true pairs among the longest list of strongest pairs with at most 5 % false ones. One-sided
-t over studies: is the recipes' recall lower than that of a plain route by more than one point (Holm over all)?
+t over studies: is the recipes' recall lower than that of a plain route by more than one point (Holm over all), and is
+it higher wherever drift, dilution or gaps are planted?
+
+Measured (40 studies each, seeds 0 to 39; recall, and gain over plain and levelled with standard errors):
+
+======================  =======  ======  ========  ===============  ===============
+family                  recipes   plain  levelled   over plain       over levelled
+======================  =======  ======  ========  ===============  ===============
+counts and intensities    0.593   0.449     0.526   +0.145 (0.010)   +0.067 (0.006)
+strong dilution           0.593   0.176     0.507   +0.417 (0.015)   +0.086 (0.007)
+gaps in 25 %              0.432   0.217     0.253   +0.215 (0.008)   +0.179 (0.008)
+drift with pools          0.589   0.312     0.429   +0.278 (0.014)   +0.161 (0.009)
+reads that compete        0.592   0.448     0.523   +0.144 (0.009)   +0.069 (0.006)
+microbes                  0.465   0.352     0.404   +0.113 (0.013)   +0.061 (0.012)
+proteins, gaps in 15 %    0.500   0.362     0.435   +0.137 (0.009)   +0.065 (0.007)
+24 samples                0.665   0.556     0.619   +0.109 (0.009)   +0.046 (0.007)
+heavy tails               0.638   0.481     0.552   +0.156 (0.013)   +0.086 (0.013)
+======================  =======  ======  ========  ===============  ===============
+
+Lower by more than a point: smallest of 18 p, Holm-adjusted, 1.0. Higher where planted: largest of 8 p, adjusted, 4e-11.
 """
 
 from __future__ import annotations
