@@ -8,7 +8,7 @@ from typing import Literal
 
 from simulated import Block, Design, clinical, metabolites, microbes, proteins, transcripts
 
-Level = Literal["samples", "changes", "subjects"]
+Level = Literal["samples", "changes", "subjects", "visits"]
 
 NULL_STUDIES, OTHER_STUDIES = 400, 100
 
@@ -22,7 +22,9 @@ class Family:
     design
         What the simulator is asked for.
     level
-        What a row of the screen is: a sample, a subject's change between two visits, or a subject's mean.
+        What a row of the screen is: a sample, a subject's change between two visits, or a subject's mean; or
+        `"visits"`: changes within subjects over all their visits, by the screen for repeated measures, from which
+        nothing is removed. By hand these samples are pooled, with the visit and the subject removed.
     correlation
         ``"pearson"`` or ``"spearman"``.
     """
@@ -123,6 +125,10 @@ NOTHING = {
         Design(n=120, modules=0, visits=4, subject_share=0.3, autocorrelation=0.6, trend=1.0, blocks=two()),
         "subjects",
     ),
+    "nothing-visits-100": Family(
+        Design(n=100, modules=0, visits=5, subject_share=0.3, autocorrelation=0.6, trend=1.0, blocks=two()),
+        "visits",
+    ),
     "nothing-spearman-48": Family(Design(n=48, modules=0, blocks=two()), correlation="spearman"),
     "nothing-spearman-tails-96": Family(
         Design(n=96, modules=0, blocks=two(tails=3.0)), correlation="spearman"
@@ -163,6 +169,12 @@ SOMETHING = {
             n=240, strength=2.0, visits=5, subject_share=0.5, autocorrelation=0.6, trend=1.0, blocks=two()
         ),
         "subjects",
+    ),
+    "visits-2.0-100": Family(
+        Design(
+            n=100, strength=2.0, visits=5, subject_share=0.3, autocorrelation=0.6, trend=1.0, blocks=two()
+        ),
+        "visits",
     ),
     "spearman-1.4-60": Family(Design(n=60, strength=1.4), correlation="spearman"),
     "dense-equal-60": Family(Design(n=60, strength=0.7, modules=2, blocks=dense(500, 80, 0.8, 0.8))),

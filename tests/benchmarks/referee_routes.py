@@ -8,9 +8,17 @@ import numpy as np
 from referee_families import Family
 from scipy import stats
 from simulated import Block, Study, design_matrix, logs, simulate
+from simulated.sheet import indicators
 
 from workbench.engine.nuisance import Nuisance
-from workbench.engine.private_variation import LayerBlock, PrivateScreen, screen_without_private
+from workbench.engine.private_variation import (
+    LayerBlock,
+    PrivateScreen,
+    RealComponent,
+    screen_without_private,
+)
+from workbench.engine.repeated import screen_repeated
+from workbench.engine.screen import BlockPair
 from workbench.engine.subjects import SubjectDesign, differences, subject_means
 
 Keys = np.ndarray
@@ -67,7 +75,7 @@ def run_study(name: str, family: Family, seed: int) -> Outcome:
     study = simulate(family.design, seed)
     arrays = study_arrays(study, family)
     pairs = family.design.block_pairs()
-    found = screen_without_private(arrays.blocks, pairs, correlation=family.correlation, seed=seed)
+    found = _product(study, arrays, family)
     keys = [(found.screen.pair_index == k, found.screen.i, found.screen.j) for k in range(len(pairs))]
     truth = _true_keys(study)
     ours = np.sort(_keys(study, [np.column_stack([i[here], j[here]]) for here, i, j in keys]))
@@ -94,6 +102,27 @@ def run_study(name: str, family: Family, seed: int) -> Outcome:
     )
 
 
+def _product(study: Study, arrays: Arrays, family: Family) -> PrivateScreen:
+    """Return what the program does with a study of this kind."""
+    pairs = study.design.block_pairs()
+    if family.level != "visits":
+        return screen_without_private(arrays.blocks, pairs, correlation=family.correlation, seed=study.seed)
+    design = _subjects(study)
+    sides = [(arrays.blocks[a], arrays.blocks[b]) for a, b in pairs]
+    # The visits' common course and the subjects' own level are removed without being named.
+    known = design_matrix(study.samples.drop(columns=["visit", "group"]), *study.blocks)
+    screen = screen_repeated(
+        [BlockPair("pair", x.values, y.values, known) for x, y in sides], [design] * len(sides), "visits"
+    )
+    nothing: tuple[tuple[RealComponent, ...], ...] = tuple(() for _ in arrays.blocks)
+    support = np.full(screen.n_edges, "pair")
+    return PrivateScreen(screen, support, nothing, ("repeated measures",) * len(pairs), ())
+
+
+def _subjects(study: Study) -> SubjectDesign:
+    return SubjectDesign.of(study.samples["subject"].to_numpy(), study.samples["visit"].to_numpy())
+
+
 def study_arrays(study: Study, family: Family) -> Arrays:
     """Return the blocks on a log scale, on the rows of the family's level."""
     names = [block.name for block in study.design.blocks]
@@ -104,7 +133,9 @@ def study_arrays(study: Study, family: Family) -> Arrays:
         known = design_matrix(study.samples.loc[table.index], *_assays(study, block, names))
         scores = study.truth.private[block.name].loc[table.index].to_numpy()
         x, known, scores = (_at_level(study, family, part) for part in (table.to_numpy(), known, scores))
-        rows = rows if family.level == "samples" else np.arange(len(x))
+        rows = rows if len(x) == len(table) else np.arange(len(x))
+        if family.level == "visits":
+            known = np.hstack([known, indicators(study.samples["subject"])])
         blocks.append(LayerBlock(block.name, block.layer, x, rows, known))
         private.append(scores)
     shared = _at_level(study, family, study.truth.shared.to_numpy())
@@ -117,9 +148,9 @@ def _assays(study: Study, block: Block, names: list[str]) -> list[str]:
 
 
 def _at_level(study: Study, family: Family, x: np.ndarray) -> np.ndarray:
-    if family.level == "samples":
+    if family.level in ("samples", "visits"):
         return x
-    design = SubjectDesign.of(study.samples["subject"].to_numpy(), study.samples["visit"].to_numpy())
+    design = _subjects(study)
     return differences(design, x) if family.level == "changes" else subject_means(design, x)
 
 
