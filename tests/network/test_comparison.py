@@ -10,7 +10,15 @@ from numpy.testing import assert_allclose
 from scipy.stats import kstest
 from sklearn.metrics import adjusted_rand_score
 
-from workbench.network.comparison import PairSide, adjusted_rand, community_table, difference_p, statuses
+from workbench.engine import benjamini_hochberg
+from workbench.network.comparison import (
+    PairSide,
+    adjusted_over,
+    adjusted_rand,
+    community_table,
+    difference_p,
+    statuses,
+)
 
 
 def side(edge: list[bool], r: list[float], rows: float = 30.0) -> PairSide:
@@ -53,6 +61,25 @@ def test_nothing_is_claimed_without_samples_or_measurements() -> None:
     assert np.isnan(difference_p(first, second)).tolist() == [True, True, True]
     same = difference_p(side([True], [1.0]), side([True], [1.0]))
     assert_allclose(same, 1.0)
+
+
+def test_strong_pairs_of_chance_are_not_called_changed() -> None:
+    """40 studies of 2,000 pairs of no correlation: of the 100 strongest of one half some differ by Fisher's z alone."""
+    random, called = np.random.default_rng(9), []
+    for _ in range(40):
+        r = np.tanh(random.normal(0, 1 / np.sqrt(27), (2, 2000)))
+        picked = np.argsort(-np.abs(r[0]))[:100]
+        sides = [PairSide(np.ones(100, bool), values[picked], np.full(100, 29.0)) for values in r]
+        p = difference_p(*sides)
+        called.append(((adjusted_over(p, 100) <= 0.05).any(), (adjusted_over(p, 2000) <= 0.05).any()))
+    alone, among_all = np.mean(called, axis=0)
+    assert alone > 0.5
+    assert among_all <= 0.15
+
+
+def test_rates_are_those_of_the_engine_when_all_are_given() -> None:
+    p = np.random.default_rng(1).random(50)
+    assert_allclose(adjusted_over(p, 50), benjamini_hochberg(p), rtol=1e-12)
 
 
 def test_ranks_have_a_wider_spread() -> None:

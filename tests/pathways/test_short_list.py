@@ -84,6 +84,11 @@ def test_a_doubtful_edge_in_one_sentence() -> None:
     assert "weak on ranks (-0.10); 31 % imputed; carried by its module, not by its own test." in said
 
 
+def test_many_groups_are_counted() -> None:
+    many = tuple(GroupCorrelation(f"dose {k}", 9, 0.8 if k else 0.1) for k in range(6))
+    assert ", in 5 of 6 groups; holds" in sentence(candidate(groups=many))
+
+
 def test_each_question_is_answered_by_its_figure() -> None:
     asked = judgements(0.05, informed=True)
     good = verdict_of(candidate(groups=groups(0.8, 0.8), known="x"), asked)

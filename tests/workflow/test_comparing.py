@@ -96,12 +96,19 @@ def test_a_study_split_in_two_halves_keeps_its_modules(halves: dict[str, Project
 
 
 def test_a_module_that_one_half_lacks_is_lost_and_shown_to_differ(halves: dict[str, Project]) -> None:
-    """The third module; features have other names there and are matched by their symbols, found by overlap."""
+    """The third module; features have other names there and are matched by their symbols, found by overlap.
+
+    Nine of ten of its pairs pass Fisher's z over all 2,470 pairs at 60 against 60 samples; over the 304 pairs of the
+    table alone nearly all would, and half of the chance edges with them. Of those that pass, one of twenty is chance.
+    """
     words = str(halves["first"].paths.root), f"{halves['without'].paths.root}:main"
     found, folder = run_compare(halves["first"].paths, words, "label")
     gone = planted(found.pairs, 2)
+    chance = ~sum(planted(found.pairs, module) for module in range(MODULES)).astype(bool)
+    changed = found.pairs["changed"] == "yes"
+    assert changed[chance].sum() <= 0.1 * changed.sum()
     assert (found.pairs.loc[gone, "status"] == "lost").all()
-    assert (found.pairs.loc[gone, "changed"] == "yes").mean() > 0.95
+    assert (found.pairs.loc[gone, "changed"] == "yes").mean() > 0.8
     for module in (0, 1):
         stays = planted(found.pairs, module)
         assert (found.pairs.loc[stays, "status"] == "kept").mean() > 0.95

@@ -104,9 +104,9 @@ def _caption(table: pd.DataFrame, names: tuple[str, str]) -> str:
     text = (
         f"Every pair of features that is an edge in {first} or in {second}: its correlation in both, after what each "
         "analysis removes. Filled (dark): the difference passed Fisher's z test at a false-discovery rate of 5 % over "
-        "these pairs. A pair that is an edge in one analysis alone need not have changed: it may lie on both sides of "
-        "a threshold with nearly the same r. Edges are picked for being strong, so that on average they look weaker "
-        "elsewhere."
+        "all pairs measured in both. A pair that is an edge in one analysis alone need not have changed: it may lie on "
+        "both sides of a threshold with nearly the same r, and edges, picked for being strong, look weaker elsewhere "
+        "on average."
     )
     if untested:
         text += f" {untested} pairs could not be tested (compared.tsv says why)."

@@ -68,6 +68,25 @@ def difference_p(first: PairSide, second: PairSide, *, ranks: bool = False) -> F
     return np.asarray(2.0 * norm.sf(np.abs(z1 - z2) / np.sqrt(variance)), dtype=np.float64)
 
 
+def adjusted_over(p: FloatArray, tests: int) -> FloatArray:
+    """Return the false-discovery rates of some p's of a family of ``tests``, the others taken as 1; NaN stays.
+
+    Pairs that were picked for being strong differ from their other study more than pairs do on the whole. Counted
+    among all pairs, picked or not, they are held to the rate for whatever reason they were picked.
+
+    Examples
+    --------
+    >>> adjusted_over(np.array([0.001, 0.2, np.nan]), 10).round(3)
+    array([0.01, 1.  ,  nan])
+    """
+    q = np.full(p.shape, np.nan)
+    held = np.flatnonzero(~np.isnan(p))
+    order = held[np.argsort(p[held], kind="stable")]
+    scaled = p[order] * (max(tests, order.size) / np.arange(1, order.size + 1))
+    q[order] = np.minimum(np.minimum.accumulate(scaled[::-1])[::-1], 1.0)
+    return q
+
+
 def statuses(first: PairSide, second: PairSide) -> NDArray[np.str_]:
     """Return what became of each pair from the first analysis to the second.
 
@@ -90,7 +109,7 @@ def adjusted_rand(first: Sequence[int], second: Sequence[int]) -> float:
 
     Examples
     --------
-    >>> adjusted_rand([1, 1, 2, 2], [7, 7, 3, 3]), adjusted_rand([1, 1, 2, 2], [1, 2, 1, 2])
+    >>> adjusted_rand([1, 1, 2, 2], [7, 7, 3, 3]), round(adjusted_rand([1, 1, 2, 2], [1, 2, 1, 2]), 9)
     (1.0, -0.5)
     """
 

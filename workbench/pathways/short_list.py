@@ -23,6 +23,9 @@ STRONG = 0.2
 """Share of the level of the false-discovery rate under which q is strong."""
 
 IN_GROUPS = 0.5
+MOST_GROUPS = 4
+"""Groups that a sentence names; of more it tells in how many an edge holds."""
+
 FOLLOWUP_COLUMNS = (
     *("rank", "source", "source_block", "target", "target_block", "sentence", "evidence", "speaks_for"),
     *("speaks_against", "check_first", "stands_for", "community", "r", "q", "known", "shared_sets"),
@@ -266,6 +269,8 @@ def _in_groups(one: Candidate) -> str:
     if not one.groups:
         return ""
     holds = [group for group in one.groups if group.r * one.r > 0 and abs(group.r) >= IN_GROUPS * abs(one.r)]
+    if len(one.groups) > MOST_GROUPS:
+        return f", in {len(holds)} of {len(one.groups)} groups"
     if len(holds) == len(one.groups):
         names = " and ".join(filter(None, [", ".join(g.level for g in holds[:-1]), holds[-1].level]))
         return f", in {names} alike" if len(holds) > 1 else ""

@@ -153,6 +153,13 @@ def row_of(features: pd.DataFrame) -> dict[tuple[str, str], int]:
     return {key: row for row, key in enumerate(zip(features["block"], features["feature"], strict=True))}
 
 
+def tested_pairs(first: Side, second: Side) -> int:
+    """Return the number of cross-layer pairs of matched features that both analyses measured."""
+    layers = Counter(layer for layer, _ in first.rows.keys() & second.rows.keys())
+    counts = list(layers.values())
+    return (sum(counts) ** 2 - sum(count**2 for count in counts)) // 2
+
+
 def dependence(first: Side, second: Side) -> str:
     """Return why the two sides' correlations are not independent, empty where they are."""
     both = sorted(first.samples & second.samples)

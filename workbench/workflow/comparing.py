@@ -12,10 +12,16 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
-from workbench.engine import benjamini_hochberg
 from workbench.errors import InputError
 from workbench.figures.comparison import draw_comparison
-from workbench.network.comparison import PairSide, adjusted_rand, community_table, difference_p, statuses
+from workbench.network.comparison import (
+    PairSide,
+    adjusted_over,
+    adjusted_rand,
+    community_table,
+    difference_p,
+    statuses,
+)
 from workbench.store import Change, ProjectPaths, StageRecord, project_lock, read_manifest, table_bytes
 from workbench.workflow.compared_sides import (
     Key,
@@ -28,6 +34,7 @@ from workbench.workflow.compared_sides import (
     read_side,
     resolve_side,
     row_of,
+    tested_pairs,
 )
 from workbench.workflow.drawings import write_drawings
 from workbench.workflow.pathway_tables import block_places
@@ -170,7 +177,7 @@ def _pairs_table(
     status = statuses(first, second)
     ranks = sides[0].views.view.settings.network.correlation == "spearman"
     p = difference_p(first, second, ranks=ranks) if not dependence else np.full(len(keys), np.nan)
-    q = benjamini_hochberg(p)
+    q = adjusted_over(p, tested_pairs(*sides))
     measured = ~np.isnan(first.r) & ~np.isnan(second.r)
     why = np.where(np.isnan(first.r), f"not measured in {sides[0].name}", "")
     why = np.where(np.isnan(second.r), f"not measured in {sides[1].name}", why)
