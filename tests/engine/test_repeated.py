@@ -203,3 +203,14 @@ def test_what_cannot_be_screened_is_refused() -> None:
         screen_repeated([BlockPair("a", x, y, Nuisance.of(None, 60))], [design], "visits")
     with pytest.raises(NumericsError, match="level is 'both'"):
         screen_repeated([BlockPair("a", x, y)], [design], "both")
+
+
+def test_an_odd_sample_in_both_blocks_makes_no_edges() -> None:
+    studies = []
+    for seed in range(20):
+        design, x, y = _study(200 + seed, 0.5, subjects=20)
+        rng = np.random.default_rng(seed)
+        x[5] += 6.0 * rng.normal(size=60)
+        y[5] += 6.0 * rng.normal(size=40)
+        studies.append(screen_repeated([BlockPair("a", x, y)], [design], "visits").n_edges > 0)
+    assert sum(studies) <= 4

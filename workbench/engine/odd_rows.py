@@ -44,7 +44,7 @@ class SteadyRows:
         return np.flatnonzero(self.factors < 1.0)
 
 
-def steady_rows(residuals: FloatArray) -> SteadyRows:
+def steady_rows(residuals: FloatArray, together: NDArray[np.intp] | None = None) -> SteadyRows:
     """Residuals with odd samples shrunk to the median size of a sample.
 
     Features are scaled to unit variance for the judgement; a sample is odd when its mean square over them
@@ -56,6 +56,8 @@ def steady_rows(residuals: FloatArray) -> SteadyRows:
     ----------
     residuals : ndarray of shape (n_samples, n_features)
         The nuisance removed. A feature with a gap, or without variance, has no part in the judgement.
+    together : ndarray of int, shape (n_samples,), optional
+        Rows with the same number are judged as one (changes of one subject).
 
     Raises
     ------
@@ -75,8 +77,9 @@ def steady_rows(residuals: FloatArray) -> SteadyRows:
             f"residuals have shape {values.shape}; give samples x features, at least one of each"
         )
     factors = np.ones(values.shape[0])
+    one = np.arange(values.shape[0]) if together is None else np.unique(together, return_inverse=True)[1]
     for _ in range(_ROUNDS):
-        size = _row_sizes(values * factors[:, None])
+        size = (np.bincount(one, _row_sizes(values * factors[:, None])) / np.bincount(one))[one]
         usual = float(np.median(size))
         odd = size > ODD * usual
         if usual <= 0.0 or not odd.any():

@@ -8,21 +8,25 @@ blocks have on average: with normal values, a correlation of which either side i
 test's distribution, whatever the other side does. With ``S + D`` and ``S - D`` (each of trace ``m``, ``S``
 the average) for the two blocks, whitening by ``S`` leaves ``m r^2`` a mean of at most 1.
 
-Features whose own course is smoother or rougher than the average are damped (:func:`course_damping`).
+Features whose own course is smoother or rougher than the average are damped (:func:`course_damping`). Subjects
+whose changes are large throughout a block are shrunk (:func:`~workbench.engine.odd_rows.steady_rows`), and
+features of heavy tails replaced by normal scores (:func:`~workbench.engine.far_values.withstand`).
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
-from typing import Any, Literal
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
 from scipy.linalg import helmert
 from scipy.stats import rankdata
 
+from workbench.engine.mapped_block import MappedBlock, Ranks
 from workbench.engine.nuisance import CONSTANT_TOLERANCE, Nuisance
+from workbench.engine.odd_rows import steady_rows
 from workbench.engine.screen import BlockPair, BlockScreen, Correlation, Progress, screen_blocks
 from workbench.engine.subjects import SubjectDesign, centred, subject_means
 from workbench.engine.tiles import Limits
@@ -93,8 +97,8 @@ def screen_repeated(
         Correlations between changes within subjects, or between the subjects' means (adjusted for visits
         that a subject lacks).
     fdr, correlation, minimum_r, maximum_edges, progress, limits
-        As for :func:`screen_pairs`. Ranks are those of the deviations from the subject's mean, or of the
-        subjects' means.
+        As for :func:`screen_pairs`. Pearson's correlation withstands odd subjects and heavy tails; ranks are
+        those of the deviations from the subject's mean, or of the subjects' means.
 
     Returns
     -------
@@ -157,13 +161,13 @@ def independent_pair(
         As :func:`screen_repeated`.
     """
     space = subject_space((pair.x, pair.y), design, _columns(pair), level, correlation)
-    ranks: Literal["no", "before", "after"] = "no"
-    if correlation == "spearman":
-        ranks = "before" if level == "visits" else "after"
-    x, y = (_Mapped(side, space.matrix, design, ranks) for side in (pair.x, pair.y))
+    x, y = (_mapped(side, design, space, level, correlation) for side in (pair.x, pair.y))
     damping = None
     if level == "visits":
-        sides = (_Mapped(side, np.eye(design.n_samples), design, ranks) for side in (pair.x, pair.y))
+        ranks: Ranks = "before" if correlation == "spearman" else "no"
+        sides = (
+            MappedBlock(side, design, np.eye(design.n_samples), ranks=ranks) for side in (pair.x, pair.y)
+        )
         first, second = (course_damping(space, design, side) for side in sides)
         damping = (first, second)
     return BlockPair(pair.name, x, y, space.nuisance, damping=damping), space
@@ -283,30 +287,22 @@ def without_subject(
     return weakest
 
 
-@dataclass(frozen=True, eq=False)
-class _Mapped:
-    """A block seen through a map of its samples; offers shape and slices of columns."""
-
-    source: Columns
-    matrix: FloatArray
-    design: SubjectDesign
-    ranks: Literal["no", "before", "after"]
-
-    @property
-    def shape(self) -> tuple[int, ...]:
-        """Rows and features."""
-        return (self.matrix.shape[0], int(self.source.shape[1]))
-
-    def __getitem__(self, key: Any) -> FloatArray:
-        """All rows of some features; a feature with a gap comes back without a number."""
-        values = np.asarray(self.source[key], dtype=np.float64)
-        with np.errstate(invalid="ignore", over="ignore"):
-            if self.ranks == "before":
-                values = rankdata(centred(self.design, values), axis=0)
-            rows: FloatArray = self.matrix @ values
-        gone = np.abs(rows).max(axis=0) <= CONSTANT_TOLERANCE * np.abs(values).max(axis=0)
-        rows[:, gone] = 0.0
-        return np.asarray(rankdata(rows, axis=0)) if self.ranks == "after" else rows
+def _mapped(
+    side: Columns, design: SubjectDesign, space: SubjectSpace, level: Level, correlation: Correlation
+) -> MappedBlock:
+    """One block on independent rows; for Pearson's correlation with odd subjects and heavy tails withstood."""
+    if correlation == "spearman":
+        ranks: Ranks = "before" if level == "visits" else "after"
+        return MappedBlock(side, design, space.matrix, ranks=ranks)
+    basis = _basis(space)
+    rest = space.whitened - basis @ (basis.T @ space.whitened)
+    step = -(-int(side.shape[1]) // TELLING)
+    values = np.asarray(side[:, ::step], dtype=np.float64)
+    rows = rest @ values[:, np.isfinite(values).all(axis=0)]
+    together = np.repeat(np.arange(len(space.blocks)), [place.size for place in space.blocks])
+    factors = steady_rows(rows, together).factors if rows.shape[1] else np.ones(len(rest))
+    room = None if space.matrix is space.whitened else helmert(len(rest) + 1).T
+    return MappedBlock(side, design, factors[:, None] * rest, room=room, freedom=len(rest) - basis.shape[1])
 
 
 def _columns(pair: BlockPair) -> FloatArray | None:
