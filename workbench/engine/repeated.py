@@ -97,8 +97,8 @@ def screen_repeated(
         Correlations between changes within subjects, or between the subjects' means (adjusted for visits
         that a subject lacks).
     fdr, correlation, minimum_r, maximum_edges, progress, limits
-        As for :func:`screen_pairs`. Pearson's correlation withstands odd subjects and heavy tails; ranks are
-        those of the deviations from the subject's mean, or of the subjects' means.
+        As for :func:`screen_pairs`. Odd subjects are withstood (but for ranks of means), and heavy tails by
+        Pearson's correlation; ranks are those of the deviations from the subject's mean, or of the subjects' means.
 
     Returns
     -------
@@ -290,19 +290,26 @@ def without_subject(
 def _mapped(
     side: Columns, design: SubjectDesign, space: SubjectSpace, level: Level, correlation: Correlation
 ) -> MappedBlock:
-    """One block on independent rows; for Pearson's correlation with odd subjects and heavy tails withstood."""
-    if correlation == "spearman":
-        ranks: Ranks = "before" if level == "visits" else "after"
-        return MappedBlock(side, design, space.matrix, ranks=ranks)
+    """Map one block to independent rows; odd subjects and (for Pearson's correlation) heavy tails withstood."""
+    ranked = correlation == "spearman"
+    if ranked and level == "subjects":
+        return MappedBlock(side, design, space.matrix, ranks="after")
     basis = _basis(space)
     rest = space.whitened - basis @ (basis.T @ space.whitened)
     step = -(-int(side.shape[1]) // TELLING)
     values = np.asarray(side[:, ::step], dtype=np.float64)
-    rows = rest @ values[:, np.isfinite(values).all(axis=0)]
+    values = values[:, np.isfinite(values).all(axis=0)]
+    rows = rest @ (rankdata(centred(design, values), axis=0) if ranked else values)
     together = np.repeat(np.arange(len(space.blocks)), [place.size for place in space.blocks])
     factors = steady_rows(rows, together).factors if rows.shape[1] else np.ones(len(rest))
-    room = None if space.matrix is space.whitened else helmert(len(rest) + 1).T
-    return MappedBlock(side, design, factors[:, None] * rest, room=room, freedom=len(rest) - basis.shape[1])
+    return MappedBlock(
+        side,
+        design,
+        factors[:, None] * rest,
+        ranks="before" if ranked else "no",
+        room=None if space.matrix is space.whitened else helmert(len(rest) + 1).T,
+        freedom=0 if ranked else len(rest) - basis.shape[1],
+    )
 
 
 def _columns(pair: BlockPair) -> FloatArray | None:
