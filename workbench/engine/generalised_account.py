@@ -82,18 +82,15 @@ def variance_accounts(
     >>> round(account.shared_by_all, 1), round(account.private, 1), round(account.noise, 1)
     (0.5, 0.0, 0.5)
     """
-    return [_account(blocks, variates, part, rank, own) for own in range(len(blocks))]
+    return [variance_account(block, variates, part, own, rank) for own, block in enumerate(blocks)]
 
 
-def _account(
-    blocks: Sequence[FloatArray],
-    variates: Sequence[FloatArray],
-    part: NDArray[np.bool_],
-    rank: int,
-    own: int,
+def variance_account(
+    block: FloatArray, variates: Sequence[FloatArray], part: NDArray[np.bool_], own: int, rank: int = 1
 ) -> VarianceAccount:
-    held = np.isfinite(blocks[own][:, 0])
-    x = check_finite(blocks[own][held], "the block")
+    """Account for the variance of one block, whose variates stand at place ``own``; see :func:`variance_accounts`."""
+    held = np.isfinite(block[:, 0])
+    x = check_finite(block[held], "the block")
     freedom, total = x.shape[0] - rank, float(np.sum(x**2))
     by_all = np.asarray(part.all(axis=1))
     kinds = (by_all, np.asarray(part[:, own] & ~by_all))
@@ -111,9 +108,9 @@ def _account(
     chance = float(np.sum(left**2)) / room
     shared = [max(found - count * chance, 0.0) / total for found, count in taken]
     rest = thin_basis(left)
-    number = min(signal_components(rest).number, room - 1)
+    number = min(signal_components(rest).number, rest.rank - 1)
     squares = rest.lengths**2
-    noise = float(squares[number:].sum()) / max(room - number, 1)
+    noise = float(squares[number:].sum()) / max(rest.rank - number, 1)
     private = max(float(np.sum(squares[:number] - noise)), 0.0) / total
     return VarianceAccount(shared[0], shared[1], private, max(1.0 - sum(shared) - private, 0.0), number)
 

@@ -30,11 +30,15 @@ BATCH_NUMBERS = 2**19
 
 @dataclass(frozen=True, eq=False)
 class MovedBlock:
-    """A block in sample space as a test rearranges it: ``carried`` is taken out of rearranged rows again."""
+    """A block in sample space as a test rearranges it.
+
+    ``carried`` is taken out of rearranged rows again, ``invariant`` no arrangement brings back.
+    """
 
     placed: PlacedBasis
     noise_level: float
     carried: FloatArray
+    invariant: FloatArray
     exchange: Exchange
 
     def arranged(self, arrangements: IndexArray) -> FloatArray:
@@ -52,6 +56,7 @@ class MovedBlock:
 
     def without(self, columns: FloatArray, moves: bool) -> MovedBlock | None:
         """Return the block with further columns removed; None where nothing is left."""
+        columns = columns - self.invariant @ (self.invariant.T @ columns)
         removed = orthonormal([self.carried, columns])
         basis = self.placed.basis
         left = basis.vectors * basis.lengths
@@ -62,7 +67,9 @@ class MovedBlock:
             return None
         thin = ThinBasis(vectors[:, :rank], lengths[:rank], basis.n_features)
         exchange = self.exchange if moves else self.exchange.staying()
-        return MovedBlock(replace(self.placed, basis=thin), self.noise_level, removed, exchange)
+        return MovedBlock(
+            replace(self.placed, basis=thin), self.noise_level, removed, self.invariant, exchange
+        )
 
 
 @dataclass(frozen=True, eq=False)
@@ -209,7 +216,7 @@ def _first_level(
         basis = thin_basis(one.sides[0])
         exchange = one.exchange if k else one.exchange.staying()
         placed = PlacedBasis(basis, rows, len(block))
-        moved.append(MovedBlock(placed, basis.noise_level, one.carried, exchange))
+        moved.append(MovedBlock(placed, basis.noise_level, one.carried, one.invariant, exchange))
         freedom = max(freedom, one.freedom)
     return GeneralisedLevel(tuple(moved), freedom)
 

@@ -34,6 +34,8 @@ class ExchangeableRows:
     carried : ndarray of shape (n_rows, n_carried)
         Orthonormal directions that are removed from every side and that rearranging rows would bring back:
         an arrangement is followed by the smallest rotation that takes them out again.
+    invariant : ndarray of shape (n_rows, n_invariant)
+        Orthonormal directions that are removed and that no arrangement brings back: the mean, subjects' means.
     freedom : int
         Dimensions that the nuisance leaves.
     words : str
@@ -43,6 +45,7 @@ class ExchangeableRows:
     sides: tuple[FloatArray, ...]
     exchange: Exchange
     carried: FloatArray
+    invariant: FloatArray
     freedom: int
     words: str
 
@@ -130,14 +133,14 @@ def _free(
 ) -> ExchangeableRows:
     removed = Nuisance.of(nuisance, len(values[0]))
     rows = tuple(_standard(side, removed, sizes) for side, sizes in zip(values, block_sizes, strict=True))
-    carried = removed.basis[:, 1:]
+    carried, invariant = removed.basis[:, 1:], removed.basis[:, :1]
     if removed.rank > 1 and turned:
         left = residual_basis(removed.basis)
         rows, words = tuple(left.T @ side for side in rows), f"dimensions that the nuisance leaves of {words}"
-        carried = np.empty((left.shape[1], 0))
+        carried = invariant = np.empty((left.shape[1], 0))
     size = len(rows[0])
     freedom = len(values[0]) - removed.rank
-    return ExchangeableRows(rows, Exchange.of_rows(size), carried, freedom, words)
+    return ExchangeableRows(rows, Exchange.of_rows(size), carried, invariant, freedom, words)
 
 
 def _structured(
@@ -156,7 +159,10 @@ def _structured(
     removed = Nuisance.of(np.hstack([own, extra]), n)
     rows = tuple(_standard(side, removed, sizes) for side, sizes in zip(values, block_sizes, strict=True))
     invariant = 1 + int(np.count_nonzero(removed.kept < own.shape[1]))
-    return ExchangeableRows(rows, exchange, removed.basis[:, invariant:], n - removed.rank, words)
+    basis = removed.basis
+    return ExchangeableRows(
+        rows, exchange, basis[:, invariant:], basis[:, :invariant], n - removed.rank, words
+    )
 
 
 def _standard(values: FloatArray, removed: Nuisance, block_sizes: BlockSizes) -> FloatArray:
