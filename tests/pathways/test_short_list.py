@@ -84,6 +84,17 @@ def test_a_doubtful_edge_in_one_sentence() -> None:
     assert "weak on ranks (-0.10); 31 % imputed; carried by its module, not by its own test." in said
 
 
+@pytest.mark.parametrize(
+    ("level", "words"),
+    [("visits", "47 samples, changes within subjects)"), ("subjects", "47 samples, means of subjects)")],
+)
+def test_several_samples_of_a_subject_are_told(level: str, words: str) -> None:
+    one = candidate()
+    said = sentence(Candidate(one.edge, one.source, one.target, (), (), level))
+    assert words in said
+    assert "holds without any one subject (0.78 at the weakest)" in said
+
+
 def test_many_groups_are_counted() -> None:
     many = tuple(GroupCorrelation(f"dose {k}", 9, 0.8 if k else 0.1) for k in range(6))
     assert ", in 5 of 6 groups; holds" in sentence(candidate(groups=many))

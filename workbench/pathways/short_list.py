@@ -39,6 +39,8 @@ _CLOSER_LOOK = {
 }
 
 
+_LEVELS = {"visits": ", changes within subjects", "subjects": ", means of subjects"}
+
 Clusters = tuple[tuple[str, str], tuple[str, str]]
 
 
@@ -53,13 +55,18 @@ class GroupCorrelation:
 
 @dataclass(frozen=True, eq=False)
 class Candidate:
-    """An edge with all that the short list says of it."""
+    """An edge with all that the short list says of it.
+
+    ``level`` is what is compared where subjects have several samples: ``visits`` (changes within subjects),
+    ``subjects`` (their means), or empty.
+    """
 
     edge: Mapping[str, Any]
     source: Mapping[str, Any]
     target: Mapping[str, Any]
     groups: tuple[GroupCorrelation, ...]
     doubts: tuple[str, ...]
+    level: str = ""
 
     @property
     def r(self) -> float:
@@ -252,7 +259,7 @@ def sentence(one: Candidate) -> str:
     if low is not None and high is not None:
         interval = f", {low:.2f} to {high:.2f}"
     samples = one.number("n")
-    over = f" over {samples:.0f} samples" if samples is not None else ""
+    over = f" over {samples:.0f} samples{_LEVELS.get(one.level, '')}" if samples is not None else ""
     parts = [f"{first} {verb} {rest} (r = {one.r:.2f}{interval}{over}){_in_groups(one)}", *_withstands(one)]
     return f"{'; '.join(parts)}."
 
@@ -283,7 +290,8 @@ def _withstands(one: Candidate) -> Iterator[str]:
     alone = one.number("r_without_one")
     if alone is not None:
         holds = bool(one.remains("r_without_one"))
-        yield f"{'holds' if holds else 'does not hold'} without any one sample ({alone:.2f} at the weakest)"
+        unit = "subject" if one.level else "sample"
+        yield f"{'holds' if holds else 'does not hold'} without any one {unit} ({alone:.2f} at the weakest)"
     ranks = one.number("r_spearman")
     if ranks is not None and not one.remains("r_spearman"):
         yield f"weak on ranks ({ranks:.2f})"

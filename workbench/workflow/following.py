@@ -45,6 +45,7 @@ from workbench.workflow.pathway_tables import (
 from workbench.workflow.private import FILE as PRIVATE_FILE
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.residual_blocks import ResidualViews
+from workbench.workflow.screening import is_repeated
 from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
 
@@ -231,8 +232,10 @@ def follow_up(
     ends = edge_ends(edges, features)
     needed = [name for name in ("feature", "block", "layer", "label", "cluster") if name in features]
     records = _records(features[needed])
+    repeated = any(is_repeated(view.shared(pair)) for pair in view.pairs)
+    level = (view.settings.level or "visits") if repeated else ""
     candidates = [
-        Candidate(edge, records[source], records[target], groups, tuple(doubts_of(edge, fdr)))
+        Candidate(edge, records[source], records[target], groups, tuple(doubts_of(edge, fdr)), level)
         for edge, (source, target), groups in zip(
             _records(edges), ends.tolist(), group_correlations(view, edges), strict=True
         )
