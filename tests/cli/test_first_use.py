@@ -135,8 +135,8 @@ def test_the_next_command_is_about_the_analysis_that_was_run(command, finished):
         file.write('[analyses.rp]\nblocks = "all"\npermutations = 50\nrepeats = 1\n')
     code, _, err = command("run", "rp", "--project", finished)
     assert code == 0
-    assert "next: open results/rp/network.graphml" in err
-    assert "next: open results/main/network.graphml" in command("run", "main", "--project", finished)[2]
+    assert "next: open results/rp/followup.tsv" in err
+    assert "next: open results/main/followup.tsv" in command("run", "main", "--project", finished)[2]
 
 
 def test_a_reader_that_has_seen_enough_ends_nothing(finished):
@@ -203,3 +203,11 @@ def test_values_that_look_like_another_kind_are_told_when_they_come_in(command, 
     assert 'do not look like logarithms; set values = "intensities" in [blocks.lip] of project.toml' in out
     edit(made, 'layer = "lipids"\nvalues = "log"', 'layer = "lipids"\nvalues = "intensities"')
     assert command("prepare", "lip", "--project", made)[0] == 0
+
+
+def test_the_same_sheet_with_other_parts_tells_which_change(command, made, delivered):
+    words = ("--group", "run_day", "--adjust", "group", "--replace", "--project", made)
+    code, out, err = command("add-samples", delivered["samples"], *words)
+    assert code == 0, err
+    assert "nothing changes in the sample sheet: it is the same" in out
+    assert "group: 'run_day' now, 'group' before" in out

@@ -37,7 +37,7 @@ def test_five_commands_make_a_study(command, delivered, tmp_path):
     code, out, err = command("run", *here)
     assert code == 0, err
     assert "edges.tsv" in out
-    assert "next: open results/main/network.graphml" in err
+    assert "next: open results/main/followup.tsv" in err
     assert (folder / "results" / "main" / "network.graphml").stat().st_size > 1000
 
 

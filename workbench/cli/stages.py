@@ -10,8 +10,12 @@ from workbench.cli.console import answer, tell, tell_next, terminal_reporter
 from workbench.cli.options import AnalysesArgument, ProjectOption, QuietOption, open_project
 
 if TYPE_CHECKING:
+    from pandas import DataFrame
+
     from workbench.project import Project
     from workbench.workflow.stages import Outcome
+
+FOLLOWED = 3
 
 
 def register(app: typer.Typer) -> None:
@@ -104,6 +108,13 @@ def _summarise(project: Project, analyses: list[str]) -> None:
         folder = project.paths.analysis(analysis)
         answer([f"{analysis}:", *(f"  {line}" for line in network_summary(result.graph))])
         answer([f"  edges: {folder / 'edges.tsv'}", f"  network: {folder / 'network.graphml'}"])
+        if (folder / "followup.tsv").exists():
+            answer([f"  short list: {folder / 'followup.tsv'}", *_first_of_all(result.followup)])
+
+
+def _first_of_all(followup: DataFrame) -> list[str]:
+    """Return the head of the short list in sentences."""
+    return [f"    {row.rank}. {row.sentence}" for row in followup.head(FOLLOWED).itertuples()]
 
 
 def _close(project: Project, outcome: Outcome, quiet: bool, analyses: list[str] | None = None) -> None:

@@ -87,7 +87,8 @@ def next_command(
     if waiting:
         return " ".join(["workbench run", *analyses])
     name = next(iter([*analyses, *state.settings.analyses]), "main")
-    return f"open {shlex.quote(f'results/{name}/network.graphml')} in a graph program, edges.tsv in a spreadsheet"
+    folder = shlex.quote(f"results/{name}")
+    return f"open {folder}/followup.tsv in a spreadsheet, {folder}/network.graphml in a graph program"
 
 
 def _concerns(state: ProjectState, stage: Stage, analyses: Sequence[str]) -> bool:
