@@ -5,8 +5,8 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Any
 
-import numpy as np
 import networkx as nx
+import numpy as np
 import pandas as pd
 
 from workbench.figures import Drawing
