@@ -161,7 +161,7 @@ def independent_pair(
         As :func:`screen_repeated`.
     """
     space = subject_space((pair.x, pair.y), design, _columns(pair), level, correlation)
-    x, y = (_mapped(side, design, space, level, correlation) for side in (pair.x, pair.y))
+    x, y = (mapped_block(side, design, space, level, correlation) for side in (pair.x, pair.y))
     damping = None
     if level == "visits":
         ranks: Ranks = "before" if correlation == "spearman" else "no"
@@ -287,10 +287,19 @@ def without_subject(
     return weakest
 
 
-def _mapped(
+def mapped_block(
     side: Columns, design: SubjectDesign, space: SubjectSpace, level: Level, correlation: Correlation
 ) -> MappedBlock:
-    """Map one block to independent rows; odd subjects and (for Pearson's correlation) heavy tails withstood."""
+    """One block on independent rows; odd subjects and (for Pearson's correlation) heavy tails withstood.
+
+    Parameters
+    ----------
+    side : array or dataset of shape (n_samples, n_features)
+    design, level, correlation
+        As for :func:`screen_repeated`.
+    space : SubjectSpace
+        Of these samples.
+    """
     ranked = correlation == "spearman"
     if ranked and level == "subjects":
         return MappedBlock(side, design, space.matrix, ranks="after")
