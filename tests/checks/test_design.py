@@ -158,9 +158,11 @@ def test_samples_without_a_value_in_the_design_are_named():
     found = [
         finding for finding in check_alignment(checked(study, sheet=sheet)) if finding.severity == "warning"
     ]
-    assert {finding.id for finding in found} == {
-        f"alignment-{name}-no_value-run_day" for name in study.blocks
-    }
+    assert [finding.id for finding in found] == ["alignment-no_value-run_day"]
+    assert (
+        "2 samples without a value in column 'run_day' (adjust): 'S003', 'S007'; every analysis"
+        in found[0].what
+    )
     assert found[0].samples == ("S003", "S007")
 
 

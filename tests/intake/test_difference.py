@@ -122,7 +122,7 @@ SHEET = pd.DataFrame(
 def test_sheets_that_say_the_same_are_no_change():
     again = SHEET.copy()
     again.loc["S1", "group"], again.loc["S2", "age"] = " dry", "NA"
-    assert sheet_difference(SHEET, again).lines() == ("nothing changes: the sample sheet is the same",)
+    assert sheet_difference(SHEET, again).lines() == ("nothing changes in the sample sheet: it is the same",)
 
 
 CHANGES = {

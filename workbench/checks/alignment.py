@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
 import numpy as np
+import pandas as pd
 from scipy.stats import fisher_exact
 
 from workbench.checks.data import CheckedBlock, StudyData, shared_rows
@@ -24,9 +27,9 @@ def check_alignment(data: StudyData) -> list[Finding]:
     half of the smaller block's samples; samples have no value in a column of the design; the samples that a
     block lacks are mostly of one group.
     """
-    found = _in_no_block(data)
+    found = _in_no_block(data) + _design_cells(data)
     for block in data.blocks.values():
-        found += _lacking(data, block) + _design_cells(block)
+        found += _lacking(data, block)
     for one, other in data.pairs:
         found += _shared(one, other)
     return found
@@ -81,29 +84,36 @@ def _uneven(data: StudyData, lacking: list[str]) -> str:
     return "; ".join(told)
 
 
-def _design_cells(block: CheckedBlock) -> list[Finding]:
-    wanted = [column for column in block.adjust if column in block.columns]
-    lacking = missing_samples(block.columns, wanted)
-    if block.group_levels:
-        rows = np.flatnonzero(block.group_codes < 0)
-        lacking |= {"the group": block.take(rows)} if rows.size else {}
+def _design_cells(data: StudyData) -> list[Finding]:
+    """Find empty cells of the design: of the study's columns once, of a block's own columns for that block."""
+    samples, sheet = data.settings.samples, data.kept_sheet
+    own_samples = {name for block in data.blocks.values() for name in block.samples}
+    of_study = dict.fromkeys(samples.group, "group") | dict.fromkeys(samples.adjust, "adjust")
+    measured = sheet.loc[[name for name in sheet.index if str(name) in own_samples]]
+    found = _cells("", measured, {column: part for column, part in of_study.items() if column in measured})
+    for block in data.blocks.values():
+        own = {
+            column: "adjust" for column in block.adjust if column in block.columns and column not in of_study
+        }
+        found += _cells(block.name, block.columns, own)
+    return found
+
+
+def _cells(block: str, frame: pd.DataFrame, parts: Mapping[str, str]) -> list[Finding]:
+    where = f" of block '{block}'" if block else ""
     return [
         Finding(
-            finding_id(CHECK, block.name, "no_value", column),
+            finding_id(CHECK, block, "no_value", column),
             CHECK,
             "warning",
-            block.name,
-            f"{number_of(samples, 'sample')} of block '{block.name}' without a value in {_column(column)}: every "
-            "analysis of the block leaves them out",
+            block,
+            f"{counted(len(samples), 'sample')}{where} without a value in column '{column}' ({parts[column]}): "
+            f"{some(samples)}; every analysis{where} leaves {'it' if len(samples) == 1 else 'them'} out",
             tuple(samples),
-            todo="fill the cells of samples.tsv, or exclude the samples with a reason",
+            todo="fill the cells of the sheet that holds the column, or exclude the samples with a reason",
         )
-        for column, samples in lacking.items()
+        for column, samples in missing_samples(frame, list(parts)).items()
     ]
-
-
-def _column(column: str) -> str:
-    return column if column == "the group" else f"column '{column}'"
 
 
 def _shared(one: CheckedBlock, other: CheckedBlock) -> list[Finding]:

@@ -14,7 +14,7 @@ from workbench.checks.data import CheckedBlock, StudyData, shared_rows
 from workbench.checks.evidence import CrossTable
 from workbench.checks.finding import Finding, Severity, accept_line, adjust_line, exclude_line, finding_id
 from workbench.checks.sheet_columns import SheetColumn, read_column, unused_columns
-from workbench.checks.words import number_of, percent, some
+from workbench.checks.words import percent, some
 from workbench.engine.nuisance import Nuisance, aliased
 from workbench.intake.faults import counted
 from workbench.intake.suggest import suggest_columns
@@ -292,9 +292,10 @@ def _without_room(unit: Unit) -> list[Finding]:
     if not alone.size:
         return []
     names = tuple(unit.samples[row] for row in alone)
+    only = "the only one of a level" if len(names) == 1 else "each the only one of a level"
     what = (
-        f"{number_of(names, 'sample')} of {unit.words}, each the only one of a level of the design: with the design "
-        "taken out nothing is left to tell"
+        f"{counted(len(names), 'sample')} of {unit.words} ({some(names)}), {only} of the design: with the design taken "
+        "out nothing is left to tell"
     )
     todo = f"nothing, or say so: {exclude_line('', names, 'alone on its level')}"
     identity = finding_id("samples_alone", unit.block, *unit.adjust)

@@ -41,7 +41,7 @@ class SheetDifference:
     def lines(self) -> tuple[str, ...]:
         """Return sentences for a person who is about to replace a sample sheet."""
         if self.same:
-            return ("nothing changes: the sample sheet is the same",)
+            return ("nothing changes in the sample sheet: it is the same",)
         told = [self.samples.line("sample"), self.columns.line("column")]
         for name, samples in self.changed.items():
             before, now = (shown(cell) if cell else "missing" for cell in self.examples[name])

@@ -53,6 +53,8 @@ class Suggestions:
 def suggest_columns(frame: pd.DataFrame) -> Suggestions:
     """Return the columns that look like a group, a nuisance or a subject, each with its reason.
 
+    Levels that differ in case alone count as one here.
+
     A column is looked at when it has at least two levels and no sample of its own for each. By its name (a
     word of it):
 
@@ -81,7 +83,7 @@ def suggest_columns(frame: pd.DataFrame) -> Suggestions:
 
 
 def _role(name: str, series: pd.Series) -> tuple[str, str]:
-    sizes = present(series).value_counts()
+    sizes = present(series).str.casefold().value_counts()
     if len(sizes) < 2:
         return "", ""
     words = _words(name)

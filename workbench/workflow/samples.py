@@ -77,8 +77,10 @@ def add_samples(paths: ProjectPaths, delivery: SheetDelivery, tell: Tell = no_wo
         frame = sheet.frame
         require_columns(delivery.columns, list(frame.columns), delivery.file)
         kinds = unclear_kinds(frame, delivery.adjust)
+        text = read_settings_text(paths.settings)
+        before = parse_settings(text, paths.settings).samples
         text = set_samples_text(
-            read_settings_text(paths.settings),
+            text,
             id=str(frame.index.name),
             group=list(delivery.group),
             subject=delivery.subject,
@@ -91,7 +93,7 @@ def add_samples(paths: ProjectPaths, delivery: SheetDelivery, tell: Tell = no_wo
         if faults:
             raise SettingsError(faults)
         if old is not None:
-            tell(sheet_difference(old, frame).lines())
+            tell([*sheet_difference(old, frame).lines(), *_changed_parts(before, settings.samples)])
         with Change(paths.root) as change:
             file, digest = keep_source(change, paths, delivery.file)
             change.write_bytes("samples.tsv", table_bytes(frame.reset_index()))
@@ -112,6 +114,21 @@ def _old_sheet(paths: ProjectPaths, replace: bool) -> pd.DataFrame | None:
             raise
         load_settings(paths.settings)
         return read_sample_sheet(paths.samples).frame
+
+
+def _changed_parts(before: SamplesSettings, now: SamplesSettings) -> list[str]:
+    """Return which columns play another part than before, a sentence each."""
+    told = []
+    for key in ("id", "group", "adjust", "subject", "time"):
+        old, new = (_columns_of(getattr(samples, key)) for samples in (before, now))
+        if old != new:
+            told.append(f"{key}: {new} now, {old} before")
+    return told
+
+
+def _columns_of(value: str | tuple[str, ...] | None) -> str:
+    columns = (value,) if isinstance(value, str) else value or ()
+    return ", ".join(map(repr, columns)) or "none"
 
 
 def empty_cells(frame: pd.DataFrame, samples: SamplesSettings) -> tuple[str, ...]:
