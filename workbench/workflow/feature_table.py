@@ -2,20 +2,18 @@
 
 from __future__ import annotations
 
-from pathlib import Path
 from typing import Any
 
-import h5py
 import numpy as np
 import pandas as pd
 
 from workbench.engine import GroupEffects
 from workbench.engine.clusters import near_duplicates
 from workbench.intake import Groups
-from workbench.store import check_file
 from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.group_differences import group_differences
 from workbench.workflow.loaded_block import LoadedBlock
+from workbench.workflow.model_file import read_model
 from workbench.workflow.state import ProjectState
 
 LABEL_COLUMNS = ("label", "symbol", "gene_symbol", "gene_name", "name", "compound", "metabolite")
@@ -87,24 +85,10 @@ def canonical_correlations(state: ProjectState, analysis: str) -> pd.DataFrame:
     Columns ``pair1_own``, ``pair1_other``, ...; the index is (block, feature).  Out-of-sample canonical
     correlations stand in ``attrs["correlations_cv"]`` (None where they could not be had).
     """
-    relative = f"results/{analysis}/model.h5"
-    check_file(state.root, relative)
-    with h5py.File(Path(state.root) / relative, "r") as file:
-        sides = [_one_side(file[letter]) for letter in ("x", "y")]
-        cv = file["correlations_cv"][()] if "correlations_cv" in file else None
-    table = pd.concat(sides)
-    table.attrs["correlations_cv"] = cv
+    model = read_model(state, analysis)
+    table = model.feature_columns()
+    table.attrs["correlations_cv"] = model.correlation_cv
     return table
-
-
-def _one_side(part: h5py.Group) -> pd.DataFrame:
-    index = pd.MultiIndex.from_arrays([part["block"].asstr()[()], part["feature"].asstr()[()]])
-    own, other = part["own"][()], part["other"][()]
-    columns = {}
-    for k in range(own.shape[1]):
-        columns[f"pair{k + 1}_own"] = own[:, k]
-        columns[f"pair{k + 1}_other"] = other[:, k]
-    return pd.DataFrame(columns, index=index)
 
 
 def implied_correlations(edges: pd.DataFrame, canonical: pd.DataFrame) -> pd.DataFrame:

@@ -45,7 +45,7 @@ def analysis_record(
             "under fdr (Benjamini-Hochberg)",
             "basis_group": f"95 % interval of the correlation within groups inside +-{GROUP_BOUND} of |r_total|",
             "intervals": "r_low, r_high at the false-coverage rate of the selected edges",
-            "canonical_pairs": "two layers" if len(view.layers) == 2 else _not_paired(view),
+            "canonical_pairs": ", ".join(view.layers),
         },
         "private_variation": private_record(view, screens.chosen) if removes else "not removed",
         "choices": list(choices_of(state.settings)),
@@ -89,8 +89,6 @@ def screen_sentences(view: AnalysisView, screens: Screens, group_pairs: int) -> 
     cut = cut_sentence(screens.chosen.found, view)
     if cut:
         lines.append(cut)
-    if len(view.layers) > 2:
-        lines.append(_not_paired(view))
     return lines
 
 
@@ -152,13 +150,6 @@ def cut_sentence(screen: Any, view: AnalysisView) -> str:
     return (
         f"{screen.passed:,} pairs passed; the {screen.r.size:,} strongest are kept "
         f"(network.maximum_edges = {view.settings.network.maximum_edges})"
-    )
-
-
-def _not_paired(view: AnalysisView) -> str:
-    return (
-        f"{len(view.layers)} layers ({', '.join(view.layers)}): canonical pairs are for two sides, so none were "
-        "fitted; the network screens the pairs of every two layers"
     )
 
 
