@@ -22,7 +22,7 @@ from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
 from workbench.workflow.tables import measured_block
 
-VERSION = 4
+VERSION = 5
 SEED = 20260101
 FOLDER = "results/check"
 RECORD = f"{FOLDER}/findings.json"
