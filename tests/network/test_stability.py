@@ -84,3 +84,5 @@ def test_the_network_that_leaves_is_rated_and_placed() -> None:
     assert "community_stability" not in next(iter(plain.nodes.values()))
     empty = build_network(edges_table([]), features_table(1, 1), attributes=ATTRIBUTES, seed=1)
     assert len(rated_network(empty, resamples=5, seed=1)) == 0
+    halves = rated_network(graph, resamples=5, seed=1, halves=[list(graph.edges)] * 3)
+    assert halves.graph["community_stability_method"] == "3 resamples: the edges of half of the samples"

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from typing import Any
 
 import networkx as nx
@@ -16,7 +16,7 @@ from workbench.network.backbone import backbone_p
 from workbench.network.communities import RESOLUTION, communities
 from workbench.network.keys import Key
 from workbench.network.layout import with_layout
-from workbench.network.stability import CommunityStability, community_stability
+from workbench.network.stability import CommunityStability, Pairs, community_stability
 
 CAUTIONS = (
     "Research use. Association is not causation. Not for diagnosis or treatment. "
@@ -120,10 +120,23 @@ def with_degrees(features: pd.DataFrame, graph: nx.Graph) -> pd.DataFrame:
     return table
 
 
-def rated_network(graph: nx.Graph, *, resamples: int, seed: int) -> nx.Graph:
-    """Return the network as it leaves: nodes with the stability of their community (0 resamples: none) and a place."""
+def rated_network(
+    graph: nx.Graph, *, resamples: int, seed: int, halves: Sequence[Pairs] | None = None
+) -> nx.Graph:
+    """Return the network as it leaves: nodes with the stability of their community and a place.
+
+    Parameters
+    ----------
+    graph : networkx.Graph
+    resamples : int
+        0 for no stability.
+    seed : int
+    halves : sequence of edge lists, optional
+        The edges of half-samples; without any the edges are drawn.
+    """
     if resamples and graph.number_of_edges():
-        graph = with_stability(graph, community_stability(graph, resamples=resamples, seed=seed))
+        found = community_stability(graph, resamples=resamples, seed=seed, halves=halves or None)
+        graph = with_stability(graph, found)
     return with_layout(graph)
 
 

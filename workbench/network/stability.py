@@ -127,8 +127,9 @@ def _drawn(graph: nx.Graph, resamples: int, seed: int) -> Iterable[nx.Graph]:
 
 
 def _of_halves(graph: nx.Graph, halves: Sequence[Pairs]) -> Iterable[nx.Graph]:
-    """Yield the networks of half-samples; features outside the network are left out."""
-    for pairs in halves:
+    """Yield the networks of half-samples, as many as allowed; features outside the network are left out."""
+    allowed = max(FEWEST, MOST_EDGES // max(graph.number_of_edges(), 1))
+    for pairs in halves[:allowed]:
         yield _with_edges(graph, [pair for pair in pairs if pair[0] in graph and pair[1] in graph])
 
 

@@ -34,7 +34,7 @@ from workbench.workflow.screening import screen_analysis
 from workbench.workflow.showing import SHOWN
 from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
-from workbench.workflow.steadiness import edge_stability, stability_lines
+from workbench.workflow.steadiness import edge_stability, half_edges, stability_lines
 
 VERSION = 2
 EDGE_COLUMNS = (
@@ -96,7 +96,9 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
         features[list(canonical.columns)] = canonical.reindex(places).to_numpy()
     edges = edges.assign(**_known(state, reporter, name, edges, features))
     graph = build_network(edges, features, attributes=graph_attributes(view), seed=view.settings.seed)
-    graph = rated_network(graph, resamples=view.settings.network.stability, seed=view.settings.seed)
+    halves = [half_edges(view, found) for found in steady.found] if steady is not None else None
+    resamples = view.settings.network.stability
+    graph = rated_network(graph, resamples=resamples, seed=view.settings.seed, halves=halves)
     edges = in_order(with_communities(edges, graph), EDGE_COLUMNS)
     features = in_order(with_degrees(features, graph), FEATURE_COLUMNS)
     pairs = group_pairs_table(view, screens)

@@ -20,9 +20,13 @@ from workbench.engine.stability import (
     pair_stability,
 )
 from workbench.engine.strongest import strongest_pairs
+from workbench.network import Key
 from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.screening import Screens, layer_block
+
+KEPT = 20
+"""Half-samples whose pairs are kept, to see how stable the communities are."""
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
@@ -30,11 +34,15 @@ IndexArray = NDArray[np.intp]
 
 @dataclass(frozen=True, eq=False)
 class Steadiness:
-    """Share of half-samples of each edge (NaN where there is none), and why where a block pair has none."""
+    """Share of half-samples of each edge (NaN where there is none), and why where a block pair has none.
+
+    ``found`` are the strongest pairs of the first half-samples: place of the block pair and of both features.
+    """
 
     share: FloatArray
     halves: int
     reasons: tuple[str, ...]
+    found: tuple[IndexArray, ...]
 
 
 def edge_stability(view: AnalysisView, screens: Screens, reporter: Reporter) -> Steadiness | None:
@@ -54,20 +62,40 @@ def edge_stability(view: AnalysisView, screens: Screens, reporter: Reporter) -> 
         held[own, k] = True
     level = (view.settings.level or "visits") if screens.chosen.repeated else None
     edges = np.column_stack([found.pair_index, found.i, found.j])
+    strongest = _strongest(view, screens, samples, rows, level)
+    kept: list[IndexArray] = []
+
+    def recorded(part: IndexArray, count: int) -> IndexArray:
+        pairs = strongest(part, count)
+        if len(kept) < KEPT:
+            kept.append(pairs)
+        return pairs
+
     with reporter.progress("half-samples") as progress:
         result = pair_stability(
             len(samples),
             _labels(view, samples, view.factors),
             _labels(view, samples, list(filter(None, [view.study.samples.subject]))),
             halves,
-            _strongest(view, screens, samples, rows, level),
+            recorded,
             edges,
             held=held,
             level=level,
             seed=view.settings.seed,
             progress=progress,
         )
-    return Steadiness(result.share, result.halves, result.reasons)
+    return Steadiness(result.share, result.halves, result.reasons, tuple(kept))
+
+
+def half_edges(view: AnalysisView, found: IndexArray) -> list[tuple[Key, Key]]:
+    """Return the strongest pairs of a half-sample as pairs of features, each named by its block and itself."""
+    return [
+        (
+            (view.pairs[pair][0], view.blocks[view.pairs[pair][0]].features[i]),
+            (view.pairs[pair][1], view.blocks[view.pairs[pair][1]].features[j]),
+        )
+        for pair, i, j in np.asarray(found).tolist()
+    ]
 
 
 def _labels(view: AnalysisView, samples: list[str], columns: list[str]) -> NDArray[np.str_] | None:
