@@ -202,6 +202,23 @@ def test_a_rich_pair_of_blocks_does_not_pay_for_a_poor_one() -> None:
     assert (np.maximum(screen.q, screen.q_block) <= 0.05).all()
 
 
+def test_damped_features_have_the_p_of_the_damped_correlation() -> None:
+    rng = np.random.default_rng(31)
+    x, y = rng.normal(size=(40, 30)), rng.normal(size=(40, 20))
+    y[:, :5] += 2.0 * x[:, :5]
+    damping = (rng.uniform(0.6, 1.0, 30), rng.uniform(0.6, 1.0, 20))
+    plain = screen_pairs(x, y).lookup(*np.indices((30, 20)))
+    damped = screen_blocks([BlockPair("a", x, y, damping=damping)])
+    found = damped.lookup(0, *np.indices((30, 20)))
+    assert_allclose(found.r, plain.r, atol=1e-12)
+    small = plain.r * np.outer(*damping)
+    assert_allclose(found.p, 2 * stats.t.sf(np.abs(small) * np.sqrt(38 / (1 - small**2)), 38), rtol=1e-9)
+    assert_allclose(damped.r, plain.r[damped.i, damped.j], atol=1e-12)
+    assert ((damped.r_low < damped.r) & (damped.r < damped.r_high)).all()
+    with pytest.raises(NumericsError, match="must hold numbers above 0"):
+        screen_blocks([BlockPair("a", x, y, damping=(damping[0], damping[1] * 0.0))])
+
+
 def test_ties_are_ordered_by_block_pair_and_features() -> None:
     rng = np.random.default_rng(12)
     x = rng.normal(size=(20, 3))[:, [0, 1, 0, 2, 0]]
