@@ -6,7 +6,7 @@ held beside the table, in multiples of the table, in a run of its own.
 
 Run ``python tests/benchmarks/prepare_speed.py [SAMPLES]``.
 
-Measured on two cores shared with eight others (wall clock, best of three): counts 0.6 to 1.1 s, 3.4 times the table;
+Measured on two cores shared with eight others (wall clock, best of three): counts 0.6 to 1.1 s, 1.6 times the table;
 intensities with 15 % gaps 1.2 to 2.7 s, 3.7 times; with 40 pools 9.8 s at a load of eight, 3.6 times.
 """
 

@@ -163,4 +163,5 @@ class LogOfCounts(Settled):
     def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
         """Return log2 of scaled counts plus the prior."""
         account = StepAccount(self.step, self.rule, {"prior_count": self.prior})
-        return table.with_values(np.log2(table.values + self.prior)), account
+        logs = table.values + self.prior
+        return table.with_values(np.log2(logs, out=logs)), account

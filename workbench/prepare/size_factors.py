@@ -11,6 +11,7 @@ sample is scaled against them and changes nothing in them.
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from typing import ClassVar
 
@@ -29,6 +30,7 @@ from workbench.prepare.steps import (
 )
 from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable
 
+ROWS_AT_A_TIME = 32
 ANDERS_HUBER = "Anders & Huber 2010, Genome Biology 11:R106"
 
 
@@ -38,11 +40,20 @@ def geometric_means(counts: Matrix) -> Matrix:
     >>> geometric_means(np.array([[2.0, 0.0], [8.0, 5.0]])).round(6).tolist()
     [4.0, 5.0]
     """
-    positive = counts > 0
-    logs = np.log(counts, where=positive, out=np.zeros_like(counts))
-    seen = positive.sum(axis=0)
-    means: Matrix = np.divide(logs.sum(axis=0), seen, where=seen > 0, out=np.full(counts.shape[1], np.nan))
+    sums, seen = np.zeros(counts.shape[1]), np.zeros(counts.shape[1])
+    for rows in _row_parts(len(counts)):
+        part = counts[rows]
+        positive = part > 0
+        sums += np.log(part, where=positive, out=np.zeros_like(part)).sum(axis=0)
+        seen += positive.sum(axis=0)
+    means: Matrix = np.divide(sums, seen, where=seen > 0, out=np.full(counts.shape[1], np.nan))
     return np.exp(means)
+
+
+def _row_parts(n: int) -> Iterator[slice]:
+    """Yield the rows a few at a time: a copy of a large table would cost more than the figures that it gives."""
+    for start in range(0, n, ROWS_AT_A_TIME):
+        yield slice(start, start + ROWS_AT_A_TIME)
 
 
 def median_of_ratios(counts: Matrix, reference: Matrix, *, positive_only: bool = False) -> Matrix:
@@ -77,6 +88,11 @@ def median_of_ratios(counts: Matrix, reference: Matrix, *, positive_only: bool =
     >>> median_of_ratios(counts, geometric_means(counts)).round(6).tolist()
     [0.5, 2.0]
     """
+    parts = [_medians_of_ratios(counts[rows], reference, positive_only) for rows in _row_parts(len(counts))]
+    return np.concatenate(parts) if parts else np.empty(0)
+
+
+def _medians_of_ratios(counts: Matrix, reference: Matrix, positive_only: bool) -> Matrix:
     positive = counts > 0
     ratios = counts / reference
     medians = median_rows(ratios, positive if positive_only else ~np.isnan(counts))

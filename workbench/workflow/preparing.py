@@ -82,6 +82,7 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
         raise InputError(
             f"block '{name}': {len(table.samples)} samples left after exclusions; two are the least"
         )
+    del measured.X
     prepared = _prepared(state, name, table)
     for step in prepared.account:
         reporter.say(f"  {step.step}: {step.sentence}")

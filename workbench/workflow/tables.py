@@ -36,8 +36,9 @@ def table_of(adata: AnnData, without: dict[str, str]) -> MeasuredTable:
     runs = None
     if "run_sheet" in adata.uns:
         runs = run_table(adata.uns["run_sheet"], adata.uns["run_values"]).for_samples(samples)
+    values = np.asarray(adata.X, dtype=np.float64)
     return MeasuredTable(
-        values=np.asarray(adata.X, dtype=np.float64)[keep],
+        values=values if len(keep) == len(values) else values[keep],
         samples=samples,
         features=tuple(map(str, adata.var_names)),
         levels=levels,
