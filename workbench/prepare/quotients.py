@@ -25,6 +25,7 @@ from workbench.prepare.steps import (
 )
 from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable
 
+LARGEST_QUOTIENT = 1e300
 DIETERLE = "Dieterle et al. 2006, Analytical Chemistry 78:4281"
 
 
@@ -67,7 +68,8 @@ def median_quotients(intensities: Matrix, reference: Matrix) -> Matrix:
     >>> median_quotients(np.vstack([profile, profile * [0.5, 0.5, 5.0, 0.5, 0.5]]), profile).tolist()
     [1.0, 0.5]
     """
-    quotients = intensities / reference
+    with np.errstate(over="ignore"):
+        quotients = np.minimum(intensities / reference, LARGEST_QUOTIENT)
     return median_rows(quotients, quotients > 0)
 
 
