@@ -13,6 +13,7 @@ from workbench.engine import SubjectDesign
 from workbench.engine.double_arrangements import outcome_arrangements
 from workbench.engine.double_choice import fewest_as_good, ranking_losses
 from workbench.engine.double_folds import fold_splits
+from workbench.engine.double_loop import choices
 from workbench.engine.double_outcome import ClassOutcome, NumberOutcome
 from workbench.engine.double_splits import block_source, split_kernels
 from workbench.engine.double_validation import double_validation
@@ -116,6 +117,21 @@ def test_a_planted_class_is_found_and_the_block_that_carries_it() -> None:
     assert second < 0.7
     assert found.test.p == 0.01
     assert found.test.observed == pytest.approx(found.model.performance.auc.mean())  # type: ignore[union-attr]
+
+
+def test_blocks_of_noise_are_left_out_by_the_inner_loop() -> None:
+    """Two blocks of few noise features weigh as much as the one that tells: left out, and told."""
+    ill, blocks = two_blocks(60, 2, strength=1.0)
+    noisy = [blocks[0], blocks[1][:, :3], np.random.default_rng(1).normal(size=(60, 2))]
+    source, outcome = block_source(noisy), ClassOutcome.of(ill)
+    chosen = double_validation(source, outcome, repeats=1)
+    every = double_validation(source, outcome, repeats=1, choose_blocks=False)
+    assert chosen.blocks == (0,)
+    assert chosen.model.blocks[..., 0].all()
+    assert every.blocks == (0, 1, 2)
+    areas = [found.model.performance.auc.mean() for found in (chosen, every)]  # type: ignore[union-attr]
+    assert areas[0] > areas[1] + 0.02
+    assert len(choices(7, [1, 2], choose_blocks=True)) == 2 * (1 + 7 + 7)
 
 
 def test_noise_is_told_as_noise() -> None:
