@@ -13,8 +13,14 @@ from prepare.measured import counts, intensities, log, proportions
 from prepare.sequences import sequence
 
 from workbench.errors import InputError
-from workbench.look import BlockView, PreparationLook, look_at_preparation, preparation_tables
-from workbench.prepare import MeasuredTable, drift_effect, recipe_for
+from workbench.look import (
+    BlockView,
+    PreparationLook,
+    look_at_preparation,
+    preparation_reading,
+    preparation_tables,
+)
+from workbench.prepare import MeasuredTable, StepAccount, drift_effect, recipe_for
 
 
 def looked(values: str, table: MeasuredTable, layer: str = "x") -> PreparationLook:
@@ -103,3 +109,14 @@ def test_without_pools_or_without_measured_values() -> None:
     view = dataclasses.replace(planted(), measured=None)
     with pytest.raises(InputError, match="cannot be seen without the measured values"):
         look_at_preparation(view, np.zeros(36), ())
+
+
+def test_the_reading_tells_the_warnings_and_counts_those_that_are_many() -> None:
+    look = look_at_preparation(
+        planted(), np.zeros(36), (StepAccount("gaps", "filled", cautions=("one", "two")),)
+    )
+    assert preparation_reading(look) == ("Preparation warns (gaps): one.", "Preparation warns (gaps): two.")
+    many = dataclasses.replace(look, account=look.account * 3)
+    assert preparation_reading(many)[-1] == "4 more warnings of the preparation: preparation.md."
+    assert len(preparation_reading(many)) == 3
+    assert preparation_reading(dataclasses.replace(look, account=())) == ()

@@ -2,7 +2,12 @@
 
 from workbench.look.between import BetweenLook, PairLook, Restriction, between_reading, look_between
 from workbench.look.block import BlockLook, SampleFlag, look_at_block
-from workbench.look.preparation import PreparationLook, look_at_preparation, preparation_tables
+from workbench.look.preparation import (
+    PreparationLook,
+    look_at_preparation,
+    preparation_reading,
+    preparation_tables,
+)
 from workbench.look.reading import block_reading
 from workbench.look.tables import between_table, look_tables
 from workbench.look.view import BlockView, Levels, levels_of
@@ -24,5 +29,6 @@ __all__ = [
     "look_at_preparation",
     "look_between",
     "look_tables",
+    "preparation_reading",
     "preparation_tables",
 ]

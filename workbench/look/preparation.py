@@ -20,6 +20,7 @@ FloatArray = NDArray[np.float64]
 SCALE_WORDS = {"counts": "size factor", "intensities": "concentration", "log": "shift"}
 ON_LOGARITHMS = ("counts", "intensities", "proportions", "log")
 UNCHANGED = 1e-9
+MOST_WARNINGS = 3
 
 
 @dataclass(frozen=True, eq=False)
@@ -165,6 +166,18 @@ def _deviations(logs: FloatArray) -> FloatArray:
     return np.array(
         [np.quantile(row, QUANTILES) if row.size else np.full(len(QUANTILES), np.nan) for row in rows]
     )
+
+
+def preparation_reading(look: PreparationLook) -> tuple[str, ...]:
+    """Return what preparation warns of, a line each, at most three lines; none without a warning."""
+    told = [
+        f"Preparation warns ({step.step}): {caution}." for step in look.account for caution in step.cautions
+    ]
+    if len(told) > MOST_WARNINGS:
+        told[MOST_WARNINGS - 1 :] = [
+            f"{len(told) - MOST_WARNINGS + 1} more warnings of the preparation: preparation.md."
+        ]
+    return tuple(told)
 
 
 def preparation_tables(look: PreparationLook) -> dict[str, pd.DataFrame]:

@@ -20,6 +20,7 @@ from workbench.look import (
     look_at_preparation,
     look_between,
     look_tables,
+    preparation_reading,
     preparation_tables,
 )
 from workbench.prepare import PreparedSize, account_page, account_table, drift_effect, recipe_for
@@ -36,7 +37,7 @@ from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
 from workbench.workflow.tables import measured_table
 
-VERSION = 2
+VERSION = 3
 SEED = 20260101
 BETWEEN = "between-blocks"
 
@@ -86,7 +87,7 @@ def _look(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
     view = view_block(state, name)
     look = look_at_block(view, seed=SEED)
     preparation = view_preparation(state, view, look.shapes)
-    reading = block_reading(look)
+    reading = (*block_reading(look), *preparation_reading(preparation))
     folder = f"results/look/{name}"
     written = []
     tables = {
