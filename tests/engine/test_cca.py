@@ -342,3 +342,34 @@ def test_unusable_sides_are_refused() -> None:
         RegularisedCCA(1, ridge=1.0).fit(x[:1], y[:1])
     with pytest.raises(ValueError, match="inconsistent numbers of samples"):
         RegularisedCCA(1, ridge=1.0).fit(x, y[1:])
+
+
+def test_without_ridge_all_pairs_predict_as_least_squares_does() -> None:
+    """Y of three features from X of six: the regression of numpy, in new samples too."""
+    x, y, _ = draw_sides(60, 6, 3, strength=1.0)
+    new = np.random.default_rng(5).normal(size=(10, 6))
+    design, fresh = (np.column_stack([np.ones(len(side)), side]) for side in (x, new))
+    want = fresh @ np.linalg.lstsq(design, y, rcond=None)[0]
+    assert_allclose(RegularisedCCA(3, ridge=0).fit(x, y).predict(new), want, atol=1e-10)
+
+
+def test_predictions_with_honest_correlations_beat_the_mean_in_new_samples() -> None:
+    """A factor on a third of the features: their error falls; a correlation of 0 gives the mean."""
+    x, y, _ = draw_sides(120, 200, 80, strength=1.0)
+    cca = RegularisedCCA(1, ridge=10.0).fit(x[:60], y[:60])
+    error = np.mean((cca.predict(x[60:], [0.9])[:, :27] - y[60:, :27]) ** 2)
+    assert error < 0.8 * np.mean((y[60:, :27] - y[:60, :27].mean(axis=0)) ** 2)
+    assert_allclose(cca.predict(x[60:], [0.0]), np.tile(y[:60].mean(axis=0), (60, 1)), atol=1e-12)
+    with pytest.raises(NumericsError, match="give one between -1 and 1 for each of the 1 pairs"):
+        cca.predict(x, [0.5, 0.5])
+
+
+def test_implied_correlations_are_the_sum_over_pairs() -> None:
+    """Features of the factor are implied to go together with the sign that they have, others hardly."""
+    x, y, _ = draw_sides(80, 60, 30, strength=1.5)
+    cca = RegularisedCCA(2, ridge=1.0).fit(x, y)
+    inside = cca.implied_correlations(np.arange(10), np.arange(10), [0.9, -0.2])
+    want = 0.9 * cca.x_correlations_[:10, 0] * cca.y_correlations_[:10, 0]
+    assert_allclose(inside, want, rtol=1e-12)
+    assert (inside < -0.3).all()
+    assert np.abs(cca.implied_correlations(np.arange(30, 40), np.arange(15, 25), [0.9, 0.0])).max() < 0.3

@@ -16,6 +16,9 @@ from workbench.engine.double_validation import DoubleValidation, HeldOutModel, d
 from workbench.engine.effects import GroupEffects, group_effects
 from workbench.engine.evidence import EdgeEvidence, edge_evidence
 from workbench.engine.folds import balanced_folds
+from workbench.engine.generalised_cca import GeneralisedCCA
+from workbench.engine.generalised_test import generalised_pair_test
+from workbench.engine.generalised_validation import blocks_source, cross_validated_components
 from workbench.engine.intervals import fisher_interval
 from workbench.engine.lookup import PairFigures
 from workbench.engine.multiblock_pls import MultiblockDiscriminant, MultiblockPLS
@@ -84,6 +87,7 @@ __all__ = [
     "EdgeEvidence",
     "FeatureClusters",
     "FittedResiduals",
+    "GeneralisedCCA",
     "GroupEffects",
     "HalfScreen",
     "HeldOutModel",
@@ -114,11 +118,13 @@ __all__ = [
     "balanced_folds",
     "benjamini_hochberg",
     "block_source",
+    "blocks_source",
     "by_visit",
     "canonical_pair_test",
     "centred",
     "choose_ridge",
     "critical_r",
+    "cross_validated_components",
     "cross_validated_correlations",
     "differences",
     "differences_of",
@@ -126,6 +132,7 @@ __all__ = [
     "edge_evidence",
     "fisher_interval",
     "fit_residuals",
+    "generalised_pair_test",
     "group_effects",
     "half_samples",
     "independent_samples",

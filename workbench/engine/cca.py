@@ -74,6 +74,8 @@ class RegularisedCCA(ClassNamePrefixFeaturesOutMixin, TransformerMixin, BaseEsti
         greatest in size is positive.
     x_cross_correlations_, y_cross_correlations_ : ndarray of shape (n_features, n_components)
         Correlation of each feature with the other side's variate.
+    y_loadings_ : ndarray of shape (n_components, q)
+        Regression of the standardised features of Y on the ``v_k``; 0 for a constant one.
     x_explained_, y_explained_ : ndarray of shape (n_components, n_blocks)
         Share of a block's variance that the side's own variate explains beyond the variates before it.
     x_redundancy_, y_redundancy_ : ndarray of shape (n_components, n_blocks)
@@ -172,6 +174,55 @@ class RegularisedCCA(ClassNamePrefixFeaturesOutMixin, TransformerMixin, BaseEsti
             )
         return x_scores, ((y - self.y_mean_) / self.y_scale_) @ self.y_weights_
 
+    def predict(self, X: ArrayLike, correlations: ArrayLike | None = None) -> FloatArray:
+        """Return the other side's features of any samples as their variates of ``X`` predict them, (n_samples, q).
+
+        ``v_k`` is predicted as ``r_k u_k sd(v_k) / sd(u_k)`` and the features by their regression on the ``v_k``.
+        Without ridge and with as many pairs as Y has features this is least squares.
+
+        Parameters
+        ----------
+        X : array of shape (n_samples, p)
+        correlations : array of shape (n_components,), optional
+            The ``r_k``; give those out of sample (:func:`cross_validated_correlations`), negative ones as 0. Left
+            out, those in sample, with which predictions of many features are far too bold.
+        """
+        u = self.transform(X)
+        r = self._pair_correlations(correlations)
+        spreads = np.linalg.norm(self.y_scores_, axis=0) / np.linalg.norm(self.x_scores_, axis=0)
+        predicted: FloatArray = self.y_mean_ + self.y_scale_ * ((u * r * spreads) @ self.y_loadings_)
+        return predicted
+
+    def implied_correlations(
+        self,
+        x_features: NDArray[np.intp],
+        y_features: NDArray[np.intp],
+        correlations: ArrayLike | None = None,
+    ) -> FloatArray:
+        """Return ``sum_k corr(x, u_k) r_k corr(y, v_k)`` of pairs of features: what the pairs say of their correlation.
+
+        Parameters
+        ----------
+        x_features, y_features : ndarray of int, shape (n,)
+            Columns of X and of Y, pair by pair.
+        correlations : array of shape (n_components,), optional
+            The ``r_k``, as in :meth:`predict`.
+        """
+        check_is_fitted(self)
+        r = self._pair_correlations(correlations)
+        implied: FloatArray = np.sum(
+            self.x_correlations_[x_features] * r * self.y_correlations_[y_features], axis=1
+        )
+        return implied
+
+    def _pair_correlations(self, correlations: ArrayLike | None) -> FloatArray:
+        r = self.correlations_ if correlations is None else np.asarray(correlations, dtype=np.float64)
+        if r.shape != (self.n_components_,) or not (np.abs(r) <= 1.0).all():
+            raise NumericsError(
+                f"correlations of shape {r.shape}; give one between -1 and 1 for each of the {self.n_components_} pairs"
+            )
+        return np.maximum(r, 0.0)
+
     def _check_sides(self, X: ArrayLike, Y: ArrayLike | None) -> tuple[FloatArray, FloatArray]:
         if Y is None:
             raise NumericsError(
@@ -218,6 +269,8 @@ class RegularisedCCA(ClassNamePrefixFeaturesOutMixin, TransformerMixin, BaseEsti
         self.x_correlations_, self.y_correlations_ = x_reading.correlations, y_reading.correlations
         self.x_cross_correlations_ = x_reading.cross_correlations
         self.y_cross_correlations_ = y_reading.cross_correlations
+        self.y_loadings_ = np.zeros((v.shape[1], y.varies.size))
+        self.y_loadings_[:, y.varies] = np.linalg.lstsq(v, y.values, rcond=None)[0]
         self.x_explained_, self.y_explained_ = x_reading.explained, y_reading.explained
         self.x_redundancy_, self.y_redundancy_ = x_reading.redundancy, y_reading.redundancy
 
