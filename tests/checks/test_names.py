@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import pandas as pd
 import pytest
 from checks.studies import checked, small_study
 
+from workbench.checks.identifier_columns import check_identifier_columns
 from workbench.checks.identifiers import check_identifiers, damaged_names, similar_names
 from workbench.checks.personal import personal_kind
 
@@ -109,3 +112,24 @@ def test_columns_about_persons_are_recognised(name, cells, kind):
 )
 def test_columns_about_samples_are_left_alone(name, cells):
     assert personal_kind(name, pd.Series(cells)) == ""
+
+
+def test_identifiers_of_a_known_kind_are_held_against_its_form():
+    data = checked(small_study())
+    block = data.blocks["metabolites"]
+    n = len(block.features)
+    cells = [f"HMDB{k:07d}" for k in range(1, n + 1)]
+    cells[3], cells[5], cells[8] = "HMDB122", "HMDB00077", cells[9]
+    names = pd.DataFrame(
+        {"hmdb": cells, "note": [None, *["x"] * (n - 1)]}, index=list(block.features), dtype=object
+    )
+    odd = replace(data, blocks={"metabolites": replace(block, annotations=names)})
+    (found,) = check_identifier_columns(odd)
+    assert (found.id, found.severity) == ("identifiers-metabolites-hmdb", "warning")
+    assert "1 cell with too few or too many digits, perhaps lost zeros: 'HMDB122'" in found.what
+    assert "1 identifier is that of several features" in found.what
+    assert set(found.features) == {block.features[k] for k in (3, 5, 8, 9)}
+    whole = replace(block, annotations=names.assign(hmdb=[f"HMDB{k:05d}" for k in range(n)]))
+    (note,) = check_identifier_columns(replace(data, blocks={"metabolites": whole}))
+    assert note.severity == "note"
+    assert check_identifier_columns(data) == []

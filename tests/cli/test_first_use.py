@@ -211,3 +211,17 @@ def test_the_same_sheet_with_other_parts_tells_which_change(command, made, deliv
     assert code == 0, err
     assert "nothing changes in the sample sheet: it is the same" in out
     assert "group: 'run_day' now, 'group' before" in out
+
+
+def test_identifiers_are_recognised_and_told_when_a_table_comes_in(command, made, tmp_path):
+    samples = [line.split("\t")[0] for line in (made / "samples.tsv").read_text().splitlines()[1:]]
+    lines = [",".join(["gene", *samples])]
+    lines += [
+        ",".join([f"ENSG{k:011d}.{k % 5 + 1}", *(str(k + j) for j in range(len(samples)))]) for k in range(9)
+    ]
+    (tmp_path / "genes.csv").write_text("\n".join(lines) + "\n")
+    words = ("--layer", "transcripts", "--values", "counts", "--project", made)
+    code, out, err = command("add-block", "genes", tmp_path / "genes.csv", *words)
+    assert code == 0, err
+    assert "identifiers: the feature ids: Ensembl identifiers, 0 of 9 cells as they should be" in out
+    assert "9 cells with a version suffix" in out

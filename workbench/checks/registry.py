@@ -12,6 +12,7 @@ from workbench.checks.depth import check_depth
 from workbench.checks.duplicates import check_duplicates
 from workbench.checks.finding import Finding, sorted_findings
 from workbench.checks.gap_patterns import gap_patterns
+from workbench.checks.identifier_columns import check_identifier_columns
 from workbench.checks.identifiers import check_identifiers
 from workbench.checks.kinds import check_kinds
 from workbench.checks.outlying import outlying_samples
@@ -27,6 +28,7 @@ CHECKS: tuple[Check, ...] = (
     check_alignment,
     check_design,
     check_identifiers,
+    check_identifier_columns,
     check_kinds,
     check_duplicates,
     check_depth,

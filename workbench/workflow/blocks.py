@@ -10,10 +10,12 @@ from typing import Any
 import tomlkit
 from anndata import AnnData
 
+from workbench.checks.identifier_columns import texts_of
 from workbench.errors import InputError, WorkbenchError
 from workbench.intake import (
     build_block,
     difference,
+    identifier_columns,
     missing_samples,
     names_table,
     offered_names,
@@ -149,10 +151,18 @@ def _take_in(state: ProjectState, change: Change, delivery: Delivery, tell: Tell
     change.commit({"command": "add-block", "block": name, "replaced": delivery.replace, "sources": sources})
     return (
         *build.decisions,
+        *_identifier_line(build.adata),
         *_own_layer_line(final),
         *_empty_adjust(state, build.adata, final),
         *_cautions(state, name, build.adata, final),
     )
+
+
+def _identifier_line(adata: AnnData) -> tuple[str, ...]:
+    """Return what the feature ids and annotations are that are known here, and what is odd about them."""
+    columns = identifier_columns(tuple(map(str, adata.var_names)), texts_of(adata.var))
+    told = [line for column in columns for line in column.lines()]
+    return (f"identifiers: {'; '.join(told)}",) if told else ()
 
 
 def _cautions(state: ProjectState, name: str, adata: AnnData, block: BlockSettings) -> list[str]:
