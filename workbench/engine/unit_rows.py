@@ -125,11 +125,7 @@ def unit_rows(
     testable : ndarray of bool, shape (n_features,)
     """
     rows = np.array(block.T, dtype=np.float64, order="C")
-    peak = np.abs(rows).max(axis=1)
-    testable = np.isfinite(peak)
-    rows[~testable] = 0.0
-    extreme = testable & (peak > 0.0) & ((peak > _EXTREME) | (peak < 1.0 / _EXTREME))
-    rows[extreme] /= peak[extreme, None]
+    testable = _within_reach(rows)
     if ranks:
         rows = rankdata(rows, axis=1)
     whole = _lengths(rows)
@@ -141,6 +137,19 @@ def unit_rows(
     rows[~testable] = 0.0
     rows /= np.where(testable, left, 1.0)[:, None]
     return rows, testable
+
+
+def _within_reach(rows: FloatArray) -> NDArray[np.bool_]:
+    """Which rows are finite; the others become zero, and those of extreme units are scaled to a peak of 1."""
+    squares = np.einsum("pn,pn->p", rows, rows)
+    if (squares < _EXTREME).all() and (squares > 1.0 / _EXTREME).all():
+        return np.ones(len(rows), dtype=np.bool_)
+    peak = np.abs(rows).max(axis=1)
+    finite: NDArray[np.bool_] = np.isfinite(peak)
+    rows[~finite] = 0.0
+    extreme = finite & (peak > 0.0) & ((peak > _EXTREME) | (peak < 1.0 / _EXTREME))
+    rows[extreme] /= peak[extreme, None]
+    return finite
 
 
 def check_side(source: Columns, n: int | None, what: str) -> None:
