@@ -200,11 +200,10 @@ def _samples(look: PreparationLook) -> pd.DataFrame:
     columns: dict[str, object] = {
         "sample": look.samples,
         "group": groups,
-        "total_measured" if look.values != "log" else "median_measured": look.total,
-        "log2_scale": look.scale,
-        "scale": 2.0**look.scale,
-        "imputed_share": look.imputed,
     }
+    if look.before is not None:
+        columns["total_measured" if look.values != "log" else "median_measured"] = look.total
+    columns |= {"log2_scale": look.scale, "scale": 2.0**look.scale, "imputed_share": look.imputed}
     for when, levels in (("before", look.before), ("after", look.after)):
         if levels is not None:
             columns |= {f"deviation_{when}_{100 * q:.0f}": levels[:, i] for i, q in enumerate(QUANTILES)}

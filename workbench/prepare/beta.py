@@ -99,7 +99,7 @@ class MValues(Settled):
     def transform(self, table: StepTable) -> tuple[StepTable, StepAccount]:
         """Return M-values."""
         ends = int(((table.values == 0) | (table.values == 1)).sum())
-        sentence = f"M-values, {self.rule}; {ends:,} of {table.values.size:,} values were exactly 0 or 1"
+        sentence = f"M-values of all; {ends:,} of {table.values.size:,} values were exactly 0 or 1"
         numbers: dict[str, float | int | str] = {"offset": self.offset, "zeros_and_ones": ends}
         account = StepAccount(self.step, sentence, numbers, reference=DU)
         return table.with_values(m_values(table.values, self.offset)), account

@@ -116,9 +116,9 @@ class TextToNumbers(Settled):
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
-        plain = "two-level text to 0 / 1, other text to one column=level indicator per level"
+        plain = "turns text of two levels into 0 / 1, other text into one column of 0 / 1 per level, named column=level"
         return (
-            f"{plain}; {some([name for name, _ in self.ordered])} to 0, 1, 2 ..." if self.ordered else plain
+            f"{plain}; {some([name for name, _ in self.ordered])} into 0, 1, 2 ..." if self.ordered else plain
         )
 
     def fit(self, table: StepTable, context: FitContext) -> FittedText:  # noqa: ARG002
@@ -265,7 +265,7 @@ class FittedTypical:
         """Return the table without gaps."""
         gaps = np.isnan(table.values)
         count = int(gaps.sum())
-        sentence = f"{count:,} {self.settings.rule}" if count else "no gaps"
+        sentence = f"{count:,} gaps filled, none of which says anything of its sample" if count else "no gaps"
         account = StepAccount(self.settings.step, sentence, {"gaps": count, "values": gaps.size})
         filled = np.where(gaps, self.typical, table.values)
         return replace(table, values=filled, imputed=table.imputed | gaps), account

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from scipy.special import ndtri
 from scipy.stats import rankdata
 
-from workbench.errors import InputError
+from workbench.prepare.refusal import PrepareRefusal
 from workbench.prepare.steps import FitContext, Settled, Step
 from workbench.prepare.tables import Matrix, StepAccount, StepTable, some
 from workbench.settings.prepare_schema import ContinuousPreparation, MixedPreparation
@@ -77,7 +77,7 @@ class Transform(Settled):
 
         Raises
         ------
-        InputError
+        PrepareRefusal
             When a named feature is not there or is text, or a logarithm of zero or less would be taken.
         """
         columns = self._columns(table)
@@ -105,8 +105,9 @@ class Transform(Settled):
         place = {name: column for column, name in enumerate(table.features)}
         text = [name for name in self.features if name in place and not numeric[place[name]]]
         if text:
-            raise InputError(
-                f"`transform_features` names features of text: {some(text)}; only numbers are transformed"
+            raise PrepareRefusal(
+                f"`transform_features` names features of text: {some(text)}; only numbers are transformed",
+                key="prepare.transform_features",
             )
         return np.array([place[name] for name in self.features if name in place], dtype=np.intp)
 
@@ -114,9 +115,11 @@ class Transform(Settled):
         low = np.fmin.reduce(table.values[:, columns], axis=0)
         wrong = [table.features[column] for column, least in zip(columns, low, strict=True) if least <= 0]
         if wrong:
-            raise InputError(
-                f"log of zero or less in {len(wrong)} features: {some(wrong)}; name the features to transform in "
-                '`transform_features`, use "skewed", or transform = "rank"; check the block\'s `values`'
+            raise PrepareRefusal(
+                f"log of zero or less in {len(wrong)} features: {some(wrong)}",
+                key="prepare.transform",
+                fitting=("rank",),
+                advice="name the features to transform in `transform_features`",
             )
 
 
