@@ -67,3 +67,16 @@ def test_without_a_level_nothing_is_pooled(tmp_path, blocks):
     project = study(tmp_path, *blocks)
     with pytest.raises(InputError, match="column 'donor' has several samples of one subject"):
         project.network("main")
+
+
+@pytest.mark.parametrize(
+    ("level", "pair", "rows"), [("visits", ("a02", "b05"), 72), ("subjects", ("a07", "b01"), 24)]
+)
+def test_a_pair_is_shown_at_the_level_that_was_asked_for(tmp_path, blocks, level, pair, rows):
+    project = study(tmp_path, *blocks)
+    ask(project, level)
+    [story] = project.show(*pair)
+    assert story.lines[0].startswith("an edge: r = ")
+    assert story.numbers["r_adjusted"] == pytest.approx(story.numbers["r"], abs=0.1)
+    assert story.drawing is not None
+    assert f"on {rows} samples" in story.drawing.caption

@@ -3,17 +3,17 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from workbench.engine import Nuisance
+from workbench.engine import Nuisance, SubjectDesign, subject_means
 from workbench.engine.far_values import withstand
 from workbench.intake import Groups
-from workbench.workflow.analysis_view import AnalysisView, Shared
-from workbench.workflow.screening import design_columns_of
+from workbench.workflow.analysis_view import AnalysisView
+from workbench.workflow.screening import design_columns_of, is_repeated
 
 FloatArray = NDArray[np.float64]
 
@@ -82,38 +82,84 @@ def pair_values(
     (first, x_name), (second, y_name) = ends
     shared = view.shared((first, second))
     columns = design_columns_of(view, shared, within)
-    nuisance = Nuisance.of(columns, shared.n)
     x, x_imputed = _column(view, first, x_name, shared.samples)
     y, y_imputed = _column(view, second, y_name, shared.samples)
-    left = np.column_stack(
-        [_left(x, columns, private.get(first), shared), _left(y, columns, private.get(second), shared)]
-    )
     removed = list(shared.nuisance_names)
     if within and view.factors:
         removed.append(f"{'+'.join(view.factors)} (group)")
+    taken = _Taken(shared.samples, shared.groups, np.column_stack([x, y]), columns, x_imputed, y_imputed)
+    if is_repeated(shared) and shared.subjects is not None:
+        if view.settings.level == "subjects":
+            taken = _means(taken, shared.subjects, view.study.samples.subject or "", view)
+        else:
+            taken = _deviations(taken, shared.subjects)
+            removed += ["each subject's own mean", "the visits' common course"]
     removed += [
         f"private variation of {block}" for block in (first, second) if private.get(block) is not None
     ]
+    sides = [_left(taken, k, private.get(block)) for k, block in enumerate((first, second))]
     return PairValues(
-        samples=shared.samples,
-        groups=shared.groups,
-        x=x,
-        y=y,
-        x_adjusted=left[:, 0],
-        y_adjusted=left[:, 1],
-        x_imputed=x_imputed,
-        y_imputed=y_imputed,
+        samples=taken.samples,
+        groups=taken.groups,
+        x=taken.values[:, 0],
+        y=taken.values[:, 1],
+        x_adjusted=sides[0],
+        y_adjusted=sides[1],
+        x_imputed=taken.x_imputed,
+        y_imputed=taken.y_imputed,
         removed=tuple(removed),
-        freedom=shared.n - nuisance.rank - 1,
+        freedom=len(taken.samples) - Nuisance.of(taken.columns, len(taken.samples)).rank - 1,
     )
 
 
-def _left(x: FloatArray, columns: FloatArray, private: pd.DataFrame | None, shared: Shared) -> FloatArray:
+@dataclass(frozen=True, eq=False)
+class _Taken:
+    """Both features (n, 2) on some rows, what is to be removed from them, and which values were filled in."""
+
+    samples: tuple[str, ...]
+    groups: Groups | None
+    values: FloatArray
+    columns: FloatArray
+    x_imputed: NDArray[np.bool_]
+    y_imputed: NDArray[np.bool_]
+
+
+def _deviations(taken: _Taken, design: SubjectDesign) -> _Taken:
+    """Add subjects and visits to what is removed: what is left are the changes that the screen compares."""
+    persons = design.subject[:, None] == np.arange(1, design.n_subjects)
+    visits = design.visit[:, None] == np.unique(design.visit)[1:]
+    columns = np.hstack([taken.columns, persons.astype(np.float64), visits.astype(np.float64)])
+    return replace(taken, columns=columns)
+
+
+def _means(taken: _Taken, design: SubjectDesign, column: str, view: AnalysisView) -> _Taken:
+    """Return one row for each subject: the mean of its samples."""
+    first = np.unique(design.subject, return_index=True)[1]
+    groups = taken.groups
+    if groups is not None:
+        constant = np.array_equal(groups.codes, groups.codes[first][design.subject])
+        groups = replace(groups, codes=groups.codes[first]) if constant else None
+    filled = [
+        subject_means(design, mask.astype(np.float64)[:, None])[:, 0] > 0.0
+        for mask in (taken.x_imputed, taken.y_imputed)
+    ]
+    return _Taken(
+        tuple(str(view.sheet.loc[taken.samples[row], column]) for row in first),
+        groups,
+        subject_means(design, taken.values),
+        subject_means(design, taken.columns),
+        filled[0],
+        filled[1],
+    )
+
+
+def _left(taken: _Taken, side: int, private: pd.DataFrame | None) -> FloatArray:
     """Return what the screen tested of one feature: residuals, heavy tails taken off where private variation went."""
+    x, n = taken.values[:, [side]], len(taken.samples)
     if private is None:
-        return Nuisance.of(columns, shared.n).residuals(x[:, None])[:, 0]
-    own = Nuisance.of(np.column_stack([columns, private.loc[list(shared.samples)]]), shared.n)
-    return withstand(own.residuals(x[:, None]), own.n_samples - own.rank)[:, 0]
+        return Nuisance.of(taken.columns, n).residuals(x)[:, 0]
+    own = Nuisance.of(np.column_stack([taken.columns, private.loc[list(taken.samples)]]), n)
+    return withstand(own.residuals(x), own.n_samples - own.rank)[:, 0]
 
 
 def _column(
