@@ -74,7 +74,8 @@ def test_six_against_six_finds_only_what_is_nearly_perfect() -> None:
     assert_allclose(plan.alpha, 0.05 * 0.001 * 0.8 / (0.999 * 0.95))
     assert 0.94 < plan.smallest < 0.97
     told = plan_sentences(plan)
-    assert "750,000 pairs" in told[0]
+    assert "750,000 pairs, of which 0.1 % are" in told[0]
+    assert "rate of 5 % a" in told[0]
     assert "from |r| = 0.95 up" in told[1]
 
 

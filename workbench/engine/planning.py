@@ -261,8 +261,8 @@ def plan_sentences(plan: PairPlan) -> tuple[str, ...]:
     With 12 samples (9 degrees of freedom) a true correlation is found with a chance of 80 % from |r| = 0.95 up.
     """
     lines = [
-        f"{plan.pairs:,} pairs, of which {plan.share:.2%} are taken to be true: at a false-discovery rate of "
-        f"{plan.fdr:.0%} a pair must reach p = {plan.alpha:.1e}."
+        f"{plan.pairs:,} pairs, of which {_percent(plan.share)} are taken to be true: at a false-discovery rate "
+        f"of {_percent(plan.fdr)} a pair must reach p = {plan.alpha:.1e}."
     ]
     if np.isnan(plan.smallest):
         lines.append(
@@ -278,6 +278,10 @@ def plan_sentences(plan: PairPlan) -> tuple[str, ...]:
     told = ", ".join(f"{n:,} for |r| = {r:g}" for r, n in plan.needed)
     lines.append(f"Samples needed with the same design: {told}.")
     return tuple(lines)
+
+
+def _percent(share: float) -> str:
+    return f"{100.0 * share:.3g} %"
 
 
 def _check_samples(n: int, rank: int) -> None:
