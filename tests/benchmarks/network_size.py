@@ -7,7 +7,8 @@ does the same for a study on disk of 100 samples whose four modules give 20,000 
 Seen (one busy core of two, numpy 2.4, networkx 3.6), seconds of processor for 20,000 edges: build 1.3, communities 0.5,
 backbone 0.1, layout 0.2, stability of communities 8 (20 resamples), summary 0.1, GraphML out 1.8 (20 MiB), in 2.2, GEXF
 out 2.1, picture 0.6. The study: network stage 11, stage behind it 21 (400 sets, 999 rewirings 10, 400 permutations of
-the samples 8), comparison of two such studies 2.7. 200,000 edges: build 12, GraphML out 20 (167 MiB), GEXF out 22 (219 MiB).
+the samples 8), comparison of two such studies 2.7. 200,000 edges: build 12, GraphML out 20 (167 MiB), GEXF out 22
+(219 MiB).
 """
 
 from __future__ import annotations
