@@ -42,7 +42,7 @@ def replicated_edges(
     edges tried, ``replicates`` when it is at or under the analysis's fdr.
     """
     table = edges[["source", "source_block", "target", "target_block", "r"]].reset_index(drop=True)
-    table = table.assign(n_there=pd.NA, r_there=np.nan, p=np.nan, why_not_tried="")
+    table = table.assign(n_there=np.nan, r_there=np.nan, p=np.nan, why_not_tried="")
     lines: list[str] = []
     for (first, second), part in table.groupby(["source_block", "target_block"], sort=False):
         if first not in there.blocks or second not in there.blocks:

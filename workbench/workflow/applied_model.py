@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -25,7 +26,12 @@ from workbench.workflow.state import ProjectState
 from workbench.workflow.subjects import subject_design
 from workbench.workflow.supervised_fit import fitted_model
 from workbench.workflow.supervised_outcome import SupervisedStudy, Units, supervised_study
-from workbench.workflow.supervised_source import predictor_features, predictor_values, whole_split
+from workbench.workflow.supervised_source import (
+    blocks_of_split,
+    predictor_features,
+    predictor_values,
+    whole_split,
+)
 
 FloatArray = NDArray[np.float64]
 
@@ -44,7 +50,7 @@ class AppliedModel:
 
 
 def apply_model(
-    state: ProjectState, view: AnalysisView, there: AnalysisView, components: int
+    state: ProjectState, view: AnalysisView, there: AnalysisView, blocks: Sequence[str], components: int
 ) -> AppliedModel:
     """Predict the outcome of another project's samples.
 
@@ -58,6 +64,8 @@ def apply_model(
         Of the project whose analysis it is.
     view, there : AnalysisView
         The analysis, and the other project's blocks under the names that they have here.
+    blocks : sequence of str
+        Blocks of the stored model.
     components : int
         Of the stored model, which is fitted again from the same values.
 
@@ -72,7 +80,7 @@ def apply_model(
             f"analysis '{view.name}': its outcome is the block '{study.name}'; predictions for another project are "
             "made for an outcome of the sample sheet"
         )
-    split = whole_split(study)
+    split = blocks_of_split(whole_split(study), [study.predictors.index(name) for name in blocks])
     model = fitted_model(study, split, components)
     samples = [
         s for s in map(str, there.sheet.index) if any(s in block.samples for block in there.blocks.values())
@@ -80,17 +88,17 @@ def apply_model(
     units, samples = _units_there(study, there, samples)
     nuisance, lines = _nuisance_there(study, there, samples, units)
     parts, absent = [], []
-    for name, kept in zip(study.predictors, split.kept, strict=True):
+    for name, kept in zip(blocks, split.kept, strict=True):
         values, gone = _block_there(state, study, there, name, samples, units, nuisance)
         parts.append(values[:, kept])
         absent.append(gone[kept])
     x = np.hstack(parts)
-    rows = np.isfinite(x).any(axis=1)
+    rows: NDArray[np.bool_] = np.asarray(np.isfinite(x).any(axis=1))
     if not rows.any():
         raise InputError(f"analysis '{view.name}': no sample there has a block that the model can use")
-    missing, cost = _missing_table(study, split.kept, absent, model.coef_, model.vip_)
+    missing, cost = _missing_table(study, blocks, split.kept, absent, model.coef_, model.vip_)
     lines += _missing_lines(missing, cost, x.shape[1])
-    lines += _lacking_lines(study, parts, rows)
+    lines += _lacking_lines(blocks, parts, rows)
     names = tuple(name for name, held in zip(units.names, rows, strict=True) if held)
     truth = _truth(study, there, units, samples)[rows]
     if isinstance(model, MultiblockDiscriminant):
@@ -239,6 +247,7 @@ def aligned_table(here: MeasuredTable, there: MeasuredTable) -> tuple[MeasuredTa
 
 def _missing_table(
     study: SupervisedStudy,
+    blocks: Sequence[str],
     kept: tuple[NDArray[np.intp], ...],
     absent: list[NDArray[np.bool_]],
     coefficients: FloatArray,
@@ -248,7 +257,7 @@ def _missing_table(
     rows, start = [], 0
     squares = (coefficients**2).sum(axis=0)
     share = squares / squares.sum() if squares.sum() > 0.0 else squares
-    for name, inside, gone in zip(study.predictors, kept, absent, strict=True):
+    for name, inside, gone in zip(blocks, kept, absent, strict=True):
         features = predictor_features(study, name)
         for k in np.flatnonzero(gone):
             rows.append((features[inside[k]], name, share[start + k], vip[start + k]))
@@ -270,9 +279,9 @@ def _missing_lines(missing: pd.DataFrame, cost: float, total: int) -> list[str]:
     ]
 
 
-def _lacking_lines(study: SupervisedStudy, parts: list[FloatArray], rows: NDArray[np.bool_]) -> list[str]:
+def _lacking_lines(blocks: Sequence[str], parts: list[FloatArray], rows: NDArray[np.bool_]) -> list[str]:
     lines = []
-    for name, values in zip(study.predictors, parts, strict=True):
+    for name, values in zip(blocks, parts, strict=True):
         lacking = int(np.isnan(values[rows]).all(axis=1).sum())
         if lacking:
             lines.append(
@@ -287,13 +296,11 @@ def _truth(study: SupervisedStudy, there: AnalysisView, units: Units, samples: l
         return np.full(len(units.names), np.nan)
     series = there.sheet.loc[samples, study.name]
     cells = present(series)
-    truth = pd.Series(np.nan, index=pd.Index(samples))
     if isinstance(study.outcome, ClassOutcome):
         known = {level: float(g) for g, level in enumerate(study.levels)}
-        truth.loc[[str(s) for s in cells.index]] = [known.get(str(cell), np.nan) for cell in cells]
-        if units.level == "subjects":
-            return truth.loc[list(units.names)].to_numpy()
-        return truth.to_numpy()
+        by_sample = {str(sample): known.get(str(cell), np.nan) for sample, cell in cells.items()}
+        wanted = units.names if units.level == "subjects" else samples
+        return np.array([by_sample.get(sample, np.nan) for sample in wanted])
     numbers = column_numbers(series)
     if numbers is None:
         return np.full(len(units.names), np.nan)

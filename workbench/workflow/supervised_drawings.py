@@ -31,7 +31,7 @@ def supervised_view(result: SupervisedResult) -> SupervisedView:
         fitted=fitted,
         held_out=held_out,
         roc_scores=scores,
-        blocks=study.predictors,
+        blocks=result.blocks,
         importance=result.model.block_importance_,
         measure=result.measure,
         candidates=validation.candidates,
@@ -77,7 +77,8 @@ def _scores(result: SupervisedResult) -> tuple[FloatArray, FloatArray, FloatArra
 def _panel(result: SupervisedResult, named: list[tuple[str, str]]) -> tuple[FloatArray, NDArray[np.bool_]]:
     if result.panel is None:
         return np.full(len(named), np.nan), np.zeros(len(named), dtype=bool)
-    shares, chosen = {}, set()
+    shares: dict[tuple[str, str], float] = {}
+    chosen: set[tuple[str, str]] = set()
     for b, block in enumerate(result.study.predictors):
         features = predictor_features(result.study, block)
         shares |= {
