@@ -7,8 +7,7 @@ bare product is the faster of two: the library's own threads, and tiles shared o
 machine the library's threads wait for each other and the former is up to five times slower).
 
 Measured with other work on both cores (load 8 to 11; AMD EPYC, numpy 2.4.6), 1e8 pairs, n = 100, 9 rounds: one
-thread 1.67 (nothing shared) and 1.73 (105,197 edges), two threads 1.44 and 1.60; on a quieter machine, one thread,
-1.4 and 1.5.
+thread 1.67 (nothing shared) and 1.73 (105,197 edges), two threads 1.44 and 1.60.
 """
 
 from __future__ import annotations

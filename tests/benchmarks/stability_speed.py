@@ -5,7 +5,7 @@ the bare product writes every tile to one buffer and looks at none.
 
 Measured with other work on both cores (load 10), one thread, 20 halves: n = 100, 10,000 x 10,000 ratio 1.8; n = 60,
 20,000 x 5,000 2.2; n = 100, 5,000 x 2,000 2.9; n = 96, 3,000 x 250 11 (35 ms a half: what is not a product weighs
-more). In processor time on 1e8 pairs, n = 100: 1.6, of which 0.3 is removing the nuisance anew in each half.
+more). In processor time on 1e8 pairs, n = 100: 1.6 to 2.0, of which 0.3 is removing the nuisance anew in each half.
 """
 
 from __future__ import annotations
