@@ -40,7 +40,9 @@ def balanced_codes(labels: IndexArray, n_classes: int) -> FloatArray:
     means = np.divide(belongs, counts, out=np.zeros(belongs.shape), where=counts > 0)
     means[:, :, (counts == 0).any(axis=0) & (n_classes == 2)] = 0.0
     if n_classes == 2:
-        return labels.shape[0] / 2.0 * (means[:, 1:] - means[:, :1])
+        codes: FloatArray = labels.shape[0] / 2.0 * (means[:, 1:] - means[:, :1])
+        return codes
     held = np.maximum((counts > 0).sum(axis=0), 1)
     centred: FloatArray = means - np.where(counts > 0, 1.0, 0.0) * means.sum(axis=1, keepdims=True) / held
-    return labels.shape[0] / n_classes * centred
+    codes = labels.shape[0] / n_classes * centred
+    return codes

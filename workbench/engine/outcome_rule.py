@@ -41,8 +41,8 @@ class ClassRule:
         """Class of each sample, from 0."""
         decision = self.decision(values)
         if decision.shape[1] == 1:
-            return (decision[:, 0] > 0.0).astype(np.intp)
-        return decision.argmax(axis=1)
+            return np.asarray(decision[:, 0] > 0.0, dtype=np.intp)
+        return np.asarray(decision.argmax(axis=1), dtype=np.intp)
 
     def probabilities(self, values: FloatArray) -> FloatArray:
         """Probability of each class if all were equally frequent, shape (n_samples, n_classes)."""

@@ -80,7 +80,8 @@ class ClassPerformance:
     auc : ndarray of shape (repeats,)
         Area under the ROC curve; of more than two classes the mean over each against the rest.
     auc_error : float
-        Standard error of the mean AUC over the repeats (DeLong et al. 1988, from each sample's mean placement).
+        Standard error of the mean AUC over the repeats (DeLong et al. 1988, from each sample's mean placement),
+        at least that of half a sample of the smallest class: an area of 1 is not known for certain.
     brier : ndarray of shape (repeats,)
         Mean squared distance of the probabilities from the truth, each class counting alike; ``1 - 1/G`` is
         what knowing nothing gives.
@@ -173,7 +174,8 @@ def _placements(labels: IndexArray, scores: FloatArray, n_classes: int) -> Float
 
 def _by_class(values: FloatArray, labels: IndexArray, n_classes: int) -> FloatArray:
     """Mean over the classes of the mean over a class's scored samples, for each repeat."""
-    return np.mean([np.nanmean(values[:, labels == g], axis=1) for g in range(n_classes)], axis=0)
+    means = [np.nanmean(values[:, labels == g], axis=1) for g in range(n_classes)]
+    return np.asarray(np.mean(means, axis=0))
 
 
 def _delong(placements: FloatArray, labels: IndexArray, n_classes: int) -> float:
@@ -183,7 +185,8 @@ def _delong(placements: FloatArray, labels: IndexArray, n_classes: int) -> float
     variances = [part.var(ddof=1) / part.size if part.size > 1 else np.nan for part in parts]
     # With two classes both means of the placements are the same area, estimated from either side.
     scale = 1.0 if n_classes == 2 else 1.0 / n_classes
-    return float(np.sqrt(np.sum(variances)) * scale)
+    least = 0.5 / min(part.size for part in parts)
+    return float(max(np.sqrt(np.sum(variances)) * scale, least))
 
 
 def _confusion(labels: IndexArray, predicted: IndexArray, n_classes: int) -> FloatArray:

@@ -191,7 +191,7 @@ def importance_of_features(view: SupervisedView, axes: Axes) -> Axes:
     for place, length, share, chosen in zip(places, view.vip, view.frequency, view.in_panel, strict=True):
         if np.isfinite(share):
             mark = "\N{BULLET} " if chosen else ""
-            say(axes, length, place, f"  {mark}{share:.0%}", ha="left", va="center", fontsize=SMALL)
+            say(axes, length, float(place), f"  {mark}{share:.0%}", ha="left", va="center", fontsize=SMALL)
     axes.set_ylim(len(view.names) - 0.4, -0.6)
     plain_ticks(axes, "y", places, [figure_name(name, 22) for name in view.names])
     axes.set_xlim(0.0, 1.18 * float(view.vip.max(initial=1.0)))
