@@ -164,7 +164,7 @@ def test_a_sheet_edited_in_place_is_noticed_and_not_taken_for_damage(command, fi
     assert code == 0
     done = next(line for line in err.splitlines() if line.startswith("done: "))
     assert "prepare:lcms" in done
-    assert "integrate" not in done
+    assert "network" not in done
 
 
 def test_an_init_that_was_killed_can_be_done_again(command, tmp_path):
