@@ -27,7 +27,9 @@ from workbench.workflow import blocks as workflow_blocks
 from workbench.workflow import plan
 from workbench.workflow.blocks import Tell, no_words
 from workbench.workflow.checking import stored_findings
+from workbench.workflow.comparing import Comparison, run_compare
 from workbench.workflow.create import DEFAULT_TEMPLATE, create_project
+from workbench.workflow.knowledge import add_knowledge, pathways_stages
 from workbench.workflow.preparing import account_of
 from workbench.workflow.removing import remove_block
 from workbench.workflow.reporting import SILENT, Reporter
@@ -312,6 +314,23 @@ class Project:
         return keep_figures(
             state.root, state.one_analysis(analysis), stories, None if file is None else Path(file)
         )
+
+    def pathways(
+        self,
+        *analyses: str,
+        sets: str | Path | None = None,
+        links: str | Path | None = None,
+        reporter: Reporter = SILENT,
+    ) -> Outcome:
+        """Follow the networks of the named analyses, or of all; tables of sets and links that are given are kept."""
+        if sets is not None or links is not None:
+            given = [None if path is None else Path(path) for path in (sets, links)]
+            add_knowledge(self.paths, analyses, *given)
+        return run_stages(self.paths, "pathways", lambda state: pathways_stages(state, analyses), reporter)
+
+    def compare(self, first: str, second: str, *, by: str | None = None) -> Comparison:
+        """Compare two analyses, of this project or of others (``FOLDER:ANALYSIS``); tables go to results/compare."""
+        return run_compare(self.paths, (first, second), by)[0]
 
     def result(self, analysis: str) -> Result:
         """Return what an analysis wrote."""

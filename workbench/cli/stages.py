@@ -103,12 +103,13 @@ def run(
 def _summarise(project: Project, analyses: list[str]) -> None:
     from workbench.network import network_summary
 
+    fresh = {one.stage.name for one in project.plan(*analyses) if one.reason is None}
     for analysis in analyses:
         result = project.result(analysis)
         folder = project.paths.analysis(analysis)
         answer([f"{analysis}:", *(f"  {line}" for line in network_summary(result.graph))])
         answer([f"  edges: {folder / 'edges.tsv'}", f"  network: {folder / 'network.graphml'}"])
-        if (folder / "followup.tsv").exists():
+        if f"pathways:{analysis}" in fresh:
             answer([f"  short list: {folder / 'followup.tsv'}", *_first_of_all(result.followup)])
 
 

@@ -42,11 +42,11 @@ def doubts_of(edge: Mapping[str, Any], fdr: float) -> list[str]:
         without = (
             "too few samples are left without them" if seen is None else f"without those r is {seen:.2f}"
         )
-        found.append(f"one of the two values was filled in for {share:.0%} of the samples; {without}")
+        found.append(f"one of the two values was filled in for {100 * share:.0f} % of the samples; {without}")
     stability = _number(edge, "stability")
     if stability is not None and stability < UNSTABLE:
         found.append(
-            f"it is among the strongest pairs in only {stability:.0%} of the half-samples (stability)"
+            f"it is among the strongest pairs in only {100 * stability:.0f} % of the half-samples (stability)"
         )
     if edge.get("support") == "module":
         found.append("its module carries it; the pair alone does not pass (support)")

@@ -116,7 +116,7 @@ def _small_design(view: AnalysisView, freedom: int) -> list[str]:
     smallest = smallest_correlation(freedom + 2, alpha, POWER) if freedom >= 2 else 1.0
     return [
         f"few samples: if one pair in {1 / SHARE:,.0f} is true, only true correlations of {smallest:.2f} or more are "
-        f"likely to be found (chance {POWER:.0%}); `workbench plan` says how many samples weaker ones need"
+        f"likely to be found (chance {100 * POWER:.0f} %); `workbench plan` says how many samples weaker ones need"
     ]
 
 

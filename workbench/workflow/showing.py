@@ -114,9 +114,12 @@ def _feature_story(state: ProjectState, analysis: str, tables: Tables, row: pd.S
 
 
 def _feature_line(row: pd.Series) -> str:
-    parts = [f"mean {row['mean']:.3g} (prepared units)", f"{row['missing_share']:.0%} missing as delivered"]
+    parts = [
+        f"mean {row['mean']:.3g} (prepared units)",
+        f"{100 * row['missing_share']:.0f} % missing as delivered",
+    ]
     if row["imputed_share"] > 0.0:
-        parts.append(f"{row['imputed_share']:.0%} filled in")
+        parts.append(f"{100 * row['imputed_share']:.0f} % filled in")
     if "group_p" in row and not pd.isna(row["group_p"]):
         parts.append(
             f"group effect {row['group_effect']:+.2f}, p = {row['group_p']:.2g}, q = {row['group_q']:.2g}"
