@@ -23,7 +23,7 @@ from workbench.engine.subjects import SubjectDesign, differences, subject_means
 
 Keys = np.ndarray
 
-NEAR = 1e-3
+NEAR = 0.05
 """By hand, pairs of larger p are not ranked."""
 
 

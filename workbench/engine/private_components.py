@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.stats import rankdata
 
-from workbench.engine.far_values import withstand
+from workbench.engine.far_values import excess_kurtosis, withstand
 from workbench.engine.linear import thin_basis
 from workbench.engine.nuisance import CONSTANT_TOLERANCE, Nuisance
 from workbench.engine.scree import parallel_analysis
@@ -22,6 +22,7 @@ IndexArray = NDArray[np.intp]
 FEWEST_DIMENSIONS = 20
 MOST_SWEEPS = 30
 SMALL_ANGLE = 1e-4
+SIMPLE = 0.5
 
 
 @dataclass(frozen=True, eq=False)
@@ -59,10 +60,10 @@ def block_components(values: FloatArray, nuisance: Nuisance, *, ranks: bool, see
     """Real components of a block after its nuisance, by the rule of ``signal_components``, turned to be simple.
 
     Principal components of about equal strength are arbitrary mixtures of the factors behind them, and a
-    mixture of a shared and a private one can neither be removed nor tested. Turned by varimax each goes with
-    as few features as can be, which only looks at the block itself. With fewer features than samples the
-    number is held to parallel analysis. No component is real where the nuisance leaves fewer than
-    ``FEWEST_DIMENSIONS`` dimensions.
+    mixture of a shared and a private one can neither be removed nor tested. Those that can be are turned to
+    go with few features (:func:`simple_rotation`), which only looks at the block itself. With fewer features
+    than samples the number is held to parallel analysis. No component is real where the nuisance leaves fewer
+    than ``FEWEST_DIMENSIONS`` dimensions.
 
     Parameters
     ----------
@@ -86,10 +87,31 @@ def block_components(values: FloatArray, nuisance: Nuisance, *, ranks: bool, see
     if not scores.shape[1]:
         return nothing
     scores = np.linalg.qr(nuisance.residuals(scores))[0]
-    scores = scores @ varimax(z.T @ scores)
+    scores = scores @ simple_rotation(z.T @ scores)
     shares = np.sum((z.T @ scores) ** 2, axis=0) / p
     order = np.argsort(-shares, kind="stable")
     return BlockComponents(z, kept, scores[:, order], shares[order], n - nuisance.rank)
+
+
+def simple_rotation(loadings: FloatArray) -> FloatArray:
+    """Rotation to components of few features each, as far as there are such; shape (k, k).
+
+    Varimax, of which those components are kept whose loadings have heavier tails than normal ones: an excess
+    kurtosis above ``SIMPLE`` and above three of its standard errors. Between factors that reach most
+    features varimax has nothing to go by, and mixes them worse than they are; what is left of the space is
+    therefore given by its principal components.
+
+    Parameters
+    ----------
+    loadings : ndarray of shape (n_features, k)
+    """
+    rotation = varimax(loadings)
+    turned = loadings @ rotation
+    limit = max(SIMPLE, 3.0 * np.sqrt(24.0 / loadings.shape[0]))
+    simple = excess_kurtosis(turned) > limit
+    rest = turned[:, ~simple]
+    principal = np.linalg.eigh(rest.T @ rest)[1][:, ::-1]
+    return np.hstack([rotation[:, simple], rotation[:, ~simple] @ principal])
 
 
 def varimax(loadings: FloatArray) -> FloatArray:
