@@ -101,6 +101,8 @@ def blocks_present(x: FloatArray, blocks: Sequence[slice]) -> NDArray[np.bool_]:
     NumericsError
         When a block of a sample is missing in part, or a sample has no block at all.
     """
+    if not np.isnan(x.sum()):
+        return np.ones((x.shape[0], len(blocks)), dtype=bool)
     missing = np.isnan(x)
     whole = np.column_stack([missing[:, block].all(axis=1) for block in blocks])
     partly = np.column_stack([missing[:, block].any(axis=1) for block in blocks]) & ~whole

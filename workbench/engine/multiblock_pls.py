@@ -88,14 +88,17 @@ class _MultiblockModel(ClassNamePrefixFeaturesOutMixin, TransformerMixin, BaseEs
 
     def _store(self, found: KernelComponents) -> None:
         x, blocks = self._training, self._scaling.blocks
-        weights, along = x.T @ found.duals, x.T @ found.scores
+        columns = np.hstack([found.duals, found.scores, found.rotations, found.coefficients])
+        products = x.T @ columns
+        count = found.lengths.size
+        weights, along = products[:, :count], products[:, count : 2 * count]
         signs = component_signs(along)
         self.x_weights_, self.x_loadings_ = weights * signs, along / found.lengths * signs
-        self.x_rotations_ = x.T @ found.rotations * signs
+        self.x_rotations_ = products[:, 2 * count : 3 * count] * signs
         self.x_scores_ = found.scores * found.lengths * signs
         self.y_weights_, self.y_loadings_ = found.y_weights * signs, found.y_loadings / found.lengths * signs
         self.block_importance_ = np.array([(weights[block] ** 2).sum(axis=0) for block in blocks]).T
-        total = np.array([(x[:, block] ** 2).sum() for block in blocks])
+        total = np.array([np.vdot(x[:, block], x[:, block]) for block in blocks])
         shares = np.array([(along[block] ** 2).sum(axis=0) for block in blocks]).T
         self.x_explained_ = np.divide(shares, total, out=np.full(shares.shape, np.nan), where=total > 0.0)
         of_outcomes = (found.y_loadings**2).sum(axis=0)
@@ -108,7 +111,7 @@ class _MultiblockModel(ClassNamePrefixFeaturesOutMixin, TransformerMixin, BaseEs
         self.block_weights_, self.train_block_scores_ = self._block_parts(found)
         self.x_mean_, self.x_scale_, self.x_kept_ = self._scaling.mean, self._scaling.scale, varies
         self.lacking_ = self._scaling.lacking
-        self._coefficients = x.T @ found.coefficients
+        self._coefficients = products[:, 3 * count :]
 
     def _block_parts(self, found: KernelComponents) -> tuple[FloatArray, FloatArray]:
         """Block weights of length 1, and the block scores that they give after the earlier super scores."""
