@@ -21,7 +21,7 @@ Seen (share of studies with p <= 0.05; Kolmogorov-Smirnov p, or one-sided binomi
     24, heavy tails, nuisance   0.037  KS 0.006     second pair: 24, p > n, nuisance 0.035  0.94
     third pair: 60, p < n (300) 0.040  0.82         third pair: 24, p > n            0.033  0.96
 
-Heavy tails with a nuisance at 24 samples: a little too careful. The visits with p < n are exact by construction (nothing
+Heavy tails with a nuisance at 24 samples: a little too careful. Visits with p < n are exact by construction (nothing
 but whole subjects is exchanged); another 400 seeds gave KS 0.17. Removing earlier pairs at the ridge of the test
 instead of at a tenth of the noise level: third pair, 60, p < n 0.165.
 

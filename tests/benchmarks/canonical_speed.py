@@ -1,6 +1,10 @@
 """Seconds for ridge canonical pairs and their test beside one fit of scikit-learn's CCA and PLSCanonical.
 
-100 samples of 20,000 and 5,000 features. Run: python tests/benchmarks/canonical_speed.py
+100 samples of 20,000 and 5,000 features. Seen in one process, seconds of processor on one thread of a busy machine: fit
+with "auto" 0.50, 1,000 permutations 2.89, scikit-learn PLSCanonical 4.24, CCA 2.27. 300 samples of 20,000 and 20,000
+features: fit 4.3, 100 permutations 3.5, peak 0.49 GB.
+
+Run: python tests/benchmarks/canonical_speed.py
 """
 
 from __future__ import annotations
