@@ -23,7 +23,8 @@ TAILS = 8.0
 EULER = 0.5772156649015329
 LEAST_BOUND = 3.75
 SMALLEST_SPREAD = 0.1
-RARER = {TUBES: 1.0, SHEET: 1.0}
+STANDING = 0.5
+RARER = {TUBES: 1.0, SHEET: 1.5}
 
 
 def clean_bounds(
@@ -70,11 +71,15 @@ def clean_bounds(
 
 
 def _common_bounds(largest: Mapping[str, FloatArray], level: float) -> dict[str, float]:
-    """Return bounds, equally many spreads above each kind's mean (and ``RARER``), that any passes at ``level``."""
+    """Return bounds, equally many spreads above each kind's mean (and ``RARER``), that any passes at ``level``.
+
+    Drawn studies have no second look, which at most a share ``STANDING`` of the largest evidence in clean studies
+    stands: each sample has to gain, and to go with its new row (half is more than was measured).
+    """
     centre = {kind: float(most.mean()) for kind, most in largest.items()}
     spread = {kind: max(float(most.std(ddof=1)), SMALLEST_SPREAD) for kind, most in largest.items()}
     excess = [(most - centre[kind]) / spread[kind] - RARER.get(kind, 0.0) for kind, most in largest.items()]
-    passed = _quantile(np.max(excess, axis=0), level) if excess else 0.0
+    passed = _quantile(np.max(excess, axis=0), min(level / STANDING, 0.5)) if excess else 0.0
     return {
         kind: max(centre[kind] + spread[kind] * (passed + RARER.get(kind, 0.0)), LEAST_BOUND)
         for kind in largest

@@ -90,8 +90,8 @@ def find_swapped_samples(
     without learning from them, and the loss after. It is accepted above a bound that any exchange in clean
     studies like this one passes with probability ``level`` (:func:`~workbench.engine.swap_bound.clean_bounds`),
     when every one of the samples has a share of what is mended and goes with its new row: a row that belongs to
-    nobody is no swap. A cycle of three has to pass ``log(cycles / pairs)`` more, and ``log(1 / level)`` on top of
-    that to be preferred to a pair. The search goes on from the accepted arrangement until none passes.
+    nobody is no swap. A cycle of three has to pass ``log(cycles / pairs)`` more, and by ``log(1 / level)`` more
+    than a pair to be preferred to it. The search goes on from the accepted arrangement until none passes.
 
     Parameters
     ----------
@@ -171,8 +171,7 @@ def _best_step(
     cycles = cycle_candidates(pairs, states, matches, bounds, CYCLE_SLACK)
     pair, cycle = (best_weighed(found, bounds, states, matches) for found in (pairs, cycles))
     # A cycle holds every pair of its three with one sample more: it has to be worth that one.
-    dearer = bounds.cycle - math.log(level)
-    best = cycle if cycle and (pair is None or cycle.gain >= pair.gain + dearer) else pair
+    best = cycle if cycle and (pair is None or cycle.margin >= pair.margin - math.log(level)) else pair
     if best is not None:
         best = held_to_its_own(
             best, partial(clean_bounds, states, level=level, random_state=seed), states, matches
