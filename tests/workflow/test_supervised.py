@@ -211,3 +211,26 @@ def test_samples_without_an_outcome_are_left_out_and_counted(tmp_path):
     lines = integrate(project)
     assert any(line == "4 samples left out: no value in column 'status'" for line in lines)
     assert len(table(project, "predictions")) == 36
+
+
+@pytest.mark.parametrize(
+    ("template", "outcome", "group"),
+    [("two-classes", "condition", "condition"), ("numeric-outcome", "reading", ())],
+)
+def test_a_project_from_a_template_runs(classes, tmp_path, template, outcome, group):
+    from workbench import Project
+
+    delivered = classes[0].paths.root.parent
+    sheet = pd.read_csv(delivered / "samples.tsv", sep="\t", index_col=0).rename(
+        columns={"status": "condition"}
+    )
+    sheet.to_csv(tmp_path / "samples.tsv", sep="\t")
+    project = Project.create(tmp_path / "study", title="From a template", template=template)
+    project.add_samples(tmp_path / "samples.tsv", group=group, adjust=("age",))
+    project.add_block("rna", delivered / "rna.tsv", layer="transcripts", values="counts")
+    project.add_block("lcms", delivered / "lcms.csv", layer="metabolites", values="intensities")
+    text = project.paths.settings.read_text()
+    assert f'outcome = "{outcome}"' in text
+    project.paths.settings.write_text(text.replace("repeats = 10", "repeats = 1\npermutations = 39"))
+    lines = integrate(project)
+    assert any(line.startswith("held out: ") for line in lines)
