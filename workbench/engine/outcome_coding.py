@@ -44,5 +44,5 @@ def balanced_codes(labels: IndexArray, n_classes: int) -> FloatArray:
         return codes
     held = np.maximum((counts > 0).sum(axis=0), 1)
     centred: FloatArray = means - np.where(counts > 0, 1.0, 0.0) * means.sum(axis=1, keepdims=True) / held
-    codes = labels.shape[0] / n_classes * centred
-    return codes
+    balanced: FloatArray = labels.shape[0] / n_classes * centred
+    return balanced
