@@ -238,7 +238,7 @@ MALFORMED = {
         "a.csv",
         "id;S1;S2\ng1;1,5;2\n",
         {"values": "counts"},
-        ["1 cell holds no number", "'1,5', a decimal comma"],
+        ["1 cell is not whole", "written with decimal commas", "'1,5'", "choose other values"],
     ),
     "a decimal mark that is none": (
         "a.tsv",
@@ -347,6 +347,18 @@ MALFORMED = {
             "no proportions",
             "2 samples add up to more than 100 ('S1' to 1,200, 'S3' to 703)",
             "these may be counts",
+        ],
+    ),
+    "intensities with decimal commas declared as counts": (
+        "a.csv",
+        "id;S1;S2;S3\ng1;11204,5;2;3,25\ng2;1;2;3\n",
+        {"values": "counts"},
+        [
+            "2 cells are not whole",
+            "written with decimal commas",
+            "line 2, column 2",
+            "'11204,5'",
+            "intensities, log",
         ],
     ),
     "intensities declared as proportions": (

@@ -42,9 +42,7 @@ def _of_column(block: CheckedBlock, column: IdentifierColumn) -> list[Finding]:
         + list(column.several)
         + [row for shared in column.shared.values() for row in shared]
     )
-    lines = column.lines()
-    told = [line for line in lines if "made a date" not in line]
-    what = f"block '{block.name}': {'; '.join(told)}"
+    what = f"block '{block.name}': {column.sentence()}"
     todo = "mend them in the file that they come from: they cannot be looked up as they are"
     if not spoilt:
         todo = (

@@ -90,6 +90,12 @@ class IdentifierColumn:
             )
         return told
 
+    def sentence(self) -> str:
+        """Return `lines` as one sentence that names the column once."""
+        first, *others = self.lines()
+        start = f"{first.split(': ', 1)[0]}: "
+        return "; ".join([first, *(line.removeprefix(start) for line in others)])
+
 
 @dataclass(frozen=True)
 class _Kind:

@@ -166,7 +166,25 @@ class _Reader:
                 finder.take(found, mark, decimals=bool((found != np.rint(found)).any()))
         if finder.unclear:
             raise self._unclear()
+        if whole and finder.marks() is None:
+            self._refuse_fractions(self._find_marks(decimal, False))
         return finder.marks()
+
+    def _refuse_fractions(self, marks: Marks | None) -> None:
+        """Refuse counts whose cells agree on one writing, in which they are no whole numbers."""
+        if marks is None or marks.plain:
+            return
+        faults = Faults(self.part.raw.path)
+        for place, cell in self._comma_cells():
+            number = marks.number(cell.strip())
+            if number is not None and number != np.rint(number):
+                faults.add(f"{place}: {shown(cell)}")
+        if faults.total:
+            raise faults.error(
+                f"{counted(faults.total, 'cell is', 'cells are')} not whole (all numbers are written with "
+                f"{marks.told()}), though the values are counts",
+                "choose other values for this block (intensities, log, continuous) when it holds no counts",
+            )
 
     def _unclear(self) -> InputError:
         faults = Faults(self.part.raw.path)

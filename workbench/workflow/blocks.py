@@ -161,7 +161,7 @@ def _take_in(state: ProjectState, change: Change, delivery: Delivery, tell: Tell
 def _identifier_line(adata: AnnData) -> tuple[str, ...]:
     """Return what the feature ids and annotations are that are known here, and what is odd about them."""
     columns = identifier_columns(tuple(map(str, adata.var_names)), texts_of(adata.var))
-    told = [line for column in columns for line in column.lines()]
+    told = [column.sentence() for column in columns]
     return (f"identifiers: {'; '.join(told)}",) if told else ()
 
 

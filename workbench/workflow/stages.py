@@ -14,7 +14,7 @@ from workbench.workflow.state import ProjectState, load_state
 
 NOT_DONE = "not done yet"
 REFUSED = "cannot be done as things stand; `workbench check` says why"
-REFUSED_KEY = "refused "
+REFUSED_KEY = "refusal of "
 LARGEST_HASHED = 20_000_000
 
 
@@ -26,7 +26,7 @@ class Stage:
     ``outputs`` through the change that it is handed, and returns the names of those that it wrote besides
     (figures that these data allow).  ``needs`` names the stages that come before; ``gate`` looks at the stage's
     answer, fresh or not, and stops a command that has more stages to run.  A ``tolerant`` stage runs also when a
-    stage that it needs was refused: ``state.refused`` says why, and an input ``refused NAME`` keeps what led to it.
+    stage that it needs was refused: ``state.refused`` says why, and an input ``refusal of NAME`` keeps what led to it.
     """
 
     kind: str
