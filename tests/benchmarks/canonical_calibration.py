@@ -19,6 +19,8 @@ Seen (share of studies with p <= 0.05; Kolmogorov-Smirnov p, or one-sided binomi
     24, heavy tails             0.065  KS 0.85      second pair: 60, p < n           0.043  0.79
     60, heavy tails, nuisance   0.043  KS 0.08      second pair: 60, p > n           0.035  0.94
     24, heavy tails, nuisance   0.037  KS 0.006     second pair: 24, p > n, nuisance 0.035  0.94
+    differences, second (200)   0.055  0.42         replicates, second (120)         0.042  0.72
+    16 x 4 visits, p < n, second pair (300) 0.047  0.64
     third pair: 60, p < n (300) 0.040  0.82         third pair: 24, p > n            0.033  0.96
 
 Heavy tails with a nuisance at 24 samples: a little too careful. Visits with p < n are exact by construction (nothing
