@@ -12,9 +12,10 @@ Run: python tests/benchmarks/swaps.py [--n 24 40 60 96] [--seeds 0 20] [--famili
 Measured on two shared processors, seeds between 0 and 70, no family with all its 20 seeds: n = 24, strength 1.4:
 41 of 49 pairs found (across run days 23 of 25, within a day 18 of 24), 0 of 19 clean studies accused; n = 60,
 strength 1.0: 7 of 7, 0 of 4 accused. Clean families: n = 24 2 of 36 accused, n = 40 0 of 12, n = 60 0 of 16. Together
-2 of 87 clean studies. The version before this one (bounds for half the level, for n = 60 the same but for details): n = 60
-51 of 52 found, 2 of 52 clean studies accused; clean families n = 24 0 of 33, n = 40 1 of 11, n = 60 and 96
-0 of 11 each. An earlier one at n = 24: strength 2.0 60 of 72 found, strength 1.0 28 of 69, 2 of 216 clean accused.
+2 of 87 clean studies. Versions before this one, with somewhat stricter bounds: n = 60, strength 1.0: 51 of 52 found,
+2 of 52 clean studies accused; clean families n = 24 0 of 33, n = 40 1 of 11, n = 60 and 96 0 of 11 each.
+The first with factors compared one by one, n = 24: strength 2.0 60 of 72 found, strength 1.0 28 of 69, 2 of 216
+clean studies accused.
 
 The oracle at n = 24, 20 seeds of each of six families: strength 1.4 115 of 120, strength 1.0 118 of 120. What two
 exchanged tubes tell is there even in two dozen samples; what is lacking is knowing which features share what, learnt

@@ -4,7 +4,7 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from simulated import Design, simulate
+from simulated import Design, metabolites, simulate, transcripts
 from swap_studies import exchange, exchanged, factor_layers, found_in, swap_layers
 
 from workbench.engine.swap_layers import SwapLayer
@@ -103,6 +103,14 @@ def test_a_row_that_matches_nobody_is_told_and_is_no_swap(sample):
     found = find_swapped_samples([x, replace(y, values=values)])
     assert found.swaps == ()
     assert [one.sample for one in found.strangers] == [sample]
+
+
+def test_rows_that_went_wrong_as_a_whole_and_days_that_are_not_named_accuse_nobody():
+    blocks = (transcripts(features=800, group_effect=1.0), metabolites(group_effect=1.0))
+    odd = swap_layers(simulate(Design(n=48, blocks=blocks, odd=3), 3))
+    tangled = swap_layers(simulate(Design(n=48, blocks=blocks, tangle=1.0, run_days=2), 5), named=False)
+    for found in map(find_swapped_samples, (odd, tangled)):
+        assert (found.swaps, found.strangers) == ((), ())
 
 
 def test_where_nothing_is_shared_nothing_is_testable():
