@@ -3,7 +3,12 @@
 Each study: two blocks (200 + 60 features) with 5 % gaps and one strong private factor each, two classes at random. In
 every training part gaps are filled (nearest neighbours of the training samples), private variation is removed, the
 panel is chosen; 99 permutations. ``python tests/benchmarks/supervised_null.py N STUDIES KIND`` with KIND plain (no
-gaps, no removal), full, or subjects (three samples of each subject, class by subject).
+gaps, no removal), full, or subjects (three samples of each subject, class by subject; N of 36 at least, since fewer
+than 120 arrangements of subjects have no p).
+
+Measured on two blocks of noise without gaps and removal, 200 studies of 24, one repeat: balanced accuracy 0.504,
+p <= 0.05 in 0.040, uniform by Kolmogorov-Smirnov p = 0.68. Full, 12 studies of 24: balanced accuracy 0.510, of panels
+0.580, p <= 0.05 in 0.083: too few studies to say more.
 """
 
 from __future__ import annotations
@@ -74,13 +79,14 @@ def main(n: int, studies: int, kind: str) -> None:
         accuracy.append(found.model.performance.balanced_accuracy.mean())
         panels.append(search.panel(source(every, every)).performance.balanced_accuracy.mean())
         p.append(found.test.p)
-        if seed % 20 == 19 or seed == studies - 1:
-            values = np.array(p, dtype=float)
+        if seed % 4 == 3 or seed == studies - 1:
+            values = np.array([one for one in p if one is not None])
+            uniform = kstest(values - 0.005, "uniform").pvalue if values.size else np.nan
+            small = (values <= 0.05).mean() if values.size else np.nan
             print(
                 f"{kind} n={n}, {seed + 1} studies, {time.process_time() - start:.0f} s: balanced accuracy "
-                f"{np.mean(accuracy):.4f}, of panels {np.mean(panels):.4f}; p <= 0.05 in "
-                f"{np.mean(values <= 0.05):.3f}, uniform by Kolmogorov-Smirnov p = "
-                f"{kstest(values - 0.005, 'uniform').pvalue:.2f}",
+                f"{np.mean(accuracy):.4f}, of panels {np.mean(panels):.4f}; p <= 0.05 in {small:.3f} of {values.size}, "
+                f"uniform by Kolmogorov-Smirnov p = {uniform:.2f}",
                 flush=True,
             )
 
