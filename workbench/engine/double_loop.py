@@ -1,9 +1,10 @@
-"""One outer fold of double cross-validation: components chosen inside, test samples predicted once."""
+"""One outer fold of double cross-validation: blocks and components chosen inside, test samples predicted once."""
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import combinations
 
 import numpy as np
 from numpy.typing import NDArray
@@ -15,8 +16,37 @@ from workbench.engine.multiblock_kernel import batch_predictions
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
 
-BATCH_NUMBERS = 20_000_000
+BATCH_NUMBERS = 4_000_000
 """Numbers that the predictions of one batch of arrangements may take."""
+
+MOST_BLOCKS = 5
+"""Blocks up to which every set of them is a candidate."""
+
+
+@dataclass(frozen=True)
+class Choice:
+    """Blocks that a model takes, and its number of components."""
+
+    blocks: tuple[int, ...]
+    components: int
+
+
+def choices(n_blocks: int, components: Sequence[int], *, choose_blocks: bool) -> tuple[Choice, ...]:
+    """Return what the inner loop chooses from: all blocks first, then ever fewer, each with 1, 2, ... components.
+
+    Up to five blocks every set of blocks is tried; of more all, all but one, and each alone.
+
+    Examples
+    --------
+    >>> [one.blocks for one in choices(2, [1], choose_blocks=True)]
+    [(0, 1), (0,), (1,)]
+    """
+    every = tuple(range(n_blocks))
+    sizes = [n_blocks]
+    if choose_blocks:
+        sizes = list(range(n_blocks, 0, -1)) if n_blocks <= MOST_BLOCKS else [n_blocks, n_blocks - 1, 1]
+    sets = [blocks for size in sizes for blocks in combinations(every, size)]
+    return tuple(Choice(blocks, count) for blocks in sets for count in components)
 
 
 @dataclass(frozen=True, eq=False)
@@ -29,71 +59,80 @@ class FoldKernels:
 
 @dataclass(frozen=True, eq=False)
 class NestedFold:
-    """What one outer fold gives for every arrangement.
+    """What one outer fold gives.
 
     Attributes
     ----------
-    chosen : ndarray of int, shape (size,)
-        Number of components that the inner loop chose.
+    chosen : int
+        Position of the choice of the inner loop, for the outcome as delivered.
     test : HeldOut
-        Test samples that can be scored, by the chosen number (one candidate), less the inner loop's level.
+        Test samples that can be scored, for every arrangement by its own choice, less the inner loop's level.
     inner : HeldOut
-        Training samples that the inner loop held out, the same.
+        Training samples that the inner loop held out, by the choice; the outcome as delivered.
     every : HeldOut
-        Test samples by each candidate number, less the inner loop's level at that number.
+        Test samples by each candidate; the outcome as delivered.
     """
 
-    chosen: IndexArray
+    chosen: int
     test: HeldOut
     inner: HeldOut
     every: HeldOut
 
 
-def nested_fold(
-    kernels: FoldKernels, blocks: Sequence[int] | slice, outcome: Outcome, candidates: Sequence[int]
-) -> NestedFold:
-    """Choose the number of components on the training part alone, and predict the test samples.
+def nested_fold(kernels: FoldKernels, outcome: Outcome, candidates: Sequence[Choice]) -> NestedFold:
+    """Choose blocks and components on the training part alone, and predict the test samples.
 
     Parameters
     ----------
     kernels : FoldKernels
-    blocks : sequence of int or slice
-        Blocks that the model takes.
     outcome : Outcome
-    candidates : sequence of int
-        Numbers of components to choose from, fewest first.
+    candidates : sequence of Choice
+        In the order of preference.
     """
-    parts = [held_out(split, blocks, outcome, candidates) for split in kernels.inner]
+    rows = max(split.train.shape[1] + split.test.shape[1] for split in (kernels.outer, *kernels.inner))
+    total = sum(split.test.shape[1] for split in kernels.inner)
+    numbers = outcome.columns * (len(candidates) * total + 12 * rows)
+    step = max(1, BATCH_NUMBERS // numbers)
+    parts = [
+        _nested(kernels, outcome.part(slice(start, start + step)), candidates)
+        for start in range(0, outcome.size, step)
+    ]
+    first = parts[0]
+    together = np.concatenate([part.test.predicted for part in parts], axis=3)
+    return NestedFold(
+        first.chosen, HeldOut(first.test.train, first.test.rows, together), first.inner, first.every
+    )
+
+
+def _nested(kernels: FoldKernels, outcome: Outcome, candidates: Sequence[Choice]) -> NestedFold:
+    parts = [held_out(split, outcome, candidates) for split in kernels.inner]
     place = outcome.choose(parts)
     rows = np.concatenate([part.rows for part in parts])
     predicted = np.concatenate([part.predicted for part in parts], axis=1)
     levels = np.array([outcome.level(rows, one) for one in predicted])
-    outer = held_out(kernels.outer, blocks, outcome, candidates)
+    outer = held_out(kernels.outer, outcome, candidates)
     every = outer.predicted - levels[:, None]
-    inside = predicted - levels[:, None]
+    inside = predicted[[place[0]], :, :, :1] - levels[[place[0]], None, :, :1]
     return NestedFold(
-        chosen=np.asarray(candidates)[place],
+        chosen=int(place[0]),
         test=HeldOut(outer.train, outer.rows, _taken(every, place)),
-        inner=HeldOut(outer.train, rows, _taken(inside, place)),
-        every=HeldOut(outer.train, outer.rows, every),
+        inner=HeldOut(outer.train, rows, inside),
+        every=HeldOut(outer.train, outer.rows, every[:, :, :, :1]),
     )
 
 
-def held_out(
-    split: SplitKernels, blocks: Sequence[int] | slice, outcome: Outcome, candidates: Sequence[int]
-) -> HeldOut:
-    """Predictions of a split's test samples that can be scored, by each number of components."""
-    train, cross = split.of(blocks)
-    scored = np.isfinite(cross).all(axis=1)
+def held_out(split: SplitKernels, outcome: Outcome, candidates: Sequence[Choice]) -> HeldOut:
+    """Predictions of a split's test samples that can be scored, by each candidate."""
+    scored = np.isfinite(split.test).all(axis=(0, 2))
     codes = outcome.codes(split.train_rows)
-    numbers = (max(candidates) + 3) * (train.shape[0] + cross.shape[0]) * outcome.columns
-    step = max(1, BATCH_NUMBERS // numbers)
-    places = np.asarray(candidates) - 1
-    parts = [
-        batch_predictions(train, cross[scored], codes[:, :, start : start + step], max(candidates))[1][places]
-        for start in range(0, outcome.size, step)
-    ]
-    return HeldOut(split.train_rows, split.test_rows[scored], np.concatenate(parts, axis=3))
+    sets = list(dict.fromkeys(one.blocks for one in candidates))
+    found = []
+    for blocks in sets:
+        counts = [one.components for one in candidates if one.blocks == blocks]
+        train, cross = split.of(list(blocks))
+        predicted = batch_predictions(train, cross[scored], codes, max(counts))[1]
+        found.append(predicted[np.array(counts) - 1])
+    return HeldOut(split.train_rows, split.test_rows[scored], np.concatenate(found))
 
 
 def _taken(predicted: FloatArray, place: IndexArray) -> FloatArray:

@@ -10,8 +10,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workbench.engine.double_arrangements import Arrangements, outcome_arrangements
+from workbench.engine.double_choice import fewest_as_good
 from workbench.engine.double_folds import fold_splits, strata_of
-from workbench.engine.double_loop import FoldKernels, nested_fold
+from workbench.engine.double_loop import Choice, FoldKernels, choices, nested_fold
 from workbench.engine.double_outcome import ClassOutcome, HeldOut, NumberOutcome, Outcome
 from workbench.engine.double_splits import BlockSource, BlockSplit, Observer, SplitKernels, split_kernels
 from workbench.engine.nuisance import fit_residuals
@@ -46,6 +47,8 @@ class HeldOutModel:
         -1 where not scored.
     components : ndarray of int, shape (repeats, folds)
         Chosen in the inner loop.
+    blocks : ndarray of bool, shape (repeats, folds, n_blocks)
+        Blocks chosen there.
     performance : ClassPerformance or NumberPerformance
     """
 
@@ -53,6 +56,7 @@ class HeldOutModel:
     probabilities: FloatArray | None
     classes: IndexArray | None
     components: IndexArray
+    blocks: NDArray[np.bool_]
     performance: Performance
 
 
@@ -93,10 +97,12 @@ class DoubleValidation:
         The outcome from the nuisance columns alone; None without.
     test : PermutationNull
     by_components : ndarray of shape (repeats, n_candidates)
-        The test's statistic at each number of components, none of them chosen.
+        The test's statistic at each number of components, the blocks of the final fit, nothing chosen.
     candidates : tuple of int
     components : int
         Chosen on all samples, for the final fit.
+    blocks : tuple of int
+        Blocks of the final fit, chosen likewise.
     folds, repeats : int
     n_scored : ndarray of int, shape (repeats,)
     """
@@ -108,6 +114,7 @@ class DoubleValidation:
     by_components: FloatArray
     candidates: tuple[int, ...]
     components: int
+    blocks: tuple[int, ...]
     folds: int
     repeats: int
     n_scored: IndexArray
@@ -122,6 +129,7 @@ def double_validation(
     strata: NDArray[Any] | None = None,
     exchange: NDArray[Any] | None = None,
     candidates: Sequence[int] = (1, 2, 3, 4, 5),
+    choose_blocks: bool = True,
     folds: int = 5,
     repeats: int = 5,
     permutations: int = 0,
@@ -131,12 +139,12 @@ def double_validation(
 ) -> DoubleValidation:
     """Out-of-sample figures from repeated double cross-validation, and the p of the whole procedure.
 
-    In each outer fold an inner loop over the training part alone chooses the number of components (the fewest
-    whose loss is within one standard error of the best) and, for classes, learns cut and slope from the
-    samples that it holds out; the model is fitted to the training part and the test samples are predicted
-    once. Loss: squared error, or the share of pairs of samples of two classes that are ranked wrongly. The
-    test repeats all of this for every arrangement of the outcome, in the same folds; their kernels are
-    computed once.
+    In each outer fold an inner loop over the training part alone chooses blocks and number of components (all
+    blocks, and as few components as possible, unless others are better by more than one standard error of the
+    difference) and, for classes, learns cut and slope from the samples that it holds out; the model is fitted
+    to the training part and the test samples are predicted once. Loss: squared error, or the share of pairs of
+    samples of two classes that are ranked wrongly. The test repeats all of this for every arrangement of the
+    outcome, in the same folds; their kernels are computed once.
 
     Parameters
     ----------
@@ -155,6 +163,8 @@ def double_validation(
         See :func:`outcome_arrangements`.
     candidates : sequence of int
         Numbers of components to choose from, fewest first; one number is no choice.
+    choose_blocks : bool
+        Whether blocks may be left out: a block of noise that weighs as much as the others costs a lot.
     folds, repeats : int
         Folds of the outer and of the inner loop; repeats of the outer one.
     permutations : int
@@ -189,7 +199,17 @@ def double_validation(
             f"the outcome comes in {outcome.size} arrangements; give it as delivered, arranged here"
         )
     run = _Run.of(
-        source, outcome, nuisance, subjects, strata, exchange, candidates, folds, permutations, seed
+        source,
+        outcome,
+        nuisance,
+        subjects,
+        strata,
+        exchange,
+        candidates,
+        choose_blocks,
+        folds,
+        permutations,
+        seed,
     )
     repeated = [run.repeat(r, repeats, observe, progress) for r in range(repeats)]
     return run.summary(repeated)
@@ -199,20 +219,20 @@ def double_validation(
 class _Model:
     """Predictions of one choice of blocks, filled fold by fold."""
 
-    blocks: Sequence[int] | slice
+    candidates: tuple[Choice, ...]
     outcome: Outcome
     n: int
     parts: list[HeldOut]
     every: list[HeldOut]
-    components: list[int]
+    chosen: list[Choice]
     probabilities: FloatArray | None
     classes: IndexArray | None
 
     @classmethod
-    def of(cls, blocks: Sequence[int] | slice, outcome: Outcome, n: int) -> _Model:
+    def of(cls, candidates: tuple[Choice, ...], outcome: Outcome, n: int) -> _Model:
         classes = isinstance(outcome, ClassOutcome)
         return cls(
-            blocks,
+            candidates,
             outcome,
             n,
             [],
@@ -222,12 +242,12 @@ class _Model:
             np.full(n, -1, dtype=np.intp) if classes else None,
         )
 
-    def add(self, kernels: FoldKernels, candidates: Sequence[int]) -> None:
+    def add(self, kernels: FoldKernels) -> None:
         """Predict the test samples of an outer fold."""
-        found = nested_fold(kernels, self.blocks, self.outcome, candidates)
+        found = nested_fold(kernels, self.outcome, self.candidates)
         self.parts.append(found.test)
-        self.every.append(_first(found.every))
-        self.components.append(int(found.chosen[0]))
+        self.every.append(found.every)
+        self.chosen.append(self.candidates[found.chosen])
         if (
             isinstance(self.outcome, ClassOutcome)
             and self.classes is not None
@@ -251,7 +271,6 @@ class _Model:
 class _Repeat:
     models: tuple[_Model, ...]
     statistic: FloatArray
-    by_components: FloatArray
     mean: FloatArray
     nuisance: FloatArray
 
@@ -268,6 +287,7 @@ class _Run:
     subjects: SubjectDesign
     levels: NDArray[Any] | None
     candidates: tuple[int, ...]
+    choose_blocks: bool
     folds: int
     seed: int
     n: int
@@ -282,6 +302,7 @@ class _Run:
         strata: NDArray[Any] | None,
         exchange: NDArray[Any] | None,
         candidates: Sequence[int],
+        choose_blocks: bool,
         folds: int,
         permutations: int,
         seed: int,
@@ -298,6 +319,7 @@ class _Run:
             SubjectDesign.of(np.arange(n)) if subjects is None else subjects,
             strata_of(outcome, strata),
             tuple(candidates),
+            choose_blocks,
             folds,
             seed,
             n,
@@ -319,17 +341,11 @@ class _Run:
             kernels = FoldKernels(found[0], tuple(found[1:]))
             models = models or self._models(len(kernels.outer.train))
             for model in models:
-                model.add(kernels, self.candidates)
+                model.add(kernels)
             self._baselines(train, test, mean, nuisance)
             if progress is not None:
                 progress(r * self.folds + splits.fold + 1, repeats * self.folds)
-        statistic = self.arranged.statistic(models[0].parts)
-        every = models[0].every
-        by_components = [
-            float(self.outcome.statistic([HeldOut(e.train, e.rows, e.predicted[[a]]) for e in every])[0])
-            for a in range(len(self.candidates))
-        ]
-        return _Repeat(tuple(models), statistic, np.array(by_components), mean, nuisance)
+        return _Repeat(tuple(models), self.arranged.statistic(models[0].parts), mean, nuisance)
 
     def summary(self, repeated: list[_Repeat]) -> DoubleValidation:
         """Gather the repeats."""
@@ -338,14 +354,16 @@ class _Run:
         described = [self._described(repeated, m) for m in range(count)]
         last = 1 if self.nuisance is not None else 0
         nuisance = described[-1] if last else None
+        final = self._final(repeated)
         return DoubleValidation(
             model=described[0],
             singles=tuple(described[1 : count - last]),
             nuisance=nuisance,
             test=self._test(statistics),
-            by_components=np.array([one.by_components for one in repeated]),
+            by_components=self._by_components(repeated, final.blocks),
             candidates=self.candidates,
-            components=self._final(repeated),
+            components=final.components,
+            blocks=final.blocks,
             folds=self.folds,
             repeats=len(repeated),
             n_scored=np.isfinite(described[0].predicted[:, :, 0]).sum(axis=1),
@@ -354,11 +372,12 @@ class _Run:
     def _models(self, blocks: int) -> list[_Model]:
         """All blocks (in every arrangement), each alone, and the nuisance, whose kernel is the last."""
         last = 1 if self.nuisance is not None else 0
-        models = [_Model.of(slice(0, blocks - last), self.arranged, self.n)]
-        if blocks - last > 1:
-            models += [_Model.of([b], self.outcome, self.n) for b in range(blocks - last)]
-        if last:
-            models.append(_Model.of([blocks - 1], self.outcome, self.n))
+        count = blocks - last
+        every = choices(count, self.candidates, choose_blocks=self.choose_blocks)
+        models = [_Model.of(every, self.arranged, self.n)]
+        alone = [*(range(count) if count > 1 else ()), *([blocks - 1] if last else ())]
+        for b in alone:
+            models.append(_Model.of(tuple(Choice((b,), k) for k in self.candidates), self.outcome, self.n))
         return models
 
     def _kernels(self, split: BlockSplit, train: IndexArray, test: IndexArray) -> SplitKernels:
@@ -384,7 +403,11 @@ class _Run:
     def _described(self, repeated: list[_Repeat], m: int) -> HeldOutModel:
         models = [one.models[m] for one in repeated]
         predicted = np.array([model.predicted() for model in models])
-        components = np.array([model.components for model in models])
+        components = np.array([[one.components for one in model.chosen] for model in models])
+        total_blocks = 1 + max(max(one.blocks) for one in repeated[0].models[0].candidates)
+        blocks = np.array(
+            [[np.isin(np.arange(total_blocks), one.blocks) for one in model.chosen] for model in models]
+        )
         if not np.isfinite(predicted).any():
             raise NumericsError(
                 "no sample can be scored out of fold: each has a nuisance level that its training part lacks; "
@@ -395,14 +418,14 @@ class _Run:
             probabilities = np.array([model.probabilities for model in models])
             labels = self.outcome.labels[:, 0]
             figures: Performance = class_performance(labels, predicted, classes, probabilities)
-            return HeldOutModel(predicted, probabilities, classes, components, figures)
+            return HeldOutModel(predicted, probabilities, classes, components, blocks, figures)
         assert isinstance(self.outcome, NumberOutcome)
         mean = np.array([one.mean for one in repeated])
         nuisance = np.array([one.nuisance for one in repeated])
         of_nuisance = self.nuisance is not None and m == len(repeated[0].models) - 1
         total = np.where(np.isfinite(predicted), nuisance, np.nan) if of_nuisance else predicted + nuisance
         figures = number_performance(self.outcome.values[:, :, 0], total, mean, nuisance)
-        return HeldOutModel(total, None, None, components, figures)
+        return HeldOutModel(total, None, None, components, blocks, figures)
 
     def _test(self, statistics: FloatArray) -> PermutationNull:
         observed, null = float(statistics[0]), statistics[1:]
@@ -410,12 +433,34 @@ class _Run:
         p = float((1 + np.count_nonzero(null >= bar)) / (1 + null.size)) if null.size else None
         return PermutationNull(p, observed, null, self.arrangements.how, self.arrangements.withheld)
 
-    def _final(self, repeated: list[_Repeat]) -> int:
-        """Components for the fit on all samples: the middle of what the repeats choose."""
-        places = [int(self.outcome.choose(one.models[0].every)[0]) for one in repeated]
-        return self.candidates[int(np.median(places))]
+    def _final(self, repeated: list[_Repeat]) -> Choice:
+        """Blocks and components for the fit on all samples, from each sample's mean loss over the repeats."""
+        outcome, models = self.outcome, [one.models[0] for one in repeated]
+        candidates = models[0].candidates
+        losses, seen = np.zeros((len(candidates), self.n, 1)), np.zeros(self.n)
+        for model in models:
+            rows = np.concatenate([part.rows for part in model.every])
+            losses[:, rows] += outcome.losses(model.every)
+            seen[rows] += 1.0
+        held = np.flatnonzero(seen)
+        mean = losses[:, held] / seen[held, None]
+        return candidates[int(fewest_as_good(mean, outcome.weights(held))[0])]
+
+    def _by_components(self, repeated: list[_Repeat], blocks: tuple[int, ...]) -> FloatArray:
+        """Statistic of every repeat at each number of components, with some blocks."""
+        candidates = repeated[0].models[0].candidates
+        places = [candidates.index(Choice(blocks, count)) for count in self.candidates]
+        return np.array(
+            [
+                [
+                    float(self.outcome.statistic([_one(part, place) for part in one.models[0].every])[0])
+                    for place in places
+                ]
+                for one in repeated
+            ]
+        )
 
 
-def _first(part: HeldOut) -> HeldOut:
-    """Keep the outcome as delivered alone."""
-    return HeldOut(part.train, part.rows, part.predicted[:, :, :, :1])
+def _one(part: HeldOut, place: int) -> HeldOut:
+    """Keep one candidate."""
+    return HeldOut(part.train, part.rows, part.predicted[[place]])

@@ -19,7 +19,7 @@ from workbench.store import (
     read_table,
     table_bytes,
 )
-from workbench.workflow.analysis_view import AnalysisView, view_analysis
+from workbench.workflow.analysis_view import AnalysisView, blocks_of, view_analysis
 from workbench.workflow.applied_edges import replicated_edges
 from workbench.workflow.applied_model import apply_model
 from workbench.workflow.loaded_block import load_block
@@ -81,7 +81,7 @@ def apply_analysis(paths: ProjectPaths, analysis: str, folder: Path, *, write: b
     there = _view_there(other, view)
     model = None
     if view.settings.method == "multiblock_pls":
-        model = apply_model(state, view, there, _components(state, analysis))
+        model = apply_model(state, view, there, *_stored(state, analysis))
     edges, lines = _edges(state, view, there)
     lines = [*_pairing_lines(view, there), *(model.lines if model is not None else ()), *lines]
     applied = Applied(
@@ -148,10 +148,12 @@ def _view_there(other: ProjectState, view: AnalysisView) -> AnalysisView:
     return AnalysisView(view.name, view.settings, other.settings, other.require_sheet(), blocks)
 
 
-def _components(state: ProjectState, analysis: str) -> int:
-    """Return the number of components of the stored model."""
+def _stored(state: ProjectState, analysis: str) -> tuple[tuple[str, ...], int]:
+    """Return the blocks and the number of components of the stored model."""
     with h5py.File(check_file(state.root, f"results/{analysis}/model.h5"), "r") as file:
-        return int(file["scores"].shape[1])
+        held = set(file["blocks"])
+        blocks = tuple(name for name in blocks_of(state.settings, analysis) if name in held)
+        return blocks, int(file["scores"].shape[1])
 
 
 def _pairing_lines(view: AnalysisView, there: AnalysisView) -> list[str]:

@@ -107,7 +107,7 @@ def write_supervised_model(path: Path, result: SupervisedResult) -> None:
         components.create_dataset("correlation_cv", data=np.ones(count))
         components.create_dataset("explained", data=model.y_explained_)
         start = 0
-        for block, part in zip(study.predictors, result.split.train, strict=True):
+        for block, part in zip(result.blocks, result.split.train, strict=True):
             inside = slice(start, start + part.shape[1])
             start += part.shape[1]
             group = file.create_group(f"blocks/{block}")

@@ -22,7 +22,12 @@ from workbench.errors import InputError, NumericsError
 from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.supervised_outcome import SupervisedStudy, supervised_study
-from workbench.workflow.supervised_source import predictor_features, supervised_source, whole_split
+from workbench.workflow.supervised_source import (
+    blocks_of_split,
+    predictor_features,
+    supervised_source,
+    whole_split,
+)
 
 FloatArray = NDArray[np.float64]
 
@@ -38,8 +43,10 @@ class SupervisedResult:
     Attributes
     ----------
     study : SupervisedStudy
+    blocks : tuple of str
+        Blocks of the model; the other predictors were better left out.
     split : BlockSplit
-        All units as the training part.
+        All units as the training part, these blocks.
     model : MultiblockPLS or MultiblockDiscriminant
         Fitted to ``split``, blocks side by side.
     validation : DoubleValidation
@@ -48,6 +55,7 @@ class SupervisedResult:
     """
 
     study: SupervisedStudy
+    blocks: tuple[str, ...]
     split: BlockSplit
     model: MultiblockPLS | MultiblockDiscriminant
     validation: DoubleValidation
@@ -58,7 +66,7 @@ class SupervisedResult:
         """Block and name of every feature of the model, blocks side by side."""
         return [
             (name, features[k])
-            for name, kept in zip(self.study.predictors, self.split.kept, strict=True)
+            for name, kept in zip(self.blocks, self.split.kept, strict=True)
             for features in (predictor_features(self.study, name),)
             for k in kept
         ]
@@ -116,9 +124,10 @@ def supervised_result(view: AnalysisView, reporter: Reporter) -> SupervisedResul
                 f"{error}. Set fewer folds (now {settings.folds}) or components under [analyses.{view.name}]"
             ) from error
     panel = None if search is None else search.panel(split)
-    return SupervisedResult(
-        study, split, fitted_model(study, split, validation.components), validation, panel
-    )
+    chosen = blocks_of_split(split, validation.blocks)
+    names = tuple(study.predictors[b] for b in validation.blocks)
+    model = fitted_model(study, chosen, validation.components)
+    return SupervisedResult(study, names, chosen, model, validation, panel)
 
 
 def fitted_model(

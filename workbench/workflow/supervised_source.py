@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -45,6 +47,15 @@ def whole_split(study: SupervisedStudy) -> BlockSplit:
     parts = [study.units.values_of(every, predictor_values(study, name)) for name in study.predictors]
     return standard_split(
         parts, parts, study.units.nuisance if study.units.nuisance.size else None, every, every
+    )
+
+
+def blocks_of_split(split: BlockSplit, blocks: Sequence[int]) -> BlockSplit:
+    """Return some blocks of a split."""
+    return BlockSplit(
+        tuple(split.train[b] for b in blocks),
+        tuple(split.test[b] for b in blocks),
+        tuple(split.kept[b] for b in blocks),
     )
 
 

@@ -107,7 +107,7 @@ def explained_table(result: SupervisedResult) -> pd.DataFrame:
     """Return explained.tsv: share of each block's adjusted variance that a super score explains, and its importance."""
     model, rows = result.model, []
     for k in range(model.n_components_):
-        for b, block in enumerate(result.study.predictors):
+        for b, block in enumerate(result.blocks):
             rows.append((k + 1, block, "component", model.x_explained_[k, b]))
             rows.append((k + 1, block, "importance", model.block_importance_[k, b]))
         rows.append((k + 1, result.study.name, "outcome", model.y_explained_[k]))
@@ -171,7 +171,13 @@ def _named(study: SupervisedStudy, block: int, feature: int) -> tuple[str, str]:
 
 def describe(result: SupervisedResult) -> list[str]:
     """Return what was found in a few plain sentences, the held-out figure first."""
-    lines = [*_of_study(result), *_of_model(result), *_of_others(result), *_of_panel(result)]
+    lines = [
+        *_of_study(result),
+        *_of_model(result),
+        *_of_blocks(result),
+        *_of_others(result),
+        *_of_panel(result),
+    ]
     return [*lines, *_cautions(result)]
 
 
@@ -225,6 +231,22 @@ def _of_model(result: SupervisedResult) -> list[str]:
     ]
 
 
+def _of_blocks(result: SupervisedResult) -> list[str]:
+    """Say which blocks the model leaves out, and how often training parts left each out."""
+    predictors = result.study.predictors
+    left = [name for name in predictors if name not in result.blocks]
+    if len(predictors) == 1:
+        return []
+    shares = result.validation.model.blocks.mean(axis=(0, 1))[: len(predictors)]
+    told = ", ".join(f"{name} {share:.0%}" for name, share in zip(predictors, shares, strict=True))
+    used = (
+        f"left out of the final model, better without: {', '.join(left)}"
+        if left
+        else "the model takes all blocks"
+    )
+    return [f"{used} (share of training parts that took each block: {told})"]
+
+
 def _of_others(result: SupervisedResult) -> list[str]:
     validation, lines = result.validation, []
     if validation.singles:
@@ -233,8 +255,9 @@ def _of_others(result: SupervisedResult) -> list[str]:
         gain = _main(validation.model.performance) - figures[best]
         measure = "balanced accuracy" if result.classes else "Q2"
         lines.append(
-            f"best single block: {result.study.predictors[best]}, {measure} {figures[best]:.2f}; all blocks together "
-            f"{'add' if gain > 0 else 'lose'} {abs(gain):.2f} (the best of {len(figures)} is picked by its own figure)"
+            f"best single block: {result.study.predictors[best]}, {measure} {figures[best]:.2f}; choosing among all "
+            f"blocks {'adds' if gain > 0 else 'loses'} {abs(gain):.2f} (the best of {len(figures)} is picked by its "
+            "own figure)"
         )
     if validation.nuisance is not None:
         measure = "balanced accuracy" if result.classes else "Q2"
@@ -277,8 +300,8 @@ def _cautions(result: SupervisedResult) -> list[str]:
     if min(sizes) * TINY_BLOCK < max(sizes):
         small, large = int(np.argmin(sizes)), int(np.argmax(sizes))
         lines.append(
-            f"blocks weigh alike: {study.predictors[small]} ({sizes[small]} features) as much as "
-            f"{study.predictors[large]} ({sizes[large]:,}); if it is noise, it costs components: compare without it"
+            f"blocks weigh alike: {result.blocks[small]} ({sizes[small]} features) as much as "
+            f"{result.blocks[large]} ({sizes[large]:,}); if it is noise, it costs components: compare without it"
         )
     test = result.validation.test
     if test.p is not None and test.p > 0.05:
