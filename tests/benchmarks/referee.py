@@ -6,7 +6,7 @@ families (`--part 1/2`, `--part 2/2`). `--report` alone reads what is there and 
 for each family the share of studies with any edge, the realised false-discovery rate with its standard error,
 the one-sided p of "not above 5 %" (Holm over all families in `p_holm`), and recall beside both yardsticks.
 
-Measured (numpy 2.4, seeds from 0): 18 families in which nothing is shared, 3,069 studies, 4.8 % with an edge; 28 others,
+Measured (seeds from 0): 18 families in which nothing is shared, 3,069 studies, 4.8 % with an edge; 28 others,
 8 to 12 studies each, realised rate 0.016 to 0.060; no family above 5 % (smallest Holm p 0.6). Recall here, by hand and
 of the oracle: strength 1.0, n = 96: 0.68, 0.12, 0.65; strength 1.4, n = 96: 0.98, 0.67, 0.97; strength 1.4, n = 48:
 0.54, 0.17, 0.53. About 0.15 s of processor a study.
