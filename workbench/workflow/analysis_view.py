@@ -148,8 +148,8 @@ class AnalysisView:
         if freedom < LEAST_FREEDOM:
             raise InputError(
                 f"{where}: {shared.n} shared samples less {shared.within.shape[1]} design columns leave "
-                f"{freedom} degree{'s' * (freedom != 1)} of freedom for a correlation; {LEAST_FREEDOM} are the least. Add samples, "
-                "or take nuisance columns out of adjust in project.toml"
+                f"{freedom} degree{'s' * (freedom != 1)} of freedom for a correlation; {LEAST_FREEDOM} are the least. "
+                "Add samples, or take nuisance columns out of adjust in project.toml"
             )
 
 
