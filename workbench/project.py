@@ -25,6 +25,7 @@ from workbench.store import (
 )
 from workbench.workflow import blocks as workflow_blocks
 from workbench.workflow import plan
+from workbench.workflow.applying import apply_analysis
 from workbench.workflow.blocks import Tell, no_words
 from workbench.workflow.checking import stored_findings
 from workbench.workflow.comparing import Comparison, run_compare
@@ -87,13 +88,40 @@ class Result:
 
     @property
     def components(self) -> pd.DataFrame:
-        """Return components.tsv (two layers)."""
+        """Return components.tsv."""
         return self._table("components.tsv")
 
     @property
     def explained(self) -> pd.DataFrame:
-        """Return explained.tsv (two layers)."""
+        """Return explained.tsv."""
         return self._table("explained.tsv")
+
+    @property
+    def association(self) -> pd.DataFrame:
+        """Return association.tsv: what the canonical components go with in the sample sheet."""
+        return self._table("association.tsv")
+
+    @property
+    def performance(self) -> pd.DataFrame:
+        """Return performance.tsv (multi-block PLS): double cross-validation beside what it is compared with."""
+        return self._table("performance.tsv")
+
+    @property
+    def panel(self) -> pd.DataFrame:
+        """Return panel.tsv (multi-block PLS): the smallest set of features, and what could stand in for each."""
+        return self._table("panel.tsv")
+
+    @property
+    def predictions(self) -> pd.DataFrame:
+        """Return predictions.tsv (multi-block PLS): each sample by models that had not seen it."""
+        return self._table("predictions.tsv")
+
+    def predict(self, other: str | Path) -> pd.DataFrame | None:
+        """Return the predictions for another project's samples by the frozen preparation and model; nothing is written.
+
+        None for an analysis that has no outcome.
+        """
+        return apply_analysis(ProjectPaths(self.root), self.analysis, Path(other), write=False).predictions
 
     @property
     def private(self) -> pd.DataFrame:

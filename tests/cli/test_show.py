@@ -89,7 +89,6 @@ DOUBTS = [
     ({"imputed_share": 0.4, "r_observed": 0.7}, "for 40 % of the samples; without those r is 0.70"),
     ({"imputed_share": 0.9, "r_observed": None}, "too few samples are left"),
     ({"stability": 0.2}, "only 20 % of the half-samples"),
-    ({"support": "module"}, "its module carries it"),
     ({"q_block": 0.04}, "close to the limit of 0.05"),
 ]
 

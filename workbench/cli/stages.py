@@ -67,7 +67,7 @@ def look(
 def integrate(
     analyses: AnalysesArgument = None, project: ProjectOption = None, quiet: QuietOption = False
 ) -> None:
-    """Run the engine: canonical pairs of the two layers, tested and cross-validated."""
+    """Run the engine: what the layers of an analysis share, tested and cross-validated."""
     opened = open_project(project)
     _close(opened, opened.integrate(*(analyses or ()), reporter=terminal_reporter(quiet)), quiet, analyses)
 

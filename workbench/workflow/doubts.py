@@ -48,8 +48,6 @@ def doubts_of(edge: Mapping[str, Any], fdr: float) -> list[str]:
         found.append(
             f"it is among the strongest pairs in only {100 * stability:.0f} % of the half-samples (stability)"
         )
-    if edge.get("support") == "module":
-        found.append("its module carries it; the pair alone does not pass (support)")
     q = max(_number(edge, "q") or 0.0, _number(edge, "q_block") or 0.0)
     if q > fdr / 2.0:
         found.append(f"its false-discovery rate of {q:.2g} is close to the limit of {fdr:g}")
