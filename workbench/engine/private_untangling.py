@@ -86,7 +86,7 @@ def _robust(x: FloatArray, y: FloatArray) -> tuple[FloatArray, float]:
     Residuals are in units of noise; where most are larger than noise their own spread is the unit.
     """
     weight: FloatArray = np.ones(y.size)
-    coefficients = np.zeros(x.shape[1])
+    coefficients: FloatArray = np.zeros(x.shape[1])
     for step in range(ROUNDS):
         left = (x * weight[:, None]).T
         coefficients = np.linalg.lstsq(left @ x, left @ y, rcond=None)[0]
