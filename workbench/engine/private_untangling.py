@@ -85,11 +85,11 @@ def _robust(x: FloatArray, y: FloatArray) -> tuple[FloatArray, float]:
 
     Residuals are in units of noise; where most are larger than noise their own spread is the unit.
     """
-    weight: FloatArray = np.ones(y.size)
-    coefficients: FloatArray = np.zeros(x.shape[1])
+    weight = np.ones(y.size)
+    coefficients = np.zeros(x.shape[1])
     for step in range(ROUNDS):
         left = (x * weight[:, None]).T
-        coefficients = np.linalg.lstsq(left @ x, left @ y, rcond=None)[0]
+        coefficients = np.asarray(np.linalg.lstsq(left @ x, left @ y, rcond=None)[0], dtype=np.float64)
         size = np.abs(y - x @ coefficients)
         if step < ROUNDS // 2:
             weight = 1.0 / np.maximum(size, 0.5)
