@@ -105,20 +105,20 @@ def test_each_question_is_answered_by_its_figure() -> None:
     good = verdict_of(candidate(groups=groups(0.8, 0.8), known="x"), asked)
     assert (good.told, good.speaks_against, good.share) == ("9 of 9", (), 1.0)
     spoilt = {
-        "q at most 0.01": {"q": 0.03},
-        "among the strongest in 80 % of half-samples": {"stability": 0.5},
-        "holds without any one sample": {"r_without_one": 0.5},
-        "holds on ranks": {"r_spearman": -0.8},
-        "holds without filled-in values": {"imputed_share": 0.3, "r_observed": 0.2},
-        "holds within groups": {"basis": "group"},
-        "passes by its own test": {"support": "module"},
-        "known link or shared set": {"known": ""},
+        "q above 0.01": {"q": 0.03},
+        "not among the strongest in 80 % of half-samples": {"stability": 0.5},
+        "does not hold without any one sample": {"r_without_one": 0.5},
+        "does not hold on ranks": {"r_spearman": -0.8},
+        "does not hold without filled-in values": {"imputed_share": 0.3, "r_observed": 0.2},
+        "does not hold within groups": {"basis": "group"},
+        "does not pass by its own test": {"support": "module"},
+        "no known link or shared set": {"known": ""},
     }
     for words, change in spoilt.items():
         verdict = verdict_of(candidate(groups=groups(0.8, 0.8), **{"known": "x", **change}), asked)
         assert verdict.speaks_against == (words,)
     assert verdict_of(candidate(groups=groups(0.8, 0.1), known="x"), asked).speaks_against == (
-        "holds in every group",
+        "does not hold in every group",
     )
 
 
@@ -140,7 +140,7 @@ def test_rows_are_ranked_by_evidence_then_q_then_strength() -> None:
     assert table["source"].tolist() == ["g4", "g3", "g2", "g1"]
     assert table["rank"].tolist() == [1, 2, 3, 4]
     assert table["evidence"].tolist() == ["7 of 7"] * 3 + ["6 of 7"]
-    assert table["speaks_against"].tolist()[-1].startswith("among the strongest in 80 %")
+    assert table["speaks_against"].tolist()[-1].startswith("not among the strongest in 80 %")
     assert tuple(table.columns) == FOLLOWUP_COLUMNS
 
 

@@ -301,3 +301,9 @@ def test_an_outcome_that_names_a_block_and_a_column_is_refused(root):
     )
     [fault] = faults_of(text, root)
     assert "is a column of samples.tsv and a block" in fault
+
+
+def test_an_outcome_that_is_adjusted_for_is_told_at_once(root):
+    lines = ANALYSIS + 'method = "multiblock_pls"\noutcome = "age"\noutcome_kind = "number"'
+    [fault] = faults_of(SAMPLES + BLOCKS + lines, root)
+    assert "'age' is nuisance as well (adjust of [samples]) and would be removed" in fault

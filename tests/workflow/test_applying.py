@@ -108,7 +108,7 @@ def test_numbers_come_in_their_unit(tmp_path):
     found = apply_analysis(first.paths, "main", second.paths.root)
     figures = found.performance.set_index("measure")
     assert figures.loc["correlation", "low"] > 0.1
-    assert abs(figures.loc["mean error", "value"]) < 0.6
+    assert abs(figures.loc["bias (observed less predicted)", "value"]) < 0.6
     assert abs(found.predictions["predicted"].mean() - 1.0) < 0.6
 
 

@@ -7,7 +7,7 @@ import pytest
 from numpy.testing import assert_allclose
 from supervised_projects import cohort, integrate, set_analysis, table
 
-from workbench.errors import InputError
+from workbench.errors import InputError, WorkbenchError
 from workbench.workflow.feature_table import canonical_correlations, implied_correlations
 
 
@@ -146,12 +146,12 @@ def plain(tmp_path_factory):
     [
         ('outcome = "dose"', r"the whole numbers 1, 2, 3, which may be classes or a number; say which"),
         ('outcome = "status"\noutcome_kind = "number"', r"cells that are no numbers"),
-        ('outcome = "age"', r"the column is adjusted for"),
+        ('outcome = "age"', r"'age' is nuisance as well"),
     ],
 )
 def test_what_cannot_be_an_outcome_is_refused_with_the_way_out(plain, lines, said):
     set_analysis(plain, f'method = "multiblock_pls"\n{lines}')
-    with pytest.raises(InputError, match=said):
+    with pytest.raises(WorkbenchError, match=said):
         integrate(plain)
 
 

@@ -79,7 +79,8 @@ def unused_columns(data: StudyData, block: CheckedBlock) -> Iterator[SheetColumn
     Left out are columns with one value, and classes of fewer than two samples on average.
     """
     samples = data.settings.samples
-    used = {samples.id, samples.subject, *samples.group, *block.adjust}
+    outcomes = {one.outcome for one in data.settings.analyses.values()}
+    used = {samples.id, samples.subject, samples.time, *outcomes, *samples.group, *block.adjust}
     for name in map(str, block.columns.columns):
         if name not in used:
             column = read_column(name, block.columns[name], samples.kinds.get(name))

@@ -102,7 +102,7 @@ def _swap_finding(swap: Swap, names: Sequence[str], search: SwapSearch) -> Findi
     what = (
         f"{_exchange(samples)} in {where}{told}: evidence {swap.gain:.1f} (natural log of a likelihood ratio), where "
         f"{100 * search.level:.0f} % of clean studies like this one reach {swap.bound:.1f}; as delivered, {shared:.1f} "
-        f"of it from the agreement of the blocks and {design:.1f} from the block's own groups and batches{runs}"
+        f"from the agreement of the blocks and {design:.1f} from the block's own groups and batches{runs}"
     )
     identity = finding_id(CHECK, block or ("sheet" if swap.everywhere else ""), *samples)
     evidence = _picture(swap.evidence[0], names)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import pandas as pd
@@ -119,6 +119,9 @@ def _of_unit(data: StudyData, unit: Unit) -> list[Finding]:
         found += _sizes(unit)
     if all(finding.severity != "error" for finding in found):
         freedom = _freedom(unit)
+        if data.settings.samples.subject is not None:
+            fewer = "; several samples of one subject leave fewer (`workbench plan`)"
+            freedom = [replace(one, what=one.what + fewer) for one in freedom]
         found += (_nearly(unit) if unit.group_levels else []) + freedom
         found += _without_room(unit) if freedom[0].severity != "error" else []
     return found

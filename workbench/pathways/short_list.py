@@ -139,6 +139,15 @@ def judgements(fdr: float, informed: bool) -> dict[str, Callable[[Candidate], bo
     }
 
 
+_OPPOSITES = (
+    ("q at most", "q above"),
+    ("among the strongest in", "not among the strongest in"),
+    ("holds", "does not hold"),
+    ("passes by", "does not pass by"),
+    ("known link or shared set", "no known link or shared set"),
+)
+
+
 @dataclass(frozen=True)
 class Verdict:
     """What speaks for and against an edge, in words."""
@@ -162,8 +171,20 @@ def verdict_of(one: Candidate, asked: Mapping[str, Callable[[Candidate], bool | 
     answers = {words: answer(one) for words, answer in asked.items()}
     return Verdict(
         tuple(words for words, yes in answers.items() if yes is True),
-        tuple(words for words, yes in answers.items() if yes is False),
+        tuple(_not(words) for words, yes in answers.items() if yes is False),
     )
+
+
+def _not(words: str) -> str:
+    """Return the opposite of what is asked, in words.
+
+    >>> _not("holds on ranks"), _not("q at most 0.01")
+    ('does not hold on ranks', 'q above 0.01')
+    """
+    for asked, denied in _OPPOSITES:
+        if words.startswith(asked):
+            return f"{denied}{words.removeprefix(asked)}"
+    return f"not: {words}"
 
 
 def short_list(candidates: Sequence[Candidate], *, fdr: float, informed: bool) -> pd.DataFrame:

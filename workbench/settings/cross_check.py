@@ -317,6 +317,11 @@ def _outcome_faults(
         yield _fault(key, _unknown(outcome, known, "column of samples.tsv or block"))
     elif outcome in (settings.samples.id, settings.samples.subject):
         yield _fault(key, f"{outcome!r} names samples or subjects; allowed: another column of samples.tsv")
+    adjusting = [name for name in settings.blocks_of(key[1]) if outcome in settings.blocks[name].adjust]
+    where = ["[samples]"] * (outcome in settings.samples.adjust) + [f"[blocks.{name}]" for name in adjusting]
+    if where and outcome in columns:
+        told = f"{outcome!r} is nuisance as well (adjust of {', '.join(where)}) and would be removed"
+        yield _fault(key, f"{told}; take it out of one of them")
 
 
 def _pathway_faults(settings: Settings, name: str, root: Path) -> Iterator[str]:

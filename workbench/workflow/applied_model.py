@@ -385,9 +385,10 @@ def _number_figures(
     rows = [
         ("q2", share, np.nan, np.nan),
         ("correlation", r, low, high),
-        ("rmse", float(np.sqrt((errors**2).mean())), np.nan, np.nan),
+        ("rmse (units of the outcome)", float(np.sqrt((errors**2).mean())), np.nan, np.nan),
+        ("mean absolute error", float(np.abs(errors).mean()), np.nan, np.nan),
         (
-            "mean error",
+            "bias (observed less predicted)",
             float(errors.mean()),
             *_interval(float(errors.mean()), float(errors.std(ddof=1) / np.sqrt(n)), None),
         ),
@@ -395,7 +396,7 @@ def _number_figures(
     performance = pd.DataFrame(rows, columns=["measure", "value", "low", "high"]).assign(n=n)
     said = (
         f"there, on {n} samples: correlation with the truth {r:.2f} (95 % {low:.2f} to {high:.2f}), Q2 {share:.2f}, "
-        f"mean error {errors.mean():.3g}"
+        f"mean absolute error {np.abs(errors).mean():.3g}, bias {errors.mean():+.3g} (observed less predicted)"
     )
     return table, performance, [said]
 

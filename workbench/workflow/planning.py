@@ -11,6 +11,7 @@ import numpy as np
 from workbench.engine import Nuisance
 from workbench.engine.planning import PairPlan, plan_pairs, plan_sentences
 from workbench.workflow.analysis_view import AnalysisView, Shared, view_analysis
+from workbench.workflow.record import counted_rows
 from workbench.workflow.screening import design_pairs, is_repeated, space_of
 from workbench.workflow.state import ProjectState
 
@@ -21,11 +22,14 @@ class BlockPairPlan:
 
     pair: str
     plan: PairPlan
+    counted: str = ""
 
     def lines(self) -> list[str]:
         """Return the plan in words."""
         head = [f"{self.pair}:"] if self.pair else []
         indent = "  " if self.pair else ""
+        if self.counted:
+            head.append(f"  {self.counted} count as {self.plan.samples} independent samples here")
         return [*head, *(f"{indent}{line}" for line in plan_sentences(self.plan))]
 
     def as_json(self) -> dict[str, Any]:
@@ -46,11 +50,13 @@ def project_plans(
     within = bool(view.factors) and view.settings.network.select == "within"
     shared = [view.shared(pair) for pair in view.pairs]
     plans = []
-    for (first, second), (found, rank) in zip(view.pairs, design_sizes(view, shared, within), strict=True):
+    sizes = design_sizes(view, shared, within)
+    for (first, second), one, (found, rank) in zip(view.pairs, shared, sizes, strict=True):
         features = [len(view.blocks[name].features) for name in (first, second)]
         rate = view.settings.network.fdr
         plan = plan_pairs(samples or found, features, rank=rank, fdr=rate, share=share, power=power)
-        plans.append(BlockPairPlan(f"{first} x {second}", plan))
+        counted = counted_rows(one, view) if is_repeated(one) and samples is None else ""
+        plans.append(BlockPairPlan(f"{first} x {second}", plan, counted))
     return plans
 
 

@@ -11,7 +11,9 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from workbench.engine import Nuisance
 from workbench.engine.association import SampleColumn, associate
+from workbench.engine.far_values import FEWEST, HEAVY, excess_kurtosis
 from workbench.engine.private_variation import RealComponent
 from workbench.figures import Drawing
 from workbench.figures.private import ComponentBar, draw_private
@@ -20,7 +22,7 @@ from workbench.look.words import listed, percent
 from workbench.store import check_file
 from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.looking import view_block
-from workbench.workflow.screening import Screen
+from workbench.workflow.screening import Screen, layer_block
 from workbench.workflow.state import ProjectState
 
 FloatArray = NDArray[np.float64]
@@ -70,7 +72,26 @@ def private_lines(view: AnalysisView, screen: Screen) -> list[str]:
         count = f"{len(removed)} private component{'s' * (len(removed) != 1)}"
         lines.append(f"{name}: {count} removed ({share} of its variance, private.tsv)" + _kept_words(kept))
     lines += list(dict.fromkeys(reason for reason in screen.off if reason))
+    for name, heavy in heavy_tailed(view, screen).items():
+        features = "feature with heavy tails enters" if heavy == 1 else "features with heavy tails enter"
+        lines.append(f"{name}: {heavy:,} {features} by the normal scores of ranks (guide private)")
     return lines
+
+
+def heavy_tailed(view: AnalysisView, screen: Screen) -> dict[str, int]:
+    """Return how many features of each block were tested by the normal scores of their ranks; empty for ranks."""
+    if screen.found.correlation == "spearman" or not screen.components:
+        return {}
+    found: dict[str, int] = {}
+    within = bool(view.factors) and view.settings.network.select == "within"
+    for name, components in screen.components.items():
+        block = layer_block(view, name, within)
+        taken = [one.scores for one in components if one.removed and any_removed(view, screen, name)]
+        own = Nuisance.of(np.column_stack([block.nuisance, *taken]), len(block.rows))
+        if own.n_samples - own.rank >= FEWEST:
+            count = int((excess_kurtosis(own.residuals(block.values)) > HEAVY).sum())
+            found |= {name: count} if count else {}
+    return found
 
 
 def private_record(view: AnalysisView, screen: Screen) -> dict[str, Any]:
@@ -83,6 +104,7 @@ def private_record(view: AnalysisView, screen: Screen) -> dict[str, Any]:
             ]
             for name, components in screen.components.items()
         },
+        "features_by_normal_scores": heavy_tailed(view, screen),
         "off": {
             f"{first} x {second}": off
             for (first, second), off in zip(view.pairs, screen.off, strict=True)

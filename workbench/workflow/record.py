@@ -18,11 +18,13 @@ from workbench.workflow.edges import GROUP_BOUND
 from workbench.workflow.private import private_lines, private_record
 from workbench.workflow.screening import Screens
 from workbench.workflow.state import ProjectState
+from workbench.workflow.subjects import time_levels
 from workbench.workflow.tables import excluded
 
 FORMAT = 1
 FRAGILE_SHARE = 0.5
 SMALL_FREEDOM = 30
+MOST_VISITS = 8
 POWER = 0.8
 LIBRARIES = ("numpy", "scipy", "pandas", "scikit-learn", "anndata", "h5py", "networkx")
 
@@ -77,13 +79,16 @@ def screen_sentences(view: AnalysisView, screens: Screens, group_pairs: int) -> 
     lines = [
         *reach_sentences(view, screens),
         *(private_lines(view, screens.chosen) if view.settings.network.remove_private else []),
-        f"{tested:,} cross-layer pairs tested ({how}), {found:,} edges at a false-discovery rate of {fdr:g}",
+        f"{tested:,} cross-layer pairs tested ({how}), {found:,} edge{'s' * (found != 1)} at a false-discovery rate of "
+        f"{fdr:g}",
     ]
     untestable = int(sum(screens.chosen.found.untestable))
     if untestable:
         lines.append(
-            f"{untestable:,} pairs could not be tested: a feature without variation on the shared samples"
+            f"{untestable:,} pairs could not be tested: nothing of a feature is left on the shared samples once "
+            "nuisance and group are removed"
         )
+    lines += _visit_lines(view)
     if view.factors and view.settings.network.select == "within":
         lines.append(f"{group_pairs:,} pairs pass only with the group left in: group_pairs.tsv, not edges")
     cut = cut_sentence(screens.chosen.found, view)
@@ -117,6 +122,20 @@ def _small_design(view: AnalysisView, freedom: int) -> list[str]:
     return [
         f"few samples: if one pair in {1 / SHARE:,.0f} is true, only true correlations of {smallest:.2f} or more are "
         f"likely to be found (chance {100 * POWER:.0f} %); `workbench plan` says how many samples weaker ones need"
+    ]
+
+
+def _visit_lines(view: AnalysisView) -> list[str]:
+    """Return the order in which the visits were taken, where a column of text gives it."""
+    samples = view.study.samples
+    if samples.time is None or view.settings.level is None:
+        return []
+    levels = time_levels(view.sheet[samples.time], samples.order.get(samples.time))
+    if all(level.replace(".", "", 1).isdigit() for level in levels):
+        return []
+    shown = ", ".join(levels[:MOST_VISITS]) + (", ..." if len(levels) > MOST_VISITS else "")
+    return [
+        f"visits in the order {shown}; another one is said with order = {{ {samples.time} = [...] }} under [samples]"
     ]
 
 

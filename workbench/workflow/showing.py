@@ -23,6 +23,7 @@ from workbench.workflow.doubts import doubts_of
 from workbench.workflow.loaded_block import load_block
 from workbench.workflow.naming import find_feature
 from workbench.workflow.private import read_scores
+from workbench.workflow.record import counted_rows
 from workbench.workflow.state import ProjectState
 
 ENDS = ["source_block", "source", "target_block", "target"]
@@ -164,7 +165,8 @@ def _pair_story(state: ProjectState, analysis: str, tables: Tables, a: pd.Series
     private = {block: read_scores(state, analysis, block) for block, _ in ends}
     values = pair_values(view, ends, within, private)
     edge, beside = _row(tables.edges, ends), _row(tables.group_pairs, ends)
-    lines, doubts = [*_standing(edge, beside, values, settings.network.fdr)], []
+    counted = counted_rows(view.shared([block for block, _ in ends]), view)
+    lines, doubts = [*_standing(edge, beside, values, settings.network.fdr, counted)], []
     if edge is not None:
         lines += _basis_lines(edge, within)
         doubts = doubts_of(edge, settings.network.fdr)
@@ -192,15 +194,15 @@ def _row(table: pd.DataFrame, ends: Sequence[tuple[str, str]]) -> dict[str, Any]
 
 
 def _standing(
-    edge: dict[str, Any] | None, beside: dict[str, Any] | None, values: PairValues, fdr: float
+    edge: dict[str, Any] | None, beside: dict[str, Any] | None, values: PairValues, fdr: float, counted: str
 ) -> list[str]:
     if edge is not None:
         return [
             f"an edge: r = {edge['r']:.2f} (95 % interval {edge['r_low']:.2f} to {edge['r_high']:.2f}, wide enough for "
-            f"having been selected) on {edge['n']} samples, p = {edge['p']:.2g}",
+            f"having been selected) on {counted}, p = {edge['p']:.2g}",
             f"of the edges as strong as this or stronger, a share of {edge['q']:.2g} is expected to be chance (q)",
         ]
-    told = f"no edge: r = {values.r:.2f} on {len(values.samples)} samples after adjustment"
+    told = f"no edge: r = {values.r:.2f} on {counted} after adjustment"
     if beside is None:
         return [
             f"{told}; it did not pass at a false-discovery rate of {fdr:g}, which is no evidence of no relation"
