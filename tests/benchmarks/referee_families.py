@@ -93,6 +93,7 @@ NOTHING = {
         (24, 48, 96, 200),
         lambda n: Family(Design(n=n, modules=0, blocks=two(private_strength=2.0))),
     ),
+    "nothing-odd-48": Family(Design(n=48, modules=0, blocks=two(), odd=1)),
     "nothing-small-30": Family(Design(n=30, modules=0, blocks=small(), run_days=2)),
     "nothing-private-30": Family(
         Design(n=30, modules=0, run_days=1, blocks=two(private_strength=2.0, drift=0.0))
@@ -154,6 +155,7 @@ SOMETHING = {
     ),
     "tails-1.4-48": Family(Design(n=48, strength=1.4, blocks=two(tails=3.0))),
     "tails-1.2-96": Family(Design(n=96, strength=1.2, blocks=two(tails=3.0))),
+    "odd-1.4-60": Family(Design(n=60, strength=1.4, blocks=two(), odd=1)),
     "clusters-1.2-60": Family(Design(n=60, strength=1.2, blocks=two(clusters=10))),
     "gaps-1.2-60": Family(Design(n=60, strength=1.2, blocks=(transcripts(), metabolites(gaps=0.25)))),
     "composition-1.2-96": Family(Design(n=96, strength=1.2, blocks=(microbes(), metabolites()))),

@@ -9,13 +9,11 @@ family and n: pairs found, other pairs accused, in which layer; clean studies ac
 Run: python tests/benchmarks/swaps.py [--n 24 40 60 96] [--seeds 0 20] [--families NAME ...] [--kinds clean]
 [--jobs 2]; --speed instead prints seconds, --oracle what a yardstick finds that knows which features share what.
 
-Measured on two shared processors, seeds between 0 and 70, no family with all its 20 seeds: n = 24, strength 1.4:
-41 of 49 pairs found (across run days 23 of 25, within a day 18 of 24), 0 of 19 clean studies accused; n = 60,
-strength 1.0: 7 of 7, 0 of 4 accused. Clean families: n = 24 2 of 36 accused, n = 40 0 of 12, n = 60 0 of 16. Together
-2 of 87 clean studies. Versions before this one, with somewhat stricter bounds: n = 60, strength 1.0: 51 of 52 found,
-2 of 52 clean studies accused; clean families n = 24 0 of 33, n = 40 1 of 11, n = 60 and 96 0 of 11 each.
-The first with factors compared one by one, n = 24: strength 2.0 60 of 72 found, strength 1.0 28 of 69, 2 of 216
-clean studies accused.
+Measured (seeds 0 to 19 of each of six families, 3 to 5 factors with groups and days or neither), pairs found and clean
+studies accused: n = 24, strength 1.4: 101 of 120 (across run days 17 of 18, within a day 34 of 42, no design 50 of 60),
+2 of 120; n = 40, strength 1.4: 118 of 120, 6 of 120; n = 60, strength 1.0: 117 of 120, 5 of 120. Eleven other clean
+families at n = 24, seeds 0 to 9: 6 of 110 accused, none more than 1 of 10. Together 19 of 470 clean studies (4.0 %).
+Other pairs than the exchanged one: 4, 5 and 2 of 120. An earlier version at n = 24 found 28 of 69 at strength 1.0.
 
 The oracle at n = 24, 20 seeds of each of six families: strength 1.4 115 of 120, strength 1.0 118 of 120. What two
 exchanged tubes tell is there even in two dozen samples; what is lacking is knowing which features share what, learnt
