@@ -110,6 +110,6 @@ def test_a_file_too_large_for_the_disk_is_one_message_and_no_trace(tmp_path):
         [sys.executable, "-c", LIMITED, str(tmp_path)], capture_output=True, text=True, check=True
     )
     assert done.stderr == ""
-    assert done.stdout.startswith("InputError ")
+    assert done.stdout.startswith("StorageError ")
     assert "is full; free some space and run the command again; nothing was changed" in done.stdout
     assert [path.name for path in tmp_path.iterdir()] == []

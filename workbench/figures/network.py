@@ -190,7 +190,8 @@ def _draw_panel(axes: Axes, graph: nx.Graph, panel: Panel, corner: Place) -> Non
 
 def _edges(axes: Axes, graph: nx.Graph, place: Mapping[Key, Place], left: float) -> None:
     """Draw the edges of one community, weak ones first; those between features of one side as bows."""
-    found = [(first, second, data["r"]) for first, second, data in graph.subgraph(place).edges(data=True)]
+    # A part of a graph gives the ends of its edges in no fixed order, and a dashed line shows where it began.
+    found = [(*sorted((a, b)), data["r"]) for a, b, data in graph.subgraph(place).edges(data=True)]
     thinner = min(1.0, max(0.4, (CROWDED / max(len(found), 1)) ** 0.5))
     for first, second, r in sorted(found, key=lambda edge: (abs(edge[2]), edge[0], edge[1])):
         style: dict[str, Any] = dict(POSITIVE if r >= 0 else NEGATIVE)
