@@ -8,10 +8,9 @@ the one-sided p of "not above 5 %" (Holm over all families in `p_holm`), and rec
 
 Measured (seeds from 0): 37 families in which nothing is shared, 200 to 400 studies each, 8,400 in all: 5.0 % with an
 edge. 40 others, 100 studies each of 28 and 30 of 12: realised rate 0.000 to 0.063. One of the 77 families is above 5 %
-(Holm): one sample odd in both layers, 0.057 +- 0.0015; `check` tells such samples, and the smallest Holm p of the others
-is above 0.5.
-Recall here, by hand and of the oracle: strength 1.0, n = 96: 0.69, 0.13, 0.66; strength 1.4, n = 96: 0.98, 0.70, 0.97;
-strength 1.4, n = 48: 0.54, 0.17, 0.53. By hand nowhere more than 0.2 points above. Intervals cover 0.96 where the
+(Holm): one sample odd in both layers, 0.057 +- 0.0015; `check` tells such samples. The smallest Holm p of the others is
+above 0.5. Recall here, by hand and of the oracle: strength 1.0, n = 96: 0.69, 0.13, 0.66; strength 1.4, n = 96: 0.98,
+0.70, 0.97; strength 1.4, n = 48: 0.54, 0.17, 0.54. By hand nowhere more than 0.2 points above. Intervals cover 0.96 where the
 population correlation after the same removal is known, but 0.63 with two strong factors in all features (dense-strong),
 where what is private cannot be told and stays. About 0.2 s of processor a study.
 """
