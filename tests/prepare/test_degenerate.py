@@ -46,6 +46,15 @@ CHOICES = [
 ]
 
 
+def test_a_value_over_a_tiny_concentration_is_no_overflow() -> None:
+    values = np.full((8, 10), 1e-300)
+    values[[0, 0, 5, 6, 7, 7], [0, 1, 7, 9, 2, 5]] = 0.0
+    values[[1, 3, 7], [3, 4, 6]] = 1.0
+    values[5, 8] = 1e100
+    recipe = recipe_for("x", "intensities", prepare_settings("x", "intensities", {"zeros": "amounts"}))
+    outcome_is_whole_or_told(recipe, table_of(values))
+
+
 @pytest.mark.parametrize(("kind", "choice"), CHOICES, ids=[f"{kind}-{choice}" for kind, choice in CHOICES])
 @settings(max_examples=30, deadline=None)
 @given(TABLES)

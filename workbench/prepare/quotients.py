@@ -23,9 +23,8 @@ from workbench.prepare.steps import (
     median_rows,
     reference_features,
 )
-from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable
+from workbench.prepare.tables import Mask, Matrix, StepAccount, StepTable, bounded_quotients
 
-LARGEST_QUOTIENT = 1e300
 DIETERLE = "Dieterle et al. 2006, Analytical Chemistry 78:4281"
 
 
@@ -68,8 +67,7 @@ def median_quotients(intensities: Matrix, reference: Matrix) -> Matrix:
     >>> median_quotients(np.vstack([profile, profile * [0.5, 0.5, 5.0, 0.5, 0.5]]), profile).tolist()
     [1.0, 0.5]
     """
-    with np.errstate(over="ignore"):
-        quotients = np.minimum(intensities / reference, LARGEST_QUOTIENT)
+    quotients = bounded_quotients(intensities, reference)
     return median_rows(quotients, quotients > 0)
 
 

@@ -30,6 +30,7 @@ __all__ = [
 Matrix = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 LARGEST = 1e100
+LARGEST_QUOTIENT = 1e300
 
 Levels = tuple[tuple[str, ...] | None, ...]
 
@@ -237,7 +238,8 @@ class StepTable:
 
     def divided(self, factors: Matrix) -> StepTable:
         """Return the table with each sample's values divided by its factor."""
-        return replace(self, values=self.values / factors[:, None], scale=self.scale + np.log2(factors))
+        values = bounded_quotients(self.values, factors[:, None])
+        return replace(self, values=values, scale=self.scale + np.log2(factors))
 
     def shifted(self, shifts: Matrix) -> StepTable:
         """Return the table with each sample's shift taken from its logarithms."""
@@ -259,6 +261,18 @@ class StepTable:
             if self.delivered is None
             else replace(self.delivered, places=self.delivered.places[mask]),
         )
+
+
+def bounded_quotients(values: Matrix, divisors: Matrix) -> Matrix:
+    """Return values over divisors; a quotient beyond all numbers is the largest one, a missing value stays missing.
+
+    Examples
+    --------
+    >>> bounded_quotients(np.array([6.0, 1e100, np.nan]), np.array([2.0, 1e-300, 1.0])).tolist()
+    [3.0, 1e+300, nan]
+    """
+    with np.errstate(over="ignore"):
+        return np.minimum(values / divisors, LARGEST_QUOTIENT)
 
 
 def _check_shape(
