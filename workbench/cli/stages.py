@@ -14,6 +14,7 @@ if TYPE_CHECKING:
 
     from workbench.project import Project
     from workbench.workflow.stages import Outcome
+    from workbench.workflow.status import Status
 
 FOLLOWED = 3
 
@@ -43,7 +44,7 @@ def prepare(
     if explain:
         for name in blocks or list(opened.state().settings.blocks):
             answer([f"block {name}", *opened.explain(name), ""])
-    _close(opened, outcome, quiet)
+    _close(outcome, opened.status(), quiet)
 
 
 def look(
@@ -61,7 +62,7 @@ def look(
         answer([*opened.reading(name), f"figures: {opened.paths.look(name)}", ""])
     if not blocks and len(known) > 1:
         answer(opened.reading())
-    _close(opened, outcome, quiet)
+    _close(outcome, opened.status(), quiet)
 
 
 def integrate(
@@ -69,7 +70,8 @@ def integrate(
 ) -> None:
     """Run the engine: what the layers of an analysis share, tested and cross-validated."""
     opened = open_project(project)
-    _close(opened, opened.integrate(*(analyses or ()), reporter=terminal_reporter(quiet)), quiet, analyses)
+    outcome = opened.integrate(*(analyses or ()), reporter=terminal_reporter(quiet))
+    _close(outcome, opened.status(*(analyses or ())), quiet)
 
 
 def network(
@@ -78,8 +80,9 @@ def network(
     """Build the network: tested edges, communities, GraphML."""
     opened = open_project(project)
     outcome = opened.network(*(analyses or ()), reporter=terminal_reporter(quiet))
-    _summarise(opened, analyses or list(opened.state().settings.analyses))
-    _close(opened, outcome, quiet, analyses)
+    status = opened.status(*(analyses or ()))
+    _summarise(opened, analyses or list(status.analyses), status)
+    _close(outcome, status, quiet)
 
 
 def run(
@@ -96,14 +99,15 @@ def run(
         answer(f"{one.stage.name}: {one.reason or 'up to date'}" for one in opened.plan(*(analyses or ())))
         return
     outcome = opened.run(*(analyses or ()), reporter=terminal_reporter(quiet))
-    _summarise(opened, analyses or opened.ready_analyses())
-    _close(opened, outcome, quiet, analyses)
+    status = opened.status(*(analyses or ()))
+    _summarise(opened, analyses or opened.ready_analyses(), status)
+    _close(outcome, status, quiet)
 
 
-def _summarise(project: Project, analyses: list[str]) -> None:
+def _summarise(project: Project, analyses: list[str], status: Status) -> None:
     from workbench.network import network_summary
 
-    fresh = {one.stage.name for one in project.plan(*analyses) if one.reason is None}
+    fresh = {one.stage.name for one in status.stages if one.reason is None}
     for analysis in analyses:
         result = project.result(analysis)
         folder = project.paths.analysis(analysis)
@@ -118,9 +122,9 @@ def _first_of_all(followup: DataFrame) -> list[str]:
     return [f"    {row.rank}. {row.sentence}" for row in followup.head(FOLLOWED).itertuples()]
 
 
-def _close(project: Project, outcome: Outcome, quiet: bool, analyses: list[str] | None = None) -> None:
+def _close(outcome: Outcome, status: Status, quiet: bool) -> None:
     if not outcome.done:
         answer([f"nothing to do: {len(outcome.fresh)} stages are up to date"])
     else:
         tell(f"done: {', '.join(outcome.done)}", quiet=quiet)
-    tell_next(project.status(*(analyses or ())).next_command, quiet=quiet)
+    tell_next(status.next_command, quiet=quiet)

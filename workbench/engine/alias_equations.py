@@ -8,8 +8,7 @@ from fractions import Fraction
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.engine.nuisance import Nuisance
-from workbench.errors import NumericsError
+from workbench.engine.nuisance import Nuisance, check_named
 
 FloatArray = NDArray[np.float64]
 
@@ -40,11 +39,7 @@ def alias_equations(columns: FloatArray, names: Sequence[str]) -> tuple[str, ...
     >>> alias_equations(np.column_stack([treated, 1.0 - treated]), ["day=2", "group=control"])
     ("'group=control' = 1 - 'day=2'",)
     """
-    columns = np.asarray(columns, dtype=np.float64)
-    if columns.ndim != 2 or columns.shape[1] != len(names):
-        raise NumericsError(
-            f"{len(names)} names for columns of shape {columns.shape}; give one name per column"
-        )
+    columns = check_named(columns, names)
     kept = Nuisance.of(columns, len(columns)).kept
     found = []
     for j in sorted(set(range(len(names))) - set(kept.tolist())):

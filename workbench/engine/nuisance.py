@@ -121,14 +121,37 @@ def aliased(columns: FloatArray, names: Sequence[str]) -> tuple[str, ...]:
     >>> aliased(np.column_stack([group, 1.0 - group]), ["group", "batch"])
     ('batch',)
     """
+    columns = check_named(columns, names)
+    _, kept = _orthonormal(_check_columns(columns, columns.shape[0]))
+    counted = set(kept.tolist())
+    return tuple(dict.fromkeys(name for j, name in enumerate(names) if j not in counted))
+
+
+def check_named(columns: FloatArray, names: Sequence[str]) -> FloatArray:
+    """Columns as numbers, one name for each.
+
+    Raises
+    ------
+    NumericsError
+        When names and columns differ in number.
+    """
     columns = np.asarray(columns, dtype=np.float64)
     if columns.ndim != 2 or columns.shape[1] != len(names):
         raise NumericsError(
             f"{len(names)} names for columns of shape {columns.shape}; give one name per column"
         )
-    _, kept = _orthonormal(_check_columns(columns, columns.shape[0]))
-    counted = set(kept.tolist())
-    return tuple(dict.fromkeys(name for j, name in enumerate(names) if j not in counted))
+    return columns
+
+
+def indicators(codes: NDArray[np.integer]) -> FloatArray:
+    """One column for each code that occurs but the lowest, shape (n_samples, n_codes - 1).
+
+    Examples
+    --------
+    >>> indicators(np.array([0, 2, 2, 5])).tolist()
+    [[0.0, 0.0], [1.0, 0.0], [1.0, 0.0], [0.0, 1.0]]
+    """
+    return np.asarray(codes[:, None] == np.unique(codes)[None, 1:], dtype=np.float64)
 
 
 @dataclass(frozen=True, eq=False)

@@ -11,7 +11,7 @@ import scipy.linalg
 from numpy.typing import NDArray
 
 from workbench.engine.arrangements import Exchange
-from workbench.engine.nuisance import Nuisance, check_finite, standardise
+from workbench.engine.nuisance import Nuisance, check_finite, indicators, standardise
 from workbench.engine.sides import block_slices, block_weights
 from workbench.engine.subjects import SubjectDesign, centred, differences, subject_means
 from workbench.errors import NumericsError
@@ -150,10 +150,10 @@ def _structured(
     block_sizes: Sequence[BlockSizes],
 ) -> ExchangeableRows:
     n = design.n_samples
-    own = _indicators(design.subject)
+    own = indicators(design.subject)
     exchange, words = Exchange.within_subjects(design), "samples inside subjects"
     if design.kind == "visits":
-        own = np.hstack([own, _indicators(design.visit)])
+        own = np.hstack([own, indicators(design.visit)])
         exchange, words = Exchange.of_subjects(design), "whole subjects with the same visits"
     extra = np.empty((n, 0)) if nuisance is None else centred(design, nuisance)
     removed = Nuisance.of(np.hstack([own, extra]), n)
@@ -173,8 +173,3 @@ def _standard(values: FloatArray, removed: Nuisance, block_sizes: BlockSizes) ->
         varies, block_slices(block_sizes, n_features, "of the test")
     )
     return weighted
-
-
-def _indicators(codes: NDArray[np.intp]) -> FloatArray:
-    """One column for each code but the first."""
-    return np.asarray(codes[:, None] == np.unique(codes)[None, 1:], dtype=np.float64)

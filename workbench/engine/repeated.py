@@ -25,7 +25,7 @@ from scipy.linalg import helmert
 from scipy.stats import rankdata
 
 from workbench.engine.mapped_block import MappedBlock, Ranks
-from workbench.engine.nuisance import CONSTANT_TOLERANCE, Nuisance
+from workbench.engine.nuisance import CONSTANT_TOLERANCE, Nuisance, indicators
 from workbench.engine.odd_rows import steady_rows
 from workbench.engine.screen import BlockPair, BlockScreen, Correlation, Progress, screen_blocks
 from workbench.engine.subjects import SubjectDesign, centred, subject_means
@@ -331,8 +331,7 @@ def _course(design: SubjectDesign) -> FloatArray:
     """Give indicators of the visits but the first; nothing for samples without an order."""
     if design.kind not in ("pairs", "visits"):
         return np.empty((design.n_samples, 0))
-    visits = np.unique(design.visit)
-    return np.asarray(design.visit[:, None] == visits[1:], dtype=np.float64)
+    return indicators(design.visit)
 
 
 def _means_matrix(design: SubjectDesign) -> FloatArray:

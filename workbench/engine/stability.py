@@ -199,14 +199,14 @@ class HalfScreen:
             return None
         part = BlockPair(pair.name, pair.x[rows], pair.y[rows], _columns(pair, rows))
         moved, _ = independent_pair(part, design, self._level, self._correlation)
-        return moved if _freedom(moved) >= LEAST_FREEDOM else None
+        return moved if pair_freedom(moved) >= LEAST_FREEDOM else None
 
 
 def _taken(pair: BlockPair, rows: IndexArray) -> BlockPair | None:
     """Take some samples of a pair of blocks, nuisance refitted; None when too few degrees are left."""
     nuisance = Nuisance.of(_columns(pair, rows), max(rows.size, 1))
     part = BlockPair(pair.name, pair.x[rows], pair.y[rows], nuisance, damping=pair.damping)
-    return part if rows.size and _freedom(part) >= LEAST_FREEDOM else None
+    return part if rows.size and pair_freedom(part) >= LEAST_FREEDOM else None
 
 
 def _columns(pair: BlockPair, rows: IndexArray) -> FloatArray | None:
@@ -214,7 +214,8 @@ def _columns(pair: BlockPair, rows: IndexArray) -> FloatArray | None:
     return None if columns is None else np.asarray(columns)[rows]
 
 
-def _freedom(pair: BlockPair) -> int:
+def pair_freedom(pair: BlockPair) -> int:
+    """Degrees of freedom of the correlations of a pair of blocks."""
     rank = pair.nuisance.rank if isinstance(pair.nuisance, Nuisance) else 1
     return int(pair.x.shape[0]) - rank - 1
 

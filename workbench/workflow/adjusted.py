@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 
 from workbench.engine import Nuisance, SubjectDesign, subject_means
 from workbench.engine.far_values import withstand
+from workbench.engine.nuisance import indicators
 from workbench.intake import Groups
 from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.screening import design_columns_of, is_repeated
@@ -126,9 +127,7 @@ class _Taken:
 
 def _deviations(taken: _Taken, design: SubjectDesign) -> _Taken:
     """Add subjects and visits to what is removed: what is left are the changes that the screen compares."""
-    persons = design.subject[:, None] == np.arange(1, design.n_subjects)
-    visits = design.visit[:, None] == np.unique(design.visit)[1:]
-    columns = np.hstack([taken.columns, persons.astype(np.float64), visits.astype(np.float64)])
+    columns = np.hstack([taken.columns, indicators(design.subject), indicators(design.visit)])
     return replace(taken, columns=columns)
 
 

@@ -117,6 +117,11 @@ class AnalysisView:
         return [str(sample) for sample in self.sheet.index if all(sample in one for one in every)]
 
     @property
+    def within_groups(self) -> bool:
+        """Whether edges are selected with the group removed."""
+        return bool(self.factors) and self.settings.network.select == "within"
+
+    @property
     def factors(self) -> list[str]:
         """Columns of the sample sheet whose cells are the groups."""
         return factors_of(self.study)

@@ -34,11 +34,6 @@ def integrating_stage(state: ProjectState, name: str) -> Stage:
     )
 
 
-def has_canonical_pairs(state: ProjectState, name: str) -> bool:
-    """Return whether the analysis can be integrated: two layers at least."""
-    return len({state.settings.blocks[block].layer for block in blocks_of(state.settings, name)}) > 1
-
-
 def analysis_inputs(state: ProjectState, name: str) -> dict[str, str]:
     """Return the hashes of what the engine works on: values, design columns and its own settings."""
     settings = state.settings.analyses[name]

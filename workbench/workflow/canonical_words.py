@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from workbench.engine import PairTest
+from workbench.intake.faults import counted
 from workbench.workflow.canonical_fit import CanonicalFit, LayerFit
 from workbench.workflow.canonical_tables import null_limit
 
@@ -45,7 +46,7 @@ def axes_sentence(fit: CanonicalFit) -> str:
     if axes == 0:
         return f"no variation shared by {layers} can be told from chance: {tested}"
     more = "" if axes < len(test.p_by_pair) else "; there may be more"
-    return f"{_count(axes, 'axis', 'axes')} of variation shared by {layers}{more}: {tested}"
+    return f"{counted(axes, 'axis', 'axes')} of variation shared by {layers}{more}: {tested}"
 
 
 def within_sentence(fit: CanonicalFit) -> str:
@@ -56,7 +57,7 @@ def within_sentence(fit: CanonicalFit) -> str:
     if test.p is None:
         return f"inside the groups: p withheld, {test.withheld}"
     if test.p <= SIGNIFICANT:
-        return f"inside the groups as well: p = {test.p:.3g}, {_count(test.axes(), 'axis', 'axes')}"
+        return f"inside the groups as well: p = {test.p:.3g}, {counted(test.axes(), 'axis', 'axes')}"
     if fit.axes:
         return (
             f"inside the groups p = {test.p:.3g}: what is shared may be the group difference alone, "
@@ -144,11 +145,7 @@ def _account(layer: LayerFit, layers: int) -> str:
         some = f", {account.shared_by_some:.0%} by some" if layers > 2 else ""
         lines.append(
             f"{block}: {account.shared_by_all:.0%} of its variance is shared by all layers{some}, "
-            f"{account.private:.0%} its own ({_count(account.private_components, 'component', 'components')}), "
+            f"{account.private:.0%} its own ({counted(account.private_components, 'component', 'components')}), "
             f"{account.noise:.0%} noise"
         )
     return "; ".join(lines).replace("%", " %")
-
-
-def _count(number: int, one: str, several: str) -> str:
-    return f"{number} {one if number == 1 else several}"

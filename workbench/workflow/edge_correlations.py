@@ -45,7 +45,7 @@ def edge_correlations(
         order += [places[k] for k in alike_order(r[np.ix_(places, places)])]
     rows, r = rows[order], r[np.ix_(order, order)]
     labels = features["label" if "label" in features else "feature"].astype(str).to_numpy()
-    removed = "the design and the group" if views.within else "the design"
+    removed = "the design and the group" if views.view.within_groups else "the design"
     matrix = EdgeMatrix(
         tuple(labels[rows]),
         tuple(layers[rows]),

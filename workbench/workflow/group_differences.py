@@ -6,6 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workbench.engine import GroupEffects, SubjectDesign, group_effects, subject_means
+from workbench.engine.nuisance import indicators
 from workbench.errors import NumericsError
 from workbench.workflow.analysis_view import Shared
 
@@ -35,8 +36,7 @@ def group_differences(values: FloatArray, shared: Shared) -> GroupEffects | None
             own = np.zeros(design.n_subjects, dtype=np.intp)
             own[design.subject] = codes
             return group_effects(subject_means(design, values), own, subject_means(design, shared.nuisance))
-        persons = np.asarray(design.subject[:, None] == np.arange(1, design.n_subjects), dtype=np.float64)
-        return group_effects(values, codes, np.hstack([shared.nuisance, persons]))
+        return group_effects(values, codes, np.hstack([shared.nuisance, indicators(design.subject)]))
     except NumericsError:
         return None
 

@@ -29,7 +29,7 @@ from workbench.workflow.analysis_view import factors_of
 from workbench.workflow.design_frame import design_frame
 from workbench.workflow.drawings import write_drawings
 from workbench.workflow.fingerprints import block_header, columns_fingerprint, fingerprint
-from workbench.workflow.loaded_block import load_block
+from workbench.workflow.loaded_block import LoadedBlock, load_block
 from workbench.workflow.preparing import SEED as PREPARE_SEED
 from workbench.workflow.preparing import account_of, smallest_group
 from workbench.workflow.reporting import Reporter
@@ -121,7 +121,12 @@ def _look_between(state: ProjectState, change: Change, reporter: Reporter, names
 
 def view_block(state: ProjectState, name: str) -> BlockView:
     """Return a block as it is looked at: prepared and measured values, and what the sheet says of its samples."""
-    block = load_block(state, name)
+    return block_view(state, load_block(state, name))
+
+
+def block_view(state: ProjectState, block: LoadedBlock) -> BlockView:
+    """Return a block that is at hand as it is looked at."""
+    name = block.name
     frame = state.require_sheet().loc[list(block.samples)]
     own = block.run_columns.reindex(frame.index)
     frame = frame.drop(columns=[column for column in own if column in frame]).join(own)

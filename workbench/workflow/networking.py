@@ -18,7 +18,7 @@ from workbench.network import (
 from workbench.pathways import edge_columns
 from workbench.store import Change, json_bytes, table_bytes
 from workbench.workflow.analysis_view import AnalysisView, blocks_of, view_analysis
-from workbench.workflow.canonical import analysis_inputs, has_canonical_pairs
+from workbench.workflow.canonical import analysis_inputs
 from workbench.workflow.choices import choices_of
 from workbench.workflow.differences import group_contrasts
 from workbench.workflow.drawings import write_drawings
@@ -27,7 +27,7 @@ from workbench.workflow.feature_table import canonical_correlations, features_ta
 from workbench.workflow.fingerprints import fingerprint
 from workbench.workflow.following import knowledge_inputs, read_knowledge
 from workbench.workflow.private import FILE as PRIVATE_FILE
-from workbench.workflow.private import draw_removed, private_table, write_scores
+from workbench.workflow.private import draw_removed, heavy_tailed, private_table, write_scores
 from workbench.workflow.record import analysis_record, fragile_sentence, screen_sentences
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.screening import screen_analysis
@@ -59,12 +59,11 @@ FILES = (
 
 def networking_stage(state: ProjectState, name: str) -> Stage:
     """Return the stage that writes the tables of edges and features, the GraphML and the record."""
-    paired = has_canonical_pairs(state, name)
     blocks = [f"prepare:{block}" for block in blocks_of(state.settings, name)]
     return Stage(
         kind="network",
         subject=name,
-        needs=(*blocks, f"integrate:{name}") if paired else tuple(blocks),
+        needs=(*blocks, f"integrate:{name}"),
         outputs=tuple(f"results/{name}/{file}" for file in FILES),
         inputs=lambda now: _inputs(now, name),
         work=lambda now, change, reporter: _work(now, change, reporter, name),
@@ -78,8 +77,7 @@ def _inputs(state: ProjectState, name: str) -> dict[str, str]:
     )
     hashes["choices with a reason"] = fingerprint(list(choices_of(state.settings)))
     hashes |= knowledge_inputs(state, name)
-    if has_canonical_pairs(state, name):
-        hashes["canonical pairs"] = state.manifest.files.get(f"results/{name}/model.h5", "")
+    hashes["canonical pairs"] = state.manifest.files.get(f"results/{name}/model.h5", "")
     return hashes
 
 
@@ -89,11 +87,10 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
     edges, features = edges_table(view, screens), features_table(view)
     steady = edge_stability(view, screens, reporter)
     edges["stability"] = np.nan if steady is None else steady.share
-    if has_canonical_pairs(state, name):
-        canonical = canonical_correlations(state, name)
-        edges[["model_r", "component"]] = implied_correlations(edges, canonical)
-        places = pd.MultiIndex.from_frame(features[["block", "feature"]])
-        features[list(canonical.columns)] = canonical.reindex(places).to_numpy()
+    canonical = canonical_correlations(state, name)
+    edges[["model_r", "component"]] = implied_correlations(edges, canonical)
+    places = pd.MultiIndex.from_frame(features[["block", "feature"]])
+    features[list(canonical.columns)] = canonical.reindex(places).to_numpy()
     edges = edges.assign(**_known(state, reporter, name, edges, features))
     graph = build_network(edges, features, attributes=graph_attributes(view), seed=view.settings.seed)
     halves = [half_edges(view, found) for found in steady.found] if steady is not None else None
@@ -110,7 +107,9 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
     _clear_shown(state, change, name)
     change.write_bytes(f"{folder}/network.graphml", graphml_bytes(graph))
     change.write_bytes(f"{folder}/network.gexf", gexf_bytes(graph))
-    change.write_bytes(f"{folder}/record.json", json_bytes(analysis_record(state, view, screens, len(pairs))))
+    heavy = heavy_tailed(view, screens.chosen)
+    record = analysis_record(state, view, screens, len(pairs), heavy)
+    change.write_bytes(f"{folder}/record.json", json_bytes(record))
     change.write_bytes(f"{folder}/private.tsv", table_bytes(private_table(state, view, screens.chosen)))
     write_scores(change.new_file(f"{folder}/{PRIVATE_FILE}"), view, screens.chosen)
     drawings = draw_removed(screens.chosen)
@@ -120,7 +119,7 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
     for line in filter(
         None,
         [
-            *screen_sentences(view, screens, len(pairs)),
+            *screen_sentences(view, screens, len(pairs), heavy),
             fragile_sentence(edges),
             *stability_lines(steady),
             *contrasts.lines,

@@ -6,7 +6,7 @@ from collections.abc import Sequence
 
 from workbench.errors import InputError
 from workbench.workflow.analysis_view import blocks_of
-from workbench.workflow.canonical import has_canonical_pairs, integrating_stage
+from workbench.workflow.canonical import integrating_stage
 from workbench.workflow.checking import checking_stage
 from workbench.workflow.following import following_stage
 from workbench.workflow.looking import between_stage, looking_stage
@@ -104,7 +104,7 @@ def _blocks_of_all(state: ProjectState, analyses: Sequence[str]) -> list[str]:
 def _of_analyses(state: ProjectState, analyses: Sequence[str], *kinds: str) -> list[Stage]:
     stages = []
     for name in analyses:
-        if "integrate" in kinds and has_canonical_pairs(state, name):
+        if "integrate" in kinds:
             stages.append(integrating_stage(state, name))
         if "network" in kinds:
             stages.append(networking_stage(state, name))

@@ -47,10 +47,9 @@ def project_plans(
     With ``samples`` the same design is asked of another number of samples.
     """
     view = view_analysis(state, analysis)
-    within = bool(view.factors) and view.settings.network.select == "within"
     shared = [view.shared(pair) for pair in view.pairs]
     plans = []
-    sizes = design_sizes(view, shared, within)
+    sizes = design_sizes(view, shared, view.within_groups)
     for (first, second), one, (found, rank) in zip(view.pairs, shared, sizes, strict=True):
         features = [len(view.blocks[name].features) for name in (first, second)]
         rate = view.settings.network.fdr

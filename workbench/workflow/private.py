@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from pathlib import Path
 from typing import Any
 
@@ -17,11 +17,12 @@ from workbench.engine.far_values import FEWEST, HEAVY, excess_kurtosis
 from workbench.engine.private_variation import RealComponent
 from workbench.figures import Drawing
 from workbench.figures.private import ComponentBar, draw_private
+from workbench.intake.faults import counted
 from workbench.look.view import sample_columns
 from workbench.look.words import listed, percent
 from workbench.store import check_file
 from workbench.workflow.analysis_view import AnalysisView
-from workbench.workflow.looking import view_block
+from workbench.workflow.looking import block_view
 from workbench.workflow.screening import Screen, layer_block
 from workbench.workflow.state import ProjectState
 
@@ -57,8 +58,11 @@ def any_removed(view: AnalysisView, screen: Screen, block: str) -> bool:
     return any(block in pair and not off for pair, off in zip(view.pairs, screen.off, strict=True))
 
 
-def private_lines(view: AnalysisView, screen: Screen) -> list[str]:
-    """Return what was removed, a sentence for each block, and where nothing was and why."""
+def private_lines(view: AnalysisView, screen: Screen, heavy: Mapping[str, int]) -> list[str]:
+    """Return what was removed, a sentence for each block, and where nothing was and why.
+
+    ``heavy`` counts the features of heavy tails in each block (:func:`heavy_tailed`).
+    """
     lines = []
     for name, components in screen.components.items():
         if not any_removed(view, screen, name):
@@ -69,12 +73,12 @@ def private_lines(view: AnalysisView, screen: Screen) -> list[str]:
             lines.append(f"{name}: no private variation to remove" + _kept_words(kept))
             continue
         share = percent(sum(one.share for one in removed))
-        count = f"{len(removed)} private component{'s' * (len(removed) != 1)}"
+        count = counted(len(removed), "private component")
         lines.append(f"{name}: {count} removed ({share} of its variance, private.tsv)" + _kept_words(kept))
     lines += list(dict.fromkeys(reason for reason in screen.off if reason))
-    for name, heavy in heavy_tailed(view, screen).items():
-        features = "feature with heavy tails enters" if heavy == 1 else "features with heavy tails enter"
-        lines.append(f"{name}: {heavy:,} {features} by the normal scores of ranks (guide private)")
+    for name, features in heavy.items():
+        told = counted(features, "feature with heavy tails enters", "features with heavy tails enter")
+        lines.append(f"{name}: {told} by the normal scores of ranks (guide private)")
     return lines
 
 
@@ -83,9 +87,8 @@ def heavy_tailed(view: AnalysisView, screen: Screen) -> dict[str, int]:
     if screen.found.correlation == "spearman" or not screen.components:
         return {}
     found: dict[str, int] = {}
-    within = bool(view.factors) and view.settings.network.select == "within"
     for name, components in screen.components.items():
-        block = layer_block(view, name, within)
+        block = layer_block(view, name, view.within_groups)
         taken = [one.scores for one in components if one.removed and any_removed(view, screen, name)]
         own = Nuisance.of(np.column_stack([block.nuisance, *taken]), len(block.rows))
         if own.n_samples - own.rank >= FEWEST:
@@ -94,7 +97,7 @@ def heavy_tailed(view: AnalysisView, screen: Screen) -> dict[str, int]:
     return found
 
 
-def private_record(view: AnalysisView, screen: Screen) -> dict[str, Any]:
+def private_record(view: AnalysisView, screen: Screen, heavy: Mapping[str, int]) -> dict[str, Any]:
     """Return what the record says of private variation: components of each block, and where it was off."""
     return {
         "components": {
@@ -104,7 +107,7 @@ def private_record(view: AnalysisView, screen: Screen) -> dict[str, Any]:
             ]
             for name, components in screen.components.items()
         },
-        "features_by_normal_scores": heavy_tailed(view, screen),
+        "features_by_normal_scores": dict(heavy),
         "off": {
             f"{first} x {second}": off
             for (first, second), off in zip(view.pairs, screen.off, strict=True)
@@ -165,7 +168,7 @@ def _goes_with(
     state: ProjectState, view: AnalysisView, name: str, removed: list[RealComponent]
 ) -> Iterator[str]:
     samples = view.shared((name,)).samples
-    looked = view_block(state, name)
+    looked = block_view(state, view.blocks[name])
     rows = [looked.samples.index(sample) for sample in samples]
     columns = [
         SampleColumn(one.name, one.kind, one.values[rows], one.levels) for one in sample_columns(looked)

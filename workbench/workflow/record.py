@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import platform
+from collections.abc import Mapping
 from importlib.metadata import version
 from typing import Any
 
@@ -11,6 +12,7 @@ import pandas as pd
 from workbench import __version__
 from workbench.engine import critical_r
 from workbench.engine.planning import SHARE, significance_level, smallest_correlation
+from workbench.intake.faults import counted
 from workbench.workflow.analysis_view import AnalysisView, Shared
 from workbench.workflow.canonical import analysis_inputs
 from workbench.workflow.choices import choices_of
@@ -30,7 +32,7 @@ LIBRARIES = ("numpy", "scipy", "pandas", "scikit-learn", "anndata", "h5py", "net
 
 
 def analysis_record(
-    state: ProjectState, view: AnalysisView, screens: Screens, group_pairs: int
+    state: ProjectState, view: AnalysisView, screens: Screens, group_pairs: int, heavy: Mapping[str, int]
 ) -> dict[str, Any]:
     """Return the record of an analysis: settings, inputs, samples, pairs tested, versions; no date."""
     removes = view.settings.network.remove_private
@@ -49,7 +51,7 @@ def analysis_record(
             "intervals": "r_low, r_high at the false-coverage rate of the selected edges",
             "canonical_pairs": ", ".join(view.layers),
         },
-        "private_variation": private_record(view, screens.chosen) if removes else "not removed",
+        "private_variation": private_record(view, screens.chosen, heavy) if removes else "not removed",
         "choices": list(choices_of(state.settings)),
         "edges": int(screens.chosen.found.r.size),
         "group_pairs": group_pairs,
@@ -65,7 +67,9 @@ def analysis_record(
     }
 
 
-def screen_sentences(view: AnalysisView, screens: Screens, group_pairs: int) -> list[str]:
+def screen_sentences(
+    view: AnalysisView, screens: Screens, group_pairs: int, heavy: Mapping[str, int]
+) -> list[str]:
     """Return what the screens tested and found, in plain words, before the network is described."""
     tested, found = int(sum(screens.chosen.found.tested)), int(screens.chosen.found.r.size)
     how = (
@@ -78,8 +82,8 @@ def screen_sentences(view: AnalysisView, screens: Screens, group_pairs: int) -> 
     fdr = view.settings.network.fdr
     lines = [
         *reach_sentences(view, screens),
-        *(private_lines(view, screens.chosen) if view.settings.network.remove_private else []),
-        f"{tested:,} cross-layer pairs tested ({how}), {found:,} edge{'s' * (found != 1)} at a false-discovery rate of "
+        *(private_lines(view, screens.chosen, heavy) if view.settings.network.remove_private else []),
+        f"{tested:,} cross-layer pairs tested ({how}), {counted(found, 'edge')} at a false-discovery rate of "
         f"{fdr:g}",
     ]
     untestable = int(sum(screens.chosen.found.untestable))
@@ -89,7 +93,7 @@ def screen_sentences(view: AnalysisView, screens: Screens, group_pairs: int) -> 
             "nuisance and group are removed"
         )
     lines += _visit_lines(view)
-    if view.factors and view.settings.network.select == "within":
+    if view.within_groups:
         lines.append(f"{group_pairs:,} pairs pass only with the group left in: group_pairs.tsv, not edges")
     cut = cut_sentence(screens.chosen.found, view)
     if cut:

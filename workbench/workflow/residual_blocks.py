@@ -60,11 +60,6 @@ class ResidualViews:
         view = view_analysis(state, name)
         return cls(view, {block: read_scores(state, name, block) for block in view.blocks})
 
-    @property
-    def within(self) -> bool:
-        """Whether the group is removed, as in the screen whose pairs are edges."""
-        return bool(self.view.factors) and self.view.settings.network.select == "within"
-
     def of(self, names: Sequence[str]) -> ResidualBlocks:
         """Return the named blocks on the samples that all of them have."""
         key = tuple(name for name in self.view.blocks if name in set(names))
@@ -74,7 +69,7 @@ class ResidualViews:
 
     def _residual_blocks(self, names: tuple[str, ...]) -> ResidualBlocks:
         shared = self.view.shared(names)
-        columns = design_columns_of(self.view, shared, self.within)
+        columns = design_columns_of(self.view, shared, self.view.within_groups)
         values = {name: self._values(name, shared, columns) for name in names}
         if is_repeated(shared) and shared.subjects is not None:
             level = self.view.settings.level or "visits"

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import TypedDict
 
 import numpy as np
 from numpy.typing import NDArray
@@ -114,14 +115,11 @@ def design_pairs(view: AnalysisView, shared: Sequence[Shared], within: bool) -> 
 def _plain(
     view: AnalysisView, shared: Sequence[Shared], within: bool, reporter: Reporter, label: str
 ) -> Screen:
-    settings, pairs = view.settings.network, design_pairs(view, shared, within)
+    pairs = design_pairs(view, shared, within)
     with reporter.progress(label) as progress:
         found = screen_blocks(
             pairs,
-            fdr=settings.fdr,
-            correlation=settings.correlation,
-            minimum_r=settings.minimum_r,
-            maximum_edges=settings.maximum_edges,
+            **_asked(view),
             progress=progress,
         )
     off = tuple("" for _ in pairs)
@@ -139,10 +137,7 @@ def _repeated(
             pairs,
             designs,
             level,
-            fdr=settings.fdr,
-            correlation=settings.correlation,
-            minimum_r=settings.minimum_r,
-            maximum_edges=settings.maximum_edges,
+            **_asked(view),
             progress=progress,
         )
     off = tuple(REPEATED if settings.remove_private else "" for _ in pairs)
@@ -168,10 +163,7 @@ def _without_private(
         result = screen_without_private(
             blocks,
             places,
-            fdr=settings.fdr,
-            correlation=settings.correlation,
-            minimum_r=settings.minimum_r,
-            maximum_edges=settings.maximum_edges,
+            **_asked(view),
             seed=view.settings.seed,
             progress=progress,
         )
@@ -182,6 +174,25 @@ def _without_private(
     )
     components = dict(zip(names, result.components, strict=True))
     return Screen(result.screen, pairs, result.support, components, result.off, _freedom(plain), False)
+
+
+class Asked(TypedDict):
+    """What every screen is asked for."""
+
+    fdr: float
+    correlation: Correlation
+    minimum_r: float
+    maximum_edges: int
+
+
+def _asked(view: AnalysisView) -> Asked:
+    chosen = view.settings.network
+    return {
+        "fdr": chosen.fdr,
+        "correlation": chosen.correlation,
+        "minimum_r": chosen.minimum_r,
+        "maximum_edges": chosen.maximum_edges,
+    }
 
 
 def _freedom(pairs: Sequence[BlockPair]) -> tuple[int, ...]:

@@ -161,7 +161,7 @@ def _pair_story(state: ProjectState, analysis: str, tables: Tables, a: pd.Series
     ends = ((str(a["block"]), str(a["feature"])), (str(b["block"]), str(b["feature"])))
     blocks = {block: load_block(state, block) for block, _ in ends}
     view = AnalysisView(analysis, settings, state.settings, state.require_sheet(), blocks)
-    within = bool(view.factors) and settings.network.select == "within"
+    within = view.within_groups
     private = {block: read_scores(state, analysis, block) for block, _ in ends}
     values = pair_values(view, ends, within, private)
     edge, beside = _row(tables.edges, ends), _row(tables.group_pairs, ends)

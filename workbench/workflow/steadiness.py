@@ -8,15 +8,15 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.engine import Nuisance
 from workbench.engine.private_variation import LayerBlock, pairs_without_private
 from workbench.engine.repeated import Level
-from workbench.engine.screen import BlockPair, Correlation
+from workbench.engine.screen import Correlation
 from workbench.engine.stability import (
     LEAST_FREEDOM,
     SMALLEST_HALF,
     HalfScreen,
     StrongestOf,
+    pair_freedom,
     pair_stability,
 )
 from workbench.engine.strongest import strongest_pairs
@@ -161,7 +161,7 @@ class HalfCleaned:
             half, [self.places[k] for k in able], correlation=self.correlation, seed=self.seed
         )
         kept = [
-            (k, pair) for k, pair in zip(able, made.pairs, strict=True) if _freedom(pair) >= LEAST_FREEDOM
+            (k, pair) for k, pair in zip(able, made.pairs, strict=True) if pair_freedom(pair) >= LEAST_FREEDOM
         ]
         if not kept:
             return np.empty((0, 3), dtype=np.intp)
@@ -176,11 +176,6 @@ class HalfCleaned:
 def _taken(block: LayerBlock, positions: IndexArray) -> LayerBlock:
     held = np.flatnonzero(np.isin(block.rows, positions))
     return replace(block, values=block.values[held], rows=block.rows[held], nuisance=block.nuisance[held])
-
-
-def _freedom(pair: BlockPair) -> int:
-    rank = pair.nuisance.rank if isinstance(pair.nuisance, Nuisance) else 1
-    return int(pair.x.shape[0]) - rank - 1
 
 
 def stability_lines(steady: Steadiness | None) -> list[str]:
