@@ -12,7 +12,7 @@ from typing import ClassVar
 import numpy as np
 
 from workbench.prepare.combining import CombineRuns
-from workbench.prepare.counts import check_count_cells
+from workbench.prepare.counts import check_count_cells, check_not_empty
 from workbench.prepare.gaps import FillGaps
 from workbench.prepare.refusal import VALUES, PrepareRefusal, without_value
 from workbench.prepare.steps import (
@@ -62,7 +62,7 @@ def _steps(settings: CompositionPreparation, combine: Step) -> tuple[Step, ...]:
 def check_composition_counts(table: MeasuredTable) -> None:
     """Refuse what is no count, and samples without a read."""
     check_count_cells(table)
-    _check_not_empty(table)
+    check_not_empty(table, "part above 0")
 
 
 def check_proportions(table: MeasuredTable) -> None:
@@ -74,7 +74,7 @@ def check_proportions(table: MeasuredTable) -> None:
         Naming the first negative cell, or the empty samples.
     """
     check_proportion_cells(table)
-    _check_not_empty(table)
+    check_not_empty(table, "part above 0")
 
 
 def check_proportion_cells(table: MeasuredTable) -> None:
@@ -93,13 +93,6 @@ def check_proportion_cells(table: MeasuredTable) -> None:
             key=VALUES,
             fitting=("log", "continuous"),
         )
-
-
-def _check_not_empty(table: MeasuredTable) -> None:
-    empty = np.flatnonzero((table.values > 0).sum(axis=1) == 0)
-    if empty.size and table.features:
-        names = [table.samples[row] for row in empty]
-        raise without_value("part above 0", names, len(table.samples))
 
 
 @dataclass(frozen=True)

@@ -60,10 +60,20 @@ def check_counts(table: MeasuredTable) -> None:
         Naming the first negative cell, or the empty samples.
     """
     check_count_cells(table)
+    check_not_empty(table, "count above 0")
+
+
+def check_not_empty(table: MeasuredTable, lacking: str) -> None:
+    """Refuse samples without a value above 0; ``lacking`` says in words what they do not have.
+
+    Raises
+    ------
+    InputError
+        Naming the samples.
+    """
     empty = np.flatnonzero((table.values > 0).sum(axis=1) == 0)
     if empty.size and table.features:
-        names = [table.samples[row] for row in empty]
-        raise without_value("count above 0", names, len(table.samples))
+        raise without_value(lacking, [table.samples[row] for row in empty], len(table.samples))
 
 
 def check_count_cells(table: MeasuredTable) -> None:
