@@ -28,8 +28,8 @@ from workbench.pathways import (
     short_list,
 )
 from workbench.store import Change, check_file, read_table, sha256_of, table_bytes
+from workbench.workflow.analysis_inputs import analysis_inputs
 from workbench.workflow.analysis_view import AnalysisView, blocks_of
-from workbench.workflow.canonical import analysis_inputs
 from workbench.workflow.doubts import doubts_of
 from workbench.workflow.drawings import write_drawings
 from workbench.workflow.edge_correlations import edge_correlations

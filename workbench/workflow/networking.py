@@ -17,8 +17,8 @@ from workbench.network import (
 )
 from workbench.pathways import edge_columns
 from workbench.store import Change, json_bytes, table_bytes
+from workbench.workflow.analysis_inputs import analysis_inputs
 from workbench.workflow.analysis_view import AnalysisView, blocks_of, view_analysis
-from workbench.workflow.canonical import analysis_inputs
 from workbench.workflow.choices import choices_of
 from workbench.workflow.differences import group_contrasts
 from workbench.workflow.drawings import write_drawings

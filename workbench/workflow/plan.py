@@ -6,9 +6,9 @@ from collections.abc import Sequence
 
 from workbench.errors import InputError
 from workbench.workflow.analysis_view import blocks_of
-from workbench.workflow.canonical import integrating_stage
 from workbench.workflow.checking import checking_stage
 from workbench.workflow.following import following_stage
+from workbench.workflow.integrating import integrating_stage
 from workbench.workflow.looking import between_stage, looking_stage
 from workbench.workflow.networking import networking_stage
 from workbench.workflow.preparing import preparing_stage

@@ -13,8 +13,8 @@ from workbench import __version__
 from workbench.engine import critical_r
 from workbench.engine.planning import SHARE, significance_level, smallest_correlation
 from workbench.intake.faults import counted
+from workbench.workflow.analysis_inputs import analysis_inputs
 from workbench.workflow.analysis_view import AnalysisView, Shared
-from workbench.workflow.canonical import analysis_inputs
 from workbench.workflow.choices import choices_of
 from workbench.workflow.edges import GROUP_BOUND
 from workbench.workflow.private import private_lines, private_record

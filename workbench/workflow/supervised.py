@@ -10,8 +10,8 @@ import numpy as np
 
 from workbench.engine.linear import column_correlations
 from workbench.store import Change, table_bytes
+from workbench.workflow.analysis_inputs import analysis_inputs
 from workbench.workflow.analysis_view import blocks_of, view_analysis
-from workbench.workflow.canonical import analysis_inputs
 from workbench.workflow.drawings import write_drawings
 from workbench.workflow.fingerprints import columns_fingerprint, fingerprint
 from workbench.workflow.model_file import FORMAT
