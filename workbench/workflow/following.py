@@ -144,10 +144,15 @@ def _draw_listed(graph: nx.Graph, listed: pd.DataFrame) -> tuple[Drawing, ...]:
 
 def read_features(path: Path) -> pd.DataFrame:
     """Return features.tsv with every column of identifiers as text, whatever it looks like."""
-    with path.open(encoding="utf-8") as file:
-        header = pd.DataFrame(columns=file.readline().rstrip("\n").split("\t"))
-    table: pd.DataFrame = read_table(path, text=[*identifier_columns(header), "cluster"])
+    identifiers = identifier_columns(pd.DataFrame(columns=table_header(path)))
+    table: pd.DataFrame = read_table(path, text=[*identifiers, "cluster"])
     return table
+
+
+def table_header(path: Path) -> list[str]:
+    """Return the names of a stored table's columns."""
+    with path.open(encoding="utf-8") as file:
+        return file.readline().rstrip("\n").split("\t")
 
 
 def followed_sentence(listed: int, edges: int) -> str:

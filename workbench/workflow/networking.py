@@ -6,7 +6,6 @@ import numpy as np
 import pandas as pd
 
 from workbench import __version__
-from workbench.errors import InputError
 from workbench.network import (
     build_network,
     gexf_bytes,
@@ -15,7 +14,6 @@ from workbench.network import (
     with_communities,
     with_degrees,
 )
-from workbench.pathways import edge_columns
 from workbench.store import Change, json_bytes, table_bytes
 from workbench.workflow.analysis_inputs import analysis_inputs
 from workbench.workflow.analysis_view import AnalysisView, blocks_of, view_analysis
@@ -25,7 +23,8 @@ from workbench.workflow.drawings import write_drawings
 from workbench.workflow.edges import edges_table, group_pairs_table
 from workbench.workflow.feature_table import canonical_correlations, features_table, implied_correlations
 from workbench.workflow.fingerprints import fingerprint
-from workbench.workflow.following import knowledge_inputs, read_knowledge
+from workbench.workflow.following import knowledge_inputs
+from workbench.workflow.known_edges import known_columns, mark_known, only_knowledge_changed
 from workbench.workflow.private import FILE as PRIVATE_FILE
 from workbench.workflow.private import draw_removed, heavy_tailed, private_table, write_scores
 from workbench.workflow.record import analysis_record, fragile_sentence, screen_sentences
@@ -82,6 +81,9 @@ def _inputs(state: ProjectState, name: str) -> dict[str, str]:
 
 
 def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) -> list[str]:
+    stage = networking_stage(state, name)
+    if only_knowledge_changed(state, stage):
+        return mark_known(state, change, reporter, stage, edges_in_order)
     view = view_analysis(state, name)
     screens = screen_analysis(view, reporter)
     edges, features = edges_table(view, screens), features_table(view)
@@ -91,12 +93,12 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
     edges[["model_r", "component"]] = implied_correlations(edges, canonical)
     places = pd.MultiIndex.from_frame(features[["block", "feature"]])
     features[list(canonical.columns)] = canonical.reindex(places).to_numpy()
-    edges = edges.assign(**_known(state, reporter, name, edges, features))
+    edges = edges.assign(**known_columns(state, reporter, name, edges, features))
     graph = build_network(edges, features, attributes=graph_attributes(view), seed=view.settings.seed)
     halves = [half_edges(view, found) for found in steady.found] if steady is not None else None
     resamples = view.settings.network.stability
     graph = rated_network(graph, resamples=resamples, seed=view.settings.seed, halves=halves)
-    edges = in_order(with_communities(edges, graph), EDGE_COLUMNS)
+    edges = edges_in_order(with_communities(edges, graph))
     features = in_order(with_degrees(features, graph), FEATURE_COLUMNS)
     pairs = group_pairs_table(view, screens)
     contrasts = group_contrasts(view, screens, reporter)
@@ -129,21 +131,6 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
     return written
 
 
-def _known(
-    state: ProjectState, reporter: Reporter, name: str, edges: pd.DataFrame, features: pd.DataFrame
-) -> dict[str, pd.Series]:
-    """Return the columns of what is known beforehand; none where no table is named or none of it fits."""
-    sets, links = read_knowledge(state, name)
-    if sets is None and links is None:
-        return {}
-    try:
-        found = edge_columns(edges, features, sets, links)
-    except InputError as error:
-        reporter.say(f"  nothing known is marked on the edges: {error}")
-        return {}
-    return {str(column): found[column] for column in found}
-
-
 def _clear_shown(state: ProjectState, change: Change, name: str) -> None:
     """Take away the figures of single pairs: they show what an earlier network rested on."""
     folder = state.paths.analysis(name) / SHOWN
@@ -162,6 +149,11 @@ def graph_attributes(view: AnalysisView) -> dict[str, object]:
         "correlation": network.correlation,
         "version": __version__,
     }
+
+
+def edges_in_order(table: pd.DataFrame) -> pd.DataFrame:
+    """Return the edges with the documented columns first."""
+    return in_order(table, EDGE_COLUMNS)
 
 
 def in_order(table: pd.DataFrame, first: tuple[str, ...]) -> pd.DataFrame:
