@@ -28,7 +28,7 @@ def test_pathways_prints_the_head_of_the_list_and_where_the_files_are(command, f
     assert " with " in out or " when " in out
     for file in ("followup.tsv", "pathways.tsv", "figures"):
         assert str(finished / "results" / "main" / file) in out
-    assert "sets.gmt: 1 sets of" in err
+    assert "sets.gmt: 1 set of" in err
     assert 'sets = "source/sets.gmt"' in (finished / "project.toml").read_text()
     code, out, err = command("pathways", "main", "--project", finished)
     assert (code, "nothing to do" in out) == (0, True)

@@ -47,7 +47,7 @@ def test_changed_values_and_gaps_are_counted_and_the_largest_is_shown():
     assert str(found.largest) == "sample 'S3', feature 'b': 6 before, -60 now"
     assert found.lines()[2] == (
         "values: 2 of 6 cells of both changed (33.3 %), most in sample 'S3', feature 'b': 6 before, -60 now; "
-        "1 gaps filled; 1 gaps new"
+        "1 gap filled; 1 gap new"
     )
 
 

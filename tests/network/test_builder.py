@@ -135,7 +135,7 @@ def test_tables_are_not_changed() -> None:
         ({"r": [0.5, np.inf]}, "row 2: r of .* is inf; allowed: a number from -1 to 1"),
         ({"r": [0.5, 1.5]}, "row 2: r of .* is 1.5"),
         ({"r": ["0.5", "high"]}, "row 1: r of .* is 0.5; allowed: a number"),
-        ({"target": ["m0", "m9"]}, "lacks 1 features of the edges table: 'm9' of block 'lcms'"),
+        ({"target": ["m0", "m9"]}, "lacks 1 feature of the edges table: 'm9' of block 'lcms'"),
         ({"target": ["m0", None]}, "row 2 has no target"),
         ({"source_block": ["rna", ""]}, "row 2 has no source_block"),
         ({"source": ["g0", "g0"], "target": ["m0", "m0"]}, "row 2: 'g0' .* already joined above"),

@@ -76,7 +76,7 @@ def test_a_block_without_any_is_told_and_matches_nothing() -> None:
     [
         ("abc1 def2", "Read in small letters, 2 features of column 'label' would match"),
         ("cpd:C00031", "Read without what stands before the colon, 2 features of column 'kegg'"),
-        ("g1.7 g9.1", "Read without their version .*, 1 features of column 'feature'"),
+        ("g1.7 g9.1", "Read without their version .*, 1 feature of column 'feature'"),
         ("X1 X2", "bring the ones that the table uses as a column: `workbench add-block"),
     ],
 )

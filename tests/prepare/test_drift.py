@@ -121,7 +121,7 @@ def test_nothing_is_drawn_on_past_the_outermost_pools() -> None:
     removed = np.log2(table.values / after.values)
     [course] = step.courses.batches
     assert_allclose(removed[0], course.course[0], atol=1e-9)
-    assert "1 runs lie before the first or after the last pool" in account.cautions[0]
+    assert "1 run before the first or after the last pool" in account.cautions[0]
     far = read_off(course.x, course.course, np.array([-1e6, 1e6]))
     assert_array_equal(far, course.course[[0, -1]])
 
@@ -158,7 +158,7 @@ def test_runs_without_order_are_named() -> None:
     step, table = fitted(with_runs_changed(made, order=order))
     with pytest.raises(
         InputError,
-        match=r"1 runs have no order: 'run4'; add the order to the run sheet, or set drift = \"none\" in",
+        match=r"1 run has no order: 'run4'; add the order to the run sheet, or set drift = \"none\" in",
     ):
         step.transform(table)
 

@@ -27,7 +27,7 @@ def fit_transform(table: MeasuredTable) -> PreparedTable:
 
 def test_numbers_are_kept_and_text_becomes_zero_and_one() -> None:
     result = fit_transform(clinic())
-    assert result.features == ("age", "sex", "stage=I", "stage=II", "stage=III")
+    assert result.features == ("age", "sex=male", "stage=I", "stage=II", "stage=III")
     assert result.origins == ("age", "sex", "stage", "stage", "stage")
     assert_array_equal(result.values[:4, 0], AGE[:4])
     assert_array_equal(result.values[:5, 1], SEX[:5])

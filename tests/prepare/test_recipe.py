@@ -226,6 +226,6 @@ def test_tables_that_contradict_themselves_are_refused() -> None:
         MeasuredTable(values, ("a", "b"), ("x", "y"), (None,))
     with pytest.raises(
         InputError,
-        match=r"1 values are infinite or beyond 1e\+100, the first at feature 'y', sample 'b': inf",
+        match=r"1 value is infinite or beyond 1e\+100, the first at feature 'y', sample 'b': inf",
     ):
         MeasuredTable(np.array([[1.0, 2.0], [3.0, np.inf]]), ("a", "b"), ("x", "y"))

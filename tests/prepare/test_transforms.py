@@ -62,7 +62,7 @@ def test_new_values_have_ranks_between_known_ones_and_never_beyond() -> None:
 
 def test_logarithms_of_zero_are_refused_in_training_and_missing_later() -> None:
     values = readings()
-    with pytest.raises(InputError, match=r"log of zero or less in 1 features: 'F2'; name the features"):
+    with pytest.raises(InputError, match=r"log of zero or less in 1 feature: 'F2'; name the features"):
         prepared("continuous", table_of(values), transform="log")
     fitted = Transform("log", ("F0",)).fit(step_table(values), NO_GROUPS)
     later, account = fitted.transform(step_table(np.array([[0.0, -1.0, 3.0]])))
@@ -92,7 +92,7 @@ def test_ordered_text_becomes_its_places() -> None:
 
 def test_names_that_the_block_lacks_are_refused_with_the_nearest() -> None:
     with pytest.raises(
-        InputError, match=r"`ordered` names 1 features .* first 'F00'; did you mean 'F0'.*blocks.NAME.prepare"
+        InputError, match=r"`ordered` names 1 feature .* first 'F00'; did you mean 'F0'.*blocks.NAME.prepare"
     ):
         prepared("mixed", mixed(), ordered={"F00": ["a", "b"]})
     with pytest.raises(InputError, match=r"`transform_features` names .* the first 'crp'"):

@@ -167,12 +167,48 @@ def test_sets_of_other_identifiers_stop_the_stage_with_the_way_out(finished: Pat
     sets.write_text("P1\tone\tENSG01\tENSG02\n")
     project = Project.open(finished)
     told = add_knowledge(project.paths, ("main",), sets, None)
-    assert told == ("foreign.gmt: 1 sets of 2 identifiers",)
+    assert told == ("foreign.gmt: 1 set of 2 identifiers",)
     with pytest.raises(
         InputError, match=r"none of its 2 identifiers \('ENSG01', 'ENSG02'\) is in any column"
     ):
         follow(project)
     assert not (project.paths.analysis("main") / "pathways.tsv").exists()
+
+
+@pytest.mark.parametrize(
+    ("lines", "reason"),
+    [
+        ("P1\tone\tg0\tg1\tg2\n", "the sets hold no feature of lcms"),
+        ("P1\tone\tg0\tg1\tg2\nP2\ttwo\tm0\tm1\tm2\n", "no set holds features of both"),
+    ],
+)
+def test_sets_of_one_layer_cannot_be_asked_about_coherence(
+    finished: Path, tmp_path: Path, lines: str, reason: str
+) -> None:
+    table = read_table(finished / "results" / "main" / "features.tsv")
+    for short, block in (("g", "rna"), ("m", "lcms")):
+        for place, feature in enumerate(table.loc[table["block"] == block, "feature"].head(3)):
+            lines = lines.replace(f"\t{short}{place}", f"\t{feature}")
+    sets = tmp_path / "sets.gmt"
+    sets.write_text(lines)
+    project, heard = Project.open(finished), Heard()
+    project.pathways(sets=sets, reporter=heard)
+    (row,) = read_table(project.paths.analysis("main") / "coherence.tsv").to_dict("records")
+    assert row["reason"].startswith(reason)
+    assert np.isnan(row["p_rewired"])
+    assert any(f"rna x lcms: {reason}" in line for line in heard.lines)
+
+
+def test_the_p_of_joined_layers_is_told_as_joined(followed: Path, tmp_path: Path) -> None:
+    again = Project.open(shutil.copytree(followed, tmp_path / "again"))
+    (again.paths.analysis("main") / "pathways.tsv").unlink()
+    heard = Heard()
+    follow(again, heard)
+    told = [line for line in heard.lines if "expected; q" in line]
+    joined = [line for line in told if ", all layers: " in line]
+    assert joined
+    assert all("the layers' permutation p's joined to" in line for line in joined)
+    assert all("with samples permuted p" in line for line in told if line not in joined)
 
 
 def test_tables_are_refused_before_anything_is_written(finished: Path, tmp_path: Path) -> None:

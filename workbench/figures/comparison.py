@@ -20,6 +20,7 @@ from workbench.figures.style import (
     plain_ticks,
     say,
 )
+from workbench.intake.faults import counted
 from workbench.network.comparison import STATUSES
 
 MARK_OF = {
@@ -109,5 +110,5 @@ def _caption(table: pd.DataFrame, names: tuple[str, str]) -> str:
         "on average."
     )
     if untested:
-        text += f" {untested} pairs could not be tested (compared.tsv says why)."
+        text += f" Not to be tested: {counted(untested, 'pair')} (compared.tsv says why)."
     return text

@@ -26,6 +26,7 @@ from workbench.figures.network_parts import (
     page,
 )
 from workbench.figures.style import GUIDE, INK, TWO_COLUMNS, figure_name, figure_style, say
+from workbench.intake.faults import counted
 from workbench.network import Key
 
 MOST_DRAWN = 150
@@ -184,7 +185,7 @@ def _draw_panel(axes: Axes, graph: nx.Graph, panel: Panel, corner: Place) -> Non
         say(axes, across + (-EDGE if left else EDGE), down, name,
             ha="right" if left else "left", va="center", fontsize=SMALLEST_TEXT, zorder=5)  # fmt: skip
     if panel.left_out:
-        say(axes, x + LABEL + LINKS / 2, top + height + ROW * 0.6, f"and {panel.left_out} features more",
+        say(axes, x + LABEL + LINKS / 2, top + height + ROW * 0.6, f"and {counted(panel.left_out, 'feature')} more",
             ha="center", va="center", fontsize=SMALLEST_TEXT, color=GUIDE)  # fmt: skip
 
 
@@ -237,12 +238,13 @@ def _caption(
     )
     text = (
         f"{what} by community and layer: {len(shown)} of {len(graph)} features and {drawn} of "
-        f"{graph.number_of_edges()} edges. Marks: layers. Lines: edges, wider and darker the larger |r|, dashed where "
+        f"{counted(graph.number_of_edges(), 'edge')}. Marks: layers. Lines: edges, "
+        "wider and darker the larger |r|, dashed where "
         "r is below zero. Features are ordered so that few lines cross; their height means nothing else."
     )
     between = sum(graph.nodes[a]["community"] != graph.nodes[b]["community"] for a, b in graph.edges)
     if between:
-        text += f" {between} edges between communities are not drawn (edges.tsv has them)."
+        text += f" Not drawn: {counted(between, 'edge')} between communities (edges.tsv has them)."
     if unplaced:
-        text += f" {len(unplaced)} small communities found no room."
+        text += f" No room was found for {counted(len(unplaced), 'small community', 'small communities')}."
     return f"{text} Edges are associations that passed the test; communities are a way to read them, and no test."

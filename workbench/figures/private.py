@@ -26,11 +26,11 @@ MOST_BARS = 25
 
 @dataclass(frozen=True)
 class ComponentBar:
-    """One component: its number, its share of the block's variance, the block it is shared with (empty: private)."""
+    """One component: its number, its share of the block's variance, and why it stays (empty: it was removed)."""
 
     number: int
     share: float
-    shared_with: str
+    stays: str
 
 
 def draw_private(bars: Mapping[str, Sequence[ComponentBar]]) -> tuple[Drawing, ...]:
@@ -50,16 +50,17 @@ def draw_private(bars: Mapping[str, Sequence[ComponentBar]]) -> tuple[Drawing, .
 
 
 def component_bars(axes: Axes, name: str, components: Sequence[ComponentBar]) -> Axes:
-    """Draw the share of variance of each real component, private ones pale and hatched, shared ones dark."""
+    """Draw the share of variance of each real component, by what became of it."""
     if not components:
         note(axes, f"{figure_name(name)}: no component told from noise")
         return axes
     shown = components[:MOST_BARS]
-    for private, colour, hatch, label in (
-        (False, COLOURS[0], "", "shared, stays"),
-        (True, PALE, "////", "private, removed"),
+    for fate, colour, hatch, label in (
+        ("shared", COLOURS[0], "", "shared, stays"),
+        ("undecided", COLOURS[1], "", "undecided, stays"),
+        ("removed", PALE, "////", "private, removed"),
     ):
-        mine = [one for one in shown if (not one.shared_with) == private]
+        mine = [one for one in shown if _fate(one) == fate]
         if mine:
             axes.bar(
                 [one.number for one in mine],
@@ -79,13 +80,19 @@ def component_bars(axes: Axes, name: str, components: Sequence[ComponentBar]) ->
     return axes
 
 
+def _fate(one: ComponentBar) -> str:
+    """Return whether a component is shared, was removed, or is too weak or too like a shared one to be removed."""
+    return "removed" if not one.stays else "shared" if one.stays == "shared" else "undecided"
+
+
 def _caption(bars: Mapping[str, Sequence[ComponentBar]]) -> str:
     parts = []
     for name, components in bars.items():
-        private = sum(not one.shared_with for one in components)
-        parts.append(f"{name}: {len(components)} real components, {private} private")
+        private = sum(not one.stays for one in components)
+        parts.append(f"{name}: {len(components)} real components, {private} removed")
     return (
         "Share of each block's variance (nuisance, and within groups the group, removed) on its real components. Pale, "
-        "hatched: private to the block and removed before pairs were tested. Dark: shared with another layer; they "
-        f"stay. {'; '.join(parts)}."
+        "hatched: private to the block and removed before pairs were tested. Those shared with another layer stay, and "
+        "so do undecided ones, which are too weak for their removal to gain anything or cannot be told from a shared "
+        f"one. {'; '.join(parts)}."
     )

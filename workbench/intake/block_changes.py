@@ -104,8 +104,8 @@ class BlockDifference:
         share = 100 * self.changed / self.compared
         told = f"values: {self.changed:,} of {self.compared:,} cells of both changed ({share:.3g} %)"
         told += f", most in {self.largest}" if self.largest else ""
-        gaps = [f"{self.gaps_filled:,} gaps filled"] if self.gaps_filled else []
-        gaps += [f"{self.gaps_new:,} gaps new"] if self.gaps_new else []
+        gaps = [f"{counted(self.gaps_filled, 'gap')} filled"] if self.gaps_filled else []
+        gaps += [f"{counted(self.gaps_new, 'gap')} new"] if self.gaps_new else []
         return "; ".join([told, *gaps])
 
 

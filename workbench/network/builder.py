@@ -11,6 +11,7 @@ import pandas as pd
 
 from workbench import __version__
 from workbench.errors import InputError
+from workbench.intake.faults import counted
 from workbench.network.attributes import Plain, plain_value, uniform
 from workbench.network.backbone import backbone_p
 from workbench.network.communities import RESOLUTION, communities
@@ -238,7 +239,7 @@ def _check_known(ends: list[tuple[Key, Key]], nodes: Mapping[Key, Any]) -> None:
     if unknown:
         shown = ", ".join(_named(key) for key in unknown[:_SHOWN])
         raise InputError(
-            f"the features table lacks {len(unknown)} features of the edges table: {shown}"
+            f"the features table lacks {counted(len(unknown), 'feature')} of the edges table: {shown}"
             f"{' ...' if len(unknown) > _SHOWN else ''}; both tables must come from one analysis"
         )
 

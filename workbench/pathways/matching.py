@@ -11,6 +11,7 @@ import pandas as pd
 from scipy import sparse
 
 from workbench.errors import InputError
+from workbench.intake.faults import counted
 from workbench.pathways.sets import SetTable
 
 NOT_IDENTIFIERS = frozenset(
@@ -197,7 +198,7 @@ def _hint(features: pd.DataFrame, table: SetTable) -> str:
             matched = sum(any(read(name) in wanted for name in alternatives(cell)) for cell in cells)
             if matched:
                 return (
-                    f"Read {words}, {matched} features of column '{column}' would match: write the table's "
+                    f"Read {words}, {counted(matched, 'feature')} of column '{column}' would match: write the table's "
                     "identifiers as the features have them"
                 )
     return (

@@ -7,6 +7,7 @@ from typing import ClassVar
 
 import numpy as np
 
+from workbench.intake.faults import counted
 from workbench.prepare.combining import CombineRuns
 from workbench.prepare.gaps import FillGaps
 from workbench.prepare.refusal import VALUES, PrepareRefusal
@@ -42,7 +43,8 @@ def check_beta(table: MeasuredTable) -> None:
     if outside.any():
         percentages = not (table.values < 0).any()
         raise PrepareRefusal(
-            f"{int(outside.sum())} values are outside 0 to 1, the first at {table.first_cell(outside)}; methylated "
+            f"{counted(int(outside.sum()), 'value is', 'values are')} outside 0 to 1, the first at "
+            f"{table.first_cell(outside)}; methylated "
             f"shares are 0 to 1, {'percentages are not' if percentages else 'M-values are logarithms'}",
             key=VALUES,
             fitting=("continuous",) if percentages else ("log",),

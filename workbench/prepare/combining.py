@@ -7,6 +7,7 @@ from typing import ClassVar, Literal
 
 import numpy as np
 
+from workbench.intake.faults import counted
 from workbench.prepare.steps import FitContext, Settled
 from workbench.prepare.tables import Matrix, StepAccount, StepTable
 
@@ -54,15 +55,16 @@ class CombineRuns(Settled):
 
     def _account(self, table: StepTable, sizes: np.ndarray) -> StepAccount:
         controls = 0 if table.controls is None else len(table.controls.runs)
+        several = int((sizes > 1).sum())
         numbers: dict[str, float | int | str] = {
             "runs": len(table.samples),
             "samples": len(sizes),
-            "samples_with_several_runs": int((sizes > 1).sum()),
+            "samples_with_several_runs": several,
             "pools_and_blanks": controls,
         }
         sentence = (
             f"{len(table.samples):,} runs of {len(sizes):,} samples combined to their {self.how} "
-            f"({numbers['samples_with_several_runs']} samples with several runs); {controls} pools and blanks left out"
+            f"({counted(several, 'sample')} with several runs); pools and blanks left out: {controls}"
         )
         return StepAccount(self.step, sentence, numbers)
 

@@ -16,6 +16,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workbench.errors import InputError
+from workbench.intake.faults import counted
 from workbench.prepare.drift_courses import (
     CURVE,
     FEWEST_FOR_LEVEL,
@@ -126,7 +127,7 @@ class FittedDrift:
             placeless = [runs.runs[row] for row in rows if np.isnan(runs.order[row])]
             if placeless:
                 raise PrepareRefusal(
-                    f"{len(placeless)} runs have no order: {some(placeless)}",
+                    f"{counted(len(placeless), 'run has', 'runs have')} no order: {some(placeless)}",
                     key="prepare.drift",
                     fitting=("none",),
                     advice="add the order to the run sheet",
@@ -191,7 +192,7 @@ class FittedDrift:
 
     def _sentence(self, numbers: dict[str, float | int | str]) -> str:
         if not self.courses.batches:
-            return f"no drift removed: {numbers['pools']} pools, and {self.courses.reason}"
+            return f"no drift removed: {counted(int(numbers['pools']), 'pool')}, and {self.courses.reason}"
         curve, level = numbers["features_with_curve"], numbers["features_with_levels"]
         sentence = (
             f"drift over the run order taken from {curve:,} features by a curve and from {level:,} by the level of "
@@ -210,13 +211,13 @@ class FittedDrift:
         outside = int(numbers["runs_outside_pools"])
         if outside:
             told.append(
-                f"{outside} runs lie before the first or after the last pool of their batch: they are corrected as at "
-                "that pool, as nothing is known beyond"
+                f"{counted(outside, 'run')} before the first or after the last pool of the batch: corrected as at that "
+                "pool, as nothing is known beyond"
             )
         alone = int(numbers["runs_left_alone"])
         if alone and self.courses.batches:
             told.append(
-                f"{alone} runs are in batches with fewer than {FEWEST_FOR_LEVEL} pools: left as they are"
+                f"{counted(alone, 'run')} in batches with fewer than {FEWEST_FOR_LEVEL} pools: left as they are"
             )
         return tuple(told)
 

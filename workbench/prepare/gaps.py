@@ -8,6 +8,7 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
+from workbench.intake.faults import counted
 from workbench.prepare.censoring import Censoring, find_censoring, no_censoring
 from workbench.prepare.draws import uniform_table
 from workbench.prepare.low_tails import LowTails, fit_low_tails
@@ -168,14 +169,14 @@ class FittedGaps:
             )
         if features:
             told.append(
-                f"{len(features):,} features have more than {percent(WARNED_FEATURE)} of their values filled in: "
+                f"more than {percent(WARNED_FEATURE)} of the values of {counted(len(features), 'feature')} filled in: "
                 f"{some(features)}"
             )
         return tuple(told)
 
     def _sentence(self, gaps: Mask, below: float) -> str:
         total = int(gaps.sum())
-        start = f"{total:,} gaps ({percent(total / gaps.size)} of the values) filled: "
+        start = f"{counted(total, 'gap')} ({percent(total / gaps.size)} of the values) filled: "
         low_gaps = round(below)
         rest = f"{total - low_gaps:,} with the mean of the {self.donors.k} most similar samples that have the feature"
         if not self.settings.censored:

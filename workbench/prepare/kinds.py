@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from workbench.errors import InputError
+from workbench.intake.faults import counted
 from workbench.prepare.beta import beta_steps, check_beta
 from workbench.prepare.compositions import (
     check_composition_counts,
@@ -109,6 +110,6 @@ def check_names(key: str, names: Sequence[str], features: Sequence[str]) -> None
     if absent:
         near = hint(absent[0], list(features))
         raise PrepareRefusal(
-            f"`{key}` names {len(absent)} features that the block lacks, the first '{absent[0]}'{near}",
+            f"`{key}` names {counted(len(absent), 'feature')} that the block lacks, the first '{absent[0]}'{near}",
             key=f"prepare.{key}",
         )

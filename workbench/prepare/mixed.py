@@ -1,7 +1,7 @@
 """Mixed readings (clinical): numbers and text.
 
-Numbers are kept. Text with two levels becomes 0 / 1 in the order of its levels; text with more becomes
-one ``column=level`` indicator per level. Levels are those that the training samples have; any other
+Numbers are kept. Text with two levels becomes one indicator ``column=level`` of the level that comes last in their
+order; text with more becomes one per level. Levels are those that the training samples have; any other
 level counts as missing. A gap says nothing: a number becomes the training median, a 0 / 1 column the
 share of ones in training. Text whose levels have an order, which only the settings can tell, becomes 0, 1, 2 ...
 in that order.
@@ -16,6 +16,7 @@ from typing import ClassVar
 import numpy as np
 
 from workbench.errors import InputError
+from workbench.intake.faults import counted
 from workbench.prepare.refusal import PrepareRefusal
 from workbench.prepare.steps import DropFlat, DropRarelySeen, DropUnusable, FitContext, Settled, Step
 from workbench.prepare.tables import Matrix, MeasuredTable, StepAccount, StepTable, some
@@ -116,7 +117,10 @@ class TextToNumbers(Settled):
     @property
     def rule(self) -> str:
         """What the step does, in one line."""
-        plain = "turns text of two levels into 0 / 1, other text into one column of 0 / 1 per level, named column=level"
+        plain = (
+            "turns text of two levels into a column of 0 / 1, other text into one per level, named column=level for "
+            "the level that is 1"
+        )
         return (
             f"{plain}; {some([name for name, _ in self.ordered])} into 0, 1, 2 ..." if self.ordered else plain
         )
@@ -148,7 +152,8 @@ class TextToNumbers(Settled):
         rare = {f"{feature}={level}": int(count) for level, count in zip(levels, counts, strict=True)}
         rare = {name: count for name, count in rare.items() if 0 < count < self.smallest}
         if len(seen) <= 2:
-            columns: tuple[tuple[str, str], ...] = () if rare else ((feature, seen[-1]),)
+            name = f"{feature}={seen[-1]}" if len(seen) == 2 else feature
+            columns: tuple[tuple[str, str], ...] = () if rare else ((name, seen[-1]),)
             reasons = {feature: f"a level in only {min(rare.values())} sample"} if rare else {}
             return TextCode(feature, seen, columns), reasons
         named = ((f"{feature}={level}", level) for level in seen)
@@ -199,11 +204,8 @@ class FittedText:
 
     def _account(self, table: StepTable) -> StepAccount:
         text = [code for code in self.codes if code.levels]
-        numbers: dict[str, float | int | str] = {
-            "numbers": len(self.codes) - len(text),
-            "text": len(text),
-            "indicators": sum(len(code.columns) for code in text),
-        }
+        kept, indicators = len(self.codes) - len(text), sum(len(code.columns) for code in text)
+        numbers: dict[str, float | int | str] = {"numbers": kept, "text": len(text), "indicators": indicators}
         for code in text:
             if code.ordered:
                 listed = ", ".join(f"{place} = {level}" for place, level in enumerate(code.levels))
@@ -215,8 +217,8 @@ class FittedText:
             f"levels of {feature} not in training": ", ".join(names) for feature, names in unknown.items()
         }
         sentence = (
-            f"{numbers['numbers']} numeric features kept, {numbers['text']} text features turned into "
-            f"{numbers['indicators']} columns of numbers"
+            f"{counted(kept, 'numeric feature')} kept, {counted(len(text), 'text feature')} turned into "
+            f"{counted(indicators, 'column')} of numbers"
         )
         if unknown:
             sentence += f"; levels that training lacks count as missing ({some(list(unknown))})"
@@ -265,7 +267,11 @@ class FittedTypical:
         """Return the table without gaps."""
         gaps = np.isnan(table.values)
         count = int(gaps.sum())
-        sentence = f"{count:,} gaps filled, none of which says anything of its sample" if count else "no gaps"
+        sentence = (
+            f"{counted(count, 'gap')} filled; a filled-in value says nothing of its sample"
+            if count
+            else "no gaps"
+        )
         account = StepAccount(self.settings.step, sentence, {"gaps": count, "values": gaps.size})
         filled = np.where(gaps, self.typical, table.values)
         return replace(table, values=filled, imputed=table.imputed | gaps), account

@@ -10,6 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workbench.errors import InputError
+from workbench.intake.faults import counted
 from workbench.prepare.runs import Runs, RunTable
 from workbench.prepare.words import some
 
@@ -297,7 +298,8 @@ def _check_finite(table: MeasuredTable) -> None:
     beyond = (table.values > LARGEST) | (table.values < -LARGEST)
     if beyond.any():
         raise InputError(
-            f"{int(beyond.sum())} values are infinite or beyond {LARGEST:g}, the first at {table.first_cell(beyond)}; "
+            f"{counted(int(beyond.sum()), 'value is', 'values are')} infinite or beyond {LARGEST:g}, the first at "
+            f"{table.first_cell(beyond)}; "
             "leave the cell empty where nothing was measured"
         )
 

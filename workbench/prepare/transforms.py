@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from scipy.special import ndtri
 from scipy.stats import rankdata
 
+from workbench.intake.faults import counted
 from workbench.prepare.refusal import PrepareRefusal
 from workbench.prepare.steps import FitContext, Settled, Step
 from workbench.prepare.tables import Matrix, StepAccount, StepTable, some
@@ -116,7 +117,7 @@ class Transform(Settled):
         wrong = [table.features[column] for column, least in zip(columns, low, strict=True) if least <= 0]
         if wrong:
             raise PrepareRefusal(
-                f"log of zero or less in {len(wrong)} features: {some(wrong)}",
+                f"log of zero or less in {counted(len(wrong), 'feature')}: {some(wrong)}",
                 key="prepare.transform",
                 fitting=("rank",),
                 advice="name the features to transform in `transform_features`",
@@ -155,7 +156,7 @@ class FittedTransform:
         what = "log2" if self.settings.how == "log" else "normal scores of the ranks"
         sentence = f"{what} of {len(self.names)} of {p} features ({some(self.names) or 'none'})"
         if lost:
-            sentence += f"; {lost} values of zero or less count as missing"
+            sentence += f"; missing as they are zero or less: {counted(lost, 'value')}"
         numbers: dict[str, float | int | str] = {"features": len(self.names), "not_positive": lost}
         return StepAccount(self.settings.step, sentence, numbers, reference=self.settings.paper)
 

@@ -12,6 +12,7 @@ import numpy as np
 import pandas as pd
 
 from workbench.errors import InputError
+from workbench.intake.faults import counted
 from workbench.pathways import identifier_columns
 from workbench.store import ProjectPaths, check_file, find_project, read_table
 from workbench.workflow.following import read_features
@@ -126,8 +127,8 @@ def keyed(side: Side, column: str, notes: list[str]) -> dict[Key, int]:
     ambiguous = {key for key, count in Counter(keys).items() if count > 1 and key[1]}
     if ambiguous:
         notes.append(
-            f"{side.name}: {len(ambiguous)} identifiers of column '{column}' stand for several features each and are "
-            f"left out, {min(ambiguous)[1]!r} among them"
+            f"{side.name}: {counted(len(ambiguous), 'identifier')} of column '{column}' left out, each for "
+            f"standing for several features, {min(ambiguous)[1]!r} among them"
         )
     return {key: row for row, key in enumerate(keys) if key[1] and key not in ambiguous}
 
@@ -167,7 +168,8 @@ def dependence(first: Side, second: Side) -> str:
         both = [sample for sample in both if _same_values(first, second, sample)]
     if not both:
         return ""
-    return f"{len(both)} samples are in both ({both[0]} among them), so that the two correlations are not independent"
+    shared = counted(len(both), "sample is", "samples are")
+    return f"{shared} in both ({both[0]} among them), so that the two correlations are not independent"
 
 
 def _same_values(first: Side, second: Side, sample: str) -> bool:

@@ -14,6 +14,7 @@ import pandas as pd
 
 from workbench.errors import InputError
 from workbench.figures.comparison import draw_comparison
+from workbench.intake.faults import counted
 from workbench.network.comparison import (
     PairSide,
     adjusted_over,
@@ -80,7 +81,8 @@ class Comparison:
         first, second = self.names
         count = self.pairs["status"].value_counts()
         told = [
-            f"{first} has {self._edges('lost')} edges and {second} {self._edges('gained')}, matched by {self.by}: "
+            f"{first} has {counted(self._edges('lost'), 'edge')} and {second} {self._edges('gained')}, "
+            f"matched by {self.by}: "
             + ", ".join(
                 f"{int(count.get(status, 0))} {status}" for status in ("kept", "reversed", "gained", "lost")
             )
@@ -102,7 +104,7 @@ class Comparison:
                 "edge in both; 1 equal, 0 as by chance)"
             )
         told.append(
-            f"{len(self.settings)} settings differ (settings.tsv)"
+            f"{counted(len(self.settings), 'setting differs', 'settings differ')} (settings.tsv)"
             if len(self.settings)
             else "no setting differs"
         )

@@ -13,6 +13,7 @@ from workbench.figures import Drawing
 from workbench.figures.edge_matrix import draw_edge_matrix
 from workbench.figures.network import MOST_DRAWN, draw_network
 from workbench.figures.pathways import draw_pathways
+from workbench.intake.faults import counted
 from workbench.network import read_graphml
 from workbench.pathways import (
     Candidate,
@@ -36,6 +37,7 @@ from workbench.workflow.edge_correlations import edge_correlations
 from workbench.workflow.fingerprints import fingerprint
 from workbench.workflow.group_correlations import group_correlations
 from workbench.workflow.pathway_tables import (
+    ALL_LAYERS,
     coherence_of,
     coherence_sentences,
     coherence_table,
@@ -54,6 +56,8 @@ READ = ("edges.tsv", "features.tsv", "network.graphml")
 CAPTIONS = "captions_pathways.tsv"
 OUTPUTS = ("followup.tsv", "edge_correlations.tsv", f"figures/{CAPTIONS}")
 SET_OUTPUTS = ("pathways.tsv", "coherence.tsv")
+ONE_LAYER_P = "with samples permuted p ="
+JOINED_P = "the layers' permutation p's joined to"
 LINK_OUTPUTS = ("known_links.tsv",)
 
 
@@ -185,11 +189,12 @@ def _pathway_sentences(table: pd.DataFrame, tests: int) -> list[str]:
     if not tests:
         return ["no community has three features of a layer in any set: no set was tested"]
     holds = table[table["holds"]]
-    told = [f"{len(holds)} of {len(table)} sets found in communities hold by both of their p's"]
+    told = [f"{counted(len(table), 'set')} found in communities; both p's hold for {len(holds)}"]
     for row in holds.head(5).to_dict("records"):
+        permuted = JOINED_P if row["layer"] == ALL_LAYERS else ONE_LAYER_P
         told.append(
             f"community {row['community']}, {row['layer']}: {row['found']} of its {row['in_community']} features in "
-            f"sets are in {row['name']} ({row['expected']:.1f} expected; q = {row['q']:.2g}, with samples permuted p = "
+            f"sets are in {row['name']} ({row['expected']:.1f} expected; q = {row['q']:.2g}, {permuted} "
             f"{row['p_permutation']:.2g})"
         )
     return told
@@ -221,7 +226,7 @@ def _links_table(
     found = sum(row["edge"] for row in rows)
     reporter.say(
         f"  {links.path}: {measured} of {len(links.evidence)} links join measured features of two layers, as "
-        f"{len(rows)} pairs; {found} of them are edges"
+        f"{counted(len(rows), 'pair')}; {found} of them {'is an edge' if found == 1 else 'are edges'}"
     )
     for note in links.notes:
         reporter.say(f"  {links.path}: {note}")

@@ -9,6 +9,7 @@ from typing import Any
 import tomlkit
 
 from workbench.errors import InputError
+from workbench.intake.faults import counted
 from workbench.pathways import read_links, read_sets
 from workbench.settings import parse_settings, read_settings_text
 from workbench.store import Change, ProjectPaths, project_lock
@@ -71,11 +72,13 @@ def _looked_through(given: dict[str, Path]) -> tuple[str, ...]:
             )
         if key == "sets":
             table = read_sets(path)
-            told.append(f"{path.name}: {len(table.sets)} sets of {len(table.members)} identifiers")
+            told.append(
+                f"{path.name}: {counted(len(table.sets), 'set')} of {counted(len(table.members), 'identifier')}"
+            )
             told += [f"{path.name}: {note}" for note in table.notes]
         else:
             links = read_links(path)
-            told.append(f"{path.name}: {len(links.evidence)} known links")
+            told.append(f"{path.name}: {counted(len(links.evidence), 'known link')}")
     return tuple(told)
 
 

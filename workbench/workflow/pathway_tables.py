@@ -10,6 +10,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from workbench.engine import benjamini_hochberg
+from workbench.intake.faults import counted
 from workbench.pathways import (
     Coherence,
     LayerTest,
@@ -234,9 +235,9 @@ def _coherence(
         place[side] = np.arange(side.size)
     here = (blocks[ends] == np.array(pair, dtype=object)).all(axis=1) & in_a_set[ends].all(axis=1)
     pairs = place[ends[here]]
-    if not len(pairs):
-        reason = "no edge has both ends in a set"
-        return Coherence(pair, 0, 0, None, None, None, None, None, 0, reason)
+    reason = _why_not_asked(members, pair, sides) or ("" if len(pairs) else "no edge has both ends in a set")
+    if reason:
+        return Coherence(pair, len(pairs), 0, None, None, None, None, None, 0, reason)
     share = np.asarray(
         (members.matrix[sides[0]].astype(int) @ members.matrix[sides[1]].T.astype(int)).todense() > 0
     )
@@ -258,6 +259,19 @@ def _coherence(
     return Coherence(pair, len(pairs), sharing, rewired, p_rewired, strongest, permuted, p, allowed, "")
 
 
+def _why_not_asked(members: SetMembers, pair: tuple[str, str], sides: Sequence[NDArray[np.intp]]) -> str:
+    """Return why no edge of two blocks could join features of one set; empty where one could."""
+    held = [np.asarray(members.matrix[side].sum(axis=0)).ravel() > 0 for side in sides]
+    for name, here in zip(pair, held, strict=True):
+        if not here.any():
+            return (
+                f"the sets hold no feature of {name}: whether edges join members of one set cannot be asked"
+            )
+    if not (held[0] & held[1]).any():
+        return "no set holds features of both: whether edges join members of one set cannot be asked"
+    return ""
+
+
 def coherence_table(found: Sequence[Coherence]) -> pd.DataFrame:
     """Return coherence.tsv."""
     rows = []
@@ -272,12 +286,13 @@ def coherence_sentences(found: Sequence[Coherence]) -> list[str]:
     """Return the coherence in words."""
     lines = []
     for one in found:
-        if not one.edges:
+        if one.p_rewired is None:
             lines.append(f"{one.blocks[0]} x {one.blocks[1]}: {one.reason}")
             continue
         told = (
-            f"{one.blocks[0]} x {one.blocks[1]}: of {one.edges} edges with both ends in a set, {one.sharing} share "
-            f"one; {one.expected_rewired:.1f} once edges are rewired at random (p = {one.p_rewired:.2g})"
+            f"{one.blocks[0]} x {one.blocks[1]}: {counted(one.edges, 'edge')} with both ends in a set, {one.sharing} "
+            f"of them in the same one; {one.expected_rewired:.1f} once edges are rewired at random (p = "
+            f"{one.p_rewired:.2g})"
         )
         if one.p_permuted is not None:
             told += f", {one.expected_permuted:.1f} once samples are permuted (p = {one.p_permuted:.2g})"

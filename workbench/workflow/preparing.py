@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 
 from workbench.errors import InputError
 from workbench.intake import group_codes, missing_samples
+from workbench.intake.faults import counted
 from workbench.prepare import (
     MeasuredTable,
     PreparedTable,
@@ -80,7 +81,7 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
     table = table_of(measured, excluded(state, name))
     if len(table.samples) < 2:
         raise InputError(
-            f"block '{name}': {len(table.samples)} samples left after exclusions; two are the least"
+            f"block '{name}': {counted(len(table.samples), 'sample')} left after exclusions; two are the least"
         )
     del measured.X
     prepared = _prepared(state, name, table)

@@ -89,12 +89,13 @@ def screen_sentences(
     untestable = int(sum(screens.chosen.found.untestable))
     if untestable:
         lines.append(
-            f"{untestable:,} pairs could not be tested: nothing of a feature is left on the shared samples once "
-            "nuisance and group are removed"
+            f"{counted(untestable, 'pair')} could not be tested: nothing of a feature is left on the shared "
+            "samples once nuisance and group are removed"
         )
     lines += _visit_lines(view)
     if view.within_groups:
-        lines.append(f"{group_pairs:,} pairs pass only with the group left in: group_pairs.tsv, not edges")
+        passing = counted(group_pairs, "pair passes", "pairs pass")
+        lines.append(f"{passing} only with the group left in: group_pairs.tsv, not edges")
     cut = cut_sentence(screens.chosen.found, view)
     if cut:
         lines.append(cut)
@@ -152,7 +153,7 @@ def counted_rows(shared: Shared, view: AnalysisView) -> str:
         return f"the means of {design.n_subjects} subjects ({shared.n} samples)"
     used = int(design.repeated.sum())
     subjects = len(set(design.subject[design.repeated].tolist()))
-    return f"{used - subjects} changes within {subjects} subjects"
+    return f"{counted(used - subjects, 'change')} within {counted(subjects, 'subject')}"
 
 
 def fragile_sentence(edges: pd.DataFrame) -> str:
