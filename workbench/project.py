@@ -30,6 +30,7 @@ from workbench.workflow.blocks import Tell, no_words
 from workbench.workflow.checking import stored_findings
 from workbench.workflow.comparing import Comparison, run_compare
 from workbench.workflow.create import DEFAULT_TEMPLATE, create_project
+from workbench.workflow.faults_aside import aside_lines, state_for_analysis, state_for_block
 from workbench.workflow.knowledge import add_knowledge, pathways_stages
 from workbench.workflow.preparing import account_of
 from workbench.workflow.removing import remove_block
@@ -264,15 +265,21 @@ class Project:
         """Take a block out of the project; its source stays. Return the folders of results that rested on it."""
         return remove_block(self.paths, name)
 
-    def export(self, block: str, *, values: str = "prepared") -> pd.DataFrame:
-        """Return one block as a plain table, samples in rows: ``prepared`` or ``measured`` values."""
-        state = self.state()
+    def export(self, block: str, *, values: str = "prepared", tell: Tell = no_words) -> pd.DataFrame:
+        """Return one block as a plain table, samples in rows: ``prepared`` or ``measured`` values.
+
+        ``tell`` hears faults of settings that do not concern it and are set aside.
+        """
+        state, aside = state_for_block(self.paths, block)
         state.require_block(block)
         if values not in ("prepared", "measured"):
             raise InputError(f"no values '{values}'; allowed: prepared, measured")
+        tell(aside_lines(aside))
         if values == "measured":
             return plain_table(measured_block(state, block))
-        self.prepare(block)
+        stages = plan.block_stages(state, [block])
+        if not aside or any(one.reason is not None for one in standings(state, stages)):
+            self.prepare(block)
         return plain_table(read_block(check_file(self.paths.root, f"prepared/{block}.h5ad")))
 
     def prepare(self, *blocks: str, reporter: Reporter = SILENT) -> Outcome:
@@ -329,16 +336,20 @@ class Project:
         """Return the stored files that are not what the program wrote."""
         return check_all(self.paths.root)
 
-    def show(self, *features: str, analysis: str | None = None) -> list[Story]:
-        """Return the evidence for one feature, or for the cross-layer pairs among several."""
-        state = self.state()
+    def show(self, *features: str, analysis: str | None = None, tell: Tell = no_words) -> list[Story]:
+        """Return the evidence for one feature, or for the cross-layer pairs among several.
+
+        ``tell`` hears faults of settings that do not concern it and are set aside.
+        """
+        state, aside = state_for_analysis(self.paths, analysis)
+        tell(aside_lines(aside))
         return show(state, state.one_analysis(analysis), features)
 
     def keep_figures(
         self, stories: Sequence[Story], *, analysis: str | None = None, file: str | Path | None = None
     ) -> tuple[Path, ...]:
         """Write the scatters of pairs, by default below the analysis' results; return their files."""
-        state = self.state()
+        state, _ = state_for_analysis(self.paths, analysis)
         return keep_figures(
             state.root, state.one_analysis(analysis), stories, None if file is None else Path(file)
         )

@@ -177,7 +177,8 @@ MALFORMED = {
             "2 cells are negative",
             "line 2, column 3 (feature 'g1', sample 'S2'): '-2'",
             "line 3, column 2",
-            "other values",
+            "--values log",
+            "leave empty",
         ],
     ),
     "fractions in counts": (

@@ -91,7 +91,7 @@ def test_counts_and_their_shares_come_out_the_same() -> None:
 
 def test_what_is_no_composition_is_refused() -> None:
     with pytest.raises(
-        InputError, match=r"1 proportions are negative, the first at feature 'F0', sample 'S001': -0.5"
+        InputError, match=r"1 proportion is negative, the first at feature 'F0', sample 'S001': -0.5"
     ):
         recipe_for("x", "proportions").fit(table_of([[0.1, 0.2], [-0.5, 0.3]]), smallest_group=None, seed=1)
     with pytest.raises(InputError, match="1 of 2 samples have no part above 0: 'S000'"):
@@ -99,7 +99,7 @@ def test_what_is_no_composition_is_refused() -> None:
     values = counts(7)
     values[0, 0] = 0.5
     with pytest.raises(
-        InputError, match=r"1 counts are not whole, the first at feature 'F0', sample 'S000': 0.5"
+        InputError, match=r"1 count is not whole, the first at feature 'F0', sample 'S000': 0.5"
     ):
         recipe_for("microbes", "counts").fit(table_of(values), smallest_group=None, seed=1)
 

@@ -116,9 +116,7 @@ def test_samples_without_reads_and_negative_counts_are_refused() -> None:
             MeasuredTable(values, table.samples, table.features), smallest_group=5, seed=1
         )
     values[3, 2] = -4.0
-    with pytest.raises(
-        InputError, match="1 counts are negative, the first at feature 'F2', sample 'S003': -4"
-    ):
+    with pytest.raises(InputError, match="1 count is negative, the first at feature 'F2', sample 'S003': -4"):
         recipe_for("transcripts", "counts").fit(
             MeasuredTable(values, table.samples, table.features), smallest_group=5, seed=1
         )

@@ -114,7 +114,10 @@ def test_negative_intensities_and_empty_samples_are_refused() -> None:
     ):
         recipe.fit(table_of(values), smallest_group=5, seed=1)
     values[1, 3] = -1.5
-    with pytest.raises(InputError, match=r"1 intensities are negative, .* feature 'F3', sample 'S001': -1.5"):
+    with pytest.raises(
+        InputError,
+        match=r"1 intensity is negative, .* 'F3', sample 'S001': -1.5; .* leave such cells empty .*values = .log",
+    ):
         recipe.fit(table_of(values), smallest_group=5, seed=1)
 
 

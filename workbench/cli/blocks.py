@@ -7,7 +7,7 @@ from typing import Annotated
 
 import typer
 
-from workbench.cli.console import answer, answer_whole, tell_next
+from workbench.cli.console import answer, answer_whole, tell_lines, tell_next
 from workbench.cli.options import AdjustOption, ProjectOption, QuietOption, ReplaceOption, open_project
 
 NameArgument = Annotated[
@@ -99,7 +99,7 @@ def export(
     """Print one block as a plain table (TSV), samples in rows."""
     from workbench.store import table_bytes
 
-    table = open_project(project).export(name, values=values)
+    table = open_project(project).export(name, values=values, tell=tell_lines)
     answer_whole(table_bytes(table).decode())
 
 

@@ -25,6 +25,12 @@ def tell(text: str, *, quiet: bool = False) -> None:
         _echo(text, err=True)
 
 
+def tell_lines(lines: Iterable[str]) -> None:
+    """Print messages on standard error, asked to be quiet or not: they may change what an answer is worth."""
+    for line in lines:
+        tell(line)
+
+
 def tell_next(command: str, *, quiet: bool = False) -> None:
     """Print the next command to type."""
     tell(f"next: {command}", quiet=quiet)

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
-from workbench.cli.console import answer, tell
+from workbench.cli.console import answer, tell, tell_lines
 from workbench.cli.options import JsonOption, ProjectOption, QuietOption, open_project
 
 if TYPE_CHECKING:
@@ -47,7 +47,7 @@ def show(
 ) -> None:
     """Show the evidence for a feature or a pair: partners, numbers, doubts, a scatter by group."""
     opened = open_project(project)
-    stories = opened.show(*features, analysis=analysis)
+    stories = opened.show(*features, analysis=analysis, tell=tell_lines)
     if as_json:
         answer(
             [json.dumps({"schema_version": 1, "stories": [_as_json(story) for story in stories]}, indent=2)]

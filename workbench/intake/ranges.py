@@ -14,6 +14,10 @@ from .raw import cell_text
 
 PARTS_AT_MOST = 1.01
 _CELLS_AT_ONCE = 2**18
+NOT_BELOW_ZERO = (
+    "logarithms come in with `--values log`, readings that go below zero with `--values continuous`"
+)
+EMPTY_CELLS = "cells that are below zero because a background was taken off, leave empty"
 
 
 def check_range(part: Part, values: np.ndarray, kind: str) -> list[str]:
@@ -27,7 +31,13 @@ def check_range(part: Part, values: np.ndarray, kind: str) -> list[str]:
     _refuse(part, values, np.isinf, "infinite", "leave such cells empty (missing), or mend what made them")
     if kind == "counts":
         other = "choose other values for this block (intensities, log, continuous) when it holds no counts"
-        _refuse(part, values, _negative, "negative, though the values are counts", other)
+        _refuse(
+            part,
+            values,
+            _negative,
+            "negative, though the values are counts",
+            f"{NOT_BELOW_ZERO}; {EMPTY_CELLS}",
+        )
         round_first = f"round estimated counts first; {other}"
         _refuse(part, values, _fractions, "not whole, though the values are counts", round_first)
     if kind == "proportions":
@@ -40,7 +50,10 @@ def check_range(part: Part, values: np.ndarray, kind: str) -> list[str]:
     negative = _count(values, _negative) if kind == "intensities" else 0
     if not negative:
         return []
-    return [f"{part.raw.path.name}: {counted(negative, 'intensity is', 'intensities are')} negative"]
+    return [
+        f"{part.raw.path.name}: {counted(negative, 'intensity is', 'intensities are')} negative, and `prepare` refuses "
+        f"that: {NOT_BELOW_ZERO}; {EMPTY_CELLS}, and replace the table (`add-block ... --replace`)"
+    ]
 
 
 def _check_parts(part: Part, values: np.ndarray) -> list[str]:

@@ -11,6 +11,7 @@ from typing import ClassVar
 
 import numpy as np
 
+from workbench.intake.faults import counted
 from workbench.prepare.combining import CombineRuns
 from workbench.prepare.counts import check_count_cells, check_not_empty
 from workbench.prepare.gaps import FillGaps
@@ -88,8 +89,8 @@ def check_proportion_cells(table: MeasuredTable) -> None:
     negative = table.values < 0
     if negative.any():
         raise PrepareRefusal(
-            f"{int(negative.sum())} proportions are negative, the first at {table.first_cell(negative)}; parts of a "
-            "whole are 0 or more, log-ratios may be less",
+            f"{counted(int(negative.sum()), 'proportion is', 'proportions are')} negative, the first at "
+            f"{table.first_cell(negative)}; parts of a whole are 0 or more, log-ratios may be less",
             key=VALUES,
             fitting=("log", "continuous"),
         )

@@ -7,6 +7,7 @@ from typing import ClassVar
 
 import numpy as np
 
+from workbench.intake.faults import counted
 from workbench.prepare.combining import CombineRuns
 from workbench.prepare.gaps import FillGaps
 from workbench.prepare.read_scales import TrimmedMeans, UpperQuartile
@@ -87,16 +88,17 @@ def check_count_cells(table: MeasuredTable) -> None:
     negative = table.values < 0
     if negative.any():
         raise PrepareRefusal(
-            f"{int(negative.sum())} counts are negative, the first at {table.first_cell(negative)}; "
-            "counts are 0 or more, logarithms and readings may be less",
+            f"{counted(int(negative.sum()), 'count is', 'counts are')} negative, the first at "
+            f"{table.first_cell(negative)}; counts are 0 or more, logarithms and readings may be less",
             key=VALUES,
             fitting=("log", "continuous"),
+            advice="leave such cells empty where a background was taken off",
         )
     part = table.values != np.rint(table.values)
     part &= ~np.isnan(table.values)
     if part.any():
         raise PrepareRefusal(
-            f"{int(part.sum())} counts are not whole, the first at {table.first_cell(part)}",
+            f"{counted(int(part.sum()), 'count is', 'counts are')} not whole, the first at {table.first_cell(part)}",
             key=VALUES,
             fitting=("log", "intensities", "proportions"),
             advice="round estimated counts to whole numbers",

@@ -7,6 +7,7 @@ from typing import ClassVar
 
 import numpy as np
 
+from workbench.intake.faults import counted
 from workbench.prepare.combining import CombineRuns
 from workbench.prepare.controls import BlankFilter, PoolScatter
 from workbench.prepare.drift import Drift
@@ -70,10 +71,11 @@ def check_intensities(table: MeasuredTable) -> None:
     negative = table.values < 0
     if negative.any():
         raise PrepareRefusal(
-            f"{int(negative.sum())} intensities are negative, the first at {table.first_cell(negative)}; "
-            "intensities are 0 or more, logarithms and readings may be less",
+            f"{counted(int(negative.sum()), 'intensity is', 'intensities are')} negative, the first at "
+            f"{table.first_cell(negative)}; intensities are 0 or more, logarithms and readings may be less",
             key=VALUES,
             fitting=("log", "continuous"),
+            advice="leave such cells empty where a background was taken off",
         )
 
 

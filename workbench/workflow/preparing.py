@@ -32,7 +32,7 @@ from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
 from workbench.workflow.tables import excluded, measured_block, measured_table, table_of
 
-VERSION = 3
+VERSION = 4
 SEED = 20260101
 
 
