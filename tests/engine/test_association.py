@@ -8,8 +8,11 @@ from numpy.testing import assert_allclose
 from scipy.stats import f_oneway, kstest, pearsonr
 from statsmodels.api import OLS, add_constant
 
-from workbench.engine.association import SampleColumn, associate
+from workbench.engine.association import SampleColumn, associate, associate_rows
 from workbench.engine.multiple import benjamini_hochberg
+from workbench.engine.nuisance import Nuisance
+from workbench.engine.subject_space import subject_space
+from workbench.engine.subjects import SubjectDesign
 from workbench.errors import NumericsError
 
 
@@ -106,3 +109,27 @@ def test_what_cannot_be_tested_is_said(column: SampleColumn, reason: str) -> Non
 def test_a_column_of_other_samples_is_refused() -> None:
     with pytest.raises(NumericsError, match="column 'age' has 5 values for 8 samples"):
         associate(np.zeros((8, 2)), [number(np.arange(5))])
+
+
+def test_rows_that_are_the_samples_give_the_plain_figures() -> None:
+    rng = np.random.default_rng(7)
+    columns = [number(rng.normal(size=20)), classes(np.arange(20) % 3)]
+    scores = rng.normal(size=(20, 4))
+    plain, mapped = (
+        associate(scores, columns),
+        associate_rows(scores - scores.mean(axis=0), columns, np.eye(20), Nuisance.of(None, 20)),
+    )
+    assert_allclose(mapped.p, plain.p, rtol=1e-10)
+    assert_allclose(mapped.r2_adjusted, plain.r2_adjusted, atol=1e-12)
+
+
+def test_between_visits_what_a_subject_has_all_the_time_has_no_part() -> None:
+    rng = np.random.default_rng(8)
+    design = SubjectDesign.of(np.repeat(np.arange(20), 3), np.tile([0, 1, 2], 20))
+    space = subject_space((rng.normal(size=(60, 300)),), design, None, "visits")
+    age, dose = rng.normal(size=20)[design.subject], rng.normal(size=60)
+    scores = space.nuisance.residuals(space.matrix @ dose)[:, None]
+    missing = np.where(np.arange(60) == 5, np.nan, dose)
+    found = associate_rows(scores, [number(age), number(dose), number(missing)], space.matrix, space.nuisance)
+    assert found.untestable == ("nothing of it is left", "", "a sample has no value")
+    assert found.r2[1, 0] == pytest.approx(1.0)

@@ -15,13 +15,8 @@ from workbench.engine import (
     screen_pairs,
     subject_means,
 )
-from workbench.engine.repeated import (
-    by_visit,
-    course_damping,
-    screen_repeated,
-    subject_space,
-    without_subject,
-)
+from workbench.engine.repeated import course_damping, screen_repeated, without_subject
+from workbench.engine.subject_space import by_visit, subject_space
 from workbench.errors import NumericsError
 
 
@@ -142,7 +137,7 @@ def test_leaving_a_subject_out_in_closed_form_equals_refitting() -> None:
     plain = SubjectDesign.of(design.subject)
     space = subject_space((x, y), plain, None, "visits")
     i, j = np.array([0, 4, 2]), np.array([3, 0, 1])
-    found = without_subject(space, x, y, i, j)
+    found = without_subject(space, space.matrix @ x, space.matrix @ y, i, j)
     for value, a, b in zip(found, i, j, strict=True):
         left = []
         for s in range(6):

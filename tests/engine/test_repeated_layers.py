@@ -1,4 +1,4 @@
-"""Private variation is removed between visits as between independent samples."""
+"""Private variation is removed between visits and between subjects as between independent samples."""
 
 from __future__ import annotations
 
@@ -6,10 +6,10 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 
-from workbench.engine import BlockPair, SubjectDesign, screen_repeated
-from workbench.engine.private_variation import LayerBlock, screen_without_private
+from workbench.engine import BlockPair, SubjectDesign, screen_blocks, screen_repeated
+from workbench.engine.private_variation import LayerBlock
 from workbench.engine.repeated import independent_pair
-from workbench.engine.repeated_layers import independent_layers
+from workbench.engine.repeated_layers import cleaned_repeated
 from workbench.errors import NumericsError
 
 
@@ -26,60 +26,70 @@ def _study(seed: int, private: float, shared: float = 0.0, subjects: int = 20, v
     return SubjectDesign.of(subject, visit), blocks
 
 
-def test_two_blocks_have_the_rows_of_the_plain_screen() -> None:
+def _plain(blocks) -> BlockPair:
+    return BlockPair("x and y", blocks[0].values, blocks[1].values)
+
+
+def test_the_rows_are_those_of_the_screen_without_removal() -> None:
     design, blocks = _study(1, 1.0)
-    one, two = independent_layers(blocks, design, "visits")
-    pair, space = independent_pair(BlockPair("a", blocks[0].values, blocks[1].values), design, "visits")
-    assert_allclose(one.values, pair.x[:, :], atol=1e-12)
-    assert_allclose(two.values, pair.y[:, :], atol=1e-12)
-    assert one.values.shape == (20 * 3 + 1, 200)
-    assert one.nuisance.shape[1] == space.nuisance.rank - 1 == 3
+    made = cleaned_repeated(blocks, [(0, 1)], design, "visits")
+    pair, _ = independent_pair(_plain(blocks), design, "visits")
+    assert_allclose(made.layers[0].values, pair.x[:, :], atol=1e-12)
+    assert_allclose(made.layers[1].values, pair.y[:, :], atol=1e-12)
+    assert made.layers[0].values.shape == (20 * 3 + 1, 200)
+    assert made.layers[0].nuisance.shape[1] == made.space.nuisance.rank - 1 == 3
+
+
+def test_rows_seen_on_the_samples_have_the_same_products_and_no_mean_in_any_subject() -> None:
+    design, blocks = _study(2, 1.0)
+    made = cleaned_repeated(blocks, [(0, 1)], design, "visits")
+    rows = made.layers[0].values
+    seen = made.space.on_samples(rows)
+    assert seen.shape == blocks[0].values.shape
+    assert_allclose(seen.T @ seen, rows.T @ rows, atol=1e-9)
+    assert_allclose(seen.reshape(20, 4, -1).mean(axis=1), 0.0, atol=1e-12)
 
 
 def test_what_private_variation_buries_comes_to_light_and_nothing_false_with_it() -> None:
     design, blocks = _study(2, 4.0, shared=1.5)
-    buried = screen_repeated([BlockPair("a", blocks[0].values, blocks[1].values)], [design], "visits")
-    found = screen_without_private(independent_layers(blocks, design, "visits"), [(0, 1)]).screen
+    buried = screen_repeated([_plain(blocks)], [design], "visits")
+    found = screen_blocks(cleaned_repeated(blocks, [(0, 1)], design, "visits").pairs)
     true = np.count_nonzero((found.i < 20) & (found.j < 8))
     assert true > 2 * np.count_nonzero((buried.i < 20) & (buried.j < 8))
     assert true > 120
     assert found.n_edges - true < 0.15 * found.n_edges
 
 
-def test_no_edges_where_nothing_is_shared() -> None:
+@pytest.mark.parametrize("level", ["visits", "subjects"])
+def test_no_edges_where_nothing_is_shared(level) -> None:
     some = 0
     for seed in range(20):
-        design, blocks = _study(100 + seed, 3.0)
-        some += (
-            screen_without_private(independent_layers(blocks, design, "visits"), [(0, 1)]).screen.n_edges > 0
-        )
+        design, blocks = _study(100 + seed, 3.0, subjects=30)
+        some += screen_blocks(cleaned_repeated(blocks, [(0, 1)], design, level).pairs).n_edges > 0
     assert some <= 4
 
 
-def test_blocks_are_taken_on_the_samples_that_all_have() -> None:
-    design, blocks = _study(3, 1.0)
-    kept = np.random.default_rng(4).permutation(80)[:60]
-    part = LayerBlock("y", "y", blocks[1].values[kept], kept, blocks[1].nuisance[kept])
-    one, two = independent_layers([blocks[0], part], design, "visits")
-    same = np.sort(kept)
-    again = independent_layers(
-        [
-            LayerBlock("x", "x", blocks[0].values[same], same, blocks[0].nuisance[same]),
-            LayerBlock("y", "y", blocks[1].values[same], same, blocks[1].nuisance[same]),
-        ],
-        design,
-        "visits",
-    )
-    assert_allclose(one.values, again[0].values, atol=1e-12)
-    assert_allclose(two.values, again[1].values, atol=1e-12)
-    assert independent_layers(blocks, design, "subjects")[0].values.shape == (20, 200)
+def test_features_of_unusual_course_are_damped_after_removal_too() -> None:
+    design, blocks = _study(3, 2.0, subjects=30, visits=8)
+    rng = np.random.default_rng(4)
+    slow = np.cumsum(rng.normal(size=(30, 8, 20)), axis=1).reshape(240, 20)
+    blocks[0].values[:, :20] = slow
+    (pair,) = cleaned_repeated(blocks, [(0, 1)], design, "visits").pairs
+    assert pair.damping is not None
+    assert pair.damping[0][:20].mean() < 0.97 < pair.damping[0][20:].mean()
+    (means,) = cleaned_repeated(blocks, [(0, 1)], design, "subjects").pairs
+    assert means.x.shape == (30, 200)
 
 
-def test_blocks_without_common_samples_are_refused() -> None:
+def test_with_few_changes_nothing_is_removed_and_the_reason_is_given() -> None:
+    design, blocks = _study(6, 2.0, subjects=6)
+    made = cleaned_repeated(blocks, [(0, 1)], design, "visits")
+    assert "private variation cannot be told from noise" in made.off[0]
+    assert not made.components[0]
+
+
+def test_blocks_of_other_samples_are_refused() -> None:
     design, blocks = _study(5, 1.0)
-    halves = [
-        LayerBlock(block.name, block.layer, block.values[rows], rows, block.nuisance[rows])
-        for block, rows in zip(blocks, (np.arange(40), np.arange(40, 80)), strict=True)
-    ]
-    with pytest.raises(NumericsError, match="the blocks share 0 samples"):
-        independent_layers(halves, design, "visits")
+    part = LayerBlock("y", "y", blocks[1].values[:40], np.arange(40), blocks[1].nuisance[:40])
+    with pytest.raises(NumericsError, match="x, y have different samples"):
+        cleaned_repeated([blocks[0], part], [(0, 1)], design, "visits")

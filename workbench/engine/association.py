@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from scipy.stats import beta
 
 from workbench.engine.multiple import benjamini_hochberg
+from workbench.engine.nuisance import Nuisance, indicators
 from workbench.engine.tails import SMALLEST_P
 from workbench.errors import NumericsError
 
@@ -114,6 +115,63 @@ def associate(scores: FloatArray, columns: Sequence[SampleColumn]) -> Associatio
             p[j] = np.maximum(beta.sf(r2[j], df[j] / 2, left / 2), SMALLEST_P)
     names = tuple(column.name for column in columns)
     return AssociationMap(names, r2, adjusted, p, benjamini_hochberg(p), n, df, tuple(reasons))
+
+
+def associate_rows(
+    scores: FloatArray, columns: Sequence[SampleColumn], matrix: FloatArray, nuisance: Nuisance
+) -> AssociationMap:
+    """As :func:`associate`, of components on rows that are linear combinations of the samples.
+
+    Each column (a number, or the indicators of its classes) goes through the same map and loses the same
+    nuisance as the components did. Between visits that compares changes with changes: what a subject has all the
+    time has no part.
+
+    Parameters
+    ----------
+    scores : ndarray of shape (n_rows, n_components)
+        The nuisance removed.
+    columns : sequence of SampleColumn
+        Of the samples. One with a missing value in a sample that is used is not tested.
+    matrix : ndarray of shape (n_rows, n_samples)
+    nuisance : Nuisance
+        Of the rows.
+    """
+    shape = (len(columns), scores.shape[1])
+    r2, adjusted, p = (np.full(shape, np.nan) for _ in range(3))
+    used = np.abs(matrix).max(axis=0, initial=0.0) > 0.0
+    n, df = np.full(len(columns), np.count_nonzero(used)), np.zeros(len(columns), dtype=np.intp)
+    reasons = []
+    free = nuisance.n_samples - nuisance.rank
+    for j, column in enumerate(columns):
+        basis = _mapped_basis(column, used, matrix, nuisance)
+        df[j] = 0 if basis is None else basis.shape[1]
+        left = free - df[j]
+        reasons.append(
+            "a sample has no value" if basis is None else "nothing of it is left" if not df[j] else ""
+        )
+        if basis is not None and df[j] and left >= 2:
+            r2[j] = np.minimum(np.sum((basis.T @ scores) ** 2, axis=0) / np.sum(scores**2, axis=0), 1.0)
+            adjusted[j] = 1.0 - (1.0 - r2[j]) * free / left
+            p[j] = np.maximum(beta.sf(r2[j], df[j] / 2, left / 2), SMALLEST_P)
+        elif not reasons[-1]:
+            reasons[-1] = f"{df[j]} dimensions of {free} rows: nearly one each"
+    names = tuple(column.name for column in columns)
+    return AssociationMap(names, r2, adjusted, p, benjamini_hochberg(p), n, df, tuple(reasons))
+
+
+def _mapped_basis(
+    column: SampleColumn, used: NDArray[np.bool_], matrix: FloatArray, nuisance: Nuisance
+) -> FloatArray | None:
+    """Orthonormal basis of a column on the rows, nuisance removed; None where a value is missing."""
+    held = column.values[used]
+    if np.isnan(held).any():
+        return None
+    values = held[:, None] if column.kind == "number" else indicators(held.astype(np.intp))
+    rest = nuisance.residuals(matrix[:, used] @ (values - values.mean(axis=0)))
+    left, sizes, _ = np.linalg.svd(rest, full_matrices=False)
+    whole = np.linalg.norm(matrix, 2) * np.linalg.norm(values - values.mean(axis=0))
+    basis: FloatArray = left[:, sizes > 1e-8 * whole]
+    return basis
 
 
 def _testable(column: SampleColumn, held: FloatArray) -> tuple[int, int, str]:

@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
 from scipy.stats import rankdata
 
-from workbench.engine.far_values import withstand
+from workbench.engine.far_values import FEWEST, HEAVY, excess_kurtosis, withstand
 from workbench.engine.nuisance import CONSTANT_TOLERANCE
 from workbench.engine.subjects import SubjectDesign, centred
 from workbench.engine.unit_rows import Columns
@@ -48,6 +48,13 @@ class MappedBlock:
         """Rows and features."""
         rows = self.matrix if self.room is None else self.room
         return (rows.shape[0], int(self.source.shape[1]))
+
+    def heavy(self) -> NDArray[np.bool_]:
+        """Which features come back as normal scores for their heavy tails."""
+        if self.freedom < FEWEST:
+            return np.zeros(self.shape[1], dtype=np.bool_)
+        marked: NDArray[np.bool_] = excess_kurtosis(replace(self, freedom=0, room=None)[:, :]) > HEAVY
+        return marked
 
     def __getitem__(self, key: Any) -> FloatArray:
         """All rows of some features; a feature with a gap comes back without a number."""

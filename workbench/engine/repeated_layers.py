@@ -1,65 +1,112 @@
-"""Blocks of repeated samples as blocks of independent rows, so that private variation can be found on them."""
+"""Repeated samples as independent rows, with the private variation of each block removed from it.
+
+On the rows of :func:`~workbench.engine.subject_space.subject_space` private variation is found, told from what is
+shared, and removed as between independent samples. A screen gives every two blocks a map of their own, since the
+whitening rests on the average of the two (:mod:`workbench.engine.repeated`); what a block shares with a third layer
+alone buries this pair's correlations like any other private variation, and goes too.
+"""
 
 from __future__ import annotations
 
 from collections.abc import Sequence
-from functools import reduce
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.engine.private_variation import LayerBlock
-from workbench.engine.repeated import Level, mapped_block, subject_space
-from workbench.engine.screen import Correlation
+from workbench.engine.mapped_block import MappedBlock
+from workbench.engine.private_variation import LayerBlock, RealComponent, pairs_without_private
+from workbench.engine.repeated import course_damping_of_rows, mapped_block
+from workbench.engine.screen import BlockPair, Correlation
+from workbench.engine.subject_space import Level, SubjectSpace, subject_space
 from workbench.engine.subjects import SubjectDesign
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
 
 
-def independent_layers(
-    blocks: Sequence[LayerBlock], design: SubjectDesign, level: Level, correlation: Correlation = "pearson"
-) -> tuple[LayerBlock, ...]:
-    """Blocks on the independent rows of :func:`~workbench.engine.repeated.subject_space`.
+@dataclass(frozen=True, eq=False)
+class CleanedRepeated:
+    """Blocks on independent rows, private variation removed.
 
-    All blocks are taken on the samples that every one of them has, with the union of their nuisance, and
-    share one map: they can be screened with private variation removed like blocks of independent samples.
-    The rows of the result are numbers of contrasts (or subjects), not of samples.
+    Attributes
+    ----------
+    pairs : tuple of BlockPair
+        To be screened by Pearson's correlation.
+    places : tuple of (int, int)
+        The positions of their blocks.
+    space : SubjectSpace
+        The map from samples to their rows.
+    mapped : tuple of MappedBlock
+        The blocks on these rows before private variation went.
+    layers : tuple of LayerBlock
+        The same in full, with the nuisance of the rows.
+    components : tuple of tuple of RealComponent
+        For each block its real components; their scores are on the rows.
+    off : tuple of str
+        For each pair why nothing was removed; empty where removal was on.
+    """
+
+    pairs: tuple[BlockPair, ...]
+    places: tuple[tuple[int, int], ...]
+    space: SubjectSpace
+    mapped: tuple[MappedBlock, ...]
+    layers: tuple[LayerBlock, ...]
+    components: tuple[tuple[RealComponent, ...], ...]
+    off: tuple[str, ...]
+
+
+def cleaned_repeated(
+    blocks: Sequence[LayerBlock],
+    pairs: Sequence[tuple[int, int]],
+    design: SubjectDesign,
+    level: Level,
+    correlation: Correlation = "pearson",
+    *,
+    seed: int = 0,
+) -> CleanedRepeated:
+    """Pairs of blocks on independent rows, private variation removed from each block.
+
+    The damping of features of an unusual course is judged on what removal leaves of them.
 
     Parameters
     ----------
     blocks : sequence of LayerBlock
-        ``rows`` are positions among the samples of ``design``.
-    design : SubjectDesign
-        Of all samples of the study.
-    level, correlation
+        All on the samples of ``design``, in their order. The union of their nuisance is removed.
+    pairs : sequence of (int, int)
+        Positions of blocks of two different layers.
+    design, level, correlation
         As for :func:`~workbench.engine.repeated.screen_repeated`; ranks are taken here.
+    seed : int
+        For the number of components of narrow blocks.
 
     Raises
     ------
     NumericsError
-        When the blocks share no samples, or no subject with two (level "visits").
+        When a block has other samples, or as :func:`~workbench.engine.subject_space.subject_space`.
     """
-    common = reduce(np.intersect1d, [block.rows for block in blocks])
-    if common.size < 2:
-        raise NumericsError(f"the blocks share {common.size} samples; at least 2 are needed")
-    places = [_places(block, common) for block in blocks]
-    values = [block.values[place] for block, place in zip(blocks, places, strict=True)]
-    nuisance = np.hstack([block.nuisance[place] for block, place in zip(blocks, places, strict=True)])
-    own = design.take(common)
-    space = subject_space(values, own, nuisance, level, correlation)
-    rows = np.arange(space.matrix.shape[0])
-    columns = space.nuisance.basis[:, 1:]
-    return tuple(
-        LayerBlock(
-            block.name, block.layer, mapped_block(part, own, space, level, correlation)[:, :], rows, columns
+    if any(not np.array_equal(block.rows, blocks[0].rows) for block in blocks):
+        raise NumericsError(
+            f"{', '.join(block.name for block in blocks)} have different samples; give those that all of them have"
         )
-        for block, part in zip(blocks, values, strict=True)
+    nuisance = np.hstack([block.nuisance for block in blocks])
+    space = subject_space([block.values for block in blocks], design, nuisance, level, correlation)
+    rows, columns = np.arange(space.matrix.shape[0]), space.nuisance.basis[:, 1:]
+    mapped = tuple(mapped_block(block.values, design, space, level, correlation) for block in blocks)
+    layers = tuple(
+        replace(block, values=seen[:, :], rows=rows, nuisance=columns)
+        for block, seen in zip(blocks, mapped, strict=True)
     )
+    made = pairs_without_private(layers, pairs, seed=seed)
+    damped = made.pairs if level == "subjects" else tuple(_damped(pair, space, design) for pair in made.pairs)
+    return CleanedRepeated(damped, tuple(pairs), space, mapped, layers, made.components, made.off)
 
 
-def _places(block: LayerBlock, common: NDArray[np.intp]) -> NDArray[np.intp]:
-    """Rows of a block that hold the common samples, in their order."""
-    order = np.argsort(block.rows)
-    places: NDArray[np.intp] = order[np.searchsorted(block.rows[order], common)]
-    return places
+def _damped(pair: BlockPair, space: SubjectSpace, design: SubjectDesign) -> BlockPair:
+    """Return a pair whose damping charges features of an unusual course as well."""
+    sides = ((pair.x, pair.x_private), (pair.y, pair.y_private))
+    first, second = (
+        course_damping_of_rows(space, design, np.asarray(side), own or space.nuisance) for side, own in sides
+    )
+    given = pair.damping or (np.ones(first.size), np.ones(second.size))
+    return replace(pair, damping=(given[0] * first, given[1] * second))

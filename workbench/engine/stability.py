@@ -15,9 +15,12 @@ from numpy.typing import NDArray
 
 from workbench.engine.folds import balanced_folds
 from workbench.engine.nuisance import Nuisance
-from workbench.engine.repeated import Level, independent_pair
+from workbench.engine.private_variation import LayerBlock
+from workbench.engine.repeated import independent_pair
+from workbench.engine.repeated_layers import cleaned_repeated
 from workbench.engine.screen import BlockPair, Correlation, Progress
 from workbench.engine.strongest import strongest_pairs
+from workbench.engine.subject_space import Level
 from workbench.engine.subjects import SubjectDesign, subject_labels
 from workbench.errors import NumericsError
 
@@ -159,6 +162,10 @@ class HalfScreen:
     correlation : {"pearson", "spearman"}
     designs, level
         For several samples of one subject, as for :func:`~workbench.engine.repeated.screen_repeated`.
+    remove_private : bool
+        Whether private variation is told and removed again in every half; for several samples of one subject.
+    seed : int
+        For the removal.
     """
 
     def __init__(
@@ -169,12 +176,16 @@ class HalfScreen:
         *,
         designs: Sequence[SubjectDesign] | None = None,
         level: Level | None = None,
+        remove_private: bool = False,
+        seed: int = 0,
     ) -> None:
         self._pairs = pairs
         self._rows = rows
         self._correlation: Correlation = correlation
         self._designs = designs
         self._level = level
+        self._remove_private = remove_private
+        self._seed = seed
         self._hint: float | None = None
 
     def __call__(self, rows: IndexArray, count: int) -> IndexArray:
@@ -198,8 +209,21 @@ class HalfScreen:
         if rows.size == 0 or (self._level == "visits" and not design.repeated.any()):
             return None
         part = BlockPair(pair.name, pair.x[rows], pair.y[rows], _columns(pair, rows))
-        moved, _ = independent_pair(part, design, self._level, self._correlation)
+        moved = self._moved(part, design, self._level)
         return moved if pair_freedom(moved) >= LEAST_FREEDOM else None
+
+    def _moved(self, part: BlockPair, design: SubjectDesign, level: Level) -> BlockPair:
+        """Return a pair of blocks on independent rows."""
+        if not self._remove_private:
+            return independent_pair(part, design, level, self._correlation)[0]
+        own = np.arange(design.n_samples)
+        columns = np.empty((own.size, 0)) if part.nuisance is None else np.asarray(part.nuisance)
+        sides = [
+            LayerBlock(name, name, np.asarray(values), own, columns)
+            for name, values in (("first", part.x), ("second", part.y))
+        ]
+        cleaned = cleaned_repeated(sides, [(0, 1)], design, level, self._correlation, seed=self._seed)
+        return cleaned.pairs[0]
 
 
 def _taken(pair: BlockPair, rows: IndexArray) -> BlockPair | None:

@@ -9,12 +9,11 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from workbench.engine import Nuisance, SubjectDesign, subject_means
-from workbench.engine.far_values import withstand
-from workbench.engine.nuisance import indicators
+from workbench.engine import Nuisance, SubjectDesign, SubjectSpace, subject_means
 from workbench.intake import Groups
-from workbench.workflow.analysis_view import AnalysisView
+from workbench.workflow.analysis_view import AnalysisView, Shared, subject_names
 from workbench.workflow.screening import design_columns_of, is_repeated
+from workbench.workflow.tested_values import tested_on_rows, tested_on_samples
 
 FloatArray = NDArray[np.float64]
 
@@ -23,9 +22,9 @@ FloatArray = NDArray[np.float64]
 class PairValues:
     """Two features on the samples that their blocks share.
 
-    ``x``, ``y`` are prepared values; ``x_adjusted``, ``y_adjusted`` what is left of them once ``removed`` (in words)
-    is taken away, in the same units; ``x_imputed``, ``y_imputed`` mark values that were filled in; ``freedom`` are
-    the degrees of freedom of their correlation.
+    ``x``, ``y`` are prepared values; ``x_adjusted``, ``y_adjusted`` what was tested: what is left of them (of their
+    ranks, for Spearman's correlation) once ``removed`` (in words) is taken away. ``x_imputed``, ``y_imputed`` mark
+    values that were filled in; ``freedom`` are the degrees of freedom of their correlation.
     """
 
     samples: tuple[str, ...]
@@ -78,7 +77,8 @@ def pair_values(
 ) -> PairValues:
     """Return two features, each given as (block, feature), as the screen of the analysis saw them.
 
-    ``private`` holds, for each block that had some removed, the scores of its private variation by sample.
+    ``private`` holds, for each block that had some removed, the scores of its private variation by sample (where
+    subjects have several samples it is told again).
     """
     (first, x_name), (second, y_name) = ends
     shared = view.shared((first, second))
@@ -88,17 +88,24 @@ def pair_values(
     removed = list(shared.nuisance_names)
     if within and view.factors:
         removed.append(f"{'+'.join(view.factors)} (group)")
-    taken = _Taken(shared.samples, shared.groups, np.column_stack([x, y]), columns, x_imputed, y_imputed)
-    if is_repeated(shared) and shared.subjects is not None:
-        if view.settings.level == "subjects":
-            taken = _means(taken, shared.subjects, view.study.samples.subject or "", view)
-        else:
-            taken = _deviations(taken, shared.subjects)
+    taken = _Taken(shared.samples, shared.groups, np.column_stack([x, y]), x_imputed, y_imputed)
+    gone = [f"private variation of {block}" for block in (first, second) if private.get(block) is not None]
+    if is_repeated(shared):
+        rows = tested_on_rows(view, (first, second), shared, columns, within)
+        places = [view.blocks[block].features.index(feature) for block, feature in ends]
+        tested = [rows.values[block][:, [place]] for (block, _), place in zip(ends, places, strict=True)]
+        sides = [rows.space.on_samples(side)[:, 0] for side in tested]
+        freedom = rows.space.nuisance.n_samples - rows.space.nuisance.rank - 1
+        taken = _at_level(taken, rows.space, shared, view)
+        if rows.space.contrasts is not None:
             removed += ["each subject's own mean", "the visits' common course"]
-    removed += [
-        f"private variation of {block}" for block in (first, second) if private.get(block) is not None
-    ]
-    sides = [_left(taken, k, private.get(block)) for k, block in enumerate((first, second))]
+            gone.append("the likeness of neighbouring visits")
+    else:
+        sides = [
+            tested_on_samples(view, taken.values[:, [k]], shared.samples, columns, private.get(block))[:, 0]
+            for k, block in enumerate((first, second))
+        ]
+        freedom = shared.n - Nuisance.of(columns, shared.n).rank - 1
     return PairValues(
         samples=taken.samples,
         groups=taken.groups,
@@ -108,31 +115,34 @@ def pair_values(
         y_adjusted=sides[1],
         x_imputed=taken.x_imputed,
         y_imputed=taken.y_imputed,
-        removed=tuple(removed),
-        freedom=len(taken.samples) - Nuisance.of(taken.columns, len(taken.samples)).rank - 1,
+        removed=(*removed, *gone),
+        freedom=freedom,
     )
 
 
 @dataclass(frozen=True, eq=False)
 class _Taken:
-    """Both features (n, 2) on some rows, what is to be removed from them, and which values were filled in."""
+    """Both features (n, 2) on some samples or subjects, and which values were filled in."""
 
     samples: tuple[str, ...]
     groups: Groups | None
     values: FloatArray
-    columns: FloatArray
     x_imputed: NDArray[np.bool_]
     y_imputed: NDArray[np.bool_]
 
 
-def _deviations(taken: _Taken, design: SubjectDesign) -> _Taken:
-    """Add subjects and visits to what is removed: what is left are the changes that the screen compares."""
-    columns = np.hstack([taken.columns, indicators(design.subject), indicators(design.visit)])
-    return replace(taken, columns=columns)
+def _at_level(taken: _Taken, space: SubjectSpace, shared: Shared, view: AnalysisView) -> _Taken:
+    """Return the samples of subjects that have several, or one row for each subject: the mean of its samples."""
+    assert shared.subjects is not None
+    if space.contrasts is not None:
+        used = space.used
+        groups = None if taken.groups is None else replace(taken.groups, codes=taken.groups.codes[used])
+        samples = tuple(taken.samples[row] for row in used)
+        return _Taken(samples, groups, taken.values[used], taken.x_imputed[used], taken.y_imputed[used])
+    return _means(taken, shared.subjects, view)
 
 
-def _means(taken: _Taken, design: SubjectDesign, column: str, view: AnalysisView) -> _Taken:
-    """Return one row for each subject: the mean of its samples."""
+def _means(taken: _Taken, design: SubjectDesign, view: AnalysisView) -> _Taken:
     first = np.unique(design.subject, return_index=True)[1]
     groups = taken.groups
     if groups is not None:
@@ -142,23 +152,8 @@ def _means(taken: _Taken, design: SubjectDesign, column: str, view: AnalysisView
         subject_means(design, mask.astype(np.float64)[:, None])[:, 0] > 0.0
         for mask in (taken.x_imputed, taken.y_imputed)
     ]
-    return _Taken(
-        tuple(str(view.sheet.loc[taken.samples[row], column]) for row in first),
-        groups,
-        subject_means(design, taken.values),
-        subject_means(design, taken.columns),
-        filled[0],
-        filled[1],
-    )
-
-
-def _left(taken: _Taken, side: int, private: pd.DataFrame | None) -> FloatArray:
-    """Return what the screen tested of one feature: residuals, heavy tails taken off where private variation went."""
-    x, n = taken.values[:, [side]], len(taken.samples)
-    if private is None:
-        return Nuisance.of(taken.columns, n).residuals(x)[:, 0]
-    own = Nuisance.of(np.column_stack([taken.columns, private.loc[list(taken.samples)]]), n)
-    return withstand(own.residuals(x), own.n_samples - own.rank)[:, 0]
+    names = tuple(subject_names(view, taken.samples))
+    return _Taken(names, groups, subject_means(design, taken.values), filled[0], filled[1])
 
 
 def _column(

@@ -163,6 +163,12 @@ def factors_of(settings: Settings) -> list[str]:
     return list(settings.samples.group)
 
 
+def subject_names(view: AnalysisView, samples: Sequence[str]) -> list[str]:
+    """Return the subjects of some samples, in the order in which a design numbers them."""
+    column = view.study.samples.subject
+    return [] if column is None else sorted(set(view.sheet.loc[list(samples), column].astype(str)))
+
+
 def blocks_of(settings: Settings, analysis: str) -> list[str]:
     """Return the names of the blocks of an analysis, in the order of the project's blocks or of its list."""
     chosen = settings.analyses[analysis].blocks

@@ -10,8 +10,8 @@ from numpy.typing import NDArray
 
 from workbench.engine import PairFigures, edge_evidence, fisher_interval
 from workbench.engine.repeated import without_subject
-from workbench.workflow.analysis_view import AnalysisView, Shared
-from workbench.workflow.screening import Screen, Screens, space_of
+from workbench.workflow.analysis_view import AnalysisView
+from workbench.workflow.screening import RepeatedRows, Screens
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
@@ -131,7 +131,7 @@ def _evidence(view: AnalysisView, screens: Screens, pairs: Pairs) -> dict[str, F
         imputed = a.imputed[a.rows(one.samples)], b.imputed[b.rows(one.samples)]
         i, j = pairs.i[rows], pairs.j[rows]
         if chosen.repeated:
-            figures = _repeated_evidence(view, chosen, k, one, (i, j), imputed)
+            figures = _repeated_evidence(chosen.rows[k], (i, j), imputed)
         else:
             pair = chosen.pairs[k]
             nuisance = None if pair.nuisance is None else np.asarray(pair.nuisance)
@@ -146,20 +146,14 @@ def _evidence(view: AnalysisView, screens: Screens, pairs: Pairs) -> dict[str, F
 
 
 def _repeated_evidence(
-    view: AnalysisView,
-    chosen: Screen,
-    k: int,
-    one: Shared,
+    rows: RepeatedRows,
     places: tuple[IndexArray, IndexArray],
     imputed: tuple[NDArray[np.bool_], NDArray[np.bool_]],
 ) -> dict[str, FloatArray]:
     """Return what can be said of pairs tested on several samples a subject: a whole subject is left out at a time."""
-    pair = chosen.pairs[k]
-    assert one.subjects is not None
-    space = space_of(pair, one.subjects, view.settings.level or "visits", chosen.found.correlation)
     i, j = places
-    filled = imputed[0][:, i] | imputed[1][:, j]
+    filled = (imputed[0][:, i] | imputed[1][:, j])[rows.space.used]
     return {
-        "r_without_one": without_subject(space, np.asarray(pair.x), np.asarray(pair.y), i, j),
+        "r_without_one": without_subject(rows.space, rows.pair.x, rows.pair.y, i, j),
         "imputed_share": filled.mean(axis=0) if filled.size else np.zeros(i.size),
     }

@@ -109,7 +109,7 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
     _clear_shown(state, change, name)
     change.write_bytes(f"{folder}/network.graphml", graphml_bytes(graph))
     change.write_bytes(f"{folder}/network.gexf", gexf_bytes(graph))
-    heavy = heavy_tailed(view, screens.chosen)
+    heavy = heavy_tailed(screens.chosen)
     record = analysis_record(state, view, screens, len(pairs), heavy)
     change.write_bytes(f"{folder}/record.json", json_bytes(record))
     change.write_bytes(f"{folder}/private.tsv", table_bytes(private_table(state, view, screens.chosen)))

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -12,7 +12,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from workbench.engine import Nuisance
-from workbench.engine.association import SampleColumn, associate
+from workbench.engine.association import SampleColumn, associate, associate_rows
 from workbench.engine.far_values import FEWEST, HEAVY, excess_kurtosis
 from workbench.engine.private_variation import RealComponent
 from workbench.figures import Drawing
@@ -21,14 +21,14 @@ from workbench.intake.faults import counted
 from workbench.look.view import sample_columns
 from workbench.look.words import listed, percent
 from workbench.store import check_file
-from workbench.workflow.analysis_view import AnalysisView
+from workbench.workflow.analysis_view import AnalysisView, subject_names
 from workbench.workflow.looking import block_view
-from workbench.workflow.screening import Screen, layer_block
+from workbench.workflow.screening import BlockRemoval, Screen
 from workbench.workflow.state import ProjectState
 
 FloatArray = NDArray[np.float64]
 
-COLUMNS = ("block", "component", "share", "goes_with", "top_features")
+COLUMNS = ("block", "beside", "component", "share", "goes_with", "top_features")
 GOES_WITH = 0.05
 TOP_FEATURES = 5
 FILE = "private.h5"
@@ -37,25 +37,28 @@ FILE = "private.h5"
 def private_table(state: ProjectState, view: AnalysisView, screen: Screen) -> pd.DataFrame:
     """Return private.tsv: a row for each component that was removed from its block.
 
-    ``share`` is of the block's variance after the nuisance, ``goes_with`` names the sample-sheet columns that
-    explain it (false-discovery rate of 5 % over the block's components and columns, with their R2),
+    ``beside`` is the other block of the pair that it was removed for, where subjects have several samples, and
+    empty otherwise. ``share`` is of the block's variance after the nuisance, ``goes_with`` names the sample-sheet
+    columns that explain it (false-discovery rate of 5 % over the block's components and columns, with their R2),
     ``top_features`` those that it moves most, with the sign of their correlation.
     """
     rows = []
-    for name, components in screen.components.items():
-        removed = [one for one in components if one.removed]
-        if removed and any_removed(view, screen, name):
-            told = _goes_with(state, view, name, removed)
+    for one in screen.removals:
+        if one.removed:
+            told = _goes_with(state, view, one)
             rows += [
-                (name, one.number, one.share, with_what, _top(view, name, one))
-                for one, with_what in zip(removed, told, strict=True)
+                (one.block, one.beside, part.number, part.share, with_what, _top(view, one.block, part))
+                for part, with_what in zip(one.removed, told, strict=True)
             ]
     return pd.DataFrame(rows, columns=list(COLUMNS))
 
 
-def any_removed(view: AnalysisView, screen: Screen, block: str) -> bool:
-    """Return whether removal was on in some pair of a block."""
-    return any(block in pair and not off for pair, off in zip(view.pairs, screen.off, strict=True))
+def removal_names(removals: Sequence[BlockRemoval]) -> list[str]:
+    """Return a name for each block's removal: the block, and the one beside it where a block has several."""
+    blocks = [one.block for one in removals]
+    return [
+        f"{one.block} beside {one.beside}" if blocks.count(one.block) > 1 else one.block for one in removals
+    ]
 
 
 def private_lines(view: AnalysisView, screen: Screen, heavy: Mapping[str, int]) -> list[str]:
@@ -64,17 +67,18 @@ def private_lines(view: AnalysisView, screen: Screen, heavy: Mapping[str, int]) 
     ``heavy`` counts the features of heavy tails in each block (:func:`heavy_tailed`).
     """
     lines = []
-    for name, components in screen.components.items():
-        if not any_removed(view, screen, name):
+    for name, one in zip(removal_names(screen.removals), screen.removals, strict=True):
+        if not one.on:
             continue
-        removed = [one for one in components if one.removed]
-        kept = [one for one in components if one.shared_with]
-        if not removed:
+        kept = [part for part in one.components if part.shared_with]
+        if not one.removed:
             lines.append(f"{name}: no private variation to remove" + _kept_words(kept))
             continue
-        share = percent(sum(one.share for one in removed))
-        count = counted(len(removed), "private component")
-        lines.append(f"{name}: {count} removed ({share} of its variance, private.tsv)" + _kept_words(kept))
+        share = percent(sum(part.share for part in one.removed))
+        count = counted(len(one.removed), "private component")
+        lines.append(
+            f"{name}: {count} removed ({share} of {_of_what(view, one)}, private.tsv)" + _kept_words(kept)
+        )
     lines += list(dict.fromkeys(reason for reason in screen.off if reason))
     for name, features in heavy.items():
         told = counted(features, "feature with heavy tails enters", "features with heavy tails enter")
@@ -82,18 +86,25 @@ def private_lines(view: AnalysisView, screen: Screen, heavy: Mapping[str, int]) 
     return lines
 
 
-def heavy_tailed(view: AnalysisView, screen: Screen) -> dict[str, int]:
+def _of_what(view: AnalysisView, one: BlockRemoval) -> str:
+    """Return which variance a share is of: the block's, that within subjects, or that between them."""
+    if one.space is None:
+        return "its variance"
+    return f"its variance {'between' if view.settings.level == 'subjects' else 'within'} subjects"
+
+
+def heavy_tailed(screen: Screen) -> dict[str, int]:
     """Return how many features of each block were tested by the normal scores of their ranks; empty for ranks."""
-    if screen.found.correlation == "spearman" or not screen.components:
+    if screen.found.correlation == "spearman":
         return {}
     found: dict[str, int] = {}
-    for name, components in screen.components.items():
-        block = layer_block(view, name, view.within_groups)
-        taken = [one.scores for one in components if one.removed and any_removed(view, screen, name)]
-        own = Nuisance.of(np.column_stack([block.nuisance, *taken]), len(block.rows))
+    for name, one in zip(removal_names(screen.removals), screen.removals, strict=True):
+        scores = [part.scores for part in one.removed]
+        own = Nuisance.of(np.column_stack([one.rows.nuisance, *scores]), len(one.rows.rows))
+        heavy = one.heavy
         if own.n_samples - own.rank >= FEWEST:
-            count = int((excess_kurtosis(own.residuals(block.values)) > HEAVY).sum())
-            found |= {name: count} if count else {}
+            heavy = heavy | (excess_kurtosis(own.residuals(one.rows.values)) > HEAVY)
+        found |= {name: int(heavy.sum())} if heavy.any() else {}
     return found
 
 
@@ -102,10 +113,10 @@ def private_record(view: AnalysisView, screen: Screen, heavy: Mapping[str, int])
     return {
         "components": {
             name: [
-                {"component": one.number, "share": one.share, "shared_with": one.shared_with, "p": one.p}
-                for one in components
+                {"component": part.number, "share": part.share, "shared_with": part.shared_with, "p": part.p}
+                for part in one.components
             ]
-            for name, components in screen.components.items()
+            for name, one in zip(removal_names(screen.removals), screen.removals, strict=True)
         },
         "features_by_normal_scores": dict(heavy),
         "off": {
@@ -119,36 +130,55 @@ def private_record(view: AnalysisView, screen: Screen, heavy: Mapping[str, int])
 def draw_removed(screen: Screen) -> tuple[Drawing, ...]:
     """Return the figure of the components that stayed and those that went; none where there are no components."""
     bars = {
-        name: [ComponentBar(one.number, one.share, one.shared_with) for one in components]
-        for name, components in screen.components.items()
+        name: [ComponentBar(part.number, part.share, part.stays) for part in one.components]
+        for name, one in zip(removal_names(screen.removals), screen.removals, strict=True)
     }
     return draw_private(bars) if any(bars.values()) else ()
 
 
 def write_scores(path: Path, view: AnalysisView, screen: Screen) -> None:
-    """Write the scores of what was removed from each block, which is what shows a pair as it was tested."""
+    """Write the scores of what was removed from each block, which is what shows a pair as it was tested.
+
+    Where subjects have several samples these are deviations by sample within each subject (or one for each
+    subject, ``samples`` then holding the subjects), found for the pair with the block ``beside``.
+    """
     text = h5py.string_dtype("utf-8")
     with h5py.File(path, "w") as file:
         file.attrs["format"] = 1
-        for name, components in screen.components.items():
-            removed = [one for one in components if one.removed]
-            if not any_removed(view, screen, name):
-                removed = []
+        for name, one in zip(removal_names(screen.removals), screen.removals, strict=True):
             part = file.create_group(name)
-            part.create_dataset("samples", data=list(view.shared((name,)).samples), dtype=text)
-            scores = [one.scores for one in removed]
-            part.create_dataset("scores", data=np.column_stack(scores) if scores else np.zeros((0, 0)))
+            part.attrs["beside"] = one.beside
+            part.create_dataset("samples", data=_row_names(view, one), dtype=text)
+            scores = (
+                np.column_stack([part.scores for part in one.removed]) if one.removed else np.zeros((0, 0))
+            )
+            if one.space is not None and one.removed:
+                scores = one.space.on_samples(scores)
+            part.create_dataset("scores", data=scores)
 
 
-def read_scores(state: ProjectState, analysis: str, block: str) -> pd.DataFrame | None:
-    """Return the scores of what was removed from a block, a row for each sample; None where nothing was."""
+def _row_names(view: AnalysisView, one: BlockRemoval) -> list[str]:
+    """Return the samples that the scores are of, or the subjects where their means were compared."""
+    if one.space is None:
+        return list(one.samples)
+    if one.space.contrasts is not None:
+        return [one.samples[row] for row in one.space.used]
+    return subject_names(view, one.samples)
+
+
+def read_scores(state: ProjectState, analysis: str, block: str, beside: str = "") -> pd.DataFrame | None:
+    """Return the scores of what was removed from a block, a row for each sample; None where nothing was.
+
+    ``beside`` is the other block of the pair, which matters where subjects have several samples.
+    """
     relative = f"results/{analysis}/{FILE}"
     if not (state.root / relative).exists():
         return None
     with h5py.File(check_file(state.root, relative), "r") as file:
-        if block not in file or file[block]["scores"].size == 0:
-            return None
-        return pd.DataFrame(file[block]["scores"][()], index=file[block]["samples"].asstr()[()])
+        for name in (block, f"{block} beside {beside}"):
+            if name in file and file[name]["scores"].size:
+                return pd.DataFrame(file[name]["scores"][()], index=file[name]["samples"].asstr()[()])
+    return None
 
 
 def _kept_words(kept: list[RealComponent]) -> str:
@@ -164,17 +194,18 @@ def _top(view: AnalysisView, name: str, one: RealComponent) -> str:
     return "; ".join(f"{features[place]} ({loading:+.2f})" for place, loading in pairs)
 
 
-def _goes_with(
-    state: ProjectState, view: AnalysisView, name: str, removed: list[RealComponent]
-) -> Iterator[str]:
-    samples = view.shared((name,)).samples
-    looked = block_view(state, view.blocks[name])
-    rows = [looked.samples.index(sample) for sample in samples]
+def _goes_with(state: ProjectState, view: AnalysisView, one: BlockRemoval) -> Iterator[str]:
+    looked = block_view(state, view.blocks[one.block])
+    rows = [looked.samples.index(sample) for sample in one.samples]
     columns = [
-        SampleColumn(one.name, one.kind, one.values[rows], one.levels) for one in sample_columns(looked)
+        SampleColumn(part.name, part.kind, part.values[rows], part.levels) for part in sample_columns(looked)
     ]
-    found = associate(np.column_stack([one.scores for one in removed]), columns)
-    for k in range(len(removed)):
+    scores = np.column_stack([part.scores for part in one.removed])
+    if one.space is None:
+        found = associate(scores, columns)
+    else:
+        found = associate_rows(scores, columns, one.space.matrix, one.space.nuisance)
+    for k in range(len(one.removed)):
         hit = [j for j in range(len(columns)) if found.q[j, k] <= GOES_WITH]
         hit.sort(key=lambda j: -found.r2[j, k])
         yield "; ".join(f"{columns[j].name} (R2 {found.r2[j, k]:.2f})" for j in hit)

@@ -8,16 +8,14 @@ from dataclasses import dataclass, field
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
-from scipy.stats import rankdata
 
 from workbench.engine import Nuisance
-from workbench.engine.far_values import withstand
-from workbench.engine.repeated import subject_space
 from workbench.pathways import residual_space, unit_columns
 from workbench.workflow.analysis_view import AnalysisView, Shared, view_analysis
 from workbench.workflow.private import read_scores
 from workbench.workflow.screening import design_columns_of, is_repeated
 from workbench.workflow.state import ProjectState
+from workbench.workflow.tested_values import tested_on_rows, tested_on_samples
 
 FloatArray = NDArray[np.float64]
 
@@ -68,26 +66,27 @@ class ResidualViews:
         return self.known[key]
 
     def _residual_blocks(self, names: tuple[str, ...]) -> ResidualBlocks:
-        shared = self.view.shared(names)
-        columns = design_columns_of(self.view, shared, self.view.within_groups)
-        values = {name: self._values(name, shared, columns) for name in names}
-        if is_repeated(shared) and shared.subjects is not None:
-            level = self.view.settings.level or "visits"
-            found = subject_space(list(values.values()), shared.subjects, columns, level)
-            space = residual_space(found.nuisance.basis).T @ found.matrix
+        names, asked = self._with_another_layer(names), names
+        shared, within = self.view.shared(names), self.view.within_groups
+        columns = design_columns_of(self.view, shared, within)
+        if is_repeated(shared):
+            found = tested_on_rows(self.view, names, shared, columns, within)
+            values, nuisance = found.values, found.space.nuisance
         else:
-            space = residual_space(Nuisance.of(columns, shared.n).basis).T
-        left = {name: unit_columns(space @ (x - x.mean(axis=0))) for name, x in values.items()}
-        return ResidualBlocks(names, shared.samples, left)
+            values = {name: self._values(name, shared, columns) for name in names}
+            nuisance = Nuisance.of(columns, shared.n)
+        space = residual_space(nuisance.basis).T
+        left = {name: unit_columns(space @ values[name]) for name in asked}
+        return ResidualBlocks(asked, shared.samples, left)
+
+    def _with_another_layer(self, names: tuple[str, ...]) -> tuple[str, ...]:
+        """Add a block of another layer to repeated blocks of one layer: beside it their private variation was told."""
+        layers = {self.view.blocks[name].layer for name in names}
+        others = [name for name, block in self.view.blocks.items() if block.layer not in layers]
+        if len(layers) > 1 or not others or not is_repeated(self.view.shared(names)):
+            return names
+        return (*names, others[0])
 
     def _values(self, name: str, shared: Shared, columns: FloatArray) -> FloatArray:
-        """Return a block's values, without its private variation where that was removed, ranked for Spearman's r."""
-        block = self.view.blocks[name]
-        x = block.values[block.rows(shared.samples)]
-        scores = self.private.get(name)
-        if scores is not None:
-            own = Nuisance.of(np.column_stack([columns, scores.loc[list(shared.samples)]]), shared.n)
-            x = withstand(own.residuals(x), own.n_samples - own.rank)
-        if self.view.settings.network.correlation == "spearman":
-            x = np.asarray(rankdata(x, axis=0), dtype=np.float64)
-        return x
+        x = self.view.blocks[name].values[self.view.blocks[name].rows(shared.samples)]
+        return tested_on_samples(self.view, x, shared.samples, columns, self.private.get(name))

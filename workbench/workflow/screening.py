@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from itertools import combinations
 from typing import TypedDict
 
 import numpy as np
@@ -11,17 +12,47 @@ from numpy.typing import NDArray
 
 from workbench.engine import BlockPair, BlockScreen, Nuisance, SubjectDesign, screen_blocks
 from workbench.engine.private_variation import LayerBlock, RealComponent, screen_without_private
-from workbench.engine.repeated import Level, SubjectSpace, by_visit, screen_repeated, subject_space
+from workbench.engine.repeated import independent_pair
+from workbench.engine.repeated_layers import CleanedRepeated, cleaned_repeated
 from workbench.engine.screen import Correlation
+from workbench.engine.subject_space import Level, SubjectSpace, by_visit, subject_space
 from workbench.workflow.analysis_view import AnalysisView, Shared
 from workbench.workflow.reporting import Reporter
 
 FloatArray = NDArray[np.float64]
 
-REPEATED = (
-    "private variation is not removed where subjects have several samples: their samples are no independent rows "
-    "to find it on"
-)
+
+@dataclass(frozen=True, eq=False)
+class BlockRemoval:
+    """The real components of a block, private ones among them, and the rows that their scores are on.
+
+    ``beside`` is empty where they hold for every pair of the block. Where subjects have several samples they are
+    found for each pair of blocks apart, on its rows, and ``beside`` is the other block of the pair. ``on``: whether
+    the private ones were removed. ``rows`` is the block on these rows with its nuisance, ``space`` the map from its
+    samples to them (None: they are its samples), ``heavy`` marks features that reached them by normal scores.
+    """
+
+    block: str
+    beside: str
+    components: tuple[RealComponent, ...]
+    on: bool
+    samples: tuple[str, ...]
+    rows: LayerBlock
+    space: SubjectSpace | None
+    heavy: NDArray[np.bool_]
+
+    @property
+    def removed(self) -> tuple[RealComponent, ...]:
+        """The components that were removed."""
+        return tuple(one for one in self.components if one.removed) if self.on else ()
+
+
+@dataclass(frozen=True, eq=False)
+class RepeatedRows:
+    """A pair of blocks as independent rows, as it was tested, and the map from its samples to them."""
+
+    pair: BlockPair
+    space: SubjectSpace
 
 
 @dataclass(frozen=True, eq=False)
@@ -29,18 +60,23 @@ class Screen:
     """One screen over the block pairs of an analysis, with what it tested.
 
     ``pairs`` are the values of both blocks on the samples that they share, with the nuisance columns that are still
-    to be removed from them; ``components`` the real components of each block, private ones among them, ``off`` why
+    to be removed from them; ``removals`` what each block's real components are and which were removed, ``off`` why
     none were removed from a block pair (empty where they were); ``freedom`` the degrees of freedom of each block
-    pair's correlations; ``repeated`` whether subjects have several samples.
+    pair's correlations; ``rows`` the independent rows of each pair where subjects have several samples.
     """
 
     found: BlockScreen
     pairs: tuple[BlockPair, ...]
     support: NDArray[np.str_]
-    components: dict[str, tuple[RealComponent, ...]]
+    removals: tuple[BlockRemoval, ...]
     off: tuple[str, ...]
     freedom: tuple[int, ...]
-    repeated: bool
+    rows: tuple[RepeatedRows, ...] = ()
+
+    @property
+    def repeated(self) -> bool:
+        """Whether subjects have several samples."""
+        return bool(self.rows)
 
 
 @dataclass(frozen=True, eq=False)
@@ -123,29 +159,88 @@ def _plain(
             progress=progress,
         )
     off = tuple("" for _ in pairs)
-    return Screen(found, pairs, np.full(found.n_edges, "pair"), {}, off, _freedom(pairs), False)
+    return Screen(found, pairs, np.full(found.n_edges, "pair"), (), off, _freedom(pairs))
 
 
 def _repeated(
     view: AnalysisView, shared: Sequence[Shared], within: bool, reporter: Reporter, label: str
 ) -> Screen:
-    settings, pairs = view.settings.network, design_pairs(view, shared, within)
-    designs = [one.subjects for one in shared if one.subjects is not None]
-    level = view.settings.level or "visits"
+    pairs = design_pairs(view, shared, within)
+    rows, removals, off = [], [], [""] * len(pairs)
+    for k, (names, pair, one) in enumerate(zip(view.pairs, pairs, shared, strict=True)):
+        design, level = subjects_of(view, one)
+        if view.settings.network.remove_private:
+            made = cleaned_between(view, names, one, within)
+            rows.append(RepeatedRows(replace(made.pairs[0], name=pair.name), made.space))
+            removals += _pair_removals(names, one, made)
+            off[k] = made.off[0]
+        else:
+            rows.append(
+                RepeatedRows(*independent_pair(pair, design, level, view.settings.network.correlation))
+            )
     with reporter.progress(label) as progress:
-        found = screen_repeated(
-            pairs,
-            designs,
-            level,
-            **_asked(view),
-            progress=progress,
+        asked: Asked = {**_asked(view), "correlation": "pearson"}  # ranks are taken on the way to the rows
+        found = screen_blocks([one.pair for one in rows], **asked, progress=progress)
+    found = replace(found, n=_used(rows)[found.pair_index], correlation=view.settings.network.correlation)
+    freedom = tuple(one.space.nuisance.n_samples - one.space.nuisance.rank - 1 for one in rows)
+    support = np.full(found.n_edges, "pair")
+    return Screen(found, pairs, support, tuple(removals), tuple(off), freedom, tuple(rows))
+
+
+def cleaned_between(
+    view: AnalysisView, names: Sequence[str], shared: Shared, within: bool
+) -> CleanedRepeated:
+    """Return blocks on the independent rows of the samples that they share, private variation removed.
+
+    The pairs are those of the named blocks that are of different layers.
+    """
+    design, level = subjects_of(view, shared)
+    columns, rows = design_columns_of(view, shared, within), np.arange(shared.n)
+    blocks = [
+        LayerBlock(
+            name,
+            view.blocks[name].layer,
+            view.blocks[name].values[view.blocks[name].rows(shared.samples)],
+            rows,
+            columns,
         )
-    off = tuple(REPEATED if settings.remove_private else "" for _ in pairs)
-    spaces = [
-        space_of(pair, one, level, settings.correlation) for pair, one in zip(pairs, designs, strict=True)
+        for name in names
     ]
-    freedom = tuple(space.nuisance.n_samples - space.nuisance.rank - 1 for space in spaces)
-    return Screen(found, pairs, np.full(found.n_edges, "pair"), {}, off, freedom, True)
+    pairs = [
+        (k, other)
+        for k, other in combinations(range(len(blocks)), 2)
+        if blocks[k].layer != blocks[other].layer
+    ]
+    chosen = view.settings.network.correlation
+    return cleaned_repeated(blocks, pairs, design, level, chosen, seed=view.settings.seed)
+
+
+def subjects_of(view: AnalysisView, shared: Shared) -> tuple[SubjectDesign, Level]:
+    """Return which samples are of one subject, and whether visits or subjects are compared."""
+    assert shared.subjects is not None
+    return shared.subjects, view.settings.level or "visits"
+
+
+def _pair_removals(names: tuple[str, str], shared: Shared, made: CleanedRepeated) -> list[BlockRemoval]:
+    """Return what was found of both blocks of a pair on its rows."""
+    return [
+        BlockRemoval(
+            names[side],
+            names[1 - side],
+            made.components[side],
+            not made.off[0],
+            shared.samples,
+            made.layers[side],
+            made.space,
+            made.mapped[side].heavy(),
+        )
+        for side in (0, 1)
+    ]
+
+
+def _used(rows: Sequence[RepeatedRows]) -> NDArray[np.int64]:
+    """Return the number of samples that each pair of blocks was tested on."""
+    return np.array([one.space.used.size for one in rows], dtype=np.int64)
 
 
 def space_of(pair: BlockPair, design: SubjectDesign, level: Level, correlation: Correlation) -> SubjectSpace:
@@ -172,8 +267,20 @@ def _without_private(
         pair if settings.correlation == "spearman" else BlockPair(pair.name, x, y, None)
         for pair, (x, y) in zip(plain, result.cleaned, strict=True)
     )
-    components = dict(zip(names, result.components, strict=True))
-    return Screen(result.screen, pairs, result.support, components, result.off, _freedom(plain), False)
+    removals = tuple(
+        BlockRemoval(
+            name,
+            "",
+            components,
+            any(name in pair and not off for pair, off in zip(view.pairs, result.off, strict=True)),
+            view.shared((name,)).samples,
+            block,
+            None,
+            np.zeros(block.values.shape[1], dtype=np.bool_),
+        )
+        for name, components, block in zip(names, result.components, blocks, strict=True)
+    )
+    return Screen(result.screen, pairs, result.support, removals, result.off, _freedom(plain))
 
 
 class Asked(TypedDict):

@@ -162,7 +162,11 @@ def _pair_story(state: ProjectState, analysis: str, tables: Tables, a: pd.Series
     blocks = {block: load_block(state, block) for block, _ in ends}
     view = AnalysisView(analysis, settings, state.settings, state.require_sheet(), blocks)
     within = view.within_groups
-    private = {block: read_scores(state, analysis, block) for block, _ in ends}
+    (first, _), (second, _) = ends
+    private = {
+        block: read_scores(state, analysis, block, other)
+        for block, other in ((first, second), (second, first))
+    }
     values = pair_values(view, ends, within, private)
     edge, beside = _row(tables.edges, ends), _row(tables.group_pairs, ends)
     counted = counted_rows(view.shared([block for block, _ in ends]), view)

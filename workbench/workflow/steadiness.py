@@ -9,7 +9,6 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workbench.engine.private_variation import LayerBlock, pairs_without_private
-from workbench.engine.repeated import Level
 from workbench.engine.screen import Correlation
 from workbench.engine.stability import (
     LEAST_FREEDOM,
@@ -20,6 +19,7 @@ from workbench.engine.stability import (
     pair_stability,
 )
 from workbench.engine.strongest import strongest_pairs
+from workbench.engine.subject_space import Level
 from workbench.network import Key
 from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.reporting import Reporter
@@ -119,6 +119,8 @@ def _strongest(
         chosen.found.correlation,
         designs=designs if chosen.repeated else None,
         level=level,
+        remove_private=view.settings.network.remove_private,
+        seed=view.settings.seed,
     )
 
 

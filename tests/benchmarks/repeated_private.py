@@ -1,0 +1,126 @@
+"""Private variation removed where subjects have several samples: realised rate and recall, with and without.
+
+``python tests/benchmarks/repeated_private.py [--studies 200] [--first 0] [--family NAME]`` prints one line for each
+family as it is done. Families of the referee (at the level at which a project would screen them) and those of
+``repeated_calibration``.
+"""
+
+from __future__ import annotations
+
+import argparse
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+
+import numpy as np
+import repeated_calibration
+from referee_families import FAMILIES as REFEREE
+from referee_families import Family
+from simulated import Study, design_matrix, logs, simulate
+
+from workbench.engine import BlockPair, SubjectDesign, screen_blocks
+from workbench.engine.private_variation import LayerBlock
+from workbench.engine.repeated import screen_repeated
+from workbench.engine.repeated_layers import cleaned_repeated
+from workbench.engine.subject_space import Level
+
+KINDS: dict[str, Level] = {
+    "nothing-pairs-60": "visits",
+    "nothing-trend-120": "subjects",
+    "nothing-visits-100": "visits",
+    "pairs-2.0-96": "visits",
+    "trend-2.0-240": "subjects",
+    "visits-2.0-100": "visits",
+}
+
+
+@dataclass(frozen=True)
+class Repeated:
+    """A study as a screen of repeated samples takes it: the pair of blocks, the design, and the true pairs."""
+
+    pair: BlockPair
+    design: SubjectDesign
+    truth: np.ndarray
+    level: Level
+
+
+def referee_study(name: str, family: Family, seed: int) -> Repeated:
+    """Return a study of the referee on a log scale, all its samples, with its nuisance."""
+    study: Study = simulate(family.design, seed)
+    ((a, b),) = study.design.block_pairs()
+    first, second = study.design.blocks[a], study.design.blocks[b]
+    tables = [logs(study, block) for block in (first, second)]
+    known = study.samples.drop(columns=["visit", "group"])
+    pair = BlockPair(name, *(table.to_numpy() for table in tables), design_matrix(known, *study.blocks))
+    truth = np.zeros((first.features, second.features), dtype=bool)
+    truth[tuple(study.truth.pairs[first.name, second.name].T)] = True
+    design = SubjectDesign.of(study.samples["subject"].to_numpy(), study.samples["visit"].to_numpy())
+    return Repeated(pair, design, truth, KINDS[name])
+
+
+def course_study(name: str, family: repeated_calibration.Family, seed: int) -> Repeated:
+    """Return a study of ``repeated_calibration``."""
+    design, x, y, truth = repeated_calibration.study(family, seed)
+    return Repeated(BlockPair(name, x, y), design, truth, "visits")
+
+
+def studies(asked: str) -> Iterator[tuple[str, Callable[[int], Repeated]]]:
+    """Yield each family whose name holds what was asked for, with what makes a study of a seed."""
+    for name in KINDS:
+        if asked in name:
+            yield name, lambda seed, name=name: referee_study(name, REFEREE[name], seed)
+    for name, family in repeated_calibration.FAMILIES.items():
+        if asked in name:
+            yield name, lambda seed, name=name, family=family: course_study(name, family, seed)
+
+
+def figures(study: Repeated, seed: int) -> list[float]:
+    """Return edges, share of false ones and recall: without removal, and with it; and the components removed."""
+    plain = screen_repeated([study.pair], [study.design], study.level)
+    made = cleaned_repeated(_layers(study.pair), [(0, 1)], study.design, study.level, seed=seed)
+    cleaned = screen_blocks(made.pairs)
+    removed = sum(one.removed for block in made.components for one in block)
+    told = []
+    for screen in (plain, cleaned):
+        right = int(study.truth[screen.i, screen.j].sum())
+        told += [screen.n_edges, 1.0 - right / max(screen.n_edges, 1) if screen.n_edges else 0.0]
+        told += [right / study.truth.sum() if study.truth.any() else np.nan]
+    return [*told, removed * (not made.off[0])]
+
+
+def _layers(pair: BlockPair) -> tuple[LayerBlock, LayerBlock]:
+    n = pair.x.shape[0]
+    known = np.empty((n, 0)) if pair.nuisance is None else np.asarray(pair.nuisance)
+    return tuple(
+        LayerBlock(name, name, np.asarray(x), np.arange(n), known)
+        for name, x in (("x", pair.x), ("y", pair.y))
+    )
+
+
+def main() -> None:
+    """Run the families asked for."""
+    parser = argparse.ArgumentParser(description=__doc__)
+    parser.add_argument("--studies", type=int, default=200)
+    parser.add_argument("--first", type=int, default=0)
+    parser.add_argument("--family", default="")
+    asked = parser.parse_args()
+    for name, make in studies(asked.family):
+        seeds = range(asked.first, asked.first + asked.studies)
+        found = np.array([figures(make(seed), seed) for seed in seeds])
+        print(f"{name:34s} {_line(found)}", flush=True)
+
+
+def _line(found: np.ndarray) -> str:
+    told = []
+    for label, start in (("without", 0), ("removed", 3)):
+        edges, wrong, recall = found[:, start : start + 3].T
+        rate = f"fdr {wrong.mean():.4f} +- {wrong.std(ddof=1) / np.sqrt(len(found)):.4f} recall {recall.mean():.3f}"
+        told.append(
+            f"{label}: any {np.count_nonzero(edges)}/{len(found)}"
+            if np.isnan(recall).all()
+            else f"{label}: {rate}"
+        )
+    return "; ".join([*told, f"{found[:, 6].mean():.1f} removed"])
+
+
+if __name__ == "__main__":
+    main()
