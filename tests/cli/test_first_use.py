@@ -3,6 +3,8 @@
 import subprocess
 import sys
 
+import pytest
+
 
 def edit(folder, old, new):
     path = folder / "project.toml"
@@ -225,3 +227,32 @@ def test_identifiers_are_recognised_and_told_when_a_table_comes_in(command, made
     assert code == 0, err
     assert "identifiers: the feature ids: Ensembl identifiers, 0 of 9 cells as they should be" in out
     assert "9 cells with a version suffix" in out
+
+
+@pytest.mark.parametrize(
+    ("template", "options"),
+    [
+        ("two-layers", "--group COLUMN --adjust COLUMN"),
+        ("paired", "--subject COLUMN --time COLUMN"),
+        ("time-course", "--subject COLUMN --time COLUMN"),
+    ],
+)
+def test_the_first_command_asks_for_what_the_template_needs(command, tmp_path, template, options):
+    code, _, err = command("init", tmp_path / "study", "--template", template)
+    assert (code, err.rstrip().endswith(f"workbench add-samples FILE {options}")) == (0, True)
+
+
+def test_an_accepted_finding_is_told_as_accepted_while_it_runs(made, capsys):
+    from workbench import Project
+    from workbench.cli.console import terminal_reporter
+
+    project = Project.open(made)
+    first = project.check()[0]
+    settings = made / "project.toml"
+    settings.write_text(settings.read_text() + f'\n[check]\naccept = {{ "{first["id"]}" = "as planned" }}\n')
+    (made / "results" / "check" / "findings.tsv").unlink()
+    project.check(reporter=terminal_reporter(False))
+    assert (
+        f"  accepted {first['severity']} {first['id']} (as planned): {first['what']}"
+        in capsys.readouterr().err
+    )

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import json
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -81,10 +81,19 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, names: Sequen
     kept = [{**row, "acceptable": finding.acceptable} for row, finding in zip(rows, found, strict=True)]
     change.write_bytes(RECORD, json_bytes({"schema_version": SCHEMA_VERSION, "findings": kept}))
     change.write_bytes(f"{FOLDER}/findings.tsv", table_bytes(_table(rows)))
+    accept = state.settings.check.accept
     for finding in found:
-        reporter.say(f"  {finding.severity} {finding.id}: {finding.what}")
+        reporter.say(f"  {heading_of(finding, accept)}: {finding.what}")
     drawings = draw_findings(found)
     return write_drawings(change, FOLDER, drawings) if drawings else []
+
+
+def heading_of(finding: Finding, accept: Mapping[str, str]) -> str:
+    """Return a finding's severity and id, and why it was accepted where it was."""
+    heading = f"{finding.severity} {finding.id}"
+    if finding.acceptable and finding.id in accept:
+        return f"accepted {heading} ({accept[finding.id]})"
+    return heading
 
 
 def spare_files(state: ProjectState) -> list[Path]:

@@ -78,7 +78,9 @@ def next_command(
 ) -> str:
     """Return the command that takes the project one step further."""
     if state.sheet is None:
-        return "workbench add-samples FILE --group COLUMN --adjust COLUMN"
+        repeated = any(analysis.level is not None for analysis in state.settings.analyses.values())
+        design = "--subject COLUMN --time COLUMN" if repeated else "--group COLUMN --adjust COLUMN"
+        return f"workbench add-samples FILE {design}"
     if len({block.layer for block in state.settings.blocks.values()}) < 2:
         return "workbench add-block NAME FILE --layer LAYER --values VALUES"
     if errors:
