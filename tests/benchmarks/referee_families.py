@@ -73,6 +73,19 @@ def small() -> tuple[Block, Block]:
     )
 
 
+def overlapping(one: int, other: int) -> tuple[Block, Block]:
+    """Return two blocks in which so many features of each module follow the next module too."""
+    return transcripts(overlap=one), metabolites(overlap=other)
+
+
+def mixing() -> tuple[Block, Block]:
+    """Return narrow blocks with several modules of few features, of which components are mixtures."""
+    return (
+        proteins(features=120, module_size=8, private_factors=1),
+        metabolites(features=40, module_size=4, private_factors=1),
+    )
+
+
 def dense(one: int, other: int, first: float, second: float) -> tuple[Block, Block]:
     """Return two blocks with modules of ``one`` and ``other`` features under private factors of those strengths."""
     return (
@@ -190,6 +203,14 @@ SOMETHING = {
     ),
     "small-1.5-40": Family(Design(n=40, blocks=small(), modules=2, strength=1.5, run_days=2)),
     "small-1.0-96": Family(Design(n=96, blocks=small(), modules=2, strength=1.0, run_days=2)),
+    "overlap-1.2-96": Family(Design(n=96, strength=1.2, blocks=overlapping(20, 4))),
+    "overlap-1.4-48": Family(Design(n=48, strength=1.4, blocks=overlapping(30, 6))),
+    "few-1.4-60": Family(Design(n=60, strength=1.4, blocks=(transcripts(), metabolites(module_size=3)))),
+    "few-1.0-200": Family(Design(n=200, strength=1.0, blocks=(transcripts(), metabolites(module_size=3)))),
+    "mixing-1.4-48": Family(Design(n=48, strength=1.4, blocks=mixing())),
+    "mixing-1.2-120": Family(Design(n=120, strength=1.2, blocks=mixing())),
+    "nested-1.2-60": Family(Design(n=60, strength=1.2, blocks=two(nested=1.0))),
+    "nested-1.0-200": Family(Design(n=200, strength=1.0, blocks=two(nested=1.5))),
     "intervals-1.2-48": Family(Design(n=48, strength=1.2, blocks=known())),
     "intervals-0.9-96": Family(Design(n=96, strength=0.9, blocks=known())),
 }

@@ -15,10 +15,11 @@ from workbench.engine.private_variation import (
     LayerBlock,
     PrivateScreen,
     RealComponent,
-    screen_without_private,
+    pairs_without_private,
+    screen_cleaned,
 )
 from workbench.engine.repeated import screen_repeated
-from workbench.engine.screen import BlockPair
+from workbench.engine.screen import BlockPair, BlockScreen, screen_blocks
 from workbench.engine.subjects import SubjectDesign, differences, subject_means
 
 Keys = np.ndarray
@@ -33,7 +34,9 @@ class Outcome:
 
     ``hand_cut`` is the recall of the by-hand ranking at the largest cut whose share of false pairs does not
     pass ``max(0.05, share of the removal's route)``. ``covered`` counts intervals of the removal's edges that hold the
-    population correlation (NaN where it is not known); ``lost`` and ``left`` count shared components removed
+    population correlation (NaN where it is not known); ``alone_edges`` and ``alone_false`` are those of the pairs'
+    own tests at the whole rate, without modules, and ``module_edges`` and ``module_false`` those of the edges that
+    their module alone carries; ``lost`` and ``left`` count shared components removed
     and private ones kept (a component is shared when the modules explain at least half of its scores).
     """
 
@@ -45,6 +48,10 @@ class Outcome:
     hand_cut: float
     edges: int
     false: int
+    alone_edges: int
+    alone_false: int
+    module_edges: int
+    module_false: int
     oracle_edges: int
     oracle_false: int
     intervals: int
@@ -74,14 +81,13 @@ def run_study(name: str, family: Family, seed: int) -> Outcome:
     """Return what the routes found in the study of a seed."""
     study = simulate(family.design, seed)
     arrays = study_arrays(study, family)
-    pairs = family.design.block_pairs()
-    found = _product(study, arrays, family)
-    keys = [(found.screen.pair_index == k, found.screen.i, found.screen.j) for k in range(len(pairs))]
+    found, alone = _product(study, arrays, family)
     truth = _true_keys(study)
-    ours = np.sort(_keys(study, [np.column_stack([i[here], j[here]]) for here, i, j in keys]))
+    ours, own = _edge_keys(study, found.screen), _edge_keys(study, alone)
+    carried = _edge_keys(study, found.screen, found.support == "module")
     hand, hand_p = _route(study, arrays, family, know_private=False)
     oracle, _ = _route(study, arrays, family, know_private=True)
-    false = int(np.count_nonzero(~np.isin(ours, truth)))
+    false = _false(ours, truth)
     limit = max(0.05, false / max(ours.size, 1))
     intervals, covered = _coverage(study, found)
     return Outcome(
@@ -89,12 +95,16 @@ def run_study(name: str, family: Family, seed: int) -> Outcome:
         seed,
         truth.size,
         hand.size,
-        int(np.count_nonzero(~np.isin(hand, truth))),
+        _false(hand, truth),
         _cut(*hand_p, truth, limit),
         ours.size,
         false,
+        own.size,
+        _false(own, truth),
+        carried.size,
+        _false(carried, truth),
         oracle.size,
-        int(np.count_nonzero(~np.isin(oracle, truth))),
+        _false(oracle, truth),
         intervals,
         covered,
         *_components(found, arrays),
@@ -102,11 +112,13 @@ def run_study(name: str, family: Family, seed: int) -> Outcome:
     )
 
 
-def _product(study: Study, arrays: Arrays, family: Family) -> PrivateScreen:
-    """Return what the program does with a study of this kind."""
+def _product(study: Study, arrays: Arrays, family: Family) -> tuple[PrivateScreen, BlockScreen]:
+    """Return what the program does with a study of this kind, and what it would find without modules."""
     pairs = study.design.block_pairs()
     if family.level != "visits":
-        return screen_without_private(arrays.blocks, pairs, correlation=family.correlation, seed=study.seed)
+        made = pairs_without_private(arrays.blocks, pairs, correlation=family.correlation, seed=study.seed)
+        found = screen_cleaned(made, correlation=family.correlation)
+        return found, screen_blocks(made.pairs, correlation=family.correlation)
     design = _subjects(study)
     sides = [(arrays.blocks[a], arrays.blocks[b]) for a, b in pairs]
     # The visits' common course and the subjects' own level are removed without being named.
@@ -116,7 +128,18 @@ def _product(study: Study, arrays: Arrays, family: Family) -> PrivateScreen:
     )
     nothing: tuple[tuple[RealComponent, ...], ...] = tuple(() for _ in arrays.blocks)
     support = np.full(screen.n_edges, "pair")
-    return PrivateScreen(screen, support, nothing, ("repeated measures",) * len(pairs), ())
+    return PrivateScreen(screen, support, nothing, ("repeated measures",) * len(pairs), ()), screen
+
+
+def _edge_keys(study: Study, screen: BlockScreen, chosen: np.ndarray | None = None) -> Keys:
+    """Return the keys of a screen's edges, or of the chosen ones, sorted."""
+    take = np.ones(screen.n_edges, dtype=bool) if chosen is None else chosen
+    edges, which = np.column_stack([screen.i, screen.j])[take], screen.pair_index[take]
+    return np.sort(_keys(study, [edges[which == k] for k in range(len(screen.names))]))
+
+
+def _false(edges: Keys, truth: Keys) -> int:
+    return int(np.count_nonzero(~np.isin(edges, truth)))
 
 
 def _subjects(study: Study) -> SubjectDesign:

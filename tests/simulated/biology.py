@@ -79,6 +79,8 @@ def block_signal(design: Design, place: int, sheet: pd.DataFrame, shared: np.nda
     latent[odd] += ODD_SIZE * rng().standard_normal((len(odd), p))
     if block.clusters:
         latent += mixing @ _clusters(block, n, rng())
+    if block.nested:
+        latent += mixing @ _nested(block, loadings, n, rng())
     return Signal(latent, loadings, private, effects, copies, odd)
 
 
@@ -94,6 +96,9 @@ def _features(block: Block, design: Design, rng: np.random.Generator) -> tuple[n
     spread = rng.uniform(1 - LOADING_SPREAD, 1 + LOADING_SPREAD, inside)
     size = design.strength * spread * rng.choice([-1.0, 1.0], inside)
     loadings[members, np.arange(inside) % max(1, design.modules)] = size
+    for module in range(design.modules if block.overlap else 0):
+        both = members[module :: design.modules][: block.overlap]
+        loadings[both, (module + 1) % design.modules] = design.strength * rng.choice([-1.0, 1.0], both.size)
     cut = block.features - block.duplicates
     originals = rng.choice(order[:cut], block.duplicates, replace=block.duplicates > cut)
     copies = np.column_stack([order[cut:], originals])
@@ -117,6 +122,12 @@ def _clusters(block: Block, n: int, rng: np.random.Generator) -> np.ndarray:
     group = rng.permutation(block.features) // block.clusters
     factors = rng.standard_normal((n, int(group.max()) + 1))
     return factors[:, group] * block.cluster_strength * rng.choice([-1.0, 1.0], block.features)
+
+
+def _nested(block: Block, loadings: np.ndarray, n: int, rng: np.random.Generator) -> np.ndarray:
+    """Return what a factor of its own adds to the features of each module."""
+    factors = rng.standard_normal((n, loadings.shape[1]))
+    return factors @ (block.nested * (loadings != 0) * rng.choice([-1.0, 1.0], loadings.shape)).T
 
 
 def _group(

@@ -41,6 +41,10 @@ class Block:
     clusters, cluster_strength
         Size of the groups into which all features are dealt at random, and the loading (random sign) of each
         feature on the factor that its group alone has; 0: no such groups. The oracle does not know them.
+    overlap, nested
+        Features of each module that follow the next module as well, as strongly; and the loading (random sign) of
+        each module's features on a factor that this block's part of the module alone has. The oracle does not know
+        these factors.
     lacking, odd
         Number of samples that the block lacks, and of samples whose row has gone wrong.
     swaps
@@ -71,6 +75,8 @@ class Block:
     duplicates: int = 0
     clusters: int = 0
     cluster_strength: float = 1.0
+    overlap: int = 0
+    nested: float = 0.0
     lacking: int = 0
     odd: int = 0
     swaps: tuple[int, ...] = ()

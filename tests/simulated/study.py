@@ -24,9 +24,9 @@ class Truth:
     Parameters
     ----------
     pairs
-        For each two blocks of different layers the true pairs, shape (k, 2): features of one module.
+        For each two blocks of different layers the true pairs, shape (k, 2): features that follow one module.
     modules
-        For each block the module of every feature, -1: none.
+        For each block the module that every feature follows most, -1: none.
     loadings
         For each block the signed loadings, shape (features, modules), in noise standard deviations.
     shared, private
@@ -167,7 +167,7 @@ def _truth(
     modules = {name: _module_of(signal.loadings) for name, signal in signals.items()}
     two = [(design.blocks[a].name, design.blocks[b].name) for a, b in design.block_pairs()]
     return Truth(
-        pairs={(a, b): _true_pairs(modules[a], modules[b]) for a, b in two},
+        pairs={(a, b): _true_pairs(signals[a].loadings, signals[b].loadings) for a, b in two},
         modules=modules,
         loadings={name: signal.loadings for name, signal in signals.items()},
         shared=pd.DataFrame(shared, index=names),
@@ -190,6 +190,5 @@ def _module_of(loadings: np.ndarray) -> np.ndarray:
 
 
 def _true_pairs(one: np.ndarray, other: np.ndarray) -> np.ndarray:
-    """Return the pairs of features in one module, shape (k, 2), sorted."""
-    same = (one[:, np.newaxis] == other) & (one[:, np.newaxis] >= 0)
-    return np.argwhere(same)
+    """Return the pairs of features that follow a module together, from their loadings; shape (k, 2), sorted."""
+    return np.argwhere((one != 0).astype(int) @ (other != 0).astype(int).T > 0)

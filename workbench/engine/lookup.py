@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from functools import cached_property
-from typing import NamedTuple
+from typing import NamedTuple, Protocol
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -33,6 +33,13 @@ class PairFigures(NamedTuple):
     p: FloatArray
     q: FloatArray
     q_block: FloatArray
+
+
+class AnyPairs(Protocol):
+    """What gives figures of any pairs of a finished screen."""
+
+    def figures(self, pair_index: ArrayLike, i: ArrayLike, j: ArrayLike) -> PairFigures:
+        """Figures of the pairs of feature ``i`` of the first block and ``j`` of the second."""
 
 
 class Lookup:

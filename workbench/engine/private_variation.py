@@ -24,6 +24,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workbench.engine.far_values import withstand
+from workbench.engine.module_union import screen_supported
 from workbench.engine.nuisance import CONSTANT_TOLERANCE, Nuisance
 from workbench.engine.private_components import (
     FEWEST_DIMENSIONS,
@@ -32,7 +33,8 @@ from workbench.engine.private_components import (
 )
 from workbench.engine.private_retention import retention_levels, retention_p
 from workbench.engine.private_untangling import admixture, entangled
-from workbench.engine.screen import BlockPair, BlockScreen, Correlation, Progress, screen_blocks
+from workbench.engine.screen import BlockPair, BlockScreen, Correlation, Progress, pair_tiles
+from workbench.engine.tiles import Limits
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
@@ -115,7 +117,7 @@ class PrivateScreen:
     ----------
     screen : BlockScreen
     support : ndarray of str, shape (n_edges,)
-        What carries each edge: ``pair``, its own test.
+        What carries each edge: ``pair``, its own test; ``module``, its module alone; or ``both``.
     components : tuple of tuple of RealComponent
         For each block its real components, shared and private.
     off : tuple of str
@@ -123,6 +125,9 @@ class PrivateScreen:
     cleaned : tuple of (ndarray, ndarray)
         For each pair of blocks both blocks' values on the samples that they share, as they were tested:
         nuisance and private variation removed and heavy tails withstood (Spearman: the values as they came).
+    couples, mixed : tuple of int
+        For each pair of blocks the couples of shared components that modules were sought by, and those of them
+        that were left out as mixtures of shared factors; empty where none were sought.
     """
 
     screen: BlockScreen
@@ -130,6 +135,8 @@ class PrivateScreen:
     components: tuple[tuple[RealComponent, ...], ...]
     off: tuple[str, ...]
     cleaned: tuple[tuple[FloatArray, FloatArray], ...] = field(repr=False)
+    couples: tuple[int, ...] = ()
+    mixed: tuple[int, ...] = ()
 
     @property
     def removed(self) -> tuple[tuple[RealComponent, ...], ...]:
@@ -139,9 +146,14 @@ class PrivateScreen:
 
 @dataclass(frozen=True, eq=False)
 class CleanedPairs:
-    """Pairs of blocks as they are tested once private variation is removed; fields as in ``PrivateScreen``."""
+    """Pairs of blocks as they are tested once private variation is removed; fields as in ``PrivateScreen``.
+
+    ``shared`` holds for each pair the scores of both blocks' shared components on its samples, of unit length with
+    the nuisance removed; none where nothing is removed.
+    """
 
     pairs: tuple[BlockPair, ...]
+    shared: tuple[tuple[FloatArray, FloatArray], ...]
     components: tuple[tuple[RealComponent, ...], ...]
     off: tuple[str, ...]
 
@@ -174,7 +186,11 @@ def pairs_without_private(
         _pair(blocks, judged, view, pair, bool(reason), ranks)
         for view, pair, reason in zip(views, pairs, off, strict=True)
     )
-    return CleanedPairs(tested, tuple(one.components for one in judged), off)
+    shared = tuple(
+        (_shared(judged[a], view, view.x_rows, reason), _shared(judged[b], view, view.y_rows, reason))
+        for view, (a, b), reason in zip(views, pairs, off, strict=True)
+    )
+    return CleanedPairs(tested, shared, tuple(one.components for one in judged), off)
 
 
 def screen_without_private(
@@ -205,9 +221,42 @@ def screen_without_private(
     NumericsError
         When shapes, values or places do not allow the screen.
     """
-    made = pairs_without_private(blocks, pairs, correlation=correlation, seed=seed)
-    screen = screen_blocks(
-        made.pairs,
+    return screen_cleaned(
+        pairs_without_private(blocks, pairs, correlation=correlation, seed=seed),
+        fdr=fdr,
+        correlation=correlation,
+        minimum_r=minimum_r,
+        maximum_edges=maximum_edges,
+        progress=progress,
+    )
+
+
+def screen_cleaned(
+    made: CleanedPairs,
+    *,
+    fdr: float = 0.05,
+    correlation: Correlation = "pearson",
+    minimum_r: float = 0.0,
+    maximum_edges: int | None = None,
+    progress: Progress | None = None,
+) -> PrivateScreen:
+    """Edges between pairs of blocks freed of private variation, by their own tests and by their modules.
+
+    Parameters
+    ----------
+    made : CleanedPairs
+    fdr, correlation, minimum_r, maximum_edges, progress
+        As for :func:`screen_without_private`, the correlation that ``made`` was made for.
+
+    Raises
+    ------
+    NumericsError
+        When shapes or values do not allow the screen.
+    """
+    found = screen_supported(
+        tuple(pair.name for pair in made.pairs),
+        [pair_tiles(pair, correlation, Limits()) for pair in made.pairs],
+        made.shared,
         fdr=fdr,
         correlation=correlation,
         minimum_r=minimum_r,
@@ -215,7 +264,9 @@ def screen_without_private(
         progress=progress,
     )
     cleaned = tuple((np.asarray(pair.x), np.asarray(pair.y)) for pair in made.pairs)
-    return PrivateScreen(screen, np.full(screen.n_edges, "pair"), made.components, made.off, cleaned)
+    return PrivateScreen(
+        found.screen, found.support, made.components, made.off, cleaned, found.couples, found.mixed
+    )
 
 
 @dataclass(frozen=True, eq=False)
@@ -368,6 +419,14 @@ def _pair(
     (x, x_own, x_damping), (y, y_own, y_damping) = sides
     name = f"{blocks[pair[0]].name} x {blocks[pair[1]].name}"
     return BlockPair(name, x, y, view.nuisance, x_own, y_own, (x_damping, y_damping))
+
+
+def _shared(block: _Judged, view: _View, rows: IndexArray, off: str) -> FloatArray:
+    """Return the scores of a block's shared components on some rows, nuisance removed, of unit length."""
+    scores = [one.scores[rows] for one in block.components if one.stays == "shared" and not off]
+    rest = view.nuisance.residuals(np.column_stack([np.empty((rows.size, 0)), *scores]))
+    unit: FloatArray = rest / np.linalg.norm(rest, axis=0)
+    return unit
 
 
 def _cleaned(values: FloatArray, own: Nuisance) -> FloatArray:

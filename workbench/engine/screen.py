@@ -19,7 +19,7 @@ from numpy.typing import ArrayLike, NDArray
 from workbench.engine.discovery import discover
 from workbench.engine.found import Discovery, Request, strengths
 from workbench.engine.intervals import selected_error, selected_interval
-from workbench.engine.lookup import Lookup, PairFigures
+from workbench.engine.lookup import AnyPairs, Lookup, PairFigures
 from workbench.engine.nuisance import Nuisance
 from workbench.engine.tails import p_from_log
 from workbench.engine.tiles import Limits, PairTiles
@@ -119,7 +119,7 @@ class BlockScreen:
     fdr: float
     minimum_r: float
     maximum_edges: int | None
-    _lookup: Lookup = field(repr=False)
+    _lookup: AnyPairs = field(repr=False)
 
     @property
     def n_edges(self) -> int:
@@ -168,7 +168,7 @@ class PairScreen:
     fdr: float
     minimum_r: float
     maximum_edges: int | None
-    _lookup: Lookup = field(repr=False)
+    _lookup: AnyPairs = field(repr=False)
 
     @property
     def n_edges(self) -> int:
@@ -463,12 +463,41 @@ def _given(
     spearman: bool,
 ) -> tuple[FloatArray, FloatArray, FloatArray]:
     """Correlations without their damping, and both ends of their intervals."""
-    given, low, high = np.empty((3, r.size))
+    given = np.empty(r.size)
+    for k, pair in enumerate(tiles):
+        here = which == k
+        given[here] = np.clip(r[here] / pair.damping(ends[0][here], ends[1][here]), -1.0, 1.0)
+    return given, *edge_intervals(given, which, ends, tiles, error, spearman=spearman)
+
+
+def edge_intervals(
+    r: FloatArray,
+    which: IndexArray,
+    ends: tuple[IndexArray, IndexArray],
+    tiles: Sequence[PairTiles],
+    error: float,
+    *,
+    spearman: bool,
+) -> tuple[FloatArray, FloatArray]:
+    """Both ends of the intervals of edges of several pairs of blocks at one ``error``.
+
+    Parameters
+    ----------
+    r : ndarray of shape (n_edges,)
+        Correlations without their damping.
+    which : ndarray of int, shape (n_edges,)
+        Pair of blocks of each edge.
+    ends : pair of ndarray of int
+        Features of its first and of its second block.
+    tiles : sequence of PairTiles
+    error, spearman
+        As for :func:`~workbench.engine.intervals.selected_interval`.
+    """
+    low, high = np.empty((2, r.size))
     for k, pair in enumerate(tiles):
         here = which == k
         damping = pair.damping(ends[0][here], ends[1][here])
-        given[here] = np.clip(r[here] / damping, -1.0, 1.0)
         low[here], high[here] = selected_interval(
-            given[here], pair.n, pair.rank, error, spearman=spearman, damping=damping
+            r[here], pair.n, pair.rank, error, spearman=spearman, damping=damping
         )
-    return given, low, high
+    return low, high
