@@ -39,12 +39,13 @@ def cohort(
     group: str | None = "status",
     adjust: tuple[str, ...] = ("age",),
     subject: str | None = None,
+    extra: dict[str, dict[str, int]] | None = None,
     settings: str = 'method = "multiblock_pls"\noutcome = "status"',
 ) -> Project:
     """Return a project of one cohort.
 
     The first 12 genes and 5 compounds are raised by ``shift`` (natural logarithm) in ill samples, the next 15 and
-    8 share a factor. The first ``lost`` genes are not measured.
+    8 share a factor. The first ``lost`` genes are not measured; ``extra`` genes have a mean count for each status.
     """
     features, rng = np.random.default_rng(99), np.random.default_rng(seed)
     folder.mkdir(parents=True, exist_ok=True)
@@ -62,6 +63,8 @@ def cohort(
     logs[:, :12] += shift * shown[:, None]
     logs[:, 12:27] += 0.5 * factor[:, None]
     counts = pd.DataFrame(rng.poisson(np.exp(logs)), index=samples, columns=[f"g{k}" for k in range(GENES)])
+    for name, means in (extra or {}).items():
+        counts[name] = rng.poisson(frame["status"].map(means))
     peaks = features.normal(10.0, 1.0, COMPOUNDS) + rng.normal(0, 0.4, (n, COMPOUNDS))
     peaks[:, :5] += shift * shown[:, None]
     peaks[:, 5:13] += 0.5 * factor[:, None]

@@ -40,7 +40,7 @@ def test_batched_predictions_are_those_of_the_estimator() -> None:
     kernels = split_kernels(block_source([x[:, :40], x[:, 40:]])(train, test), train, test)
     orders = [np.arange(22), rng.permutation(22)]
     outcomes = [(y[:22][order] - y[:22].mean(axis=0)) / y[:22].std(axis=0, ddof=1) for order in orders]
-    fitted, found = batch_predictions(*kernels.of(slice(None)), np.stack(outcomes, axis=2), 3)
+    fitted, found = batch_predictions(*kernels.of([0, 1]), np.stack(outcomes, axis=2), 3)
     for k, outcome in enumerate(outcomes):
         for a in range(3):
             model = MultiblockPLS(a + 1, block_sizes=[40, 30]).fit(x[:22], outcome)
@@ -120,12 +120,12 @@ def test_a_planted_class_is_found_and_the_block_that_carries_it() -> None:
 
 
 def test_blocks_of_noise_may_be_left_out_by_the_inner_loop() -> None:
-    """A block that tells beside 30 and 2 features of noise, each weighing as much as it: four studies of 60."""
+    """A block that tells beside 300 and 2 features of noise: four studies of 60."""
     areas, used = [], []
     for seed in range(4):
         ill, blocks = two_blocks(60, seed, strength=0.7)
         rng = np.random.default_rng(seed + 9)
-        noisy = [blocks[0], rng.normal(size=(60, 30)), rng.normal(size=(60, 2))]
+        noisy = [blocks[0], rng.normal(size=(60, 300)), rng.normal(size=(60, 2))]
         for choose in (True, False):
             found = double_validation(
                 block_source(noisy), ClassOutcome.of(ill), repeats=1, choose_blocks=choose
@@ -137,7 +137,7 @@ def test_blocks_of_noise_may_be_left_out_by_the_inner_loop() -> None:
     assert min(shares[0] for shares in used[::2]) == 1.0
     assert np.mean([shares[1:] for shares in used[::2]]) < 0.6
     assert np.min(used[1::2]) == 1.0
-    assert len(choices(7, [1, 2], choose_blocks=True)) == 2 * (1 + 7 + 7)
+    assert len(choices(7, [1, 2], choose_blocks=True)) == 2 * (2 + 2 * 7 + 7)
 
 
 def test_noise_is_told_as_noise() -> None:
@@ -220,6 +220,7 @@ def test_arrangements_keep_whole_what_belongs_together() -> None:
     cells = np.repeat([0, 1], 10)
     kept = outcome_arrangements(np.arange(20) % 2, 5, 0, exchange=cells)
     assert_array_equal(cells[kept.rows], np.broadcast_to(cells, (5, 20)))
+    assert kept.how == "samples exchanged within levels of the nuisance"
 
 
 def test_the_same_seed_gives_the_same_and_a_sample_out_of_reach_is_not_scored() -> None:

@@ -8,7 +8,9 @@ from numpy.testing import assert_allclose
 from supervised_projects import cohort, integrate, set_analysis, table
 
 from workbench.errors import InputError, WorkbenchError
+from workbench.intake.faults import counted
 from workbench.workflow.feature_table import canonical_correlations, implied_correlations
+from workbench.workflow.supervised_leaks import chance_of_parting, parts_classes
 
 
 @pytest.fixture(scope="module")
@@ -234,3 +236,32 @@ def test_a_project_from_a_template_runs(classes, tmp_path, template, outcome, gr
     project.paths.settings.write_text(text.replace("repeats = 10", "repeats = 1\npermutations = 39"))
     lines = integrate(project)
     assert any(line.startswith("held out: ") for line in lines)
+
+
+def test_a_feature_that_is_the_outcome_measured_again_is_suspected(tmp_path):
+    """A gene of counts 50 in the ill and 900 in the well: its name gives nothing away, its values all."""
+    project = cohort(tmp_path / "A", 4, lost=0, extra={"g200": {"ill": 50, "well": 900}})
+    lines = integrate(project)
+    assert any(line.startswith("1 feature alone tells the classes apart without a miss") for line in lines)
+    assert any("g200 (rna)" in line for line in lines)
+
+
+def test_parting_by_chance_is_not_suspected():
+    """3 against 3 of 1,000 features of noise: a tenth of them part the classes, and nothing would be said."""
+    codes = np.array([0, 0, 0, 1, 1, 1])
+    values = np.random.default_rng(0).normal(size=(6, 1000))
+    assert abs(parts_classes(values, codes).mean() - chance_of_parting(np.bincount(codes))) < 0.03
+
+
+def test_words_for_one_and_many(classes):
+    project, lines = classes
+    count = len(table(project, "panel"))
+    assert any(line.startswith(f"panel of {counted(count, 'feature')};") for line in lines)
+    assert any(
+        "99 permutations" in line or "39 permutations" in line
+        for line in lines
+        if line.startswith("panel of")
+    )
+    assert (
+        0.0 < table(project, "performance").query("model == 'panel' and measure == 'auc'")["p"].iloc[0] <= 1.0
+    )

@@ -14,6 +14,9 @@ from workbench.engine.folds import Fold, Seed, balanced_folds
 from workbench.engine.subjects import SubjectDesign, subject_labels
 from workbench.errors import NumericsError
 
+INNER_REPEATS = 2
+"""Times that the inner loop deals its folds anew: what it chooses is the steadier, and held-out figures the better."""
+
 
 def fold_splits(
     source: BlockSource,
@@ -23,7 +26,7 @@ def fold_splits(
     seed: int,
     repeat: int,
 ) -> Iterator[FoldSplits]:
-    """Yield the outer folds of one repeat, each with as many inner folds of its training part.
+    """Yield the outer folds of one repeat, each with ``INNER_REPEATS`` times as many inner folds of its training part.
 
     Parameters
     ----------
@@ -46,11 +49,13 @@ def fold_splits(
     every = np.arange(subjects.n_samples)
     drawn = np.random.SeedSequence(seed, spawn_key=(repeat,))
     for k, (train, test) in enumerate(_folds(subjects, levels, folds, drawn)):
-        inside = np.random.SeedSequence(seed, spawn_key=(repeat, k))
         labels = None if levels is None else levels[train]
-        inner = _folds(subjects.take(train), labels, folds, inside)
-        rows = [(every[train], every[test]), *((train[taught], train[held]) for taught, held in inner)]
-        yield FoldSplits(repeat, k, tuple(rows), tuple(source(*pair) for pair in rows))
+        rows = [(every[train], every[test])]
+        for again in range(INNER_REPEATS):
+            inside = np.random.SeedSequence(seed, spawn_key=(repeat, k, again))
+            inner = _folds(subjects.take(train), labels, folds, inside)
+            rows += [(train[taught], train[held]) for taught, held in inner]
+        yield FoldSplits(repeat, k, folds, tuple(rows), tuple(source(*pair) for pair in rows))
 
 
 def strata_of(outcome: ClassOutcome | NumberOutcome, strata: NDArray[Any] | None) -> NDArray[Any] | None:

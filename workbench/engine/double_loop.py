@@ -25,36 +25,44 @@ MOST_BLOCKS = 5
 
 @dataclass(frozen=True)
 class Choice:
-    """Blocks that a model takes, and its number of components."""
+    """Blocks that a model takes, its number of components, and what counts alike in it: ``features`` or ``blocks``."""
 
     blocks: tuple[int, ...]
     components: int
+    alike: str
 
 
 def choices(n_blocks: int, components: Sequence[int], *, choose_blocks: bool) -> tuple[Choice, ...]:
     """Return what the inner loop chooses from: all blocks first, then ever fewer, each with 1, 2, ... components.
 
-    Up to five blocks every set of blocks is tried; of more all, all but one, and each alone.
+    Up to five blocks every set of blocks is tried; of more all, all but one, and each alone. Where there are several
+    blocks, either features or blocks count alike: blocks alike when a small block tells as much as a large one,
+    features alike when it would only bring noise. One block alone is the same either way.
 
     Examples
     --------
-    >>> [one.blocks for one in choices(2, [1], choose_blocks=True)]
-    [(0, 1), (0,), (1,)]
+    >>> [(one.blocks, one.alike) for one in choices(2, [1], choose_blocks=True)]
+    [((0, 1), 'features'), ((0, 1), 'blocks'), ((0,), 'blocks'), ((1,), 'blocks')]
     """
     every = tuple(range(n_blocks))
     sizes = [n_blocks]
     if choose_blocks:
         sizes = list(range(n_blocks, 0, -1)) if n_blocks <= MOST_BLOCKS else [n_blocks, n_blocks - 1, 1]
     sets = [blocks for size in sizes for blocks in combinations(every, size)]
-    return tuple(Choice(blocks, count) for blocks in sets for count in components)
+    return tuple(
+        Choice(blocks, count, alike)
+        for blocks in sets
+        for count in components
+        for alike in (("features", "blocks") if len(blocks) > 1 else ("blocks",))
+    )
 
 
 @dataclass(frozen=True, eq=False)
 class FoldKernels:
-    """Kernels of an outer fold and of the inner folds of its training part."""
+    """Kernels of an outer fold and of the inner folds of its training part, repeat by repeat."""
 
     outer: SplitKernels
-    inner: tuple[SplitKernels, ...]
+    inner: Sequence[Sequence[SplitKernels]]
 
 
 @dataclass(frozen=True, eq=False)
@@ -68,7 +76,8 @@ class NestedFold:
     test : HeldOut
         Test samples that can be scored, for every arrangement by its own choice, less the inner loop's level.
     inner : HeldOut
-        Training samples that the inner loop held out, by the choice; the outcome as delivered.
+        Training samples that the inner loop held out, once for each of its repeats, by the choice; the outcome as
+        delivered.
     every : HeldOut
         Test samples by each candidate; the outcome as delivered.
     """
@@ -89,14 +98,15 @@ def nested_fold(kernels: FoldKernels, outcome: Outcome, candidates: Sequence[Cho
     candidates : sequence of Choice
         In the order of preference.
     """
-    rows = max(split.train.shape[1] + split.test.shape[1] for split in (kernels.outer, *kernels.inner))
-    total = sum(split.test.shape[1] for split in kernels.inner)
+    rows = kernels.outer.train.shape[1] + kernels.outer.test.shape[1]
+    total = kernels.outer.train.shape[1] * len(kernels.inner)
     numbers = outcome.columns * (len(candidates) * total + 12 * rows)
     step = max(1, BATCH_NUMBERS // numbers)
-    parts = [
-        _nested(kernels, outcome.part(slice(start, start + step)), candidates)
-        for start in range(0, outcome.size, step)
-    ]
+    parts = []
+    for start in range(0, outcome.size, step):
+        arranged = outcome.part(slice(start, start + step))
+        inner = [[held_out(one, arranged, candidates) for one in repeat] for repeat in kernels.inner]
+        parts.append(best_inside(inner, held_out(kernels.outer, arranged, candidates), arranged))
     first = parts[0]
     together = np.concatenate([part.test.predicted for part in parts], axis=3)
     return NestedFold(
@@ -104,13 +114,22 @@ def nested_fold(kernels: FoldKernels, outcome: Outcome, candidates: Sequence[Cho
     )
 
 
-def _nested(kernels: FoldKernels, outcome: Outcome, candidates: Sequence[Choice]) -> NestedFold:
-    parts = [held_out(split, outcome, candidates) for split in kernels.inner]
-    place = outcome.choose(parts)
+def best_inside(inner: Sequence[Sequence[HeldOut]], outer: HeldOut, outcome: Outcome) -> NestedFold:
+    """Choose a candidate for each arrangement by the inner loop, and predict the outer fold's test samples by it.
+
+    Parameters
+    ----------
+    inner : sequence of sequence of HeldOut
+        Samples that the inner folds held out, by every candidate, repeat by repeat.
+    outer : HeldOut
+        Test samples by every candidate.
+    outcome : Outcome
+    """
+    place = outcome.choose(inner)
+    parts = [part for repeat in inner for part in repeat]
     rows = np.concatenate([part.rows for part in parts])
     predicted = np.concatenate([part.predicted for part in parts], axis=1)
     levels = np.array([outcome.level(rows, one) for one in predicted])
-    outer = held_out(kernels.outer, outcome, candidates)
     every = outer.predicted - levels[:, None]
     inside = predicted[[place[0]], :, :, :1] - levels[[place[0]], None, :, :1]
     return NestedFold(
@@ -125,14 +144,16 @@ def held_out(split: SplitKernels, outcome: Outcome, candidates: Sequence[Choice]
     """Predictions of a split's test samples that can be scored, by each candidate."""
     scored = np.isfinite(split.test).all(axis=(0, 2))
     codes = outcome.codes(split.train_rows)
-    sets = list(dict.fromkeys(one.blocks for one in candidates))
-    found = []
-    for blocks in sets:
-        counts = [one.components for one in candidates if one.blocks == blocks]
-        train, cross = split.of(list(blocks))
-        predicted = batch_predictions(train, cross[scored], codes, max(counts))[1]
-        found.append(predicted[np.array(counts) - 1])
-    return HeldOut(split.train_rows, split.test_rows[scored], np.concatenate(found))
+    most: dict[tuple[tuple[int, ...], str], int] = {}
+    for one in candidates:
+        key = (one.blocks, one.alike)
+        most[key] = max(most.get(key, 0), one.components)
+    found = {}
+    for (blocks, alike), count in most.items():
+        train, cross = split.of(blocks, alike)
+        found[blocks, alike] = batch_predictions(train, cross[scored], codes, count)[1]
+    predicted = np.array([found[one.blocks, one.alike][one.components - 1] for one in candidates])
+    return HeldOut(split.train_rows, split.test_rows[scored], predicted)
 
 
 def _taken(predicted: FloatArray, place: IndexArray) -> FloatArray:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from abc import ABC, abstractmethod
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -42,6 +43,11 @@ class Outcome(ABC):
     @abstractmethod
     def size(self) -> int:
         """Number of arrangements."""
+
+    @property
+    @abstractmethod
+    def delivered(self) -> NDArray[Any]:
+        """The outcome as delivered, samples first."""
 
     @property
     @abstractmethod
@@ -83,10 +89,27 @@ class Outcome(ABC):
     def statistic(self, parts: Sequence[HeldOut]) -> FloatArray:
         """How well all samples held out are predicted by the one candidate given, shape (size,); large is good."""
 
-    def choose(self, parts: Sequence[HeldOut]) -> IndexArray:
-        """Candidate of each arrangement, shape (size,): the fewest components that are as good as the best."""
-        rows = np.concatenate([part.rows for part in parts])
-        return fewest_as_good(self.losses(parts), self.weights(rows))
+    def mean_losses(self, repeats: Sequence[Sequence[HeldOut]]) -> tuple[IndexArray, FloatArray]:
+        """Rows held out, in order, and the mean of each one's losses over the repeats that held it out.
+
+        Returns
+        -------
+        rows : ndarray of int
+        losses : ndarray of shape (n_candidates, n_rows, size)
+        """
+        rows = np.unique(np.concatenate([part.rows for parts in repeats for part in parts]))
+        candidates = len(repeats[0][0].predicted)
+        total, seen = np.zeros((candidates, rows.size, self.size)), np.zeros(rows.size)
+        for parts in repeats:
+            places = np.searchsorted(rows, np.concatenate([part.rows for part in parts]))
+            total[:, places] += self.losses(parts)
+            seen[places] += 1.0
+        return rows, total / seen[:, None]
+
+    def choose(self, repeats: Sequence[Sequence[HeldOut]]) -> IndexArray:
+        """Candidate of each arrangement, shape (size,): the first that is as good as the best."""
+        rows, losses = self.mean_losses(repeats)
+        return fewest_as_good(losses, self.weights(rows))
 
 
 @dataclass(frozen=True, eq=False)
@@ -128,6 +151,11 @@ class ClassOutcome(Outcome):
     def size(self) -> int:
         """Number of arrangements."""
         return int(self.labels.shape[1])
+
+    @property
+    def delivered(self) -> NDArray[Any]:
+        """Class of each sample."""
+        return self.labels[:, 0]
 
     @property
     def columns(self) -> int:
@@ -211,6 +239,11 @@ class NumberOutcome(Outcome):
     def size(self) -> int:
         """Number of arrangements."""
         return int(self.values.shape[2])
+
+    @property
+    def delivered(self) -> NDArray[Any]:
+        """Numbers of each sample, shape (n_samples, columns)."""
+        return self.values[:, :, 0]
 
     @property
     def columns(self) -> int:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from typing import TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -13,6 +14,7 @@ from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
+T = TypeVar("T")
 
 
 @dataclass(frozen=True, eq=False)
@@ -130,16 +132,24 @@ class FoldSplits:
     Attributes
     ----------
     repeat, fold : int
+    folds : int
+        Inner folds that hold each training sample out once.
     rows : tuple of pair of ndarray of int
-        Training and test positions: of the outer fold, then of each inner one.
+        Training and test positions: of the outer fold, then of each inner one, repeat by repeat.
     splits : tuple of BlockSplit
         In the same order.
     """
 
     repeat: int
     fold: int
+    folds: int
     rows: tuple[tuple[IndexArray, IndexArray], ...]
     splits: tuple[BlockSplit, ...]
+
+    def inner(self, values: Sequence[T]) -> list[Sequence[T]]:
+        """Group what was found for ``splits`` by inner repeat, the outer fold's left out."""
+        starts = range(1, len(values), self.folds)
+        return [values[start : start + self.folds] for start in starts]
 
 
 Observer = Callable[[FoldSplits], None]
@@ -158,16 +168,28 @@ class SplitKernels:
         Kernels of the training rows, each of mean 1 on its diagonal: blocks of equal total variance.
     test : ndarray of shape (n_blocks, n_test, n_train)
         Products of test with training rows, by the same scale.
+    features : ndarray of shape (n_blocks,)
+        How many features of each block vary.
     """
 
     train_rows: IndexArray
     test_rows: IndexArray
     train: FloatArray
     test: FloatArray
+    features: FloatArray
 
-    def of(self, blocks: Sequence[int] | slice) -> tuple[FloatArray, FloatArray]:
-        """Kernels of some blocks together."""
-        return self.train[blocks].sum(axis=0), self.test[blocks].sum(axis=0)
+    def of(self, blocks: Sequence[int], alike: str = "blocks") -> tuple[FloatArray, FloatArray]:
+        """Kernels of some blocks together, in which ``"blocks"`` or ``"features"`` weigh alike."""
+        places = list(blocks)
+        weights = (
+            np.ones(len(places))
+            if alike == "blocks"
+            else self.features[places] / self.features[places].mean()
+        )
+        return (
+            np.einsum("b,bij->ij", weights, self.train[places]),
+            np.einsum("b,bij->ij", weights, self.test[places]),
+        )
 
 
 def split_kernels(split: BlockSplit, train_rows: IndexArray, test_rows: IndexArray) -> SplitKernels:
@@ -175,4 +197,5 @@ def split_kernels(split: BlockSplit, train_rows: IndexArray, test_rows: IndexArr
     inside = np.array([x @ x.T for x in split.train])
     across = np.array([z @ x.T for z, x in zip(split.test, split.train, strict=True)])
     scale = np.einsum("bii->b", inside)[:, None, None] / train_rows.size
-    return SplitKernels(train_rows, test_rows, inside / scale, across / scale)
+    features = np.array([x.shape[1] for x in split.train], dtype=np.float64)
+    return SplitKernels(train_rows, test_rows, inside / scale, across / scale, features)

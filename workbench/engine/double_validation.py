@@ -3,14 +3,18 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.engine.double_arrangements import Arrangements, outcome_arrangements
-from workbench.engine.double_choice import fewest_as_good
+from workbench.engine.double_arrangements import (
+    Arrangements,
+    PermutationNull,
+    outcome_arrangements,
+    permutation_null,
+)
 from workbench.engine.double_folds import fold_splits, strata_of
 from workbench.engine.double_loop import Choice, FoldKernels, choices, nested_fold
 from workbench.engine.double_outcome import ClassOutcome, HeldOut, NumberOutcome, Outcome
@@ -23,7 +27,6 @@ from workbench.engine.performance_measures import (
     class_performance,
     number_performance,
 )
-from workbench.engine.smallest_p import TIE_TOLERANCE
 from workbench.engine.subjects import SubjectDesign
 from workbench.errors import NumericsError
 
@@ -49,6 +52,8 @@ class HeldOutModel:
         Chosen in the inner loop.
     blocks : ndarray of bool, shape (repeats, folds, n_blocks)
         Blocks chosen there.
+    features_alike : ndarray of bool, shape (repeats, folds)
+        Where features, not blocks, counted alike by that choice.
     performance : ClassPerformance or NumberPerformance
     """
 
@@ -57,30 +62,8 @@ class HeldOutModel:
     classes: IndexArray | None
     components: IndexArray
     blocks: NDArray[np.bool_]
+    features_alike: NDArray[np.bool_]
     performance: Performance
-
-
-@dataclass(frozen=True, eq=False)
-class PermutationNull:
-    """Permutation test of the whole procedure.
-
-    Attributes
-    ----------
-    p : float or None
-        ``(1 + exceedances) / (1 + permutations)``; None where withheld.
-    observed : float
-        AUC, or the Q2 that the blocks add to the nuisance; mean over the repeats.
-    null : ndarray of shape (permutations,)
-    how : str
-        What was exchanged.
-    withheld : str or None
-    """
-
-    p: float | None
-    observed: float
-    null: FloatArray
-    how: str
-    withheld: str | None
 
 
 @dataclass(frozen=True, eq=False)
@@ -96,6 +79,7 @@ class DoubleValidation:
     nuisance : HeldOutModel or None
         The outcome from the nuisance columns alone; None without.
     test : PermutationNull
+        Of the mean over the repeats.
     by_components : ndarray of shape (repeats, n_candidates)
         The test's statistic at each number of components, the blocks of the final fit, nothing chosen.
     candidates : tuple of int
@@ -103,6 +87,8 @@ class DoubleValidation:
         Chosen on all samples, for the final fit.
     blocks : tuple of int
         Blocks of the final fit, chosen likewise.
+    alike : {"features", "blocks"}
+        What counts alike in it.
     folds, repeats : int
     n_scored : ndarray of int, shape (repeats,)
     """
@@ -115,6 +101,7 @@ class DoubleValidation:
     candidates: tuple[int, ...]
     components: int
     blocks: tuple[int, ...]
+    alike: str
     folds: int
     repeats: int
     n_scored: IndexArray
@@ -139,12 +126,13 @@ def double_validation(
 ) -> DoubleValidation:
     """Out-of-sample figures from repeated double cross-validation, and the p of the whole procedure.
 
-    In each outer fold an inner loop over the training part alone chooses blocks and number of components (all
-    blocks, and as few components as possible, unless others are better by more than one standard error of the
-    difference) and, for classes, learns cut and slope from the samples that it holds out; the model is fitted
-    to the training part and the test samples are predicted once. Loss: squared error, or the share of pairs of
-    samples of two classes that are ranked wrongly. The test repeats all of this for every arrangement of the
-    outcome, in the same folds; their kernels are computed once.
+    In each outer fold an inner loop over the training part alone chooses blocks, whether features or blocks
+    count alike, and number of components (all blocks, features alike and as few components as possible, unless
+    others are better by more than one standard error of the difference) and, for classes, learns cut and slope
+    from the samples that it holds out; the model is fitted to the training part and the test samples are
+    predicted once. Loss: squared error, or the share of pairs of samples of two classes that are ranked wrongly.
+    The test repeats all of this for every arrangement of the outcome, in the same folds; their kernels are
+    computed once.
 
     Parameters
     ----------
@@ -166,7 +154,8 @@ def double_validation(
     choose_blocks : bool
         Whether blocks may be left out: a block of noise that weighs as much as the others costs a lot.
     folds, repeats : int
-        Folds of the outer and of the inner loop; repeats of the outer one.
+        Folds of the outer and of the inner loop; repeats of the outer one (the inner one is dealt
+        ``INNER_REPEATS`` times).
     permutations : int
         0: no test.
     seed : int
@@ -307,9 +296,10 @@ class _Run:
         permutations: int,
         seed: int,
     ) -> _Run:
-        delivered = outcome.labels[:, 0] if isinstance(outcome, ClassOutcome) else outcome.values[:, :, 0]
-        n = len(delivered)
-        drawn = outcome_arrangements(delivered, permutations, seed, subjects=subjects, exchange=exchange)
+        n = len(outcome.delivered)
+        drawn = outcome_arrangements(
+            outcome.delivered, permutations, seed, subjects=subjects, exchange=exchange
+        )
         return cls(
             source,
             outcome,
@@ -338,7 +328,7 @@ class _Run:
             found = [
                 self._kernels(split, *rows) for rows, split in zip(splits.rows, splits.splits, strict=True)
             ]
-            kernels = FoldKernels(found[0], tuple(found[1:]))
+            kernels = FoldKernels(found[0], splits.inner(found))
             models = models or self._models(len(kernels.outer.train))
             for model in models:
                 model.add(kernels)
@@ -359,11 +349,12 @@ class _Run:
             model=described[0],
             singles=tuple(described[1 : count - last]),
             nuisance=nuisance,
-            test=self._test(statistics),
-            by_components=self._by_components(repeated, final.blocks),
+            test=permutation_null(statistics, self.arrangements),
+            by_components=self._by_components(repeated, final),
             candidates=self.candidates,
             components=final.components,
             blocks=final.blocks,
+            alike=final.alike,
             folds=self.folds,
             repeats=len(repeated),
             n_scored=np.isfinite(described[0].predicted[:, :, 0]).sum(axis=1),
@@ -377,7 +368,9 @@ class _Run:
         models = [_Model.of(every, self.arranged, self.n)]
         alone = [*(range(count) if count > 1 else ()), *([blocks - 1] if last else ())]
         for b in alone:
-            models.append(_Model.of(tuple(Choice((b,), k) for k in self.candidates), self.outcome, self.n))
+            models.append(
+                _Model.of(tuple(Choice((b,), k, "blocks") for k in self.candidates), self.outcome, self.n)
+            )
         return models
 
     def _kernels(self, split: BlockSplit, train: IndexArray, test: IndexArray) -> SplitKernels:
@@ -391,6 +384,7 @@ class _Run:
             test,
             np.concatenate([found.train, (x @ x.T)[None]]),
             np.concatenate([found.test, (z @ x.T)[None]]),
+            np.append(found.features, x.shape[1]),
         )
 
     def _baselines(self, train: IndexArray, test: IndexArray, mean: FloatArray, nuisance: FloatArray) -> None:
@@ -408,6 +402,7 @@ class _Run:
         blocks = np.array(
             [[np.isin(np.arange(total_blocks), one.blocks) for one in model.chosen] for model in models]
         )
+        alike = np.array([[one.alike == "features" for one in model.chosen] for model in models])
         if not np.isfinite(predicted).any():
             raise NumericsError(
                 "no sample can be scored out of fold: each has a nuisance level that its training part lacks; "
@@ -418,38 +413,24 @@ class _Run:
             probabilities = np.array([model.probabilities for model in models])
             labels = self.outcome.labels[:, 0]
             figures: Performance = class_performance(labels, predicted, classes, probabilities)
-            return HeldOutModel(predicted, probabilities, classes, components, blocks, figures)
+            return HeldOutModel(predicted, probabilities, classes, components, blocks, alike, figures)
         assert isinstance(self.outcome, NumberOutcome)
         mean = np.array([one.mean for one in repeated])
         nuisance = np.array([one.nuisance for one in repeated])
         of_nuisance = self.nuisance is not None and m == len(repeated[0].models) - 1
         total = np.where(np.isfinite(predicted), nuisance, np.nan) if of_nuisance else predicted + nuisance
         figures = number_performance(self.outcome.values[:, :, 0], total, mean, nuisance)
-        return HeldOutModel(total, None, None, components, blocks, figures)
-
-    def _test(self, statistics: FloatArray) -> PermutationNull:
-        observed, null = float(statistics[0]), statistics[1:]
-        bar = observed - TIE_TOLERANCE * abs(observed)
-        p = float((1 + np.count_nonzero(null >= bar)) / (1 + null.size)) if null.size else None
-        return PermutationNull(p, observed, null, self.arrangements.how, self.arrangements.withheld)
+        return HeldOutModel(total, None, None, components, blocks, alike, figures)
 
     def _final(self, repeated: list[_Repeat]) -> Choice:
         """Blocks and components for the fit on all samples, from each sample's mean loss over the repeats."""
-        outcome, models = self.outcome, [one.models[0] for one in repeated]
-        candidates = models[0].candidates
-        losses, seen = np.zeros((len(candidates), self.n, 1)), np.zeros(self.n)
-        for model in models:
-            rows = np.concatenate([part.rows for part in model.every])
-            losses[:, rows] += outcome.losses(model.every)
-            seen[rows] += 1.0
-        held = np.flatnonzero(seen)
-        mean = losses[:, held] / seen[held, None]
-        return candidates[int(fewest_as_good(mean, outcome.weights(held))[0])]
+        models = [one.models[0] for one in repeated]
+        return models[0].candidates[int(self.outcome.choose([model.every for model in models])[0])]
 
-    def _by_components(self, repeated: list[_Repeat], blocks: tuple[int, ...]) -> FloatArray:
-        """Statistic of every repeat at each number of components, with some blocks."""
+    def _by_components(self, repeated: list[_Repeat], final: Choice) -> FloatArray:
+        """Statistic of every repeat at each number of components, all else as in the final fit."""
         candidates = repeated[0].models[0].candidates
-        places = [candidates.index(Choice(blocks, count)) for count in self.candidates]
+        places = [candidates.index(replace(final, components=count)) for count in self.candidates]
         return np.array(
             [
                 [

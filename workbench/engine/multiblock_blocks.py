@@ -25,6 +25,8 @@ class BlockScaling:
         Over the samples that have the block; ``scale`` is the standard deviation over the block's weight, 1
         for a constant feature.
     varies : ndarray of bool, shape (n_features,)
+    weights : ndarray of shape (n_features,)
+        Weight of each feature at unit variance; 1 for a constant one.
     blocks : tuple of slice
         Columns of each block.
     lacking : tuple of int
@@ -34,6 +36,7 @@ class BlockScaling:
     mean: FloatArray
     scale: FloatArray
     varies: NDArray[np.bool_]
+    weights: FloatArray
     blocks: tuple[slice, ...]
     lacking: tuple[int, ...]
 
@@ -46,7 +49,7 @@ class BlockScaling:
         return values
 
 
-def fit_scaling(x: FloatArray, block_sizes: Sequence[int] | None) -> BlockScaling:
+def fit_scaling(x: FloatArray, block_sizes: Sequence[int] | None, alike: str = "blocks") -> BlockScaling:
     """Learn mean, standard deviation (``n - 1``) and block weights, each block over the samples that have it.
 
     Parameters
@@ -54,12 +57,14 @@ def fit_scaling(x: FloatArray, block_sizes: Sequence[int] | None) -> BlockScalin
     x : ndarray of shape (n_samples, n_features)
         A lacking block is NaN in all of its columns.
     block_sizes : sequence of int or None
+    alike : {"blocks", "features"}
+        What weighs alike: blocks have equal total variance, or features equal variance.
 
     Raises
     ------
     NumericsError
-        When values are missing in a part of a block only, a sample has no block, a block has fewer than two
-        samples, or no feature varies.
+        When ``alike`` is neither, values are missing in a part of a block only, a sample has no block, a block
+        has fewer than two samples, or no feature varies.
 
     Examples
     --------
@@ -69,6 +74,8 @@ def fit_scaling(x: FloatArray, block_sizes: Sequence[int] | None) -> BlockScalin
            [ 0.   ,  0.   ],
            [ 1.   ,  0.707]])
     """
+    if alike not in ("blocks", "features"):
+        raise NumericsError(f"alike is {alike!r}; allowed: 'blocks' or 'features'")
     blocks = tuple(block_slices(block_sizes, x.shape[1], "X"))
     present = blocks_present(x, blocks)
     mean, deviation = np.zeros(x.shape[1]), np.ones(x.shape[1])
@@ -87,10 +94,12 @@ def fit_scaling(x: FloatArray, block_sizes: Sequence[int] | None) -> BlockScalin
         varies[block] = squares > CONSTANT_TOLERANCE**2 * (squares + rows.shape[0] * mean[block] ** 2)
     if not varies.any():
         raise NumericsError(f"none of the {x.shape[1]} features varies; leave the blocks out")
-    scale = np.ones(x.shape[1])
-    scale[varies] = deviation[varies] / block_weights(varies, blocks)
+    weights = np.ones(x.shape[1])
+    if alike == "blocks":
+        weights[varies] = block_weights(varies, blocks)
+    scale = np.where(varies, deviation / weights, 1.0)
     lacking = tuple(int(count) for count in (~present).sum(axis=0))
-    return BlockScaling(mean, scale, varies, blocks, lacking)
+    return BlockScaling(mean, scale, varies, weights, blocks, lacking)
 
 
 def blocks_present(x: FloatArray, blocks: Sequence[slice]) -> NDArray[np.bool_]:

@@ -160,17 +160,43 @@ def batch_predictions(
         add nothing.
     predicted : ndarray of shape (n_components, n_new, n_outcomes, n_arrangements)
     """
+    n, every = len(y), np.vstack([train, cross])
+
+    def products(u: FloatArray) -> FloatArray:
+        return (every @ u.reshape(n, -1)).reshape(-1, *u.shape[1:])
+
+    values = batch_values(products, len(every), y, n_components)
+    return values[:, :n], values[:, n:]
+
+
+def batch_values(products: Products, rows: int, y: FloatArray, n_components: int) -> FloatArray:
+    """Values of training and further rows, for many arrangements at once, each with a kernel of its own if need be.
+
+    Parameters
+    ----------
+    products : callable
+        From ``u`` of shape (n_train, any, n_arrangements) to ``Ku`` of shape (rows, any, n_arrangements), training
+        rows first.
+    rows : int
+    y : ndarray of shape (n_train, n_outcomes, n_arrangements)
+        Centred outcomes.
+    n_components : int
+
+    Returns
+    -------
+    ndarray of shape (n_components, rows, n_outcomes, n_arrangements)
+        With 1, 2, ... components.
+    """
     n, q, batch = y.shape
-    every = np.vstack([train, cross])
     left = np.array(y, dtype=np.float64)
-    scores = np.zeros((n_components, every.shape[0], batch))
-    values = np.zeros((n_components, every.shape[0], q, batch))
-    reached = np.zeros((every.shape[0], q, batch))
+    scores = np.zeros((n_components, rows, batch))
+    values = np.zeros((n_components, rows, q, batch))
+    reached = np.zeros((rows, q, batch))
     first = np.zeros(batch)
     for a in range(n_components):
-        u = left[:, 0] if q == 1 else _batch_directions(train, left)
+        u = left[:, 0] if q == 1 else _batch_directions(products(left)[:n], left)
         size = np.sqrt(np.einsum("np,np->p", u, u))
-        score = every @ np.divide(u, size, out=np.zeros_like(u), where=size > 0.0)
+        score = products(np.divide(u, size, out=np.zeros_like(u), where=size > 0.0)[:, None])[:, 0]
         for _ in range(2 if a else 0):
             along = np.einsum("anp,np->ap", scores[:a, :n], score[:n])
             score -= np.einsum("anp,ap->np", scores[:a], along)
@@ -181,13 +207,11 @@ def batch_predictions(
         left -= score[:n, None] * loading
         reached += score[:, None] * loading
         scores[a], values[a] = score, reached
-    return values[:, :n], values[:, n:]
+    return values
 
 
-def _batch_directions(train: FloatArray, left: FloatArray) -> FloatArray:
-    """Leading combination of the outcomes that are left, for each arrangement."""
-    n, q, batch = left.shape
-    moved = (train @ left.reshape(n, q * batch)).reshape(n, q, batch)
+def _batch_directions(moved: FloatArray, left: FloatArray) -> FloatArray:
+    """Leading combination of the outcomes that are left, for each arrangement; ``moved`` is ``K left``."""
     inner = np.einsum("nip,njp->pij", left, moved)
     weights = np.linalg.eigh(0.5 * (inner + inner.transpose(0, 2, 1)))[1][:, :, -1]
     directions: FloatArray = np.einsum("nip,pi->np", left, weights)

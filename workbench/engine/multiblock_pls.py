@@ -29,7 +29,6 @@ from workbench.engine.multiblock_kernel import (
 )
 from workbench.engine.outcome_coding import balanced_codes
 from workbench.engine.outcome_rule import learn_rule
-from workbench.engine.sides import block_weights
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
@@ -42,9 +41,12 @@ CUT_SAMPLES = 2000
 class _MultiblockModel(ClassNamePrefixFeaturesOutMixin, TransformerMixin, BaseEstimator):  # type: ignore[misc]
     """What both forms share: components, what they say of blocks and features, scores of new samples."""
 
-    def __init__(self, n_components: int = 2, *, block_sizes: Sequence[int] | None = None) -> None:
+    def __init__(
+        self, n_components: int = 2, *, block_sizes: Sequence[int] | None = None, alike: str = "blocks"
+    ) -> None:
         self.n_components = n_components
         self.block_sizes = block_sizes
+        self.alike = alike
 
     def transform(self, X: ArrayLike) -> FloatArray:
         """Super scores of any samples; a block that a sample lacks stands at its training mean.
@@ -69,7 +71,7 @@ class _MultiblockModel(ClassNamePrefixFeaturesOutMixin, TransformerMixin, BaseEs
     def _fit_components(self, X: ArrayLike, y: FloatArray) -> None:
         """Find the components of centred outcomes and read the features; ``X`` was checked."""
         x = np.asarray(X, dtype=np.float64)
-        self._scaling = fit_scaling(x, self.block_sizes)
+        self._scaling = fit_scaling(x, self.block_sizes, self.alike)
         self._training = self._scaling.standardised(x)
         self._outcomes = y
         count = self.n_components
@@ -105,7 +107,7 @@ class _MultiblockModel(ClassNamePrefixFeaturesOutMixin, TransformerMixin, BaseEs
         self.y_explained_ = of_outcomes / (self._outcomes**2).sum()
         self.vip_ = np.full(x.shape[1], np.nan)
         varies = self._scaling.varies
-        parts = (weights[varies] / block_weights(varies, blocks)[:, None]) ** 2
+        parts = (weights[varies] / self._scaling.weights[varies, None]) ** 2
         shares_of_features = (parts / parts.sum(axis=0)) @ (of_outcomes / of_outcomes.sum())
         self.vip_[varies] = np.sqrt(np.count_nonzero(varies) * shares_of_features)
         self.block_weights_, self.train_block_scores_ = self._block_parts(found)
@@ -176,6 +178,8 @@ class MultiblockPLS(RegressorMixin, _MultiblockModel):  # type: ignore[misc]
         At least 1; more than there are features or samples less one are refused.
     block_sizes : sequence of int or None, default None
         Features of each block, in the order of the columns; ``None``: one block.
+    alike : {"blocks", "features"}, default "blocks"
+        What weighs alike: every block, whatever its number of features, or every feature.
 
     Attributes
     ----------

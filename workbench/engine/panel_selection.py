@@ -9,9 +9,16 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from workbench.engine.double_arrangements import (
+    Arrangements,
+    PermutationNull,
+    outcome_arrangements,
+    permutation_null,
+)
 from workbench.engine.double_choice import fewest_as_good
 from workbench.engine.double_folds import fold_splits, strata_of
-from workbench.engine.double_outcome import ClassOutcome, HeldOut, NumberOutcome
+from workbench.engine.double_loop import NestedFold, best_inside
+from workbench.engine.double_outcome import ClassOutcome, HeldOut, NumberOutcome, Outcome
 from workbench.engine.double_splits import BlockSource, BlockSplit, FoldSplits
 from workbench.engine.linear import column_correlations
 from workbench.engine.multiblock_kernel import kernel_components, kernel_products
@@ -63,6 +70,9 @@ class Panel:
         Of the refitted model.
     performance : ClassPerformance or NumberPerformance
         Of the procedure, ranking and size chosen anew in every training part.
+    test : PermutationNull or None
+        Of the procedure, ranking and size chosen anew for every arrangement of the outcome too; of the first
+        repeat. None where no arrangements were given.
     sizes : ndarray of int, shape (repeats, folds)
         Sizes chosen there.
     candidates : tuple of Candidate
@@ -79,6 +89,7 @@ class Panel:
     alternatives: tuple[tuple[tuple[int, int, float], ...], ...]
     components: int
     performance: ClassPerformance | NumberPerformance
+    test: PermutationNull | None
     sizes: IndexArray
     candidates: tuple[Candidate, ...]
     loss: FloatArray
@@ -96,6 +107,7 @@ def select_panel(
     largest: int = LARGEST,
     folds: int = 5,
     repeats: int = 5,
+    permutations: int = 0,
     seed: int = 0,
     progress: Callable[[int, int], None] | None = None,
 ) -> Panel:
@@ -112,7 +124,7 @@ def select_panel(
     outcome : ClassOutcome or NumberOutcome
     block_sizes : sequence of int
         Features of each block.
-    subjects, strata, folds, repeats, seed
+    subjects, strata, folds, repeats, permutations, seed
         See :func:`double_validation`.
     components : sequence of int
         Numbers of components to try.
@@ -133,9 +145,10 @@ def select_panel(
     >>> sorted(zip(found.block.tolist(), found.feature.tolist()))
     [(0, 0), (0, 1), (1, 0), (1, 1)]
     """
-    n = len(outcome.labels if isinstance(outcome, ClassOutcome) else outcome.values)
+    n = len(outcome.delivered)
     design = SubjectDesign.of(np.arange(n)) if subjects is None else subjects
-    search = PanelSearch(outcome, block_sizes, components=components, largest=largest)
+    drawn = outcome_arrangements(outcome.delivered, permutations, seed, subjects=subjects)
+    search = PanelSearch(outcome, block_sizes, components=components, largest=largest, arrangements=drawn)
     levels = strata_of(outcome, strata)
     for r in range(repeats):
         for splits in fold_splits(source, design, levels, folds, seed, r):
@@ -155,6 +168,7 @@ class _Repeat:
     nuisance: FloatArray
     classes: IndexArray
     probabilities: FloatArray
+    test: list[HeldOut]
     every: list[HeldOut]
     chosen: list[IndexArray]
 
@@ -162,7 +176,7 @@ class _Repeat:
     def empty(cls, outcome: ClassOutcome | NumberOutcome, n: int) -> _Repeat:
         n_classes = outcome.n_classes if isinstance(outcome, ClassOutcome) else 1
         predicted, mean, nuisance = np.full((3, n, outcome.columns), np.nan)
-        return cls(predicted, mean, nuisance, np.full(n, -1), np.full((n, n_classes), np.nan), [], [])
+        return cls(predicted, mean, nuisance, np.full(n, -1), np.full((n, n_classes), np.nan), [], [], [])
 
 
 class PanelSearch:
@@ -177,6 +191,8 @@ class PanelSearch:
         Numbers of components to try.
     largest : int
         Most features of a panel.
+    arrangements : Arrangements, optional
+        Of the outcome, for a test of the whole procedure in the folds of the first repeat.
     """
 
     def __init__(
@@ -186,11 +202,14 @@ class PanelSearch:
         *,
         components: Sequence[int] = (1, 2, 3),
         largest: int = LARGEST,
+        arrangements: Arrangements | None = None,
     ) -> None:
         self.outcome = outcome
+        self.arrangements = arrangements
         self.block_sizes = tuple(block_sizes)
         self.candidates = panel_candidates(sum(block_sizes), largest, components)
-        self.n = len(outcome.labels if isinstance(outcome, ClassOutcome) else outcome.values)
+        self.n = len(outcome.delivered)
+        self._arranged = outcome if arrangements is None else outcome.arranged(arrangements.rows)
         self._repeated: list[_Repeat] = []
 
     def __call__(self, splits: FoldSplits) -> None:
@@ -198,12 +217,16 @@ class PanelSearch:
         if len(self._repeated) == splits.repeat:
             self._repeated.append(_Repeat.empty(self.outcome, self.n))
         found = self._repeated[splits.repeat]
-        tried = [self._try(*rows, split) for rows, split in zip(splits.rows, splits.splits, strict=True)]
-        (outer, chosen), inner = tried[0], [one[0] for one in tried[1:]]
-        place = int(self.outcome.choose(inner)[0])
-        found.every.append(outer)
-        found.chosen.append(chosen[place])
-        self._score(found, inner, outer, place)
+        outcome = self._arranged if splits.repeat == 0 else self.outcome
+        tried = [
+            self._try(*rows, split, outcome) for rows, split in zip(splits.rows, splits.splits, strict=True)
+        ]
+        (outer, chosen), held_out = tried[0], [one[0] for one in tried]
+        best = best_inside(splits.inner(held_out), outer, outcome)
+        found.test.append(best.test)
+        found.every.append(best.every)
+        found.chosen.append(chosen[best.chosen])
+        self._score(found, best)
 
     def panel(self, whole: BlockSplit) -> Panel:
         """Return the panel of all samples, with the figures of the folds that were seen.
@@ -214,16 +237,15 @@ class PanelSearch:
             All samples as the training part.
         """
         repeated = self._repeated
-        losses = [self.outcome.losses(one.every) for one in repeated]
-        weights = [self.outcome.weights(np.concatenate([e.rows for e in one.every])) for one in repeated]
-        place = int(np.median([fewest_as_good(a, w)[0] for a, w in zip(losses, weights, strict=True)]))
-        chosen = self.candidates[place]
-        codes = self.outcome.codes(np.arange(self.n))[:, :, 0]
-        columns = rank_features(whole.train, codes, [chosen.components], chosen.size)[0]
+        rows, losses = self.outcome.mean_losses([one.every for one in repeated])
+        weights = self.outcome.weights(rows)
+        chosen = self.candidates[int(fewest_as_good(losses, weights)[0])]
+        codes = self.outcome.codes(np.arange(self.n))
+        columns = rank_features(whole.train, codes, [chosen.components], chosen.size)[0, 0]
         block, feature = self._named(whole, columns)
         values = columns_of(whole.train, columns)
         frequency = self._frequency(repeated)
-        fitted = kernel_components(kernel_products(values), codes, chosen.components)
+        fitted = kernel_components(kernel_products(values), codes[:, :, 0], chosen.components)
         return Panel(
             block=block,
             feature=feature,
@@ -232,24 +254,23 @@ class PanelSearch:
             alternatives=self._alternatives(whole, columns, values),
             components=chosen.components,
             performance=self._performance(repeated),
+            test=self._test(repeated),
             sizes=np.array([[one[:, 0].size for one in r.chosen] for r in repeated]),
             candidates=self.candidates,
-            loss=np.mean(
-                [np.einsum("knp,np->k", a, w) for a, w in zip(losses, weights, strict=True)], axis=0
-            ),
+            loss=np.einsum("knp,np->k", losses, weights),
             every_frequency=frequency,
         )
 
     def _try(
-        self, train: IndexArray, test: IndexArray, split: BlockSplit
+        self, train: IndexArray, test: IndexArray, split: BlockSplit, outcome: Outcome
     ) -> tuple[HeldOut, list[IndexArray]]:
-        predicted, chosen = try_candidates(split, self.outcome.codes(train)[:, :, 0], self.candidates)
+        predicted, chosen = try_candidates(split, outcome.codes(train), self.candidates)
         scored = np.isfinite(predicted).all(axis=(0, 2, 3))
         named = [np.column_stack(self._named(split, columns)) for columns in chosen]
         return HeldOut(train, test[scored], predicted[:, scored]), named
 
-    def _score(self, found: _Repeat, inner: Sequence[HeldOut], outer: HeldOut, place: int) -> None:
-        values = outer.predicted[place, :, :, 0]
+    def _score(self, found: _Repeat, best: NestedFold) -> None:
+        outer, values = best.test, best.test.predicted[0, :, :, 0]
         if isinstance(self.outcome, NumberOutcome):
             truth = self.outcome.values[:, :, 0]
             found.mean[outer.rows] = truth[outer.train].mean(axis=0)
@@ -258,13 +279,16 @@ class PanelSearch:
             )
             found.predicted[outer.rows] = values + found.nuisance[outer.rows]
             return
-        rows = np.concatenate([part.rows for part in inner])
-        held = np.concatenate([part.predicted[place] for part in inner])
-        level = self.outcome.level(rows, held)[:, 0]
-        rule = learn_rule(held[:, :, 0] - level, self.outcome.labels[rows, 0], self.outcome.n_classes)
-        found.predicted[outer.rows] = values - level
-        found.classes[outer.rows] = rule.classes(values - level)
-        found.probabilities[outer.rows] = rule.probabilities(values - level)
+        labels = self.outcome.labels[best.inner.rows, 0]
+        rule = learn_rule(best.inner.predicted[0, :, :, 0], labels, self.outcome.n_classes)
+        found.predicted[outer.rows] = values
+        found.classes[outer.rows] = rule.classes(values)
+        found.probabilities[outer.rows] = rule.probabilities(values)
+
+    def _test(self, repeated: list[_Repeat]) -> PermutationNull | None:
+        if self.arrangements is None:
+            return None
+        return permutation_null(self._arranged.statistic(repeated[0].test), self.arrangements)
 
     def _performance(self, repeated: list[_Repeat]) -> ClassPerformance | NumberPerformance:
         predicted = np.array([one.predicted for one in repeated])

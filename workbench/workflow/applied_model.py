@@ -50,7 +50,12 @@ class AppliedModel:
 
 
 def apply_model(
-    state: ProjectState, view: AnalysisView, there: AnalysisView, blocks: Sequence[str], components: int
+    state: ProjectState,
+    view: AnalysisView,
+    there: AnalysisView,
+    blocks: Sequence[str],
+    components: int,
+    alike: str,
 ) -> AppliedModel:
     """Predict the outcome of another project's samples.
 
@@ -67,6 +72,7 @@ def apply_model(
     blocks : sequence of str
         Blocks of the stored model.
     components : int
+    alike : {"features", "blocks"}
         Of the stored model, which is fitted again from the same values.
 
     Raises
@@ -81,7 +87,7 @@ def apply_model(
             "made for an outcome of the sample sheet"
         )
     split = blocks_of_split(whole_split(study), [study.predictors.index(name) for name in blocks])
-    model = fitted_model(study, split, components)
+    model = fitted_model(study, split, components, alike)
     samples = [
         s for s in map(str, there.sheet.index) if any(s in block.samples for block in there.blocks.values())
     ]

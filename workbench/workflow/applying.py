@@ -148,12 +148,12 @@ def _view_there(other: ProjectState, view: AnalysisView) -> AnalysisView:
     return AnalysisView(view.name, view.settings, other.settings, other.require_sheet(), blocks)
 
 
-def _stored(state: ProjectState, analysis: str) -> tuple[tuple[str, ...], int]:
-    """Return the blocks and the number of components of the stored model."""
+def _stored(state: ProjectState, analysis: str) -> tuple[tuple[str, ...], int, str]:
+    """Return the blocks of the stored model, its number of components, and what counts alike in it."""
     with h5py.File(check_file(state.root, f"results/{analysis}/model.h5"), "r") as file:
         held = set(file["blocks"])
         blocks = tuple(name for name in blocks_of(state.settings, analysis) if name in held)
-        return blocks, int(file["scores"].shape[1])
+        return blocks, int(file["scores"].shape[1]), str(file.attrs.get("alike", "blocks"))
 
 
 def _pairing_lines(view: AnalysisView, there: AnalysisView) -> list[str]:

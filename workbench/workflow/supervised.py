@@ -22,14 +22,14 @@ from workbench.workflow.supervised_drawings import supervised_view
 from workbench.workflow.supervised_fit import SupervisedResult, supervised_result
 from workbench.workflow.supervised_tables import (
     components_table,
-    describe,
     explained_table,
     panel_table,
     performance_table,
     predictions_table,
 )
+from workbench.workflow.supervised_words import describe
 
-VERSION = 1
+VERSION = 2
 TABLES = ("components.tsv", "performance.tsv", "panel.tsv", "explained.tsv", "predictions.tsv")
 FILES = (*TABLES, "model.h5", "supervised.txt")
 
@@ -99,6 +99,7 @@ def write_supervised_model(path: Path, result: SupervisedResult) -> None:
         file.attrs["method"] = "multiblock_pls"
         file.attrs["outcome"] = study.name
         file.attrs["kind"] = study.kind
+        file.attrs["alike"] = result.validation.alike
         file.create_dataset("units", data=list(study.units.names), dtype=text)
         file.create_dataset("levels", data=list(study.levels), dtype=text)
         file.create_dataset("scores", data=model.x_scores_)

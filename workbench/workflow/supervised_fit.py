@@ -18,6 +18,7 @@ from workbench.engine import (
     PanelSearch,
     double_validation,
 )
+from workbench.engine.double_arrangements import Arrangements, outcome_arrangements
 from workbench.errors import InputError, NumericsError
 from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.reporting import Reporter
@@ -30,10 +31,13 @@ from workbench.workflow.supervised_source import (
 )
 
 FloatArray = NDArray[np.float64]
+IndexArray = NDArray[np.intp]
 
 MOST_COMPONENTS = 8
 SAMPLES_EACH = 8
 """Units for each component that may be tried."""
+PANEL_PERMUTATIONS = 99
+"""Most arrangements of the outcome for which panels are chosen anew: each takes as long as a repeat of the search."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -100,8 +104,8 @@ def supervised_result(view: AnalysisView, reporter: Reporter) -> SupervisedResul
     study = supervised_study(view)
     split, outcome = whole_split(study), study.outcome
     sizes = [len(predictor_features(study, name)) for name in study.predictors]
-    search = None if study.kind == "block" else PanelSearch(outcome, sizes)
     settings, nuisance = view.settings, study.units.nuisance
+    search = None if study.kind == "block" else PanelSearch(outcome, sizes, arrangements=_panel_test(study))
     with reporter.progress("double cross-validation") as progress:
         try:
             validation = double_validation(
@@ -110,6 +114,7 @@ def supervised_result(view: AnalysisView, reporter: Reporter) -> SupervisedResul
                 nuisance=nuisance if nuisance.size else None,
                 subjects=study.units.folds,
                 strata=_strata(study),
+                exchange=exchange_levels(study),
                 candidates=candidates(study),
                 folds=settings.folds,
                 repeats=settings.repeats,
@@ -126,21 +131,36 @@ def supervised_result(view: AnalysisView, reporter: Reporter) -> SupervisedResul
     panel = None if search is None else search.panel(split)
     chosen = blocks_of_split(split, validation.blocks)
     names = tuple(study.predictors[b] for b in validation.blocks)
-    model = fitted_model(study, chosen, validation.components)
+    model = fitted_model(study, chosen, validation.components, validation.alike)
     return SupervisedResult(study, names, chosen, model, validation, panel)
 
 
+def _panel_test(study: SupervisedStudy) -> Arrangements:
+    """Arrangements of the outcome for the test of the panel."""
+    settings = study.view.settings
+    count = min(PANEL_PERMUTATIONS, settings.permutations)
+    return outcome_arrangements(
+        study.outcome.delivered,
+        count,
+        settings.seed,
+        subjects=study.units.folds,
+        exchange=exchange_levels(study),
+    )
+
+
 def fitted_model(
-    study: SupervisedStudy, split: BlockSplit, components: int
+    study: SupervisedStudy, split: BlockSplit, components: int, alike: str
 ) -> MultiblockPLS | MultiblockDiscriminant:
-    """Return the model of all units with a number of components."""
+    """Return the model of all units with a number of components, in which blocks or features count alike."""
     sizes, values = [part.shape[1] for part in split.train], np.hstack(split.train)
     outcome = study.outcome
     if isinstance(outcome, ClassOutcome):
-        return MultiblockDiscriminant(components, block_sizes=sizes).fit(values, outcome.labels[:, 0])
+        return MultiblockDiscriminant(components, block_sizes=sizes, alike=alike).fit(
+            values, outcome.labels[:, 0]
+        )
     assert isinstance(outcome, NumberOutcome)
     codes = outcome.codes(np.arange(study.n))[:, :, 0]
-    return MultiblockPLS(components, block_sizes=sizes).fit(values, codes)
+    return MultiblockPLS(components, block_sizes=sizes, alike=alike).fit(values, codes)
 
 
 def candidates(study: SupervisedStudy) -> tuple[int, ...]:
@@ -149,6 +169,20 @@ def candidates(study: SupervisedStudy) -> tuple[int, ...]:
     if asked != "auto":
         return (int(asked),)
     return tuple(range(1, max(1, min(MOST_COMPONENTS, study.n // SAMPLES_EACH)) + 1))
+
+
+def exchange_levels(study: SupervisedStudy) -> IndexArray | None:
+    """Levels of the nuisance within which classes are exchanged; None where they leave too few arrangements.
+
+    Numbers need none: their residuals from the nuisance are exchanged.
+    """
+    strata = _strata(study)
+    if strata is None or study.kind != "classes":
+        return None
+    levels = np.unique(strata, axis=0, return_inverse=True)[1].reshape(-1)
+    subjects = study.units.folds
+    tried = outcome_arrangements(study.outcome.delivered, 0, 0, subjects=subjects, exchange=levels)
+    return levels if tried.withheld is None else None
 
 
 def _strata(study: SupervisedStudy) -> NDArray[np.float64] | None:
