@@ -182,6 +182,7 @@ def main() -> None:
         description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter
     )
     parser.add_argument("--studies", type=int, default=400)
+    parser.add_argument("--first", type=int, default=0, help="seed of the first study")
     parser.add_argument("--only", default="", help="conditions whose name holds this")
     parser.add_argument("--part", default="0/1", help="every how manieth condition, as 0/3")
     chosen = parser.parse_args()
@@ -191,7 +192,7 @@ def main() -> None:
         if chosen.only not in one.name:
             continue
         start = time.perf_counter()
-        p = np.array([p_of(one, seed) for seed in range(chosen.studies)])
+        p = np.array([p_of(one, seed) for seed in range(chosen.first, chosen.first + chosen.studies)])
         found = int((p <= LEVEL).sum())
         if one.shared:
             fit, kind = binomtest(found, p.size, LEVEL, alternative="greater").pvalue, "binomial"

@@ -176,15 +176,18 @@ def test_the_account_is_the_planted_one() -> None:
 
 @pytest.mark.parametrize("lacking", [0, 5])
 def test_the_test_finds_the_shared_components_and_no_more(lacking: int) -> None:
-    """Two axes in three of four studies at least; nothing where nothing is shared."""
+    """Two axes in three of four studies at least; where nothing is shared one in two of six at most (0.002)."""
     axes = []
     for seed in range(4):
         blocks, _ = draw_blocks(30, seed, strength=2.0)
         blocks[2][:lacking] = np.nan
         axes.append(generalised_pair_test(blocks, permutations=99, components=4, random_state=seed).axes())
     assert sorted(axes)[:3] == [2, 2, 2]
-    none, _ = draw_blocks(30, 9, strength=0.0)
-    assert generalised_pair_test(none, permutations=99, random_state=0).axes() == 0
+    found = 0
+    for seed in range(9, 15):
+        none, _ = draw_blocks(30, seed, strength=0.0)
+        found += generalised_pair_test(none, permutations=99, random_state=seed).axes() > 0
+    assert found <= 2
 
 
 def test_what_cannot_be_done_is_refused() -> None:

@@ -8,9 +8,10 @@ from numpy.testing import assert_allclose
 from scipy.stats import binomtest
 
 from workbench.engine import canonical_pair_test
-from workbench.engine.pair_levels import PairLevel, carried_back
+from workbench.engine.pair_levels import PairLevel
 from workbench.engine.pair_rows import exchangeable_rows
 from workbench.engine.subjects import SubjectDesign, differences, subject_means
+from workbench.engine.turned_rows import TurnedRows
 from workbench.errors import NumericsError
 
 
@@ -30,11 +31,12 @@ def test_rearranged_rows_are_turned_out_of_what_was_removed() -> None:
     moved = np.linalg.qr(moved - removed @ (removed.T @ moved))[0][:, :9]
     moved -= removed @ (removed.T @ moved)
     order = rng.permutation(12)[None]
-    a, f = carried_back(moved, removed, order)
-    left, _, right = np.linalg.svd(a[0].T @ removed)
-    turned = moved[order[0]] - (a[0] + removed @ (left @ right).T) @ f[0]
+    rows = TurnedRows.of(order, removed)
+    turned = rows.rows(moved)[0]
     assert_allclose(removed.T @ turned, 0.0, atol=1e-12)
     assert_allclose(turned.T @ turned, moved.T @ moved, atol=1e-12)
+    assert_allclose(rows.forward(moved[:, :1]), turned[:, :1], atol=1e-12)
+    assert_allclose(moved.T @ rows.backward(turned[:, :1]), moved.T @ moved[:, :1], atol=1e-12)
 
 
 @pytest.mark.parametrize("pairs", [1, 2])

@@ -11,7 +11,7 @@ from scipy.linalg import block_diag, eigh
 from scipy.stats import kstest
 
 from workbench.engine import canonical_pair_test
-from workbench.engine.canonical import RIDGE_PATH
+from workbench.engine.pair_statistics import TEST_PATH
 from workbench.engine.permutation import clearly_large
 from workbench.engine.smallest_p import SmallestP
 from workbench.errors import NumericsError
@@ -97,7 +97,7 @@ def test_statistics_are_those_of_the_primal_problem(p: int, q: int, c: int) -> N
     design = np.ones((15, 1)) if columns is None else np.column_stack([np.ones(15), columns])
     a, b = (side - design @ np.linalg.lstsq(design, side, rcond=None)[0] for side in (x, y))
     a, b = (side * np.sqrt(test.freedom) / np.linalg.norm(side, axis=0) for side in (a, b))
-    for k, multiple in enumerate(RIDGE_PATH):
+    for k, multiple in enumerate(TEST_PATH):
         roots = primal_roots(a, b, multiple)
         assert_allclose(test.observed[1, k], roots[-1] ** 2, rtol=1e-8)
         assert_allclose(test.observed[0, k], -np.log1p(-(roots**2)).sum(), rtol=1e-7)

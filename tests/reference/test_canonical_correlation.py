@@ -76,7 +76,7 @@ def test_wine_chemistry_is_shared_and_the_fitness_data_are_at_the_edge() -> None
     """P of the first pair: far below 0.01 in 178 wines; 20 men give about Wilks' printed 0.06.
 
     Wilks' lambda of the fitness club data has an F approximation with p = 0.0635 in the same chapter (quoted
-    from memory); ours has other ridges and 18 statistics, so that only the neighbourhood can agree.
+    from memory); ours has other ridges and 10 statistics, so that only the neighbourhood can agree.
     """
     assert canonical_pair_test(*wine(), permutations=199, random_state=0).p == 1 / 200
     fitness = canonical_pair_test(*linnerud(), permutations=1999, random_state=0, early_stop=False)

@@ -96,7 +96,7 @@ class Exchange:
         every : bool
             Enumerate them in lexicographic order instead of drawing them.
         seed : SeedSequence
-            Arrangement ``i`` is drawn from the seed and ``i``, so that it does not depend on the batches.
+            Arrangements are drawn one after the other: they do not depend on the batches.
         batch : int
             Arrangements at a time; the last batch may be smaller.
 
@@ -118,12 +118,9 @@ class Exchange:
         return (self._arranged([np.array(one) for one in order]) for order in islice(orders, 1, None))
 
     def _drawn(self, seed: np.random.SeedSequence) -> Iterator[IndexArray]:
-        i = 0
+        draw = np.random.default_rng(seed)
         while True:
-            key = (*seed.spawn_key, i)
-            draw = np.random.default_rng(np.random.SeedSequence(seed.entropy, spawn_key=key))
             yield self._arranged([draw.permutation(len(units)) for units in self.classes])
-            i += 1
 
     def _arranged(self, orders: list[IndexArray]) -> IndexArray:
         arrangement = np.arange(self.size)

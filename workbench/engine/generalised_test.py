@@ -12,21 +12,19 @@ import scipy.linalg
 from numpy.typing import NDArray
 
 from workbench.engine.arrangements import Exchange
-from workbench.engine.canonical import RIDGE_PATH
 from workbench.engine.generalised_blocks import held_rows
 from workbench.engine.generalised_components import PlacedBasis, generalised_components
 from workbench.engine.linear import RANK_TOLERANCE, ThinBasis, thin_basis
-from workbench.engine.pair_levels import REMOVAL_RIDGE, carried_back, orthonormal
+from workbench.engine.pair_levels import BATCH_NUMBERS, NARROW, REMOVAL_RIDGE, orthonormal
 from workbench.engine.pair_rows import Level, design_of, exchangeable_rows
+from workbench.engine.pair_statistics import TEST_PATH, largest_roots, wilks_statistics
 from workbench.engine.permutation import LEVEL, PairTest, level_test
 from workbench.engine.subjects import SubjectDesign, differences, subject_means
+from workbench.engine.turned_rows import TurnedRows
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
-
-PATH: FloatArray = RIDGE_PATH[::2]
-BATCH_NUMBERS = 2**19
 
 
 @dataclass(frozen=True, eq=False)
@@ -42,17 +40,19 @@ class MovedBlock:
     invariant: FloatArray
     exchange: Exchange
 
-    def arranged(self, arrangements: IndexArray) -> FloatArray:
-        """Rearranged rows of ``U``, placed among all samples, (n_arrangements, n_samples, rank)."""
-        vectors = self.placed.basis.vectors
-        moved: FloatArray = vectors[arrangements]
-        if self.carried.shape[1]:
-            a, f = carried_back(vectors, self.carried, arrangements)
-            left, _, right = np.linalg.svd(a.transpose(0, 2, 1) @ self.carried)
-            turned = self.carried @ (left @ right).transpose(0, 2, 1)
-            moved = moved - (a + turned) @ f
-        every = np.zeros((len(arrangements), self.placed.n, vectors.shape[1]))
-        every[:, self.placed.rows] = moved
+    def rows(self, turned: TurnedRows, vectors: FloatArray) -> FloatArray:
+        """Rearranged rows of vectors placed among all samples, (n_arrangements, n_samples, n_columns)."""
+        every = np.zeros((len(turned.order), self.placed.n, vectors.shape[1]))
+        every[:, self.placed.rows] = turned.rows(vectors)
+        return every
+
+    def kernels(self, turned: TurnedRows) -> FloatArray:
+        """Kernel of rearranged rows in units of the noise level, (n_arrangements, n_samples, n_samples)."""
+        basis, rows = self.placed.basis, self.placed.rows
+        every = np.zeros((len(turned.order), self.placed.n, self.placed.n))
+        every[:, rows[:, None], rows] = turned.kernels(
+            basis.vectors * (basis.lengths / np.sqrt(self.noise_level))
+        )
         return every
 
     def without(self, columns: FloatArray, moves: bool) -> MovedBlock | None:
@@ -88,33 +88,80 @@ class GeneralisedLevel:
     @property
     def path(self) -> FloatArray:
         """Ridges of the test, in multiples of each block's noise level."""
-        return PATH
+        return TEST_PATH
 
     @property
     def batch(self) -> int:
-        """Arrangements whose matrices fit a processor's cache, from 1 to 100."""
-        rank = sum(block.placed.basis.rank for block in self.blocks)
-        return int(np.clip(BATCH_NUMBERS // rank**2, 1, 100))
+        """Arrangements at a time, so many that their matrices take some megabytes, from 1 to 100."""
+        size = max(sum(block.placed.basis.rank for block in self.blocks), self.blocks[0].placed.n)
+        return int(np.clip(BATCH_NUMBERS // size**2, 1, 100))
 
     def statistics_of(self, arrangements: IndexArray) -> FloatArray:
-        """``-log det R`` and the largest root of ``R`` at every ridge, shape (n_arrangements, 10)."""
-        moved, start = [], 0
+        """``-log det R`` and the largest root of ``R`` at every ridge, shape (n_arrangements, 10).
+
+        From the eigenvalues of ``R`` where the blocks have few directions, else by
+        :mod:`workbench.engine.pair_statistics`.
+        """
+        turned, start = [], 0
         for block in self.blocks:
-            size = block.placed.rows.size
-            moved.append(block.arranged(arrangements[:, start : start + size] - start))
-            start += size
-        together = np.concatenate(moved, axis=2)
+            order = arrangements[:, start : start + block.placed.rows.size] - start
+            turned.append(TurnedRows.of(order, block.carried))
+            start += block.placed.rows.size
+        bases = [block.placed.basis for block in self.blocks]
+        if sum(basis.rank for basis in bases) <= 2 * NARROW:
+            return self._narrow(turned)
+        kernels = sum(block.kernels(one) for block, one in zip(self.blocks, turned, strict=True))
+        wilks = wilks_statistics(np.asarray(kernels), bases, [block.noise_level for block in self.blocks])
+        roots = [self._roots(turned, multiple) for multiple in TEST_PATH.tolist()]
+        return np.column_stack([wilks, *roots])
+
+    def _narrow(self, turned: Sequence[TurnedRows]) -> FloatArray:
+        together = np.concatenate(
+            [
+                block.rows(one, block.placed.basis.vectors)
+                for block, one in zip(self.blocks, turned, strict=True)
+            ],
+            axis=2,
+        )
         products = together.transpose(0, 2, 1) @ together
         ranks = [block.placed.basis.rank for block in self.blocks]
         owner = np.repeat(np.arange(len(ranks)), ranks)
         products[:, owner[:, None] == owner] = 0.0
-        wilks, roots = np.empty((2, len(arrangements), PATH.size))
-        for k, multiple in enumerate(PATH):
-            g = np.concatenate([b.placed.basis.shrinkage(multiple * b.noise_level) for b in self.blocks])
+        wilks, roots = np.empty((2, len(products), TEST_PATH.size))
+        for k, multiple in enumerate(TEST_PATH.tolist()):
+            g = np.concatenate(self._shrinkages(multiple))
             values = np.linalg.eigvalsh(g[:, None] * products * g)
             wilks[:, k] = -np.log(np.maximum(1.0 + values, np.finfo(float).eps)).sum(axis=1)
             roots[:, k] = 1.0 + values[:, -1]
         return np.hstack([wilks, roots])
+
+    def _roots(self, turned: Sequence[TurnedRows], multiple: float) -> FloatArray:
+        """Largest eigenvalue of ``R`` at one ridge: 1 more than that of its blocks ``A_b'A_c`` alone."""
+        shrunk = [
+            block.placed.basis.vectors * g
+            for block, g in zip(self.blocks, self._shrinkages(multiple), strict=True)
+        ]
+        ends = np.cumsum([one.shape[1] for one in shrunk])
+
+        def others(columns: FloatArray) -> FloatArray:
+            variates = [
+                block.placed.placed(one.forward(a @ w))
+                for block, one, a, w in zip(
+                    self.blocks, turned, shrunk, np.split(columns, ends[:-1]), strict=True
+                )
+            ]
+            total = np.sum(variates, axis=0)
+            return np.vstack(
+                [
+                    a.T @ one.backward((total - own)[block.placed.rows])
+                    for block, one, a, own in zip(self.blocks, turned, shrunk, variates, strict=True)
+                ]
+            )
+
+        return 1.0 + largest_roots(others, int(ends[-1]), len(turned[0].order))
+
+    def _shrinkages(self, multiple: float) -> list[FloatArray]:
+        return [block.placed.basis.shrinkage(multiple * block.noise_level) for block in self.blocks]
 
     def without(self, components: int) -> GeneralisedLevel | None:
         """Return the level behind the first components: all blocks' variates removed from every block."""

@@ -4,21 +4,24 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import partial
 
 import numpy as np
 import scipy.linalg
 from numpy.typing import NDArray
 
 from workbench.engine.arrangements import Exchange
-from workbench.engine.canonical import RIDGE_PATH
 from workbench.engine.linear import RANK_TOLERANCE, ThinBasis, thin_basis
 from workbench.engine.pair_rows import ExchangeableRows, residual_basis
+from workbench.engine.pair_statistics import TEST_PATH, largest_roots, wilks_statistics
+from workbench.engine.turned_rows import TurnedRows
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
 
 REMOVAL_RIDGE = 0.1
-BATCH_NUMBERS = 2**19
+BATCH_NUMBERS = 2**20
+NARROW = 24
 LARGEST_SQUARE = 1.0 - np.finfo(float).eps
 
 
@@ -26,7 +29,7 @@ LARGEST_SQUARE = 1.0 - np.finfo(float).eps
 class PairLevel:
     """Both sides as they stand before the next pair; the side of higher rank is rearranged.
 
-    What an arrangement needs is ``U_x' U_y`` of rearranged rows: nothing of the features' size.
+    What an arrangement needs is of the samples' size, never of the features'.
 
     Attributes
     ----------
@@ -59,7 +62,7 @@ class PairLevel:
     @property
     def path(self) -> FloatArray:
         """Ridges of the test, in multiples of each side's noise level."""
-        return RIDGE_PATH
+        return TEST_PATH
 
     @property
     def rank(self) -> int:
@@ -68,20 +71,44 @@ class PairLevel:
 
     @property
     def batch(self) -> int:
-        """Arrangements whose matrices fit a processor's cache, from 1 to 100."""
+        """Arrangements at a time, so many that their matrices take some megabytes, from 1 to 100."""
         return int(np.clip(BATCH_NUMBERS // self.moved.rank**2, 1, 100))
 
     def statistics_of(self, arrangements: IndexArray) -> FloatArray:
-        """Both statistics at every ridge, shape (n_arrangements, 18): Wilks-type ones first."""
-        meetings = self._meetings(arrangements)
-        wilks, roots = np.empty((2, len(arrangements), RIDGE_PATH.size))
-        for k, multiple in enumerate(RIDGE_PATH):
-            g_moved, g_still = self._shrinkages(float(multiple))
+        """Both statistics at every ridge, shape (n_arrangements, 10): Wilks-type ones first.
+
+        From the singular values of ``M`` where the still side has few directions, else by
+        :mod:`workbench.engine.pair_statistics`.
+        """
+        turned = TurnedRows.of(arrangements, self.carried)
+        if self.still.rank <= NARROW:
+            return self._narrow(turned)
+        blocks, still = (self.moved, self.still), _weighted(self.still, self.noise_levels[1])
+        kernels = turned.kernels(_weighted(self.moved, self.noise_levels[0]))
+        kernels += still @ still.T
+        return np.hstack([wilks_statistics(kernels, blocks, self.noise_levels), self._roots(turned)])
+
+    def _narrow(self, turned: TurnedRows) -> FloatArray:
+        meetings = turned.rows(self.moved.vectors).transpose(0, 2, 1) @ self.still.vectors
+        wilks, roots = np.empty((2, len(meetings), TEST_PATH.size))
+        for k, multiple in enumerate(TEST_PATH.tolist()):
+            g_moved, g_still = self._shrinkages(multiple)
             m = g_moved[:, None] * meetings * g_still
             squares = np.linalg.eigvalsh(m.transpose(0, 2, 1) @ m).clip(0.0, LARGEST_SQUARE)
             wilks[:, k] = -np.log1p(-squares).sum(axis=1)
             roots[:, k] = squares[:, -1]
         return np.hstack([wilks, roots])
+
+    def _roots(self, turned: TurnedRows) -> FloatArray:
+        """Largest eigenvalue of ``M'M = G'P'SPG`` at every ridge, ``S`` the moved side's smoother ``K(K + l)^(-1)``."""
+        roots = np.empty((len(turned.order), TEST_PATH.size))
+        for k, multiple in enumerate(TEST_PATH.tolist()):
+            g_moved, g_still = self._shrinkages(multiple)
+            still = self.still.vectors * g_still
+            smoother = (self.moved.vectors * g_moved**2) @ self.moved.vectors.T
+            squared = partial(_squared, turned, still, smoother)
+            roots[:, k] = largest_roots(squared, still.shape[1], len(roots))
+        return roots
 
     def without(self, pairs: int) -> PairLevel | None:
         """Return the level behind the first ``pairs`` pairs: their variates ``u`` and ``v`` removed from both sides.
@@ -125,50 +152,23 @@ class PairLevel:
         v = self.still.vectors @ (g_still[:, None] * right[:pairs].T)
         return orthonormal([self.carried, u, v])
 
-    def _meetings(self, arrangements: IndexArray) -> FloatArray:
-        """``U' P' U`` of rearranged rows, shape (n_arrangements, rank_moved, rank_still)."""
-        meetings: FloatArray = self.moved.vectors[arrangements].transpose(0, 2, 1) @ self.still.vectors
-        if self.carried.shape[1]:
-            a, f = carried_back(self.moved.vectors, self.carried, arrangements)
-            meetings = meetings - f.transpose(0, 2, 1) @ (a.transpose(0, 2, 1) @ self.still.vectors)
-        return meetings
-
-
-def carried_back(
-    moved: FloatArray, removed: FloatArray, arrangements: IndexArray
-) -> tuple[FloatArray, FloatArray]:
-    """Parts ``A`` and ``F`` by which rearranged rows are turned out of the removed directions again.
-
-    With ``B`` orthonormal and ``A = PB``, the smallest rotation that takes the span of ``A`` to that of ``B``
-    maps ``y = P u`` (``u`` orthogonal to ``B``, so ``y`` to ``A``) to ``y - (A + B~)(I + A'B~)^(-1) B~'y``,
-    ``B~ = BQ'`` with ``Q`` the polar factor of ``A'B``. Seen from vectors orthogonal to ``B`` only ``A`` counts:
-    ``x'Ry = x'y - (x'A) F``.
-
-    Parameters
-    ----------
-    moved : ndarray of shape (n_rows, rank)
-        Orthogonal to ``removed``.
-    removed : ndarray of shape (n_rows, n_carried)
-        ``B``.
-    arrangements : ndarray of int, shape (n_arrangements, n_rows)
-
-    Returns
-    -------
-    tuple of ndarray
-        ``A`` of shape (n_arrangements, n_rows, n_carried) and ``F`` of shape (n_arrangements, n_carried, rank).
-    """
-    a = removed[arrangements]
-    # A'B = L S R', so that A'B~ = L S L' and B~ = B R L'.
-    left, lengths, right = np.linalg.svd(a.transpose(0, 2, 1) @ removed)
-    inverse = (left / (1.0 + lengths[:, None, :])) @ right
-    return a, inverse @ (removed.T @ moved[arrangements])
-
 
 def orthonormal(columns: Sequence[FloatArray]) -> FloatArray:
     """Orthonormal basis of the span of columns, each scaled to length one first."""
     every = np.hstack(columns)
     basis: FloatArray = np.linalg.qr(every / np.linalg.norm(every, axis=0))[0]
     return basis
+
+
+def _squared(turned: TurnedRows, still: FloatArray, smoother: FloatArray, columns: FloatArray) -> FloatArray:
+    product: FloatArray = still.T @ turned.forward(smoother @ turned.backward(still @ columns))
+    return product
+
+
+def _weighted(basis: ThinBasis, noise_level: float) -> FloatArray:
+    """``W`` with ``WW'`` the kernel in units of the noise level."""
+    weighted: FloatArray = basis.vectors * (basis.lengths / np.sqrt(noise_level))
+    return weighted
 
 
 def _without(basis: ThinBasis, removed: FloatArray) -> ThinBasis | None:

@@ -46,12 +46,12 @@ class PairTest:
         Why there is no p.
     statistics : tuple of str
         ``wilks``: ``-log det(I - M'M)``; ``largest_root``: the largest eigenvalue of ``M'M``.
-    ridge_multiples : ndarray of shape (9,)
+    ridge_multiples : ndarray of shape (5,)
         Ridges, in multiples of each side's noise level.
-    observed : ndarray of shape (2, 9)
+    observed : ndarray of shape (2, 5)
         Each statistic at each ridge.
-    p_by_ridge : ndarray of shape (2, 9)
-        Permutation p of each alone, NaN when withheld; ``p`` accounts for there being 18 of them.
+    p_by_ridge : ndarray of shape (2, 5)
+        Permutation p of each alone, NaN when withheld; ``p`` accounts for there being 10 of them.
     freedom : int
         Degrees of freedom ``n - c``, less two for each earlier pair.
     exchanged : str
@@ -106,8 +106,8 @@ def canonical_pair_test(
     """Test that the two sides share nothing, against a first canonical pair, then a second, and so on.
 
     The rows of one side are rearranged, and two statistics of the ridge problem's ``M`` recomputed in sample
-    space at each of 9 ridges over four decades (the same multiple of the noise level on both sides); p is the
-    permutation p of the smallest of the 18 p (:func:`smallest_p`). With a nuisance, the rows of an orthonormal
+    space at each of 5 ridges over four decades (the same multiple of the noise level on both sides); p is the
+    permutation p of the smallest of the 10 p (:func:`smallest_p`). With a nuisance, the rows of an orthonormal
     basis of the ``n - c`` dimensions that it leaves are permuted in place of the samples: exact for normal
     errors, close otherwise. Without, exact for samples that are exchangeable.
 
