@@ -35,6 +35,7 @@ def cohort(
     *,
     shift: float = 0.7,
     lost: int = 0,
+    raised: int = 1,
     sheet: dict[str, object] | None = None,
     group: str | None = "status",
     adjust: tuple[str, ...] = ("age",),
@@ -45,7 +46,8 @@ def cohort(
     """Return a project of one cohort.
 
     The first 12 genes and 5 compounds are raised by ``shift`` (natural logarithm) in ill samples, the next 15 and
-    8 share a factor. The first ``lost`` genes are not measured; ``extra`` genes have a mean count for each status.
+    8 share a factor. The first ``lost`` genes are not measured, every second one has ``raised`` times the
+    counts; ``extra`` genes have a mean count for each status.
     """
     features, rng = np.random.default_rng(99), np.random.default_rng(seed)
     folder.mkdir(parents=True, exist_ok=True)
@@ -61,6 +63,7 @@ def cohort(
     shown = (frame["status"] == "well").to_numpy(dtype=float)
     logs = features.normal(4.5, 1.0, GENES) + rng.normal(0, 0.4, (n, GENES))
     logs[:, :12] += shift * shown[:, None]
+    logs[:, ::2] += np.log(raised)
     logs[:, 12:27] += 0.5 * factor[:, None]
     counts = pd.DataFrame(rng.poisson(np.exp(logs)), index=samples, columns=[f"g{k}" for k in range(GENES)])
     for name, means in (extra or {}).items():

@@ -1,95 +1,159 @@
 """Nothing leaks: studies of pure noise, everything that can be learnt inside; run by hand.
 
-Each study: two blocks (200 + 60 features) with 5 % gaps and one strong private factor each, two classes at random. In
-every training part gaps are filled (nearest neighbours of the training samples), private variation is removed, the
-panel is chosen; 99 permutations. ``python tests/benchmarks/supervised_null.py N STUDIES KIND`` with KIND plain (no
-gaps, no removal), full, or subjects (three samples of each subject, class by subject; N of 36 at least, since fewer
-than 120 arrangements of subjects have no p).
+Each study has two blocks (120 + 50 features) with one strong private factor each and an outcome that has nothing to
+do with them; one repeat, 99 permutations. ``python tests/benchmarks/supervised_null.py KIND N [STUDIES [FIRST]]``
+with KIND
 
-Measured on two blocks of noise without gaps and removal, 200 studies of 24, one repeat: balanced accuracy 0.504,
-p <= 0.05 in 0.040, uniform by Kolmogorov-Smirnov p = 0.68. Full, 12 studies of 24: balanced accuracy 0.510, of panels
-0.580, p <= 0.05 in 0.083: too few studies to say more.
+- ``classes``: two classes at random; ``number``: a normal outcome;
+- ``panel``: two classes, 5 % gaps; gaps are filled (nearest neighbours of the training samples) and a panel is chosen
+  in every training part, its p from 99 permutations too;
+- ``subjects``: three samples of each subject with features of its own, the class is the subject's;
+- ``visits``: two samples of each subject, the class is the visit, changes within subjects;
+- ``nuisance``: two classes, 80 % of a class in one of two batches and an age 1.2 standard deviations apart, both
+  regressed out of the blocks, which depend on them; classes exchanged within batches.
+
+``python tests/benchmarks/supervised_null.py summary FILE...`` puts together what pieces printed.
 """
 
 from __future__ import annotations
 
 import sys
-import time
+from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
 from scipy.stats import kstest
 from sklearn.impute import KNNImputer
 
-from workbench.engine import ClassOutcome, PanelSearch, SubjectDesign, block_source, double_validation
-from workbench.engine.private_removal import PrivateRemoval
+from workbench.engine import (
+    ClassOutcome,
+    NumberOutcome,
+    PanelSearch,
+    SubjectDesign,
+    block_source,
+    centred,
+    double_validation,
+)
+from workbench.engine.double_arrangements import outcome_arrangements
 
 FloatArray = NDArray[np.float64]
+IndexArray = NDArray[np.intp]
 Blocks = tuple[FloatArray, ...]
 
+SIZES = (120, 50)
+PERMUTATIONS = 99
+SAMPLES_OF_A_SUBJECT = {"subjects": 3, "visits": 2}
 
-def prepare(train: Blocks, test: Blocks) -> tuple[Blocks, Blocks]:
-    """Fill gaps and remove private variation, learnt from the training rows."""
-    filled = [KNNImputer(n_neighbors=5, keep_empty_features=True).fit(x) for x in train]
-    x, z = ([one.transform(part) for one, part in zip(filled, rows, strict=True)] for rows in (train, test))
-    removals = [PrivateRemoval.fit(x[b], [x[1 - b]]) for b in (0, 1)]
-    return (
-        tuple(removal.transform(part) for removal, part in zip(removals, x, strict=True)),
-        tuple(removal.transform(part) for removal, part in zip(removals, z, strict=True)),
+
+def filled(train: Blocks, test: Blocks) -> tuple[Blocks, Blocks]:
+    """Fill gaps by what the training rows teach."""
+    learnt = [KNNImputer(n_neighbors=5, keep_empty_features=True).fit(x) for x in train]
+    x, z = (
+        tuple(one.transform(part) for one, part in zip(learnt, rows, strict=True)) for rows in (train, test)
     )
+    return x, z
 
 
-def study(
-    n: int, kind: str, rng: np.random.Generator
-) -> tuple[NDArray[np.intp], list[FloatArray], SubjectDesign | None]:
-    """Return classes, blocks and subjects of one study."""
-    subject = np.arange(n) if kind != "subjects" else np.arange(n) // 3
+def noise(n: int, subject: IndexArray, nuisance: FloatArray, rng: np.random.Generator) -> list[FloatArray]:
+    """Blocks of noise: a private factor, the subject's own level, and what the nuisance does to each feature."""
+    count, blocks = subject[-1] + 1, []
+    for p in SIZES:
+        own = rng.normal(size=(n, 1)) @ rng.normal(size=(1, p))
+        person = rng.normal(size=(count, p))[subject] if count < n else 0.0
+        shifted = nuisance @ rng.normal(size=(nuisance.shape[1], p))
+        blocks.append(rng.normal(size=(n, p)) + own + person + shifted)
+    return blocks
+
+
+def tangled(labels: IndexArray, rng: np.random.Generator) -> FloatArray:
+    """Return a batch and an age that go with the classes."""
+    batch = np.where(rng.random(labels.size) < 0.8, labels, 1 - labels)
+    return np.column_stack([batch, 1.2 * labels + rng.normal(size=labels.size)]).astype(np.float64)
+
+
+def study(kind: str, n: int, seed: int) -> tuple[float, float, float, float]:
+    """Balanced accuracy (Q2 of a number), p, and the same of the panel (NaN without one)."""
+    rng = np.random.default_rng(7000 + seed)
+    subject = np.arange(n) // SAMPLES_OF_A_SUBJECT.get(kind, 1)
     count = subject[-1] + 1
-    labels = rng.permutation(np.arange(count) % 2)[subject]
-    blocks = []
-    for p in (200, 60):
-        own = rng.normal(size=(count, 1))[subject] @ rng.normal(size=(1, p))
-        persons = rng.normal(size=(count, p))[subject] if kind == "subjects" else 0.0
-        x = rng.normal(size=(n, p)) + own + persons
-        if kind != "plain":
-            x[rng.random(x.shape) < 0.05] = np.nan
-        blocks.append(x)
-    return labels, blocks, SubjectDesign.of(subject) if kind == "subjects" else None
+    labels = np.arange(n) % 2 if kind == "visits" else rng.permutation(np.arange(count) % 2)[subject]
+    nuisance = tangled(labels, rng) if kind == "nuisance" else np.empty((n, 0))
+    outcome = NumberOutcome.of(rng.normal(size=n)) if kind == "number" else ClassOutcome.of(labels)
+    blocks = noise(n, subject, nuisance, rng)
+    design = SubjectDesign.of(subject, np.arange(n) if kind == "visits" else None) if count < n else None
+    if kind == "visits" and design is not None:
+        blocks = [centred(design, x) for x in blocks]
+    if kind == "panel":
+        blocks = [np.where(rng.random(x.shape) < 0.05, np.nan, x) for x in blocks]
+    source = block_source(blocks, nuisance if nuisance.size else None, filled if kind == "panel" else None)
+    drawn = outcome_arrangements(outcome.delivered, PERMUTATIONS, seed, subjects=design)
+    search = PanelSearch(outcome, SIZES, components=(1, 2), largest=20, arrangements=drawn)
+    found = double_validation(
+        source,
+        outcome,
+        nuisance=nuisance,
+        subjects=design,
+        strata=nuisance[:, :1] if nuisance.size else None,
+        exchange=nuisance[:, 0] if nuisance.size else None,
+        repeats=1,
+        permutations=PERMUTATIONS,
+        seed=seed,
+        candidates=(1, 2, 3, 4),
+        observe=search if kind == "panel" else None,
+    )
+    told = figure(found.model.performance), chance(found.test.p)
+    if kind != "panel":
+        return *told, np.nan, np.nan
+    every = np.arange(n)
+    panel = search.panel(source(every, every))
+    return *told, figure(panel.performance), chance(panel.test.p if panel.test is not None else None)
 
 
-def main(n: int, studies: int, kind: str) -> None:
-    """Measure and print."""
-    accuracy, panels, p, start = [], [], [], time.process_time()
-    for seed in range(studies):
-        labels, blocks, subjects = study(n, kind, np.random.default_rng(7000 + seed))
-        outcome = ClassOutcome.of(labels)
-        search = PanelSearch(outcome, [200, 60], components=(1, 2), largest=40)
-        source = block_source(blocks, prepare=None if kind == "plain" else prepare)
-        found = double_validation(
-            source,
-            outcome,
-            subjects=subjects,
-            repeats=1,
-            permutations=99,
-            seed=seed,
-            candidates=(1, 2, 3, 4),
-            observe=search,
-        )
-        every = np.arange(n)
-        accuracy.append(found.model.performance.balanced_accuracy.mean())
-        panels.append(search.panel(source(every, every)).performance.balanced_accuracy.mean())
-        p.append(found.test.p)
-        if seed % 4 == 3 or seed == studies - 1:
-            values = np.array([one for one in p if one is not None])
-            uniform = kstest(values - 0.005, "uniform").pvalue if values.size else np.nan
-            small = (values <= 0.05).mean() if values.size else np.nan
-            print(
-                f"{kind} n={n}, {seed + 1} studies, {time.process_time() - start:.0f} s: balanced accuracy "
-                f"{np.mean(accuracy):.4f}, of panels {np.mean(panels):.4f}; p <= 0.05 in {small:.3f} of {values.size}, "
-                f"uniform by Kolmogorov-Smirnov p = {uniform:.2f}",
-                flush=True,
+def figure(performance: object) -> float:
+    """Balanced accuracy, or Q2."""
+    values = getattr(performance, "balanced_accuracy", None)
+    return float(np.mean(performance.q2 if values is None else values))  # type: ignore[attr-defined]
+
+
+def chance(p: float | None) -> float:
+    """NaN where p was withheld."""
+    return np.nan if p is None else p
+
+
+def summary(rows: NDArray[np.float64]) -> str:
+    """Means with standard errors; how p is spread."""
+    words = []
+    for name, figures, p in (("model", rows[:, 0], rows[:, 1]), ("panel", rows[:, 2], rows[:, 3])):
+        if np.isnan(figures).all():
+            continue
+        held = p[np.isfinite(p)]
+        spread = (
+            "no p"
+            if not held.size
+            else (
+                f"p <= 0.05 in {(held <= 0.05).mean():.3f}, <= 0.1 in {(held <= 0.1).mean():.3f} of {held.size}, "
+                f"Kolmogorov-Smirnov p = {kstest(held - 0.5 / (PERMUTATIONS + 1), 'uniform').pvalue:.2f}"
             )
+        )
+        error = figures.std(ddof=1) / np.sqrt(figures.size)
+        words.append(f"{name} {figures.mean():.4f} +- {error:.4f}; {spread}")
+    return f"{len(rows)} studies: " + "; ".join(words)
+
+
+def main(words: list[str]) -> None:
+    """Measure and print, or put pieces together."""
+    if words[0] == "summary":
+        lines = [line.split("\t") for path in words[1:] for line in Path(path).read_text().splitlines()]
+        print(summary(np.array([[float(x) for x in line[3:7]] for line in lines if len(line) == 7])))
+        return
+    kind, n = words[0], int(words[1])
+    studies, first = (int(words[k]) if len(words) > k else default for k, default in ((2, 200), (3, 0)))
+    rows = []
+    for seed in range(first, first + studies):
+        rows.append(study(kind, n, seed))
+        print(kind, n, seed, *rows[-1], sep="\t", flush=True)
+    print(summary(np.array(rows)))
 
 
 if __name__ == "__main__":
-    main(int(sys.argv[1]), int(sys.argv[2]), sys.argv[3])
+    main(sys.argv[1:])

@@ -56,6 +56,20 @@ def test_features_that_are_missing_there_are_listed_with_their_weight(applied):
     assert any(line.startswith("4 of ") and "are not there" in line for line in applied.lines)
 
 
+def test_levels_that_another_batch_moved_are_told_and_not_recentred(cohorts, applied, tmp_path):
+    """Every second gene raised fourfold there: about half are listed; the same cohort as it was has next to none."""
+    moved = cohort(tmp_path / "B", 2, 50, raised=4)
+    moved.prepare()
+    found = apply_analysis(cohorts[0].paths, "main", moved.paths.root, write=False)
+    warning = [line for line in found.lines if line.startswith("levels there")]
+    assert len(warning) == 1
+    assert "block rna" in warning[0]
+    assert "Nothing was recentred" in warning[0]
+    assert found.shifted["block"].eq("rna").sum() > 0.35 * 120
+    assert not any(line.startswith("levels there") for line in applied.lines)
+    assert len(applied.shifted) < 0.1 * 160
+
+
 def test_planted_edges_replicate_and_others_do_not(applied):
     edges = applied.edges
     assert edges["replicates"].iloc[:12].mean() > 0.8
@@ -120,7 +134,9 @@ def test_the_command_answers_and_writes(cohorts, command):
     assert "balanced accuracy" in out
     folder = first.paths.analysis("main") / "applied" / second.paths.root.name
     names = {path.name for path in folder.iterdir()}
-    assert names == {"predictions.tsv", "performance.tsv", "missing.tsv", "edges.tsv", "applied.txt"}
+    assert names == {
+        f"{table}.tsv" for table in ("predictions", "performance", "missing", "shifted", "edges")
+    } | {"applied.txt"}
     code, out, _ = command(*words, "--json")
     assert json.loads(out)["schema_version"] == 1
     assert first.check_files() == []

@@ -49,6 +49,7 @@ def _as_json(applied: Applied) -> str:
             ("predictions", applied.predictions),
             ("performance", applied.performance),
             ("missing", applied.missing),
+            ("shifted", applied.shifted),
             ("edges", applied.edges),
         )
     }

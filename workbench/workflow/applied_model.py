@@ -21,6 +21,7 @@ from workbench.errors import InputError, WorkbenchError
 from workbench.intake.kinds import column_numbers, present
 from workbench.prepare import MeasuredTable, recipe_for
 from workbench.workflow.analysis_view import AnalysisView
+from workbench.workflow.applied_shift import shifted_levels
 from workbench.workflow.preparing import SEED, smallest_group
 from workbench.workflow.state import ProjectState
 from workbench.workflow.subjects import subject_design
@@ -41,11 +42,12 @@ FEWEST = 3
 
 @dataclass(frozen=True, eq=False)
 class AppliedModel:
-    """Predictions there, their figures where the outcome is known, and the features that are missing there."""
+    """Predictions there, their figures where the outcome is known, the features that are missing or shifted there."""
 
     predictions: pd.DataFrame
     performance: pd.DataFrame | None
     missing: pd.DataFrame
+    shifted: pd.DataFrame
     lines: tuple[str, ...]
 
 
@@ -105,6 +107,8 @@ def apply_model(
     missing, cost = _missing_table(study, blocks, split.kept, absent, model.coef_, model.vip_)
     lines += _missing_lines(missing, cost, x.shape[1])
     lines += _lacking_lines(blocks, parts, rows)
+    shifted, warnings = _shifted(study, blocks, split.kept, absent, parts)
+    lines += warnings
     names = tuple(name for name, held in zip(units.names, rows, strict=True) if held)
     truth = _truth(study, there, units, samples)[rows]
     if isinstance(model, MultiblockDiscriminant):
@@ -112,7 +116,21 @@ def apply_model(
     else:
         total = _numbers(study, model, x[rows], nuisance[rows] if nuisance.size else None)
         predictions, performance, said = _number_figures(study, total, names, truth)
-    return AppliedModel(predictions, performance, missing, (*lines, *said))
+    return AppliedModel(predictions, performance, missing, shifted, (*lines, *said))
+
+
+def _shifted(
+    study: SupervisedStudy,
+    blocks: Sequence[str],
+    kept: Sequence[NDArray[np.intp]],
+    absent: Sequence[NDArray[np.bool_]],
+    parts: Sequence[FloatArray],
+) -> tuple[pd.DataFrame, list[str]]:
+    """Features of the model that are there, at levels far from those here."""
+    names = [np.array(predictor_features(study, name))[own] for name, own in zip(blocks, kept, strict=True)]
+    features = [own[~gone].tolist() for own, gone in zip(names, absent, strict=True)]
+    values = [part[:, ~gone] for part, gone in zip(parts, absent, strict=True)]
+    return shifted_levels(blocks, features, values, study.n)
 
 
 def _units_there(study: SupervisedStudy, there: AnalysisView, samples: list[str]) -> tuple[Units, list[str]]:

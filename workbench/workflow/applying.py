@@ -34,9 +34,10 @@ class Applied:
     ----------
     other : str
         Name of the other project's folder.
-    predictions, performance, missing, edges : DataFrame or None
+    predictions, performance, missing, shifted, edges : DataFrame or None
         ``predictions`` and ``performance`` of multi-block PLS (``performance`` where the outcome is known there);
-        ``missing`` the features of the model that are not there; ``edges`` where the analysis has a network.
+        ``missing`` the features of the model that are not there, ``shifted`` those at other levels; ``edges`` where
+        the analysis has a network.
     lines : tuple of str
         The same in sentences.
     """
@@ -45,6 +46,7 @@ class Applied:
     predictions: pd.DataFrame | None
     performance: pd.DataFrame | None
     missing: pd.DataFrame | None
+    shifted: pd.DataFrame | None
     edges: pd.DataFrame | None
     lines: tuple[str, ...]
 
@@ -89,6 +91,7 @@ def apply_analysis(paths: ProjectPaths, analysis: str, folder: Path, *, write: b
         None if model is None else model.predictions,
         None if model is None else model.performance,
         None if model is None else model.missing,
+        None if model is None else model.shifted,
         edges,
         tuple(lines),
     )
@@ -180,7 +183,7 @@ def _edges(
 def _write(paths: ProjectPaths, analysis: str, applied: Applied) -> None:
     folder = applied_folder(analysis, applied.other)
     with project_lock(paths.root, f"apply {analysis}"), Change(paths.root) as change:
-        for name in ("predictions", "performance", "missing", "edges"):
+        for name in ("predictions", "performance", "missing", "shifted", "edges"):
             table = getattr(applied, name)
             if table is not None:
                 change.write_bytes(f"{folder}/{name}.tsv", table_bytes(table))
