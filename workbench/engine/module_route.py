@@ -15,10 +15,13 @@ A score of many features is nearer to the factor than one feature is, and a bloc
 have pairs; hence the power. The smallest q of all couples ``(u, v)`` counts.
 
 The argument fails where a component mixes two shared factors: features of the one would be joined to features of
-the other. Two things withstand that. A pair must also go with each other as its couple implies, in sign and at
+the other. Three things withstand that. A pair must also go with each other as its couple implies, in sign and at
 ``p <= GUARD`` by its own correlation; of pairs that do not go with each other one in 40 does. And the implied pairs
 of a couple tell a mixture: of pairs that do not go with each other three in four are of the other sign, or weaker than
 half of what chance gives; of a pure couple's hardly any. A couple with more than ``MIXED`` such pairs is left out.
+Where one component of a couple is a mixture and the other is not, the pure one of the feature's own layer tells which
+features to leave out: each feature must also go with its own block's component, in sign and at ``p <= OWN``. That
+is no test, since the feature is part of that component, but it can only take pairs away.
 
 References
 ----------
@@ -32,6 +35,7 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from workbench.engine.multiple import benjamini_hochberg
 from workbench.engine.tails import log_p_value, p_from_log
@@ -40,6 +44,8 @@ from workbench.engine.unit_rows import FloatArray, IndexArray, UnitRows
 
 #: P of a pair's own correlation that is asked of every pair that a module carries.
 GUARD = 0.05
+#: P of a feature with its own block's component that is asked of it.
+OWN = 1e-3
 #: P, over all components of two blocks, at which two are taken for views of one shared factor.
 COUPLE = 1e-4
 #: A pair's own correlation speaks against its couple with another sign, or a larger p than this.
@@ -93,9 +99,10 @@ def module_pairs(pair: PairTiles, u: FloatArray, v: FloatArray, rate: float) -> 
     parts: list[_Implied] = []
     mixed = 0
     if len(places):
-        x, y = _Tests.of(pair.x, v, pair.df), _Tests.of(pair.y, u, pair.df)
+        x, y = _Side.of(pair.x, u, v, pair.df), _Side.of(pair.y, v, u, pair.df)
     for own, other in places:
-        implied = list(_implied(pair, x.take(other), y.take(own), float(np.sign(r[own, other])), rate))
+        sign = float(np.sign(r[own, other]))
+        implied = list(_implied(pair, x.tests(own, other, sign), y.tests(other, own, sign), sign, rate))
         against, number = (sum(getattr(part, name) for part in implied) for name in ("against", "number"))
         mixed += against > MIXED * number
         parts.extend(implied if against <= MIXED * number else [])
@@ -104,21 +111,36 @@ def module_pairs(pair: PairTiles, u: FloatArray, v: FloatArray, rate: float) -> 
 
 @dataclass(frozen=True, eq=False)
 class _Tests:
-    """How features of one block go with components of the other: correlation, log p and q, shape (p, components)."""
+    """How features of one block go with a component of the other: correlation, log p and q, each of shape (p,).
+
+    q is 1 for a feature that does not go with its own block's component of the couple, or cannot be tested.
+    """
 
     r: FloatArray
     log_p: FloatArray
     q: FloatArray
 
-    @classmethod
-    def of(cls, side: UnitRows, scores: FloatArray, df: int) -> _Tests:
-        r = side.rows(0, side.n_features) @ scores
-        log_p = log_p_value(r, df)
-        p = np.where(side.testable[:, None], p_from_log(log_p), np.nan)
-        return cls(r, log_p, np.column_stack([benjamini_hochberg(column) for column in p.T]))
 
-    def take(self, component: int) -> _Tests:
-        return _Tests(self.r[:, component], self.log_p[:, component], self.q[:, component])
+@dataclass(frozen=True, eq=False)
+class _Side:
+    """Correlations of a block's features with all its own components and with all of the other block."""
+
+    own: FloatArray
+    other: FloatArray
+    testable: NDArray[np.bool_]
+    df: int
+
+    @classmethod
+    def of(cls, side: UnitRows, own: FloatArray, other: FloatArray, df: int) -> _Side:
+        rows = side.rows(0, side.n_features)
+        return cls(rows @ own, rows @ other, side.testable, df)
+
+    def tests(self, own: int, other: int, sign: float) -> _Tests:
+        r, loading = self.other[:, other], self.own[:, own]
+        log_p = log_p_value(r, self.df)
+        follows = (sign * r * loading > 0.0) & (log_p_value(loading, self.df) <= np.log(OWN))
+        q = benjamini_hochberg(np.where(self.testable, p_from_log(log_p), np.nan))
+        return _Tests(r, log_p, np.where(follows, q, 1.0))
 
 
 @dataclass(frozen=True, eq=False)

@@ -32,7 +32,7 @@ from workbench.engine.tiles import PairTiles
 from workbench.engine.unit_rows import FloatArray, IndexArray
 
 #: Share of the rate that the pairs' own tests are given where modules carry any pair.
-PAIR_SHARE = 0.9
+PAIR_SHARE = 0.8
 
 
 @dataclass(frozen=True, eq=False)
