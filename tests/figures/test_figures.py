@@ -207,3 +207,13 @@ def test_small_blocks_are_drawn_without_what_they_lack(shape: tuple[int, int]) -
     assert ("correlation_circle" in names) == (kept >= 2)
     assert ("scores_3_4" in names) == (kept >= 4)
     assert {"explained_variance", "scores_1_2", "loadings", "outliers", "distributions"} <= set(names)
+
+
+def test_more_components_held_up_than_are_drawn_leave_the_curve_unmarked() -> None:
+    crossed = LOOK.number.cross_validated
+    errors = np.concatenate([crossed.errors, np.full(60, 0.5)])
+    many = dataclasses.replace(crossed, number=60, errors=errors)
+    look = dataclasses.replace(LOOK, number=dataclasses.replace(LOOK.number, cross_validated=many))
+    axes = cumulative_variance(look, blank())
+    assert [line.get_xdata().size for line in axes.lines][-1] == 0
+    assert "error, cross-validated (60)" in axes.get_legend_handles_labels()[1]

@@ -90,8 +90,8 @@ def cumulative_variance(look: BlockLook, axes: Axes) -> Axes:
             label=f"error, cross-validated ({crossed.number})",
         )  # fmt: skip
         axes.plot(
-            crossed.number,
-            errors[crossed.number],
+            np.flatnonzero(np.arange(errors.size) == crossed.number),  # none where it is beyond what is drawn
+            errors[crossed.number : crossed.number + 1],
             marker="s",
             markersize=5.5,
             color=COLOURS[4],
