@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import asdict, dataclass
+from dataclasses import asdict, dataclass, replace
 
 import numpy as np
 from referee_families import Family
@@ -14,12 +14,11 @@ from workbench.engine.nuisance import Nuisance
 from workbench.engine.private_variation import (
     LayerBlock,
     PrivateScreen,
-    RealComponent,
     pairs_without_private,
     screen_cleaned,
 )
-from workbench.engine.repeated import screen_repeated
-from workbench.engine.screen import BlockPair, BlockScreen, screen_blocks
+from workbench.engine.repeated_layers import cleaned_repeated
+from workbench.engine.screen import BlockScreen, screen_blocks
 from workbench.engine.subjects import SubjectDesign, differences, subject_means
 
 Keys = np.ndarray
@@ -119,16 +118,23 @@ def _product(study: Study, arrays: Arrays, family: Family) -> tuple[PrivateScree
         made = pairs_without_private(arrays.blocks, pairs, correlation=family.correlation, seed=study.seed)
         found = screen_cleaned(made, correlation=family.correlation)
         return found, screen_blocks(made.pairs, correlation=family.correlation)
-    design = _subjects(study)
-    sides = [(arrays.blocks[a], arrays.blocks[b]) for a, b in pairs]
+    return _between_visits(study, arrays, family)
+
+
+def _between_visits(study: Study, arrays: Arrays, family: Family) -> tuple[PrivateScreen, BlockScreen]:
+    """Return what the program finds between the visits of subjects; the scores of components are by sample."""
     # The visits' common course and the subjects' own level are removed without being named.
     known = design_matrix(study.samples.drop(columns=["visit", "group"]), *study.blocks)
-    screen = screen_repeated(
-        [BlockPair("pair", x.values, y.values, known) for x, y in sides], [design] * len(sides), "visits"
+    blocks = [replace(block, nuisance=known) for block in arrays.blocks]
+    made = cleaned_repeated(
+        blocks, study.design.block_pairs(), _subjects(study), "visits", family.correlation, seed=study.seed
     )
-    nothing: tuple[tuple[RealComponent, ...], ...] = tuple(() for _ in arrays.blocks)
-    support = np.full(screen.n_edges, "pair")
-    return PrivateScreen(screen, support, nothing, ("repeated measures",) * len(pairs), ()), screen
+    screen = screen_blocks(made.pairs)
+    components = tuple(
+        tuple(replace(one, scores=made.space.on_samples(one.scores[:, None])[:, 0]) for one in block)
+        for block in made.components
+    )
+    return PrivateScreen(screen, np.full(screen.n_edges, "pair"), components, made.off, ()), screen
 
 
 def _edge_keys(study: Study, screen: BlockScreen, chosen: np.ndarray | None = None) -> Keys:
