@@ -102,8 +102,7 @@ def hidden():
     return x, y, sheet.assign(state=states[:, 0])
 
 
-@pytest.mark.parametrize("level", ["visits", "subjects"])
-@pytest.mark.parametrize("correlation", ["pearson", "spearman"])
+@pytest.mark.parametrize(("level", "correlation"), [("visits", "pearson"), ("subjects", "spearman")])
 def test_private_variation_is_removed_and_every_route_sees_the_same_r(tmp_path, hidden, level, correlation):
     project = study(tmp_path, *hidden)
     found = ask(project, f'{level}"\nnetwork.correlation = "{correlation}')

@@ -22,6 +22,7 @@ from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.stats import rankdata
 
 from workbench.engine.far_values import withstand
 from workbench.engine.module_union import screen_supported
@@ -124,7 +125,7 @@ class PrivateScreen:
         For each pair of blocks the reason why nothing was removed; empty where removal was on.
     cleaned : tuple of (ndarray, ndarray)
         For each pair of blocks both blocks' values on the samples that they share, as they were tested:
-        nuisance and private variation removed and heavy tails withstood (Spearman: the values as they came).
+        heavy tails withstood (Spearman: ranks taken), nuisance and private variation removed.
     couples, mixed : tuple of int
         For each pair of blocks the couples of shared components that modules were sought by, and those of them
         that were left out as mixtures of shared factors; empty where none were sought.
@@ -263,10 +264,20 @@ def screen_cleaned(
         maximum_edges=maximum_edges,
         progress=progress,
     )
-    cleaned = tuple((np.asarray(pair.x), np.asarray(pair.y)) for pair in made.pairs)
+    cleaned = tuple(_as_tested(pair, correlation == "spearman") for pair in made.pairs)
     return PrivateScreen(
         found.screen, found.support, made.components, made.off, cleaned, found.couples, found.mixed
     )
+
+
+def _as_tested(pair: BlockPair, ranks: bool) -> tuple[FloatArray, FloatArray]:
+    """Return both sides of a pair as their correlations are taken."""
+    sides = []
+    for side, own in ((pair.x, pair.x_private), (pair.y, pair.y_private)):
+        values = np.asarray(side, dtype=np.float64)
+        nuisance = own or Nuisance.of(None, len(values))
+        sides.append(nuisance.residuals(np.asarray(rankdata(values, axis=0)) if ranks else values))
+    return sides[0], sides[1]
 
 
 @dataclass(frozen=True, eq=False)

@@ -142,6 +142,8 @@ def _evidence(view: AnalysisView, screens: Screens, pairs: Pairs) -> dict[str, F
             figures = {name: getattr(evidence, field) for name, field in columns.items()}
         for name, values in figures.items():
             found[name][rows] = values
+    if chosen.found.correlation == "spearman" and not chosen.repeated:
+        found["r_spearman"] = chosen.found.r
     return found
 
 

@@ -9,6 +9,7 @@ from typing import TypedDict
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.stats import rankdata
 
 from workbench.engine import BlockPair, BlockScreen, Nuisance, SubjectDesign, screen_blocks
 from workbench.engine.private_variation import LayerBlock, RealComponent, screen_without_private
@@ -59,10 +60,11 @@ class RepeatedRows:
 class Screen:
     """One screen over the block pairs of an analysis, with what it tested.
 
-    ``pairs`` are the values of both blocks on the samples that they share, with the nuisance columns that are still
-    to be removed from them; ``removals`` what each block's real components are and which were removed, ``off`` why
-    none were removed from a block pair (empty where they were); ``freedom`` the degrees of freedom of each block
-    pair's correlations; ``rows`` the independent rows of each pair where subjects have several samples.
+    ``pairs`` are the values of both blocks on the samples that they share as Pearson's correlation takes them (ranks
+    for Spearman's), with the nuisance columns that are still to be removed from them; ``removals`` what each block's
+    real components are and which were removed, ``off`` why none were removed from a block pair (empty where they
+    were); ``freedom`` the degrees of freedom of each block pair's correlations; ``rows`` the independent rows of each
+    pair where subjects have several samples.
     """
 
     found: BlockScreen
@@ -158,6 +160,11 @@ def _plain(
             **_asked(view),
             progress=progress,
         )
+    if view.settings.network.correlation == "spearman":
+        pairs = tuple(
+            replace(pair, x=rankdata(np.asarray(pair.x), axis=0), y=rankdata(np.asarray(pair.y), axis=0))
+            for pair in pairs
+        )
     off = tuple("" for _ in pairs)
     return Screen(found, pairs, np.full(found.n_edges, "pair"), (), off, _freedom(pairs))
 
@@ -251,7 +258,7 @@ def space_of(pair: BlockPair, design: SubjectDesign, level: Level, correlation: 
 def _without_private(
     view: AnalysisView, shared: Sequence[Shared], within: bool, reporter: Reporter, label: str
 ) -> Screen:
-    settings, names = view.settings.network, list(view.blocks)
+    names = list(view.blocks)
     blocks = [layer_block(view, name, within) for name in names]
     places = [(names.index(first), names.index(second)) for first, second in view.pairs]
     with reporter.progress(label) as progress:
@@ -264,8 +271,7 @@ def _without_private(
         )
     plain = design_pairs(view, shared, within)
     pairs = tuple(
-        pair if settings.correlation == "spearman" else BlockPair(pair.name, x, y, None)
-        for pair, (x, y) in zip(plain, result.cleaned, strict=True)
+        BlockPair(pair.name, x, y, None) for pair, (x, y) in zip(plain, result.cleaned, strict=True)
     )
     removals = tuple(
         BlockRemoval(

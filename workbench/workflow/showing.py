@@ -202,8 +202,8 @@ def _standing(
 ) -> list[str]:
     if edge is not None:
         return [
-            f"an edge: r = {edge['r']:.2f} (95 % interval {edge['r_low']:.2f} to {edge['r_high']:.2f}, wide enough for "
-            f"having been selected) on {counted}, p = {edge['p']:.2g}",
+            f"an edge: r = {edge['r']:.2f} (95 % interval {edge['r_low']:.2f} to {edge['r_high']:.2f}, widened since "
+            f"edges are picked for being strong) on {counted}, p = {edge['p']:.2g}",
             f"of the edges as strong as this or stronger, a share of {edge['q']:.2g} is expected to be chance (q)",
         ]
     told = f"no edge: r = {values.r:.2f} on {counted} after adjustment"

@@ -23,7 +23,7 @@ from workbench.engine.subject_space import Level
 from workbench.network import Key
 from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.reporting import Reporter
-from workbench.workflow.screening import Screens, layer_block
+from workbench.workflow.screening import Screens, design_pairs, layer_block
 
 KEPT = 20
 """Half-samples whose pairs are kept, to see how stable the communities are."""
@@ -114,7 +114,7 @@ def _strongest(
         return HalfCleaned.of(view, samples, within=screens.within is chosen)
     designs = [one.subjects for one in screens.shared if one.subjects is not None]
     return HalfScreen(
-        chosen.pairs,
+        design_pairs(view, screens.shared, screens.within is chosen),
         rows,
         chosen.found.correlation,
         designs=designs if chosen.repeated else None,
