@@ -97,22 +97,23 @@ def test_the_shared_factors_are_recovered_under_private_ones() -> None:
     assert np.mean(three) >= np.mean(two)
 
 
-def test_lacking_samples_cost_less_than_dropping_them() -> None:
-    """A block that lacks 8 of 40: shared factors in new samples, at a ridge as cross-validation takes, ten studies."""
+@pytest.mark.parametrize(("ridge", "loss"), [(0.1, 0.003), (1.0, 0.0), (10.0, 0.0)])
+def test_lacking_samples_cost_less_than_dropping_them(ridge: float, loss: float) -> None:
+    """A block that lacks 8 of 40: shared factors in new samples, ten studies; with little ridge as good as the same."""
     kept, dropped = [], []
     for seed in range(10):
         blocks, _ = draw_blocks(40, seed, strength=0.7)
         full = np.hstack(blocks)
         lacking = full.copy()
         lacking[:8, WIDTHS[0] + WIDTHS[1] :] = np.nan
-        fit = GeneralisedCCA(2, ridge=10.0, block_sizes=WIDTHS).fit(lacking)
+        fit = GeneralisedCCA(2, ridge=ridge, block_sizes=WIDTHS).fit(lacking)
         assert np.isnan(fit.variates_[2][:8]).all()
         assert np.isfinite(fit.scores_).all()
         new, truth = draw_new(blocks, seed)
-        less = GeneralisedCCA(2, ridge=10.0, block_sizes=WIDTHS).fit(full[8:])
+        less = GeneralisedCCA(2, ridge=ridge, block_sizes=WIDTHS).fit(full[8:])
         kept.append(recovered(fit.transform(new), truth))
         dropped.append(recovered(less.transform(new), truth))
-    assert np.mean(kept) > np.mean(dropped)
+    assert np.mean(kept) > np.mean(dropped) - loss
 
 
 def draw_new(blocks: list[np.ndarray], seed: int) -> tuple[np.ndarray, np.ndarray]:

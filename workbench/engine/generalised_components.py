@@ -7,8 +7,11 @@ component the mean of the variates. Two blocks give the eigenvalues ``1 + s_k`` 
 its variates, at every ridge; ``D^2 / (D^2 + l)`` on the diagonal instead would make private variation win.
 
 A sample that a block lacks has zero rows there, and counts by ``(sum_b J_b)^(-1/2)`` on both sides of each product,
-``J_b`` indicating the samples of block ``b`` (van de Velden & Bijmolt 2006): ``A_b'A_c`` becomes
-``B A_b' (sum_b J_b)^(-1) A_c``.
+``J_b`` indicating the samples of block ``b`` (van de Velden & Bijmolt 2006): ``A_b'A_c`` becomes ``A_b'W A_c`` with
+``W = B (sum_b J_b)^(-1)``. The identity, which stands for ``A_b'A_b`` and what the ridge took of it, becomes
+``I + A_b'(W - I)A_b``: left as it is, the components of a small ridge shun the samples that a block lacks (they found
+0.92 of a shared subspace where leaving those samples out altogether found 0.94; this finds 0.95). A sample of a single
+block counts once.
 
 References
 ----------
@@ -55,7 +58,7 @@ class GeneralisedComponents:
     Attributes
     ----------
     roots : ndarray of shape (n_components,)
-        Eigenvalues of ``R``: 1 where nothing is shared, at most the number of blocks when no sample lacks.
+        Eigenvalues of ``R``, at most the number of blocks; 1 where nothing is shared and no sample lacks.
     variates : tuple of ndarray, each of shape (n_samples, n_components)
         Of each block; NaN for a sample that it lacks.
     duals : tuple of ndarray, each of shape (n_rows_of_block, n_components)
@@ -134,14 +137,14 @@ def mean_over(variates: Sequence[FloatArray]) -> FloatArray:
 
 def _leading(parts: Sequence[FloatArray], counts: FloatArray, wanted: int) -> tuple[FloatArray, FloatArray]:
     """Leading eigenvalues and eigenvectors of ``R``; of blocks' own lengths where a single one is given."""
-    weighted = [np.sqrt(len(parts) / counts)[:, None] * part for part in parts]
-    together = np.hstack(weighted)
+    weights = np.where(counts > 1.0, len(parts) / counts, 1.0)
+    together = np.hstack([np.sqrt(weights)[:, None] * part for part in parts])
     r = together.T @ together
     if len(parts) > 1:
         start = 0
         for part in parts:
             inside = slice(start, start + part.shape[1])
-            r[inside, inside] = np.eye(part.shape[1])
+            r[inside, inside] = np.eye(part.shape[1]) + ((weights - 1.0)[:, None] * part).T @ part
             start += part.shape[1]
     size = r.shape[0]
     roots, vectors = scipy.linalg.eigh(r, subset_by_index=[size - wanted, size - 1], check_finite=False)
