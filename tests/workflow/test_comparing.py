@@ -11,6 +11,7 @@ import pytest
 
 from workbench import Project
 from workbench.errors import InputError
+from workbench.figures.comparison import draw_comparison
 from workbench.store import read_table
 from workbench.workflow.comparing import run_compare
 
@@ -150,6 +151,10 @@ def test_a_copied_project_is_known_by_its_values(halves: dict[str, Project], tmp
     found, _ = run_compare(None, (str(halves["first"].paths.root), str(copy.paths.root)), None)
     assert set(found.pairs["changed"]) == {"not tested"}
     assert set(found.pairs["why"]) == {"samples in both"}
+    assert set(found.pairs["source_layer"]) == {"transcripts"}
+    drawn, captions = _drawn_texts(found.pairs)
+    assert not any("changed)" in text for text in drawn)
+    assert "no difference could be tested" in captions
 
 
 def test_settings_that_differ_are_listed(halves: dict[str, Project], tmp_path: Path) -> None:
@@ -163,6 +168,27 @@ def test_settings_that_differ_are_listed(halves: dict[str, Project], tmp_path: P
     assert all(not name.startswith("versions") for name in told)
     assert "lost" in set(found.pairs["status"])
     assert "gained" not in set(found.pairs["status"])
+
+
+def _drawn_texts(pairs: pd.DataFrame) -> tuple[list[str], str]:
+    (drawing,) = draw_comparison(pairs, ("first", "second"))
+    return [text.get_text() for axes in drawing.figure.axes for text in axes.texts], drawing.caption
+
+
+def test_a_block_of_one_analysis_alone_is_one_difference(halves: dict[str, Project], tmp_path: Path) -> None:
+    """Not one for each of its settings; its features and its values are no differences of what both have."""
+    other = Project.open(shutil.copytree(halves["second"].paths.root, tmp_path / "other"))
+    settings = tmp_path / "other" / "project.toml"
+    table = pd.DataFrame(np.random.default_rng(5).normal(size=(60, 3)), columns=["a", "b", "c"])
+    table.index = pd.read_csv(tmp_path / "other" / "samples.tsv", sep="\t").iloc[:, 0]
+    table.to_csv(tmp_path / "readings.tsv", sep="\t")
+    other.add_block("readings", tmp_path / "readings.tsv", layer="clinical", values="continuous")
+    assert 'blocks = "all"' in settings.read_text()
+    other.network()
+    found, _ = run_compare(other.paths, (str(halves["second"].paths.root), "main"), None)
+    told = {row.setting: (row.first, row.second) for row in found.settings.itertuples()}
+    assert told["blocks.readings"] == ("", "clinical, in this analysis alone")
+    assert [name for name in told if "readings" in name] == ["blocks.readings"]
 
 
 def test_words_that_name_nothing_are_told(halves: dict[str, Project], tmp_path: Path) -> None:

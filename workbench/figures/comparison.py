@@ -90,8 +90,10 @@ def status_counts(table: pd.DataFrame, axes: Axes) -> Axes:
     )
     axes.barh(rows, every, color="#D9D9D9", edgecolor=INK, linewidth=0.5, height=0.6)
     axes.barh(rows, changed, color="#4D4D4D", edgecolor=INK, linewidth=0.5, height=0.6)
+    tested = bool((table["changed"] != "not tested").any())
     for row, total, dark in zip(rows, every, changed, strict=True):
-        say(axes, total + 0.02 * every.max(), row, f"{total} ({dark} changed)", va="center", fontsize=6.5)
+        told = f"{total} ({dark} changed)" if tested else f"{total}"
+        say(axes, total + 0.02 * every.max(), row, told, va="center", fontsize=6.5)
     plain_ticks(axes, "y", rows, list(STATUSES))
     axes.set_xlim(0.0, 1.45 * every.max())
     axes.set_xlabel("pairs")
@@ -109,6 +111,8 @@ def _caption(table: pd.DataFrame, names: tuple[str, str]) -> str:
         "both sides of a threshold with nearly the same r, and edges, picked for being strong, look weaker elsewhere "
         "on average."
     )
-    if untested:
+    if untested == len(table):
+        text += " Here no difference could be tested (compared.tsv says why)."
+    elif untested:
         text += f" Not to be tested: {counted(untested, 'pair')} (compared.tsv says why)."
     return text

@@ -25,6 +25,9 @@ from workbench.look.words import small
 MOST_SHOWN = 24
 NAME = 34
 SMALLEST_TEXT = 6.0
+MARGIN = 0.12
+"""Inches at the sides: names are up to 2 % wider in print than when they are laid out."""
+
 LIMIT = 0.05
 SMALLEST_P = 1e-12
 """Smaller p's are drawn as this, so that those of permuted samples keep their room."""
@@ -36,7 +39,8 @@ def draw_pathways(table: pd.DataFrame) -> tuple[Drawing, ...]:
         return ()
     with figure_style():
         rows = min(len(table), MOST_SHOWN)
-        figure = Figure(figsize=(TWO_COLUMNS, 0.95 + 0.165 * max(rows, 3)), layout="constrained")
+        figure = Figure(figsize=(TWO_COLUMNS, 0.95 + 0.165 * max(rows, 3)))
+        figure.set_layout_engine("constrained", w_pad=MARGIN)
         FigureCanvasAgg(figure)
         axes = figure.add_subplot()
         leading_sets(table, axes)
@@ -62,8 +66,9 @@ def leading_sets(table: pd.DataFrame, axes: Axes) -> Axes:
             mine = shown["holds"].to_numpy(dtype=bool) == holds
             face = colour if holds else "none"
             axes.scatter(
-                x[mine], places[mine], s=16.0, marker=mark, facecolors=face, edgecolors=colour, zorder=3
-            )
+                x[mine], places[mine], s=16.0, marker=mark, facecolors=face, edgecolors=colour, zorder=3,
+                clip_on=False,
+            )  # fmt: skip
     axes.axvline(-np.log10(LIMIT), color=GUIDE, linewidth=0.6, linestyle="--", zorder=1)
     for place in places:
         axes.axhline(place, color="#EEEEEE", linewidth=0.5, zorder=0)
@@ -103,5 +108,6 @@ def _caption(table: pd.DataFrame) -> str:
         f"(community and layer beside the name). {holds} hold (filled): false-discovery rate of the hypergeometric "
         "test at or under the level of the analysis, and p with samples permuted at or under 0.05 (dashed). The "
         "hypergeometric p takes features one by one and is too small where they go together; a wide gap between the "
-        "two marks says so. The permutation p cannot be smaller than one over the number of permutations."
+        "two marks says so. A layer's permutation p cannot be smaller than one over the number of permutations; "
+        "that of all layers joins them by Stouffer's sum."
     )

@@ -58,15 +58,21 @@ def lines_above(lines: Sequence[str]) -> tuple[int, str]:
     """Return how many lines of a text stand above its header (see `rows_above`), and what parts the fields.
 
     Tabs part them where most lines hold tabs in equal number; else semicolons or commas, and only where the
-    first line is no header for either of them.
+    first line is no header for either of them. What less than half as many lines hold stands in a text by chance.
+
+    >>> lines_above(["raw counts; release 64; do not edit,,", "id,S1,S2", "g1,1,2", "g2,3,4", "g3,5,6"])
+    (1, ',')
     """
     looked_at = lines[:_LOOKED_AT]
     tabs = _split_all(looked_at, "\t")
     if tabs is not None and _width(tabs) > 1:
         return rows_above(tabs, _width(tabs)), "\t"
     found = {}
-    for separator in (";", ","):
-        rows = _split_all(looked_at, separator)
+    split = {separator: _split_all(looked_at, separator) or [] for separator in (";", ",")}
+    parted = {separator: sum(len(row) > 1 for row in rows) for separator, rows in split.items()}
+    for separator, rows in split.items():
+        if 2 * parted[separator] < max(parted.values()):
+            continue
         width = _width(rows) if rows else 0
         if rows and _is_header(rows[0], width):
             return 0, separator

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import json
 import re
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -185,12 +185,13 @@ def _pairs_table(
     why = np.where(np.isnan(second.r), f"not measured in {sides[1].name}", why)
     why = np.where(measured & bool(dependence), "samples in both", why)
     changed = np.where(np.isnan(p), "not tested", np.where(q <= FDR, "yes", "no"))
+    ends = _in_order_of_layers(keys, sides)
     table = pd.DataFrame(
         {
-            "source": [a[1] for a, _ in keys],
-            "target": [b[1] for _, b in keys],
-            "source_layer": [a[0] for a, _ in keys],
-            "target_layer": [b[0] for _, b in keys],
+            "source": [a[1] for a, _ in ends],
+            "target": [b[1] for _, b in ends],
+            "source_layer": [a[0] for a, _ in ends],
+            "target_layer": [b[0] for _, b in ends],
             "status": status,
             "changed": changed,
             "r_first": first.r,
@@ -205,7 +206,7 @@ def _pairs_table(
         names = side.features["feature"].to_numpy()
         for end, place in (("source", 0), ("target", 1)):
             table[f"{end}_{name}"] = [
-                names[side.rows[key[place]]] if key[place] in side.rows else "" for key in keys
+                names[side.rows[pair[place]]] if pair[place] in side.rows else "" for pair in ends
             ]
     rank = {"reversed": 0, "gained": 1, "lost": 1, "kept": 2}
     order = table.assign(
@@ -214,6 +215,12 @@ def _pairs_table(
         apart=-(table["r_first"] - table["r_second"]).abs().fillna(0.0),
     ).sort_values(["shown", "q", "kind", "apart", "source", "target"], kind="stable")
     return table.loc[order.index, list(COLUMNS)].reset_index(drop=True)
+
+
+def _in_order_of_layers(keys: Sequence[tuple[Key, Key]], sides: tuple[Side, Side]) -> list[tuple[Key, Key]]:
+    """Return both ends of each pair, source and target in the order of the first analysis' layers."""
+    layers = list(dict.fromkeys(layer for side in sides for layer in side.views.view.layers))
+    return [(a, b) if layers.index(a[0]) <= layers.index(b[0]) else (b, a) for a, b in keys]
 
 
 def _edge_q(side: Side, keys: Sequence[tuple[Key, Key]]) -> list[float]:
@@ -236,7 +243,8 @@ def _communities(side: Side) -> dict[Key, int]:
 
 def differing_settings(first: Side, second: Side) -> pd.DataFrame:
     """Return settings.tsv: each setting, version and count of samples in which two analyses differ."""
-    held = [_flat(_told(side)) for side in (first, second)]
+    both = first.views.view.blocks.keys() & second.views.view.blocks.keys()
+    held = [_flat(_told(side, both)) for side in (first, second)]
     names = list(dict.fromkeys([*held[0], *held[1]]))
     rows = [
         (name, held[0].get(name, ""), held[1].get(name, ""))
@@ -246,21 +254,22 @@ def differing_settings(first: Side, second: Side) -> pd.DataFrame:
     return pd.DataFrame(rows, columns=["setting", "first", "second"])
 
 
-def _told(side: Side) -> dict[str, Any]:
-    view = side.views.view
+def _told(side: Side, both: Collection[str]) -> dict[str, Any]:
+    """Return what an analysis was made by; of a block that only one of the two has, that it has it."""
+    view, inputs = side.views.view, side.record.get("inputs", {})
     return {
         "analysis": view.settings.model_dump(mode="json", exclude={"pathways"}),
         "samples": view.study.samples.model_dump(mode="json"),
         "blocks": {
             name: block.settings.model_dump(mode="json", exclude={"file", "annotations", "runs", "names"})
+            if name in both
+            else f"{block.settings.layer}, in this analysis alone"
             for name, block in view.blocks.items()
         },
         "versions": side.record.get("versions", {}),
         "samples tested": len(side.samples),
-        "features": {name: len(block.features) for name, block in view.blocks.items()},
-        "inputs": {
-            name: value for name, value in side.record.get("inputs", {}).items() if name.startswith("block")
-        },
+        "features": {name: len(view.blocks[name].features) for name in view.blocks if name in both},
+        "inputs": {f"block {name}": inputs.get(f"block {name}", "") for name in view.blocks if name in both},
     }
 
 
