@@ -85,11 +85,14 @@ def test_a_doubtful_edge_in_one_sentence() -> None:
 
 
 @pytest.mark.parametrize(
-    ("level", "words"),
-    [("visits", "47 samples, changes within subjects)"), ("subjects", "47 samples, means of subjects)")],
+    ("level", "counted", "words"),
+    [
+        ("visits", {"changes": 30}, "over 30 changes within subjects (47 samples))"),
+        ("subjects", {"subjects": 17}, "over the means of 17 subjects (47 samples))"),
+    ],
 )
-def test_several_samples_of_a_subject_are_told(level: str, words: str) -> None:
-    one = candidate()
+def test_several_samples_of_a_subject_are_told(level: str, counted: dict[str, int], words: str) -> None:
+    one = candidate(**counted)
     said = sentence(Candidate(one.edge, one.source, one.target, (), (), level))
     assert words in said
     assert "holds without any one subject (0.78 at the weakest)" in said

@@ -111,6 +111,8 @@ def test_private_variation_is_removed_and_every_route_sees_the_same_r(tmp_path, 
     assert set(private["block"]) == {"one", "two"}
     assert private["goes_with"].str.contains("state").any()
     edge = project.result("main").edges.iloc[0]
+    assert edge["n"] == 120
+    assert edge["changes" if level == "visits" else "subjects"] == (90 if level == "visits" else 30)
     [story] = project.show(edge["source"], edge["target"])
     assert story.numbers["r_adjusted"] == pytest.approx(edge["r"], abs=1e-8)
     assert "private variation of one" in story.drawing.caption

@@ -87,6 +87,8 @@ EDGE_ATTRIBUTES: dict[str, Attribute] = {
     "r_within": Attribute("double", "correlation with the group removed"),
     "q_within": Attribute("double", "false-discovery rate of r_within"),
     "n": Attribute("int", "samples that the pair was tested on"),
+    "changes": Attribute("int", "changes within subjects that the pair was tested on"),
+    "subjects": Attribute("int", "subjects whose means the pair was tested on"),
     "basis": Attribute("string", "what the correlation rests on: within groups, the group alone, or unclear"),
     "support": Attribute("string", "what carries the edge: the pair's own test, its module, or both"),
     "model_r": Attribute("double", "correlation that the fitted model implies"),

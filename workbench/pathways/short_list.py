@@ -39,8 +39,6 @@ _CLOSER_LOOK = {
 }
 
 
-_LEVELS = {"visits": ", changes within subjects", "subjects": ", means of subjects"}
-
 Clusters = tuple[tuple[str, str], tuple[str, str]]
 
 
@@ -279,10 +277,23 @@ def sentence(one: Candidate) -> str:
     low, high = one.number("r_low"), one.number("r_high")
     if low is not None and high is not None:
         interval = f", {low:.2f} to {high:.2f}"
-    samples = one.number("n")
-    over = f" over {samples:.0f} samples{_LEVELS.get(one.level, '')}" if samples is not None else ""
-    parts = [f"{first} {verb} {rest} (r = {one.r:.2f}{interval}{over}){_in_groups(one)}", *_withstands(one)]
+    parts = [
+        f"{first} {verb} {rest} (r = {one.r:.2f}{interval}{_over(one)}){_in_groups(one)}",
+        *_withstands(one),
+    ]
     return f"{'; '.join(parts)}."
+
+
+def _over(one: Candidate) -> str:
+    """Return what an edge was tested on: samples, changes within subjects, or subjects' means."""
+    samples, changes, subjects = (one.number(column) for column in ("n", "changes", "subjects"))
+    if samples is None:
+        return ""
+    if changes is not None:
+        return f" over {changes:.0f} changes within subjects ({samples:.0f} samples)"
+    if subjects is not None:
+        return f" over the means of {subjects:.0f} subjects ({samples:.0f} samples)"
+    return f" over {samples:.0f} samples"
 
 
 def _name(feature: Mapping[str, Any]) -> str:

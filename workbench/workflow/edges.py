@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from workbench.engine import PairFigures, edge_evidence, fisher_interval
 from workbench.engine.repeated import without_subject
 from workbench.workflow.analysis_view import AnalysisView
-from workbench.workflow.screening import RepeatedRows, Screens
+from workbench.workflow.screening import RepeatedRows, Screen, Screens
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
@@ -35,6 +35,7 @@ def edges_table(view: AnalysisView, screens: Screens) -> pd.DataFrame:
     table = _ends(view, pairs)
     for column in ("n", "r", "r_low", "r_high", "p", "q", "q_block"):
         table[column] = getattr(screen, column)
+    table = table.assign(**_rows_counted(screens.chosen, screen.pair_index))
     table["support"] = screens.chosen.support
     total = screens.total.found.lookup(pairs.pair, pairs.i, pairs.j)
     grouped = screens.within is not None
@@ -67,6 +68,7 @@ def group_pairs_table(view: AnalysisView, screens: Screens) -> pd.DataFrame:
     found = screens.within.found.lookup(alone.pair, alone.i, alone.j)
     table = _ends(view, alone)
     table["n"] = total.n[keep]
+    table = table.assign(**_rows_counted(screens.total, alone.pair))
     table["r_total"], table["p_total"], table["q_total"] = total.r[keep], total.p[keep], total.q[keep]
     low, high = _interval(found.r, alone, screens)
     table["r_within"], table["r_within_low"], table["r_within_high"] = found.r, low, high
@@ -103,6 +105,14 @@ def _interval(r: FloatArray, pairs: Pairs, screens: Screens) -> tuple[FloatArray
         spearman = found.correlation == "spearman"
         low[here], high[here] = fisher_interval(r[here], freedom + 2, 1, spearman=spearman)
     return low, high
+
+
+def _rows_counted(screen: Screen, pair: IndexArray) -> dict[str, IndexArray]:
+    """Return the changes within subjects, or the subjects, that each pair was tested on; nothing for samples."""
+    if not screen.repeated:
+        return {}
+    (name, *_), counts = zip(*(one.counted for one in screen.rows), strict=True)
+    return {name: np.array(counts, dtype=np.intp)[pair]}
 
 
 def _ends(view: AnalysisView, pairs: Pairs) -> pd.DataFrame:

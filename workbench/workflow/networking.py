@@ -37,7 +37,21 @@ from workbench.workflow.steadiness import edge_stability, half_edges, stability_
 
 VERSION = 2
 EDGE_COLUMNS = (
-    *("source", "source_block", "target", "target_block", "n", "r", "r_low", "r_high", "p", "q", "q_block"),
+    *(
+        "source",
+        "source_block",
+        "target",
+        "target_block",
+        "n",
+        "changes",
+        "subjects",
+        "r",
+        "r_low",
+        "r_high",
+        "p",
+        "q",
+        "q_block",
+    ),
     *("r_total", "q_total", "r_within", "q_within", "basis", "support", "model_r", "component", "stability"),
     *("r_spearman", "r_without_one", "r_observed", "imputed_share", "community"),
     *("known", "shared_sets"),
@@ -122,7 +136,7 @@ def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) ->
         None,
         [
             *screen_sentences(view, screens, len(pairs), heavy),
-            fragile_sentence(edges),
+            fragile_sentence(edges, view.settings.network.correlation),
             *stability_lines(steady),
             *contrasts.lines,
         ],

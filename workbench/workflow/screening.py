@@ -55,6 +55,13 @@ class RepeatedRows:
     pair: BlockPair
     space: SubjectSpace
 
+    @property
+    def counted(self) -> tuple[str, int]:
+        """What the rows are, ``changes`` within subjects or ``subjects``, and how many there are."""
+        if self.space.contrasts is None:
+            return "subjects", len(self.space.matrix)
+        return "changes", len(self.space.contrasts)
+
 
 @dataclass(frozen=True, eq=False)
 class Screen:
