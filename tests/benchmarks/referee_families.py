@@ -23,7 +23,8 @@ class Family:
         What the simulator is asked for.
     level
         What a row of the screen is: a sample, a subject's change between two visits, or a subject's mean; or
-        `"visits"`: changes within subjects over all their visits, by the screen for repeated measures. By hand these samples are pooled, with the visit and the subject removed.
+        `"visits"`: changes within subjects over all their visits, by the screen for repeated measures. By hand these
+        samples are pooled, with the visit and the subject removed.
     correlation
         ``"pearson"`` or ``"spearman"``.
     """
