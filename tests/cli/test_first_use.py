@@ -256,3 +256,14 @@ def test_an_accepted_finding_is_told_as_accepted_while_it_runs(made, capsys):
         f"  accepted {first['severity']} {first['id']} (as planned): {first['what']}"
         in capsys.readouterr().err
     )
+
+
+def test_the_levels_of_the_group_are_told_with_the_reference_first(command, tmp_path, delivered):
+    assert command("init", tmp_path / "study")[0] == 0
+    code, _, err = command(
+        "add-samples", delivered["samples"], "--group", "group", "--project", tmp_path / "study"
+    )
+    assert code == 0
+    (line,) = [line for line in err.splitlines() if line.startswith("group 'group'")]
+    assert "(12), " in line
+    assert "differences are from the first; another order is said with order = { group = [...] }" in line

@@ -23,6 +23,12 @@ def test_the_project_at_hand_gives_its_own_design(command, run_once):
     assert more["smallest"] < plan["smallest"]
 
 
+def test_blocks_that_are_not_prepared_are_prepared_first(command, made):
+    code, out, err = command("plan", "--project", made)
+    assert (code, out.splitlines()[0]) == (0, "rna x lcms:")
+    assert "running prepare rna for the first time" in err
+
+
 def test_numbers_that_cannot_be_are_refused(command, tmp_path, monkeypatch):
     monkeypatch.chdir(tmp_path)
     code, _, err = command("plan", "--features", 10, "--features", 20)

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Annotated
 
 import typer
 
-from workbench.cli.console import answer
+from workbench.cli.console import answer, terminal_reporter
 from workbench.cli.options import JsonOption, ProjectOption, open_project
 
 if TYPE_CHECKING:
@@ -53,6 +53,7 @@ def plan(
     as_json: JsonOption = False,
 ) -> None:
     """Say how many samples a correlation needs, or the smallest one that a design can find."""
+    from workbench.workflow.analysis_view import blocks_of
     from workbench.workflow.planning import plan_of_numbers, project_plans
 
     if features:
@@ -62,8 +63,10 @@ def plan(
             raise InputError("--features are of a study that is not there yet; say its --samples too")
         plans = plan_of_numbers(samples, features, taken=taken, fdr=fdr, share=share, power=power)
     else:
-        state = _project_at_hand(project).state()
-        plans = project_plans(state, state.one_analysis(analysis), share=share, power=power, samples=samples)
+        opened = _project_at_hand(project)
+        name = opened.state().one_analysis(analysis)
+        opened.prepare(*blocks_of(opened.state().settings, name), reporter=terminal_reporter(as_json))
+        plans = project_plans(opened.state(), name, share=share, power=power, samples=samples)
     if as_json:
         answer([json.dumps({"schema_version": 1, "plans": [one.as_json() for one in plans]}, indent=2)])
     else:

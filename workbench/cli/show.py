@@ -12,6 +12,8 @@ from workbench.cli.console import answer, tell, tell_lines
 from workbench.cli.options import JsonOption, ProjectOption, QuietOption, open_project
 
 if TYPE_CHECKING:
+    from pandas import DataFrame
+
     from workbench.workflow.showing import Story
 
 MOST_PARTNERS = 20
@@ -63,18 +65,23 @@ def _told(story: Story) -> list[str]:
     lines = [story.title, *(f"  {line}" for line in story.lines)]
     lines += [f"  but: {line}" for line in story.doubts]
     if story.partners is not None and len(story.partners):
-        shown = story.partners.head(MOST_PARTNERS)
-        wide = max(len(str(name)) for name in shown["partner"])
-        for row in shown.to_dict("records"):
-            doubts = f"; but {row['doubts']}" if row["doubts"] else ""
-            lines.append(
-                f"    {row['partner']:<{wide}}  {row['block']}  r = {row['r']:+.2f}, q = {row['q']:.2g}{doubts}"
-            )
-        if len(story.partners) > MOST_PARTNERS:
-            lines.append(f"    and {len(story.partners) - MOST_PARTNERS} more in edges.tsv")
+        lines += _partner_lines(story.partners)
     elif story.partners is None and not story.doubts:
         lines.append("  nothing that was looked at speaks against it" if "q" in story.numbers else "")
     return [line for line in lines if line]
+
+
+def _partner_lines(partners: DataFrame) -> list[str]:
+    listed = partners.head(MOST_PARTNERS).to_dict("records")
+    wide, wide_block = (max(len(str(row[column])) for row in listed) for column in ("partner", "block"))
+    lines = []
+    for row in listed:
+        doubts = f"; but {row['doubts']}" if row["doubts"] else ""
+        ends = f"{row['partner']:<{wide}}  {row['block']:<{wide_block}}"
+        lines.append(f"    {ends}  r = {row['r']:+.2f}, q = {row['q']:.2g}{doubts}")
+    if len(partners) > MOST_PARTNERS:
+        lines.append(f"    and {len(partners) - MOST_PARTNERS} more in edges.tsv")
+    return lines
 
 
 def _as_json(story: Story) -> dict[str, Any]:

@@ -156,14 +156,15 @@ def counted_rows(shared: Shared, view: AnalysisView) -> str:
     return f"{counted(used - subjects, 'change')} within {counted(subjects, 'subject')}"
 
 
-def fragile_sentence(edges: pd.DataFrame) -> str:
+def fragile_sentence(edges: pd.DataFrame, correlation: str) -> str:
     """Return how many edges lose half of their correlation when one sample is left out, empty for none."""
     fragile = int((edges["r_without_one"].abs() < edges["r"].abs() * FRAGILE_SHARE).sum())
     if not fragile:
         return ""
+    else_ranks = "" if correlation == "spearman" else ', or set network.correlation = "spearman"'
     return (
         f"{fragile:,} of {len(edges):,} edges lose half of r or more when a single sample is left out "
-        '(r_without_one): look for an odd sample, or set network.correlation = "spearman"'
+        f"(r_without_one): look for an odd sample{else_ranks}"
     )
 
 

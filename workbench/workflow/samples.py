@@ -5,17 +5,20 @@ from __future__ import annotations
 from dataclasses import dataclass
 from pathlib import Path
 
+import numpy as np
 import pandas as pd
 
 from workbench.errors import InputError, SettingsError
 from workbench.intake import (
     Suggestions,
     column_kind,
+    group_codes,
     missing_samples,
     read_sample_sheet,
     sheet_difference,
     suggest_columns,
 )
+from workbench.intake.faults import shown
 from workbench.settings import (
     SamplesSettings,
     cross_check,
@@ -28,6 +31,8 @@ from workbench.store import Change, ProjectPaths, project_lock, table_bytes
 from workbench.workflow.blocks import Tell, empty_cells_line, no_words, require_columns
 from workbench.workflow.sources import delivered_file, keep_source
 from workbench.workflow.state import load_state
+
+MOST_LEVELS = 8
 
 
 @dataclass(frozen=True)
@@ -101,7 +106,7 @@ def add_samples(paths: ProjectPaths, delivery: SheetDelivery, tell: Tell = no_wo
             sources = [{"file": file, "sha256": digest, "delivered_as": delivery.file.name}]
             change.commit({"command": "add-samples", "sources": sources})
     unnamed = not delivery.columns
-    notes = (*sheet.notes, *empty_cells(frame, settings.samples))
+    notes = (*sheet.notes, *empty_cells(frame, settings.samples), *group_lines(frame, settings.samples))
     return SheetAccount(len(frame), notes, kinds, suggest_columns(frame) if unnamed else None)
 
 
@@ -145,6 +150,22 @@ def empty_cells(frame: pd.DataFrame, samples: SamplesSettings) -> tuple[str, ...
             lacking = [name for name in names if name not in samples.exclude]
             if lacking:
                 told.append(empty_cells_line(column, part, lacking))
+    return tuple(told)
+
+
+def group_lines(frame: pd.DataFrame, samples: SamplesSettings) -> tuple[str, ...]:
+    """Return a sentence for each factor: its levels in order, the reference first, and the samples of each."""
+    told = []
+    for factor in samples.group:
+        held = frame.drop(index=missing_samples(frame, [factor]).get(factor, []))
+        groups = group_codes(held, factor, samples.order)
+        sizes = np.bincount(groups.codes, minlength=len(groups.levels)).tolist()
+        named = [f"{shown(level)} ({size})" for level, size in zip(groups.levels, sizes, strict=True)]
+        more = [f"and {len(named) - MOST_LEVELS} more"] if len(named) > MOST_LEVELS else []
+        listed = ", ".join([*named[:MOST_LEVELS], *more])
+        line = f"group {shown(factor)}, levels in order and their samples: {listed}; differences are from the first"
+        other = f"; another order is said with order = {{ {factor} = [...] }} under [samples]"
+        told.append(line if factor in samples.order else line + other)
     return tuple(told)
 
 
