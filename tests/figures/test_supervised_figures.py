@@ -31,6 +31,7 @@ def planted(classes: int = 2, n: int = 30) -> SupervisedView:
         held_out=held_out,
         roc_scores=np.array([held_out, held_out + 0.2 * rng.normal(size=held_out.shape)]),
         blocks=("rna", "lcms"),
+        alike="features",
         importance=np.array([[0.7, 0.3], [0.2, 0.8]]),
         measure="auc" if classes else "q2",
         candidates=(1, 2, 3),

@@ -11,7 +11,7 @@ from supervised_projects import cohort, integrate
 from workbench.errors import InputError
 from workbench.prepare import MeasuredTable
 from workbench.store import Change, project_lock, table_bytes
-from workbench.workflow.applied_model import aligned_table
+from workbench.workflow.applied_model import agreement, aligned_table
 from workbench.workflow.applying import apply_analysis
 
 EDGES = [
@@ -53,7 +53,8 @@ def test_classes_of_the_second_cohort_are_predicted(applied):
 def test_features_that_are_missing_there_are_listed_with_their_weight(applied):
     assert set(applied.missing["feature"]) == {"g0", "g1", "g2", "g3"}
     assert (applied.missing["share"] > 0.0).all()
-    assert any(line.startswith("4 of ") and "are not there" in line for line in applied.lines)
+    said = next(line for line in applied.lines if line.startswith("not there: 4 features of the model's"))
+    assert 0.9 < float(said.rpartition("r = ")[2]) <= 1.0
 
 
 def test_levels_that_another_batch_moved_are_told_and_not_recentred(cohorts, applied, tmp_path):
@@ -165,3 +166,11 @@ def test_levels_of_text_are_read_by_their_names():
     np.testing.assert_array_equal(table.values, [[1.0, np.nan], [0.0, np.nan], [np.nan, np.nan]])
     assert absent == {"bmi"}
     assert table.levels == here.levels
+
+
+def test_what_missing_features_cost_is_the_agreement_of_the_models_values():
+    """Of two independent features of equal weight one is lost: r = sqrt(1/2); none lost: 1; all lost: 0."""
+    x = np.array([[1.0, 1.0], [1.0, -1.0], [-1.0, 1.0], [-1.0, -1.0]])
+    lost = [np.array(gone) for gone in ([False, True], [False, False], [True, True])]
+    found = [agreement(x, np.ones((1, 2)), gone) for gone in lost]
+    assert_allclose(found, [np.sqrt(0.5), 1.0, 0.0])

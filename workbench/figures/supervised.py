@@ -145,6 +145,7 @@ def by_components(view: SupervisedView, axes: Axes) -> Axes:
     axes.axhline(0.5 if view.levels else 0.0, color=INK, linewidth=0.5, zorder=0)
     axes.set_xticks(numbers)
     axes.set_xlabel("components")
+    axes.set_ylabel(f"{'AUC' if view.levels else 'Q2'}, R2")
     plain_legend(axes, loc="lower left", bbox_to_anchor=(0.0, 1.0), ncols=2, borderaxespad=0.2)
     return axes
 
@@ -163,14 +164,19 @@ def roc_curves(view: SupervisedView, axes: Axes) -> Axes:
             curves.mean(axis=0),
             color=colour,
             linestyle=LINES[k % len(LINES)],
-            label=figure_name(view.levels[g]),
+            label=figure_name(view.levels[g]) if len(targets) > 1 else "held out",
         )
-    axes.plot([0.0, 1.0], [0.0, 1.0], color=GUIDE, linewidth=0.6, linestyle="--")
+    axes.plot([0.0, 1.0], [0.0, 1.0], color=GUIDE, linewidth=0.6, linestyle="--", label="chance")
     axes.set_xlim(-0.02, 1.02)
     axes.set_ylim(-0.02, 1.02)
     axes.set_aspect("equal", adjustable="box")
-    axes.set_xlabel("share of others taken for it")
-    axes.set_ylabel("share recognised")
+    others, own = "others", "it"
+    if view.columns == 1:
+        others, own = (figure_name(level, 16) for level in view.levels)
+    axes.set_xlabel(f"share of {others} taken for {own}", parse_math=False)
+    axes.set_ylabel(
+        f"share of {own} recognised" if view.columns == 1 else "share recognised", parse_math=False
+    )
     plain_legend(axes, loc="lower right")
     return axes
 
@@ -196,7 +202,12 @@ def importance_of_features(view: SupervisedView, axes: Axes) -> Axes:
     plain_ticks(axes, "y", places, [figure_name(name, 22) for name in view.names])
     axes.set_xlim(0.0, 1.18 * float(view.vip.max(initial=1.0)))
     axes.axvline(1.0, color=GUIDE, linestyle="--", linewidth=0.6, zorder=0)
-    axes.set_xlabel("variable importance (VIP)")
+    told = (
+        "\n\N{BULLET} in the panel; %: of the training parts' panels"
+        if np.isfinite(view.frequency).any()
+        else ""
+    )
+    axes.set_xlabel(f"variable importance (VIP){told}")
     plain_legend(axes, loc="lower left", bbox_to_anchor=(0.0, 1.0), ncols=3, borderaxespad=0.2)
     return axes
 

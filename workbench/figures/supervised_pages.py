@@ -19,6 +19,10 @@ from workbench.figures.supervised import (
 from workbench.figures.supervised_view import SupervisedView
 
 MOST_CLASSES = 4
+ALIKE = {
+    "blocks": "blocks count alike beforehand",
+    "features": "features count alike beforehand, so that a block of many has much of it whatever it tells",
+}
 
 
 def draw_supervised(view: SupervisedView) -> tuple[Drawing, ...]:
@@ -38,8 +42,8 @@ def _drawings(view: SupervisedView) -> Iterator[Drawing]:
         "block_importance",
         figure,
         f"Share of each block in each component of the fit on all samples that explains {view.outcome} (squared "
-        "super weights; blocks weigh alike beforehand). Says what the fit uses, not what each block can do alone: for "
-        "that see performance.tsv.",
+        f"super weights; {ALIKE[view.alike]}). Says what the fit uses, not what each block can do alone: for that see "
+        "performance.tsv.",
     )
     figure = sized_figure(ONE_COLUMN, 2.9)
     by_components(view, figure.add_subplot())
@@ -47,8 +51,8 @@ def _drawings(view: SupervisedView) -> Iterator[Drawing]:
         "components",
         figure,
         f"{measure} of samples held out by number of components, mean of {repeats} repeats and each of them, beside "
-        "the share of the outcome explained in sample, which grows whatever the data. The line tells how many were "
-        "chosen.",
+        "the share of the outcome explained in sample (R2), which grows whatever the data. Dashed: how many were "
+        "chosen; horizontal: what knowing nothing gives.",
     )
     if view.levels:
         figure = sized_figure(ONE_COLUMN, ONE_COLUMN)
@@ -66,7 +70,8 @@ def _drawings(view: SupervisedView) -> Iterator[Drawing]:
             "features",
             figure,
             "Features of greatest variable importance in the fit on all samples. Beside each the share of training "
-            "parts whose panel had it; a dot marks the features of the final panel. Not a diagnostic test.",
+            "parts whose panel had it; a dot marks the features of the final panel. Dashed: 1, the mean square over "
+            "all features. Not a diagnostic test.",
         )
     figure = sized_figure(ONE_COLUMN, 2.5)
     permutation_null(view, figure.add_subplot())
@@ -83,6 +88,11 @@ def _scores(view: SupervisedView) -> Drawing:
         "Hollow: scores of the fit, which has seen the sample and looks good whatever the data. Full: mean score over "
         "the repeats by models that had not seen it; only these count."
     )
+    middle = (
+        "Short lines: medians; dashed: the cut between the classes."
+        if view.columns == 1
+        else "Lines: medians."
+    )
     if not view.levels:
         figure = sized_figure(ONE_COLUMN, ONE_COLUMN)
         predicted_numbers(view, figure.add_subplot())
@@ -94,4 +104,4 @@ def _scores(view: SupervisedView) -> Drawing:
             class_scores(view, axes, k)
         else:
             axes.set_axis_off()
-    return Drawing("scores", figure, f"Scores by class of {view.outcome}. {caption}")
+    return Drawing("scores", figure, f"Scores by class of {view.outcome}. {caption} {middle}")

@@ -28,6 +28,8 @@ class SupervisedView:
     roc_scores : ndarray of shape (repeats, n_units, n_columns)
         Held-out scores, repeat by repeat.
     blocks : tuple of str
+    alike : {"features", "blocks"}
+        What counts alike in the fit.
     importance : ndarray of shape (n_components, n_blocks)
     measure : str
         Name of the held-out figure.
@@ -55,6 +57,7 @@ class SupervisedView:
     held_out: FloatArray
     roc_scores: FloatArray
     blocks: tuple[str, ...]
+    alike: str
     importance: FloatArray
     measure: str
     candidates: tuple[int, ...]

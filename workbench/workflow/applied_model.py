@@ -18,6 +18,7 @@ from workbench.engine import (
 )
 from workbench.engine.performance_measures import class_performance
 from workbench.errors import InputError, WorkbenchError
+from workbench.intake.faults import counted
 from workbench.intake.kinds import column_numbers, present
 from workbench.prepare import MeasuredTable, recipe_for
 from workbench.workflow.analysis_view import AnalysisView
@@ -105,7 +106,8 @@ def apply_model(
     if not rows.any():
         raise InputError(f"analysis '{view.name}': no sample there has a block that the model can use")
     missing, cost = _missing_table(study, blocks, split.kept, absent, model.coef_, model.vip_)
-    lines += _missing_lines(missing, cost, x.shape[1])
+    agreed = agreement(np.hstack(split.train), model.coef_, np.concatenate(absent))
+    lines += _missing_lines(missing, cost, agreed, x.shape[1])
     lines += _lacking_lines(blocks, parts, rows)
     shifted, warnings = _shifted(study, blocks, split.kept, absent, parts)
     lines += warnings
@@ -291,15 +293,24 @@ def _missing_table(
     return table, float(table["share"].sum())
 
 
-def _missing_lines(missing: pd.DataFrame, cost: float, total: int) -> list[str]:
+def agreement(x: FloatArray, coefficients: FloatArray, gone: NDArray[np.bool_]) -> float:
+    """Correlation, over the samples here, of the model's values without some features with its values with all."""
+    whole = x @ coefficients.T
+    without = x[:, ~gone] @ coefficients[:, ~gone].T
+    if not gone.any() or without.std() == 0.0:
+        return 0.0 if gone.any() else 1.0
+    return float(np.corrcoef(whole.ravel(), without.ravel())[0, 1])
+
+
+def _missing_lines(missing: pd.DataFrame, cost: float, agreed: float, total: int) -> list[str]:
     if missing.empty:
         return [f"all {total:,} features of the model are there"]
     named = ", ".join(f"{row.feature} ({row.block})" for row in missing.head(5).itertuples())
     named += ", ..." if len(missing) > 5 else ""
     return [
-        f"{len(missing):,} of {total:,} features of the model are not there: {named}; they "
-        f"carry {cost:.0%} of the model's squared coefficients, and count as their mean here: predictions are drawn "
-        "to the middle by so much"
+        f"not there: {counted(len(missing), 'feature')} of the model's {total:,} ({named}), with {cost:.0%} of its "
+        "squared coefficients; each counts as its mean here, which draws predictions to the middle. On the samples here "
+        f"the model's values without them go with those with all at r = {agreed:.2f}"
     ]
 
 

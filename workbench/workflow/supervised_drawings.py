@@ -32,6 +32,7 @@ def supervised_view(result: SupervisedResult) -> SupervisedView:
         held_out=held_out,
         roc_scores=scores,
         blocks=result.blocks,
+        alike=validation.alike,
         importance=result.model.block_importance_,
         measure=result.measure,
         candidates=validation.candidates,
