@@ -309,8 +309,8 @@ def _missing_lines(missing: pd.DataFrame, cost: float, agreed: float, total: int
     named += ", ..." if len(missing) > 5 else ""
     return [
         f"not there: {counted(len(missing), 'feature')} of the model's {total:,} ({named}), with {cost:.0%} of its "
-        "squared coefficients; each counts as its mean here, which draws predictions to the middle. On the samples here "
-        f"the model's values without them go with those with all at r = {agreed:.2f}"
+        "squared coefficients; each counts as its mean here, which draws predictions to the middle. Over the samples "
+        f"here the model's values without them go with those with all at r = {agreed:.2f}"
     ]
 
 
