@@ -42,6 +42,20 @@ def test_odd_samples_are_found_and_brought_to_the_usual_size(seed: int, odd: int
     assert_allclose(steady_rows(x[order]).values, found.values[order], atol=1e-9)
 
 
+@pytest.mark.parametrize("reached", [200, 40])
+def test_samples_strong_in_a_factor_are_not_odd(reached: int) -> None:
+    """A factor strong in three samples makes them large in all features, or in a fifth; one that is odd is told."""
+    rng = np.random.default_rng(7)
+    factor = rng.normal(size=(40, 1))
+    factor[:3] = [[4.0], [-4.0], [4.5]]
+    x = rng.normal(size=(40, 200))
+    x[:, :reached] += factor * rng.choice([-1.0, 1.0], reached) * np.sqrt(200 / reached)
+    x[8] += 3.0 * rng.normal(size=200)
+    found = steady_rows(x - x.mean(axis=0))
+    assert_array_equal(found.odd, [8])
+    assert_allclose(found.factors[8], 1.0 / np.sqrt(10.0), rtol=0.25)
+
+
 def test_an_odd_sample_in_both_blocks_makes_no_edges_and_hides_none() -> None:
     rng = np.random.default_rng(2)
     raw, steady = 0, 0

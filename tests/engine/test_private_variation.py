@@ -18,7 +18,15 @@ from simulated import (
     transcripts,
 )
 
-from workbench.engine.private_variation import LayerBlock, PrivateScreen, screen_without_private
+from workbench.engine.nuisance import Nuisance
+from workbench.engine.private_variation import (
+    LayerBlock,
+    PrivateScreen,
+    cleaned_features,
+    pairs_without_private,
+    screen_cleaned,
+    screen_without_private,
+)
 from workbench.engine.screen import BlockPair, screen_blocks
 from workbench.errors import NumericsError
 
@@ -75,6 +83,26 @@ def test_too_few_samples_turn_removal_off_with_the_reason() -> None:
     assert "share 24 samples" in found.off[0]
     assert found.removed == ((), ())
     assert np.array_equal(found.screen.i, plain.i)
+
+
+def test_a_sample_odd_in_both_layers_is_brought_to_size_and_told() -> None:
+    """Only that sample; both sides of the pair can be made again from what is told."""
+    study = simulate(Design(n=40, blocks=PAIR, odd=1, strength=1.4), 3)
+    blocks = layer_blocks(study)
+    made = pairs_without_private(blocks, [(0, 1)])
+    odd = [np.flatnonzero(steady < 1.0) for steady in made.steady]
+    assert odd[0].size == 1
+    assert np.array_equal(*odd)
+    assert all(steady.min() < 0.6 for steady in made.steady)
+    pair = made.pairs[0]
+    nuisance = Nuisance.of(np.hstack([block.nuisance for block in blocks]), 40)
+    for block, side, own, steady in zip(
+        blocks, (pair.x, pair.y), (pair.x_private, pair.y_private), made.steady, strict=True
+    ):
+        assert_allclose(cleaned_features(block.values, nuisance, own, steady), side, atol=1e-9)
+    assert len(screen_cleaned(made).steady) == 2
+    ranked = pairs_without_private(blocks, [(0, 1)], correlation="spearman")
+    assert all((steady == 1.0).all() for steady in ranked.steady)
 
 
 def test_blocks_meet_on_the_samples_that_they_share() -> None:

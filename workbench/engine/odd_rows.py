@@ -5,6 +5,9 @@ and every pair of them gets a product that outweighs all other samples: in simul
 sample and nothing shared Pearson's correlation drew false edges in 100 of 100. Leaving out each pair's most
 influential sample costs a tenth of the true edges and does not help; the sample, not the pair, is what is odd, and
 all features of a block together show which it is.
+
+Large throughout is not enough: a factor that reaches most features makes the samples large in which it is strong,
+and they carry what is to be found. A sample is odd by what the block's real components, found without it, leave of it.
 """
 
 from __future__ import annotations
@@ -14,13 +17,16 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from workbench.engine.linear import thin_basis
 from workbench.engine.nuisance import CONSTANT_TOLERANCE
+from workbench.engine.signal_components import signal_components
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
 
 #: Mean square of a sample's standardised residuals, in medians over the samples, from which on it is odd.
 ODD = 2.0
+_LEAST_ROOM = 1e-3
 _ROUNDS = 8
 
 
@@ -45,12 +51,14 @@ class SteadyRows:
 
 
 def steady_rows(residuals: FloatArray, together: NDArray[np.intp] | None = None) -> SteadyRows:
-    """Residuals with odd samples shrunk to the median size of a sample.
+    """Residuals with odd samples shrunk, so that what is their own is of the median size of a sample.
 
-    Features are scaled to unit variance for the judgement; a sample is odd when its mean square over them
-    exceeds ``ODD`` medians, and is then multiplied by the root of the median over its mean square; until none
-    is odd. Looks at one block alone, and hence keeps what is independent of another block independent. The
-    nuisance has to be removed again afterwards.
+    Features are scaled to unit variance for the judgement. A sample is suspected when its mean square over them
+    exceeds ``ODD`` medians; with the suspects shrunk to the median the others are judged again, until none is
+    left. A suspect is odd when the same holds for what the real components of the samples that are not suspected
+    leave of it (:func:`own_sizes`), and is then multiplied by the root of the median over that mean square. Looks
+    at one block alone, and hence keeps what is independent of another block independent. The nuisance has to be
+    removed again afterwards.
 
     Parameters
     ----------
@@ -76,16 +84,71 @@ def steady_rows(residuals: FloatArray, together: NDArray[np.intp] | None = None)
         raise NumericsError(
             f"residuals have shape {values.shape}; give samples x features, at least one of each"
         )
-    factors = np.ones(values.shape[0])
     one = np.arange(values.shape[0]) if together is None else np.unique(together, return_inverse=True)[1]
-    for _ in range(_ROUNDS):
-        size = (np.bincount(one, _row_sizes(values * factors[:, None])) / np.bincount(one))[one]
-        usual = float(np.median(size))
-        odd = size > ODD * usual
-        if usual <= 0.0 or not odd.any():
-            break
-        factors[odd] *= np.sqrt(usual / size[odd])
+    suspects = _suspects(values, one)
+    factors = np.ones(values.shape[0])
+    if suspects.any() and not suspects.all():
+        size = _joined(own_sizes(values, suspects), one)
+        odd = suspects & (size > ODD)
+        factors[odd] = 1.0 / np.sqrt(size[odd])
     return SteadyRows(values * factors[:, None], factors)
+
+
+def own_sizes(values: FloatArray, suspects: NDArray[np.bool_]) -> FloatArray:
+    """Mean square of what components of the other samples leave of each suspect, in medians of the others.
+
+    Features are scaled by the others, whose real components are told by ``signal_components``. What is left of a
+    suspect after its least-squares fit on their loadings holds the error of these as well, and is larger by
+    ``1 + u'u`` with ``u`` its scores in units of the others' scores; what is left of one of the others is smaller by
+    ``1 - u'u``. Both are allowed for.
+
+    Parameters
+    ----------
+    values : ndarray of shape (n_samples, n_features)
+        Residuals of the nuisance.
+    suspects : ndarray of bool, shape (n_samples,)
+        Some, but not all.
+
+    Returns
+    -------
+    ndarray of shape (n_samples,)
+        1 for samples that are not suspected.
+    """
+    others = values[~suspects]
+    length = np.sqrt(np.mean(others**2, axis=0))
+    peak = np.abs(values).max(axis=0)
+    able = np.isfinite(peak) & (length > CONSTANT_TOLERANCE * peak)
+    scaled = values[:, able] / length[able]
+    others = scaled[~suspects] - scaled[~suspects].mean(axis=0)
+    scores = signal_components(thin_basis(others)).directions
+    loadings = others.T @ scores
+    fit = np.linalg.lstsq(loadings, scaled[suspects].T, rcond=None)[0]
+    room = np.maximum(1.0 - np.sum(scores**2, axis=1), _LEAST_ROOM)
+    usual = np.median(np.mean((others - scores @ loadings.T) ** 2, axis=1) / room)
+    left = np.mean((scaled[suspects] - fit.T @ loadings.T) ** 2, axis=1) / (1.0 + np.sum(fit**2, axis=0))
+    sizes = np.ones(values.shape[0])
+    sizes[suspects] = left / usual if usual > 0.0 else 1.0
+    return sizes
+
+
+def _suspects(values: FloatArray, one: NDArray[np.intp]) -> NDArray[np.bool_]:
+    """Return which samples are large throughout, all rows of one together."""
+    factors = np.ones(values.shape[0])
+    for _ in range(_ROUNDS):
+        size = _joined(_row_sizes(values * factors[:, None]), one)
+        usual = float(np.median(size))
+        large = size > ODD * usual
+        if usual <= 0.0 or not large.any():
+            break
+        factors[large] *= np.sqrt(usual / size[large])
+    suspects: NDArray[np.bool_] = factors < 1.0
+    return suspects
+
+
+def _joined(sizes: FloatArray, one: NDArray[np.intp]) -> FloatArray:
+    """Return for each row the mean over the rows that are judged with it."""
+    joined: FloatArray = (np.bincount(one, sizes) / np.bincount(one))[one]
+    return joined
 
 
 def _row_sizes(values: FloatArray) -> FloatArray:

@@ -12,6 +12,7 @@ from scipy.stats import rankdata
 from workbench.engine.far_values import excess_kurtosis, withstand
 from workbench.engine.linear import thin_basis
 from workbench.engine.nuisance import CONSTANT_TOLERANCE, Nuisance
+from workbench.engine.odd_rows import steady_rows
 from workbench.engine.scree import parallel_analysis
 from workbench.engine.signal_components import signal_components
 
@@ -32,7 +33,7 @@ class BlockComponents:
     Attributes
     ----------
     z : ndarray of shape (n_samples, n_kept)
-        Residuals of the nuisance, heavy tails withstood, every column of unit length.
+        Residuals of the nuisance, odd samples and heavy tails withstood, every column of unit length.
     kept : ndarray of int, shape (n_kept,)
         Features that vary and have no gap.
     scores : ndarray of shape (n_samples, n_components)
@@ -41,6 +42,8 @@ class BlockComponents:
         Share of the block's variance, after the nuisance, of each.
     dimensions : int
         What the nuisance leaves of the samples' dimensions.
+    steady : ndarray of shape (n_samples,)
+        What the residuals of each sample were multiplied by; 1 for samples that are not odd, and with ranks.
     """
 
     z: FloatArray
@@ -48,6 +51,7 @@ class BlockComponents:
     scores: FloatArray
     shares: FloatArray
     dimensions: int
+    steady: FloatArray
 
     @property
     def loadings(self) -> FloatArray:
@@ -74,9 +78,9 @@ def block_components(values: FloatArray, nuisance: Nuisance, *, ranks: bool, see
     seed : int
         For the parallel analysis of narrow blocks.
     """
-    z, kept = unit_residuals(values, nuisance, ranks=ranks)
+    z, kept, steady = unit_residuals(values, nuisance, ranks=ranks)
     n, p = z.shape
-    nothing = BlockComponents(z, kept, np.empty((n, 0)), np.empty(0), n - nuisance.rank)
+    nothing = BlockComponents(z, kept, np.empty((n, 0)), np.empty(0), n - nuisance.rank, steady)
     if n - nuisance.rank < FEWEST_DIMENSIONS or p < 2:
         return nothing
     basis = thin_basis(z)
@@ -90,7 +94,7 @@ def block_components(values: FloatArray, nuisance: Nuisance, *, ranks: bool, see
     scores = scores @ simple_rotation(z.T @ scores)
     shares = np.sum((z.T @ scores) ** 2, axis=0) / p
     order = np.argsort(-shares, kind="stable")
-    return BlockComponents(z, kept, scores[:, order], shares[order], n - nuisance.rank)
+    return BlockComponents(z, kept, scores[:, order], shares[order], n - nuisance.rank, steady)
 
 
 def simple_rotation(loadings: FloatArray) -> FloatArray:
@@ -154,10 +158,15 @@ def _turn_plane(turned: FloatArray, rotation: FloatArray, a: int, b: int) -> flo
 
 def unit_residuals(
     values: FloatArray, nuisance: Nuisance, *, ranks: bool = False
-) -> tuple[FloatArray, IndexArray]:
-    """Residuals of the nuisance with heavy tails withstood, columns of unit length; and which features they are.
+) -> tuple[FloatArray, IndexArray, FloatArray]:
+    """Residuals of the nuisance with odd samples and heavy tails withstood, columns of unit length.
 
     Features with a gap, and those without variance left, are left out.
+
+    Returns
+    -------
+    tuple of ndarray
+        The residuals, which features they are, and what each sample was multiplied by.
     """
     values = np.asarray(values, dtype=np.float64)
     finite = np.flatnonzero(np.isfinite(values).all(axis=0))
@@ -169,7 +178,11 @@ def unit_residuals(
     varies = np.linalg.norm(rest, axis=0) > CONSTANT_TOLERANCE * whole
     if not varies.all():
         rest, finite = rest[:, varies], finite[varies]
-    if not ranks:
+    steady = np.ones(nuisance.n_samples)
+    if not ranks and rest.size:
+        found = steady_rows(rest)
+        steady = found.factors
+        rest = nuisance.residuals(found.values) if found.odd.size else rest
         rest = nuisance.residuals(withstand(rest, nuisance.n_samples - nuisance.rank))
     length = np.linalg.norm(rest, axis=0)
-    return rest / np.where(length > 0.0, length, 1.0), finite
+    return rest / np.where(length > 0.0, length, 1.0), finite, steady

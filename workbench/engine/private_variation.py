@@ -129,6 +129,8 @@ class PrivateScreen:
     couples, mixed : tuple of int
         For each pair of blocks the couples of shared components that modules were sought by, and those of them
         that were left out as mixtures of shared factors; empty where none were sought.
+    steady : tuple of ndarray of shape (n_samples,)
+        For each block what the residuals of each of its samples were multiplied by: 1, or less for an odd one.
     """
 
     screen: BlockScreen
@@ -138,6 +140,7 @@ class PrivateScreen:
     cleaned: tuple[tuple[FloatArray, FloatArray], ...] = field(repr=False)
     couples: tuple[int, ...] = ()
     mixed: tuple[int, ...] = ()
+    steady: tuple[FloatArray, ...] = ()
 
     @property
     def removed(self) -> tuple[tuple[RealComponent, ...], ...]:
@@ -157,6 +160,7 @@ class CleanedPairs:
     shared: tuple[tuple[FloatArray, FloatArray], ...]
     components: tuple[tuple[RealComponent, ...], ...]
     off: tuple[str, ...]
+    steady: tuple[FloatArray, ...]
 
 
 def pairs_without_private(
@@ -191,7 +195,8 @@ def pairs_without_private(
         (_shared(judged[a], view, view.x_rows, reason), _shared(judged[b], view, view.y_rows, reason))
         for view, (a, b), reason in zip(views, pairs, off, strict=True)
     )
-    return CleanedPairs(tested, shared, tuple(one.components for one in judged), off)
+    told, steady = tuple(one.components for one in judged), tuple(one.steady for one in judged)
+    return CleanedPairs(tested, shared, told, off, steady)
 
 
 def screen_without_private(
@@ -266,7 +271,14 @@ def screen_cleaned(
     )
     cleaned = tuple(_as_tested(pair, correlation == "spearman") for pair in made.pairs)
     return PrivateScreen(
-        found.screen, found.support, made.components, made.off, cleaned, found.couples, found.mixed
+        found.screen,
+        found.support,
+        made.components,
+        made.off,
+        cleaned,
+        found.couples,
+        found.mixed,
+        made.steady,
     )
 
 
@@ -368,10 +380,11 @@ def _stays(shared: bool, weak: bool) -> Stays:
 
 @dataclass(frozen=True, eq=False)
 class _Judged:
-    """A block's components, and the variance that removal leaves each feature along a shared component."""
+    """A block's components, the variance that removal leaves each feature along a shared one, and odd samples."""
 
     components: tuple[RealComponent, ...]
     trace: FloatArray
+    steady: FloatArray
 
 
 def _freed(own: BlockComponents, told: tuple[RealComponent, ...], n_features: int) -> _Judged:
@@ -388,7 +401,7 @@ def _freed(own: BlockComponents, told: tuple[RealComponent, ...], n_features: in
         removed[keep] = False
         trace[own.kept] = _trace(own, removed, mixed.variance[:, ~np.isin(places, keep)])
     if not removed.any() or removed.all():
-        return _Judged(told, trace)
+        return _Judged(told, trace, own.steady)
     mixed = admixture(own.z, own.scores[:, removed], own.scores[:, ~removed], own.dimensions)
     factors = own.scores[:, removed] + own.scores[:, ~removed] @ mixed.coefficients
     factors /= np.linalg.norm(factors, axis=0)
@@ -396,7 +409,7 @@ def _freed(own: BlockComponents, told: tuple[RealComponent, ...], n_features: in
     told = tuple(
         replace(one, scores=factors[:, place[k]]) if removed[k] else one for k, one in enumerate(told)
     )
-    return _Judged(told, trace)
+    return _Judged(told, trace, own.steady)
 
 
 def _trace(own: BlockComponents, removed: NDArray[np.bool_], variance: FloatArray) -> FloatArray:
@@ -426,7 +439,9 @@ def _pair(
         values = blocks[place].values[rows]
         freedom = rows.size - view.nuisance.rank
         damping = 1.0 / np.sqrt(1.0 + freedom * judged[place].trace * (not off))
-        sides.append((values if ranks else _cleaned(values, own), own, damping))
+        if not ranks:
+            values = cleaned_features(values, view.nuisance, own, judged[place].steady[rows])
+        sides.append((values, own, damping))
     (x, x_own, x_damping), (y, y_own, y_damping) = sides
     name = f"{blocks[pair[0]].name} x {blocks[pair[1]].name}"
     return BlockPair(name, x, y, view.nuisance, x_own, y_own, (x_damping, y_damping))
@@ -440,9 +455,24 @@ def _shared(block: _Judged, view: _View, rows: IndexArray, off: str) -> FloatArr
     return unit
 
 
-def _cleaned(values: FloatArray, own: Nuisance) -> FloatArray:
-    """Return what is left of the features, exactly zero for those that have no variance left."""
-    rest = own.residuals(values)
+def cleaned_features(values: FloatArray, nuisance: Nuisance, own: Nuisance, steady: FloatArray) -> FloatArray:
+    """Return what is left of the features of a block, as a screen takes it for Pearson's correlation.
+
+    Odd samples are shrunk once the nuisance is out; what is removed with it goes then, and heavy tails are
+    withstood. Features that have no variance left are exactly zero.
+
+    Parameters
+    ----------
+    values : ndarray of shape (n_samples, n_features)
+    nuisance : Nuisance
+        Of both blocks.
+    own : Nuisance
+        The same with the block's private variation.
+    steady : ndarray of shape (n_samples,)
+        What each sample's residuals are multiplied by.
+    """
+    odd = (steady < 1.0).any()
+    rest = own.residuals(steady[:, None] * nuisance.residuals(values) if odd else values)
     constant = np.linalg.norm(rest, axis=0) <= CONSTANT_TOLERANCE * np.linalg.norm(values, axis=0)
     rest[:, constant] = 0.0
     return withstand(rest, own.n_samples - own.rank)
