@@ -172,7 +172,7 @@ def view_preparation(state: ProjectState, view: BlockView, shapes: Levels | None
 def _adjust(state: ProjectState, name: str) -> tuple[str, ...]:
     """Return the nuisance columns of the study and of one block, each once."""
     own = state.settings.blocks[name].adjust
-    return tuple(dict.fromkeys([*state.settings.samples.adjust, *own]))
+    return tuple(dict.fromkeys([*own, *state.settings.samples.adjust]))
 
 
 def _groups(state: ProjectState, frame: pd.DataFrame) -> Levels | None:
