@@ -24,7 +24,7 @@ def draw_sides(n: int, p: int, q: int, seed: int = 0, strength: float = 0.0) -> 
 
 def unscored(split: Split) -> Split:
     """Return the split with every test row of one side missing."""
-    return replace(split, x_test=np.full_like(split.x_test, np.nan))
+    return replace(split, x=replace(split.x, test=np.full_like(split.x.test, np.nan)))
 
 
 def test_the_path_covers_four_decades_evenly() -> None:
@@ -42,9 +42,8 @@ def test_a_grid_point_is_what_the_estimator_gives(p: int, q: int, place: tuple[i
     source = array_source(x, y)
     u, v = np.empty((2, 24, 2))
     for train, test in balanced_folds(None, 24, 4, 7):
-        part = source(train, test)
-        model = RegularisedCCA(2, ridge=tuple(RIDGE_PATH[list(place)])).fit(part.x_train, part.y_train)
-        u[test], v[test] = model.transform(part.x_test, part.y_test)
+        model = RegularisedCCA(2, ridge=tuple(RIDGE_PATH[list(place)])).fit(x[train], y[train])
+        u[test], v[test] = model.transform(x[test], y[test])
     want = (u * v).sum() / np.sqrt((u**2).sum() * (v**2).sum())
     assert choose_ridge(source, 24, folds=4, seed=7).scores[place] == pytest.approx(want, abs=1e-8)
 

@@ -6,7 +6,13 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose, assert_array_equal
 
-from workbench.engine import RegularisedCCA, array_source, balanced_folds, cross_validated_correlations
+from workbench.engine import (
+    RegularisedCCA,
+    array_source,
+    balanced_folds,
+    cross_validated_correlations,
+    fit_residuals,
+)
 from workbench.engine.fold_scores import pooled_score
 from workbench.errors import NumericsError
 
@@ -62,9 +68,15 @@ def test_the_slow_way_gives_the_same(nuisance: bool) -> None:
     result = cross_validated_correlations(source, 30, ridge=(1.0, 0.3), folds=3, repeats=1, seed=9)
     u, v = np.empty((2, 30, 2))
     for train, test in balanced_folds(None, 30, 3, np.random.SeedSequence(9, spawn_key=(0,))):
-        part = source(train, test)
-        model = RegularisedCCA(2, ridge=(1.0, 0.3)).fit(part.x_train, part.y_train)
-        u[test], v[test] = model.transform(part.x_test, part.y_test)
+        fitted = [fit_residuals(None if columns is None else columns[train], side[train]) for side in (x, y)]
+        taught, unseen = (
+            [
+                one.standardised(None if columns is None else columns[rows], side[rows])
+                for one, side in zip(fitted, (x, y), strict=True)
+            ]
+            for rows in (train, test)
+        )
+        u[test], v[test] = RegularisedCCA(2, ridge=(1.0, 0.3)).fit(*taught).transform(*unseen)
     want = (u * v).sum(axis=0) / np.sqrt((u**2).sum(axis=0) * (v**2).sum(axis=0))
     assert_allclose(result.correlations, want, atol=1e-9)
     assert result.choice is None

@@ -51,7 +51,7 @@ from workbench.engine.planning import (
 from workbench.engine.repeated import screen_repeated, without_subject
 from workbench.engine.ridge_choice import RidgeChoice, choose_ridge
 from workbench.engine.screen import BlockPair, BlockScreen, PairScreen, screen_blocks, screen_pairs
-from workbench.engine.splits import Split, SplitSource, array_source
+from workbench.engine.splits import SideSplit, Split, SplitSource, array_source
 from workbench.engine.stability import HalfScreen, PairStability, half_samples, pair_stability
 from workbench.engine.strongest import Strongest, strongest_pairs
 from workbench.engine.subject_space import SubjectSpace, by_visit, subject_space
@@ -101,6 +101,7 @@ __all__ = [
     "PanelSearch",
     "RegularisedCCA",
     "RidgeChoice",
+    "SideSplit",
     "Split",
     "SplitSource",
     "Standardised",

@@ -20,7 +20,7 @@ from workbench.engine.canonical import (
     check_unridged,
     is_auto,
 )
-from workbench.engine.linear import column_correlations, component_signs, thin_basis
+from workbench.engine.linear import component_signs, thin_basis
 from workbench.engine.ridge_choice import RidgeChoice, choose_ridge
 from workbench.engine.sides import StandardSide, read_side, standard_side
 from workbench.engine.splits import array_source
@@ -255,22 +255,20 @@ class RegularisedCCA(ClassNamePrefixFeaturesOutMixin, TransformerMixin, BaseEsti
 
     def _store(self, x: StandardSide, y: StandardSide, pairs: CanonicalPairs) -> None:
         """Keep the pairs, signed by the one rule, and what they say about the features."""
-        signs = component_signs(
-            column_correlations(x.values, pairs.x_scores), column_correlations(y.values, pairs.y_scores)
-        )
-        u, v = pairs.x_scores * signs, pairs.y_scores * signs
-        x_reading = read_side(x, pairs.x_duals * signs, u, v)
-        y_reading = read_side(y, pairs.y_duals * signs, v, u)
+        x_reading = read_side(x, pairs.x_duals, pairs.x_scores, pairs.y_scores)
+        y_reading = read_side(y, pairs.y_duals, pairs.y_scores, pairs.x_scores)
+        signs = component_signs(x_reading.correlations, y_reading.correlations)
         self.correlations_ = pairs.correlations
-        self.x_scores_, self.y_scores_ = u, v
+        self.x_scores_, self.y_scores_ = pairs.x_scores * signs, pairs.y_scores * signs
         self.x_mean_, self.x_scale_, self.x_kept_ = x.mean, x.scale, x.varies
         self.y_mean_, self.y_scale_, self.y_kept_ = y.mean, y.scale, y.varies
-        self.x_weights_, self.y_weights_ = x_reading.weights, y_reading.weights
-        self.x_correlations_, self.y_correlations_ = x_reading.correlations, y_reading.correlations
-        self.x_cross_correlations_ = x_reading.cross_correlations
-        self.y_cross_correlations_ = y_reading.cross_correlations
-        self.y_loadings_ = np.zeros((v.shape[1], y.varies.size))
-        self.y_loadings_[:, y.varies] = np.linalg.lstsq(v, y.values, rcond=None)[0]
+        self.x_weights_, self.y_weights_ = x_reading.weights * signs, y_reading.weights * signs
+        self.x_correlations_ = x_reading.correlations * signs
+        self.y_correlations_ = y_reading.correlations * signs
+        self.x_cross_correlations_ = x_reading.cross_correlations * signs
+        self.y_cross_correlations_ = y_reading.cross_correlations * signs
+        self.y_loadings_ = np.zeros((signs.size, y.varies.size))
+        self.y_loadings_[:, y.varies] = np.linalg.lstsq(self.y_scores_, y.values, rcond=None)[0]
         self.x_explained_, self.y_explained_ = x_reading.explained, y_reading.explained
         self.x_redundancy_, self.y_redundancy_ = x_reading.redundancy, y_reading.redundancy
 

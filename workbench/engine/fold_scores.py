@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workbench.engine.canonical import RidgePair, check_unridged, leading_directions
-from workbench.engine.linear import ThinBasis, thin_basis
+from workbench.engine.linear import ThinBasis, kernel_basis
 from workbench.engine.splits import Split
 
 FloatArray = NDArray[np.float64]
@@ -50,17 +50,17 @@ class FoldScores:
 
 
 def decompose_split(split: Split) -> FoldBases:
-    """Sample-space decomposition of a split; the last step that touches the features."""
-    x, y = thin_basis(split.x_train), thin_basis(split.y_train)
-    scored = np.asarray(np.isfinite(split.x_test).all(axis=1) & np.isfinite(split.y_test).all(axis=1))
+    """Decomposition of a split, once for all ridges."""
+    x, y = (kernel_basis(side.train, side.n_features) for side in (split.x, split.y))
+    scored = np.asarray(np.isfinite(split.x.test).all(axis=1) & np.isfinite(split.y.test).all(axis=1))
     return FoldBases(
         x,
         y,
         x.vectors.T @ y.vectors,
-        _coordinates(split.x_test[scored], split.x_train, x),
-        _coordinates(split.y_test[scored], split.y_train, y),
+        split.x.test[scored] @ (x.vectors / x.lengths),
+        split.y.test[scored] @ (y.vectors / y.lengths),
         scored,
-        split.x_train.shape[0] - split.nuisance_rank,
+        len(split.x.train) - split.nuisance_rank,
     )
 
 
@@ -112,8 +112,3 @@ def pooled_score(u: FloatArray, v: FloatArray) -> tuple[FloatArray, FloatArray]:
     score = products.sum(axis=-1, keepdims=True) / scale
     influence = products / scale - 0.5 * score * (own_u / total_u + own_v / total_v)
     return score[..., 0], np.sqrt((influence**2).sum(axis=-1))
-
-
-def _coordinates(test: FloatArray, train: FloatArray, basis: ThinBasis) -> FloatArray:
-    inside: FloatArray = (test @ train.T) @ (basis.vectors / basis.lengths)
-    return inside

@@ -7,6 +7,7 @@ largest. One rule for signs, over all blocks together: see :func:`component_sign
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 import scipy.linalg
@@ -43,7 +44,7 @@ class ThinBasis:
         """Number of directions that count by the rank rule."""
         return int(self.lengths.size)
 
-    @property
+    @cached_property
     def noise_level(self) -> float:
         """Median nonzero eigenvalue of ``XX'``: the unit in which ridges are given."""
         return float(np.median(self.lengths**2))
@@ -74,17 +75,38 @@ def thin_basis(x: FloatArray) -> ThinBasis:
     (2, array([3., 2.]), 6.5)
     """
     n, p = x.shape
-    if p <= n:
-        vectors, lengths, _ = scipy.linalg.svd(x, full_matrices=False, check_finite=False)
-    else:
-        eigenvalues, vectors = scipy.linalg.eigh(x @ x.T, check_finite=False)
-        vectors, lengths = vectors[:, ::-1], np.sqrt(np.maximum(eigenvalues[::-1], 0.0))
+    if p > n:
+        return kernel_basis(x @ x.T, p)
+    vectors, lengths, _ = scipy.linalg.svd(x, full_matrices=False, check_finite=False)
+    return _leading_directions(vectors, lengths, n, p)
+
+
+def kernel_basis(kernel: FloatArray, n_features: int) -> ThinBasis:
+    """Thin decomposition of a block from ``XX'``; directions weaker than 1e-8 of the strongest drown in rounding.
+
+    Raises
+    ------
+    NumericsError
+        When the kernel is zero everywhere.
+
+    Examples
+    --------
+    >>> kernel_basis(np.diag([9.0, 4.0, 0.0]), 3).lengths
+    array([3., 2.])
+    """
+    eigenvalues, vectors = scipy.linalg.eigh(kernel, check_finite=False)
+    lengths = np.sqrt(np.maximum(eigenvalues[::-1], 0.0))
+    return _leading_directions(vectors[:, ::-1], lengths, len(kernel), n_features)
+
+
+def _leading_directions(vectors: FloatArray, lengths: FloatArray, n: int, n_features: int) -> ThinBasis:
+    """Keep the directions that count by the rank rule."""
     if lengths[0] == 0.0:
         raise NumericsError(
-            f"the block of {n} samples x {p} features has no variation left; leave it out, or remove less"
+            f"the block of {n} samples x {n_features} features has no variation left; leave it out, or remove less"
         )
     rank = int(np.count_nonzero(lengths**2 > RANK_TOLERANCE * lengths[0] ** 2))
-    return ThinBasis(np.ascontiguousarray(vectors[:, :rank]), lengths[:rank], p)
+    return ThinBasis(np.ascontiguousarray(vectors[:, :rank]), lengths[:rank], n_features)
 
 
 def component_signs(*loadings: FloatArray) -> FloatArray:

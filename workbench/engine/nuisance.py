@@ -96,9 +96,10 @@ class Nuisance:
                 "give both for the same samples, in the same order"
             )
         # Centring first keeps digits when the mean is far larger than the spread.
-        centred = x - x.mean(axis=0)
-        residual: FloatArray = centred - self.basis @ (self.basis.T @ centred)
-        return residual
+        centred: FloatArray = x - x.mean(axis=0)
+        if self.rank > 1:
+            centred -= self.basis @ (self.basis.T @ centred)
+        return centred
 
 
 def aliased(columns: FloatArray, names: Sequence[str]) -> tuple[str, ...]:
@@ -207,9 +208,8 @@ def standardise(x: FloatArray, nuisance: Nuisance | None = None) -> Standardised
             f"none of the {x.shape[1]} features has variance left after the nuisance "
             f"({nuisance.rank} of {nuisance.n_samples} dimensions); remove fewer, or leave the block out"
         )
-    return Standardised(
-        residual[:, kept] / scale[kept], scale[kept], kept, np.flatnonzero(~varies), nuisance.rank
-    )
+    values = (residual if varies.all() else residual[:, kept]) / scale[kept]
+    return Standardised(values, scale[kept], kept, np.flatnonzero(~varies), nuisance.rank)
 
 
 @dataclass(frozen=True, eq=False)
@@ -327,8 +327,8 @@ def residual_scale(x: FloatArray, residual: FloatArray, rank: int) -> tuple[Floa
             f"{n} samples and a nuisance of {rank} dimensions (with intercept) leave no degree of freedom; "
             "remove fewer nuisance columns, or add samples"
         )
-    length = np.linalg.norm(residual, axis=0)
-    varies = length > CONSTANT_TOLERANCE * np.linalg.norm(x, axis=0)
+    length, whole = (np.sqrt(np.einsum("ij,ij->j", one, one)) for one in (residual, x))
+    varies = length > CONSTANT_TOLERANCE * whole
     return length / np.sqrt(n - rank), np.asarray(varies)
 
 

@@ -65,12 +65,22 @@ def block_weights(varies: NDArray[np.bool_], blocks: Sequence[slice]) -> FloatAr
     array([2.5  , 0.625, 0.625, 0.625, 0.625])
     """
     sizes = [int(np.count_nonzero(varies[block])) for block in blocks]
-    filled = sum(size > 0 for size in sizes)
     weights = np.ones(varies.size)
-    for block, size in zip(blocks, sizes, strict=True):
-        if size:
-            weights[block] = np.sqrt(sum(sizes) / (filled * size))
+    for block, weight in zip(blocks, kernel_weights(sizes), strict=True):
+        weights[block] = np.sqrt(weight)
     return weights[varies]
+
+
+def kernel_weights(sizes: Sequence[int]) -> list[float]:
+    """Weight ``p / (B p_b)`` of each block's kernel by how many of its features vary; 0 where none does.
+
+    Examples
+    --------
+    >>> kernel_weights([1, 4, 0])
+    [2.5, 0.625, 0.0]
+    """
+    filled = sum(size > 0 for size in sizes)
+    return [sum(sizes) / (filled * size) if size else 0.0 for size in sizes]
 
 
 @dataclass(frozen=True, eq=False)
@@ -131,7 +141,8 @@ def standard_side(
         )
     scale = np.ones(x.shape[1])
     scale[varies] = deviation[varies] / block_weights(varies, blocks)
-    return StandardSide(centred[:, varies] / scale[varies], mean, scale, varies, blocks)
+    values = (centred if varies.all() else centred[:, varies]) / scale[varies]
+    return StandardSide(values, mean, scale, varies, blocks)
 
 
 @dataclass(frozen=True, eq=False)
@@ -166,14 +177,18 @@ def read_side(side: StandardSide, duals: FloatArray, own: FloatArray, other: Flo
     own, other : ndarray of shape (n_samples, n_components)
         Variates of this side and of the other.
     """
+    columns = [own, other, np.linalg.qr(own)[0], np.linalg.qr(other)[0]]
+    found = _all_features(column_correlations(side.values, np.hstack(columns)), side.varies)
+    ends = np.cumsum([one.shape[1] for one in columns])
+    correlations, crossed, own_steps, other_steps = np.split(found, ends[:-1], axis=1)
     weights = np.zeros((side.varies.size, own.shape[1]))
     weights[side.varies] = side.values.T @ duals
     return SideReading(
         weights=weights,
-        correlations=_all_features(column_correlations(side.values, own), side.varies),
-        cross_correlations=_all_features(column_correlations(side.values, other), side.varies),
-        explained=_explained(side, own),
-        redundancy=_explained(side, other),
+        correlations=correlations,
+        cross_correlations=crossed,
+        explained=_explained(side, own_steps),
+        redundancy=_explained(side, other_steps),
     )
 
 
@@ -183,10 +198,9 @@ def _all_features(rows: FloatArray, varies: NDArray[np.bool_]) -> FloatArray:
     return every
 
 
-def _explained(side: StandardSide, variates: FloatArray) -> FloatArray:
+def _explained(side: StandardSide, steps: FloatArray) -> FloatArray:
     """Mean squared correlation with what each variate adds to those before it (Gram-Schmidt)."""
-    steps = _all_features(column_correlations(side.values, np.linalg.qr(variates)[0]) ** 2, side.varies)
     counts = np.array([np.count_nonzero(side.varies[block]) for block in side.blocks])
-    sums = np.array([np.nansum(steps[block], axis=0) for block in side.blocks]).T
+    sums = np.array([np.nansum(steps[block] ** 2, axis=0) for block in side.blocks]).T
     shares: FloatArray = np.divide(sums, counts, out=np.full(sums.shape, np.nan), where=counts > 0)
     return shares

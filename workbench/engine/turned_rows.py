@@ -21,8 +21,10 @@ class TurnedRows:
 
     Attributes
     ----------
-    order, inverse : ndarray of int, shape (n_arrangements, n_rows)
-        Row that comes to each place, and place that each row comes to.
+    order : ndarray of int, shape (n_arrangements, n_rows)
+        Row that comes to each place.
+    there, back : ndarray of int, shape (n_rows, n_arrangements)
+        The arrangements and their inverses as places in flattened arrays of this shape.
     lift : ndarray of shape (n_arrangements, n_rows, n_removed)
         ``A + B~``.
     drop : ndarray of shape (n_arrangements, n_removed, n_rows)
@@ -38,7 +40,8 @@ class TurnedRows:
     """
 
     order: IndexArray
-    inverse: IndexArray
+    there: IndexArray
+    back: IndexArray
     lift: FloatArray
     drop: FloatArray
 
@@ -49,9 +52,9 @@ class TurnedRows:
         a = removed[order]
         # A'B = L S R', so that A'B~ = L S L' and B~ = B R L'.
         left, lengths, right = np.linalg.svd(a.transpose(0, 2, 1) @ removed)
-        back = (left / (1.0 + lengths[:, None, :])) @ right
-        drop = back @ removed[inverse].transpose(0, 2, 1)
-        return cls(order, inverse, a + removed @ (left @ right).transpose(0, 2, 1), drop)
+        drop = (left / (1.0 + lengths[:, None, :])) @ right @ removed[inverse].transpose(0, 2, 1)
+        lift = a + removed @ (left @ right).transpose(0, 2, 1)
+        return cls(order, _flat(order), _flat(inverse), lift, drop)
 
     def rows(self, vectors: FloatArray) -> FloatArray:
         """Return the turned rows of vectors (n_rows, n_columns), shape (n_arrangements, n_rows, n_columns)."""
@@ -69,14 +72,18 @@ class TurnedRows:
 
     def forward(self, columns: FloatArray) -> FloatArray:
         """Turn one vector for each arrangement, (n_rows, n_arrangements)."""
-        moved = np.take_along_axis(columns, self.order.T, axis=0)
+        moved = np.take(columns, self.there)
         if self.drop.shape[1]:
             moved -= np.einsum("anc,ca->na", self.lift, np.einsum("acn,na->ca", self.drop, columns))
         return moved
 
     def backward(self, columns: FloatArray) -> FloatArray:
         """Apply the transposes of what :meth:`forward` does."""
-        moved = np.take_along_axis(columns, self.inverse.T, axis=0)
+        moved = np.take(columns, self.back)
         if self.drop.shape[1]:
             moved -= np.einsum("acn,ca->na", self.drop, np.einsum("anc,na->ca", self.lift, columns))
         return moved
+
+
+def _flat(order: IndexArray) -> IndexArray:
+    return np.ascontiguousarray(order.T * len(order) + np.arange(len(order)))

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.engine import Nuisance, Split, SplitSource, fit_residuals, standardise
+from workbench.engine import Nuisance, SideSplit, Split, SplitSource, fit_residuals, standardise
 from workbench.engine.generalised_validation import BlockSplit, BlocksSource
 from workbench.errors import InputError
 from workbench.prepare import recipe_for
@@ -88,7 +88,7 @@ def two_side_source(view: AnalysisView, units: Units) -> SplitSource:
     def source(train: IndexArray, test: IndexArray) -> Split:
         x, y = (_fold_layer(view, layer, units, train, test) for layer in (first, second))
         rank = Nuisance.of(units.nuisance[train], train.size).rank
-        return Split(x.train, x.test, y.train, y.test, rank)
+        return Split(SideSplit.of(x.train, x.test), SideSplit.of(y.train, y.test), rank)
 
     return source
 
