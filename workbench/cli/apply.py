@@ -26,7 +26,7 @@ def apply(
     project: ProjectOption = None,
     quiet: QuietOption = False,
 ) -> None:
-    """Apply an analysis to another project's samples: predictions, their figures, edges that replicate."""
+    """Apply an analysis to another project's samples. Predictions, their figures, edges that replicate."""
     from workbench.workflow.applying import applied_folder, apply_analysis
 
     opened = open_project(project)

@@ -68,7 +68,7 @@ def add_block(
     project: ProjectOption = None,
     quiet: QuietOption = False,
 ) -> None:
-    """Bring a delivered table in: keep it, read it, align it to the sample sheet."""
+    """Bring a delivered table in as a block. It is kept, read, and aligned to the sample sheet."""
     opened = open_project(project)
     lines = opened.add_block(
         name,

@@ -30,7 +30,7 @@ def check(
     as_json: JsonOption = False,
     quiet: QuietOption = False,
 ) -> None:
-    """Find what is wrong with the data; exit 1 when an error is not accepted."""
+    """Find what is wrong with the data. Exit 1 when an error is not accepted."""
     opened = open_project(project)
     if files:
         _check_files(opened, as_json)

@@ -33,7 +33,7 @@ def compare(
     project: ProjectOption = None,
     quiet: QuietOption = False,
 ) -> None:
-    """Compare two analyses: edges kept, gained, lost and changed, communities, settings."""
+    """Compare two analyses: edges, communities, settings. Edges are kept, gained, lost, and changed or not."""
     from workbench.workflow.comparing import run_compare
 
     comparison, folder = run_compare(_here(project), (first, second), by)

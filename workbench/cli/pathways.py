@@ -33,7 +33,7 @@ def pathways(
     project: ProjectOption = None,
     quiet: QuietOption = False,
 ) -> None:
-    """Follow the network: over-represented sets, coherence, known links, the short list, figures."""
+    """Follow the network: the short list, sets, known links. Over-representation, coherence and figures too."""
     from workbench.workflow.knowledge import add_knowledge, pathways_stages
     from workbench.workflow.stages import run_stages
 

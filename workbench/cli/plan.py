@@ -52,7 +52,7 @@ def plan(
     project: ProjectOption = None,
     as_json: JsonOption = False,
 ) -> None:
-    """Say how many samples a correlation needs, or the smallest one that a design can find."""
+    """Say what a design can find. The smallest correlation, and the samples that a weaker one needs."""
     from workbench.workflow.analysis_view import blocks_of
     from workbench.workflow.planning import plan_of_numbers, project_plans
 

@@ -45,7 +45,7 @@ def init(
 
 
 def status(project: ProjectOption = None, as_json: JsonOption = False, quiet: QuietOption = False) -> None:
-    """Say what is done, what is stale and why, and the next command."""
+    """Say what is done, what is stale and why, what to type next."""
     found = open_project(project).status()
     if as_json:
         answer([json.dumps(found.as_json(), indent=1, ensure_ascii=False)])

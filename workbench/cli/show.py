@@ -47,7 +47,7 @@ def show(
     as_json: JsonOption = False,
     quiet: QuietOption = False,
 ) -> None:
-    """Show the evidence for a feature or a pair: partners, numbers, doubts, a scatter by group."""
+    """Show the evidence for a feature or a pair. Partners, numbers, doubts, a scatter by group."""
     opened = open_project(project)
     stories = opened.show(*features, analysis=analysis, tell=tell_lines)
     if as_json:

@@ -38,7 +38,7 @@ def prepare(
     project: ProjectOption = None,
     quiet: QuietOption = False,
 ) -> None:
-    """Run each block's recipe: from measured values to values fit for linear methods."""
+    """Make values fit for linear methods, by each block's recipe."""
     opened = open_project(project)
     outcome = opened.prepare(*(blocks or ()), reporter=terminal_reporter(quiet or explain))
     if explain:
@@ -54,7 +54,7 @@ def look(
     project: ProjectOption = None,
     quiet: QuietOption = False,
 ) -> None:
-    """Look at each block on its own: principal components, figures, tables, a reading in words."""
+    """Look at each block on its own. Principal components, figures, tables, a reading in words."""
     opened = open_project(project)
     outcome = opened.look(*(blocks or ()), reporter=terminal_reporter(quiet))
     known = list(opened.state().settings.blocks)
@@ -68,7 +68,7 @@ def look(
 def integrate(
     analyses: AnalysesArgument = None, project: ProjectOption = None, quiet: QuietOption = False
 ) -> None:
-    """Run the engine: what the layers of an analysis share, tested and cross-validated."""
+    """Find what layers share (or what tells an outcome), tested."""
     opened = open_project(project)
     outcome = opened.integrate(*(analyses or ()), reporter=terminal_reporter(quiet))
     _close(outcome, opened.status(*(analyses or ())), quiet)
