@@ -57,5 +57,12 @@ def test_show_and_pathways_see_the_r_of_the_screen(tmp_path, correlation, remove
     private = project.result("main").private
     assert bool(len(private)) == (remove == "true")
     assert (edges["r_without_one"].abs() <= edges["r"].abs() + 1e-9).all()
+    odd = project.result("main").record["private_variation"]
+    if (correlation, remove) == ("pearson", "true"):
+        found = odd["odd_brought_back_to_size"]
+        assert {name: min(sizes, key=sizes.get) for name, sizes in found.items()} == {
+            "one": "S17",
+            "two": "S17",
+        }
     if correlation == "spearman":
         np.testing.assert_allclose(edges["r_spearman"], edges["r"], atol=1e-9)
