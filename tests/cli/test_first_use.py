@@ -267,3 +267,14 @@ def test_the_levels_of_the_group_are_told_with_the_reference_first(command, tmp_
     (line,) = [line for line in err.splitlines() if line.startswith("group 'group'")]
     assert "(12), " in line
     assert "differences are from the first; another order is said with order = { group = [...] }" in line
+
+
+def test_the_order_of_visits_is_told_when_the_sheet_comes_in(command, tmp_path):
+    sheet, study = tmp_path / "tubes.tsv", tmp_path / "study"
+    lines = [f"T{d}{v[0]}\tD{d}\t{v}" for d in range(4) for v in ("before", "after")]
+    sheet.write_text("\n".join(["tube\tdonor\tvisit", *lines]) + "\n")
+    assert command("init", study, "--template", "paired")[0] == 0
+    code, _, err = command("add-samples", sheet, "--project", study)
+    assert (code, "add-samples FILE --subject COLUMN" in err) == (2, True)
+    code, _, err = command("add-samples", sheet, "--subject", "donor", "--time", "visit", "--project", study)
+    assert (code, "visits in the order after, before; another one is said with order" in err) == (0, True)

@@ -291,7 +291,9 @@ def _method_faults(settings: Settings, name: str, columns: Sequence[str]) -> Ite
         yield from _outcome_faults((*key, "outcome"), settings, chosen.outcome, columns)
     if chosen.level is not None and settings.samples.subject is None:
         yield _fault(
-            (*key, "level"), "is for several samples of one subject; name samples.subject, or leave it out"
+            (*key, "level"),
+            "is for several samples of one subject; name samples.subject "
+            "(`add-samples FILE --subject COLUMN`), or leave it out",
         )
     layers = {settings.blocks[block].layer for block in settings.blocks_of(name)}
     if chosen.method == "ridge_cca" and len(layers) > 2:

@@ -31,6 +31,7 @@ from workbench.store import Change, ProjectPaths, project_lock, table_bytes
 from workbench.workflow.blocks import Tell, empty_cells_line, no_words, require_columns
 from workbench.workflow.sources import delivered_file, keep_source
 from workbench.workflow.state import load_state
+from workbench.workflow.subjects import visit_lines
 
 MOST_LEVELS = 8
 
@@ -106,7 +107,7 @@ def add_samples(paths: ProjectPaths, delivery: SheetDelivery, tell: Tell = no_wo
             sources = [{"file": file, "sha256": digest, "delivered_as": delivery.file.name}]
             change.commit({"command": "add-samples", "sources": sources})
     unnamed = not delivery.columns
-    notes = (*sheet.notes, *empty_cells(frame, settings.samples), *group_lines(frame, settings.samples))
+    notes = (*sheet.notes, *empty_cells(frame, settings.samples), *order_lines(frame, settings.samples))
     return SheetAccount(len(frame), notes, kinds, suggest_columns(frame) if unnamed else None)
 
 
@@ -153,8 +154,8 @@ def empty_cells(frame: pd.DataFrame, samples: SamplesSettings) -> tuple[str, ...
     return tuple(told)
 
 
-def group_lines(frame: pd.DataFrame, samples: SamplesSettings) -> tuple[str, ...]:
-    """Return a sentence for each factor: its levels in order, the reference first, and the samples of each."""
+def order_lines(frame: pd.DataFrame, samples: SamplesSettings) -> tuple[str, ...]:
+    """Return a sentence for each factor, its levels in order and the samples of each, and one for the visits."""
     told = []
     for factor in samples.group:
         held = frame.drop(index=missing_samples(frame, [factor]).get(factor, []))
@@ -166,6 +167,8 @@ def group_lines(frame: pd.DataFrame, samples: SamplesSettings) -> tuple[str, ...
         line = f"group {shown(factor)}, levels in order and their samples: {listed}; differences are from the first"
         other = f"; another order is said with order = {{ {factor} = [...] }} under [samples]"
         told.append(line if factor in samples.order else line + other)
+    if samples.time is not None:
+        told += visit_lines(frame[samples.time], samples.order.get(samples.time))
     return tuple(told)
 
 

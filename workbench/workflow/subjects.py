@@ -15,6 +15,7 @@ from workbench.intake.kinds import column_numbers, present
 from workbench.settings import Settings
 
 DIGITS = re.compile(r"(\d+)")
+MOST_VISITS = 8
 
 
 def subject_columns(settings: Settings) -> list[str]:
@@ -79,6 +80,16 @@ def time_levels(series: pd.Series, order: tuple[str, ...] | None) -> tuple[str, 
     if numbers is not None:
         return tuple(sorted(levels, key=lambda level: (float(level), level)))
     return tuple(sorted(levels, key=_natural))
+
+
+def visit_lines(series: pd.Series, order: tuple[str, ...] | None) -> list[str]:
+    """Return the order in which visits are taken, in words, where a column of text gives it."""
+    levels = time_levels(series, order)
+    if all(level.replace(".", "", 1).isdigit() for level in levels):
+        return []
+    shown = ", ".join(levels[:MOST_VISITS]) + (", ..." if len(levels) > MOST_VISITS else "")
+    other = f"; another one is said with order = {{ {series.name} = [...] }} under [samples]"
+    return [f"visits in the order {shown}{'' if order is not None else other}"]
 
 
 def _moments(series: pd.Series, order: tuple[str, ...] | None) -> NDArray[np.float64]:
