@@ -3,9 +3,11 @@
 ``env -u OPENBLAS_CORETYPE -u OPENBLAS_L2_SIZE python tests/benchmarks/stability_speed.py [--halves 100]``:
 the bare product writes every tile to one buffer and looks at none.
 
-Measured with other work on both cores (load 10), one thread, 20 halves: n = 100, 10,000 x 10,000 ratio 1.8; n = 60,
-20,000 x 5,000 2.2; n = 100, 5,000 x 2,000 2.9; n = 96, 3,000 x 250 11 (35 ms a half: what is not a product weighs
-more). In processor time on 1e8 pairs, n = 100: 1.6 to 2.0, of which 0.3 is removing the nuisance anew in each half.
+Times are of the processor, the bare products measured before and after. Measured with other work on both cores (load
+7), one thread, 20 halves, numpy 2.4, twice: n = 100, 10,000 x 10,000 ratio 1.38, 1.39; n = 60, 20,000 x 5,000 1.51, 1.53;
+n = 100, 5,000 x 2,000 1.86, 1.88; n = 96, 3,000 x 250 6.6, 6.7 (5 ms a half: what is not a product weighs more). Where
+private variation is told anew in each half, telling it is most of the time: 0.55 s a half at 100 x (10,000 + 10,000)
+with seven private factors, 5.9 times the product, 0.42 s at 60 x (20,000 + 5,000), 0.18 s at 96 x (3,000 + 250).
 """
 
 from __future__ import annotations
@@ -31,15 +33,13 @@ def main() -> None:
         screen = screen_pairs(x, y, maximum_edges=20_000)
         edges = np.column_stack([np.zeros_like(screen.i), screen.i, screen.j])
         parts = half_samples(n, None, None, halves, 0)
-        start = time.perf_counter()
-        for rows in parts:
-            _bare(*(np.ascontiguousarray(side[rows].T, dtype=np.float32) for side in (x, y)))
-        bare = time.perf_counter() - start
-        start = time.perf_counter()
+        bare = _all_bare(parts, x, y)
+        start = time.process_time()
         found = pair_stability(
             n, None, None, halves, HalfScreen([BlockPair("a", x, y)], [np.arange(n)]), edges
         )
-        ours = time.perf_counter() - start
+        ours = time.process_time() - start
+        bare = (bare + _all_bare(parts, x, y)) / 2.0
         print(
             f"n = {n}, {p:,} x {q:,}: {len(edges):,} edges, mean share {found.share.mean():.2f}; bare products "
             f"{bare:.2f} s, stability {ours:.2f} s, ratio {ours / bare:.2f}",
@@ -56,6 +56,14 @@ def _blocks(n: int, p: int, q: int) -> tuple[np.ndarray, np.ndarray]:
         x[:, 60 * k : 60 * k + 60] += shared
         y[:, 24 * k : 24 * k + 24] += shared
     return x, y
+
+
+def _all_bare(parts: list[np.ndarray], x: np.ndarray, y: np.ndarray) -> float:
+    """Return the processor time of the bare products of all halves."""
+    start = time.process_time()
+    for rows in parts:
+        _bare(*(np.ascontiguousarray(side[rows].T, dtype=np.float32) for side in (x, y)))
+    return time.process_time() - start
 
 
 def _bare(x: np.ndarray, y: np.ndarray) -> None:

@@ -196,8 +196,7 @@ class HalfScreen:
             return np.empty((0, 3), dtype=np.intp)
         ranks: Correlation = self._correlation if self._level is None else "pearson"
         found = strongest_pairs([part for _, part in parts], count, correlation=ranks, hint=self._hint)
-        # The weakest cut so far, with room: halves differ, and a second pass costs more than some more pairs.
-        self._hint = max(found.level + HINT_ROOM, self._hint or -np.inf)
+        self._hint = next_hint(found.level, self._hint)
         numbers = np.array([k for k, _ in parts])
         return np.column_stack([numbers[found.pair_index], found.i, found.j])
 
@@ -224,6 +223,14 @@ class HalfScreen:
         ]
         cleaned = cleaned_repeated(sides, [(0, 1)], design, level, self._correlation, seed=self._seed)
         return cleaned.pairs[0]
+
+
+def next_hint(level: float, hint: float | None) -> float:
+    """Hint for the next half: the weakest cut so far, with room.
+
+    Halves differ, and a second pass costs more than some more pairs.
+    """
+    return max(level + HINT_ROOM, -np.inf if hint is None else hint)
 
 
 def _taken(pair: BlockPair, rows: IndexArray) -> BlockPair | None:

@@ -15,6 +15,7 @@ from workbench.engine.stability import (
     SMALLEST_HALF,
     HalfScreen,
     StrongestOf,
+    next_hint,
     pair_freedom,
     pair_stability,
 )
@@ -170,7 +171,7 @@ class HalfCleaned:
         found = strongest_pairs(
             [pair for _, pair in kept], count, correlation=self.correlation, hint=self.hint
         )
-        self.hint = found.level
+        self.hint = next_hint(found.level, self.hint)
         numbers = np.array([k for k, _ in kept])
         return np.column_stack([numbers[found.pair_index], found.i, found.j])
 
