@@ -4,7 +4,7 @@
 the bare product writes every tile to one buffer and looks at none.
 
 Times are of the processor, the bare products measured before and after. Measured with other work on both cores (load
-7), one thread, 20 halves, numpy 2.4, twice: n = 100, 10,000 x 10,000 ratio 1.38, 1.39; n = 60, 20,000 x 5,000 1.51, 1.53;
+7), one thread, 20 halves, twice: n = 100, 10,000 x 10,000 ratio 1.38, 1.39; n = 60, 20,000 x 5,000 1.51, 1.53;
 n = 100, 5,000 x 2,000 1.86, 1.88; n = 96, 3,000 x 250 6.6, 6.7 (5 ms a half: what is not a product weighs more). Where
 private variation is told anew in each half, telling it is most of the time: 0.55 s a half at 100 x (10,000 + 10,000)
 with seven private factors, 5.9 times the product, 0.42 s at 60 x (20,000 + 5,000), 0.18 s at 96 x (3,000 + 250).
