@@ -9,6 +9,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from workbench.engine import PairFigures, edge_evidence, fisher_interval
+from workbench.engine.pair_basis import pair_basis
 from workbench.engine.repeated import without_subject
 from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.screening import RepeatedRows, Screen, Screens
@@ -16,7 +17,6 @@ from workbench.workflow.screening import RepeatedRows, Screen, Screens
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]
 ENDS = ["source", "source_block", "target", "target_block"]
-GROUP_BOUND = 0.5
 
 
 @dataclass(frozen=True, eq=False)
@@ -80,18 +80,10 @@ def group_pairs_table(view: AnalysisView, screens: Screens) -> pd.DataFrame:
 def basis_of(
     view: AnalysisView, within: PairFigures, r_total: FloatArray, pairs: Pairs, screens: Screens
 ) -> NDArray[np.str_]:
-    """Return what each pair rests on: ``within``, ``group`` or ``unclear``.
-
-    ``within``: it passes the screen within groups too.  ``group``: the 95 % interval of the correlation
-    within groups lies inside plus or minus half of the total one.  Otherwise ``unclear``: no evidence of
-    the one or the other.
-    """
+    """Return what each pair rests on by :func:`~workbench.engine.pair_basis.pair_basis`."""
     fdr = view.settings.network.fdr
     passes = (within.q <= fdr) & (within.q_block <= fdr)
-    low, high = _interval(within.r, pairs, screens)
-    bound = GROUP_BOUND * np.abs(r_total)
-    by_group = (low > -bound) & (high < bound)
-    return np.where(passes, "within", np.where(by_group, "group", "unclear"))
+    return pair_basis(passes, *_interval(within.r, pairs, screens), r_total)
 
 
 def _interval(r: FloatArray, pairs: Pairs, screens: Screens) -> tuple[FloatArray, FloatArray]:

@@ -11,22 +11,21 @@ import pandas as pd
 
 from workbench import __version__
 from workbench.engine import critical_r
+from workbench.engine.pair_basis import GROUP_BOUND
 from workbench.engine.planning import SHARE, significance_level, smallest_correlation
 from workbench.intake.faults import counted
 from workbench.workflow.analysis_inputs import analysis_inputs
 from workbench.workflow.analysis_view import AnalysisView, Shared
 from workbench.workflow.choices import choices_of
-from workbench.workflow.edges import GROUP_BOUND
 from workbench.workflow.private import private_lines, private_record
 from workbench.workflow.screening import Screens
 from workbench.workflow.state import ProjectState
-from workbench.workflow.subjects import time_levels
+from workbench.workflow.subjects import visit_lines
 from workbench.workflow.tables import excluded
 
 FORMAT = 1
 FRAGILE_SHARE = 0.5
 SMALL_FREEDOM = 30
-MOST_VISITS = 8
 POWER = 0.8
 LIBRARIES = ("numpy", "scipy", "pandas", "scikit-learn", "anndata", "h5py", "networkx")
 
@@ -135,13 +134,7 @@ def _visit_lines(view: AnalysisView) -> list[str]:
     samples = view.study.samples
     if samples.time is None or view.settings.level is None:
         return []
-    levels = time_levels(view.sheet[samples.time], samples.order.get(samples.time))
-    if all(level.replace(".", "", 1).isdigit() for level in levels):
-        return []
-    shown = ", ".join(levels[:MOST_VISITS]) + (", ..." if len(levels) > MOST_VISITS else "")
-    return [
-        f"visits in the order {shown}; another one is said with order = {{ {samples.time} = [...] }} under [samples]"
-    ]
+    return visit_lines(view.sheet[samples.time], samples.order.get(samples.time))
 
 
 def counted_rows(shared: Shared, view: AnalysisView) -> str:
