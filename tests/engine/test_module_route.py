@@ -123,9 +123,9 @@ def test_damping_is_charged_to_the_module_too() -> None:
 def test_of_too_many_pairs_those_of_the_strongest_features_are_kept(monkeypatch: pytest.MonkeyPatch) -> None:
     study = coupled(9)
     every = carried(study)
-    monkeypatch.setattr(module_route, "MOST_PAIRS", 40)
+    monkeypatch.setattr(module_route, "MOST_PAIRS", 40 * every.couples)
     some = carried(study)
-    assert 0 < some.keys.size <= 40
+    assert 0 < some.keys.size <= 40 * every.couples
     there = np.isin(every.keys, some.keys)
     assert there.sum() == some.keys.size
     assert some.q.max() <= every.q[~there].max()

@@ -52,7 +52,8 @@ COUPLE = 1e-4
 AGAINST = 0.5
 #: Share of a couple's implied pairs that may speak against it.
 MIXED = 0.02
-#: Pairs of one couple that are weighed at most; of more, those of the features that go with it most.
+#: Implied pairs of two blocks that are weighed at most, an equal part for each couple; of more, those of the features
+#: that go with it most.
 MOST_PAIRS = 4_000_000
 _AT_ONCE = 1_000_000
 
@@ -102,7 +103,9 @@ def module_pairs(pair: PairTiles, u: FloatArray, v: FloatArray, rate: float) -> 
         x, y = _Side.of(pair.x, u, v, pair.df), _Side.of(pair.y, v, u, pair.df)
     for own, other in places:
         sign = float(np.sign(r[own, other]))
-        implied = list(_implied(pair, x.tests(own, other, sign), y.tests(other, own, sign), sign, rate))
+        ends = x.tests(own, other, sign), y.tests(other, own, sign)
+        lists = _lists(ends[0].q, ends[1].q, rate / 2.0, MOST_PAIRS // len(places))
+        implied = list(_implied(pair, *ends, lists, sign))
         against, number = (sum(getattr(part, name) for part in implied) for name in ("against", "number"))
         mixed += against > MIXED * number
         parts.extend(implied if against <= MIXED * number else [])
@@ -155,9 +158,11 @@ class _Implied:
     against: int
 
 
-def _implied(pair: PairTiles, x: _Tests, y: _Tests, sign: float, rate: float) -> Iterator[_Implied]:
-    """Yield the pairs that a couple of the given sign implies, some features of the first block at a time."""
-    i, j = _lists(x.q, y.q, rate / 2.0)
+def _implied(
+    pair: PairTiles, x: _Tests, y: _Tests, lists: tuple[IndexArray, IndexArray], sign: float
+) -> Iterator[_Implied]:
+    """Yield the pairs of two lists of features, implied by a couple of the given sign, some features at a time."""
+    i, j = lists
     if not i.size or not j.size:
         return
     right = pair.y.rows_at(j)
@@ -172,11 +177,11 @@ def _implied(pair: PairTiles, x: _Tests, y: _Tests, sign: float, rate: float) ->
         yield _Implied(keys[kept], r[kept], log_p[kept], 2.0 * q[kept], r.size, against)
 
 
-def _lists(x_q: FloatArray, y_q: FloatArray, level: float) -> tuple[IndexArray, IndexArray]:
-    """Return the features with q at or under a level; a smaller one where they make more than ``MOST_PAIRS``."""
+def _lists(x_q: FloatArray, y_q: FloatArray, level: float, most: int) -> tuple[IndexArray, IndexArray]:
+    """Return the features with q at or under a level; a smaller one where they make more than ``most`` pairs."""
     while True:
         i, j = np.flatnonzero(x_q <= level), np.flatnonzero(y_q <= level)
-        if i.size * j.size <= MOST_PAIRS:
+        if i.size * j.size <= most:
             return i, j
         level /= 2.0
 
