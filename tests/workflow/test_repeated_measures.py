@@ -6,6 +6,8 @@ import pytest
 
 from workbench import Project
 from workbench.errors import InputError
+from workbench.workflow.analysis_view import view_analysis
+from workbench.workflow.planning import design_sizes
 from workbench.workflow.residual_blocks import ResidualViews
 from workbench.workflow.state import load_state
 
@@ -81,6 +83,9 @@ def test_a_pair_is_shown_at_the_level_that_was_asked_for(tmp_path, blocks, level
     assert story.lines[0].startswith("an edge: r = ")
     assert story.numbers["r_adjusted"] == pytest.approx(story.numbers["r"], abs=1e-8)
     assert story.drawing is not None
+    view = view_analysis(load_state(project.paths), "main")
+    sizes = design_sizes(view, [view.shared(("one", "two"))], within=False)
+    assert sizes == [(48, 2) if level == "visits" else (24, 1)]  # 2 changes a donor less two for the course
     assert f"on {rows} samples" in story.drawing.caption
 
 

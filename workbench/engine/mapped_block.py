@@ -34,6 +34,8 @@ class MappedBlock:
         A rotation that makes room for an intercept; None leaves the rows as they are.
     freedom : int
         Degrees of freedom of the mapped features, for their tails to be judged; 0 leaves them alone.
+    steady : ndarray of shape (n_contrasts,) or None
+        What ``matrix`` multiplies each contrast by, less than 1 for those of odd subjects; None for nothing.
     """
 
     source: Columns
@@ -42,6 +44,7 @@ class MappedBlock:
     ranks: Ranks = "no"
     room: FloatArray | None = None
     freedom: int = 0
+    steady: FloatArray | None = None
 
     @property
     def shape(self) -> tuple[int, ...]:

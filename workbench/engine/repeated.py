@@ -246,6 +246,7 @@ def mapped_block(
         ranks="before" if ranked else "no",
         room=space.room,
         freedom=0 if ranked else len(rest) - basis.shape[1],
+        steady=factors,
     )
 
 

@@ -15,6 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workbench.engine.mapped_block import MappedBlock
+from workbench.engine.private_components import FEWEST_DIMENSIONS
 from workbench.engine.private_variation import LayerBlock, RealComponent, pairs_without_private
 from workbench.engine.repeated import course_damping_of_rows, mapped_block
 from workbench.engine.screen import BlockPair, Correlation
@@ -45,6 +46,8 @@ class CleanedRepeated:
         For each block its real components; their scores are on the rows.
     off : tuple of str
         For each pair why nothing was removed; empty where removal was on.
+    steady : tuple of ndarray of shape (n_rows,)
+        For each block what its rows were multiplied by, beside what ``mapped`` did; less than 1 for odd ones.
     """
 
     pairs: tuple[BlockPair, ...]
@@ -54,6 +57,7 @@ class CleanedRepeated:
     layers: tuple[LayerBlock, ...]
     components: tuple[tuple[RealComponent, ...], ...]
     off: tuple[str, ...]
+    steady: tuple[FloatArray, ...]
 
 
 def cleaned_repeated(
@@ -98,8 +102,21 @@ def cleaned_repeated(
         for block, seen in zip(blocks, mapped, strict=True)
     )
     made = pairs_without_private(layers, pairs, seed=seed)
+    off = tuple(reason and _too_few(space) for reason in made.off)
     damped = made.pairs if level == "subjects" else tuple(_damped(pair, space, design) for pair in made.pairs)
-    return CleanedRepeated(damped, tuple(pairs), space, mapped, layers, made.components, made.off)
+    return CleanedRepeated(damped, tuple(pairs), space, mapped, layers, made.components, off, made.steady)
+
+
+def _too_few(space: SubjectSpace) -> str:
+    """Return why nothing was removed, in what the study counts."""
+    what = f"{len(space.blocks)} subjects"
+    if space.contrasts is not None:
+        what = f"{len(space.contrasts)} changes within {what}"
+    left = space.nuisance.n_samples - space.nuisance.rank
+    return (
+        f"{what} leave {left} dimensions after the nuisance, what all have in common among it: with fewer than "
+        f"{FEWEST_DIMENSIONS} private variation cannot be told from noise"
+    )
 
 
 def _damped(pair: BlockPair, space: SubjectSpace, design: SubjectDesign) -> BlockPair:

@@ -40,6 +40,8 @@ class SubjectSpace:
         Of the new rows; its rank counts an intercept.
     blocks : tuple of ndarray
         Rows of each subject's contrasts in ``whitened``; for means one row each.
+    subjects : ndarray of int
+        Numbers of these subjects in the design.
     whitened : ndarray of shape (n_contrasts, n_samples)
         The same map without the rotation that makes room for an intercept.
     used : ndarray of int
@@ -51,6 +53,7 @@ class SubjectSpace:
     matrix: FloatArray
     nuisance: Nuisance
     blocks: tuple[IndexArray, ...]
+    subjects: IndexArray
     whitened: FloatArray
     used: IndexArray
     contrasts: FloatArray | None = None
@@ -124,7 +127,7 @@ def subject_space(
         matrix = _means_matrix(design)
         basis = Nuisance.of(_moved_columns(matrix, columns), design.n_subjects)
         rows = tuple(np.array([row]) for row in range(design.n_subjects))
-        return SubjectSpace(matrix, basis, rows, matrix, np.arange(design.n_samples))
+        return SubjectSpace(matrix, basis, rows, np.arange(len(rows)), matrix, np.arange(design.n_samples))
     if level != "visits":
         raise NumericsError(f"level is {level!r}; allowed: 'visits', 'subjects'")
     if not design.repeated.any():
@@ -199,7 +202,8 @@ def _visits_space(
         whitened = _whitened(contrasts, members, blocks, design.visit, variogram)
     room = helmert(start + 1).T
     nuisance = Nuisance.of(room @ _moved_columns(whitened, columns), start + 1)
-    return SubjectSpace(room @ whitened, nuisance, tuple(blocks), whitened, used, contrasts)
+    subjects = np.array([design.subject[rows[0]] for rows in members], dtype=np.intp)
+    return SubjectSpace(room @ whitened, nuisance, tuple(blocks), subjects, whitened, used, contrasts)
 
 
 def _variogram(

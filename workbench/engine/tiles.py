@@ -273,6 +273,7 @@ class _Net:
         self._above = self._inside = 0
         self._keys: list[IndexArray] = []
         self._sizes: list[NDArray[Any]] = []
+        self._room = np.empty(pair.limits.outer * pair.limits.inner, dtype=np.bool_)
 
     def draw(self, a: int, b: int, tile: NDArray[Any]) -> None:
         """Add a tile that begins at the outer feature ``a`` and the inner feature ``b``."""
@@ -283,7 +284,8 @@ class _Net:
             self._above += int(np.count_nonzero(beyond))
         if band.low >= band.high or self._inside > band.most:
             return
-        inside = tile >= tile.dtype.type(band.low)
+        inside = self._room[: tile.size].reshape(tile.shape)
+        np.greater_equal(tile, tile.dtype.type(band.low), out=inside)
         if beyond is not None:
             inside ^= beyond
         place = np.flatnonzero(inside)

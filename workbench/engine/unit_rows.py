@@ -75,7 +75,7 @@ class UnitRows:
             held = np.empty((self.n_features, self._nuisance.n_samples))
             for start in range(0, self.n_features, _SLICE):
                 stop = min(start + _SLICE, self.n_features)
-                held[start:stop] = self.rows(start, stop)
+                self._fill(held[start:stop], start, stop)
             self.held = held
 
     def release(self) -> None:
@@ -86,9 +86,16 @@ class UnitRows:
         """Features from ``start`` to before ``stop`` as unit rows; zeros where nothing can be tested."""
         if self.held is not None:
             return self.held[start:stop]
-        rows, testable = unit_rows(np.asarray(self._source[:, start:stop]), self._nuisance, ranks=self._ranks)
-        self.testable[start:stop] = testable
-        return rows if self.damping is None else rows * self.damping[start:stop, None]
+        made = np.empty((stop - start, self._nuisance.n_samples))
+        self._fill(made, start, stop)
+        return made
+
+    def _fill(self, out: FloatArray, start: int, stop: int) -> None:
+        """Make the rows of some features in their place."""
+        block = np.asarray(self._source[:, start:stop])
+        self.testable[start:stop] = unit_rows(block, self._nuisance, ranks=self._ranks, out=out)[1]
+        if self.damping is not None:
+            out *= self.damping[start:stop, None]
 
     def rows_at(self, index: IndexArray) -> FloatArray:
         """Features at ``index``, repeats allowed, in any order, as unit rows."""
@@ -105,7 +112,7 @@ class UnitRows:
 
 
 def unit_rows(
-    block: NDArray[Any], nuisance: Nuisance, *, ranks: bool
+    block: NDArray[Any], nuisance: Nuisance, *, ranks: bool, out: FloatArray | None = None
 ) -> tuple[FloatArray, NDArray[np.bool_]]:
     """Rows of length one of a block's features, and which of them can be tested.
 
@@ -117,6 +124,8 @@ def unit_rows(
         Removed from the features, or from their ranks.
     ranks : bool
         Whether values are replaced by their average ranks first (Spearman).
+    out : ndarray of shape (n_features, n_samples), optional
+        Where the rows are made.
 
     Returns
     -------
@@ -124,10 +133,11 @@ def unit_rows(
         Zero where the feature cannot be tested.
     testable : ndarray of bool, shape (n_features,)
     """
-    rows = np.array(block.T, dtype=np.float64, order="C")
+    rows = np.empty(block.T.shape) if out is None else out
+    rows[...] = block.T
     testable = _within_reach(rows)
     if ranks:
-        rows = rankdata(rows, axis=1)
+        rows[...] = rankdata(rows, axis=1)
     whole = _lengths(rows)
     rows -= rows.mean(axis=1, keepdims=True)
     for direction in nuisance.basis.T[1:]:

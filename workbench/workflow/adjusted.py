@@ -6,12 +6,12 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
-import pandas as pd
 from numpy.typing import NDArray
 
 from workbench.engine import Nuisance, SubjectDesign, SubjectSpace, subject_means
 from workbench.intake import Groups
 from workbench.workflow.analysis_view import AnalysisView, Shared, subject_names
+from workbench.workflow.private import PrivatePart
 from workbench.workflow.screening import design_columns_of, is_repeated
 from workbench.workflow.tested_values import tested_on_rows, tested_on_samples
 
@@ -73,12 +73,11 @@ def pair_values(
     view: AnalysisView,
     ends: tuple[tuple[str, str], tuple[str, str]],
     within: bool,
-    private: Mapping[str, pd.DataFrame | None],
+    private: Mapping[str, PrivatePart | None],
 ) -> PairValues:
     """Return two features, each given as (block, feature), as the screen of the analysis saw them.
 
-    ``private`` holds, for each block that had some removed, the scores of its private variation by sample (where
-    subjects have several samples it is told again).
+    ``private`` holds what the network stage did to each block; where subjects have several samples it is done again.
     """
     (first, x_name), (second, y_name) = ends
     shared = view.shared((first, second))
@@ -89,7 +88,8 @@ def pair_values(
     if within and view.factors:
         removed.append(f"{'+'.join(view.factors)} (group)")
     taken = _Taken(shared.samples, shared.groups, np.column_stack([x, y]), x_imputed, y_imputed)
-    gone = [f"private variation of {block}" for block in (first, second) if private.get(block) is not None]
+    parts = {block: private.get(block) for block in (first, second)}
+    gone = [f"private variation of {block}" for block, part in parts.items() if part and part.scores.shape[1]]
     if is_repeated(shared):
         rows = tested_on_rows(view, (first, second), shared, columns, within)
         places = [view.blocks[block].features.index(feature) for block, feature in ends]
@@ -102,7 +102,7 @@ def pair_values(
             gone.append("the likeness of neighbouring visits")
     else:
         sides = [
-            tested_on_samples(view, taken.values[:, [k]], shared.samples, columns, private.get(block))[:, 0]
+            tested_on_samples(view, taken.values[:, [k]], shared.samples, columns, parts[block])[:, 0]
             for k, block in enumerate((first, second))
         ]
         freedom = shared.n - Nuisance.of(columns, shared.n).rank - 1

@@ -60,12 +60,16 @@ def project_plans(
 
 
 def design_sizes(view: AnalysisView, shared: Sequence[Shared], within: bool) -> list[tuple[int, int]]:
-    """Return the independent samples of each block pair, and the dimensions of what is removed from them."""
+    """Return the independent samples of each block pair, and the dimensions of what is removed from them.
+
+    Changes within subjects whose common course is removed count as so many samples whose mean is removed.
+    """
     sizes = []
     for one, pair in zip(shared, design_pairs(view, shared, within), strict=True):
         if is_repeated(one) and one.subjects is not None:
             space = space_of(pair, one.subjects, view.settings.level or "visits", "pearson")
-            sizes.append((space.nuisance.n_samples, space.nuisance.rank))
+            spare = int(space.contrasts is not None and space.nuisance.rank > 1)
+            sizes.append((space.nuisance.n_samples - spare, space.nuisance.rank - spare))
         else:
             sizes.append((one.n, Nuisance.of(np.asarray(pair.nuisance), one.n).rank))
     return sizes

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
@@ -31,6 +32,7 @@ FloatArray = NDArray[np.float64]
 COLUMNS = ("block", "beside", "component", "share", "goes_with", "top_features")
 GOES_WITH = 0.05
 TOP_FEATURES = 5
+MOST_ODD = 5
 FILE = "private.h5"
 
 
@@ -80,6 +82,11 @@ def private_lines(view: AnalysisView, screen: Screen, heavy: Mapping[str, int]) 
             f"{name}: {count} removed ({share} of {_of_what(view, one)}, private.tsv)" + _kept_words(kept)
         )
     lines += list(dict.fromkeys(reason for reason in screen.off if reason))
+    lines += [
+        _odd_line(name, one)
+        for name, one in zip(removal_names(screen.removals), screen.removals, strict=True)
+        if one.odd
+    ]
     for name, features in heavy.items():
         told = counted(features, "feature with heavy tails enters", "features with heavy tails enter")
         lines.append(f"{name}: {told} by the normal scores of ranks (guide private)")
@@ -99,13 +106,29 @@ def heavy_tailed(screen: Screen) -> dict[str, int]:
         return {}
     found: dict[str, int] = {}
     for name, one in zip(removal_names(screen.removals), screen.removals, strict=True):
+        n = len(one.rows.rows)
         scores = [part.scores for part in one.removed]
-        own = Nuisance.of(np.column_stack([one.rows.nuisance, *scores]), len(one.rows.rows))
+        own = Nuisance.of(np.column_stack([one.rows.nuisance, *scores]), n)
         heavy = one.heavy
         if own.n_samples - own.rank >= FEWEST:
-            heavy = heavy | (excess_kurtosis(own.residuals(one.rows.values)) > HEAVY)
+            rest = one.steady[:, None] * Nuisance.of(one.rows.nuisance, n).residuals(one.rows.values)
+            heavy = heavy | (excess_kurtosis(own.residuals(rest)) > HEAVY)
         found |= {name: int(heavy.sum())} if heavy.any() else {}
     return found
+
+
+def _odd_line(name: str, one: BlockRemoval) -> str:
+    """Return which samples, or subjects, are odd and were brought back to size."""
+    what = "sample" if one.space is None else "subject"
+    shown = sorted(one.odd.items(), key=lambda item: (item[1], item[0]))
+    told = [f"{sample} (x {factor:.2f})" for sample, factor in shown[:MOST_ODD]]
+    if len(shown) > MOST_ODD:
+        told.append(f"{len(shown) - MOST_ODD} more (record.json)")
+    changes = "changes" if one.space is not None and one.space.contrasts is not None else "values"
+    return (
+        f"{name}: {counted(len(shown), f'odd {what}', f'odd {what}s')}, {changes} large throughout, brought back to "
+        f"size: {listed(told)}"
+    )
 
 
 def private_record(view: AnalysisView, screen: Screen, heavy: Mapping[str, int]) -> dict[str, Any]:
@@ -119,6 +142,11 @@ def private_record(view: AnalysisView, screen: Screen, heavy: Mapping[str, int])
             for name, one in zip(removal_names(screen.removals), screen.removals, strict=True)
         },
         "features_by_normal_scores": dict(heavy),
+        "odd_brought_back_to_size": {
+            name: dict(one.odd)
+            for name, one in zip(removal_names(screen.removals), screen.removals, strict=True)
+            if one.odd
+        },
         "off": {
             f"{first} x {second}": off
             for (first, second), off in zip(view.pairs, screen.off, strict=True)
@@ -137,8 +165,9 @@ def draw_removed(screen: Screen) -> tuple[Drawing, ...]:
 
 
 def write_scores(path: Path, view: AnalysisView, screen: Screen) -> None:
-    """Write the scores of what was removed from each block, which is what shows a pair as it was tested.
+    """Write the scores of what was removed from each block, and what shows a pair as it was tested.
 
+    ``steady`` is what the residuals of each sample were multiplied by, less than 1 for odd ones.
     Where subjects have several samples these are deviations by sample within each subject (or one for each
     subject, ``samples`` then holding the subjects), found for the pair with the block ``beside``.
     """
@@ -155,6 +184,8 @@ def write_scores(path: Path, view: AnalysisView, screen: Screen) -> None:
             if one.space is not None and one.removed:
                 scores = one.space.on_samples(scores)
             part.create_dataset("scores", data=scores)
+            if one.space is None:
+                part.create_dataset("steady", data=one.steady)
 
 
 def _row_names(view: AnalysisView, one: BlockRemoval) -> list[str]:
@@ -166,8 +197,20 @@ def _row_names(view: AnalysisView, one: BlockRemoval) -> list[str]:
     return subject_names(view, one.samples)
 
 
-def read_scores(state: ProjectState, analysis: str, block: str, beside: str = "") -> pd.DataFrame | None:
-    """Return the scores of what was removed from a block, a row for each sample; None where nothing was.
+@dataclass(frozen=True, eq=False)
+class PrivatePart:
+    """What was done to a block before its pairs were tested.
+
+    ``scores`` are those of what was removed, a row for each sample and a column for each component; ``steady`` is what
+    the residuals of each sample were multiplied by (None where subjects have several samples).
+    """
+
+    scores: pd.DataFrame
+    steady: pd.Series | None
+
+
+def read_private(state: ProjectState, analysis: str, block: str, beside: str = "") -> PrivatePart | None:
+    """Return what was done to a block; None where private variation was not looked for.
 
     ``beside`` is the other block of the pair, which matters where subjects have several samples.
     """
@@ -176,8 +219,13 @@ def read_scores(state: ProjectState, analysis: str, block: str, beside: str = ""
         return None
     with h5py.File(check_file(state.root, relative), "r") as file:
         for name in (block, f"{block} beside {beside}"):
-            if name in file and file[name]["scores"].size:
-                return pd.DataFrame(file[name]["scores"][()], index=file[name]["samples"].asstr()[()])
+            if name in file:
+                samples, scores = file[name]["samples"].asstr()[()], file[name]["scores"][()]
+                scores = scores if scores.size else np.zeros((len(samples), 0))
+                steady = (
+                    pd.Series(file[name]["steady"][()], index=samples) if "steady" in file[name] else None
+                )
+                return PrivatePart(pd.DataFrame(scores, index=samples), steady)
     return None
 
 

@@ -6,13 +6,12 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
-import pandas as pd
 from numpy.typing import NDArray
 
 from workbench.engine import Nuisance
 from workbench.pathways import residual_space, unit_columns
 from workbench.workflow.analysis_view import AnalysisView, Shared, view_analysis
-from workbench.workflow.private import read_scores
+from workbench.workflow.private import PrivatePart, read_private
 from workbench.workflow.screening import design_columns_of, is_repeated
 from workbench.workflow.state import ProjectState
 from workbench.workflow.tested_values import tested_on_rows, tested_on_samples
@@ -45,18 +44,18 @@ class ResidualBlocks:
 class ResidualViews:
     """The residual blocks of an analysis, each combination of blocks worked out once.
 
-    ``private`` holds, for each block that had private variation removed, its scores by sample.
+    ``private`` holds what the network stage did to each block before it tested pairs.
     """
 
     view: AnalysisView
-    private: Mapping[str, pd.DataFrame | None]
+    private: Mapping[str, PrivatePart | None]
     known: dict[tuple[str, ...], ResidualBlocks] = field(default_factory=dict)
 
     @classmethod
     def of_analysis(cls, state: ProjectState, name: str) -> ResidualViews:
         """Return the views of an analysis, with the private variation that its network stage removed."""
         view = view_analysis(state, name)
-        return cls(view, {block: read_scores(state, name, block) for block in view.blocks})
+        return cls(view, {block: read_private(state, name, block) for block in view.blocks})
 
     def of(self, names: Sequence[str]) -> ResidualBlocks:
         """Return the named blocks on the samples that all of them have."""

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from itertools import combinations
 from typing import TypedDict
@@ -17,7 +17,7 @@ from workbench.engine.repeated import independent_pair
 from workbench.engine.repeated_layers import CleanedRepeated, cleaned_repeated
 from workbench.engine.screen import Correlation
 from workbench.engine.subject_space import Level, SubjectSpace, by_visit, subject_space
-from workbench.workflow.analysis_view import AnalysisView, Shared
+from workbench.workflow.analysis_view import AnalysisView, Shared, subject_names
 from workbench.workflow.reporting import Reporter
 
 FloatArray = NDArray[np.float64]
@@ -30,7 +30,9 @@ class BlockRemoval:
     ``beside`` is empty where they hold for every pair of the block. Where subjects have several samples they are
     found for each pair of blocks apart, on its rows, and ``beside`` is the other block of the pair. ``on``: whether
     the private ones were removed. ``rows`` is the block on these rows with its nuisance, ``space`` the map from its
-    samples to them (None: they are its samples), ``heavy`` marks features that reached them by normal scores.
+    samples to them (None: they are its samples), ``heavy`` marks features that reached them by normal scores;
+    ``steady`` is what the residuals of each row were multiplied by (less than 1: an odd one was brought back to
+    size), ``odd`` the same of odd samples or subjects by name.
     """
 
     block: str
@@ -41,6 +43,8 @@ class BlockRemoval:
     rows: LayerBlock
     space: SubjectSpace | None
     heavy: NDArray[np.bool_]
+    steady: FloatArray
+    odd: Mapping[str, float]
 
     @property
     def removed(self) -> tuple[RealComponent, ...]:
@@ -186,7 +190,7 @@ def _repeated(
         if view.settings.network.remove_private:
             made = cleaned_between(view, names, one, within)
             rows.append(RepeatedRows(replace(made.pairs[0], name=pair.name), made.space))
-            removals += _pair_removals(names, one, made)
+            removals += _pair_removals(view, names, one, made)
             off[k] = made.off[0]
         else:
             rows.append(
@@ -235,7 +239,9 @@ def subjects_of(view: AnalysisView, shared: Shared) -> tuple[SubjectDesign, Leve
     return shared.subjects, view.settings.level or "visits"
 
 
-def _pair_removals(names: tuple[str, str], shared: Shared, made: CleanedRepeated) -> list[BlockRemoval]:
+def _pair_removals(
+    view: AnalysisView, names: tuple[str, str], shared: Shared, made: CleanedRepeated
+) -> list[BlockRemoval]:
     """Return what was found of both blocks of a pair on its rows."""
     return [
         BlockRemoval(
@@ -247,9 +253,25 @@ def _pair_removals(names: tuple[str, str], shared: Shared, made: CleanedRepeated
             made.layers[side],
             made.space,
             made.mapped[side].heavy(),
+            made.steady[side],
+            _odd_subjects(subject_names(view, shared.samples), made, side),
         )
         for side in (0, 1)
     ]
+
+
+def _named_odd(names: Sequence[str], steady: FloatArray) -> dict[str, float]:
+    return {name: float(factor) for name, factor in zip(names, steady, strict=True) if factor < 1.0}
+
+
+def _odd_subjects(subjects: Sequence[str], made: CleanedRepeated, side: int) -> dict[str, float]:
+    """Return by how much the changes (or the mean) of odd subjects were shrunk on the way to the rows."""
+    factors = made.mapped[side].steady
+    if factors is None:
+        return {}
+    space = made.space
+    firsts = np.array([factors[rows[0]] for rows in space.blocks])
+    return _named_odd([subjects[number] for number in space.subjects], firsts)
 
 
 def _used(rows: Sequence[RepeatedRows]) -> NDArray[np.int64]:
@@ -290,8 +312,12 @@ def _without_private(
             block,
             None,
             np.zeros(block.values.shape[1], dtype=np.bool_),
+            steady,
+            _named_odd(view.shared((name,)).samples, steady),
         )
-        for name, components, block in zip(names, result.components, blocks, strict=True)
+        for name, components, block, steady in zip(
+            names, result.components, blocks, result.steady, strict=True
+        )
     )
     return Screen(result.screen, pairs, result.support, removals, result.off, _freedom(plain))
 

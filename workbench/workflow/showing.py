@@ -22,7 +22,7 @@ from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.doubts import doubts_of
 from workbench.workflow.loaded_block import load_block
 from workbench.workflow.naming import find_feature
-from workbench.workflow.private import read_scores
+from workbench.workflow.private import read_private
 from workbench.workflow.record import counted_rows
 from workbench.workflow.state import ProjectState
 
@@ -164,7 +164,7 @@ def _pair_story(state: ProjectState, analysis: str, tables: Tables, a: pd.Series
     within = view.within_groups
     (first, _), (second, _) = ends
     private = {
-        block: read_scores(state, analysis, block, other)
+        block: read_private(state, analysis, block, other)
         for block, other in ((first, second), (second, first))
     }
     values = pair_values(view, ends, within, private)

@@ -2,24 +2,23 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
-import pandas as pd
 from numpy.typing import NDArray
 from scipy.stats import rankdata
 
 from workbench.engine import Nuisance
-from workbench.engine.far_values import withstand
 from workbench.engine.private_components import FEWEST_DIMENSIONS
+from workbench.engine.private_variation import cleaned_features
 from workbench.engine.repeated import mapped_block
 from workbench.engine.subject_space import SubjectSpace, subject_space
 from workbench.workflow.analysis_view import AnalysisView, Shared
+from workbench.workflow.private import PrivatePart
 from workbench.workflow.screening import cleaned_between, subjects_of
 
 FloatArray = NDArray[np.float64]
-Scores = Mapping[str, pd.DataFrame | None]
 
 
 @dataclass(frozen=True, eq=False)
@@ -35,23 +34,25 @@ def tested_on_samples(
     x: FloatArray,
     samples: Sequence[str],
     columns: FloatArray,
-    private: pd.DataFrame | None,
+    private: PrivatePart | None,
 ) -> FloatArray:
     """Return features of one block (samples, features) as they were tested, where samples are independent.
 
-    ``columns`` are the nuisance (and the group), ``private`` the scores of the block's private variation by sample.
+    ``columns`` are the nuisance (and the group), ``private`` what the network stage did to the block.
     """
-    network = view.settings.network
-    common = Nuisance.of(columns, len(samples))
-    if private is not None and common.n_samples - common.rank >= FEWEST_DIMENSIONS:
-        columns = np.column_stack([columns, private.loc[list(samples)]])
-    own = Nuisance.of(columns, len(samples))
+    rows, network = list(samples), view.settings.network
+    common = Nuisance.of(columns, len(rows))
+    own, steady = common, np.ones(len(rows))
+    if private is not None:
+        if common.n_samples - common.rank >= FEWEST_DIMENSIONS:
+            own = Nuisance.of(np.column_stack([columns, private.scores.loc[rows]]), len(rows))
+        if private.steady is not None:
+            steady = private.steady.loc[rows].to_numpy()
     if network.correlation == "spearman":
         return own.residuals(np.asarray(rankdata(x, axis=0), dtype=np.float64))
-    rest = own.residuals(x)
     if network.remove_private:
-        rest = own.residuals(withstand(rest, own.n_samples - own.rank))
-    return rest
+        return own.residuals(cleaned_features(x, common, own, steady))
+    return own.residuals(x)
 
 
 def tested_on_rows(
