@@ -34,6 +34,7 @@ def cohort(
     n: int = 40,
     *,
     shift: float = 0.7,
+    genes: int = GENES,
     lost: int = 0,
     raised: int = 1,
     sheet: dict[str, object] | None = None,
@@ -61,11 +62,11 @@ def cohort(
     }
     frame = pd.DataFrame(columns | (sheet or {}), index=pd.Index(samples, name="sample"))
     shown = (frame["status"] == "well").to_numpy(dtype=float)
-    logs = features.normal(4.5, 1.0, GENES) + rng.normal(0, 0.4, (n, GENES))
+    logs = features.normal(4.5, 1.0, genes) + rng.normal(0, 0.4, (n, genes))
     logs[:, :12] += shift * shown[:, None]
     logs[:, ::2] += np.log(raised)
     logs[:, 12:27] += 0.5 * factor[:, None]
-    counts = pd.DataFrame(rng.poisson(np.exp(logs)), index=samples, columns=[f"g{k}" for k in range(GENES)])
+    counts = pd.DataFrame(rng.poisson(np.exp(logs)), index=samples, columns=[f"g{k}" for k in range(genes)])
     for name, means in (extra or {}).items():
         counts[name] = rng.poisson(frame["status"].map(means))
     peaks = features.normal(10.0, 1.0, COMPOUNDS) + rng.normal(0, 0.4, (n, COMPOUNDS))
