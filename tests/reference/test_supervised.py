@@ -83,7 +83,7 @@ def pls_auc(x: np.ndarray, labels: np.ndarray, seed: int) -> float:
         areas = []
         for count in range(1, 9):
             said = np.zeros(labels.size)
-            for taught, held in splits.rows[1:]:
+            for taught, held in splits.inner(splits.rows)[0]:
                 said[held] = PLSRegression(count).fit(x[taught], labels[taught]).predict(x[held]).ravel()
             areas.append(roc_auc_score(labels[train], said[train]))
         best = 1 + int(np.argmax(areas))
@@ -107,8 +107,20 @@ def tumours() -> tuple[list[np.ndarray], np.ndarray]:
     return [genes, clinical], (table["er"] == "positive").to_numpy(int)
 
 
-@pytest.mark.parametrize("cohort", [alzheimer, tumours])
-def test_no_worse_than_nested_pls_by_more_than_a_standard_error(cohort):
+def metastasis() -> tuple[list[np.ndarray], np.ndarray]:
+    """Distant metastasis within five years; nine whose follow-up ended earlier without one are left out."""
+    _, followed = load_breast_cancer()
+    early = followed["t.tdm"] <= 5.0 * 365.25
+    known = (followed["e.tdm"] & early) | ~early
+    (genes, clinical), receptor = tumours()
+    blocks = [genes[known], np.column_stack([clinical, receptor])[known]]
+    assert np.count_nonzero(~known) == 9
+    return blocks, (followed["e.tdm"] & early)[known].astype(int)
+
+
+@pytest.mark.parametrize(("cohort", "least"), [(alzheimer, 0.85), (tumours, 0.85), (metastasis, 0.6)])
+def test_no_worse_than_nested_pls_by_more_than_a_standard_error(cohort, least):
+    """The third is the honest hard case: a few readings beside 76 transcripts, 35 events among 189 women."""
     blocks, labels = cohort()
     found = double_validation(
         block_source(blocks),
@@ -120,5 +132,5 @@ def test_no_worse_than_nested_pls_by_more_than_a_standard_error(cohort):
     )
     figures = found.model.performance
     assert figures.auc.mean() > pls_auc(np.hstack(blocks), labels, seed=1) - figures.auc_error
-    assert figures.auc.mean() > 0.8
+    assert figures.auc.mean() > least
     assert found.test.p == pytest.approx(1 / 40)
