@@ -74,6 +74,31 @@ def test_true_pairs_are_the_features_of_one_module() -> None:
     np.testing.assert_array_equal((truth.modules["metabolites"] >= 0).sum(), 48)
 
 
+def test_features_of_two_modules_are_paired_with_both() -> None:
+    """Three modules of 10 and 6 features, of which 4 and 2 follow the next module too."""
+    blocks = (
+        transcripts(features=300, module_size=10, overlap=4),
+        metabolites(features=80, module_size=6, overlap=2),
+    )
+    truth = simulate(Design(n=12, blocks=blocks, modules=3), 1).truth
+    first, second = ((truth.loadings[name] != 0).astype(int) for name in TWO)
+    np.testing.assert_array_equal(first.sum(axis=0), [14, 14, 14])
+    np.testing.assert_array_equal(np.bincount(second.sum(axis=1)), [62, 12, 6])
+    np.testing.assert_array_equal(truth.pairs[TWO], np.argwhere(first @ second.T > 0))
+
+
+def test_a_nested_factor_reaches_the_features_of_its_module_alone() -> None:
+    """Against the same study without it: the other features hardly change, and the other block not at all."""
+    design = Design(n=40, blocks=small(), modules=2)
+    plain, nested = simulate(design, 5), simulate(design.with_block("metabolites", nested=1.0), 5)
+    pd.testing.assert_frame_equal(nested.blocks["transcripts"], plain.blocks["transcripts"])
+    one, other = (np.log(study.aligned("metabolites")) for study in (plain, nested))
+    change = (other - one).to_numpy()
+    inside = plain.truth.modules["metabolites"] >= 0
+    # Intensities hold their measurement noise and rounding besides, and gaps.
+    assert np.nanstd(change[:, inside]) > 5 * np.nanstd(change[:, ~inside])
+
+
 def test_realised_correlation_is_the_stated_one() -> None:
     """Without anything else, a pair correlates by a b / sqrt((a^2 + 1)(b^2 + 1)), sign included."""
     one = Block("one", "one", "continuous", 40, module_size=20, dilution=0.0)
