@@ -63,6 +63,18 @@ def test_removal_finds_what_private_variation_buries() -> None:
     assert recall(study, found) > 2 * score(by_hand(study), study.truth).recall
 
 
+def test_modules_carry_pairs_that_no_test_of_pairs_finds() -> None:
+    """A third more than the oracle, which knows the private factors but judges pair by pair."""
+    study = simulate(Design(n=96, blocks=PAIR), 3)
+    found = screened(study)
+    assert set(found.support) == {"pair", "module", "both"}
+    assert recall(study, found) > 1.3 * score(oracle(study), study.truth).recall
+    truth = {tuple(pair) for pair in study.truth.pairs["transcripts", "metabolites"].tolist()}
+    only = found.support == "module"
+    carried = zip(found.screen.i[only].tolist(), found.screen.j[only].tolist(), strict=True)
+    assert np.mean([pair in truth for pair in carried]) > 0.9
+
+
 def test_removed_scores_are_the_private_factors_and_shared_components_stay() -> None:
     study = simulate(Design(n=96, blocks=PAIR, strength=1.4), 4)
     known = design_matrix(study.samples, "transcripts", "metabolites")
