@@ -14,7 +14,7 @@ from workbench.workflow.state import load_state
 QUICK = "permutations = 20\nrepeats = 1\nnetwork.stability = 0\n"
 
 
-def study(folder, x, y, sheet):
+def study(folder, x, y, sheet, **factors):
     names = [f"S{k:03d}" for k in range(len(sheet))]
     sheet.assign(sample=names)[["sample", *sheet]].to_csv(folder / "samples.csv", index=False)
     for name, values in (("a", x), ("b", y)):
@@ -22,7 +22,7 @@ def study(folder, x, y, sheet):
         frame = pd.DataFrame(values, index=pd.Index(names, name="sample"), columns=columns)
         frame.to_csv(folder / f"{name}.csv")
     project = Project.create(folder / "study")
-    project.add_samples(folder / "samples.csv", subject="donor", time="day")
+    project.add_samples(folder / "samples.csv", subject="donor", time="day", **factors)
     project.add_block("one", folder / "a.csv", layer="proteins", values="continuous")
     project.add_block("two", folder / "b.csv", layer="lipids", values="continuous")
     return project
@@ -125,3 +125,17 @@ def test_private_variation_is_removed_and_every_route_sees_the_same_r(tmp_path, 
     held = views.of(("one", "two")).values
     places = int(edge["source"][1:]), int(edge["target"][1:])
     assert held["one"][:, places[0]] @ held["two"][:, places[1]] == pytest.approx(edge["r"], abs=1e-8)
+
+
+def test_changes_that_turn_round_between_groups_of_subjects_are_found(tmp_path, blocks):
+    x, y, sheet = blocks
+    arm = np.repeat(np.arange(24) % 2, 3)
+    turned = np.where(arm == 1, -1.0, 1.0) * (x[:, 6] - 4.0 * sheet["day"])
+    y[:, 3] = 2.0 * turned + 4.0 * sheet["day"] + y[:, 3] / 3.0
+    project = study(tmp_path, x, y, sheet.assign(arm=np.array(["x", "y"])[arm]), group="arm")
+    ask(project, "visits")
+    table = project.result("main").differential
+    assert list(zip(table["source"], table["target"], strict=True)) == [("a06", "b03")]
+    assert table.iloc[0]["r_first"] > 0.7
+    assert table.iloc[0]["r_second"] < -0.7
+    assert (table.iloc[0]["n_first"], table.iloc[0]["n_second"]) == (24, 24)

@@ -142,6 +142,34 @@ def independent_pair(
     return BlockPair(pair.name, x, y, space.nuisance, damping=damping), space
 
 
+def rows_by_subject(pair: BlockPair, design: SubjectDesign, level: Level) -> tuple[BlockPair, IndexArray]:
+    """Both blocks on independent rows that each belong to one subject, and whose they are.
+
+    For a comparison of groups of subjects by ranks: the rows of one group are a study of their own.
+
+    Parameters
+    ----------
+    pair, design, level
+        As for :func:`screen_repeated`.
+
+    Returns
+    -------
+    pair : BlockPair
+        Changes within subjects at equal variance, or subjects' means, with their nuisance (the visits' common course
+        among it).
+    subjects : ndarray of int, shape (n_rows,)
+        Numbers of subjects in the design.
+    """
+    space = subject_space((pair.x, pair.y), design, sample_columns(pair), level)
+    x, y = (
+        replace(mapped_block(side, design, space, level, "pearson"), room=None, freedom=0)[:, :]
+        for side in (pair.x, pair.y)
+    )
+    subjects = np.repeat(space.subjects, [rows.size for rows in space.blocks])
+    columns = space.nuisance.basis[:, 1:] if space.contrasts is None else space.basis
+    return BlockPair(pair.name, x, y, columns), subjects
+
+
 def course_damping(space: SubjectSpace, design: SubjectDesign, side: Columns) -> FloatArray:
     """Factors in (0, 1], one a feature, by which test statistics shrink for features of an unusual course.
 

@@ -24,7 +24,8 @@ class PairValues:
 
     ``x``, ``y`` are prepared values; ``x_adjusted``, ``y_adjusted`` what was tested: what is left of them (of their
     ranks, for Spearman's correlation) once ``removed`` (in words) is taken away. ``x_imputed``, ``y_imputed`` mark
-    values that were filled in; ``freedom`` are the degrees of freedom of their correlation.
+    values that were filled in; ``freedom`` are the degrees of freedom of their correlation; ``apart`` tells whether the
+    groups are of different subjects.
     """
 
     samples: tuple[str, ...]
@@ -37,6 +38,7 @@ class PairValues:
     y_imputed: NDArray[np.bool_]
     removed: tuple[str, ...]
     freedom: int
+    apart: bool = True
 
     @property
     def r(self) -> float:
@@ -44,8 +46,11 @@ class PairValues:
         return correlation(self.x_adjusted, self.y_adjusted)
 
     def r_by_group(self) -> dict[str, tuple[int, float]]:
-        """Return the number of samples and the correlation of the adjusted values in each group."""
-        if self.groups is None:
+        """Return the number of samples and the correlation of the adjusted values in each group.
+
+        Nothing without groups, and where subjects change theirs: one subject's deviations then hang together.
+        """
+        if self.groups is None or not self.apart:
             return {}
         found = {}
         for code, level in enumerate(self.groups.levels):
@@ -117,6 +122,7 @@ def pair_values(
         y_imputed=taken.y_imputed,
         removed=(*removed, *gone),
         freedom=freedom,
+        apart=shared.groups_of_subjects,
     )
 
 
@@ -139,15 +145,14 @@ def _at_level(taken: _Taken, space: SubjectSpace, shared: Shared, view: Analysis
         groups = None if taken.groups is None else replace(taken.groups, codes=taken.groups.codes[used])
         samples = tuple(taken.samples[row] for row in used)
         return _Taken(samples, groups, taken.values[used], taken.x_imputed[used], taken.y_imputed[used])
-    return _means(taken, shared.subjects, view)
+    return _means(taken, shared, shared.subjects, view)
 
 
-def _means(taken: _Taken, design: SubjectDesign, view: AnalysisView) -> _Taken:
+def _means(taken: _Taken, shared: Shared, design: SubjectDesign, view: AnalysisView) -> _Taken:
     first = np.unique(design.subject, return_index=True)[1]
     groups = taken.groups
     if groups is not None:
-        constant = np.array_equal(groups.codes, groups.codes[first][design.subject])
-        groups = replace(groups, codes=groups.codes[first]) if constant else None
+        groups = replace(groups, codes=groups.codes[first]) if shared.groups_of_subjects else None
     filled = [
         subject_means(design, mask.astype(np.float64)[:, None])[:, 0] > 0.0
         for mask in (taken.x_imputed, taken.y_imputed)

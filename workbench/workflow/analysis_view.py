@@ -45,6 +45,14 @@ class Shared:
         return len(self.samples)
 
     @property
+    def groups_of_subjects(self) -> bool:
+        """Whether all samples of a subject are of one group."""
+        if self.groups is None or self.subjects is None:
+            return True
+        first = np.unique(self.subjects.subject, return_index=True)[1]
+        return np.array_equal(self.groups.codes, self.groups.codes[first][self.subjects.subject])
+
+    @property
     def within(self) -> NDArray[np.float64]:
         """Nuisance and group together: what is removed for a screen within groups."""
         return np.hstack([self.nuisance, self.group_columns])

@@ -9,9 +9,10 @@ import pandas as pd
 
 from workbench.engine import BlockPair
 from workbench.engine.differential import DifferentialScreen, screen_differences
+from workbench.engine.repeated import rows_by_subject
 from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.reporting import Reporter
-from workbench.workflow.screening import Screens, is_repeated
+from workbench.workflow.screening import Screens, is_repeated, subjects_of
 
 COLUMNS = (
     *(
@@ -26,9 +27,9 @@ COLUMNS = (
     ),
     *("r_first", "r_second", "difference", "p", "q", "q_block"),
 )
-ONE_SAMPLE_EACH = (
-    "differential edges need one sample of each subject: where subjects have several, groups are not compared "
-    "pair by pair"
+OWN_GROUPS = (
+    "differential edges need subjects that stay in their group: where they change it, groups are not compared pair by "
+    "pair"
 )
 
 
@@ -45,13 +46,13 @@ def group_contrasts(view: AnalysisView, screens: Screens, reporter: Reporter) ->
 
     With more than two groups each one is compared with the reference; the false-discovery rate is over all pairs of
     all comparisons.  Nuisance is removed inside each group; private variation stays in, since it is not told inside a
-    group.
+    group.  Where subjects have several samples their changes, or means, are compared between groups of subjects.
     """
     empty = pd.DataFrame({column: [] for column in COLUMNS})
     if not view.factors:
         return Differences(empty, ())
-    if any(is_repeated(one) for one in screens.shared):
-        return Differences(empty, (ONE_SAMPLE_EACH,))
+    if any(is_repeated(one) and not one.groups_of_subjects for one in screens.shared):
+        return Differences(empty, (OWN_GROUPS,))
     asked = _comparisons(view, screens)
     network = view.settings.network
     with reporter.progress("differences between groups") as progress:
@@ -75,10 +76,14 @@ def _comparisons(view: AnalysisView, screens: Screens) -> list[Asked]:
         assert one.groups is not None
         x = view.blocks[first].values[view.blocks[first].rows(one.samples)]
         y = view.blocks[second].values[view.blocks[second].rows(one.samples)]
-        pair = BlockPair(f"{first} x {second}", x, y, one.nuisance)
-        reference = np.flatnonzero(one.groups.codes == 0)
+        pair, codes = BlockPair(f"{first} x {second}", x, y, one.nuisance), one.groups.codes
+        if is_repeated(one):
+            design, compared = subjects_of(view, one)
+            pair, subjects = rows_by_subject(pair, design, compared)
+            codes = codes[np.unique(design.subject, return_index=True)[1]][subjects]
+        reference = np.flatnonzero(codes == 0)
         for code, level in enumerate(one.groups.levels[1:], start=1):
-            rows = reference, np.flatnonzero(one.groups.codes == code)
+            rows = reference, np.flatnonzero(codes == code)
             asked.append((pair, k, rows, (one.groups.levels[0], level)))
     return asked
 

@@ -82,6 +82,8 @@ def private_lines(view: AnalysisView, screen: Screen, heavy: Mapping[str, int]) 
             f"{name}: {count} removed ({share} of {_of_what(view, one)}, private.tsv)" + _kept_words(kept)
         )
     lines += list(dict.fromkeys(reason for reason in screen.off if reason))
+    named = zip(removal_names(screen.removals), screen.removals, strict=True)
+    lines += [_left_in_line(view, name, one) for name, one in named if left_in(one)]
     lines += [
         _odd_line(name, one)
         for name, one in zip(removal_names(screen.removals), screen.removals, strict=True)
@@ -117,6 +119,22 @@ def heavy_tailed(screen: Screen) -> dict[str, int]:
     return found
 
 
+def left_in(one: BlockRemoval) -> tuple[RealComponent, ...]:
+    """Return the components that stay since they cannot be told from shared ones; none where removal is off."""
+    return tuple(part for part in one.components if part.stays == "entangled") if one.on else ()
+
+
+def _left_in_line(view: AnalysisView, name: str, one: BlockRemoval) -> str:
+    """Return what stays undecided, and which correlation the intervals are then of."""
+    tied = left_in(one)
+    share = percent(sum(part.share for part in tied))
+    stay, them = ("stays", "it") if len(tied) == 1 else ("stay", "them")
+    return (
+        f"{name}: {counted(len(tied), 'component')} ({share} of {_of_what(view, one)}) cannot be told from what other "
+        f"layers share, and {stay}: the intervals of its edges are of correlations with {them} left in (guide private)"
+    )
+
+
 def _odd_line(name: str, one: BlockRemoval) -> str:
     """Return which samples, or subjects, are odd and were brought back to size."""
     what = "sample" if one.space is None else "subject"
@@ -142,6 +160,11 @@ def private_record(view: AnalysisView, screen: Screen, heavy: Mapping[str, int])
             for name, one in zip(removal_names(screen.removals), screen.removals, strict=True)
         },
         "features_by_normal_scores": dict(heavy),
+        "left_in": {
+            name: [part.number for part in left_in(one)]
+            for name, one in zip(removal_names(screen.removals), screen.removals, strict=True)
+            if left_in(one)
+        },
         "odd_brought_back_to_size": {
             name: dict(one.odd)
             for name, one in zip(removal_names(screen.removals), screen.removals, strict=True)
