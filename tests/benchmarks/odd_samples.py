@@ -10,7 +10,7 @@ Measured, 50 studies each (150 at n = 24), nominal 5 %; studies with any edge wh
 | 24 | one, two odd samples | 1.00, 1.00 | 0.18, 0.37 | 0.05, 0.10 | 0.05, 0.10 |
 | 48 | one, two odd samples | 1.00, 1.00 | 0.22, 0.28 | 0.06, 0.04 | 0.06, 0.06 |
 | 96 | one, two odd samples | 1.00, 1.00 | 0.22, 0.24 | 0.08, 0.04 | 0.08, 0.04 |
-| 24, 48, 96 | one odd sample, private factors | 0.74, 0.74, 0.44 | 0.09, 0.10, 0.08 | 0.03, 0.04, 0.04 | 0.03, 0.04, 0.04 |
+| 24, 48, 96 | one odd, private factors | 0.74, 0.74, 0.44 | 0.09, 0.10, 0.08 | 0.03, 0.04, 0.04 | 0.03, 0.04, 0.04 |
 | 48 | t3 tails | 1.00 | 0.04 | 1.00 | 0.04 |
 
 Modules, realised rate and recall, n = 48: one odd sample 0.50, 0.87 (pearson), 0.09, 0.85 (scores), 0.05, 0.92 (rows
@@ -22,12 +22,12 @@ withstood (seeds from 0): odd-1.4-60, 24 studies, recall 0.906 and 0.961 (realis
 16 studies, 0.840 and 0.952; strength 2.0 at n = 24, 40 studies, rate 0.107 and 0.055, recall 0.052 and 0.062. Where no
 sample is odd it costs nothing: small-2.5-24, 50 studies, recall 0.785 and 0.784 (difference -0.0007 +- 0.0016).
 
-Tried: a sample judged by its mean square over the features, whatever makes it large: samples that are strong in a real
-factor are shrunk as well, recall in narrow blocks of few samples falls (small-2.5-24: 0.78 to 0.75, shared components
-removed in 0.25 in place of 0.06 of 16 studies). The sample's noise as ``signal_components`` tells it: in wide blocks the
-odd sample is a component of its own, and what is left of it is no larger than the others (recall of odd-1.4-60 0.92 in
-place of 0.96, 6 studies). The nuisance estimated again with odd samples weighted down: no difference at n = 60, 0.079 in
-place of 0.062 of recall at strength 2.0 and n = 24, no fewer false edges.
+Tried: a sample judged by its mean square over the features, whatever makes it large: samples that are strong in a
+real factor are shrunk as well, recall in narrow blocks of few samples falls (small-2.5-24: 0.78 to 0.75, shared
+components removed in 0.25 in place of 0.06 of 16 studies). The sample's noise as ``signal_components`` tells it: in
+wide blocks the odd sample is a component of its own, and what is left of it is no larger than the others (recall of
+odd-1.4-60 0.92 in place of 0.96, 6 studies). The nuisance estimated again with odd samples weighted down: no
+difference at n = 60, 0.079 in place of 0.062 of recall at strength 2.0 and n = 24, no fewer false edges.
 An edge that must hold without its most influential sample (12 studies, n = 48): still 1.00 of null studies with one
 odd sample, and recall 0.82 instead of 0.92 where no sample is odd.
 """
