@@ -1,7 +1,7 @@
 """How many axes are found, and whether their strength in new samples is what is said.
 
 ``axes``: 0 to 3 shared factors on all features under two private ones a side, beside an oracle that knows the loadings.
-``validation``: cross-validated correlations beside what models fitted on the same training share (four fifths) reach in
+``validation``: cross-validated correlations beside what the folds' own models (four fifths of the samples) reach in
 2,000 new samples. ``noise``: cross-validated correlations where nothing is shared.
 
 Seen, 99 permutations, right number of axes (above the truth): n = 60, 20 x 10 features, 40 studies: 0 axes 0.93 (0.07),
@@ -22,6 +22,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from workbench.engine import RegularisedCCA, array_source, canonical_pair_test, cross_validated_correlations
+from workbench.engine.subject_folds import make_folds
 
 FloatArray = NDArray[np.float64]
 
@@ -49,7 +50,7 @@ def draw_loadings(
     )
 
 
-def axes(studies: int) -> None:
+def axes(seeds: range) -> None:
     """Print the number of axes found where 0 to 3 are planted, and how often an oracle sees all of them.
 
     The oracle knows the loadings: it scores each factor by least squares on each side and tests the correlation of the
@@ -58,7 +59,7 @@ def axes(studies: int) -> None:
     for n, widths in ((60, (400, 150)), (60, (20, 10))):
         for shared in (0, 1, 2, 3):
             found, oracle, start = [], [], time.perf_counter()
-            for seed in range(studies):
+            for seed in seeds:
                 rng = np.random.default_rng([seed, n, widths[0], shared])
                 loadings = draw_loadings(rng, widths, shared, 0.7 if widths[0] > n else 1.5)
                 factors = rng.normal(size=(n, shared))
@@ -89,46 +90,55 @@ def _oracle(x: FloatArray, y: FloatArray, loadings: tuple[tuple[FloatArray, Floa
     return all(one > 1.96 for one in z)
 
 
-def validation(studies: int) -> None:
-    """Print how far the cross-validated correlation of the first pair is from what such models reach in new samples."""
-    errors = []
-    for seed in range(studies):
+def validation(seeds: range) -> None:
+    """Print how far the cross-validated correlation of the first pair is from what such models reach in new samples.
+
+    The models are those of the folds themselves. ``reached`` puts the new samples of all folds together as the
+    cross-validation does its test samples; ``mean`` is the mean of the folds' own correlations.
+    """
+    rows = []
+    for done, seed in enumerate(seeds, start=1):
         rng = np.random.default_rng([seed, 3])
         loadings = draw_loadings(rng, (300, 100), 1, 0.3)
         x, y = draw_sides(rng, 50, loadings, rng.normal(size=(50, 1)))
-        new_x, new_y = draw_sides(rng, 2000, loadings, rng.normal(size=(2000, 1)))
+        new = draw_sides(rng, 2000, loadings, rng.normal(size=(2000, 1)))
         said = cross_validated_correlations(array_source(x, y), 50, n_components=1, repeats=1, seed=seed)
-        reached = []
-        for fold in range(5):
-            rows = np.arange(50) % 5 != fold
-            model = RegularisedCCA(1, random_state=fold).fit(x[rows], y[rows])
-            u, v = model.transform(new_x, new_y)
-            reached.append(float(u[:, 0] @ v[:, 0] / np.sqrt(u[:, 0] @ u[:, 0] * (v[:, 0] @ v[:, 0]))))
-        errors.append((said.correlations[0], np.mean(reached)))
-        if (seed + 1) % 10 == 0:
-            _report(np.array(errors), seed + 1)
+        folds = make_folds(None, None, 50, 5, np.random.SeedSequence(seed, spawn_key=(0,)))
+        products = []
+        for (train, _), ridge in zip(folds, said.ridges[0], strict=True):
+            u, v = RegularisedCCA(1, ridge=tuple(ridge)).fit(x[train], y[train]).transform(*new)
+            products.append([float(np.sum(a * b)) for a, b in ((u, v), (u, u), (v, v))])
+        uv, uu, vv = np.array(products).T
+        reached, mean = uv.sum() / np.sqrt(uu.sum() * vv.sum()), np.mean(uv / np.sqrt(uu * vv))
+        rows.append((said.correlations[0], reached, mean))
+        if done % 20 == 0:
+            _report(np.array(rows), done)
 
 
-def _report(pairs: FloatArray, done: int) -> None:
-    gap = pairs[:, 0] - pairs[:, 1]
+def _report(rows: FloatArray, done: int) -> None:
+    said, reached, mean = rows.T
+    gaps = ", ".join(
+        f"{np.mean(said - other):+.3f} +- {np.std(said - other, ddof=1) / np.sqrt(done):.3f}"
+        for other in (reached, mean)
+    )
     print(
-        f"{done} studies: said {pairs[:, 0].mean():.3f}, reached {pairs[:, 1].mean():.3f}, difference "
-        f"{gap.mean():+.3f} +- {gap.std(ddof=1) / np.sqrt(done):.3f}",
+        f"{done} studies: said {said.mean():.3f}, reached {reached.mean():.3f}, mean {mean.mean():.3f}, said less each "
+        f"{gaps}",
         flush=True,
     )
 
 
-def noise(studies: int) -> None:
+def noise(seeds: range) -> None:
     """Print the mean cross-validated correlation where nothing is shared."""
     said: list[float] = []
-    for seed in range(studies):
+    for done, seed in enumerate(seeds, start=1):
         rng = np.random.default_rng([seed, 4])
         x, y = draw_sides(rng, 40, draw_loadings(rng, (300, 100), 0, 0.0), np.empty((40, 0)))
         found = cross_validated_correlations(array_source(x, y), 40, n_components=1, repeats=1, seed=seed)
         said.append(float(found.correlations[0]))
-        if (seed + 1) % 10 == 0:
-            error = np.std(said, ddof=1) / np.sqrt(len(said))
-            print(f"{seed + 1} studies of noise: mean {np.mean(said):+.3f} +- {error:.3f}", flush=True)
+        if done % 20 == 0:
+            error = np.std(said, ddof=1) / np.sqrt(done)
+            print(f"{done} studies of noise: mean {np.mean(said):+.3f} +- {error:.3f}", flush=True)
 
 
 def main() -> None:
@@ -138,8 +148,10 @@ def main() -> None:
     )
     parser.add_argument("part", choices=["axes", "validation", "noise"])
     parser.add_argument("--studies", type=int, default=50)
+    parser.add_argument("--first", type=int, default=0, help="seed of the first study")
     chosen = parser.parse_args()
-    {"axes": axes, "validation": validation, "noise": noise}[chosen.part](chosen.studies)
+    seeds = range(chosen.first, chosen.first + chosen.studies)
+    {"axes": axes, "validation": validation, "noise": noise}[chosen.part](seeds)
 
 
 if __name__ == "__main__":

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.testing import assert_allclose
 
-from workbench.engine.private_removal import PrivateRemoval
+from workbench.engine.private_removal import PrivateRemoval, private_removals
 
 
 def studied(seed: int, n: int = 120) -> dict[str, np.ndarray]:
@@ -26,9 +26,13 @@ def explained(x: np.ndarray, factors: np.ndarray) -> float:
     return float(np.mean(np.sum((basis.T @ x) ** 2, axis=0) / np.sum(x**2, axis=0)))
 
 
+def removal_of(x: np.ndarray, y: np.ndarray, age: np.ndarray | None = None) -> PrivateRemoval:
+    return private_removals([x, y], ["x", "y"], age)[0]
+
+
 def test_rows_that_had_no_part_in_it_are_cleaned_and_keep_what_is_shared() -> None:
     study, train, test = studied(1), slice(0, 80), slice(80, 120)
-    removal = PrivateRemoval.fit(study["x"][train], [study["y"][train]], study["age"][train])
+    removal = removal_of(study["x"][train], study["y"][train], study["age"][train])
     cleaned = removal.transform(study["x"][test], study["age"][test])
     raw = study["x"][test] - study["age"][test]
     assert removal.weights.shape[1] == 2
@@ -40,14 +44,26 @@ def test_rows_that_had_no_part_in_it_are_cleaned_and_keep_what_is_shared() -> No
 def test_the_units_of_features_only_scale_the_result() -> None:
     study = studied(2, 60)
     unit = np.exp(np.random.default_rng(0).normal(size=400))
-    plain = PrivateRemoval.fit(study["x"], [study["y"]]).transform(study["x"])
-    scaled = PrivateRemoval.fit(study["x"] * unit, [study["y"]]).transform(study["x"] * unit)
+    plain = removal_of(study["x"], study["y"]).transform(study["x"])
+    scaled = removal_of(study["x"] * unit, study["y"]).transform(study["x"] * unit)
     assert_allclose(scaled, plain * unit, rtol=1e-7, atol=1e-9)
 
 
 def test_too_few_rows_leave_the_residuals_as_they_are() -> None:
     study = studied(3, 19)
-    removal = PrivateRemoval.fit(study["x"], [study["y"]], study["age"])
+    removal = removal_of(study["x"], study["y"], study["age"])
     assert "19 samples" in removal.off
     left = removal.transform(study["x"], study["age"])
     assert_allclose(left, removal.residuals.transform(study["age"], study["x"]))
+
+
+def test_blocks_learn_from_the_rows_that_they_have() -> None:
+    """A block that lacks rows is cleaned by the others, and a lacking row stays one."""
+    study = studied(1)
+    lacking = study["y"].copy()
+    lacking[:20] = np.nan
+    first, second = private_removals([study["x"], lacking], ["x", "y"], study["age"])
+    assert first.weights.shape[1] == second.weights.shape[1] == 2
+    cleaned = second.transform(lacking, study["age"])
+    assert_allclose(np.isnan(cleaned).all(axis=1), np.arange(120) < 20)
+    assert 0.3 < first.share < 0.8

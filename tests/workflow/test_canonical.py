@@ -64,7 +64,7 @@ def test_three_layers_share_one_axis(three):
     goes = pd.read_csv(three / "results/main/association.tsv", sep="\t")
     assert goes.loc[(goes["column"] == "dose") & (goes["component"] == 1), "r2"].item() > 0.9
     text = (three / "results/main/canonical.txt").read_text()
-    assert "variation shared by transcripts and metabolites and proteins" in text
+    assert "variation shared by transcripts, metabolites and proteins" in text
     assert "proteins (40 features, 25 samples)" in text
     assert "component 1 goes with dose" in text
 
@@ -138,3 +138,28 @@ def test_subjects_are_compared_by_the_level_asked_for(tmp_path, level, words):
     text = (settings.parent / "results/main/canonical.txt").read_text()
     assert f"16 {words}" in text
     assert (found["p"].iloc[0] == pytest.approx(1 / 150)) == (level == "visits")
+
+
+@pytest.mark.parametrize("remove", ["true", "false"])
+def test_what_private_variation_buries_is_found_once_it_is_removed(tmp_path, remove):
+    """Two weak shared factors under strong private ones: a second p and a sentence, and neither when not asked for."""
+    rng = np.random.default_rng(5)
+    ids = [f"S{k:02d}" for k in range(48)]
+    shared = rng.normal(size=(48, 2))
+    tables = {}
+    for name, width, private, loaded in (("transcripts", 400, 5, 30), ("metabolites", 100, 3, 10)):
+        values = 10 + rng.normal(size=(48, width))
+        values += 1.5 * rng.normal(size=(48, private)) @ rng.normal(size=(private, width))
+        for factor in shared.T:
+            values[:, rng.choice(width, loaded, replace=False)] += factor[:, None]
+        tables[name] = pd.DataFrame(values, index=ids, columns=[f"{name}{k}" for k in range(width)])
+    settings = write_study(tmp_path, pd.DataFrame({"sample": ids}), tables)
+    settings.write_text(settings.read_text() + f"\n[analyses.main.network]\nremove_private = {remove}\n")
+    Project.open(settings.parent).integrate("main")
+    found = Project.open(settings.parent).result("main").components
+    text = (settings.parent / "results/main/canonical.txt").read_text()
+    assert found["p"].iloc[0] > 0.05
+    assert ("p_without_private" in found) == ("with private variation removed" in text) == (remove == "true")
+    if remove == "true":
+        assert found["p_without_private"].iloc[0] == pytest.approx(1 / 150)
+        assert "is buried under private variation" in text

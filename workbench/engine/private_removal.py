@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import combinations
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,6 +13,8 @@ from workbench.engine.nuisance import FittedResiduals, fit_residuals
 from workbench.engine.private_variation import LayerBlock, RealComponent, pairs_without_private
 
 FloatArray = NDArray[np.float64]
+
+FEWEST_COMMON = 3
 
 
 @dataclass(frozen=True, eq=False)
@@ -30,14 +33,6 @@ class PrivateRemoval:
     off : str
         Why nothing is removed; empty where removal is on.
 
-    Examples
-    --------
-    >>> rng = np.random.default_rng(2)
-    >>> factor = rng.normal(size=(80, 1))
-    >>> x = 2.0 * factor + rng.normal(size=(80, 300))
-    >>> removal = PrivateRemoval.fit(x[:60], [rng.normal(size=(60, 200))])
-    >>> len(removal.components), bool(removal.transform(x[60:]).var() < 0.4 * x[60:].var())
-    (1, True)
     """
 
     residuals: FittedResiduals
@@ -46,55 +41,10 @@ class PrivateRemoval:
     loadings: FloatArray
     off: str
 
-    @classmethod
-    def fit(
-        cls,
-        x_train: FloatArray,
-        others_train: Sequence[FloatArray],
-        nuisance_train: FloatArray | None = None,
-        *,
-        seed: int = 0,
-    ) -> PrivateRemoval:
-        """Learn from training rows.
-
-        A row's scores are least-squares fits of its features on the loadings of all real components together,
-        so that what stays is not taken for what goes.
-
-        Parameters
-        ----------
-        x_train : ndarray of shape (n_train, n_features)
-        others_train : sequence of ndarray of shape (n_train, ...)
-            The blocks of other layers on the same rows: a component that goes with one of them stays.
-        nuisance_train : ndarray of shape (n_train, n_columns), optional
-            Removed from all blocks.
-        seed : int
-            For the number of components of narrow blocks.
-
-        Raises
-        ------
-        NumericsError
-            When shapes or values do not allow it.
-        """
-        residuals = fit_residuals(nuisance_train, x_train)
-        n = x_train.shape[0]
-        columns = np.empty((n, 0)) if nuisance_train is None else nuisance_train
-        blocks = [
-            LayerBlock(f"block {k}", str(k), values, np.arange(n), columns)
-            for k, values in enumerate([x_train, *others_train])
-        ]
-        made = pairs_without_private(blocks, [(0, k) for k in range(1, len(blocks))], seed=seed)
-        off = next(iter(made.off), "there is no block of another layer")
-        told = made.components[0]
-        removed = np.array([one.removed for one in told], dtype=bool) & (not off)
-        if not removed.any():
-            nothing = np.empty((x_train.shape[1], 0))
-            return cls(residuals, told, nothing, nothing, off)
-        scores = np.column_stack([one.scores for one in told])
-        scale = np.where(residuals.varies, residuals.scale, 1.0)
-        scaled = residuals.transform(nuisance_train, x_train) / scale * residuals.varies
-        loadings = np.linalg.lstsq(scores, scaled, rcond=None)[0]
-        weights: FloatArray = np.asarray(np.linalg.pinv(loadings))[:, removed] / scale[:, None]
-        return cls(residuals, told, weights, np.asarray(loadings[removed].T * scale[:, None]), off)
+    @property
+    def share(self) -> float:
+        """Share of the block's variance, nuisance removed, that the removed components take."""
+        return float(sum(one.share for one in self.components if one.removed and self.weights.shape[1]))
 
     def transform(self, x: FloatArray, nuisance: FloatArray | None = None) -> FloatArray:
         """Rows with the nuisance and the private variation taken out, in the units of ``x``.
@@ -108,3 +58,76 @@ class PrivateRemoval:
         rest = self.residuals.transform(nuisance, x)
         cleaned: FloatArray = rest - (rest @ self.weights) @ self.loadings.T
         return cleaned
+
+
+def private_removals(
+    blocks: Sequence[FloatArray],
+    layers: Sequence[str],
+    nuisance: FloatArray | None = None,
+    *,
+    seed: int = 0,
+) -> tuple[PrivateRemoval, ...]:
+    """Learn from training rows what each block is to be freed of: a component that goes with another layer stays.
+
+    A row's scores are least-squares fits of its features on the loadings of all real components of the block
+    together, so that what stays is not taken for what goes.
+
+    Parameters
+    ----------
+    blocks : sequence of ndarray of shape (n_train, p_b)
+        Rows of NaN for a sample that the block lacks.
+    layers : sequence of str
+        Layer of each block.
+    nuisance : ndarray of shape (n_train, n_columns), optional
+        Removed from all blocks.
+    seed : int
+        For the number of components of narrow blocks.
+
+    Raises
+    ------
+    NumericsError
+        When shapes or values do not allow it.
+
+    Examples
+    --------
+    >>> rng = np.random.default_rng(2)
+    >>> factor = rng.normal(size=(80, 1))
+    >>> x, y = 2.0 * factor + rng.normal(size=(80, 300)), rng.normal(size=(80, 200))
+    >>> removal = private_removals([x[:60], y[:60]], ["transcripts", "metabolites"])[0]
+    >>> len(removal.components), bool(removal.transform(x[60:]).var() < 0.4 * x[60:].var())
+    (1, True)
+    """
+    columns = np.empty((len(blocks[0]), 0)) if nuisance is None else nuisance
+    held = [np.flatnonzero(np.isfinite(block).all(axis=1)) for block in blocks]
+    given = [
+        LayerBlock(f"block {k + 1}", layer, block[rows], rows, columns[rows])
+        for k, (block, layer, rows) in enumerate(zip(blocks, layers, held, strict=True))
+    ]
+    pairs = [
+        (a, b)
+        for a, b in combinations(range(len(blocks)), 2)
+        if layers[a] != layers[b] and np.intersect1d(held[a], held[b]).size >= FEWEST_COMMON
+    ]
+    made = pairs_without_private(given, pairs, seed=seed)
+    return tuple(
+        _removal(
+            block,
+            told,
+            next((off for pair, off in zip(pairs, made.off, strict=True) if k in pair and off), ""),
+        )
+        for k, (block, told) in enumerate(zip(given, made.components, strict=True))
+    )
+
+
+def _removal(block: LayerBlock, told: tuple[RealComponent, ...], off: str) -> PrivateRemoval:
+    residuals = fit_residuals(block.nuisance, block.values)
+    removed = np.array([one.removed for one in told], dtype=bool) & (not off)
+    if not removed.any():
+        nothing = np.empty((block.values.shape[1], 0))
+        return PrivateRemoval(residuals, told, nothing, nothing, off)
+    scores = np.column_stack([one.scores for one in told])
+    scale = np.where(residuals.varies, residuals.scale, 1.0)
+    scaled = residuals.transform(block.nuisance, block.values) / scale * residuals.varies
+    loadings = np.linalg.lstsq(scores, scaled, rcond=None)[0]
+    weights: FloatArray = np.asarray(np.linalg.pinv(loadings))[:, removed] / scale[:, None]
+    return PrivateRemoval(residuals, told, weights, np.asarray(loadings[removed].T * scale[:, None]), off)

@@ -32,6 +32,7 @@ from workbench.figures.style import (
     say,
 )
 from workbench.figures.variance import BLUES
+from workbench.look.words import listed
 
 FloatArray = NDArray[np.float64]
 
@@ -191,7 +192,7 @@ def leading_figure(view: CanonicalView, axes: Axes, layer: int, component: int =
     axes.axvline(0.0, color=INK, linewidth=0.6)
     axes.set_xlim(-1.0, 1.0)
     axes.set_title(figure_name(drawn.name))
-    axes.set_xlabel(f"correlation with the other layers'\nvariate of component {component}")
+    axes.set_xlabel(f"correlation with the\nother layers' variate\nof component {component}")
     return axes
 
 
@@ -249,7 +250,7 @@ def _unit(values: FloatArray) -> FloatArray:
 
 
 def _drawings(view: CanonicalView) -> Iterator[Drawing]:
-    names = " and ".join(layer.name for layer in view.layers)
+    names = listed([layer.name for layer in view.layers])
     figure = _figure(ONE_COLUMN, 3.4)
     correlation_figure(view, figure.add_subplot())
     yield Drawing("correlations", figure, _correlation_caption(names))

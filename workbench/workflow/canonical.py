@@ -7,7 +7,7 @@ from collections.abc import Sequence
 from workbench.store import Change, table_bytes
 from workbench.workflow.analysis_inputs import analysis_inputs
 from workbench.workflow.analysis_view import blocks_of, view_analysis
-from workbench.workflow.fingerprints import columns_fingerprint
+from workbench.workflow.fingerprints import columns_fingerprint, fingerprint
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
@@ -31,7 +31,11 @@ def canonical_stage(state: ProjectState, name: str) -> Stage:
 def _inputs(state: ProjectState, name: str) -> dict[str, str]:
     """Return what the stage depends on: that of any analysis, and the sheet that components are held against."""
     sheet = state.require_sheet()
-    return {**analysis_inputs(state, name), "sample sheet": columns_fingerprint(sheet, list(sheet.columns))}
+    return {
+        **analysis_inputs(state, name),
+        "sample sheet": columns_fingerprint(sheet, list(sheet.columns)),
+        "private variation": fingerprint(state.settings.analyses[name].network.remove_private),
+    }
 
 
 def _work(state: ProjectState, change: Change, reporter: Reporter, name: str) -> Sequence[str]:

@@ -24,9 +24,16 @@ from workbench.engine.generalised_test import generalised_pair_test
 from workbench.engine.generalised_validation import cross_validated_components
 from workbench.engine.linear import thin_basis
 from workbench.engine.pair_null import null_correlations
+from workbench.engine.private_removal import PrivateRemoval
 from workbench.errors import NumericsError
 from workbench.workflow.analysis_view import AnalysisView
-from workbench.workflow.canonical_layers import LayerMatrix, layer_matrix, layers_source, two_side_source
+from workbench.workflow.canonical_layers import (
+    LayerMatrix,
+    layer_matrix,
+    layers_source,
+    two_side_source,
+    without_private,
+)
 from workbench.workflow.canonical_sheet import unit_columns
 from workbench.workflow.canonical_units import Units, canonical_units
 from workbench.workflow.reporting import Reporter
@@ -68,6 +75,17 @@ class Validated:
 
 
 @dataclass(frozen=True, eq=False)
+class FreedTest:
+    """Test of what layers share once each block is freed of its private variation; any group is removed as well.
+
+    ``removals`` holds by block what it was freed of.
+    """
+
+    test: PairTest
+    removals: dict[str, PrivateRemoval]
+
+
+@dataclass(frozen=True, eq=False)
 class CanonicalFit:
     """Everything that an analysis found out about what its layers share.
 
@@ -82,6 +100,8 @@ class CanonicalFit:
         None where the samples do not allow one; ``without`` says why.
     test, test_within : PairTest
         ``test_within`` is None without a group to remove.
+    freed : FreedTest or None
+        The test with private variation removed; None where that is not asked for or not possible.
     null : ndarray of shape (draws, n_components)
         In-sample correlations of fits to rearranged rows.
     part : ndarray of bool, shape (n_components, n_layers)
@@ -98,6 +118,7 @@ class CanonicalFit:
     without: str | None
     test: PairTest
     test_within: PairTest | None
+    freed: FreedTest | None
     null: FloatArray
     part: NDArray[np.bool_]
     association: AssociationMap
@@ -124,10 +145,12 @@ def canonical_fit(view: AnalysisView, reporter: Reporter) -> CanonicalFit:
     method = method_of(view)
     units = canonical_units(view, two_sides=method == TWO_SIDES)
     layers = [layer_matrix(view, layer, units) for layer in view.layers]
-    test = _test(view, units, layers, units.test_nuisance, reporter, "permutations")
+    raw = [layer.raw for layer in layers]
+    test = _test(view, units, layers, raw, units.test_nuisance, reporter, "permutations")
     within = None
     if units.test_within is not None:
-        within = _test(view, units, layers, units.test_within, reporter, "permutations within groups")
+        within = _test(view, units, layers, raw, units.test_within, reporter, "permutations within groups")
+    freed = _freed_test(view, units, layers, reporter)
     count = components_to_fit(view, test)
     validated, choice, without = _validate(view, method, units, count, reporter)
     fitted, correlations = _fit(view, method, units, layers, count, choice)
@@ -144,6 +167,7 @@ def canonical_fit(view: AnalysisView, reporter: Reporter) -> CanonicalFit:
         without=without,
         test=test,
         test_within=within,
+        freed=freed,
         null=_null(units, accounted, count, view.settings.seed),
         part=part,
         association=associate(scores, columns),
@@ -169,10 +193,12 @@ def _test(
     view: AnalysisView,
     units: Units,
     layers: list[LayerMatrix],
+    raw: list[FloatArray],
     nuisance: FloatArray,
     reporter: Reporter,
     label: str,
 ) -> PairTest:
+    """Test values of the layers, with a nuisance to be removed, against what nothing shared gives."""
     settings = view.settings
     auto = settings.components == "auto"
     sizes = [layer.sizes for layer in layers]
@@ -185,13 +211,26 @@ def _test(
     }
     count = MOST_COMPONENTS if auto else int(settings.components)
     with reporter.progress(label) as progress:
-        if len(layers) == 2 and all(np.isfinite(layer.raw).all() for layer in layers):
+        if len(layers) == 2 and all(np.isfinite(one).all() for one in raw):
             return canonical_pair_test(
-                layers[0].raw, layers[1].raw, pairs=count, progress=progress,
+                raw[0], raw[1], pairs=count, progress=progress,
                 x_block_sizes=sizes[0], y_block_sizes=sizes[1], **told,
             )  # fmt: skip
-        raw = [layer.raw for layer in layers]
         return generalised_pair_test(raw, components=count, progress=progress, part_sizes=sizes, **told)
+
+
+def _freed_test(
+    view: AnalysisView, units: Units, layers: list[LayerMatrix], reporter: Reporter
+) -> FreedTest | None:
+    """Test with private variation removed; not of samples less their subject's mean, which are not independent."""
+    if not view.settings.network.remove_private or units.kind == "deviations":
+        return None
+    nuisance = units.test_nuisance if units.test_within is None else units.test_within
+    raw, removals = without_private(layers, nuisance, view.settings.seed)
+    if any(one.off for one in removals.values()) or not any(one.weights.size for one in removals.values()):
+        return None
+    label = "permutations without private variation"
+    return FreedTest(_test(view, units, layers, raw, nuisance, reporter, label), removals)
 
 
 def _validate(

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from workbench.engine import Nuisance, SideSplit, Split, SplitSource, fit_residuals, standardise
 from workbench.engine.generalised_validation import BlockSplit, BlocksSource
+from workbench.engine.private_removal import PrivateRemoval, private_removals
 from workbench.errors import InputError
 from workbench.prepare import recipe_for
 from workbench.workflow.analysis_view import AnalysisView
@@ -79,6 +80,19 @@ def samples_held(view: AnalysisView, layer: str, samples: Sequence[str]) -> Inde
     """Return the positions of the samples that all blocks of a layer have."""
     held = set(view.held_by_all(view.sides[layer]))
     return np.flatnonzero([sample in held for sample in samples])
+
+
+def without_private(
+    layers: Sequence[LayerMatrix], nuisance: FloatArray, seed: int
+) -> tuple[list[FloatArray], dict[str, PrivateRemoval]]:
+    """Return each layer's values as tested, freed of nuisance and private variation, and by block what was removed."""
+    raw = [part for layer in layers for part in np.split(layer.raw, np.cumsum(layer.sizes)[:-1], axis=1)]
+    owners = [layer.layer for layer in layers for _ in layer.blocks]
+    made = private_removals(raw, owners, nuisance, seed=seed)
+    cleaned = iter([one.transform(part, nuisance) for one, part in zip(made, raw, strict=True)])
+    names = [block for layer in layers for block in layer.blocks]
+    freed = [np.hstack([next(cleaned) for _ in layer.blocks]) for layer in layers]
+    return freed, dict(zip(names, made, strict=True))
 
 
 def two_side_source(view: AnalysisView, units: Units) -> SplitSource:

@@ -35,6 +35,8 @@ def components_table(fit: CanonicalFit) -> pd.DataFrame:
     )
     if fit.test_within is not None:
         table["p_within"] = padded(fit.test_within, count)
+    if fit.freed is not None:
+        table["p_without_private"] = padded(fit.freed.test, count)
     if len(fit.layers) > 2:
         names = [layer.matrix.layer for layer in fit.layers]
         table["layers"] = [

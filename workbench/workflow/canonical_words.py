@@ -6,6 +6,7 @@ import numpy as np
 
 from workbench.engine import PairTest
 from workbench.intake.faults import counted
+from workbench.look.words import listed, percent
 from workbench.workflow.canonical_fit import CanonicalFit, LayerFit
 from workbench.workflow.canonical_tables import null_limit
 
@@ -19,6 +20,7 @@ def reading(fit: CanonicalFit) -> list[str]:
     lines = [_what(fit), axes_sentence(fit)]
     if fit.test_within is not None:
         lines.append(within_sentence(fit))
+    lines.append(private_sentence(fit))
     for k in range(fit.count):
         lines += _component(fit, k)
     lines += [_account(layer, len(fit.layers)) for layer in fit.layers]
@@ -31,7 +33,7 @@ def summary(fit: CanonicalFit) -> list[str]:
     lines = [axes_sentence(fit)]
     if fit.test_within is not None:
         lines.append(within_sentence(fit))
-    lines.append(_correlation(fit, 0))
+    lines += [private_sentence(fit), _correlation(fit, 0)]
     return [line for line in [*lines, *trust_sentences(fit)] if line]
 
 
@@ -42,7 +44,7 @@ def axes_sentence(fit: CanonicalFit) -> str:
         return f"shared variation: p withheld, {test.withheld}"
     p = ", ".join(f"{value:.3g}" for value in test.p_by_pair if np.isfinite(value))
     tested = f"p = {p} (component by component, {test.permutations} permutations on {fit.units.n} {fit.units.words})"
-    axes, layers = fit.axes, " and ".join(layer.matrix.layer for layer in fit.layers)
+    axes, layers = fit.axes, listed([layer.matrix.layer for layer in fit.layers])
     if axes == 0:
         return f"no variation shared by {layers} can be told from chance: {tested}"
     more = "" if axes < len(test.p_by_pair) else "; there may be more"
@@ -64,6 +66,29 @@ def within_sentence(fit: CanonicalFit) -> str:
             "which any two layers that it touches share"
         )
     return f"inside the groups: p = {test.p:.3g}"
+
+
+def private_sentence(fit: CanonicalFit) -> str:
+    """Return what the layers share once each is freed of its private variation; empty where that was not tested."""
+    if fit.freed is None:
+        return ""
+    parts = [
+        f"{block} {counted(one.weights.shape[1], 'component')} ({percent(one.share)} of its variance)"
+        for block, one in fit.freed.removals.items()
+        if one.weights.size
+    ]
+    inside = "inside the groups, " if fit.test_within is not None else ""
+    removed = f"{inside}with private variation removed ({', '.join(parts)})"
+    test = fit.freed.test
+    if test.p is None:
+        return f"{removed}: p withheld, {test.withheld}"
+    told = f"{removed}: p = {test.p:.3g}"
+    if test.p > SIGNIFICANT:
+        return told
+    told += f", {counted(test.axes(), 'axis', 'axes')}"
+    if fit.axes == 0:
+        return f"{told}: what is shared is buried under private variation; no component below shows it, edges may"
+    return told
 
 
 def trust_sentences(fit: CanonicalFit) -> list[str]:
