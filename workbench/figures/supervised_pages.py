@@ -17,6 +17,7 @@ from workbench.figures.supervised import (
     roc_curves,
 )
 from workbench.figures.supervised_view import SupervisedView
+from workbench.intake.faults import counted
 
 MOST_CLASSES = 4
 ALIKE = {
@@ -32,7 +33,8 @@ def draw_supervised(view: SupervisedView) -> tuple[Drawing, ...]:
 
 
 def _drawings(view: SupervisedView) -> Iterator[Drawing]:
-    repeats = len(view.by_components)
+    count = len(view.by_components)
+    repeats = f"mean of {count} repeats and each of them" if count > 1 else "one repeat"
     measure = MEASURES.get(view.measure, view.measure)
     if view.truth.size:
         yield _scores(view)
@@ -50,7 +52,7 @@ def _drawings(view: SupervisedView) -> Iterator[Drawing]:
     yield Drawing(
         "components",
         figure,
-        f"{measure} of samples held out by number of components, mean of {repeats} repeats and each of them, beside "
+        f"{measure} of samples held out by number of components, {repeats}, beside "
         "the share of the outcome explained in sample (R2), which grows whatever the data. Dashed: how many were "
         "chosen; horizontal: what knowing nothing gives.",
     )
@@ -60,8 +62,8 @@ def _drawings(view: SupervisedView) -> Iterator[Drawing]:
         yield Drawing(
             "roc",
             figure,
-            f"ROC curve of samples held out: mean of {repeats} repeats of double cross-validation, band from the "
-            "lowest to the highest repeat. Repeats share the samples: the band is not a confidence band over patients.",
+            f"ROC curve of samples held out: {repeats}, of double cross-validation; band from the lowest to the "
+            "highest. Repeats share the samples: the band is not a confidence band over patients.",
         )
     if view.names:
         figure = sized_figure(ONE_COLUMN, 1.0 + 0.17 * len(view.names))
@@ -78,8 +80,8 @@ def _drawings(view: SupervisedView) -> Iterator[Drawing]:
     yield Drawing(
         "permutations",
         figure,
-        f"{measure} of samples held out, for the outcome as it is and for {view.null.size} arrangements of it, each "
-        "with the whole procedure repeated." + ("" if view.p is None else f" p = {view.p:.3g}."),
+        f"{measure} of samples held out, for the outcome as it is and for {counted(view.null.size, 'arrangement')} of "
+        "it, each with the whole procedure repeated." + ("" if view.p is None else f" p = {view.p:.3g}."),
     )
 
 

@@ -9,6 +9,7 @@ from scipy.stats import t as student
 
 from workbench.engine import Nuisance, benjamini_hochberg, centred, subject_means
 from workbench.errors import InputError
+from workbench.intake.faults import counted
 from workbench.workflow.analysis_view import AnalysisView, Shared
 
 FloatArray = NDArray[np.float64]
@@ -116,12 +117,14 @@ def _at_level(
 
 def _sentence(table: pd.DataFrame, tried: NDArray[np.bool_], fdr: float) -> str:
     count = int(tried.sum())
+    if not len(table):
+        return "no edges to look for there: the network here is empty"
     if not count:
-        return f"none of {len(table):,} edges could be tried there"
+        return f"of {counted(len(table), 'edge')} none could be tried there"
     agree = int(table.loc[tried, "same_sign"].sum())
     found = int(table["replicates"].sum())
-    chance = f"; by chance half of them, {count / 2:.0f}, have the same sign"
+    chance = f" (by chance half of them, {count / 2:.0f})" if count > 1 else " (by chance half the time)"
     return (
-        f"edges: {count:,} of {len(table):,} tried there, {agree:,} have the same sign{chance}; {found:,} replicate "
+        f"edges: {count:,} of {len(table):,} tried there, {agree:,} with the same sign{chance}; {found:,} replicated "
         f"(one-sided, false-discovery rate {fdr:g} over the edges tried)"
     )

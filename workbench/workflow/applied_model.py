@@ -361,7 +361,7 @@ def _classes(
         return (
             table,
             None,
-            [f"no figures: {counts.min()} samples of a class are known there, {FEWEST} are the least"],
+            [f"no figures: a class has {counted(int(counts.min()), 'sample')} there, {FEWEST} are the least"],
         )
     scores = np.asarray(model.decision_function(x)).reshape(len(x), -1)[known]
     figures = class_performance(labels, scores[None], chosen[known][None], shares[known][None])
@@ -381,8 +381,8 @@ def _classes(
     performance = pd.DataFrame(rows, columns=["measure", "value", "low", "high"]).assign(n=labels.size)
     first, second = rows[0], rows[1]
     said = (
-        f"there, on {labels.size} samples: balanced accuracy {first[1]:.2f} (95 % {first[2]:.2f} to {first[3]:.2f}), "
-        f"AUC {second[1]:.2f} ({second[2]:.2f} to {second[3]:.2f})"
+        f"there, on {counted(labels.size, 'sample')}: balanced accuracy {first[1]:.2f} (95 % {first[2]:.2f} to "
+        f"{first[3]:.2f}), AUC {second[1]:.2f} ({second[2]:.2f} to {second[3]:.2f})"
     )
     return table, performance, [said]
 
@@ -410,7 +410,11 @@ def _number_figures(
     known = np.isfinite(truth)
     n = int(known.sum())
     if n < FEWEST + 1 or truth[known].std() == 0.0:
-        return table, None, [f"no figures: {n} samples have a known outcome there that varies"]
+        return (
+            table,
+            None,
+            [f"no figures: {counted(n, 'sample')} with a known outcome there, or it does not vary"],
+        )
     errors = truth[known] - predicted[known]
     r = float(np.corrcoef(truth[known], predicted[known])[0, 1]) if predicted[known].std() > 0.0 else 0.0
     low, high = np.tanh(
@@ -430,8 +434,9 @@ def _number_figures(
     ]
     performance = pd.DataFrame(rows, columns=["measure", "value", "low", "high"]).assign(n=n)
     said = (
-        f"there, on {n} samples: correlation with the truth {r:.2f} (95 % {low:.2f} to {high:.2f}), Q2 {share:.2f}, "
-        f"mean absolute error {np.abs(errors).mean():.3g}, bias {errors.mean():+.3g} (observed less predicted)"
+        f"there, on {counted(n, 'sample')}: correlation with the truth {r:.2f} (95 % {low:.2f} to {high:.2f}), Q2 "
+        f"{share:.2f}, mean absolute error {np.abs(errors).mean():.3g}, bias {errors.mean():+.3g} (observed less "
+        "predicted)"
     )
     return table, performance, [said]
 

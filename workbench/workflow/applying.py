@@ -10,6 +10,7 @@ import h5py
 import pandas as pd
 
 from workbench.errors import InputError
+from workbench.intake.faults import counted
 from workbench.store import (
     Change,
     ProjectPaths,
@@ -161,7 +162,7 @@ def _stored(state: ProjectState, analysis: str) -> tuple[tuple[str, ...], int, s
 
 def _pairing_lines(view: AnalysisView, there: AnalysisView) -> list[str]:
     lines = [
-        f"block {name} there: {there.blocks[name].name}, {len(there.blocks[name].samples)} samples"
+        f"block {name} there: {there.blocks[name].name}, {counted(len(there.blocks[name].samples), 'sample')}"
         for name in there.blocks
     ]
     lacking = [name for name in view.blocks if name not in there.blocks]

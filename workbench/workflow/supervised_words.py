@@ -154,18 +154,18 @@ def _cautions(result: SupervisedResult) -> list[str]:
         smallest = int(np.bincount(study.outcome.labels[:, 0]).min())  # type: ignore[union-attr]
     features = sum(part.shape[1] for part in result.split.train)
     if smallest < 15 or study.n < 30:
-        reach = 1.0 / np.sqrt(study.n)
+        reach, many = 1.0 / np.sqrt(study.n), counted(features, "feature")
         lines.append(
-            f"few samples: {study.n} ({smallest} in the smallest class) against {features:,} features; a held-out "
+            f"few samples: {study.n} ({smallest} in the smallest class) against {many}; a held-out "
             f"figure of so few moves by about {reach:.2f} by chance alone, and no other cohort has been asked"
             if result.classes
-            else f"few samples: {study.n} against {features:,} features; held-out figures of so few move much by chance"
+            else f"few samples: {study.n} against {many}; held-out figures of so few move much by chance"
         )
     sizes = [part.shape[1] for part in result.split.train]
     if result.validation.alike == "blocks" and min(sizes) * TINY_BLOCK < max(sizes):
         small, large = int(np.argmin(sizes)), int(np.argmax(sizes))
         lines.append(
-            f"blocks count alike: {result.blocks[small]} ({sizes[small]} features) as much as "
+            f"blocks count alike: {result.blocks[small]} ({counted(sizes[small], 'feature')}) as much as "
             f"{result.blocks[large]} ({sizes[large]:,})"
         )
     test = result.validation.test
