@@ -90,6 +90,7 @@ DOUBTS = [
     ({"imputed_share": 0.9, "r_observed": None}, "too few samples are left"),
     ({"stability": 0.2}, "only 20 % of the half-samples"),
     ({"q_block": 0.04}, "close to the limit of 0.05"),
+    ({"support": "module"}, "its module carries it, its own test does not"),
 ]
 
 

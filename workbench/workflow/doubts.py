@@ -29,6 +29,11 @@ def doubts_of(edge: Mapping[str, Any], fdr: float) -> list[str]:
     """
     r = float(edge["r"])
     found = []
+    if edge.get("support") == "module":
+        found.append(
+            "its module carries it, its own test does not: p and q are of how its ends go with the other layer's "
+            "component (support)"
+        )
     alone = _number(edge, "r_without_one")
     if alone is not None and _lost(r, alone):
         found.append(
