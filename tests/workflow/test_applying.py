@@ -133,7 +133,7 @@ def test_the_command_answers_and_writes(cohorts, command):
     code, out, _ = command(*words)
     assert code == 0
     assert "balanced accuracy" in out
-    folder = first.paths.analysis("main") / "applied" / second.paths.root.name
+    folder = first.paths.analysis("main") / "applied" / "B_study"
     names = {path.name for path in folder.iterdir()}
     assert names == {
         f"{table}.tsv" for table in ("predictions", "performance", "missing", "shifted", "edges")

@@ -34,7 +34,7 @@ class Applied:
     Attributes
     ----------
     other : str
-        Name of the other project's folder.
+        Name of the other project's folder, behind that of the folder above it where both projects' are called alike.
     predictions, performance, missing, shifted, edges : DataFrame or None
         ``predictions`` and ``performance`` of multi-block PLS (``performance`` where the outcome is known there);
         ``missing`` the features of the model that are not there, ``shifted`` those at other levels; ``edges`` where
@@ -88,7 +88,7 @@ def apply_analysis(paths: ProjectPaths, analysis: str, folder: Path, *, write: b
     edges, lines = _edges(state, view, there)
     lines = [*_pairing_lines(view, there), *(model.lines if model is not None else ()), *lines]
     applied = Applied(
-        other.root.name,
+        _name_there(state.root, other.root),
         None if model is None else model.predictions,
         None if model is None else model.performance,
         None if model is None else model.missing,
@@ -108,6 +108,10 @@ def applied_folder(analysis: str, other: str) -> str:
     'results/main/applied/second_cohort'
     """
     return f"results/{analysis}/applied/{re.sub(r'[^A-Za-z0-9_.-]+', '_', other).strip('.') or 'other'}"
+
+
+def _name_there(here: Path, there: Path) -> str:
+    return there.name if there.name != here.name else f"{there.resolve().parent.name}_{there.name}"
 
 
 def _other_paths(paths: ProjectPaths, folder: Path) -> ProjectPaths:
