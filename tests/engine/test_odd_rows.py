@@ -56,6 +56,16 @@ def test_samples_strong_in_a_factor_are_not_odd(reached: int) -> None:
     assert_allclose(found.factors[8], 1.0 / np.sqrt(10.0), rtol=0.25)
 
 
+def test_few_features_and_far_values_make_no_sample_odd() -> None:
+    """Of 400 blocks of 1 to 20 features one in 100 may have a sample called odd; none for a tenth of its values."""
+    rng = np.random.default_rng(9)
+    called = [steady_rows(_block(rng, 60, p, 0)).odd.size > 0 for p in (1, 2, 5, 20) for _ in range(100)]
+    assert stats.binomtest(int(np.sum(called)), 400, 0.01, alternative="greater").pvalue > 0.001
+    x = _block(rng, 40, 200, 0)
+    x[4, :20] += 6.0
+    assert steady_rows(x).odd.size == 0
+
+
 def test_an_odd_sample_in_both_blocks_makes_no_edges_and_hides_none() -> None:
     rng = np.random.default_rng(2)
     raw, steady = 0, 0

@@ -16,6 +16,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.stats import chi2
 
 from workbench.engine.linear import thin_basis
 from workbench.engine.nuisance import CONSTANT_TOLERANCE
@@ -26,6 +27,8 @@ FloatArray = NDArray[np.float64]
 
 #: Mean square of a sample's standardised residuals, in medians over the samples, from which on it is odd.
 ODD = 2.0
+#: In blocks of few features the largest of all samples may be above that with this chance, and no more.
+LEVEL = 0.01
 _LEAST_ROOM = 1e-3
 _ROUNDS = 8
 
@@ -54,11 +57,12 @@ def steady_rows(residuals: FloatArray, together: NDArray[np.intp] | None = None)
     """Residuals with odd samples shrunk, so that what is their own is of the median size of a sample.
 
     Features are scaled to unit variance for the judgement. A sample is suspected when its mean square over them
-    exceeds ``ODD`` medians; with the suspects shrunk to the median the others are judged again, until none is
-    left. A suspect is odd when the same holds for what the real components of the samples that are not suspected
-    leave of it (:func:`own_sizes`), and is then multiplied by the root of the median over that mean square. Looks
-    at one block alone, and hence keeps what is independent of another block independent. The nuisance has to be
-    removed again afterwards.
+    exceeds ``ODD`` medians, and what the largest of as many samples of independent normal features exceeds with a
+    chance of ``LEVEL``, which is more than that with fewer than about 40 features. With the suspects shrunk to the
+    median the others are judged again, until none is left. A suspect is odd when the same holds for what the real
+    components of the samples that are not suspected leave of it (:func:`own_sizes`), and is then multiplied by
+    one over the root of that size. Looks at one block alone, and hence keeps what is independent of another block
+    independent. The nuisance has to be removed again afterwards.
 
     Parameters
     ----------
@@ -88,14 +92,18 @@ def steady_rows(residuals: FloatArray, together: NDArray[np.intp] | None = None)
     suspects = _suspects(values, one)
     factors = np.ones(values.shape[0])
     if suspects.any() and not suspects.all():
-        size = _joined(own_sizes(values, suspects), one)
-        odd = suspects & (size > ODD)
+        sizes, features = own_sizes(values, suspects)
+        size = _joined(sizes, one)
+        odd = suspects & (size > _limit(features, one))
         factors[odd] = 1.0 / np.sqrt(size[odd])
     return SteadyRows(values * factors[:, None], factors)
 
 
-def own_sizes(values: FloatArray, suspects: NDArray[np.bool_]) -> FloatArray:
-    """Mean square of what components of the other samples leave of each suspect, in medians of the others.
+def own_sizes(values: FloatArray, suspects: NDArray[np.bool_]) -> tuple[FloatArray, float]:
+    """Size of what components of the other samples leave of each suspect, in medians of the others.
+
+    The size is the mean square over the features, or their median square where that is the smaller multiple of the
+    others': a few far values do not make a sample odd.
 
     Features are scaled by the others, whose real components are told by ``signal_components``. What is left of a
     suspect after its least-squares fit on their loadings holds the error of these as well, and is larger by
@@ -111,8 +119,10 @@ def own_sizes(values: FloatArray, suspects: NDArray[np.bool_]) -> FloatArray:
 
     Returns
     -------
-    ndarray of shape (n_samples,)
+    sizes : ndarray of shape (n_samples,)
         1 for samples that are not suspected.
+    features : float
+        Independent features that would make noise like that of the others.
     """
     others = values[~suspects]
     length = np.sqrt(np.mean(others**2, axis=0))
@@ -120,29 +130,43 @@ def own_sizes(values: FloatArray, suspects: NDArray[np.bool_]) -> FloatArray:
     able = np.isfinite(peak) & (length > CONSTANT_TOLERANCE * peak)
     scaled = values[:, able] / length[able]
     others = scaled[~suspects] - scaled[~suspects].mean(axis=0)
-    scores = signal_components(thin_basis(others)).directions
+    found = signal_components(thin_basis(others))
+    scores = found.directions
     loadings = others.T @ scores
     fit = np.linalg.lstsq(loadings, scaled[suspects].T, rcond=None)[0]
     room = np.maximum(1.0 - np.sum(scores**2, axis=1), _LEAST_ROOM)
-    usual = np.median(np.mean((others - scores @ loadings.T) ** 2, axis=1) / room)
-    left = np.mean((scaled[suspects] - fit.T @ loadings.T) ** 2, axis=1) / (1.0 + np.sum(fit**2, axis=0))
+    usual = (others - scores @ loadings.T) ** 2 / room[:, None]
+    left = (scaled[suspects] - fit.T @ loadings.T) ** 2 / (1.0 + np.sum(fit**2, axis=0))[:, None]
     sizes = np.ones(values.shape[0])
-    sizes[suspects] = left / usual if usual > 0.0 else 1.0
-    return sizes
+    whole, middle = (
+        over(left, axis=1) / max(float(np.median(over(usual, axis=1))), 1e-300)
+        for over in (np.mean, np.median)
+    )
+    sizes[suspects] = np.minimum(whole, middle)
+    return sizes, found.effective_features
 
 
 def _suspects(values: FloatArray, one: NDArray[np.intp]) -> NDArray[np.bool_]:
     """Return which samples are large throughout, all rows of one together."""
     factors = np.ones(values.shape[0])
+    limit = _limit(values.shape[1], one)
     for _ in range(_ROUNDS):
         size = _joined(_row_sizes(values * factors[:, None]), one)
         usual = float(np.median(size))
-        large = size > ODD * usual
+        large = size > limit * usual
         if usual <= 0.0 or not large.any():
             break
         factors[large] *= np.sqrt(usual / size[large])
     suspects: NDArray[np.bool_] = factors < 1.0
     return suspects
+
+
+def _limit(features: float, one: NDArray[np.intp]) -> FloatArray:
+    """Return the size, in medians, above which a row is odd; of more rows judged together a lower one."""
+    rows = np.bincount(one)
+    law = chi2(np.maximum(features, 1.0) * rows)
+    limit: FloatArray = np.maximum(ODD, law.isf(LEVEL / rows.size) / law.median())[one]
+    return limit
 
 
 def _joined(sizes: FloatArray, one: NDArray[np.intp]) -> FloatArray:
