@@ -38,6 +38,7 @@ def test_columns_of_a_real_run_are_named(run_once):
 def test_pages_are_listed_and_shown(command):
     code, out, _ = command("guide")
     assert (code, "workbench guide edges" in out) == (0, True)
+    assert all(len(line.split()) > 3 for line in out.splitlines()[1:]), "every page says what it is about"
     for topic, text in pages().items():
         code, out, _ = command("guide", topic)
         assert code == 0

@@ -61,10 +61,17 @@ def guide(
 
     found = pages()
     if topic is None:
-        answer(["pages of the handbook:", *(f"  workbench guide {name}" for name in found)])
+        answer(["pages of the handbook:", *(f"  workbench guide {line}" for line in _contents(found))])
     elif topic in found:
         answer(found[topic].splitlines())
     else:
         near = get_close_matches(topic, found, 1)
         hint = f"; did you mean '{near[0]}'?" if near else ""
         raise InputError(f"no page '{topic}' in the handbook; pages: {', '.join(found)}{hint}")
+
+
+def _contents(texts: dict[str, str]) -> list[str]:
+    """Return each topic with what its page is about, which its first line says behind the colon."""
+    wide = max(map(len, texts))
+    titles = {topic: text.splitlines()[0].partition(": ")[2] for topic, text in texts.items()}
+    return [f"{topic:<{wide}}  {title}".rstrip() for topic, title in titles.items()]
