@@ -11,7 +11,8 @@ from supervised_projects import cohort, integrate
 from workbench.errors import InputError
 from workbench.prepare import MeasuredTable
 from workbench.store import Change, project_lock, table_bytes
-from workbench.workflow.applied_model import agreement, aligned_table
+from workbench.workflow.applied_missing import agreement
+from workbench.workflow.applied_model import aligned_table
 from workbench.workflow.applying import apply_analysis
 
 EDGES = [

@@ -33,56 +33,78 @@ def draw_supervised(view: SupervisedView) -> tuple[Drawing, ...]:
 
 
 def _drawings(view: SupervisedView) -> Iterator[Drawing]:
-    count = len(view.by_components)
-    repeats = f"mean of {count} repeats and each of them" if count > 1 else "one repeat"
-    measure = MEASURES.get(view.measure, view.measure)
     if view.truth.size:
         yield _scores(view)
+    yield _importance(view)
+    yield _components(view)
+    if view.levels:
+        yield _roc(view)
+    if view.names:
+        yield _features(view)
+    yield _permutations(view)
+
+
+def _importance(view: SupervisedView) -> Drawing:
     figure = sized_figure(ONE_COLUMN, 1.3 + 0.26 * len(view.importance))
     block_importance(view, figure.add_subplot())
-    yield Drawing(
-        "block_importance",
-        figure,
+    caption = (
         f"Share of each block in each component of the fit on all samples that explains {view.outcome} (squared "
         f"super weights; {ALIKE[view.alike]}). Says what the fit uses, not what each block can do alone: for that see "
-        "performance.tsv.",
+        "performance.tsv."
     )
+    return Drawing("block_importance", figure, caption)
+
+
+def _components(view: SupervisedView) -> Drawing:
     figure = sized_figure(ONE_COLUMN, 2.9)
     by_components(view, figure.add_subplot())
-    yield Drawing(
-        "components",
-        figure,
-        f"{measure} of samples held out by number of components, {repeats}, beside "
-        "the share of the outcome explained in sample (R2), which grows whatever the data. Dashed: how many were "
-        "chosen; horizontal: what knowing nothing gives.",
+    caption = (
+        f"{_measure(view)} of samples held out by number of components, {_repeats(view)}, beside the share of the "
+        "outcome explained in sample (R2), which grows whatever the data. Dashed: how many were chosen; horizontal: "
+        "what knowing nothing gives."
     )
-    if view.levels:
-        figure = sized_figure(ONE_COLUMN, ONE_COLUMN)
-        roc_curves(view, figure.add_subplot())
-        yield Drawing(
-            "roc",
-            figure,
-            f"ROC curve of samples held out: {repeats}, of double cross-validation; band from the lowest to the "
-            "highest. Repeats share the samples: the band is not a confidence band over patients.",
-        )
-    if view.names:
-        figure = sized_figure(ONE_COLUMN, 1.0 + 0.17 * len(view.names))
-        importance_of_features(view, figure.add_subplot())
-        yield Drawing(
-            "features",
-            figure,
-            "Features of greatest variable importance in the fit on all samples. Beside each the share of training "
-            "parts whose panel had it; a dot marks the features of the final panel. Dashed: 1, the mean square over "
-            "all features. Not a diagnostic test.",
-        )
+    return Drawing("components", figure, caption)
+
+
+def _roc(view: SupervisedView) -> Drawing:
+    figure = sized_figure(ONE_COLUMN, ONE_COLUMN)
+    roc_curves(view, figure.add_subplot())
+    caption = (
+        f"ROC curve of samples held out: {_repeats(view)}, of double cross-validation; band from the lowest to the "
+        "highest. Repeats share the samples: the band is not a confidence band over patients."
+    )
+    return Drawing("roc", figure, caption)
+
+
+def _features(view: SupervisedView) -> Drawing:
+    figure = sized_figure(ONE_COLUMN, 1.0 + 0.17 * len(view.names))
+    importance_of_features(view, figure.add_subplot())
+    caption = (
+        "Features of greatest variable importance in the fit on all samples. Beside each the share of training parts "
+        "whose panel had it; a dot marks the features of the final panel. Dashed: 1, the mean square over all "
+        "features. Not a diagnostic test."
+    )
+    return Drawing("features", figure, caption)
+
+
+def _permutations(view: SupervisedView) -> Drawing:
     figure = sized_figure(ONE_COLUMN, 2.5)
     permutation_null(view, figure.add_subplot())
-    yield Drawing(
-        "permutations",
-        figure,
-        f"{measure} of samples held out, for the outcome as it is and for {counted(view.null.size, 'arrangement')} of "
-        "it, each with the whole procedure repeated." + ("" if view.p is None else f" p = {view.p:.3g}."),
+    arrangements = counted(view.null.size, "arrangement")
+    caption = (
+        f"{_measure(view)} of samples held out, for the outcome as it is and for {arrangements} of it, each with the "
+        "whole procedure repeated." + ("" if view.p is None else f" p = {view.p:.3g}.")
     )
+    return Drawing("permutations", figure, caption)
+
+
+def _measure(view: SupervisedView) -> str:
+    return MEASURES.get(view.measure, view.measure)
+
+
+def _repeats(view: SupervisedView) -> str:
+    count = len(view.by_components)
+    return f"mean of {count} repeats and each of them" if count > 1 else "one repeat"
 
 
 def _scores(view: SupervisedView) -> Drawing:

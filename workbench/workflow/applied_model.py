@@ -12,17 +12,14 @@ from numpy.typing import NDArray
 from workbench.engine import (
     ClassOutcome,
     MultiblockDiscriminant,
-    MultiblockPLS,
-    NumberOutcome,
     fit_residuals,
 )
-from workbench.engine.performance_measures import class_performance
 from workbench.errors import InputError, WorkbenchError
-from workbench.intake.faults import counted
 from workbench.intake.kinds import column_numbers, present
 from workbench.prepare import MeasuredTable, recipe_for
 from workbench.workflow.analysis_view import AnalysisView
-from workbench.workflow.applied_shift import shifted_levels
+from workbench.workflow.applied_missing import agreement, missing_lines, missing_table, shifted_features
+from workbench.workflow.applied_performance import class_figures, number_figures, predicted_numbers
 from workbench.workflow.preparing import SEED, smallest_group
 from workbench.workflow.state import ProjectState
 from workbench.workflow.subjects import subject_design
@@ -105,34 +102,20 @@ def apply_model(
     rows: NDArray[np.bool_] = np.asarray(np.isfinite(x).any(axis=1))
     if not rows.any():
         raise InputError(f"analysis '{view.name}': no sample there has a block that the model can use")
-    missing, cost = _missing_table(study, blocks, split.kept, absent, model.coef_, model.vip_)
+    missing, cost = missing_table(study, blocks, split.kept, absent, model.coef_, model.vip_)
     agreed = agreement(np.hstack(split.train), model.coef_, np.concatenate(absent))
-    lines += _missing_lines(missing, cost, agreed, x.shape[1])
+    lines += missing_lines(missing, cost, agreed, x.shape[1])
     lines += _lacking_lines(blocks, parts, rows)
-    shifted, warnings = _shifted(study, blocks, split.kept, absent, parts)
+    shifted, warnings = shifted_features(study, blocks, split.kept, absent, parts)
     lines += warnings
     names = tuple(name for name, held in zip(units.names, rows, strict=True) if held)
     truth = _truth(study, there, units, samples)[rows]
     if isinstance(model, MultiblockDiscriminant):
-        predictions, performance, said = _classes(study, model, x[rows], names, truth)
+        predictions, performance, said = class_figures(study, model, x[rows], names, truth)
     else:
-        total = _numbers(study, model, x[rows], nuisance[rows] if nuisance.size else None)
-        predictions, performance, said = _number_figures(study, total, names, truth)
+        total = predicted_numbers(study, model, x[rows], nuisance[rows] if nuisance.size else None)
+        predictions, performance, said = number_figures(study, total, names, truth)
     return AppliedModel(predictions, performance, missing, shifted, (*lines, *said))
-
-
-def _shifted(
-    study: SupervisedStudy,
-    blocks: Sequence[str],
-    kept: Sequence[NDArray[np.intp]],
-    absent: Sequence[NDArray[np.bool_]],
-    parts: Sequence[FloatArray],
-) -> tuple[pd.DataFrame, list[str]]:
-    """Features of the model that are there, at levels far from those here."""
-    names = [np.array(predictor_features(study, name))[own] for name, own in zip(blocks, kept, strict=True)]
-    features = [own[~gone].tolist() for own, gone in zip(names, absent, strict=True)]
-    values = [part[:, ~gone] for part, gone in zip(parts, absent, strict=True)]
-    return shifted_levels(blocks, features, values, study.n)
 
 
 def _units_there(study: SupervisedStudy, there: AnalysisView, samples: list[str]) -> tuple[Units, list[str]]:
@@ -271,49 +254,6 @@ def aligned_table(here: MeasuredTable, there: MeasuredTable) -> tuple[MeasuredTa
     return MeasuredTable(values, there.samples, here.features, here.levels, runs), absent
 
 
-def _missing_table(
-    study: SupervisedStudy,
-    blocks: Sequence[str],
-    kept: tuple[NDArray[np.intp], ...],
-    absent: list[NDArray[np.bool_]],
-    coefficients: FloatArray,
-    vip: FloatArray,
-) -> tuple[pd.DataFrame, float]:
-    """Features of the model that are not there, the weightiest first, and their share of the squared coefficients."""
-    rows, start = [], 0
-    squares = (coefficients**2).sum(axis=0)
-    share = squares / squares.sum() if squares.sum() > 0.0 else squares
-    for name, inside, gone in zip(blocks, kept, absent, strict=True):
-        features = predictor_features(study, name)
-        for k in np.flatnonzero(gone):
-            rows.append((features[inside[k]], name, share[start + k], vip[start + k]))
-        start += inside.size
-    table = pd.DataFrame(rows, columns=["feature", "block", "share", "vip"])
-    table = table.sort_values("share", ascending=False, kind="stable", ignore_index=True)
-    return table, float(table["share"].sum())
-
-
-def agreement(x: FloatArray, coefficients: FloatArray, gone: NDArray[np.bool_]) -> float:
-    """Correlation, over the samples here, of the model's values without some features with its values with all."""
-    whole = x @ coefficients.T
-    without = x[:, ~gone] @ coefficients[:, ~gone].T
-    if not gone.any() or without.std() == 0.0:
-        return 0.0 if gone.any() else 1.0
-    return float(np.corrcoef(whole.ravel(), without.ravel())[0, 1])
-
-
-def _missing_lines(missing: pd.DataFrame, cost: float, agreed: float, total: int) -> list[str]:
-    if missing.empty:
-        return [f"all {total:,} features of the model are there"]
-    named = ", ".join(f"{row.feature} ({row.block})" for row in missing.head(5).itertuples())
-    named += ", ..." if len(missing) > 5 else ""
-    return [
-        f"not there: {counted(len(missing), 'feature')} of the model's {total:,} ({named}), with {cost:.0%} of its "
-        "squared coefficients; each counts as its mean here, which draws predictions to the middle. Over the samples "
-        f"here the model's values without them go with those with all at r = {agreed:.2f}"
-    ]
-
-
 def _lacking_lines(blocks: Sequence[str], parts: list[FloatArray], rows: NDArray[np.bool_]) -> list[str]:
     lines = []
     for name, values in zip(blocks, parts, strict=True):
@@ -340,107 +280,3 @@ def _truth(study: SupervisedStudy, there: AnalysisView, units: Units, samples: l
     if numbers is None:
         return np.full(len(units.names), np.nan)
     return _of_units(units, numbers.to_numpy(dtype=np.float64)[:, None])[:, 0]
-
-
-def _classes(
-    study: SupervisedStudy,
-    model: MultiblockDiscriminant,
-    x: FloatArray,
-    names: tuple[str, ...],
-    truth: FloatArray,
-) -> tuple[pd.DataFrame, pd.DataFrame | None, list[str]]:
-    shares, chosen = model.predict_proba(x), np.asarray(model.predict(x), dtype=np.intp)
-    table = pd.DataFrame({"sample": names, "predicted": [study.levels[g] for g in chosen]})
-    for g, level in enumerate(study.levels):
-        table[f"probability {level}"] = shares[:, g]
-    known = np.isfinite(truth)
-    table[study.name] = [study.levels[int(t)] if k else "" for t, k in zip(truth, known, strict=True)]
-    labels = truth[known].astype(np.intp)
-    counts = np.bincount(labels, minlength=len(study.levels))
-    if counts.min() < FEWEST:
-        return (
-            table,
-            None,
-            [f"no figures: a class has {counted(int(counts.min()), 'sample')} there, {FEWEST} are the least"],
-        )
-    scores = np.asarray(model.decision_function(x)).reshape(len(x), -1)[known]
-    figures = class_performance(labels, scores[None], chosen[known][None], shares[known][None])
-    recognised = np.diag(figures.confusion) / counts
-    # A share of 0 or 1 is not known for certain: Agresti & Coull's two added of each kind.
-    smoothed = (np.diag(figures.confusion) + 2.0) / (counts + 4.0)
-    error = float(np.sqrt((smoothed * (1.0 - smoothed) / (counts + 4.0)).sum()) / counts.size)
-    rows = [
-        ("balanced_accuracy", recognised.mean(), *_interval(float(recognised.mean()), error)),
-        ("auc", figures.auc[0], *_interval(float(figures.auc[0]), figures.auc_error)),
-        ("brier", figures.brier[0], np.nan, np.nan),
-        *(
-            (f"recognised {level}", r, np.nan, np.nan)
-            for level, r in zip(study.levels, recognised, strict=True)
-        ),
-    ]
-    performance = pd.DataFrame(rows, columns=["measure", "value", "low", "high"]).assign(n=labels.size)
-    first, second = rows[0], rows[1]
-    said = (
-        f"there, on {counted(labels.size, 'sample')}: balanced accuracy {first[1]:.2f} (95 % {first[2]:.2f} to "
-        f"{first[3]:.2f}), AUC {second[1]:.2f} ({second[2]:.2f} to {second[3]:.2f})"
-    )
-    return table, performance, [said]
-
-
-def _numbers(
-    study: SupervisedStudy,
-    model: MultiblockPLS | MultiblockDiscriminant,
-    x: FloatArray,
-    nuisance: FloatArray | None,
-) -> FloatArray:
-    """Predicted numbers in their unit: what the nuisance says by the regression here, and the model."""
-    assert isinstance(study.outcome, NumberOutcome)
-    predicted = np.asarray(model.predict(x)).reshape(len(x), -1)
-    own = study.units.nuisance if study.units.nuisance.size else None
-    learnt = fit_residuals(own, study.outcome.values[:, :, 0])
-    of_nuisance = -learnt.transform(nuisance if own is not None else None, np.zeros_like(predicted))
-    total: FloatArray = (predicted + of_nuisance)[:, 0] * study.deviations[0] + study.means[0]
-    return total
-
-
-def _number_figures(
-    study: SupervisedStudy, predicted: FloatArray, names: tuple[str, ...], truth: FloatArray
-) -> tuple[pd.DataFrame, pd.DataFrame | None, list[str]]:
-    table = pd.DataFrame({"sample": names, "predicted": predicted, study.name: truth})
-    known = np.isfinite(truth)
-    n = int(known.sum())
-    if n < FEWEST + 1 or truth[known].std() == 0.0:
-        return (
-            table,
-            None,
-            [f"no figures: {counted(n, 'sample')} with a known outcome there, or it does not vary"],
-        )
-    errors = truth[known] - predicted[known]
-    r = float(np.corrcoef(truth[known], predicted[known])[0, 1]) if predicted[known].std() > 0.0 else 0.0
-    low, high = np.tanh(
-        np.arctanh(np.clip(r, -0.999999, 0.999999)) + np.array([-1.0, 1.0]) * NORMAL / np.sqrt(n - 3)
-    )
-    share = 1.0 - float((errors**2).sum() / ((truth[known] - truth[known].mean()) ** 2).sum())
-    rows = [
-        ("q2", share, np.nan, np.nan),
-        ("correlation", r, low, high),
-        ("rmse (units of the outcome)", float(np.sqrt((errors**2).mean())), np.nan, np.nan),
-        ("mean absolute error", float(np.abs(errors).mean()), np.nan, np.nan),
-        (
-            "bias (observed less predicted)",
-            float(errors.mean()),
-            *_interval(float(errors.mean()), float(errors.std(ddof=1) / np.sqrt(n)), None),
-        ),
-    ]
-    performance = pd.DataFrame(rows, columns=["measure", "value", "low", "high"]).assign(n=n)
-    said = (
-        f"there, on {counted(n, 'sample')}: correlation with the truth {r:.2f} (95 % {low:.2f} to {high:.2f}), Q2 "
-        f"{share:.2f}, mean absolute error {np.abs(errors).mean():.3g}, bias {errors.mean():+.3g} (observed less "
-        "predicted)"
-    )
-    return table, performance, [said]
-
-
-def _interval(value: float, error: float, most: float | None = 1.0) -> tuple[float, float]:
-    low, high = value - NORMAL * error, value + NORMAL * error
-    return (low, high) if most is None else (max(0.0, low), min(most, high))
