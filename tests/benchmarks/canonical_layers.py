@@ -118,9 +118,9 @@ def account(seeds: range) -> None:
             kinds = [parts[0], parts.get(1, nothing), parts[columns[-1]], np.ones(width)]
             planted.append([float(np.mean(kind / np.sum(kinds, axis=0))) for kind in kinds])
         valid = cross_validated_components(blocks_source(layers), 100, n_components=2, repeats=1, seed=seed)
-        part = takes_part(valid.with_others, valid.with_others_errors)
         multiple = 1.0 if valid.choice is None else valid.choice.multiple
         fit = GeneralisedCCA(2, ridge=multiple, block_sizes=WIDTHS).fit(np.hstack(layers))
+        part = takes_part(valid.with_others, valid.with_others_errors, fit.variates_)
         whole = [(layer - layer.mean(axis=0)) / layer.std(axis=0, ddof=1) for layer in layers]
         for one in variance_accounts(whole, fit.variates_, part):
             said.append([one.shared_by_all, one.shared_by_some, one.private, one.noise])

@@ -152,7 +152,11 @@ def test_out_of_sample_correlations_know_which_layers_share() -> None:
     for block in blocks[:2]:
         block += factor @ rng.normal(size=(1, block.shape[1]))
     found = cross_validated_components(blocks_source(blocks), 60, n_components=1, repeats=1, ridge=1.0)
-    assert takes_part(found.with_others, found.with_others_errors)[0].tolist() == [True, True, False]
+    variates = [factor + rng.normal(size=(60, 1)) for _ in WIDTHS]
+    part = takes_part(found.with_others, found.with_others_errors, variates)
+    assert part[0].tolist() == [True, True, False]
+    alone = [variates[0], rng.normal(size=(60, 1)), variates[2]]
+    assert not takes_part(np.ones((1, 3)), np.zeros((1, 3)), alone)[0, 1]
     assert found.pair_correlations[0, 0, 1] > 0.8
     assert found.pair_correlations[0, 0, 1] == found.pair_correlations[0, 1, 0]
 

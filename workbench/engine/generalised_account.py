@@ -11,12 +11,14 @@ from numpy.typing import NDArray
 from workbench.engine.generalised_components import mean_over
 from workbench.engine.linear import thin_basis
 from workbench.engine.nuisance import check_finite
+from workbench.engine.scree import parallel_analysis
 from workbench.engine.signal_components import signal_components
 
 FloatArray = NDArray[np.float64]
 
 PARTS = ("shared_by_all", "shared_by_some", "private", "noise")
 TAKES_PART = 2.0
+SEED = 0
 
 
 @dataclass(frozen=True, eq=False)
@@ -39,17 +41,36 @@ class VarianceAccount:
     private_components: int
 
 
-def takes_part(with_others: FloatArray, errors: FloatArray) -> NDArray[np.bool_]:
-    """Which block has which component: out of sample its variate goes with the others' mean by two standard errors.
+def takes_part(
+    with_others: FloatArray, errors: FloatArray, variates: Sequence[FloatArray]
+) -> NDArray[np.bool_]:
+    """Which block has which component: its variate goes with the others' mean, out of sample and in the final fit.
+
+    Out of sample by two standard errors; in sample, where any fit does at least as well, by ``2 / sqrt(n)``: two
+    components of almost equal strength change places from fold to fold, and a block that has one of them alone
+    would seem to have both.
 
     Parameters
     ----------
     with_others, errors : ndarray of shape (n_components, n_blocks)
         Of :class:`workbench.engine.generalised_validation.GeneralisedValidation`. A component of a single block is
         of none.
+    variates : sequence of ndarray of shape (n_samples, n_components)
+        Each block's variates in the final fit; NaN for a sample that it lacks.
     """
-    found = np.asarray(with_others > TAKES_PART * errors)
+    fitted = np.column_stack([_goes_with_others(variates, own) for own in range(len(variates))])
+    found = np.asarray((with_others > TAKES_PART * errors) & fitted)
     return np.asarray(found & (found.sum(axis=1, keepdims=True) >= 2))
+
+
+def _goes_with_others(variates: Sequence[FloatArray], own: int) -> NDArray[np.bool_]:
+    """Whether a block's variates go with the mean of the other blocks' in sample, (n_components,)."""
+    both = (variates[own], mean_over([one for k, one in enumerate(variates) if k != own]))
+    known = np.isfinite(both[0][:, 0]) & np.isfinite(both[1][:, 0])
+    u, v = (one[known] - one[known].mean(axis=0) for one in both)
+    products = np.sum(u * v, axis=0)
+    lengths = np.linalg.norm(u, axis=0) * np.linalg.norm(v, axis=0)
+    return np.asarray(products > TAKES_PART / np.sqrt(known.sum()) * lengths)
 
 
 def variance_accounts(
@@ -60,7 +81,8 @@ def variance_accounts(
     A shared component is measured in a block by the mean variate of the *other* blocks that have it, which knows
     nothing of the block's own noise. What a direction takes by chance (the block's remaining variance over its
     degrees of freedom) is taken off. Private components are those that carry signal once the shared ones are
-    removed (:func:`workbench.engine.signal_components.signal_components`), less the noise in their directions.
+    removed (:func:`workbench.engine.signal_components.signal_components`; with fewer features than samples no more than
+    parallel analysis finds, as unequal noise of few features passes for signal), less the noise in their directions.
 
     Parameters
     ----------
@@ -108,8 +130,10 @@ def variance_account(
     chance = float(np.sum(left**2)) / room
     shared = [max(found - count * chance, 0.0) / total for found, count in taken]
     rest = thin_basis(left)
-    number = min(signal_components(rest).number, rest.rank - 1)
     squares = rest.lengths**2
+    number = min(signal_components(rest).number, rest.rank - 1)
+    if left.shape[1] < left.shape[0]:
+        number = min(number, parallel_analysis(left, squares / (left.shape[0] - 1), random_state=SEED).number)
     noise = float(squares[number:].sum()) / max(rest.rank - number, 1)
     private = max(float(np.sum(squares[:number] - noise)), 0.0) / total
     return VarianceAccount(shared[0], shared[1], private, max(1.0 - sum(shared) - private, 0.0), number)

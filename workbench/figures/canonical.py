@@ -26,7 +26,6 @@ from workbench.figures.style import (
     TWO_COLUMNS,
     figure_name,
     figure_style,
-    note,
     plain_legend,
     plain_ticks,
     say,
@@ -191,6 +190,7 @@ def leading_figure(view: CanonicalView, axes: Axes, layer: int, component: int =
     plain_ticks(axes, "y", np.arange(best.size), [figure_name(drawn.features[j]) for j in best])
     axes.axvline(0.0, color=INK, linewidth=0.6)
     axes.set_xlim(-1.0, 1.0)
+    axes.set_xticks([-1.0, -0.5, 0.0, 0.5, 1.0])
     axes.set_title(figure_name(drawn.name))
     axes.set_xlabel(f"correlation with the\nother layers' variate\nof component {component}")
     return axes
@@ -207,7 +207,7 @@ def account_figure(view: CanonicalView, axes: Axes) -> Axes:
             continue
         axes.barh(
             at, shares[:, k], left=start, color=PART_COLOURS[k], edgecolor=INK, linewidth=0.4, hatch=HATCHES[k],
-            height=0.6, label=part,
+            height=0.6, label="shared" if k == 0 and len(view.layers) < 3 else part,
         )  # fmt: skip
         for j, share in enumerate(shares[:, k]):
             if share >= 6.0:
@@ -227,8 +227,6 @@ def association_figure(view: CanonicalView, axes: Axes) -> Axes:
     rows = [j for j in range(len(found.columns)) if not found.untestable[j]]
     rows.sort(key=lambda j: -float(np.nanmax(found.r2_adjusted[j])))
     rows = rows[:COLUMNS_DRAWN]
-    if not rows:
-        return note(axes, "the sample sheet has no column that could be tested")
     r2 = found.r2[rows]
     axes.imshow(r2, cmap=BLUES, vmin=0.0, vmax=1.0, aspect="auto", interpolation="nearest")
     for i, k in np.argwhere(found.q[rows] <= SIGNIFICANT):
@@ -263,7 +261,8 @@ def _drawings(view: CanonicalView) -> Iterator[Drawing]:
     account = _figure(TWO_COLUMNS, 1.0 + 0.34 * len(view.accounts))
     account_figure(view, account.add_subplot())
     yield Drawing("account", account, ACCOUNT)
-    yield Drawing("association", _association(view), ASSOCIATION)
+    if not all(view.association.untestable):
+        yield Drawing("association", _association(view), ASSOCIATION)
 
 
 def _variates(view: CanonicalView) -> Figure:

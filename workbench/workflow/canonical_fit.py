@@ -154,7 +154,7 @@ def canonical_fit(view: AnalysisView, reporter: Reporter) -> CanonicalFit:
     count = components_to_fit(view, test)
     validated, choice, without = _validate(view, method, units, count, reporter)
     fitted, correlations = _fit(view, method, units, layers, count, choice)
-    part = _parts(validated, test.axes(), count, len(layers))
+    part = _parts(validated, test.axes(), [layer.variates for layer in fitted])
     accounted = tuple(_with_account(layers, fitted, part, units, k) for k in range(len(layers)))
     scores = mean_over([layer.variates for layer in accounted])
     columns = unit_columns(view, units)
@@ -336,10 +336,10 @@ def block_shares(matrix: LayerMatrix, variates: FloatArray) -> FloatArray:
     return np.array([[np.sum((step @ part) ** 2) / np.sum(part**2) for part in parts] for step in steps.T])
 
 
-def _parts(validated: Validated | None, axes: int, count: int, layers: int) -> NDArray[np.bool_]:
-    part = np.ones((count, layers), dtype=np.bool_)
-    if validated is not None and layers > 2:
-        part = takes_part(validated.with_others, validated.with_others_errors)
+def _parts(validated: Validated | None, axes: int, variates: list[FloatArray]) -> NDArray[np.bool_]:
+    part = np.ones((variates[0].shape[1], len(variates)), dtype=np.bool_)
+    if validated is not None and len(variates) > 2:
+        part = takes_part(validated.with_others, validated.with_others_errors, variates)
     part[axes:] = False
     return part
 

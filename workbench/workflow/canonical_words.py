@@ -73,12 +73,12 @@ def private_sentence(fit: CanonicalFit) -> str:
     if fit.freed is None:
         return ""
     parts = [
-        f"{block} {counted(one.weights.shape[1], 'component')} ({percent(one.share)} of its variance)"
+        f"{block}: {counted(one.weights.shape[1], 'component')}, {percent(one.share)} of its variance"
         for block, one in fit.freed.removals.items()
         if one.weights.size
     ]
     inside = "inside the groups, " if fit.test_within is not None else ""
-    removed = f"{inside}with private variation removed ({', '.join(parts)})"
+    removed = f"{inside}with private variation removed ({'; '.join(parts)})"
     test = fit.freed.test
     if test.p is None:
         return f"{removed}: p withheld, {test.withheld}"
@@ -167,9 +167,10 @@ def leading(layer: LayerFit, k: int, count: int = LEADING) -> str:
 def _account(layer: LayerFit, layers: int) -> str:
     lines = []
     for block, account in zip(layer.matrix.blocks, layer.accounts, strict=True):
+        all_layers = "all" if layers > 2 else "both"
         some = f", {account.shared_by_some:.0%} by some" if layers > 2 else ""
         lines.append(
-            f"{block}: {account.shared_by_all:.0%} of its variance is shared by all layers{some}, "
+            f"{block}: {account.shared_by_all:.0%} of its variance is shared by {all_layers} layers{some}, "
             f"{account.private:.0%} its own ({counted(account.private_components, 'component', 'components')}), "
             f"{account.noise:.0%} noise"
         )
