@@ -140,6 +140,18 @@ def test_blocks_of_noise_may_be_left_out_by_the_inner_loop() -> None:
     assert len(choices(7, [1, 2], choose_blocks=True)) == 2 * (2 + 2 * 7 + 7)
 
 
+def test_kernels_of_blocks_or_features_alike_are_those_of_the_estimator() -> None:
+    """Predictions of new samples by MultiblockPLS with either weighting."""
+    rng = np.random.default_rng(4)
+    x, y, train, test = rng.normal(size=(30, 50)), rng.normal(size=30), np.arange(22), np.arange(22, 30)
+    kernels = split_kernels(block_source([x[:, :45], x[:, 45:]])(train, test), train, test)
+    centred = (y[:22] - y[:22].mean())[:, None, None]
+    for alike in ("blocks", "features"):
+        found = batch_predictions(*kernels.of([0, 1], alike), centred, 2)[1][1, :, 0, 0]
+        model = MultiblockPLS(2, block_sizes=[45, 5], alike=alike).fit(x[:22], y[:22])
+        assert_allclose(found, model.predict(x[22:]) - y[:22].mean(), atol=1e-9)
+
+
 def test_noise_is_told_as_noise() -> None:
     """12 studies of 24: balanced accuracy near 0.5, p spread out."""
     figures, p = [], []

@@ -75,6 +75,20 @@ def test_super_scores_are_those_of_pls_on_the_scaled_blocks_side_by_side(sizes: 
     assert_allclose(aligned(ours.x_scores_, theirs.x_scores_), theirs.x_scores_ * unit, atol=1e-8 * unit)
 
 
+def test_features_alike_is_pls_on_the_features_side_by_side() -> None:
+    """Whatever the blocks; they only name what belongs together, as the importance of 30 and of 4 features shows."""
+    rng = np.random.default_rng(8)
+    x, y = rng.normal(size=(25, 34)), rng.normal(size=25)
+    blocks = MultiblockPLS(2, block_sizes=[30, 4], alike="features").fit(x, y)
+    assert_allclose(blocks.predict(x), PLSRegression(2).fit(x, y).predict(x), atol=1e-8)
+    assert_allclose(blocks.vip_, MultiblockPLS(2).fit(x, y).vip_, atol=1e-9)
+    assert_allclose(blocks.block_importance_.sum(axis=1), 1.0)
+    weighed = MultiblockPLS(2, block_sizes=[30, 4]).fit(x, y)
+    assert weighed.block_importance_[0, 1] > blocks.block_importance_[0, 1]
+    with pytest.raises(NumericsError, match="alike is 'samples'; allowed: 'blocks' or 'features'"):
+        MultiblockPLS(2, alike="samples").fit(x, y)
+
+
 def test_features_and_outcomes_may_each_outnumber_the_samples() -> None:
     """Another block as outcome: 90 columns, turned into coordinates inside, give scikit-learn's scores."""
     x, _, factor = draw(25, 200)
