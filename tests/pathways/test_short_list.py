@@ -104,9 +104,9 @@ def test_many_groups_are_counted() -> None:
 
 
 def test_each_question_is_answered_by_its_figure() -> None:
-    asked = judgements(0.05, informed=True)
+    asked = judgements(0.05, informed=True, moduled=True)
     good = verdict_of(candidate(groups=groups(0.8, 0.8), known="x"), asked)
-    assert (good.told, good.speaks_against, good.share) == ("9 of 9", (), 1.0)
+    assert (good.told, good.speaks_against, good.share) == ("10 of 10", (), 1.0)
     spoilt = {
         "q above 0.01": {"q": 0.03},
         "not among the strongest in 80 % of half-samples": {"stability": 0.5},
@@ -115,6 +115,7 @@ def test_each_question_is_answered_by_its_figure() -> None:
         "does not hold without filled-in values": {"imputed_share": 0.3, "r_observed": 0.2},
         "does not hold within groups": {"basis": "group"},
         "does not pass by its own test": {"support": "module"},
+        "does not pass by its module": {"support": "pair"},
         "no known link or shared set": {"known": ""},
     }
     for words, change in spoilt.items():
@@ -142,9 +143,18 @@ def test_rows_are_ranked_by_evidence_then_q_then_strength() -> None:
     table = short_list(edges, fdr=0.05, informed=False)
     assert table["source"].tolist() == ["g4", "g3", "g2", "g1"]
     assert table["rank"].tolist() == [1, 2, 3, 4]
-    assert table["evidence"].tolist() == ["7 of 7"] * 3 + ["6 of 7"]
+    assert table["evidence"].tolist() == ["8 of 8"] * 3 + ["7 of 8"]
     assert table["speaks_against"].tolist()[-1].startswith("not among the strongest in 80 %")
     assert tuple(table.columns) == FOLLOWUP_COLUMNS
+
+
+def test_modules_are_asked_for_where_they_carry_any_edge() -> None:
+    """A pair of its own ranks behind one that its module carries too; alone it is not asked for one."""
+    lone = [candidate("g1", "m1", support="pair", q=1e-9), candidate("g2", "m2", support="pair")]
+    assert short_list(lone, fdr=0.05, informed=False)["evidence"].tolist() == ["7 of 7"] * 2
+    table = short_list([*lone, candidate("g3", "m3")], fdr=0.05, informed=False)
+    assert table["source"].tolist() == ["g3", "g1", "g2"]
+    assert table["speaks_against"].tolist() == ["", *["does not pass by its module"] * 2]
 
 
 def test_near_duplicates_share_one_row_and_hubs_have_two() -> None:

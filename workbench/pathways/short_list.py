@@ -87,7 +87,9 @@ class Candidate:
         return None if other is None else other * self.r > 0.0 and abs(other) >= KEPT * abs(self.r)
 
 
-def judgements(fdr: float, informed: bool) -> dict[str, Callable[[Candidate], bool | None]]:
+def judgements(
+    fdr: float, informed: bool, moduled: bool = False
+) -> dict[str, Callable[[Candidate], bool | None]]:
     """Return what is asked of each edge, in words; an answer is yes, no, or cannot be told (None).
 
     Parameters
@@ -96,6 +98,8 @@ def judgements(fdr: float, informed: bool) -> dict[str, Callable[[Candidate], bo
         Level at which edges were selected.
     informed : bool
         Whether there are sets or known links to ask.
+    moduled : bool
+        Whether modules carry any edge of the analysis.
     """
 
     def strong(one: Candidate) -> bool | None:
@@ -116,6 +120,9 @@ def judgements(fdr: float, informed: bool) -> dict[str, Callable[[Candidate], bo
     def own_test(one: Candidate) -> bool | None:
         return None if not one.text("support") else one.text("support") != "module"
 
+    def by_module(one: Candidate) -> bool | None:
+        return one.text("support") != "pair" if moduled and one.text("support") else None
+
     def everywhere(one: Candidate) -> bool | None:
         if not one.groups:
             return None
@@ -133,6 +140,7 @@ def judgements(fdr: float, informed: bool) -> dict[str, Callable[[Candidate], bo
         "holds within groups": within,
         "holds in every group": everywhere,
         "passes by its own test": own_test,
+        "passes by its module": by_module,
         "known link or shared set": known,
     }
 
@@ -192,7 +200,8 @@ def short_list(candidates: Sequence[Candidate], *, fdr: float, informed: bool) -
     edges between the same two clusters of near-duplicates the first one stands for all; a feature has two rows at most,
     a community ten, and the list forty, so that it holds the breadth of a network and not one hub of it.
     """
-    asked = judgements(fdr, informed)
+    moduled = any(one.text("support") in ("module", "both") for one in candidates)
+    asked = judgements(fdr, informed, moduled)
     judged = [(one, verdict_of(one, asked)) for one in candidates]
     judged.sort(key=lambda pair: _order(*pair))
     chosen, copies = _chosen(judged)
