@@ -158,7 +158,9 @@ def order_lines(frame: pd.DataFrame, samples: SamplesSettings) -> tuple[str, ...
     """Return a sentence for each factor, its levels in order and the samples of each, and one for the visits."""
     told = []
     for factor in samples.group:
-        held = frame.drop(index=missing_samples(frame, [factor]).get(factor, []))
+        held = frame.drop(index=list(missing_samples(frame, [factor]).get(factor, ())))
+        if held.empty:
+            continue
         groups = group_codes(held, factor, samples.order)
         sizes = np.bincount(groups.codes, minlength=len(groups.levels)).tolist()
         named = [f"{shown(level)} ({size})" for level, size in zip(groups.levels, sizes, strict=True)]
