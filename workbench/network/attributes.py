@@ -79,7 +79,7 @@ EDGE_ATTRIBUTES: dict[str, Attribute] = {
     "r": Attribute("double", "correlation of the two features, nuisance removed"),
     "r_low": Attribute("double", "lower end of the 95 % interval of r"),
     "r_high": Attribute("double", "upper end of the 95 % interval of r"),
-    "p": Attribute("double", "two-sided p of r"),
+    "p": Attribute("double", "two-sided p of r; where the module carries the edge, the larger p of its ends"),
     "q": Attribute("double", "false-discovery rate over all cross-layer pairs of the analysis"),
     "q_block": Attribute("double", "false-discovery rate over the pairs of these two blocks"),
     "r_total": Attribute("double", "correlation with the group left in"),

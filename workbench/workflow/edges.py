@@ -57,7 +57,7 @@ def group_pairs_table(view: AnalysisView, screens: Screens) -> pd.DataFrame:
     if screens.within is None:
         empty = Pairs(*(np.zeros(0, dtype=np.intp) for _ in range(3)))
         return _ends(view, empty).assign(
-            n=[], r_total=[], p_total=[], q_total=[], r_within=[], q_within=[], basis=[]
+            n=[], r_total=[], p_total=[], q_total=[], r_within=[], q_within=[], basis=[], support=[]
         )
     total = screens.total.found
     every = Pairs(total.pair_index, total.i, total.j)
@@ -74,6 +74,7 @@ def group_pairs_table(view: AnalysisView, screens: Screens) -> pd.DataFrame:
     table["r_within"], table["r_within_low"], table["r_within_high"] = found.r, low, high
     table["q_within"] = found.q
     table["basis"] = basis_of(view, found, total.r[keep], alone, screens)
+    table["support"] = screens.total.support[keep]
     return table
 
 

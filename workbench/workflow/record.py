@@ -7,6 +7,7 @@ from collections.abc import Mapping
 from importlib.metadata import version
 from typing import Any
 
+import numpy as np
 import pandas as pd
 
 from workbench import __version__
@@ -18,7 +19,7 @@ from workbench.workflow.analysis_inputs import analysis_inputs
 from workbench.workflow.analysis_view import AnalysisView, Shared
 from workbench.workflow.choices import choices_of
 from workbench.workflow.private import private_lines, private_record
-from workbench.workflow.screening import Screens
+from workbench.workflow.screening import Screen, Screens
 from workbench.workflow.state import ProjectState
 from workbench.workflow.subjects import visit_lines
 from workbench.workflow.tables import excluded
@@ -53,6 +54,7 @@ def analysis_record(
         "private_variation": private_record(view, screens.chosen, heavy) if removes else "not removed",
         "choices": list(choices_of(state.settings)),
         "edges": int(screens.chosen.found.r.size),
+        "support": support_counts(screens.chosen),
         "group_pairs": group_pairs,
         "edges_cut": cut_sentence(screens.chosen.found, view) or None,
         "inputs": analysis_inputs(state, view.name),
@@ -84,6 +86,7 @@ def screen_sentences(
         *(private_lines(view, screens.chosen, heavy) if view.settings.network.remove_private else []),
         f"{tested:,} cross-layer pairs tested ({how}), {counted(found, 'edge')} at a false-discovery rate of "
         f"{fdr:g}",
+        *support_lines(screens.chosen),
     ]
     untestable = int(sum(screens.chosen.found.untestable))
     if untestable:
@@ -98,6 +101,27 @@ def screen_sentences(
     cut = cut_sentence(screens.chosen.found, view)
     if cut:
         lines.append(cut)
+    return lines
+
+
+def support_counts(screen: Screen) -> dict[str, int]:
+    """Return how many edges each kind of support carries."""
+    kinds, counts = np.unique(screen.support, return_counts=True)
+    return {str(kind): int(count) for kind, count in zip(kinds, counts, strict=True)}
+
+
+def support_lines(screen: Screen) -> list[str]:
+    """Return how many edges their module alone carries, and why some couples of components carry none."""
+    alone = int((screen.support == "module").sum())
+    lines = []
+    if alone:
+        carried = counted(alone, "edge is", "edges are")
+        lines.append(f"{carried} carried by their module alone (column support; guide edges)")
+    if screen.mixed:
+        lines.append(
+            f"{screen.mixed} of {counted(screen.couples, 'couple')} of shared components mix several factors: no "
+            "edge is carried by them"
+        )
     return lines
 
 

@@ -75,7 +75,8 @@ class Screen:
     for Spearman's), with the nuisance columns that are still to be removed from them; ``removals`` what each block's
     real components are and which were removed, ``off`` why none were removed from a block pair (empty where they
     were); ``freedom`` the degrees of freedom of each block pair's correlations; ``rows`` the independent rows of each
-    pair where subjects have several samples.
+    pair where subjects have several samples; ``couples`` the number of couples of shared components, ``mixed`` of
+    those that carry no edge since they mix several factors.
     """
 
     found: BlockScreen
@@ -85,6 +86,8 @@ class Screen:
     off: tuple[str, ...]
     freedom: tuple[int, ...]
     rows: tuple[RepeatedRows, ...] = ()
+    couples: int = 0
+    mixed: int = 0
 
     @property
     def repeated(self) -> bool:
@@ -319,7 +322,16 @@ def _without_private(
             names, result.components, blocks, result.steady, strict=True
         )
     )
-    return Screen(result.screen, pairs, result.support, removals, result.off, _freedom(plain))
+    return Screen(
+        result.screen,
+        pairs,
+        result.support,
+        removals,
+        result.off,
+        _freedom(plain),
+        couples=sum(result.couples),
+        mixed=sum(result.mixed),
+    )
 
 
 class Asked(TypedDict):
