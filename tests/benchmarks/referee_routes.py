@@ -10,6 +10,7 @@ from scipy import stats
 from simulated import Block, Study, design_matrix, logs, simulate
 from simulated.sheet import indicators
 
+from workbench.engine.module_union import screen_supported
 from workbench.engine.nuisance import Nuisance
 from workbench.engine.private_variation import (
     LayerBlock,
@@ -18,8 +19,9 @@ from workbench.engine.private_variation import (
     screen_cleaned,
 )
 from workbench.engine.repeated_layers import cleaned_repeated
-from workbench.engine.screen import BlockScreen, screen_blocks
+from workbench.engine.screen import BlockScreen, pair_tiles, screen_blocks
 from workbench.engine.subjects import SubjectDesign, differences, subject_means
+from workbench.engine.tiles import Limits
 
 Keys = np.ndarray
 
@@ -129,12 +131,22 @@ def _between_visits(study: Study, arrays: Arrays, family: Family) -> tuple[Priva
     made = cleaned_repeated(
         blocks, study.design.block_pairs(), _subjects(study), "visits", family.correlation, seed=study.seed
     )
-    screen = screen_blocks(made.pairs)
+    found = screen_supported(
+        tuple(pair.name for pair in made.pairs),
+        [pair_tiles(pair, "pearson", Limits()) for pair in made.pairs],
+        made.shared,
+        fdr=0.05,
+        correlation="pearson",
+        minimum_r=0.0,
+        maximum_edges=None,
+        progress=None,
+    )
     components = tuple(
         tuple(replace(one, scores=made.space.on_samples(one.scores[:, None])[:, 0]) for one in block)
         for block in made.components
     )
-    return PrivateScreen(screen, np.full(screen.n_edges, "pair"), components, made.off, ()), screen
+    screen = PrivateScreen(found.screen, found.support, components, made.off, (), found.couples, found.mixed)
+    return screen, screen_blocks(made.pairs)
 
 
 def _edge_keys(study: Study, screen: BlockScreen, chosen: np.ndarray | None = None) -> Keys:

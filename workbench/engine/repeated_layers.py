@@ -34,6 +34,9 @@ class CleanedRepeated:
     ----------
     pairs : tuple of BlockPair
         To be screened by Pearson's correlation.
+    shared : tuple of (ndarray, ndarray)
+        For each pair both blocks' shared components on the rows, as in
+        :class:`~workbench.engine.private_variation.CleanedPairs`.
     places : tuple of (int, int)
         The positions of their blocks.
     space : SubjectSpace
@@ -51,6 +54,7 @@ class CleanedRepeated:
     """
 
     pairs: tuple[BlockPair, ...]
+    shared: tuple[tuple[FloatArray, FloatArray], ...]
     places: tuple[tuple[int, int], ...]
     space: SubjectSpace
     mapped: tuple[MappedBlock, ...]
@@ -104,7 +108,9 @@ def cleaned_repeated(
     made = pairs_without_private(layers, pairs, seed=seed)
     off = tuple(reason and _too_few(space) for reason in made.off)
     damped = made.pairs if level == "subjects" else tuple(_damped(pair, space, design) for pair in made.pairs)
-    return CleanedRepeated(damped, tuple(pairs), space, mapped, layers, made.components, off, made.steady)
+    return CleanedRepeated(
+        damped, made.shared, tuple(pairs), space, mapped, layers, made.components, off, made.steady
+    )
 
 
 def _too_few(space: SubjectSpace) -> str:

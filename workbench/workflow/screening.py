@@ -11,11 +11,12 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.stats import rankdata
 
-from workbench.engine import BlockPair, BlockScreen, Nuisance, SubjectDesign, screen_blocks
+from workbench.engine import BlockPair, BlockScreen, Limits, Nuisance, SubjectDesign, screen_blocks
+from workbench.engine.module_union import screen_supported
 from workbench.engine.private_variation import LayerBlock, RealComponent, screen_without_private
 from workbench.engine.repeated import independent_pair
 from workbench.engine.repeated_layers import CleanedRepeated, cleaned_repeated
-from workbench.engine.screen import Correlation
+from workbench.engine.screen import Correlation, pair_tiles
 from workbench.engine.subject_space import Level, SubjectSpace, by_visit, subject_space
 from workbench.workflow.analysis_view import AnalysisView, Shared, subject_names
 from workbench.workflow.reporting import Reporter
@@ -187,25 +188,47 @@ def _repeated(
     view: AnalysisView, shared: Sequence[Shared], within: bool, reporter: Reporter, label: str
 ) -> Screen:
     pairs = design_pairs(view, shared, within)
-    rows, removals, off = [], [], [""] * len(pairs)
+    rows, components, removals, off = [], [], [], [""] * len(pairs)
     for k, (names, pair, one) in enumerate(zip(view.pairs, pairs, shared, strict=True)):
         design, level = subjects_of(view, one)
         if view.settings.network.remove_private:
             made = cleaned_between(view, names, one, within)
             rows.append(RepeatedRows(replace(made.pairs[0], name=pair.name), made.space))
+            components.append(made.shared[0])
             removals += _pair_removals(view, names, one, made)
             off[k] = made.off[0]
         else:
             rows.append(
                 RepeatedRows(*independent_pair(pair, design, level, view.settings.network.correlation))
             )
+            components.append((np.empty((len(rows[k].space.matrix), 0)),) * 2)
     with reporter.progress(label) as progress:
         asked: Asked = {**_asked(view), "correlation": "pearson"}  # ranks are taken on the way to the rows
-        found = screen_blocks([one.pair for one in rows], **asked, progress=progress)
-    found = replace(found, n=_used(rows)[found.pair_index], correlation=view.settings.network.correlation)
+        tested = [one.pair for one in rows]
+        found = screen_supported(
+            tuple(pair.name for pair in tested),
+            [pair_tiles(pair, "pearson", Limits()) for pair in tested],
+            components,
+            **asked,
+            progress=progress,
+        )
+    screen = replace(
+        found.screen,
+        n=_used(rows)[found.screen.pair_index],
+        correlation=view.settings.network.correlation,
+    )
     freedom = tuple(one.space.nuisance.n_samples - one.space.nuisance.rank - 1 for one in rows)
-    support = np.full(found.n_edges, "pair")
-    return Screen(found, pairs, support, tuple(removals), tuple(off), freedom, tuple(rows))
+    return Screen(
+        screen,
+        pairs,
+        found.support,
+        tuple(removals),
+        tuple(off),
+        freedom,
+        tuple(rows),
+        sum(found.couples),
+        sum(found.mixed),
+    )
 
 
 def cleaned_between(
