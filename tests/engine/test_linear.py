@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+import scipy.linalg
 from hypothesis import given
 from hypothesis import strategies as st
 from numpy.testing import assert_allclose
@@ -14,6 +15,7 @@ from workbench.engine.linear import (
     column_correlations,
     component_signs,
     thin_basis,
+    thin_svd,
 )
 from workbench.errors import NumericsError
 
@@ -99,3 +101,22 @@ def test_correlations_match_numpy() -> None:
     assert_allclose(column_correlations(x, scores), want, atol=1e-12)
     x[:, 3] = 0.0
     assert np.isnan(column_correlations(x, scores)[3]).all()
+
+
+def test_where_divide_and_conquer_does_not_converge_the_slower_way_does(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    """LAPACK gives up on a few matrices of lower rank; the decomposition is the same by its other routine."""
+    whole = scipy.linalg.svd
+
+    def stubborn(x: np.ndarray, lapack_driver: str = "gesdd", **told: bool) -> tuple[np.ndarray, ...]:
+        if lapack_driver == "gesdd":
+            raise scipy.linalg.LinAlgError("SVD did not converge")
+        return whole(x, lapack_driver=lapack_driver, **told)
+
+    x = centred(9, 4)
+    want = thin_svd(x)
+    monkeypatch.setattr(scipy.linalg, "svd", stubborn)
+    left, lengths, right = thin_svd(x)
+    assert_allclose(lengths, want[1], rtol=1e-12)
+    assert_allclose((left * lengths) @ right, x, atol=1e-12)

@@ -23,7 +23,7 @@ import numpy as np
 import scipy.linalg
 from numpy.typing import NDArray
 
-from workbench.engine.linear import ThinBasis
+from workbench.engine.linear import ThinBasis, thin_svd
 from workbench.errors import NumericsError
 
 FloatArray = NDArray[np.float64]
@@ -87,9 +87,7 @@ def canonical_pairs(x: ThinBasis, y: ThinBasis, ridge: RidgePair, n_components: 
     array([1.])
     """
     g_x, g_y = x.shrinkage(ridge[0]), y.shrinkage(ridge[1])
-    left, roots, right = scipy.linalg.svd(
-        g_x[:, None] * (x.vectors.T @ y.vectors) * g_y, full_matrices=False, check_finite=False
-    )
+    left, roots, right = thin_svd(g_x[:, None] * (x.vectors.T @ y.vectors) * g_y)
     _require_support(n_components, roots, g_x.max() * g_y.max(), (x, y))
     left, roots, right = left[:, :n_components], roots[:n_components], right[:n_components].T
     return CanonicalPairs(

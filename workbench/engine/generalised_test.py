@@ -8,13 +8,12 @@ from functools import reduce
 from typing import Any
 
 import numpy as np
-import scipy.linalg
 from numpy.typing import NDArray
 
 from workbench.engine.arrangements import Exchange
 from workbench.engine.generalised_blocks import held_rows
 from workbench.engine.generalised_components import PlacedBasis, generalised_components
-from workbench.engine.linear import RANK_TOLERANCE, ThinBasis, thin_basis
+from workbench.engine.linear import RANK_TOLERANCE, ThinBasis, thin_basis, thin_svd
 from workbench.engine.pair_levels import BATCH_NUMBERS, NARROW, REMOVAL_RIDGE, orthonormal
 from workbench.engine.pair_rows import Level, design_of, exchangeable_rows
 from workbench.engine.pair_statistics import TEST_PATH, largest_roots, wilks_statistics
@@ -62,7 +61,7 @@ class MovedBlock:
         basis = self.placed.basis
         left = basis.vectors * basis.lengths
         left = left - removed @ (removed.T @ left)
-        vectors, lengths, _ = scipy.linalg.svd(left, full_matrices=False, check_finite=False)
+        vectors, lengths, _ = thin_svd(left)
         rank = int(np.count_nonzero(lengths**2 > RANK_TOLERANCE * basis.lengths[0] ** 2))
         if rank == 0:
             return None

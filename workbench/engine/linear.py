@@ -77,7 +77,7 @@ def thin_basis(x: FloatArray) -> ThinBasis:
     n, p = x.shape
     if p > n:
         return kernel_basis(x @ x.T, p)
-    vectors, lengths, _ = scipy.linalg.svd(x, full_matrices=False, check_finite=False)
+    vectors, lengths, _ = thin_svd(x)
     return _leading_directions(vectors, lengths, n, p)
 
 
@@ -97,6 +97,21 @@ def kernel_basis(kernel: FloatArray, n_features: int) -> ThinBasis:
     eigenvalues, vectors = scipy.linalg.eigh(kernel, check_finite=False)
     lengths = np.sqrt(np.maximum(eigenvalues[::-1], 0.0))
     return _leading_directions(vectors[:, ::-1], lengths, len(kernel), n_features)
+
+
+def thin_svd(x: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Thin singular value decomposition ``U, D, W'`` of a finite matrix.
+
+    By divide and conquer, and where that does not converge, as happens with one in some ten thousand matrices of lower
+    rank, by the slower iteration.
+    """
+    try:
+        left, lengths, right = scipy.linalg.svd(x, full_matrices=False, check_finite=False)
+    except scipy.linalg.LinAlgError:
+        left, lengths, right = scipy.linalg.svd(
+            x, full_matrices=False, check_finite=False, lapack_driver="gesvd"
+        )
+    return left, lengths, right
 
 
 def _leading_directions(vectors: FloatArray, lengths: FloatArray, n: int, n_features: int) -> ThinBasis:

@@ -7,11 +7,10 @@ from dataclasses import dataclass
 from functools import partial
 
 import numpy as np
-import scipy.linalg
 from numpy.typing import NDArray
 
 from workbench.engine.arrangements import Exchange
-from workbench.engine.linear import RANK_TOLERANCE, ThinBasis, thin_basis
+from workbench.engine.linear import RANK_TOLERANCE, ThinBasis, thin_basis, thin_svd
 from workbench.engine.pair_rows import ExchangeableRows, residual_basis
 from workbench.engine.pair_statistics import TEST_PATH, largest_roots, wilks_statistics
 from workbench.engine.turned_rows import TurnedRows
@@ -145,9 +144,7 @@ class PairLevel:
     def _variates(self, pairs: int) -> FloatArray:
         """Return an orthonormal basis of what is carried already and of the leading pairs' variates."""
         g_moved, g_still = self._shrinkages(REMOVAL_RIDGE)
-        left, _, right = scipy.linalg.svd(
-            g_moved[:, None] * (self.moved.vectors.T @ self.still.vectors) * g_still
-        )
+        left, _, right = thin_svd(g_moved[:, None] * (self.moved.vectors.T @ self.still.vectors) * g_still)
         u = self.moved.vectors @ (g_moved[:, None] * left[:, :pairs])
         v = self.still.vectors @ (g_still[:, None] * right[:pairs].T)
         return orthonormal([self.carried, u, v])
@@ -175,6 +172,6 @@ def _without(basis: ThinBasis, removed: FloatArray) -> ThinBasis | None:
     """Decomposition of a block with directions removed; None where nothing is left."""
     left = basis.vectors * basis.lengths
     left = left - removed @ (removed.T @ left)
-    vectors, lengths, _ = scipy.linalg.svd(left, full_matrices=False, check_finite=False)
+    vectors, lengths, _ = thin_svd(left)
     rank = int(np.count_nonzero(lengths**2 > RANK_TOLERANCE * basis.lengths[0] ** 2))
     return ThinBasis(vectors[:, :rank], lengths[:rank], basis.n_features) if rank else None
