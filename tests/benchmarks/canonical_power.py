@@ -4,6 +4,8 @@ Each study has 60 samples, 2,000 and 200 features. Private factors load on every
 each shared factor loads on 60 and 12 features. Prints the share of studies with p at most 0.05, for the test
 as a whole and for each statistic at each ridge, with shared factors and without any.
 
+Seen, 100 studies, 199 permutations, three shared factors at strength 1.0: p at most 0.05 in 0.94.
+
 Run: python tests/benchmarks/canonical_power.py [--studies 50] [--permutations 199] [--strength 1.0]
 """
 
