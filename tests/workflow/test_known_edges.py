@@ -6,7 +6,7 @@ from pathlib import Path
 
 from workbench import Project
 from workbench.store import read_table
-from workbench.workflow.following import read_features
+from workbench.workflow.known_tables import read_features
 
 FOLDER = "results/main"
 

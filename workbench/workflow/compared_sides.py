@@ -15,7 +15,7 @@ from workbench.errors import InputError
 from workbench.intake.faults import counted
 from workbench.pathways import identifier_columns
 from workbench.store import ProjectPaths, check_file, find_project, read_table
-from workbench.workflow.following import read_features
+from workbench.workflow.known_tables import read_features
 from workbench.workflow.residual_blocks import ResidualViews
 from workbench.workflow.state import load_state
 

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from pathlib import Path
 from typing import Any
 
 import networkx as nx
@@ -19,16 +18,12 @@ from workbench.pathways import (
     Candidate,
     KnownLinks,
     SetMembers,
-    SetTable,
     edge_ends,
-    identifier_columns,
     known_evidence,
     match_sets,
-    read_links,
-    read_sets,
     short_list,
 )
-from workbench.store import Change, check_file, read_table, sha256_of, table_bytes
+from workbench.store import Change, check_file, read_table, table_bytes
 from workbench.workflow.analysis_inputs import analysis_inputs
 from workbench.workflow.analysis_view import AnalysisView, blocks_of
 from workbench.workflow.doubts import doubts_of
@@ -36,6 +31,7 @@ from workbench.workflow.drawings import write_drawings
 from workbench.workflow.edge_correlations import edge_correlations
 from workbench.workflow.fingerprints import fingerprint
 from workbench.workflow.group_correlations import group_correlations
+from workbench.workflow.known_tables import knowledge_inputs, read_features, read_knowledge
 from workbench.workflow.pathway_tables import (
     ALL_LAYERS,
     coherence_of,
@@ -74,26 +70,6 @@ def following_stage(state: ProjectState, name: str) -> Stage:
         inputs=lambda now: _inputs(now, name),
         work=lambda now, change, reporter: _work(now, change, reporter, name),
     )
-
-
-def knowledge_inputs(state: ProjectState, name: str) -> dict[str, str]:
-    """Return a hash of each table of knowledge that an analysis names."""
-    return {what: sha256_of(path) for what, path in _knowledge_paths(state, name).items() if path.exists()}
-
-
-def read_knowledge(state: ProjectState, name: str) -> tuple[SetTable | None, KnownLinks | None]:
-    """Return the sets and the known links that an analysis names; None for a table that it does not."""
-    paths = _knowledge_paths(state, name)
-    return (
-        read_sets(paths["sets"]) if "sets" in paths else None,
-        read_links(paths["known links"]) if "known links" in paths else None,
-    )
-
-
-def _knowledge_paths(state: ProjectState, name: str) -> dict[str, Path]:
-    chosen = state.settings.analyses[name].pathways
-    named = {"sets": chosen.sets, "known links": chosen.links}
-    return {what: state.root / path for what, path in named.items() if path is not None}
 
 
 def _inputs(state: ProjectState, name: str) -> dict[str, str]:
@@ -144,19 +120,6 @@ def _draw_listed(graph: nx.Graph, listed: pd.DataFrame) -> tuple[Drawing, ...]:
         strict=True,
     )
     return draw_network(graph.edge_subgraph(ends), name="followup", what="The short list (followup.tsv)")
-
-
-def read_features(path: Path) -> pd.DataFrame:
-    """Return features.tsv with every column of identifiers as text, whatever it looks like."""
-    identifiers = identifier_columns(pd.DataFrame(columns=table_header(path)))
-    table: pd.DataFrame = read_table(path, text=[*identifiers, "cluster"])
-    return table
-
-
-def table_header(path: Path) -> list[str]:
-    """Return the names of a stored table's columns."""
-    with path.open(encoding="utf-8") as file:
-        return file.readline().rstrip("\n").split("\t")
 
 
 def followed_sentence(listed: int, edges: int) -> str:

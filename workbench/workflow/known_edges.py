@@ -12,7 +12,7 @@ from workbench.errors import InputError
 from workbench.network import gexf_bytes, graphml_bytes, read_graphml
 from workbench.pathways import edge_columns
 from workbench.store import Change, check_file, json_bytes, read_table, table_bytes
-from workbench.workflow.following import read_features, read_knowledge, table_header
+from workbench.workflow.known_tables import read_features, read_knowledge, table_header
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.stages import Stage, changed_by_hand
 from workbench.workflow.state import ProjectState

@@ -23,8 +23,8 @@ from workbench.workflow.drawings import write_drawings
 from workbench.workflow.edges import edges_table, group_pairs_table
 from workbench.workflow.feature_table import canonical_correlations, features_table, implied_correlations
 from workbench.workflow.fingerprints import fingerprint
-from workbench.workflow.following import knowledge_inputs
 from workbench.workflow.known_edges import known_columns, mark_known, only_knowledge_changed
+from workbench.workflow.known_tables import knowledge_inputs
 from workbench.workflow.private import FILE as PRIVATE_FILE
 from workbench.workflow.private import draw_removed, heavy_tailed, private_table, write_scores
 from workbench.workflow.record import analysis_record, fragile_sentence, screen_sentences
