@@ -7,8 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from workbench.engine import BlockPair, Limits
-from workbench.engine.screen import pair_tiles
-from workbench.engine.tiles import PairTiles
+from workbench.engine.pairs.screen import pair_tiles
+from workbench.engine.pairs.tiles import PairTiles
 
 
 @dataclass(frozen=True, eq=False)

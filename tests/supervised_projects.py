@@ -13,7 +13,7 @@ from workbench import Project
 from workbench.workflow import plan
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.stages import run_stages
-from workbench.workflow.supervised import supervised_stage
+from workbench.workflow.supervised.supervised import supervised_stage
 
 GENES, COMPOUNDS = 120, 40
 

@@ -6,11 +6,11 @@ import numpy as np
 from simulated import Study
 from swap_studies import prepared_block
 
-from workbench.engine.layer_match import LayerMatch, Prediction
 from workbench.engine.nuisance import Nuisance
-from workbench.engine.swap_bound import clean_bounds
-from workbench.engine.swap_candidates import layer_gains, pair_candidates
-from workbench.engine.swap_layers import SwapLayer, layer_state
+from workbench.engine.swaps.layer_match import LayerMatch, Prediction
+from workbench.engine.swaps.swap_bound import clean_bounds
+from workbench.engine.swaps.swap_candidates import layer_gains, pair_candidates
+from workbench.engine.swaps.swap_layers import SwapLayer, layer_state
 
 NEAR = 5.0
 

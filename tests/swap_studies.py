@@ -7,8 +7,8 @@ import pandas as pd
 from simulated import Study
 from simulated.sheet import day_column, indicators
 
-from workbench.engine.swap_layers import SwapLayer
-from workbench.engine.swapped_samples import SwapSearch
+from workbench.engine.swaps.swap_layers import SwapLayer
+from workbench.engine.swaps.swapped_samples import SwapSearch
 from workbench.prepare import MeasuredTable, PreparedTable, recipe_for
 
 

@@ -23,6 +23,22 @@ ORDER = [
     ),
     *("look", "figures", "report", "workflow", "project", "cli", "guide", "__main__"),
 ]
+COMMON = "modules of the part itself"
+INSIDE = {
+    "engine": {
+        COMMON: set(),
+        **{name: {COMMON} for name in ("look", "pairs", "canonical", "supervised", "swaps")},
+        "private": {COMMON, "pairs"},
+        "evidence": {COMMON, "pairs", "private"},
+    },
+    "workflow": {
+        COMMON: set(),
+        "entry": {COMMON},
+        **{name: {COMMON, "entry"} for name in ("canonical", "supervised", "network")},
+        "followup": {COMMON, "entry", "network"},
+    },
+}
+TOPMOST = {"plan", "status", "integrating"}
 TOP = {"README.md", "DEVELOPERS.md", "pyproject.toml", "workbench", "tests", "templates", "example_project"}
 
 
@@ -62,13 +78,33 @@ def test_a_part_imports_only_from_the_parts_above_it(path):
         assert ORDER.index(part) <= ORDER.index(own), f"{path}:{line}: {own} imports {part}"
 
 
+@pytest.mark.parametrize("part", INSIDE)
+def test_inside_a_part_imports_run_one_way(part):
+    for path in sorted((PACKAGE / part).rglob("*.py")):
+        if path.name == "__init__.py" or (path.parent.name == part and path.stem in TOPMOST):
+            continue
+        own = COMMON if path.parent.name == part else path.parent.name
+        for line, module in imports_of(path):
+            names = module.split(".")
+            if len(names) < 3 or names[1] != part:
+                continue
+            other = names[2] if names[2] in INSIDE[part] else COMMON
+            assert other == own or other in INSIDE[part][own], f"{path}:{line}: {own} imports {other}"
+
+
+@pytest.mark.parametrize("part", INSIDE)
+def test_every_folder_inside_a_part_is_named(part):
+    folders = {path.parent.name for path in (PACKAGE / part).rglob("*.py")} - {part}
+    assert folders == set(INSIDE[part]) - {COMMON}
+
+
 def test_the_order_names_every_part():
     parts = {path.relative_to(PACKAGE).parts[0].removesuffix(".py") for path in modules()}
     assert parts <= set(ORDER)
 
 
 def test_the_engine_knows_no_files_and_no_tables():
-    for path in sorted((PACKAGE / "engine").glob("*.py")):
+    for path in sorted((PACKAGE / "engine").rglob("*.py")):
         for node in ast.walk(ast.parse(path.read_text("utf-8"))):
             names = [alias.name for alias in node.names] if isinstance(node, ast.Import) else []
             if isinstance(node, ast.ImportFrom):
@@ -79,7 +115,7 @@ def test_the_engine_knows_no_files_and_no_tables():
 
 
 def test_init_files_list_names_and_do_nothing():
-    for path in sorted(PACKAGE.glob("*/__init__.py")):
+    for path in sorted(PACKAGE.rglob("*/__init__.py")):
         for node in ast.parse(path.read_text("utf-8")).body:
             allowed = isinstance(node, ast.Import | ast.ImportFrom | ast.Assign | ast.Expr)
             assert allowed, f"{path}:{node.lineno} does something"

@@ -23,23 +23,23 @@ from workbench.store import (
     read_table,
     settle,
 )
-from workbench.workflow import blocks as workflow_blocks
 from workbench.workflow import plan
-from workbench.workflow.applying import apply_analysis
-from workbench.workflow.blocks import Tell, no_words
-from workbench.workflow.checking import stored_findings
-from workbench.workflow.comparing import Comparison, run_compare
-from workbench.workflow.create import DEFAULT_TEMPLATE, create_project
+from workbench.workflow.entry import blocks as workflow_blocks
+from workbench.workflow.entry.blocks import Tell, no_words
+from workbench.workflow.entry.checking import stored_findings
+from workbench.workflow.entry.create import DEFAULT_TEMPLATE, create_project
+from workbench.workflow.entry.preparing import account_of
+from workbench.workflow.entry.removing import remove_block
+from workbench.workflow.entry.samples import SheetAccount, SheetDelivery, add_samples
 from workbench.workflow.faults_aside import aside_lines, state_for_analysis, state_for_block
-from workbench.workflow.knowledge import add_knowledge, pathways_stages
-from workbench.workflow.preparing import account_of
-from workbench.workflow.removing import remove_block
+from workbench.workflow.followup.comparing import Comparison, run_compare
+from workbench.workflow.followup.knowledge import add_knowledge, pathways_stages
+from workbench.workflow.network.showing import Story, keep_figures, show
 from workbench.workflow.reporting import SILENT, Reporter
-from workbench.workflow.samples import SheetAccount, SheetDelivery, add_samples
-from workbench.workflow.showing import Story, keep_figures, show
 from workbench.workflow.stages import Outcome, Standing, run_stages, standings
 from workbench.workflow.state import ProjectState, load_state
 from workbench.workflow.status import Status, status_of
+from workbench.workflow.supervised.applying import apply_analysis
 from workbench.workflow.tables import measured_block, plain_table
 
 if TYPE_CHECKING:

@@ -26,10 +26,10 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.stats import binomtest, kstest
 
-from workbench.engine.generalised_account import takes_part, variance_accounts
-from workbench.engine.generalised_cca import GeneralisedCCA
-from workbench.engine.generalised_test import generalised_pair_test
-from workbench.engine.generalised_validation import blocks_source, cross_validated_components
+from workbench.engine.canonical.generalised_account import takes_part, variance_accounts
+from workbench.engine.canonical.generalised_cca import GeneralisedCCA
+from workbench.engine.canonical.generalised_permutation import generalised_pair_test
+from workbench.engine.canonical.generalised_validation import blocks_source, cross_validated_components
 
 FloatArray = NDArray[np.float64]
 Loadings = list[tuple[FloatArray, FloatArray]]

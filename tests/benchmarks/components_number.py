@@ -18,7 +18,7 @@ sys.path.insert(0, str(Path(__file__).resolve().parents[1]))
 
 from factor_blocks import NOISES, FactorBlock, factor_block, oracle_sees, scaled
 
-from workbench.engine.component_number import ComponentNumber, choose_number
+from workbench.engine.look.component_number import ComponentNumber, choose_number
 
 RULES: dict[str, Callable[[ComponentNumber], int]] = {
     "the number": lambda found: found.number,

@@ -15,7 +15,7 @@ from functools import partial
 import numpy as np
 from sklearn.decomposition import PCA
 
-from workbench.engine.components import PrincipalComponents
+from workbench.engine.look.components import PrincipalComponents
 
 RUNS = 7
 

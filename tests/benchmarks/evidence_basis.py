@@ -32,10 +32,10 @@ from referee_families import Family, known
 from referee_routes import study_arrays
 from simulated import Design, Study, design_matrix, simulate
 
-from workbench.engine.intervals import fisher_interval
+from workbench.engine.evidence.pair_basis import pair_basis
 from workbench.engine.nuisance import Nuisance
-from workbench.engine.pair_basis import pair_basis
-from workbench.engine.private_variation import LayerBlock, PrivateScreen, screen_without_private
+from workbench.engine.pairs.intervals import fisher_interval
+from workbench.engine.private.private_variation import LayerBlock, PrivateScreen, screen_without_private
 
 KINDS, LABELS = ("within", "group", "both"), ("within", "group", "unclear")
 #: Shift between groups and strength of the modules, in standard deviations of the noise; private factors there or not.

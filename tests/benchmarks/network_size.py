@@ -121,8 +121,8 @@ def study(folder: Path, seed: int) -> Any:
 
 def followed() -> None:
     """Measure the stage behind the network and the comparison of two such studies."""
-    from workbench.workflow.comparing import run_compare
-    from workbench.workflow.knowledge import add_knowledge, pathways_stages
+    from workbench.workflow.followup.comparing import run_compare
+    from workbench.workflow.followup.knowledge import add_knowledge, pathways_stages
     from workbench.workflow.reporting import Reporter
     from workbench.workflow.stages import run_stages
 

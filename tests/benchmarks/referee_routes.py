@@ -10,18 +10,18 @@ from scipy import stats
 from simulated import Block, Study, design_matrix, logs, simulate
 from simulated.sheet import indicators
 
-from workbench.engine.module_union import screen_supported
 from workbench.engine.nuisance import Nuisance
-from workbench.engine.private_variation import (
+from workbench.engine.pairs.screen import BlockScreen, pair_tiles, screen_blocks
+from workbench.engine.pairs.tiles import Limits
+from workbench.engine.private.module_union import screen_supported
+from workbench.engine.private.private_variation import (
     LayerBlock,
     PrivateScreen,
     pairs_without_private,
     screen_cleaned,
 )
-from workbench.engine.repeated_layers import cleaned_repeated
-from workbench.engine.screen import BlockScreen, pair_tiles, screen_blocks
+from workbench.engine.private.repeated_layers import cleaned_repeated
 from workbench.engine.subjects import SubjectDesign, differences, subject_means
-from workbench.engine.tiles import Limits
 
 Keys = np.ndarray
 

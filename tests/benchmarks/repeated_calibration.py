@@ -54,7 +54,7 @@ import numpy as np
 from scipy import stats
 
 from workbench.engine import BlockPair, SubjectDesign, benjamini_hochberg
-from workbench.engine.repeated import screen_repeated
+from workbench.engine.pairs.repeated import screen_repeated
 
 P, Q, FACTORS = 300, 100, 4
 

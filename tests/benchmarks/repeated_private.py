@@ -61,10 +61,10 @@ from referee_families import Family
 from simulated import Study, design_matrix, logs, simulate
 
 from workbench.engine import BlockPair, SubjectDesign, screen_blocks
-from workbench.engine.private_variation import LayerBlock
-from workbench.engine.repeated import screen_repeated
-from workbench.engine.repeated_layers import cleaned_repeated
-from workbench.engine.subject_space import Level
+from workbench.engine.pairs.repeated import screen_repeated
+from workbench.engine.pairs.subject_space import Level
+from workbench.engine.private.private_variation import LayerBlock
+from workbench.engine.private.repeated_layers import cleaned_repeated
 
 KINDS: dict[str, Level] = {
     "nothing-pairs-60": "visits",

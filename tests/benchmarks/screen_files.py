@@ -19,7 +19,7 @@ import h5py
 import numpy as np
 
 from workbench.engine import screen_pairs
-from workbench.engine.workers import allowed_threads
+from workbench.engine.pairs.workers import allowed_threads
 
 SLICE = 5000
 

@@ -23,7 +23,7 @@ import numpy as np
 import threadpoolctl
 
 from workbench.engine import Limits, PairScreen, screen_pairs
-from workbench.engine.workers import share_out
+from workbench.engine.pairs.workers import share_out
 
 MODULES, SIDE = 10, 100
 LIMITS = Limits()

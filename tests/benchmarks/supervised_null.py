@@ -60,7 +60,7 @@ from workbench.engine import (
     centred,
     double_validation,
 )
-from workbench.engine.double_arrangements import outcome_arrangements
+from workbench.engine.supervised.double_arrangements import outcome_arrangements
 
 FloatArray = NDArray[np.float64]
 IndexArray = NDArray[np.intp]

@@ -31,10 +31,10 @@ from workbench.engine import (
     double_validation,
     select_panel,
 )
-from workbench.engine.double_folds import fold_splits
-from workbench.engine.double_loop import FoldKernels, choices, nested_fold
-from workbench.engine.double_splits import split_kernels
-from workbench.engine.outcome_rule import learn_rule
+from workbench.engine.supervised.double_folds import fold_splits
+from workbench.engine.supervised.double_loop import FoldKernels, choices, nested_fold
+from workbench.engine.supervised.double_splits import split_kernels
+from workbench.engine.supervised.outcome_rule import learn_rule
 
 FloatArray = NDArray[np.float64]
 NEW = 2000

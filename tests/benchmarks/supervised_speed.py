@@ -18,7 +18,7 @@ import numpy as np
 from sklearn.cross_decomposition import PLSRegression
 
 from workbench.engine import ClassOutcome, MultiblockPLS, PanelSearch, block_source, double_validation
-from workbench.engine.double_arrangements import outcome_arrangements
+from workbench.engine.supervised.double_arrangements import outcome_arrangements
 
 SIZES = (20_000, 5_000)
 

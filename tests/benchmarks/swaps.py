@@ -39,8 +39,8 @@ from simulated import Design, Study, metabolites, proteins, simulate, transcript
 from swap_oracle import oracle_finds
 from swap_studies import crosses, exchanged, found_in, swap_layers
 
-from workbench.engine.swap_layers import SwapLayer
-from workbench.engine.swapped_samples import find_swapped_samples
+from workbench.engine.swaps.swap_layers import SwapLayer
+from workbench.engine.swaps.swapped_samples import find_swapped_samples
 
 NO_DESIGN: dict[str, Any] = {"groups": (), "run_days": 1}
 PRIVATE = (

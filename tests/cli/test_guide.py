@@ -11,7 +11,7 @@ from workbench.settings import (
     SamplesSettings,
     StudySettings,
 )
-from workbench.workflow.networking import EDGE_COLUMNS, FEATURE_COLUMNS
+from workbench.workflow.network.networking import EDGE_COLUMNS, FEATURE_COLUMNS
 
 SECTIONS = [StudySettings, SamplesSettings, BlockSettings, AnalysisSettings, NetworkSettings, PathwaySettings]
 

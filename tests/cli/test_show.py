@@ -8,7 +8,7 @@ import pandas as pd
 import pytest
 
 from workbench import Project
-from workbench.workflow.doubts import doubts_of
+from workbench.workflow.network.doubts import doubts_of
 
 
 @pytest.fixture(scope="module")

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 from matplotlib.figure import Figure
 
-from workbench.engine.association import SampleColumn, associate
+from workbench.engine.look.association import SampleColumn, associate
 from workbench.figures import figure_bytes
 from workbench.figures.canonical import (
     CanonicalView,

@@ -11,7 +11,7 @@ import pytest
 
 from workbench import Project
 from workbench.look import BlockLook, block_reading, look_at_block
-from workbench.workflow.looking import SEED, view_block
+from workbench.workflow.entry.looking import SEED, view_block
 
 EXAMPLE = Path(__file__).resolve().parents[2] / "example_project"
 DAYS = {"transcripts": "rna_day", "metabolites": "ms_day"}

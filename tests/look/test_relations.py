@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from workbench.engine.components import PrincipalComponents
+from workbench.engine.look.components import PrincipalComponents
 from workbench.look.relations import feature_relations, guide_radius
 
 

@@ -9,8 +9,8 @@ from numpy.testing import assert_allclose
 from sklearn.datasets import load_wine
 from sklearn.decomposition import PCA
 
-from workbench.engine.components import PrincipalComponents
 from workbench.engine.linear import component_signs
+from workbench.engine.look.components import PrincipalComponents
 
 
 def arrests() -> np.ndarray:

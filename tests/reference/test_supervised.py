@@ -28,7 +28,7 @@ from workbench.engine import (
     block_source,
     double_validation,
 )
-from workbench.engine.double_folds import fold_splits, strata_of
+from workbench.engine.supervised.double_folds import fold_splits, strata_of
 
 SPINAL = ["tau", "p_tau", "Ab_42"]
 

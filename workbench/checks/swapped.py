@@ -11,12 +11,12 @@ from numpy.typing import NDArray
 from workbench.checks.data import CheckedBlock, StudyData
 from workbench.checks.finding import Finding, accept_line, exclude_line, finding_id, toml_text
 from workbench.checks.words import small
-from workbench.engine.layer_match import LayerMatch
-from workbench.engine.strangers import Stranger
-from workbench.engine.swap_cycles import Swap
-from workbench.engine.swap_evidence import SwapEvidence
-from workbench.engine.swap_layers import SwapLayer
-from workbench.engine.swapped_samples import SwapSearch, find_swapped_samples
+from workbench.engine.swaps.layer_match import LayerMatch
+from workbench.engine.swaps.strangers import Stranger
+from workbench.engine.swaps.swap_cycles import Swap
+from workbench.engine.swaps.swap_evidence import SwapEvidence
+from workbench.engine.swaps.swap_layers import SwapLayer
+from workbench.engine.swaps.swapped_samples import SwapSearch, find_swapped_samples
 from workbench.errors import NumericsError
 from workbench.intake.faults import listed
 

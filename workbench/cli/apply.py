@@ -11,7 +11,7 @@ from workbench.cli.console import answer, tell_next
 from workbench.cli.options import JsonOption, ProjectOption, QuietOption, open_project
 
 if TYPE_CHECKING:
-    from workbench.workflow.applying import Applied
+    from workbench.workflow.supervised.applying import Applied
 
 
 def register(app: typer.Typer) -> None:
@@ -27,7 +27,7 @@ def apply(
     quiet: QuietOption = False,
 ) -> None:
     """Apply an analysis to another project's samples. Predictions, their figures, edges that replicate."""
-    from workbench.workflow.applying import applied_folder, apply_analysis
+    from workbench.workflow.supervised.applying import applied_folder, apply_analysis
 
     opened = open_project(project)
     applied = apply_analysis(opened.paths, analysis, to)

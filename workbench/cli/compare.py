@@ -34,7 +34,7 @@ def compare(
     quiet: QuietOption = False,
 ) -> None:
     """Compare two analyses: edges, communities, settings. Edges are kept, gained, lost, and changed or not."""
-    from workbench.workflow.comparing import run_compare
+    from workbench.workflow.followup.comparing import run_compare
 
     comparison, folder = run_compare(_here(project), (first, second), by)
     answer(comparison.sentences())

@@ -34,7 +34,7 @@ def pathways(
     quiet: QuietOption = False,
 ) -> None:
     """Follow the network: the short list, sets, known links. Over-representation, coherence and figures too."""
-    from workbench.workflow.knowledge import add_knowledge, pathways_stages
+    from workbench.workflow.followup.knowledge import add_knowledge, pathways_stages
     from workbench.workflow.stages import run_stages
 
     opened = open_project(project)

@@ -54,7 +54,7 @@ def plan(
 ) -> None:
     """Say what a design can find. The smallest correlation, and the samples that a weaker one needs."""
     from workbench.workflow.analysis_view import blocks_of
-    from workbench.workflow.planning import plan_of_numbers, project_plans
+    from workbench.workflow.network.planning import plan_of_numbers, project_plans
 
     if features:
         from workbench.errors import InputError

@@ -32,7 +32,7 @@ def init(
     """Make a project."""
     from workbench.errors import InputError
     from workbench.project import Project
-    from workbench.workflow.create import templates
+    from workbench.workflow.entry.create import templates
 
     if show:
         answer(f"{one.name}\t{one.title}\t{one.about}" for one in templates().values())

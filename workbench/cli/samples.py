@@ -11,7 +11,7 @@ from workbench.cli.console import answer, tell, tell_next
 from workbench.cli.options import AdjustOption, ProjectOption, QuietOption, ReplaceOption, open_project
 
 if TYPE_CHECKING:
-    from workbench.workflow.samples import SheetAccount
+    from workbench.workflow.entry.samples import SheetAccount
 
 
 def register(app: typer.Typer) -> None:

@@ -14,7 +14,7 @@ from workbench.cli.options import JsonOption, ProjectOption, QuietOption, open_p
 if TYPE_CHECKING:
     from pandas import DataFrame
 
-    from workbench.workflow.showing import Story
+    from workbench.workflow.network.showing import Story
 
 MOST_PARTNERS = 20
 

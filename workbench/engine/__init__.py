@@ -2,26 +2,35 @@
 
 from __future__ import annotations
 
-from workbench.engine.cca import RegularisedCCA
-from workbench.engine.clusters import FeatureClusters, near_duplicates
-from workbench.engine.differential import (
+from workbench.engine.canonical.cca import RegularisedCCA
+from workbench.engine.canonical.generalised_cca import GeneralisedCCA
+from workbench.engine.canonical.generalised_permutation import generalised_pair_test
+from workbench.engine.canonical.generalised_validation import blocks_source, cross_validated_components
+from workbench.engine.canonical.permutation import PairTest, canonical_pair_test
+from workbench.engine.canonical.ridge_choice import RidgeChoice, choose_ridge
+from workbench.engine.canonical.splits import SideSplit, Split, SplitSource, array_source
+from workbench.engine.canonical.validation import CrossValidation, cross_validated_correlations
+from workbench.engine.evidence.clusters import FeatureClusters, near_duplicates
+from workbench.engine.evidence.differential import (
     DifferenceFigures,
     DifferentialScreen,
     differences_of,
     screen_differences,
 )
-from workbench.engine.double_outcome import ClassOutcome, NumberOutcome
-from workbench.engine.double_splits import BlockSource, BlockSplit, block_source, standard_split
-from workbench.engine.double_validation import DoubleValidation, HeldOutModel, double_validation
-from workbench.engine.effects import GroupEffects, group_effects
-from workbench.engine.evidence import EdgeEvidence, edge_evidence
+from workbench.engine.evidence.evidence import EdgeEvidence, edge_evidence
+from workbench.engine.evidence.planning import (
+    PairPlan,
+    independent_samples,
+    plan_pairs,
+    plan_sentences,
+    power_of,
+    samples_needed,
+    smallest_correlation,
+)
+from workbench.engine.evidence.stability import HalfScreen, PairStability, half_samples, pair_stability
+from workbench.engine.evidence.strongest import Strongest, strongest_pairs
 from workbench.engine.folds import balanced_folds
-from workbench.engine.generalised_cca import GeneralisedCCA
-from workbench.engine.generalised_test import generalised_pair_test
-from workbench.engine.generalised_validation import blocks_source, cross_validated_components
-from workbench.engine.intervals import fisher_interval
-from workbench.engine.lookup import PairFigures
-from workbench.engine.multiblock_pls import MultiblockDiscriminant, MultiblockPLS
+from workbench.engine.look.effects import GroupEffects, group_effects
 from workbench.engine.multiple import benjamini_hochberg
 from workbench.engine.nuisance import (
     FittedResiduals,
@@ -32,29 +41,12 @@ from workbench.engine.nuisance import (
     standardise,
 )
 from workbench.engine.odd_rows import SteadyRows, steady_rows
-from workbench.engine.panel_selection import PANEL_CAUTION, Panel, PanelSearch, select_panel
-from workbench.engine.performance_measures import (
-    ClassPerformance,
-    NumberPerformance,
-    roc_curve,
-)
-from workbench.engine.permutation import PairTest, canonical_pair_test
-from workbench.engine.planning import (
-    PairPlan,
-    independent_samples,
-    plan_pairs,
-    plan_sentences,
-    power_of,
-    samples_needed,
-    smallest_correlation,
-)
-from workbench.engine.repeated import screen_repeated, without_subject
-from workbench.engine.ridge_choice import RidgeChoice, choose_ridge
-from workbench.engine.screen import BlockPair, BlockScreen, PairScreen, screen_blocks, screen_pairs
-from workbench.engine.splits import SideSplit, Split, SplitSource, array_source
-from workbench.engine.stability import HalfScreen, PairStability, half_samples, pair_stability
-from workbench.engine.strongest import Strongest, strongest_pairs
-from workbench.engine.subject_space import SubjectSpace, by_visit, subject_space
+from workbench.engine.pairs.intervals import fisher_interval
+from workbench.engine.pairs.lookup import PairFigures
+from workbench.engine.pairs.repeated import screen_repeated, without_subject
+from workbench.engine.pairs.screen import BlockPair, BlockScreen, PairScreen, screen_blocks, screen_pairs
+from workbench.engine.pairs.subject_space import SubjectSpace, by_visit, subject_space
+from workbench.engine.pairs.tiles import Limits
 from workbench.engine.subjects import (
     SubjectDesign,
     centred,
@@ -63,9 +55,17 @@ from workbench.engine.subjects import (
     subject_means,
     whole_subject_folds,
 )
+from workbench.engine.supervised.double_outcome import ClassOutcome, NumberOutcome
+from workbench.engine.supervised.double_splits import BlockSource, BlockSplit, block_source, standard_split
+from workbench.engine.supervised.double_validation import DoubleValidation, HeldOutModel, double_validation
+from workbench.engine.supervised.multiblock_pls import MultiblockDiscriminant, MultiblockPLS
+from workbench.engine.supervised.panel_selection import PANEL_CAUTION, Panel, PanelSearch, select_panel
+from workbench.engine.supervised.performance_measures import (
+    ClassPerformance,
+    NumberPerformance,
+    roc_curve,
+)
 from workbench.engine.tails import critical_r
-from workbench.engine.tiles import Limits
-from workbench.engine.validation import CrossValidation, cross_validated_correlations
 
 __all__ = [
     "PANEL_CAUTION",

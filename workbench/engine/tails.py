@@ -27,6 +27,10 @@ _REACHES = (3.0, 12.0, 36.0)
 _CHUNK = 16_384
 
 
+#: Correlations so small that 1 - r^2 is no number to go by.
+TINY = 1e-4
+
+
 def log_p_value(r: ArrayLike, df: int) -> FloatArray:
     """Natural logarithm of the two-sided p of correlations, exact where p itself underflows.
 
@@ -58,7 +62,10 @@ def log_p_value(r: ArrayLike, df: int) -> FloatArray:
     # The fraction converges fast for x < (a + 1) / (a + b + 2), that is r^2 > 3 / (df + 5).
     scaled = flat**2 * (df + 5.0)
     near = scaled <= _REACHES[0]
+    # 1 - r^2 has lost the digits of a tiny r; the complement keeps them, at twelve times the cost.
+    tiny = flat < TINY
     log_p[near] = np.log(special.betainc(df / 2.0, 0.5, 1.0 - flat[near] ** 2))
+    log_p[tiny] = np.log(special.betaincc(0.5, df / 2.0, flat[tiny] ** 2))
     for low, high in pairwise((*_REACHES, np.inf)):
         far = (scaled > low) & (scaled <= high)
         if far.any():

@@ -11,7 +11,7 @@ from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 from numpy.typing import NDArray
 
-from workbench.engine.association import AssociationMap
+from workbench.engine.look.association import AssociationMap
 from workbench.figures.drawing import Drawing
 from workbench.figures.features import CIRCLE_ROOM, NAME_IN_CIRCLE, leading_features
 from workbench.figures.labels import place_labels

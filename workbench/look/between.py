@@ -8,9 +8,9 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from workbench.engine.agreement import Agreement, block_agreement
-from workbench.engine.components import scaled_block
 from workbench.engine.linear import thin_basis
+from workbench.engine.look.agreement import Agreement, block_agreement
+from workbench.engine.look.components import scaled_block
 from workbench.engine.nuisance import Nuisance
 from workbench.engine.signal_components import signal_components
 from workbench.errors import NumericsError

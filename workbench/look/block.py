@@ -10,12 +10,12 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.stats import beta
 
-from workbench.engine.association import AssociationMap, associate
-from workbench.engine.component_number import ComponentNumber, choose_number
-from workbench.engine.components import ScaledBlock, circle_places, decompose, scaled_block
 from workbench.engine.linear import ThinBasis, thin_basis
+from workbench.engine.look.association import AssociationMap, associate
+from workbench.engine.look.component_number import ComponentNumber, choose_number
+from workbench.engine.look.components import ScaledBlock, circle_places, decompose, scaled_block
+from workbench.engine.look.sample_distances import SampleDistances, sample_distances
 from workbench.engine.nuisance import check_finite
-from workbench.engine.sample_distances import SampleDistances, sample_distances
 from workbench.errors import NumericsError
 from workbench.look.gaps import Distributions, GapMap, distributions, gap_map
 from workbench.look.relations import Relations, feature_relations

@@ -10,7 +10,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from workbench.engine.association import SampleColumn
+from workbench.engine.look.association import SampleColumn
 from workbench.errors import InputError
 from workbench.intake.kinds import column_kind, column_numbers, present
 

@@ -9,9 +9,9 @@ from workbench.workflow.state import ProjectState
 def integrating_stage(state: ProjectState, name: str) -> Stage:
     """Return the stage that fits and tests an analysis; only what its method needs is imported."""
     if state.settings.analyses[name].method == "multiblock_pls":
-        from workbench.workflow.supervised import supervised_stage
+        from workbench.workflow.supervised.supervised import supervised_stage
 
         return supervised_stage(state, name)
-    from workbench.workflow.canonical import canonical_stage
+    from workbench.workflow.canonical.canonical import canonical_stage
 
     return canonical_stage(state, name)

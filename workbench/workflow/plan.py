@@ -6,13 +6,13 @@ from collections.abc import Sequence
 
 from workbench.errors import InputError
 from workbench.workflow.analysis_view import blocks_of
-from workbench.workflow.checking import checking_stage
-from workbench.workflow.following import following_stage
+from workbench.workflow.entry.checking import checking_stage
+from workbench.workflow.entry.looking import between_stage, looking_stage
+from workbench.workflow.entry.preparing import preparing_stage
+from workbench.workflow.entry.reading import reading_stage
+from workbench.workflow.followup.following import following_stage
 from workbench.workflow.integrating import integrating_stage
-from workbench.workflow.looking import between_stage, looking_stage
-from workbench.workflow.networking import networking_stage
-from workbench.workflow.preparing import preparing_stage
-from workbench.workflow.reading import reading_stage
+from workbench.workflow.network.networking import networking_stage
 from workbench.workflow.stages import Stage
 from workbench.workflow.state import ProjectState
 

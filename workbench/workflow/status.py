@@ -8,8 +8,8 @@ from dataclasses import dataclass
 from typing import Any
 
 from workbench.workflow.analysis_view import blocks_of
-from workbench.workflow.checking import open_errors
 from workbench.workflow.choices import choices_of
+from workbench.workflow.entry.checking import open_errors
 from workbench.workflow.plan import all_stages
 from workbench.workflow.stages import Stage, Standing, standings
 from workbench.workflow.state import ProjectState

@@ -1,0 +1,1 @@
+"""Ridge and generalised canonical correlation: fits, cross-validation and permutation tests."""

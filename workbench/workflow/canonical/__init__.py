@@ -1,0 +1,1 @@
+"""Stages and tables of canonical analyses."""

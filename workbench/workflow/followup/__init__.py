@@ -1,0 +1,1 @@
+"""What follows from a network: known edges, pathways, comparisons."""

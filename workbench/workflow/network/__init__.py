@@ -1,0 +1,1 @@
+"""From screened pairs to edges with their evidence, and the network's files."""

@@ -1,0 +1,1 @@
+"""Stages and tables of multi-block PLS, and analyses applied to another project."""
