@@ -21,6 +21,13 @@ def test_p_equals_that_of_students_t(df: int) -> None:
     assert_allclose(np.exp(log_p_value(r, df))[usable], expected[usable], rtol=1e-10)
 
 
+@pytest.mark.parametrize("df", FREEDOMS[1:])
+def test_p_near_one_keeps_the_digits_of_a_tiny_correlation(df: int) -> None:
+    r = np.geomspace(1e-9, 1e-3, 200)
+    expected = 2.0 * stats.t.sf(r * np.sqrt(df / ((1 - r) * (1 + r))), df)
+    assert_allclose(np.exp(log_p_value(r, df)), expected, rtol=0, atol=1e-10)
+
+
 def test_far_tail_has_the_closed_form_of_two_degrees_of_freedom() -> None:
     # With df = 2 the two-sided p is 1 - |r|; the density is flat.
     tiny = np.array([1e-3, 1e-9, 1e-15])

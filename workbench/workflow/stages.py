@@ -66,7 +66,7 @@ def stale_reason(state: ProjectState, stage: Stage) -> str | None:
     if record is None:
         return NOT_DONE
     if not set(stage.outputs) <= set(record.outputs):
-        return "it now writes other files"
+        return "its settings now ask for other files"
     for output in record.outputs:
         if not (state.root / output).exists():
             return f"{output} is missing"
