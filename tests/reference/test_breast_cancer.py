@@ -56,7 +56,7 @@ def test_the_first_canonical_pair_is_real_out_of_sample(project):
 def test_receptor_status_and_grade_lead_the_first_canonical_pair(project):
     features = project.result("main").features
     own = features[features["block"] == "readings"].set_index("feature")["pair1_own"].abs()
-    assert own["er"] > 0.6
+    assert own["er=positive"] > 0.6
     assert own["grade=poorly differentiated"] > 0.6
     assert own["age"] < 0.5
 

@@ -88,7 +88,7 @@ def test_repeated_samples_count_as_changes_or_as_subjects() -> None:
 
 
 def test_the_table_of_the_handbook_is_that_of_the_formula() -> None:
-    page = Path(planning.__file__).parents[3] / "guide" / "plan.md"
+    page = Path(planning.__file__).parents[2] / "guide" / "plan.md"
     rows = [
         line.strip("|").split("|")
         for line in page.read_text("utf-8").splitlines()
