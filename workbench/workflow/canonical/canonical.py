@@ -6,7 +6,8 @@ from collections.abc import Sequence
 
 from workbench.store import Change, table_bytes
 from workbench.workflow.analysis_inputs import analysis_inputs
-from workbench.workflow.analysis_view import blocks_of, view_analysis
+from workbench.workflow.analysis_stage import analysis_stage
+from workbench.workflow.analysis_view import view_analysis
 from workbench.workflow.fingerprints import columns_fingerprint, fingerprint
 from workbench.workflow.reporting import Reporter
 from workbench.workflow.stages import Stage
@@ -17,15 +18,7 @@ FILES = ("components.tsv", "explained.tsv", "association.tsv", "model.h5", "cano
 
 def canonical_stage(state: ProjectState, name: str) -> Stage:
     """Return the stage that fits and tests canonical pairs, and writes model.h5 and its tables."""
-    blocks = blocks_of(state.settings, name)
-    return Stage(
-        kind="integrate",
-        subject=name,
-        needs=tuple(f"prepare:{block}" for block in blocks),
-        outputs=tuple(f"results/{name}/{file}" for file in FILES),
-        inputs=lambda now: _inputs(now, name),
-        work=lambda now, change, reporter: _work(now, change, reporter, name),
-    )
+    return analysis_stage(state, name, "integrate", FILES, _inputs, _work)
 
 
 def _inputs(state: ProjectState, name: str) -> dict[str, str]:

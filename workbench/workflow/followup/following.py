@@ -25,7 +25,8 @@ from workbench.pathways import (
 )
 from workbench.store import Change, check_file, read_table, table_bytes
 from workbench.workflow.analysis_inputs import analysis_inputs
-from workbench.workflow.analysis_view import AnalysisView, blocks_of
+from workbench.workflow.analysis_stage import analysis_stage
+from workbench.workflow.analysis_view import AnalysisView
 from workbench.workflow.drawings import write_drawings
 from workbench.workflow.fingerprints import fingerprint
 from workbench.workflow.followup.edge_correlations import edge_correlations
@@ -61,15 +62,7 @@ def following_stage(state: ProjectState, name: str) -> Stage:
     """Return the stage that writes the short list, the pathways and the figures of an analysis."""
     chosen = state.settings.analyses[name].pathways
     files = [*OUTPUTS, *(SET_OUTPUTS if chosen.sets else ()), *(LINK_OUTPUTS if chosen.links else ())]
-    blocks = tuple(f"prepare:{block}" for block in blocks_of(state.settings, name))
-    return Stage(
-        kind="pathways",
-        subject=name,
-        needs=(*blocks, f"network:{name}"),
-        outputs=tuple(f"results/{name}/{file}" for file in files),
-        inputs=lambda now: _inputs(now, name),
-        work=lambda now, change, reporter: _work(now, change, reporter, name),
-    )
+    return analysis_stage(state, name, "pathways", files, _inputs, _work, "network")
 
 
 def _inputs(state: ProjectState, name: str) -> dict[str, str]:

@@ -16,7 +16,8 @@ from workbench.network import (
 )
 from workbench.store import Change, json_bytes, table_bytes
 from workbench.workflow.analysis_inputs import analysis_inputs
-from workbench.workflow.analysis_view import AnalysisView, blocks_of, view_analysis
+from workbench.workflow.analysis_stage import analysis_stage
+from workbench.workflow.analysis_view import AnalysisView, view_analysis
 from workbench.workflow.choices import choices_of
 from workbench.workflow.drawings import write_drawings
 from workbench.workflow.fingerprints import fingerprint
@@ -76,15 +77,7 @@ FILES = (
 
 def networking_stage(state: ProjectState, name: str) -> Stage:
     """Return the stage that writes the tables of edges and features, the GraphML and the record."""
-    blocks = [f"prepare:{block}" for block in blocks_of(state.settings, name)]
-    return Stage(
-        kind="network",
-        subject=name,
-        needs=(*blocks, f"integrate:{name}"),
-        outputs=tuple(f"results/{name}/{file}" for file in FILES),
-        inputs=lambda now: _inputs(now, name),
-        work=lambda now, change, reporter: _work(now, change, reporter, name),
-    )
+    return analysis_stage(state, name, "network", FILES, _inputs, _work, "integrate")
 
 
 def _inputs(state: ProjectState, name: str) -> dict[str, str]:

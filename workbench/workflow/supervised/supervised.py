@@ -11,7 +11,8 @@ import numpy as np
 from workbench.engine.linear import column_correlations
 from workbench.store import Change, table_bytes
 from workbench.workflow.analysis_inputs import analysis_inputs
-from workbench.workflow.analysis_view import blocks_of, view_analysis
+from workbench.workflow.analysis_stage import analysis_stage
+from workbench.workflow.analysis_view import view_analysis
 from workbench.workflow.drawings import write_drawings
 from workbench.workflow.fingerprints import columns_fingerprint, fingerprint
 from workbench.workflow.model_file import FORMAT
@@ -36,15 +37,7 @@ FILES = (*TABLES, "model.h5", "supervised.txt")
 
 def supervised_stage(state: ProjectState, name: str) -> Stage:
     """Return the stage that fits, validates and tests multi-block PLS, and writes its tables and figures."""
-    blocks = blocks_of(state.settings, name)
-    return Stage(
-        kind="integrate",
-        subject=name,
-        needs=tuple(f"prepare:{block}" for block in blocks),
-        outputs=tuple(f"results/{name}/{file}" for file in FILES),
-        inputs=lambda now: supervised_inputs(now, name),
-        work=lambda now, change, reporter: _work(now, change, reporter, name),
-    )
+    return analysis_stage(state, name, "integrate", FILES, supervised_inputs, _work)
 
 
 def supervised_inputs(state: ProjectState, name: str) -> dict[str, str]:
