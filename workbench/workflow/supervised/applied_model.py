@@ -39,9 +39,6 @@ from workbench.workflow.supervised.supervised_source import (
 
 FloatArray = NDArray[np.float64]
 
-NORMAL = 1.959964
-FEWEST = 3
-
 
 @dataclass(frozen=True, eq=False)
 class AppliedModel:
