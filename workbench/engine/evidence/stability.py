@@ -186,19 +186,13 @@ class HalfScreen:
         self._level = level
         self._remove_private = remove_private
         self._seed = seed
-        self._hint: float | None = None
+        self._strongest = HintedStrongest(correlation if level is None else "pearson")
 
     def __call__(self, rows: IndexArray, count: int) -> IndexArray:
         """Strongest pairs of the study's samples ``rows``; pairs of blocks with too few of them are left out."""
         taken = [self._taken(k, np.flatnonzero(np.isin(own, rows))) for k, own in enumerate(self._rows)]
         parts = [(k, part) for k, part in enumerate(taken) if part is not None]
-        if not parts:
-            return np.empty((0, 3), dtype=np.intp)
-        ranks: Correlation = self._correlation if self._level is None else "pearson"
-        found = strongest_pairs([part for _, part in parts], count, correlation=ranks, hint=self._hint)
-        self._hint = next_hint(found.level, self._hint)
-        numbers = np.array([k for k, _ in parts])
-        return np.column_stack([numbers[found.pair_index], found.i, found.j])
+        return self._strongest.of(parts, count)
 
     def _taken(self, k: int, rows: IndexArray) -> BlockPair | None:
         pair = self._pairs[k]
@@ -225,12 +219,25 @@ class HalfScreen:
         return cleaned.pairs[0]
 
 
-def next_hint(level: float, hint: float | None) -> float:
-    """Hint for the next half: the weakest cut so far, with room.
+@dataclass
+class HintedStrongest:
+    """The strongest pairs of one half after the other, each with a hint from those before.
 
-    Halves differ, and a second pass costs more than some more pairs.
+    The hint is the weakest cut so far, with room: halves differ, and a second pass costs more than some more pairs.
     """
-    return max(level + HINT_ROOM, -np.inf if hint is None else hint)
+
+    correlation: Correlation
+    hint: float | None = None
+
+    def of(self, parts: Sequence[tuple[int, BlockPair]], count: int) -> IndexArray:
+        """Return (number, i, j) of the strongest pairs over numbered pairs of blocks; none where none are given."""
+        if not parts:
+            return np.empty((0, 3), dtype=np.intp)
+        pairs = [pair for _, pair in parts]
+        found = strongest_pairs(pairs, count, correlation=self.correlation, hint=self.hint)
+        self.hint = max(found.level + HINT_ROOM, -np.inf if self.hint is None else self.hint)
+        numbers = np.array([k for k, _ in parts])
+        return np.column_stack([numbers[found.pair_index], found.i, found.j])
 
 
 def _taken(pair: BlockPair, rows: IndexArray) -> BlockPair | None:

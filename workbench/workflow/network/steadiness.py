@@ -12,13 +12,11 @@ from workbench.engine.evidence.stability import (
     LEAST_FREEDOM,
     SMALLEST_HALF,
     HalfScreen,
+    HintedStrongest,
     StrongestOf,
-    next_hint,
     pair_freedom,
     pair_stability,
 )
-from workbench.engine.evidence.strongest import strongest_pairs
-from workbench.engine.pairs.screen import Correlation
 from workbench.engine.pairs.subject_space import Level
 from workbench.engine.private.private_variation import LayerBlock, pairs_without_private
 from workbench.network import Key
@@ -135,9 +133,8 @@ class HalfCleaned:
     blocks: Sequence[LayerBlock]
     places: Sequence[tuple[int, int]]
     positions: IndexArray
-    correlation: Correlation
+    strongest: HintedStrongest
     seed: int
-    hint: float | None = None
 
     @classmethod
     def of(cls, view: AnalysisView, samples: Sequence[str], *, within: bool) -> HalfCleaned:
@@ -148,7 +145,7 @@ class HalfCleaned:
             [layer_block(view, name, within) for name in names],
             [(names.index(first), names.index(second)) for first, second in view.pairs],
             np.array([place[sample] for sample in samples], dtype=np.intp),
-            view.settings.network.correlation,
+            HintedStrongest(view.settings.network.correlation),
             view.settings.seed,
         )
 
@@ -161,19 +158,12 @@ class HalfCleaned:
             if np.intersect1d(half[a].rows, half[b].rows).size >= SMALLEST_HALF
         ]
         made = pairs_without_private(
-            half, [self.places[k] for k in able], correlation=self.correlation, seed=self.seed
+            half, [self.places[k] for k in able], correlation=self.strongest.correlation, seed=self.seed
         )
         kept = [
             (k, pair) for k, pair in zip(able, made.pairs, strict=True) if pair_freedom(pair) >= LEAST_FREEDOM
         ]
-        if not kept:
-            return np.empty((0, 3), dtype=np.intp)
-        found = strongest_pairs(
-            [pair for _, pair in kept], count, correlation=self.correlation, hint=self.hint
-        )
-        self.hint = next_hint(found.level, self.hint)
-        numbers = np.array([k for k, _ in kept])
-        return np.column_stack([numbers[found.pair_index], found.i, found.j])
+        return self.strongest.of(kept, count)
 
 
 def _taken(block: LayerBlock, positions: IndexArray) -> LayerBlock:
