@@ -11,8 +11,7 @@ from simulated import Block, Study, design_matrix, logs, simulate
 from simulated.sheet import indicators
 
 from workbench.engine.nuisance import Nuisance
-from workbench.engine.pairs.screen import BlockScreen, pair_tiles, screen_blocks
-from workbench.engine.pairs.tiles import Limits
+from workbench.engine.pairs.screen import BlockScreen, screen_blocks
 from workbench.engine.private.module_union import screen_supported
 from workbench.engine.private.private_variation import (
     LayerBlock,
@@ -131,16 +130,7 @@ def _between_visits(study: Study, arrays: Arrays, family: Family) -> tuple[Priva
     made = cleaned_repeated(
         blocks, study.design.block_pairs(), _subjects(study), "visits", family.correlation, seed=study.seed
     )
-    found = screen_supported(
-        tuple(pair.name for pair in made.pairs),
-        [pair_tiles(pair, "pearson", Limits()) for pair in made.pairs],
-        made.shared,
-        fdr=0.05,
-        correlation="pearson",
-        minimum_r=0.0,
-        maximum_edges=None,
-        progress=None,
-    )
+    found = screen_supported(made.pairs, made.shared)
     components = tuple(
         tuple(replace(one, scores=made.space.on_samples(one.scores[:, None])[:, 0]) for one in block)
         for block in made.components

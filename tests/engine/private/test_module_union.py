@@ -7,8 +7,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from numpy.testing import assert_allclose, assert_array_equal
 
-from workbench.engine import BlockPair, BlockScreen, Limits, screen_blocks
-from workbench.engine.pairs.screen import pair_tiles
+from workbench.engine import BlockPair, BlockScreen, screen_blocks
 from workbench.engine.private.module_route import module_pairs
 from workbench.engine.private.module_union import PAIR_SHARE, SupportedScreen, screen_supported
 
@@ -18,13 +17,11 @@ FDR = 0.05
 
 def screened(*studies: Coupled, modules: bool = True, **changes: object) -> SupportedScreen:
     """Return the screen of both routes over the pairs of blocks of some studies."""
-    asked = {"fdr": FDR, "correlation": "pearson", "minimum_r": 0.0, "maximum_edges": None, "progress": None}
     width = None if modules else 0
     return screen_supported(
-        tuple(f"pair {k}" for k in range(len(studies))),
-        [pair_tiles(study.pair(), "pearson", Limits()) for study in studies],
+        [BlockPair(f"pair {k}", study.x, study.y) for k, study in enumerate(studies)],
         [(study.u[:, :width], study.v[:, :width]) for study in studies],
-        **(asked | changes),
+        **({"fdr": FDR} | changes),
     )
 
 

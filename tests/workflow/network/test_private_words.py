@@ -5,7 +5,7 @@ from types import SimpleNamespace
 import numpy as np
 
 from workbench.engine.private.private_variation import LayerBlock, RealComponent
-from workbench.workflow.network.private import private_lines, removal_names
+from workbench.workflow.network.private import named_removals, private_lines
 from workbench.workflow.network.screening import BlockRemoval
 
 
@@ -43,4 +43,9 @@ def test_every_fate_of_a_component_is_told():
 
 def test_a_block_with_a_removal_for_each_pair_is_named_with_the_other_block():
     pairs = [removal("one", "two"), removal("two", "one"), removal("one", "three"), removal("three", "one")]
-    assert removal_names(pairs) == ["one beside two", "two", "one beside three", "three"]
+    assert [name for name, _ in named_removals(pairs)] == [
+        "one beside two",
+        "two",
+        "one beside three",
+        "three",
+    ]

@@ -110,7 +110,24 @@ def screen_repeated(
         progress=progress,
         limits=limits,
     )
-    n = np.array([space.used.size for _, space in moved], dtype=np.int64)
+    return told_of_samples(screen, [space for _, space in moved], correlation)
+
+
+def told_of_samples(
+    screen: BlockScreen, spaces: Sequence[SubjectSpace], correlation: Correlation
+) -> BlockScreen:
+    """Return a screen of independent rows as one of the samples that they came from: their number, and the ranks.
+
+    Parameters
+    ----------
+    screen : BlockScreen
+        By Pearson's correlation of the rows.
+    spaces : sequence of SubjectSpace
+        Of each pair of blocks.
+    correlation : {"pearson", "spearman"}
+        Whether ranks were taken on the way to the rows.
+    """
+    n = np.array([space.used.size for space in spaces], dtype=np.int64)
     return replace(screen, n=n[screen.pair_index], correlation=correlation)
 
 

@@ -20,13 +20,15 @@ from workbench.engine.pairs.intervals import selected_error
 from workbench.engine.pairs.lookup import PairFigures
 from workbench.engine.pairs.screen import (
     FALSE_COVERAGE,
+    BlockPair,
     BlockScreen,
     Correlation,
     Progress,
     edge_intervals,
+    pair_tiles,
     screen_tiles,
 )
-from workbench.engine.pairs.tiles import PairTiles
+from workbench.engine.pairs.tiles import Limits, PairTiles
 from workbench.engine.pairs.unit_rows import FloatArray, IndexArray
 from workbench.engine.private.module_route import ModulePairs, module_pairs
 from workbench.engine.tails import p_from_log
@@ -58,22 +60,21 @@ class SupportedScreen:
 
 
 def screen_supported(
-    names: tuple[str, ...],
-    tiles: Sequence[PairTiles],
+    pairs: Sequence[BlockPair],
     scores: Sequence[tuple[FloatArray, FloatArray]],
     *,
-    fdr: float,
-    correlation: Correlation,
-    minimum_r: float,
-    maximum_edges: int | None,
-    progress: Progress | None,
+    fdr: float = 0.05,
+    correlation: Correlation = "pearson",
+    minimum_r: float = 0.0,
+    maximum_edges: int | None = None,
+    progress: Progress | None = None,
 ) -> SupportedScreen:
-    """Edges among the entries of tiles, by their own tests and by the modules of their blocks.
+    """Edges between the features of pairs of blocks, by their own tests and by the modules of their blocks.
 
     Parameters
     ----------
-    names, tiles, fdr, correlation, minimum_r, maximum_edges, progress
-        As for :func:`~workbench.engine.pairs.screen.screen_tiles`.
+    pairs, fdr, correlation, minimum_r, maximum_edges, progress
+        As for :func:`~workbench.engine.pairs.screen.screen_blocks`.
     scores : sequence of (ndarray of shape (n_samples, k), ndarray of shape (n_samples, l))
         For each pair of blocks the shared components of both, as for
         :func:`~workbench.engine.private.module_route.module_pairs`.
@@ -81,14 +82,15 @@ def screen_supported(
     Raises
     ------
     NumericsError
-        As for :func:`~workbench.engine.pairs.screen.screen_tiles`.
+        As for :func:`~workbench.engine.pairs.screen.screen_blocks`.
     """
+    tiles = [pair_tiles(pair, correlation, Limits()) for pair in pairs]
     rate = (1.0 - PAIR_SHARE) * fdr
     modules = [module_pairs(focus(tiles, k), u, v, rate) for k, (u, v) in enumerate(scores)]
     listed = _listed(modules, tiles, Request(fdr, minimum_r, maximum_edges).floor_r)
     share = PAIR_SHARE if listed.keys.size else 1.0
     own = screen_tiles(
-        names,
+        tuple(pair.name for pair in pairs),
         tiles,
         fdr=share * fdr,
         correlation=correlation,

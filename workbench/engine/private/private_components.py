@@ -81,7 +81,7 @@ def block_components(values: FloatArray, nuisance: Nuisance, *, ranks: bool, see
     z, kept, steady = unit_residuals(values, nuisance, ranks=ranks)
     n, p = z.shape
     nothing = BlockComponents(z, kept, np.empty((n, 0)), np.empty(0), n - nuisance.rank, steady)
-    if n - nuisance.rank < FEWEST_DIMENSIONS or p < 2:
+    if not tells_components(nuisance) or p < 2:
         return nothing
     basis = thin_basis(z)
     scores = signal_components(basis).directions
@@ -95,6 +95,11 @@ def block_components(values: FloatArray, nuisance: Nuisance, *, ranks: bool, see
     shares = np.sum((z.T @ scores) ** 2, axis=0) / p
     order = np.argsort(-shares, kind="stable")
     return BlockComponents(z, kept, scores[:, order], shares[order], n - nuisance.rank, steady)
+
+
+def tells_components(nuisance: Nuisance) -> bool:
+    """Whether the nuisance leaves dimensions enough to tell components from noise."""
+    return nuisance.n_samples - nuisance.rank >= FEWEST_DIMENSIONS
 
 
 def simple_rotation(loadings: FloatArray) -> FloatArray:

@@ -26,13 +26,13 @@ from scipy.stats import rankdata
 
 from workbench.engine.far_values import withstand
 from workbench.engine.nuisance import CONSTANT_TOLERANCE, Nuisance
-from workbench.engine.pairs.screen import BlockPair, BlockScreen, Correlation, Progress, pair_tiles
-from workbench.engine.pairs.tiles import Limits
+from workbench.engine.pairs.screen import BlockPair, BlockScreen, Correlation, Progress
 from workbench.engine.private.module_union import screen_supported
 from workbench.engine.private.private_components import (
     FEWEST_DIMENSIONS,
     BlockComponents,
     block_components,
+    tells_components,
 )
 from workbench.engine.private.private_retention import retention_levels, retention_p
 from workbench.engine.private.private_untangling import admixture, entangled
@@ -260,8 +260,7 @@ def screen_cleaned(
         When shapes or values do not allow the screen.
     """
     found = screen_supported(
-        tuple(pair.name for pair in made.pairs),
-        [pair_tiles(pair, correlation, Limits()) for pair in made.pairs],
+        made.pairs,
         made.shared,
         fdr=fdr,
         correlation=correlation,
@@ -318,8 +317,7 @@ def _shared_rows(x: LayerBlock, y: LayerBlock) -> _View:
 
 
 def _reason(view: _View, x: LayerBlock, y: LayerBlock) -> str:
-    left = view.nuisance.n_samples - view.nuisance.rank
-    if left >= FEWEST_DIMENSIONS:
+    if tells_components(view.nuisance):
         return ""
     return (
         f"{x.name} and {y.name} share {view.nuisance.n_samples} samples, and intercept and nuisance take "
@@ -455,6 +453,12 @@ def _shared(block: _Judged, view: _View, rows: IndexArray, off: str) -> FloatArr
     return unit
 
 
+def steadied(values: FloatArray, nuisance: Nuisance, own: Nuisance, steady: FloatArray) -> FloatArray:
+    """Residuals of features, odd samples shrunk; arguments as for :func:`cleaned_features`."""
+    odd = (steady < 1.0).any()
+    return own.residuals(steady[:, None] * nuisance.residuals(values) if odd else values)
+
+
 def cleaned_features(values: FloatArray, nuisance: Nuisance, own: Nuisance, steady: FloatArray) -> FloatArray:
     """Return what is left of the features of a block, as a screen takes it for Pearson's correlation.
 
@@ -471,8 +475,7 @@ def cleaned_features(values: FloatArray, nuisance: Nuisance, own: Nuisance, stea
     steady : ndarray of shape (n_samples,)
         What each sample's residuals are multiplied by.
     """
-    odd = (steady < 1.0).any()
-    rest = own.residuals(steady[:, None] * nuisance.residuals(values) if odd else values)
+    rest = steadied(values, nuisance, own, steady)
     constant = np.linalg.norm(rest, axis=0) <= CONSTANT_TOLERANCE * np.linalg.norm(values, axis=0)
     rest[:, constant] = 0.0
     return withstand(rest, own.n_samples - own.rank)

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from workbench.engine import Nuisance
 from workbench.engine.far_values import FEWEST, HEAVY, excess_kurtosis
 from workbench.engine.look.association import SampleColumn, associate, associate_rows
-from workbench.engine.private.private_variation import RealComponent
+from workbench.engine.private.private_variation import RealComponent, steadied
 from workbench.figures import Drawing
 from workbench.figures.private import ComponentBar, draw_private
 from workbench.intake.faults import counted
@@ -55,11 +55,12 @@ def private_table(state: ProjectState, view: AnalysisView, screen: Screen) -> pd
     return pd.DataFrame(rows, columns=list(COLUMNS))
 
 
-def removal_names(removals: Sequence[BlockRemoval]) -> list[str]:
-    """Return a name for each block's removal: the block, and the one beside it where a block has several."""
+def named_removals(removals: Sequence[BlockRemoval]) -> list[tuple[str, BlockRemoval]]:
+    """Return each block's removal with its name: the block, and the one beside it where a block has several."""
     blocks = [one.block for one in removals]
     return [
-        f"{one.block} beside {one.beside}" if blocks.count(one.block) > 1 else one.block for one in removals
+        (f"{one.block} beside {one.beside}" if blocks.count(one.block) > 1 else one.block, one)
+        for one in removals
     ]
 
 
@@ -68,8 +69,8 @@ def private_lines(view: AnalysisView, screen: Screen, heavy: Mapping[str, int]) 
 
     ``heavy`` counts the features of heavy tails in each block (:func:`heavy_tailed`).
     """
-    lines = []
-    for name, one in zip(removal_names(screen.removals), screen.removals, strict=True):
+    lines, named = [], named_removals(screen.removals)
+    for name, one in named:
         if not one.on:
             continue
         kept = [part for part in one.components if part.shared_with]
@@ -82,13 +83,8 @@ def private_lines(view: AnalysisView, screen: Screen, heavy: Mapping[str, int]) 
             f"{name}: {count} removed ({share} of {_of_what(view, one)}, private.tsv)" + _kept_words(kept)
         )
     lines += list(dict.fromkeys(reason for reason in screen.off if reason))
-    named = zip(removal_names(screen.removals), screen.removals, strict=True)
     lines += [_left_in_line(view, name, one) for name, one in named if left_in(one)]
-    lines += [
-        _odd_line(name, one)
-        for name, one in zip(removal_names(screen.removals), screen.removals, strict=True)
-        if one.odd
-    ]
+    lines += [_odd_line(name, one) for name, one in named if one.odd]
     for name, features in heavy.items():
         told = counted(features, "feature with heavy tails enters", "features with heavy tails enter")
         lines.append(f"{name}: {told} by the normal scores of ranks (guide private)")
@@ -107,14 +103,15 @@ def heavy_tailed(screen: Screen) -> dict[str, int]:
     if screen.found.correlation == "spearman":
         return {}
     found: dict[str, int] = {}
-    for name, one in zip(removal_names(screen.removals), screen.removals, strict=True):
+    for name, one in named_removals(screen.removals):
         n = len(one.rows.rows)
         scores = [part.scores for part in one.removed]
+        nuisance = Nuisance.of(one.rows.nuisance, n)
         own = Nuisance.of(np.column_stack([one.rows.nuisance, *scores]), n)
         heavy = one.heavy
         if own.n_samples - own.rank >= FEWEST:
-            rest = one.steady[:, None] * Nuisance.of(one.rows.nuisance, n).residuals(one.rows.values)
-            heavy = heavy | (excess_kurtosis(own.residuals(rest)) > HEAVY)
+            rest = steadied(one.rows.values, nuisance, own, one.steady)
+            heavy = heavy | (excess_kurtosis(rest) > HEAVY)
         found |= {name: int(heavy.sum())} if heavy.any() else {}
     return found
 
@@ -151,25 +148,18 @@ def _odd_line(name: str, one: BlockRemoval) -> str:
 
 def private_record(view: AnalysisView, screen: Screen, heavy: Mapping[str, int]) -> dict[str, Any]:
     """Return what the record says of private variation: components of each block, and where it was off."""
+    named = named_removals(screen.removals)
     return {
         "components": {
             name: [
                 {"component": part.number, "share": part.share, "shared_with": part.shared_with, "p": part.p}
                 for part in one.components
             ]
-            for name, one in zip(removal_names(screen.removals), screen.removals, strict=True)
+            for name, one in named
         },
         "features_by_normal_scores": dict(heavy),
-        "left_in": {
-            name: [part.number for part in left_in(one)]
-            for name, one in zip(removal_names(screen.removals), screen.removals, strict=True)
-            if left_in(one)
-        },
-        "odd_brought_back_to_size": {
-            name: dict(one.odd)
-            for name, one in zip(removal_names(screen.removals), screen.removals, strict=True)
-            if one.odd
-        },
+        "left_in": {name: [part.number for part in left_in(one)] for name, one in named if left_in(one)},
+        "odd_brought_back_to_size": {name: dict(one.odd) for name, one in named if one.odd},
         "off": {
             f"{first} x {second}": off
             for (first, second), off in zip(view.pairs, screen.off, strict=True)
@@ -182,7 +172,7 @@ def draw_removed(screen: Screen) -> tuple[Drawing, ...]:
     """Return the figure of the components that stayed and those that went; none where there are no components."""
     bars = {
         name: [ComponentBar(part.number, part.share, part.stays) for part in one.components]
-        for name, one in zip(removal_names(screen.removals), screen.removals, strict=True)
+        for name, one in named_removals(screen.removals)
     }
     return draw_private(bars) if any(bars.values()) else ()
 
@@ -197,7 +187,7 @@ def write_scores(path: Path, view: AnalysisView, screen: Screen) -> None:
     text = h5py.string_dtype("utf-8")
     with h5py.File(path, "w") as file:
         file.attrs["format"] = 1
-        for name, one in zip(removal_names(screen.removals), screen.removals, strict=True):
+        for name, one in named_removals(screen.removals):
             part = file.create_group(name)
             part.attrs["beside"] = one.beside
             part.create_dataset("samples", data=_row_names(view, one), dtype=text)

@@ -11,9 +11,9 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.stats import rankdata
 
-from workbench.engine import BlockPair, BlockScreen, Limits, Nuisance, SubjectDesign, screen_blocks
-from workbench.engine.pairs.repeated import independent_pair
-from workbench.engine.pairs.screen import Correlation, pair_tiles
+from workbench.engine import BlockPair, BlockScreen, Nuisance, SubjectDesign, screen_blocks
+from workbench.engine.pairs.repeated import independent_pair, told_of_samples
+from workbench.engine.pairs.screen import Correlation
 from workbench.engine.pairs.subject_space import Level, SubjectSpace, by_visit, subject_space
 from workbench.engine.private.module_union import screen_supported
 from workbench.engine.private.private_variation import LayerBlock, RealComponent, screen_without_private
@@ -204,20 +204,10 @@ def _repeated(
             components.append((np.empty((len(rows[k].space.matrix), 0)),) * 2)
     with reporter.progress(label) as progress:
         asked: Asked = {**_asked(view), "correlation": "pearson"}  # ranks are taken on the way to the rows
-        tested = [one.pair for one in rows]
-        found = screen_supported(
-            tuple(pair.name for pair in tested),
-            [pair_tiles(pair, "pearson", Limits()) for pair in tested],
-            components,
-            **asked,
-            progress=progress,
-        )
-    screen = replace(
-        found.screen,
-        n=_used(rows)[found.screen.pair_index],
-        correlation=view.settings.network.correlation,
-    )
-    freedom = tuple(one.space.nuisance.n_samples - one.space.nuisance.rank - 1 for one in rows)
+        found = screen_supported([one.pair for one in rows], components, **asked, progress=progress)
+    spaces = [one.space for one in rows]
+    screen = told_of_samples(found.screen, spaces, view.settings.network.correlation)
+    freedom = tuple(space.nuisance.n_samples - space.nuisance.rank - 1 for space in spaces)
     return Screen(
         screen,
         pairs,
@@ -298,11 +288,6 @@ def _odd_subjects(subjects: Sequence[str], made: CleanedRepeated, side: int) -> 
     space = made.space
     firsts = np.array([factors[rows[0]] for rows in space.blocks])
     return _named_odd([subjects[number] for number in space.subjects], firsts)
-
-
-def _used(rows: Sequence[RepeatedRows]) -> NDArray[np.int64]:
-    """Return the number of samples that each pair of blocks was tested on."""
-    return np.array([one.space.used.size for one in rows], dtype=np.int64)
 
 
 def space_of(pair: BlockPair, design: SubjectDesign, level: Level, correlation: Correlation) -> SubjectSpace:

@@ -12,7 +12,7 @@ from scipy.stats import rankdata
 from workbench.engine import Nuisance
 from workbench.engine.pairs.repeated import mapped_block
 from workbench.engine.pairs.subject_space import SubjectSpace, subject_space
-from workbench.engine.private.private_components import FEWEST_DIMENSIONS
+from workbench.engine.private.private_components import tells_components
 from workbench.engine.private.private_variation import cleaned_features
 from workbench.workflow.analysis_view import AnalysisView, Shared
 from workbench.workflow.network.private import PrivatePart
@@ -44,7 +44,7 @@ def tested_on_samples(
     common = Nuisance.of(columns, len(rows))
     own, steady = common, np.ones(len(rows))
     if private is not None:
-        if common.n_samples - common.rank >= FEWEST_DIMENSIONS:
+        if tells_components(common):
             own = Nuisance.of(np.column_stack([columns, private.scores.loc[rows]]), len(rows))
         if private.steady is not None:
             steady = private.steady.loc[rows].to_numpy()
