@@ -22,6 +22,8 @@ from workbench.figures.style import (
 )
 
 MOST_BARS = 25
+HEADROOM = 1.4
+"""Height of a panel in heights of its tallest bar: the legend stands above a bar that fills the panel."""
 
 
 @dataclass(frozen=True)
@@ -73,6 +75,7 @@ def component_bars(axes: Axes, name: str, components: Sequence[ComponentBar]) ->
                 label=label,
             )
     axes.set_xticks(range(1, len(shown) + 1) if len(shown) <= 10 else [1, *range(5, len(shown) + 1, 5)])
+    axes.set_ylim(0.0, 100.0 * HEADROOM * max(one.share for one in shown))
     axes.set_xlabel("component")
     axes.set_ylabel("share of variance (%)")
     axes.set_title(figure_name(name, 32), parse_math=False)
