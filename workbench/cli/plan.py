@@ -64,8 +64,9 @@ def plan(
         plans = plan_of_numbers(samples, features, taken=taken, fdr=fdr, share=share, power=power)
     else:
         opened = _project_at_hand(project)
-        name = opened.state().one_analysis(analysis)
-        opened.prepare(*blocks_of(opened.state().settings, name), reporter=terminal_reporter(as_json))
+        state = opened.state()
+        name = state.one_analysis(analysis)
+        opened.prepare(*blocks_of(state.settings, name), reporter=terminal_reporter(as_json))
         plans = project_plans(opened.state(), name, share=share, power=power, samples=samples)
     if as_json:
         answer([json.dumps({"schema_version": 1, "plans": [one.as_json() for one in plans]}, indent=2)])
