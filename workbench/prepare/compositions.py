@@ -11,11 +11,11 @@ from typing import ClassVar
 
 import numpy as np
 
-from workbench.intake.faults import counted
+from workbench.prepare.cells import check_not_empty, check_not_negative
 from workbench.prepare.combining import CombineRuns
-from workbench.prepare.counts import check_count_cells, check_not_empty
+from workbench.prepare.counts import check_count_cells
 from workbench.prepare.gaps import FillGaps
-from workbench.prepare.refusal import VALUES, PrepareRefusal, without_value
+from workbench.prepare.refusal import without_value
 from workbench.prepare.steps import (
     FEWEST_SAMPLES,
     DropFlat,
@@ -86,14 +86,8 @@ def check_proportion_cells(table: MeasuredTable) -> None:
     InputError
         Naming the first negative cell.
     """
-    negative = table.values < 0
-    if negative.any():
-        raise PrepareRefusal(
-            f"{counted(int(negative.sum()), 'proportion is', 'proportions are')} negative, the first at "
-            f"{table.first_cell(negative)}; parts of a whole are 0 or more, log-ratios may be less",
-            key=VALUES,
-            fitting=("log", "continuous"),
-        )
+    rule = "parts of a whole are 0 or more, log-ratios may be less"
+    check_not_negative(table, "proportion", "proportions", rule)
 
 
 @dataclass(frozen=True)

@@ -8,10 +8,11 @@ from typing import ClassVar
 import numpy as np
 
 from workbench.intake.faults import counted
+from workbench.prepare.cells import OFF_BACKGROUND, check_not_empty, check_not_negative
 from workbench.prepare.combining import CombineRuns
 from workbench.prepare.gaps import FillGaps
 from workbench.prepare.read_scales import TrimmedMeans, UpperQuartile
-from workbench.prepare.refusal import VALUES, PrepareRefusal, without_value
+from workbench.prepare.refusal import VALUES, PrepareRefusal
 from workbench.prepare.size_factors import SizeFactors
 from workbench.prepare.steps import (
     FEWEST_SAMPLES,
@@ -64,19 +65,6 @@ def check_counts(table: MeasuredTable) -> None:
     check_not_empty(table, "count above 0")
 
 
-def check_not_empty(table: MeasuredTable, lacking: str) -> None:
-    """Refuse samples without a value above 0; ``lacking`` says in words what they do not have.
-
-    Raises
-    ------
-    InputError
-        Naming the samples.
-    """
-    empty = np.flatnonzero((table.values > 0).sum(axis=1) == 0)
-    if empty.size and table.features:
-        raise without_value(lacking, [table.samples[row] for row in empty], len(table.samples))
-
-
 def check_count_cells(table: MeasuredTable) -> None:
     """Refuse negative counts and parts of counts.
 
@@ -85,15 +73,9 @@ def check_count_cells(table: MeasuredTable) -> None:
     InputError
         Naming the first negative cell.
     """
-    negative = table.values < 0
-    if negative.any():
-        raise PrepareRefusal(
-            f"{counted(int(negative.sum()), 'count is', 'counts are')} negative, the first at "
-            f"{table.first_cell(negative)}; counts are 0 or more, logarithms and readings may be less",
-            key=VALUES,
-            fitting=("log", "continuous"),
-            advice="leave such cells empty where a background was taken off",
-        )
+    check_not_negative(
+        table, "count", "counts", "counts are 0 or more, logarithms and readings may be less", OFF_BACKGROUND
+    )
     part = table.values != np.rint(table.values)
     part &= ~np.isnan(table.values)
     if part.any():

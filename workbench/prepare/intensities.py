@@ -7,13 +7,12 @@ from typing import ClassVar
 
 import numpy as np
 
-from workbench.intake.faults import counted
+from workbench.prepare.cells import OFF_BACKGROUND, check_not_negative
 from workbench.prepare.combining import CombineRuns
 from workbench.prepare.controls import BlankFilter, PoolScatter
 from workbench.prepare.drift import Drift
 from workbench.prepare.gaps import low_gaps
 from workbench.prepare.quotients import Quotients
-from workbench.prepare.refusal import VALUES, PrepareRefusal
 from workbench.prepare.steps import (
     DropFlat,
     DropRarelySeen,
@@ -68,15 +67,8 @@ def check_intensities(table: MeasuredTable) -> None:
     PrepareRefusal
         Naming the first negative cell.
     """
-    negative = table.values < 0
-    if negative.any():
-        raise PrepareRefusal(
-            f"{counted(int(negative.sum()), 'intensity is', 'intensities are')} negative, the first at "
-            f"{table.first_cell(negative)}; intensities are 0 or more, logarithms and readings may be less",
-            key=VALUES,
-            fitting=("log", "continuous"),
-            advice="leave such cells empty where a background was taken off",
-        )
+    rule = "intensities are 0 or more, logarithms and readings may be less"
+    check_not_negative(table, "intensity", "intensities", rule, OFF_BACKGROUND)
 
 
 @dataclass(frozen=True)
